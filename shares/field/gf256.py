@@ -1,0 +1,215 @@
+"""The field GF(2^8) = GF(2)[x]/(m), for any of the 30 irreducible polynomials m of degree 8.
+
+For: everything that is shared is shared byte by byte over this field.
+Source: R. Lidl, H. Niederreiter, "Introduction to Finite Fields and their Applications", chapter 3 (irreducibles);
+    FIPS 197, section 4.2 (an element is a byte, bit i the coefficient of x^i; multiplication by doubling).
+May import: errors; field (the kernel in use), polynomial.
+Secret: the rows and outs of ``combine`` and ``project``, which are computed by the kernel alone.
+    Public: the modulus, evaluation points, weights and every other number here; their arithmetic may take any time.
+Does not: multiply two secrets or invert one. Nothing in this package needs it. It uses no tables.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from functools import lru_cache
+
+from shares.errors import DuplicatePointError, ParameterError, PolynomialError
+from shares.field import Kernel, ReadableBuffer, WritableBuffer
+from shares.field import kernel as kernel_in_use
+
+DEFAULT_MODULUS = 0x11B
+
+
+class Field:
+    """GF(2)[x]/(modulus): products and weights of public numbers, and the two operations on secret rows.
+
+    Args:
+        modulus: irreducible polynomial of degree 8 as int, bit i the coefficient of x^i.
+        kernel: who computes on secrets; by default the kernel in use.
+
+    Raises:
+        PolynomialError: the modulus is of another degree, or reducible (the message names the factors).
+        KernelUnavailableError: the demanded kernel cannot be loaded.
+
+    >>> field = Field(0x11b)
+    >>> hex(field.multiply(0x57, 0x83))  # FIPS 197, section 4.2
+    '0xc1'
+    """
+
+    __slots__ = ("_kernel", "_modulus")
+
+    _modulus: int
+    _kernel: Kernel
+
+    def __init__(self, modulus: int = DEFAULT_MODULUS, *, kernel: Kernel | None = None) -> None:
+        _require_irreducible(modulus)
+        object.__setattr__(self, "_modulus", modulus)
+        object.__setattr__(self, "_kernel", kernel or kernel_in_use())
+
+    def __setattr__(self, name: str, value: object) -> None:
+        raise AttributeError("a field cannot be changed")
+
+    @property
+    def modulus(self) -> int:
+        """The polynomial m as int, bit i the coefficient of x^i."""
+        return self._modulus
+
+    @property
+    def kernel(self) -> Kernel:
+        """Who computes on secrets."""
+        return self._kernel
+
+    def __repr__(self) -> str:
+        return f"Field({self._modulus:#x})"
+
+    # Public numbers: ordinary Python, whose time depends on the values.
+
+    def multiply(self, a: int, b: int) -> int:
+        """Multiply two public elements.
+
+        Args:
+            a: 0 to 255.
+            b: 0 to 255.
+
+        Returns:
+            The product, 0 to 255.
+        """
+        product = 0
+        while b:
+            if b & 1:
+                product ^= a
+            a <<= 1
+            if a & 0x100:
+                a ^= self._modulus
+            b >>= 1
+        return product
+
+    def power(self, a: int, exponent: int) -> int:
+        """Raise a public element to a power of 0 or more; ``power(0, 0)`` is 1.
+
+        Args:
+            a: 0 to 255.
+            exponent: 0 or more.
+
+        Returns:
+            The power, 0 to 255.
+        """
+        result = 1
+        while exponent:
+            if exponent & 1:
+                result = self.multiply(result, a)
+            a = self.multiply(a, a)
+            exponent >>= 1
+        return result
+
+    def inverse(self, a: int) -> int:
+        """Invert a public element: a^254, as a^255 = 1 for every a but 0.
+
+        Args:
+            a: 1 to 255.
+
+        Returns:
+            The inverse, 1 to 255.
+
+        Raises:
+            ParameterError: a is 0 or no element.
+        """
+        if not 1 <= a <= 255:
+            raise ParameterError("only 1 to 255 have an inverse")
+        return self.power(a, 254)
+
+    def powers(self, x: int, count: int) -> bytes:
+        """Give 1, x, x^2, ...: one line of the matrix that evaluates polynomials.
+
+        Args:
+            x: public evaluation point, 0 to 255.
+            count: number of powers, 0 or more.
+
+        Returns:
+            ``count`` bytes.
+
+        >>> Field().powers(2, 9).hex()
+        '01020408102040801b'
+        """
+
+        def chain() -> Iterator[int]:
+            power = 1
+            for _ in range(count):
+                yield power
+                power = self.multiply(power, x)
+
+        _require_elements([x])
+        return bytes(chain())
+
+    def interpolation_weights(self, xs: Sequence[int], *, at: int = 0) -> bytes:
+        """Give w with f(at) = sum of w_i f(x_i) for every polynomial f of degree below ``len(xs)``.
+
+        Args:
+            xs: public evaluation points, each 1 to 255 and once only.
+            at: where f is wanted, 0 to 255.
+
+        Returns:
+            ``len(xs)`` bytes, in the order of ``xs``.
+
+        Raises:
+            DuplicatePointError: a point is given twice.
+            ParameterError: no point, or one out of range.
+
+        Source: Lagrange's formula: w_i is the product over j != i of (at - x_j) / (x_i - x_j); minus is XOR here.
+
+        >>> Field().interpolation_weights([1, 2, 3]).hex()  # f(0) = f(1) + f(2) + f(3), as 1 + 2 + 3 = 0
+        '010101'
+        """
+        if not xs or not all(1 <= x <= 255 for x in xs):
+            raise ParameterError("evaluation points must be 1 to 255, at least one of them")
+        _require_elements([at])
+        if len(set(xs)) < len(xs):
+            raise DuplicatePointError("two evaluation points are the same")
+        weights = bytearray()
+        for i, x_i in enumerate(xs):
+            numerator = denominator = 1
+            for x_j in [*xs[:i], *xs[i + 1 :]]:
+                numerator = self.multiply(numerator, at ^ x_j)
+                denominator = self.multiply(denominator, x_i ^ x_j)
+            weights.append(self.multiply(numerator, self.inverse(denominator)))
+        return bytes(weights)
+
+    # Secret rows: the kernel.
+
+    def combine(self, matrix: Sequence[bytes], rows: Sequence[ReadableBuffer], out: Sequence[WritableBuffer]) -> None:
+        """Write ``out[i][t] = sum over j of matrix[i][j] * rows[j][t]``.
+
+        Args:
+            matrix: public; for each out ``len(rows)`` scalars.
+            rows: secret; at least one, all of one length, 1 byte or more.
+            out: at least one, of the same length; overwritten whole, and no part of a row or of another out.
+
+        Raises:
+            ValueError: shapes do not fit or buffers overlap; nothing has been written then.
+        """
+        self._kernel.combine(self._modulus, matrix, rows, out)
+
+    def project(self, matrix: ReadableBuffer, row: ReadableBuffer, out: WritableBuffer) -> None:
+        """Write ``out[i] = sum over j of matrix[i][j] * row[j]``.
+
+        Args:
+            matrix: public; ``len(out) * len(row)`` bytes, line by line.
+            row: secret; 1 byte or more.
+            out: 1 byte or more; overwritten whole, and no part of the row or the matrix.
+
+        Raises:
+            ValueError: shapes do not fit or buffers overlap; nothing has been written then.
+        """
+        self._kernel.project(self._modulus, matrix, row, out)
+
+
+def _require_elements(numbers: Sequence[int]) -> None:
+    if not all(0 <= number <= 255 for number in numbers):
+        raise ParameterError("an element must be 0 to 255")
+
+
+@lru_cache(maxsize=64)
+def _require_irreducible(modulus: int) -> None:
+    if not 0x100 <= modulus <= 0x1FF:
+        raise PolynomialError("the field polynomial must be of degree 8")
