@@ -28,6 +28,9 @@ TERM = b"\x01\x00"
 DOUBLED = b"\x00\xff"
 TOTAL = b"\x02\x00"
 
+# For one length and modulus: all bits of a lane but the top one, the top bits, the low byte of the modulus.
+_Masks = tuple[int, int, int]
+
 # Bytes that are worked on at once: a handful of integers of this size stay in the first-level cache (measured: the
 # fastest from 4 KiB to 256 KiB on x86-64). Lanes must be a power of two for ``_fold``.
 BLOCK = 1 << 14
@@ -49,22 +52,22 @@ def combine(
     """
     sources, targets = [_view(row) for row in rows], [_view(target) for target in out]
     _check(modulus, sources, targets)
-    length = len(sources[0])
-    if any(len(view) != length for view in sources + targets):
+    if len(set(map(len, sources + targets))) > 1:
         raise ValueError("rows and outs must all have the same length")
-    if len(matrix) != len(targets) or any(len(scalars) != len(sources) for scalars in matrix):
+    if len(matrix) != len(targets) or {len(scalars) for scalars in matrix} != {len(sources)}:
         raise ValueError("the matrix must have one line for each out and one column for each row")
     columns = list(zip(*matrix, strict=True))
     # Doublings are the larger part of the work. Either each row is doubled and shared by all outs (splitting), or each
     # out is built by Horner's rule (recovery); the same XORs are done in both.
-    by_rows = sum(max(column).bit_length() for column in columns)
-    by_outs = sum(max(scalars).bit_length() for scalars in matrix)
-    method = _double_rows if by_rows <= by_outs else _double_outs
+    share_powers = sum(map(max, columns)) <= sum(map(max, matrix))
+    length = len(sources[0])
     for start in range(0, length, BLOCK):
         stop = min(start + BLOCK, length)
-        totals = method(modulus, matrix, [view[start:stop] for view in sources], stop - start)
+        masks = _masks(modulus, stop - start)
+        blocks = [view[start:stop] for view in sources]
+        totals = _double_rows(columns, blocks, masks) if share_powers else _double_outs(matrix, blocks, masks)
         for target, total in zip(targets, totals, strict=True):
-            target[start:stop] = memoryview(total.to_bytes(stop - start + 2, "big"))[2:]
+            target[start:stop] = total.to_bytes(stop - start + 2, "big")[2:]
 
 
 def project(modulus: int, matrix: ReadableBuffer, row: ReadableBuffer, out: WritableBuffer) -> None:
@@ -100,41 +103,39 @@ def project(modulus: int, matrix: ReadableBuffer, row: ReadableBuffer, out: Writ
         for bit in range(8):
             # One mask for each bit of the public scalars; its guard is ff ff and keeps TERM.
             sums[bit] ^= terms & ((public >> bit & ones) * 0xFF)
-    total = int.from_bytes(DOUBLED + bytes(lanes), "big")
+    total, masks = int.from_bytes(DOUBLED + bytes(lanes), "big"), _masks(modulus, lanes)
     for part in reversed(sums):
-        total = _double(total, modulus, lanes) ^ part
-    target[:] = memoryview(_fold(total, columns, height).to_bytes(height + 2, "big"))[2:]
+        total = _double(total, *masks) ^ part
+    target[:] = _fold(total, columns, height).to_bytes(height + 2, "big")[2:]
 
 
-def _double_rows(modulus: int, matrix: Sequence[bytes], rows: Sequence[memoryview], lanes: int) -> list[int]:
-    totals = [int.from_bytes(TOTAL + bytes(lanes), "big")] * len(matrix)
-    for row, column in zip(rows, zip(*matrix, strict=True), strict=True):
+def _double_rows(columns: Sequence[tuple[int, ...]], rows: Sequence[memoryview], masks: _Masks) -> list[int]:
+    totals = [int.from_bytes(TOTAL + bytes(len(rows[0])), "big")] * len(columns[0])
+    for row, column in zip(rows, columns, strict=True):
         power = int.from_bytes(DOUBLED + row, "big")
         for bit in range(max(column).bit_length()):
             if bit:
-                power = _double(power, modulus, lanes)
+                power = _double(power, *masks)
             for i, scalar in enumerate(column):
                 if scalar >> bit & 1:  # public: the matrix
                     totals[i] ^= power
     return totals
 
 
-def _double_outs(modulus: int, matrix: Sequence[bytes], rows: Sequence[memoryview], lanes: int) -> list[int]:
+def _double_outs(lines: Sequence[bytes], rows: Sequence[memoryview], masks: _Masks) -> list[int]:
     terms = [int.from_bytes(TERM + row, "big") for row in rows]
-    totals = []
-    for scalars in matrix:
-        total = int.from_bytes(DOUBLED + bytes(lanes), "big")
-        for bit in reversed(range(max(scalars).bit_length())):
-            for term, scalar in zip(terms, scalars, strict=True):
+    totals = [int.from_bytes(DOUBLED + bytes(len(rows[0])), "big")] * len(lines)
+    for i, line in enumerate(lines):
+        for bit in reversed(range(max(line).bit_length())):
+            for scalar, term in zip(line, terms, strict=True):
                 if scalar >> bit & 1:  # public: the matrix
-                    total ^= term
+                    totals[i] ^= term
             if bit:
-                total = _double(total, modulus, lanes)
-        totals.append(total)
+                totals[i] = _double(totals[i], *masks)
     return totals
 
 
-def _double(value: int, modulus: int, lanes: int) -> int:
+def _double(value: int, low: int, top: int, m: int) -> int:
     """Multiply every lane by x; a guard of DOUBLED stays, whatever else lies above it.
 
     Each lane loses its top bit and, where that was 1, gains m, the low byte of the modulus. The multiplication by m
@@ -142,14 +143,14 @@ def _double(value: int, modulus: int, lanes: int) -> int:
     begins at bit 15. In the guard lane ``low`` is ~m >> 1. So the guard ff becomes ~m & fe on the left and m on the
     right: an irreducible modulus has bit 0 and m is not ff, so neither is zero, and their XOR is ff again.
     """
-    low, top = _masks(modulus, lanes)
-    return ((value & low) << 1) ^ ((value & top) * (modulus & 0xFF) >> 7)
+    return ((value & low) << 1) ^ ((value & top) * m >> 7)
 
 
 @lru_cache(maxsize=32)
-def _masks(modulus: int, lanes: int) -> tuple[int, int]:
-    guard = bytes([~modulus >> 1 & 0x7F])
-    return int.from_bytes(guard + b"\x7f" * lanes, "big"), int.from_bytes(b"\x80" * (lanes + 1), "big")
+def _masks(modulus: int, lanes: int) -> _Masks:
+    m = modulus & 0xFF
+    low = bytes([~m >> 1 & 0x7F]) + b"\x7f" * lanes
+    return int.from_bytes(low, "big"), int.from_bytes(b"\x80" * (lanes + 1), "big"), m
 
 
 def _fold(value: int, columns: int, height: int) -> int:
@@ -181,7 +182,7 @@ def _check(modulus: int, sources: Sequence[memoryview], targets: Sequence[memory
     if any(target.readonly for target in targets):
         raise ValueError("an out must be writable")
     owners = {id(target.obj) for target in targets}
-    if len(owners) < len(targets) or not owners.isdisjoint(id(source.obj) for source in sources):
+    if len(owners) < len(targets) or owners & {id(source.obj) for source in sources}:
         _check_overlap(sources, targets)
 
 
