@@ -10,10 +10,11 @@ from __future__ import annotations
 
 import re
 from datetime import UTC, datetime
+from typing import Final
 
 from shares.errors import ParameterError
 
-_FORM = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9]{2}:[0-9]{2}:[0-9]{2}Z")
+_FORM: Final = re.compile(r"([0-9]{4})-([0-9]{2})-([0-9]{2})T([0-9]{2}):([0-9]{2}):([0-9]{2})Z")
 
 
 def now() -> datetime:
@@ -61,12 +62,11 @@ def from_text(text: str) -> datetime:
     >>> from_text("2026-12-01T07:00:00Z")
     datetime.datetime(2026, 12, 1, 7, 0, tzinfo=datetime.timezone.utc)
     """
-    moment = None
-    if _FORM.fullmatch(text):
-        try:
-            moment = datetime.fromisoformat(text[:-1]).replace(tzinfo=UTC)
-        except ValueError:
-            moment = None
-    if moment is None:
-        raise ParameterError("a time must exist and be written in UTC to the second, like 2026-12-01T07:00:00Z")
-    return moment
+    form = _FORM.fullmatch(text)
+    if form is None:
+        raise ParameterError("a time must be written in UTC and to the second, like 2026-12-01T07:00:00Z")
+    year, month, day, hour, minute, second = map(int, form.groups())
+    try:
+        return datetime(year, month, day, hour, minute, second, tzinfo=UTC)
+    except ValueError as error:
+        raise ParameterError("a time must be one that the calendar and the clock have") from error

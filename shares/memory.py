@@ -48,7 +48,9 @@ class Secret:
 
     Raises:
         ParameterError: a negative length.
-        MemoryError: the system gives no memory.
+        OSError: the system gives no memory. A refused lock is no error: see ``lock_refused``.
+
+    Source: style guide of this project, "Keeping secrets out of the light"; mlock(2), madvise(2).
 
     >>> with Secret.of(b"not a real key") as key:
     ...     print(key, len(key))
@@ -69,7 +71,14 @@ class Secret:
 
     @classmethod
     def of(cls, data: bytes | bytearray | memoryview) -> Self:
-        """Copy bytes in; the caller's own copy remains the caller's to wipe."""
+        """Make a secret of given bytes; the caller's own copy remains the caller's to wipe.
+
+        Args:
+            data: the bytes, 0 or more; copied, not kept.
+
+        Returns:
+            A new secret of the same length.
+        """
         with memoryview(data) as given, given.cast("B") as octets:
             secret = cls(len(octets))
             with secret.view() as view:
@@ -80,10 +89,13 @@ class Secret:
         return self._length
 
     def view(self) -> memoryview:
-        """Open a writable window onto exactly the secret bytes; release it (``with secret.view() as ...``).
+        """Open a writable window onto exactly the secret bytes; use it as ``with secret.view() as octets``.
+
+        Returns:
+            A memoryview of ``len(secret)`` bytes. After ``close()`` it shows zeros: do not keep it.
 
         Raises:
-            ValueError: the secret is closed, or this process is a fork of the one that made it.
+            ValueError: the secret is closed, or this process was forked from the one that made it.
         """
         mapping = _open.get(self._number)
         if mapping is None:
@@ -169,8 +181,14 @@ def locking() -> Locking:
 
 
 def lock_refused() -> str | None:
-    """Say why some secret of this process could not be locked, or ``None`` if all could; to be shown once."""
-    return _refused
+    """Say why some secret of this process could not be locked into RAM.
+
+    Returns:
+        One sentence without a final stop, worth showing once; ``None`` when every lock was granted.
+    """
+    if _refused is None:
+        return None
+    return f"memory could not be locked ({_refused}), so secrets may reach swap; raise the limit (ulimit -l)"
 
 
 def _map(length: int) -> mmap.mmap:
