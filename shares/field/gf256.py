@@ -3,7 +3,7 @@
 For: everything that is shared is shared byte by byte over this field.
 Source: R. Lidl, H. Niederreiter, "Introduction to Finite Fields and their Applications", chapter 3 (irreducibles);
     FIPS 197, section 4.2 (an element is a byte, bit i the coefficient of x^i; multiplication by doubling).
-May import: errors; field (the kernel in use), polynomial.
+May import: errors; field (the kernel in use), irreducible, polynomial.
 Secret: the rows and outs of ``combine`` and ``project``, which are computed by the kernel alone.
     Public: the modulus, evaluation points, weights and every other number here; their arithmetic may take any time.
 Does not: multiply two secrets or invert one. Nothing in this package needs it. It uses no tables.
@@ -12,11 +12,13 @@ Does not: multiply two secrets or invert one. Nothing in this package needs it. 
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from functools import lru_cache
+from functools import cache
 
 from shares.errors import DuplicatePointError, ParameterError, PolynomialError
 from shares.field import Kernel, ReadableBuffer, WritableBuffer
 from shares.field import kernel as kernel_in_use
+from shares.field.irreducible import require_irreducible
+from shares.field.polynomial import MAX_DEGREE, Polynomial
 
 DEFAULT_MODULUS = 0x11B
 
@@ -32,9 +34,11 @@ class Field:
         PolynomialError: the modulus is of another degree, or reducible (the message names the factors).
         KernelUnavailableError: the demanded kernel cannot be loaded.
 
-    >>> field = Field(0x11b)
-    >>> hex(field.multiply(0x57, 0x83))  # FIPS 197, section 4.2
+    >>> hex(Field(0x11b).multiply(0x57, 0x83))  # FIPS 197, section 4.2
     '0xc1'
+    >>> Field(0x101)
+    Traceback (most recent call last):
+    shares.errors.PolynomialError: x^8 + 1 is not irreducible: over GF(2) it is (x + 1)^8
     """
 
     __slots__ = ("_kernel", "_modulus")
@@ -209,7 +213,8 @@ def _require_elements(numbers: Sequence[int]) -> None:
         raise ParameterError("an element must be 0 to 255")
 
 
-@lru_cache(maxsize=64)
+@cache
 def _require_irreducible(modulus: int) -> None:
-    if not 0x100 <= modulus <= 0x1FF:
+    if not 0 <= modulus < 2 << MAX_DEGREE:
         raise PolynomialError("the field polynomial must be of degree 8")
+    require_irreducible(Polynomial.from_number(modulus), degree=8)
