@@ -78,7 +78,11 @@ class Field:
 
         Returns:
             The product, 0 to 255.
+
+        Raises:
+            ParameterError: a or b is no element.
         """
+        _require_elements(a | b)
         product = 0
         while b:
             if b & 1:
@@ -98,7 +102,13 @@ class Field:
 
         Returns:
             The power, 0 to 255.
+
+        Raises:
+            ParameterError: a is no element, or the exponent is negative.
         """
+        _require_elements(a)
+        if exponent < 0:
+            raise ParameterError("an exponent must be 0 or more")
         result = 1
         while exponent:
             if exponent & 1:
@@ -119,8 +129,8 @@ class Field:
         Raises:
             ParameterError: a is 0 or no element.
         """
-        if not 1 <= a <= 255:
-            raise ParameterError("only 1 to 255 have an inverse")
+        if a == 0:
+            raise ParameterError("0 has no inverse")
         return self.power(a, 254)
 
     def powers(self, x: int, count: int) -> bytes:
@@ -133,6 +143,9 @@ class Field:
         Returns:
             ``count`` bytes.
 
+        Raises:
+            ParameterError: x is no element.
+
         >>> Field().powers(2, 9).hex()
         '01020408102040801b'
         """
@@ -143,7 +156,7 @@ class Field:
                 yield power
                 power = self.multiply(power, x)
 
-        _require_elements([x])
+        _require_elements(x)
         return bytes(chain())
 
     def interpolation_weights(self, xs: Sequence[int], *, at: int = 0) -> bytes:
@@ -167,7 +180,7 @@ class Field:
         """
         if not xs or not all(1 <= x <= 255 for x in xs):
             raise ParameterError("evaluation points must be 1 to 255, at least one of them")
-        _require_elements([at])
+        _require_elements(at)
         if len(set(xs)) < len(xs):
             raise DuplicatePointError("two evaluation points are the same")
         weights = bytearray()
@@ -208,8 +221,8 @@ class Field:
         self._kernel.project(self._modulus, matrix, row, out)
 
 
-def _require_elements(numbers: Sequence[int]) -> None:
-    if not all(0 <= number <= 255 for number in numbers):
+def _require_elements(bits: int) -> None:
+    if bits & ~0xFF:
         raise ParameterError("an element must be 0 to 255")
 
 

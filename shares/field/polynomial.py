@@ -182,6 +182,8 @@ class Polynomial:
 
     def power(self, exponent: int, modulus: Polynomial) -> Polynomial:
         """Raise to a power of 0 or more, modulo another polynomial."""
+        if exponent < 0:
+            raise ParameterError("an exponent must be 0 or more")
         result = Polynomial(self.p, (1,)) % modulus
         for bit in f"{exponent:b}":
             result = result * result % modulus

@@ -1,0 +1,136 @@
+"""The command ``shares``: finds the command asked for, and turns every refusal into one line and an exit code.
+
+Source: the exit codes are this project's own (shares/errors.py, README).
+May import: shares.errors, shares.memory, shares.field, shares.cli.output; a command's module only when it is asked for.
+Secret: nothing. Public: arguments, messages.
+Does not: do any command's work. Before anything else it turns core dumps off.
+"""
+
+from __future__ import annotations
+
+import importlib
+import signal
+import sys
+from types import FrameType
+from typing import NoReturn
+
+import click
+
+import shares
+from shares.cli.output import print_error
+from shares.errors import ParameterError, SharesError
+from shares.memory import protect_process
+
+# Name -> (module, what it is for), in the order of a key's life. Modules are imported late: `--version` and `--help`
+# stay quick.
+COMMANDS = {
+    "split": ("split", "Split a secret into shares, and check that they recover it."),
+    "verify": ("verify", "Check each share alone, without any secret."),
+    "recover": ("recover", "Recover a secret from enough shares."),
+    "show": ("show", "Show the public facts of a share or record."),
+    "polynomial": ("polynomial", "List and check field polynomials."),
+    "selftest": ("selftest", "Test this installation and this machine."),
+    "completion": ("completion", "Print the completion script for a shell."),
+}
+
+EXIT_CODES = """\b
+Exit codes: 0 done, 1 failed, 2 usage, 3 not enough shares, 4 verification failed,
+5 file or I/O, 6 audit found something due, 7 the command that was fed failed."""
+
+
+class _Commands(click.Group):
+    """A group whose commands are imported when they are used."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        return list(COMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+        if cmd_name not in COMMANDS:
+            return None
+        module = importlib.import_module(f"shares.cli.{COMMANDS[cmd_name][0]}")
+        command: click.Command = module.command
+        return command
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        with formatter.section("Commands"):
+            formatter.write_dl([(name, what) for name, (_, what) in COMMANDS.items()])
+
+
+def _print_version(ctx: click.Context, _: click.Parameter, wanted: bool) -> None:
+    if wanted and not ctx.resilient_parsing:
+        from shares.field import kernel
+
+        running = kernel()
+        click.echo(f"shares {shares.__version__}, kernel {running.name} ({running.path})")
+        ctx.exit()
+
+
+@click.group(
+    cls=_Commands, epilog=EXIT_CODES, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100}
+)
+@click.option(
+    "--version",
+    is_flag=True,
+    expose_value=False,
+    is_eager=True,
+    callback=_print_version,
+    help="Show version and kernel.",
+)
+def commands() -> None:
+    """Keep recovery keys recoverable: split, verify, recover.
+
+    \b
+    Example:
+      shares split key.pem --need 3 --label "Tide archive root" \\
+        --custodian north-pier --custodian south-pier --custodian light-house \\
+        --custodian registrar --custodian dry-dock \\
+        --set tide-archive --deliver /media/stick --plain
+    """
+
+
+def run() -> NoReturn:
+    """Run the command line and leave with its exit code; never with a traceback."""
+    protect_process()
+    for number in (signal.SIGTERM, signal.SIGHUP):
+        signal.signal(number, _stop)
+    arguments = sys.argv[1:]
+    before_command = arguments[: arguments.index("--")] if "--" in arguments else arguments
+    sys.exit(_run(arguments, as_json="--json" in before_command))
+
+
+def _stop(number: int, _: FrameType | None) -> NoReturn:
+    # An exception, so that what has been written is undone and secrets are wiped on the way out.
+    raise KeyboardInterrupt(number)
+
+
+def _run(arguments: list[str], *, as_json: bool) -> int:
+    problem: SharesError
+    try:
+        code = commands.main(arguments, prog_name="shares", standalone_mode=False)
+        sys.stdout.flush()
+        return code if isinstance(code, int) else 0
+    except SharesError as error:
+        problem = error
+    except click.exceptions.NoArgsIsHelpError as error:
+        click.echo(error.format_message(), err=True)
+        return ParameterError.exit_code
+    except click.ClickException as error:
+        problem = ParameterError(error.format_message().rstrip("."), hint="see --help")
+    except (click.Abort, KeyboardInterrupt):
+        problem = SharesError("stopped before it was done", hint="nothing was left half written")
+    except BrokenPipeError:
+        # Whoever read the output has gone; there is nobody to tell.
+        return 1
+    except OSError as error:
+        problem = SharesError(f"the system refused: {error.strerror or type(error).__name__}")
+    except Exception as error:  # noqa: BLE001 - law 7: never a traceback; the text is withheld, as it may hold anything
+        place = error.__traceback__
+        while place and place.tb_next:
+            place = place.tb_next
+        where = f"{place.tb_frame.f_globals.get('__name__')}:{place.tb_lineno}" if place else "unknown place"
+        problem = SharesError(
+            f"a fault in this program: {type(error).__name__} at {where}",
+            hint="please report it; no secret is in this line",
+        )
+    print_error(problem, as_json=as_json)
+    return problem.exit_code

@@ -1,0 +1,78 @@
+"""How commands speak: results on standard output, talk on standard error, JSON where it is asked for.
+
+Source: none.
+May import: shares.errors.
+Secret: nothing. Public: whatever is printed.
+Does not: decide exit codes; errors carry theirs.
+"""
+
+from __future__ import annotations
+
+import json
+import sys
+import textwrap
+import time
+from collections.abc import Callable, Iterable
+from typing import Any
+
+import click
+
+from shares.errors import CommandFailedError, SharesError
+
+json_option = click.option("--json", "as_json", is_flag=True, help="Print the result as one JSON object.")
+
+
+def print_result(members: dict[str, Any], lines: Iterable[str], *, as_json: bool, aside: bool = False) -> None:
+    """Print a result: one JSON object, or calm lines for people.
+
+    Args:
+        members: the JSON object.
+        lines: the same for people.
+        as_json: which of the two.
+        aside: put the lines on standard error, because standard output is a fed command's.
+    """
+    if as_json:
+        click.echo(json.dumps(members, indent=2, ensure_ascii=False))
+    else:
+        for line in lines:
+            click.echo(_printable(line), err=aside)
+
+
+def prose(text: str) -> list[str]:
+    """Break a sentence for people into lines of at most 100 characters."""
+    return textwrap.wrap(text, 100, break_long_words=False, break_on_hyphens=False)
+
+
+def warn(line: str) -> None:
+    """Print a caution to standard error."""
+    click.echo(_printable(f"Caution: {line}"), err=True)
+
+
+def print_error(error: SharesError, *, as_json: bool) -> None:
+    """Print a refusal: what, where, what next; one line on standard error, or JSON on standard output."""
+    if as_json:
+        told: dict[str, Any] = {"code": error.code, "what": error.what, "where": error.where, "hint": error.hint}
+        if isinstance(error, CommandFailedError):
+            told["status"] = error.status
+        click.echo(json.dumps({"done": False, "exit": error.exit_code, "error": told}, indent=2, ensure_ascii=False))
+    else:
+        click.echo(_printable(f"shares: {error}"), err=True)
+
+
+def _printable(line: str) -> str:
+    """Replace what could steer a terminal: labels and file names come from others."""
+    return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in line)
+
+
+def progress(what: str) -> Callable[[int, int], None]:
+    """Return a callback that shows progress on a terminal once the work has taken two seconds."""
+    start = time.monotonic()
+
+    def show(done: int, total: int) -> None:
+        spent = time.monotonic() - start
+        if spent > 2 and sys.stderr.isatty():
+            left = spent / max(done, 1) * (total - done)
+            end = "\r" if done + 1 < total else "\n"
+            click.echo(f"{what}: {done + 1:,} of {total:,}, about {left:.0f} s left   {end}", err=True, nl=False)
+
+    return show

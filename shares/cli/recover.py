@@ -1,0 +1,114 @@
+"""``shares recover``."""
+
+from __future__ import annotations
+
+import os
+import sys
+from pathlib import Path
+
+import click
+
+from shares.cli.output import json_option, print_result, prose, warn
+from shares.custody.deliver import to_command, to_file
+from shares.custody.presented import Status, load_record, load_shares
+from shares.custody.recover import Recovery, recover
+from shares.errors import ParameterError, StorageError
+
+EXPOSED = (
+    "this machine has now held the secret and the shares used. "
+    "Decide what becomes of both: return, replace by a date, or destroy."
+)
+
+
+class _FeedsCommand(click.Command):
+    """Takes what follows ``--`` as a command and its arguments, never as shares."""
+
+    def parse_args(self, ctx: click.Context, args: list[str]) -> list[str]:
+        if "--" in args:
+            at = args.index("--")
+            ctx.meta["command"] = args[at + 1 :]
+            args = args[:at]
+        return super().parse_args(ctx, args)
+
+    def collect_usage_pieces(self, ctx: click.Context) -> list[str]:
+        return [*super().collect_usage_pieces(ctx), "[-- COMMAND ARG...]"]
+
+
+@click.command(cls=_FeedsCommand)
+@click.argument("files", metavar="SHARE...", nargs=-1, required=True)
+@click.option(
+    "--record", "record_file", metavar="R", help="The set's public record: tells bad shares apart beforehand."
+)
+@click.option(
+    "--to",
+    "target",
+    metavar="FILE",
+    type=click.Path(path_type=Path),
+    help="Write the secret to this new file, mode 0600.",
+)
+@click.option("--check", is_flag=True, help="Only prove that the shares recover the secret; write it nowhere.")
+@json_option
+@click.pass_context
+def command(
+    ctx: click.Context, files: tuple[str, ...], record_file: str | None, target: Path | None, check: bool, as_json: bool
+) -> None:
+    """Recover the secret from enough SHAREs, check it against the commitment, and only then let it go.
+
+    It goes to a new file, to the standard input of COMMAND (run without a shell), or nowhere. It is never printed.
+    What COMMAND prints is the output then (with --json it goes to standard error), and its failure gives exit code 7.
+    Bad shares are named; with more shares than needed it still recovers, searching at most 20,000 quorums.
+
+    \b
+    Examples:
+      shares recover north-pier.share.json light-house.share.json registrar.share.json --to key.pem
+      shares recover *.share.json --record record.json --check
+      shares recover *.share.json -- openssl pkey -pubout
+    """
+    fed: list[str] | None = ctx.meta.get("command")
+    if (target is not None) + check + (fed is not None) != 1 or fed == []:
+        raise ParameterError("give exactly one of --to FILE, --check, or -- COMMAND", hint="see --help")
+    if target is not None and os.path.lexists(target):
+        raise StorageError(
+            "exists already and is never overwritten", where=os.fspath(target), hint="choose another name"
+        )
+    record = load_record(record_file) if record_file else None
+    recovery = recover(load_shares(files), record)
+    if not as_json:
+        for finding in recovery.findings:
+            if finding.status is not Status.INTACT:
+                warn(f"{finding.source} is {finding.status}: {finding.reason}.")
+    with recovery.secret as secret:
+        if target is not None:
+            to_file(secret, target)
+        elif fed:
+            to_command(secret, fed, output=sys.stderr.fileno() if as_json else None)
+    went = f"written to {target}" if target is not None else f"given to {fed[0]}" if fed else "written nowhere"
+    against = (
+        f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"
+    )
+    print_result(_members(recovery, went, against), _lines(recovery, went, against), as_json=as_json, aside=bool(fed))
+
+
+def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
+    share = recovery.share
+    return {
+        "done": True,
+        "set": share.set.hex(),
+        "epoch": share.epoch,
+        "label": share.label,
+        "used": list(recovery.used),
+        "checked_against": against,
+        "secret": went,
+        "shares": [
+            {"file": f.source, "custodian": f.custodian, "status": f.status.value, "reason": f.reason}
+            for f in recovery.findings
+        ],
+    }
+
+
+def _lines(recovery: Recovery, went: str, against: str) -> list[str]:
+    return [
+        f"Recovered{f': {recovery.share.label}' if recovery.share.label else ''}, from {', '.join(recovery.used)}.",
+        f"Checked against {against}; the secret was {went}.",
+        *prose(f"Next: {EXPOSED}"),
+    ]

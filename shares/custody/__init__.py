@@ -1,0 +1,1 @@
+"""What is done with shares: split, hand over, verify, recover. Knows custodians and files, not terminals."""

@@ -1,0 +1,69 @@
+"""Deliver a recovered secret: to a new private file, or to one command's standard input. Never to a terminal.
+
+Source: execve(2), pipe(2); PCI PIN 21-1 by way of trade practice: recovery does not print a key.
+May import: shares.errors, shares.memory, shares.storage.
+Secret: the secret. Public: the path or the command, and how the command ended.
+Does not: keep the secret, or know what the command does with it.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import subprocess
+from collections.abc import Sequence
+from pathlib import Path
+
+from shares.errors import CommandFailedError, StorageError
+from shares.memory import Secret
+from shares.storage import write_new
+
+
+def to_file(secret: Secret, path: Path) -> None:
+    """Write the secret to a new file of mode 0600.
+
+    Raises:
+        StorageError: the file exists or cannot be written.
+    """
+    with secret.view() as view:
+        write_new(path, view, secret=True)
+
+
+def to_command(secret: Secret, command: Sequence[str], *, output: int | None = None) -> None:
+    """Run a command without a shell and give it the secret on its standard input.
+
+    Args:
+        secret: written whole, then the input ends. Nothing is added, no line end either.
+        command: the program and its arguments, public.
+        output: descriptor that the command's output goes to; this process's own standard output by default.
+
+    Raises:
+        StorageError: the command cannot be started.
+        CommandFailedError: it ended with another code than 0, or by a signal.
+    """
+    name = command[0]
+    try:
+        process = subprocess.Popen(command, stdin=subprocess.PIPE, stdout=output, bufsize=0)  # noqa: S603 - the operator's own words
+    except OSError as error:
+        reason = error.strerror or "it cannot be started"
+    else:
+        reason = ""
+    if reason:
+        raise StorageError(
+            f"the command was not started: {reason}", where=name, hint="check its name and that it may run"
+        )
+    with process:
+        pipe = process.stdin
+        if pipe is not None:
+            # A command may have read enough and closed its end; its exit code says whether it is content.
+            with contextlib.suppress(BrokenPipeError), pipe, secret.view() as view:
+                sent = 0
+                while sent < len(view):
+                    with view[sent:] as rest:
+                        sent += os.write(pipe.fileno(), rest)
+        status = process.wait()
+    if status:
+        how = f"ended with code {status}" if status > 0 else f"was ended by signal {-status}"
+        raise CommandFailedError(
+            f"the command was given the secret and {how}", status=status, where=name, hint="see what it said above"
+        )

@@ -1,0 +1,130 @@
+"""Split a secret along a rule into shares and their public record, in memory.
+
+Source: Shamir 1979; FORMAT.md, sec. 2 to 6.
+May import: shares.errors, shares.memory, shares.clock, shares.field, shares.sharing, shares.documents,
+shares.custody.payload.
+Secret: the secret, the payload, every row and coefficient. Public: the record.
+Does not: write files; ``custody.handover`` does, and checks what it wrote.
+"""
+
+from __future__ import annotations
+
+import secrets
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import datetime
+
+from shares import clock
+from shares.custody.payload import DEFAULT_PAD, commitment, make_payload
+from shares.documents.base import MAX_FILE
+from shares.documents.members import check_name, check_text
+from shares.documents.record import Custodian, Record
+from shares.documents.share import Share
+from shares.errors import ParameterError
+from shares.field.gf256 import Field
+from shares.memory import Secret
+from shares.sharing.consistency import check_matrix, checks_of
+from shares.sharing.rule import Rule, deal
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Dealt:
+    """One dealing: the public record, and the secret shares in the record's order."""
+
+    record: Record
+    shares: tuple[Share, ...]
+
+    def close(self) -> None:
+        """Wipe the shares."""
+        for share in self.shares:
+            share.close()
+
+
+def flat_rule(need: int, custodians: Sequence[str]) -> Rule:
+    """Return the rule 'any ``need`` of ``custodians``', after checking the names.
+
+    Raises:
+        ParameterError: a name that may not be, a name twice (case does not count), or a threshold out of range.
+    """
+    if len({name.casefold() for name in custodians}) != len(custodians):
+        raise ParameterError("two custodians have the same name (upper and lower case do not differ)")
+    return Rule(need, tuple(check_name(name) for name in custodians))
+
+
+def split(
+    secret: Secret,
+    rule: Rule,
+    *,
+    label: str,
+    field: Field | None = None,
+    pad: int = DEFAULT_PAD,
+    created: datetime | None = None,
+) -> Dealt:
+    """Split ``secret`` so that exactly the quorums of ``rule`` recover it.
+
+    Args:
+        secret: 1 to 65,536 bytes. The caller keeps and wipes it.
+        rule: who can recover.
+        label: what the secret is, for people; public, 1 to 500 characters.
+        field: GF(2^8) on a chosen polynomial; x^8 + x^4 + x^3 + x + 1 by default.
+        pad: bytes to a multiple of which the secret is filled, 1 to 4,096.
+        created: the time to write into the record, UTC to the second; now by default.
+
+    Returns:
+        The record and one share for each custodian. Wipe it with ``close()``.
+
+    Raises:
+        ParameterError: secret, label, names or pad out of range.
+
+    Source: Shamir 1979, sec. 2; FORMAT.md.
+
+    >>> rule = flat_rule(2, ["north-pier", "south-pier", "light-house"])
+    >>> dealt = split(Secret.of(b"not a real key"), rule, label="Tide archive")
+    >>> [share.custodian for share in dealt.shares]
+    ['north-pier', 'south-pier', 'light-house']
+    """
+    check_text(label)
+    field = Field() if field is None else field
+    for name in rule.paths():
+        check_name(name)
+    with make_payload(field, secret, pad=pad) as payload:
+        largest = max(len(paths) for paths in rule.paths().values())
+        if largest * len(payload) * 4 // 3 > MAX_FILE * 7 // 8:
+            raise ParameterError(
+                "a custodian's share would be larger than 1 MiB",
+                hint="encrypt the secret with a fresh key and split the key",
+            )
+        return _deal(payload, rule, label, field, created or clock.now())
+
+
+def _deal(payload: Secret, rule: Rule, label: str, field: Field, created: datetime) -> Dealt:
+    set_id = secrets.token_bytes(16)
+    secret_commitment = commitment(set_id, payload)
+    dealing = deal(field, rule, payload)
+    shares = [
+        Share.of(
+            set_id=set_id, epoch=1, custodian=name, points=points, field=field, secret_commitment=secret_commitment
+        )
+        for name, points in dealing.points.items()
+    ]
+    commitments = [share.commitment() for share in shares]
+    # Only now, with every share committed to, is R fixed: a dealer cannot fit rows to it (FORMAT.md, sec. 6).
+    matrix = check_matrix(set_id, 1, field, commitments, len(payload))
+    record = Record.of(
+        set_id=set_id,
+        epoch=1,
+        label=label,
+        created=created,
+        field=field,
+        row_length=len(payload),
+        rule=rule,
+        custodians=[
+            Custodian(name=share.custodian, share_commitment=share_commitment, attestation_key=share.attestation_key())
+            for share, share_commitment in zip(shares, commitments, strict=True)
+        ],
+        checks=[checks_of(field, matrix, polynomial) for polynomial in dealing.polynomials],
+        secret_commitment=secret_commitment,
+    )
+    dealing.close_polynomials()
+    notes = {"label": label, "rule": rule.words(), "record": record.fingerprint}
+    return Dealt(record, tuple(share.noted(**notes) for share in shares))

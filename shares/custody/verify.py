@@ -1,0 +1,157 @@
+"""Verify shares one by one, without any secret: against the public record, or as far as shares alone allow.
+
+Source: FORMAT.md, sec. 6 and 7.
+May import: shares.errors, shares.field, shares.sharing.consistency, shares.documents, shares.custody.presented.
+Secret: the rows that are looked at. Public: every finding.
+Does not: recover anything, or prove anything about shares it has not been given.
+"""
+
+from __future__ import annotations
+
+import hmac
+from collections import Counter
+from collections.abc import Sequence
+
+from shares.custody.presented import Finding, Presented, Status
+from shares.documents.record import Record
+from shares.documents.share import Share
+from shares.errors import EpochMismatchError, SetMismatchError, VerificationError
+from shares.sharing.consistency import check, expected
+
+
+def verify_share(share: Share, record: Record) -> None:
+    """Check one share against the record: digest, identity, commitment, consistency.
+
+    Raises:
+        SetMismatchError, EpochMismatchError: it belongs to another set or epoch.
+        VerificationError: it is damaged, not in the record, or the dealing is inconsistent.
+
+    Source: FORMAT.md, sec. 7.
+    """
+    (finding,) = examine([Presented(share.custodian, share)], record)
+    if finding.status is Status.INTACT:
+        return
+    kinds = {Status.FOREIGN: SetMismatchError, Status.OTHER_EPOCH: EpochMismatchError}
+    raise kinds.get(finding.status, VerificationError)(f"{finding.status}: {finding.reason}", where=finding.source)
+
+
+def examine(presented: Sequence[Presented], record: Record) -> list[Finding]:
+    """Check each share against the record; one finding for each, in order. Never raises for what a share holds."""
+    examiner = _Examiner(record)
+    return [_examined(one, examiner) for one in presented]
+
+
+def _examined(one: Presented, examiner: _Examiner) -> Finding:
+    if one.share is None:
+        return one.finding(one.status, one.problem)
+    status, reason = examiner.examine(one.share)
+    return one.finding(status, reason)
+
+
+class _Examiner:
+    """A record with what is worked out from it once: the check matrix and each custodian's paths."""
+
+    def __init__(self, record: Record) -> None:
+        self.record = record
+        self.rule = record.rule.to_rule()
+        self.paths = self.rule.paths()
+        self.checks = dict(zip((path for path, _ in self.rule.nodes()), record.checks, strict=True))
+        self.matrix: bytes | None = None
+
+    def examine(self, share: Share) -> tuple[Status, str]:
+        record = self.record
+        if not share.is_whole():
+            return Status.DAMAGED, "its own digest does not fit: the file was damaged or edited"
+        if share.set != record.set:
+            return Status.FOREIGN, f"it is of set {share.set.hex()}, the record of set {record.set.hex()}"
+        if share.epoch != record.epoch:
+            return Status.OTHER_EPOCH, f"it is of epoch {share.epoch}, the record of epoch {record.epoch}"
+        named = record.custodian(share.custodian)
+        if named is None:
+            return Status.UNKNOWN, "the record names no such custodian"
+        if share.commitment() != named.share_commitment:
+            return Status.DAMAGED, "it does not match the record's commitment: it was altered after it was dealt"
+        problem = self._inconsistency(share)
+        if problem:
+            return Status.INCONSISTENT, problem
+        return Status.INTACT, "commitment and consistency check fit the record"
+
+    def _inconsistency(self, share: Share) -> str | None:
+        """Say what of a share that the record commits to contradicts the record: then the dealer is at fault."""
+        record = self.record
+        if share.field.modulus != record.field.modulus:
+            return "it was dealt over another field than the record says"
+        if share.secret_commitment != record.secret_commitment or share.encrypted_file != record.encrypted_file:
+            return "it names another secret than the record"
+        if share.paths != self.paths[share.custodian] or share.row_length != record.row_length:
+            return "its points are not where the record's rule puts them"
+        if share.record is not None and share.record != record.fingerprint:
+            return f"it was dealt with another record, {share.record}"
+        if self.matrix is None:
+            self.matrix = record.check_matrix()
+        for path, row in zip(share.paths, share.rows, strict=True):
+            wanted = expected(record.field, self.checks[path[:-1]], path[-1][1])
+            # public: the check of a row is masked, and what it must be stands in the record.
+            if not hmac.compare_digest(check(record.field, self.matrix, row), wanted):
+                return "its row lies on no polynomial that the record commits to: the dealer was faulty or dishonest"
+        return None
+
+
+def examine_alone(presented: Sequence[Presented]) -> list[Finding]:
+    """Check shares without a record: each one's own digest, and that they agree with one another.
+
+    The largest group of shares of one set and epoch is taken as what the others are compared with; where two are
+    equally large, the one given first.
+    """
+    shares = [one.share for one in presented if one.share is not None and one.share.is_whole()]
+    sets = Counter(share.set for share in shares)
+    common_set = max(sets, key=lambda found: sets[found], default=None)
+    epochs = Counter(share.epoch for share in shares if share.set == common_set)
+    common_epoch = max(epochs, key=lambda found: epochs[found], default=None)
+    group = [share for share in shares if (share.set, share.epoch) == (common_set, common_epoch)]
+    facts = Counter(_common_facts(share) for share in group)
+    common_facts = max(facts, key=lambda found: facts[found], default=None)
+    claims = _claims([share for share in group if _common_facts(share) == common_facts])
+    findings = []
+    for one in presented:
+        share = one.share
+        if share is None:
+            findings.append(one.finding(one.status, one.problem))
+        elif not share.is_whole():
+            findings.append(one.finding(Status.DAMAGED, "its own digest does not fit: the file was damaged or edited"))
+        elif share.set != common_set:
+            findings.append(one.finding(Status.FOREIGN, f"it is of set {share.set.hex()}, the others are not"))
+        elif share.epoch != common_epoch:
+            findings.append(one.finding(Status.OTHER_EPOCH, f"it is of epoch {share.epoch}, the others are not"))
+        elif _common_facts(share) != common_facts:
+            findings.append(one.finding(Status.INCONSISTENT, "it contradicts the others about field, secret or record"))
+        elif _is_contradicted(share, claims):
+            findings.append(
+                one.finding(Status.INCONSISTENT, "another share claims the same place and holds something else")
+            )
+        else:
+            findings.append(one.finding(Status.INTACT, "its own digest fits, and it agrees with the others given"))
+    return findings
+
+
+def _common_facts(share: Share) -> tuple[object, ...]:
+    return (*share.set_key(), share.record)
+
+
+def _claims(shares: Sequence[Share]) -> dict[object, set[object]]:
+    """Map each place, node and custodian to what the shares say of it; honest shares of one dealing say one thing
+    each."""
+    claims: dict[object, set[object]] = {}
+    for share in shares:
+        commitment = share.commitment()
+        for key in (share.custodian, *share.paths):
+            claims.setdefault(key, set()).add(commitment)
+        for path in share.paths:
+            for depth, (need, _) in enumerate(path):
+                claims.setdefault(("node", path[:depth]), set()).add(need)
+    return claims
+
+
+def _is_contradicted(share: Share, claims: dict[object, set[object]]) -> bool:
+    nodes = [("node", path[:depth]) for path in share.paths for depth in range(len(path))]
+    return any(len(claims[key]) > 1 for key in (share.custodian, *share.paths, *nodes))
