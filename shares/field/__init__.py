@@ -2,7 +2,7 @@
 
 For: everything above calls ``kernel()`` and never asks which one answers.
 Source: this project's own rule, README "Kernels".
-May import: errors; ``_kernel`` (C) and ``_lanes`` (portable), each only when it is chosen.
+May import: shares.errors, shares.field._kernel (C), shares.field._lanes (portable); the last two only when chosen.
 Secret: the rows that pass through ``combine`` and ``project``. Public: the choice, the modulus, the matrix, lengths.
 Does not: arithmetic. ``gf256`` is the face of the field; this module says only who computes.
 

@@ -3,7 +3,7 @@
 For: machines without the native kernel. XOR, AND and shifts of a big integer work on all bytes at once.
 Source: lanes within a word: L. Lamport, "Multiple byte processing with full-word instructions", CACM 18(8), 1975.
     Doubling in GF(2^8) is xtime of FIPS 197, section 4.2.1. Horner's rule over the bits of a public scalar.
-May import: field (the types of buffers).
+May import: shares.field (the types of buffers).
 Secret: rows, outs and every lane. Public: modulus, matrix, lengths, and so every loop bound, shift count and branch.
 Does not: promise what Python cannot: integers cannot be wiped, and their time is the interpreter's. It only keeps the
     length of every integer, and with it every loop inside the interpreter, apart from the secret.

@@ -2,7 +2,7 @@
 
 For: codes and designs over small fields that are not prime, such as GF(32).
 Source: R. Lidl, H. Niederreiter, "Introduction to Finite Fields and their Applications", chapter 2.
-May import: errors; irreducible, polynomial.
+May import: shares.errors, shares.field.irreducible, shares.field.polynomial.
 Secret: nothing. Public: everything; time depends on the values, so a secret must never come here.
 Does not: share secrets. That is done over GF(2^8), by the kernel.
 """

@@ -3,7 +3,7 @@
 For: everything that is shared is shared byte by byte over this field.
 Source: R. Lidl, H. Niederreiter, "Introduction to Finite Fields and their Applications", chapter 3 (irreducibles);
     FIPS 197, section 4.2 (an element is a byte, bit i the coefficient of x^i; multiplication by doubling).
-May import: errors; field (the kernel in use), irreducible, polynomial.
+May import: shares.errors, shares.field, shares.field.irreducible, shares.field.polynomial.
 Secret: the rows and outs of ``combine`` and ``project``, which are computed by the kernel alone.
     Public: the modulus, evaluation points, weights and every other number here; their arithmetic may take any time.
 Does not: multiply two secrets or invert one. Nothing in this package needs it. It uses no tables.

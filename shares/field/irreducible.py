@@ -4,7 +4,7 @@ For: every field is made from one, and a wrong choice is refused with its factor
 Source: M. O. Rabin, "Probabilistic algorithms in finite fields", SIAM J. Computing 9(2), 1980 (irreducibility);
     E. R. Berlekamp, "Factoring polynomials over finite fields", Bell System Technical Journal 46, 1967; R. Lidl,
     H. Niederreiter, "Introduction to Finite Fields and their Applications" (Gauss's count, primitive polynomials).
-May import: errors; polynomial.
+May import: shares.errors, shares.field.polynomial.
 Secret: nothing. Public: everything; time depends on the values, so a secret must never come here.
 Does not: handle large degrees or primes. The bounds keep every answer within seconds, whatever is asked.
 """

@@ -2,7 +2,7 @@
 
 For: naming a field by its polynomial, and working out whether the choice is right (``irreducible``).
 Source: R. Lidl, H. Niederreiter, "Introduction to Finite Fields and their Applications", chapter 1.
-May import: errors; prime.
+May import: shares.errors, shares.field.prime.
 Secret: nothing. Public: everything; time depends on the values, so a secret must never come here.
 Does not: read anything of degree above 32 or a prime above 257, so that no input can keep it busy for long.
 """

@@ -4,7 +4,7 @@ For: checks against published examples, scalars in public equations, coefficient
 Source: A. Shamir, "How to share a secret", CACM 22(11), 1979 (interpolation over GF(p)); M. O. Rabin, "Probabilistic
     algorithm for testing primality", J. Number Theory 12, 1980; J. Sorenson, J. Webster, "Strong pseudoprimes to twelve
     prime bases", Math. Comp. 86, 2017 (bases that leave no doubt).
-May import: errors.
+May import: shares.errors.
 Secret: nothing. Public: everything; time depends on the values, so a secret must never come here.
 Does not: share secrets. That is done over GF(2^8), by the kernel.
 """
