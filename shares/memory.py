@@ -10,6 +10,7 @@ hibernation images, or a process killed by a signal (there the kernel clears the
 from __future__ import annotations
 
 import contextlib
+import functools
 import itertools
 import mmap
 import os
@@ -50,7 +51,7 @@ class Secret:
         ParameterError: a negative length.
         OSError: the system gives no memory. A refused lock is no error: see ``lock_refused``.
 
-    Source: style guide of this project, "Keeping secrets out of the light"; mlock(2), madvise(2).
+    Source: mlock(2); madvise(2), MADV_DONTDUMP and MADV_WIPEONFORK.
 
     >>> with Secret.of(b"not a real key") as key:
     ...     print(key, len(key))
@@ -213,6 +214,7 @@ def _lock(mapping: mmap.mmap) -> str | None:
     return os.strerror(ctypes.get_errno()) if refused else None
 
 
+@functools.cache
 def _libc() -> ctypes.CDLL:
     # Imported late: not every command needs a secret, and each should start fast.
     import ctypes
