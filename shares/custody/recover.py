@@ -132,8 +132,8 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
                 final = _final_findings(presented, findings, usable, group, payload)
                 names = tuple(group.shares[i].custodian for i in used)
                 return Recovery(open_payload(payload), group.first, names, tuple(final))
-    # Damaged shares were tried as well, without success: they count no longer, unless nothing else was given.
-    raise _refusal(presented, findings, _groups(whole or usable))
+    # Damaged shares were tried as well, without success: they count no longer.
+    raise _refusal(presented, findings, _groups(whole))
 
 
 def _may_be_used(share: Share, record: Record | None) -> bool:
