@@ -17,9 +17,9 @@ from typing import NoReturn
 import click
 
 import shares
-from shares.cli.output import print_error
+from shares.cli.output import print_error, warn
 from shares.errors import ParameterError, SharesError
-from shares.memory import protect_process
+from shares.memory import lock_refused, protect_process
 
 # Name -> (module, what it is for), in the order of a key's life. Modules are imported late: `--version` and `--help`
 # stay quick.
@@ -108,6 +108,9 @@ def _run(arguments: list[str], *, as_json: bool) -> int:
     try:
         code = commands.main(arguments, prog_name="shares", standalone_mode=False)
         sys.stdout.flush()
+        refused = lock_refused()
+        if refused:
+            warn(f"{refused}.")
         return code if isinstance(code, int) else 0
     except SharesError as error:
         problem = error

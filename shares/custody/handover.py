@@ -1,8 +1,8 @@
 """Hand over a dealing: shares to the delivery folders, then, as the commit point, the record to the set's folder.
 
 Source: design laws 5 and 6 of this project (DEVELOPERS.md): all or nothing, and nothing is called done unchecked.
-May import: shares.errors, shares.storage, shares.documents, shares.sharing.robust, shares.custody.split, .verify,
-.recover.
+May import: shares.errors, shares.storage, shares.documents, shares.sharing.robust, shares.custody.payload, .presented,
+.split, .verify.
 Secret: the share files. Public: the record, the paths.
 Does not: wrap shares; who asks for plain ones has been told that all of them in one folder are the secret.
 """
@@ -16,8 +16,9 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from shares.custody.payload import is_committed
+from shares.custody.presented import Presented, Status
 from shares.custody.split import Dealt
-from shares.custody.verify import verify_share
+from shares.custody.verify import examine
 from shares.documents.base import MAX_FILE
 from shares.documents.record import Record
 from shares.documents.share import Share
@@ -137,8 +138,11 @@ def _prove(record: Record, paths: list[Path], progress: Progress | None) -> tupl
     """Read the shares from disk, verify each, and recover from quorums of them; return (tried, all there are)."""
     shares = [Share.parse(read_back(path, limit=MAX_FILE), where=os.fspath(path)) for path in paths]
     try:
-        for share in shares:
-            verify_share(share, record)
+        for finding in examine([Presented(os.fspath(path), s) for path, s in zip(paths, shares, strict=True)], record):
+            if finding.status is not Status.INTACT:
+                raise VerificationError(
+                    f"a share just written does not verify: {finding.status}, {finding.reason}", where=finding.source
+                )
         points = [point for share in shares for point in share.points()]
         places = [point.path for point in points]
         total = count_quorums(places)
