@@ -23,7 +23,7 @@ FEATURES INLINE void NAMED(tile)(size_t width, uint8_t *const *out, const uint8_
         VECTOR sum[WIDTH][COUNT];
         for (size_t i = 0; i < width; i++) {
             for (size_t v = 0; v < COUNT; v++) {
-                sum[i][v] = NAMED(zero)();
+                sum[i][v] = mode == ADD ? NAMED(load)(out[i] + at + v * sizeof(VECTOR)) : NAMED(zero)();
             }
         }
         for (size_t j = 0; j < plain; j++) {
@@ -48,9 +48,7 @@ FEATURES INLINE void NAMED(tile)(size_t width, uint8_t *const *out, const uint8_
         for (size_t i = 0; i < width; i++) {
             for (size_t v = 0; v < COUNT; v++) {
                 uint8_t *place = out[i] + at + v * sizeof(VECTOR);
-                if (mode == ADD) {
-                    NAMED(store)(place, NAMED(add)(sum[i][v], NAMED(load)(place)));
-                } else if (mode == STREAM) {
+                if (mode == STREAM) {
                     NAMED(stream)(place, sum[i][v]);
                 } else {
                     NAMED(store)(place, sum[i][v]);
@@ -86,3 +84,9 @@ static void NAMED(run)(size_t width, uint8_t *const *out, const uint8_t *const *
     default: NAMED(tile_5)(out, in, factors, in_count, plain, from, to, mode, reduction); break;
     }
 }
+
+#undef PATH
+#undef FEATURES
+#undef VECTOR
+#undef SPLIT
+#undef COUNT
