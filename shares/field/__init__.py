@@ -81,29 +81,25 @@ def kernel(choice: str | None = None) -> Kernel:
     'integers'
     """
     if choice is None:
-        wanted = os.environ.get("SHARES_KERNEL", "")
+        wanted = os.environ.get("SHARES_KERNEL")
         if wanted:
             return kernel(wanted)
-        return _native() or kernel("portable")
+        try:
+            return kernel("native")
+        except KernelUnavailableError:
+            return kernel("portable")
     if choice == "native":
-        found = _native()
-        if found is None:
+        try:
+            from shares.field import _kernel
+        except ImportError as error:
             raise KernelUnavailableError(
-                "the native kernel is not installed",
+                "the native kernel cannot be loaded",
                 where="SHARES_KERNEL",
                 hint="install again with a C compiler, or set SHARES_KERNEL=portable",
-            )
-        return found
+            ) from error
+        return Kernel("native", _kernel.default_path(), _kernel.combine, _kernel.project)
     if choice == "portable":
         from shares.field import _lanes
 
         return Kernel("portable", "integers", _lanes.combine, _lanes.project)
     raise ParameterError("the kernel must be native or portable", where="SHARES_KERNEL")
-
-
-def _native() -> Kernel | None:
-    try:
-        from shares.field import _kernel
-    except ImportError:
-        return None
-    return Kernel("native", _kernel.default_path(), _kernel.combine, _kernel.project)
