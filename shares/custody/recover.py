@@ -10,7 +10,7 @@ Does not: deliver the secret anywhere; ``custody.deliver`` does.
 from __future__ import annotations
 
 import hmac
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from shares.custody.payload import is_committed, open_payload
@@ -28,7 +28,7 @@ from shares.errors import (
 )
 from shares.memory import Secret
 from shares.sharing.consistency import check
-from shares.sharing.robust import MAX_TRIES, agreeing, count_quorums, search
+from shares.sharing.robust import MAX_TRIES, Agreement, agreeing, count_quorums, search
 from shares.sharing.rule import Path, Point
 
 
@@ -38,7 +38,7 @@ class Recovery:
 
     Attributes:
         secret: checked against the commitment; wipe it with ``close()``.
-        share: one of the shares used: says set, epoch, field, label.
+        share: one of the shares used: says set, epoch, field; its label is not proved by anything.
         used: custodians whose shares gave the secret.
         findings: one for each share given, in order; those not intact say why.
     """
@@ -54,15 +54,21 @@ class _Group:
 
     def __init__(self, shares: dict[int, Share]) -> None:
         self.shares = shares
-        self.first = next(iter(shares.values()))
         held = [(i, point) for i, share in shares.items() for point in share.points()]
         self.owners = [i for i, _ in held]
         self.points: list[Point] = [point for _, point in held]
         self.paths: list[Path] = [point.path for point in self.points]
         self.quorums = count_quorums(self.paths)
 
-    def recover(self, record: Record | None) -> tuple[Secret, tuple[int, ...]] | None:
-        """Return the payload that the commitment names and the places used, or None."""
+    @property
+    def first(self) -> Share:
+        """The share given first; what makes a group, all of its shares say alike."""
+        return next(iter(self.shares.values()))
+
+    def recover(self, record: Record | None) -> tuple[Secret, list[tuple[int, Path]]] | None:
+        """Return the payload that the commitment names and the points used, by place and path, or None."""
+        if not self.quorums:
+            return None
         first = self.first
         matrix = record.check_matrix() if record else b""
 
@@ -72,17 +78,18 @@ class _Group:
             # public: with the mask in it, the check of the payload tells nothing; the record holds what it must be.
             return record is None or check(first.field, matrix, payload) == record.checks[0][0]
 
-        found = search(first.field, self.points, judge) if self.quorums else None
+        found = search(first.field, self.points, judge)
         if found is None:
             return None
         payload, quorum = found
-        return payload, tuple(dict.fromkeys(self.owners[i] for i in quorum))
+        return payload, [(self.owners[i], self.paths[i]) for i in quorum]
 
-    def disagreements(self, payload: Secret) -> tuple[set[int], set[int]]:
-        """Return the places of shares that lie on the recovered dealing wholly, and of those that do not."""
-        good, bad = agreeing(self.first.field, self.points, payload)
-        off = {self.owners[i] for i in bad}
-        return {self.owners[i] for i in good} - off, off
+    def agreement(self, payload: Secret, used: list[tuple[int, Path]]) -> Agreement:
+        """Say the places of shares that lie on the recovered dealing wholly, do not, or contradict one another."""
+        held = zip(self.owners, self.paths, strict=True)
+        said = agreeing(self.first.field, self.points, payload, tuple(i for i, one in enumerate(held) if one in used))
+        good, bad, torn = ({self.owners[i] for i in points} for points in said)
+        return Agreement(good - bad - torn, bad, torn - bad)
 
     def shortfall(self) -> tuple[int, int]:
         """Return (needed, given) at the top of the rule."""
@@ -105,9 +112,10 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
 
     Raises:
         NotEnoughSharesError: no quorum among the usable shares.
-        SetMismatchError, EpochMismatchError: the shares are of several sets or epochs and none has a quorum.
+        SetMismatchError, EpochMismatchError: the shares are of several sets or epochs, and the one that most belong to
+            has no quorum.
         VerificationError: there is a quorum, yet no combination tried gives what the commitment names.
-        AmbiguousError: shares of several sets each recover.
+        AmbiguousError: a set recovers, but equally many shares of another were given.
 
     Source: FORMAT.md, sec. 8.
     """
@@ -116,32 +124,43 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
         i: one.share for i, one in enumerate(presented) if one.share is not None and _may_be_used(one.share, record)
     }
     whole = {i: share for i, share in usable.items() if findings[i].status is not Status.DAMAGED}
-    # A share whose digest fails may still hold a right row; it is tried when the others do not suffice.
-    for candidates in (whole, usable):
-        found = [(group, *had) for group in _groups(candidates) if (had := group.recover(record))]
-        if len(found) > 1:
-            for _, payload, _ in found:
-                payload.close()
-            raise AmbiguousError(
-                "shares of more than one set were given, and each set recovers a secret of its own",
-                hint="give the shares of one set and epoch",
-            )
-        if found:
-            group, payload, used = found[0]
-            with payload:
-                final = _final_findings(presented, findings, usable, group, payload)
-                names = tuple(group.shares[i].custodian for i in used)
-                return Recovery(open_payload(payload), group.first, names, tuple(final))
+    # Only the set that most shares belong to may be recovered: a forged share that claims to be a quorum by itself must
+    # not win over two true ones that are one short.
+    rivals = _rivals(_groups(usable))
+    for group in rivals:
+        # A share whose digest fails may still hold a right row; it is tried when the others do not suffice.
+        had = _Group({i: share for i, share in group.shares.items() if i in whole}).recover(record)
+        had = had or group.recover(record)
+        if had is None:
+            continue
+        payload, used = had
+        with payload:
+            if len(rivals) > 1:
+                raise AmbiguousError(
+                    f"equally many shares of {len(rivals)} different dealings were given, "
+                    "and which of them is meant cannot be told",
+                    hint="give the shares of one set and epoch, or the record",
+                )
+            if record is None:
+                findings = _found_alone(presented, group.first, payload, used)
+            places = dict.fromkeys(i for i, _ in used)
+            names = tuple(group.shares[i].custodian for i in places)
+            final = _with_rows_said_right(presented, findings, places)
+            return Recovery(open_payload(payload), group.shares[used[0][0]], names, tuple(final))
     # Damaged shares were tried as well, without success: they count no longer.
     raise _refusal(presented, findings, _groups(whole))
 
 
 def _may_be_used(share: Share, record: Record | None) -> bool:
-    """With a record, only shares that it commits to are used."""
+    """With a record, only shares are used that it commits to and that name the secret which it names."""
     if record is None:
         return True
     named = record.custodian(share.custodian)
-    return named is not None and hmac.compare_digest(share.commitment(), named.share_commitment)
+    return (
+        named is not None
+        and hmac.compare_digest(share.commitment(), named.share_commitment)
+        and share.set_key() == record.set_key()
+    )
 
 
 def _groups(candidates: dict[int, Share]) -> list[_Group]:
@@ -153,27 +172,41 @@ def _groups(candidates: dict[int, Share]) -> list[_Group]:
     return [_Group({i: candidates[i] for i in places.values()}) for places in different]
 
 
-def _final_findings(
-    presented: Sequence[Presented],
-    findings: Sequence[Finding],
-    usable: dict[int, Share],
-    group: _Group,
-    payload: Secret,
+def _rivals(groups: list[_Group]) -> list[_Group]:
+    """Return the groups that most shares belong to: one, unless there is a tie."""
+    return [group for group in groups if len(group.shares) == len(groups[0].shares)]
+
+
+def _found_alone(
+    presented: Sequence[Presented], like: Share, payload: Secret, used: list[tuple[int, Path]]
 ) -> list[Finding]:
-    """Return the findings, with shares of the recovered set that do not lie on its dealing named as damaged."""
-    key = group.first.set_key()
-    good, off = _Group({i: share for i, share in usable.items() if share.set_key() == key}).disagreements(payload)
-    final = list(findings)
-    for i in off:
-        final[i] = presented[i].finding(Status.DAMAGED, "its row does not lie on the dealing that the others recover")
-    for i in good:
-        if findings[i].status is Status.INCONSISTENT:
-            final[i] = presented[i].finding(Status.INTACT, "it lies on the dealing that was recovered")
-        elif findings[i].status is Status.DAMAGED:
-            final[i] = presented[i].finding(
+    """Return the findings where there is no record, now that it is known which dealing recovers."""
+    key = like.set_key()
+    same = {i: one.share for i, one in enumerate(presented) if one.share is not None and one.share.set_key() == key}
+    good, bad, torn = _Group(same).agreement(payload, used)
+    findings = examine_alone(presented, like=like, apart_from=bad)
+    for i in bad:
+        reason = "its row does not lie on the dealing that the others recover"
+        findings[i] = presented[i].finding(Status.DAMAGED, reason)
+    for i in torn:
+        if findings[i].status is Status.INTACT:
+            findings[i] = presented[i].finding(
+                Status.INCONSISTENT, "it contradicts other shares given; which is wrong, only the record tells"
+            )
+    return _with_rows_said_right(presented, findings, good)
+
+
+def _with_rows_said_right(
+    presented: Sequence[Presented], findings: Sequence[Finding], right: Iterable[int]
+) -> list[Finding]:
+    """Return the findings, with it said of damaged shares whose rows proved right that only the file is at fault."""
+    said = list(findings)
+    for i in right:
+        if said[i].status is Status.DAMAGED:
+            said[i] = presented[i].finding(
                 Status.DAMAGED, "its own digest does not fit, though its row is right: replace the file"
             )
-    return final
+    return said
 
 
 def _refusal(presented: Sequence[Presented], findings: Sequence[Finding], groups: list[_Group]) -> SharesError:
@@ -185,7 +218,7 @@ def _refusal(presented: Sequence[Presented], findings: Sequence[Finding], groups
     )
     if not groups:
         return NotEnoughSharesError(f"none of the {len(presented)} shares given can be used{aside}")
-    most = max(group.quorums for group in groups)
+    most = max(group.quorums for group in _rivals(groups))
     if most:
         tried = f"all {most:,} quorums" if most <= MAX_TRIES else f"{MAX_TRIES:,} of {most:,} quorums, taken at random,"
         return VerificationError(
@@ -197,12 +230,12 @@ def _refusal(presented: Sequence[Presented], findings: Sequence[Finding], groups
     epochs = len({group.first.epoch for group in groups})
     if sets > 1:
         return SetMismatchError(
-            f"shares of {sets} sets were given, and none has a quorum{aside}",
+            f"shares of {sets} sets were given, and the one that most belong to has no quorum{aside}",
             hint="`shares show FILE` says which set a share is of; give those of one set",
         )
     if epochs > 1:
         return EpochMismatchError(
-            f"shares of {epochs} epochs were given, and none has a quorum{aside}",
+            f"shares of {epochs} epochs were given, and the one that most belong to has no quorum{aside}",
             hint="shares of different epochs never combine; give those of one epoch",
         )
     needed, given = groups[0].shortfall()

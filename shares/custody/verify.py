@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import hmac
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 
 from shares.custody.presented import Finding, Presented, Status
 from shares.documents.record import Record
@@ -97,45 +97,63 @@ class _Examiner:
         return None
 
 
-def examine_alone(presented: Sequence[Presented]) -> list[Finding]:
+def examine_alone(
+    presented: Sequence[Presented], *, like: Share | None = None, apart_from: Collection[int] = ()
+) -> list[Finding]:
     """Check shares without a record: each one's own digest, and that they agree with one another.
 
-    The largest group of shares of one set and epoch is taken as what the others are compared with; where two are
-    equally large, the one given first.
+    Args:
+        presented: shares as given.
+        like: the share that the others are compared with. By default one of the largest group of shares of one set
+            and epoch; where two groups are equally large, of the one given first.
+        apart_from: places of shares that are known to be wrong: what they claim contradicts no other share.
+
+    Returns:
+        One finding for each share given, in order.
     """
-    shares = [one.share for one in presented if one.share is not None and one.share.is_whole()]
-    sets = Counter(share.set for share in shares)
-    common_set = max(sets, key=lambda found: sets[found], default=None)
-    epochs = Counter(share.epoch for share in shares if share.set == common_set)
-    common_epoch = max(epochs, key=lambda found: epochs[found], default=None)
-    group = [share for share in shares if (share.set, share.epoch) == (common_set, common_epoch)]
-    facts = Counter(_common_facts(share) for share in group)
-    common_facts = max(facts, key=lambda found: facts[found], default=None)
-    claims = _claims([share for share in group if _common_facts(share) == common_facts])
-    findings = []
-    for one in presented:
-        share = one.share
-        if share is None:
-            findings.append(one.finding(one.status, one.problem))
-        elif not share.is_whole():
-            findings.append(one.finding(Status.DAMAGED, "its own digest does not fit: the file was damaged or edited"))
-        elif share.set != common_set:
-            findings.append(one.finding(Status.FOREIGN, f"it is of set {share.set.hex()}, the others are not"))
-        elif share.epoch != common_epoch:
-            findings.append(one.finding(Status.OTHER_EPOCH, f"it is of epoch {share.epoch}, the others are not"))
-        elif _common_facts(share) != common_facts:
-            findings.append(one.finding(Status.INCONSISTENT, "it contradicts the others about field, secret or record"))
-        elif _is_contradicted(share, claims):
-            findings.append(
-                one.finding(Status.INCONSISTENT, "another share claims the same place and holds something else")
-            )
-        else:
-            findings.append(one.finding(Status.INTACT, "its own digest fits, and it agrees with the others given"))
-    return findings
+    group = [
+        one.share
+        for i, one in enumerate(presented)
+        if one.share is not None and one.share.is_whole() and i not in apart_from
+    ]
+    for fact in (_set, _epoch, Share.set_key):
+        common = _most_frequent([fact(share) for share in ([like] if like else group)])
+        group = [share for share in group if fact(share) == common]
+    like = like or next(iter(group), None)
+    # A share typed back from paper may not say its record: it then contradicts nobody about it.
+    record = _most_frequent([share.record for share in group if share.record is not None])
+    claims = _claims(group)
+    return [_examined_alone(one, like, record, claims) for one in presented]
 
 
-def _common_facts(share: Share) -> tuple[object, ...]:
-    return (*share.set_key(), share.record)
+def _examined_alone(one: Presented, like: Share | None, record: object, claims: dict[object, set[object]]) -> Finding:
+    share = one.share
+    if share is None:
+        return one.finding(one.status, one.problem)
+    if like is None or not share.is_whole():
+        return one.finding(Status.DAMAGED, "its own digest does not fit: the file was damaged or edited")
+    if share.set != like.set:
+        return one.finding(Status.FOREIGN, f"it is of set {share.set.hex()}, the others are not")
+    if share.epoch != like.epoch:
+        return one.finding(Status.OTHER_EPOCH, f"it is of epoch {share.epoch}, the others are not")
+    if share.set_key() != like.set_key() or share.record not in (None, record):
+        return one.finding(Status.INCONSISTENT, "it contradicts the others about field, secret or record")
+    if _is_contradicted(share, claims):
+        return one.finding(Status.INCONSISTENT, "another share claims the same place and holds something else")
+    return one.finding(Status.INTACT, "its own digest fits, and it agrees with the others given")
+
+
+def _set(share: Share) -> object:
+    return share.set
+
+
+def _epoch(share: Share) -> object:
+    return share.epoch
+
+
+def _most_frequent(values: Sequence[object]) -> object:
+    """Return the value that stands most often, the first of several; None of none."""
+    return max(Counter(values).items(), key=lambda found: found[1], default=(None, 0))[0]
 
 
 def _claims(shares: Sequence[Share]) -> dict[object, set[object]]:
@@ -154,4 +172,4 @@ def _claims(shares: Sequence[Share]) -> dict[object, set[object]]:
 
 def _is_contradicted(share: Share, claims: dict[object, set[object]]) -> bool:
     nodes = [("node", path[:depth]) for path in share.paths for depth in range(len(path))]
-    return any(len(claims[key]) > 1 for key in (share.custodian, *share.paths, *nodes))
+    return any(len(claims.get(key, ())) > 1 for key in (share.custodian, *share.paths, *nodes))

@@ -168,6 +168,11 @@ class Record(Document):
         """Return what the record says of a custodian, or None where it does not name them."""
         return next((custodian for custodian in self.custodians if custodian.name == name), None)
 
+    def set_key(self) -> tuple[bytes, int, int, bytes, bytes | None, int]:
+        """What every share of this dealing must name as the record does: see ``Share.set_key``."""
+        common = (self.set, self.epoch, self.field.modulus, self.secret_commitment, self.encrypted_file)
+        return (*common, self.row_length)
+
     def check_matrix(self) -> bytes:
         """Return R of FORMAT.md, sec. 6, for this record: 16 rows of L - 16 field elements."""
         commitments = [custodian.share_commitment for custodian in self.custodians]

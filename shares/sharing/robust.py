@@ -14,10 +14,11 @@ from __future__ import annotations
 import itertools
 import secrets
 from collections.abc import Callable, Iterator, Sequence
+from typing import NamedTuple
 
 from shares.field.gf256 import Field
 from shares.memory import Secret
-from shares.sharing.rule import Path, Point, recover_payload
+from shares.sharing.rule import Path, Point, recover_payload, row_of_child
 from shares.sharing.shamir import interpolate
 
 MAX_TRIES = 20_000
@@ -73,6 +74,15 @@ class _Node:
         if step in self.nodes:
             yield from self.nodes[step].quorums()
 
+    def sample(self, most: int) -> Iterator[Indices]:
+        """Yield all quorums where there are at most ``most``, else ``most`` random ones."""
+        if self.count <= most:
+            yield from self.quorums()
+        else:
+            source = secrets.SystemRandom()
+            for _ in range(most):
+                yield self.random_quorum(source)
+
     def random_quorum(self, source: secrets.SystemRandom) -> Indices:
         need = source.choice(self.needs)
         chosen: list[int] = []
@@ -99,16 +109,8 @@ def quorums(paths: Sequence[Path], *, most: int = MAX_TRIES) -> Iterator[Indices
 
     Random, because a search in order would spend its tries on quorums that share their first points.
     """
-    if not paths:
-        return
-    root = _Node(paths, range(len(paths)), 0)
-    total = root.count
-    if total <= most:
-        yield from root.quorums()
-        return
-    source = secrets.SystemRandom()
-    for _ in range(most):
-        yield root.random_quorum(source)
+    if paths:
+        yield from _Node(paths, range(len(paths)), 0).sample(most)
 
 
 def covering_quorums(paths: Sequence[Path]) -> Iterator[Indices]:
@@ -116,17 +118,21 @@ def covering_quorums(paths: Sequence[Path]) -> Iterator[Indices]:
     covered: set[int] = set()
     root = _Node(paths, range(len(paths)), 0)
     for i, path in enumerate(paths):
-        if i not in covered:
-            quorum = _quorum_with(root, i, path)
+        if i not in covered and (quorum := _quorum_with(root, i, path)):
             covered.update(quorum)
             yield quorum
 
 
 def _quorum_with(node: _Node, index: int, path: Path) -> Indices:
-    """A quorum below ``node`` that uses point ``index``: its own branch, and the next children in order, cyclically."""
+    """A quorum below ``node`` that uses point ``index``: its own branch, and the next children in order, cyclically.
+
+    Empty where the point stands in none, because too few of its neighbours are there.
+    """
     step, rest = path[0], path[1:]
     need = step[0]
     children = node.children(need)
+    if need not in node.needs or step not in children:
+        return ()
     start = children.index(step)
     chosen: list[int] = []
     for j in range(need):
@@ -134,7 +140,10 @@ def _quorum_with(node: _Node, index: int, path: Path) -> Indices:
         if j:
             chosen.extend(next(node._rows_at_one(child)))
         elif rest:
-            chosen.extend(_quorum_with(node.nodes[child], index, rest))
+            inner = _quorum_with(node.nodes[child], index, rest)
+            if not inner:
+                return ()
+            chosen.extend(inner)
         else:
             chosen.append(index)
     return tuple(chosen)
@@ -159,69 +168,84 @@ def search(
     return None
 
 
-def agreeing(field: Field, points: Sequence[Point], payload: Secret) -> tuple[set[int], set[int]]:
+class Agreement(NamedTuple):
+    """What a payload known to be right says of points, by index; one that nothing can be compared with is in no set.
+
+    Attributes:
+        good: they lie on the dealing of the payload.
+        bad: they do not.
+        torn: they contradict one another, and which of them are wrong cannot be told.
+    """
+
+    good: set[int]
+    bad: set[int]
+    torn: set[int]
+
+
+def agreeing(field: Field, points: Sequence[Point], payload: Secret, quorum: Indices) -> Agreement:
     """Say which points lie on the dealing of a payload that is known to be right.
 
     Where several dealings explain the payload (a wrong point can be offset by another wrong one), the one with most
-    points counts;
-    where two have equally many, nothing is said of the points on which they differ.
+    points counts; where two have equally many, the points on which they differ are torn. Where a group has more than
+    256 quorums, a random 256 of them are looked at.
 
-    Returns:
-        (indices that agree, indices that disagree). Points of groups that cannot be checked are in neither.
+    Args:
+        field: GF(2^8) on a chosen polynomial.
+        points: all that are to be judged.
+        payload: checked against its commitment.
+        quorum: indices of the points that gave it.
     """
-    return _agreeing(field, points, range(len(points)), payload, 0)
+    return _agreeing(field, points, range(len(points)), payload, 0, quorum)
 
 
 _MAX_EXPLANATIONS = 256
 
 
 def _agreeing(
-    field: Field, points: Sequence[Point], indices: Sequence[int], payload: Secret, depth: int
-) -> tuple[set[int], set[int]]:
+    field: Field, points: Sequence[Point], indices: Sequence[int], payload: Secret, depth: int, known: Indices
+) -> Agreement:
     node = _Node([point.path for point in points], indices, depth)
-    found: list[tuple[set[int], set[int]]] = []
-    for quorum in itertools.islice(node.quorums(), _MAX_EXPLANATIONS):
-        if any(set(quorum) <= good for good, _ in found):
+    found: list[Agreement] = []
+    # The quorum that is known comes first: among many, bad points could otherwise hide it from the search.
+    for quorum in itertools.chain([known] if known else [], node.sample(_MAX_EXPLANATIONS)):
+        if any(explanation.good.issuperset(quorum) for explanation in found):
             continue
         if recover_payload(field, [points[i] for i in quorum], depth=depth) == payload:
             found.append(_on_polynomial(field, points, indices, quorum, depth))
-            if not found[-1][1]:
+            if not found[-1].bad and not found[-1].torn:
                 return found[-1]
     if not found:
-        return set(), set()
-    most = max(len(good) for good, _ in found)
-    best = [explanation for explanation in found if len(explanation[0]) == most]
-    good = set.intersection(*(good for good, _ in best))
-    bad = set.intersection(*(bad for _, bad in best))
-    return good, bad
+        return Agreement(set(), set(), set(indices) if node.count else set())
+    most = max(len(explanation.good) for explanation in found)
+    best = [explanation for explanation in found if len(explanation.good) == most]
+    good = set.intersection(*(explanation.good for explanation in best))
+    bad = set.intersection(*(explanation.bad for explanation in best))
+    return Agreement(good, bad, set[int]().union(*itertools.chain.from_iterable(best)) - good - bad)
 
 
 def _on_polynomial(
     field: Field, points: Sequence[Point], indices: Sequence[int], quorum: Indices, depth: int
-) -> tuple[set[int], set[int]]:
+) -> Agreement:
     """Compare every point below a node with the polynomial that a quorum fixes."""
     need = points[quorum[0]].path[depth][0]
-    at_x: dict[int, list[Point]] = {}
+    at_x: dict[int, list[int]] = {}
     for i in quorum:
-        at_x.setdefault(points[i].path[depth][1], []).append(points[i])
+        at_x.setdefault(points[i].path[depth][1], []).append(i)
     xs = sorted(at_x)
-    rows = [
-        at_x[x][0].row if len(at_x[x][0].path) == depth + 1 else recover_payload(field, at_x[x], depth=depth + 1)
-        for x in xs
-    ]
-    good: set[int] = set()
-    bad: set[int] = set()
+    rows = [row_of_child(field, [points[i] for i in at_x[x]], depth + 1) for x in xs]
+    said = Agreement(set(), set(), set())
     inner: dict[int, list[int]] = {}
     for i in indices:
         claimed, x = points[i].path[depth]
         if claimed != need:
-            bad.add(i)
+            said.bad.add(i)
         elif len(points[i].path) == depth + 1:
-            (good if points[i].row == interpolate(field, xs, rows, at=x) else bad).add(i)
+            (said.good if points[i].row == interpolate(field, xs, rows, at=x) else said.bad).add(i)
         else:
             inner.setdefault(x, []).append(i)
     for x, below in inner.items():
-        good_below, bad_below = _agreeing(field, points, below, interpolate(field, xs, rows, at=x), depth + 1)
-        good |= good_below
-        bad |= bad_below
-    return good, bad
+        known = tuple(i for i in at_x.get(x, ()) if i in below)
+        of_child = _agreeing(field, points, below, interpolate(field, xs, rows, at=x), depth + 1, known)
+        for mine, theirs in zip(said, of_child, strict=True):
+            mine.update(theirs)
+    return said

@@ -181,10 +181,20 @@ def recover_payload(field: Field, points: Sequence[Point], *, depth: int = 0) ->
     if len(below) < need:
         raise NotEnoughSharesError(f"{need} points are needed, {len(below)} given")
     xs = sorted(below)[:need]
-    return interpolate(field, xs, [_child_row(field, below[x], depth + 1) for x in xs])
+    return interpolate(field, xs, [row_of_child(field, below[x], depth + 1) for x in xs])
 
 
-def _child_row(field: Field, points: list[Point], depth: int) -> Secret:
+def row_of_child(field: Field, points: Sequence[Point], depth: int) -> Secret:
+    """Return the row of the child that points below it give: a leaf's own, or the payload of a subtree.
+
+    Args:
+        field: GF(2^8) on a chosen polynomial.
+        points: one leaf, or a quorum of the subtree.
+        depth: the length of the path to the child.
+
+    Raises:
+        ShareError, NotEnoughSharesError: as for ``recover_payload``.
+    """
     leaves = [point for point in points if len(point.path) == depth]
     if not leaves:
         return recover_payload(field, points, depth=depth)

@@ -1,0 +1,277 @@
+"""Recovery: the right secret or a refusal, with the bad shares named, with the record and without.
+
+Checked against: the secret that was split, and the definition of what was done to each share here. That a set recovers
+by a general-purpose library alone is checked in ``test_by_reference.py``.
+"""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Sequence
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from strategies import (
+    HARBOUR,
+    crooked_split,
+    flat,
+    flipped,
+    inverse,
+    moduli,
+    octets,
+    presented,
+    product,
+    resealed,
+    revealed,
+    rules,
+    satisfies,
+    with_rows,
+)
+
+from shares.custody.presented import Status
+from shares.custody.recover import Recovery, recover
+from shares.custody.split import split
+from shares.documents.record import Record
+from shares.documents.share import Share
+from shares.errors import (
+    AmbiguousError,
+    EpochMismatchError,
+    NotEnoughSharesError,
+    SetMismatchError,
+)
+from shares.field.gf256 import Field
+from shares.memory import Secret
+
+SECRET = b"not a real key, made up for a test"
+
+
+def dealt_flat(need: int, total: int, secret: bytes = SECRET):
+    return split(Secret.of(secret), flat(need, total), label="Tide archive")
+
+
+def recovered(shares: Sequence[Share], record: Record | None = None) -> bytes:
+    recovery = recover(presented(shares), record)
+    return revealed(recovery.secret)
+
+
+def statuses(recovery: Recovery) -> list[str]:
+    return [finding.status.value for finding in recovery.findings]
+
+
+# Without any harm.
+
+
+@pytest.mark.parametrize("total", range(1, 9))
+def test_every_quorum_recovers_and_every_smaller_set_is_refused(total: int) -> None:
+    for need in range(1, total + 1):
+        dealt = dealt_flat(need, total)
+        for size in (need - 1, need):
+            for chosen in itertools.combinations(dealt.shares, size):
+                for record in (None, dealt.record):
+                    if size == need:
+                        assert recovered(chosen, record) == SECRET
+                    else:
+                        with pytest.raises(NotEnoughSharesError):
+                            recover(presented(chosen), record)
+
+
+@given(rules(), moduli(), octets(1, 80), st.data())
+def test_who_the_rule_authorises_recovers_and_nobody_else(rule, modulus, secret, data) -> None:
+    dealt = split(Secret.of(secret), rule, label="Tide archive", field=Field(modulus))
+    shares = data.draw(st.lists(st.sampled_from(dealt.shares), unique_by=lambda share: share.custodian))
+    held = {path for share in shares for path in share.paths}
+    for record in (None, dealt.record):
+        if satisfies(rule, held):
+            assert recovered(shares, record) == secret
+        else:
+            with pytest.raises(NotEnoughSharesError):
+                recover(presented(shares), record)
+
+
+def test_a_share_given_twice_counts_once() -> None:
+    dealt = dealt_flat(3, 5)
+    one, two, three = dealt.shares[:3]
+    with pytest.raises(NotEnoughSharesError, match="3 different shares are needed, 2 given"):
+        recover(presented([one, two, two]))
+    recovery = recover(presented([one, two, two, three]))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["intact"] * 4
+
+
+# Wrong shares, without a record.
+
+
+def test_a_bad_share_is_named_and_the_others_recover() -> None:
+    dealt = dealt_flat(3, 5)
+    for bad in range(5):
+        shares = list(dealt.shares)
+        shares[bad] = resealed(shares[bad], rows=with_rows(shares[bad], flipped(40)))
+        for order in (shares, shares[::-1]):
+            recovery = recover(presented(order))
+            assert revealed(recovery.secret) == SECRET
+            named = [finding.custodian for finding in recovery.findings if finding.status is not Status.INTACT]
+            assert named == [HARBOUR[bad]]
+            assert HARBOUR[bad] not in recovery.used
+
+
+def test_a_bad_first_share_of_many_is_named() -> None:
+    """With 25 shares it stands in more quorums than are looked at in order, and once went unnamed."""
+    dealt = split(Secret.of(SECRET), module_rule(3, 25), label="Tide archive")
+    shares = list(dealt.shares)
+    shares[0] = resealed(shares[0], rows=with_rows(shares[0], flipped(0)))
+    recovery = recover(presented(shares))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["damaged"] + ["intact"] * 24
+
+
+def module_rule(need: int, total: int):
+    from shares.custody.split import flat_rule
+
+    return flat_rule(need, [f"pier {i}" for i in range(total)])
+
+
+def test_where_two_dealings_explain_the_secret_equally_well_nobody_is_called_intact_or_damaged() -> None:
+    """Shares 1 and 2 are wrong such that with share 3 they still give the secret: a tie of 1, 2, 3 and 3, 4, 5."""
+    field = Field()
+    dealt = dealt_flat(3, 5)
+    weights = field.interpolation_weights([1, 2, 3])
+    ratio = product(weights[0], inverse(weights[1]))
+
+    def first(row: bytearray) -> None:
+        row[0] ^= 1
+
+    def second(row: bytearray) -> None:
+        row[0] ^= ratio
+
+    shares = list(dealt.shares)
+    shares[0] = resealed(shares[0], rows=with_rows(shares[0], first))
+    shares[1] = resealed(shares[1], rows=with_rows(shares[1], second))
+    recovery = recover(presented(shares))
+    assert revealed(recovery.secret) == SECRET
+    torn = "inconsistent dealing"
+    assert statuses(recovery) == [torn, torn, "intact", torn, torn]
+    # The record knows.
+    assert statuses(recover(presented(shares), dealt.record)) == ["damaged"] * 2 + ["intact"] * 3
+
+
+def test_a_share_whose_file_is_damaged_but_whose_row_is_right_still_helps() -> None:
+    dealt = dealt_flat(2, 3)
+    edited = dealt.shares[0].model_copy(update={"label": "Another label"})
+    assert not edited.is_whole()
+    for record in (None, dealt.record):
+        recovery = recover(presented([edited, dealt.shares[1]]), record)
+        assert revealed(recovery.secret) == SECRET
+        assert statuses(recovery) == ["damaged", "intact"]
+        assert "replace the file" in recovery.findings[0].reason
+
+
+def test_a_share_typed_from_paper_without_its_notes_contradicts_nobody() -> None:
+    dealt = dealt_flat(2, 3)
+    typed = resealed(dealt.shares[0], label=None, rule=None, notice=None, record=None)
+    for record in (None, dealt.record):
+        for order in ([typed, *dealt.shares[1:]], [*dealt.shares[1:], typed], [typed, dealt.shares[1]]):
+            recovery = recover(presented(order), record)
+            assert revealed(recovery.secret) == SECRET
+            assert set(statuses(recovery)) == {"intact"}
+
+
+def test_two_shares_for_one_place_do_not_hide_the_right_one() -> None:
+    dealt = dealt_flat(2, 3)
+    forged = resealed(dealt.shares[0], rows=with_rows(dealt.shares[0], flipped(7)))
+    for order in ([forged, *dealt.shares], [*dealt.shares, forged]):
+        recovery = recover(presented(order))
+        assert revealed(recovery.secret) == SECRET
+        expected = ["damaged" if share is forged else "intact" for share in order]
+        assert statuses(recovery) == expected
+
+
+# Wrong shares, with the record.
+
+
+def test_with_the_record_only_shares_it_commits_to_are_used() -> None:
+    dealt = dealt_flat(2, 4)
+    forged = resealed(dealt.shares[0], rows=with_rows(dealt.shares[0], flipped(3)))
+    recovery = recover(presented([forged, *dealt.shares[1:3]]), dealt.record)
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["damaged", "intact", "intact"]
+    with pytest.raises(NotEnoughSharesError, match="1 given can be used; north-pier was set aside"):
+        recover(presented([forged, dealt.shares[1]]), dealt.record)
+
+
+def test_a_record_that_names_another_secret_than_the_shares_recovers_nothing() -> None:
+    """FORMAT.md, section 8: with the record, the secret is the one which the record names. A dishonest dealer's shares
+    once recovered another one, and were called intact."""
+    dealt = crooked_split(SECRET, flat(2, 3), facts={"secret_commitment": bytes(32)})
+    with pytest.raises(NotEnoughSharesError, match="inconsistent dealing"):
+        recover(presented(dealt.shares), dealt.record)
+    assert recovered(dealt.shares) == SECRET
+
+
+def test_an_inconsistent_share_is_still_called_so_after_recovery() -> None:
+    def bend(dealing) -> None:
+        with dealing.points["registrar"][0].row.view() as row:
+            row[0] ^= 1
+
+    dealt = crooked_split(SECRET, flat(2, 4), bend=bend)
+    recovery = recover(presented(dealt.shares), dealt.record)
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["intact"] * 3 + ["inconsistent dealing"]
+
+
+# Several sets and epochs.
+
+
+def test_shares_of_two_sets_never_combine() -> None:
+    ours, theirs = dealt_flat(3, 5), dealt_flat(3, 5, b"another made-up secret")
+    with pytest.raises(SetMismatchError):
+        recover(presented([*ours.shares[:2], *theirs.shares[2:4]]))
+    recovery = recover(presented([*theirs.shares[:2], *ours.shares[1:4]]))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["foreign set"] * 2 + ["intact"] * 3
+
+
+def test_equally_many_shares_of_two_sets_are_ambiguous_unless_the_record_says_which() -> None:
+    ours, theirs = dealt_flat(2, 3), dealt_flat(2, 3, b"another made-up secret")
+    mixed = presented([*theirs.shares, *ours.shares])
+    with pytest.raises(AmbiguousError):
+        recover(mixed)
+    recovery = recover(mixed, ours.record)
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["foreign set"] * 3 + ["intact"] * 3
+
+
+def test_one_share_that_claims_to_suffice_does_not_win_over_true_ones_that_are_one_short() -> None:
+    ours, forged = dealt_flat(5, 6), dealt_flat(1, 1, b"forged")
+    with pytest.raises(SetMismatchError, match="the one that most belong to has no quorum"):
+        recover(presented([*ours.shares[:4], *forged.shares]))
+
+
+def test_shares_of_two_epochs_never_combine() -> None:
+    dealt = dealt_flat(2, 3)
+    later = [resealed(share, epoch=2) for share in dealt.shares]
+    with pytest.raises(EpochMismatchError):
+        recover(presented([dealt.shares[0], later[1]]))
+    recovery = recover(presented([*dealt.shares[:2], later[2]]))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["intact", "intact", "other epoch"]
+
+
+def test_the_findings_are_about_the_dealing_that_was_recovered() -> None:
+    """Two whole shares of another set stand first; ours are three, one of them with a damaged file."""
+    ours, theirs = dealt_flat(3, 5), dealt_flat(3, 5, b"another made-up secret")
+    edited = ours.shares[0].model_copy(update={"label": "Another label"})
+    recovery = recover(presented([*theirs.shares[:2], edited, *ours.shares[1:3]]))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["foreign set", "foreign set", "damaged", "intact", "intact"]
+    assert recovery.share.set == ours.record.set
+
+
+def test_damaged_files_count_when_it_is_asked_which_set_is_meant() -> None:
+    """Three whole shares of another set recover, but four of ours were given, two of them with damaged files."""
+    ours, theirs = dealt_flat(4, 5), dealt_flat(3, 5, b"another made-up secret")
+    edited = [share.model_copy(update={"label": "Another label"}) for share in ours.shares[:2]]
+    recovery = recover(presented([*theirs.shares[:3], *edited, *ours.shares[2:4]]))
+    assert revealed(recovery.secret) == SECRET
+    with pytest.raises(AmbiguousError):
+        recover(presented([*theirs.shares[:4], *edited, *ours.shares[2:4]]))
