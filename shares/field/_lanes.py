@@ -21,8 +21,10 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from functools import lru_cache
+from typing import TYPE_CHECKING
 
-from shares.field import ReadableBuffer, WritableBuffer
+if TYPE_CHECKING:
+    from shares.field import ReadableBuffer, WritableBuffer
 
 TERM = b"\x01\x00"
 DOUBLED = b"\x00\xff"

@@ -287,11 +287,12 @@ class TestOverlap:
         with pytest.raises(ValueError, match="overlap"):
             implementation.combine(0x11B, [b"\x01"], [out], [out])
 
-    def test_a_long_row_around_a_short_one(self, implementation):
-        # The out lies inside the first row, and another row that ends before it lies between them by address.
-        memory = memoryview(bytearray(range(8)))
+    def test_a_short_row_inside_a_long_matrix(self, implementation):
+        # By address: the matrix, the row within it, and the out, which begins behind the row but within the matrix.
+        memory = memoryview(bytearray(range(12)))
         with pytest.raises(ValueError, match="overlap"):
-            implementation.combine(0x11B, [b"\x01\x01"], [memory[0:4], memory[1:5]], [memory[4:8]])
+            implementation.project(0x11B, memory[0:8], memory[1:2], memory[4:12])
+        assert memory == bytes(range(12))
 
     def test_neighbours_do_not_overlap(self, implementation):
         memory = bytearray(range(12))
@@ -307,7 +308,9 @@ class TestOverlap:
         assert out == bytes([0 ^ 2, 1 ^ 3, 2 ^ 4, 3 ^ 5])
 
     def test_a_read_only_out_is_refused(self, implementation):
+        first, second = bytearray(3), memoryview(bytearray(3)).toreadonly()
         with pytest.raises((ValueError, TypeError, BufferError)):
-            implementation.combine(0x11B, [b"\x01"], [ROW], [memoryview(bytearray(3)).toreadonly()])
+            implementation.combine(0x11B, [b"\x01", b"\x01"], [ROW], [first, second])
+        assert first == bytes(3)
         with pytest.raises((ValueError, TypeError, BufferError)):
-            implementation.project(0x11B, ROW, ROW, memoryview(bytearray(1)).toreadonly())
+            implementation.project(0x11B, ROW, ROW, second[:1])

@@ -83,6 +83,10 @@ class TestPrimeField:
         if a % p:
             assert field.inverse(a) == int(1 / x)
 
+    def test_weights_at_a_point_pick_its_value(self):
+        for i, x in enumerate([1, 5, 16]):
+            assert PrimeField(17).interpolation_weights([1, 5, 16], at=x + 17) == [int(i == j) for j in range(3)]
+
     def test_no_coefficients(self):
         assert PrimeField(5).evaluate([], 3) == 0
 
