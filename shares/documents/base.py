@@ -37,7 +37,6 @@ class Document(BaseModel):
         frozen=True,
         extra="forbid",
         hide_input_in_errors=True,
-        populate_by_name=True,
         cache_strings="none",  # The parser would keep short strings of any document in a cache of its own.
     )
 

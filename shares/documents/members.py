@@ -23,6 +23,8 @@ from shares.errors import ParameterError, PolynomialError
 from shares.field import gf256
 from shares.memory import Secret
 
+MAX_LONG_TEXT = 65_536
+"""The longest rule in words, in characters."""
 _UNPRINTABLE = ("Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp")
 
 
@@ -114,7 +116,7 @@ def _name_problem(name: str) -> str | None:
     if not name:
         return "must not be empty"
     if len(name) > 64 or len(name.encode("utf-8", "surrogatepass")) > 200:
-        return "has at most 64 characters"
+        return "has at most 64 characters and 200 bytes in UTF-8"
     if any(unicodedata.category(c) in _UNPRINTABLE for c in name):
         return "must not hold control or invisible characters"
     if "/" in name or "\\" in name:
@@ -197,7 +199,7 @@ Time = Annotated[
 ]
 Name = Annotated[str, AfterValidator(_valid_name), Field(min_length=1, max_length=64)]
 Text = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=500)]
-LongText = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=65_536)]
+LongText = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=MAX_LONG_TEXT)]
 Fingerprint = Annotated[str, Field(pattern=r"^[A-Z2-7]{4}(-[A-Z2-7]{4}){7}$")]
 Epoch = Annotated[int, Field(ge=1, le=2**32 - 1)]
 Byte = Annotated[int, Field(ge=1, le=255)]

@@ -34,7 +34,7 @@ from shares.documents.share import MAX_ROW, MIN_ROW
 from shares.errors import ParameterError
 from shares.field.gf256 import Field
 from shares.sharing.consistency import check_matrix, inconsistent_nodes
-from shares.sharing.rule import MAX_CHILDREN, MAX_POINTS, Rule
+from shares.sharing.rule import MAX_CHILDREN, MAX_DEPTH, MAX_POINTS, Rule
 
 
 class RuleNode(Document):
@@ -47,7 +47,7 @@ class RuleNode(Document):
     def of(cls, rule: Rule) -> RuleNode:
         """Return the JSON form of a rule."""
         children = tuple(cls.of(child) if isinstance(child, Rule) else child for child in rule.children)
-        return cls(need=rule.need, children=children)
+        return cls.model_validate({"need": rule.need, "from": children})
 
     def to_rule(self) -> Rule:
         """Return the rule. Raises ParameterError where it is out of bounds."""
@@ -85,7 +85,7 @@ class Record(Document):
     custodians: Annotated[tuple[Custodian, ...], Member(min_length=1, max_length=MAX_POINTS)]
     checks: Annotated[
         tuple[Annotated[tuple[Check, ...], Member(min_length=1, max_length=MAX_CHILDREN)], ...],
-        Member(min_length=1, max_length=MAX_POINTS),
+        Member(min_length=1, max_length=MAX_POINTS * MAX_DEPTH),
     ]
     secret_commitment: Digest
     encrypted_file: Digest | None
