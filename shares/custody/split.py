@@ -10,14 +10,14 @@ Does not: write files; ``custody.handover`` does, and checks what it wrote.
 from __future__ import annotations
 
 import secrets
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 from datetime import datetime
 
 from shares import clock
 from shares.custody.payload import DEFAULT_PAD, commitment, make_payload
-from shares.documents.base import MAX_FILE
-from shares.documents.members import check_name, check_text
+from shares.documents.base import MAX_FILE, write_text
+from shares.documents.members import MAX_LONG_TEXT, check_name, check_text
 from shares.documents.record import Custodian, Record
 from shares.documents.share import Share
 from shares.errors import ParameterError
@@ -46,9 +46,15 @@ def flat_rule(need: int, custodians: Sequence[str]) -> Rule:
     Raises:
         ParameterError: a name that may not be, a name twice (case does not count), or a threshold out of range.
     """
-    if len({name.casefold() for name in custodians}) != len(custodians):
+    _check_names(custodians)
+    return Rule(need, tuple(custodians))
+
+
+def _check_names(names: Collection[str]) -> None:
+    if len({name.casefold() for name in names}) != len(names):
         raise ParameterError("two custodians have the same name (upper and lower case do not differ)")
-    return Rule(need, tuple(check_name(name) for name in custodians))
+    for name in names:
+        check_name(name)
 
 
 def split(
@@ -74,7 +80,7 @@ def split(
         The record and one share for each custodian. Wipe it with ``close()``.
 
     Raises:
-        ParameterError: secret, label, names or pad out of range.
+        ParameterError: secret, label, names, time or pad out of range, or a rule too large for documents of 1 MiB.
 
     Source: Shamir 1979, sec. 2; FORMAT.md.
 
@@ -85,16 +91,29 @@ def split(
     """
     check_text(label)
     field = Field() if field is None else field
-    for name in rule.paths():
-        check_name(name)
+    _check_names(rule.paths())
+    created = clock.now() if created is None else created
+    clock.to_text(created)
+    if len(rule.words()) > MAX_LONG_TEXT:
+        raise ParameterError(f"the rule in words would be longer than {MAX_LONG_TEXT:,} characters")
     with make_payload(field, secret, pad=pad) as payload:
-        largest = max(len(paths) for paths in rule.paths().values())
-        if largest * len(payload) * 4 // 3 > MAX_FILE * 7 // 8:
+        if _largest_share(rule, len(payload)) > MAX_FILE:
             raise ParameterError(
                 "a custodian's share would be larger than 1 MiB",
-                hint="encrypt the secret with a fresh key and split the key",
+                hint="encrypt the secret with a fresh key and split the key, or give custodians fewer places",
             )
-        return _deal(payload, rule, label, field, created or clock.now())
+        return _deal(payload, rule, label, field, created)
+
+
+def _largest_share(rule: Rule, row_length: int) -> int:
+    """Return a bound on the size of the largest share's file, in bytes: its paths, a line for each row, and the rest.
+
+    The rest is the rule in words; label and notice of 500 characters and the name of 64, each character in 4 bytes at
+    most; and members of fixed length.
+    """
+    row = 4 * row_length // 3 + 16
+    points = max(len(write_text({"paths": paths})) + len(paths) * row for paths in rule.paths().values())
+    return points + len(write_text({"rule": rule.words()})) + 6144
 
 
 def _deal(payload: Secret, rule: Rule, label: str, field: Field, created: datetime) -> Dealt:
@@ -126,5 +145,7 @@ def _deal(payload: Secret, rule: Rule, label: str, field: Field, created: dateti
         secret_commitment=secret_commitment,
     )
     dealing.close_polynomials()
+    if len(record.to_file()) > MAX_FILE:
+        raise ParameterError("the rule is too large: its record would be larger than 1 MiB")
     notes = {"label": label, "rule": rule.words(), "record": record.fingerprint}
     return Dealt(record, tuple(share.noted(**notes) for share in shares))
