@@ -68,7 +68,7 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
         StorageError: a folder is missing, a file exists, or an unfinished run left something.
     """
     for custodian, folder in deliveries.items():
-        if not folder.is_dir():
+        if not os.path.isdir(folder):  # Unlike Path.is_dir, it also answers for a folder that may not be entered.
             raise StorageError(
                 f"the delivery folder of {custodian} is not there",
                 where=os.fspath(folder),
@@ -109,29 +109,39 @@ def hand_over(
     record_path = set_folder / RECORD_NAME
     paths = {share.custodian: share_path(deliveries[share.custodian], share.custodian) for share in dealt.shares}
     written: list[Path] = []
+    record_is_ours = False
     try:
         for share in dealt.shares:
             write_new(paths[share.custodian], share.to_file(), secret=True)
             written.append(paths[share.custodian])
         trials, total = _prove(dealt.record, list(paths.values()), progress)
-        # From here on the record is to be undone as well. It is undone first: a record must never outlive its shares.
-        written.append(record_path)
         write_new(record_path, dealt.record.to_file(), secret=False)
+        record_is_ours = True
         if read_back(record_path, limit=MAX_FILE) != dealt.record.to_file():
             raise VerificationError("the record read back differs from what was written", where=os.fspath(record_path))
     except BaseException:  # Whatever stops the act, an interrupt included, undoes it.
-        _undo(written, dealt)
+        _undo(written, dealt.record, record_path, record_is_ours)
         raise
     return HandedOver(record_path, paths, trials, total)
 
 
-def _undo(written: list[Path], dealt: Dealt) -> None:
-    """Remove this call's files, last written first; one that cannot be removed is left for the next run to name."""
-    for path in reversed(written):
+def _undo(shares: list[Path], record: Record, record_path: Path, record_is_ours: bool) -> None:
+    """Remove the record and then the shares that this call wrote; a share that cannot be removed is left for the next
+    run to name. Where the record cannot be removed the shares stay: it must never outlive them."""
+    try:
+        if record_is_ours or _is_there(record, record_path):
+            discard(record_path)
+    except StorageError:
+        return
+    for path in reversed(shares):
         with contextlib.suppress(StorageError):
-            # The record may not have been written, and another process may have won its name: only ours is removed.
-            if path.name != RECORD_NAME or read_back(path, limit=MAX_FILE) == dealt.record.to_file():
-                discard(path)
+            discard(path)
+
+
+def _is_there(record: Record, path: Path) -> bool:
+    """Say whether this very record stands at ``path``: an interrupt may come between its writing and our knowing."""
+    is_file = os.path.isfile(path) and not os.path.islink(path)
+    return is_file and read_back(path, limit=MAX_FILE) == record.to_file()
 
 
 def _prove(record: Record, paths: list[Path], progress: Progress | None) -> tuple[int, int]:
@@ -143,6 +153,8 @@ def _prove(record: Record, paths: list[Path], progress: Progress | None) -> tupl
                 raise VerificationError(
                     f"a share just written does not verify: {finding.status}, {finding.reason}", where=finding.source
                 )
+        if [share.custodian for share in shares] != [custodian.name for custodian in record.custodians]:
+            raise VerificationError("a share just written reads back as another one", hint="the medium is faulty")
         points = [point for share in shares for point in share.points()]
         places = [point.path for point in points]
         total = count_quorums(places)

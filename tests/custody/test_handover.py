@@ -1,0 +1,294 @@
+"""Handing over: every share written, read back, verified and tried, then the record, last; or nothing at all.
+
+Checked against: what lies in the folders afterwards. Every step that can fail is made to fail, one at a time.
+"""
+
+from __future__ import annotations
+
+import errno
+import math
+import os
+import stat
+from pathlib import Path
+
+import pytest
+from strategies import HARBOUR, crooked_split, flat, presented, revealed
+
+from shares.custody import handover
+from shares.custody.handover import check_targets, hand_over, share_path
+from shares.custody.presented import load_record, load_shares
+from shares.custody.recover import recover
+from shares.custody.split import Dealt, flat_rule, split
+from shares.custody.verify import examine
+from shares.errors import StorageError, VerificationError
+from shares.memory import Secret
+
+SECRET = b"not a real key, made up for a test"
+
+
+@pytest.fixture
+def dealt() -> Dealt:
+    return split(Secret.of(SECRET), flat(2, 3), label="Tide archive")
+
+
+@pytest.fixture
+def places(tmp_path: Path) -> tuple[Path, dict[str, Path]]:
+    """A set folder that is not there yet, and a delivery folder for each custodian."""
+    deliveries = {name: tmp_path / "media" / name for name in HARBOUR[:3]}
+    for folder in deliveries.values():
+        folder.mkdir(parents=True, mode=0o700)
+    return tmp_path / "set", deliveries
+
+
+def files(tmp_path: Path) -> list[str]:
+    return sorted(str(path.relative_to(tmp_path)) for path in tmp_path.rglob("*") if not path.is_dir())
+
+
+def test_the_files_are_private_and_complete_and_recover(dealt, places, tmp_path) -> None:
+    done = hand_over(dealt, *places)
+    assert files(tmp_path) == sorted(["set/record.json", *(f"media/{name}/{name}.share.json" for name in HARBOUR[:3])])
+    assert stat.S_IMODE(done.record.stat().st_mode) == 0o644
+    assert stat.S_IMODE(done.record.parent.stat().st_mode) == 0o700
+    assert {stat.S_IMODE(path.stat().st_mode) for path in done.shares.values()} == {0o600}
+    assert (done.trials, done.quorums) == (3, 3)
+    record, shares = load_record(done.record), load_shares(list(done.shares.values()))
+    assert {finding.status.value for finding in examine(shares, record)} == {"intact"}
+    assert revealed(recover(shares[1:], record).secret) == SECRET
+
+
+def test_all_shares_may_go_to_one_folder(dealt, tmp_path) -> None:
+    tmp_path.joinpath("out").mkdir()
+    hand_over(dealt, tmp_path / "set", dict.fromkeys(HARBOUR[:3], tmp_path / "out"))
+    assert len(files(tmp_path)) == 4
+
+
+def test_every_quorum_is_tried_up_to_a_thousand_and_beyond_each_share(tmp_path) -> None:
+    """C(12, 4) = 495 quorums are all tried; C(14, 5) = 2,002 are sampled so that each share takes part."""
+    for need, total, trials in ((4, 12, 495), (5, 14, None)):
+        out = tmp_path / f"{need}-of-{total}"
+        out.mkdir()
+        names = [f"pier {i}" for i in range(total)]
+        dealt = split(Secret.of(SECRET), flat_rule(need, names), label="Tide archive")
+        seen: list[tuple[int, int]] = []
+        done = hand_over(
+            dealt,
+            out / "set",
+            dict.fromkeys(names, out),
+            progress=lambda done, all_, seen=seen: seen.append((done, all_)),
+        )
+        assert done.quorums == math.comb(total, need)
+        assert done.trials == (trials or -(-total // need))
+        assert seen == [(i, done.trials) for i in range(done.trials)]
+
+
+# What is refused before anything is written.
+
+
+def test_a_missing_delivery_folder_is_refused_and_not_made(dealt, places, tmp_path) -> None:
+    places[1]["south-pier"].rmdir()
+    with pytest.raises(StorageError, match="south-pier is not there"):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == []
+    assert not places[0].exists()
+
+
+def test_a_delivery_folder_that_may_not_be_entered_is_refused_not_stumbled_over(dealt, places, monkeypatch) -> None:
+    """stat(2) answers EACCES below a folder without search permission; as root it cannot be had for real."""
+    real = os.stat
+
+    def no_entry(path, *args, **kwargs):
+        if os.fspath(path).endswith("south-pier"):
+            raise PermissionError(errno.EACCES, os.strerror(errno.EACCES), path)
+        return real(path, *args, **kwargs)
+
+    monkeypatch.setattr(os, "stat", no_entry)
+    with pytest.raises(StorageError, match="south-pier"):
+        check_targets(*places)
+
+
+@pytest.mark.parametrize("kind", ["file", "link", "dangling link", "folder"])
+@pytest.mark.parametrize("name", ["record", "share"])
+def test_whatever_has_the_name_already_is_kept(dealt, places, tmp_path, kind, name) -> None:
+    target = places[0] / "record.json" if name == "record" else share_path(places[1]["south-pier"], "south-pier")
+    target.parent.mkdir(exist_ok=True)
+    other = tmp_path / "other"
+    other.write_bytes(b"kept")
+    if kind == "file":
+        target.write_bytes(b"kept")
+    elif kind == "folder":
+        target.mkdir()
+    else:
+        target.symlink_to(other if kind == "link" else tmp_path / "nowhere")
+    before = files(tmp_path)
+    with pytest.raises(StorageError):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == before
+    assert other.read_bytes() == b"kept"
+
+
+@pytest.mark.parametrize("where", ["set", "media"])
+def test_what_a_killed_run_left_is_named(dealt, places, where) -> None:
+    folder = places[0] if where == "set" else places[1]["light-house"]
+    folder.mkdir(exist_ok=True)
+    left = folder / f".record.json.{'0' * 16}.partial"
+    left.write_bytes(b"")
+    with pytest.raises(StorageError, match=left.name):
+        check_targets(*places)
+
+
+# Failures on the way. After each, no file of the act is there: never a record without its shares.
+
+
+class Failure(Exception):
+    """What no code of the package raises or expects."""
+
+
+def failing(monkeypatch, function: str, at: int, error: BaseException) -> list[int]:
+    """Make the call number ``at`` of a function of the module fail; return where calls are counted."""
+    real, calls = getattr(handover, function), []
+
+    def stand_in(*args, **kwargs):
+        calls.append(1)
+        if len(calls) == at:
+            raise error
+        return real(*args, **kwargs)
+
+    monkeypatch.setattr(handover, function, stand_in)
+    return calls
+
+
+ERRORS = [StorageError("the medium is full"), KeyboardInterrupt(), MemoryError(), Failure()]
+
+
+@pytest.mark.parametrize("error", ERRORS, ids=lambda error: type(error).__name__)
+@pytest.mark.parametrize(
+    ("function", "at"),
+    [
+        *(("write_new", at) for at in range(1, 5)),
+        *(("read_back", at) for at in range(1, 5)),
+        ("examine", 1),
+        *(("recover_payload", at) for at in range(1, 4)),
+        *(("is_committed", at) for at in range(1, 4)),
+    ],
+)
+def test_a_failure_at_any_step_leaves_nothing(dealt, places, tmp_path, monkeypatch, function, at, error) -> None:
+    calls = failing(monkeypatch, function, at, error)
+    with pytest.raises(type(error)):
+        hand_over(dealt, *places)
+    assert len(calls) >= at
+    assert files(tmp_path) == []
+
+
+def test_a_progress_report_that_fails_leaves_nothing(dealt, places, tmp_path) -> None:
+    def report(done: int, total: int) -> None:
+        raise Failure
+
+    with pytest.raises(Failure):
+        hand_over(dealt, *places, progress=report)
+    assert files(tmp_path) == []
+
+
+@pytest.mark.parametrize("edit", [False, True])
+def test_a_share_that_comes_back_changed_leaves_nothing(dealt, places, tmp_path, monkeypatch, edit) -> None:
+    """South pier's file reads back as north pier's, whole share, or as south pier's with another label."""
+    real = handover.read_back
+    north, south = dealt.shares[:2]
+    instead = south.model_copy(update={"label": "Another label"}).to_file() if edit else north.to_file()
+
+    def changed(path, *, limit):
+        return instead if Path(path).name == "south-pier.share.json" else real(path, limit=limit)
+
+    monkeypatch.setattr(handover, "read_back", changed)
+    with pytest.raises(VerificationError):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == []
+
+
+def test_a_dealing_that_does_not_recover_is_never_handed_over(places, tmp_path) -> None:
+    def bend(dealing) -> None:
+        with dealing.points["south-pier"][0].row.view() as row:
+            row[0] ^= 1
+
+    dealt = crooked_split(SECRET, flat(2, 3), bend=bend)
+    with pytest.raises(VerificationError, match="inconsistent dealing"):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == []
+
+
+def test_a_dealing_that_verifies_but_recovers_another_secret_is_never_handed_over(
+    places, tmp_path, monkeypatch
+) -> None:
+    """A dealer whose commitment, in shares and record alike, is to something else than what was shared."""
+    monkeypatch.setattr("strategies.commitment", lambda set_id, payload: bytes(32))
+    dealt = crooked_split(SECRET, flat(2, 3))
+    assert {finding.status.value for finding in examine(presented(dealt.shares), dealt.record)} == {"intact"}
+    with pytest.raises(VerificationError, match="trial recovery"):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == []
+
+
+def test_a_record_that_comes_back_changed_is_removed_with_the_shares(dealt, places, tmp_path, monkeypatch) -> None:
+    """The medium spoils the record: it once stayed, as it was no longer what had been written, and the shares went."""
+    real = handover.read_back
+
+    def spoiled(path, *, limit):
+        return real(path, limit=limit) + (b" " if Path(path).name == "record.json" else b"")
+
+    monkeypatch.setattr(handover, "read_back", spoiled)
+    with pytest.raises(VerificationError, match="the record read back differs"):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == []
+
+
+def test_a_record_that_cannot_be_removed_keeps_its_shares(dealt, places, tmp_path, monkeypatch) -> None:
+    real_read, real_discard = handover.read_back, handover.discard
+
+    def unreadable(path, *, limit):
+        if Path(path).name == "record.json":
+            raise StorageError("the medium reports an error")
+        return real_read(path, limit=limit)
+
+    def stuck(path):
+        if Path(path).name == "record.json":
+            raise StorageError("the medium is read-only")
+        real_discard(path)
+
+    monkeypatch.setattr(handover, "read_back", unreadable)
+    monkeypatch.setattr(handover, "discard", stuck)
+    with pytest.raises(StorageError, match="reports an error"):
+        hand_over(dealt, *places)
+    monkeypatch.undo()
+    shares = load_shares([share_path(places[1][name], name) for name in HARBOUR[:3]])
+    assert {finding.status.value for finding in examine(shares, load_record(places[0] / "record.json"))} == {"intact"}
+
+
+def test_a_share_that_cannot_be_removed_does_not_keep_the_others(dealt, places, tmp_path, monkeypatch) -> None:
+    real = handover.discard
+
+    def stuck(path):
+        if Path(path).name == "south-pier.share.json":
+            raise StorageError("the medium is read-only")
+        real(path)
+
+    monkeypatch.setattr(handover, "discard", stuck)
+    failing(monkeypatch, "recover_payload", 1, Failure())
+    with pytest.raises(Failure):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == ["media/south-pier/south-pier.share.json"]
+
+
+@pytest.mark.parametrize("ours", [True, False])
+def test_an_interrupt_just_after_the_record_was_written_undoes_only_our_own(dealt, places, tmp_path, monkeypatch, ours):
+    """Another process may win the record's name; what it wrote is not ours to remove."""
+    real = handover.write_new
+
+    def interrupted(path, data, *, secret):
+        if Path(path).name == "record.json":
+            real(path, data if ours else b"{}", secret=secret)
+            raise KeyboardInterrupt
+        real(path, data, secret=secret)
+
+    monkeypatch.setattr(handover, "write_new", interrupted)
+    with pytest.raises(KeyboardInterrupt):
+        hand_over(dealt, *places)
+    assert files(tmp_path) == ([] if ours else ["set/record.json"])
