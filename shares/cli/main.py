@@ -1,24 +1,27 @@
 """The command ``shares``: finds the command asked for, and turns every refusal into one line and an exit code.
 
 Source: the exit codes are this project's own (shares/errors.py, README).
-May import: shares.errors, shares.memory, shares.field, shares.cli.output; a command's module only when it is asked for.
+May import: shares.errors, shares.memory, shares.field, shares.cli.output, shares.cli.signals; a command's module only
+when it is asked for.
 Secret: nothing. Public: arguments, messages.
 Does not: do any command's work. Before anything else it turns core dumps off.
 """
 
 from __future__ import annotations
 
+import contextlib
 import importlib
-import signal
+import io
+import os
 import sys
-from types import FrameType
 from typing import NoReturn
 
 import click
 
 import shares
 from shares.cli.output import print_error, warn
-from shares.errors import ParameterError, SharesError
+from shares.cli.signals import heed_signals
+from shares.errors import ParameterError, SharesError, StorageError
 from shares.memory import lock_refused, protect_process
 
 # Name -> (module, what it is for), in the order of a key's life. Modules are imported late: `--version` and `--help`
@@ -91,23 +94,31 @@ def commands() -> None:
 def run() -> NoReturn:
     """Run the command line and leave with its exit code; never with a traceback."""
     protect_process()
-    for number in (signal.SIGTERM, signal.SIGHUP):
-        signal.signal(number, _stop)
+    heed_signals()
+    _prepare_streams()
     arguments = sys.argv[1:]
     before_command = arguments[: arguments.index("--")] if "--" in arguments else arguments
     sys.exit(_run(arguments, as_json="--json" in before_command))
 
 
-def _stop(number: int, _: FrameType | None) -> NoReturn:
-    # An exception, so that what has been written is undone and secrets are wiped on the way out.
-    raise KeyboardInterrupt(number)
+def _prepare_streams() -> None:
+    """See to it that descriptors 0 to 2 are taken, and that no text is too strange to be printed."""
+    for number in range(3):
+        try:
+            os.fstat(number)
+        except OSError:
+            # Closed by whoever started us: a share file opened later would get this number, and whatever a library
+            # prints would go into it. The lowest free number is the one given; standard input cannot be read then.
+            os.open(os.devnull, os.O_RDWR if number else os.O_WRONLY)
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
 
 
 def _run(arguments: list[str], *, as_json: bool) -> int:
     problem: SharesError
     try:
         code = commands.main(arguments, prog_name="shares", standalone_mode=False)
-        sys.stdout.flush()
         refused = lock_refused()
         if refused:
             warn(f"{refused}.")
@@ -115,17 +126,20 @@ def _run(arguments: list[str], *, as_json: bool) -> int:
     except SharesError as error:
         problem = error
     except click.exceptions.NoArgsIsHelpError as error:
-        click.echo(error.format_message(), err=True)
+        with contextlib.suppress(OSError):
+            click.echo(error.format_message(), err=True)
         return ParameterError.exit_code
     except click.ClickException as error:
-        problem = ParameterError(error.format_message().rstrip("."), hint="see --help")
+        # Some of these messages are several lines long.
+        message = " ".join(error.format_message().split())
+        problem = ParameterError(message.rstrip("."), hint="see --help")
     except (click.Abort, KeyboardInterrupt):
         problem = SharesError("stopped before it was done", hint="nothing was left half written")
     except BrokenPipeError:
         # Whoever read the output has gone; there is nobody to tell.
         return 1
     except OSError as error:
-        problem = SharesError(f"the system refused: {error.strerror or type(error).__name__}")
+        problem = StorageError(f"the system refused: {error.strerror or type(error).__name__}")
     except Exception as error:  # noqa: BLE001 - law 7: never a traceback; the text is withheld, as it may hold anything
         place = error.__traceback__
         while place and place.tb_next:
@@ -135,5 +149,7 @@ def _run(arguments: list[str], *, as_json: bool) -> int:
             f"a fault in this program: {type(error).__name__} at {where}",
             hint="please report it; no secret is in this line",
         )
-    print_error(problem, as_json=as_json)
+    # Where standard output or error is full or gone, the exit code still tells.
+    with contextlib.suppress(OSError):
+        print_error(problem, as_json=as_json)
     return problem.exit_code

@@ -8,18 +8,37 @@ Does not: decide exit codes; errors carry theirs.
 
 from __future__ import annotations
 
+import contextlib
 import json
 import sys
 import textwrap
 import time
 from collections.abc import Callable, Iterable
-from typing import Any
+from typing import Any, TypeVar
 
 import click
 
-from shares.errors import CommandFailedError, SharesError
+from shares.errors import CommandFailedError, ParameterError, SharesError, StorageError
+
+Given = TypeVar("Given")
 
 json_option = click.option("--json", "as_json", is_flag=True, help="Print the result as one JSON object.")
+
+
+def filled(_: click.Context, parameter: click.Parameter, value: Given) -> Given:
+    """Refuse an empty path or text: it would mean this folder, or nothing at all, to whoever reads it on.
+
+    Raises:
+        ParameterError: the value, or one of several, is empty.
+    """
+    given = value if isinstance(value, tuple) else (value,)
+    if any(one == "" for one in given):
+        raise ParameterError(
+            "an empty value is given",
+            where=parameter.opts[0] if isinstance(parameter, click.Option) else parameter.metavar,
+            hint="in a script, see whether a variable is not set",
+        )
+    return value
 
 
 def print_result(members: dict[str, Any], lines: Iterable[str], *, as_json: bool, aside: bool = False) -> None:
@@ -31,11 +50,20 @@ def print_result(members: dict[str, Any], lines: Iterable[str], *, as_json: bool
         as_json: which of the two.
         aside: put the lines on standard error, because standard output is a fed command's.
     """
-    if as_json:
-        click.echo(json.dumps(members, indent=2, ensure_ascii=False))
-    else:
-        for line in lines:
-            click.echo(_printable(line), err=aside)
+    try:
+        if as_json:
+            click.echo(json.dumps(members, indent=2))
+        else:
+            for line in lines:
+                click.echo(_printable(line), err=aside)
+    except BrokenPipeError:
+        raise
+    except OSError as error:
+        raise StorageError(
+            f"the result could not be printed: {(error.strerror or type(error).__name__).lower()}",
+            where="standard error" if aside and not as_json else "standard output",
+            hint="what was asked for is done all the same",
+        ) from error
 
 
 def prose(text: str) -> list[str]:
@@ -45,7 +73,9 @@ def prose(text: str) -> list[str]:
 
 def warn(line: str) -> None:
     """Print a caution to standard error."""
-    click.echo(_printable(f"Caution: {line}"), err=True)
+    # Where standard error is full or gone, what was done is still to be told on standard output.
+    with contextlib.suppress(OSError):
+        click.echo(_printable(f"Caution: {line}"), err=True)
 
 
 def print_error(error: SharesError, *, as_json: bool) -> None:
@@ -54,7 +84,7 @@ def print_error(error: SharesError, *, as_json: bool) -> None:
         told: dict[str, Any] = {"code": error.code, "what": error.what, "where": error.where, "hint": error.hint}
         if isinstance(error, CommandFailedError):
             told["status"] = error.status
-        click.echo(json.dumps({"done": False, "exit": error.exit_code, "error": told}, indent=2, ensure_ascii=False))
+        click.echo(json.dumps({"done": False, "exit": error.exit_code, "error": told}, indent=2))
     else:
         click.echo(_printable(f"shares: {error}"), err=True)
 
@@ -64,11 +94,17 @@ def _printable(line: str) -> str:
     return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in line)
 
 
-def progress(what: str) -> Callable[[int, int], None]:
-    """Return a callback that shows progress on a terminal once the work has taken two seconds."""
+def progress(what: str, stop_here: Callable[[], None]) -> Callable[[int, int], None]:
+    """Return a callback that shows progress on a terminal once the work has taken two seconds.
+
+    Args:
+        what: the work, in words.
+        stop_here: called each time; raises where the work is to stop.
+    """
     start = time.monotonic()
 
     def show(done: int, total: int) -> None:
+        stop_here()
         spent = time.monotonic() - start
         if spent > 2 and sys.stderr.isatty():
             left = spent / max(done, 1) * (total - done)

@@ -2,18 +2,21 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
-import sys
 from pathlib import Path
 
 import click
 
-from shares.cli.output import json_option, print_result, prose, warn
+from shares.cli.output import filled, json_option, print_result, prose, warn
+from shares.cli.signals import held_signals
 from shares.custody.deliver import to_command, to_file
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
 from shares.errors import ParameterError, StorageError
 
+# By number: a stream of this program may be missing where the descriptor is not.
+STANDARD_ERROR = 2
 EXPOSED = (
     "this machine has now held the secret and the shares used. "
     "Decide what becomes of both: return, replace by a date, or destroy."
@@ -35,22 +38,26 @@ class _FeedsCommand(click.Command):
 
 
 @click.command(cls=_FeedsCommand)
-@click.argument("files", metavar="SHARE...", nargs=-1, required=True)
+@click.argument("files", metavar="SHARE...", nargs=-1, required=True, callback=filled)
 @click.option(
-    "--record", "record_file", metavar="R", help="The set's public record: tells bad shares apart beforehand."
+    "--record",
+    "record_file",
+    metavar="R",
+    callback=filled,
+    help="The set's public record: tells bad shares apart beforehand.",
 )
 @click.option(
     "--to",
     "target",
     metavar="FILE",
-    type=click.Path(path_type=Path),
+    callback=filled,
     help="Write the secret to this new file, mode 0600.",
 )
 @click.option("--check", is_flag=True, help="Only prove that the shares recover the secret; write it nowhere.")
 @json_option
 @click.pass_context
 def command(
-    ctx: click.Context, files: tuple[str, ...], record_file: str | None, target: Path | None, check: bool, as_json: bool
+    ctx: click.Context, files: tuple[str, ...], record_file: str | None, target: str | None, check: bool, as_json: bool
 ) -> None:
     """Recover the secret from enough SHAREs, check it against the commitment, and only then let it go.
 
@@ -67,26 +74,33 @@ def command(
     fed: list[str] | None = ctx.meta.get("command")
     if (target is not None) + check + (fed is not None) != 1 or fed == []:
         raise ParameterError("give exactly one of --to FILE, --check, or -- COMMAND", hint="see --help")
-    if target is not None and os.path.lexists(target):
-        raise StorageError(
-            "exists already and is never overwritten", where=os.fspath(target), hint="choose another name"
+    if target == "-":
+        raise ParameterError(
+            "the secret is not printed",
+            where="--to -",
+            hint="name a new file, or put the command that needs it after --; a file of this name is ./-",
         )
-    record = load_record(record_file) if record_file else None
+    if target is not None and os.path.lexists(target):
+        raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
+    record = load_record(record_file) if record_file is not None else None
     recovery = recover(load_shares(files), record)
     if not as_json:
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
                 warn(f"{finding.source} is {finding.status}: {finding.reason}.")
-    with recovery.secret as secret:
-        if target is not None:
-            to_file(secret, target)
-        elif fed:
-            to_command(secret, fed, output=sys.stderr.fileno() if as_json else None)
     went = f"written to {target}" if target is not None else f"given to {fed[0]}" if fed else "written nowhere"
     against = (
         f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"
     )
-    print_result(_members(recovery, went, against), _lines(recovery, went, against), as_json=as_json, aside=bool(fed))
+    with contextlib.ExitStack() as stack:
+        secret = stack.enter_context(recovery.secret)
+        if target is not None:
+            stack.enter_context(held_signals())
+            to_file(secret, Path(target))
+        elif fed:
+            to_command(secret, fed, output=STANDARD_ERROR if as_json else None)
+        members, lines = _members(recovery, went, against), _lines(recovery, went, against)
+        print_result(members, lines, as_json=as_json, aside=bool(fed))
 
 
 def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:

@@ -6,7 +6,7 @@ import os
 
 import click
 
-from shares.cli.output import json_option, print_result
+from shares.cli.output import filled, json_option, print_result
 from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.record import Record
 from shares.documents.share import Share
@@ -16,7 +16,7 @@ from shares.storage import read_file
 
 
 @click.command()
-@click.argument("file", metavar="FILE")
+@click.argument("file", metavar="FILE", callback=filled)
 @json_option
 def command(file: str, as_json: bool) -> None:
     """Show the public facts of a share or record; never a secret byte.

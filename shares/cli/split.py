@@ -6,7 +6,8 @@ from pathlib import Path
 
 import click
 
-from shares.cli.output import json_option, print_result, progress, warn
+from shares.cli.output import filled, json_option, print_result, progress, warn
+from shares.cli.signals import held_signals
 from shares.custody.handover import HandedOver, check_targets, hand_over
 from shares.custody.payload import MAX_SECRET
 from shares.custody.split import Dealt, flat_rule, split
@@ -20,7 +21,7 @@ ONE_CAUTION = "with --need 1 there is no secrecy: every single share is the whol
 
 
 @click.command()
-@click.argument("file", metavar="FILE|-")
+@click.argument("file", metavar="FILE|-", callback=filled)
 @click.option("--need", type=int, required=True, metavar="K", help="How many shares recover the secret.")
 @click.option(
     "--custodian", "custodians", multiple=True, required=True, metavar="NAME", help="Who keeps a share; once for each."
@@ -31,7 +32,7 @@ ONE_CAUTION = "with --need 1 there is no secrecy: every single share is the whol
     "set_folder",
     required=True,
     metavar="DIR",
-    type=click.Path(path_type=Path),
+    callback=filled,
     help="New folder for the public record.",
 )
 @click.option(
@@ -40,12 +41,14 @@ ONE_CAUTION = "with --need 1 there is no secrecy: every single share is the whol
     multiple=True,
     required=True,
     metavar="DIR|NAME=DIR",
+    callback=filled,
     help="Existing folder for the shares, or for one custodian's. Best on a RAM disk or on the custodian's own medium.",
 )
 @click.option("--plain", is_flag=True, help="Write bare shares. Required: this version cannot wrap shares yet.")
 @click.option(
     "--polynomial",
     metavar="P",
+    callback=filled,
     help="Irreducible polynomial of degree 8 for the field.  [default: x^8 + x^4 + x^3 + x + 1]",
 )
 @json_option
@@ -54,7 +57,7 @@ def command(
     need: int,
     custodians: tuple[str, ...],
     label: str,
-    set_folder: Path,
+    set_folder: str,
     deliveries: tuple[str, ...],
     plain: bool,
     polynomial: str | None,
@@ -78,18 +81,19 @@ def command(
     rule = flat_rule(need, custodians)
     field = Field(Polynomial.parse(polynomial).number if polynomial else DEFAULT_MODULUS)
     folders = _delivery_folders(custodians, deliveries)
-    check_targets(set_folder, folders)
+    check_targets(Path(set_folder), folders)
     with read_secret(file, limit=MAX_SECRET) as secret:
         dealt = split(secret, rule, label=label, field=field)
-    try:
-        done = hand_over(dealt, set_folder, folders, progress=progress("Trial recovery"))
-    finally:
-        dealt.close()
-    cautions = [PLAIN_CAUTION] + ([ONE_CAUTION] if need == 1 else [])
-    if not as_json:
-        for caution in cautions:
-            warn(caution)
-    print_result(_members(dealt, done, cautions), _lines(dealt, done), as_json=as_json)
+    with held_signals() as stop_here:
+        try:
+            done = hand_over(dealt, Path(set_folder), folders, progress=progress("Trial recovery", stop_here))
+        finally:
+            dealt.close()
+        cautions = [PLAIN_CAUTION] + ([ONE_CAUTION] if need == 1 else [])
+        if not as_json:
+            for caution in cautions:
+                warn(caution)
+        print_result(_members(dealt, done, cautions), _lines(dealt, done), as_json=as_json)
 
 
 def _delivery_folders(custodians: tuple[str, ...], deliveries: tuple[str, ...]) -> dict[str, Path]:
@@ -97,13 +101,16 @@ def _delivery_folders(custodians: tuple[str, ...], deliveries: tuple[str, ...]) 
     own: dict[str, Path] = {}
     common: list[Path] = []
     for delivery in deliveries:
-        name, sign, folder = delivery.partition("=")
-        if sign and name in custodians:
-            if name in own:
-                raise ParameterError(f"two delivery folders are given for {name}", where="--deliver")
-            own[name] = Path(folder)
+        # A name may hold a sign of equality itself.
+        name = max((name for name in custodians if delivery.startswith(f"{name}=")), key=len, default=None)
+        if name is None:
+            common.append(_common_folder(delivery))
+        elif name in own:
+            raise ParameterError(f"two delivery folders are given for {name}", where="--deliver")
+        elif delivery == f"{name}=":
+            raise ParameterError(f"the delivery folder of {name} is empty", where="--deliver")
         else:
-            common.append(Path(delivery))
+            own[name] = Path(delivery.removeprefix(f"{name}="))
     if len(common) > 1:
         raise ParameterError(
             "more than one folder is given for all custodians",
@@ -113,7 +120,18 @@ def _delivery_folders(custodians: tuple[str, ...], deliveries: tuple[str, ...]) 
     without = [name for name in custodians if name not in own]
     if without and not common:
         raise ParameterError(f"no delivery folder is given for {', '.join(without)}", where="--deliver")
-    return own | dict.fromkeys(without, common[0])
+    return own | {name: folder for folder in common for name in without}
+
+
+def _common_folder(delivery: str) -> Path:
+    folder = Path(delivery)
+    if "=" in delivery and not folder.is_dir():
+        raise ParameterError(
+            "it begins with no custodian's name, and is no folder",
+            where=f"--deliver {delivery}",
+            hint="write NAME=DIR with a name given by --custodian",
+        )
+    return folder
 
 
 def _members(dealt: Dealt, done: HandedOver, cautions: list[str]) -> dict[str, object]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import click
 
-from shares.cli.output import json_option, print_result, prose
+from shares.cli.output import filled, json_option, print_result, prose
 from shares.custody.presented import Finding, Presented, Status, load_record, load_shares
 from shares.custody.verify import examine, examine_alone
 from shares.documents.record import Record
@@ -21,8 +21,8 @@ WITHOUT_RECORD = (
 
 
 @click.command()
-@click.argument("files", metavar="SHARE...", nargs=-1, required=True)
-@click.option("--record", "record_file", metavar="R", help="The set's public record.")
+@click.argument("files", metavar="SHARE...", nargs=-1, required=True, callback=filled)
+@click.option("--record", "record_file", metavar="R", callback=filled, help="The set's public record.")
 @json_option
 @click.pass_context
 def command(ctx: click.Context, files: tuple[str, ...], record_file: str | None, as_json: bool) -> None:
@@ -36,7 +36,7 @@ def command(ctx: click.Context, files: tuple[str, ...], record_file: str | None,
     Example:
       shares verify north-pier.share.json --record tide-archive/record.json
     """
-    record = load_record(record_file) if record_file else None
+    record = load_record(record_file) if record_file is not None else None
     presented = load_shares(files)
     findings = examine(presented, record) if record else examine_alone(presented)
     repeated = _repeated(presented)
@@ -47,30 +47,30 @@ def command(ctx: click.Context, files: tuple[str, ...], record_file: str | None,
         "shares": [
             {"file": f.source, "custodian": f.custodian, "status": f.status.value, "reason": f.reason} for f in findings
         ],
-        "repeated": repeated,
+        "repeated": [presented[i].source for i in repeated],
         "proves": proves,
     }
     print_result(members, _lines(findings, repeated, record, proves), as_json=as_json)
     ctx.exit(_exit_code(findings))
 
 
-def _repeated(presented: list[Presented]) -> list[str]:
-    """Return the files that hold a share which was given before."""
+def _repeated(presented: list[Presented]) -> list[int]:
+    """Return the places of shares that were given before."""
     seen: set[bytes] = set()
     again = []
-    for one in presented:
+    for i, one in enumerate(presented):
         if one.share is not None:
             commitment = one.share.commitment()
             if commitment in seen:
-                again.append(one.source)
+                again.append(i)
             seen.add(commitment)
     return again
 
 
-def _lines(findings: list[Finding], repeated: list[str], record: Record | None, proves: str) -> list[str]:
+def _lines(findings: list[Finding], repeated: list[int], record: Record | None, proves: str) -> list[str]:
     lines = []
-    for finding in findings:
-        again = "; the same share was given before" if finding.source in repeated else ""
+    for i, finding in enumerate(findings):
+        again = "; the same share was given before" if i in repeated else ""
         name = f" ({finding.custodian})" if finding.custodian else ""
         lines.append(f"{finding.source}{name}: {finding.status} - {finding.reason}{again}")
     intact = [finding for finding in findings if finding.status is Status.INTACT]
