@@ -85,7 +85,8 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
         names = ", ".join(os.fspath(path) for path in there)
         raise StorageError(
             f"found {len(there)} file(s) of another split, or left by a run that did not finish: {names}",
-            hint="where no record names them they open nothing: destroy them; else choose another folder",
+            hint="shares that belong to a record elsewhere are in use: choose another folder; what a stopped run left "
+            "is destroyed like the secret itself, which enough of it recovers",
         )
 
 

@@ -38,8 +38,10 @@ def make_payload(field: Field, secret: Secret, *, pad: int = DEFAULT_PAD) -> Sec
         ParameterError: secret or pad out of range.
     """
     if not 1 <= len(secret) <= MAX_SECRET:
+        if not len(secret):
+            raise ParameterError("the secret is empty", hint="see what was to be written into its file or pipe")
         raise ParameterError(
-            "the secret is empty" if not len(secret) else f"the secret is larger than {MAX_SECRET:,} bytes",
+            f"the secret is larger than {MAX_SECRET:,} bytes",
             hint="encrypt a large file with a fresh key and split the key",
         )
     if not 1 <= pad <= MAX_PAD:
