@@ -12,6 +12,7 @@ Does not: multiply two secrets or invert one. Nothing in this package needs it. 
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, field
 from functools import cache
 
 from shares.errors import DuplicatePointError, ParameterError, PolynomialError
@@ -23,12 +24,13 @@ from shares.field.polynomial import MAX_DEGREE, Polynomial
 DEFAULT_MODULUS = 0x11B
 
 
+@dataclass(frozen=True, slots=True, repr=False)
 class Field:
     """GF(2)[x]/(modulus): products and weights of public numbers, and the two operations on secret rows.
 
     Args:
         modulus: irreducible polynomial of degree 8 as int, bit i the coefficient of x^i.
-        kernel: who computes on secrets; by default the kernel in use.
+        kernel: who computes on secrets; by default the kernel in use. Fields of one modulus are equal.
 
     Raises:
         PolynomialError: the modulus is of another degree, or reducible (the message names the factors).
@@ -41,31 +43,14 @@ class Field:
     shares.errors.PolynomialError: x^8 + 1 is not irreducible: over GF(2) it is (x + 1)^8
     """
 
-    __slots__ = ("_kernel", "_modulus")
+    modulus: int = DEFAULT_MODULUS
+    kernel: Kernel = field(default_factory=kernel_in_use, kw_only=True, compare=False)
 
-    _modulus: int
-    _kernel: Kernel
-
-    def __init__(self, modulus: int = DEFAULT_MODULUS, *, kernel: Kernel | None = None) -> None:
-        _require_irreducible(modulus)
-        object.__setattr__(self, "_modulus", modulus)
-        object.__setattr__(self, "_kernel", kernel or kernel_in_use())
-
-    def __setattr__(self, name: str, value: object) -> None:
-        raise AttributeError("a field cannot be changed")
-
-    @property
-    def modulus(self) -> int:
-        """The polynomial m as int, bit i the coefficient of x^i."""
-        return self._modulus
-
-    @property
-    def kernel(self) -> Kernel:
-        """Who computes on secrets."""
-        return self._kernel
+    def __post_init__(self) -> None:
+        _require_irreducible(self.modulus)
 
     def __repr__(self) -> str:
-        return f"Field({self._modulus:#x})"
+        return f"Field({self.modulus:#x})"
 
     # Public numbers: ordinary Python, whose time depends on the values.
 
@@ -89,7 +74,7 @@ class Field:
                 product ^= a
             a <<= 1
             if a & 0x100:
-                a ^= self._modulus
+                a ^= self.modulus
             b >>= 1
         return product
 
@@ -205,7 +190,7 @@ class Field:
         Raises:
             ValueError: shapes do not fit or buffers overlap; nothing has been written then.
         """
-        self._kernel.combine(self._modulus, matrix, rows, out)
+        self.kernel.combine(self.modulus, matrix, rows, out)
 
     def project(self, matrix: ReadableBuffer, row: ReadableBuffer, out: WritableBuffer) -> None:
         """Write ``out[i] = sum over j of matrix[i][j] * row[j]``.
@@ -218,7 +203,7 @@ class Field:
         Raises:
             ValueError: shapes do not fit or buffers overlap; nothing has been written then.
         """
-        self._kernel.project(self._modulus, matrix, row, out)
+        self.kernel.project(self.modulus, matrix, row, out)
 
 
 def _require_elements(bits: int) -> None:

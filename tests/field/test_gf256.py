@@ -9,6 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from shares.errors import DuplicatePointError, ParameterError, PolynomialError
+from shares.field import kernel
 from shares.field.gf256 import Field
 
 BYTES = st.sampled_from([0, 1, 2, 0x80, 0xFF]) | st.integers(0, 255)
@@ -58,9 +59,10 @@ class TestReference:
 
     def test_all_products(self, all_moduli, reference_products):
         for modulus in all_moduli:
-            field = Field(modulus)
-            products = [bytes(field.multiply(a, b) for b in range(256)) for a in range(256)]
-            assert products == reference_products(modulus)
+            field, products = Field(modulus), reference_products(modulus)
+            for a in range(256):
+                # Half of them: that products commute is seen by test_field_laws.
+                assert bytes(field.multiply(a, b) for b in range(a + 1)) == products[a][: a + 1]
 
     def test_all_inverses(self, all_moduli, reference_products):
         for modulus in all_moduli:
@@ -145,7 +147,7 @@ class TestConstruction:
                 return False
             return True
 
-        assert [m for m in range(1 << 10) if makes_a_field(m)] == sorted(all_moduli)
+        assert [m for m in range(1 << 9) if makes_a_field(m)] == sorted(all_moduli)
 
     @pytest.mark.parametrize(
         ("modulus", "message"),
@@ -170,9 +172,13 @@ class TestConstruction:
         assert Field().modulus == 0x11B
         assert repr(Field(0x1F5)) == "Field(0x1f5)"
 
+    def test_fields_of_one_modulus_are_equal(self, implementation):
+        assert Field(0x11D, kernel=implementation) == Field(0x11D, kernel=kernel("portable")) != Field(0x11B)
+        assert len({Field(), Field(0x11B), Field(0x11D)}) == 2
+
     def test_frozen(self):
         field = Field()
-        for name in ["modulus", "_modulus", "kernel", "other"]:
+        for name in ["modulus", "kernel"]:
             with pytest.raises(AttributeError):
                 setattr(field, name, 0x11D)
         assert field.modulus == 0x11B

@@ -91,7 +91,7 @@ def test_combine_takes_the_same_steps_for_every_secret(trace, matrix, length):
 
 
 @pytest.mark.parametrize("height", [1, 16])
-@pytest.mark.parametrize("length", [1, 2, 3, 16, 17, 64, 80, 1023, 1024, 1025])
+@pytest.mark.parametrize("length", [1, 2, 3, 16, 17, 64, 80, 2047, 2048, 2049])
 def test_project_takes_the_same_steps_for_every_secret(trace, height, length):
     matrix = random.Random(1).randbytes(length * height)
     seen = [trace(_lanes.project, 0x11B, matrix, secret, bytearray(height)) for secret in secrets_of(length)]
