@@ -10,6 +10,7 @@ import hashlib
 import itertools
 import math
 import time
+from collections import Counter
 
 import pytest
 from hypothesis import assume, example, given
@@ -81,14 +82,30 @@ def test_where_there_are_too_many_quorums_random_ones_are_taken(paths: list[Path
 def test_random_quorums_are_spread_over_all_points() -> None:
     """Ten tries of 3-of-40 that began with the same two points would be no better than one."""
     paths = [((3, x),) for x in range(1, 41)]
-    met = {i for quorum in quorums(paths, most=400) for i in quorum}
+    met = Counter(i for quorum in quorums(paths, most=400) for i in quorum)
     # A point is missed by one try with probability 37/40, by all 400 with (37/40)^400 < 3e-14, for any of 40: 2e-12.
-    assert met == set(range(40))
+    assert set(met) == set(range(40))
+    # In order, the first point would stand in all 400. At random it stands in 30 on average, above 100 never (< 1e-20).
+    assert max(met.values()) <= 100
+
+
+def test_where_exactly_as_many_may_be_taken_as_there_are_all_are() -> None:
+    paths = [((2, x),) for x in range(1, 8)]
+    assert len(set(quorums(paths, most=21))) == 21
+
+
+def test_every_quorum_can_come_up_at_random_whatever_stands_at_a_place() -> None:
+    """A row and a group claim one place, and two thresholds one node; a quorum missed in 600 tries: below 1e-9."""
+    paths = [((2, 1),), ((2, 1), (1, 1)), ((2, 1), (1, 2)), ((2, 2),), ((2, 3),), ((1, 5),), ((1, 6),)]
+    met = {frozenset(quorum) for _ in range(100) for quorum in quorums(paths, most=6)}
+    assert met == all_quorums(paths)
 
 
 @given(some_paths())
 @example([((3, 1),), ((3, 2),)])  # Too few for a quorum: what was yielded here used one point twice.
 @example([((1, 1), (3, 2)), ((1, 2),)])  # A point without its neighbours beside one that suffices: a ValueError.
+@example([((2, 1),), ((2, 1), (3, 2)), ((2, 2),)])  # The same at one place.
+@example([((1, 1), (1, 1)), ((1, 1), (2, 5))])  # Two thresholds claimed for one group; one is met.
 def test_covering_quorums_use_every_point_that_can_be_in_a_quorum(paths: list[Path]) -> None:
     there = all_quorums(paths)
     chosen = [frozenset(quorum) for quorum in covering_quorums(paths)]
@@ -190,6 +207,18 @@ def test_a_bad_point_does_not_hide_among_many_quorums(first: int) -> None:
     points = bent(points_of(deal(field, Rule(3, names), Secret.of(payload))), {first}, b"\1")
     said = agreeing(field, points, Secret.of(payload), (5, 6, 7))
     assert said == (set(range(25)) - {first}, {first}, set())
+
+
+@pytest.mark.parametrize("inner", [False, True])
+def test_the_one_right_quorum_among_many_counts_though_all_others_are_wrong(inner: bool) -> None:
+    """Three right points of 25, 2,300 quorums: random ones would miss the right one nine times in ten."""
+    field, payload = Field(), bytes(range(LENGTH))
+    group = Rule(3, tuple(f"pier {i}" for i in range(25)))
+    rule = Rule(1, (group, "registrar")) if inner else group
+    for _ in range(5):
+        points = bent(points_of(deal(field, rule, Secret.of(payload)))[:25], set(range(25)) - {3, 11, 20}, b"\1")
+        said = agreeing(field, points, Secret.of(payload), (3, 11, 20))
+        assert said == ({3, 11, 20}, set(range(25)) - {3, 11, 20}, set())
 
 
 def offsetting(field: Field, points: list[Point]) -> list[Point]:
