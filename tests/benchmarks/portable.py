@@ -14,9 +14,6 @@ import platform
 import statistics
 import time
 
-import galois
-import numpy
-
 from shares.field import kernel
 from shares.field.gf256 import Field
 
@@ -46,6 +43,11 @@ def main():
     parser = argparse.ArgumentParser(description="Measure the portable kernel beside galois.")
     parser.add_argument("--seconds", type=float, default=2.0, help="time for each line (default 2)")
     seconds = parser.parse_args().seconds
+    # One thread for each; this must be said before numpy loads.
+    for variable in ["OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "NUMBA_NUM_THREADS"]:
+        os.environ[variable] = "1"
+    import galois
+    import numpy
 
     field, reference = Field(kernel=kernel("portable")), galois.GF(2**8, irreducible_poly=galois.Poly.Int(0x11B))
     split = [field.powers(x, 3) for x in range(1, 6)]
