@@ -14,6 +14,7 @@ from shares.custody.deliver import to_command, to_file
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
 from shares.errors import ParameterError, StorageError
+from shares.storage import leftovers
 
 # By number: a stream of this program may be missing where the descriptor is not.
 STANDARD_ERROR = 2
@@ -88,6 +89,12 @@ def command(
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
                 warn(f"{finding.source} is {finding.status}: {finding.reason}.")
+    left = leftovers(Path(target).parent) if target is not None else []
+    for path in left:
+        warn(
+            f"{path} was left by a run that was stopped, or belongs to one at work now; it may hold a secret. "
+            "Where none is at work, destroy it."
+        )
     went = f"written to {target}" if target is not None else f"given to {fed[0]}" if fed else "written nowhere"
     against = (
         f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"

@@ -212,7 +212,7 @@ def _with_rows_said_right(
 def _refusal(presented: Sequence[Presented], findings: Sequence[Finding], groups: list[_Group]) -> SharesError:
     """Say why nothing was recovered."""
     aside = "".join(
-        f"; {finding.source} was set aside ({finding.status})"
+        f"; {finding.source} was set aside ({finding.status}: {finding.reason})"
         for finding in findings
         if finding.status is not Status.INTACT
     )

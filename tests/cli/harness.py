@@ -28,7 +28,7 @@ from shares.memory import Protection
 
 PROGRAM = Path(sys.executable).with_name("shares")
 NOBODY = 65534
-SECRET = b"made up: no key opens with this\n"
+SECRET = b"Kj4qVz9Lm2Xw7RtB-made-up-8hPd\n"
 NAMES = ("north-pier", "south-pier", "light-house", "registrar", "dry-dock")
 LABEL = "Tide archive root"
 
