@@ -61,7 +61,7 @@ def combine(
     columns = list(zip(*matrix, strict=True))
     # Doublings are the larger part of the work. Either each row is doubled and shared by all outs (splitting), or each
     # out is built by Horner's rule (recovery); the same XORs are done in both.
-    share_powers = sum(map(max, columns)) <= sum(map(max, matrix))
+    share_powers = sum(max(column).bit_length() for column in columns) <= sum(max(line).bit_length() for line in matrix)
     length = len(sources[0])
     for start in range(0, length, BLOCK):
         stop = min(start + BLOCK, length)
@@ -87,7 +87,7 @@ def project(modulus: int, matrix: ReadableBuffer, row: ReadableBuffer, out: Writ
     lines, source, target = _view(matrix), _view(row), _view(out)
     _check(modulus, [source, lines], [target])
     length, height = len(source), len(target)
-    if length == 0 or height == 0 or len(lines) != length * height:
+    if len(lines) != length * height:
         raise ValueError("the matrix must have one line for each byte of out and one column for each byte of the row")
     # Lanes run column by column: lane (j, i) holds row[j], against matrix[i][j]. So lanes of one out lie ``height``
     # apart, and the sum over j folds whole halves onto each other. Zeros fill the columns up to a power of two.
