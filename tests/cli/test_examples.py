@@ -1,0 +1,82 @@
+"""The examples that each ``--help`` shows are run as they stand, in a folder where what they name is there.
+
+Only what lies outside such a folder is brought into it: the medium, the RAM disk and the home of whoever asks.
+"""
+
+from __future__ import annotations
+
+import os
+import re
+import subprocess
+from pathlib import Path
+
+import pytest
+from cli.harness import NAMES, PROGRAM, Place, run
+from cryptography.hazmat.primitives import serialization
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
+
+PAGES: list[tuple[str, ...]] = [
+    (),
+    ("split",),
+    ("verify",),
+    ("recover",),
+    ("show",),
+    ("polynomial",),
+    ("polynomial", "list"),
+    ("polynomial", "check"),
+    ("selftest",),
+    ("completion",),
+]
+
+
+def examples(page: tuple[str, ...]) -> list[str]:
+    """The lines after ``Example:`` in a help page, continued lines joined."""
+    text = run(*page, "--help").out.replace("\\\n", " ")
+    found = re.search(r"^ *Examples?:\n((?: +shares .*\n)+)", text, flags=re.MULTILINE)
+    return [re.sub(r"\s+", " ", line.strip()) for line in found[1].splitlines()] if found else []
+
+
+@pytest.fixture
+def prepared(tmp_path: Path) -> Path:
+    """A key, and in the same folder the shares and the record of a set."""
+    key = Ed25519PrivateKey.generate().private_bytes(
+        serialization.Encoding.PEM, serialization.PrivateFormat.PKCS8, serialization.NoEncryption()
+    )
+    place = Place.make(tmp_path / "made", key)
+    place.split(need=3, names=NAMES)
+    for path in place.shares:
+        path.rename(tmp_path / path.name)
+    (tmp_path / "record.json").write_bytes(place.record.read_bytes())
+    (tmp_path / "tide-archive").mkdir()
+    (tmp_path / "tide-archive" / "record.json").write_bytes(place.record.read_bytes())
+    for folder in ("media/stick", "dev/shm/handover", "home/.local/share/bash-completion/completions"):
+        (tmp_path / folder).mkdir(parents=True)
+    return tmp_path
+
+
+@pytest.mark.parametrize("page", PAGES, ids=lambda page: " ".join(page) or "shares")
+def test_every_example_runs(page: tuple[str, ...], prepared: Path) -> None:
+    lines = examples(page)
+    assert lines
+    for line in lines:
+        if line.startswith("shares split"):
+            (prepared / "key.pem").write_bytes((prepared / "made" / "key").read_bytes())
+            (prepared / "tide-archive" / "record.json").unlink()
+        done = subprocess.run(
+            ["bash", "-c", re.sub(r" (/media|/dev/shm)/", rf" {prepared}\1/", line)],
+            cwd=prepared,
+            env={**os.environ, "PATH": f"{PROGRAM.parent}:{os.environ['PATH']}", "HOME": str(prepared / "home")},
+            stdin=subprocess.DEVNULL,
+            capture_output=True,
+            text=True,
+            timeout=60,
+            check=False,
+        )
+        expected = 4 if line == "shares polynomial check 0x11c" else 0
+        assert (line, done.returncode, done.stderr if done.returncode != expected else "") == (line, expected, "")
+        if "--to key.pem" in line:
+            assert (prepared / "key.pem").read_bytes() == (prepared / "made" / "key").read_bytes()
+        if "openssl" in line:
+            assert done.stdout.startswith("-----BEGIN PUBLIC KEY-----")
+    written = prepared / "home/.local/share/bash-completion/completions/shares"
+    assert written.exists() is (page == ("completion",))
