@@ -195,7 +195,7 @@ Time = Annotated[
     datetime,
     PlainValidator(_decode_time),
     PlainSerializer(clock.to_text, return_type=str),
-    WithJsonSchema({"type": "string", "pattern": r"^\d{4}-\d\d-\d\dT\d\d:\d\d:\d\dZ$"}),
+    WithJsonSchema({"type": "string", "pattern": "^[0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9]{2}:[0-9]{2}:[0-9]{2}Z$"}),
 ]
 Name = Annotated[str, AfterValidator(_valid_name), Field(min_length=1, max_length=64)]
 Text = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=500)]
