@@ -86,7 +86,7 @@ def test_canonical_json_is_that_of_rfc_8785(script):
     every = "".join(map(chr, itertools.chain(range(0xD800), range(0xE000, 0x110000))))
     share = {"label": every, "kind": "share", "version": 1, "epoch": 2**32 - 1, "paths": [[[255, 1]]], "rule": None}
     assert script.canonical(share, *share) == rfc8785.dumps(share)
-    # RFC 8785 orders names by UTF-16 code units, Python by code points: for the ASCII names of a share that is one order.
+    # RFC 8785 orders names by UTF-16 code units, Python by code points; for ASCII names, as here, the two are one.
     assert all(name.isascii() for name in json.loads(SHARE.read_text()))
 
 
@@ -125,7 +125,7 @@ def test_every_shortened_file_is_refused(script, monkeypatch):
 
 
 def test_the_search_for_a_quorum_is_bounded(script, tmp_path, monkeypatch, capsys):
-    """Of 26 shares that each claim to be enough alone there are 2^26 selections: it ends in a refusal all the same."""
+    """Of 26 shares that each claim to be enough alone there are 2^26 selections: it still ends, in a refusal."""
     share = json.loads(SHARE.read_text())
     for x in range(1, 27):
         row = urlsafe_b64encode(bytes(52) + bytes([x])).decode().rstrip("=")

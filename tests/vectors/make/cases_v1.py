@@ -207,6 +207,24 @@ NAMES = {
     "not in NFC": "cha\u0302telet",
     "an ohm sign, which NFC replaces": "\u2126",
 }
+GOOD_NAMES = {
+    "one character": "n",
+    "64 characters": 64 * "n",
+    "50 characters of 4 bytes each, 200 bytes": 50 * "\U0001f512",
+    "dots and hyphens inside and last": "n.o-r..t--h.-",
+    "punctuation of JSON and shells": "\"n\" {o} $(r) 'th' & #; *?",
+    "single spaces inside": "the north pier",
+    "letters without case": "\u6e2f\u53e3",
+    "a combining mark that NFC keeps": "q\u0307",
+}
+GOOD_TEXTS = {
+    "one character": "t",
+    "a space": " ",
+    "500 characters of 4 bytes each": 500 * "\U0001f512",
+    "not in NFC": "cha\u0302telet",
+    "characters that other encoders of JSON escape": "</script> \u2028 \u2029 & ' / \\ \"",
+    "format characters": "\u200d \ufeff \u202e",
+}
 TEXTS = {
     "empty": "",
     "a newline": "one\ntwo",

@@ -14,6 +14,8 @@ from cases_v1 import (
     EPOCHS,
     FIELDS,
     FINGERPRINTS,
+    GOOD_NAMES,
+    GOOD_TEXTS,
     NAMES,
     Document,
     Test,
@@ -44,6 +46,9 @@ def record_faults(flat: Document, tree: Document) -> list[Test]:
     """List records out of the form of sections 3 and 5, their fingerprints set anew."""
     names = list(flat["rule"]["from"])
     c_0 = flat["checks"][0][0]
+
+    def renamed(name: str) -> Document:
+        return _with(_with(flat, "custodians", 0, "name", value=name), "rule", "from", 0, value=name)
 
     def alone(rule: Document, nodes: int) -> Document:
         """Give a record in which each node needs one, and all are north-pier: so every check is the same, and fits."""
@@ -113,10 +118,7 @@ def record_faults(flat: Document, tree: Document) -> list[Test]:
         ("rule: 256 children", alone({"need": 1, "from": 256 * ["north-pier"]}, 1)),
         ("rule: 9 nodes deep", alone(deep(9), 9)),
         ("rule: 1,001 names", alone(places(1001), 5)),
-        *(
-            (f"name: {comment}", _with(_with(flat, "custodians", 0, "name", value=name), "rule", "from", 0, value=name))
-            for comment, name in NAMES.items()
-        ),
+        *((f"name: {comment}", renamed(name)) for comment, name in NAMES.items()),
         ("custodians: none", {**flat, "custodians": []}),
         ("custodians: one missing", {**flat, "custodians": custodians[:-1]}),
         ("custodians: one twice", {**flat, "custodians": [*custodians, custodians[0]]}),
@@ -162,6 +164,11 @@ def record_faults(flat: Document, tree: Document) -> list[Test]:
         ("rule: 255 children", alone({"need": 1, "from": 255 * ["north-pier"]}, 1)),
         ("rule: 8 nodes deep", alone(deep(8), 8)),
         ("rule: 1,000 names", alone(places(1000), 5)),
+        *((f"name: {comment}", renamed(name)) for comment, name in GOOD_NAMES.items()),
+        *((f"label: {comment}", {**flat, "label": label}) for comment, label in GOOD_TEXTS.items()),
+        ("epoch: 2^32 - 1", {**flat, "epoch": 2**32 - 1}),
+        ("field: the last of the 30", {**flat, "field": "0x1f9"}),
+        ("created on 29 February", {**flat, "created": "2028-02-29T23:59:59Z"}),
     ]
     return tests + forms + [case(comment, "Basic", sealed_record(record), None) for comment, record in edges]
 

@@ -7,7 +7,6 @@ Does not: cover recovery (`recovery_cases_v1`).
 """
 
 import copy
-import json
 from collections.abc import Callable
 from dataclasses import replace
 from typing import Any
@@ -17,6 +16,7 @@ from cases_v1 import (
     EPOCHS,
     FIELDS,
     FINGERPRINTS,
+    GOOD_TEXTS,
     NAMES,
     Document,
     Test,
@@ -118,6 +118,7 @@ def belonging(dealing: Dealing, name: str, others: list[tuple[str, Dealing]]) ->
         {"label": None, "rule": None, "notice": None, "record": None},
         {"label": None},
         {"notice": "Another notice."},
+        *({"label": text, "rule": text, "notice": text} for text in GOOD_TEXTS.values()),
     ]
     altered: dict[str, Document] = {
         "a bit of the first row": {"rows": kept_rows["rows"]},
@@ -152,7 +153,7 @@ def belonging(dealing: Dealing, name: str, others: list[tuple[str, Dealing]]) ->
         ),
         "the record": ({"record": later.record["fingerprint"]}, "inconsistent dealing"),
     }
-    tests = [case(f"sealed anew: {json.dumps(c)}", "Basic", sealed({**share, **c}), None) for c in free]
+    tests = [case(f"other texts, {i}", "Basic", sealed({**share, **c}), None) for i, c in enumerate(free, 1)]
     tests += [case(f"altered: {what}", "Damage", pretty({**share, **c}), "damaged") for what, c in altered.items()]
     tests += [case(f"altered, sealed anew: {w}", "Forgery", sealed({**share, **c}), r) for w, (c, r) in forged.items()]
     next_one = later.shares[name]
