@@ -8,7 +8,7 @@ each node of the rule. Before a byte is written, each share is checked against i
 against the commitment in every share; bad shares are left out where the rest suffice. Success proves that this is the
 secret which these shares name. That they are the shares which were dealt, only the record proves.
 Cautions. The arithmetic is plain, without tables, NOT constant time, and leaves copies of the secret in memory: use a
-machine that is offline and yours alone, swap off. Shares that lie together are the secret: part them again at once. A
+machine that is offline and yours alone, swap off. Shares that lie together are the secret: take them apart at once. A
 key that was put together is known to that machine and all who had access: use it, then replace it, by your procedure.
 Exit codes: 0 done, 2 usage, 3 not enough shares, 4 verification failed (also for a damaged share), 5 file or I/O.
 """
@@ -87,8 +87,8 @@ def main(arguments):  # Section 8, and what to say about it.
         except (ValueError, TypeError, KeyError, RecursionError):  # Their texts could show what the file holds.
             bad.append(f"left out {file!a}: it is damaged, or no share of format version 1")
     for name in ("set", "epoch", "field", "secret_commitment", "encrypted_file", "length"):
-        if len({canonical(share, name) for share in good}) > 1:
-            refuse(4, f"these shares differ in {name}, and such shares never mix: give those of one set and epoch")
+        if len(kinds := {canonical(share, name): ascii(share["file"]) for share in good}) > 1:
+            refuse(4, f"{' and '.join(kinds.values())} differ in {name} and never mix: give those of one set and epoch")
     selections = (kept for size in range(len(good), 0, -1) for kept in itertools.combinations(good, size))
     for kept in itertools.islice(selections, 2_000):  # More would take too long: give fewer, better shares.
         payload = fold(kept, int(kept[0]["field"], 16))
@@ -97,7 +97,7 @@ def main(arguments):  # Section 8, and what to say about it.
             break
         enough = enough or payload != b""
     else:
-        why = "at least one of these shares is wrong" if enough else f"no quorum among {len(good)} sound shares"
+        why = "at least one share here is wrong" if enough else f"{len(good)} sound shares are no quorum (see rule)"
         refuse(4 if enough or bad else 3, "; ".join([f"{why}: bring more; nothing was written", *bad]))
     length, message = int.from_bytes(payload[:4], "big"), payload[4:-48]
     if not 1 <= length <= min(len(message), 65536) or any(message[length:]):
@@ -108,9 +108,9 @@ def main(arguments):  # Section 8, and what to say about it.
             if new.write(message[:length]) < length:
                 os.unlink(option[1])
                 refuse(5, f"no room for {option[1]!a}: it was removed again")
-    print(f"Recovered {length} bytes from {len(kept)} shares: by the commitment in each, the secret which they name.",
+    print(f"Recovered {length} bytes from {len(kept)} shares. By its commitment it is the secret which they name.",
           f"Compare with the record: {canonical(kept[0], 'set', 'secret_commitment').decode()}", *bad,
-          f"{'Nothing' if split == -1 else ascii(option[1])} written. Part the shares; replace the key soon.", sep="\n")
+          f"{'Nothing' if split == -1 else ascii(option[1])} written. Take shares apart; replace the key.", sep="\n")
 
 if __name__ == "__main__":
     try:

@@ -258,6 +258,7 @@ def test_all_shares_of_faulty_dealers(recover_here, group):
     elif "custodian's secret" in group["about"] or "custodian's encrypted" in group["about"]:
         assert (outcome.code, outcome.secret) == (4, None)
         assert "never mix" in outcome.err
+        assert "given 1'" in outcome.err
     else:
         assert (outcome.code, outcome.secret) == (0, bytes.fromhex(FLAT["secret"]))
 
