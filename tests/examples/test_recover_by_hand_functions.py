@@ -138,3 +138,20 @@ def test_the_search_for_a_quorum_is_bounded(script, tmp_path, monkeypatch, capsy
     assert stop.value.code == 3
     assert len(folds) == 2000
     assert "nothing was written" in capsys.readouterr().err
+
+
+def test_reading_refuses_what_the_secret_depends_on(script, monkeypatch):
+    """The cases of share_v1.json on the file, its members, set, field, points and rows: all refused."""
+    flags, members = {"Json", "Members", "Version", "Point", "Row"}, ("set:", "field:")
+    refused = 0
+    for group in json.loads((ROOT / "tests" / "vectors" / "share_v1.json").read_text())["testGroups"]:
+        for case in group["tests"]:
+            if case.get("refusal") != "document" or "pad_to" in case:
+                continue
+            if flags & set(case["flags"]) or case["comment"].startswith(members):
+                data = case["document"].encode() if "document" in case else bytes.fromhex(case["document_hex"])
+                monkeypatch.setattr(script, "open", lambda *_, data=data: io.BytesIO(data), raising=False)
+                with pytest.raises((ValueError, TypeError, KeyError, RecursionError)):
+                    script.read(SHARE)
+                refused += 1
+    assert refused > 100
