@@ -58,7 +58,9 @@
 #define STEP ((size_t)64)
 
 /* From this many bytes of output on, the output bypasses the cache, which it would only flush. */
+#ifndef STREAM_FROM
 #define STREAM_FROM ((size_t)16 << 20)
+#endif
 
 /* How a tile leaves its sums: in place of what was there, the same past the cache, or added to what was there. */
 enum mode { PUT, STREAM, ADD };
