@@ -214,7 +214,7 @@ def test_ci_repeats_the_same_examples() -> None:
     ],
 )
 def test_pytest_refuses_to_start(arguments: list[str], environment: dict[str, str], complaint: str) -> None:
-    command = [sys.executable, "-m", "pytest", "--collect-only", "tests/test_clock.py", *arguments]
+    command = [sys.executable, "-P", "-m", "pytest", "--collect-only", "tests/test_clock.py", *arguments]
     done = subprocess.run(
         command, cwd=ROOT, env=os.environ | environment, capture_output=True, text=True, check=False, timeout=60
     )
