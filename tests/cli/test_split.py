@@ -10,10 +10,12 @@ import json
 import os
 import pty
 import re
+import shutil
 import stat
 import subprocess
+import tempfile
 import unicodedata
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -371,17 +373,16 @@ def test_every_leftover_is_named(place: Place) -> None:
 
 
 @pytest.fixture
-def open_place() -> Any:
+def open_place() -> Iterator[Place]:
     """A place that another user can reach: the folders of pytest are closed to others."""
-    import shutil
-    import tempfile
-
     folder = Path(tempfile.mkdtemp())
     folder.chmod(0o755)
     place = Place.make(folder / "place")
     place.drop.chmod(0o755)
     place.key.chmod(0o644)
     yield place
+    for closed in (place.folder, place.drop):
+        closed.chmod(0o700)
     shutil.rmtree(folder)
 
 
