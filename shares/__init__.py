@@ -1,7 +1,7 @@
 """Secret sharing for people who keep recovery keys: split, verify, recover.
 
-Everything that a program needs stands here; the rooms behind it are described in DEVELOPERS.md. Names are imported when they
-are first used, so that importing the package costs little.
+Everything that a program needs stands here; the rooms behind it are described in DEVELOPERS.md. Names are imported when
+they are first used, so that importing the package costs little.
 
 >>> from shares import Presented, Secret, flat_rule, recover, split
 >>> rule = flat_rule(2, ["north-pier", "south-pier", "light-house"])

@@ -1,8 +1,8 @@
 """Hand over a dealing: shares to the delivery folders, then, as the commit point, the record to the set's folder.
 
 Source: design laws 5 and 6 of this project (DEVELOPERS.md): all or nothing, and nothing is called done unchecked.
-May import: shares.errors, shares.storage, shares.documents, shares.sharing.robust, shares.custody.payload, .presented,
-.split, .verify.
+May import: shares.errors, shares.storage, shares.documents, shares.sharing, shares.custody.payload, .presented, .split,
+.verify.
 Secret: the share files. Public: the record, the paths.
 Does not: wrap shares; who asks for plain ones has been told that all of them in one folder are the secret.
 """

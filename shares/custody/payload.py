@@ -2,7 +2,8 @@
 
 Source: FORMAT.md, sec. 2 and 8; FIPS 180-4 (SHA-256).
 May import: shares.errors, shares.memory, shares.field, shares.sharing.shamir.
-Secret: everything but lengths and the commitment. The blind hides what the commitment is to, computationally.
+Secret: the secret, message, blind, mask. Public: lengths, and the commitment: the blind hides, computationally, what
+it is to.
 Does not: decide whether a secret is worth keeping.
 """
 

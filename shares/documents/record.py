@@ -1,7 +1,7 @@
 """The record: the public document of a set and epoch, with all that anyone needs to verify.
 
 Source: FORMAT.md, sec. 5.
-May import: shares.errors, shares.field, shares.sharing, shares.documents.base, shares.documents.members.
+May import: shares.errors, shares.field, shares.sharing, shares.documents.base, .members, .share.
 Secret: nothing. Public: everything.
 Does not: hold persons or sites, which stay in the policy, or check shares; ``custody.verify`` does.
 """
