@@ -43,9 +43,11 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
     """
     name = command[0]
     try:
-        process = subprocess.Popen(command, stdin=subprocess.PIPE, stdout=output, bufsize=0)  # noqa: S603 - the operator's own words
+        process = subprocess.Popen(command, stdin=subprocess.PIPE, stdout=output, bufsize=0)  # noqa: S603 - the operator's words
     except OSError as error:
         reason = error.strerror or "it cannot be started"
+    except ValueError:
+        reason = "the system cannot pass on its words"
     else:
         reason = ""
     if reason:

@@ -2,7 +2,7 @@
 
 Source: Shamir 1979; Bellare, Dai, Rogaway 2020 (the one explanation or an explicit refusal); FORMAT.md, sec. 8.
 May import: shares.errors, shares.memory, shares.field, shares.sharing, shares.documents, shares.custody.payload,
-shares.custody.verify.
+.presented, .verify.
 Secret: rows, payloads, the recovered secret. Public: who was used, who was found bad.
 Does not: deliver the secret anywhere; ``custody.deliver`` does.
 """
@@ -141,12 +141,13 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
                     "and which of them is meant cannot be told",
                     hint="give the shares of one set and epoch, or the record",
                 )
+            places = tuple(dict.fromkeys(i for i, _ in used))
             if record is None:
                 findings = _found_alone(presented, group.first, payload, used)
-            places = dict.fromkeys(i for i, _ in used)
+            else:
+                findings = _with_rows_said_right(presented, findings, places)
             names = tuple(group.shares[i].custodian for i in places)
-            final = _with_rows_said_right(presented, findings, places)
-            return Recovery(open_payload(payload), group.shares[used[0][0]], names, tuple(final))
+            return Recovery(open_payload(payload), group.shares[places[0]], names, tuple(findings))
     # Damaged shares were tried as well, without success: they count no longer.
     raise _refusal(presented, findings, _groups(whole))
 

@@ -42,6 +42,7 @@ from shares.errors import (
 )
 from shares.field.gf256 import Field
 from shares.memory import Secret
+from shares.sharing.rule import Rule
 
 SECRET = b"not a real key, made up for a test"
 
@@ -186,6 +187,27 @@ def test_two_shares_for_one_place_do_not_hide_the_right_one() -> None:
         assert statuses(recovery) == expected
 
 
+def test_of_a_share_with_one_right_row_and_one_wrong_it_is_said_that_it_is_wrong() -> None:
+    dealt = split(
+        Secret.of(SECRET), Rule(2, ("north-pier", "north-pier", "registrar", "dry-dock")), label="Tide archive"
+    )
+    half = resealed(dealt.shares[0], rows=with_rows(dealt.shares[0], flipped(3)))
+    edited = half.model_copy(update={"label": "Another label"})
+    for share in (half, edited):
+        recovery = recover(presented([share, *dealt.shares[1:]]))
+        assert revealed(recovery.secret) == SECRET
+        assert statuses(recovery) == ["damaged", "intact", "intact"]
+        assert "does not lie on the dealing" in recovery.findings[0].reason
+
+
+def test_what_is_said_of_the_recovered_set_comes_from_a_share_that_was_used() -> None:
+    dealt = dealt_flat(2, 3)
+    forged = resealed(dealt.shares[0], rows=with_rows(dealt.shares[0], flipped(3)), label="Forged label")
+    recovery = recover(presented([forged, *dealt.shares[1:]]))
+    assert recovery.share.label == "Tide archive"
+    assert recovery.share.custodian in recovery.used == ("south-pier", "light-house")
+
+
 # Wrong shares, with the record.
 
 
@@ -197,6 +219,28 @@ def test_with_the_record_only_shares_it_commits_to_are_used() -> None:
     assert statuses(recovery) == ["damaged", "intact", "intact"]
     with pytest.raises(NotEnoughSharesError, match="1 given can be used; north-pier was set aside"):
         recover(presented([forged, dealt.shares[1]]), dealt.record)
+
+
+def test_with_the_record_a_right_row_in_a_share_it_does_not_commit_to_is_not_used() -> None:
+    dealt = dealt_flat(2, 4)
+    renamed = resealed(dealt.shares[0], custodian="registrar")
+    assert recovered([renamed, dealt.shares[1]]) == SECRET
+    with pytest.raises(NotEnoughSharesError, match="1 given can be used"):
+        recover(presented([renamed, dealt.shares[1]]), dealt.record)
+
+
+def test_a_share_whose_mask_is_off_is_not_used_with_the_record() -> None:
+    """The secret would be right all the same; but what the record's checks do not confirm is not relied on."""
+
+    def bend(dealing) -> None:
+        with dealing.points["north-pier"][0].row.view() as row:
+            row[-1] ^= 1
+
+    dealt = crooked_split(SECRET, flat(2, 4), bend=bend)
+    recovery = recover(presented(dealt.shares), dealt.record)
+    assert revealed(recovery.secret) == SECRET
+    assert "north-pier" not in recovery.used
+    assert statuses(recovery) == ["inconsistent dealing", "intact", "intact", "intact"]
 
 
 def test_a_record_that_names_another_secret_than_the_shares_recovers_nothing() -> None:
@@ -245,6 +289,13 @@ def test_one_share_that_claims_to_suffice_does_not_win_over_true_ones_that_are_o
     ours, forged = dealt_flat(5, 6), dealt_flat(1, 1, b"forged")
     with pytest.raises(SetMismatchError, match="the one that most belong to has no quorum"):
         recover(presented([*ours.shares[:4], *forged.shares]))
+
+
+def test_one_share_given_often_counts_once_when_it_is_asked_which_set_is_meant() -> None:
+    ours, forged = dealt_flat(2, 3), dealt_flat(1, 1, b"forged")
+    recovery = recover(presented([*forged.shares * 3, *ours.shares[:2]]))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery) == ["foreign set"] * 3 + ["intact"] * 2
 
 
 def test_shares_of_two_epochs_never_combine() -> None:

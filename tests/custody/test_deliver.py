@@ -1,0 +1,162 @@
+"""Delivery: a private file, or one command's input, whole or with an error that says how it ended.
+
+Checked against: what really arrives. The commands are the test run's own Python, and a shell's exit codes are never
+involved, as no shell is.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import os
+import signal
+import stat
+import sys
+from pathlib import Path
+
+import pytest
+
+from shares.custody import deliver
+from shares.custody.deliver import to_command, to_file
+from shares.errors import CommandFailedError, StorageError
+from shares.memory import Secret
+
+SECRET = b"not a real key\0with a zero byte and no line end"
+
+
+def python(code: str, *arguments: str) -> list[str]:
+    return [sys.executable, "-c", code, *arguments]
+
+
+KEEP = "import sys; open(sys.argv[1], 'wb').write(sys.stdin.buffer.read())"
+
+
+def test_a_file_is_new_private_and_whole(tmp_path: Path) -> None:
+    target = tmp_path / "key"
+    to_file(Secret.of(SECRET), target)
+    assert target.read_bytes() == SECRET
+    assert stat.S_IMODE(target.stat().st_mode) == 0o600
+    with pytest.raises(StorageError, match="never overwritten"):
+        to_file(Secret.of(b"other"), target)
+    assert target.read_bytes() == SECRET
+    assert os.listdir(tmp_path) == ["key"]
+
+
+@pytest.mark.parametrize("length", [1, 4096, 65_536, 1 << 20])
+def test_a_command_gets_every_byte_and_then_the_end(tmp_path: Path, length: int) -> None:
+    """Beyond the pipe's 64 KiB as well, where one write is not enough."""
+    secret = hashlib.shake_256(b"made up").digest(length)
+    to_command(Secret.of(secret), python(KEEP, str(tmp_path / "got")))
+    assert (tmp_path / "got").read_bytes() == secret
+
+
+def test_writes_that_stop_half_way_are_gone_on_with(tmp_path: Path, monkeypatch) -> None:
+    real = os.write
+    monkeypatch.setattr(deliver.os, "write", lambda descriptor, data: real(descriptor, data[:7]))
+    to_command(Secret.of(SECRET), python(KEEP, str(tmp_path / "got")))
+    assert (tmp_path / "got").read_bytes() == SECRET
+
+
+def test_no_shell_sees_the_words(tmp_path: Path) -> None:
+    target = tmp_path / "$HOME; `echo` * 'x'"
+    to_command(Secret.of(SECRET), python(KEEP, str(target)))
+    assert target.read_bytes() == SECRET
+
+
+def test_what_the_command_prints_goes_where_it_is_told(capfd) -> None:
+    to_command(Secret.of(SECRET), python("print('done')"))
+    assert capfd.readouterr() == ("done\n", "")
+    to_command(Secret.of(SECRET), python("print('done')"), output=sys.__stderr__.fileno())
+    assert capfd.readouterr() == ("", "done\n")
+
+
+@pytest.mark.parametrize("code", [1, 2, 7, 127, 255])
+def test_a_command_that_fails_is_told_with_its_code(code: int) -> None:
+    with pytest.raises(CommandFailedError, match=f"ended with code {code}") as failure:
+        to_command(Secret.of(SECRET), python(f"import sys; sys.stdin.buffer.read(); sys.exit({code})"))
+    assert failure.value.status == code
+    assert failure.value.exit_code == 7
+
+
+@pytest.mark.parametrize("number", [signal.SIGTERM, signal.SIGKILL, signal.SIGSEGV])
+def test_a_command_that_dies_is_told_with_its_signal(number: signal.Signals) -> None:
+    code = f"import os, resource; resource.setrlimit(resource.RLIMIT_CORE, (0, 0)); os.kill(os.getpid(), {int(number)})"
+    with pytest.raises(CommandFailedError, match=f"by signal {int(number)}$|by signal {int(number)} ") as failure:
+        to_command(Secret.of(SECRET), python(code))
+    assert failure.value.status == -number
+
+
+LARGE = bytes(1 << 20)
+
+
+def test_a_command_that_has_read_enough_is_content() -> None:
+    """It closes its end while there is more to write: EPIPE here, and its own exit code decides."""
+    to_command(Secret.of(LARGE), python("import os; os.read(0, 10)"))
+    to_command(Secret.of(LARGE), python("import os; os.close(0)"))
+
+
+def test_a_command_that_stops_reading_and_fails_is_told_by_its_code() -> None:
+    with pytest.raises(CommandFailedError, match="ended with code 3"):
+        to_command(Secret.of(LARGE), python("import os; os.read(0, 10); os._exit(3)"))
+
+
+def test_the_signal_for_a_broken_pipe_does_not_end_this_process() -> None:
+    """Python ignores SIGPIPE; a program that restores it would die here instead of raising."""
+    assert signal.getsignal(signal.SIGPIPE) is signal.SIG_IGN
+
+
+@pytest.mark.parametrize(
+    ("command", "reason"),
+    [
+        (["/nowhere/at/all"], "No such file"),
+        (["no-such-command-in-this-harbour"], "No such file"),
+        (["/"], "Permission denied"),
+        (["/etc/passwd"], "Permission denied"),
+        (["a\0b"], "cannot pass on its words"),
+        (["\ud800"], "cannot pass on its words"),
+        ([""], "No such file|Permission denied"),
+    ],
+)
+def test_a_command_that_cannot_be_started_is_an_error_of_files(command: list[str], reason: str) -> None:
+    with pytest.raises(StorageError, match=reason) as refusal:
+        to_command(Secret.of(SECRET), command)
+    assert refusal.value.exit_code == 5
+
+
+def test_a_file_that_is_no_program_is_told(tmp_path: Path) -> None:
+    script = tmp_path / "script"
+    script.write_bytes(b"\x7fELF but not really")
+    script.chmod(0o700)
+    with pytest.raises(StorageError, match="Exec format error"):
+        to_command(Secret.of(SECRET), [str(script)])
+
+
+def test_no_failure_shows_the_secret() -> None:
+    for command in (python("raise SystemExit(1)"), ["/nowhere/at/all"], ["a\0b"]):
+        with pytest.raises((CommandFailedError, StorageError)) as failure:
+            to_command(Secret.of(SECRET), command)
+        seen = f"{failure.value} {failure.value!r} {vars(failure.value)} {failure.value.__context__}"
+        assert "real key" not in seen
+
+
+def test_the_command_inherits_no_descriptor_but_the_three(tmp_path: Path) -> None:
+    (tmp_path / "held").write_bytes(b"")
+    with open(tmp_path / "held") as held:
+        os.set_inheritable(held.fileno(), True)
+        to_command(
+            Secret.of(SECRET),
+            python(
+                "import os, sys; open(sys.argv[1], 'w').write(str(os.path.exists(sys.argv[2])))",
+                str(tmp_path / "seen"),
+                f"/proc/self/fd/{held.fileno()}",
+            ),
+        )
+    assert (tmp_path / "seen").read_text() == "False"
+
+
+def test_the_secret_is_neither_in_the_words_nor_in_the_environment_of_the_command(tmp_path: Path) -> None:
+    read = "b''.join(open('/proc/self/' + name, 'rb').read() for name in ('cmdline', 'environ'))"
+    code = f"import sys; open(sys.argv[1], 'wb').write({read})"
+    to_command(Secret.of(SECRET), python(code, str(tmp_path / "seen")))
+    seen = (tmp_path / "seen").read_bytes()
+    assert b"/proc/self" in seen
+    assert b"real key" not in seen
