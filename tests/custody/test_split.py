@@ -214,3 +214,15 @@ def test_a_large_rule_either_gives_files_that_parse_or_is_refused(name: str) -> 
     assert Record.parse(dealt.record.to_file()).fingerprint == dealt.record.fingerprint
     for share in itertools.islice(dealt.shares, 3):
         assert Share.parse(share.to_file()).is_whole()
+
+
+def test_after_a_split_only_the_rows_of_the_shares_are_open_and_close_wipes_them() -> None:
+    from shares import memory
+
+    before = set(memory._open)
+    secret = Secret.of(SECRET)
+    dealt = split(secret, Rule(2, (Rule(2, HARBOUR[:3]), *HARBOUR[3:5])), label="Tide archive")
+    assert len(set(memory._open) - before) == 1 + 5
+    dealt.close()
+    assert len(set(memory._open) - before) == 1
+    assert revealed(secret) == SECRET
