@@ -15,7 +15,7 @@ from datetime import UTC, datetime, timedelta, timezone
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from strategies import CREATED, flat, moduli, octets, presented, product, revealed, rules
+from strategies import CREATED, HARBOUR, flat, moduli, octets, presented, product, revealed, rules
 
 from shares import clock
 from shares.custody.recover import recover
