@@ -1,6 +1,6 @@
-/* The inner loop of shares_combine, once for each processor path: _kernel.c includes this file five times.
+/* The inner loop of shares_combine, once for each processor path: _kernel_paths.h includes this file five times.
  *
- * Before each inclusion _kernel.c defines
+ * Before each inclusion _kernel_paths.h defines
  *     PATH        the name of the path, which begins the name of each of its functions;
  *     FEATURES    the function attribute that lets the compiler use the path's instructions;
  *     VECTOR      the type of one register, SPLIT the type of one register made ready for products;
