@@ -35,8 +35,6 @@ TOP_LEVEL = {
     "examples",
 }
 MOST_LINES = 400
-# Longer by decision: the paths of one operation stand side by side, so that they can be compared line by line.
-LONGER = {"shares/field/_kernel.c": 700}
 
 
 def tracked() -> list[str]:
@@ -95,8 +93,8 @@ def test_top_level_holds_what_was_agreed_and_nothing_else() -> None:
 
 def test_no_file_of_the_package_is_too_long_to_read() -> None:
     lengths = {name: (ROOT / name).read_bytes().count(b"\n") for name in tracked() if name.startswith("shares/")}
-    assert {name: lines for name, lines in lengths.items() if lines > LONGER.get(name, MOST_LINES)} == {}
-    assert LONGER.keys() <= lengths.keys()
+    assert {name: lines for name, lines in lengths.items() if lines > MOST_LINES} == {}
+    assert len(lengths) > 30
 
 
 def test_no_file_names_a_machine_or_a_package_host() -> None:
