@@ -168,6 +168,7 @@ def test_selections_with_damage_forgery_and_strangers(recover, group):
             assert (outcome.code, outcome.secret) == (0, bytes.fromhex(group["secret"])), test["comment"]
         elif test["given"]:
             assert (outcome.code, outcome.secret) == (codes[test["refusal"]], None), test["comment"]
+            assert ("never mix" in outcome.err) == (test["refusal"] == "never mix"), test["comment"]
         else:
             assert outcome.code == 2
 

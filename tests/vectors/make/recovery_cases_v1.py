@@ -34,6 +34,8 @@ def recoveries(flat: Dealing, tree: Dealing) -> list[Document]:
     texts[f"{a}, need lowered"] = sealed(wrong_k)
     texts[f"{a}, longer"] = sealed({**flat.shares[a], "rows": [b64(bytes(len(flat.payload) + 16))]})
     texts[f"{a}, other commitment"] = sealed({**flat.shares[a], "secret_commitment": 64 * "0"})
+    texts[f"{a}, other set"] = sealed({**flat.shares[a], "set": 32 * "0"})
+    texts[f"{a}, other epoch"] = sealed({**flat.shares[a], "epoch": 2**32 - 1})
     texts[f"{a}, other field"] = sealed({**flat.shares[a], "field": "0x11d"})
     texts[f"{a}, other file"] = sealed({**flat.shares[a], "encrypted_file": 64 * "0"})
     texts[f"{a}, renamed and relabelled"] = sealed(
@@ -77,6 +79,8 @@ def recoveries(flat: Dealing, tree: Dealing) -> list[Document]:
         ("three and one of the next epoch", "Belonging", [a, b, c, f"{d}, next epoch"], mix),
         ("two and one of the next epoch", "Belonging", [a, b, f"{c}, next epoch"], mix),
         ("two and one of another set", "Belonging", [a, b, f"{c}, another set"], mix),
+        ("two and one under another set's number", "Belonging", [f"{a}, other set", b, c], mix),
+        ("two and one under another epoch's number", "Belonging", [f"{a}, other epoch", b, c], mix),
         ("two and one of another field", "Belonging", [f"{a}, other field", b, c], mix),
         ("two and one of another secret commitment", "Belonging", [f"{a}, other commitment", b, c], mix),
         ("two and one of another encrypted file", "Belonging", [f"{a}, other file", b, c], mix),
