@@ -87,7 +87,7 @@ def commands() -> None:
       shares split key.pem --need 3 --label "Tide archive root" \\
         --custodian north-pier --custodian south-pier --custodian light-house \\
         --custodian registrar --custodian dry-dock \\
-        --set tide-archive --deliver /media/stick --plain
+        --set tide-archive --deliver /dev/shm/handover --plain
     """
 
 

@@ -64,7 +64,8 @@ def command(
 
     It goes to a new file, to the standard input of COMMAND (run without a shell), or nowhere. It is never printed.
     What COMMAND prints is the output then (with --json it goes to standard error), and its failure gives exit code 7.
-    Bad shares are named; with more shares than needed it still recovers, searching at most 20,000 quorums.
+    Bad shares are named; with more shares than needed it still recovers, searching at most 20,000 quorums
+    or 20 seconds.
 
     \b
     Examples:
@@ -116,7 +117,7 @@ def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
         "done": True,
         "set": share.set.hex(),
         "epoch": share.epoch,
-        "label": share.label,
+        "label": recovery.label,
         "used": list(recovery.used),
         "checked_against": against,
         "secret": went,
@@ -129,7 +130,7 @@ def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
 
 def _lines(recovery: Recovery, went: str, against: str) -> list[str]:
     return [
-        f"Recovered{f': {recovery.share.label}' if recovery.share.label else ''}, from {', '.join(recovery.used)}.",
+        f"Recovered{f': {recovery.label}' if recovery.label else ''}, from {', '.join(recovery.used)}.",
         f"Checked against {against}; the secret was {went}.",
         *prose(f"Next: {EXPOSED}"),
     ]

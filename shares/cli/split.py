@@ -8,7 +8,7 @@ import click
 
 from shares.cli.output import filled, json_option, print_result, progress, warn
 from shares.cli.signals import held_signals
-from shares.custody.handover import HandedOver, check_targets, hand_over
+from shares.custody.handover import HandedOver, check_targets, hand_over, other_shares
 from shares.custody.payload import MAX_SECRET
 from shares.custody.split import Dealt, flat_rule, split
 from shares.errors import ParameterError
@@ -18,6 +18,11 @@ from shares.storage import read_secret
 
 PLAIN_CAUTION = "the shares are written bare: all of them in one folder are the secret. Part them, and keep no copy."
 ONE_CAUTION = "with --need 1 there is no secrecy: every single share is the whole secret."
+
+OTHERS_CAUTION = (
+    "other shares lay there before: {names}. They are of another set, or were left by a run that was stopped; "
+    "then no record names them: destroy them."
+)
 
 
 @click.command()
@@ -82,6 +87,7 @@ def command(
     field = Field(Polynomial.parse(polynomial).number if polynomial else DEFAULT_MODULUS)
     folders = _delivery_folders(custodians, deliveries)
     check_targets(Path(set_folder), folders)
+    strangers = other_shares(folders)
     with read_secret(file, limit=MAX_SECRET) as secret:
         dealt = split(secret, rule, label=label, field=field)
     with held_signals() as stop_here:
@@ -90,6 +96,8 @@ def command(
         finally:
             dealt.close()
         cautions = [PLAIN_CAUTION] + ([ONE_CAUTION] if need == 1 else [])
+        if strangers:
+            cautions.append(OTHERS_CAUTION.format(names=", ".join(map(str, strangers))))
         if not as_json:
             for caution in cautions:
                 warn(caution)

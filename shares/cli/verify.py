@@ -11,13 +11,23 @@ from shares.documents.record import Record
 
 WITH_RECORD = (
     "This proves that each intact share is whole and lies on the dealing of the record with fingerprint {fingerprint}. "
-    "It does not prove who made that record: compare the fingerprint with the one read aloud at the split."
+    "It does not prove who made that record: compare the fingerprint with the one read aloud at the split. "
+    "Nor does it prove that the dealing holds the right secret: only a recovery does."
 )
 WITHOUT_RECORD = (
     "Without a record this shows only that no accident befell these files and that they agree with one another. "
     "It does not prove that they are the shares that were dealt, nor that they recover anything: "
     "give --record for that."
 )
+
+NEXT = {
+    Status.DAMAGED: "Next, for a damaged share: keep the file as it is, and ask for another copy; destroy nothing yet.",
+    Status.INCONSISTENT: "Next, for an inconsistent dealing: stop using this set, and ask the dealer to split anew.",
+    Status.FOREIGN: "Next, for a foreign share: find the record it belongs to; the share may be perfectly good.",
+    Status.OTHER_EPOCH: "Next, for another epoch: find the record of that epoch; the share may be perfectly good.",
+    Status.UNKNOWN: "Next, for a share not in the record: ask the dealer which record it belongs to.",
+    Status.UNREADABLE: "Next, for an unreadable file: see the reason given; it says nothing of the share itself.",
+}
 
 
 @click.command()
@@ -48,7 +58,7 @@ def command(ctx: click.Context, files: tuple[str, ...], record_file: str | None,
             {"file": f.source, "custodian": f.custodian, "status": f.status.value, "reason": f.reason} for f in findings
         ],
         "repeated": [presented[i].source for i in repeated],
-        "proves": proves,
+        "proves": proves if any(f.status is Status.INTACT for f in findings) else None,
     }
     print_result(members, _lines(findings, repeated, record, proves), as_json=as_json)
     ctx.exit(_exit_code(findings))
@@ -77,10 +87,7 @@ def _lines(findings: list[Finding], repeated: list[int], record: Record | None, 
     lines.append(f"{len(intact)} of {len(findings)} intact{f', set {record.label}' if record else ''}.")
     if intact:
         lines.extend(prose(proves))
-    if len(intact) < len(findings):
-        lines.append(
-            "Next: keep the files that are not intact as they are, and ask for another copy; destroy nothing yet."
-        )
+    lines.extend(advice for status, advice in NEXT.items() if any(finding.status is status for finding in findings))
     return lines
 
 

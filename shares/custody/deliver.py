@@ -11,7 +11,7 @@ from __future__ import annotations
 import contextlib
 import os
 import subprocess
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 
 from shares.errors import CommandFailedError, StorageError
@@ -54,7 +54,7 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
         raise StorageError(
             f"the command was not started: {reason}", where=name, hint="check its name and that it may run"
         )
-    with process:
+    with process, _killed_unless_done(process):
         pipe = process.stdin
         if pipe is not None:
             # A command may have read enough and closed its end; its exit code says whether it is content.
@@ -69,3 +69,13 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
         raise CommandFailedError(
             f"the command was given the secret and {how}", status=status, where=name, hint="see what it said above"
         )
+
+
+@contextlib.contextmanager
+def _killed_unless_done(process: subprocess.Popen[bytes]) -> Iterator[None]:
+    """Kill the command when anything stops us: it must not take a part of the secret for the whole."""
+    try:
+        yield
+    except BaseException:
+        process.kill()
+        raise

@@ -90,6 +90,16 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
         )
 
 
+def other_shares(deliveries: Mapping[str, Path]) -> list[Path]:
+    """Return the bare shares that lie in the delivery folders already: of another set, or left by a run that was
+    stopped under other names. A folder that cannot be listed tells nothing."""
+    found: list[Path] = []
+    for folder in dict.fromkeys(deliveries.values()):
+        with contextlib.suppress(OSError):
+            found.extend(sorted(path for path in folder.iterdir() if path.name.endswith(SHARE_SUFFIX)))
+    return found
+
+
 def hand_over(
     dealt: Dealt, set_folder: Path, deliveries: Mapping[str, Path], *, progress: Progress | None = None
 ) -> HandedOver:

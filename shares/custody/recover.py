@@ -28,7 +28,7 @@ from shares.errors import (
 )
 from shares.memory import Secret
 from shares.sharing.consistency import check
-from shares.sharing.robust import MAX_TRIES, Agreement, agreeing, count_quorums, search
+from shares.sharing.robust import MAX_SECONDS, MAX_TRIES, Agreement, agreeing, count_quorums, search
 from shares.sharing.rule import Path, Point
 
 
@@ -39,12 +39,14 @@ class Recovery:
     Attributes:
         secret: checked against the commitment; wipe it with ``close()``.
         share: one of the shares used: says set, epoch, field; its label is not proved by anything.
+        label: what the secret is: as the record says, else as that share does.
         used: custodians whose shares gave the secret.
         findings: one for each share given, in order; those not intact say why.
     """
 
     secret: Secret
     share: Share
+    label: str | None
     used: tuple[str, ...]
     findings: tuple[Finding, ...]
 
@@ -78,7 +80,7 @@ class _Group:
             # public: with the mask in it, the check of the payload tells nothing; the record holds what it must be.
             return record is None or check(first.field, matrix, payload) == record.checks[0][0]
 
-        found = search(first.field, self.points, judge)
+        found = search(first.field, self.points, judge, owners=self.owners)
         if found is None:
             return None
         payload, quorum = found
@@ -115,7 +117,7 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
         SetMismatchError, EpochMismatchError: the shares are of several sets or epochs, and the one that most belong to
             has no quorum.
         VerificationError: there is a quorum, yet no combination tried gives what the commitment names.
-        AmbiguousError: a set recovers, but equally many shares of another were given.
+        AmbiguousError: a set recovers, but so does another, or equally many shares of another were given.
 
     Source: FORMAT.md, sec. 8.
     """
@@ -125,31 +127,52 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
     }
     whole = {i: share for i, share in usable.items() if findings[i].status is not Status.DAMAGED}
     # Only the set that most shares belong to may be recovered: a forged share that claims to be a quorum by itself must
-    # not win over two true ones that are one short.
-    rivals = _rivals(_groups(usable))
-    for group in rivals:
-        # A share whose digest fails may still hold a right row; it is tried when the others do not suffice.
-        had = _Group({i: share for i, share in group.shares.items() if i in whole}).recover(record)
-        had = had or group.recover(record)
+    # not win over two true ones that are one short. Nor may it win over a quorum of them by bringing many files.
+    groups = _groups(usable)
+    for group in _rivals(groups):
+        had = _recovered(group, whole, record)
         if had is None:
             continue
         payload, used = had
         with payload:
-            if len(rivals) > 1:
-                raise AmbiguousError(
-                    f"equally many shares of {len(rivals)} different dealings were given, "
-                    "and which of them is meant cannot be told",
-                    hint="give the shares of one set and epoch, or the record",
-                )
+            _refuse_other_explanations(groups, group, whole)
             places = tuple(dict.fromkeys(i for i, _ in used))
             if record is None:
                 findings = _found_alone(presented, group.first, payload, used)
             else:
                 findings = _with_rows_said_right(presented, findings, places)
             names = tuple(group.shares[i].custodian for i in places)
-            return Recovery(open_payload(payload), group.shares[places[0]], names, tuple(findings))
+            share = group.shares[places[0]]
+            label = record.label if record else share.label
+            return Recovery(open_payload(payload), share, label, names, tuple(findings))
     # Damaged shares were tried as well, without success: they count no longer.
-    raise _refusal(presented, findings, _groups(whole))
+    raise _refusal(presented, findings, _groups(whole), record)
+
+
+def _recovered(
+    group: _Group, whole: dict[int, Share], record: Record | None
+) -> tuple[Secret, list[tuple[int, Path]]] | None:
+    """Recover a group. A share whose digest fails may still hold a right row: it is tried when the others do not do."""
+    had = _Group({i: share for i, share in group.shares.items() if i in whole}).recover(record)
+    return had or group.recover(record)
+
+
+def _refuse_other_explanations(groups: list[_Group], chosen: _Group, whole: dict[int, Share]) -> None:
+    """Raise AmbiguousError where another group is as large as the one chosen, or recovers a secret of its own."""
+    others = [group for group in groups if group is not chosen]
+    if any(len(group.shares) == len(chosen.shares) for group in others):
+        raise AmbiguousError(
+            "equally many shares of different dealings were given, and which of them is meant cannot be told",
+            hint="give the shares of one set and epoch, or the record",
+        )
+    for group in others:
+        had = _recovered(group, whole, None)
+        if had is not None:
+            had[0].close()
+            raise AmbiguousError(
+                "shares of more than one dealing were given, and each recovers a secret of its own",
+                hint="give the shares of one set and epoch, or the record",
+            )
 
 
 def _may_be_used(share: Share, record: Record | None) -> bool:
@@ -210,7 +233,9 @@ def _with_rows_said_right(
     return said
 
 
-def _refusal(presented: Sequence[Presented], findings: Sequence[Finding], groups: list[_Group]) -> SharesError:
+def _refusal(
+    presented: Sequence[Presented], findings: Sequence[Finding], groups: list[_Group], record: Record | None
+) -> SharesError:
     """Say why nothing was recovered."""
     aside = "".join(
         f"; {finding.source} was set aside ({finding.status}: {finding.reason})"
@@ -220,10 +245,15 @@ def _refusal(presented: Sequence[Presented], findings: Sequence[Finding], groups
     if not groups:
         return NotEnoughSharesError(f"none of the {len(presented)} shares given can be used{aside}")
     most = max(group.quorums for group in _rivals(groups))
-    if most:
-        tried = f"all {most:,} quorums" if most <= MAX_TRIES else f"{MAX_TRIES:,} of {most:,} quorums, taken at random,"
+    if most and record is not None:
         return VerificationError(
-            f"no secret was recovered: {tried} were tried and none gives what the commitment names, "
+            f"no secret was recovered, although the shares that fit the record make a quorum{aside}",
+            hint="whoever dealt this set used faulty or hostile software; keep the shares and ask for help",
+        )
+    if most:
+        return VerificationError(
+            f"no secret was recovered: of {most:,} possible quorums as many were tried as {MAX_TRIES:,} tries and "
+            f"{MAX_SECONDS:.0f} seconds allow, and none gives what the commitment names, "
             f"so too many shares are wrong{aside}",
             hint="give more shares, or the record, which tells bad shares apart",
         )

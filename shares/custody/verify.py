@@ -74,6 +74,11 @@ class _Examiner:
         problem = self._inconsistency(share)
         if problem:
             return Status.INCONSISTENT, problem
+        if share.label is not None and share.label != record.label:
+            return (
+                Status.INTACT,
+                "commitment and consistency check fit the record, but not the label: go by the record's",
+            )
         return Status.INTACT, "commitment and consistency check fit the record"
 
     def _inconsistency(self, share: Share) -> str | None:
@@ -87,6 +92,9 @@ class _Examiner:
             return "its points are not where the record's rule puts them"
         if share.record is not None and share.record != record.fingerprint:
             return f"it was dealt with another record, {share.record}"
+        named = record.custodian(share.custodian)
+        if named is None or share.attestation_key() != named.attestation_key:
+            return "the record names another attestation key than the one this share makes"
         if self.matrix is None:
             self.matrix = record.check_matrix()
         for path, row in zip(share.paths, share.rows, strict=True):

@@ -25,7 +25,11 @@ from shares.memory import Secret
 
 MAX_LONG_TEXT = 65_536
 """The longest rule in words, in characters."""
-_UNPRINTABLE = ("Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp")
+_UNPRINTABLE = ("Cc", "Cf", "Cs", "Co", "Zl", "Zp")
+# Shown as nothing or as a space although their categories do not say so (FORMAT.md, sec. 1).
+_BLANK = frozenset(
+    map(chr, (0x034F, 0x115F, 0x1160, 0x17B4, 0x17B5, *range(0x180B, 0x1810), 0x2800, 0x3164, 0xFFA0))
+) | frozenset(map(chr, (*range(0xFE00, 0xFE10), *range(0xE0100, 0xE01F0))))
 
 
 def encode_bytes(data: bytes | memoryview) -> str:
@@ -100,6 +104,20 @@ def _decode_time(value: object) -> datetime:
     raise PydanticCustomError("shares_time", "not a UTC time like 2026-12-01T07:00:00Z")
 
 
+def _holds_unprintable(text: str) -> bool:
+    return any(unicodedata.category(c) in _UNPRINTABLE or c in _BLANK or _is_noncharacter(c) for c in text)
+
+
+def _is_noncharacter(c: str) -> bool:
+    """Say whether no Unicode will ever define this one (The Unicode Standard, sec. 23.7)."""
+    return 0xFDD0 <= ord(c) <= 0xFDEF or ord(c) & 0xFFFE == 0xFFFE
+
+
+def _holds_unassigned(text: str) -> bool:
+    """Asked when a document is made, never when one is read: a later Unicode may define what this one does not."""
+    return any(unicodedata.category(c) == "Cn" for c in text)
+
+
 def check_name(name: str) -> str:
     """Return a custodian's name if it may be one, and is safe in a file name and on a page.
 
@@ -107,6 +125,8 @@ def check_name(name: str) -> str:
         ParameterError: which rule it breaks; the name itself is not repeated.
     """
     reason = _name_problem(name)
+    if reason is None and _holds_unassigned(name):
+        reason = "must not hold characters that Unicode, as known here, does not define"
     if reason:
         raise ParameterError(f"a custodian's name {reason}", hint="use letters, digits and hyphens, like north-pier")
     return name
@@ -117,7 +137,7 @@ def _name_problem(name: str) -> str | None:
         return "must not be empty"
     if len(name) > 64 or len(name.encode("utf-8", "surrogatepass")) > 200:
         return "has at most 64 characters and 200 bytes in UTF-8"
-    if any(unicodedata.category(c) in _UNPRINTABLE for c in name):
+    if _holds_unprintable(name):
         return "must not hold control or invisible characters"
     if "/" in name or "\\" in name:
         return "must not hold a path separator"
@@ -143,13 +163,13 @@ def check_text(text: str) -> str:
     """
     if not 1 <= len(text) <= 500:
         raise ParameterError("a label has 1 to 500 characters")
-    if any(unicodedata.category(c) in _UNPRINTABLE for c in text):
+    if _holds_unprintable(text) or _holds_unassigned(text):
         raise ParameterError("a label must not hold control or invisible characters")
     return text
 
 
 def _printable(text: str) -> str:
-    if any(unicodedata.category(c) in _UNPRINTABLE for c in text):
+    if _holds_unprintable(text):
         raise PydanticCustomError("shares_text", "it holds control or invisible characters")
     return text
 

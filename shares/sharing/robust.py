@@ -13,6 +13,7 @@ from __future__ import annotations
 
 import itertools
 import secrets
+import time
 from collections.abc import Callable, Iterator, Sequence
 from typing import NamedTuple
 
@@ -22,6 +23,7 @@ from shares.sharing.rule import Path, Point, recover_payload, row_of_child
 from shares.sharing.shamir import interpolate
 
 MAX_TRIES = 20_000
+MAX_SECONDS = 20.0
 
 Indices = tuple[int, ...]
 
@@ -62,12 +64,19 @@ class _Node:
                 yield from self._rows_at(chosen)
 
     def _rows_at(self, steps: tuple[tuple[int, int], ...]) -> Iterator[Indices]:
-        if not steps:
-            yield ()
-            return
-        for first in self._rows_at_one(steps[0]):
-            for rest in self._rows_at(steps[1:]):
-                yield (*first, *rest)
+        # A stack instead of recursion: there may be hundreds of steps, and as many again in each group below.
+        chosen: list[Indices] = []
+        stack = [self._rows_at_one(steps[0])]
+        while stack:
+            row = next(stack[-1], None)
+            if row is None:
+                stack.pop()
+                del chosen[-1:]
+            elif len(stack) == len(steps):
+                yield tuple(itertools.chain(*chosen, row))
+            else:
+                chosen.append(row)
+                stack.append(self._rows_at_one(steps[len(stack)]))
 
     def _rows_at_one(self, step: tuple[int, int]) -> Iterator[Indices]:
         yield from ((i,) for i in self.leaves.get(step, ()))
@@ -150,22 +159,77 @@ def _quorum_with(node: _Node, index: int, path: Path) -> Indices:
 
 
 def search(
-    field: Field, points: Sequence[Point], judge: Callable[[Secret], bool], *, most: int = MAX_TRIES
+    field: Field,
+    points: Sequence[Point],
+    judge: Callable[[Secret], bool],
+    *,
+    owners: Sequence[int] | None = None,
+    most: int = MAX_TRIES,
 ) -> tuple[Secret, Indices] | None:
     """Return the first payload that the judge accepts, with the quorum that gave it; None when none does.
 
     Args:
         judge: says whether a candidate payload is the one committed to.
-        most: quorums to try at most.
+        owners: for each point whose it is; points of one owner are likely to be right or wrong together.
+        most: quorums to try at most; nor does the search go on for longer than ``MAX_SECONDS``.
 
     Source: Bellare, Dai, Rogaway 2020: with a binding commitment as judge there is at most one explanation.
     """
-    for quorum in quorums([point.path for point in points], most=most):
+    paths = [point.path for point in points]
+    holders = list(range(len(paths))) if owners is None else list(owners)
+    end = time.monotonic() + MAX_SECONDS
+    for quorum in itertools.islice(_promising(paths, holders, most), most):
         payload = recover_payload(field, [points[i] for i in quorum])
         if judge(payload):
             return payload, quorum
         payload.close()
+        if time.monotonic() > end:
+            break
     return None
+
+
+def _promising(paths: Sequence[Path], owners: Sequence[int], most: int) -> Iterator[Indices]:
+    """Yield quorums, the likely ones first: without one or two owners, who may have brought many wrong points; then
+    all,
+    or random ones where there are too many."""
+    if len(set(owners)) < len(owners):
+        yield from _leaving_out(paths, owners)
+    if count_quorums(paths) <= most:
+        yield from quorums(paths, most=most)
+        return
+    source = secrets.SystemRandom()
+    while True:
+        yield from _of_few_owners(paths, owners, source)
+        yield from quorums(paths, most=1)
+
+
+_MAX_LEFT_OUT = 2000
+
+
+def _leaving_out(paths: Sequence[Path], owners: Sequence[int]) -> Iterator[Indices]:
+    """Yield one quorum of what remains without nobody, each owner, and each pair of owners."""
+    different = sorted(set(owners))
+    absent = itertools.chain.from_iterable(itertools.combinations(different, size) for size in range(3))
+    for out in itertools.islice(absent, _MAX_LEFT_OUT):
+        kept = [i for i, owner in enumerate(owners) if owner not in out]
+        if kept and (node := _Node(paths, kept, 0)).count:
+            yield next(node.quorums())
+
+
+def _of_few_owners(paths: Sequence[Path], owners: Sequence[int], source: secrets.SystemRandom) -> Iterator[Indices]:
+    """Yield a random quorum of the points of a random few owners: as few, in a random order, as have one."""
+    order = sorted(set(owners))
+    source.shuffle(order)
+    few, many = 0, len(order)
+    while few + 1 < many:  # Between them lies the least number of owners that has a quorum.
+        middle = (few + many) // 2
+        if count_quorums([paths[i] for i, owner in enumerate(owners) if owner in order[:middle]]):
+            many = middle
+        else:
+            few = middle
+    node = _Node(paths, [i for i, owner in enumerate(owners) if owner in order[:many]], 0)
+    if node.count:
+        yield node.random_quorum(source)
 
 
 class Agreement(NamedTuple):

@@ -75,7 +75,7 @@ def test_each_kind_of_finding_has_its_exit_code(dealt: Place, tmp_path_factory: 
     without = {files: code for files, code in expected.items() if files != (foreign, missing)}
     assert {files: run("verify", *files).code for files in without} == without
     assert statuses(good, bad, missing, foreign, *record) == ["intact", "damaged", "unreadable", "foreign set"]
-    assert "Next: keep the files that are not intact as they are" in run("verify", good, bad).out
+    assert "keep the file as it is" in run("verify", good, bad).out
 
 
 @pytest.mark.parametrize("record", [True, False])

@@ -42,7 +42,7 @@ from shares.errors import (
 )
 from shares.field.gf256 import Field
 from shares.memory import Secret
-from shares.sharing.rule import Rule
+from shares.sharing.rule import Path, Rule
 
 SECRET = b"not a real key, made up for a test"
 
@@ -292,8 +292,8 @@ def test_one_share_that_claims_to_suffice_does_not_win_over_true_ones_that_are_o
 
 
 def test_one_share_given_often_counts_once_when_it_is_asked_which_set_is_meant() -> None:
-    ours, forged = dealt_flat(2, 3), dealt_flat(1, 1, b"forged")
-    recovery = recover(presented([*forged.shares * 3, *ours.shares[:2]]))
+    ours, other = dealt_flat(2, 3), dealt_flat(2, 3, b"forged")
+    recovery = recover(presented([*other.shares[:1] * 3, *ours.shares[:2]]))
     assert revealed(recovery.secret) == SECRET
     assert statuses(recovery) == ["foreign set"] * 3 + ["intact"] * 2
 
@@ -319,10 +319,54 @@ def test_the_findings_are_about_the_dealing_that_was_recovered() -> None:
 
 
 def test_damaged_files_count_when_it_is_asked_which_set_is_meant() -> None:
-    """Three whole shares of another set recover, but four of ours were given, two of them with damaged files."""
-    ours, theirs = dealt_flat(4, 5), dealt_flat(3, 5, b"another made-up secret")
+    """Three whole shares of another set were given, but four of ours, two of them with damaged files."""
+    ours, theirs = dealt_flat(4, 5), dealt_flat(4, 5, b"another made-up secret")
     edited = [share.model_copy(update={"label": "Another label"}) for share in ours.shares[:2]]
     recovery = recover(presented([*theirs.shares[:3], *edited, *ours.shares[2:4]]))
     assert revealed(recovery.secret) == SECRET
     with pytest.raises(AmbiguousError):
         recover(presented([*theirs.shares[:4], *edited, *ours.shares[2:4]]))
+
+
+def test_a_second_explanation_is_refused_however_many_files_it_brings() -> None:
+    """Forged shares that are a quorum each by themselves: with true ones beside them neither secret is chosen."""
+    ours, forged = dealt_flat(3, 5), dealt_flat(1, 9, b"forged")
+    for count in (1, 2, 3, 4, 9):
+        with pytest.raises(AmbiguousError):
+            recover(presented([*ours.shares[:3], *forged.shares[:count]]))
+    recovery = recover(presented([*ours.shares[:3], *forged.shares]), ours.record)
+    assert revealed(recovery.secret) == SECRET
+
+
+def many_points(share: Share, paths: list[Path]) -> Share:
+    """Return a forged share of the same set with a row of nothing at each path."""
+    rows = tuple(Secret(share.row_length) for _ in paths)
+    return resealed(share, custodian="forger", paths=tuple(paths), rows=rows)
+
+
+def test_one_share_with_many_wrong_points_does_not_hide_the_right_ones() -> None:
+    dealt = dealt_flat(3, 5)
+    forged = many_points(dealt.shares[3], [((3, x),) for x in range(4, 254)])
+    recovery = recover(presented([forged, *dealt.shares[:3]]))
+    assert revealed(recovery.secret) == SECRET
+    assert statuses(recovery)[1:] == ["intact"] * 3
+
+
+def test_a_deep_and_wide_forgery_does_not_stop_the_right_shares() -> None:
+    """997 points, 250 of 250 below 250 of 250: as many steps as one file can hold."""
+    dealt = dealt_flat(3, 5)
+    paths: list[Path] = []
+    above: Path = ()
+    for _ in range(4):
+        paths += [(*above, (250, x)) for x in range(2, 251)]
+        above = (*above, (250, 1))
+    forged = many_points(dealt.shares[3], [*paths[:996], above])
+    recovery = recover(presented([*dealt.shares[:3], forged]))
+    assert revealed(recovery.secret) == SECRET
+
+
+def test_with_the_record_the_label_is_the_record_s() -> None:
+    dealt = dealt_flat(2, 3)
+    relabelled = [resealed(share, label="Other key") for share in dealt.shares]
+    assert recover(presented(relabelled), dealt.record).label == dealt.record.label
+    assert recover(presented(relabelled)).label == "Other key"

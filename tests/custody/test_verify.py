@@ -278,3 +278,18 @@ def test_findings_show_no_row(dealt: Dealt) -> None:
         assert "canary" not in repr(findings)
         assert "Y2FuYXJ5" not in repr(findings)
     assert "canary" not in repr(presented([canary]))
+
+
+def test_a_record_that_swaps_attestation_keys_is_noticed_by_their_owners(dealt: Dealt) -> None:
+    """A dealer who enters a key of his own could attest for a custodian later."""
+    one, two, *rest = dealt.record.custodians
+    swapped = (
+        one.model_copy(update={"attestation_key": two.attestation_key}),
+        two.model_copy(update={"attestation_key": one.attestation_key}),
+        *rest,
+    )
+    record = dealt.record.model_copy(update={"custodians": swapped})
+    record = record.model_copy(update={"fingerprint": record.own_fingerprint()})
+    shares = [resealed(share, record=record.fingerprint) for share in dealt.shares]
+    found_by = [finding.status.value for finding in examine(presented(shares), record)]
+    assert found_by == ["inconsistent dealing"] * 2 + ["intact"] * len(rest)

@@ -113,6 +113,17 @@ def test_a_time_has_one_spelling(value: object) -> None:
 # Names.
 
 
+# FORMAT.md, section 1: what shows as nothing or as a space.
+BLANK = {
+    chr(number)
+    for first, last in [
+        *((0x034F, 0x034F), (0x115F, 0x1160), (0x17B4, 0x17B5), (0x180B, 0x180F), (0x2800, 0x2800), (0x3164, 0x3164)),
+        *((0xFFA0, 0xFFA0), (0xFE00, 0xFE0F), (0xE0100, 0xE01EF)),
+    ]
+    for number in range(first, last + 1)
+}
+
+
 def may_be_a_name(text: str) -> bool:
     """FORMAT.md, section 1, word for word."""
     return (
@@ -120,6 +131,7 @@ def may_be_a_name(text: str) -> bool:
         and unicodedata.normalize("NFC", text) == text
         and not set(text) & set("/\\")
         and not {unicodedata.category(c) for c in text} & {"Cc", "Cf", "Cs", "Co", "Cn"}
+        and not set(text) & BLANK
         and not any(c.isspace() and c != " " for c in text)
         and "  " not in text
         and text == text.strip()
@@ -205,9 +217,11 @@ def test_a_refused_name_is_told_why_and_not_repeated(name: str, reason: str) -> 
 @example("a\x7fb")
 @example("\u202e")
 @example("\ud800")
+@example("c1\ufe0f")
+@example("\u3164")
 def test_labels_are_printable_and_of_one_line(text: str) -> None:
     hidden = {"Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp"}
-    may_be = 1 <= len(text) <= 500 and not {unicodedata.category(c) for c in text} & hidden
+    may_be = 1 <= len(text) <= 500 and not {unicodedata.category(c) for c in text} & hidden and not set(text) & BLANK
     try:
         accepted = check_text(text) == text
     except ParameterError:
