@@ -37,7 +37,11 @@ def make_payload(field: Field, secret: Secret, *, pad: int = DEFAULT_PAD) -> Sec
 
     Raises:
         ParameterError: secret or pad out of range.
+        TypeError: the secret is given as anything else than a ``Secret``.
     """
+    if not isinstance(secret, Secret):
+        # Python's own complaint would carry the object, bytes most likely, as an attribute.
+        raise TypeError("the secret must be a Secret: see Secret.of")
     if not 1 <= len(secret) <= MAX_SECRET:
         if not len(secret):
             raise ParameterError("the secret is empty", hint="see what was to be written into its file or pipe")

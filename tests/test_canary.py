@@ -1,0 +1,523 @@
+"""A telltale secret goes through every failing path, and must show in nothing that can be seen of the failure.
+
+What is looked at: the text, the repr, the arguments and every attribute of each exception, of its causes and its
+contexts; the formatted traceback; log records; both streams; command lines and environments of processes. What is
+looked for: the secret and the rows of its shares, raw and in each encoding, in pieces of eight.
+
+Only names of places and of forms are ever asserted on, so that a failing test does not print what it has found.
+"""
+
+from __future__ import annotations
+
+import base64
+import contextlib
+import json
+import logging
+import os
+import subprocess
+import sys
+import time
+import traceback
+from collections.abc import Callable, Iterator
+from pathlib import Path
+from typing import Any
+
+import pytest
+from cli.harness import PROGRAM, Place, run, spawn, with_json
+from strategies import crooked_split, flat, presented, resealed, with_rows
+
+from shares.custody.deliver import to_command, to_file
+from shares.custody.handover import hand_over
+from shares.custody.payload import make_payload, open_payload
+from shares.custody.presented import load_shares
+from shares.custody.recover import recover
+from shares.custody.split import split
+from shares.custody.verify import verify_share
+from shares.documents.record import Record
+from shares.documents.share import Share
+from shares.errors import SharesError
+from shares.field.gf256 import Field
+from shares.memory import Secret
+from shares.sharing.rule import Rule, recover_payload
+from shares.sharing.shamir import evaluate, interpolate
+from shares.storage import read_secret, write_new
+
+CANARY = b"CANARY-7f3a9c51e2-Wq8zK4-not-a-real-key-\x00\xff\xfe\x80"
+
+# How long a piece is looked for in each form: five bytes of the secret or more, so that chance makes no false alarm.
+PIECES = {"hex": 12, "HEX": 12, "repr": 24, "numbers": 24}
+PIECE = 8
+LENGTHS = (8, 12, 24)
+
+
+class Telltales:
+    """The pieces that give a secret away."""
+
+    def __init__(self, *secrets: bytes) -> None:
+        self.pieces: dict[bytes, str] = {}
+        for secret in secrets:
+            for form, text in forms(secret).items():
+                length = PIECES.get(form, PIECE)
+                for i in range(len(text) - length + 1):
+                    self.pieces.setdefault(text[i : i + length], form)
+
+    def found(self, seen: bytes | str) -> str | None:
+        """Name the form in which a piece of a secret shows, if one does."""
+        data = seen.encode("utf-8", "surrogatepass") if isinstance(seen, str) else seen
+        for length in LENGTHS:
+            for i in range(len(data) - length + 1):
+                form = self.pieces.get(data[i : i + length])
+                if form:
+                    return form
+        return None
+
+
+def forms(secret: bytes) -> dict[str, bytes]:
+    """A secret as it might be printed. Base64 looks different for each offset within a group of three."""
+    found = {
+        "raw": secret,
+        "hex": secret.hex().encode(),
+        "HEX": secret.hex().upper().encode(),
+        "repr": repr(secret)[2:-1].encode(),
+        "latin": secret.decode("latin-1").encode(),
+        "numbers": ", ".join(map(str, secret)).encode(),
+        "base32": base64.b32encode(secret).rstrip(b"="),
+    }
+    for shift in range(3):
+        for name, encode in (("base64", base64.b64encode), ("base64url", base64.urlsafe_b64encode)):
+            # The first and the last characters may depend on what stands beside.
+            found[f"{name} {shift}"] = encode(secret[shift:])[: len(secret[shift:]) // 3 * 4]
+    return found
+
+
+@pytest.fixture(scope="module")
+def place(tmp_path_factory: pytest.TempPathFactory) -> Place:
+    place = Place.make(tmp_path_factory.mktemp("canary") / "place", CANARY)
+    place.split(need=2)
+    return place
+
+
+@pytest.fixture(scope="module")
+def telltales(place: Place) -> Telltales:
+    rows = []
+    for path in place.shares:
+        for row in Share.parse(path.read_bytes()).rows:
+            with row.view() as view:
+                rows.append(bytes(view))
+    # What shares and record hold openly is no secret; neither are pieces of eight equal characters, as of zeros.
+    telltales = Telltales(CANARY, *rows)
+    public = place.record.read_bytes() + b" ".join(
+        json.dumps({name: member for name, member in json.loads(path.read_bytes()).items() if name != "rows"}).encode()
+        for path in place.shares
+    )
+    for length in LENGTHS:
+        for i in range(len(public) - length + 1):
+            telltales.pieces.pop(public[i : i + length], None)
+    return telltales
+
+
+@pytest.mark.parametrize("form", forms(CANARY))
+def test_the_search_finds_each_form(form: str, telltales: Telltales) -> None:
+    text = forms(CANARY)[form]
+    assert telltales.found(b"before " + text[3:30] + b" after") is not None
+    assert telltales.found(b"nothing to be seen here, though it is long enough to hold something") is None
+
+
+# Exceptions.
+
+
+def inside(thing: object, depth: int = 0) -> Iterator[tuple[str, bytes | str]]:
+    """Walk through whatever hangs on an object: texts, bytes, containers, attributes."""
+    kind = type(thing).__name__
+    if isinstance(thing, str | bytes):
+        yield kind, thing
+    elif isinstance(thing, bytearray | memoryview):
+        yield kind, bytes(thing)
+    elif isinstance(thing, Secret):
+        yield kind, repr(thing)
+    elif isinstance(thing, int | float | bool | type(None)):
+        yield kind, str(thing)
+    elif depth < 6:
+        if isinstance(thing, dict):
+            parts = [*thing.keys(), *thing.values()]
+        elif isinstance(thing, list | tuple | set | frozenset):
+            parts = list(thing)
+        elif callable(thing) or isinstance(thing, type):
+            parts = []
+        else:
+            parts = [getattr(thing, name, None) for name in dir(thing) if not name.startswith("__")]
+            parts += [thing.__dict__] if hasattr(thing, "__dict__") else []
+        for part in parts:
+            for where, found in inside(part, depth + 1):
+                yield f"{kind}/{where}", found
+
+
+def shown_by(error: BaseException) -> Iterator[tuple[str, bytes | str]]:
+    """Everything that can be seen of an exception, named by where it stands."""
+    chain, queue = [], [error]
+    while queue:
+        one = queue.pop()
+        if one not in chain:
+            chain.append(one)
+            queue += [other for other in (one.__cause__, one.__context__) if other is not None]
+    for one in chain:
+        kind = type(one).__name__
+        yield f"{kind} str", str(one)
+        yield f"{kind} repr", repr(one)
+        for where, found in inside(one.args):
+            yield f"{kind} args/{where}", found
+        for name in dir(one):
+            if name.startswith("__") and name not in ("__notes__",):
+                continue
+            value = getattr(one, name, None)
+            # OSError and others have methods; those that give details, as errors() and json(), are asked.
+            if name in ("errors", "json") and callable(value):
+                value = value()
+            for where, found in inside(value):
+                yield f"{kind}.{name}/{where}", found
+    yield "traceback", "".join(traceback.TracebackException.from_exception(error, capture_locals=False).format())
+
+
+def flip(data: bytes, at: int) -> bytes:
+    changed = bytearray(data)
+    changed[at % len(changed)] ^= 1
+    return bytes(changed)
+
+
+def share_edits(place: Place) -> list[bytes]:
+    """Share files that are damaged in many ways, so that each refusal of the reader is met."""
+    path = place.shares[0]
+    data = path.read_bytes()
+    members = json.loads(data)
+    row = members["rows"][0]
+    at_row = data.index(row.encode())
+    texts: list[Any] = [
+        members | {"rows": [row + "="]},
+        members | {"rows": [row + "\n"]},
+        members | {"rows": [row[:-1]]},
+        members | {"rows": [row[:-1] + "!"]},
+        members | {"rows": [row[:40]]},
+        members | {"rows": [row, row]},
+        members | {"rows": row},
+        members | {"rows": {"0": row}},
+        members | {"rows": [[row]]},
+        members | {"rows": [row], "extra": row},
+        members | {row: "a member named like a row"},
+        members | {"kind": row},
+        members | {"version": row},
+        members | {"set": row},
+        members | {"epoch": row},
+        members | {"custodian": row},
+        members | {"custodian": row[:60] + "/"},
+        members | {"field": row},
+        members | {"field": "0x11c"},
+        members | {"paths": row},
+        members | {"paths": [[[2, row]]]},
+        members | {"paths": [[[2, 0]]]},
+        members | {"secret_commitment": row},
+        members | {"label": row * 9},
+        members | {"record": row},
+        members | {"digest": row},
+        {name: member for name, member in members.items() if name != "digest"},
+        {name: member for name, member in members.items() if name != "kind"},
+        {"rows": [row]},
+        [members],
+        row,
+    ]
+    edits = [json.dumps(text).encode() for text in texts]
+    edits += [data[: at_row + 20], data[: len(data) - 5], data + data, data.replace(b'"epoch": 1', b'"epoch": NaN')]
+    edits += [data[: at_row + 8] + b"\xff" + data[at_row + 9 :], data.replace(b'"epoch"', b'"rows": ["x"], "epoch"')]
+    edits += [data[:at_row] + b"\\ud800" + data[at_row:], data[: at_row + 9] + b'"' + data[at_row + 9 :]]
+    edits += [flip(data, at_row + offset) for offset in range(0, 40, 7)]
+    edits += [b"[" * 5000 + data, data.replace(b'"epoch": 1', b'"epoch": ' + b"1" * 50), CANARY, row.encode()]
+    return edits
+
+
+def failing_paths(place: Place, folder: Path) -> Iterator[tuple[str, Callable[[], object]]]:
+    """Every way in which the library refuses with the secret, or shares of it, in its hands."""
+    secret = Secret.of(CANARY)
+    shares = [Share.parse(path.read_bytes()) for path in place.shares]
+    record = Record.parse(place.record.read_bytes())
+    rule = Rule(2, ("a", "b", "c"))
+    field = Field()
+    taken = folder / "taken"
+    taken.write_bytes(b"")
+
+    # Splitting and writing.
+    yield "empty label", lambda: split(secret, rule, label="")
+    yield "label that is the secret", lambda: split(secret, rule, label=CANARY.decode("latin-1"))
+    yield "name that is the secret", lambda: split(secret, Rule(1, (CANARY.decode("latin-1"),)), label="x")
+    yield "pad out of range", lambda: split(secret, rule, label="x", pad=0)
+    yield "secret of the wrong type", lambda: split(CANARY, rule, label="x")  # type: ignore[arg-type]
+    yield "secret too large", lambda: make_payload(field, Secret.of(CANARY * 2000))
+    yield "secret empty", lambda: make_payload(field, Secret(0))
+    dealt = split(secret, rule, label="x")
+    yield "no delivery folder", lambda: hand_over(dealt, folder / "s", dict.fromkeys("abc", folder / "nowhere"))
+    yield "record cannot be written", lambda: hand_over(dealt, taken, dict.fromkeys("abc", folder))
+    yield "file exists", lambda: to_file(secret, taken)
+    yield "folder missing", lambda: to_file(secret, folder / "no" / "out")
+    yield "write of the wrong kind", lambda: write_new(folder / "w", "text", secret=True)  # type: ignore[arg-type]
+    yield "command missing", lambda: to_command(secret, ["no-such-command"])
+    yield "command fails", lambda: to_command(secret, ["sh", "-c", "cat >/dev/null; exit 3"])
+    yield "command takes nothing", lambda: to_command(secret, ["false"])
+    (folder / "long").write_bytes(CANARY * 10)
+    yield "source too large", lambda: read_secret(folder / "long", limit=20)
+
+    # The holder.
+    yield "secret formatted", lambda: f"{secret:x}"
+    yield "secret hashed", lambda: hash(secret)
+    yield "secret pickled", lambda: __import__("pickle").dumps(secret)
+    yield "secret copied", lambda: __import__("copy").deepcopy(secret)
+    yield "secret subscripted", lambda: secret[0]  # type: ignore[index]
+    yield "secret as bytes", lambda: bytes(secret)  # type: ignore[call-overload]
+    yield "secret in JSON", lambda: json.dumps({"secret": secret})
+
+    # Reading.
+    for i, data in enumerate(share_edits(place)):
+        yield f"share edit {i}", lambda data=data: judged(data, record)
+        yield f"record edit {i}", lambda data=data: Record.parse(data)
+    path = folder / "damaged.json"
+    path.write_bytes(share_edits(place)[0])
+    yield "unreadable share", lambda: recover(load_shares([path, folder / "missing", place.shares[0]]))
+
+    # Recovering and checking.
+    bent = resealed(shares[0], rows=with_rows(shares[0], lambda row: row.__setitem__(5, row[5] ^ 1)))
+    yield "too few", lambda: recover(presented(shares[:1]))
+    yield "one twice", lambda: recover(presented([shares[0], shares[0]]))
+    yield "one bent", lambda: recover(presented([bent, shares[1]]))
+    yield "one bent, with the record", lambda: recover(presented([bent, shares[1]]), record)
+    yield "bent share verified", lambda: verify_share(bent, record)
+    other = crooked_split(CANARY, flat(2, 3))
+    yield "two sets", lambda: recover(presented([shares[0], other.shares[1]]))
+    yield "two sets with quorums", lambda: recover(presented([*shares[:2], *other.shares[:2]]))
+    yield "foreign share verified", lambda: verify_share(other.shares[0], record)
+    yield "two epochs", lambda: recover(presented([shares[0], resealed(shares[1], epoch=2)]))
+    yield "too few points", lambda: recover_payload(field, shares[0].points())
+    yield "one point twice", lambda: interpolate(field, [1, 1], [shares[0].rows[0], shares[1].rows[0]])
+    yield "point out of range", lambda: evaluate(field, [shares[0].rows[0]], [0])
+    yield "rows of two lengths", lambda: interpolate(field, [1, 2], [shares[0].rows[0], secret])
+    yield "message framed wrongly", lambda: open_payload(Secret.of(b"\xff\xff\xff\xff" + CANARY + bytes(60)))
+    closed = Secret.of(CANARY)
+    closed.close()
+    yield "secret closed", closed.view
+
+
+def judged(data: bytes, record: Record) -> None:
+    """Read a share and let it be judged; it is to fail somewhere."""
+    share = Share.parse(data)
+    verify_share(share, record)
+
+
+# What the library itself raises; a wrong type is a TypeError, and Python's own words hold no value then.
+ALLOWED = (SharesError, TypeError, ValueError, AttributeError)
+
+
+def test_no_exception_shows_a_secret(
+    place: Place,
+    telltales: Telltales,
+    tmp_path: Path,
+    caplog: pytest.LogCaptureFixture,
+    capfd: pytest.CaptureFixture[str],
+) -> None:
+    caplog.set_level(logging.DEBUG)
+    seen = 0
+    passed = []
+    leaks: set[tuple[str, str, str]] = set()
+    for name, attempt in failing_paths(place, tmp_path):
+        try:
+            attempt()
+        except ALLOWED as error:
+            seen += 1
+            # pydantic's own error carries its input, and never leaves the documents.
+            if type(error).__module__.startswith("pydantic"):
+                leaks.add((name, "pydantic", ""))
+            leaks |= {(name, where, form) for where, shown in shown_by(error) if (form := telltales.found(shown))}
+        else:
+            passed.append(name)
+    assert leaks == set()
+    # Edits that only touch what is no part of the format, and a bit beyond the last byte, may pass.
+    assert [name for name in passed if not name.startswith(("share edit", "record edit"))] == []
+    assert len(passed) <= 2
+    assert seen > 100
+    out, err = capfd.readouterr()
+    places = [
+        name
+        for name, shown in (("stdout", out), ("stderr", err), ("log", caplog.text))
+        if telltales.found(shown) is not None
+    ]
+    records = [record for record in caplog.records if telltales.found(str(record.__dict__)) is not None]
+    assert (places, len(records)) == ([], 0)
+
+
+def test_objects_that_hold_a_secret_do_not_show_it(place: Place, telltales: Telltales) -> None:
+    shares = [Share.parse(path.read_bytes()) for path in place.shares]
+    dealt = split(Secret.of(CANARY), Rule(2, ("a", "b")), label="x")
+    recovery = recover(presented(shares))
+    shown = []
+    for thing in (*shares, *presented(shares), dealt, recovery, *shares[0].points(), Secret.of(CANARY)):
+        for way in (repr, str, lambda thing: f"{thing!r:.5000}"):
+            if telltales.found(way(thing)) is not None:
+                shown.append(type(thing).__name__)
+    assert shown == []
+
+
+# The command line.
+
+
+def command_lines(place: Place, folder: Path) -> list[list[str | Path]]:
+    """Every command on its failing paths, and on the ones that succeed as well."""
+    odd = [folder / f"edit{i}.json" for i in range(len(share_edits(place)))]
+    for path, data in zip(odd, share_edits(place), strict=True):
+        path.write_bytes(data)
+    taken = folder / "taken"
+    taken.write_bytes(b"")
+    lines: list[list[str | Path]] = [
+        place.split_arguments(),
+        place.split_arguments(folder=folder / "s1", need=9),
+        place.split_arguments(folder=folder / "s2", deliver=[folder / "nowhere"]),
+        place.split_arguments(folder=taken, deliver=[folder]),
+        place.split_arguments(folder=folder / "s3", deliver=[folder], label=""),
+        place.split_arguments(folder=folder / "s4", deliver=[folder], more=["--plain", "--polynomial=0x11c"]),
+        place.split_arguments(folder=folder / "s5", deliver=[folder], more=[]),
+        place.split_arguments(folder=folder / "s6", deliver=[folder], names=["one", "two"]),
+        ["recover", place.shares[0], "--check"],
+        ["recover", *place.shares, "--check"],
+        ["recover", *place.shares, "--to", taken],
+        ["recover", *place.shares, "--to", folder / "no" / "out"],
+        ["recover", *place.shares, "--to", "-"],
+        ["recover", *place.shares, "--", "no-such-command"],
+        ["recover", *place.shares, "--", "sh", "-c", "cat >/dev/null; exit 3"],
+        ["recover", *place.shares, "--record", odd[0], "--check"],
+        ["verify", *place.shares, *odd],
+        ["verify", *place.shares, *odd, "--record", place.record],
+        ["verify", *place.shares, "--record", odd[1]],
+        ["recover", *odd, "--check"],
+        ["recover", *odd, *place.shares, "--check"],
+        ["recover", *odd, *place.shares, "--check", "--record", place.record],
+        ["show", place.record],
+        ["show", place.key],
+        ["polynomial", "check", place.key],
+        ["selftest"],
+    ]
+    lines += [["show", path] for path in (*odd, *place.shares)]
+    return lines + [with_json(line) for line in lines]
+
+
+def test_no_command_shows_a_secret(
+    place: Place, telltales: Telltales, tmp_path: Path, caplog: pytest.LogCaptureFixture
+) -> None:
+    caplog.set_level(logging.DEBUG)
+    leaks, codes = set(), set()
+    # New shares of the same secret are as secret as the first.
+    for line in command_lines(place, tmp_path):
+        result = run(*line)
+        codes.add(result.code)
+        for where, shown in (("stdout", result.out), ("stderr", result.err)):
+            if form := telltales.found(shown):
+                leaks.add((line[0], len(line), where, form))
+    assert leaks == set()
+    assert codes == {0, 2, 3, 4, 5, 7}
+    assert telltales.found(caplog.text) is None
+
+
+def test_a_fault_in_the_program_shows_no_secret(
+    place: Place, telltales: Telltales, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Whatever breaks, and whatever the exception holds, one line without its text comes out."""
+    key = place.key.read_bytes()
+
+    def broken(*_: object, **__: object) -> None:
+        raise RuntimeError(key, key.hex())
+
+    shown = []
+    for name, arguments in (
+        ("shares.cli.recover.recover", ["recover", *place.shares, "--check"]),
+        ("shares.cli.recover.to_file", ["recover", *place.shares, "--to", place.folder / "never"]),
+        ("shares.cli.split.split", place.split_arguments(folder=place.folder / "never", deliver=[place.folder])),
+        ("shares.cli.verify.load_shares", ["verify", *place.shares]),
+        ("shares.cli.show.read_file", ["show", place.shares[0]]),
+    ):
+        with monkeypatch.context() as patch:
+            patch.setattr(name, broken)
+            for more in ([], ["--json"]):
+                result = run(*arguments, *more)
+                if result.code != 1 or telltales.found(result.out + result.err) is not None:
+                    shown.append((name, result.code))
+    assert shown == []
+
+
+# Other processes.
+
+
+def seen_of(process: int) -> Iterator[tuple[str, bytes]]:
+    """What the system tells everyone, or the same user, of a process."""
+    for name in ("cmdline", "environ", "comm", "status", "maps", "stack"):
+        with contextlib.suppress(OSError):
+            yield name, Path(f"/proc/{process}/{name}").read_bytes()
+    with contextlib.suppress(OSError):
+        for link in Path(f"/proc/{process}/fd").iterdir():
+            yield "fd", os.fsencode(os.readlink(link))
+
+
+def test_processes_at_work_show_no_secret(place: Place, telltales: Telltales, tmp_path: Path) -> None:
+    """The program while it holds the secret, and the command that it feeds, both waiting."""
+    ready, go = tmp_path / "ready", tmp_path / "go"
+    os.mkfifo(ready)
+    os.mkfifo(go)
+    script = (
+        f"import os, sys; data = sys.stdin.buffer.read(); "
+        f"open({str(ready)!r}, 'w').write(str(os.getpid())); open({str(go)!r}).read()"
+    )
+    process = subprocess.Popen(
+        [PROGRAM, "recover", *place.shares[:2], "--", sys.executable, "-c", script],
+        stdin=subprocess.DEVNULL,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+    )
+    try:
+        fed = int(ready.read_text())
+        looked_at = [(who, name, data) for who in (process.pid, fed) for name, data in seen_of(who)]
+        leaks = sorted({name for _, name, data in looked_at if telltales.found(data) is not None})
+        assert leaks == []
+        seen = {(who, name) for who, name, _ in looked_at}
+        assert {(fed, "cmdline"), (fed, "environ"), (process.pid, "cmdline")} <= seen
+        go.write_text("")
+        out, err = process.communicate(timeout=30)
+        assert process.returncode == 0
+        assert telltales.found(out + err) is None
+    finally:
+        process.kill()
+        process.communicate()
+
+
+def test_a_split_that_waits_shows_no_secret(place: Place, telltales: Telltales) -> None:
+    """Part of the secret has come through the pipe; the rest has not."""
+    with subprocess.Popen(
+        [PROGRAM, *place.split_arguments(source="-", folder=place.folder / "new", deliver=[place.folder])],
+        stdin=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+    ) as process:
+        assert process.stdin is not None
+        process.stdin.write(CANARY)
+        process.stdin.flush()
+        time.sleep(1)
+        leaks = [name for name, data in seen_of(process.pid) if telltales.found(data) is not None]
+        process.kill()
+    assert leaks == []
+
+
+def test_whole_programs_show_no_secret(place: Place, telltales: Telltales, tmp_path: Path) -> None:
+    """A few lines again as the program itself, with warnings and development checks switched on."""
+    shown = []
+    lines = [
+        ["recover", place.shares[0], "--check"],
+        ["verify", *place.shares],
+        place.split_arguments(folder=tmp_path / "s", deliver=[tmp_path], names=["one", "two"]),
+        ["recover", *place.shares, "--", "false"],
+    ]
+    for line in lines:
+        result = spawn(*line, env={"PYTHONDEVMODE": "1", "PYTHONWARNINGS": "default"})
+        if telltales.found(result.out + result.err) is not None or "Traceback" in result.err:
+            shown.append(line[0])
+    assert shown == []
