@@ -38,7 +38,7 @@ COMMANDS = {
 
 EXIT_CODES = """\b
 Exit codes: 0 done, 1 failed, 2 usage, 3 not enough shares, 4 verification failed,
-5 file or I/O, 6 audit found something due, 7 the command that was fed failed."""
+5 file or I/O, 6 audit found something due (not in this version), 7 the command that was fed failed."""
 
 
 class _Commands(click.Group):

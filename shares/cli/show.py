@@ -14,6 +14,8 @@ from shares.errors import DocumentError
 from shares.field.polynomial import Polynomial
 from shares.storage import read_file
 
+KINDS = {"share": "share (its rows are secret and not shown)", "record": "record (public)"}
+
 
 @click.command()
 @click.argument("file", metavar="FILE", callback=filled)
@@ -34,13 +36,14 @@ def command(file: str, as_json: bool) -> None:
     else:
         raise DocumentError("it is neither a share nor a record", where=file, hint="show reads what split has written")
     width = max(len(name) for name in facts)
-    lines = [f"{name.replace('_', ' '):<{width}}  {_text(value)}" for name, value in facts.items()]
+    described = facts | {"kind": KINDS[str(facts["kind"])]}
+    lines = [f"{name.replace('_', ' '):<{width}}  {_text(value)}" for name, value in described.items()]
     print_result({"done": True, **facts}, lines, as_json=as_json)
 
 
 def _share_facts(share: Share) -> dict[str, object]:
     return {
-        "kind": "share (its rows are secret and not shown)",
+        "kind": "share",
         "label": share.label,
         "custodian": share.custodian,
         "set": share.set.hex(),
@@ -48,7 +51,7 @@ def _share_facts(share: Share) -> dict[str, object]:
         "rule": share.rule,
         "polynomial": str(Polynomial.from_number(share.field.modulus)),
         "points": [" / ".join(f"x = {x} of a threshold of {need}" for need, x in path) for path in share.paths],
-        "row_length": share.row_length,
+        "row_bytes": share.row_length,
         "record": share.record,
         "secret_commitment": share.secret_commitment.hex(),
         "share_commitment": share.commitment().hex(),
@@ -58,7 +61,7 @@ def _share_facts(share: Share) -> dict[str, object]:
 
 def _record_facts(record: Record) -> dict[str, object]:
     return {
-        "kind": "record (public)",
+        "kind": "record",
         "label": record.label,
         "set": record.set.hex(),
         "epoch": record.epoch,
@@ -66,9 +69,9 @@ def _record_facts(record: Record) -> dict[str, object]:
         "rule": record.rule.to_rule().words(),
         "custodians": [custodian.name for custodian in record.custodians],
         "polynomial": str(Polynomial.from_number(record.field.modulus)),
-        "row_length": record.row_length,
+        "row_bytes": record.row_length,
         "secret_commitment": record.secret_commitment.hex(),
-        "previous": record.previous,
+        "previous": record.previous or "none: this is the first epoch",
         "fingerprint": record.fingerprint,
         "signatures": "unsigned: compare the fingerprint with the one read aloud at the split",
     }

@@ -81,7 +81,8 @@ def command(
     """
     if not plain:
         raise ParameterError(
-            "shares cannot be wrapped yet, so --plain is required", hint=f"with --plain {PLAIN_CAUTION}"
+            "this version writes bare, unencrypted shares only, so --plain is required",
+            hint=f"with --plain {PLAIN_CAUTION}",
         )
     rule = flat_rule(need, custodians)
     field = Field(Polynomial.parse(polynomial).number if polynomial else DEFAULT_MODULUS)
@@ -127,7 +128,11 @@ def _delivery_folders(custodians: tuple[str, ...], deliveries: tuple[str, ...]) 
         )
     without = [name for name in custodians if name not in own]
     if without and not common:
-        raise ParameterError(f"no delivery folder is given for {', '.join(without)}", where="--deliver")
+        raise ParameterError(
+            f"no delivery folder is given for {', '.join(without)}",
+            where="--deliver",
+            hint="add NAME=DIR for each of them, or one DIR for all who have none of their own",
+        )
     return own | {name: folder for folder in common for name in without}
 
 

@@ -52,7 +52,10 @@ def flat_rule(need: int, custodians: Sequence[str]) -> Rule:
 
 def _check_names(names: Collection[str]) -> None:
     if len({name.casefold() for name in names}) != len(names):
-        raise ParameterError("two custodians have the same name (upper and lower case do not differ)")
+        raise ParameterError(
+            "two custodians have the same name (upper and lower case do not differ)",
+            hint="give each a name of their own; one custodian has one --custodian",
+        )
     for name in names:
         check_name(name)
 
