@@ -171,14 +171,15 @@ def search(
     Args:
         judge: says whether a candidate payload is the one committed to.
         owners: for each point whose it is; points of one owner are likely to be right or wrong together.
-        most: quorums to try at most; nor does the search go on for longer than ``MAX_SECONDS``.
+        most: quorums to try at most, after those that leave out one or two owners of several points; nor does the
+            search go on for longer than ``MAX_SECONDS``.
 
     Source: Bellare, Dai, Rogaway 2020: with a binding commitment as judge there is at most one explanation.
     """
     paths = [point.path for point in points]
     holders = list(range(len(paths))) if owners is None else list(owners)
     end = time.monotonic() + MAX_SECONDS
-    for quorum in itertools.islice(_promising(paths, holders, most), most):
+    for quorum in _promising(paths, holders, most):
         payload = recover_payload(field, [points[i] for i in quorum])
         if judge(payload):
             return payload, quorum
@@ -189,16 +190,16 @@ def search(
 
 
 def _promising(paths: Sequence[Path], owners: Sequence[int], most: int) -> Iterator[Indices]:
-    """Yield quorums, the likely ones first: without one or two owners, who may have brought many wrong points; then
-    all,
-    or random ones where there are too many."""
-    if len(set(owners)) < len(owners):
+    """Yield quorums, the likely ones first: without one or two owners, who may have brought many wrong points; then all
+    where there are at most ``most``, else ``most`` random ones."""
+    several = len(set(owners)) < len(owners)
+    if several:
         yield from _leaving_out(paths, owners)
-    if count_quorums(paths) <= most:
+    if not several or count_quorums(paths) <= most:
         yield from quorums(paths, most=most)
         return
     source = secrets.SystemRandom()
-    while True:
+    for _ in range(most // 2):
         yield from _of_few_owners(paths, owners, source)
         yield from quorums(paths, most=1)
 

@@ -169,6 +169,89 @@ def test_search_gives_up_after_the_tries_it_is_allowed() -> None:
     assert len(tried) == 20
 
 
+def tries(paths: list[Path], owners: list[int], most: int) -> list[frozenset[int]]:
+    """The quorums that a search tries when nothing is right: each point's row tells which it is."""
+    field = Field()
+    points = [Point(path, Secret.of(bytes(int(i == t) for t in range(len(paths))))) for i, path in enumerate(paths)]
+    met: list[frozenset[int]] = []
+
+    def refuse(candidate: Secret) -> bool:
+        met.append(frozenset(t for t, octet in enumerate(revealed(candidate)) if octet))
+        return False
+
+    assert search(field, points, refuse, owners=owners, most=most) is None
+    return met
+
+
+@given(some_paths(), st.data())
+def test_where_not_too_many_quorums_are_there_every_one_is_tried_whoever_holds_the_points(paths, data) -> None:
+    owners = [data.draw(st.integers(0, 3)) for _ in paths]
+    there = all_quorums(paths)
+    # Interpolation weights of different non-zero points are never zero: the payload names the quorum's points.
+    assert set(tries(paths, owners, max(1, len(there)))) == there
+
+
+def test_exactly_as_many_quorums_as_may_be_tried_are_all_tried_though_one_owner_holds_several_points() -> None:
+    """Those tried first, without some owner, once took the place of the last ones."""
+    paths: list[Path] = [((3, x),) for x in range(1, 9)]
+    assert len(set(tries(paths, [0, 0, 1, 2, 3, 4, 5, 6], 56))) == 56
+
+
+def found_among(wrong: int, bad_owners: int, right: int, most: int) -> bool:
+    """Whether the payload is found among ``wrong`` points of some owners and ``right`` ones, each with its own.
+
+    The right points stand last, where no search in order comes to them.
+    """
+    field, payload, total = Field(), bytes(range(LENGTH)), wrong + right
+    points = points_of(deal(field, Rule(3, tuple(f"pier {i}" for i in range(total))), Secret.of(payload)))
+    points = bent(points, set(range(wrong)), b"\1")
+    owners = [i % bad_owners for i in range(wrong)] + list(range(bad_owners, bad_owners + right))
+    found = search(field, points, lambda candidate: revealed(candidate) == payload, owners=owners, most=most)
+    return found is not None and min(found[1]) >= wrong
+
+
+@pytest.mark.parametrize("bad_owners", [1, 2])
+def test_right_points_are_found_before_all_else_though_one_or_two_owners_bring_many_wrong_ones(bad_owners: int) -> None:
+    """3 right points of 203: of 1.4 million quorums one is right, and no random one is tried here."""
+    assert found_among(200, bad_owners, 3, most=0)
+
+
+def test_right_points_are_found_though_three_owners_bring_many_wrong_ones() -> None:
+    """5 right points of 245. Of 8 owners in random order the first three are right with probability 5/28; that this
+    fails 100 times has probability (23/28)^100 < 3e-9. A random quorum of points is right once in 240,000."""
+    assert found_among(240, 3, 5, most=200)
+
+
+def test_right_points_are_found_though_every_owner_holds_a_wrong_one_too() -> None:
+    """Half of 60 points are right, no two of one owner: a random pair is right with probability 435/1770, and that 500
+    pairs are not has probability below 1e-60. Owners taken singly have no right pair."""
+    field, payload = Field(), bytes(range(LENGTH))
+    points = points_of(deal(field, Rule(2, tuple(f"pier {i}" for i in range(60))), Secret.of(payload)))
+    points = bent(points, set(range(0, 60, 2)), b"\1")
+    owners = [i // 2 for i in range(60)]
+    found = search(field, points, lambda candidate: revealed(candidate) == payload, owners=owners, most=1000)
+    assert found is not None
+    assert all(i % 2 for i in found[1])
+
+
+def test_a_search_stops_when_its_time_is_over(monkeypatch) -> None:
+    field, tried = Field(), []
+    points = points_of(deal(field, flat(4, 8), Secret.of(bytes(LENGTH))))
+    monkeypatch.setattr(robust, "MAX_SECONDS", 0.0)
+    assert search(field, points, lambda candidate: bool(tried.append(1))) is None
+    assert len(tried) == 1
+
+
+def test_hundreds_of_steps_on_every_level_do_not_exhaust_the_stack() -> None:
+    paths: list[Path] = []
+    above: Path = ()
+    for _ in range(4):
+        paths += [(*above, (250, x)) for x in range(2, 251)]
+        above = (*above, (250, 1))
+    assert len(next(quorums([*paths, above]))) == 997
+    assert count_quorums([*paths, above]) == 1
+
+
 def test_payloads_that_the_judge_refuses_are_wiped() -> None:
     field = Field()
     points = points_of(deal(field, flat(2, 4), Secret.of(bytes(LENGTH))))
