@@ -162,7 +162,7 @@ def fingerprint(kind: str, members: dict[str, Any]) -> str:
     """Return the 160-bit fingerprint of a document's public members, 8 groups of 4 base32 characters.
 
     >>> fingerprint("record", {})
-    'RZRD-V37T-EBAT-T6YP-I7WN-CBXJ-ZD3X-ULLG'
+    'MWWV-AEU2-J6FP-IMWQ-W6L6-5ILL-Q6O7-KBX4'
     """
     digest = sha256(b"shares/v1/fingerprint", kind.encode("ascii"), canonical(members))
     letters = base64.b32encode(digest[:20]).decode("ascii")
