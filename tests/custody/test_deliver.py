@@ -56,6 +56,23 @@ def test_writes_that_stop_half_way_are_gone_on_with(tmp_path: Path, monkeypatch)
     assert (tmp_path / "got").read_bytes() == SECRET
 
 
+@pytest.mark.parametrize("error", [KeyboardInterrupt(), OSError("the pipe is gone"), MemoryError()])
+def test_a_command_never_takes_a_part_of_the_secret_for_the_whole(tmp_path: Path, monkeypatch, error) -> None:
+    """Stopped half way, the command is killed before it sees the end of its input."""
+    real, calls = os.write, []
+
+    def stopped(descriptor, data):
+        calls.append(1)
+        if len(calls) > 2:
+            raise error
+        return real(descriptor, data[:7])
+
+    monkeypatch.setattr(deliver.os, "write", stopped)
+    with pytest.raises(type(error)):
+        to_command(Secret.of(SECRET), python(KEEP, str(tmp_path / "got")))
+    assert not (tmp_path / "got").exists()
+
+
 def test_no_shell_sees_the_words(tmp_path: Path) -> None:
     target = tmp_path / "$HOME; `echo` * 'x'"
     to_command(Secret.of(SECRET), python(KEEP, str(target)))

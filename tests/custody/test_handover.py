@@ -15,7 +15,7 @@ import pytest
 from strategies import HARBOUR, crooked_split, flat, presented, revealed
 
 from shares.custody import handover
-from shares.custody.handover import check_targets, hand_over, share_path
+from shares.custody.handover import check_targets, hand_over, other_shares, share_path
 from shares.custody.presented import load_record, load_shares
 from shares.custody.recover import recover
 from shares.custody.split import Dealt, flat_rule, split
@@ -134,6 +134,16 @@ def test_what_a_killed_run_left_is_named(dealt, places, where) -> None:
     left.write_bytes(b"")
     with pytest.raises(StorageError, match=left.name):
         check_targets(*places)
+
+
+def test_bare_shares_that_lie_in_the_delivery_folders_already_are_listed(places) -> None:
+    _, deliveries = places
+    assert other_shares(deliveries) == []
+    for name in ("one.share.json", "two.share.json", "record.json"):
+        (deliveries["south-pier"] / name).write_bytes(b"")
+    expected = [deliveries["south-pier"] / name for name in ("one.share.json", "two.share.json")]
+    assert other_shares({**deliveries, "again": deliveries["south-pier"]}) == expected
+    assert other_shares({"nobody": deliveries["south-pier"] / "nowhere"}) == []
 
 
 # Failures on the way. After each, no file of the act is there: never a record without its shares.

@@ -39,6 +39,7 @@ from shares.errors import (
     EpochMismatchError,
     NotEnoughSharesError,
     SetMismatchError,
+    VerificationError,
 )
 from shares.field.gf256 import Field
 from shares.memory import Secret
@@ -283,6 +284,22 @@ def test_equally_many_shares_of_two_sets_are_ambiguous_unless_the_record_says_wh
     recovery = recover(mixed, ours.record)
     assert revealed(recovery.secret) == SECRET
     assert statuses(recovery) == ["foreign set"] * 3 + ["intact"] * 3
+
+
+def test_equally_many_shares_of_a_set_that_does_not_recover_are_ambiguous_too() -> None:
+    ours, theirs = dealt_flat(2, 3), dealt_flat(3, 5, b"another made-up secret")
+    with pytest.raises(AmbiguousError, match="equally many"):
+        recover(presented([*ours.shares[:2], *theirs.shares[:2]]))
+
+
+def test_shares_that_fit_their_record_and_recover_nothing_are_the_dealers_fault(monkeypatch) -> None:
+    """A dealer who committed, in shares and record alike, to something else than what was shared."""
+    monkeypatch.setattr("strategies.commitment", lambda set_id, payload: bytes(32))
+    dealt = crooked_split(SECRET, flat(2, 3))
+    with pytest.raises(VerificationError, match="although the shares that fit the record make a quorum"):
+        recover(presented(dealt.shares), dealt.record)
+    with pytest.raises(VerificationError, match="none gives what the commitment names"):
+        recover(presented(dealt.shares))
 
 
 def test_one_share_that_claims_to_suffice_does_not_win_over_true_ones_that_are_one_short() -> None:

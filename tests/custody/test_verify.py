@@ -90,7 +90,7 @@ BENT = {
         "another record, AAAA",
     ),
     "no notes": (lambda share: resealed(share, record=None, label=None, rule=None, notice=None), "intact", "fit"),
-    "another label": (lambda share: resealed(share, label="x"), "intact", "fit"),
+    "another label": (lambda share: resealed(share, label="x"), "intact", "but not the label: go by the record's"),
     # Several causes: the first in the order of the format.
     "another set and epoch": (lambda share: resealed(share, set=bytes(16), epoch=2), "foreign set", "of set"),
     "another epoch and name": (lambda share: resealed(share, epoch=2, custodian="wharf"), "other epoch", "of epoch"),

@@ -270,6 +270,14 @@ def test_any_bytes_are_one_object_or_a_document_error(data: bytes) -> None:
         assert members == json.loads(data)
 
 
+@pytest.mark.parametrize("number", ["NaN", "Infinity", "-Infinity", "1.0", "1e0", "1E5", "-1", "-0", "9" * 11])
+def test_no_number_but_a_small_integer_is_read_wherever_it_stands(number: str) -> None:
+    for text in (f'{{"a": {number}}}', f'{{"a": [{{"b": {number}}}]}}'):
+        with pytest.raises(DocumentError, match="a number is"):
+            parse_object(text.encode())
+    assert parse_object(b'{"a": 4294967295}') == {"a": 2**32 - 1}
+
+
 def test_nothing_is_logged_or_warned_about(caplog, capfd, recwarn) -> None:
     with caplog.at_level(logging.DEBUG):
         for data in TEXTS.values():

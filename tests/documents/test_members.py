@@ -22,6 +22,8 @@ from shares.documents.members import (
     _decode_hex,
     _decode_time,
     _decoded,
+    _printable,
+    _valid_name,
     check_name,
     check_text,
     encode_bytes,
@@ -227,3 +229,25 @@ def test_labels_are_printable_and_of_one_line(text: str) -> None:
     except ParameterError:
         accepted = False
     assert accepted == may_be
+
+
+@pytest.mark.parametrize("text", ["\u0378", "a\u0378b", "\U0003fffd"])
+def test_a_character_that_a_later_unicode_may_define_is_read_but_not_written(text: str) -> None:
+    """Whoever has an older Unicode can still recover; nobody deals under a name that nobody can check."""
+    assert unicodedata.category(text[-2:][0]) == "Cn"
+    assert _valid_name(text) == _printable(text) == text
+    for check in (check_name, check_text):
+        with pytest.raises(ParameterError):
+            check(text)
+
+
+@pytest.mark.parametrize("number", [0xFDD0, 0xFDEF, 0xFFFE, 0xFFFF, 0x1FFFE, 0x10FFFF])
+def test_a_character_that_no_unicode_will_ever_define_is_not_read_either(number: int) -> None:
+    """The Unicode Standard, section 23.7: 66 noncharacters."""
+    assert refused(_valid_name, chr(number))
+    assert refused(_printable, chr(number))
+
+
+def test_there_are_66_noncharacters() -> None:
+    unassigned = (chr(n) for n in range(0x110000) if unicodedata.category(chr(n)) == "Cn")
+    assert sum(refused(_printable, c) for c in unassigned) == 66
