@@ -12,6 +12,7 @@ Shared strategies live in ``strategies.py`` beside this file; ``pythonpath`` in 
 from __future__ import annotations
 
 import os
+import signal
 
 import hypothesis
 import pytest
@@ -29,6 +30,13 @@ hypothesis.settings.register_profile(
 
 PROFILE = os.environ.get("HYPOTHESIS_PROFILE") or ("shares-ci" if os.environ.get("CI") else "dev")
 hypothesis.settings.load_profile(PROFILE)
+
+# Whoever started this run may have switched stop signals off for it, as nohup(1) and a shell's background do. Programs
+# under test inherit what is ignored, and would be deaf to the signals that tests send them; what is caught they do not
+# inherit. So this process catches such a signal and does nothing.
+for number in (signal.SIGINT, signal.SIGHUP):
+    if signal.getsignal(number) is signal.SIG_IGN:
+        signal.signal(number, lambda number, frame: None)
 
 
 def pytest_configure(config: pytest.Config) -> None:
