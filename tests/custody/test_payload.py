@@ -67,6 +67,13 @@ def test_a_secret_out_of_range_is_refused(length: int) -> None:
         make_payload(FIELD, Secret(length))
 
 
+@pytest.mark.parametrize("given_secret", [b"canary", bytearray(b"canary"), "canary", None])
+def test_a_secret_in_other_hands_is_refused_and_not_repeated(given_secret: object) -> None:
+    with pytest.raises(TypeError, match=r"see Secret\.of") as refusal:
+        make_payload(FIELD, given_secret)
+    assert "canary" not in f"{refusal.value!r} {vars(refusal.value)} {refusal.value.args}"
+
+
 @pytest.mark.parametrize("pad", [0, -16, MAX_PAD + 1])
 def test_a_pad_out_of_range_is_refused(pad: int) -> None:
     with pytest.raises(ParameterError, match="pad"):

@@ -246,6 +246,10 @@ def test_without_a_record_the_largest_group_is_what_the_others_are_compared_with
     assert alone([a.model_copy(update={"label": "x"}), b]) == ["damaged", "intact"]
     assert alone([a.model_copy(update={"label": "x"})]) == ["damaged"]
     assert alone([]) == []
+    unread = Presented("a file", None, "it cannot be read", Status.UNREADABLE)
+    given_shares = [unread, *presented([a, b])]
+    assert [finding.status.value for finding in examine_alone(given_shares)] == ["unreadable", "intact", "intact"]
+    assert [finding.status.value for finding in examine_alone([unread])] == ["unreadable"]
 
 
 def test_without_a_record_shares_that_claim_one_place_or_rule_otherwise_contradict_each_other(dealt: Dealt) -> None:
