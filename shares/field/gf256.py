@@ -13,7 +13,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
-from functools import cache, lru_cache
+from functools import cache
 
 from shares.errors import DuplicatePointError, ParameterError, PolynomialError
 from shares.field import Kernel, ReadableBuffer, WritableBuffer
@@ -170,15 +170,18 @@ class Field:
             raise DuplicatePointError("two evaluation points are the same")
         if at in xs:
             return bytes(int(x == at) for x in xs)
+        # The numerator of w_i is the product over all j of (at - x_j), without its own factor.
         whole = 1
         for x in xs:
             whole = self.multiply(whole, at ^ x)
-        # The numerator of w_i is the product over all j, without its own factor.
-        shared = _inverse_denominators(self, tuple(xs))
-        return bytes(
-            self.multiply(whole, self.multiply(self.inverse(at ^ x), inverse))
-            for x, inverse in zip(xs, shared, strict=True)
-        )
+        weights = bytearray()
+        for x_i in xs:
+            divisor = at ^ x_i
+            for x_j in xs:
+                if x_j != x_i:
+                    divisor = self.multiply(divisor, x_i ^ x_j)
+            weights.append(self.multiply(whole, self.inverse(divisor)))
+        return bytes(weights)
 
     # Secret rows: the kernel.
 
@@ -219,17 +222,3 @@ def _require_irreducible(modulus: int) -> None:
     if not 0 <= modulus < 2 << MAX_DEGREE:
         raise PolynomialError("the field polynomial must be of degree 8")
     require_irreducible(Polynomial.from_number(modulus), degree=8)
-
-
-@lru_cache(maxsize=256)
-def _inverse_denominators(field: Field, xs: tuple[int, ...]) -> bytes:
-    """Give 1 / (product over j != i of (x_i - x_j)) for each i: the part of the weights that is the same wherever f is
-    wanted. Remembered, since many values of one polynomial are asked for in a row."""
-    inverses = bytearray()
-    for x_i in xs:
-        denominator = 1
-        for x_j in xs:
-            if x_j != x_i:
-                denominator = field.multiply(denominator, x_i ^ x_j)
-        inverses.append(field.inverse(denominator))
-    return bytes(inverses)
