@@ -15,7 +15,7 @@ from pathlib import Path
 
 import pytest
 from cli.harness import PROGRAM, SECRET, Place, Result, assert_one_line, files_in, run, with_json
-from faults.tracing import Site, Traced, at_each, distinct, trace, trace_with
+from faults.tracing import Site, Traced, at_each, counted, distinct, trace, trace_with
 
 Mount = Callable[[str, str], Path]
 NAMES = ("pier", "quay", "dock")
@@ -114,10 +114,9 @@ def test_a_limit_on_the_size_of_files(tmp_path: Path, limit: int) -> None:
 
 @pytest.fixture(scope="module")
 def sites(tmp_path_factory: pytest.TempPathFactory, strace: None) -> list[Site]:
-    place = Place.make(tmp_path_factory.mktemp("count") / "place")
-    traced = trace(place.folder, place.split_arguments(names=NAMES[:2]))
-    assert traced.result.code == 0
-    return [site for site in traced.sites if "key" not in site.what]
+    folder = tmp_path_factory.mktemp("count")
+    sites = counted(folder, lambda own: Place.make(own).split_arguments(names=NAMES[:2]))
+    return [site for site in sites if "key" not in site.what]
 
 
 # The last act of every file: by then it is complete and on the medium, and closing a folder writes nothing.
@@ -193,11 +192,9 @@ def test_what_is_read_back_is_what_counts(tmp_path: Path) -> None:
     """A medium that loses what it was given: the second share reads as empty, and the run undoes itself."""
     place = Place.make(tmp_path / "place")
     arguments = place.split_arguments(names=NAMES[:2])
-    counted = trace(place.folder, arguments)
-    reads = [site for site in counted.sites if site.call == "read" and "share.json" in site.what]
+    sites = counted(tmp_path, lambda own: Place.make(own).split_arguments(names=NAMES[:2]))
+    reads = [site for site in sites if site.call == "read" and "share.json" in site.what]
     for site in (reads[0], reads[-2]):
-        for path in shares_left(place):
-            path.unlink()
         traced = trace_with(place.folder, arguments, site, "retval=0")
         line = assert_one_line(traced.result)
         assert traced.result.code == 4

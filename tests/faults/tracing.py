@@ -120,6 +120,25 @@ def _named_alike(rest: str, folder: Path) -> str:
     return re.sub(r"\b\d+<", "<", what).rstrip(' ,)["')
 
 
+def counted(folder: Path, prepare: Callable[[Path], Sequence[str | Path]], *inject: str) -> list[Site]:
+    """Learn the calls of an undisturbed run: of two runs in succession that agree.
+
+    Args:
+        folder: where folders for the runs are made.
+        prepare: makes the folder of a run and returns its arguments.
+        inject: faults in force all the time.
+    """
+    before = None
+    for attempt in range(6):
+        own = folder / f"count{attempt}"
+        traced = trace(own, prepare(own), *inject)
+        assert traced.result.code == 0, traced.result.err
+        if traced.sites == before:
+            return before
+        before = traced.sites
+    raise AssertionError("no two runs make the same calls")
+
+
 def trace_with(folder: Path, arguments: Sequence[str | Path], site: Site, fault: str, *inject: str) -> Traced:
     """Run the program with a fault, ``signal=KILL`` or ``error=EIO``, at one call; see that it struck there.
 
