@@ -10,12 +10,10 @@ from __future__ import annotations
 import contextlib
 import json
 import os
-import pickle
 import signal
 import subprocess
 import sys
 import tempfile
-import warnings
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -99,30 +97,26 @@ def spawn(
 
 
 def run_unprivileged(*arguments: str | Path) -> Result:
-    """Run a command in a forked child as a user whom permissions bind; root is bound by none."""
-    reader, writer = os.pipe()
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore", DeprecationWarning)  # of fork beside threads, from Python 3.12 on
-        child = os.fork()
-    if child == 0:
-        status = 1
-        with contextlib.suppress(BaseException):
-            signal.alarm(30)
-            if os.geteuid() == 0:
-                os.setgroups([])
-                os.setgid(NOBODY)
-                os.setuid(NOBODY)
-            with os.fdopen(writer, "wb") as stream:
-                pickle.dump(run(*arguments), stream)
-            status = 0
-        os._exit(status)
-    os.close(writer)
-    with os.fdopen(reader, "rb") as stream:
-        answer = stream.read()
-    assert os.waitstatus_to_exitcode(os.waitpid(child, 0)[1]) == 0
-    result = pickle.loads(answer)  # noqa: S301 - from the child forked above
-    assert isinstance(result, Result)
-    return result
+    """Run the program as a user whom permissions bind; root is bound by none.
+
+    It loads everything first: another user may not be allowed where this installation lies.
+    """
+    code = (
+        "import ctypes, encodings.utf_16_be, importlib, os, pkgutil, resource, shares\n"
+        "for module in pkgutil.walk_packages(shares.__path__, 'shares.'):\n"
+        "    '__main__' in module.name or importlib.import_module(module.name)\n"
+        "if os.geteuid() == 0:\n"
+        f"    os.setgroups([]); os.setgid({NOBODY}); os.setuid({NOBODY})\n"
+        "from shares.cli.main import run; run()"
+    )
+    done = subprocess.run(
+        [sys.executable, "-P", "-c", code, *arguments],
+        stdin=subprocess.DEVNULL,
+        capture_output=True,
+        check=False,
+        timeout=60,
+    )
+    return Result(done.returncode, done.stdout.decode(), done.stderr.decode())
 
 
 @dataclass(frozen=True)
