@@ -58,7 +58,7 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
         pipe = process.stdin
         if pipe is not None:
             # A command may have read enough and closed its end; its exit code says whether it is content.
-            with contextlib.suppress(BrokenPipeError), pipe, secret.view() as view:
+            with contextlib.suppress(BrokenPipeError), pipe, _killed_unless_done(process), secret.view() as view:
                 sent = 0
                 while sent < len(view):
                     with view[sent:] as rest:
@@ -73,9 +73,11 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
 
 @contextlib.contextmanager
 def _killed_unless_done(process: subprocess.Popen[bytes]) -> Iterator[None]:
-    """Kill the command when anything stops us: it must not take a part of the secret for the whole."""
+    """Kill the command when anything stops us, before its input ends: it must not take a part for the whole."""
     try:
         yield
+    except BrokenPipeError:
+        raise  # The command itself has read enough.
     except BaseException:
         process.kill()
         raise
