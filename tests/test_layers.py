@@ -24,6 +24,7 @@ FLOORS = (
     ("cli",),
     ("shares",),
     ("custody",),
+    ("paper", "planning"),
     ("documents",),
     ("sharing",),
     ("field",),
@@ -39,6 +40,8 @@ THIRD_PARTIES = {
     "pydantic_core": {"documents"},
     "rfc8785": {"documents"},
     "cryptography": {"documents", "custody"},
+    "jinja2": {"paper"},
+    "segno": {"paper"},
 }
 
 # What no module does, with the modules that may: the kernel is chosen by the environment, the command ends the process,

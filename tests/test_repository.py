@@ -134,7 +134,7 @@ def test_the_wheel_holds_what_a_user_needs_and_no_more() -> None:
     schemas = {f"documents/schemas/{path.name}" for path in (ROOT / "shares/documents/schemas").glob("*.json")}
     assert schemas
     assert names >= schemas
-    assert {Path(name).suffix for name in names} <= {".py", ".pyi", ".so", ".json", ".md", ".typed"}
+    assert {Path(name).suffix for name in names} <= {".py", ".pyi", ".so", ".json", ".md", ".typed", ".html", ".css"}
     distribution = importlib.metadata.distribution("shares")
     (tag,) = re.findall(r"^Tag: (.*)$", distribution.read_text("WHEEL") or "", flags=re.MULTILINE)
     assert tag.startswith("cp311-abi3-linux_")
