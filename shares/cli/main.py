@@ -29,6 +29,7 @@ from shares.memory import lock_refused, protect_process
 COMMANDS = {
     "party": ("party", "Make and show party keys and cards."),
     "passphrase": ("passphrase", "Draw a random passphrase."),
+    "acknowledge": ("acknowledge", "Accept a custodian's duties, before the share is handed over."),
     "split": ("split", "Split a secret into shares, and check that they recover it."),
     "verify": ("verify", "Check each share alone, without any secret."),
     "recover": ("recover", "Recover a secret from enough shares."),

@@ -7,6 +7,7 @@ from collections.abc import Callable
 import click
 
 from shares.cli.output import filled, json_option, print_result
+from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -25,6 +26,7 @@ KINDS = {
     "record": "record (public)",
     "party-key": "party key (private, wrapped by passphrase)",
     "party-card": "party card (public)",
+    "acknowledgement": "acknowledgement of duties",
 }
 UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
 
@@ -116,6 +118,14 @@ def _record(data: bytes, where: str) -> dict[str, object]:
     }
 
 
+def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
+    found = Acknowledgement.parse(data, where=where)
+    by = f"a printed form, SHA-256 {found.form.hex()}" if found.form is not None else "nobody"
+    if found.card is not None:
+        by = f"signed by {found.card.name}, card {found.card.fingerprint}"
+    return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": by}
+
+
 def _card_facts(card: PartyCard) -> dict[str, object]:
     return card.public("name", "contact", "created", "fingerprint")
 
@@ -126,6 +136,7 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     SealedSecret.KIND: _sealed_secret,
     Record.KIND: _record,
     PartyKey.KIND: lambda data, where: _card_facts(PartyKey.parse(data, where=where).card),
+    Acknowledgement.KIND: _acknowledgement,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }
 

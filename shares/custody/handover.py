@@ -3,7 +3,8 @@
 Source: design laws 5 and 6 of this project (DEVELOPERS.md): all or nothing, and nothing is called done unchecked.
 May import: shares.errors, shares.storage, shares.documents, shares.sharing, shares.custody.packing, .payload,
 .presented, .split, .verify.
-Secret: the shares, and their files where they are bare. Confidential: the policy. Public: the record, the paths.
+Secret: the shares, and their files where they are bare. Confidential: what goes beside the record. Public: the record,
+the paths.
 Does not: choose how shares are packed; who asks for bare ones has been told that all of them in one folder are the
 secret.
 """
@@ -12,7 +13,7 @@ from __future__ import annotations
 
 import contextlib
 import os
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -28,7 +29,6 @@ from shares.sharing.rule import recover_payload
 from shares.storage import discard, leftovers, make_folder, read_back, write_new
 
 RECORD_NAME = "record.json"
-POLICY_NAME = "policy.toml"
 MOST_TRIALS = 1000
 """With at most this many quorums every one is tried; beyond, a sample in which each share takes part."""
 
@@ -41,14 +41,14 @@ class HandedOver:
 
     Attributes:
         record: path of the record.
-        policy: path of the copy of the policy, or None where there is no policy.
+        companions: path of each file that went into the set's folder beside the record.
         shares: path of each custodian's share.
         trials: quorums from which the secret was recovered, out of ``quorums``.
         quorums: how many minimal quorums there are.
     """
 
     record: Path
-    policy: Path | None
+    companions: dict[str, Path]
     shares: dict[str, Path]
     trials: int
     quorums: int
@@ -59,12 +59,13 @@ def share_path(folder: Path, custodian: str, suffix: str = BARE_SUFFIX) -> Path:
     return folder / f"{custodian}{suffix}"
 
 
-def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
+def check_targets(set_folder: Path, deliveries: Mapping[str, Path], companions: Collection[str] = ()) -> None:
     """Refuse before anything secret is touched when the files cannot all be new; name what an earlier run left over.
 
     Args:
         set_folder: where the record goes; may not exist yet.
         deliveries: for each custodian the folder that the share goes to; must exist.
+        companions: names of files that go into the set's folder beside the record.
 
     Raises:
         StorageError: a folder is missing, a file exists, or an unfinished run left something.
@@ -77,10 +78,13 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
                 hint="mount the medium, or make the folder with mode 700; it is not made here, "
                 "lest a share end up on the wrong disk",
             )
-    for name in (RECORD_NAME, POLICY_NAME):
+    record = set_folder / RECORD_NAME
+    if os.path.lexists(record):
+        raise StorageError("a set already has its record here", where=os.fspath(record), hint="choose a new folder")
+    for name in companions:
         if os.path.lexists(set_folder / name):
             raise StorageError(
-                f"a set already has its {name.partition('.')[0]} here",
+                "a file of another split, or one that did not finish, is here",
                 where=os.fspath(set_folder / name),
                 hint="choose a new folder",
             )
@@ -116,24 +120,28 @@ def hand_over(
     deliveries: Mapping[str, Path],
     *,
     packings: Mapping[str, Packing] | None = None,
+    companions: Mapping[str, bytes] | None = None,
     progress: Progress | None = None,
 ) -> HandedOver:
     """Write every share, read all back from disk, verify and trial-recover, and only then write the record.
 
     Args:
         dealt: the dealing.
-        set_folder: where the record, and the copy of the policy, go; made with mode 0700 where it is missing.
+        set_folder: where the record goes; made with mode 0700 where it is missing.
         deliveries: for each custodian the folder that the share goes to.
         packings: for each custodian how the share is packed; all bare by default.
+        companions: content of each file, mode 0600, that goes into the set's folder beside the record, by its name
+            there.
         progress: called with (quorums tried, quorums to try).
 
     Raises:
         StorageError: a file or folder cannot be written; then no file of this call is left.
         VerificationError: what was read back does not verify or recover; then no file of this call is left.
     """
-    check_targets(set_folder, deliveries)
+    beside = {set_folder / name: data for name, data in (companions or {}).items()}
+    check_targets(set_folder, deliveries, companions or ())
     make_folder(set_folder)
-    record_path, policy_path = set_folder / RECORD_NAME, set_folder / POLICY_NAME
+    record_path = set_folder / RECORD_NAME
     packed = packings or dict.fromkeys(deliveries, Packing.bare())
     paths = {
         share.custodian: share_path(deliveries[share.custodian], share.custodian, packed[share.custodian].suffix)
@@ -144,15 +152,16 @@ def hand_over(
         for share in dealt.shares:
             _write(paths[share.custodian], packed[share.custodian].pack(share), written)
         trials, total = _prove(dealt, paths, packed, progress)
-        if dealt.policy is not None:
-            _write(policy_path, dealt.policy, written)
-            _read_again(policy_path, dealt.policy)
+        for path, data in beside.items():
+            make_folder(path.parent)
+            _write(path, data, written)
+            _read_again(path, data)
         _write(record_path, dealt.record.to_file(), written, secret=False)
         _read_again(record_path, dealt.record.to_file())
     except BaseException:  # Whatever stops the act, an interrupt included, undoes it.
         _undo(written, record_path)
         raise
-    return HandedOver(record_path, policy_path if dealt.policy is not None else None, paths, trials, total)
+    return HandedOver(record_path, {name: set_folder / name for name in companions or ()}, paths, trials, total)
 
 
 def _write(path: Path, data: bytes, written: dict[Path, bytes | None], *, secret: bool = True) -> None:

@@ -9,7 +9,6 @@ Does not: write files; ``custody.handover`` does, and checks what it wrote.
 
 from __future__ import annotations
 
-import hashlib
 import secrets
 from collections.abc import Collection, Sequence
 from dataclasses import dataclass, replace
@@ -31,14 +30,10 @@ from shares.sharing.rule import Rule, deal
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Dealt:
-    """One dealing: the public record, the secret shares in the record's order, and the policy's text, if there is one.
-
-    The policy is confidential: it tells whom to coerce.
-    """
+    """One dealing: the public record, and the secret shares in the record's order."""
 
     record: Record
     shares: tuple[Share, ...]
-    policy: bytes | None = None
 
     def signed(self, key: OpenPartyKey, role: Role) -> Dealt:
         """Return this dealing with its record signed; see ``Record.signed``."""
@@ -93,7 +88,7 @@ def split(
         created: the time to write into the record, UTC to the second; now by default.
         set_id: 16 fresh random bytes, where a file was encrypted for this set before; drawn by default.
         encrypted_file: digest of the file whose key ``secret`` is, 32 bytes, where it is one.
-        policy: the text of the policy that ``rule`` comes from; its digest goes into the record.
+        policy: digest of the policy that ``rule`` comes from, 32 bytes; it goes into the record.
 
     Returns:
         The record and one share for each custodian. Wipe it with ``close()``.
@@ -179,10 +174,10 @@ def _deal(
         checks=[checks_of(field, matrix, polynomial) for polynomial in dealing.polynomials],
         secret_commitment=secret_commitment,
         encrypted_file=encrypted_file,
-        policy=None if policy is None else hashlib.sha256(policy).digest(),
+        policy=policy,
     )
     dealing.close_polynomials()
     if len(record.to_file()) > MAX_FILE:
         raise ParameterError("the rule is too large: its record would be larger than 1 MiB")
     notes = {"label": label, "rule": rule.words(), "record": record.fingerprint}
-    return Dealt(record, tuple(share.noted(**notes) for share in shares), policy)
+    return Dealt(record, tuple(share.noted(**notes) for share in shares))
