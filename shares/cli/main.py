@@ -27,6 +27,7 @@ from shares.memory import lock_refused, protect_process
 # Name -> (module, what it is for), in the order of a key's life. Modules are imported late: `--version` and `--help`
 # stay quick.
 COMMANDS = {
+    "plan": ("plan", "Examine a policy before anything is split."),
     "split": ("split", "Split a secret into shares, and check that they recover it."),
     "verify": ("verify", "Check each share alone, without any secret."),
     "recover": ("recover", "Recover a secret from enough shares."),
