@@ -27,6 +27,7 @@ from shares.memory import lock_refused, protect_process
 # Name -> (module, what it is for), in the order of a key's life. Modules are imported late: `--version` and `--help`
 # stay quick.
 COMMANDS = {
+    "plan": ("plan", "Examine a policy before anything is split."),
     "party": ("party", "Make and show party keys and cards."),
     "passphrase": ("passphrase", "Draw a random passphrase."),
     "acknowledge": ("acknowledge", "Accept a custodian's duties, before the share is handed over."),
