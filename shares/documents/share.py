@@ -108,8 +108,8 @@ class Share(Document):
             digest=bytes(32),
         )
 
-    def noted(self, *, label: str, rule: str, record: str) -> Self:
-        """Return this share with its notes for people, and its own digest."""
+    def noted(self, *, label: str | None, rule: str | None, record: str | None) -> Self:
+        """Return this share with its notes for people, and its own digest. One typed from paper lacks some notes."""
         noted = self.model_copy(update={"label": label, "rule": rule, "notice": NOTICE, "record": record})
         return noted.model_copy(update={"digest": noted._digest()})
 
