@@ -29,6 +29,8 @@ from shares.memory import lock_refused, protect_process
 COMMANDS = {
     "split": ("split", "Split a secret into shares, and check that they recover it."),
     "verify": ("verify", "Check each share alone, without any secret."),
+    "sheet": ("sheet", "Print a share: lines to type, a QR code, and a receipt."),
+    "transcribe": ("transcribe", "Read a printed share back, typed or scanned."),
     "recover": ("recover", "Recover a secret from enough shares."),
     "show": ("show", "Show the public facts of a share or record."),
     "polynomial": ("polynomial", "List and check field polynomials."),

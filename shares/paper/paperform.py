@@ -1,7 +1,7 @@
 """The paper form of a share: as few bytes as there can be, a check over all of them, in blocks of one line each.
 
 Source: FORMAT.md, sec. 11; RFC 4648, sec. 6 (base32); FIPS 180-4 (SHA-256).
-May import: shares.errors, shares.documents.base, .members, .share.
+May import: shares.errors, shares.documents.base, .members, .share, .wrapped_share, .wrapping.
 Secret: the rows, in the form and in every copy that Python makes of it on the way (SECURITY.md).
 Public: everything else.
 Does not: carry label, rule or notice. Nothing proves those, and a share is whole without them.
@@ -13,12 +13,16 @@ import base64
 import binascii
 import hashlib
 import hmac
-from typing import Any, Final
+from typing import Any, Final, TypeAlias
 
 from shares.documents.base import write_text
 from shares.documents.members import encode_bytes
-from shares.documents.share import Share
+from shares.documents.share import NOTES, Share
+from shares.documents.wrapped_share import WrappedShare
+from shares.documents.wrapping import SUITES, TAG, ByPassphrase
 from shares.errors import DocumentError, ParameterError
+
+PaperShare: TypeAlias = Share | WrappedShare
 
 BLOCK: Final = 15
 """Bytes in a block: 24 characters of base32, what a typed line holds beside its number."""
@@ -29,11 +33,13 @@ CHECK: Final = 4
 _VERSION: Final = 1 << 5
 _ENCRYPTED_FILE: Final = 1 << 4
 _RECORD: Final = 1 << 3
-_BARE: Final = 0
+_BARE, _PASSPHRASE, _CARD = 0, 1, 2
+# A card's suite follows the kind of wrapping, in the order of SUITES.
+_KINDS: Final = range(_CARD + len(SUITES))
 
 
-def to_paper(share: Share) -> bytes:
-    """Return the paper form of a share. Secret.
+def to_paper(share: PaperShare) -> bytes:
+    """Return the paper form of a share, bare or wrapped. That of a bare one is secret.
 
     Returns:
         1 to 255 blocks of 15 bytes.
@@ -43,11 +49,13 @@ def to_paper(share: Share) -> bytes:
 
     Source: FORMAT.md, sec. 11.
     """
-    form = bytes([_VERSION | _ENCRYPTED_FILE * (share.encrypted_file is not None) | _RECORD * bool(share.record)])
-    body = form + _header(share) + _number(share.row_length)
-    for row in share.rows:
-        with row.view() as view:
-            body += view
+    body = _header(share)
+    if isinstance(share, Share):
+        for row in share.rows:
+            with row.view() as view:
+                body += view
+    else:
+        body += share.sealed
     blocks = -(-(1 + len(body) + CHECK) // BLOCK)
     if blocks > MAX_BLOCKS:
         raise ParameterError(
@@ -55,11 +63,11 @@ def to_paper(share: Share) -> bytes:
             hint="encrypt the secret with a fresh key and split that key; print its shares",
         )
     body = body.ljust(blocks * BLOCK - CHECK - 1, b"\0")
-    return bytes([blocks]) + _check(body) + body
+    return bytes([blocks]) + _check(bytes([blocks]) + body) + body
 
 
-def from_paper(data: bytes, *, where: str | None = None) -> Share:
-    """Return the share that a paper form holds; its label and rule are null, and its notice is the usual one.
+def from_paper(data: bytes, *, where: str | None = None) -> PaperShare:
+    """Return the share that a paper form holds; its label, rule and notice are null.
 
     Args:
         data: the form, whole.
@@ -102,15 +110,33 @@ def from_text(text: str) -> bytes:
     return data
 
 
-def _header(share: Share) -> bytes:
+def _header(share: PaperShare) -> bytes:
+    """Return everything of the form's body that comes before the rows or what they are sealed in."""
+    kind, wrapping = _wrapping(share)
+    kind |= _VERSION | _ENCRYPTED_FILE * (share.encrypted_file is not None) | _RECORD * (share.record is not None)
     name = share.custodian.encode("utf-8")
-    parts = [share.set, _number(share.epoch), bytes([len(name)]), name, bytes([share.field.modulus & 0xFF])]
-    parts.append(_number(len(share.paths)))
+    parts = [bytes([kind]), share.set, _number(share.epoch), bytes([len(name)]), name]
+    parts += [bytes([share.field.modulus & 0xFF]), _number(len(share.paths))]
     for path in share.paths:
         parts += [bytes([len(path)]), *(bytes(step) for step in path)]
     parts += [share.secret_commitment, share.encrypted_file or b""]
-    parts.append(base64.b32decode(share.record.replace("-", "")) if share.record else b"")
+    parts += [_fingerprint_bytes(share.record) if share.record else b"", wrapping, _number(share.row_length)]
     return b"".join(parts)
+
+
+def _wrapping(share: PaperShare) -> tuple[int, bytes]:
+    if isinstance(share, Share):
+        return _BARE, b""
+    wrapping = share.wrapping
+    if isinstance(wrapping, ByPassphrase):
+        cost = _number(wrapping.memory) + bytes([wrapping.passes, wrapping.lanes])
+        return _PASSPHRASE, cost + wrapping.salt + wrapping.commitment
+    key = _number(len(wrapping.key)) + wrapping.key
+    return _CARD + SUITES.index(wrapping.suite), _fingerprint_bytes(wrapping.card) + wrapping.commitment + key
+
+
+def _fingerprint_bytes(fingerprint: str) -> bytes:
+    return base64.b32decode(fingerprint.replace("-", ""))
 
 
 def _number(value: int) -> bytes:
@@ -152,40 +178,54 @@ class _Reader:
         raise DocumentError("a number in it is not in its one form")
 
 
-def _read(data: bytes) -> Share:
+def _read(data: bytes) -> PaperShare:
     reader = _Reader(data)
     if reader.byte() * BLOCK != len(data):
         raise DocumentError("it is not whole: it does not have the length that it begins with")
-    if not hmac.compare_digest(reader.take(CHECK), _check(data[1 + CHECK :])):
+    if not hmac.compare_digest(reader.take(CHECK), _check(data[:1] + data[1 + CHECK :])):
         raise DocumentError("the check over the whole does not fit")
     form = reader.byte()
-    if form & 0xE0 != _VERSION or form & 0x07 != _BARE:
+    kind = form & 0x07
+    if form & 0xE0 != _VERSION or kind not in _KINDS:
         raise DocumentError("it is no share, or one of a version that this program does not know")
-    members = _read_header(reader, form)
+    members = _read_facts(reader, form) | dict.fromkeys(NOTES[:-1]) | {"version": 1, "digest": "00" * 32}
+    if kind != _BARE:
+        members["wrapping"] = _read_wrapping(reader, kind)
     length, count = reader.number(), len(members["paths"])
-    members["rows"] = [encode_bytes(reader.take(length)) for _ in range(count)]
+    if kind == _BARE:
+        members |= {"kind": Share.KIND, "rows": [encode_bytes(reader.take(length)) for _ in range(count)]}
+    else:
+        members |= {"kind": WrappedShare.KIND, "sealed": encode_bytes(reader.take(count * length + TAG))}
     if len(data) - reader.at >= BLOCK or any(data[reader.at :]):
         raise DocumentError("something stands after its end")
-    ordered = {"kind": Share.KIND, "version": 1, **members}
-    notes = {"label": None, "rule": None, "notice": None, "digest": "00" * 32}
-    share = Share.parse(write_text(ordered | notes))
-    return share.noted(label=None, rule=None, record=share.record)
+    if kind == _BARE:
+        return Share.parse(write_text(members)).with_notes()
+    return WrappedShare.parse(write_text(members)).with_digest()
 
 
-def _read_header(reader: _Reader, form: int) -> dict[str, Any]:
+def _read_facts(reader: _Reader, form: int) -> dict[str, Any]:
     members: dict[str, Any] = {"set": reader.take(16).hex(), "epoch": reader.number()}
-    problem = None
     name = reader.take(reader.byte())
-    try:
-        members["custodian"] = name.decode("utf-8")
-    except UnicodeDecodeError:
-        problem = "the custodian's name in it is not UTF-8"
-    if problem:
-        raise DocumentError(problem)
+    # A name that is no UTF-8 becomes one that is refused as a name.
+    members["custodian"] = name.decode("utf-8", "backslashreplace")
     members["field"] = f"0x1{reader.byte():02x}"
     members["paths"] = [[[reader.byte(), reader.byte()] for _ in range(reader.byte())] for _ in range(reader.number())]
     members["secret_commitment"] = reader.take(32).hex()
     members["encrypted_file"] = reader.take(32).hex() if form & _ENCRYPTED_FILE else None
-    letters = base64.b32encode(reader.take(20)).decode("ascii") if form & _RECORD else ""
-    members["record"] = "-".join(letters[i : i + 4] for i in range(0, 32, 4)) or None
+    members["record"] = _read_fingerprint(reader) if form & _RECORD else None
     return members
+
+
+def _read_wrapping(reader: _Reader, kind: int) -> dict[str, Any]:
+    if kind == _PASSPHRASE:
+        cost = {"memory": reader.number(), "passes": reader.byte(), "lanes": reader.byte()}
+        bound = {"salt": encode_bytes(reader.take(16)), "commitment": encode_bytes(reader.take(32))}
+        return {"method": "passphrase", **cost, **bound}
+    card, commitment = _read_fingerprint(reader), encode_bytes(reader.take(32))
+    key = encode_bytes(reader.take(reader.number()))
+    return {"method": "card", "suite": SUITES[kind - _CARD], "card": card, "key": key, "commitment": commitment}
+
+
+def _read_fingerprint(reader: _Reader) -> str:
+    letters = base64.b32encode(reader.take(20)).decode("ascii")
+    return "-".join(letters[i : i + 4] for i in range(0, 32, 4))
