@@ -76,12 +76,13 @@ def from_paper(data: bytes, *, where: str | None = None) -> PaperShare:
     Raises:
         DocumentError: it is not whole, or not a form that this version knows.
     """
-    problem = None
     try:
         return _read(data)
     except DocumentError as error:
-        problem = error.what
-    raise DocumentError(problem, where=where, hint="compare it with the sheet once more; take all of it from one sheet")
+        problem, hint = error.what, error.hint
+    raise DocumentError(
+        problem, where=where, hint=hint or "compare it with the sheet once more; take all of it from one sheet"
+    )
 
 
 def to_text(data: bytes) -> str:
@@ -187,7 +188,10 @@ def _read(data: bytes) -> PaperShare:
     form = reader.byte()
     kind = form & 0x07
     if form & 0xE0 != _VERSION or kind not in _KINDS:
-        raise DocumentError("it is no share, or one of a version that this program does not know")
+        raise DocumentError(
+            "it is no share, or one of a version that this program does not know",
+            hint="use the release of this program that printed it, or a later one",
+        )
     members = _read_facts(reader, form) | dict.fromkeys(NOTES[:-1]) | {"version": 1, "digest": "00" * 32}
     if kind != _BARE:
         members["wrapping"] = _read_wrapping(reader, kind)
