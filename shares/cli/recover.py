@@ -8,13 +8,17 @@ from pathlib import Path
 
 import click
 
+from shares.cli.keys import key_option, opening, suite_option
 from shares.cli.output import filled, json_option, print_result, prose, warn
+from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
-from shares.custody.deliver import to_command, to_file
+from shares.custody.deliver import sealed_for, to_command, to_file
+from shares.custody.parties import load_card
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
+from shares.documents.wrapping import Suite
 from shares.errors import ParameterError, StorageError
-from shares.storage import leftovers
+from shares.storage import leftovers, write_new
 
 # By number: a stream of this program may be missing where the descriptor is not.
 STANDARD_ERROR = 2
@@ -55,23 +59,47 @@ class _FeedsCommand(click.Command):
     help="Write the secret to this new file, mode 0600.",
 )
 @click.option("--check", is_flag=True, help="Only prove that the shares recover the secret; write it nowhere.")
+@click.option(
+    "--for",
+    "receiver",
+    metavar="CARD",
+    callback=filled,
+    help="With --to: write it encrypted to the party of this card, who opens it with unwrap.",
+)
+@suite_option
+@key_option
+@passphrase_options
 @json_option
 @click.pass_context
 def command(
-    ctx: click.Context, files: tuple[str, ...], record_file: str | None, target: str | None, check: bool, as_json: bool
+    ctx: click.Context,
+    files: tuple[str, ...],
+    record_file: str | None,
+    target: str | None,
+    check: bool,
+    receiver: str | None,
+    suite: Suite,
+    keys: tuple[str, ...],
+    passphrase_files: tuple[str, ...],
+    descriptors: tuple[str, ...],
+    as_json: bool,
 ) -> None:
     """Recover the secret from enough SHAREs, check it against the commitment, and only then let it go.
 
     It goes to a new file, to the standard input of COMMAND (run without a shell), or nowhere. It is never printed.
     What COMMAND prints is the output then (with --json it goes to standard error), and its failure gives exit code 7.
-    Bad shares are named; with more shares than needed it still recovers, searching at most 20,000 quorums
-    or 20 seconds.
+    Wrapped shares are opened in memory, with --key or a passphrase. Bad shares are named; with more shares than needed
+    it still recovers, searching at most 20,000 quorums or 20 seconds.
 
     \b
     Examples:
       shares recover north-pier.share.json light-house.share.json registrar.share.json --to key.pem
       shares recover *.share.json --record record.json --check
       shares recover *.share.json -- openssl pkey -pubout
+      shares recover north-pier.wrapped.json dry-dock.wrapped.json registrar.wrapped.json \\
+        --passphrase-file north-pier.passphrase --passphrase-file dry-dock.passphrase \\
+        --passphrase-file registrar.passphrase --key registrar.key.json \\
+        --for harbour-office.card.json --to key.sealed.json
     """
     fed: list[str] | None = ctx.meta.get("command")
     if (target is not None) + check + (fed is not None) != 1 or fed == []:
@@ -84,8 +112,12 @@ def command(
         )
     if target is not None and os.path.lexists(target):
         raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
+    if receiver is not None and target is None:
+        raise ParameterError("--for goes with --to FILE", hint="the encrypted secret is written to that file")
+    card = load_card(receiver) if receiver is not None else None
     record = load_record(record_file) if record_file is not None else None
-    recovery = recover(load_shares(files), record)
+    with opening(keys, passphrase_files, descriptors) as at_hand:
+        recovery = recover(load_shares(files, at_hand.share), record)
     if not as_json:
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
@@ -96,6 +128,8 @@ def command(
             "Where none is at work, destroy it."
         )
     went = f"written to {target}" if target is not None else f"given to {fed[0]}" if fed else "written nowhere"
+    if card is not None:
+        went += f", encrypted to {card.name}, card {card.fingerprint}"
     against = (
         f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"
     )
@@ -103,7 +137,10 @@ def command(
         secret = stack.enter_context(recovery.secret)
         if target is not None:
             stack.enter_context(held_signals())
-            to_file(secret, Path(target))
+            if card is None:
+                to_file(secret, Path(target))
+            else:
+                write_new(target, sealed_for(card, recovery, suite), secret=True)
         elif fed:
             to_command(secret, fed, output=STANDARD_ERROR if as_json else None)
         members, lines = _members(recovery, went, against), _lines(recovery, went, against)

@@ -114,15 +114,6 @@ class PartyKey(Document):
         content = open_by_passphrase(self.wrapping, self.sealed, _bound(self.card), passphrase)
         return OpenPartyKey(self.card, content)
 
-    def rewrapped(self, old: Secret, new: Secret, *, cost: Cost | None = None) -> PartyKey:
-        """Return this key under a new passphrase; the card stays.
-
-        Raises:
-            WrongKeyError, VerificationError: as for ``open``.
-        """
-        with self.open(old) as key:
-            return _wrapped(self.card, key.content, new, cost)
-
     def to_file(self) -> bytes:
         """Return the bytes of the key's file. Private, though wrapped."""
         return write_text(self.model_dump(mode="json"))
@@ -185,6 +176,10 @@ class OpenPartyKey:
         if not isinstance(wrapping, ByCard):
             raise WrongKeyError("it is wrapped by passphrase, not for a card", hint="give the passphrase")
         return open_by_card(wrapping, sealed, bound, self._recipient_key())
+
+    def wrapped(self, passphrase: Secret, *, cost: Cost | None = None) -> PartyKey:
+        """Return this key wrapped under a passphrase, for a file; the card stays."""
+        return _wrapped(self.card, self.content, passphrase, cost)
 
     def close(self) -> None:
         """Wipe the private keys."""

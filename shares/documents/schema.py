@@ -12,6 +12,7 @@ import json
 from pathlib import Path
 from typing import Any
 
+from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import VERSION, Document
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -19,7 +20,7 @@ from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
 
-KINDS: tuple[type[Document], ...] = (Share, WrappedShare, SealedSecret, Record, PartyKey, PartyCard)
+KINDS: tuple[type[Document], ...] = (Share, WrappedShare, SealedSecret, Record, PartyKey, PartyCard, Acknowledgement)
 FOLDER = Path(__file__).with_name("schemas")
 
 

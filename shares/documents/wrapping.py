@@ -108,12 +108,20 @@ class Envelope(Document):
             WrongKeyError: another passphrase or party key is needed.
             VerificationError: the file is damaged or was altered.
         """
+        self.check_whole()
+        return opener(self.wrapping, self.sealed, self.bound())
+
+    def check_whole(self) -> None:
+        """Refuse a damaged file before anybody is asked for what opens it.
+
+        Raises:
+            VerificationError: its own digest does not fit.
+        """
         if not self.is_whole():
             raise VerificationError(
                 "its own digest does not fit: the file was damaged or edited",
                 hint="use another copy, and keep this one",
             )
-        return opener(self.wrapping, self.sealed, self.bound())
 
     def bound(self) -> bytes:
         """Return the public bytes that the sealed content is bound to."""

@@ -219,7 +219,7 @@ BAD: dict[str, tuple[dict[str, Any], int, tuple[str, ...]]] = {
     "a polynomial of degree 7": ({"more": ["--plain", "--polynomial=x^7 + x + 1"]}, 2, ("x^7 + x + 1", "degree 8")),
     "a polynomial of degree 9": ({"more": ["--plain", "--polynomial=0x211"]}, 2, ("degree 8",)),
     "a polynomial of huge degree": ({"more": ["--plain", "--polynomial=x^999999999999"]}, 2, ("degree",)),
-    "not plain": ({"more": []}, 2, ("--plain is required", "all of them in one folder are the secret")),
+    "no passphrase": ({"more": []}, 2, ("no passphrase is given for north-pier", "--passphrase-file north-pier=FILE")),
     "an unknown option": ({"more": ["--plain", "--threshold=2"]}, 2, ("--threshold", "--help")),
     "one file too many": ({"more": ["--plain", "another"]}, 2, ("another",)),
     "no delivery folder": ({"deliver": []}, 2, ("--deliver",)),
