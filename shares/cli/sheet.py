@@ -6,10 +6,9 @@ import click
 
 from shares.cli.output import filled, json_option, print_result, prose, warn
 from shares.cli.signals import held_signals
-from shares.documents.base import MAX_FILE, parse_object
+from shares.custody.presented import parse_share
+from shares.documents.base import MAX_FILE
 from shares.documents.share import Share
-from shares.documents.wrapped_share import WrappedShare
-from shares.errors import DocumentError
 from shares.paper.paperform import PaperShare
 from shares.paper.sheet import Sheet, make_sheet
 from shares.storage import read_file, write_new
@@ -19,7 +18,8 @@ BARE_CAUTION = (
     "Print on a printer that keeps no copies, shred misprints, and destroy the file once it is printed."
 )
 CODE_ALONE_CAUTION = (
-    "this sheet has a code and no lines to type, for it would take too many: keep the share's file as well."
+    "there are no lines to type, which would be too many: the page is worth no more than its code. "
+    "Keep the share's file as well."
 )
 
 
@@ -39,27 +39,17 @@ def command(file: str, target: str, serial: str | None, as_json: bool) -> None:
     Example:
       shares sheet north-pier.share.json --to north-pier.html
     """
-    share = _load(file)
-    sheet = make_sheet(share, serial=serial)
+    share = parse_share(read_file(file, limit=MAX_FILE), where=file)
+    sheet = make_sheet(share, serial=serial, where=file)
     with held_signals():
         write_new(target, sheet.page, secret=True)
         cautions = [BARE_CAUTION] if isinstance(share, Share) else []
-        if isinstance(share, Share) and not sheet.lines:
+        if not sheet.lines:
             cautions.append(CODE_ALONE_CAUTION)
         if not as_json:
             for caution in cautions:
                 warn(caution)
         print_result(_members(share, sheet, target, cautions), _lines(share, sheet, target), as_json=as_json)
-
-
-def _load(file: str) -> PaperShare:
-    data = read_file(file, limit=MAX_FILE)
-    kind = parse_object(data, where=file).get("kind")
-    if kind == WrappedShare.KIND:
-        return WrappedShare.parse(data, where=file)
-    if kind != Share.KIND:
-        raise DocumentError("it is no share, bare or wrapped", where=file, hint="name a custodian's share file")
-    return Share.parse(data, where=file)
 
 
 def _members(share: PaperShare, sheet: Sheet, target: str, cautions: list[str]) -> dict[str, object]:

@@ -32,7 +32,6 @@ Put ? for a character that cannot be read. Type {BACK} to do the line before aga
 
 PROVES = "This proves that the share was read as it was printed. It does not prove that it is the one that was dealt."
 CHECK_NEXT = "Next: shares verify {target} --record R, with the record R whose fingerprint is {fingerprint}"
-UNWRAP_NEXT = "Next: unwrap it with the passphrase or party key that opens it, and verify it with the record."
 
 
 @click.command()
@@ -182,10 +181,9 @@ def _members(share: PaperShare, target: str, notes: list[str]) -> dict[str, obje
 
 def _lines(share: PaperShare, target: str, notes: list[str]) -> list[str]:
     bare = isinstance(share, Share)
-    following = CHECK_NEXT if bare else UNWRAP_NEXT
     return [
         *(f"Noticed: {note}." for note in notes),
         f"{'Share' if bare else 'Wrapped share'} of {share.custodian}, epoch {share.epoch}, written to {target}",
         *prose(PROVES),
-        *prose(following.format(target=target, fingerprint=share.record or "you were told")),
+        *prose(CHECK_NEXT.format(target=target, fingerprint=share.record or "you were told")),
     ]

@@ -1,7 +1,8 @@
 """The paper form of a share: as few bytes as there can be, a check over all of them, in blocks of one line each.
 
 Source: FORMAT.md, sec. 11; RFC 4648, sec. 6 (base32); FIPS 180-4 (SHA-256).
-May import: shares.errors, shares.documents.base, .members, .share, .wrapped_share, .wrapping.
+May import: shares.errors, shares.documents.base, shares.documents.members, shares.documents.share,
+shares.documents.wrapped_share, shares.documents.wrapping.
 Secret: the rows, in the form and in every copy that Python makes of it on the way (SECURITY.md).
 Public: everything else.
 Does not: carry label, rule or notice. Nothing proves those, and a share is whole without them.
@@ -38,8 +39,12 @@ _BARE, _PASSPHRASE, _CARD = 0, 1, 2
 _KINDS: Final = range(_CARD + len(SUITES))
 
 
-def to_paper(share: PaperShare) -> bytes:
+def to_paper(share: PaperShare, *, where: str | None = None) -> bytes:
     """Return the paper form of a share, bare or wrapped. That of a bare one is secret.
+
+    Args:
+        share: with its notes or without; only ``record`` is taken over.
+        where: what to call it in an error.
 
     Returns:
         1 to 255 blocks of 15 bytes.
@@ -60,6 +65,7 @@ def to_paper(share: PaperShare) -> bytes:
     if blocks > MAX_BLOCKS:
         raise ParameterError(
             f"the share is too large for paper: {len(body):,} bytes, where {MAX_BLOCKS * BLOCK - CHECK - 1:,} fit",
+            where=where,
             hint="encrypt the secret with a fresh key and split that key; print its shares",
         )
     body = body.ljust(blocks * BLOCK - CHECK - 1, b"\0")

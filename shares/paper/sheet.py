@@ -2,8 +2,8 @@
 
 Source: ISO/IEC 18004 (QR code), by way of a library; W3C, "Content Security Policy Level 3"; "CSS Paged Media"; PCI PIN
 by way of trade practice (numbered packs, receipts); FORMAT.md, sec. 11.
-May import: shares.errors, shares.documents.members, .share, .wrapped_share, .wrapping, shares.paper.paperform,
-.transcription, .typedline.
+May import: shares.errors, shares.documents.acknowledgement, shares.documents.members, shares.documents.share,
+shares.documents.wrapping, shares.paper.paperform, shares.paper.transcription, shares.paper.typedline.
 Secret: the whole page, where the share is bare. It is Python text, which cannot be wiped.
 Public: its serial number, how many lines it has, the size of its code.
 Does not: print. A browser does, with no network: the page loads nothing.
@@ -22,6 +22,7 @@ from typing import Final
 import jinja2
 import segno
 
+from shares.documents.acknowledgement import DUTIES
 from shares.documents.members import check_text
 from shares.documents.share import Share
 from shares.documents.wrapping import ByPassphrase
@@ -47,7 +48,7 @@ class Sheet:
     Args:
         page: HTML, UTF-8. As secret as the share.
         serial: the number on the page and on its receipt.
-        lines: how many typed lines it has; none where the share is too long to type, or wrapped for a card.
+        lines: how many typed lines it has; 0 where the share is too long to type, or wrapped for a card.
         version: size of the code, 1 to 40.
         level: error correction of the code, H (strongest), Q, M or L.
     """
@@ -59,12 +60,13 @@ class Sheet:
     level: str
 
 
-def make_sheet(share: PaperShare, *, serial: str | None = None) -> Sheet:
+def make_sheet(share: PaperShare, *, serial: str | None = None, where: str | None = None) -> Sheet:
     """Return the sheet of a share, after reading its lines back.
 
     Args:
         share: whole. One wrapped by passphrase is printed as lines and as a code, one for a card as a code alone.
         serial: the number of the sheet, 1 to 40 characters; drawn at random by default.
+        where: what to call the share in an error, normally its path.
 
     Raises:
         VerificationError: the share's own digest does not fit.
@@ -72,27 +74,31 @@ def make_sheet(share: PaperShare, *, serial: str | None = None) -> Sheet:
     """
     if not share.is_whole():
         raise VerificationError(
-            "its own digest does not fit: the file was damaged or edited", hint="print another copy, and keep this one"
+            "its own digest does not fit: the file was damaged or edited",
+            where=where,
+            hint="print another copy, and keep this one",
         )
     number = new_serial() if serial is None else check_text(serial)
     if len(number) > _MAX_SERIAL:
         raise ParameterError(f"a serial number has at most {_MAX_SERIAL} characters", where="--serial")
-    form = to_paper(share)
+    form = to_paper(share, where=where)
     by_card = not isinstance(share, Share) and not isinstance(share.wrapping, ByPassphrase)
     lines = [] if by_card or len(form) > MAX_LINES * BLOCK else to_lines(form)
     # What is printed is what a person will have: it is read back before anybody relies on it.
     read = from_paper(gather("\n".join(lines) if lines else to_text(form)).data)
     if _identity(read) != _identity(share):
-        raise VerificationError("the sheet does not give the share back", hint="a fault in this program: report it")
-    code = _code(to_text(form), _BESIDE_LINES if lines else _ALONE)
+        raise VerificationError(
+            "the sheet does not give the share back", where=where, hint="a fault in this program: please report it"
+        )
+    code = _code(to_text(form), _BESIDE_LINES if lines else _ALONE, where)
     page = _template().render(
         share=share,
         serial=number,
+        duties=DUTIES,
         style=_style(),
         style_hash=base64.b64encode(hashlib.sha256(_style().encode()).digest()).decode("ascii"),
         lines=[grouped(line).split() for line in lines],
         heads=[f"{first}\N{EN DASH}{min(first + 3, 31)}" for first in range(1, 32, 4)],
-        too_long=not lines and not by_card,
         sealed=None if isinstance(share, Share) else share.wrapping,
         code=code.svg_inline(border=_QUIET, omitsize=True, svgclass=None, lineclass=None),
     )
@@ -112,7 +118,7 @@ def _identity(share: PaperShare) -> bytes:
     )
 
 
-def _code(text: str, millimetres: int) -> segno.QRCode:
+def _code(text: str, millimetres: int, where: str | None) -> segno.QRCode:
     """Return the code with the strongest correction whose squares are still large enough to print."""
     for level in _LEVELS:
         try:
@@ -123,6 +129,7 @@ def _code(text: str, millimetres: int) -> segno.QRCode:
             return code
     raise ParameterError(
         "the share is too large for a code that can be printed",
+        where=where,
         hint="encrypt the secret with a fresh key and split that key; print its shares",
     )
 

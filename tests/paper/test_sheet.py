@@ -17,6 +17,7 @@ from paper.conftest import CARD, identity
 from PIL import Image
 from strategies import crooked_split, flat, resealed
 
+from shares.documents.acknowledgement import DUTIES
 from shares.errors import ParameterError, VerificationError
 from shares.paper import sheet
 from shares.paper.paperform import from_paper, to_paper, to_text
@@ -68,7 +69,8 @@ def test_what_stands_on_it(share):
         "Nothing seals this page.",
         "shares transcribe --to share.json",
         "Acknowledgement and receipt",
-        "I acknowledge that",
+        "I acknowledge my duties",
+        *DUTIES,
         "Signature",
     ):
         assert fact in page.text
@@ -95,16 +97,17 @@ def test_a_share_wrapped_for_a_card_has_its_code_alone(for_card):
     made = make_sheet(for_card)
     page = Page(made.page)
     assert (made.lines, page.lines) == (0, [])
+    assert "There are no lines to type" in page.text
     assert f"Sealed for the party card {CARD}" in page.text
     assert "type the lines" not in page.text
 
 
 def test_a_share_too_long_to_type_says_so():
-    for length, lines in ((336, 32), (384, 0)):
-        (long, *_) = crooked_split(bytes(length - 4), flat(2, 3)).shares
+    for length, lines in ((332, 32), (333, 0)):
+        (long, *_) = crooked_split(bytes(length), flat(2, 3)).shares
         made = make_sheet(long)
-        assert made.lines in (lines, 31 if lines else 0)
-        assert ("It is too long to type" in Page(made.page).text) == (lines == 0)
+        assert made.lines == lines
+        assert ("There are no lines to type" in Page(made.page).text) == (lines == 0)
 
 
 def test_a_share_without_notes(share):
@@ -164,7 +167,7 @@ def test_serial_numbers_that_are_none(share, serial):
 def test_a_damaged_share_is_not_printed(share, sealed):
     for document in (share, sealed):
         with pytest.raises(VerificationError, match="damaged or edited"):
-            make_sheet(document.model_copy(update={"epoch": 2}))
+            make_sheet(document.model_copy(update={"epoch": 2}), where="x.json")
 
 
 def test_what_does_not_read_back_is_not_printed(share, two_points, monkeypatch):
@@ -192,7 +195,7 @@ def picture(code) -> Image.Image:
 def test_a_stranger_reads_the_code(kind, request):
     document = request.getfixturevalue(kind)
     text = to_text(to_paper(document))
-    code = sheet._code(text, 110 if kind == "for_card" else 66)
+    code = sheet._code(text, 110 if kind == "for_card" else 66, None)
     [found] = zxingcpp.read_barcodes(picture(code))
     assert found.text == text
     assert identity(from_paper(gather(found.text).data)) == identity(from_paper(to_paper(document)))
@@ -202,7 +205,7 @@ def test_a_stranger_reads_the_code(kind, request):
 def test_the_strongest_correction_that_can_be_printed_is_taken():
     levels = {}
     for blocks in range(1, 33):
-        code = sheet._code("A7" * 12 * blocks, 66)
+        code = sheet._code("A7" * 12 * blocks, 66, None)
         squares = code.symbol_size(border=4)[0]
         assert 66 / squares >= MIN_MODULE
         levels[blocks] = code.error
@@ -217,7 +220,7 @@ def test_the_strongest_correction_that_can_be_printed_is_taken():
 def test_damage_within_the_promise_of_the_code_does_no_harm(share):
     """Level H restores about 30 % of a code's bytes (ISO/IEC 18004, table 12); 9 % of its area is blank here."""
     text = to_text(to_paper(share))
-    image = picture(sheet._code(text, 66))
+    image = picture(sheet._code(text, 66, None))
     side = image.size[0]
     image.paste(255, (side * 4 // 10, side * 4 // 10, side * 7 // 10, side * 7 // 10))
     [found] = zxingcpp.read_barcodes(image)
