@@ -328,10 +328,8 @@ _PLAIN_WORDS = {
     "model_type": "should be a table",
     "dict_type": "should be a table",
     "string_type": "should be text in quotes",
-    "string_too_short": "should not be empty",
-    "string_too_long": "is too long",
     "too_short": "should not be empty",
-    "too_long": "has too many entries",
+    "too_long": "is too long",
 }
 
 

@@ -188,7 +188,7 @@ def _key_type(policy: Policy) -> Iterator[Finding]:
         yield Finding(
             "caution",
             "signature-key",
-            f"A signature key is to be split, for this reason: \"{policy.reason}\".",
+            f'A signature key is to be split, for this reason: "{policy.reason}".',
             "Signature keys are not backed up or archived as a rule (NIST SP 800-57 Part 1): if a new key can take its "
             "place, do not split this one.",
         )

@@ -1,0 +1,169 @@
+"""How few make or block a quorum, and which quorums are minimal: against every subset tried one by one.
+
+Sources of the numbers: the definitions, tried out (``minimal_by_trying``); binomial coefficients (``math.comb``); that
+the minimal blocking sets are the minimal sets that meet every quorum (hitting sets, Garey and Johnson 1979).
+"""
+
+from __future__ import annotations
+
+import math
+from unittest import mock
+
+import pytest
+from hypothesis import example, given
+from strategies import HARBOUR, labelled, minimal_by_trying, rules, sets_of
+
+from shares.planning import structure
+from shares.planning.structure import MAX_LISTED, Bounds, Count, alone, dual, fewest, minimal_quorums
+from shares.sharing.rule import MAX_CHILDREN, Rule
+
+A, B, C, D, E = HARBOUR[:5]
+
+
+def own(rule: Rule) -> dict[str, str]:
+    return {name: name for name in rule.paths()}
+
+
+@given(labelled())
+def test_the_fewest_labels_are_those_of_the_smallest_set(drawn: tuple[Rule, dict[str, str]]) -> None:
+    rule, label_of = drawn
+    smallest = min(map(len, minimal_by_trying(rule, label_of)))
+    assert fewest(rule, label_of) == Bounds(smallest, smallest)
+
+
+@given(labelled())
+def test_bounds_hold_where_not_all_sets_are_tried(drawn: tuple[Rule, dict[str, str]]) -> None:
+    rule, label_of = drawn
+    smallest = min(map(len, minimal_by_trying(rule, label_of)))
+    with mock.patch.object(structure, "MAX_LABELS", 0):
+        bounds = fewest(rule, label_of)
+        counted = minimal_quorums(rule)
+    assert 1 <= bounds.low <= smallest <= bounds.high <= len(set(label_of.values()))
+    count = len(minimal_by_trying(rule, own(rule)))
+    assert 1 <= counted.count.low <= count <= counted.count.high
+    assert counted.count.exact or (counted.listed, counted.idle) == ((), ())
+
+
+@given(rules(most=12))
+@example(Rule(2, (Rule(2, (A, A, B)), C)))
+@example(Rule(3, (A, A, A, B)))
+def test_minimal_quorums_are_those_found_by_trying(rule: Rule) -> None:
+    expected = minimal_by_trying(rule, own(rule))
+    found = minimal_quorums(rule)
+    assert found.count == Bounds(len(expected), len(expected))
+    assert set(found.idle) == set(rule.paths()) - set().union(*expected)
+    if len(expected) <= MAX_LISTED:
+        assert {frozenset(quorum) for quorum in found.listed} == expected
+        assert len(found.listed) == len(expected)
+        sizes = [len(quorum) for quorum in found.listed]
+        assert sizes == sorted(sizes)
+    else:
+        assert found.listed == ()
+
+
+@given(rules(most=12))
+def test_both_ways_to_count_agree(rule: Rule) -> None:
+    """Where no custodian stands in two branches the polynomial way is taken; trying all sets gives the same."""
+    places = structure._places(rule, own(rule))
+    if max(places.values()) == 1:
+        table = structure.TruthTable(rule, own(rule))
+        assert structure._count(rule) == table.count
+        assert set(structure._idle(rule)) == set(table.idle)
+        assert {frozenset(quorum) for quorum in structure._minimal(rule)} == set(map(frozenset, table.minimal_sets()))
+
+
+@given(rules(most=12))
+def test_the_dual_is_satisfied_by_those_whose_loss_leaves_no_quorum(rule: Rule) -> None:
+    everyone = frozenset(rule.paths())
+    for lost in sets_of(everyone):
+        assert dual(rule).satisfied_by(lost) == (not rule.satisfied_by(everyone - lost))
+    assert dual(dual(rule)) == rule
+
+
+@given(rules(most=10))
+def test_the_fewest_who_block_meet_every_quorum(rule: Rule) -> None:
+    quorums = minimal_by_trying(rule, own(rule))
+    hitting = [chosen for chosen in sets_of(rule.paths()) if all(chosen & quorum for quorum in quorums)]
+    smallest = min(map(len, hitting))
+    assert Count.of(rule, own(rule)).block == Bounds(smallest, smallest)
+
+
+@given(labelled())
+def test_who_suffices_alone(drawn: tuple[Rule, dict[str, str]]) -> None:
+    rule, label_of = drawn
+    holders: dict[str, set[str]] = {}
+    for name in rule.paths():
+        holders.setdefault(label_of[name], set()).add(name)
+    expected = {next(iter(chosen)) for chosen in minimal_by_trying(rule, label_of) if len(chosen) == 1}
+    assert set(alone(rule, holders)) == expected
+
+
+def test_holders_may_overlap_and_keep_their_order() -> None:
+    rule = Rule(2, (A, B, C))
+    assert alone(rule, {"z": {A, B}, "y": {A}, "x": {A, C}, "w": set()}) == ("z", "x")
+
+
+def test_one_person_who_is_several_custodians_counts_once() -> None:
+    rule = Rule(3, (A, B, C, D))
+    label_of = {A: "keeper one", B: "keeper one", C: "keeper two", D: "keeper three"}
+    assert Count.of(rule, label_of) == Count(3, Bounds(2, 2), Bounds(1, 1))
+    assert Count.of(rule, own(rule)) == Count(4, Bounds(3, 3), Bounds(2, 2))
+
+
+def test_weights_count_wherever_they_stand() -> None:
+    rule = Rule(2, (Rule(3, (A, A, B, C)), Rule(2, (A, A, D))))
+    assert Count.of(rule, own(rule)) == Count(4, Bounds(2, 2), Bounds(1, 1))
+    assert minimal_quorums(rule).listed == ((A, B), (A, C))
+    assert minimal_quorums(rule).idle == (D,)
+
+
+@pytest.mark.parametrize(("need", "total"), [(1, 1), (1, 255), (2, 255), (128, 255), (254, 255), (255, 255), (20, 40)])
+def test_wide_thresholds(need: int, total: int) -> None:
+    names = tuple(f"pier {i}" for i in range(total))
+    rule = Rule(need, names)
+    ways = math.comb(total, need)
+    assert Count.of(rule, own(rule)) == Count(total, Bounds(need, need), Bounds(total - need + 1, total - need + 1))
+    found = minimal_quorums(rule)
+    assert (found.count, found.idle) == (Bounds(ways, ways), ())
+    assert len(found.listed) == (ways if ways <= MAX_LISTED else 0)
+
+
+def test_a_wide_rule_with_few_quorums_lists_them() -> None:
+    names = [f"pier {i}" for i in range(3 * 250)]
+    groups = tuple(Rule(250, tuple(names[i : i + 250])) for i in range(0, 750, 250))
+    found = minimal_quorums(Rule(2, groups))
+    assert [len(quorum) for quorum in found.listed] == [500] * 3
+    assert found.listed[0] == tuple(names[:500])
+
+
+def test_a_branch_with_many_quorums_that_nobody_needs_is_not_gone_through() -> None:
+    many = Rule(20, tuple(f"pier {i}" for i in range(40)))
+    rule = Rule(2, (A, A, many))
+    found = minimal_quorums(rule)
+    assert found.listed == ((A,),)
+    assert found.count == Bounds(1, 1)
+    assert found.idle == tuple(many.paths())
+
+
+def test_beyond_24_labels_that_repeat_there_are_bounds() -> None:
+    names = [f"pier {i}" for i in range(30)]
+    groups = tuple(Rule(10, tuple(names[i : i + 15])) for i in range(0, 20, 5))
+    rule = Rule(3, groups)
+    bounds = fewest(rule, own(rule))
+    assert not bounds.exact
+    assert bounds.low <= bounds.high <= 30
+    # The answer, by hand: of the windows at 0, 5, 10 and 15 any three; pier 5 to 19 lie in three windows in part.
+    found = minimal_quorums(rule)
+    assert not found.count.exact
+    assert found.listed == found.idle == ()
+    assert rule.size == 60 <= MAX_CHILDREN
+
+
+def test_beyond_24_labels_bounds_that_meet_are_exact() -> None:
+    names = tuple(f"pier {i}" for i in range(60))
+    rule = Rule(2, (Rule(1, names), Rule(1, names[::-1])))
+    assert fewest(rule, own(rule)) == Bounds(1, 1)
+
+
+def test_bounds_in_text() -> None:
+    assert [str(Bounds(3, 3)), str(Bounds(1, 1200))] == ["3", "1 to 1,200"]
