@@ -14,7 +14,7 @@ from hypothesis import example, given
 from strategies import HARBOUR, labelled, minimal_by_trying, rules, sets_of
 
 from shares.planning import structure
-from shares.planning.structure import MAX_LISTED, Bounds, Count, alone, dual, fewest, minimal_quorums
+from shares.planning.structure import MAX_LISTED, Bounds, Count, alone, dual, minimal_quorums, relabelled
 from shares.sharing.rule import MAX_CHILDREN, Rule
 
 A, B, C, D, E = HARBOUR[:5]
@@ -25,20 +25,24 @@ def own(rule: Rule) -> dict[str, str]:
 
 
 @given(labelled())
-def test_the_fewest_labels_are_those_of_the_smallest_set(drawn: tuple[Rule, dict[str, str]]) -> None:
+def test_the_fewest_are_those_of_the_smallest_set(drawn: tuple[Rule, dict[str, str]]) -> None:
     rule, label_of = drawn
-    smallest = min(map(len, minimal_by_trying(rule, label_of)))
-    assert fewest(rule, label_of) == Bounds(smallest, smallest)
+    sets = minimal_by_trying(rule, label_of)
+    hitting = [chosen for chosen in sets_of(label_of.values()) if all(chosen & one for one in sets)]
+    make, block = min(map(len, sets)), min(map(len, hitting))
+    total = len({label_of[name] for name in rule.paths()})
+    assert Count.of(relabelled(rule, label_of)) == Count(total, Bounds(make, make), Bounds(block, block))
 
 
 @given(labelled())
 def test_bounds_hold_where_not_all_sets_are_tried(drawn: tuple[Rule, dict[str, str]]) -> None:
     rule, label_of = drawn
-    smallest = min(map(len, minimal_by_trying(rule, label_of)))
-    with mock.patch.object(structure, "MAX_LABELS", 0):
-        bounds = fewest(rule, label_of)
+    exact = Count.of(relabelled(rule, label_of))
+    with mock.patch.object(structure, "MAX_NAMES", 0):
+        bounds = Count.of(relabelled(rule, label_of))
         counted = minimal_quorums(rule)
-    assert 1 <= bounds.low <= smallest <= bounds.high <= len(set(label_of.values()))
+    assert 1 <= bounds.quorum.low <= exact.quorum.low <= bounds.quorum.high <= exact.total
+    assert 1 <= bounds.block.low <= exact.block.low <= bounds.block.high <= exact.total
     count = len(minimal_by_trying(rule, own(rule)))
     assert 1 <= counted.count.low <= count <= counted.count.high
     assert counted.count.exact or (counted.listed, counted.idle) == ((), ())
@@ -64,9 +68,9 @@ def test_minimal_quorums_are_those_found_by_trying(rule: Rule) -> None:
 @given(rules(most=12))
 def test_both_ways_to_count_agree(rule: Rule) -> None:
     """Where no custodian stands in two branches the polynomial way is taken; trying all sets gives the same."""
-    places = structure._places(rule, own(rule))
+    places = structure._places(rule)
     if max(places.values()) == 1:
-        table = structure.TruthTable(rule, own(rule))
+        table = structure.TruthTable(rule)
         assert structure._count(rule) == table.count
         assert set(structure._idle(rule)) == set(table.idle)
         assert {frozenset(quorum) for quorum in structure._minimal(rule)} == set(map(frozenset, table.minimal_sets()))
@@ -78,14 +82,6 @@ def test_the_dual_is_satisfied_by_those_whose_loss_leaves_no_quorum(rule: Rule) 
     for lost in sets_of(everyone):
         assert dual(rule).satisfied_by(lost) == (not rule.satisfied_by(everyone - lost))
     assert dual(dual(rule)) == rule
-
-
-@given(rules(most=10))
-def test_the_fewest_who_block_meet_every_quorum(rule: Rule) -> None:
-    quorums = minimal_by_trying(rule, own(rule))
-    hitting = [chosen for chosen in sets_of(rule.paths()) if all(chosen & quorum for quorum in quorums)]
-    smallest = min(map(len, hitting))
-    assert Count.of(rule, own(rule)).block == Bounds(smallest, smallest)
 
 
 @given(labelled())
@@ -106,13 +102,13 @@ def test_holders_may_overlap_and_keep_their_order() -> None:
 def test_one_person_who_is_several_custodians_counts_once() -> None:
     rule = Rule(3, (A, B, C, D))
     label_of = {A: "keeper one", B: "keeper one", C: "keeper two", D: "keeper three"}
-    assert Count.of(rule, label_of) == Count(3, Bounds(2, 2), Bounds(1, 1))
-    assert Count.of(rule, own(rule)) == Count(4, Bounds(3, 3), Bounds(2, 2))
+    assert Count.of(relabelled(rule, label_of)) == Count(3, Bounds(2, 2), Bounds(1, 1))
+    assert Count.of(rule) == Count(4, Bounds(3, 3), Bounds(2, 2))
 
 
 def test_weights_count_wherever_they_stand() -> None:
     rule = Rule(2, (Rule(3, (A, A, B, C)), Rule(2, (A, A, D))))
-    assert Count.of(rule, own(rule)) == Count(4, Bounds(2, 2), Bounds(1, 1))
+    assert Count.of(rule) == Count(4, Bounds(2, 2), Bounds(1, 1))
     assert minimal_quorums(rule).listed == ((A, B), (A, C))
     assert minimal_quorums(rule).idle == (D,)
 
@@ -122,7 +118,7 @@ def test_wide_thresholds(need: int, total: int) -> None:
     names = tuple(f"pier {i}" for i in range(total))
     rule = Rule(need, names)
     ways = math.comb(total, need)
-    assert Count.of(rule, own(rule)) == Count(total, Bounds(need, need), Bounds(total - need + 1, total - need + 1))
+    assert Count.of(rule) == Count(total, Bounds(need, need), Bounds(total - need + 1, total - need + 1))
     found = minimal_quorums(rule)
     assert (found.count, found.idle) == (Bounds(ways, ways), ())
     assert len(found.listed) == (ways if ways <= MAX_LISTED else 0)
@@ -145,11 +141,11 @@ def test_a_branch_with_many_quorums_that_nobody_needs_is_not_gone_through() -> N
     assert found.idle == tuple(many.paths())
 
 
-def test_beyond_24_labels_that_repeat_there_are_bounds() -> None:
+def test_beyond_24_names_that_repeat_there_are_bounds() -> None:
     names = [f"pier {i}" for i in range(30)]
     groups = tuple(Rule(10, tuple(names[i : i + 15])) for i in range(0, 20, 5))
     rule = Rule(3, groups)
-    bounds = fewest(rule, own(rule))
+    bounds = Count.of(rule).quorum
     assert not bounds.exact
     assert bounds.low <= bounds.high <= 30
     # The answer, by hand: of the windows at 0, 5, 10 and 15 any three; pier 5 to 19 lie in three windows in part.
@@ -159,10 +155,10 @@ def test_beyond_24_labels_that_repeat_there_are_bounds() -> None:
     assert rule.size == 60 <= MAX_CHILDREN
 
 
-def test_beyond_24_labels_bounds_that_meet_are_exact() -> None:
+def test_beyond_24_names_bounds_that_meet_are_exact() -> None:
     names = tuple(f"pier {i}" for i in range(60))
     rule = Rule(2, (Rule(1, names), Rule(1, names[::-1])))
-    assert fewest(rule, own(rule)) == Bounds(1, 1)
+    assert Count.of(rule).quorum == Bounds(1, 1)
 
 
 def test_bounds_in_text() -> None:
