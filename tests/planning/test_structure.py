@@ -161,5 +161,16 @@ def test_beyond_24_names_bounds_that_meet_are_exact() -> None:
     assert Count.of(rule).quorum == Bounds(1, 1)
 
 
+def test_forty_quorums_are_listed_and_more_are_counted() -> None:
+    names = tuple(f"pier {i}" for i in range(41))
+    assert len(minimal_quorums(Rule(1, names[:40])).listed) == MAX_LISTED == 40
+    assert minimal_quorums(Rule(1, names)).listed == ()
+    pairs = Rule(2, (Rule(1, names[:4]), Rule(1, names[4:14])))  # 4 * 10 of them
+    repeated = Rule(1, (pairs, pairs))
+    assert minimal_quorums(repeated).count == Bounds(40, 40)
+    assert len(minimal_quorums(repeated).listed) == 40
+    assert minimal_quorums(Rule(1, (pairs, pairs, names[20]))).listed == ()
+
+
 def test_bounds_in_text() -> None:
     assert [str(Bounds(3, 3)), str(Bounds(1, 1200))] == ["3", "1 to 1,200"]
