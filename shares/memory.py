@@ -1,6 +1,6 @@
 """A place for secret bytes: locked, kept out of dumps and forks, wiped.
 
-Source: mmap(2), mlock(2), madvise(2), prctl(2), getrlimit(2) of the Linux manual pages.
+Source: mmap(2), mlock(2), madvise(2), getrandom(2), prctl(2), getrlimit(2) of the Linux manual pages.
 May import: errors.
 Secret: the bytes of a ``Secret``. Public: its length, whether memory could be locked, the limits.
 Does not: reach the copies that Python itself makes (``bytes``, ``str``, ``int``), swap written before the lock,
@@ -29,6 +29,9 @@ if TYPE_CHECKING:
 _MADV_WIPEONFORK: Final = 18
 _PR_GET_DUMPABLE: Final = 3
 _PR_SET_DUMPABLE: Final = 4
+
+# So many bytes getrandom(2) gives whole.
+_DRAWN_AT_ONCE: Final = 256
 
 # The mappings of all open secrets of this process. A Secret holds only its number here, so that one function
 # wipes for close(), for garbage collection, for the end of the interpreter and for a forked child.
@@ -84,6 +87,30 @@ class Secret:
             secret = cls(len(octets))
             with secret.view() as view:
                 view[:] = octets
+        return secret
+
+    @classmethod
+    def drawn(cls, length: int) -> Self:
+        """Draw fresh random bytes from the system, straight into the secret: nothing else has a copy.
+
+        Args:
+            length: number of bytes, 0 to 256.
+
+        Raises:
+            ParameterError: the length is out of range.
+            OSError: the system has no random source.
+
+        Source: getrandom(2): it waits until the source is seeded, and then never gives fewer than 256 bytes asked for.
+        """
+        if not 0 <= length <= _DRAWN_AT_ONCE:
+            raise ParameterError(f"a secret is drawn with 0 to {_DRAWN_AT_ONCE} bytes")
+        import ctypes
+
+        secret = cls(length)
+        start = ctypes.c_char.from_buffer(_open[secret._number])
+        address, count = ctypes.c_void_p(ctypes.addressof(start)), ctypes.c_size_t(length)
+        if _libc().getrandom(address, count, 0) != length:
+            raise OSError(ctypes.get_errno(), "the system gives no random bytes")
         return secret
 
     def __len__(self) -> int:

@@ -29,6 +29,7 @@ FLOORS = (
     ("sharing",),
     ("field",),
     ("storage",),
+    ("streams",),
     ("memory", "clock"),
     ("errors",),
 )

@@ -31,7 +31,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from shares import memory, storage
+from shares import memory, storage, streams
 from shares.errors import ParameterError, StorageError
 from shares.memory import Secret
 
@@ -48,7 +48,7 @@ def refuse(*_: object, **__: object) -> None:
 def medium(request: pytest.FixtureRequest, monkeypatch: pytest.MonkeyPatch) -> str:
     """Each way a medium lets a file get its name: exclusive rename, hard link, neither."""
     if request.param != "rename":
-        monkeypatch.setattr(storage, "_rename_new", refuse)
+        monkeypatch.setattr(streams, "_rename_new", refuse)
     if request.param == "create":
         monkeypatch.setattr(os, "link", refuse)
     return str(request.param)
@@ -261,7 +261,7 @@ def stepping(wanted: int, act: Callable[[Callable[[], object]], object]) -> Iter
     write = os.write
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(os, "write", lambda descriptor, data: write(descriptor, data[:10]))
-        for home, name in [*((os, name) for name in CALLS), (storage, "_rename_new")]:
+        for home, name in [*((os, name) for name in CALLS), (streams, "_rename_new")]:
             if getattr(home, name) is not refuse:
                 patch.setattr(home, name, wrap(name, getattr(home, name)))
         yield made
@@ -341,7 +341,7 @@ def test_a_failing_step_leaves_nothing(tmp_path: Path, medium: str, code: int) -
         elif step < len(made):
             failed.append(made[step - 1])
             assert os.listdir(folder) == []
-            assert (error.what, error.hint) == storage._REASONS.get(code, (error.what, error.hint))
+            assert (error.what, error.hint) == streams._REASONS.get(code, (error.what, error.hint))
             assert error.hint
     assert {"open", "write", "fsync", "close"} < set(failed)
     assert {"rename": "_rename_new", "link": "link", "create": "unlink"}[medium] in failed
@@ -387,7 +387,8 @@ def test_content_and_folder_are_synced_in_order(tmp_path: Path, medium: str) -> 
     ends = {
         "rename": ["_rename_new", "unlink", "fsync", "close"],
         "link": ["link", "unlink", "fsync", "close"],
-        "create": [*start[1:], "unlink", "fsync", "close"],
+        # The finished file is copied to its final name.
+        "create": ["open", "open", "write", "close", "fchmod", "fsync", "close", "unlink", "fsync", "close"],
     }
     assert made == start + ends[medium]
 

@@ -1,22 +1,27 @@
-"""Deliver a recovered secret: to a new private file, or to one command's standard input. Never to a terminal.
+"""Deliver a recovered secret: to a new private file, encrypted to its receiver, or to one command's standard input.
 
 Source: execve(2), pipe(2); PCI PIN 21-1 by way of trade practice: recovery does not print a key.
-May import: shares.errors, shares.memory, shares.storage.
+May import: shares.errors, shares.memory, shares.storage, shares.streams, shares.documents, shares.custody.recover.
 Secret: the secret. Public: the path or the command, and how the command ended.
-Does not: keep the secret, or know what the command does with it.
+Does not: write to a terminal, keep the secret, or know what the command does with it.
 """
 
 from __future__ import annotations
 
 import contextlib
-import os
+import functools
 import subprocess
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 
+from shares.custody.recover import Recovery
+from shares.documents.party import PartyCard
+from shares.documents.sealed_secret import SealedSecret
+from shares.documents.wrapping import Suite, card_sealer
 from shares.errors import CommandFailedError, StorageError
 from shares.memory import Secret
 from shares.storage import write_new
+from shares.streams import Write, write_all
 
 
 def to_file(secret: Secret, path: Path) -> None:
@@ -29,6 +34,24 @@ def to_file(secret: Secret, path: Path) -> None:
         write_new(path, view, secret=True)
 
 
+def sealed_for(card: PartyCard, recovery: Recovery, suite: Suite) -> bytes:
+    """Return the file that holds a recovered secret for the party of ``card`` alone.
+
+    Raises:
+        VerificationError: the card holds no usable keys.
+    """
+    share = recovery.share
+    sealed = SealedSecret.seal(
+        recovery.secret,
+        card_sealer(card.recipient(), suite),
+        set_id=share.set,
+        epoch=share.epoch,
+        label=recovery.label,
+        encrypted_file=share.encrypted_file,
+    )
+    return sealed.to_file()
+
+
 def to_command(secret: Secret, command: Sequence[str], *, output: int | None = None) -> None:
     """Run a command without a shell and give it the secret on its standard input.
 
@@ -36,6 +59,28 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
         secret: written whole, then the input ends. Nothing is added, no line end either.
         command: the program and its arguments, public.
         output: descriptor that the command's output goes to; this process's own standard output by default.
+
+    Raises:
+        StorageError: the command cannot be started.
+        CommandFailedError: it ended with another code than 0, or by a signal.
+    """
+    with fed(command, output=output) as write, secret.view() as view:
+        write(view)
+
+
+@contextlib.contextmanager
+def fed(command: Sequence[str], *, output: int | None = None) -> Iterator[Write]:
+    """Run a command without a shell; its standard input ends at the end of ``with``, and then it is waited for.
+
+    When anything is raised before that, the command is killed. Only where it stops reading by itself, the ``with`` is
+    left early and quietly: the command's exit code says whether it had enough.
+
+    Args:
+        command: the program and its arguments, public.
+        output: descriptor that the command's output goes to; this process's own standard output by default.
+
+    Yields:
+        A function that gives the command what comes next.
 
     Raises:
         StorageError: the command cannot be started.
@@ -57,12 +102,9 @@ def to_command(secret: Secret, command: Sequence[str], *, output: int | None = N
     with process, _killed_unless_done(process):
         pipe = process.stdin
         if pipe is not None:
-            # A command may have read enough and closed its end; its exit code says whether it is content.
-            with contextlib.suppress(BrokenPipeError), pipe, _killed_unless_done(process), secret.view() as view:
-                sent = 0
-                while sent < len(view):
-                    with view[sent:] as rest:
-                        sent += os.write(pipe.fileno(), rest)
+            # A command may have read enough and closed its end.
+            with contextlib.suppress(BrokenPipeError), pipe, _killed_unless_done(process):
+                yield functools.partial(write_all, pipe.fileno())
         status = process.wait()
     if status:
         how = f"ended with code {status}" if status > 0 else f"was ended by signal {-status}"

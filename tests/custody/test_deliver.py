@@ -15,7 +15,7 @@ from pathlib import Path
 
 import pytest
 
-from shares.custody import deliver
+from shares import streams
 from shares.custody.deliver import to_command, to_file
 from shares.errors import CommandFailedError, StorageError
 from shares.memory import Secret
@@ -51,7 +51,7 @@ def test_a_command_gets_every_byte_and_then_the_end(tmp_path: Path, length: int)
 
 def test_writes_that_stop_half_way_are_gone_on_with(tmp_path: Path, monkeypatch) -> None:
     real = os.write
-    monkeypatch.setattr(deliver.os, "write", lambda descriptor, data: real(descriptor, data[:7]))
+    monkeypatch.setattr(streams.os, "write", lambda descriptor, data: real(descriptor, data[:7]))
     to_command(Secret.of(SECRET), python(KEEP, str(tmp_path / "got")))
     assert (tmp_path / "got").read_bytes() == SECRET
 
@@ -67,7 +67,7 @@ def test_a_command_never_takes_a_part_of_the_secret_for_the_whole(tmp_path: Path
             raise error
         return real(descriptor, data[:7])
 
-    monkeypatch.setattr(deliver.os, "write", stopped)
+    monkeypatch.setattr(streams.os, "write", stopped)
     with pytest.raises(type(error)):
         to_command(Secret.of(SECRET), python(KEEP, str(tmp_path / "got")))
     assert not (tmp_path / "got").exists()
