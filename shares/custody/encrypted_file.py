@@ -57,7 +57,8 @@ def encrypt_file(
     header = Header(set_id)
     key = Secret.drawn(KEY_LENGTH)
     try:
-        with secret_source(source) as reader, new_file(target, secret=True) as write:
+        # The target comes first: to open the source may be to wait for a writer.
+        with new_file(target, secret=True) as write, secret_source(source) as reader:
             digest = _encrypt(reader, write, key, header, progress)
     except BaseException:
         key.close()
