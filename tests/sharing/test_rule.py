@@ -129,7 +129,7 @@ def symbolic(field: Field, rule: Rule, monkeypatch: pytest.MonkeyPatch) -> tuple
     size = 1 + sum(node.need - 1 for _, node in rule.nodes())
     units = iter(bytes(int(place == v) for place in range(size)) for v in range(size))
 
-    def unit_polynomial(field: Field, payload: Secret, need: int) -> list[Secret]:
+    def unit_polynomial(field: Field, payload: Secret, need: int, *, place: bytes) -> list[Secret]:
         return [payload, *(Secret.of(next(units)) for _ in range(need - 1))]
 
     monkeypatch.setattr(module, "random_polynomial", unit_polynomial)

@@ -56,7 +56,7 @@ def every_dealing(rule: Rule, byte: int, monkeypatch: pytest.MonkeyPatch) -> dic
     digits = np.arange(256**drawn, dtype=np.uint32)
     choices: Iterator[bytes] = iter([(digits >> 8 * i).astype(np.uint8).tobytes() for i in range(drawn)])
 
-    def chosen_polynomial(field: Field, payload: Secret, need: int) -> list[Secret]:
+    def chosen_polynomial(field: Field, payload: Secret, need: int, *, place: bytes) -> list[Secret]:
         return [payload, *(Secret.of(next(choices)) for _ in range(need - 1))]
 
     monkeypatch.setattr(module, "random_polynomial", chosen_polynomial)
