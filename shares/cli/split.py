@@ -278,7 +278,7 @@ def _lines(dealt: Dealt, done: HandedOver, packings: dict[str, Packing], encrypt
     signers = ", ".join(f"{one.card.name} as {one.role}" for one in dealt.record.signatures)
     sealed = any(packing.is_sealed for packing in packings.values())
     return [
-        f"Split: {dealt.record.label}. To recover: {dealt.record.rule.to_rule().words()}.",
+        *prose(f"Split: {dealt.record.label}. To recover: {dealt.record.rule.to_rule().words()}."),
         *(f"  {name:<{width}}  {path!s:<{length}}  {packings[name].words}" for name, path in done.shares.items()),
         f"Record (public): {done.record}, {f'signed by {signers}' if signers else 'unsigned'}",
         *(f"Beside it (confidential): {path}" for path in done.companions.values()),

@@ -21,7 +21,7 @@ WITH_RECORD = (
     "Nor does it prove that the dealing holds the right secret: only a recovery does."
 )
 UNSIGNED = "It does not prove who made that record: compare the fingerprint with the one read aloud at the split. "
-SIGNED = "Who made that record is proved as far as you know whose the signers' cards are. "
+SIGNED = "It proves who made that record only as far as you know whose card each signer's is. "
 WITHOUT_RECORD = (
     "Without a record this shows only that no accident befell these files and that they agree with one another. "
     "It does not prove that they are the shares that were dealt, nor that they recover anything: "

@@ -113,7 +113,11 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
     beside = {POLICY_NAME: policy.text} | {
         f"{ACKNOWLEDGEMENTS}/{one.custodian}.json": one.to_file() for one in found.values()
     }
-    cautions = [f"{one.severity}: {one.what} {one.advice}" for one in plan.findings if one.severity != "note"]
+    cautions = [
+        f"{'serious: ' if one.severity == 'serious' else ''}{one.what.rstrip('.')}. {one.advice.rstrip('.')}"
+        for one in plan.findings
+        if one.severity != "note"
+    ]
     return Wanted(policy.label, policy.rule(), policy.field(), policy.pad, chosen, policy.digest(), beside, cautions)
 
 
