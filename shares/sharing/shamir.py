@@ -79,7 +79,7 @@ def draw(field: Field, hedge: Secret, length: int, *, place: bytes = b"") -> Sec
         field: any GF(2^8); only its addition (XOR) is used.
         hedge: secret bytes that go into the hash.
         length: bytes wanted, at least 1.
-        place: public bytes that tell apart what is drawn with one hedge; of one length wherever the hedges have one.
+        place: public bytes that tell apart what is drawn with one hedge; all hedges beside places have one length.
 
     Source: Bellare, Dai, Rogaway 2020; FIPS 202 (SHAKE256).
     """
