@@ -4,14 +4,12 @@ from __future__ import annotations
 
 import contextlib
 import os
-import sys
 from collections.abc import Iterator
 
 import click
 
 from shares.cli.output import filled, json_option, print_result, prose, warn
 from shares.cli.signals import held_signals
-from shares.documents.base import MAX_FILE
 from shares.documents.share import Share
 from shares.errors import DocumentError, ParameterError, StorageError
 from shares.paper.paperform import PaperShare, from_paper
@@ -20,6 +18,10 @@ from shares.paper.typedline import Reading, compact
 from shares.storage import read_secret, write_new
 
 BACK = "back"
+STDIN, STDERR = 0, 2
+LONGEST_INPUT = 4096  # What a terminal hands over at once (termios(3), canonical mode).
+# The largest code and the longest sheet are far smaller.
+LARGEST_FILE = 65_536
 # The longest line; more is a code, typed by a scanner that acts as a keyboard.
 LONGEST_LINE = 40
 # A screen of its own, and its end: wiped, with what was scrolled off it, and the old screen as it was before.
@@ -84,7 +86,7 @@ def _called(source: str) -> str:
 
 def _from_source(source: str) -> Gathered:
     problem = hint = None
-    with read_secret(source, limit=MAX_FILE) as read, read.view() as view:
+    with read_secret(source, limit=LARGEST_FILE) as read, read.view() as view:
         try:
             return gather(str(view, "utf-8", "replace"))
         except DocumentError as error:
@@ -93,7 +95,7 @@ def _from_source(source: str) -> Gathered:
 
 
 def _from_person() -> PaperShare:
-    if not sys.stdin.isatty() or not sys.stderr.isatty():
+    if not (os.isatty(STDIN) and os.isatty(STDERR)):
         raise ParameterError("there is no terminal to type at", hint="give the lines in a file with --from FILE")
     with _own_screen():
         click.echo(INTRODUCTION, err=True)
@@ -154,12 +156,12 @@ def _suspects(typed: Transcription) -> str:
 
 
 def _ask(question: str) -> str:
-    # Not readline, which would keep what was typed in its history.
     click.echo(question, err=True, nl=False)
-    text = sys.stdin.readline()
-    if not text:
+    # Straight from the terminal, a line at a time: no buffer or history of Python's keeps what was typed.
+    typed = os.read(STDIN, LONGEST_INPUT)
+    if not typed:
         raise KeyboardInterrupt
-    return text
+    return typed.decode("utf-8", "replace")
 
 
 def _tell(line: str) -> None:

@@ -19,6 +19,7 @@ from shares.paper.typedline import MAX_LINES, Reading, compact, read_line
 
 # Longer than any line, shorter than the shortest code.
 _LONGEST_LINE: Final = 40
+_MOST_TOLD: Final = 5
 
 
 class Transcription:
@@ -125,7 +126,9 @@ def gather(text: str) -> Gathered:
         before = line.number
     problems += _gaps(lines)
     if problems:
-        raise DocumentError("; ".join(problems), hint="compare these lines with the sheet")
+        more = len(problems) - _MOST_TOLD
+        told = problems[:_MOST_TOLD] + ([f"and {more} more"] if more > 0 else [])
+        raise DocumentError("; ".join(told), hint="compare these lines with the sheet")
     return Gathered(from_text("".join(lines[number].letters for number in sorted(lines))), tuple(notes))
 
 

@@ -55,7 +55,7 @@ class Typist:
             assert time.monotonic() < end, f"waited in vain for {words!r} after {self.seen[-300:]!r}"
             if select.select([self.terminal], [], [], 0.1)[0]:
                 try:
-                    self.seen += os.read(self.terminal, 65536).decode()
+                    self.seen += os.read(self.terminal, 65536).decode(errors="replace")
                 except OSError:  # The other end is closed.
                     assert words in self.seen[self.read :], f"it ended without {words!r} after {self.seen[-300:]!r}"
         start, self.read = self.read, self.seen.index(words, self.read) + len(words)
@@ -75,7 +75,7 @@ class Typist:
         out = self.process.communicate(timeout=30)[0]
         with contextlib.suppress(OSError):
             while select.select([self.terminal], [], [], 0.1)[0]:
-                self.seen += os.read(self.terminal, 65536).decode()
+                self.seen += os.read(self.terminal, 65536).decode(errors="replace")
         return Result(self.process.returncode, out.decode(), self.seen[self.read :])
 
 
@@ -153,6 +153,8 @@ def test_what_cannot_be_read_is_said_and_asked_again(typist: Typist, tmp_path: P
     assert "a line has 31 characters, and this has 9" in typist.read_until("Line 1: ")
     typist.type("")
     assert "this has 0" in typist.read_until("Line 1: ")
+    os.write(typist.terminal, b"\xe4\xff\n")
+    assert "character 1 is none of the letters" in typist.read_until("Line 1: ")
     typist.type(LINES[0])
     typist.line(2, LINES[0])
     assert "this is line 1, which was typed before" in typist.read_until("Line 2 of 13: ")

@@ -97,9 +97,9 @@ def wrapped(share):
 
 
 def code_on(page):
-    """Take a picture of the code and have it read."""
+    """Take a picture of the code and have it read, as a QR code: in so many squares a reader sees bars at times."""
     image = Image.open(io.BytesIO(page.locator("figure.code").screenshot()))
-    [found] = zxingcpp.read_barcodes(image)
+    [found] = zxingcpp.read_barcodes(image, formats=zxingcpp.BarcodeFormat.QRCode)
     return found.text
 
 

@@ -222,6 +222,20 @@ def test_a_line_begun_elsewhere_is_no_line():
                 assert decode(with_errors(turned, random_errors(chance, weight))) is None
 
 
+def test_what_only_seems_to_be_one_place_is_refused(code):
+    """Sums j X^j vanish when the place of X is taken out twice, and yet no symbol there explains them."""
+    field = code.field
+    ends = field([[int(field(2) ** (j * i)) for i in range(5, -1, -1)] for j in range(1, 7)])
+    for place in range(DATA):
+        locator = field(2) ** (LENGTH - 1 - place)
+        sums = field([int(locator**j) if j % 2 else 0 for j in range(1, 7)])
+        added = [int(symbol) for symbol in numpy.linalg.solve(ends, sums)]
+        line = random_line(random.Random(place))
+        read = [*line[:DATA], *(a ^ b for a, b in zip(line[DATA:], added, strict=True))]
+        assert decode(read) is None
+        assert decode([None if i == place else symbol for i, symbol in enumerate(read)]) is None
+
+
 def test_without_the_fixed_word_it_would_be_one(code):
     word = plain(random_line(random.Random(9)))
     assert not numpy.array(code.field(word[1:] + word[:1]) @ code.H.T).any()

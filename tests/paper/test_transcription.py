@@ -89,6 +89,12 @@ def test_all_faults_are_told_at_once_and_nothing_of_the_lines():
     assert not any(group in said for line in LINES for group in grouped(line).split())
 
 
+def test_of_many_faults_the_first_are_told():
+    said = refusal(["A" * 9] * 40)
+    assert said.count("in row") == 5
+    assert said.endswith("; and 36 more")
+
+
 def test_what_was_set_right_is_noted_by_place_alone():
     gathered = gather(text([LINES[0], wrong(LINES[1]), *LINES[2:]]))
     assert gathered.data == FORM

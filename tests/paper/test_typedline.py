@@ -172,6 +172,45 @@ def test_a_look_alike_that_was_another_letter_counts_as_wrong():
     refusal(replaced(typed, {i: other(line[i]) for i in others}))
 
 
+def test_look_alikes_that_were_other_letters_use_up_the_budget():
+    line, at = line_with({"A": 2, "I": 2})
+    (a, also_a), (i, also_i) = at["A"][:2], at["I"][:2]
+    wrong = next(place for place in range(LENGTH) if line[place] not in "AI")
+    # Two that may be I and are, and one wrong: 4. If one of the two is no I, it is as if two were wrong besides: 5.
+    assert read_line(replaced(line, {i: "1", also_i: "1", wrong: other(line[wrong])})).letters == line[1:25]
+    refusal(replaced(line, {i: "1", a: "1", wrong: other(line[wrong])}))
+    refusal(replaced(line, {i: "1", a: "1", also_a: "1"}))
+
+
+def test_two_explanations_are_none():
+    """Two lines that become the same one when a character is left out, here or there; found by linear algebra."""
+    import galois
+
+    field = galois.GF(2**5, irreducible_poly="x^5 + x^2 + 1", compile="python-calculate")
+    here, there = 4, 19
+    # The unknowns: the 31 characters of one line, and the one that the other has in place of that which it lacks.
+    one = [[int(i == j) for j in range(LENGTH + 1)] for i in range(LENGTH)]
+    unknown = [[0] * LENGTH + [1]]
+    two = one[:here] + one[here + 1 : there + 1] + unknown + one[there + 1 :]
+    powers = [[int(field(2) ** (j * (LENGTH - 1 - i))) for i in range(LENGTH)] for j in range(1, 7)]
+    sums = field([1, 0, 0, 0, 0, 0])
+    equations = [field(powers) @ field(one), field(powers) @ field(two)]
+    rows = field(
+        [[*map(int, row), int(value)] for system in equations for row, value in zip(system, sums, strict=True)]
+    )
+    reduced = rows.row_reduce(ncols=LENGTH + 1)
+    free = {i: 7 * i % 31 + 1 for i in range(LENGTH + 1)}
+    leading = [next(i for i in range(LENGTH + 1) if row[i]) for row in reduced]
+    solution = [0 if i in leading else free[i] for i in range(LENGTH + 1)]
+    for row, lead in zip(reduced, leading, strict=True):
+        solution[lead] = int(row[-1] - row[:-1] @ field(solution))
+    first = "".join(LETTERS[symbol] for symbol in solution[:LENGTH])
+    second = first[:here] + first[here + 1 : there + 1] + LETTERS[solution[-1]] + first[there + 1 :]
+    assert [read_line(line).corrections for line in (first, second)] == [(), ()]
+    assert first != second
+    assert "a character is missing" in refusal(first[:here] + first[here + 1 :])
+
+
 def test_unreadable_characters_are_filled_in():
     for places in itertools.combinations(range(0, LENGTH, 3), 3):
         reading = read_line(replaced(LINE, dict.fromkeys(places, "?")))
