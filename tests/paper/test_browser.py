@@ -26,7 +26,7 @@ from shares.documents.wrapped_share import WrappedShare
 from shares.documents.wrapping import Cost, passphrase_sealer
 from shares.memory import Secret
 from shares.paper.paperform import from_paper, to_paper
-from shares.paper.sheet import MIN_MODULE, make_sheet
+from shares.paper.sheet import MIN_MODULE, make_form, make_sheet
 from shares.paper.transcription import Transcription, gather
 
 BROWSER = Path("/usr/bin/chromium")
