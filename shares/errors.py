@@ -10,6 +10,7 @@ Does not: print, exit or log. ``shares.cli`` turns an error into one line, in on
         PolynomialError                              2  not irreducible of the wanted degree: says the factors
       NotEnoughSharesError                           3  says needed and given
       VerificationError                              4  a public check failed: commitment, check, digest
+        WrongKeyError                                4  a passphrase or party key does not open it
         AmbiguousError                               4  more than one explanation fits: none is chosen
       ShareError          (also ValueError)          4  shares that cannot be used together
         DuplicatePointError                          4
@@ -77,6 +78,12 @@ class VerificationError(SharesError):
 
     exit_code = 4
     code = "verification"
+
+
+class WrongKeyError(VerificationError):
+    """A passphrase or party key is not the one that opens something; nothing says that it is damaged."""
+
+    code = "wrong-key"
 
 
 class AmbiguousError(VerificationError):

@@ -27,9 +27,18 @@ from shares.memory import lock_refused, protect_process
 # Name -> (module, what it is for), in the order of a key's life. Modules are imported late: `--version` and `--help`
 # stay quick.
 COMMANDS = {
+    "plan": ("plan", "Examine a policy before anything is split."),
+    "party": ("party", "Make and show party keys and cards."),
+    "passphrase": ("passphrase", "Draw a random passphrase."),
+    "acknowledge": ("acknowledge", "Accept a custodian's duties, before the share is handed over."),
     "split": ("split", "Split a secret into shares, and check that they recover it."),
     "verify": ("verify", "Check each share alone, without any secret."),
+    "sheet": ("sheet", "Print a share: lines to type, a QR code, and a receipt."),
+    "transcribe": ("transcribe", "Read a printed share back, typed or scanned."),
     "recover": ("recover", "Recover a secret from enough shares."),
+    "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
+    "unwrap": ("unwrap", "Open a wrapped share, or a secret recovered for your card."),
+    "record": ("record", "Sign a record, as its dealer or a witness."),
     "show": ("show", "Show the public facts of a share or record."),
     "polynomial": ("polynomial", "List and check field polynomials."),
     "selftest": ("selftest", "Test this installation and this machine."),

@@ -2,48 +2,77 @@
 
 from __future__ import annotations
 
-import os
+from collections.abc import Callable
 
 import click
 
 from shares.cli.output import filled, json_option, print_result
+from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import MAX_FILE, parse_object
+from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
-from shares.documents.share import Share
+from shares.documents.sealed_secret import SealedSecret
+from shares.documents.share import Share, ShareFacts
+from shares.documents.wrapped_share import WrappedShare
+from shares.documents.wrapping import ByCard, ByPassphrase
 from shares.errors import DocumentError
 from shares.field.polynomial import Polynomial
 from shares.storage import read_file
 
-KINDS = {"share": "share (its rows are secret and not shown)", "record": "record (public)"}
+KINDS = {
+    "share": "share (its rows are secret and not shown)",
+    "wrapped-share": "wrapped share (its rows are sealed)",
+    "sealed-secret": "sealed secret (for one receiver)",
+    "record": "record (public)",
+    "party-key": "party key (private, wrapped by passphrase)",
+    "party-card": "party card (public)",
+    "acknowledgement": "acknowledgement of duties",
+}
+UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
 
 
 @click.command()
 @click.argument("file", metavar="FILE", callback=filled)
 @json_option
 def command(file: str, as_json: bool) -> None:
-    """Show the public facts of a share or record; never a secret byte.
+    """Show the public facts of a share, record, party card or any other document of this program; never a secret byte.
 
     \b
     Example:
       shares show north-pier.share.json
     """
     data = read_file(file, limit=MAX_FILE)
-    kind = parse_object(data, where=os.fspath(file)).get("kind")
-    if kind == Share.KIND:
-        facts = _share_facts(Share.parse(data, where=file))
-    elif kind == Record.KIND:
-        facts = _record_facts(Record.parse(data, where=file))
-    else:
-        raise DocumentError("it is neither a share nor a record", where=file, hint="show reads what split has written")
+    kind = str(parse_object(data, where=file).get("kind"))
+    if kind not in FACTS:
+        raise DocumentError("it is no document of this program", where=file, hint="show reads what this program wrote")
+    facts = {"kind": kind, **FACTS[kind](data, file)}
     width = max(len(name) for name in facts)
-    described = facts | {"kind": KINDS[str(facts["kind"])]}
-    lines = [f"{name.replace('_', ' '):<{width}}  {_text(value)}" for name, value in described.items()]
+    described = (
+        facts
+        | {"kind": KINDS[kind]}
+        | ({"signatures": facts["signatures"] or UNSIGNED} if "signatures" in facts else {})
+    )
+    lines = [f"{name.replace('_', ' '):<{width}}  {_text(name, value)}" for name, value in described.items()]
     print_result({"done": True, **facts}, lines, as_json=as_json)
 
 
-def _share_facts(share: Share) -> dict[str, object]:
+def _share(data: bytes, where: str) -> dict[str, object]:
+    share = Share.parse(data, where=where)
     return {
-        "kind": "share",
+        **_common(share),
+        "row_bytes": share.row_length,
+        "share_commitment": share.commitment().hex(),
+        **_whole(share),
+    }
+
+
+def _wrapped_share(data: bytes, where: str) -> dict[str, object]:
+    wrapped = WrappedShare.parse(data, where=where)
+    return {**_common(wrapped), "row_bytes": wrapped.row_length, "wrapped": _how(wrapped.wrapping), **_whole(wrapped)}
+
+
+def _common(share: ShareFacts) -> dict[str, object]:
+    return {
         "label": share.label,
         "custodian": share.custodian,
         "set": share.set.hex(),
@@ -51,17 +80,27 @@ def _share_facts(share: Share) -> dict[str, object]:
         "rule": share.rule,
         "polynomial": str(Polynomial.from_number(share.field.modulus)),
         "points": [" / ".join(f"x = {x} of a threshold of {need}" for need, x in path) for path in share.paths],
-        "row_bytes": share.row_length,
         "record": share.record,
         "secret_commitment": share.secret_commitment.hex(),
-        "share_commitment": share.commitment().hex(),
-        "own_digest": "fits" if share.is_whole() else "does not fit: the file was damaged or edited",
+        "encrypted_file": _hex(share.encrypted_file),
     }
 
 
-def _record_facts(record: Record) -> dict[str, object]:
+def _sealed_secret(data: bytes, where: str) -> dict[str, object]:
+    sealed = SealedSecret.parse(data, where=where)
     return {
-        "kind": "record",
+        "label": sealed.label,
+        "set": sealed.set.hex(),
+        "epoch": sealed.epoch,
+        "encrypted_file": _hex(sealed.encrypted_file),
+        "wrapped": _how(sealed.wrapping),
+        **_whole(sealed),
+    }
+
+
+def _record(data: bytes, where: str) -> dict[str, object]:
+    record = Record.parse(data, where=where)
+    return {
         "label": record.label,
         "set": record.set.hex(),
         "epoch": record.epoch,
@@ -71,13 +110,54 @@ def _record_facts(record: Record) -> dict[str, object]:
         "polynomial": str(Polynomial.from_number(record.field.modulus)),
         "row_bytes": record.row_length,
         "secret_commitment": record.secret_commitment.hex(),
-        "previous": record.previous or "none: this is the first epoch",
+        "encrypted_file": _hex(record.encrypted_file),
+        "policy": _hex(record.policy),
+        "previous": record.previous,
         "fingerprint": record.fingerprint,
-        "signatures": "unsigned: compare the fingerprint with the one read aloud at the split",
+        "signatures": [f"{one.card.name} as {one.role}, card {one.card.fingerprint}" for one in record.signatures],
     }
 
 
-def _text(value: object) -> str:
+def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
+    found = Acknowledgement.parse(data, where=where)
+    by = f"a printed form, SHA-256 {found.form.hex()}" if found.form is not None else "nobody"
+    if found.card is not None:
+        by = f"signed by {found.card.name}, card {found.card.fingerprint}"
+    return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": by}
+
+
+def _card_facts(card: PartyCard) -> dict[str, object]:
+    return card.public("name", "contact", "created", "fingerprint")
+
+
+FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
+    Share.KIND: _share,
+    WrappedShare.KIND: _wrapped_share,
+    SealedSecret.KIND: _sealed_secret,
+    Record.KIND: _record,
+    PartyKey.KIND: lambda data, where: _card_facts(PartyKey.parse(data, where=where).card),
+    Acknowledgement.KIND: _acknowledgement,
+    PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
+}
+
+
+def _how(wrapping: ByPassphrase | ByCard) -> str:
+    if isinstance(wrapping, ByCard):
+        return f"for the card {wrapping.card} ({wrapping.suite})"
+    return f"by passphrase (Argon2id, {wrapping.memory // 1024} MiB, {wrapping.passes} passes, {wrapping.lanes} lanes)"
+
+
+def _whole(document: Share | WrappedShare | SealedSecret) -> dict[str, object]:
+    return {"own_digest": "fits" if document.is_whole() else "does not fit: the file was damaged or edited"}
+
+
+def _hex(digest: bytes | None) -> str | None:
+    return None if digest is None else digest.hex()
+
+
+def _text(name: str, value: object) -> str:
+    if value is None:
+        return "none" if name in ("encrypted_file", "policy", "previous") else "not stated"
     if isinstance(value, list):
         return ", ".join(str(one) for one in value)
-    return "not stated" if value is None else str(value)
+    return str(value)

@@ -1,9 +1,9 @@
-"""Deliver a recovered secret: to a new private file, or to one command's standard input. Never to a terminal.
+"""Deliver a recovered secret: to a new private file, encrypted to its receiver, or to one command's standard input.
 
 Source: execve(2), pipe(2); PCI PIN 21-1 by way of trade practice: recovery does not print a key.
-May import: shares.errors, shares.memory, shares.storage, shares.streams.
+May import: shares.errors, shares.memory, shares.storage, shares.streams, shares.documents, shares.custody.recover.
 Secret: the secret. Public: the path or the command, and how the command ended.
-Does not: keep the secret, or know what the command does with it.
+Does not: write to a terminal, keep the secret, or know what the command does with it.
 """
 
 from __future__ import annotations
@@ -14,6 +14,10 @@ import subprocess
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 
+from shares.custody.recover import Recovery
+from shares.documents.party import PartyCard
+from shares.documents.sealed_secret import SealedSecret
+from shares.documents.wrapping import Suite, card_sealer
 from shares.errors import CommandFailedError, StorageError
 from shares.memory import Secret
 from shares.storage import write_new
@@ -28,6 +32,24 @@ def to_file(secret: Secret, path: Path) -> None:
     """
     with secret.view() as view:
         write_new(path, view, secret=True)
+
+
+def sealed_for(card: PartyCard, recovery: Recovery, suite: Suite) -> bytes:
+    """Return the file that holds a recovered secret for the party of ``card`` alone.
+
+    Raises:
+        VerificationError: the card holds no usable keys.
+    """
+    share = recovery.share
+    sealed = SealedSecret.seal(
+        recovery.secret,
+        card_sealer(card.recipient(), suite),
+        set_id=share.set,
+        epoch=share.epoch,
+        label=recovery.label,
+        encrypted_file=share.encrypted_file,
+    )
+    return sealed.to_file()
 
 
 def to_command(secret: Secret, command: Sequence[str], *, output: int | None = None) -> None:

@@ -1,34 +1,34 @@
 """Hand over a dealing: shares to the delivery folders, then, as the commit point, the record to the set's folder.
 
 Source: design laws 5 and 6 of this project (DEVELOPERS.md): all or nothing, and nothing is called done unchecked.
-May import: shares.errors, shares.storage, shares.documents, shares.sharing, shares.custody.payload, .presented, .split,
-.verify.
-Secret: the share files. Public: the record, the paths.
-Does not: wrap shares; who asks for plain ones has been told that all of them in one folder are the secret.
+May import: shares.errors, shares.storage, shares.documents, shares.sharing, shares.custody.packing, .payload,
+.presented, .split, .verify.
+Secret: the shares, and their files where they are bare. Confidential: what goes beside the record. Public: the record,
+the paths.
+Does not: choose how shares are packed; who asks for bare ones has been told that all of them in one folder are the
+secret.
 """
 
 from __future__ import annotations
 
 import contextlib
 import os
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
+from shares.custody.packing import BARE_SUFFIX, WRAPPED_SUFFIX, Packing
 from shares.custody.payload import is_committed
 from shares.custody.presented import Presented, Status
 from shares.custody.split import Dealt
 from shares.custody.verify import examine
 from shares.documents.base import MAX_FILE
-from shares.documents.record import Record
-from shares.documents.share import Share
 from shares.errors import StorageError, VerificationError
 from shares.sharing.robust import count_quorums, covering_quorums, quorums
 from shares.sharing.rule import recover_payload
 from shares.storage import discard, leftovers, make_folder, read_back, write_new
 
 RECORD_NAME = "record.json"
-SHARE_SUFFIX = ".share.json"
 MOST_TRIALS = 1000
 """With at most this many quorums every one is tried; beyond, a sample in which each share takes part."""
 
@@ -41,28 +41,31 @@ class HandedOver:
 
     Attributes:
         record: path of the record.
+        companions: path of each file that went into the set's folder beside the record.
         shares: path of each custodian's share.
         trials: quorums from which the secret was recovered, out of ``quorums``.
         quorums: how many minimal quorums there are.
     """
 
     record: Path
+    companions: dict[str, Path]
     shares: dict[str, Path]
     trials: int
     quorums: int
 
 
-def share_path(folder: Path, custodian: str) -> Path:
+def share_path(folder: Path, custodian: str, suffix: str = BARE_SUFFIX) -> Path:
     """Return where a custodian's share is written in a delivery folder."""
-    return folder / f"{custodian}{SHARE_SUFFIX}"
+    return folder / f"{custodian}{suffix}"
 
 
-def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
+def check_targets(set_folder: Path, deliveries: Mapping[str, Path], companions: Collection[str] = ()) -> None:
     """Refuse before anything secret is touched when the files cannot all be new; name what an earlier run left over.
 
     Args:
         set_folder: where the record goes; may not exist yet.
         deliveries: for each custodian the folder that the share goes to; must exist.
+        companions: names of files that go into the set's folder beside the record.
 
     Raises:
         StorageError: a folder is missing, a file exists, or an unfinished run left something.
@@ -78,7 +81,18 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path]) -> None:
     record = set_folder / RECORD_NAME
     if os.path.lexists(record):
         raise StorageError("a set already has its record here", where=os.fspath(record), hint="choose a new folder")
-    targets = [share_path(folder, custodian) for custodian, folder in deliveries.items()]
+    for name in companions:
+        if os.path.lexists(set_folder / name):
+            raise StorageError(
+                "a file of another split, or one that did not finish, is here",
+                where=os.fspath(set_folder / name),
+                hint="choose a new folder",
+            )
+    targets = [
+        share_path(folder, custodian, suffix)
+        for custodian, folder in deliveries.items()
+        for suffix in (BARE_SUFFIX, WRAPPED_SUFFIX)
+    ]
     unfinished = [path for folder in (set_folder, *dict.fromkeys(deliveries.values())) for path in leftovers(folder)]
     there = [path for path in targets if os.path.lexists(path)] + unfinished
     if there:
@@ -96,12 +110,18 @@ def other_shares(deliveries: Mapping[str, Path]) -> list[Path]:
     found: list[Path] = []
     for folder in dict.fromkeys(deliveries.values()):
         with contextlib.suppress(OSError):
-            found.extend(sorted(path for path in folder.iterdir() if path.name.endswith(SHARE_SUFFIX)))
+            found.extend(sorted(path for path in folder.iterdir() if path.name.endswith(BARE_SUFFIX)))
     return found
 
 
 def hand_over(
-    dealt: Dealt, set_folder: Path, deliveries: Mapping[str, Path], *, progress: Progress | None = None
+    dealt: Dealt,
+    set_folder: Path,
+    deliveries: Mapping[str, Path],
+    *,
+    packings: Mapping[str, Packing] | None = None,
+    companions: Mapping[str, bytes] | None = None,
+    progress: Progress | None = None,
 ) -> HandedOver:
     """Write every share, read all back from disk, verify and trial-recover, and only then write the record.
 
@@ -109,57 +129,84 @@ def hand_over(
         dealt: the dealing.
         set_folder: where the record goes; made with mode 0700 where it is missing.
         deliveries: for each custodian the folder that the share goes to.
+        packings: for each custodian how the share is packed; all bare by default.
+        companions: content of each file, mode 0600, that goes into the set's folder beside the record, by its name
+            there.
         progress: called with (quorums tried, quorums to try).
 
     Raises:
         StorageError: a file or folder cannot be written; then no file of this call is left.
         VerificationError: what was read back does not verify or recover; then no file of this call is left.
     """
-    check_targets(set_folder, deliveries)
+    beside = {set_folder / name: data for name, data in (companions or {}).items()}
+    check_targets(set_folder, deliveries, companions or ())
     make_folder(set_folder)
     record_path = set_folder / RECORD_NAME
-    paths = {share.custodian: share_path(deliveries[share.custodian], share.custodian) for share in dealt.shares}
-    written: list[Path] = []
-    record_is_ours = False
+    packed = packings or dict.fromkeys(deliveries, Packing.bare())
+    paths = {
+        share.custodian: share_path(deliveries[share.custodian], share.custodian, packed[share.custodian].suffix)
+        for share in dealt.shares
+    }
+    written: dict[Path, bytes | None] = {}
     try:
         for share in dealt.shares:
-            write_new(paths[share.custodian], share.to_file(), secret=True)
-            written.append(paths[share.custodian])
-        trials, total = _prove(dealt.record, list(paths.values()), progress)
-        write_new(record_path, dealt.record.to_file(), secret=False)
-        record_is_ours = True
-        if read_back(record_path, limit=MAX_FILE) != dealt.record.to_file():
-            raise VerificationError("the record read back differs from what was written", where=os.fspath(record_path))
+            _write(paths[share.custodian], packed[share.custodian].pack(share), written)
+        trials, total = _prove(dealt, paths, packed, progress)
+        for path, data in beside.items():
+            make_folder(path.parent)
+            _write(path, data, written)
+            _read_again(path, data)
+        _write(record_path, dealt.record.to_file(), written, secret=False)
+        _read_again(record_path, dealt.record.to_file())
     except BaseException:  # Whatever stops the act, an interrupt included, undoes it.
-        _undo(written, dealt.record, record_path, record_is_ours)
+        _undo(written, record_path)
         raise
-    return HandedOver(record_path, paths, trials, total)
+    return HandedOver(record_path, {name: set_folder / name for name in companions or ()}, paths, trials, total)
 
 
-def _undo(shares: list[Path], record: Record, record_path: Path, record_is_ours: bool) -> None:
-    """Remove the record and then the shares that this call wrote; a share that cannot be removed is left for the next
-    run to name. Where the record cannot be removed the shares stay: it must never outlive them."""
-    try:
-        if record_is_ours or _is_there(record, record_path):
-            discard(record_path)
-    except StorageError:
-        return
-    for path in reversed(shares):
-        with contextlib.suppress(StorageError):
-            discard(path)
+def _write(path: Path, data: bytes, written: dict[Path, bytes | None], *, secret: bool = True) -> None:
+    """Write one file, noting it with its content before, since an interrupt may come between its writing and our
+    knowing, and without it as soon as it is known to be ours."""
+    written[path] = data
+    write_new(path, data, secret=secret)
+    written[path] = None
 
 
-def _is_there(record: Record, path: Path) -> bool:
-    """Say whether this very record stands at ``path``: an interrupt may come between its writing and our knowing."""
+def _read_again(path: Path, data: bytes) -> None:
+    if read_back(path, limit=MAX_FILE) != data:
+        raise VerificationError("what is read back differs from what was written", where=os.fspath(path))
+
+
+def _undo(written: dict[Path, bytes | None], record_path: Path) -> None:
+    """Remove what this call wrote, the record first; a share that cannot be removed is left for the next run to name.
+    Where the record cannot be removed all stays: it must never outlive the shares."""
+    for path, data in reversed(written.items()):
+        try:
+            if data is None or _holds(path, data):
+                discard(path)
+        except StorageError:
+            if path == record_path:
+                return
+
+
+def _holds(path: Path, data: bytes) -> bool:
+    """Say whether the file that was to be written stands here; another process may have taken the name before."""
     is_file = os.path.isfile(path) and not os.path.islink(path)
-    return is_file and read_back(path, limit=MAX_FILE) == record.to_file()
+    return is_file and read_back(path, limit=MAX_FILE) == data
 
 
-def _prove(record: Record, paths: list[Path], progress: Progress | None) -> tuple[int, int]:
+def _prove(
+    dealt: Dealt, paths: Mapping[str, Path], packings: Mapping[str, Packing], progress: Progress | None
+) -> tuple[int, int]:
     """Read the shares from disk, verify each, and recover from quorums of them; return (tried, all there are)."""
-    shares = [Share.parse(read_back(path, limit=MAX_FILE), where=os.fspath(path)) for path in paths]
+    record, shares = dealt.record, []
     try:
-        for finding in examine([Presented(os.fspath(path), s) for path, s in zip(paths, shares, strict=True)], record):
+        for dealt_share in dealt.shares:
+            path = paths[dealt_share.custodian]
+            data = read_back(path, limit=MAX_FILE)
+            shares.append(packings[dealt_share.custodian].unpack(data, os.fspath(path), dealt_share))
+        presented = [Presented(os.fspath(path), share) for path, share in zip(paths.values(), shares, strict=True)]
+        for finding in examine(presented, record):
             if finding.status is not Status.INTACT:
                 raise VerificationError(
                     f"a share just written does not verify: {finding.status}, {finding.reason}", where=finding.source
@@ -181,5 +228,6 @@ def _prove(record: Record, paths: list[Path], progress: Progress | None) -> tupl
                     )
     finally:
         for share in shares:
-            share.close()
+            if all(share is not one for one in dealt.shares):
+                share.close()
     return len(chosen), total

@@ -9,14 +9,15 @@ Does not: judge; ``custody.verify`` and ``custody.recover`` do.
 from __future__ import annotations
 
 import os
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
 
-from shares.documents.base import MAX_FILE
+from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.record import Record
 from shares.documents.share import Share
-from shares.errors import DocumentError, StorageError
+from shares.documents.wrapped_share import WrappedShare
+from shares.errors import DocumentError, SharesError, StorageError, VerificationError, WrongKeyError
 from shares.storage import StrPath, read_file
 
 
@@ -29,6 +30,7 @@ class Status(StrEnum):
     FOREIGN = "foreign set"
     OTHER_EPOCH = "other epoch"
     UNKNOWN = "not in the record"
+    LOCKED = "not opened"
     UNREADABLE = "unreadable"
 
 
@@ -56,22 +58,48 @@ class Presented:
         return Finding(self.source, self.share.custodian if self.share else None, status, reason)
 
 
-def load_shares(paths: Sequence[StrPath]) -> list[Presented]:
-    """Read share files; one that cannot be read or parsed is presented with the reason, and the others go on."""
-    return [_load(path) for path in paths]
+ShareOpener = Callable[[WrappedShare], Share]
+"""Takes a wrapped share and returns the one inside, normally ``Opening.share``."""
 
 
-def _load(path: StrPath) -> Presented:
+def load_shares(paths: Sequence[StrPath], opener: ShareOpener | None = None) -> list[Presented]:
+    """Read share files; one that cannot be read, parsed or opened is presented with the reason, and the others go on.
+
+    Args:
+        paths: files of shares, wrapped or not.
+        opener: what opens wrapped ones; without it they stay closed.
+    """
+    return [_load(path, opener) for path in paths]
+
+
+def _load(path: StrPath, opener: ShareOpener | None) -> Presented:
     source = os.fspath(path)
     try:
-        return Presented(source, Share.parse(read_file(path, limit=MAX_FILE), where=source))
+        share = parse_share(read_file(path, limit=MAX_FILE), where=source)
+        if isinstance(share, Share):
+            return Presented(source, share)
+        if opener is None:
+            return Presented(source, None, "it is wrapped, and nothing was given to open it", Status.LOCKED)
+        return Presented(source, opener(share))
     except StorageError as error:
         return Presented(source, None, _reason(error), Status.UNREADABLE)
-    except DocumentError as error:
+    except WrongKeyError as error:
+        return Presented(source, None, _reason(error), Status.LOCKED)
+    except (DocumentError, VerificationError) as error:
         return Presented(source, None, _reason(error))
 
 
-def _reason(error: StorageError | DocumentError) -> str:
+def parse_share(data: bytes, *, where: str) -> Share | WrappedShare:
+    """Read a share, wrapped or not, from the bytes of a file.
+
+    Raises:
+        DocumentError: it is neither.
+    """
+    kind = WrappedShare if parse_object(data, where=where).get("kind") == WrappedShare.KIND else Share
+    return kind.parse(data, where=where)
+
+
+def _reason(error: SharesError) -> str:
     return f"{error.what} ({error.hint})" if error.hint else error.what
 
 

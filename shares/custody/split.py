@@ -11,14 +11,15 @@ from __future__ import annotations
 
 import secrets
 from collections.abc import Collection, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime
 
 from shares import clock
 from shares.custody.payload import DEFAULT_PAD, commitment, make_payload
 from shares.documents.base import MAX_FILE, write_text
 from shares.documents.members import MAX_LONG_TEXT, check_name, check_text
-from shares.documents.record import Custodian, Record
+from shares.documents.party import OpenPartyKey
+from shares.documents.record import Custodian, Record, Role
 from shares.documents.share import Share
 from shares.errors import ParameterError
 from shares.field.gf256 import Field
@@ -33,6 +34,10 @@ class Dealt:
 
     record: Record
     shares: tuple[Share, ...]
+
+    def signed(self, key: OpenPartyKey, role: Role) -> Dealt:
+        """Return this dealing with its record signed; see ``Record.signed``."""
+        return replace(self, record=self.record.signed(key, role))
 
     def close(self) -> None:
         """Wipe the shares."""
@@ -68,6 +73,9 @@ def split(
     field: Field | None = None,
     pad: int = DEFAULT_PAD,
     created: datetime | None = None,
+    set_id: bytes | None = None,
+    encrypted_file: bytes | None = None,
+    policy: bytes | None = None,
 ) -> Dealt:
     """Split ``secret`` so that exactly the quorums of ``rule`` recover it.
 
@@ -78,6 +86,9 @@ def split(
         field: GF(2^8) on a chosen polynomial; x^8 + x^4 + x^3 + x + 1 by default.
         pad: bytes to a multiple of which the secret is filled, 1 to 4,096.
         created: the time to write into the record, UTC to the second; now by default.
+        set_id: 16 fresh random bytes, where a file was encrypted for this set before; drawn by default.
+        encrypted_file: digest of the file whose key ``secret`` is, 32 bytes, where it is one.
+        policy: digest of the policy that ``rule`` comes from, 32 bytes; it goes into the record.
 
     Returns:
         The record and one share for each custodian. Wipe it with ``close()``.
@@ -105,27 +116,43 @@ def split(
                 "a custodian's share would be larger than 1 MiB",
                 hint="encrypt the secret with a fresh key and split the key, or give custodians fewer places",
             )
-        return _deal(payload, rule, label, field, created)
+        identity = secrets.token_bytes(16) if set_id is None else set_id
+        dealt = _deal(payload, rule, label, field, created, identity, encrypted_file, policy)
+    return dealt
 
 
 def _largest_share(rule: Rule, row_length: int) -> int:
     """Return a bound on the size of the largest share's file, in bytes: its paths, a line for each row, and the rest.
 
     The rest is the rule in words; label and notice of 500 characters and the name of 64, each character in 4 bytes at
-    most; and members of fixed length.
+    most; members of fixed length; and the wrapping.
     """
     row = 4 * row_length // 3 + 16
     points = max(len(write_text({"paths": paths})) + len(paths) * row for paths in rule.paths().values())
-    return points + len(write_text({"rule": rule.words()})) + 6144
+    return points + len(write_text({"rule": rule.words()})) + 8192
 
 
-def _deal(payload: Secret, rule: Rule, label: str, field: Field, created: datetime) -> Dealt:
-    set_id = secrets.token_bytes(16)
+def _deal(
+    payload: Secret,
+    rule: Rule,
+    label: str,
+    field: Field,
+    created: datetime,
+    set_id: bytes,
+    encrypted_file: bytes | None,
+    policy: bytes | None,
+) -> Dealt:
     secret_commitment = commitment(set_id, payload)
     dealing = deal(field, rule, payload)
     shares = [
         Share.of(
-            set_id=set_id, epoch=1, custodian=name, points=points, field=field, secret_commitment=secret_commitment
+            set_id=set_id,
+            epoch=1,
+            custodian=name,
+            points=points,
+            field=field,
+            secret_commitment=secret_commitment,
+            encrypted_file=encrypted_file,
         )
         for name, points in dealing.points.items()
     ]
@@ -146,6 +173,8 @@ def _deal(payload: Secret, rule: Rule, label: str, field: Field, created: dateti
         ],
         checks=[checks_of(field, matrix, polynomial) for polynomial in dealing.polynomials],
         secret_commitment=secret_commitment,
+        encrypted_file=encrypted_file,
+        policy=policy,
     )
     dealing.close_polynomials()
     if len(record.to_file()) > MAX_FILE:

@@ -24,7 +24,15 @@ MAX_FILE = 1 << 20
 """The largest document, in bytes: 1 MiB."""
 
 _MAX_INTEGER_DIGITS = 10
-KINDS = ("share", "record")
+KINDS = (
+    "share",
+    "record",
+    "wrapped-share",
+    "sealed-secret",
+    "party-key",
+    "party-card",
+    "acknowledgement",
+)
 VERSION = 1
 
 
@@ -37,6 +45,7 @@ class Document(BaseModel):
         frozen=True,
         extra="forbid",
         hide_input_in_errors=True,
+        defer_build=True,  # A command pays for the documents that it meets, not for all kinds.
         cache_strings="none",  # The parser would keep short strings of any document in a cache of its own.
     )
 
@@ -67,14 +76,20 @@ class Document(BaseModel):
 def _check_kind(members: dict[str, Any], wanted: str, where: str | None) -> None:
     kind, version = members.get("kind"), members.get("version")
     if kind != wanted:
-        found = f"it is a {kind}" if kind in KINDS else "it does not say that it is one of this program's documents"
-        raise DocumentError(f"a {wanted} is wanted here, but {found}", where=where)
+        found = (
+            f"it is {_a(str(kind))}" if kind in KINDS else "it does not say that it is one of this program's documents"
+        )
+        raise DocumentError(f"{_a(wanted)} is wanted here, but {found}", where=where)
     if version != VERSION or isinstance(version, bool):
         raise DocumentError(
-            f"it is a {wanted} of a version that this program does not know (it reads version {VERSION})",
+            f"it is {_a(wanted)} of a version that this program does not know (it reads version {VERSION})",
             where=where,
             hint="use the release of this program that wrote it, or a later one",
         )
+
+
+def _a(kind: str) -> str:
+    return f"{'an' if kind[0] in 'aeiou' else 'a'} {kind.replace('-', ' ')}"
 
 
 def _first_problem(error: ValidationError) -> str:

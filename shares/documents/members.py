@@ -186,18 +186,24 @@ def _hex_type(length: int) -> tuple[object, ...]:
     )
 
 
-def _b64_type(length: int) -> tuple[object, ...]:
+def _b64_type(length: int | None) -> tuple[object, ...]:
+    letters = "+" if length is None else f"{{{-(-length * 4 // 3)}}}"
     return (
         PlainValidator(_decode_public),
-        _sized(length),
+        *(() if length is None else (_sized(length),)),
         PlainSerializer(encode_bytes, return_type=str),
-        WithJsonSchema({"type": "string", "pattern": f"^[A-Za-z0-9_-]{{{-(-length * 4 // 3)}}}$"}),
+        WithJsonSchema({"type": "string", "pattern": f"^[A-Za-z0-9_-]{letters}$"}),
     )
 
 
 SetId = Annotated[bytes, *_hex_type(16)]
 Digest = Annotated[bytes, *_hex_type(32)]
 PublicKey = Annotated[bytes, *_b64_type(32)]
+MlKemPublicKey = Annotated[bytes, *_b64_type(1184)]
+Signature = Annotated[bytes, *_b64_type(64)]
+Salt = Annotated[bytes, *_b64_type(16)]
+KeyCommitment = Annotated[bytes, *_b64_type(32)]
+Sealed = Annotated[bytes, *_b64_type(None)]
 Check = Annotated[bytes, *_b64_type(16)]
 SecretRow = Annotated[
     Secret,

@@ -1,8 +1,9 @@
 """The record: the public document of a set and epoch, with all that anyone needs to verify.
 
 Source: FORMAT.md, sec. 5.
-May import: shares.errors, shares.field, shares.sharing, shares.documents.base, .members, .share.
-Secret: nothing. Public: everything.
+May import: shares.errors, shares.clock, shares.field, shares.sharing, shares.documents.base, .members, .party, .share,
+.signing.
+Secret: nothing. Public: everything; a party's key that signs is passed through.
 Does not: hold persons or sites, which stay in the policy, or check shares; ``custody.verify`` does.
 """
 
@@ -10,12 +11,13 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from datetime import datetime
-from typing import Annotated, Any, ClassVar, Literal, Self
+from typing import Annotated, Any, ClassVar, Literal, Self, TypeAlias
 
 from pydantic import Field as Member
 from pydantic import model_validator
 from pydantic_core import PydanticCustomError
 
+from shares import clock
 from shares.documents.base import Document, fingerprint, write_text
 from shares.documents.members import (
     Byte,
@@ -27,10 +29,13 @@ from shares.documents.members import (
     Name,
     PublicKey,
     SetId,
+    Signature,
     Text,
     Time,
 )
+from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.share import MAX_ROW, MIN_ROW
+from shares.documents.signing import is_signed
 from shares.errors import ParameterError
 from shares.field.gf256 import Field
 from shares.sharing.consistency import check_matrix, inconsistent_nodes
@@ -64,6 +69,19 @@ class Custodian(Document):
     attestation_key: PublicKey
 
 
+Role: TypeAlias = Literal["dealer", "witness"]
+MAX_SIGNATURES = 64
+
+
+class RecordSignature(Document):
+    """A party's signature on a record: as its dealer, or as a witness to the split."""
+
+    role: Role
+    time: Time
+    card: PartyCard
+    signature: Signature
+
+
 class Record(Document):
     """The public record of one epoch of one share set.
 
@@ -92,8 +110,7 @@ class Record(Document):
     policy: Digest | None
     previous: Fingerprint | None
     fingerprint: Fingerprint
-    # Version 1 as written today knows no signatures; a reader that cannot check one must refuse it (FORMAT.md, sec. 5).
-    signatures: tuple[()]
+    signatures: Annotated[tuple[RecordSignature, ...], Member(max_length=MAX_SIGNATURES)]
 
     @classmethod
     def of(
@@ -109,6 +126,8 @@ class Record(Document):
         custodians: Sequence[Custodian],
         checks: Sequence[tuple[bytes, ...]],
         secret_commitment: bytes,
+        encrypted_file: bytes | None = None,
+        policy: bytes | None = None,
     ) -> Self:
         """Return an unsigned record of a first dealing, its fingerprint filled in, checked for agreement with
         itself."""
@@ -125,8 +144,8 @@ class Record(Document):
             "custodians": tuple(custodians),
             "checks": tuple(checks),
             "secret_commitment": secret_commitment,
-            "encrypted_file": None,
-            "policy": None,
+            "encrypted_file": encrypted_file,
+            "policy": policy,
             "previous": None,
             "signatures": (),
         }
@@ -158,7 +177,46 @@ class Record(Document):
             return "its checks contradict its rule"
         if self.fingerprint != self.own_fingerprint():
             return "its fingerprint does not fit its content"
+        return self._signature_problem()
+
+    def _signature_problem(self) -> str | None:
+        for one in self.signatures:
+            if not is_signed(one.card.ed25519, one.signature, self.KIND, self._signed_members(one)):
+                return f"the signature by {one.card.name} does not fit its content"
+        if len({(one.role, one.card.fingerprint) for one in self.signatures}) != len(self.signatures):
+            return "one party signed it twice as the same"
+        if sum(1 for one in self.signatures if one.role == "dealer") > 1:
+            return "more than one party signed it as its dealer"
         return None
+
+    def _signed_members(self, signature: RecordSignature) -> dict[str, Any]:
+        """Return what a signature is over: role, time and signer, and the whole record but its signatures."""
+        signer = {"role": signature.role, "time": clock.to_text(signature.time), "card": signature.card.fingerprint}
+        return signer | {"record": self.public(*(set(type(self).model_fields) - {"signatures"}))}
+
+    def signed(self, key: OpenPartyKey, role: Role, *, time: datetime | None = None) -> Self:
+        """Return this record with one more signature. What it holds besides stays as it is, and so the fingerprint.
+
+        Args:
+            key: the signer's.
+            role: ``"dealer"`` for whoever ran the split, once; ``"witness"`` for anyone who saw it.
+            time: of signing, UTC to the second; now by default.
+
+        Raises:
+            ParameterError: this party, or a dealer, has signed already, or there are too many signatures.
+        """
+        unsigned = RecordSignature(
+            role=role, time=clock.now() if time is None else time, card=key.card, signature=bytes(64)
+        )
+        own = unsigned.model_copy(update={"signature": key.sign(self.KIND, self._signed_members(unsigned))})
+        made = self.model_copy(update={"signatures": (*self.signatures, own)})
+        problem = made._signature_problem()
+        if problem or len(made.signatures) > MAX_SIGNATURES:
+            raise ParameterError(
+                problem or f"a record holds at most {MAX_SIGNATURES} signatures",
+                hint="`shares show RECORD` says who has signed it",
+            )
+        return made
 
     def own_fingerprint(self) -> str:
         """Compute the fingerprint of what the record holds (signatures apart)."""

@@ -12,10 +12,15 @@ import json
 from pathlib import Path
 from typing import Any
 
+from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import VERSION, Document
+from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
+from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
+from shares.documents.wrapped_share import WrappedShare
 
+KINDS: tuple[type[Document], ...] = (Share, WrappedShare, SealedSecret, Record, PartyKey, PartyCard, Acknowledgement)
 FOLDER = Path(__file__).with_name("schemas")
 
 
@@ -29,7 +34,8 @@ def schema(kind: type[Document]) -> dict[str, Any]:
 def schema_files() -> dict[Path, str]:
     """Return the text of each schema's file by its path."""
     return {
-        FOLDER / f"{kind.KIND}_v{VERSION}.json": json.dumps(schema(kind), indent=2) + "\n" for kind in (Share, Record)
+        FOLDER / f"{kind.KIND.replace('-', '_')}_v{VERSION}.json": json.dumps(schema(kind), indent=2) + "\n"
+        for kind in KINDS
     }
 
 

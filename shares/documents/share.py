@@ -49,7 +49,32 @@ NOTICE = (
 _Path = Annotated[tuple[tuple[Byte, Byte], ...], Member(min_length=1, max_length=MAX_DEPTH)]
 
 
-class Share(Document):
+class ShareFacts(Document):
+    """What a share says in the open, wrapped or not: what it belongs to, and notes for people."""
+
+    kind: str
+    version: Literal[1]
+    set: SetId
+    epoch: Epoch
+    custodian: Name
+    field: FieldName
+    paths: Annotated[tuple[_Path, ...], Member(min_length=1, max_length=MAX_POINTS)]
+    secret_commitment: Digest
+    encrypted_file: Digest | None
+    label: Text | None
+    rule: LongText | None
+    notice: Text | None
+    record: Fingerprint | None
+
+    @model_validator(mode="after")
+    def _paths_differ(self) -> Self:
+        ordered = sorted(self.paths)
+        if any(later[: len(path)] == path for path, later in itertools.pairwise(ordered)):
+            raise PydanticCustomError("shares_points", "no path twice, and none the beginning of another")
+        return self
+
+
+class Share(ShareFacts):
     """One custodian's points, with the public facts that say what they belong to.
 
     ``Share.parse`` reads one; it does not check the share's own digest, so that a damaged share can still be described:
@@ -59,19 +84,7 @@ class Share(Document):
     KIND: ClassVar[str] = "share"
 
     kind: Literal["share"]
-    version: Literal[1]
-    set: SetId
-    epoch: Epoch
-    custodian: Name
-    field: FieldName
-    paths: Annotated[tuple[_Path, ...], Member(min_length=1, max_length=MAX_POINTS)]
-    secret_commitment: Digest
-    encrypted_file: Digest | None
     rows: Annotated[tuple[SecretRow, ...], Member(min_length=1, max_length=MAX_POINTS)]
-    label: Text | None
-    rule: LongText | None
-    notice: Text | None
-    record: Fingerprint | None
     digest: Digest
 
     @model_validator(mode="after")
@@ -80,14 +93,19 @@ class Share(Document):
             raise PydanticCustomError("shares_points", "as many rows as paths")
         if len({len(row) for row in self.rows}) != 1 or not MIN_ROW <= self.row_length <= MAX_ROW:
             raise PydanticCustomError("shares_points", "rows of one length, from 53 to 131,072 bytes")
-        ordered = sorted(self.paths)
-        if any(later[: len(path)] == path for path, later in itertools.pairwise(ordered)):
-            raise PydanticCustomError("shares_points", "no path twice, and none the beginning of another")
         return self
 
     @classmethod
     def of(
-        cls, *, set_id: bytes, epoch: int, custodian: str, points: list[Point], field: Field, secret_commitment: bytes
+        cls,
+        *,
+        set_id: bytes,
+        epoch: int,
+        custodian: str,
+        points: list[Point],
+        field: Field,
+        secret_commitment: bytes,
+        encrypted_file: bytes | None = None,
     ) -> Self:
         """Return a share that has its core and nothing else yet: notes empty, digest zero. ``noted`` completes it."""
         return cls(
@@ -99,7 +117,7 @@ class Share(Document):
             field=field,
             paths=tuple(point.path for point in points),
             secret_commitment=secret_commitment,
-            encrypted_file=None,
+            encrypted_file=encrypted_file,
             rows=tuple(point.row for point in points),
             label=None,
             rule=None,
@@ -110,7 +128,11 @@ class Share(Document):
 
     def noted(self, *, label: str, rule: str, record: str) -> Self:
         """Return this share with its notes for people, and its own digest."""
-        noted = self.model_copy(update={"label": label, "rule": rule, "notice": NOTICE, "record": record})
+        return self.with_notes(label=label, rule=rule, notice=NOTICE, record=record)
+
+    def with_notes(self, **notes: str | None) -> Self:
+        """Return this share with these notes, any of which may be missing, and its own digest."""
+        noted = self.model_copy(update=notes)
         return noted.model_copy(update={"digest": noted._digest()})
 
     @property

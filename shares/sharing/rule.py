@@ -10,7 +10,8 @@ Does not: decide whether a rule is wise, check recovered payloads, or know what 
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections import Counter
+from collections.abc import Collection, Iterator, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple, TypeAlias
 
@@ -81,12 +82,49 @@ class Rule:
             found[name] = (*found.get(name, ()), path)
         return found
 
+    def satisfied_by(self, custodians: Collection[str]) -> bool:
+        """Say whether these custodians, each with all of their points, make a quorum.
+
+        Args:
+            custodians: names in any order, best a set; names that the rule does not know count for nothing.
+
+        >>> Rule(2, ("north-pier", Rule(1, ("south-pier", "light-house")))).satisfied_by({"north-pier", "light-house"})
+        True
+        """
+        met = 0
+        for child in self.children:
+            met += child.satisfied_by(custodians) if isinstance(child, Rule) else child in custodians
+            if met >= self.need:
+                return True
+        return False
+
     def words(self) -> str:
-        """Return the rule as a person would say it."""
-        parts = [child if isinstance(child, str) else f"({child.words()})" for child in self.children]
-        if self.need == len(parts):
-            return parts[0] if len(parts) == 1 else f"all {len(parts)} of {', '.join(parts)}"
-        return f"any {self.need} of {', '.join(parts)}"
+        """Return the rule as a person would say it.
+
+        >>> Rule(2, (Rule(2, ("north-pier", "south-pier", "light-house")), "registrar")).words()
+        'any 2 of north-pier, south-pier, light-house; and registrar'
+        """
+        # A name that stands w times in one node is said once, with its weight.
+        counts = Counter(self.children)
+        everyone, anyone = self.need == len(self.children), self.need == 1
+        if len(counts) == 1 and (everyone or anyone):
+            return _words(self.children[0])
+        if (everyone or anyone) and any(isinstance(child, Rule) for child in counts):
+            return ("; and " if everyone else "; or ").join(_words(child, within=True) for child in counts)
+        if everyone:
+            return f"{'both' if len(counts) == 2 else f'all {len(counts)}'} of {', '.join(map(_words, counts))}"
+        if anyone:
+            return f"any 1 of {', '.join(map(_words, counts))}"
+        said = [_words(child, bracketed=True) + f" (weight {w})" * (w > 1) for child, w in counts.items()]
+        return f"any {self.need} of {', '.join(said)}"
+
+
+def _words(child: Rule | str, *, within: bool = False, bracketed: bool = False) -> str:
+    """Return a child in words: in brackets where it could not be told from what stands around it."""
+    if isinstance(child, str):
+        return child
+    words = child.words()
+    return f"({words})" if bracketed or (within and "; " in words) else words
 
 
 def _nodes(rule: Rule, path: Path) -> Iterator[tuple[Path, Rule]]:
@@ -144,7 +182,9 @@ def deal(field: Field, rule: Rule, payload: Secret) -> Dealing:
 
 
 def _deal(field: Field, node: Rule, payload: Secret, path: Path, dealing: Dealing) -> None:
-    polynomial = random_polynomial(field, payload, node.need)
+    # Below an 'any 1 of' several nodes have one payload: their places keep them apart even where the source fails.
+    steps = bytes(number for step in path for number in step)
+    polynomial = random_polynomial(field, payload, node.need, place=steps)
     dealing.polynomials.append(polynomial)
     xs = range(1, len(node.children) + 1)
     for x, child, row in zip(xs, node.children, evaluate(field, polynomial, xs), strict=True):

@@ -240,7 +240,7 @@ def test_a_bad_share_is_told_from_good_ones(case: str, dealt: Place) -> None:
 
 def words_of_show(words: str) -> str:
     """What ``show`` says of a document of no kind it knows: it has none in mind."""
-    return "neither a share nor a record" if words == "does not say" else words
+    return "no document of this program" if words == "does not say" else words
 
 
 @pytest.mark.parametrize("case", RECORD)

@@ -15,12 +15,31 @@ from cli.harness import NAMES, PROGRAM, Place, run
 from cryptography.hazmat.primitives import serialization
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 
+from shares.custody.parties import write_party
+from shares.custody.presented import load_record
+from shares.documents.party import new_party
+from shares.documents.share import Share
+from shares.documents.wrapped_share import WrappedShare
+from shares.documents.wrapping import Cost, card_sealer, passphrase_sealer
+from shares.memory import Secret
+
+POLICIES = Path(__file__).resolve().parents[2] / "examples" / "policies"
 PAGES: list[tuple[str, ...]] = [
     (),
     ("split",),
     ("verify",),
     ("recover",),
     ("show",),
+    ("acknowledge",),
+    ("wrap",),
+    ("unwrap",),
+    ("record",),
+    ("record", "sign"),
+    ("party",),
+    ("party", "new"),
+    ("party", "show"),
+    ("party", "passphrase"),
+    ("passphrase",),
     ("polynomial",),
     ("polynomial", "list"),
     ("polynomial", "check"),
@@ -36,9 +55,16 @@ def examples(page: tuple[str, ...]) -> list[str]:
     return [re.sub(r"\s+", " ", line.strip()) for line in found[1].splitlines()] if found else []
 
 
+QUICK = Cost(memory=8, passes=1, lanes=1)
+
+
+def passphrase(name: str) -> Secret:
+    return Secret.of(f"the passphrase of {name}".encode())
+
+
 @pytest.fixture
 def prepared(tmp_path: Path) -> Path:
-    """A key, and in the same folder the shares and the record of a set."""
+    """A key, and in the same folder the shares, bare and wrapped, the record, and the parties of a set."""
     key = Ed25519PrivateKey.generate().private_bytes(
         serialization.Encoding.PEM, serialization.PrivateFormat.PKCS8, serialization.NoEncryption()
     )
@@ -46,7 +72,25 @@ def prepared(tmp_path: Path) -> Path:
     place.split(need=3, names=NAMES)
     for path in place.shares:
         path.rename(tmp_path / path.name)
-    (tmp_path / "record.json").write_bytes(place.record.read_bytes())
+    keys = {}
+    for name in (*NAMES, "harbour-office", "new"):
+        (tmp_path / f"{name}.passphrase").write_text(f"the passphrase of {name}\n")
+        if name != "new":
+            keys[name] = new_party(name, passphrase(name), cost=QUICK)
+            write_party(keys[name], tmp_path)
+    for name in ("north-pier", "dry-dock", "registrar"):
+        seal = (
+            card_sealer(keys[name].card.recipient())
+            if name == "registrar"
+            else passphrase_sealer(passphrase(name), QUICK)
+        )
+        share = Share.parse((tmp_path / f"{name}.share.json").read_bytes())
+        (tmp_path / f"{name}.wrapped.json").write_bytes(WrappedShare.wrap(share, seal).to_file())
+    with keys["harbour-office"].open(passphrase("harbour-office")) as dealer:
+        signed = load_record(place.record).signed(dealer, "dealer")
+    (tmp_path / "record.json").write_bytes(signed.to_file())
+    (tmp_path / "policy.toml").write_bytes((POLICIES / "tide-archive.toml").read_bytes())
+    (tmp_path / "scan.pdf").write_bytes(b"a form, signed by hand")
     (tmp_path / "tide-archive").mkdir()
     (tmp_path / "tide-archive" / "record.json").write_bytes(place.record.read_bytes())
     for folder in ("media/stick", "dev/shm/handover", "home/.local/share/bash-completion/completions"):
@@ -61,7 +105,9 @@ def test_every_example_runs(page: tuple[str, ...], prepared: Path) -> None:
     for line in lines:
         if line.startswith("shares split"):
             (prepared / "key.pem").write_bytes((prepared / "made" / "key").read_bytes())
-            (prepared / "tide-archive" / "record.json").unlink()
+            (prepared / "tide-archive" / "record.json").unlink(missing_ok=True)
+        if line.startswith("shares wrap"):
+            (prepared / "north-pier.wrapped.json").unlink()
         done = subprocess.run(
             ["bash", "-c", re.sub(r" (/media|/dev/shm)/", rf" {prepared}\1/", line)],
             cwd=prepared,

@@ -245,7 +245,7 @@ def test_a_record_that_comes_back_changed_is_removed_with_the_shares(dealt, plac
         return real(path, limit=limit) + (b" " if Path(path).name == "record.json" else b"")
 
     monkeypatch.setattr(handover, "read_back", spoiled)
-    with pytest.raises(VerificationError, match="the record read back differs"):
+    with pytest.raises(VerificationError, match="what is read back differs"):
         hand_over(dealt, *places)
     assert files(tmp_path) == []
 
@@ -287,13 +287,16 @@ def test_a_share_that_cannot_be_removed_does_not_keep_the_others(dealt, places, 
     assert files(tmp_path) == ["media/south-pier/south-pier.share.json"]
 
 
+@pytest.mark.parametrize("name", ["record.json", "south-pier.share.json"])
 @pytest.mark.parametrize("ours", [True, False])
-def test_an_interrupt_just_after_the_record_was_written_undoes_only_our_own(dealt, places, tmp_path, monkeypatch, ours):
-    """Another process may win the record's name; what it wrote is not ours to remove."""
+def test_an_interrupt_just_after_a_file_was_written_undoes_only_our_own(
+    dealt, places, tmp_path, monkeypatch, ours, name
+):
+    """Another process may win a name; what it wrote is not ours to remove."""
     real = handover.write_new
 
     def interrupted(path, data, *, secret):
-        if Path(path).name == "record.json":
+        if Path(path).name == name:
             real(path, data if ours else b"{}", secret=secret)
             raise KeyboardInterrupt
         real(path, data, secret=secret)
@@ -301,4 +304,4 @@ def test_an_interrupt_just_after_the_record_was_written_undoes_only_our_own(deal
     monkeypatch.setattr(handover, "write_new", interrupted)
     with pytest.raises(KeyboardInterrupt):
         hand_over(dealt, *places)
-    assert files(tmp_path) == ([] if ours else ["set/record.json"])
+    assert [Path(left).name for left in files(tmp_path)] == ([] if ours else [name])

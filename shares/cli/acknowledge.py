@@ -1,0 +1,71 @@
+"""``shares acknowledge``."""
+
+from __future__ import annotations
+
+import click
+
+from shares.cli.keys import opening
+from shares.cli.output import filled, json_option, print_result
+from shares.cli.passphrases import passphrase_options
+from shares.custody.duties import digest_of_form
+from shares.custody.parties import load_key
+from shares.documents.acknowledgement import DUTIES, Acknowledgement
+from shares.errors import ParameterError
+from shares.storage import write_new
+
+
+@click.command()
+@click.option("--custodian", metavar="NAME", callback=filled, help="Who accepts; by default the name on KEY's card.")
+@click.option(
+    "--label", required=True, metavar="TEXT", callback=filled, help="What the set protects, as its policy says."
+)
+@click.option("--key", "key_file", metavar="KEY", callback=filled, help="Sign with this party key, the custodian's.")
+@click.option("--form", "scan", metavar="SCAN", callback=filled, help="Enter the scan of a form signed by hand.")
+@click.option("--to", "target", required=True, metavar="FILE", callback=filled, help="New file.")
+@passphrase_options
+@json_option
+def command(
+    custodian: str | None,
+    label: str,
+    key_file: str | None,
+    scan: str | None,
+    target: str,
+    passphrase_files: tuple[str, ...],
+    descriptors: tuple[str, ...],
+    as_json: bool,
+) -> None:
+    """Accept a custodian's duties, before the share is handed over: by signature, or by a form signed by hand.
+
+    The duties are shown and stand in the file. A policy with `acknowledgement = true` has `split` ask for one of each
+    custodian (--acknowledged FILE).
+
+    \b
+    Examples:
+      shares acknowledge --label "Tide archive root" --key north-pier.key.json --to north-pier.ack.json \\
+        --passphrase-file north-pier.passphrase
+      shares acknowledge --label "Tide archive root" --custodian south-pier --form scan.pdf --to south-pier.ack.json
+    """
+    if (key_file is None) == (scan is None):
+        raise ParameterError("give exactly one of --key KEY and --form SCAN", hint="see --help")
+    if key_file is not None:
+        key = load_key(key_file)
+        with opening((), passphrase_files, descriptors) as at_hand:
+            made = Acknowledgement.signed_by(at_hand.party(key), custodian=custodian or key.card.name, label=label)
+        how = f"signed by {key.card.name}, card {key.card.fingerprint}"
+    elif scan is not None and custodian is not None:
+        digest = digest_of_form(scan)
+        made = Acknowledgement.of_form(digest, custodian=custodian, label=label)
+        how = f"on a form whose scan has SHA-256 {digest.hex()}; keep the form and the scan"
+    else:
+        raise ParameterError("--form needs --custodian NAME", hint="a scan does not say whose it is")
+    write_new(target, made.to_file(), secret=False)
+    lines = [
+        f"Acknowledged: the duties of {made.custodian} for {made.label}, {how}, in {target}.",
+        *(f"  - {duty}" for duty in DUTIES),
+        "Next: give this file to the dealer.",
+    ]
+    print_result(
+        {"done": True, "file": target, "custodian": made.custodian, "label": made.label, "how": how, "duties": DUTIES},
+        lines,
+        as_json=as_json,
+    )

@@ -1,0 +1,76 @@
+"""Options about party keys and cards, and what of wrapped files they open.
+
+Source: none.
+May import: shares.errors, shares.custody, shares.documents, shares.cli.output, shares.cli.passphrases.
+Secret: party keys and passphrases, while a command runs. Public: cards, paths.
+Does not: decide what is signed or wrapped.
+"""
+
+from __future__ import annotations
+
+import contextlib
+from collections.abc import Callable, Iterator
+from typing import Any, TypeVar
+
+import click
+
+from shares.cli.output import filled
+from shares.cli.passphrases import GivenPassphrases
+from shares.custody.opening import Opening
+from shares.custody.parties import load_card, load_key
+from shares.documents.party import PartyCard
+from shares.documents.wrapping import SUITES
+from shares.errors import ParameterError
+
+Function = TypeVar("Function", bound=Callable[..., Any])
+
+UNTRIED = (
+    "whoever holds a card's key alone can open what is wrapped for it: compare the card's fingerprint with its party"
+)
+
+key_option = click.option(
+    "--key",
+    "keys",
+    multiple=True,
+    metavar="KEY",
+    callback=filled,
+    help="A party key that opens shares wrapped for its card; once for each.",
+)
+suite_option = click.option(
+    "--suite",
+    type=click.Choice(SUITES),
+    default=SUITES[0],
+    show_default=True,
+    help="How to encrypt to a card: hybrid, and newer than RFC 9180; or as in RFC 9180.",
+)
+
+
+@contextlib.contextmanager
+def opening(keys: tuple[str, ...], files: tuple[str, ...], descriptors: tuple[str, ...]) -> Iterator[Opening]:
+    """Hold what opens wrapped files, as the options say; wiped at the end."""
+    loaded = [load_key(path) for path in keys]
+    with GivenPassphrases(files, descriptors) as passphrases, Opening(passphrases, loaded) as opened:
+        yield opened
+
+
+def cards_by_name(given: tuple[str, ...], names: list[str], *, option: str) -> dict[str, PartyCard]:
+    """Read ``NAME=CARD`` options, or ``CARD`` where the card's own name is the custodian's.
+
+    Raises:
+        ParameterError: a name that is none of ``names``, or two cards for one.
+    """
+    cards: dict[str, PartyCard] = {}
+    for one in given:
+        name = max((name for name in names if one.startswith(f"{name}=")), key=len, default=None)
+        card = load_card(one if name is None else one.removeprefix(f"{name}="))
+        owner = name or card.name
+        if owner not in names:
+            raise ParameterError(
+                f"the card is of {card.name}, who is no custodian here",
+                where=f"{option} {one}",
+                hint="write NAME=CARD, with the custodian's name",
+            )
+        if owner in cards:
+            raise ParameterError(f"two cards are given for {owner}", where=option)
+        cards[owner] = card
+    return cards
