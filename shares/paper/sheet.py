@@ -1,4 +1,5 @@
-"""The sheet: a share as one page to print, with a second page on which the custodian signs for it.
+"""The sheet: a share as one page to print, with a second page on which the custodian signs for it; and the form on
+which the duties are accepted beforehand.
 
 Source: ISO/IEC 18004 (QR code), by way of a library; W3C, "Content Security Policy Level 3"; "CSS Paged Media"; PCI PIN
 by way of trade practice (numbered packs, receipts); FORMAT.md, sec. 11.
@@ -23,7 +24,7 @@ import jinja2
 import segno
 
 from shares.documents.acknowledgement import DUTIES
-from shares.documents.members import check_text
+from shares.documents.members import check_name, check_text
 from shares.documents.share import Share
 from shares.documents.wrapping import ByPassphrase
 from shares.errors import ParameterError, VerificationError
@@ -91,18 +92,29 @@ def make_sheet(share: PaperShare, *, serial: str | None = None, where: str | Non
             "the sheet does not give the share back", where=where, hint="a fault in this program: please report it"
         )
     code = _code(to_text(form), _BESIDE_LINES if lines else _ALONE, where)
-    page = _template().render(
+    page = _render(
+        "sheet.html",
         share=share,
         serial=number,
-        duties=DUTIES,
-        style=_style(),
-        style_hash=base64.b64encode(hashlib.sha256(_style().encode()).digest()).decode("ascii"),
         lines=[grouped(line).split() for line in lines],
         heads=[f"{first}\N{EN DASH}{min(first + 3, 31)}" for first in range(1, 32, 4)],
         sealed=None if isinstance(share, Share) else share.wrapping,
         code=code.svg_inline(border=_QUIET, omitsize=True, svgclass=None, lineclass=None),
     )
-    return Sheet(page.encode("utf-8"), number, len(lines), int(code.version), str(code.error))
+    return Sheet(page, number, len(lines), int(code.version), str(code.error))
+
+
+def make_form(custodian: str, label: str) -> bytes:
+    """Return a page on which a custodian accepts the duties by hand, before a share is handed over. It is public.
+
+    Args:
+        custodian: the name that the policy has.
+        label: what the set protects.
+
+    Raises:
+        ParameterError: a name or label that may not be.
+    """
+    return _render("form.html", custodian=check_name(custodian), label=check_text(label))
 
 
 def new_serial() -> str:
@@ -139,13 +151,19 @@ def _style() -> str:
     return (_HERE / "sheet.css").read_text("utf-8")
 
 
+def _render(template: str, **facts: object) -> bytes:
+    style = _style()
+    style_hash = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode("ascii")
+    page = _templates().get_template(template).render(duties=DUTIES, style=style, style_hash=style_hash, **facts)
+    return page.encode("utf-8")
+
+
 @cache
-def _template() -> jinja2.Template:
-    environment = jinja2.Environment(
+def _templates() -> jinja2.Environment:
+    return jinja2.Environment(
         loader=jinja2.FileSystemLoader(_HERE),
         autoescape=True,
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,
         lstrip_blocks=True,
     )
-    return environment.get_template("sheet.html")

@@ -26,7 +26,7 @@ from shares.documents.wrapped_share import WrappedShare
 from shares.documents.wrapping import Cost, passphrase_sealer
 from shares.memory import Secret
 from shares.paper.paperform import from_paper, to_paper
-from shares.paper.sheet import MIN_MODULE, make_sheet
+from shares.paper.sheet import MIN_MODULE, make_form, make_sheet
 from shares.paper.transcription import Transcription, gather
 
 BROWSER = Path("/usr/bin/chromium")
@@ -93,7 +93,7 @@ def dealt(names=NAMES, label="Tide archive backup root", secret=KEY):
 
 
 def wrapped(share):
-    return WrappedShare.wrap(share, passphrase_sealer(Secret.of(b"made up"), Cost(2**20, 1, 1)))
+    return WrappedShare.wrap(share, passphrase_sealer(Secret.of(b"made up"), Cost(65_536, 1, 1)))
 
 
 def code_on(page):
@@ -153,6 +153,18 @@ def test_it_prints_on_one_page_and_one_to_sign(show, for_card):
         assert out == [], name
         assert page.said == []
     assert {0, 13, 32} <= lines
+
+
+@pytest.mark.parametrize("name", [NAMES[0], WIDE[0], HOSTILE[0]])
+def test_the_form_to_sign_beforehand_prints_on_one_page(browser, tmp_path, name):
+    file = tmp_path / "form.html"
+    file.write_bytes(make_form(name, "W" * 500))
+    page = browser.new_page()
+    page.goto(file.as_uri())
+    for paper in ("A4", "Letter"):
+        assert len(re.findall(rb"/Type\s*/Page\b", page.pdf(format=paper))) == 1
+    assert page.locator("strong").inner_text() == name
+    page.close()
 
 
 def test_a_page_too_long_would_be_seen(show):

@@ -21,7 +21,7 @@ from shares.documents.acknowledgement import DUTIES
 from shares.errors import ParameterError, VerificationError
 from shares.paper import sheet
 from shares.paper.paperform import from_paper, to_paper, to_text
-from shares.paper.sheet import MIN_MODULE, make_sheet, new_serial
+from shares.paper.sheet import MIN_MODULE, make_form, make_sheet, new_serial
 from shares.paper.transcription import gather
 from shares.paper.typedline import LETTERS, to_lines
 
@@ -225,3 +225,15 @@ def test_damage_within_the_promise_of_the_code_does_no_harm(share):
     image.paste(255, (side * 4 // 10, side * 4 // 10, side * 7 // 10, side * 7 // 10))
     [found] = zxingcpp.read_barcodes(image, formats=zxingcpp.BarcodeFormat.QRCode)
     assert found.text == text
+
+
+def test_the_form_to_accept_duties_by_hand():
+    page = Page(make_form("<b>north-pier", "Tide <archive>"))
+    assert all(duty in page.text for duty in DUTIES)
+    assert "<b>north-pier" in page.text
+    assert "Tide <archive>" in page.text
+    assert not {tag for tag, _ in page.tags} & {"b", "archive", "script", "img", "link"}
+    policy = next(attributes["content"] for tag, attributes in page.tags if attributes.get("http-equiv"))
+    assert policy.startswith("default-src 'none'; style-src 'sha256-")
+    with pytest.raises(ParameterError):
+        make_form("", "Tide archive")
