@@ -10,6 +10,7 @@ import hashlib
 import os
 import signal
 import stat
+import subprocess
 import sys
 from pathlib import Path
 
@@ -204,6 +205,25 @@ def test_a_command_is_killed_when_the_pieces_stop(tmp_path: Path, error: BaseExc
     with pytest.raises(type(error)):
         feed()
     assert os.listdir(tmp_path) == []
+
+
+def test_a_command_is_killed_before_its_input_ends(monkeypatch) -> None:
+    """However quick it is: at the first kill the pipe is still open."""
+    open_at_kill: list[bool] = []
+    real = subprocess.Popen.kill
+
+    def kill(process: subprocess.Popen[bytes]) -> None:
+        open_at_kill.append(process.stdin is not None and not process.stdin.closed)
+        real(process)
+
+    def feed() -> None:
+        with fed(python("import sys; sys.stdin.read()")):
+            raise KeyboardInterrupt
+
+    monkeypatch.setattr(subprocess.Popen, "kill", kill)
+    with pytest.raises(KeyboardInterrupt):
+        feed()
+    assert open_at_kill[0]
 
 
 def test_a_command_that_has_read_enough_ends_the_feeding() -> None:

@@ -234,6 +234,26 @@ def test_a_pipe_has_no_length(tmp_path: Path, monkeypatch: pytest.MonkeyPatch, s
     assert sink.got == secret
 
 
+def test_the_end_of_a_pipe_is_its_end(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A named pipe may give more after its end, when another writer comes; that is another message."""
+    reader, writer = os.pipe()
+    answers = [b"the whole of it", b"", b"from another writer"]
+
+    def readv(_: int, buffers: list[memoryview]) -> int:
+        answer = answers.pop(0) if answers else b""
+        buffers[0][: len(answer)] = answer
+        return len(answer)
+
+    with monkeypatch.context() as patch:
+        patch.setattr(os, "readv", readv)
+        key, digest = encrypt_file(f"/dev/fd/{reader}", tmp_path / "target", SET)
+    os.close(reader)
+    os.close(writer)
+    sink = Sink()
+    open_file(tmp_path / "target", key, digest, SET, sink.open())
+    assert sink.got == b"the whole of it"
+
+
 def test_progress_counts_every_chunk_of_every_pass(tmp_path: Path, path: Path) -> None:
     told: list[tuple[int, int | None]] = []
 
@@ -499,6 +519,19 @@ def test_altered_between_the_passes_leaves_no_file(tmp_path: Path, path: Path) -
         assert os.listdir(tmp_path) == [path.name]
 
 
+def test_what_was_seen_is_told_by_a_key_of_its_own() -> None:
+    """The same chunk looks alike under one key and not under another, and place counts."""
+    first, other = module._Seen.first(), module._Seen.first()
+    again, moved = first.again(), first.again()
+    for seen in (first, other, again):
+        seen.add(0, memoryview(ONE))
+    moved.add(1, memoryview(ONE))
+    assert first.is_same(again)
+    assert not first.is_same(other)
+    assert not first.is_same(moved)
+    assert not first.is_same(first.again())
+
+
 def test_cut_between_the_passes(path: Path) -> None:
     sink = Sink()
     with Secret.of(KEY) as key, pytest.raises(StorageError, match="became shorter"):
@@ -604,6 +637,22 @@ def test_an_interruption_while_opening(tmp_path: Path, path: Path, at: int) -> N
         assert open_secrets() == before
     assert os.listdir(tmp_path) == [path.name]
     assert threading.active_count() == 1
+
+
+def test_the_key_is_wiped_when_encrypting_fails(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    drawn: list[Secret] = []
+    real = Secret.drawn
+
+    def keep(length: int) -> Secret:
+        drawn.append(real(length))
+        return drawn[-1]
+
+    monkeypatch.setattr(Secret, "drawn", keep)
+    with pytest.raises(StorageError):
+        encrypt_file(tmp_path / "missing", tmp_path / "target", SET)
+    with pytest.raises(ValueError, match="closed"):
+        drawn[0].view()
+    assert len(drawn) == 1
 
 
 def test_a_taken_name_is_refused_before_anything_is_read(tmp_path: Path, path: Path) -> None:
