@@ -15,7 +15,7 @@ from shares.documents.party import OpenPartyKey, PartyKey
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
 from shares.documents.wrapping import ByCard, ByPassphrase, Envelope, open_by_passphrase
-from shares.errors import WrongKeyError
+from shares.errors import VerificationError, WrongKeyError
 from shares.memory import Secret
 
 Opened = TypeVar("Opened")
@@ -78,14 +78,22 @@ class Opening:
         envelope.check_whole()
         wrapping = envelope.wrapping
         if isinstance(wrapping, ByCard):
-            key = self._keys.get(wrapping.card)
-            if key is None:
-                raise WrongKeyError(
-                    f"it is wrapped for the card {wrapping.card}, and no party key of that card is at hand",
-                    hint="give it with --key",
-                )
-            return open_with(self.party(key).open)
+            return open_with(self._party_of(wrapping.card).open)
         return self._passphrases.opening(name, lambda passphrase: open_with(_by(passphrase)))
+
+    def _party_of(self, card: str) -> OpenPartyKey:
+        key = self._keys.get(card)
+        if key is None:
+            raise WrongKeyError(
+                f"it is wrapped for the card {card}, and no party key of that card is at hand",
+                hint="give it with --key",
+            )
+        try:
+            return self.party(key)
+        except VerificationError as error:
+            problem = error
+        # A party key that is damaged itself says nothing of what is wrapped for its card.
+        raise WrongKeyError(f"the party key of {key.card.name} does not open: {problem.what}", hint=problem.hint)
 
     def close(self) -> None:
         """Wipe the party keys that were opened."""

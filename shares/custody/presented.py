@@ -17,7 +17,7 @@ from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.record import Record
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
-from shares.errors import DocumentError, SharesError, StorageError, VerificationError, WrongKeyError
+from shares.errors import DocumentError, ParameterError, SharesError, StorageError, VerificationError, WrongKeyError
 from shares.storage import StrPath, read_file
 
 
@@ -68,6 +68,9 @@ def load_shares(paths: Sequence[StrPath], opener: ShareOpener | None = None) -> 
     Args:
         paths: files of shares, wrapped or not.
         opener: what opens wrapped ones; without it they stay closed.
+
+    Raises:
+        StorageError, ParameterError: a passphrase that the opener was to use cannot be read.
     """
     return [_load(path, opener) for path in paths]
 
@@ -76,17 +79,23 @@ def _load(path: StrPath, opener: ShareOpener | None) -> Presented:
     source = os.fspath(path)
     try:
         share = parse_share(read_file(path, limit=MAX_FILE), where=source)
-        if isinstance(share, Share):
-            return Presented(source, share)
-        if opener is None:
-            return Presented(source, None, "it is wrapped, and nothing was given to open it", Status.LOCKED)
-        return Presented(source, opener(share))
     except StorageError as error:
         return Presented(source, None, _reason(error), Status.UNREADABLE)
-    except WrongKeyError as error:
-        return Presented(source, None, _reason(error), Status.LOCKED)
-    except (DocumentError, VerificationError) as error:
+    except DocumentError as error:
         return Presented(source, None, _reason(error))
+    return Presented(source, share) if isinstance(share, Share) else _opened(source, share, opener)
+
+
+def _opened(source: str, wrapped: WrappedShare, opener: ShareOpener | None) -> Presented:
+    if opener is None:
+        return Presented(source, None, "it is wrapped, and nothing was given to open it", Status.LOCKED)
+    try:
+        return Presented(source, opener(wrapped))
+    except (StorageError, ParameterError):
+        raise  # A passphrase cannot be had from where it was said to be: that is no finding about a share.
+    except SharesError as error:
+        is_damaged = isinstance(error, VerificationError) and not isinstance(error, WrongKeyError)
+        return Presented(source, None, _reason(error), Status.DAMAGED if is_damaged else Status.LOCKED)
 
 
 def parse_share(data: bytes, *, where: str) -> Share | WrappedShare:

@@ -7,6 +7,7 @@ involved, as no shell is.
 from __future__ import annotations
 
 import hashlib
+import json
 import os
 import signal
 import stat
@@ -15,10 +16,16 @@ import sys
 from pathlib import Path
 
 import pytest
+from parties import card, unlocked
+from strategies import crooked_split, flat, presented, revealed
+from vectors.make import wrapping_v1 as by_hand
 
 from shares import streams
-from shares.custody.deliver import fed, to_command, to_file
-from shares.errors import CommandFailedError, SharesError, StorageError
+from shares.custody.deliver import fed, sealed_for, to_command, to_file
+from shares.custody.recover import recover
+from shares.documents.sealed_secret import SealedSecret
+from shares.documents.wrapping import SUITES
+from shares.errors import CommandFailedError, SharesError, StorageError, VerificationError, WrongKeyError
 from shares.memory import Secret
 
 SECRET = b"not a real key\0with a zero byte and no line end"
@@ -233,3 +240,34 @@ def test_a_command_that_has_read_enough_ends_the_feeding() -> None:
             write(LARGE)
             pieces += 1
     assert pieces < 100
+
+
+# Encrypted to its receiver.
+
+DEALT = crooked_split(SECRET, flat(2, 3))
+
+
+@pytest.mark.parametrize("suite", SUITES)
+@pytest.mark.parametrize("record", [DEALT.record, None], ids=["record", "alone"])
+def test_a_secret_for_a_receiver_opens_by_the_receivers_key_alone(suite, record) -> None:
+    recovery = recover(presented(DEALT.shares[:2]), record)
+    data = sealed_for(card("harbour-office"), recovery, suite)
+    assert b"real key" not in data
+    sealed = SealedSecret.parse(data)
+    facts = (sealed.set, sealed.epoch, sealed.label, sealed.encrypted_file, sealed.wrapping.suite)
+    assert facts == (DEALT.record.set, 1, DEALT.record.label, None, suite)
+    with unlocked("harbour-office") as key:
+        assert revealed(sealed.content(key.open)) == SECRET
+        # FORMAT.md, sections 9 and 10, by the opener written from its text alone.
+        assert by_hand.opened(json.loads(data), by_hand.Private(revealed(key.content))) == SECRET
+    with unlocked("registrar") as key, pytest.raises(WrongKeyError):
+        sealed.content(key.open)
+    # The recovery keeps the secret, for its caller to wipe.
+    assert revealed(recovery.secret) == SECRET
+
+
+def test_a_secret_goes_to_no_card_without_usable_keys() -> None:
+    recovery = recover(presented(DEALT.shares[:2]))
+    useless = card("harbour-office").model_copy(update={"x25519": bytes(32)})
+    with pytest.raises(VerificationError, match="no usable public keys"):
+        sealed_for(useless, recovery, SUITES[0])

@@ -5,21 +5,28 @@ Checked against: what lies in the folders afterwards. Every step that can fail i
 
 from __future__ import annotations
 
+import dataclasses
 import errno
+import json
 import math
 import os
 import stat
 from pathlib import Path
 
 import pytest
+from parties import QUICK, by, card, passphrase, unlocked
 from strategies import HARBOUR, crooked_split, flat, presented, revealed
 
-from shares.custody import handover
+from shares import memory
+from shares.custody import handover, packing
 from shares.custody.handover import check_targets, hand_over, other_shares, share_path
+from shares.custody.packing import WRAPPED_SUFFIX, Packing
 from shares.custody.presented import load_record, load_shares
 from shares.custody.recover import recover
 from shares.custody.split import Dealt, flat_rule, split
 from shares.custody.verify import examine
+from shares.documents.wrapped_share import WrappedShare
+from shares.documents.wrapping import passphrase_sealer
 from shares.errors import StorageError, VerificationError
 from shares.memory import Secret
 
@@ -305,3 +312,147 @@ def test_an_interrupt_just_after_a_file_was_written_undoes_only_our_own(
     with pytest.raises(KeyboardInterrupt):
         hand_over(dealt, *places)
     assert [Path(left).name for left in files(tmp_path)] == ([] if ours else [name])
+
+
+# Wrapped shares, a signed record, and files beside it.
+
+NORTH, SOUTH, LIGHT = HARBOUR[:3]
+
+
+@pytest.fixture
+def packings(monkeypatch) -> dict[str, Packing]:
+    """One wrapped by passphrase, one for a card by each suite; stretching is cheap."""
+    monkeypatch.setattr(packing, "passphrase_sealer", lambda secret: passphrase_sealer(secret, QUICK))
+    return {
+        NORTH: Packing.by_passphrase(passphrase(NORTH)),
+        SOUTH: Packing.for_card(card(SOUTH)),
+        LIGHT: Packing.for_card(card(LIGHT), "x25519"),
+    }
+
+
+def test_each_share_is_packed_as_asked_and_opens(dealt, places, packings, tmp_path) -> None:
+    done = hand_over(dealt, *places, packings=packings)
+    assert files(tmp_path) == sorted(
+        ["set/record.json", *(f"media/{name}/{name}.wrapped.json" for name in HARBOUR[:3])]
+    )
+    assert {stat.S_IMODE(path.stat().st_mode) for path in done.shares.values()} == {0o600}
+    assert (done.trials, done.quorums) == (3, 3)
+    for name, dealt_share in zip(HARBOUR[:3], dealt.shares, strict=True):
+        wrapped = WrappedShare.parse(done.shares[name].read_bytes())
+        with unlocked(name) as key:
+            opened = wrapped.open(by(name) if name == NORTH else key.open)
+        assert opened.to_file() == dealt_share.to_file()
+        assert json.loads(done.shares[name].read_bytes())["record"] == dealt.record.fingerprint
+
+
+def test_bare_and_wrapped_shares_may_be_handed_over_together(dealt, places, packings, tmp_path) -> None:
+    done = hand_over(dealt, *places, packings={**packings, SOUTH: Packing.bare()})
+    assert done.shares[SOUTH].name == "south-pier.share.json"
+    assert done.shares[NORTH].name == "north-pier.wrapped.json"
+
+
+def test_the_signatures_of_the_dealer_and_of_witnesses_go_into_the_record(dealt, places) -> None:
+    fingerprint = dealt.record.fingerprint
+    with unlocked("harbour-office") as dealer, unlocked("registrar") as witness:
+        done = hand_over(dealt.signed(dealer, "dealer").signed(witness, "witness"), *places)
+    record = load_record(done.record)
+    signers = [(one.card.name, one.role) for one in record.signatures]
+    assert signers == [("harbour-office", "dealer"), ("registrar", "witness")]
+    assert record.fingerprint == fingerprint
+    shares = load_shares(list(done.shares.values()))
+    assert {finding.status.value for finding in examine(shares, record)} == {"intact"}
+
+
+@pytest.mark.parametrize("suffix", [".share.json", WRAPPED_SUFFIX])
+def test_a_share_of_either_form_that_has_the_place_already_is_kept(dealt, places, packings, suffix, tmp_path) -> None:
+    """Whichever form is to be written: a bare one beside a wrapped one would be one custodian's share twice."""
+    path = share_path(places[1][SOUTH], SOUTH, suffix)
+    path.write_bytes(b"kept")
+    for chosen in (packings, None):
+        with pytest.raises(StorageError, match="of another split"):
+            hand_over(dealt, *places, packings=chosen)
+    assert files(tmp_path) == [str(path.relative_to(tmp_path))]
+
+
+@pytest.mark.parametrize("name", HARBOUR[:3])
+@pytest.mark.parametrize("bend", ["cut", "changed", "another's", "bare"])
+def test_a_wrapped_share_that_comes_back_changed_leaves_nothing(
+    dealt, places, packings, tmp_path, monkeypatch, name, bend
+) -> None:
+    real = handover.read_back
+    other = next(one for one in HARBOUR[:3] if one != name)
+    instead = {
+        "another's": packings[other].pack(dealt.shares[HARBOUR.index(other)]),
+        "bare": dealt.shares[HARBOUR.index(name)].to_file(),
+    }
+
+    def changed(path, *, limit):
+        data = real(path, limit=limit)
+        if not Path(path).name.startswith(name):
+            return data
+        at = data.index(b'"sealed"') + 15
+        return {"cut": data[:-20], "changed": data[:at] + bytes([data[at] ^ 3]) + data[at + 1 :], **instead}[bend]
+
+    monkeypatch.setattr(handover, "read_back", changed)
+    with pytest.raises((VerificationError, ValueError)):
+        hand_over(dealt, *places, packings=packings)
+    assert files(tmp_path) == []
+
+
+@pytest.mark.parametrize("function", ["pack", "unpack"])
+@pytest.mark.parametrize("name", HARBOUR[:3])
+@pytest.mark.parametrize("error", ERRORS, ids=lambda error: type(error).__name__)
+def test_a_failure_in_packing_leaves_nothing(dealt, places, packings, tmp_path, function, name, error) -> None:
+    def stand_in(*_):
+        raise error
+
+    broken = dataclasses.replace(packings[name], **{function: stand_in})
+    with pytest.raises(type(error)):
+        hand_over(dealt, *places, packings={**packings, name: broken})
+    assert files(tmp_path) == []
+
+
+def test_the_shares_that_were_opened_to_be_tried_are_wiped(dealt, places, packings) -> None:
+    before = set(memory._open)
+    hand_over(dealt, *places, packings=packings)
+    assert set(memory._open) <= before
+
+
+COMPANIONS = {"policy.toml": b'label = "Tide archive"\n', "acknowledgements/north-pier.json": b"{}\n"}
+
+
+def test_files_beside_the_record_are_written_whole_and_private(dealt, places, tmp_path) -> None:
+    done = hand_over(dealt, *places, companions=COMPANIONS)
+    assert done.companions == {name: places[0] / name for name in COMPANIONS}
+    assert {name: path.read_bytes() for name, path in done.companions.items()} == COMPANIONS
+    assert {stat.S_IMODE(path.stat().st_mode) for path in done.companions.values()} == {0o600}
+
+
+def test_a_file_beside_the_record_that_is_there_already_is_kept(dealt, places, tmp_path) -> None:
+    places[0].mkdir()
+    (places[0] / "policy.toml").write_bytes(b"kept")
+    with pytest.raises(StorageError, match=r"policy\.toml: a file of another split"):
+        hand_over(dealt, *places, companions=COMPANIONS)
+    assert files(tmp_path) == ["set/policy.toml"]
+
+
+@pytest.mark.parametrize("at", range(4, 7))
+@pytest.mark.parametrize("function", ["write_new", "read_back"])
+def test_a_failure_at_a_file_beside_the_record_leaves_nothing(
+    dealt, places, tmp_path, monkeypatch, function, at
+) -> None:
+    """The fourth and fifth files are companions, the sixth the record."""
+    failing(monkeypatch, function, at, Failure())
+    with pytest.raises(Failure):
+        hand_over(dealt, *places, companions=COMPANIONS)
+    assert files(tmp_path) == []
+
+
+def test_a_file_beside_the_record_that_comes_back_changed_leaves_nothing(dealt, places, tmp_path, monkeypatch) -> None:
+    real = handover.read_back
+    monkeypatch.setattr(
+        handover, "read_back", lambda path, *, limit: real(path, limit=limit) + b" " * (Path(path).suffix == ".toml")
+    )
+    with pytest.raises(VerificationError, match="what is read back differs"):
+        hand_over(dealt, *places, companions=COMPANIONS)
+    assert files(tmp_path) == []

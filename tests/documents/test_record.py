@@ -1,21 +1,28 @@
 """Records: read strictly, refused where they contradict themselves.
 
-Checked against: FORMAT.md, sections 1 and 5. A record that was bent here gets a fingerprint that fits again, so that
-the rule under test is the one that refuses it.
+Checked against: FORMAT.md, sections 1, 5 and 9, for signatures by the reader written from its text alone
+(tests/vectors/make/wrapping_v1.py). A record that was bent here gets a fingerprint that fits again, so that the rule
+under test is the one that refuses it.
 """
 
 from __future__ import annotations
 
 import json
 from collections.abc import Callable
+from datetime import datetime, timedelta
+from pathlib import Path
 from typing import Any
 
 import pytest
+from cryptography.exceptions import InvalidSignature
+from parties import card, unlocked
 from strategies import CREATED, bits_flipped, crooked_split, flat
+from vectors.make import wrapping_v1 as by_hand
 
+from shares import clock
 from shares.documents.base import fingerprint
-from shares.documents.record import Record
-from shares.errors import DocumentError
+from shares.documents.record import MAX_SIGNATURES, Record
+from shares.errors import DocumentError, ParameterError
 from shares.sharing.rule import Rule
 
 TREE = Rule(2, (Rule(2, ("north-pier", "south-pier", "light-house")), "registrar", "dry-dock", "registrar"))
@@ -204,3 +211,182 @@ def test_a_fingerprint_has_one_spelling(record: Record) -> None:
     ):
         with pytest.raises(DocumentError, match="fingerprint"):
             Record.parse(json.dumps({**members, "fingerprint": spelling}).encode())
+
+
+# Signatures.
+
+LATER = CREATED + timedelta(minutes=10)
+Signer = tuple[str, str]
+DEALER: Signer = ("harbour-office", "dealer")
+WITNESS: Signer = ("registrar", "witness")
+
+
+def signed(record: Record, *signers: Signer, time: datetime = LATER) -> Record:
+    for name, role in signers:
+        with unlocked(name) as key:
+            record = record.signed(key, role, time=time)  # type: ignore[arg-type]
+    return record
+
+
+def signed_by_hand(record: Record, entry: dict[str, Any], name: str) -> dict[str, Any]:
+    """An entry of ``signatures`` signed anew, as the format says, by whoever has this party's key."""
+    members = by_hand.signed_of_record(json.loads(record.to_file()), entry)
+    with unlocked(name) as key:
+        return {**entry, "signature": by_hand.b64(key.sign("record", members))}
+
+
+@pytest.fixture(scope="module")
+def both(record: Record) -> Record:
+    return signed(record, DEALER, WITNESS)
+
+
+def test_a_signed_record_comes_back_from_its_file(record: Record, both: Record) -> None:
+    again = Record.parse(both.to_file())
+    assert again == both
+    assert again.to_file() == both.to_file()
+    assert [(one.card.name, one.role, one.time) for one in again.signatures] == [(*DEALER, LATER), (*WITNESS, LATER)]
+    assert [one.card for one in again.signatures] == [card(name) for name, _ in (DEALER, WITNESS)]
+
+
+def test_signing_changes_nothing_but_the_signatures(record: Record, both: Record) -> None:
+    assert both.fingerprint == record.fingerprint == both.own_fingerprint()
+    assert both.model_copy(update={"signatures": ()}) == record
+    assert record.signatures == ()
+
+
+def test_a_signature_is_over_what_the_format_says(both: Record) -> None:
+    members = json.loads(both.to_file())
+    for entry in members["signatures"]:
+        by_hand.verify(entry["card"], entry["signature"], "record", by_hand.signed_of_record(members, entry))
+        for change in ({"role": "auditor"}, {"time": "2026-12-01T07:10:01Z"}):
+            with pytest.raises(InvalidSignature):
+                by_hand.verify(
+                    entry["card"], entry["signature"], "record", by_hand.signed_of_record(members, entry | change)
+                )
+
+
+def test_a_record_signed_by_hand_is_read(record: Record) -> None:
+    entry = {
+        "role": "witness",
+        "time": "2026-12-01T08:00:00Z",
+        "card": json.loads(card("registrar").to_file()),
+    }
+    members = json.loads(record.to_file()) | {"signatures": [signed_by_hand(record, entry, "registrar")]}
+    assert Record.parse(json.dumps(members).encode()).signatures[0].card == card("registrar")
+
+
+def test_a_golden_signed_record_stays_readable_for_ever() -> None:
+    folder = Path(__file__).parents[1] / "vectors" / "golden" / "v1"
+    data = (folder / "wrapped" / "record.json").read_bytes()
+    found = Record.parse(data)
+    assert json.loads(found.to_file()) == json.loads(data)
+    assert [(one.card.name, one.role) for one in found.signatures] == [DEALER, WITNESS]
+    # The signatures were put onto the record of the flat set, which is as before.
+    assert found.fingerprint == Record.parse((folder / "flat" / "record.json").read_bytes()).fingerprint
+
+
+def entry_of(members: dict[str, Any], i: int) -> dict[str, Any]:
+    found = members["signatures"][i]
+    assert isinstance(found, dict)
+    return found
+
+
+def another_record(members: dict[str, Any]) -> None:
+    """The signatures of this record under another one's content."""
+    members["label"] += "!"
+    counted = {name: value for name, value in members.items() if name not in ("fingerprint", "signatures")}
+    members["fingerprint"] = fingerprint("record", counted)
+
+
+def exchange(name: str) -> Bend:
+    def bend(members: dict[str, Any]) -> None:
+        one, other = members["signatures"]
+        one[name], other[name] = other[name], one[name]
+
+    return bend
+
+
+def a_second_dealer(members: dict[str, Any]) -> None:
+    record = Record.parse(json.dumps({**members, "signatures": []}).encode())
+    entry = {**entry_of(members, 1), "role": "dealer"}
+    members["signatures"][1] = signed_by_hand(record, entry, "registrar")
+
+
+def the_same_later(members: dict[str, Any]) -> None:
+    record = Record.parse(json.dumps({**members, "signatures": []}).encode())
+    entry = {**entry_of(members, 1), "time": "2026-12-02T07:00:00Z"}
+    members["signatures"].append(signed_by_hand(record, entry, "registrar"))
+
+
+BENT_SIGNATURES: dict[str, tuple[Bend, str]] = {
+    "a role changed": (setting("signatures", 0, "role", to="witness"), "signature by harbour-office does not fit"),
+    "a time changed": (
+        setting("signatures", 1, "time", to="2026-12-01T07:10:01Z"),
+        "signature by registrar does not fit",
+    ),
+    "signatures exchanged": (exchange("signature"), "signature by harbour-office does not fit"),
+    "cards exchanged": (exchange("card"), "signature by registrar does not fit"),
+    "a signature of another record": (another_record, "signature by harbour-office does not fit"),
+    "a signature of zeros": (setting("signatures", 0, "signature", to="A" * 86), "signature by harbour-office"),
+    "a signature cut short": (setting("signatures", 0, "signature", to="A" * 82), "64 bytes"),
+    "a card altered": (setting("signatures", 1, "card", "name", to="dry-dock"), "fingerprint does not fit"),
+    "a card without its signature": (without("signatures", 1, "card", "signature"), "card.signature is missing"),
+    "an unknown role": (setting("signatures", 0, "role", to="auditor"), "role"),
+    "no role": (without("signatures", 0, "role"), "role is missing"),
+    "a local time": (setting("signatures", 0, "time", to="2026-12-01T07:10:00+01:00"), "time"),
+    "an unknown member": (setting("signatures", 0, "note", to="x"), "does not know"),
+    "the same signature twice": (
+        lambda m: m["signatures"].append(m["signatures"][1]),
+        "one party signed it twice as the same",
+    ),
+    "one party twice as witness": (the_same_later, "one party signed it twice as the same"),
+    "two dealers": (a_second_dealer, "more than one party signed it as its dealer"),
+    "65 signatures": (lambda m: m.update(signatures=m["signatures"][1:] * 65), "too long"),
+}
+
+
+@pytest.mark.parametrize("name", BENT_SIGNATURES)
+def test_a_record_with_a_wrong_signature_is_refused(both: Record, name: str) -> None:
+    bend, reason = BENT_SIGNATURES[name]
+    members = json.loads(both.to_file())
+    bend(members)
+    with pytest.raises(DocumentError, match=reason):
+        Record.parse(json.dumps(members).encode(), where="record.json")
+
+
+def test_every_flipped_bit_of_a_signed_record_is_refused() -> None:
+    """One in seven of them, so that every eighth bit of every byte has its turn somewhere."""
+    small = signed(crooked_split(b"x", flat(1, 2)).record, DEALER)
+    data = json.dumps(json.loads(small.to_file()), separators=(",", ":")).encode()
+    for bit, changed in bits_flipped(data):
+        if bit % 7 == 0:
+            with pytest.raises(DocumentError):
+                Record.parse(changed)
+
+
+def test_a_party_may_be_dealer_and_witness(record: Record) -> None:
+    made = signed(record, DEALER, (DEALER[0], "witness"))
+    assert Record.parse(made.to_file()).signatures == made.signatures
+
+
+def test_nobody_signs_twice_as_the_same(both: Record) -> None:
+    for signer in (DEALER, WITNESS):
+        with pytest.raises(ParameterError, match="twice as the same"):
+            signed(both, signer, time=LATER + timedelta(days=1))
+    with pytest.raises(ParameterError, match="more than one party signed it as its dealer"):
+        signed(both, ("registrar", "dealer"))
+
+
+def test_a_record_holds_64_signatures_and_no_more(record: Record) -> None:
+    assert MAX_SIGNATURES == 64
+    full = signed(record, *((f"pier {i}", "witness") for i in range(64)))
+    assert len(Record.parse(full.to_file()).signatures) == 64
+    with pytest.raises(ParameterError, match="at most 64 signatures"):
+        signed(full, DEALER)
+
+
+def test_a_signature_has_the_time_of_now(record: Record) -> None:
+    before = clock.now()
+    with unlocked("registrar") as key:
+        made = record.signed(key, "witness")
+    assert before <= made.signatures[0].time <= clock.now()

@@ -21,6 +21,7 @@ from typing import Any
 import record_cases_v1
 import recovery_cases_v1
 import share_cases_v1
+import wrapped_v1
 from cases_v1 import NOTES as REFUSALS
 from dealer_v1 import Dealing, Plan, canonical, deal, pretty, renew, satisfied, sha256, shake
 
@@ -99,6 +100,7 @@ NOTES = {
     "Length": "A secret whose length lies at an edge: of the padding, of the row, or of the check matrix.",
     "SecondEpoch": "A record that names the record of the epoch before.",
     "Unicode": "Quotation marks, and letters outside ASCII: canonical JSON escapes just what RFC 8785 does.",
+    **wrapped_v1.FLAGS,
 }
 
 SEEDS = (
@@ -231,6 +233,10 @@ def files() -> dict[str, str]:
         made[f"{name}.json"] = vectors(
             algorithm, name.split("_")[-1].replace("v1", name.split("_")[0]), REFUSALS, groups
         )
+    made |= {f"golden/v1/wrapped/{name}": text for name, text in wrapped_v1.files(flat).items()}
+    notes = {flag: valid_note(flag) for flag in wrapped_v1.FLAGS}
+    group = {"source": source("9 and 10"), "seed": wrapped_v1.SEED, "tests": wrapped_v1.tests(flat)}
+    made["wrapped_v1.json"] = vectors("opening of what is wrapped", "wrapped", notes, [group])
     return made
 
 

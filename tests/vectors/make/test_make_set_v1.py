@@ -22,7 +22,7 @@ HERE = Path(__file__).parent
 VECTORS = HERE.parent
 SETS = sorted(path for path in VECTORS.glob("set_v1_*.json") if path.stem != "set_v1_recover")
 HEADER = ("kind", "version", "set", "epoch", "custodian", "field", "paths", "secret_commitment", "encrypted_file")
-CASES = [VECTORS / name for name in ("share_v1.json", "record_v1.json", "set_v1_recover.json")]
+CASES = [VECTORS / name for name in ("share_v1.json", "record_v1.json", "set_v1_recover.json", "wrapped_v1.json")]
 
 
 @pytest.fixture(scope="module")
@@ -83,7 +83,7 @@ def test_a_second_run_writes_the_same_bytes(made):
     patterns = ("*_v1*.json", "golden/v1/**/*.json")
     kept = {path.relative_to(VECTORS) for pattern in patterns for path in VECTORS.glob(pattern)}
     assert written == kept
-    assert len(written) == len(SETS) + len(CASES) + 13
+    assert len(written) == len(SETS) + len(CASES) + 13 + 9
     for name in written:
         assert (made / name).read_bytes() == (VECTORS / name).read_bytes(), name
 
