@@ -16,7 +16,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
-from shares.custody.encrypted_file import Progress, digest_of, encrypt_file
+from shares.custody.encrypted_file import Progress, check_file, digest_of, encrypt_file
 from shares.custody.payload import MAX_SECRET
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
@@ -56,6 +56,7 @@ def sourced(source: StrPath, set_folder: Path, *, encrypt: bool, progress: Progr
 
     Raises:
         StorageError: a file cannot be read or written.
+        VerificationError: what was written does not read back.
         ParameterError: the secret is empty.
     """
     set_id = secrets.token_bytes(16)
@@ -68,6 +69,7 @@ def sourced(source: StrPath, set_folder: Path, *, encrypt: bool, progress: Progr
     key, digest = encrypt_file(source, target, set_id, progress=progress)
     try:
         with key:
+            check_file(target, key, digest, set_id)  # Nothing is called done unread.
             yield Source(key, set_id, digest)
     except BaseException:
         discard(target)
