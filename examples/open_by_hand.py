@@ -1,7 +1,7 @@
 #!/usr/bin/env python3
 """Open an encrypted file with its recovered key, with Python's standard library alone.
 
-    python3 open_by_hand.py KEY ENCRYPTED SHARE --to FILE    (FILE is new and yours alone; or --check, which writes none)
+    python3 open_by_hand.py KEY ENCRYPTED SHARE --to FILE   (FILE is new and yours alone; or --check, which writes none)
 
 KEY is the file of 32 bytes that recover_by_hand.py made; SHARE any share of the set, or its record. By FORMAT.md, sec.
 13: a first pass checks the digest that the share names and every chunk's tag (NIST SP 800-38D); only then is a byte

@@ -18,13 +18,17 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from shares.custody.handover import HandedOver, hand_over
+    from shares.custody.packing import Packing
     from shares.custody.presented import Finding, Presented, Status, load_record, load_shares
     from shares.custody.recover import Recovery, recover
     from shares.custody.selftest import selftest
     from shares.custody.split import Dealt, flat_rule, split
     from shares.custody.verify import examine, examine_alone, verify_share
+    from shares.documents.party import PartyCard, PartyKey, new_party
+    from shares.documents.policy import Policy
     from shares.documents.record import Record
     from shares.documents.share import Share
+    from shares.documents.wrapped_share import WrappedShare
     from shares.errors import (
         NotEnoughSharesError,
         ParameterError,
@@ -39,13 +43,17 @@ __version__ = "0.1.0"
 
 _HOMES = {
     "custody.handover": ("HandedOver", "hand_over"),
+    "custody.packing": ("Packing",),
     "custody.presented": ("Finding", "Presented", "Status", "load_record", "load_shares"),
     "custody.recover": ("Recovery", "recover"),
     "custody.selftest": ("selftest",),
     "custody.split": ("Dealt", "flat_rule", "split"),
     "custody.verify": ("examine", "examine_alone", "verify_share"),
+    "documents.party": ("PartyCard", "PartyKey", "new_party"),
+    "documents.policy": ("Policy",),
     "documents.record": ("Record",),
     "documents.share": ("Share",),
+    "documents.wrapped_share": ("WrappedShare",),
     "errors": ("NotEnoughSharesError", "ParameterError", "SharesError", "VerificationError"),
     "field.gf256": ("Field",),
     "memory": ("Secret",),
@@ -59,7 +67,11 @@ __all__ = [
     "Finding",
     "HandedOver",
     "NotEnoughSharesError",
+    "Packing",
     "ParameterError",
+    "PartyCard",
+    "PartyKey",
+    "Policy",
     "Presented",
     "Record",
     "Recovery",
@@ -69,12 +81,14 @@ __all__ = [
     "SharesError",
     "Status",
     "VerificationError",
+    "WrappedShare",
     "examine",
     "examine_alone",
     "flat_rule",
     "hand_over",
     "load_record",
     "load_shares",
+    "new_party",
     "recover",
     "selftest",
     "split",

@@ -33,6 +33,8 @@ from shares.streams import StrPath as StrPath
 _CHUNK: Final = 65536
 _PARTIAL: Final = re.compile(r"\..+\.[0-9a-f]{16}\.partial", re.DOTALL)
 
+_CHECK: Final = "check that it is the right file"
+
 
 def read_file(path: StrPath, *, limit: int) -> bytes:
     """Read a regular file whole; links, folders and special files are refused without waiting on them.
@@ -69,12 +71,13 @@ def read_back(path: StrPath, *, limit: int) -> bytes:
     return _read(path, limit, fresh=True)
 
 
-def read_secret(source: StrPath, *, limit: int) -> Secret:
+def read_secret(source: StrPath, *, limit: int, if_larger: str = _CHECK) -> Secret:
     """Read secret bytes straight into locked memory; no Python copy of them is made.
 
     Args:
         source: a path, or ``-`` for standard input (a file of that name is ``./-``).
         limit: the most bytes accepted, 0 or more.
+        if_larger: what to do about a source that gives more, for the refusal.
 
     Returns:
         A new secret of 0 to ``limit`` bytes; whether an empty one makes sense is the caller's to say.
@@ -83,7 +86,7 @@ def read_secret(source: StrPath, *, limit: int) -> Secret:
         StorageError: the source is missing, a folder, a terminal, unreadable, or larger than ``limit``.
     """
     with secret_source(source) as reader:
-        return _read_secret(reader, limit)
+        return _read_secret(reader, limit, if_larger)
 
 
 def write_new(path: StrPath, data: Octets, *, secret: bool) -> None:
@@ -180,7 +183,7 @@ def _read(path: StrPath, limit: int, *, fresh: bool) -> bytes:
     return b"".join(parts)
 
 
-def _read_secret(reader: Reader, limit: int) -> Secret:
+def _read_secret(reader: Reader, limit: int, if_larger: str) -> Secret:
     # The room starts at a page and doubles, since lockable memory is scarce and most secrets are short.
     room, length = Secret(min(4096, limit + 1)), 0
     try:
@@ -188,7 +191,7 @@ def _read_secret(reader: Reader, limit: int) -> Secret:
             with room.view() as view, view[length:] as free:
                 length += reader.fill(free)
             if length > limit:
-                raise _too_large(reader.where, limit)
+                raise _too_large(reader.where, limit, if_larger)
             with room.view() as view, view[:length] as filled:
                 if length < len(room):
                     return Secret.of(filled)
@@ -201,5 +204,5 @@ def _read_secret(reader: Reader, limit: int) -> Secret:
         room.close()
 
 
-def _too_large(where: str, limit: int) -> StorageError:
-    return StorageError(f"is larger than {limit:,} bytes", where=where, hint="check that it is the right file")
+def _too_large(where: str, limit: int, hint: str = _CHECK) -> StorageError:
+    return StorageError(f"is larger than {limit:,} bytes", where=where, hint=hint)

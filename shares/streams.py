@@ -95,10 +95,14 @@ class Reader:
                 filled += count
         return filled
 
-    def rewind(self) -> None:
-        """Go back to the start of a regular file."""
+    def go_to(self, place: int) -> None:
+        """Read on from a place in a regular file, in bytes from its start.
+
+        Raises:
+            StorageError: the system refuses, as for a pipe.
+        """
         with refusing(self.where):
-            os.lseek(self.descriptor, 0, os.SEEK_SET)
+            os.lseek(self.descriptor, place, os.SEEK_SET)
 
     def check_unchanged(self, read: int) -> None:
         """Refuse a regular file that was written to since it was opened, so that what was read may be two halves.

@@ -7,6 +7,7 @@ Everything here is made up: no secret in the tests protects anything. The dealer
 from __future__ import annotations
 
 import itertools
+import json
 import secrets
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from datetime import UTC, datetime
@@ -235,3 +236,95 @@ def satisfies(rule: Rule, held: set[Path], path: Path = ()) -> bool:
 def points_of(dealing: Dealing) -> list[Point]:
     """All points of a dealing, custodian by custodian."""
     return [point for points in dealing.points.values() for point in points]
+
+
+# Policies: as the data that a TOML reader would give, and as text.
+
+PEOPLE = ("keeper one", "keeper two", "keeper three", "keeper four")
+SITES = ("pier house", "dock house", "light house")
+MANAGERS = ("harbour master", "board of the trust", "keeper one")
+
+
+@st.composite
+def policies(draw: st.DrawFn, *, most: int = 6, heaviest: int = 3) -> dict[str, Any]:
+    """Policies of up to ``most`` custodians and three groups, each a part of those after it; all of them used."""
+    names = HARBOUR[: draw(st.integers(1, most))]
+    custodians = [
+        {
+            "name": name,
+            "person": draw(st.sampled_from(PEOPLE)),
+            "site": draw(st.sampled_from(SITES)),
+            "reports_to": draw(st.sampled_from(MANAGERS)),
+            "weight": draw(st.one_of(st.just(1), st.integers(1, heaviest))),
+        }
+        for name in names
+    ]
+    weights = {custodian["name"]: custodian["weight"] for custodian in custodians}
+    nodes: dict[str, dict[str, Any]] = {}
+    for name in [*("east", "west", "all")[: draw(st.integers(0, 3))], "rule"]:
+        choice = [*names, *nodes]
+        chosen = draw(st.lists(st.sampled_from(choice), min_size=1, max_size=4, unique=True))
+        if name == "rule":
+            used = {child for node in nodes.values() for child in node["from"]}
+            chosen += [child for child in choice if child not in used and child not in chosen]
+        total = sum(weights.get(child, 1) for child in chosen)
+        nodes[name] = {"need": draw(st.one_of(st.just(1), st.just(total), st.integers(1, total))), "from": chosen}
+    rule = nodes.pop("rule")
+    return {"label": "Tide archive", "custodian": custodians, "group": nodes, "rule": rule}
+
+
+def toml_of(data: dict[str, Any]) -> bytes:
+    """Write policy data as TOML; the JSON forms of text, numbers, booleans and lists are TOML as well."""
+
+    def lines(table: dict[str, Any]) -> str:
+        plain = {key: value for key, value in table.items() if not isinstance(value, dict) and key != "custodian"}
+        return "".join(f"{key} = {json.dumps(value, ensure_ascii=False)}\n" for key, value in plain.items())
+
+    text = lines(data)
+    for custodian in data.get("custodian", []):
+        text += f"[[custodian]]\n{lines(custodian)}"
+    for name, group in data.get("group", {}).items():
+        text += f"[group.{json.dumps(name, ensure_ascii=False)}]\n{lines(group)}"
+    return (text + f"[rule]\n{lines(data['rule'])}" if "rule" in data else text).encode()
+
+
+def authorised(data: dict[str, Any], held: Iterable[str], node: dict[str, Any] | None = None) -> bool:
+    """Say whether custodians satisfy a policy, by its data alone: a name counts for its weight, a group for one."""
+    held, node = set(held), node or data["rule"]
+    weights = {custodian["name"]: custodian["weight"] for custodian in data["custodian"]}
+    met = 0
+    for name in node["from"]:
+        if name in weights:
+            met += weights[name] if name in held else 0
+        else:
+            met += authorised(data, held, data["group"][name])
+    return met >= node["need"]
+
+
+def sets_of(things: Iterable[str]) -> list[frozenset[str]]:
+    """Every set of them, the empty one first."""
+    different = list(dict.fromkeys(things))
+    return [
+        frozenset(chosen) for size in range(len(different) + 1) for chosen in itertools.combinations(different, size)
+    ]
+
+
+def minimal_by_trying(rule: Rule, label_of: dict[str, str]) -> set[frozenset[str]]:
+    """Every minimal satisfying set of labels, found by trying all sets, with the rule followed by hand."""
+    paths = rule.paths()
+    satisfying = [
+        chosen
+        for chosen in sets_of(label_of[name] for name in paths)
+        if satisfies(rule, {path for name in paths if label_of[name] in chosen for path in paths[name]})
+    ]
+    return {chosen for chosen in satisfying if not any(other < chosen for other in satisfying)}
+
+
+@st.composite
+def labelled(draw: st.DrawFn) -> tuple[Rule, dict[str, str]]:
+    """A rule and labels of its custodians: sometimes their own names, sometimes shared."""
+    rule = draw(rules(most=12))
+    names = list(rule.paths())
+    if draw(st.booleans()):
+        return rule, {name: name for name in names}
+    return rule, {name: draw(st.sampled_from("ABCDE")) for name in names}

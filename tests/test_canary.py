@@ -31,7 +31,8 @@ from parties import QUICK, by, card
 from strategies import crooked_split, flat, presented, resealed, revealed, with_rows
 
 from shares.cli.passphrases import GivenPassphrases
-from shares.custody.deliver import sealed_for, to_command, to_file
+from shares.custody.deliver import fed, sealed_for, to_command, to_file
+from shares.custody.encrypted_file import check_file, encrypt_file, open_file
 from shares.custody.handover import hand_over
 from shares.custody.opening import Opening
 from shares.custody.packing import Packing
@@ -48,12 +49,13 @@ from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
 from shares.documents.wrapping import Cost, card_sealer, passphrase_sealer
-from shares.errors import SharesError
+from shares.errors import SharesError, StorageError
 from shares.field.gf256 import Field
 from shares.memory import Secret
 from shares.sharing.rule import Rule, recover_payload
 from shares.sharing.shamir import evaluate, interpolate
 from shares.storage import read_secret, write_new
+from shares.streams import new_file
 
 CANARY = b"CANARY-7f3a9c51e2-Wq8zK4-not-a-real-key-\x00\xff\xfe\x80"
 
@@ -246,6 +248,10 @@ def share_edits(place: Place) -> list[bytes]:
     return edits
 
 
+def refuse_to_go_on(done: int, total: int | None) -> None:
+    raise StorageError("it is stopped")
+
+
 def failing_paths(place: Place, folder: Path) -> Iterator[tuple[str, Callable[[], object]]]:
     """Every way in which the library refuses with the secret, or shares of it, in its hands."""
     secret = Secret.of(CANARY)
@@ -275,6 +281,26 @@ def failing_paths(place: Place, folder: Path) -> Iterator[tuple[str, Callable[[]
     yield "command takes nothing", lambda: to_command(secret, ["false"])
     (folder / "long").write_bytes(CANARY * 10)
     yield "source too large", lambda: read_secret(folder / "long", limit=20)
+
+    # A large secret, and its key.
+    source, file = folder / "large", folder / "large.encrypted"
+    source.write_bytes(CANARY * 100)
+    key, digest = encrypt_file(source, file, bytes(16))
+    file.with_suffix(".cut").write_bytes(file.read_bytes()[:-1])
+    (folder / "empty").write_bytes(b"")
+    yield "large secret empty", lambda: encrypt_file(folder / "empty", folder / "new", bytes(16))
+    yield "large secret to a taken name", lambda: encrypt_file(source, taken, bytes(16))
+    yield "large secret stopped", lambda: encrypt_file(source, folder / "new", bytes(16), progress=refuse_to_go_on)
+    yield "secret as a key", lambda: check_file(file, secret, digest, bytes(16))
+    yield "secret of a key's length", lambda: check_file(file, Secret.of(CANARY[:32]), digest, bytes(16))
+    yield "another digest", lambda: check_file(file, key, bytes(32), bytes(16))
+    for what, path in {"encrypted file": file, "cut encrypted file": file.with_suffix(".cut")}.items():
+        for how, sink in {
+            "a taken name": new_file(taken, secret=True),
+            "a failing command": fed(["sh", "-c", "cat >/dev/null; exit 3"]),
+            "no command": fed(["no-such-command"]),
+        }.items():
+            yield f"{what} to {how}", lambda p=path, s=sink: open_file(p, key, digest, bytes(16), s)
 
     # The holder.
     yield "secret formatted", lambda: f"{secret:x}"

@@ -69,6 +69,53 @@ def run_script(script: str, *options: str) -> str:
 # What it holds.
 
 
+# Drawing.
+
+
+def test_what_is_drawn_is_fresh() -> None:
+    drawn = [Secret.drawn(32) for _ in range(100)]
+    assert len({content(secret) for secret in drawn}) == 100
+    assert {len(secret) for secret in drawn} == {32}
+
+
+def test_every_byte_is_drawn() -> None:
+    """Each place takes both values of each bit in 64 draws, but for a chance of 2^-51."""
+    ones, zeros = bytearray(256), bytearray(256)
+    for _ in range(64):
+        with Secret.drawn(256) as secret:
+            for i, byte in enumerate(content(secret)):
+                ones[i] |= byte
+                zeros[i] |= byte ^ 255
+    assert ones == zeros == b"\xff" * 256
+
+
+@pytest.mark.parametrize("length", [0, 1, 256])
+def test_as_many_bytes_are_drawn_as_asked_for(length: int) -> None:
+    assert len(content(Secret.drawn(length))) == length
+
+
+@pytest.mark.parametrize("length", [-1, 257])
+def test_no_other_number_of_bytes_is_drawn(length: int) -> None:
+    with pytest.raises(ParameterError, match="0 to 256"):
+        Secret.drawn(length)
+
+
+def test_a_system_without_random_bytes_is_an_error(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Never zeros for a key."""
+    for answer in (-1, 0, 31):
+
+        class Poor:
+            @staticmethod
+            def getrandom(*_: object, answer: int = answer) -> int:
+                return answer
+
+        with monkeypatch.context() as patch:
+            patch.setattr(memory, "_libc", lambda: Poor)
+            patch.setattr(memory, "_lock", lambda mapping: None)
+            with pytest.raises(OSError, match="random"):
+                Secret.drawn(32)
+
+
 @given(st.binary(max_size=9000))
 def test_bytes_come_back(data: bytes) -> None:
     for given_as in (data, bytearray(data), memoryview(data)):

@@ -11,6 +11,7 @@ from shares.custody.duties import digest_of_form
 from shares.custody.parties import load_key
 from shares.documents.acknowledgement import DUTIES, Acknowledgement
 from shares.errors import ParameterError
+from shares.paper.sheet import make_form
 from shares.storage import write_new
 
 
@@ -21,6 +22,7 @@ from shares.storage import write_new
 )
 @click.option("--key", "key_file", metavar="KEY", callback=filled, help="Sign with this party key, the custodian's.")
 @click.option("--form", "scan", metavar="SCAN", callback=filled, help="Enter the scan of a form signed by hand.")
+@click.option("--page", is_flag=True, help="Write the form itself, to be printed and signed by hand.")
 @click.option("--to", "target", required=True, metavar="FILE", callback=filled, help="New file.")
 @passphrase_options
 @json_option
@@ -29,12 +31,15 @@ def command(
     label: str,
     key_file: str | None,
     scan: str | None,
+    page: bool,
     target: str,
     passphrase_files: tuple[str, ...],
     descriptors: tuple[str, ...],
     as_json: bool,
 ) -> None:
     """Accept a custodian's duties, before the share is handed over: by signature, or by a form signed by hand.
+
+    --key signs; --page writes the form to print, and --form enters its scan once it is signed.
 
     The duties are shown and stand in the file. A policy with `acknowledgement = true` has `split` ask for one of each
     custodian (--acknowledged FILE).
@@ -43,21 +48,25 @@ def command(
     Examples:
       shares acknowledge --label "Tide archive root" --key north-pier.key.json --to north-pier.ack.json \\
         --passphrase-file north-pier.passphrase
+      shares acknowledge --label "Tide archive root" --custodian south-pier --page --to form.html
       shares acknowledge --label "Tide archive root" --custodian south-pier --form scan.pdf --to south-pier.ack.json
     """
-    if (key_file is None) == (scan is None):
-        raise ParameterError("give exactly one of --key KEY and --form SCAN", hint="see --help")
+    if (key_file is not None) + (scan is not None) + page != 1:
+        raise ParameterError("give exactly one of --key KEY, --page and --form SCAN", hint="see --help")
+    if key_file is None and custodian is None:
+        raise ParameterError("--custodian NAME is needed", hint="neither a form nor a scan says whose it is")
+    if page:
+        _write_form(custodian or "", label, target, as_json=as_json)
+        return
     if key_file is not None:
         key = load_key(key_file)
         with opening((), passphrase_files, descriptors) as at_hand:
             made = Acknowledgement.signed_by(at_hand.party(key), custodian=custodian or key.card.name, label=label)
         how = f"signed by {key.card.name}, card {key.card.fingerprint}"
-    elif scan is not None and custodian is not None:
-        digest = digest_of_form(scan)
-        made = Acknowledgement.of_form(digest, custodian=custodian, label=label)
-        how = f"on a form whose scan has SHA-256 {digest.hex()}; keep the form and the scan"
     else:
-        raise ParameterError("--form needs --custodian NAME", hint="a scan does not say whose it is")
+        digest = digest_of_form(scan or "")
+        made = Acknowledgement.of_form(digest, custodian=custodian or "", label=label)
+        how = f"on a form whose scan has SHA-256 {digest.hex()}; keep the form and the scan"
     write_new(target, made.to_file(), secret=False)
     lines = [
         f"Acknowledged: the duties of {made.custodian} for {made.label}, {how}, in {target}.",
@@ -69,3 +78,12 @@ def command(
         lines,
         as_json=as_json,
     )
+
+
+def _write_form(custodian: str, label: str, target: str, *, as_json: bool) -> None:
+    write_new(target, make_form(custodian, label), secret=False)
+    lines = [
+        f"The form for {custodian} to sign is in {target}.",
+        "Next: print it from a browser; have it signed before a witness; scan it, and enter the scan with --form.",
+    ]
+    print_result({"done": True, "file": target, "custodian": custodian, "label": label}, lines, as_json=as_json)

@@ -33,6 +33,8 @@ COMMANDS = {
     "acknowledge": ("acknowledge", "Accept a custodian's duties, before the share is handed over."),
     "split": ("split", "Split a secret into shares, and check that they recover it."),
     "verify": ("verify", "Check each share alone, without any secret."),
+    "sheet": ("sheet", "Print a share: lines to type, a QR code, and a receipt."),
+    "transcribe": ("transcribe", "Read a printed share back, typed or scanned."),
     "recover": ("recover", "Recover a secret from enough shares."),
     "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
     "unwrap": ("unwrap", "Open a wrapped share, or a secret recovered for your card."),

@@ -23,6 +23,10 @@ from shares.errors import CommandFailedError, ParameterError, SharesError, Stora
 
 Given = TypeVar("Given")
 
+# A bar of so many places is shown after so many seconds, and anew after each pause; where the end is not known, a line
+# after each long one.
+_QUIET, _PAUSE, _LONG_PAUSE, _BAR = 2.0, 0.1, 10.0, 24
+
 json_option = click.option("--json", "as_json", is_flag=True, help="Print the result as one JSON object.")
 
 
@@ -105,21 +109,36 @@ def _printable(line: str) -> str:
     return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in line)
 
 
-def progress(what: str, stop_here: Callable[[], None]) -> Callable[[int, int], None]:
-    """Return a callback that shows progress on a terminal once the work has taken two seconds.
+def progress(what: str, unit: str, stop_here: Callable[[], None] | None = None) -> Callable[[int, int | None], None]:
+    """Return a callback that draws a bar on a terminal once the work has taken two seconds.
 
     Args:
         what: the work, in words.
+        unit: what is counted.
         stop_here: called each time; raises where the work is to stop.
+
+    Returns:
+        A function of what is done and what there is to do; the latter is None where it is not known.
     """
     start = time.monotonic()
+    shown = start + _QUIET - _PAUSE
 
-    def show(done: int, total: int) -> None:
-        stop_here()
-        spent = time.monotonic() - start
-        if spent > 2 and sys.stderr.isatty():
-            left = spent / max(done, 1) * (total - done)
-            end = "\r" if done + 1 < total else "\n"
-            click.echo(f"{what}: {done + 1:,} of {total:,}, about {left:.0f} s left   {end}", err=True, nl=False)
+    def show(done: int, total: int | None) -> None:
+        nonlocal shown
+        if stop_here:
+            stop_here()
+        now = time.monotonic()
+        is_last = done + 1 == total
+        pause = _LONG_PAUSE if total is None else _PAUSE
+        if (now - shown < pause and not (is_last and shown > start + _QUIET)) or not sys.stderr.isatty():
+            return
+        shown = now
+        if total is None:
+            click.echo(f"{what}: {done + 1:,} {unit} so far", err=True)
+        else:
+            left = (now - start) / max(done, 1) * (total - done)
+            bar = "=" * (_BAR * (done + 1) // total)
+            line = f"{what}: [{bar:.<{_BAR}}] {done + 1:,} of {total:,} {unit}, about {left:.0f} s left"
+            click.echo(f"{line}   {chr(10) if is_last else chr(13)}", err=True, nl=False)
 
     return show

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 import click
@@ -102,7 +103,7 @@ def _quorum_lines(plan: Plan) -> Iterator[str]:
 
 def _counted(count: Bounds) -> str:
     """Write a number that may have hundreds of digits."""
-    low, high = (f"{n:,}" if n < 10**15 else f"about 10^{len(str(n)) - 1}" for n in count)
+    low, high = (f"{n:,}" if n < 10**15 else f"about 10^{round(math.log10(n))}" for n in count)
     return low if count.exact else f"{low} to {high}"
 
 

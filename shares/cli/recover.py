@@ -9,16 +9,19 @@ from pathlib import Path
 import click
 
 from shares.cli.keys import key_option, opening, suite_option
-from shares.cli.output import filled, json_option, print_result, prose, warn
+from shares.cli.output import filled, json_option, print_result, progress, prose, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
+from shares.custody.deliver import fed as fed_command
 from shares.custody.deliver import sealed_for, to_command, to_file
+from shares.custody.encrypted_file import check_file, open_file
 from shares.custody.parties import load_card
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
 from shares.documents.wrapping import Suite
 from shares.errors import ParameterError, StorageError
 from shares.storage import leftovers, write_new
+from shares.streams import new_file
 
 # By number: a stream of this program may be missing where the descriptor is not.
 STANDARD_ERROR = 2
@@ -66,6 +69,13 @@ class _FeedsCommand(click.Command):
     callback=filled,
     help="With --to: write it encrypted to the party of this card, who opens it with unwrap.",
 )
+@click.option(
+    "--encrypted",
+    "encrypted_file",
+    metavar="FILE",
+    callback=filled,
+    help="The encrypted file whose key the shares hold, where the secret was encrypted.",
+)
 @suite_option
 @key_option
 @passphrase_options
@@ -78,6 +88,7 @@ def command(
     target: str | None,
     check: bool,
     receiver: str | None,
+    encrypted_file: str | None,
     suite: Suite,
     keys: tuple[str, ...],
     passphrase_files: tuple[str, ...],
@@ -118,6 +129,7 @@ def command(
     record = load_record(record_file) if record_file is not None else None
     with opening(keys, passphrase_files, descriptors) as at_hand:
         recovery = recover(load_shares(files, at_hand.share), record)
+    _require_encrypted(recovery, encrypted_file, optional=card is not None)
     if not as_json:
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
@@ -134,17 +146,59 @@ def command(
         f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"
     )
     with contextlib.ExitStack() as stack:
-        secret = stack.enter_context(recovery.secret)
-        if target is not None:
+        stack.enter_context(recovery.secret)
+        if target is not None and encrypted_file is None:
             stack.enter_context(held_signals())
-            if card is None:
-                to_file(secret, Path(target))
-            else:
-                write_new(target, sealed_for(card, recovery, suite), secret=True)
+        if card is not None and target is not None:
+            _check_encrypted(recovery, encrypted_file)
+            write_new(target, sealed_for(card, recovery, suite), secret=True)
+        elif encrypted_file is not None:
+            _open_encrypted(recovery, encrypted_file, target, fed, aside=as_json)
+        elif target is not None:
+            to_file(recovery.secret, Path(target))
         elif fed:
-            to_command(secret, fed, output=STANDARD_ERROR if as_json else None)
+            to_command(recovery.secret, fed, output=STANDARD_ERROR if as_json else None)
         members, lines = _members(recovery, went, against), _lines(recovery, went, against)
         print_result(members, lines, as_json=as_json, aside=bool(fed))
+
+
+def _require_encrypted(recovery: Recovery, encrypted_file: str | None, *, optional: bool) -> None:
+    """Refuse where the encrypted file is missing, or where there is none."""
+    is_key = recovery.share.encrypted_file is not None
+    problem = None
+    if encrypted_file is not None and not is_key:
+        problem = "these shares hold the secret itself, and no key of an encrypted file"
+        hint = "leave --encrypted out"
+    elif encrypted_file is None and is_key and not optional:
+        problem = "these shares hold the key of an encrypted file, and that file is needed too"
+        hint = "give it with --encrypted FILE; `split` wrote it beside the record"
+    if problem:
+        recovery.secret.close()
+        raise ParameterError(problem, where="--encrypted", hint=hint)
+
+
+def _check_encrypted(recovery: Recovery, encrypted_file: str | None) -> None:
+    share = recovery.share
+    if encrypted_file is not None and share.encrypted_file is not None:
+        shown = progress("Checking", "MiB")
+        check_file(encrypted_file, recovery.secret, share.encrypted_file, share.set, progress=shown)
+
+
+def _open_encrypted(
+    recovery: Recovery, encrypted_file: str, target: str | None, fed: list[str] | None, *, aside: bool
+) -> None:
+    """Open the encrypted file with the recovered key: into a new file, a command, or nowhere."""
+    share = recovery.share
+    if target is None and not fed:
+        _check_encrypted(recovery, encrypted_file)
+        return
+    sink = (
+        new_file(target, secret=True)
+        if target is not None
+        else fed_command(fed or [], output=STANDARD_ERROR if aside else None)
+    )
+    shown = progress("Checking, then opening", "MiB")
+    open_file(encrypted_file, recovery.secret, share.encrypted_file or b"", share.set, sink, progress=shown)
 
 
 def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
@@ -154,6 +208,7 @@ def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
         "set": share.set.hex(),
         "epoch": share.epoch,
         "label": recovery.label,
+        "encrypted_file": share.encrypted_file.hex() if share.encrypted_file is not None else None,
         "used": list(recovery.used),
         "checked_against": against,
         "secret": went,

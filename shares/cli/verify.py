@@ -5,8 +5,9 @@ from __future__ import annotations
 import click
 
 from shares.cli.keys import key_option, opening
-from shares.cli.output import filled, json_option, print_result, prose
+from shares.cli.output import filled, json_option, print_result, progress, prose
 from shares.cli.passphrases import passphrase_options
+from shares.custody.large import check_encrypted
 from shares.custody.parties import load_card
 from shares.custody.presented import Finding, Presented, Status, load_record, load_shares
 from shares.custody.verify import examine, examine_alone
@@ -20,7 +21,7 @@ WITH_RECORD = (
     "Nor does it prove that the dealing holds the right secret: only a recovery does."
 )
 UNSIGNED = "It does not prove who made that record: compare the fingerprint with the one read aloud at the split. "
-SIGNED = "Who made that record is proved as far as you know whose the signers' cards are. "
+SIGNED = "It proves who made that record only as far as you know whose card each signer's is. "
 WITHOUT_RECORD = (
     "Without a record this shows only that no accident befell these files and that they agree with one another. "
     "It does not prove that they are the shares that were dealt, nor that they recover anything: "
@@ -49,6 +50,13 @@ NEXT = {
     callback=filled,
     help="A party card whose fingerprint you have compared: the record must be signed by one such party.",
 )
+@click.option(
+    "--encrypted",
+    "encrypted_file",
+    metavar="FILE",
+    callback=filled,
+    help="With --record: check this encrypted file against it as well, without any key.",
+)
 @key_option
 @passphrase_options
 @json_option
@@ -58,6 +66,7 @@ def command(
     files: tuple[str, ...],
     record_file: str | None,
     trusted_files: tuple[str, ...],
+    encrypted_file: str | None,
     keys: tuple[str, ...],
     passphrase_files: tuple[str, ...],
     descriptors: tuple[str, ...],
@@ -77,12 +86,14 @@ def command(
       shares verify registrar.wrapped.json --record record.json --trust harbour-office.card.json \\
         --key registrar.key.json --passphrase-file registrar.passphrase
     """
-    if record_file is None and (trusted_files or not files):
+    if record_file is None and (trusted_files or encrypted_file or not files):
         raise ParameterError("there is nothing to check", hint="give a SHARE, or --record R, or both; see --help")
     record = load_record(record_file) if record_file is not None else None
     trusted = [load_card(path) for path in trusted_files]
     with opening(keys, passphrase_files, descriptors) as at_hand:
         presented = load_shares(files, at_hand.share)
+    if record and encrypted_file is not None:
+        check_encrypted(encrypted_file, record, progress=progress("Checking the encrypted file", "MiB"))
     findings = examine(presented, record) if record else examine_alone(presented)
     repeated = _repeated(presented)
     signed = bool(record and record.signatures)
@@ -96,6 +107,7 @@ def command(
         "done": code == 0,
         "exit": code,
         "record": record.fingerprint if record else None,
+        "encrypted_file": encrypted_file,
         "signatures": _signatures(record, trusted) if record else None,
         "shares": [
             {"file": f.source, "custodian": f.custodian, "status": f.status.value, "reason": f.reason} for f in findings
@@ -103,7 +115,10 @@ def command(
         "repeated": [presented[i].source for i in repeated],
         "proves": proves if any(f.status is Status.INTACT for f in findings) else None,
     }
-    print_result(members, _lines(findings, repeated, record, trusted, proves), as_json=as_json)
+    lines = _lines(findings, repeated, record, trusted, proves)
+    if encrypted_file is not None:
+        lines.insert(0, f"{encrypted_file}: intact - the encrypted file that the record names, whole")
+    print_result(members, lines, as_json=as_json)
     ctx.exit(code)
 
 

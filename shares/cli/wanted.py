@@ -12,22 +12,22 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from shares.cli.keys import cards_by_name
-from shares.custody.duties import check_acknowledged
 from shares.custody.parties import load_card
 from shares.custody.payload import DEFAULT_PAD
 from shares.custody.split import flat_rule
-from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import MAX_FILE
 from shares.documents.party import PartyCard
-from shares.documents.policy import Policy
 from shares.errors import ParameterError
 from shares.field.gf256 import DEFAULT_MODULUS, Field
 from shares.field.polynomial import Polynomial
-from shares.planning.examine import examine
 from shares.sharing.rule import Rule
 from shares.storage import read_file
+
+if TYPE_CHECKING:
+    from shares.documents.acknowledgement import Acknowledgement
 
 POLICY_NAME = "policy.toml"
 ACKNOWLEDGEMENTS = "acknowledgements"
@@ -98,6 +98,11 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
         DocumentError: the policy, or a card or acknowledgement, is not one.
         VerificationError: the policy is strict and a serious finding stands; or an acknowledgement is missing or wrong.
     """
+    # Imported late: the short options need nothing of it, and a split is to start quickly.
+    from shares.custody.duties import check_acknowledged
+    from shares.documents.policy import Policy
+    from shares.planning.examine import examine
+
     policy = Policy.parse(read_file(path, limit=MAX_FILE), where=path)
     plan = examine(policy)
     plan.require_sound()
@@ -113,11 +118,17 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
     beside = {POLICY_NAME: policy.text} | {
         f"{ACKNOWLEDGEMENTS}/{one.custodian}.json": one.to_file() for one in found.values()
     }
-    cautions = [f"{one.severity}: {one.what} {one.advice}" for one in plan.findings if one.severity != "note"]
+    cautions = [
+        f"{'serious: ' if one.severity == 'serious' else ''}{one.what.rstrip('.')}. {one.advice.rstrip('.')}"
+        for one in plan.findings
+        if one.severity != "note"
+    ]
     return Wanted(policy.label, policy.rule(), policy.field(), policy.pad, chosen, policy.digest(), beside, cautions)
 
 
 def _acknowledgements(paths: tuple[str, ...]) -> dict[str, Acknowledgement]:
+    from shares.documents.acknowledgement import Acknowledgement
+
     found: dict[str, Acknowledgement] = {}
     for path in paths:
         one = Acknowledgement.parse(read_file(path, limit=MAX_FILE), where=path)

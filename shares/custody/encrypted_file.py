@@ -11,11 +11,12 @@ wipes when the cipher goes, and what the system's pipes and file cache hold of t
 
 from __future__ import annotations
 
+import hashlib
 import hmac
 from collections.abc import Callable
 from contextlib import AbstractContextManager
 from pathlib import Path
-from typing import Final, TypeAlias
+from typing import Final, Self, TypeAlias
 
 from cryptography.exceptions import InvalidTag
 from cryptography.hazmat.primitives.ciphers.aead import AESGCM
@@ -57,7 +58,8 @@ def encrypt_file(
     header = Header(set_id)
     key = Secret.drawn(KEY_LENGTH)
     try:
-        with secret_source(source) as reader, new_file(target, secret=True) as write:
+        # The target comes first: to open the source may be to wait for a writer.
+        with new_file(target, secret=True) as write, secret_source(source) as reader:
             digest = _encrypt(reader, write, key, header, progress)
     except BaseException:
         key.close()
@@ -99,12 +101,11 @@ def open_file(
     """
     with regular_file(source) as reader:
         chunks = Chunks(reader)
-        first, second = (_teller(progress, chunks, 2, done) for done in range(2))
-        cipher = _cipher(chunks, key, set_id)
+        cipher, checked = _cipher(chunks, key, set_id), _Seen.first()
         with Secret(chunks.header.chunk) as room:
-            _check(chunks, cipher, digest, room, first)
+            _check(chunks, cipher, digest, room, _teller(progress, chunks, 2, 0), checked)
             with sink as write:
-                _decrypt(chunks, cipher, digest, room, write, second)
+                _decrypt(chunks, cipher, checked, room, write, _teller(progress, chunks, 2, 1))
         return chunks.secret_length
 
 
@@ -117,7 +118,7 @@ def check_file(source: StrPath, key: Secret, digest: bytes, set_id: bytes, *, pr
         chunks = Chunks(reader)
         cipher = _cipher(chunks, key, set_id)
         with Secret(chunks.header.chunk) as room:
-            _check(chunks, cipher, digest, room, _teller(progress, chunks, 1, 0))
+            _check(chunks, cipher, digest, room, _teller(progress, chunks, 1, 0), _Seen.first())
         return chunks.secret_length
 
 
@@ -140,7 +141,10 @@ def digest_of(source: StrPath, *, progress: Progress | None = None) -> bytes:
     """
     with regular_file(source) as reader:
         chunks = Chunks(reader)
-        return chunks.read(lambda number, chunk: None, _teller(progress, chunks, 1, 0))
+        with Digesting(chunks.header) as digesting:
+            for _, chunk in chunks.each(_teller(progress, chunks, 1, 0)):
+                digesting.add(chunk)
+            return digesting.digest()
 
 
 def _encrypt(reader: Reader, write: Write, key: Secret, header: Header, progress: Progress | None) -> bytes:
@@ -155,7 +159,7 @@ def _encrypt(reader: Reader, write: Write, key: Secret, header: Header, progress
         Secret(header.chunk) as other,
         one.view() as here,
         other.view() as ahead,
-        Digesting(associated) as digesting,
+        Digesting(header) as digesting,
     ):
         read = length = reader.fill(here)
         if not length:
@@ -197,17 +201,45 @@ def _cipher(chunks: Chunks, key: Secret, set_id: bytes) -> AESGCM:
         return AESGCM(key_bytes)
 
 
-def _check(chunks: Chunks, cipher: AESGCM, digest: bytes, room: Secret, tell: _Tell) -> None:
+class _Seen:
+    """What was seen of a file in one reading, so that a second reading of anything else is noticed.
+
+    A code of each chunk under a key that is drawn for this alone and never leaves: who does not know it cannot make
+    another chunk of the same code, not even who has the file's own key (GMAC, SP 800-38D; a chunk of 16 MiB passes
+    with a chance of 2^-108). It takes a tenth of the time of the digest, and of memory the same for any file.
+    """
+
+    def __init__(self, mac: AESGCM) -> None:
+        self._mac = mac
+        self._codes = hashlib.sha256()
+
+    @classmethod
+    def first(cls) -> Self:
+        """Return one for a first reading."""
+        with Secret.drawn(KEY_LENGTH) as key, key.view() as key_bytes:
+            return cls(AESGCM(key_bytes))
+
+    def again(self) -> Self:
+        """Return one for a second reading."""
+        return type(self)(self._mac)
+
+    def add(self, number: int, chunk: memoryview) -> None:
+        self._codes.update(self._mac.encrypt(nonce(number, last=False), b"", chunk))
+
+    def is_same(self, other: _Seen) -> bool:
+        return hmac.compare_digest(self._codes.digest(), other._codes.digest())
+
+
+def _check(chunks: Chunks, cipher: AESGCM, digest: bytes, room: Secret, tell: _Tell, seen: _Seen) -> None:
     """The first pass: every tag, and the digest. What is decrypted on the way is overwritten where it stands."""
     bad: int | None = None
-
-    def consume(number: int, chunk: memoryview) -> None:
-        nonlocal bad
-        if bad is None and not _opens(chunks, cipher, number, chunk, view):
-            bad = number
-
-    with room.view() as view:
-        is_named = hmac.compare_digest(chunks.read(consume, tell), digest)
+    with room.view() as view, Digesting(chunks.header) as digesting:
+        for number, chunk in chunks.each(tell):
+            digesting.add(chunk)
+            seen.add(number, chunk)
+            if bad is None and not _opens(chunks, cipher, number, chunk, view):
+                bad = number
+        is_named = hmac.compare_digest(digesting.digest(), digest)
     if bad is None and is_named:
         return
     if bad is None:
@@ -223,22 +255,22 @@ def _check(chunks: Chunks, cipher: AESGCM, digest: bytes, room: Secret, tell: _T
     raise VerificationError(what, where=chunks.reader.where, hint=hint)
 
 
-def _decrypt(chunks: Chunks, cipher: AESGCM, digest: bytes, room: Secret, write: Write, tell: _Tell) -> None:
-    """The second pass: a chunk is written when its tag is seen to fit again, and the digest must be the same at last.
+def _decrypt(chunks: Chunks, cipher: AESGCM, checked: _Seen, room: Secret, write: Write, tell: _Tell) -> None:
+    """The second pass: a chunk is written when its tag is seen to fit again, and all must be what was seen before.
 
-    The tags alone could be made to fit by somebody who has the key, and the digest is known only at the end. So of
-    such a one's file no whole is ever handed on, though a fed command may have seen a part.
+    Only who has the key could make a tag fit to another chunk. Of such a one's file a fed command may see a part, but
+    the end never comes, and no file gets its name.
     """
-
-    def consume(number: int, chunk: memoryview) -> None:
-        if not _opens(chunks, cipher, number, chunk, view):
-            raise _altered(chunks)
-        with view[: len(chunk) - TAG] as plain:
-            write(plain)
-
+    seen = checked.again()
     with room.view() as view:
-        if not hmac.compare_digest(chunks.read(consume, tell), digest):
-            raise _altered(chunks)
+        for number, chunk in chunks.each(tell):
+            seen.add(number, chunk)
+            if not _opens(chunks, cipher, number, chunk, view):
+                raise _altered(chunks)
+            with view[: len(chunk) - TAG] as plain:
+                write(plain)
+    if not seen.is_same(checked):
+        raise _altered(chunks)
 
 
 def _altered(chunks: Chunks) -> VerificationError:

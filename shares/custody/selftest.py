@@ -15,6 +15,7 @@ from dataclasses import dataclass
 
 from cryptography.hazmat.primitives import hashes, serialization
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
+from cryptography.hazmat.primitives.kdf.argon2 import Argon2id
 from cryptography.hazmat.primitives.kdf.hkdf import HKDF
 
 from shares.custody.presented import Presented
@@ -22,7 +23,18 @@ from shares.custody.recover import recover
 from shares.custody.split import flat_rule, split
 from shares.custody.verify import verify_share
 from shares.documents.base import canonical
+from shares.documents.party import new_party
 from shares.documents.share import Share
+from shares.documents.wrapped_share import WrappedShare
+from shares.documents.wrapping import (
+    SUITES,
+    ByCard,
+    ByPassphrase,
+    Cost,
+    card_sealer,
+    open_by_passphrase,
+    passphrase_sealer,
+)
 from shares.errors import SharesError
 from shares.field.gf256 import Field
 from shares.field.irreducible import count_irreducible, irreducibles
@@ -124,6 +136,33 @@ def _encodings() -> bool:
     )
 
 
+def _stretching() -> bool:
+    """RFC 9106, sec. 5.3: Argon2id."""
+    kdf = Argon2id(
+        salt=b"\x02" * 16, length=32, iterations=3, lanes=4, memory_cost=32, secret=b"\x03" * 8, ad=b"\x04" * 12
+    )
+    return kdf.derive(b"\x01" * 32).hex() == "0d640df58d78766c08c037a34a8b53c9d01ef0452d75b65eb52520e96b01e659"
+
+
+def _wrapping() -> bool:
+    """A made-up share of a made-up party: wrapped by passphrase and for a card, by each suite, and opened again."""
+    passphrase, quick = Secret.of(b"not a real passphrase"), Cost(memory=8, passes=1, lanes=1)
+    with new_party("north-pier", passphrase, cost=quick).open(passphrase) as key:
+        dealt = split(Secret.of(b"not a real key"), flat_rule(1, ["north-pier"]), label="self-test")
+        sealers = [
+            passphrase_sealer(passphrase, quick),
+            *(card_sealer(key.card.recipient(), suite) for suite in SUITES),
+        ]
+        wrapped = [WrappedShare.parse(WrappedShare.wrap(dealt.shares[0], seal).to_file()) for seal in sealers]
+
+        def opener(wrapping: ByPassphrase | ByCard, sealed: bytes, bound: bytes) -> Secret:
+            if isinstance(wrapping, ByPassphrase):
+                return open_by_passphrase(wrapping, sealed, bound, passphrase)
+            return key.open(wrapping, sealed, bound)
+
+        return all(one.open(opener).commitment() == dealt.shares[0].commitment() for one in wrapped)
+
+
 _TESTS: dict[str, Callable[[], bool]] = {
     "field: products, doublings, inverse (FIPS 197)": _field,
     "field: the 30 irreducible polynomials (Gauss)": _polynomials,
@@ -131,5 +170,7 @@ _TESTS: dict[str, Callable[[], bool]] = {
     "whole job: split, verify and recover 3-of-5": _whole_job,
     "hashes: SHA-256, SHAKE256, HKDF (FIPS 180-4, FIPS 202, RFC 5869)": _hashes,
     "signatures: Ed25519 (RFC 8032)": _signatures,
+    "passphrases: Argon2id (RFC 9106)": _stretching,
+    "wrapping: a share under a passphrase and for a card, both suites": _wrapping,
     "encodings: base64url, base32, canonical JSON (RFC 4648, RFC 8785)": _encodings,
 }

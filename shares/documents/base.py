@@ -45,6 +45,7 @@ class Document(BaseModel):
         frozen=True,
         extra="forbid",
         hide_input_in_errors=True,
+        defer_build=True,  # A command pays for the documents that it meets, not for all kinds.
         cache_strings="none",  # The parser would keep short strings of any document in a cache of its own.
     )
 

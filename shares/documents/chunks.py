@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import hashlib
 from collections import deque
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import Final, Self
@@ -139,41 +139,33 @@ class Chunks:
         """Say whether the chunk of this number, from 0, is the last."""
         return number == self.count - 1
 
-    def read(self, consume: Callable[[int, memoryview], None], tell: Callable[[int], None]) -> bytes:
-        """Read the whole file once, from its start.
+    def each(self, tell: Callable[[int], None]) -> Iterator[tuple[int, memoryview]]:
+        """Read all chunks once, from the first.
 
         Args:
-            consume: called with each chunk's number, from 0, and its bytes, which are there until it returns.
             tell: called before each chunk with the number of chunks done.
 
-        Returns:
-            The digest of what was read, 32 bytes.
+        Yields:
+            The number of a chunk, from 0, and its bytes: they are there until ``BUFFERS`` - 1 more have been read.
 
         Raises:
-            StorageError: the file became shorter, or the medium refuses. What ``consume`` and ``tell`` raise passes.
+            StorageError: the file became shorter, or the medium refuses.
         """
-        self.reader.rewind()
-        header = bytearray(HEADER_LENGTH)
-        self.reader.fill(memoryview(header))
         buffers = [memoryview(bytearray(self._full)) for _ in range(BUFFERS)]
-        with Digesting(bytes(header)) as digesting:
-            for number in range(self.count):
-                tell(number)
-                chunk = buffers[number % BUFFERS][: self._last if self.is_last(number) else self._full]
-                if self.reader.fill(chunk) < len(chunk):
-                    raise StorageError(
-                        "became shorter while it was read", where=self.reader.where, hint="use another copy"
-                    )
-                digesting.add(chunk)
-                consume(number, chunk)
-            return digesting.digest()
+        self.reader.go_to(HEADER_LENGTH)
+        for number in range(self.count):
+            tell(number)
+            chunk = buffers[number % BUFFERS][: self._last if self.is_last(number) else self._full]
+            if self.reader.fill(chunk) < len(chunk):
+                raise StorageError("became shorter while it was read", where=self.reader.where, hint="use another copy")
+            yield number, chunk
 
 
 class Digesting:
     """The digest of a file, worked out beside the main thread from its header and then its chunks, in order."""
 
-    def __init__(self, header: bytes) -> None:
-        self._total = hashlib.sha256(LABEL + header)
+    def __init__(self, header: Header) -> None:
+        self._total = hashlib.sha256(LABEL + header.to_bytes())
         self._hashers = ThreadPoolExecutor(_HASHERS)
         self._pending: deque[Future[bytes]] = deque()
 

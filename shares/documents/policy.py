@@ -188,7 +188,7 @@ class Policy(Document):
         problem = next(self._problems(), None)
         if problem is None:
             try:
-                self._rule = _Builder(self).rule()
+                self._rule = _tree(self, "rule", self.root)
             except ParameterError as error:
                 problem = str(error)
         if problem:
@@ -245,41 +245,30 @@ def _names_unknown(path: str, node: PolicyNode, known: dict[str, None]) -> Itera
             yield f"{path}.from[{i}] names {name} a second time; to count a custodian more than once, use weight"
 
 
-class _Builder:
-    """Puts the groups of a policy whose names are all known into one tree, each group built once."""
+def _tree(policy: Policy, path: str, node: PolicyNode, trail: tuple[str, ...] = ()) -> Rule:
+    """Put groups in the places of their names, all of which are known.
 
-    def __init__(self, policy: Policy) -> None:
-        self.policy = policy
-        self.weights = {custodian.name: custodian.weight for custodian in policy.custodians}
-        self.built: dict[str, Rule] = {}
-
-    def rule(self) -> Rule:
-        """Build the tree. Raises ParameterError, with the key path: a cycle, too deep, too wide or too large."""
-        return self._node("rule", self.policy.root, ())
-
-    def _node(self, path: str, node: PolicyNode, trail: tuple[str, ...]) -> Rule:
-        children: list[Rule | str] = []
-        for i, name in enumerate(node.children):
-            if name in self.weights:
-                children += [name] * self.weights[name]
-            else:
-                children.append(self._group(f"{path}.from[{i}]", name, trail))
-        problem = None
-        try:
-            return Rule(node.need, tuple(children))
-        except ParameterError as error:
-            problem = error
-        raise ParameterError(problem.what, where=path, hint=problem.hint)
-
-    def _group(self, path: str, name: str, trail: tuple[str, ...]) -> Rule:
-        if name in trail:
+    Raises:
+        ParameterError: a group leads back to itself, or the rule is too deep, wide or large; says the key.
+    """
+    weights = {custodian.name: custodian.weight for custodian in policy.custodians}
+    children: list[Rule | str] = []
+    for i, name in enumerate(node.children):
+        place = f"{path}.from[{i}]"
+        if name in weights:
+            children += [name] * weights[name]
+        elif name in trail:
             circle = " -> ".join((*trail[trail.index(name) :], name))
-            raise ParameterError(f"the group leads back to itself: {circle}", where=path)
-        if len(trail) + 1 >= MAX_DEPTH:
-            raise ParameterError(f"a rule is at most {MAX_DEPTH} groups deep, itself included", where=path)
-        if name not in self.built:
-            self.built[name] = self._node(_path("group", name), self.policy.groups[name], (*trail, name))
-        return self.built[name]
+            raise ParameterError(f"the group leads back to itself: {circle}", where=place)
+        elif len(trail) + 1 >= MAX_DEPTH:
+            raise ParameterError(f"a rule is at most {MAX_DEPTH} groups deep, itself included", where=place)
+        else:
+            children.append(_tree(policy, _path("group", name), policy.groups[name], (*trail, name)))
+    try:
+        return Rule(node.need, tuple(children))
+    except ParameterError as error:
+        problem = error
+    raise ParameterError(problem.what, where=path, hint=problem.hint)
 
 
 def _path(*keys: str | int) -> str:
@@ -328,10 +317,8 @@ _PLAIN_WORDS = {
     "model_type": "should be a table",
     "dict_type": "should be a table",
     "string_type": "should be text in quotes",
-    "string_too_short": "should not be empty",
-    "string_too_long": "is too long",
     "too_short": "should not be empty",
-    "too_long": "has too many entries",
+    "too_long": "is too long",
 }
 
 

@@ -15,7 +15,7 @@ from pydantic import model_validator
 from pydantic_core import PydanticCustomError
 
 from shares.documents.share import HEADER, MAX_ROW, MIN_ROW, NOTES, Share, ShareFacts
-from shares.documents.wrapping import TAG, ByCard, ByPassphrase, Envelope, Opener, Sealer
+from shares.documents.wrapping import TAG, Envelope, Opener, Sealer
 from shares.memory import Secret
 from shares.sharing.rule import Point
 
@@ -53,21 +53,6 @@ class WrappedShare(Envelope, ShareFacts):
                         view[i * length : (i + 1) * length] = inside
             wrapping, sealed = seal(rows, cls.model_construct(**facts).bound())
         return cls(**facts, wrapping=wrapping, sealed=sealed, digest=bytes(32)).with_digest()
-
-    @classmethod
-    def retyped(cls, *, wrapping: ByPassphrase | ByCard, sealed: bytes, **facts: object) -> Self:
-        """Return a wrapped share put together from what paper carries, with its own digest.
-
-        Args:
-            wrapping: how it is wrapped.
-            sealed: the sealed rows.
-            facts: the header's members but kind and version, and ``record``; the other notes are empty.
-        """
-        notes = dict.fromkeys(NOTES) | facts
-        made = cls.model_validate(
-            {"kind": cls.KIND, "version": 1, **notes, "wrapping": wrapping, "sealed": sealed, "digest": bytes(32)}
-        )
-        return made.with_digest()
 
     @property
     def row_length(self) -> int:

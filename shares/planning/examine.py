@@ -17,7 +17,7 @@ from shares.documents.policy import Policy
 from shares.errors import VerificationError
 from shares.planning import labels
 from shares.planning.findings import Finding, findings
-from shares.planning.structure import Count, Quorums, minimal_quorums
+from shares.planning.structure import Count, Quorums, minimal_quorums, relabelled
 from shares.sharing.rule import Rule
 
 COUNTED = {
@@ -85,10 +85,11 @@ def examine(policy: Policy) -> Plan:
         policy: a policy as ``Policy.parse`` returns it.
 
     Returns:
-        Numbers and findings. Numbers are exact where no label stands in two branches of the rule, or with up to 24
-        labels; else they are bounds (``Plan.exact`` is False). Who alone makes or blocks a quorum is always exact.
+        Numbers and findings. A number is exact where none of those counted stands in two branches of the rule, or there
+        are at most 24 of them; else there are bounds (``Plan.exact`` is False). Who alone makes or blocks a quorum is
+        always exact.
     """
     rule = policy.rule()
-    counts = {what: Count.of(rule, label_of(policy)) for what, label_of in COUNTED.items()}
+    counts = {what: Count.of(relabelled(rule, label_of(policy))) for what, label_of in COUNTED.items()}
     quorums = minimal_quorums(rule)
     return Plan(policy.label, rule, policy.strict, counts, quorums, findings(policy, counts["people"], quorums))

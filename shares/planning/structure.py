@@ -1,14 +1,14 @@
 """The structure of a rule: how few make a quorum, how few block every quorum, and which quorums are minimal.
 
-Counted by custodians or by any label they share: a person, a site, a reporting line. Exact where no label repeats, and
-up to 24 labels; beyond that the questions are hard in general (the smallest satisfying set is NP-hard, counting minimal
-ones #P-hard), and the answers are bounds that say so.
+Counted by custodians or by any label they share: a person, a site, a reporting line; ``relabelled`` gives the rule over
+those. Exact where no name stands in two branches, and up to 24 names; beyond that the questions are hard in general
+(the smallest satisfying set is NP-hard, counting minimal ones #P-hard), and the answers are bounds.
 
 Source: J. Benaloh, J. Leichter 1988 (threshold trees); M. R. Garey, D. S. Johnson, "Computers and Intractability",
 1979 (hitting set); L. G. Valiant, "The complexity of enumeration and reliability problems", SIAM J. Comput. 8(3), 1979.
 May import: shares.sharing.rule, .truth_table.
-Secret: nothing. Public: the rule and the labels, which are confidential.
-Does not: say what is good or bad (``examine`` does), or how likely anything is.
+Secret: nothing. Public: the rule, which is confidential.
+Does not: say what is good or bad (``findings`` does), or how likely anything is.
 """
 
 from __future__ import annotations
@@ -17,19 +17,17 @@ import itertools
 import math
 from collections import Counter
 from collections.abc import Collection, Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
+from functools import lru_cache
 from typing import NamedTuple, TypeAlias
 
-from shares.planning.truth_table import MAX_LABELS, TruthTable
+from shares.planning.truth_table import MAX_NAMES, TruthTable
 from shares.sharing.rule import Rule
 
 MAX_LISTED = 40
 """So many minimal quorums are listed; more are counted."""
 _TRIES = 8
-
-Labels: TypeAlias = Mapping[str, str]
-"""Each custodian's label."""
 
 
 class Bounds(NamedTuple):
@@ -53,7 +51,7 @@ class Bounds(NamedTuple):
 
 @dataclass(frozen=True, slots=True)
 class Count:
-    """How a rule counts in custodians, people, sites or reporting lines.
+    """How a rule counts in the names it is over: custodians, people, sites or reporting lines.
 
     Attributes:
         total: how many there are.
@@ -66,9 +64,21 @@ class Count:
     block: Bounds
 
     @classmethod
-    def of(cls, rule: Rule, label_of: Labels) -> Count:
-        """Count a rule by the labels of its custodians."""
-        return cls(len(set(label_of.values())), fewest(rule, label_of), fewest(dual(rule), label_of))
+    def of(cls, rule: Rule) -> Count:
+        """Count the names of a rule: exact where none stands in two branches, where there are at most 24, or where the
+        bounds meet.
+
+        >>> piers = Rule(2, ("north-pier", "south-pier", "light-house", "registrar"))
+        >>> Count.of(piers)
+        Count(total=4, quorum=Bounds(low=2, high=2), block=Bounds(low=3, high=3))
+        >>> Count.of(relabelled(piers, {"north-pier": "A", "south-pier": "A", "light-house": "B", "registrar": "B"}))
+        Count(total=2, quorum=Bounds(low=1, high=1), block=Bounds(low=2, high=2))
+        """
+        total, quorum, block = len(rule.paths()), _fewest(rule), _fewest(dual(rule))
+        if total <= MAX_NAMES and not (quorum.exact and block.exact):
+            tried = _try_all(rule)
+            quorum, block = Bounds(tried.fewest, tried.fewest), Bounds(tried.fewest_blocking, tried.fewest_blocking)
+        return cls(total, quorum, block)
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,6 +94,18 @@ class Quorums:
     count: Bounds
     listed: tuple[tuple[str, ...], ...]
     idle: tuple[str, ...]
+
+
+def relabelled(rule: Rule, label_of: Mapping[str, str]) -> Rule:
+    """Return the rule over labels: each custodian's name replaced by their label, wherever it stands.
+
+    >>> relabelled(Rule(1, ("north-pier", "south-pier")), {"north-pier": "A", "south-pier": "A"})
+    Rule(need=1, children=('A', 'A'))
+    """
+    return Rule(
+        rule.need,
+        tuple(relabelled(child, label_of) if isinstance(child, Rule) else label_of[child] for child in rule.children),
+    )
 
 
 def dual(rule: Rule) -> Rule:
@@ -114,33 +136,6 @@ def alone(rule: Rule, holders: Mapping[str, Collection[str]]) -> tuple[str, ...]
     return tuple(one for one, names in holders.items() if rule.satisfied_by(names))
 
 
-def fewest(rule: Rule, label_of: Labels) -> Bounds:
-    """Return the smallest number of labels whose custodians together satisfy the rule.
-
-    Args:
-        rule: who can recover.
-        label_of: each custodian's label.
-
-    Returns:
-        The number itself where no label stands in two branches, where there are at most 24 labels, or where the
-        bounds meet; else bounds.
-
-    >>> piers = Rule(2, ("north-pier", "south-pier", "light-house"))
-    >>> fewest(piers, {"north-pier": "A", "south-pier": "A", "light-house": "B"})
-    Bounds(low=1, high=1)
-    """
-    places = _places(rule, label_of)
-    # A label pays a part of its price at each of its places. Whoever satisfies the rule pays no more than one for each
-    # label, and just that where each label has one place: so the cheapest way is a lower bound, and exact there.
-    low = math.ceil(_cheapest(rule, label_of, {label: Fraction(1, count) for label, count in places.items()}))
-    if max(places.values()) == 1:
-        return Bounds(low, low)
-    high = min(len(found) for found in _reduced(rule, label_of, places))
-    if low < high and len(places) <= MAX_LABELS:
-        low = high = TruthTable(rule, label_of).fewest
-    return Bounds(low, high)
-
-
 def minimal_quorums(rule: Rule) -> Quorums:
     """Return the minimal quorums, as sets of custodians: listed where they are few, else counted.
 
@@ -150,69 +145,101 @@ def minimal_quorums(rule: Rule) -> Quorums:
     >>> minimal_quorums(Rule(2, (Rule(1, ("north-pier", "south-pier")), "registrar"))).listed
     (('north-pier', 'registrar'), ('south-pier', 'registrar'))
     """
-    names = {name: name for name in rule.paths()}
-    places = _places(rule, names)
+    order = {name: place for place, name in enumerate(rule.paths())}
     counted = _count(rule)
-    if max(places.values()) == 1:
-        count, found, idle = Bounds(counted, counted), _minimal(rule), _idle(rule)
-    elif len(names) <= MAX_LABELS:
-        table = TruthTable(rule, names)
-        count, found, idle = Bounds(table.count, table.count), table.minimal_sets(), table.idle
+    if max(_places(rule).values()) == 1:
+        count, idle = counted, _idle(rule)
+        found = list(_minimal(rule)) if count <= MAX_LISTED else []
+    elif len(order) <= MAX_NAMES:
+        tried = _try_all(rule)
+        count, found, idle = tried.count, list(tried.listed), tried.idle
     else:
         # Each minimal quorum is one of places; several of places may be one of custodians, or none that is minimal.
-        count = Bounds(len(set(_reduced(rule, names, places))), counted)
-        return Quorums(count, (), ())
-    order = {name: place for place, name in enumerate(names)}
-    listed = [tuple(sorted(set(quorum), key=order.__getitem__)) for quorum in found] if count.high <= MAX_LISTED else []
-    return Quorums(count, tuple(sorted(listed, key=lambda quorum: (len(quorum), [order[n] for n in quorum]))), idle)
+        return Quorums(Bounds(len(set(_reduced(rule))), counted), (), ())
+    listed = [tuple(sorted(quorum, key=order.__getitem__)) for quorum in found]
+    listed.sort(key=lambda quorum: (len(quorum), [order[name] for name in quorum]))
+    return Quorums(Bounds(count, count), tuple(listed), idle)
 
 
-# A node as a choice among items: a label with as many leaves as it has here, or a branch, which counts once.
+@dataclass(frozen=True, slots=True)
+class _Tried:
+    """What trying all sets tells; ``listed`` holds the minimal ones where they are few."""
+
+    fewest: int
+    fewest_blocking: int
+    count: int
+    listed: tuple[tuple[str, ...], ...]
+    idle: tuple[str, ...]
+
+
+def _try_all(rule: Rule) -> _Tried:
+    # Where everyone is a person with a site and a manager of their own, the rules over all of these differ in names
+    # alone: under numbers instead of names they are one, and tried once.
+    names = list(rule.paths())
+    tried = _try_numbered(relabelled(rule, {name: str(number) for number, name in enumerate(names)}))
+    listed = tuple(tuple(names[int(number)] for number in quorum) for quorum in tried.listed)
+    return replace(tried, listed=listed, idle=tuple(names[int(number)] for number in tried.idle))
+
+
+@lru_cache(maxsize=16)
+def _try_numbered(rule: Rule) -> _Tried:
+    table = TruthTable(rule)
+    listed = tuple(table.minimal_sets()) if table.count <= MAX_LISTED else ()
+    return _Tried(table.fewest, table.fewest_blocking, table.count, listed, table.idle)
+
+
+# A node as a choice among items: a name with as many leaves as it has here, or a branch, which counts once.
 
 _Item: TypeAlias = tuple[str | Rule, int]
 
 
-def _items(node: Rule, label_of: Labels | None = None) -> list[_Item]:
-    """The items of a node; without labels custodians count by their own names."""
-    named = [child for child in node.children if isinstance(child, str)]
-    leaves = Counter(label_of[name] for name in named) if label_of else Counter(named)
+def _items(node: Rule) -> list[_Item]:
+    leaves = Counter(child for child in node.children if isinstance(child, str))
     return [*leaves.items(), *((child, 1) for child in node.children if isinstance(child, Rule))]
 
 
-def _places(node: Rule, label_of: Labels) -> Counter[str]:
-    """Count the nodes at which each label has leaves; a group that stands twice counts twice."""
+def _places(node: Rule) -> Counter[str]:
+    """Count the nodes at which each name has leaves; a group that stands twice counts twice."""
     places = Counter[str]()
-    for item, _ in _items(node, label_of):
-        places.update(_places(item, label_of) if isinstance(item, Rule) else [item])
+    for item, _ in _items(node):
+        places.update(_places(item) if isinstance(item, Rule) else [item])
     return places
 
 
-def _cheapest(node: Rule, label_of: Labels, prices: Mapping[str, Fraction]) -> Fraction:
+def _fewest(rule: Rule) -> Bounds:
+    """Return bounds of the smallest number of names that satisfy a rule; exact where each has one place."""
+    places = _places(rule)
+    # A name pays a part of its price at each of its places. Whoever satisfies the rule pays no more than one for each
+    # name, and just that where each has one place: so the cheapest way is a lower bound, and exact there.
+    low = math.ceil(_cheapest(rule, {name: Fraction(1, count) for name, count in places.items()}))
+    return Bounds(low, low if max(places.values()) == 1 else min(map(len, _reduced(rule))))
+
+
+def _cheapest(node: Rule, prices: Mapping[str, Fraction]) -> Fraction:
     """Return the least that satisfying a node costs, with every place paid for on its own (a knapsack)."""
     # cheapest[met]: the least price of items that count for ``met`` or more.
     cheapest: list[Fraction | None] = [Fraction(0), *[None] * node.need]
-    for item, weight in _items(node, label_of):
-        price = _cheapest(item, label_of, prices) if isinstance(item, Rule) else prices[item]
+    for item, weight in _items(node):
+        price = _cheapest(item, prices) if isinstance(item, Rule) else prices[item]
         for met in range(node.need, 0, -1):
-            before = cheapest[max(met - weight, 0)]
-            now = cheapest[met]
+            before, now = cheapest[max(met - weight, 0)], cheapest[met]
             if before is not None and (now is None or before + price < now):
                 cheapest[met] = before + price
     return cheapest[node.need] or Fraction(0)
 
 
-def _reduced(rule: Rule, label_of: Labels, places: Mapping[str, int]) -> Iterator[tuple[str, ...]]:
-    """Yield some minimal sets of labels: all labels, less one after the other as long as the rule stays satisfied.
+def _reduced(rule: Rule) -> Iterator[tuple[str, ...]]:
+    """Yield some minimal sets of names: all names, less one after the other as long as the rule stays satisfied.
 
-    Labels with few places go first, so that what remains is small; then each of a few labels is kept to the last.
+    Names with few places go first, so that what remains is small; each of a few others is kept to the last in turn.
     """
+    places = _places(rule)
     order = sorted(places, key=places.__getitem__)
-    for last in range(min(_TRIES, len(order))):
-        kept = dict.fromkeys([*order[: len(order) - 1 - last], *order[len(order) - last :], order[-1 - last]])
-        for label in list(kept):
-            del kept[label]
-            if not rule.satisfied_by({name for name in label_of if label_of[name] in kept}):
-                kept[label] = None
+    for last in order[: -_TRIES - 1 : -1]:
+        kept = set(order)
+        for name in [*(name for name in order if name != last), last]:
+            if rule.satisfied_by(kept - {name}):
+                kept.remove(name)
         yield tuple(sorted(kept))
 
 

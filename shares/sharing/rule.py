@@ -182,7 +182,9 @@ def deal(field: Field, rule: Rule, payload: Secret) -> Dealing:
 
 
 def _deal(field: Field, node: Rule, payload: Secret, path: Path, dealing: Dealing) -> None:
-    polynomial = random_polynomial(field, payload, node.need)
+    # Below an 'any 1 of' several nodes have one payload: their places keep them apart even where the source fails.
+    steps = bytes(number for step in path for number in step)
+    polynomial = random_polynomial(field, payload, node.need, place=steps)
     dealing.polynomials.append(polynomial)
     xs = range(1, len(node.children) + 1)
     for x, child, row in zip(xs, node.children, evaluate(field, polynomial, xs), strict=True):

@@ -69,21 +69,22 @@ def interpolate(field: Field, xs: Sequence[int], rows: Sequence[Secret], *, at: 
     return value
 
 
-def draw(field: Field, hedge: Secret, length: int) -> Secret:
+def draw(field: Field, hedge: Secret, length: int, *, place: bytes = b"") -> Secret:
     """Draw ``length`` random bytes that stay unpredictable while either the system's randomness or ``hedge`` is.
 
-    Bytes of the operating system XOR SHAKE256(label, fresh nonce, hedge): uniform with a good source whatever the
-    hedge is,
-    still computationally hidden with a bad source as long as the hedge itself cannot be guessed.
+    Bytes of the operating system XOR SHAKE256(label, fresh nonce, place, hedge): uniform with a good source whatever
+    the hedge is, still computationally hidden with a bad source as long as the hedge itself cannot be guessed.
 
     Args:
         field: any GF(2^8); only its addition (XOR) is used.
         hedge: secret bytes that go into the hash.
         length: bytes wanted, at least 1.
+        place: public bytes that tell apart what is drawn with one hedge; all hedges beside places have one length.
 
     Source: Bellare, Dai, Rogaway 2020; FIPS 202 (SHAKE256).
     """
     stream = hashlib.shake_256(HEDGE_LABEL + secrets.token_bytes(NONCE_LENGTH))
+    stream.update(place)
     stream.update(hedge.view())
     drawn = Secret(length)
     with Secret.of(secrets.token_bytes(length)) as system, Secret.of(stream.digest(length)) as hashed:
@@ -91,13 +92,14 @@ def draw(field: Field, hedge: Secret, length: int) -> Secret:
     return drawn
 
 
-def random_polynomial(field: Field, payload: Secret, need: int) -> list[Secret]:
+def random_polynomial(field: Field, payload: Secret, need: int, *, place: bytes = b"") -> list[Secret]:
     """Return [payload, f_1, ..., f_(need-1)], the f_j uniform over the whole field, zero included.
 
     Args:
         field: GF(2^8) on a chosen polynomial.
         payload: coefficient 0.
         need: the threshold k, 1 to 255. The degree bound is k - 1.
+        place: as for ``draw``.
 
     Source: Shamir 1979, sec. 2. Leaving out zero would leak a little at every sharing (trade experience: hundreds of
     sharings of one secret then betray it).
@@ -105,5 +107,5 @@ def random_polynomial(field: Field, payload: Secret, need: int) -> list[Secret]:
     length = len(payload)
     if need == 1:
         return [payload]
-    with draw(field, payload, (need - 1) * length) as drawn, drawn.view() as all_bytes:
+    with draw(field, payload, (need - 1) * length, place=place) as drawn, drawn.view() as all_bytes:
         return [payload, *(Secret.of(all_bytes[j * length : (j + 1) * length]) for j in range(need - 1))]

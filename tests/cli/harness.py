@@ -102,7 +102,7 @@ def run_unprivileged(*arguments: str | Path) -> Result:
     It loads everything first: another user may not be allowed where this installation lies.
     """
     code = (
-        "import ctypes, encodings.utf_16_be, importlib, os, pkgutil, resource, shares\n"
+        "import ctypes, encodings.utf_16_be, importlib, os, pkgutil, pydantic.plugin._loader, resource, shares\n"
         "for module in pkgutil.walk_packages(shares.__path__, 'shares.'):\n"
         "    '__main__' in module.name or importlib.import_module(module.name)\n"
         "if os.geteuid() == 0:\n"

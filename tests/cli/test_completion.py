@@ -63,7 +63,7 @@ def completed(line: str, folder: Path) -> list[str]:
     ("line", "expected"),
     [
         ("shares ver", ["verify"]),
-        ("shares s", ["split", "show", "selftest"]),
+        ("shares s", ["split", "sheet", "show", "selftest"]),
         ("shares polynomial ", ["check", "list"]),
         ("shares recover --re", ["--record"]),
         ("shares completion f", ["fish"]),

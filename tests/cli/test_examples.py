@@ -23,12 +23,14 @@ from shares.documents.wrapped_share import WrappedShare
 from shares.documents.wrapping import Cost, card_sealer, passphrase_sealer
 from shares.memory import Secret
 
+POLICIES = Path(__file__).resolve().parents[2] / "examples" / "policies"
 PAGES: list[tuple[str, ...]] = [
     (),
     ("split",),
     ("verify",),
     ("recover",),
     ("show",),
+    ("acknowledge",),
     ("wrap",),
     ("unwrap",),
     ("record",),
@@ -87,6 +89,8 @@ def prepared(tmp_path: Path) -> Path:
     with keys["harbour-office"].open(passphrase("harbour-office")) as dealer:
         signed = load_record(place.record).signed(dealer, "dealer")
     (tmp_path / "record.json").write_bytes(signed.to_file())
+    (tmp_path / "policy.toml").write_bytes((POLICIES / "tide-archive.toml").read_bytes())
+    (tmp_path / "scan.pdf").write_bytes(b"a form, signed by hand")
     (tmp_path / "tide-archive").mkdir()
     (tmp_path / "tide-archive" / "record.json").write_bytes(place.record.read_bytes())
     for folder in ("media/stick", "dev/shm/handover", "home/.local/share/bash-completion/completions"):
@@ -101,7 +105,7 @@ def test_every_example_runs(page: tuple[str, ...], prepared: Path) -> None:
     for line in lines:
         if line.startswith("shares split"):
             (prepared / "key.pem").write_bytes((prepared / "made" / "key").read_bytes())
-            (prepared / "tide-archive" / "record.json").unlink()
+            (prepared / "tide-archive" / "record.json").unlink(missing_ok=True)
         if line.startswith("shares wrap"):
             (prepared / "north-pier.wrapped.json").unlink()
         done = subprocess.run(

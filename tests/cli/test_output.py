@@ -59,7 +59,7 @@ def watched(monkeypatch: pytest.MonkeyPatch, stream: io.StringIO, seconds: float
     monkeypatch.setattr(time, "monotonic", lambda: clock[0])
     monkeypatch.setattr(sys, "stderr", stream)
     calls = []
-    show = progress("Trial recovery", lambda: calls.append(clock[0]))
+    show = progress("Trial recovery", "quorums", lambda: calls.append(clock[0]))
     for step in range(4):
         clock[0] += seconds
         show(step, 4)
@@ -70,7 +70,7 @@ def watched(monkeypatch: pytest.MonkeyPatch, stream: io.StringIO, seconds: float
 
 def test_progress_is_shown_on_a_terminal_after_two_seconds(monkeypatch: pytest.MonkeyPatch) -> None:
     shown = watched(monkeypatch, Terminal(), 1.0)
-    assert "Trial recovery: 3 of 4, about 3 s left" in shown
+    assert "Trial recovery: [==================......] 3 of 4 quorums, about 3 s left" in shown
     assert "1 of 4" not in shown
     assert shown.endswith("\n")
     assert shown.count("\n") == 1
@@ -85,8 +85,8 @@ def test_a_trial_recovery_stops_where_a_signal_came(place: Place, monkeypatch: p
     """Between two quorums; then nothing of the split is left."""
     real = split.progress
 
-    def interrupted(what: str, stop_here: Callable[[], None]) -> Callable[[int, int], None]:
-        show = real(what, stop_here)
+    def interrupted(what: str, unit: str, stop_here: Callable[[], None] | None = None) -> Callable[[int, int], None]:
+        show = real(what, unit, stop_here)
 
         def step(done: int, total: int) -> None:
             if done == 1:

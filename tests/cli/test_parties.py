@@ -318,7 +318,7 @@ def test_what_is_proved_depends_on_signatures(harbour: Harbour) -> None:
     flat = " ".join(run("verify", share, "--record", record).out.split())
     assert "It does not prove who made that record" in flat
     flat = " ".join(run("verify", share, "--record", signed(harbour, ("registrar", "witness"))).out.split())
-    assert "as far as you know whose the signers' cards are" in flat
+    assert "whose card each signer's is" in flat
     assert "--trust tells whether you trust that card" in flat
 
 

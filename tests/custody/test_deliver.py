@@ -11,6 +11,7 @@ import json
 import os
 import signal
 import stat
+import subprocess
 import sys
 from pathlib import Path
 
@@ -20,11 +21,11 @@ from strategies import crooked_split, flat, presented, revealed
 from vectors.make import wrapping_v1 as by_hand
 
 from shares import streams
-from shares.custody.deliver import sealed_for, to_command, to_file
+from shares.custody.deliver import fed, sealed_for, to_command, to_file
 from shares.custody.recover import recover
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapping import SUITES
-from shares.errors import CommandFailedError, StorageError, VerificationError, WrongKeyError
+from shares.errors import CommandFailedError, SharesError, StorageError, VerificationError, WrongKeyError
 from shares.memory import Secret
 
 SECRET = b"not a real key\0with a zero byte and no line end"
@@ -184,6 +185,61 @@ def test_the_secret_is_neither_in_the_words_nor_in_the_environment_of_the_comman
     seen = (tmp_path / "seen").read_bytes()
     assert b"/proc/self" in seen
     assert b"real key" not in seen
+
+
+# A command is fed in pieces.
+
+
+def test_pieces_arrive_as_one(tmp_path: Path) -> None:
+    with fed(python(KEEP, str(tmp_path / "got"))) as write:
+        for i in range(0, len(LARGE), 100_003):
+            write(LARGE[i : i + 100_003])
+    assert (tmp_path / "got").read_bytes() == LARGE
+
+
+def test_nothing_is_started_before_it_is_needed(tmp_path: Path) -> None:
+    fed(python("open(__import__('sys').argv[1], 'w')", str(tmp_path / "started")))
+    assert os.listdir(tmp_path) == []
+
+
+@pytest.mark.parametrize("error", [KeyboardInterrupt(), SharesError("it was altered"), MemoryError()])
+def test_a_command_is_killed_when_the_pieces_stop(tmp_path: Path, error: BaseException) -> None:
+    def feed() -> None:
+        with fed(python(KEEP, str(tmp_path / "got"))) as write:
+            write(SECRET)
+            raise error
+
+    with pytest.raises(type(error)):
+        feed()
+    assert os.listdir(tmp_path) == []
+
+
+def test_a_command_is_killed_before_its_input_ends(monkeypatch) -> None:
+    """However quick it is: at the first kill the pipe is still open."""
+    open_at_kill: list[bool] = []
+    real = subprocess.Popen.kill
+
+    def kill(process: subprocess.Popen[bytes]) -> None:
+        open_at_kill.append(process.stdin is not None and not process.stdin.closed)
+        real(process)
+
+    def feed() -> None:
+        with fed(python("import sys; sys.stdin.read()")):
+            raise KeyboardInterrupt
+
+    monkeypatch.setattr(subprocess.Popen, "kill", kill)
+    with pytest.raises(KeyboardInterrupt):
+        feed()
+    assert open_at_kill[0]
+
+
+def test_a_command_that_has_read_enough_ends_the_feeding() -> None:
+    pieces = 0
+    with fed(python("import os; os.read(0, 10)")) as write:
+        for _ in range(100):
+            write(LARGE)
+            pieces += 1
+    assert pieces < 100
 
 
 # Encrypted to its receiver.

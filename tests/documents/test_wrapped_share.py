@@ -291,17 +291,3 @@ def test_a_file_that_is_not_as_the_format_says_is_refused(path: tuple[Any, ...],
 def test_a_wrapping_for_a_card_that_is_not_as_the_format_says(path: tuple[Any, ...], to: Any, reason: str) -> None:
     with pytest.raises(DocumentError, match=reason):
         WrappedShare.parse(digested(edited(FOR_CARD.to_file(), *path, to=to)))
-
-
-# Put together from paper.
-
-
-def test_what_paper_carries_makes_the_wrapped_share_again() -> None:
-    facts = {name: getattr(WRAPPED, name) for name in (*HEADER, "record") if name not in ("kind", "version")}
-    again = WrappedShare.retyped(wrapping=WRAPPED.wrapping, sealed=WRAPPED.sealed, **facts)
-    assert again.is_whole()
-    assert (again.label, again.rule, again.notice, again.record) == (None, None, None, SHARE.record)
-    opened = again.open(by(NAME))
-    assert opened.commitment() == SHARE.commitment()
-    with pytest.raises(VerificationError):
-        WrappedShare.retyped(wrapping=WRAPPED.wrapping, sealed=WRAPPED.sealed, **(facts | {"epoch": 2})).open(by(NAME))

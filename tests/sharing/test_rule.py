@@ -11,7 +11,21 @@ from collections.abc import Iterator, Sequence
 
 import pytest
 from hypothesis import given
-from strategies import HARBOUR, copy_of, flat, inverse, moduli, octets, points_of, product, revealed, rules, satisfies
+from hypothesis import strategies as st
+from strategies import (
+    HARBOUR,
+    copy_of,
+    flat,
+    inverse,
+    moduli,
+    octets,
+    points_of,
+    product,
+    revealed,
+    rules,
+    satisfies,
+    sets_of,
+)
 
 from shares.errors import NotEnoughSharesError, ParameterError, ShareError
 from shares.field.gf256 import Field
@@ -115,7 +129,7 @@ def symbolic(field: Field, rule: Rule, monkeypatch: pytest.MonkeyPatch) -> tuple
     size = 1 + sum(node.need - 1 for _, node in rule.nodes())
     units = iter(bytes(int(place == v) for place in range(size)) for v in range(size))
 
-    def unit_polynomial(field: Field, payload: Secret, need: int) -> list[Secret]:
+    def unit_polynomial(field: Field, payload: Secret, need: int, *, place: bytes) -> list[Secret]:
         return [payload, *(Secret.of(next(units)) for _ in range(need - 1))]
 
     monkeypatch.setattr(module, "random_polynomial", unit_polynomial)
@@ -201,13 +215,56 @@ def test_weight_is_a_name_that_stands_several_times() -> None:
     ("rule", "words"),
     [
         (Rule(1, (A,)), "north-pier"),
-        (Rule(2, (A, B)), "all 2 of north-pier, south-pier"),
+        (Rule(2, (A, B)), "both of north-pier, south-pier"),
+        (Rule(3, (A, B, C)), "all 3 of north-pier, south-pier, light-house"),
         (Rule(1, (A, B)), "any 1 of north-pier, south-pier"),
-        (Rule(2, (Rule(2, (A, B, C)), D)), "all 2 of (any 2 of north-pier, south-pier, light-house), registrar"),
+        (Rule(2, (A, B, C)), "any 2 of north-pier, south-pier, light-house"),
+        (Rule(2, (Rule(2, (A, B, C)), D)), "any 2 of north-pier, south-pier, light-house; and registrar"),
+        (Rule(1, (D, Rule(2, (A, B)))), "registrar; or both of north-pier, south-pier"),
+        (
+            Rule(2, (Rule(2, (A, B, C)), Rule(1, (D, Rule(2, (E, "wharf")))))),
+            "any 2 of north-pier, south-pier, light-house; and (registrar; or both of dry-dock, wharf)",
+        ),
+        (
+            Rule(1, (Rule(2, (Rule(1, (A, B)), C)), D)),
+            "(any 1 of north-pier, south-pier; and light-house); or registrar",
+        ),
+        (
+            Rule(2, (Rule(2, (A, B)), Rule(2, (C, D)), E)),
+            "any 2 of (both of north-pier, south-pier), (both of light-house, registrar), dry-dock",
+        ),
+        (Rule(1, (Rule(1, (Rule(2, (A, B, C)),)),)), "any 2 of north-pier, south-pier, light-house"),
+        (Rule(3, (A, A, B, C)), "any 3 of north-pier (weight 2), south-pier, light-house"),
+        (Rule(3, (A, A, B)), "both of north-pier, south-pier"),
+        (Rule(1, (A, A, B)), "any 1 of north-pier, south-pier"),
+        (Rule(2, (A, A)), "north-pier"),
+        (Rule(2, (A, A, A)), "any 2 of north-pier (weight 3)"),
+        (
+            Rule(2, (Rule(2, (A, B)), Rule(2, (A, B)), C)),
+            "any 2 of (both of north-pier, south-pier) (weight 2), light-house",
+        ),
     ],
 )
 def test_a_rule_in_words(rule: Rule, words: str) -> None:
     assert rule.words() == words
+
+
+@given(rules(), st.data())
+def test_words_name_everyone_and_say_different_things_of_different_rules(rule: Rule, data: st.DataObject) -> None:
+    words = rule.words()
+    assert all(name in words for name in rule.paths())
+    assert words.count("(") == words.count(")")
+    other = data.draw(rules())
+    if words == other.words():
+        for held in sets_of([*rule.paths(), *other.paths()]):
+            assert rule.satisfied_by(held) == other.satisfied_by(held)
+
+
+@given(rules())
+def test_a_rule_is_satisfied_by_exactly_the_authorised_sets(rule: Rule) -> None:
+    for held in sets_of(rule.paths()):
+        assert rule.satisfied_by(held) == satisfies(rule, {path for name in held for path in rule.paths()[name]})
+        assert rule.satisfied_by([*held, "wharf"]) == rule.satisfied_by(held)
 
 
 @pytest.mark.parametrize("need", [0, -1, 4])

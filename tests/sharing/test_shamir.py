@@ -21,6 +21,7 @@ from shares.errors import DuplicatePointError, ParameterError
 from shares.field.gf256 import Field
 from shares.memory import Secret
 from shares.sharing import shamir
+from shares.sharing.rule import Rule, deal
 from shares.sharing.shamir import draw, evaluate, interpolate, random_polynomial
 
 
@@ -249,6 +250,17 @@ def test_with_a_source_that_fails_different_payloads_still_give_different_coeffi
     assert all(alike) if one == other else not any(alike)
     # One coefficient is never the other, nor the constant that the source gave.
     assert len(one) < 16 or len({*rows[0], bytes(len(one))}) == need
+
+
+def test_with_a_source_that_fails_nodes_of_one_payload_still_differ(monkeypatch) -> None:
+    """Below an 'any 1 of' two nodes have one payload. With equal coefficients, shares of the one would serve the other:
+    two of its custodians would become a quorum together with none of their own."""
+    monkeypatch.setattr(shamir.secrets, "token_bytes", constant)
+    rule = Rule(1, (Rule(2, ("north-pier", "south-pier")), Rule(2, ("registrar", "light-house"))))
+    dealing = deal(Field(), rule, Secret.of(bytes(range(64))))
+    first, second = ([revealed(row) for row in polynomial] for polynomial in dealing.polynomials[1:])
+    assert first[0] == second[0] == bytes(range(64))
+    assert first[1] != second[1]
 
 
 def test_the_pad_depends_on_the_nonce_alone_when_all_else_is_the_same(monkeypatch) -> None:

@@ -222,7 +222,8 @@ def deal(plan: Plan) -> Dealing:
     def descend(node: Rule, f_0: bytes, prefix: list[list[int]]) -> None:
         k, length = node["need"], len(f_0)
         wanted = (k - 1 + plan.raise_degree) * length
-        drawn = draw(f"node {len(dealing.nodes)}", wanted, f_0) if wanted else b""
+        steps = bytes(number for step in prefix for number in step)
+        drawn = draw(f"node {len(dealing.nodes)}", wanted, steps + f_0) if wanted else b""
         coefficients = [f_0] + [drawn[i : i + length] for i in range(0, len(drawn), length)]
         dealing.nodes.append(Node(prefix, k, coefficients))
         for x, child in enumerate(node["from"], 1):

@@ -107,8 +107,9 @@ SEEDS = (
     "In place of randomness: each draw's entropy is SHAKE256 of `seed`/`purpose`/entropy, its nonce 32 bytes of "
     "SHAKE256 of `seed`/`purpose`/nonce, and what is drawn is entropy XOR SHAKE256('shares/v1/hedge' || nonce || what "
     "is hidden). Blind and mask are one draw of 48 bytes that hides the message (a later epoch keeps the blind, and "
-    "only the mask is taken from it); f_1, f_2, ... of a node, in this order, are one draw that hides its f_0. Nodes "
-    "are numbered in pre-order. No reader can see any of this, so another program may draw otherwise."
+    "only the mask is taken from it); f_1, f_2, ... of a node, in this order, are one draw that hides its f_0, with "
+    "the k and x of each step to the node, one byte each, before it. Nodes are numbered in pre-order. No reader can "
+    "see any of this, so another program may draw otherwise."
 )
 
 
