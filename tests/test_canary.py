@@ -2,7 +2,8 @@
 
 What is looked at: the text, the repr, the arguments and every attribute of each exception, of its causes and its
 contexts; the formatted traceback; log records; both streams; command lines and environments of processes. What is
-looked for: the secret and the rows of its shares, raw and in each encoding, in pieces of eight.
+looked for: the secret and the rows of its shares, a passphrase and the private keys that it opens, raw and in each
+encoding, in pieces of eight.
 
 Only names of places and of forms are ever asserted on, so that a failing test does not print what it has found.
 """
@@ -14,6 +15,7 @@ import contextlib
 import json
 import logging
 import os
+import signal
 import subprocess
 import sys
 import time
@@ -24,18 +26,29 @@ from typing import Any
 
 import pytest
 from cli.harness import PROGRAM, Place, run, spawn, with_json
-from strategies import crooked_split, flat, presented, resealed, with_rows
+from cli.terminal import on_terminal
+from parties import QUICK, by, card
+from strategies import crooked_split, flat, presented, resealed, revealed, with_rows
 
-from shares.custody.deliver import fed, to_command, to_file
+from shares.cli.passphrases import GivenPassphrases
+from shares.custody.deliver import fed, sealed_for, to_command, to_file
 from shares.custody.encrypted_file import check_file, encrypt_file, open_file
 from shares.custody.handover import hand_over
+from shares.custody.opening import Opening
+from shares.custody.packing import Packing
+from shares.custody.parties import write_party
+from shares.custody.passphrase import draw_passphrase
 from shares.custody.payload import make_payload, open_payload
 from shares.custody.presented import load_shares
 from shares.custody.recover import recover
 from shares.custody.split import split
 from shares.custody.verify import verify_share
+from shares.documents.party import OpenPartyKey, PartyKey, new_party
 from shares.documents.record import Record
+from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
+from shares.documents.wrapped_share import WrappedShare
+from shares.documents.wrapping import Cost, card_sealer, passphrase_sealer
 from shares.errors import SharesError, StorageError
 from shares.field.gf256 import Field
 from shares.memory import Secret
@@ -500,6 +513,7 @@ def test_processes_at_work_show_no_secret(place: Place, telltales: Telltales, tm
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
     )
+    fed = 0
     try:
         fed = int(ready.read_text())
         looked_at = [(who, name, data) for who in (process.pid, fed) for name, data in seen_of(who)]
@@ -512,6 +526,9 @@ def test_processes_at_work_show_no_secret(place: Place, telltales: Telltales, tm
         assert process.returncode == 0
         assert telltales.found(out + err) is None
     finally:
+        # A command that waits would keep the pipes open for ever.
+        with contextlib.suppress(ProcessLookupError):
+            fed and os.kill(fed, signal.SIGKILL)
         process.kill()
         process.communicate()
 
@@ -547,3 +564,359 @@ def test_whole_programs_show_no_secret(place: Place, telltales: Telltales, tmp_p
         if telltales.found(result.out + result.err) is not None or "Traceback" in result.err:
             shown.append(line[0])
     assert shown == []
+
+
+# Passphrases and the private keys of parties.
+
+PHRASE = b"TELLTALE-5b1d8e04-Wm2xQ9vT-Zr6nLc3Y-u0pG"
+
+
+@pytest.fixture(scope="module")
+def party_key() -> PartyKey:
+    """A party whose key the telltale passphrase opens."""
+    return new_party("registrar", Secret.of(PHRASE), cost=QUICK)
+
+
+@pytest.fixture(scope="module")
+def private_telltales(place: Place, telltales: Telltales, party_key: PartyKey) -> Telltales:
+    """The telltales of before, with those of the passphrase and of all private keys."""
+    with party_key.open(Secret.of(PHRASE)) as key:
+        private = revealed(key.content)
+    found = Telltales(PHRASE, private[:32], private[32:64], private[64:])
+    found.pieces.update(telltales.pieces)
+    return found
+
+
+@pytest.mark.parametrize("form", forms(PHRASE))
+def test_the_search_finds_a_passphrase_and_a_private_key(
+    form: str, private_telltales: Telltales, party_key: PartyKey
+) -> None:
+    with party_key.open(Secret.of(PHRASE)) as key:
+        private = revealed(key.content)
+    for secret in (PHRASE, private[:32], private[32:64], private[64:]):
+        assert private_telltales.found(b"x" + forms(secret)[form][2:28] + b"x") is not None
+    # What is public of a party, and what is sealed, is not taken for it.
+    assert private_telltales.found(party_key.to_file()) is None
+
+
+def wrapped_edits(document: WrappedShare | PartyKey | SealedSecret) -> list[bytes]:
+    """Files of sealed content, damaged in many ways; own digests fit or do not."""
+    members = json.loads(document.to_file())
+    sealed, wrapping = members["sealed"], members["wrapping"]
+    texts: list[Any] = [
+        members | {"sealed": sealed + "="},
+        members | {"sealed": sealed[:-4]},
+        members | {"sealed": [sealed]},
+        members | {"sealed": "A" * len(sealed)},
+        members | {"wrapping": wrapping | {"memory": 1 << 30}},
+        members | {"wrapping": wrapping | {"passes": 9, "commitment": sealed}},
+        members | {"wrapping": wrapping | {"salt": "A" * 22}},
+        members | {"wrapping": wrapping | {"method": "sesame"}},
+        members | {"wrapping": sealed},
+        members | {"extra": ""},
+        {name: value for name, value in members.items() if name != "wrapping"},
+    ]
+    data = document.to_file()
+    return [json.dumps(text).encode() for text in texts] + [data[:-9], flip(data, len(data) // 2), data + data]
+
+
+def private_failing_paths(
+    place: Place, party_key: PartyKey, folder: Path
+) -> Iterator[tuple[str, Callable[[], object]]]:
+    """Every way in which the library refuses with a passphrase or a private key in its hands."""
+    phrase, wrong = Secret.of(PHRASE), Secret.of(b"another passphrase, of no meaning")
+    share = Share.parse(place.shares[0].read_bytes())
+    record = Record.parse(place.record.read_bytes())
+    by_phrase = WrappedShare.wrap(share, passphrase_sealer(phrase, QUICK))
+    for_card = WrappedShare.wrap(share, card_sealer(party_key.card.recipient()))
+    for_other = WrappedShare.wrap(share, card_sealer(card("dry-dock").recipient()))
+    key = party_key.open(phrase)
+    given = folder / "given"
+    given.write_bytes(PHRASE + b"\n")
+
+    # Making.
+    yield "party without a name", lambda: new_party("", phrase, cost=QUICK)
+    yield "name that is the passphrase", lambda: new_party(PHRASE.decode() + "/", phrase, cost=QUICK)
+    yield "contact out of range", lambda: new_party("a", phrase, contact=PHRASE.decode() + "\n", cost=QUICK)
+    yield "cost out of range", lambda: new_party("a", phrase, cost=Cost(memory=1, passes=1, lanes=1))
+    yield "words out of range", lambda: draw_passphrase(5)
+    (folder / "registrar.card.json").write_bytes(b"")
+    yield "party's file is there", lambda: write_party(party_key, folder)
+    yield "party's folder is missing", lambda: write_party(party_key, folder / "no")
+
+    # Opening.
+    yield "key, wrong passphrase", lambda: party_key.open(wrong)
+    yield "key of another, by the passphrase", lambda: new_party("b", wrong, cost=QUICK).open(phrase)
+    yield "key beside another card", lambda: party_key.model_copy(update={"card": card("dry-dock")}).open(phrase)
+    yield "private keys of another card", lambda: OpenPartyKey(card("dry-dock"), Secret.of(revealed(key.content)))
+    yield "private keys cut short", lambda: OpenPartyKey(party_key.card, Secret.of(revealed(key.content)[:-1]))
+    yield "private keys that are a passphrase", lambda: OpenPartyKey(party_key.card, Secret.of(PHRASE))
+    yield "share, wrong passphrase", lambda: by_phrase.open(by(wrong))
+    yield "share by passphrase, by the key", lambda: by_phrase.open(key.open)
+    yield "share for another card", lambda: for_other.open(key.open)
+    for name, wrapped, opener in (("phrase", by_phrase, by(phrase)), ("card", for_card, key.open)):
+        forged = wrapped.model_copy(update={"epoch": 2}).with_digest()
+        yield f"forged, {name}", lambda forged=forged, opener=opener: forged.open(opener)
+        for i, data in enumerate(wrapped_edits(wrapped)):
+            yield f"edit {i}, {name}", lambda data=data, opener=opener: WrappedShare.parse(data).open(opener)
+    for i, data in enumerate(wrapped_edits(party_key)):
+        yield f"edit {i}, key", lambda data=data: PartyKey.parse(data).open(phrase)
+    short = by_phrase.wrapping.model_copy(update={"commitment": bytes(32)})
+    yield "commitment of another", lambda: by(phrase)(short, by_phrase.sealed, by_phrase.bound())
+    packing = Packing.by_passphrase(phrase)
+    yield "packing that reads back bare", lambda: packing.unpack(share.to_file(), "it", share)
+    yield "packing that reads back for a card", lambda: packing.unpack(for_card.to_file(), "it", share)
+    useless = party_key.card.model_copy(update={"x25519": bytes(32)})
+    recovery = recover(presented([Share.parse(path.read_bytes()) for path in place.shares]))
+    yield "receiver without usable keys", lambda: sealed_for(useless, recovery, "x25519")
+
+    # Where passphrases come from.
+    for text in (PHRASE + b"\n" + PHRASE, PHRASE * 30, PHRASE + b"\n\n"):
+        (folder / f"bad{len(text)}").write_bytes(text)
+        bad = GivenPassphrases((str(folder / f"bad{len(text)}"),), ())
+        yield f"file of {len(text)} bytes", lambda bad=bad: bad.new("registrar")
+    known = GivenPassphrases((str(given),), ())
+    other = new_party("registrar", wrong, cost=QUICK)
+    yield "given passphrase does not fit", lambda: Opening(known).party(other)
+    yield "given passphrase, share for another card", lambda: Opening(known, [party_key]).share(for_other)
+    damaged = party_key.model_copy(update={"sealed": bytes(144)})
+    yield "given passphrase, damaged key", lambda: Opening(known, [damaged]).share(for_card)
+    yield "passphrase in place of a number", lambda: GivenPassphrases((), ("registrar=2",))
+
+    # Signing.
+    signed = record.signed(key, "dealer")
+    yield "signed twice", lambda: signed.signed(key, "dealer")
+    yield "signed in no role", lambda: record.signed(key, "auditor")  # type: ignore[arg-type]
+    yield "signed over what is no JSON", lambda: key.sign("record", {"a": object()})
+
+    # The holders.
+    for name, holder in (("key", key), ("recipient key", key._recipient_key())):
+        yield f"{name} pickled", lambda holder=holder: __import__("pickle").dumps(holder)
+        yield f"{name} in JSON", lambda holder=holder: json.dumps({"key": holder})
+    key_closed = party_key.open(phrase)
+    key_closed.close()
+    yield "key closed", lambda: key_closed.sign("record", {})
+    yield "passphrase formatted", lambda: f"{phrase:s}"
+
+
+def test_no_exception_shows_a_passphrase_or_a_private_key(
+    place: Place,
+    party_key: PartyKey,
+    private_telltales: Telltales,
+    tmp_path: Path,
+    caplog: pytest.LogCaptureFixture,
+    capfd: pytest.CaptureFixture[str],
+) -> None:
+    caplog.set_level(logging.DEBUG)
+    seen, passed, leaks = 0, [], set()
+    for name, attempt in private_failing_paths(place, party_key, tmp_path):
+        try:
+            attempt()
+        except ALLOWED as error:
+            seen += 1
+            leaks |= {
+                (name, where, form) for where, shown in shown_by(error) if (form := private_telltales.found(shown))
+            }
+        else:
+            passed.append(name)
+    assert leaks == set()
+    assert passed == []
+    assert seen >= 80
+    out, err = capfd.readouterr()
+    shown = (("stdout", out), ("stderr", err), ("log", caplog.text))
+    assert [name for name, text in shown if private_telltales.found(text) is not None] == []
+
+
+def test_objects_that_hold_passphrases_or_keys_do_not_show_them(
+    place: Place, party_key: PartyKey, private_telltales: Telltales, tmp_path: Path
+) -> None:
+    phrase = Secret.of(PHRASE)
+    (tmp_path / "given").write_bytes(PHRASE)
+    given = GivenPassphrases((str(tmp_path / "given"),), ())
+    given.new("registrar")
+    key, opening = party_key.open(phrase), Opening(given, [party_key])
+    opening.party(party_key)
+    shown = []
+    for thing in (phrase, party_key, key, key._recipient_key(), given, opening, Packing.by_passphrase(phrase)):
+        for way in (repr, str, lambda thing: f"{thing!r:.5000}"):
+            if private_telltales.found(way(thing)) is not None:
+                shown.append(type(thing).__name__)
+    assert shown == []
+
+
+def private_command_lines(place: Place, party_key: PartyKey, folder: Path) -> list[list[str | Path]]:
+    """Every command that takes a passphrase or a party key, failing and succeeding."""
+    phrase, wrong, two = folder / "phrase", folder / "wrong", folder / "two"
+    phrase.write_bytes(PHRASE + b"\n")
+    wrong.write_bytes(b"another passphrase, of no meaning\n")
+    two.write_bytes(PHRASE + b"\n" + PHRASE)
+    key, made = write_party(party_key, folder)
+    share = Share.parse(place.shares[0].read_bytes())
+    by_phrase, for_card, secret = (folder / name for name in ("by.json", "for.json", "secret.json"))
+    by_phrase.write_bytes(WrappedShare.wrap(share, passphrase_sealer(Secret.of(PHRASE), QUICK)).to_file())
+    for_card.write_bytes(WrappedShare.wrap(share, card_sealer(party_key.card.recipient())).to_file())
+    recovery = recover(presented([Share.parse(path.read_bytes()) for path in place.shares]))
+    secret.write_bytes(sealed_for(party_key.card, recovery, "x25519"))
+    forged = folder / "forged.json"
+    forged.write_bytes(
+        WrappedShare.parse(for_card.read_bytes()).model_copy(update={"epoch": 2}).with_digest().to_file()
+    )
+    bent_key = folder / "bent.key.json"
+    bent_key.write_bytes(party_key.model_copy(update={"sealed": bytes(144)}).to_file())
+    odd = []
+    for kind, document in (("key", party_key), ("wrapped", WrappedShare.parse(by_phrase.read_bytes()))):
+        for i, data in enumerate(wrapped_edits(document)):
+            odd.append(folder / f"{kind}{i}.json")
+            odd[-1].write_bytes(data)
+    lines: list[list[str | Path]] = []
+    for file in (phrase, wrong, two, folder / "missing"):
+        given = [f"--passphrase-file={file}"]
+        at = folder / file.name.replace("phrase", "right")
+        lines += [
+            ["party", "new", "a", "--in", folder / "nowhere", *given],
+            ["party", "new", "a/b", "--in", folder, *given],
+            ["party", "passphrase", key, "--to", f"{at}.key", "--new-passphrase-file", two, *given],
+            ["party", "passphrase", bent_key, "--to", f"{at}.key", "--new-passphrase-file", wrong, *given],
+            ["wrap", place.shares[0], "--to", f"{at}.wrapped", "--passphrase", *given],
+            ["unwrap", by_phrase, "--to", f"{at}.bare", *given],
+            ["unwrap", for_card, "--to", f"{at}.bare2", "--key", key, *given],
+            ["unwrap", for_card, "--to", f"{at}.bare3", "--key", bent_key, *given],
+            ["unwrap", forged, "--to", f"{at}.bare4", "--key", key, *given],
+            ["unwrap", secret, "--to", f"{at}.secret", "--key", key, *given],
+            ["record", "sign", place.record, "--as", "witness", "--to", f"{at}.record", "--key", key, *given],
+            ["record", "sign", place.record, "--as", "witness", "--to", phrase, "--key", key, *given],
+            ["verify", by_phrase, for_card, forged, *odd, "--key", key, *given],
+            ["verify", by_phrase, for_card, "--record", place.record, "--trust", made, "--key", key, *given],
+            ["recover", by_phrase, place.shares[1], "--check", *given],
+            ["recover", for_card, place.shares[1], "--key", key, "--for", made, "--to", f"{at}.sealed", *given],
+            ["recover", by_phrase, place.shares[1], *given, "--", "sh", "-c", "cat >/dev/null; exit 3"],
+            ["acknowledge", "--label", "x", "--key", key, "--to", f"{at}.ack", *given],
+            place.split_arguments(folder=f"{at}.set", deliver=[folder], more=[*given]),
+            place.split_arguments(folder=f"{at}.set2", deliver=[folder], more=["--plain", f"--dealer={key}", *given]),
+        ]
+    lines += [["show", path] for path in (key, made, by_phrase, for_card, secret, *odd)]
+    # A slip of the hand: the passphrase's file where another is wanted.
+    lines += [["show", phrase], ["party", "show", phrase], ["verify", phrase], ["verify", by_phrase, "--key", phrase]]
+    lines += [["unwrap", phrase, "--to", folder / "x"], ["recover", phrase, "--check"]]
+    lines += [["wrap", place.shares[0], "--to", folder / "x", "--for", phrase]]
+    return lines + [with_json(line) for line in lines]
+
+
+def test_no_command_shows_a_passphrase_or_a_private_key(
+    place: Place,
+    party_key: PartyKey,
+    private_telltales: Telltales,
+    tmp_path: Path,
+    caplog: pytest.LogCaptureFixture,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr("shares.documents.wrapping.Cost", lambda *given: Cost(*given) if given else QUICK)
+    caplog.set_level(logging.DEBUG)
+    leaks, codes = set(), set()
+    for line in private_command_lines(place, party_key, tmp_path):
+        result = run(*line)
+        codes.add(result.code)
+        for where, shown in (("stdout", result.out), ("stderr", result.err)):
+            if form := private_telltales.found(shown):
+                leaks.add((line[0], len(line), where, form))
+    assert leaks == set()
+    assert codes == {0, 2, 3, 4, 5, 7}
+    assert private_telltales.found(caplog.text) is None
+    # What was written is sealed, public, or asked for as the secret itself; a passphrase stands in no file but its own.
+    phrases = Telltales(PHRASE)
+    wrote = [path.name for path in tmp_path.iterdir() if path.is_file() and phrases.found(path.read_bytes())]
+    assert sorted(wrote) == ["phrase", "two"]
+
+
+def test_a_fault_with_a_passphrase_in_hand_shows_none(
+    place: Place, party_key: PartyKey, private_telltales: Telltales, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    key, _ = write_party(party_key, tmp_path)
+    (tmp_path / "phrase").write_bytes(PHRASE)
+    given = f"--passphrase-file={tmp_path / 'phrase'}"
+
+    def broken(*_: object, **__: object) -> None:
+        raise RuntimeError(PHRASE, PHRASE.hex())
+
+    shown = []
+    for name, arguments in (
+        ("shares.documents.wrapping._stretch", ["record", "sign", place.record, "--as", "dealer", "--key", key]),
+        ("shares.documents.party.open_by_passphrase", ["record", "sign", place.record, "--as", "dealer", "--key", key]),
+        ("shares.documents.wrapping.AESGCM", ["wrap", place.shares[0], "--passphrase"]),
+        ("shares.cli.passphrases.weakness", ["party", "new", "north-pier", "--in", tmp_path]),
+        ("shares.cli.passphrases.read_secret", ["wrap", place.shares[0], "--passphrase"]),
+    ):
+        to = ["--to", tmp_path / "never"] if arguments[0] != "party" else []
+        with monkeypatch.context() as patch:
+            patch.setattr(name, broken)
+            for more in ([], ["--json"]):
+                result = run(*arguments, *to, given, *more)
+                if result.code != 1 or private_telltales.found(result.out + result.err) is not None:
+                    shown.append((name, result.code))
+    assert shown == []
+    assert not (tmp_path / "never").exists()
+
+
+def test_a_program_and_the_command_it_feeds_show_no_passphrase(
+    place: Place, party_key: PartyKey, private_telltales: Telltales, tmp_path: Path
+) -> None:
+    """A passphrase from an inherited pipe opens a party key, that a share, and a command is fed; both are looked at."""
+    key, _ = write_party(party_key, tmp_path)
+    share = Share.parse(place.shares[0].read_bytes())
+    (tmp_path / "w.json").write_bytes(WrappedShare.wrap(share, card_sealer(party_key.card.recipient())).to_file())
+    ready, go = tmp_path / "ready", tmp_path / "go"
+    os.mkfifo(ready)
+    os.mkfifo(go)
+    script = (
+        f"import os, sys; data = sys.stdin.buffer.read(); "
+        f"open({str(ready)!r}, 'w').write(str(os.getpid())); open({str(go)!r}).read()"
+    )
+    reading, writing = os.pipe()
+    os.write(writing, PHRASE + b"\n")
+    os.close(writing)
+    arguments = ["recover", tmp_path / "w.json", place.shares[1], "--key", key, f"--passphrase-fd={reading}"]
+    process = subprocess.Popen(
+        [PROGRAM, *arguments, "--", sys.executable, "-c", script],
+        stdin=subprocess.DEVNULL,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        pass_fds=[reading],
+    )
+    os.close(reading)
+    fed = 0
+    try:
+        fed = int(ready.read_text())
+        looked_at = [(who, name, data) for who in (process.pid, fed) for name, data in seen_of(who)]
+        leaks = sorted({name for _, name, data in looked_at if private_telltales.found(data) is not None})
+        assert leaks == []
+        assert {(fed, "cmdline"), (fed, "environ")} <= {(who, name) for who, name, _ in looked_at}
+        go.write_text("")
+        out, err = process.communicate(timeout=30)
+        assert process.returncode == 0
+        assert private_telltales.found(out + err) is None
+    finally:
+        # A command that waits would keep the pipes open for ever.
+        with contextlib.suppress(ProcessLookupError):
+            fed and os.kill(fed, signal.SIGKILL)
+        process.kill()
+        process.communicate()
+
+
+def test_a_terminal_shows_no_passphrase(
+    place: Place, party_key: PartyKey, private_telltales: Telltales, tmp_path: Path
+) -> None:
+    """Typed right, typed wrong, and typed half when the program is stopped."""
+    key, _ = write_party(party_key, tmp_path)
+    arguments = ["record", "sign", place.record, "--as", "witness", "--key", key]
+    typed = PHRASE.decode()
+    shown = []
+    for i, lines in enumerate(([typed], [typed[1:], typed + " ", typed], [typed[:-1]] * 3, [typed[:20] + "\x03"])):
+        with on_terminal(
+            *arguments, "--to", tmp_path / f"record{i}", env={**os.environ, "PYTHONDEVMODE": "1"}
+        ) as terminal:
+            for line in lines:
+                terminal.answer("Passphrase of registrar: ", line)
+            code, out = terminal.finish()
+            looked_at = terminal.shown + out.encode()
+        shown.append((code, private_telltales.found(looked_at), b"Traceback" in looked_at))
+    assert shown == [(0, None, False), (0, None, False), (4, None, False), (1, None, False)]

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import contextlib
 import json
+import os
 import sys
 import textwrap
 import time
@@ -43,6 +44,16 @@ def filled(_: click.Context, parameter: click.Parameter, value: Given) -> Given:
             hint="in a script, see whether a variable is not set",
         )
     return value
+
+
+def refuse_taken(target: str) -> None:
+    """Refuse a name for a new file that is taken, before anybody is asked for a passphrase.
+
+    Raises:
+        StorageError: something has the name.
+    """
+    if os.path.lexists(target):
+        raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
 
 
 def print_result(members: dict[str, Any], lines: Iterable[str], *, as_json: bool, aside: bool = False) -> None:

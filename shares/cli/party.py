@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from shares.cli.output import filled, json_option, print_result
+from shares.cli.output import filled, json_option, print_result, refuse_taken
 from shares.cli.passphrases import GivenPassphrases, passphrase_options
 from shares.cli.signals import held_signals
 from shares.custody.parties import check_party_paths, load_card, load_key, write_party
@@ -111,12 +111,14 @@ def passphrase(
       shares party passphrase north-pier.key.json --to new.key.json \\
         --passphrase-file north-pier.passphrase --new-passphrase-file new.passphrase
     """
+    refuse_taken(target)
     old = load_key(key)
     name = old.card.name
-    chosen = (new_passphrase_file,) if new_passphrase_file else ()
+    # The sign of equality says that all of what follows is the path.
+    chosen = (f"={new_passphrase_file}",) if new_passphrase_file else ()
     with (
         GivenPassphrases(passphrase_files, descriptors) as known,
-        GivenPassphrases(chosen, ()) as fresh,
+        GivenPassphrases(chosen, (), option="--new-passphrase-file FILE") as fresh,
         known.opening(name, old.open) as opened,
     ):
         rewrapped = opened.wrapped(fresh.new(name))

@@ -9,7 +9,6 @@ Does not: ask anything where there is no terminal.
 from __future__ import annotations
 
 import os
-import sys
 import termios
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
@@ -60,12 +59,14 @@ class GivenPassphrases:
     Args:
         files: ``[NAME=]FILE``, split at the first sign of equality.
         descriptors: ``[NAME=]N``.
+        option: what to advise where one is missing; the options for passphrases by name by default.
     """
 
-    def __init__(self, files: tuple[str, ...], descriptors: tuple[str, ...]) -> None:
+    def __init__(self, files: tuple[str, ...], descriptors: tuple[str, ...], *, option: str | None = None) -> None:
         numbered = [(name, _descriptor(number)) for name, number in map(_named, descriptors)]
         self._sources = [*map(_named, files), *numbered]
         self._read: dict[str, Secret] = {}
+        self._option = option
 
     def opening(self, name: str, attempt: Callable[[Secret], Opened]) -> Opened:
         """Return what ``attempt`` returns for the first passphrase of ``name`` that fits; those of anyone come next.
@@ -107,9 +108,10 @@ class GivenPassphrases:
                 if owner == wanted:
                     return self._noted(name, self._passphrase(source))
         if not os.isatty(_STDIN):
+            options = self._option or f"--passphrase-file {name}=FILE or --passphrase-fd {name}=N"
             raise ParameterError(
                 f"no passphrase is given for {name}, and there is no terminal to ask for it",
-                hint=f"give --passphrase-file {name}=FILE or --passphrase-fd {name}=N; `shares passphrase` draws one",
+                hint=f"give {options}; `shares passphrase` draws one",
             )
         typed = self._read[f"typed for {name}"] = _prompt(f"New passphrase for {name}: ")
         with _prompt("The same again: ") as again:
@@ -193,7 +195,8 @@ def _prompt(text: str) -> Secret:
         typed = Secret.of(view[: length - ended])
     if not ended or not len(typed):
         typed.close()
-        raise ParameterError("no passphrase was typed", hint="type one line, or give --passphrase-file")
+        what = "no passphrase was typed" if length <= MAX_PASSPHRASE else "the passphrase is longer than 1,024 bytes"
+        raise ParameterError(what, hint="type one line, or give --passphrase-file")
     return typed
 
 
@@ -207,5 +210,4 @@ def _without_echo() -> Iterator[None]:
     try:
         yield
     finally:
-        sys.stderr.flush()
         termios.tcsetattr(_STDIN, termios.TCSAFLUSH, before)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import click
 
 from shares.cli.keys import opening
-from shares.cli.output import filled, json_option, print_result
+from shares.cli.output import filled, json_option, print_result, refuse_taken
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_key
 from shares.custody.presented import load_record
@@ -49,6 +49,7 @@ def sign(
       shares record sign tide-archive/record.json --as witness --to signed-record.json \\
         --key registrar.key.json --passphrase-file registrar.passphrase
     """
+    refuse_taken(target)
     found, key = load_record(record), load_key(key_file)
     with opening((), passphrase_files, descriptors) as at_hand:
         signed = found.signed(at_hand.party(key), role)

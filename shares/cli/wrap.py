@@ -2,12 +2,10 @@
 
 from __future__ import annotations
 
-import os
-
 import click
 
 from shares.cli.keys import suite_option
-from shares.cli.output import filled, json_option, print_result
+from shares.cli.output import filled, json_option, print_result, refuse_taken
 from shares.cli.passphrases import GivenPassphrases, passphrase_options
 from shares.custody.packing import Packing
 from shares.custody.parties import load_card
@@ -15,8 +13,8 @@ from shares.custody.presented import parse_share
 from shares.documents.base import MAX_FILE
 from shares.documents.share import Share
 from shares.documents.wrapping import Suite
-from shares.errors import DocumentError, ParameterError, StorageError, VerificationError
-from shares.storage import read_back, read_file, write_new
+from shares.errors import DocumentError, ParameterError, VerificationError
+from shares.storage import discard, read_back, read_file, write_new
 
 
 @click.command()
@@ -45,8 +43,7 @@ def command(
     """
     if by_passphrase == (card_file is not None):
         raise ParameterError("give exactly one of --passphrase and --for CARD", hint="see --help")
-    if os.path.lexists(target):
-        raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
+    refuse_taken(target)
     share = parse_share(read_file(share_file, limit=MAX_FILE), where=share_file)
     if not isinstance(share, Share):
         raise DocumentError("it is wrapped already", where=share_file, hint="`shares unwrap` opens it first")
@@ -63,7 +60,11 @@ def command(
             else Packing.by_passphrase(passphrases.new(share.custodian))
         )
         write_new(target, packing.pack(share), secret=True)
-        packing.unpack(read_back(target, limit=MAX_FILE), target, share)
+        try:
+            packing.unpack(read_back(target, limit=MAX_FILE), target, share)
+        except BaseException:  # What does not come back as it was is not left to be relied on.
+            discard(target)
+            raise
     members = {"done": True, "share": share_file, "wrapped": target, "custodian": share.custodian, "how": packing.words}
     lines = [
         f"The share of {share.custodian} is {packing.words}, in {target}, and was read back.",

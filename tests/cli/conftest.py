@@ -6,7 +6,12 @@ import shutil
 from pathlib import Path
 
 import pytest
+from cli.harbour import Harbour
 from cli.harness import NAMES, Place
+from parties import QUICK
+
+from shares.documents import wrapping
+from shares.documents.wrapping import Cost
 
 
 @pytest.fixture
@@ -27,3 +32,15 @@ def dealt(_dealt_once: Path, tmp_path: Path) -> Place:
     """A set split 3-of-5, to be damaged at will."""
     shutil.copytree(_dealt_once, tmp_path / "dealt")
     return Place(tmp_path / "dealt")
+
+
+@pytest.fixture
+def quick(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Cheap stretching for what commands wrap within this process; what a file asks for is left as it is."""
+    monkeypatch.setattr(wrapping, "Cost", lambda *given: Cost(*given) if given else QUICK)
+
+
+@pytest.fixture
+def harbour(dealt: Place) -> Harbour:
+    """A set split 3-of-5, its shares bare, and the parties of the harbour with their passphrases."""
+    return Harbour.make(dealt)
