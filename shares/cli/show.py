@@ -120,10 +120,7 @@ def _record(data: bytes, where: str) -> dict[str, object]:
 
 def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
     found = Acknowledgement.parse(data, where=where)
-    by = f"a printed form, SHA-256 {found.form.hex()}" if found.form is not None else "nobody"
-    if found.card is not None:
-        by = f"signed by {found.card.name}, card {found.card.fingerprint}"
-    return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": by}
+    return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": found.words()}
 
 
 def _card_facts(card: PartyCard) -> dict[str, object]:

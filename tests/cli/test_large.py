@@ -120,7 +120,17 @@ def test_a_failed_split_leaves_no_encrypted_file(tmp_path: Path) -> None:
     assert not encrypted(place).exists()
 
 
-@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_once_the_record_stands_the_encrypted_file_stays(tmp_path: Path) -> None:
+    """It was once removed again when the result could not be printed: the shares were then worth nothing."""
+    place = Place.make(tmp_path / "place", LARGE)
+    with open("/dev/full", "w") as full:
+        done = subprocess.run([PROGRAM, *place.split_arguments()], stdout=full, stderr=subprocess.PIPE, check=False)
+    assert done.returncode == 5
+    assert b"what was asked for is done all the same" in done.stderr
+    assert run(*recover(place, "--encrypted", encrypted(place), "--check")).code == 0
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM, signal.SIGQUIT])
 def test_a_signal_while_encrypting_leaves_nothing(tmp_path: Path, number: signal.Signals) -> None:
     place = Place.make(tmp_path / "place", b"")
     process = subprocess.Popen(
