@@ -17,7 +17,7 @@ from shares.documents.base import canonical
 
 _P = 2**255 - 19
 # The y of the points whose order divides 8: of order 1, 2, 4, and twice 8 (RFC 8032's curve; a test works them out).
-_Y8 = 0x7A03AC9277FDC74EC6CC392CFA53202A0F67100D760B3CBA4FD83D3D706A17C7
+_Y8 = 0x7A03AC9277FDC74EC6CC392CFA53202A0F67100D760B3CBA4FD84D3D706A17C7
 _SMALL_ORDER = frozenset({1, _P - 1, 0, _Y8, _P - _Y8})
 
 

@@ -143,7 +143,7 @@ def test_the_keys_of_small_order_are_exactly_those() -> None:
         assert added(four, four) == (0, 1)
 
 
-@pytest.mark.parametrize("y", sorted(signing._SMALL_ORDER) + [P, P + 1, 2**255 - 1], ids=hex)
+@pytest.mark.parametrize("y", [*sorted(signing._SMALL_ORDER), P, P + 1, 2**255 - 1], ids=hex)
 @pytest.mark.parametrize("sign", [0, 1])
 def test_a_key_that_fits_any_content_signs_nothing(y: int, sign: int) -> None:
     """With a public key of small order the signature R || 0, R such a point, verifies whatever was signed, or often."""
