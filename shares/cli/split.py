@@ -129,7 +129,7 @@ def command(
         --custodian north-pier --custodian south-pier --custodian light-house \\
         --card north-pier.card.json --card south-pier.card.json --passphrase-file light-house.passphrase \\
         --set tide-archive --deliver /dev/shm/handover
-      shares split key.pem --policy policy.toml --set by-policy --deliver /media/stick --plain
+      shares split key.pem --policy policy.toml --set by-policy --deliver /media/stick
     """
     if policy is None:
         wanted = from_options(need, custodians, label, polynomial, cards)
