@@ -95,6 +95,19 @@ def test_a_damaged_file_is_refused_before_any_plaintext_exists(place: Place, how
     assert_refused(["verify", "--record", place.record, "--encrypted", path], 4, watched=place.folder)
 
 
+def test_show_knows_the_file_by_its_beginning(place: Place) -> None:
+    told = run("show", encrypted(place), "--json").json
+    assert (told["kind"], told["set"], told["bytes"]) == (
+        "encrypted-file",
+        run("show", place.record, "--json").json["set"],
+        encrypted(place).stat().st_size,
+    )
+    assert "shares verify --record" in run("show", encrypted(place)).out
+    policy = place.folder / "policy.toml"
+    policy.write_text("[rule]")
+    assert_refused(["show", policy], 4, "shares plan")
+
+
 def test_an_auditor_checks_the_file_without_any_key(place: Place) -> None:
     done = run("verify", "--record", place.record, "--encrypted", encrypted(place))
     assert (done.code, "whole" in done.out) == (0, True)
