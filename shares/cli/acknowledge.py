@@ -60,14 +60,11 @@ def command(
     if page:
         _write_form(custodian or "", label, target, as_json=as_json)
         return
-    if not as_json:
-        for line in ("The duties:", *(f"  - {duty}" for duty in DUTIES)):
-            click.echo(line, err=True)
     if key_file is not None:
         key = load_key(key_file)
         if custodian is not None and custodian != key.card.name:
             warn(f"the key is of {key.card.name}: `split` takes it for {custodian} only where that card is theirs.")
-        _have_accepted(custodian or key.card.name)
+        _have_accepted(custodian or key.card.name, as_json=as_json)
         with opening((), passphrase_files, descriptors) as at_hand:
             made = Acknowledgement.signed_by(at_hand.party(key), custodian=custodian or key.card.name, label=label)
         how = f"signed by {key.card.name}, card {key.card.fingerprint}"
@@ -87,8 +84,11 @@ def command(
     )
 
 
-def _have_accepted(custodian: str) -> None:
-    """Ask at a terminal, where there is one: nobody signs what they have not read."""
+def _have_accepted(custodian: str, *, as_json: bool) -> None:
+    """Show the duties and, at a terminal, ask: nobody signs what they have not read."""
+    if not as_json:
+        for line in ("The duties:", *(f"  - {duty}" for duty in DUTIES)):
+            click.echo(line, err=True)
     if os.isatty(0) and not click.confirm(f"Does {custodian} accept them?", err=True):
         raise SharesError("the duties were not accepted", hint="nothing was written")
 

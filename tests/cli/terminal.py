@@ -19,7 +19,7 @@ from typing import Any
 
 from cli.harness import PROGRAM
 
-PATIENCE = 10.0
+PATIENCE = 30.0
 
 
 class Terminal:
