@@ -20,10 +20,10 @@ from strategies import crooked_split, flat, resealed
 from shares.documents.acknowledgement import DUTIES
 from shares.errors import ParameterError, VerificationError
 from shares.paper import sheet
-from shares.paper.paperform import from_paper, to_paper, to_text
+from shares.paper.paperform import LETTERS, from_paper, to_paper, to_text
 from shares.paper.sheet import MIN_MODULE, make_form, make_sheet, new_serial
 from shares.paper.transcription import gather
-from shares.paper.typedline import LETTERS, to_lines
+from shares.paper.typedline import to_lines
 
 
 class Page(HTMLParser):
