@@ -13,7 +13,7 @@ Does not: say how likely a loss is.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Iterator, Mapping, Sequence
+from collections.abc import Callable, Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Literal, NamedTuple, TypeAlias
 
@@ -135,6 +135,11 @@ def findings(policy: Policy, people: Count, quorums: Quorums) -> tuple[Finding, 
     """
     found = [*_too_few(policy), *_who_suffice(policy), *_who_block(policy), *_key_type(policy), *_delivery(policy)]
     found += [*_margin(people), *_too_many(people, quorums)]
+    return sorted_by_severity(found)
+
+
+def sorted_by_severity(found: Iterable[Finding]) -> tuple[Finding, ...]:
+    """Return findings in their order, serious ones first and notes last."""
     order = ("serious", "caution", "note")
     return tuple(sorted(found, key=lambda finding: order.index(finding.severity)))
 
