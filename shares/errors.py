@@ -17,6 +17,7 @@ Does not: print, exit or log. ``shares.cli`` turns an error into one line, in on
         SetMismatchError                             4
         EpochMismatchError                           4
       DocumentError       (also ValueError)          4  parse, version, schema: paths and rule names only
+        OtherKindError                               4  a document of another kind than is wanted
       StorageError        (also OSError)             5  file or I/O
       CommandFailedError                             7  the command that was fed failed
       KernelUnavailableError (also RuntimeError)     1  the demanded kernel cannot be loaded
@@ -46,6 +47,8 @@ class SharesError(Exception):
         self.what = what
         self.where = where
         self.hint = hint
+        self.findings: tuple[dict[str, str | None], ...] = ()
+        """What was found of each share given, where that was looked at; public facts only."""
 
     def __str__(self) -> str:
         place = f"{self.where}: " if self.where else ""
@@ -122,6 +125,12 @@ class DocumentError(SharesError, ValueError):
 
     exit_code = 4
     code = "document"
+
+
+class OtherKindError(DocumentError):
+    """A document is one of this program's, but not of the kind that is wanted."""
+
+    code = "other-kind"
 
 
 class StorageError(SharesError, OSError):

@@ -15,6 +15,7 @@ import contextlib
 import json
 import logging
 import os
+import re
 import signal
 import subprocess
 import sys
@@ -52,6 +53,10 @@ from shares.documents.wrapping import Cost, card_sealer, passphrase_sealer
 from shares.errors import SharesError, StorageError
 from shares.field.gf256 import Field
 from shares.memory import Secret
+from shares.paper.paperform import BLOCK, from_paper, from_text, to_paper, to_text
+from shares.paper.sheet import make_sheet
+from shares.paper.transcription import Transcription, gather
+from shares.paper.typedline import grouped, read_line, to_lines
 from shares.sharing.rule import Rule, recover_payload
 from shares.sharing.shamir import evaluate, interpolate
 from shares.storage import read_secret, write_new
@@ -920,3 +925,243 @@ def test_a_terminal_shows_no_passphrase(
             looked_at = terminal.shown + out.encode()
         shown.append((code, private_telltales.found(looked_at), b"Traceback" in looked_at))
     assert shown == [(0, None, False), (0, None, False), (4, None, False), (1, None, False)]
+
+
+# Sheets, and what is typed or scanned from them.
+
+
+class SheetTelltales(Telltales):
+    """With the secret lines of a sheet and its code, however they are grouped, tagged, and in whichever letters."""
+
+    def found(self, seen: bytes | str) -> str | None:
+        data = seen.encode("utf-8", "surrogatepass") if isinstance(seen, str) else seen
+        return super().found(data) or super().found(re.sub(rb"<[^>]*>|\s", b"", data).upper())
+
+
+def paper_of(share: Path) -> tuple[bytes, list[str], str]:
+    """The form of a share, its lines and its code."""
+    form = to_paper(Share.parse(share.read_bytes()))
+    return form, to_lines(form), to_text(form)
+
+
+@pytest.fixture(scope="module")
+def sheet_telltales(place: Place, telltales: Telltales) -> SheetTelltales:
+    found = SheetTelltales()
+    found.pieces = dict(telltales.pieces)
+    for path in place.shares:
+        form, lines, code = paper_of(path)
+        [row] = Share.parse(path.read_bytes()).rows
+        with row.view() as view:
+            first = form.index(bytes(view)) // BLOCK + 1
+        # The zeros that fill the last block are no secret, nor is what stands before the row.
+        for text in (*lines[first:-1], code[24 * first : -24]):
+            for i in range(len(text) - PIECE + 1):
+                found.pieces.setdefault(text[i : i + PIECE].encode(), "sheet")
+    return found
+
+
+def test_the_search_finds_what_a_sheet_shows(place: Place, sheet_telltales: SheetTelltales) -> None:
+    _, lines, code = paper_of(place.shares[0])
+    assert [sheet_telltales.found(line) for line in lines[:5]] == [None] * 5
+    for line in lines[-4:-1]:
+        for shown in (line, grouped(line), f"Line 9: {grouped(line)[5:17].lower()}\n", f"<td>{line[:8]}</td>"):
+            assert sheet_telltales.found(shown) is not None
+    assert sheet_telltales.found(code) is not None
+    assert sheet_telltales.found("nothing of the kind, although it is typed in many words") is None
+
+
+def wrong(line: str, *places: int) -> str:
+    """A line with these characters changed; up to two of them are set right."""
+    return "".join(("B" if c != "B" else "C") if i in places else c for i, c in enumerate(line))
+
+
+def wrong_papers(place: Place) -> dict[str, str]:
+    """What may be in a file instead of the lines of one sheet, or of its code."""
+    (_, lines, code), (_, others, _) = (paper_of(path) for path in place.shares[:2])
+    return {
+        "nothing": "",
+        "first lines": "\n".join(lines[:-3]),
+        "last lines": "\n".join(lines[3:]),
+        "a line of two sheets": "\n".join([*lines, others[-2]]),
+        "two sheets": "\n".join([*lines[:-2], *others[-2:]]),
+        "a line too many": "\n".join([*lines, "A" * 31]),
+        "wrong lines": "\n".join(wrong(line, 3, 9, 20) for line in lines),
+        "one wrong line": "\n".join([*lines[:-2], wrong(lines[-2], 3, 9, 20), lines[-1]]),
+        "lines run together": "".join(lines),
+        "a code and a line": f"{code}\n{lines[-2]}",
+        "half a code": code[len(code) // 2 :],
+        "a code turned round": code[-24:] + code[:-24],
+        "a secret": CANARY.decode("latin-1"),
+        "a share": place.shares[0].read_text(),
+    }
+
+
+def failing_papers(place: Place) -> Iterator[tuple[str, Callable[[], object]]]:
+    """Every way in which a sheet is not made, or what comes from one is not understood."""
+    share = Share.parse(place.shares[0].read_bytes())
+    large = split(Secret.of(CANARY * 100), Rule(1, ("a",)), label="x").shares[0]
+    yield "share too large", lambda: make_sheet(large)
+    yield "damaged share", lambda: make_sheet(share.model_copy(update={"digest": bytes(32)}))
+    yield "serial that is the secret", lambda: make_sheet(share, serial=CANARY.decode("latin-1"))
+    form, lines, code = paper_of(place.shares[0])
+    for at in range(0, len(form), 11):
+        yield f"form bent at {at}", lambda at=at: from_paper(flip(form, at))
+    yield "form cut", lambda: from_paper(form[:-BLOCK])
+    for name, text in {"cut": code[:-1], "in small letters": code.lower(), "padded": code[:-1] + "="}.items():
+        yield f"code {name}", lambda text=text: from_paper(from_text(text))
+    for name, text in wrong_papers(place).items():
+        yield f"file of {name}", lambda text=text: from_paper(gather(text).data)
+    for number, line in enumerate(lines, start=1):
+        for name, text in {
+            "wrong": wrong(line, 3, 9, 20),
+            "short": line[:-2],
+            "odd": f"{line[:20]}*{line[21:]}",
+        }.items():
+            yield f"line {number} {name}", lambda text=text: read_line(text)
+    typed = Transcription()
+    yield "line out of order", lambda: typed.read(lines[-2])
+    typed.accept(typed.read(lines[0]))
+    yield "line typed twice", lambda: typed.read(lines[0])
+    yield "line not understood", lambda: typed.read(wrong(lines[1], 1, 5, 30))
+
+
+def test_no_exception_shows_a_sheet(
+    place: Place, sheet_telltales: SheetTelltales, caplog: pytest.LogCaptureFixture, capfd: pytest.CaptureFixture[str]
+) -> None:
+    caplog.set_level(logging.DEBUG)
+    seen, passed, leaks = 0, [], set()
+    for name, attempt in failing_papers(place):
+        try:
+            attempt()
+        except SharesError as error:
+            seen += 1
+            leaks |= {(name, where, form) for where, shown in shown_by(error) if (form := sheet_telltales.found(shown))}
+        else:
+            passed.append(name)
+    assert leaks == set()
+    assert passed == []
+    assert seen > 50
+    assert sheet_telltales.found("".join([*capfd.readouterr(), caplog.text])) is None
+
+
+def test_objects_that_hold_a_sheet_do_not_show_it(place: Place, sheet_telltales: SheetTelltales) -> None:
+    _, lines, _ = paper_of(place.shares[0])
+    reading, typed = read_line(wrong(lines[-2], 3, 9)), Transcription()
+    typed.accept(typed.read(lines[0]))
+    made = make_sheet(Share.parse(place.shares[0].read_bytes()))
+    assert sheet_telltales.found(made.page) is not None
+    shown = []
+    for thing in (made, gather("\n".join(lines)), typed, reading, *reading.corrections):
+        for way in (repr, str, lambda thing: f"{thing!r:.5000}"):
+            # Two letters that were set right are too few to be looked for; a repr of them would show its members.
+            if sheet_telltales.found(way(thing)) is not None or "typed=" in way(thing):
+                shown.append(type(thing).__name__)
+    assert len(reading.corrections) == 2
+    assert shown == []
+
+
+def paper_command_lines(place: Place, folder: Path) -> list[list[str | Path]]:
+    """``sheet`` and ``transcribe`` as they succeed and as they fail, told in words and as JSON."""
+    taken = folder / "taken"
+    taken.write_bytes(b"")
+    lines: list[list[str | Path]] = [["transcribe", "--to", folder / "never.json"]]
+    odd = [folder / f"edit{i}.json" for i in range(len(share_edits(place)))]
+    for path, data in zip(odd, share_edits(place), strict=True):
+        path.write_bytes(data)
+    for i, path in enumerate((place.shares[0], place.key, place.record, *odd)):
+        lines += [["sheet", path, "--to", folder / f"{i}.html"], ["sheet", path, "--to", folder / f"{i}", "--json"]]
+    for to in (taken, folder / "no" / "sheet.html"):
+        lines.append(with_json(["sheet", place.shares[0], "--to", to]))
+        lines.append(["sheet", place.shares[0], "--to", to])
+    _, typed, code = paper_of(place.shares[0])
+    right = {"lines": "\n".join(typed), "code": code, "set right": "\n".join(wrong(line, 3, 20) for line in typed)}
+    for i, text in enumerate([*right.values(), *wrong_papers(place).values()]):
+        source = folder / f"{i}.txt"
+        source.write_text(text, "latin-1")
+        for to in (folder / f"{i}.json", taken, folder / "no" / "share.json"):
+            lines.append(["transcribe", "--from", source, "--to", to])
+        lines.append(["transcribe", "--from", source, "--to", folder / f"{i}.told.json", "--json"])
+    return lines
+
+
+def test_no_command_shows_a_sheet(
+    place: Place, sheet_telltales: SheetTelltales, tmp_path: Path, caplog: pytest.LogCaptureFixture
+) -> None:
+    caplog.set_level(logging.DEBUG)
+    leaks, codes = set(), set()
+    for line in paper_command_lines(place, tmp_path):
+        result = run(*line)
+        codes.add((line[0], result.code))
+        for where, shown in (("stdout", result.out), ("stderr", result.err)):
+            if form := sheet_telltales.found(shown):
+                leaks.add((line[0], len(line), where, form))
+    assert leaks == set()
+    assert codes >= {(name, code) for name in ("sheet", "transcribe") for code in (0, 4, 5)} | {("transcribe", 2)}
+    assert sheet_telltales.found(caplog.text) is None
+
+
+def test_a_fault_with_a_sheet_in_hand_shows_none(
+    place: Place, sheet_telltales: SheetTelltales, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    _, lines, code = paper_of(place.shares[0])
+    (tmp_path / "typed").write_text("\n".join(lines))
+    sheet, typed = ["sheet", place.shares[0]], ["transcribe", "--from", tmp_path / "typed"]
+
+    def broken(*_: object, **__: object) -> None:
+        raise RuntimeError(lines, code)
+
+    shown = []
+    for name, arguments in (
+        ("shares.cli.sheet.make_sheet", sheet),
+        ("shares.cli.sheet.write_new", sheet),
+        ("shares.paper.sheet.segno.make", sheet),
+        ("shares.cli.transcribe.gather", typed),
+        ("shares.cli.transcribe.from_paper", typed),
+        ("shares.cli.transcribe.write_new", typed),
+        ("shares.paper.linecode.decode", typed),
+    ):
+        with monkeypatch.context() as patch:
+            patch.setattr(name, broken)
+            for more in ([], ["--json"]):
+                result = run(*arguments, "--to", tmp_path / "never", *more)
+                if result.code != 1 or sheet_telltales.found(result.out + result.err) is not None:
+                    shown.append((name, result.code))
+    assert shown == []
+    assert not (tmp_path / "never").exists()
+
+
+def test_a_transcription_that_waits_shows_none(place: Place, sheet_telltales: SheetTelltales, tmp_path: Path) -> None:
+    """Most of the lines have come through the pipe; the rest have not."""
+    _, lines, _ = paper_of(place.shares[0])
+    with subprocess.Popen(
+        [PROGRAM, "transcribe", "--from", "-", "--to", tmp_path / "never.json"],
+        stdin=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+    ) as process:
+        assert process.stdin is not None
+        process.stdin.write("\n".join(lines[:-1]).encode())
+        process.stdin.flush()
+        time.sleep(1)
+        looked_at = list(seen_of(process.pid))
+        process.kill()
+    assert [name for name, data in looked_at if sheet_telltales.found(data) is not None] == []
+    assert {"cmdline", "environ"} <= {name for name, _ in looked_at}
+
+
+def test_whole_programs_show_no_sheet(place: Place, sheet_telltales: SheetTelltales, tmp_path: Path) -> None:
+    """A few lines again as the program itself, with warnings and development checks switched on."""
+    _, lines, _ = paper_of(place.shares[0])
+    (tmp_path / "typed").write_text("\n".join(lines))
+    (tmp_path / "wrong").write_text("\n".join(wrong(line, 3, 9, 20) for line in lines))
+    codes, shown = [], []
+    for line in (
+        ["sheet", place.shares[0], "--to", tmp_path / "sheet.html"],
+        ["transcribe", "--from", tmp_path / "typed", "--to", tmp_path / "share.json"],
+        ["transcribe", "--from", tmp_path / "wrong", "--to", tmp_path / "never.json"],
+    ):
+        result = spawn(*line, env={"PYTHONDEVMODE": "1", "PYTHONWARNINGS": "default"})
+        codes.append(result.code)
+        if sheet_telltales.found(result.out + result.err) is not None or "Traceback" in result.err:
+            shown.append(line[0])
+    assert (codes, shown) == ([0, 0, 4], [])

@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+import os
+
 import click
 
 from shares.cli.keys import opening
-from shares.cli.output import filled, json_option, print_result
+from shares.cli.output import filled, json_option, print_result, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.duties import digest_of_form
 from shares.custody.parties import load_key
 from shares.documents.acknowledgement import DUTIES, Acknowledgement
-from shares.errors import ParameterError
+from shares.errors import ParameterError, SharesError
 from shares.paper.sheet import make_form
 from shares.storage import write_new
 
@@ -58,26 +60,37 @@ def command(
     if page:
         _write_form(custodian or "", label, target, as_json=as_json)
         return
+    if not as_json:
+        for line in ("The duties:", *(f"  - {duty}" for duty in DUTIES)):
+            click.echo(line, err=True)
     if key_file is not None:
         key = load_key(key_file)
+        if custodian is not None and custodian != key.card.name:
+            warn(f"the key is of {key.card.name}: `split` takes it for {custodian} only where that card is theirs.")
+        _have_accepted(custodian or key.card.name)
         with opening((), passphrase_files, descriptors) as at_hand:
             made = Acknowledgement.signed_by(at_hand.party(key), custodian=custodian or key.card.name, label=label)
         how = f"signed by {key.card.name}, card {key.card.fingerprint}"
     else:
         digest = digest_of_form(scan or "")
         made = Acknowledgement.of_form(digest, custodian=custodian or "", label=label)
-        how = f"on a form whose scan has SHA-256 {digest.hex()}; keep the form and the scan"
+        how = f"on a form whose scan has SHA-256 {digest.hex()}"
     write_new(target, made.to_file(), secret=False)
     lines = [
         f"Acknowledged: the duties of {made.custodian} for {made.label}, {how}, in {target}.",
-        *(f"  - {duty}" for duty in DUTIES),
-        "Next: give this file to the dealer.",
+        "Next: give this file to the dealer; keep a form signed by hand, and its scan, apart from it.",
     ]
     print_result(
         {"done": True, "file": target, "custodian": made.custodian, "label": made.label, "how": how, "duties": DUTIES},
         lines,
         as_json=as_json,
     )
+
+
+def _have_accepted(custodian: str) -> None:
+    """Ask at a terminal, where there is one: nobody signs what they have not read."""
+    if os.isatty(0) and not click.confirm(f"Does {custodian} accept them?", err=True):
+        raise SharesError("the duties were not accepted", hint="nothing was written")
 
 
 def _write_form(custodian: str, label: str, target: str, *, as_json: bool) -> None:

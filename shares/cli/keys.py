@@ -24,10 +24,6 @@ from shares.errors import ParameterError
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
-UNTRIED = (
-    "whoever holds a card's key alone can open what is wrapped for it: compare the card's fingerprint with its party"
-)
-
 key_option = click.option(
     "--key",
     "keys",

@@ -89,14 +89,11 @@ def _print_version(ctx: click.Context, _: click.Parameter, wanted: bool) -> None
     help="Show version and kernel.",
 )
 def commands() -> None:
-    """Keep recovery keys recoverable: split, verify, recover.
+    """Keep recovery keys recoverable: plan, split, verify, recover, on files and on paper.
 
     \b
     Example:
-      shares split key.pem --need 3 --label "Tide archive root" \\
-        --custodian north-pier --custodian south-pier --custodian light-house \\
-        --custodian registrar --custodian dry-dock \\
-        --set tide-archive --deliver /dev/shm/handover --plain
+      shares split key.pem --policy policy.toml --set tide-archive --deliver /dev/shm/handover
     """
 
 

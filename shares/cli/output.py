@@ -99,7 +99,8 @@ def print_error(error: SharesError, *, as_json: bool) -> None:
         told: dict[str, Any] = {"code": error.code, "what": error.what, "where": error.where, "hint": error.hint}
         if isinstance(error, CommandFailedError):
             told["status"] = error.status
-        click.echo(json.dumps({"done": False, "exit": error.exit_code, "error": told}, indent=2))
+        found = {"shares": error.findings} if error.findings else {}
+        click.echo(json.dumps({"done": False, "exit": error.exit_code, "error": told, **found}, indent=2))
     else:
         click.echo(_printable(f"shares: {error}"), err=True)
 

@@ -8,9 +8,10 @@ Does not: ask anything where there is no terminal.
 
 from __future__ import annotations
 
+import itertools
 import os
 import termios
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Collection, Iterator
 from contextlib import contextmanager
 from typing import Any, Self, TypeVar
 
@@ -67,6 +68,7 @@ class GivenPassphrases:
         self._sources = [*map(_named, files), *numbered]
         self._read: dict[str, Secret] = {}
         self._option = option
+        self._chosen: dict[str, Secret] = {}
 
     def opening(self, name: str, attempt: Callable[[Secret], Opened]) -> Opened:
         """Return what ``attempt`` returns for the first passphrase of ``name`` that fits; those of anyone come next.
@@ -89,13 +91,13 @@ class GivenPassphrases:
                     except WrongKeyError as error:
                         wrong = error
                 if left:
-                    warn(f"{wrong.what}. {left} more.")
+                    warn(f"{wrong.what}. {left} more {'try' if left == 1 else 'tries'}.")
         if wrong is None:
             raise WrongKeyError(
                 f"the passphrase of {name} is needed, and there is no terminal to ask for it",
                 hint=f"give --passphrase-file {name}=FILE or --passphrase-fd {name}=N",
             )
-        raise wrong
+        raise WrongKeyError(wrong.what, where=wrong.where or f"passphrase of {name}", hint=wrong.hint)
 
     def new(self, name: str) -> Secret:
         """Return the passphrase that something of ``name`` is to be wrapped under; typed twice where it is typed.
@@ -120,10 +122,24 @@ class GivenPassphrases:
             raise ParameterError(f"the two passphrases typed for {name} differ", hint="start again")
         return self._noted(name, typed)
 
-    def is_shared(self, names: list[str]) -> bool:
-        """Say whether one passphrase of anyone serves several of these."""
-        owners = {owner for owner, _ in self._sources}
-        return None in owners and sum(1 for name in names if name not in owners) > 1
+    def only_for(self, names: Collection[str]) -> None:
+        """Refuse a passphrase that is given for nobody who needs one: a slip in a name would go unnoticed.
+
+        Raises:
+            ParameterError: says for whom.
+        """
+        for owner, _ in self._sources:
+            if owner is not None and owner not in names:
+                raise ParameterError(
+                    f"a passphrase is given for {owner}, and nobody of that name needs one here",
+                    where="--passphrase-file",
+                    hint=f"names here are {', '.join(names)}",
+                )
+
+    def is_shared(self) -> bool:
+        """Say whether two of those that ``new`` returned are the same."""
+        chosen = list(self._chosen.values())
+        return any(one is other or one == other for one, other in itertools.combinations(chosen, 2))
 
     def _passphrase(self, source: str) -> Secret:
         if source not in self._read:
@@ -134,6 +150,7 @@ class GivenPassphrases:
         note = weakness(passphrase)
         if note:
             warn(f"the passphrase for {name}: {note}.")
+        self._chosen[name] = passphrase
         return passphrase
 
     def close(self) -> None:
@@ -205,6 +222,9 @@ def _without_echo() -> Iterator[None]:
     before = termios.tcgetattr(_STDIN)
     silent = [*before]
     silent[3] = before[3] & ~termios.ECHO | termios.ECHONL
+    # Stopped by hand (Ctrl-Z), the terminal would stay without echo. Every other key that stops lets us put it back.
+    silent[6] = [*before[6]]
+    silent[6][termios.VSUSP] = os.fpathconf(_STDIN, "PC_VDISABLE").to_bytes(1, "big")
     # What was typed ahead is thrown away: it was shown.
     termios.tcsetattr(_STDIN, termios.TCSAFLUSH, silent)
     try:

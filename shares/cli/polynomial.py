@@ -77,7 +77,8 @@ def check(ctx: click.Context, polynomial: str, prime: int, as_json: bool) -> Non
     primitive = irreducible and is_primitive(f)
     suits = irreducible and prime == 2 and f.degree == 8
     members = {
-        "done": True,
+        "done": irreducible,
+        "exit": 0 if irreducible else 4,
         "polynomial": str(f),
         "number": f.number,
         "degree": f.degree,

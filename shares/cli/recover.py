@@ -142,11 +142,14 @@ def command(
     went = f"written to {target}" if target is not None else f"given to {fed[0]}" if fed else "written nowhere"
     if card is not None:
         went += f", encrypted to {card.name}, card {card.fingerprint}"
+        if recovery.share.encrypted_file is not None:
+            went += "; it is the key of the encrypted file, which the receiver needs as well"
     against = (
         f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"
     )
     with contextlib.ExitStack() as stack:
         stack.enter_context(recovery.secret)
+        stack.enter_context(recovery.payload)
         if target is not None and encrypted_file is None:
             stack.enter_context(held_signals())
         if card is not None and target is not None:

@@ -9,6 +9,7 @@ import click
 from shares.cli.output import filled, json_option, print_result
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import MAX_FILE, parse_object
+from shares.documents.chunks import Header
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
@@ -18,6 +19,7 @@ from shares.documents.wrapping import ByCard, ByPassphrase
 from shares.errors import DocumentError
 from shares.field.polynomial import Polynomial
 from shares.storage import read_file
+from shares.streams import regular_file
 
 KINDS = {
     "share": "share (its rows are secret and not shown)",
@@ -27,6 +29,7 @@ KINDS = {
     "party-key": "party key (private, wrapped by passphrase)",
     "party-card": "party card (public)",
     "acknowledgement": "acknowledgement of duties",
+    "encrypted-file": "encrypted file (of no use without a quorum of its set's shares)",
 }
 UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
 
@@ -41,11 +44,8 @@ def command(file: str, as_json: bool) -> None:
     Example:
       shares show north-pier.share.json
     """
-    data = read_file(file, limit=MAX_FILE)
-    kind = str(parse_object(data, where=file).get("kind"))
-    if kind not in FACTS:
-        raise DocumentError("it is no document of this program", where=file, hint="show reads what this program wrote")
-    facts = {"kind": kind, **FACTS[kind](data, file)}
+    facts = _encrypted_file(file) or _document(file)
+    kind = str(facts["kind"])
     width = max(len(name) for name in facts)
     described = (
         facts
@@ -54,6 +54,32 @@ def command(file: str, as_json: bool) -> None:
     )
     lines = [f"{name.replace('_', ' '):<{width}}  {_text(name, value)}" for name, value in described.items()]
     print_result({"done": True, **facts}, lines, as_json=as_json)
+
+
+def _document(file: str) -> dict[str, object]:
+    if file.endswith(".toml"):
+        raise DocumentError("a policy is no JSON document", where=file, hint="`shares plan` examines it")
+    data = read_file(file, limit=MAX_FILE)
+    kind = str(parse_object(data, where=file).get("kind"))
+    if kind not in FACTS:
+        raise DocumentError("it is no document of this program", where=file, hint="show reads what this program wrote")
+    return {"kind": kind, **FACTS[kind](data, file)}
+
+
+def _encrypted_file(file: str) -> dict[str, object] | None:
+    """Return the facts of an encrypted file, or None where it does not begin as one."""
+    with regular_file(file) as reader:
+        try:
+            header = Header.read(reader)
+        except DocumentError:
+            return None
+        return {
+            "kind": "encrypted-file",
+            "set": header.set.hex(),
+            "chunk_bytes": header.chunk,
+            "bytes": reader.size,
+            "whole": "not looked at: `shares verify --record R --encrypted FILE` does",
+        }
 
 
 def _share(data: bytes, where: str) -> dict[str, object]:
@@ -120,10 +146,7 @@ def _record(data: bytes, where: str) -> dict[str, object]:
 
 def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
     found = Acknowledgement.parse(data, where=where)
-    by = f"a printed form, SHA-256 {found.form.hex()}" if found.form is not None else "nobody"
-    if found.card is not None:
-        by = f"signed by {found.card.name}, card {found.card.fingerprint}"
-    return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": by}
+    return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": found.words()}
 
 
 def _card_facts(card: PartyCard) -> dict[str, object]:
@@ -159,5 +182,5 @@ def _text(name: str, value: object) -> str:
     if value is None:
         return "none" if name in ("encrypted_file", "policy", "previous") else "not stated"
     if isinstance(value, list):
-        return ", ".join(str(one) for one in value)
+        return ("; " if name in ("duties", "points") else ", ").join(str(one) for one in value)
     return str(value)

@@ -14,7 +14,7 @@ from collections.abc import Callable, Iterator
 from types import FrameType
 from typing import NoReturn
 
-STOP = (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)
+STOP = (signal.SIGINT, signal.SIGTERM, signal.SIGHUP, signal.SIGQUIT)
 
 
 def heed_signals() -> None:

@@ -129,7 +129,7 @@ def command(
         --custodian north-pier --custodian south-pier --custodian light-house \\
         --card north-pier.card.json --card south-pier.card.json --passphrase-file light-house.passphrase \\
         --set tide-archive --deliver /dev/shm/handover
-      shares split key.pem --policy policy.toml --set by-policy --deliver /media/stick --plain
+      shares split key.pem --policy policy.toml --set by-policy --deliver /media/stick
     """
     if policy is None:
         wanted = from_options(need, custodians, label, polynomial, cards)
@@ -138,7 +138,7 @@ def command(
     else:
         if need is not None or custodians or label is not None or polynomial is not None:
             raise ParameterError(
-                "--policy says --need, --custodian, --label and --polynomial", hint="give one or other"
+                "the policy says what --need, --custodian, --label and --polynomial say", hint="give it or them"
             )
         wanted = from_policy(policy, cards, acknowledged)
     if plain and cards:
@@ -146,15 +146,17 @@ def command(
     target, names = Path(set_folder), wanted.custodians
     folders = _delivery_folders(names, deliveries)
     check_targets(target, folders, [*wanted.beside, ENCRYPTED_NAME])
-    cautions = [*wanted.cautions, *_cautions(wanted.rule, other_shares(folders))]
+    cautions = [*wanted.cautions, *wanted.card_cautions(), *_cautions(wanted.rule, other_shares(folders))]
     signers: list[tuple[Role, str]] = [("dealer", dealer)] if dealer is not None else []
     signers += [("witness", witness) for witness in witnesses]
     with GivenPassphrases(passphrase_files, descriptors) as passphrases, Opening(passphrases) as at_hand:
-        signing = [(role, at_hand.party(load_key(path))) for role, path in signers]
+        loaded = [(role, load_key(path)) for role, path in signers]
+        passphrases.only_for(list(dict.fromkeys([*names, *(key.card.name for _, key in loaded)])))
+        signing = [(role, at_hand.party(key)) for role, key in loaded]
         packings = _packings(names, wanted.cards, suite, passphrases, plain=plain)
         if plain:
             cautions.insert(0, PLAIN_CAUTION)
-        elif passphrases.is_shared([name for name in names if name not in wanted.cards]):
+        elif passphrases.is_shared():
             cautions.append(SHARED_CAUTION)
         with sourced(file, target, encrypt=encrypt, progress=progress("Encrypting", MEBIBYTES)) as source:
             dealt = split(
@@ -182,7 +184,8 @@ def command(
                     for caution in cautions:
                         warn(caution)
                 members = {**_members(dealt, done, packings, cautions), "encrypted_file": encrypted}
-                print_result(members, _lines(dealt, done, packings, encrypted), as_json=as_json)
+                members["acknowledged"] = wanted.acknowledged
+                print_result(members, _lines(dealt, done, packings, encrypted, wanted.acknowledged), as_json=as_json)
 
 
 def _packings(
@@ -271,7 +274,9 @@ def _members(dealt: Dealt, done: HandedOver, packings: dict[str, Packing], cauti
     }
 
 
-def _lines(dealt: Dealt, done: HandedOver, packings: dict[str, Packing], encrypted: str | None) -> list[str]:
+def _lines(
+    dealt: Dealt, done: HandedOver, packings: dict[str, Packing], encrypted: str | None, acknowledged: list[str]
+) -> list[str]:
     tried = f"all {done.quorums:,}" if done.trials == done.quorums else f"{done.trials:,} of {done.quorums:,}"
     width = max(len(name) for name in done.shares)
     length = max(len(str(path)) for path in done.shares.values())
@@ -283,6 +288,7 @@ def _lines(dealt: Dealt, done: HandedOver, packings: dict[str, Packing], encrypt
         f"Record (public): {done.record}, {f'signed by {signers}' if signers else 'unsigned'}",
         *(f"Beside it (confidential): {path}" for path in done.companions.values()),
         *([f"Encrypted secret: {encrypted}. {KEEP_ENCRYPTED}"] if encrypted else []),
+        *(f"Duties accepted by {line}" for line in acknowledged),
         f"Fingerprint, to read aloud and write down: {dealt.record.fingerprint}",
         f"Checked: every share read back and verified alone; the secret recovered from {tried} quorums.",
         *(prose(SEALED_NOTE) if sealed else ()),

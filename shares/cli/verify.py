@@ -18,10 +18,14 @@ from shares.errors import ParameterError
 WITH_RECORD = (
     "This proves that each intact share is whole and lies on the dealing of the record with fingerprint {fingerprint}. "
     "{who}"
-    "Nor does it prove that the dealing holds the right secret: only a recovery does."
+    "It does not prove that the dealing holds the right secret: only a recovery does."
 )
 UNSIGNED = "It does not prove who made that record: compare the fingerprint with the one read aloud at the split. "
 SIGNED = "It proves who made that record only as far as you know whose card each signer's is. "
+RECORD_ALONE = (
+    "This proves that the record with fingerprint {fingerprint} agrees with itself. {who}"
+    "It proves nothing of any share: each custodian checks their own."
+)
 WITHOUT_RECORD = (
     "Without a record this shows only that no accident befell these files and that they agree with one another. "
     "It does not prove that they are the shares that were dealt, nor that they recover anything: "
@@ -98,7 +102,9 @@ def command(
     repeated = _repeated(presented)
     signed = bool(record and record.signatures)
     proves = (
-        WITH_RECORD.format(fingerprint=record.fingerprint, who=SIGNED if signed else UNSIGNED)
+        (WITH_RECORD if findings else RECORD_ALONE).format(
+            fingerprint=record.fingerprint, who=SIGNED if signed else UNSIGNED
+        )
         if record
         else WITHOUT_RECORD
     )
@@ -109,11 +115,12 @@ def command(
         "record": record.fingerprint if record else None,
         "encrypted_file": encrypted_file,
         "signatures": _signatures(record, trusted) if record else None,
+        "trusted": _is_signed_by(record, trusted) if record and trusted else None,
         "shares": [
             {"file": f.source, "custodian": f.custodian, "status": f.status.value, "reason": f.reason} for f in findings
         ],
         "repeated": [presented[i].source for i in repeated],
-        "proves": proves if any(f.status is Status.INTACT for f in findings) else None,
+        "proves": proves if not findings or any(f.status is Status.INTACT for f in findings) else None,
     }
     lines = _lines(findings, repeated, record, trusted, proves)
     if encrypted_file is not None:
@@ -135,6 +142,10 @@ def _signatures(record: Record, trusted: list[PartyCard]) -> list[dict[str, obje
 
 
 def _signature_lines(record: Record, trusted: list[PartyCard]) -> list[str]:
+    if not record.signatures and trusted:
+        return [
+            "The record is unsigned, and --trust asks for a signature: ask the dealer for the signed record.",
+        ]
     if not record.signatures:
         return ["The record is unsigned: compare its fingerprint with the one read aloud at the split."]
     other = "not among the cards you trust" if trusted else "--trust tells whether you trust that card"
@@ -180,7 +191,7 @@ def _lines(
         if not findings:
             lines.append(f"The record of {record.label} agrees with itself; fingerprint {record.fingerprint}.")
         lines.extend(_signature_lines(record, trusted))
-    if intact:
+    if intact or not findings:
         lines.extend(prose(proves))
     lines.extend(advice for status, advice in NEXT.items() if any(finding.status is status for finding in findings))
     return lines

@@ -20,7 +20,7 @@ from shares.custody.payload import DEFAULT_PAD
 from shares.custody.split import flat_rule
 from shares.documents.base import MAX_FILE
 from shares.documents.party import PartyCard
-from shares.errors import ParameterError
+from shares.errors import ParameterError, VerificationError
 from shares.field.gf256 import DEFAULT_MODULUS, Field
 from shares.field.polynomial import Polynomial
 from shares.sharing.rule import Rule
@@ -44,6 +44,7 @@ class Wanted:
         pad: bytes to a multiple of which the secret is filled.
         cards: party cards of custodians, by name.
         policy: digest of the policy, or None.
+        acknowledged: who has accepted the duties, and how, in words.
         beside: files that go into the set's folder beside the record, by name.
         cautions: what the examination of the policy found.
     """
@@ -54,8 +55,22 @@ class Wanted:
     pad: int
     cards: Mapping[str, PartyCard]
     policy: bytes | None
+    acknowledged: list[str]
     beside: Mapping[str, bytes]
     cautions: list[str]
+
+    def card_cautions(self) -> list[str]:
+        """Say where a share would be wrapped for a card that may be another's: its holder opens it alone."""
+        told = [
+            f"the share of {name} is wrapped for the card of {card.name}, {card.fingerprint}: see that it is meant"
+            for name, card in self.cards.items()
+            if card.name != name
+        ]
+        for fingerprint in dict.fromkeys(card.fingerprint for card in self.cards.values()):
+            names = [name for name, card in self.cards.items() if card.fingerprint == fingerprint]
+            if len(names) > 1:
+                told.append(f"one party key opens the shares of {' and '.join(names)}: they count as one holder")
+        return told
 
     @property
     def custodians(self) -> tuple[str, ...]:
@@ -82,7 +97,17 @@ def from_options(
     rule = flat_rule(need, custodians)
     field = Field(Polynomial.parse(polynomial).number if polynomial else DEFAULT_MODULUS)
     given = cards_by_name(cards, list(custodians), option="--card")
-    return Wanted(label, rule, field, DEFAULT_PAD, given, None, {}, [])
+    return Wanted(
+        label=label,
+        rule=rule,
+        field=field,
+        pad=DEFAULT_PAD,
+        cards=given,
+        policy=None,
+        acknowledged=[],
+        beside={},
+        cautions=[],
+    )
 
 
 def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]) -> Wanted:
@@ -112,6 +137,11 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
         for custodian in policy.custodians
         if custodian.card is not None
     } | cards_by_name(cards, names, option="--card")
+    if policy.strict and len({card.fingerprint for card in chosen.values()}) < len(chosen):
+        raise VerificationError(
+            "the policy is strict, and one party card stands for several custodians",
+            hint="one party key would open all of their shares: give each custodian a card of their own",
+        )
     found = _acknowledgements(acknowledged)
     if policy.acknowledgement or found:
         check_acknowledged(names, policy.label, found.values(), chosen)
@@ -123,7 +153,17 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
         for one in plan.findings
         if one.severity != "note"
     ]
-    return Wanted(policy.label, policy.rule(), policy.field(), policy.pad, chosen, policy.digest(), beside, cautions)
+    return Wanted(
+        label=policy.label,
+        rule=policy.rule(),
+        field=policy.field(),
+        pad=policy.pad,
+        cards=chosen,
+        policy=policy.digest(),
+        acknowledged=[one.words() for one in found.values()],
+        beside=beside,
+        cautions=cautions,
+    )
 
 
 def _acknowledgements(paths: tuple[str, ...]) -> dict[str, Acknowledgement]:

@@ -1,7 +1,8 @@
 """Deliver a recovered secret: to a new private file, encrypted to its receiver, or to one command's standard input.
 
 Source: execve(2), pipe(2); PCI PIN 21-1 by way of trade practice: recovery does not print a key.
-May import: shares.errors, shares.memory, shares.storage, shares.streams, shares.documents, shares.custody.recover.
+May import: shares.errors, shares.memory, shares.storage, shares.streams, shares.documents,
+shares.custody.payload, .recover.
 Secret: the secret. Public: the path or the command, and how the command ended.
 Does not: write to a terminal, keep the secret, or know what the command does with it.
 """
@@ -11,14 +12,17 @@ from __future__ import annotations
 import contextlib
 import functools
 import subprocess
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 
+from shares.custody.payload import is_committed, open_payload
 from shares.custody.recover import Recovery
 from shares.documents.party import PartyCard
+from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
+from shares.documents.share import MIN_ROW
 from shares.documents.wrapping import Suite, card_sealer
-from shares.errors import CommandFailedError, StorageError
+from shares.errors import CommandFailedError, SetMismatchError, StorageError, VerificationError
 from shares.memory import Secret
 from shares.storage import write_new
 from shares.streams import Write, write_all
@@ -42,14 +46,43 @@ def sealed_for(card: PartyCard, recovery: Recovery, suite: Suite) -> bytes:
     """
     share = recovery.share
     sealed = SealedSecret.seal(
-        recovery.secret,
+        recovery.payload,
         card_sealer(card.recipient(), suite),
         set_id=share.set,
         epoch=share.epoch,
         label=recovery.label,
+        secret_commitment=share.secret_commitment,
         encrypted_file=share.encrypted_file,
     )
     return sealed.to_file()
+
+
+def open_sealed(sealed: SealedSecret, opener: Callable[[SealedSecret], Secret], record: Record | None) -> Secret:
+    """Return the secret that was sealed for its receiver, checked against its commitment.
+
+    Args:
+        sealed: the document.
+        opener: what opens it, with the receiver's party key.
+        record: the public record of the set, where there is one; without it nothing says whose secret it is.
+
+    Raises:
+        WrongKeyError: it was sealed for another card.
+        SetMismatchError, VerificationError: it is of another set than the record, damaged, or not the secret that the
+            commitment names.
+    """
+    if record is not None and sealed.set != record.set:
+        raise SetMismatchError(f"it is of set {sealed.set.hex()}, the record of set {record.set.hex()}")
+    if record is not None and (sealed.secret_commitment, sealed.encrypted_file) != (
+        record.secret_commitment,
+        record.encrypted_file,
+    ):
+        raise VerificationError("it names another secret than the record", hint="it is forged: ask who sent it")
+    with opener(sealed) as payload:
+        if len(payload) < MIN_ROW or not is_committed(sealed.set, payload, sealed.secret_commitment):
+            raise VerificationError(
+                "what was sealed is not the secret that its commitment names", hint="it is forged: ask who sent it"
+            )
+        return open_payload(payload)
 
 
 def to_command(secret: Secret, command: Sequence[str], *, output: int | None = None) -> None:

@@ -88,12 +88,13 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path], companions: 
                 where=os.fspath(set_folder / name),
                 hint="choose a new folder",
             )
+    beside = dict.fromkeys([set_folder, *((set_folder / name).parent for name in companions)])
     targets = [
         share_path(folder, custodian, suffix)
         for custodian, folder in deliveries.items()
         for suffix in (BARE_SUFFIX, WRAPPED_SUFFIX)
     ]
-    unfinished = [path for folder in (set_folder, *dict.fromkeys(deliveries.values())) for path in leftovers(folder)]
+    unfinished = [path for folder in (*beside, *dict.fromkeys(deliveries.values())) for path in leftovers(folder)]
     there = [path for path in targets if os.path.lexists(path)] + unfinished
     if there:
         names = ", ".join(os.fspath(path) for path in there)

@@ -1,7 +1,8 @@
 """A secret too large to be shared itself: it is encrypted beside the record, and the key is split in its stead.
 
 Source: FORMAT.md, sec. 13.
-May import: shares.errors, shares.memory, shares.storage, shares.documents, shares.custody.encrypted_file, .payload.
+May import: shares.errors, shares.memory, shares.storage, shares.documents, shares.custody.encrypted_file,
+.handover, .payload.
 Secret: the key. Public: the set's identifier, the digest of the encrypted file.
 Does not: split; ``custody.split`` does.
 """
@@ -17,6 +18,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from shares.custody.encrypted_file import Progress, check_file, digest_of, encrypt_file
+from shares.custody.handover import RECORD_NAME
 from shares.custody.payload import MAX_SECRET
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
@@ -52,7 +54,7 @@ def sourced(source: StrPath, set_folder: Path, *, encrypt: bool, progress: Progr
         progress: see ``encrypted_file.Progress``.
 
     Yields:
-        What is to be split. What is raised within removes the encrypted file again.
+        What is to be split. What is raised within removes the encrypted file again, unless the record stands by then.
 
     Raises:
         StorageError: a file cannot be read or written.
@@ -72,7 +74,9 @@ def sourced(source: StrPath, set_folder: Path, *, encrypt: bool, progress: Progr
             check_file(target, key, digest, set_id)  # Nothing is called done unread.
             yield Source(key, set_id, digest)
     except BaseException:
-        discard(target)
+        # The record is the commit point: once it stands, the set is in use and cannot do without this file.
+        if not os.path.lexists(set_folder / RECORD_NAME):
+            discard(target)
         raise
 
 

@@ -17,7 +17,15 @@ from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.record import Record
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
-from shares.errors import DocumentError, ParameterError, SharesError, StorageError, VerificationError, WrongKeyError
+from shares.errors import (
+    DocumentError,
+    OtherKindError,
+    ParameterError,
+    SharesError,
+    StorageError,
+    VerificationError,
+    WrongKeyError,
+)
 from shares.storage import StrPath, read_file
 
 
@@ -79,7 +87,7 @@ def _load(path: StrPath, opener: ShareOpener | None) -> Presented:
     source = os.fspath(path)
     try:
         share = parse_share(read_file(path, limit=MAX_FILE), where=source)
-    except StorageError as error:
+    except (StorageError, OtherKindError) as error:
         return Presented(source, None, _reason(error), Status.UNREADABLE)
     except DocumentError as error:
         return Presented(source, None, _reason(error))

@@ -38,6 +38,7 @@ class Recovery:
 
     Attributes:
         secret: checked against the commitment; wipe it with ``close()``.
+        payload: what the shares share: the secret framed, blinded and masked; wipe it likewise.
         share: one of the shares used: says set, epoch, field; its label is not proved by anything.
         label: what the secret is: as the record says, else as that share does.
         used: custodians whose shares gave the secret.
@@ -45,6 +46,7 @@ class Recovery:
     """
 
     secret: Secret
+    payload: Secret
     share: Share
     label: str | None
     used: tuple[str, ...]
@@ -134,7 +136,7 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
         if had is None:
             continue
         payload, used = had
-        with payload:
+        try:
             _refuse_other_explanations(groups, group, whole)
             places = tuple(dict.fromkeys(i for i, _ in used))
             if record is None:
@@ -144,7 +146,10 @@ def recover(presented: Sequence[Presented], record: Record | None = None) -> Rec
             names = tuple(group.shares[i].custodian for i in places)
             share = group.shares[places[0]]
             label = record.label if record else share.label
-            return Recovery(open_payload(payload), share, label, names, tuple(findings))
+            return Recovery(open_payload(payload), payload, share, label, names, tuple(findings))
+        except BaseException:
+            payload.close()
+            raise
     # Damaged shares were tried as well, without success: they count no longer.
     raise _refusal(presented, findings, _groups(whole), record)
 
@@ -236,7 +241,23 @@ def _with_rows_said_right(
 def _refusal(
     presented: Sequence[Presented], findings: Sequence[Finding], groups: list[_Group], record: Record | None
 ) -> SharesError:
-    """Say why nothing was recovered."""
+    """Say why nothing was recovered, with what was found of each share."""
+    error = _reason_for_refusal(presented, findings, groups, record)
+    error.findings = tuple(
+        {"file": one.source, "custodian": one.custodian, "status": one.status.value, "reason": one.reason}
+        for one in findings
+    )
+    return error
+
+
+def _reason_for_refusal(
+    presented: Sequence[Presented], findings: Sequence[Finding], groups: list[_Group], record: Record | None
+) -> SharesError:
+    if record is not None and {finding.status for finding in findings} == {Status.FOREIGN}:
+        return SetMismatchError(
+            f"none of the {len(findings)} shares given is of the record's set, {record.set.hex()}",
+            hint="`shares show FILE` says which set a share or record is of: give those of one set",
+        )
     aside = "".join(
         f"; {finding.source} was set aside ({finding.status}: {finding.reason})"
         for finding in findings
@@ -268,6 +289,13 @@ def _refusal(
         return EpochMismatchError(
             f"shares of {epochs} epochs were given, and the one that most belong to has no quorum{aside}",
             hint="shares of different epochs never combine; give those of one epoch",
+        )
+    if any(len(path) > 1 for path in groups[0].paths):
+        rule = record.rule.to_rule().words() if record else groups[0].first.rule
+        return NotEnoughSharesError(
+            f"the shares of {', '.join(share.custodian for share in groups[0].shares.values())} make no quorum; "
+            f"to recover: {rule or 'not stated in these shares'}{aside}",
+            hint="bring the shares that are missing",
         )
     needed, given = groups[0].shortfall()
     return NotEnoughSharesError(

@@ -14,7 +14,7 @@ from collections.abc import Collection, Sequence
 
 from shares.custody.presented import Finding, Presented, Status
 from shares.documents.record import Record
-from shares.documents.share import Share
+from shares.documents.share import NOTICE, Share
 from shares.errors import EpochMismatchError, SetMismatchError, VerificationError
 from shares.sharing.consistency import check, expected
 
@@ -74,10 +74,13 @@ class _Examiner:
         problem = self._inconsistency(share)
         if problem:
             return Status.INCONSISTENT, problem
-        if share.label is not None and share.label != record.label:
+        said = {"label": record.label, "rule": self.rule.words(), "notice": NOTICE}
+        other = [name for name, mine in said.items() if getattr(share, name) not in (None, mine)]
+        if other:
             return (
                 Status.INTACT,
-                "commitment and consistency check fit the record, but not the label: go by the record's",
+                f"commitment and consistency check fit the record, but not the {' and '.join(other)}: "
+                "go by the record's, and by no other notice",
             )
         return Status.INTACT, "commitment and consistency check fit the record"
 

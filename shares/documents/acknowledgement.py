@@ -16,7 +16,7 @@ from pydantic_core import PydanticCustomError
 
 from shares import clock
 from shares.documents.base import Document, write_text
-from shares.documents.members import Digest, Name, Signature, Text, Time, check_name, check_text
+from shares.documents.members import Digest, Name, Signature, Text, Time, Version, check_name, check_text
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.signing import is_signed
 
@@ -39,7 +39,7 @@ class Acknowledgement(Document):
     KIND: ClassVar[str] = "acknowledgement"
 
     kind: Literal["acknowledgement"]
-    version: Literal[1]
+    version: Version
     custodian: Name
     label: Text
     duties: tuple[Text, ...]
@@ -108,6 +108,13 @@ class Acknowledgement(Document):
             card=None,
             signature=None,
         )
+
+    def words(self) -> str:
+        """Say who accepted, how and when."""
+        how = f"a form with SHA-256 {self.form.hex()}" if self.form is not None else "nobody"
+        if self.card is not None:
+            how = f"{self.card.name}, card {self.card.fingerprint}"
+        return f"{self.custodian}: by {how}, {clock.to_text(self.time)}"
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

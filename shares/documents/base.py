@@ -18,7 +18,7 @@ from typing import Any, ClassVar, NoReturn, Self
 import rfc8785
 from pydantic import BaseModel, ConfigDict, ValidationError
 
-from shares.errors import DocumentError
+from shares.errors import DocumentError, OtherKindError
 
 MAX_FILE = 1 << 20
 """The largest document, in bytes: 1 MiB."""
@@ -76,10 +76,11 @@ class Document(BaseModel):
 def _check_kind(members: dict[str, Any], wanted: str, where: str | None) -> None:
     kind, version = members.get("kind"), members.get("version")
     if kind != wanted:
-        found = (
-            f"it is {_a(str(kind))}" if kind in KINDS else "it does not say that it is one of this program's documents"
+        if kind in KINDS:
+            raise OtherKindError(f"{_a(wanted)} is wanted here, but it is {_a(str(kind))}", where=where)
+        raise DocumentError(
+            f"{_a(wanted)} is wanted here, but it does not say that it is one of this program's documents", where=where
         )
-        raise DocumentError(f"{_a(wanted)} is wanted here, but {found}", where=where)
     if version != VERSION or isinstance(version, bool):
         raise DocumentError(
             f"it is {_a(wanted)} of a version that this program does not know (it reads version {VERSION})",

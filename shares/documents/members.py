@@ -13,9 +13,9 @@ import binascii
 import re
 import unicodedata
 from datetime import datetime
-from typing import Annotated
+from typing import Annotated, Literal
 
-from pydantic import AfterValidator, Field, PlainSerializer, PlainValidator, WithJsonSchema
+from pydantic import AfterValidator, BeforeValidator, Field, PlainSerializer, PlainValidator, WithJsonSchema
 from pydantic_core import PydanticCustomError
 
 from shares import clock
@@ -168,6 +168,13 @@ def check_text(text: str) -> str:
     return text
 
 
+def _not_bool(value: object) -> object:
+    """Refuse true where 1 is wanted: Python takes them to be equal."""
+    if isinstance(value, bool):
+        raise PydanticCustomError("shares_version", "not a number")
+    return value
+
+
 def _printable(text: str) -> str:
     if _holds_unprintable(text):
         raise PydanticCustomError("shares_text", "it holds control or invisible characters")
@@ -227,5 +234,6 @@ Name = Annotated[str, AfterValidator(_valid_name), Field(min_length=1, max_lengt
 Text = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=500)]
 LongText = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=MAX_LONG_TEXT)]
 Fingerprint = Annotated[str, Field(pattern=r"^[A-Z2-7]{4}(-[A-Z2-7]{4}){7}$")]
+Version = Annotated[Literal[1], BeforeValidator(_not_bool)]
 Epoch = Annotated[int, Field(ge=1, le=2**32 - 1)]
 Byte = Annotated[int, Field(ge=1, le=255)]

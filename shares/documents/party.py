@@ -8,10 +8,12 @@ Does not: say who a party really is: people do, by comparing the fingerprint tha
 
 from __future__ import annotations
 
+import contextlib
 import secrets
 from datetime import datetime
 from typing import Any, ClassVar, Literal, Self
 
+from cryptography.exceptions import UnsupportedAlgorithm
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 from cryptography.hazmat.primitives.asymmetric.mlkem import MLKEM768PrivateKey
 from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PrivateKey
@@ -29,10 +31,11 @@ from shares.documents.members import (
     Signature,
     Text,
     Time,
+    Version,
     check_name,
     check_text,
 )
-from shares.documents.signing import is_signed, signed_bytes
+from shares.documents.signing import is_key, is_signed, signed_bytes
 from shares.documents.wrapping import (
     ByCard,
     ByPassphrase,
@@ -43,7 +46,7 @@ from shares.documents.wrapping import (
     open_by_passphrase,
     passphrase_sealer,
 )
-from shares.errors import VerificationError, WrongKeyError
+from shares.errors import SharesError, VerificationError, WrongKeyError
 from shares.memory import Secret
 
 # Ed25519 seed, X25519 private key, ML-KEM-768 seed, one after another.
@@ -60,7 +63,7 @@ class PartyCard(Document):
     KIND: ClassVar[str] = "party-card"
 
     kind: Literal["party-card"]
-    version: Literal[1]
+    version: Version
     name: Name
     contact: Text | None
     created: Time
@@ -74,6 +77,8 @@ class PartyCard(Document):
     def _is_its_own(self) -> Self:
         if self.fingerprint != self._own_fingerprint():
             raise PydanticCustomError("shares_card", "its fingerprint does not fit its content")
+        if not is_key(self.ed25519):
+            raise PydanticCustomError("shares_card", "its Ed25519 key is none that a signature proves anything about")
         if not is_signed(self.ed25519, self.signature, self.KIND, self._signed_members()):
             raise PydanticCustomError("shares_card", "its signature by its own key does not fit its content")
         return self
@@ -99,7 +104,7 @@ class PartyKey(Document):
     KIND: ClassVar[str] = "party-key"
 
     kind: Literal["party-key"]
-    version: Literal[1]
+    version: Version
     card: PartyCard
     wrapping: ByPassphrase
     sealed: Sealed
@@ -159,7 +164,7 @@ class OpenPartyKey:
             return RecipientKey(
                 self.card.fingerprint,
                 X25519PrivateKey.from_private_bytes(view[_AGREE]),
-                MLKEM768PrivateKey.from_seed_bytes(bytes(view[_ENCAPSULATE])),
+                _decapsulation_key(view),
             )
 
     def sign(self, kind: str, members: dict[str, Any]) -> bytes:
@@ -221,6 +226,14 @@ def new_party(
         return _wrapped(_card(name, contact, created, content), content, passphrase, cost)
 
 
+def _decapsulation_key(content: memoryview) -> MLKEM768PrivateKey:
+    with contextlib.suppress(UnsupportedAlgorithm):
+        return MLKEM768PrivateKey.from_seed_bytes(bytes(content[_ENCAPSULATE]))
+    raise SharesError(
+        "the cryptography package here was built without ML-KEM-768", hint="install its own wheel, version 48 or later"
+    )
+
+
 def _card(name: str, contact: str | None, created: datetime, content: Secret) -> PartyCard:
     with content.view() as view:
         signing = Ed25519PrivateKey.from_private_bytes(view[_SIGN])
@@ -232,7 +245,7 @@ def _card(name: str, contact: str | None, created: datetime, content: Secret) ->
             "created": created,
             "ed25519": signing.public_key().public_bytes_raw(),
             "x25519": X25519PrivateKey.from_private_bytes(view[_AGREE]).public_key().public_bytes_raw(),
-            "mlkem768": MLKEM768PrivateKey.from_seed_bytes(bytes(view[_ENCAPSULATE])).public_key().public_bytes_raw(),
+            "mlkem768": _decapsulation_key(view).public_key().public_bytes_raw(),
         }
     bare = PartyCard.model_construct(**members, fingerprint="", signature=b"")
     marked = bare.model_copy(update={"fingerprint": bare._own_fingerprint()})

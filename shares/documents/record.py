@@ -32,6 +32,7 @@ from shares.documents.members import (
     Signature,
     Text,
     Time,
+    Version,
 )
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.share import MAX_ROW, MIN_ROW
@@ -92,7 +93,7 @@ class Record(Document):
     KIND: ClassVar[str] = "record"
 
     kind: Literal["record"]
-    version: Literal[1]
+    version: Version
     set: SetId
     epoch: Epoch
     label: Text

@@ -33,6 +33,7 @@ from shares.documents.members import (
     SecretRow,
     SetId,
     Text,
+    Version,
 )
 from shares.field.gf256 import Field
 from shares.memory import Secret
@@ -53,7 +54,7 @@ class ShareFacts(Document):
     """What a share says in the open, wrapped or not: what it belongs to, and notes for people."""
 
     kind: str
-    version: Literal[1]
+    version: Version
     set: SetId
     epoch: Epoch
     custodian: Name

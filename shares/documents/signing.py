@@ -15,6 +15,11 @@ from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 
 from shares.documents.base import canonical
 
+_P = 2**255 - 19
+# The y of the points whose order divides 8: of order 1, 2, 4, and twice 8 (RFC 8032's curve; a test works them out).
+_Y8 = 0x7A03AC9277FDC74EC6CC392CFA53202A0F67100D760B3CBA4FD84D3D706A17C7
+_SMALL_ORDER = frozenset({1, _P - 1, 0, _Y8, _P - _Y8})
+
 
 def signed_bytes(kind: str, members: dict[str, Any]) -> bytes:
     """Return what a signature of one kind is over. No kind's bytes begin another's: the brace ends the kind.
@@ -29,6 +34,19 @@ def signed_bytes(kind: str, members: dict[str, Any]) -> bytes:
     return b"shares/v1/sign/" + kind.encode("ascii") + canonical(members)
 
 
+def is_key(public_key: bytes) -> bool:
+    """Say whether bytes are an Ed25519 public key that a signature proves something about.
+
+    A point of small order has signatures that fit any content and that anybody can write; and a point has one encoding
+    (RFC 8032, sec. 5.1.3), though libraries may take others.
+
+    Args:
+        public_key: 32 bytes.
+    """
+    y = int.from_bytes(public_key, "little") & (1 << 255) - 1
+    return y < _P and y not in _SMALL_ORDER
+
+
 def is_signed(public_key: bytes, signature: bytes, kind: str, members: dict[str, Any]) -> bool:
     """Say whether ``signature`` is one by the holder of ``public_key`` over these members.
 
@@ -38,6 +56,8 @@ def is_signed(public_key: bytes, signature: bytes, kind: str, members: dict[str,
         kind: as for ``signed_bytes``.
         members: as for ``signed_bytes``.
     """
+    if not is_key(public_key):
+        return False
     try:
         Ed25519PublicKey.from_public_bytes(public_key).verify(signature, signed_bytes(kind, members))
     except (InvalidSignature, ValueError):

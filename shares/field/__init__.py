@@ -1,7 +1,7 @@
 """Choose the kernel: the one place that knows there are two of them.
 
 For: everything above calls ``kernel()`` and never asks which one answers.
-Source: this project's own rule, README "Kernels".
+Source: this project's own rule (DEVELOPERS.md, "Run").
 May import: shares.errors, shares.field._kernel (C), shares.field._lanes (portable); the last two only when chosen.
 Secret: the rows that pass through ``combine`` and ``project``. Public: the choice, the modulus, the matrix, lengths.
 Does not: arithmetic. ``gf256`` is the face of the field; this module says only who computes.

@@ -73,7 +73,7 @@ def prepared(tmp_path: Path) -> Path:
     for path in place.shares:
         path.rename(tmp_path / path.name)
     keys = {}
-    for name in (*NAMES, "harbour-office", "new"):
+    for name in (*NAMES, "auditor-east", "auditor-west", "harbour-office", "new"):
         (tmp_path / f"{name}.passphrase").write_text(f"the passphrase of {name}\n")
         if name != "new":
             keys[name] = new_party(name, passphrase(name), cost=QUICK)
@@ -89,7 +89,10 @@ def prepared(tmp_path: Path) -> Path:
     with keys["harbour-office"].open(passphrase("harbour-office")) as dealer:
         signed = load_record(place.record).signed(dealer, "dealer")
     (tmp_path / "record.json").write_bytes(signed.to_file())
-    (tmp_path / "policy.toml").write_bytes((POLICIES / "tide-archive.toml").read_bytes())
+    policy = (POLICIES / "tide-archive.toml").read_text()
+    (tmp_path / "policy.toml").write_text(
+        re.sub(r'^(name = "(.*)")$', r'\1\ncard = "\2.card.json"', policy, flags=re.M)
+    )
     (tmp_path / "scan.pdf").write_bytes(b"a form, signed by hand")
     (tmp_path / "tide-archive").mkdir()
     (tmp_path / "tide-archive" / "record.json").write_bytes(place.record.read_bytes())

@@ -95,6 +95,19 @@ def test_a_damaged_file_is_refused_before_any_plaintext_exists(place: Place, how
     assert_refused(["verify", "--record", place.record, "--encrypted", path], 4, watched=place.folder)
 
 
+def test_show_knows_the_file_by_its_beginning(place: Place) -> None:
+    told = run("show", encrypted(place), "--json").json
+    assert (told["kind"], told["set"], told["bytes"]) == (
+        "encrypted-file",
+        run("show", place.record, "--json").json["set"],
+        encrypted(place).stat().st_size,
+    )
+    assert "shares verify --record" in run("show", encrypted(place)).out
+    policy = place.folder / "policy.toml"
+    policy.write_text("[rule]")
+    assert_refused(["show", policy], 4, "shares plan")
+
+
 def test_an_auditor_checks_the_file_without_any_key(place: Place) -> None:
     done = run("verify", "--record", place.record, "--encrypted", encrypted(place))
     assert (done.code, "whole" in done.out) == (0, True)
@@ -120,7 +133,17 @@ def test_a_failed_split_leaves_no_encrypted_file(tmp_path: Path) -> None:
     assert not encrypted(place).exists()
 
 
-@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_once_the_record_stands_the_encrypted_file_stays(tmp_path: Path) -> None:
+    """It was once removed again when the result could not be printed: the shares were then worth nothing."""
+    place = Place.make(tmp_path / "place", LARGE)
+    with open("/dev/full", "w") as full:
+        done = subprocess.run([PROGRAM, *place.split_arguments()], stdout=full, stderr=subprocess.PIPE, check=False)
+    assert done.returncode == 5
+    assert b"what was asked for is done all the same" in done.stderr
+    assert run(*recover(place, "--encrypted", encrypted(place), "--check")).code == 0
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM, signal.SIGQUIT])
 def test_a_signal_while_encrypting_leaves_nothing(tmp_path: Path, number: signal.Signals) -> None:
     place = Place.make(tmp_path / "place", b"")
     process = subprocess.Popen(

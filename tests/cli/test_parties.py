@@ -305,12 +305,12 @@ def test_a_card_of_the_same_name_is_not_trusted_for_it(harbour: Harbour, tmp_pat
 def test_an_unsigned_record_is_trusted_by_nobody(harbour: Harbour) -> None:
     done = run("verify", "--record", harbour.place.record, "--trust", harbour.card("registrar"))
     assert done.code == 4
-    assert "The record is unsigned: compare its fingerprint" in done.out
+    assert "--trust asks for a signature" in done.out
     plain = run("verify", "--record", harbour.place.record)
     assert (plain.code, plain.err) == (0, "")
     assert f"The record of {LABEL} agrees with itself" in plain.out
     told = run("verify", "--record", harbour.place.record, "--json").json
-    assert (told["signatures"], told["shares"], told["proves"]) == ([], [], None)
+    assert (told["signatures"], told["shares"], told["trusted"]) == ([], [], None)
 
 
 def test_what_is_proved_depends_on_signatures(harbour: Harbour) -> None:
@@ -318,7 +318,7 @@ def test_what_is_proved_depends_on_signatures(harbour: Harbour) -> None:
     flat = " ".join(run("verify", share, "--record", record).out.split())
     assert "It does not prove who made that record" in flat
     flat = " ".join(run("verify", share, "--record", signed(harbour, ("registrar", "witness"))).out.split())
-    assert "as far as you know whose the signers' cards are" in flat
+    assert "whose card each signer's is" in flat
     assert "--trust tells whether you trust that card" in flat
 
 

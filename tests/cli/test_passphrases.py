@@ -95,14 +95,26 @@ def test_each_source_is_read_once_and_wiped_at_the_end(files: dict[str, str]) ->
     assert set(memory._open) <= before
 
 
-def test_a_shared_one_is_noticed(files: dict[str, str]) -> None:
-    with GivenPassphrases((files["light"], f"north={files['north']}"), ()) as given:
-        assert given.is_shared(["south", "dry-dock"])
-        assert given.is_shared(["north", "south", "dry-dock"])
-        assert not given.is_shared(["north", "south"])
-        assert not given.is_shared(["south"])
-    with GivenPassphrases((f"north={files['north']}",), ()) as given:
-        assert not given.is_shared(["south", "dry-dock"])
+def test_a_shared_one_is_noticed(files: dict[str, str], tmp_path: Path) -> None:
+    copy = tmp_path / "copy"
+    copy.write_bytes(Path(files["north"]).read_bytes())
+    for sources, names, shared in (
+        ((files["light"], f"north={files['north']}"), ("south", "dry-dock"), True),
+        ((files["light"], f"north={files['north']}"), ("north", "south"), False),
+        ((f"south={copy}", f"north={files['north']}"), ("north", "south"), True),
+        ((files["light"],), ("south",), False),
+    ):
+        with GivenPassphrases(sources, ()) as given:
+            for name in names:
+                given.new(name)
+            assert given.is_shared() is shared
+
+
+def test_one_for_nobody_is_refused(files: dict[str, str]) -> None:
+    with GivenPassphrases((f"nort={files['north']}", files["light"]), ()) as given:
+        with pytest.raises(ParameterError, match="nobody of that name"):
+            given.only_for(["north", "south"])
+        given.only_for(["nort"])
 
 
 @pytest.mark.parametrize(
@@ -324,8 +336,8 @@ def test_one_to_open_has_three_tries(wrapped: Path, tmp_path: Path) -> None:
         assert (code, terminal.echoes) == (0, True)
     shown = terminal.shown.decode()
     assert shown.count("Passphrase of north-pier: ") == 3
-    assert "Caution: the passphrase does not open it. 2 more." in shown
-    assert "Caution: the passphrase does not open it. 1 more." in shown
+    assert "Caution: the passphrase does not open it. 2 more tries." in shown
+    assert "Caution: the passphrase does not open it. 1 more try." in shown
     assert "intact" in out
     assert not [text for text in (OTHER, TYPED, TYPED.upper()) if text in shown + out]
 

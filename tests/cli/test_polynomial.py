@@ -26,6 +26,7 @@ def test_each_form_of_one_polynomial(form: str) -> None:
     told = run("polynomial", "check", form, "--json").json
     assert told == {
         "done": True,
+        "exit": 0,
         "polynomial": AES,
         "number": 283,
         "degree": 8,

@@ -67,7 +67,7 @@ def test_every_set_of_custodians_recovers_exactly_when_the_rule_says_so(place: P
 
 def test_the_policy_says_what_the_options_say(place: Place) -> None:
     for option in ("--need=2", "--label=x", "--custodian=registrar", "--polynomial=0x11d"):
-        assert_refused(split(place, POLICY, "--plain", option), 2, "--policy says", watched=place.folder)
+        assert_refused(split(place, POLICY, "--plain", option), 2, "the policy says what", watched=place.folder)
     bare = ["split", place.key, "--set", place.set, "--deliver", place.drop, "--plain"]
     assert_refused(bare, 2, "--need, --label and each --custodian, or --policy", watched=place.folder)
 
@@ -105,6 +105,30 @@ def test_a_strict_policy_with_a_serious_finding_is_refused(place: Place) -> None
     assert (done.code, "Caution: serious: " in done.err) == (0, True)
 
 
+def test_one_card_for_several_custodians(place: Place) -> None:
+    """One party key would open a quorum, however many people the policy names."""
+    party(place, "north-pier")
+    text = POLICY.read_text()
+    for name in EVERYONE:
+        text = text.replace(f'name = "{name}"\n', f'name = "{name}"\ncard = "north-pier.card.json"\n')
+    policy = place.folder / "policy.toml"
+    policy.write_text(text)
+    assert_refused(split(place, policy), 4, "one party card stands for several custodians", watched=place.folder)
+    policy.write_text(text.replace("strict = true", "strict = false"))
+    done = run(*split(place, policy))
+    assert done.code == 0
+    assert "one party key opens the shares of north-pier and south-pier and" in done.err
+    assert "the share of registrar is wrapped for the card of north-pier" in done.err
+
+
+def test_a_passphrase_for_nobody_is_refused(place: Place) -> None:
+    """A slip in a name once wrapped the share under another passphrase than its custodian had."""
+    (place.folder / "a").write_text("a passphrase made up for all\n")
+    (place.folder / "b").write_text("the passphrase of one alone\n")
+    given = ["--passphrase-file", place.folder / "a", "--passphrase-file", f"nort-pier={place.folder / 'b'}"]
+    assert_refused(split(place, POLICY, *given), 2, "nort-pier", "north-pier", watched=place.folder)
+
+
 def test_a_broken_policy_names_the_key_or_the_line(place: Place) -> None:
     policy = place.folder / "policy.toml"
     for old, new, words in (
@@ -139,7 +163,9 @@ def dutiful(place: Place) -> tuple[Place, Path, list[str | Path]]:
 
 def test_with_all_acknowledgements_the_shares_are_delivered(dutiful: tuple[Place, Path, list[str | Path]]) -> None:
     place, policy, given = dutiful
-    assert run(*split(place, policy, "--plain", *given)).code == 0
+    done = run(*split(place, policy, "--plain", *given))
+    assert (done.code, done.out.count("Duties accepted by ")) == (0, len(EVERYONE))
+    assert "Duties accepted by registrar: by registrar, card " in done.out
     assert sorted(path.stem for path in (place.set / "acknowledgements").iterdir()) == sorted(EVERYONE)
 
 

@@ -21,11 +21,18 @@ from strategies import crooked_split, flat, presented, revealed
 from vectors.make import wrapping_v1 as by_hand
 
 from shares import streams
-from shares.custody.deliver import fed, sealed_for, to_command, to_file
+from shares.custody.deliver import fed, open_sealed, sealed_for, to_command, to_file
 from shares.custody.recover import recover
 from shares.documents.sealed_secret import SealedSecret
-from shares.documents.wrapping import SUITES
-from shares.errors import CommandFailedError, SharesError, StorageError, VerificationError, WrongKeyError
+from shares.documents.wrapping import SUITES, card_sealer
+from shares.errors import (
+    CommandFailedError,
+    SetMismatchError,
+    SharesError,
+    StorageError,
+    VerificationError,
+    WrongKeyError,
+)
 from shares.memory import Secret
 
 SECRET = b"not a real key\0with a zero byte and no line end"
@@ -257,13 +264,38 @@ def test_a_secret_for_a_receiver_opens_by_the_receivers_key_alone(suite, record)
     facts = (sealed.set, sealed.epoch, sealed.label, sealed.encrypted_file, sealed.wrapping.suite)
     assert facts == (DEALT.record.set, 1, DEALT.record.label, None, suite)
     with unlocked("harbour-office") as key:
-        assert revealed(sealed.content(key.open)) == SECRET
+        assert revealed(sealed.content(key.open)) == revealed(recovery.payload)
+        assert revealed(open_sealed(sealed, lambda one: one.content(key.open), DEALT.record)) == SECRET
         # FORMAT.md, sections 9 and 10, by the opener written from its text alone.
-        assert by_hand.opened(json.loads(data), by_hand.Private(revealed(key.content))) == SECRET
+        assert by_hand.opened(json.loads(data), by_hand.Private(revealed(key.content))) == revealed(recovery.payload)
     with unlocked("registrar") as key, pytest.raises(WrongKeyError):
         sealed.content(key.open)
     # The recovery keeps the secret, for its caller to wipe.
     assert revealed(recovery.secret) == SECRET
+
+
+def test_a_secret_that_anybody_sealed_is_not_taken_for_the_recovered_one() -> None:
+    """All that is sealed with is public: a courier can make such a file of their own."""
+    own, label = Secret.of(bytes(100)), DEALT.record.label
+    seal = card_sealer(card("harbour-office").recipient())
+    forged = SealedSecret.seal(
+        own, seal, set_id=DEALT.record.set, epoch=1, label=label, secret_commitment=DEALT.record.secret_commitment
+    )
+    other = recover(presented(crooked_split(b"forged", flat(1, 1)).shares), None)
+    foreign = SealedSecret.parse(sealed_for(card("harbour-office"), other, SUITES[0]))
+    renamed = SealedSecret.seal(
+        other.payload, seal, set_id=DEALT.record.set, epoch=1, label=label, secret_commitment=bytes(32)
+    )
+    with unlocked("harbour-office") as key:
+        for sealed, record, reason in (
+            (forged, None, "not the secret that its commitment names"),
+            (forged, DEALT.record, "not the secret that its commitment names"),
+            (foreign, DEALT.record, "the record of set"),
+            (renamed, DEALT.record, "another secret than the record"),
+        ):
+            with pytest.raises((VerificationError, SetMismatchError), match=reason):
+                open_sealed(sealed, lambda one: one.content(key.open), record)
+        assert revealed(open_sealed(foreign, lambda one: one.content(key.open), None)) == b"forged"
 
 
 def test_a_secret_goes_to_no_card_without_usable_keys() -> None:

@@ -118,7 +118,9 @@ def test_a_party_key_that_does_not_open_is_no_fault_of_the_share() -> None:
 
 def test_other_content_opens_as_shares_do() -> None:
     seal = card_sealer(card("south-pier").recipient())
-    sealed = SealedSecret.seal(Secret.of(b"made up"), seal, set_id=bytes(16), epoch=1, label=None)
+    sealed = SealedSecret.seal(
+        Secret.of(b"made up"), seal, set_id=bytes(16), epoch=1, label=None, secret_commitment=bytes(32)
+    )
     known, opening = at_hand("south-pier", keys=[party("south-pier")])
     with opening:
         assert revealed(opening.content(sealed, "the secret")) == b"made up"

@@ -34,7 +34,7 @@ def test_good_and_bad_files_are_presented_in_order_with_the_reason(tmp_path: Pat
         "pipe": ("pipe, device or socket", Status.UNREADABLE),
         "large": ("larger than 1,048,576 bytes", Status.UNREADABLE),
         "empty": ("not one JSON object", Status.DAMAGED),
-        "record": ("it is a record", Status.DAMAGED),
+        "record": ("it is a record", Status.UNREADABLE),
         "binary": ("not UTF-8", Status.DAMAGED),
     }
     (tmp_path / "folder").mkdir()

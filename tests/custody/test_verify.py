@@ -91,6 +91,12 @@ BENT = {
     ),
     "no notes": (lambda share: resealed(share, record=None, label=None, rule=None, notice=None), "intact", "fit"),
     "another label": (lambda share: resealed(share, label="x"), "intact", "but not the label: go by the record's"),
+    "another rule": (
+        lambda share: resealed(share, rule="any 1 of x"),
+        "intact",
+        "but not the rule: go by the record's",
+    ),
+    "another notice": (lambda share: resealed(share, notice="send it"), "intact", "but not the notice: go by"),
     # Several causes: the first in the order of the format.
     "another set and epoch": (lambda share: resealed(share, set=bytes(16), epoch=2), "foreign set", "of set"),
     "another epoch and name": (lambda share: resealed(share, epoch=2, custodian="wharf"), "other epoch", "of epoch"),

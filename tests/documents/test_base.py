@@ -9,6 +9,7 @@ from __future__ import annotations
 import json
 import logging
 import traceback
+from pathlib import Path
 
 import pytest
 from hypothesis import example, given
@@ -314,3 +315,17 @@ def test_a_document_cannot_be_changed_and_tells_no_row() -> None:
         assert "<hidden>" in text
         assert encode_bytes(CANARY)[:8] not in text
         assert "canary" not in text
+
+
+@pytest.mark.parametrize("place", [["version"], ["signatures", 0, "card", "version"]], ids=str)
+def test_true_is_no_version(place: list[str | int]) -> None:
+    """Python takes 1 and true to be equal, and JSON does not. Deep within a document it was once accepted."""
+    golden = Path(__file__).parents[1] / "vectors" / "golden" / "v1" / "wrapped" / "record.json"
+    members = json.loads(golden.read_text())
+    Record.parse(json.dumps(members).encode())
+    inner = members
+    for step in place[:-1]:
+        inner = inner[step]
+    inner[place[-1]] = True
+    with pytest.raises(DocumentError, match="version"):
+        Record.parse(json.dumps(members).encode())

@@ -12,6 +12,7 @@ from datetime import UTC, datetime
 from typing import Any
 
 import pytest
+from cryptography.exceptions import UnsupportedAlgorithm
 from parties import QUICK, by, card, edited, file_of, party, passphrase, unlocked
 from strategies import CREATED, bits_flipped, revealed
 from vectors.make import wrapping_v1 as by_hand
@@ -19,7 +20,7 @@ from vectors.make import wrapping_v1 as by_hand
 from shares import memory
 from shares.documents.party import OpenPartyKey, PartyCard, PartyKey, new_party
 from shares.documents.wrapping import SUITES, Cost, card_sealer, passphrase_sealer
-from shares.errors import DocumentError, ParameterError, VerificationError, WrongKeyError
+from shares.errors import DocumentError, ParameterError, SharesError, VerificationError, WrongKeyError
 from shares.memory import Secret
 
 NAME = "north-pier"
@@ -232,9 +233,12 @@ def exchanged(part: slice) -> bytes:
 )
 def test_private_halves_that_are_not_the_cards_are_refused(content: Callable[[], bytes]) -> None:
     before = set(memory._open)
-    with pytest.raises(VerificationError, match="not those of the card"):
-        sealed_for(content(), CARD).open(passphrase(NAME))
-    assert len(set(memory._open) - before) == 0
+    made, secret = sealed_for(content(), CARD), passphrase(NAME)
+    with pytest.raises(VerificationError, match="not those of the card") as refusal:
+        made.open(secret)
+    # Wiped at once, though the traceback keeps what the frames held.
+    assert refusal.tb is not None
+    assert set(memory._open) - before == {secret._number}
 
 
 def test_every_flipped_bit_of_a_key_file_is_refused() -> None:
@@ -308,3 +312,16 @@ def test_an_open_key_shows_nothing() -> None:
         assert "content" not in f"{key!r} {key}"
         with pytest.raises(AttributeError):
             key.note = "x"  # type: ignore[attr-defined]
+
+
+def test_without_ml_kem_it_is_said_what_to_install(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A cryptography package that was built elsewhere may lack it."""
+
+    class Without:
+        @staticmethod
+        def from_seed_bytes(_: bytes) -> None:
+            raise UnsupportedAlgorithm("ML-KEM-768 is not supported by this backend.")
+
+    monkeypatch.setattr("shares.documents.party.MLKEM768PrivateKey", Without)
+    with pytest.raises(SharesError, match="built without ML-KEM-768"):
+        new_party("north-pier", Secret.of(b"made up"), cost=QUICK)

@@ -39,7 +39,9 @@ def samples() -> dict[str, Any]:
     with unlocked(NAME) as key:
         signed = DEALT.record.signed(key, "dealer", time=CREATED)
         accepted = Acknowledgement.signed_by(key, custodian=NAME, label="Tide archive", time=CREATED)
-    secret = SealedSecret.seal(Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive")
+    secret = SealedSecret.seal(
+        Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive", secret_commitment=bytes(32)
+    )
     made = {
         "share": share,
         "record": DEALT.record,

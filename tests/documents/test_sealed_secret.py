@@ -25,7 +25,12 @@ from shares.memory import Secret
 NAME = "harbour-office"
 VECTORS = Path(__file__).parents[1] / "vectors"
 SECRET = b"not a real key, made up for a test"
-FACTS: dict[str, Any] = {"set_id": bytes(range(16)), "epoch": 3, "label": "Tide archive"}
+FACTS: dict[str, Any] = {
+    "set_id": bytes(range(16)),
+    "epoch": 3,
+    "label": "Tide archive",
+    "secret_commitment": bytes(32),
+}
 
 
 def sealed(content: bytes = SECRET, suite: Any = SUITES[0], **changes: Any) -> SealedSecret:
@@ -54,7 +59,7 @@ def test_the_secret_comes_back_by_the_receivers_key(suite: Any, content: bytes) 
 def test_the_facts_come_back(changes: dict[str, Any]) -> None:
     made = SealedSecret.parse(sealed(**changes).to_file())
     facts = {**FACTS, "encrypted_file": None, **changes}
-    assert (made.set, made.epoch, made.label, made.encrypted_file) == tuple(facts.values())
+    assert (made.set, made.epoch, made.label, made.secret_commitment, made.encrypted_file) == tuple(facts.values())
     with unlocked(NAME) as key:
         assert revealed(made.content(key.open)) == SECRET
 
@@ -116,7 +121,15 @@ def test_whoever_changes_a_bound_member_is_found_out_though_the_digest_fits(memb
 
 
 def test_every_bound_member_was_tried() -> None:
-    assert set(SealedSecret.BOUND) == {"kind", "version", "set", "epoch", "label", "encrypted_file"}
+    assert set(SealedSecret.BOUND) == {
+        "kind",
+        "version",
+        "set",
+        "epoch",
+        "label",
+        "secret_commitment",
+        "encrypted_file",
+    }
     assert set(SealedSecret.model_fields) - set(SealedSecret.BOUND) == {"wrapping", "sealed", "digest"}
     assert by_hand.bound_of(json.loads(SAMPLE.to_file())) == SAMPLE.bound()
 

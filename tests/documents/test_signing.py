@@ -18,6 +18,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from vectors.make import wrapping_v1 as by_hand
 
+from shares.documents import signing
 from shares.documents.base import KINDS
 from shares.documents.signing import is_signed, signed_bytes
 
@@ -109,3 +110,48 @@ def test_the_reader_by_hand_agrees() -> None:
     by_hand.verify(card, signature, "record", MEMBERS)
     with pytest.raises(InvalidSignature):
         by_hand.verify(card, signature, "record", MEMBERS | {"epoch": 2})
+
+
+# Keys that prove nothing.
+
+P = 2**255 - 19
+D = -121665 * pow(121666, -1, P) % P
+
+
+def added(one: tuple[int, int], other: tuple[int, int]) -> tuple[int, int]:
+    """Add two points of the curve -x^2 + y^2 = 1 + d x^2 y^2 (RFC 8032, sec. 5.1.4), by the textbook's formula."""
+    (a, b), (c, d) = one, other
+    product = D * a * b * c * d % P
+    return (a * d + b * c) * pow(1 + product, -1, P) % P, (b * d + a * c) * pow(1 - product, -1, P) % P
+
+
+def points_of(y: int) -> list[tuple[int, int]]:
+    """The points with this y: none, one or two."""
+    square = (y * y - 1) * pow(D * y * y + 1, -1, P) % P
+    root = pow(square, (P + 3) // 8, P)
+    roots = {root, root * pow(2, (P - 1) // 4, P) % P}
+    return [(x, y) for one in roots if one * one % P == square for x in {one, -one % P}]
+
+
+def test_the_keys_of_small_order_are_exactly_those() -> None:
+    """Eight times a point of small order is the neutral one, (0, 1). The curve has eight of them (RFC 8032's h = 8)."""
+    found = {point for y in signing._SMALL_ORDER for point in points_of(y)}
+    assert len(found) == 8
+    for point in found:
+        twice = added(point, point)
+        four = added(twice, twice)
+        assert added(four, four) == (0, 1)
+
+
+@pytest.mark.parametrize("y", [*sorted(signing._SMALL_ORDER), P, P + 1, 2**255 - 1], ids=hex)
+@pytest.mark.parametrize("sign", [0, 1])
+def test_a_key_that_fits_any_content_signs_nothing(y: int, sign: int) -> None:
+    """With a public key of small order the signature R || 0, R such a point, verifies whatever was signed, or often."""
+    key = (y | sign << 255).to_bytes(32, "little")
+    assert not signing.is_key(key)
+    assert not any(is_signed(key, key + bytes(32), "record", {"n": n}) for n in range(16))
+
+
+def test_honest_keys_are_keys() -> None:
+    for _ in range(50):
+        assert signing.is_key(Ed25519PrivateKey.generate().public_key().public_bytes_raw())

@@ -96,7 +96,7 @@ def documents(flat: Dealing) -> dict[str, Json]:
         (registrar, "witness", "2026-01-05T09:12:00Z"),
     ):
         signed["signatures"] = [*signed["signatures"], signature(signed, made, role, time)]
-    start: Json = {name: flat.record[name] for name in ("set", "epoch", "label", "encrypted_file")}
+    start: Json = {name: flat.record[name] for name in ("set", "epoch", "label", "secret_commitment", "encrypted_file")}
     start = {"kind": "sealed-secret", "version": 1, **start}
     return {
         "registrar.card.json": registrar,
@@ -111,7 +111,7 @@ def documents(flat: Dealing) -> dict[str, Json]:
             flat.shares["registrar"], for_card(registrar, "x25519", "registrar share, x25519")
         ),
         "harbour-office.sealed.json": digested(
-            start, for_card(office, "x25519", "harbour-office secret"), flat.plan.secret
+            start, for_card(office, "x25519", "harbour-office secret"), flat.payload
         ),
         "record.json": signed,
     }

@@ -38,7 +38,7 @@ BOUND = {
         "encrypted_file",
         "record",
     ),
-    "sealed-secret": ("kind", "version", "set", "epoch", "label", "encrypted_file"),
+    "sealed-secret": ("kind", "version", "set", "epoch", "label", "secret_commitment", "encrypted_file"),
 }
 
 Json = dict[str, Any]
