@@ -4,12 +4,16 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
+from pathlib import Path
 
 import click
 
 from shares.cli.output import filled, json_option, print_result, prose
+from shares.custody.parties import load_card
 from shares.documents.base import MAX_FILE
+from shares.documents.party import PartyCard
 from shares.documents.policy import Policy
+from shares.errors import VerificationError
 from shares.planning.examine import Plan, examine
 from shares.planning.structure import MAX_LISTED, Bounds
 from shares.storage import read_file
@@ -25,22 +29,34 @@ def command(ctx: click.Context, policy: str, as_json: bool) -> None:
     """Examine the policy in the TOML file POLICY before anything is split. It holds no secret, but is confidential.
 
     Told are the smallest numbers of custodians, people, sites and reporting lines that make a quorum or block every
-    quorum, the minimal quorums, and what is amiss. Exit code 0; 4 where the policy says `strict = true` and a serious
-    finding stands, as `split` refuses it then.
+    quorum, the minimal quorums, and what is amiss. The party cards that it names are read. Exit code 0; 4 where the
+    policy says `strict = true` and a serious finding stands, as `split` refuses it then.
+
+    Serious is that one person, or one site, alone makes a quorum or leaves none when lost; that those of one reporting
+    line, or the shares that go one way, make a quorum; that every custodian is needed; that there are fewer than three
+    people or sites. A caution needs a decision that only people can make; a note is good to know.
+
+    What a policy holds is in FORMAT.md, section 12; examples to begin with are in examples/policies/ of the source.
 
     \b
     Example:
       shares plan tide-archive.toml
     """
-    plan = examine(Policy.parse(read_file(policy, limit=MAX_FILE), where=policy))
-    print_result(_members(plan), _lines(plan), as_json=as_json)
-    ctx.exit(4 if plan.refused else 0)
+    read = Policy.parse(read_file(policy, limit=MAX_FILE), where=policy)
+    plan = examine(read, cards=_cards(read, Path(policy).parent))
+    code = VerificationError.exit_code if plan.refused else 0
+    print_result({"done": code == 0, "exit": code, **_members(plan)}, _lines(plan), as_json=as_json)
+    ctx.exit(code)
+
+
+def _cards(policy: Policy, folder: Path) -> dict[str, PartyCard]:
+    """Read the cards that a policy names; a ceremony is a bad time to find that one does not exist."""
+    return {one.name: load_card(folder / one.card) for one in policy.custodians if one.card is not None}
 
 
 def _members(plan: Plan) -> dict[str, object]:
     quorums = plan.quorums
     return {
-        "done": True,
         "confidential": CONFIDENTIAL,
         "label": plan.label,
         "rule": plan.rule.words(),

@@ -58,8 +58,9 @@ def command(target: str, source: str | None, as_json: bool) -> None:
 
     Each line is checked as soon as it is typed. Up to two wrong characters, or one left out or typed twice, are found,
     shown and set right once you agree. The screen is wiped at the end. With --from nothing is asked; what was set right
-    is told by line and place, and the check over the whole share decides. A scanner that types the code into the first
-    line is understood as well.
+    is told by line and place, and the check over the whole share decides. The file holds the lines, one a row, with
+    their numbers before them or without, and nothing else; or the text of the code. A scanner that types the code into
+    the first line is understood as well.
 
     \b
     Examples:
@@ -88,7 +89,8 @@ def _from_source(source: str) -> Gathered:
     problem = hint = None
     with read_secret(source, limit=LARGEST_FILE) as read, read.view() as view:
         try:
-            return gather(str(view, "utf-8", "replace"))
+            # Some programs put a mark of the encoding before the first character.
+            return gather(str(view, "utf-8-sig", "replace"))
         except DocumentError as error:
             problem, hint = error.what, error.hint
     raise DocumentError(problem, where=_called(source), hint=hint)

@@ -149,8 +149,8 @@ class Policy(Document):
             The policy; ``text`` holds the bytes as they were given.
 
         Raises:
-            DocumentError: not TOML (says the line), or not a policy (says the key, like ``group.operators.from[2]``;
-                places in a list are counted from 0).
+            DocumentError: not TOML (says the line), or not a policy (says the key, like ``group.operators.from[2]``,
+                and the custodian where their name can be read; places in a list are counted from 0).
 
         Source: FORMAT.md, sec. 12.
         """
@@ -158,7 +158,7 @@ class Policy(Document):
         try:
             policy = cls.model_validate(tables)
         except ValidationError as error:
-            problem = _first_problem(error)
+            problem = _first_problem(error, tables)
         else:
             policy._text = bytes(data)
             return policy
@@ -217,14 +217,15 @@ class Policy(Document):
         yield from (f"{_path('group', name)} is not used by the rule" for name in self.groups if name not in reached)
         for i, custodian in enumerate(self.custodians):
             if custodian.name not in reached:
-                yield f"custodian[{i}] is not used by the rule: {custodian.name} would hold no share"
+                yield f"{_custodian(custodian.name, i)} is not used by the rule and would hold no share"
 
     def _names_twice(self) -> Iterator[str]:
         places: dict[str, str] = {}
         for i, custodian in enumerate(self.custodians):
-            first = places.setdefault(custodian.name.casefold(), f"custodian[{i}].name")
-            if first != f"custodian[{i}].name":
-                yield f"custodian[{i}].name is the same as {first} (upper and lower case do not differ)"
+            path = f"custodian[{i}].name"
+            first = places.setdefault(custodian.name.casefold(), path)
+            if first != path:
+                yield f"{path}, {custodian.name}, is the same as {first} (upper and lower case do not differ)"
         for name in self.groups:
             path = _path("group", name)
             reason = _name_problem(name)
@@ -282,6 +283,21 @@ def _path(*keys: str | int) -> str:
     return path.removeprefix(".")
 
 
+def _custodian(name: str, i: int) -> str:
+    """Name a custodian in an error: people know the name, and the place finds it in the file."""
+    return f"custodian {name} ({_path('custodian', i)})"
+
+
+def _place(loc: tuple[str | int, ...], tables: dict[str, object]) -> str:
+    """Write where a value stands: by the custodian's name where there is one that can be read, else by its path."""
+    match loc, tables.get("custodian"):
+        case ("custodian", int(i), key, *more), tuple(custodians) if key != "name":
+            match custodians[i]:
+                case {"name": str(name)} if _name_problem(name) is None:
+                    return f"{_custodian(name, i)}: {_path(key, *more)}"
+    return _path(*loc)
+
+
 def _tables(data: bytes, where: str | None) -> dict[str, object]:
     """Read TOML; what is wrong with it is told by its line alone."""
     if len(data) > MAX_FILE:
@@ -322,7 +338,7 @@ _PLAIN_WORDS = {
 }
 
 
-def _first_problem(error: ValidationError) -> str:
+def _first_problem(error: ValidationError, tables: dict[str, object]) -> str:
     problems = error.errors(include_input=False, include_context=False, include_url=False)
     # A misspelt key is missing under its right name as well: the slip itself is told.
     details = min(problems, key=lambda problem: problem["type"] != "extra_forbidden")
@@ -330,4 +346,4 @@ def _first_problem(error: ValidationError) -> str:
         return details["msg"]
     said = details["msg"].removeprefix("Input ")
     said = f"is not allowed: {said}" if details["type"] == "shares_text" else said
-    return f"{_path(*details['loc'])} {_PLAIN_WORDS.get(details['type'], said)}"
+    return f"{_place(details['loc'], tables)} {_PLAIN_WORDS.get(details['type'], said)}"

@@ -27,6 +27,10 @@ PaperShare: TypeAlias = Share | WrappedShare
 
 BLOCK: Final = 15
 """Bytes in a block: 24 characters of base32, what a typed line holds beside its number."""
+CHARACTERS: Final = BLOCK * 8 // 5
+"""Characters of base32 in a block."""
+LETTERS: Final = "ABCDEFGHIJKLMNOPQRSTUVWXYZ234567"
+"""The characters of base32, in the order of what they stand for (RFC 4648, sec. 6)."""
 MAX_BLOCKS: Final = 255
 CHECK: Final = 4
 """Bytes of the check."""
@@ -106,15 +110,16 @@ def from_text(text: str) -> bytes:
     Raises:
         DocumentError: it is not base32, or not whole blocks.
     """
-    data = None
-    if text and len(text) % (BLOCK * 8 // 5) == 0:
+    problem = None
+    if not text or len(text) % CHARACTERS:
+        problem = f"it has {len(text):,} characters, and not a multiple of {CHARACTERS}"
+    else:
         try:
-            data = base64.b32decode(text)
+            return base64.b32decode(text)
         except (binascii.Error, ValueError):
-            data = None
-    if data is None:
-        raise DocumentError("the text is not whole: it is not base32 in blocks of 24 characters")
-    return data
+            place = next((i for i, letter in enumerate(text, start=1) if letter not in LETTERS), len(text))
+            problem = f"its character {place:,} is none of the letters A to Z and digits 2 to 7"
+    raise DocumentError(f"the text is not whole: {problem}")
 
 
 def _header(share: PaperShare) -> bytes:

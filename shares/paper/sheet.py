@@ -28,9 +28,9 @@ from shares.documents.members import check_name, check_text
 from shares.documents.share import Share
 from shares.documents.wrapping import ByPassphrase
 from shares.errors import ParameterError, VerificationError
-from shares.paper.paperform import BLOCK, PaperShare, from_paper, to_paper, to_text
+from shares.paper.paperform import BLOCK, LETTERS, PaperShare, from_paper, to_paper, to_text
 from shares.paper.transcription import gather
-from shares.paper.typedline import LETTERS, MAX_LINES, grouped, to_lines
+from shares.paper.typedline import MAX_LINES, grouped, to_lines
 
 MIN_MODULE: Final = 0.6
 """The smallest square of a code that is printed, in millimetres: seven dots of a printer of 300 dots an inch."""

@@ -16,18 +16,16 @@ from typing import Final
 
 from shares.errors import DocumentError
 from shares.paper import linecode
-from shares.paper.paperform import BLOCK, to_text
+from shares.paper.paperform import CHARACTERS, LETTERS, to_text
 
-LETTERS: Final = "ABCDEFGHIJKLMNOPQRSTUVWXYZ234567"
 MAX_LINES: Final = 32
 """Most lines of a sheet: the first character of each is its number."""
 UNREADABLE: Final = "?"
 
 # What is typed in place of a letter because it looks like it. With two, either is possible.
 _ALIKE: Final = {"0": "O", "8": "B", "1": "IL", "|": "IL", "!": "IL", "9": "GQ", UNREADABLE: LETTERS}
-_SYMBOLS: Final = BLOCK * 8 // 5
 _BETWEEN: Final = " \t-.,:_"
-_NUMBERED: Final = re.compile(r"\s*[0-9]{1,2}[.:)]?\s+(.*)", re.DOTALL)
+_NUMBERED: Final = re.compile(r"\s*(?:line\s+)?[0-9]{1,2}\s*[.:)-]?\s+(.*)", re.DOTALL | re.IGNORECASE)
 
 
 def to_lines(data: bytes) -> list[str]:
@@ -42,8 +40,8 @@ def to_lines(data: bytes) -> list[str]:
     'ANZX XI2D JNZT SA43 FMNZ GK5B OR5L XJD'
     """
     text = to_text(data)
-    starts = range(0, len(text), _SYMBOLS)
-    return [_line(number, text[start : start + _SYMBOLS]) for number, start in enumerate(starts)]
+    starts = range(0, len(text), CHARACTERS)
+    return [_line(number, text[start : start + CHARACTERS]) for number, start in enumerate(starts)]
 
 
 def _line(number: int, letters: str) -> str:
@@ -97,10 +95,7 @@ def read_line(text: str) -> Reading:
     Raises:
         DocumentError: it cannot be told which line this is; the message does not repeat what was typed.
     """
-    numbered = _NUMBERED.fullmatch(text)
-    if numbered and len(compact(numbered[1])) >= linecode.LENGTH - 1:
-        text = numbered[1]
-    typed = compact(text)
+    typed = unnumbered(text)
     for place, character in enumerate(typed, start=1):
         if character not in LETTERS and character not in _ALIKE:
             raise DocumentError(
@@ -113,6 +108,18 @@ def read_line(text: str) -> Reading:
             f"a line has {linecode.LENGTH} characters, and this has {len(typed)}", hint="compare it group by group"
         )
     return understood(typed)
+
+
+def unnumbered(text: str) -> str:
+    """Return the characters of a row, compact, without the number that stands before a whole line.
+
+    >>> unnumbered("7  ANZX XI2D JNZT SA43 FMNZ GK5B OR5L XJD") == unnumbered("ANZXXI2DJNZTSA43FMNZGK5BOR5LXJD")
+    True
+    """
+    numbered = _NUMBERED.fullmatch(text)
+    if numbered and len(compact(numbered[1])) >= linecode.LENGTH - 1:
+        text = numbered[1]
+    return compact(text)
 
 
 def compact(text: str) -> str:

@@ -4,21 +4,28 @@ The odds of a loss will be a module beside ``structure``, on the same policy.
 
 Source: PCI PIN Security Requirements 3.1, 21-2 (count in people as well as in shares); G. R. Blakley 1979 (from memory:
 losing a share and giving it away are two budgets, so both the smallest quorum and the smallest blocking set count).
-May import: shares.errors, shares.sharing.rule, shares.documents.policy, .findings, .labels, .structure.
+May import: shares.errors, shares.sharing.rule, shares.documents.party, shares.documents.policy, .cards, .findings,
+.labels, .structure.
 Secret: nothing. Public: nothing either: a plan is as confidential as its policy.
 Does not: touch files or terminals.
 """
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 from shares.documents.policy import Policy
 from shares.errors import VerificationError
 from shares.planning import labels
-from shares.planning.findings import Finding, findings
+from shares.planning.cards import card_findings
+from shares.planning.findings import Finding, findings, sorted_by_severity
 from shares.planning.structure import Count, Quorums, minimal_quorums, relabelled
 from shares.sharing.rule import Rule
+
+if TYPE_CHECKING:
+    from shares.documents.party import PartyCard
 
 COUNTED = {
     "custodians": labels.custodians,
@@ -78,11 +85,12 @@ class Plan:
             )
 
 
-def examine(policy: Policy) -> Plan:
-    """Examine the structure of a policy.
+def examine(policy: Policy, *, cards: Mapping[str, PartyCard] | None = None) -> Plan:
+    """Examine the structure of a policy, and the cards that it names.
 
     Args:
         policy: a policy as ``Policy.parse`` returns it.
+        cards: the party card of each custodian who has one, by the custodian's name; None where nobody looked.
 
     Returns:
         Numbers and findings. A number is exact where none of those counted stands in two branches of the rule, or there
@@ -92,4 +100,5 @@ def examine(policy: Policy) -> Plan:
     rule = policy.rule()
     counts = {what: Count.of(relabelled(rule, label_of(policy))) for what, label_of in COUNTED.items()}
     quorums = minimal_quorums(rule)
-    return Plan(policy.label, rule, policy.strict, counts, quorums, findings(policy, counts["people"], quorums))
+    found = sorted_by_severity([*findings(policy, counts["people"], quorums), *card_findings(cards or {})])
+    return Plan(policy.label, rule, policy.strict, counts, quorums, found)

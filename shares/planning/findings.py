@@ -13,7 +13,7 @@ Does not: say how likely a loss is.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Iterator, Mapping, Sequence
+from collections.abc import Callable, Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Literal, NamedTuple, TypeAlias
 
@@ -133,10 +133,41 @@ def findings(policy: Policy, people: Count, quorums: Quorums) -> tuple[Finding, 
         people: how its rule counts in people.
         quorums: the minimal quorums of its rule.
     """
-    found = [*_who_suffice(policy), *_who_block(policy), *_key_type(policy), *_delivery(policy)]
+    found = [*_too_few(policy), *_who_suffice(policy), *_who_block(policy), *_key_type(policy), *_delivery(policy)]
     found += [*_margin(people), *_too_many(people, quorums)]
+    return sorted_by_severity(found)
+
+
+def sorted_by_severity(found: Iterable[Finding]) -> tuple[Finding, ...]:
+    """Return findings in their order, serious ones first and notes last."""
     order = ("serious", "caution", "note")
     return tuple(sorted(found, key=lambda finding: order.index(finding.severity)))
+
+
+def _too_few(policy: Policy) -> Iterator[Finding]:
+    """Say where no other rule or distribution would do: the findings on single sites or people then stand for ever.
+
+    Of two, either the second suffices, or the first blocks. With three, two of which are needed, neither happens.
+    """
+    for what, one, them in (("people", "person", labels.people(policy)), ("sites", "site", labels.sites(policy))):
+        about = tuple(labels.holders(them))
+        if len(about) == 1:
+            yield Finding(
+                "serious",
+                f"too-few-{what}",
+                f"With one {one} only, that {one} makes a quorum, and without it none is left: {about[0]}.",
+                f"Two more are needed: no rule can change this with fewer than three {what}.",
+                about,
+            )
+        elif len(about) == 2:
+            yield Finding(
+                "serious",
+                f"too-few-{what}",
+                f"With two {what}, one of them always makes a quorum or blocks every quorum, whatever the rule and "
+                f"however the shares are spread over them: {_some(about)}.",
+                f"A third {one} is needed.",
+                about,
+            )
 
 
 def _who_suffice(policy: Policy) -> Iterator[Finding]:

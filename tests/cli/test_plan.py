@@ -7,7 +7,8 @@ import re
 from pathlib import Path
 
 import pytest
-from cli.harness import assert_refused, run
+from cli.harness import Place, assert_refused, run
+from parties import party
 
 from shares.cli.plan import CONFIDENTIAL
 from shares.documents.policy import Policy
@@ -53,7 +54,8 @@ def test_json_tells_the_same(path: Path) -> None:
     told = run("plan", path, "--json")
     assert (told.code, told.err) == (0, "")
     members = told.json
-    assert (members["done"], members["label"], members["rule"]) == (True, plan.label, plan.rule.words())
+    assert (members["done"], members["exit"]) == (True, 0)
+    assert (members["label"], members["rule"]) == (plan.label, plan.rule.words())
     assert (members["strict"], members["refused"], members["exact"]) == (plan.strict, False, True)
     assert members["points"] == plan.rule.size
     for what, count in plan.counts.items():
@@ -79,7 +81,7 @@ def test_a_serious_finding_gives_4_only_where_the_policy_is_strict(tmp_path: Pat
     result = run("plan", strict, *more)
     assert result.code == 4
     if more:
-        assert (result.json["done"], result.json["refused"]) == (True, True)
+        assert (result.json["done"], result.json["exit"], result.json["refused"]) == (False, 4, True)
     else:
         assert "`shares split` refuses it" in " ".join(result.out.split())
 
@@ -125,6 +127,76 @@ def test_a_policy_that_is_wrong_is_refused_with_the_key(tmp_path: Path) -> None:
     )
     assert "board of the trust" not in line
     assert_refused(["plan", changed(tmp_path, TIDE, "need = 2", "need 2")], 4, "it is not TOML: line 59, column 6")
+
+
+def with_cards(folder: Path, **cards: str) -> Path:
+    """The plan of the tide archive, with a card for some: the names of custodians have _ for -."""
+    text = TIDE.read_text()
+    for name, card in cards.items():
+        line = f'name = "{name.replace("_", "-")}"\n'
+        assert line in text
+        text = text.replace(line, f'{line}card = "{card}"\n')
+    (folder / "cards").mkdir(parents=True, exist_ok=True)
+    for name in ("north-pier", "registrar"):
+        (folder / "cards" / f"{name}.card.json").write_bytes(party(name).card.to_file())
+    (folder / "policy.toml").write_text(text)
+    return folder / "policy.toml"
+
+
+def test_cards_that_fit_are_passed_in_silence(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = with_cards(
+        tmp_path / "a", north_pier="cards/north-pier.card.json", registrar="../a/cards/registrar.card.json"
+    )
+    result = run("plan", path)
+    assert (result.code, result.err, result.out) == (0, "", run("plan", TIDE).out)
+    monkeypatch.chdir(path.parent)
+    assert run("plan", "policy.toml").out == result.out
+
+
+def test_a_card_in_another_name_or_of_several_is_told(tmp_path: Path) -> None:
+    card = "cards/north-pier.card.json"
+    path = with_cards(tmp_path, north_pier=card, south_pier=card, registrar=card)
+    fingerprint = party("north-pier").card.fingerprint
+    result = run("plan", path)
+    said = " ".join(result.out.split())
+    assert result.code == 0
+    for name in ("south-pier", "registrar"):
+        assert f"Caution: The card of {name} is in the name of north-pier, fingerprint {fingerprint}." in said
+    assert f"Caution: One card is given for north-pier, south-pier, registrar, fingerprint {fingerprint}." in said
+    told = [finding for finding in run("plan", path, "--json").json["findings"] if "card" in finding["code"]]
+    assert [(one["code"], one["severity"], one["about"]) for one in told] == [
+        ("card-of-another-name", "caution", ["south-pier"]),
+        ("card-of-another-name", "caution", ["registrar"]),
+        ("card-of-several", "caution", ["north-pier", "south-pier", "registrar"]),
+    ]
+
+
+def test_a_card_that_split_would_refuse_is_refused_in_the_same_words(tmp_path: Path) -> None:
+    place = Place.make(tmp_path / "place")
+
+    def refused_by_both(code: int, *words: str) -> None:
+        line = assert_refused(["plan", path], code, *words)
+        split = ["split", place.key, "--policy", path, "--set", place.set, "--deliver", place.drop, "--plain"]
+        assert run(*split).err == line
+
+    path = with_cards(tmp_path, north_pier="cards/none.card.json", registrar="cards/registrar.card.json")
+    refused_by_both(5, f"{tmp_path}/cards/none.card.json", "does not exist")
+    card = tmp_path / "cards" / "none.card.json"
+    card.write_bytes(party("north-pier").card.to_file().replace(b"north-pier", b"south-pier"))
+    refused_by_both(4, f"{tmp_path}/cards/none.card.json", "does not fit its content")
+    card.write_text("{")
+    refused_by_both(4, f"{tmp_path}/cards/none.card.json", "not one JSON object")
+    card.unlink()
+    card.mkdir()
+    refused_by_both(5, f"{tmp_path}/cards/none.card.json", "is a folder")
+
+
+def test_help_says_where_the_format_is_and_what_is_serious() -> None:
+    said = " ".join(run("plan", "--help").out.split())
+    for part in ("FORMAT.md, section 12", "examples/policies/", "Serious is that one person, or one site, alone"):
+        assert part in said
+    assert EXAMPLES.is_dir()
+    assert "\n## 12. The policy\n" in (EXAMPLES.parents[1] / "shares" / "documents" / "FORMAT.md").read_text()
 
 
 def test_a_file_that_cannot_be_read(tmp_path: Path) -> None:

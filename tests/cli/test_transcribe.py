@@ -238,6 +238,18 @@ def test_lines_from_a_file(tmp_path: Path) -> None:
     assert is_the_share(tmp_path)
 
 
+def test_lines_with_their_numbers_and_a_sheet_from_its_end(tmp_path: Path) -> None:
+    numbered = "\n".join(f"{i}  {line}" for i, line in enumerate(LINES, start=1))
+    done = gathered(tmp_path, f"\N{ZERO WIDTH NO-BREAK SPACE}{numbered}\n")
+    assert (done.code, "Noticed" in done.out) == (0, False)
+    assert is_the_share(tmp_path)
+    (tmp_path / "share.json").unlink()
+    done = gathered(tmp_path, "\n".join(LINES[::-1]))
+    assert (done.code, done.out.count("Noticed: ")) == (0, 1)
+    assert "Noticed: the lines stood in another order than on the sheet, and were put in theirs." in done.out
+    assert is_the_share(tmp_path)
+
+
 def test_lines_by_a_pipe_and_told_as_json(tmp_path: Path) -> None:
     text = "\n".join(LINES).encode()
     done = run("transcribe", "--from", "-", "--to", tmp_path / "share.json", "--json", stdin=text)
@@ -280,6 +292,9 @@ def test_refusals(tmp_path: Path) -> None:
         ("\n".join([*LINES[:4], *LINES[6:]]), ("lines 5, 6 are missing", "compare")),
         ("\n".join([*LINES[:11], SEALED["lines"][11], *LINES[12:]]), ("check over the whole", "one sheet")),
         ("", ("line 1 is missing",)),
+        ("\n".join(["Secret share on paper", *LINES]), ("row 1 is no line", "nothing in the text but the lines")),
+        ("\n".join([*LINES[:2], f"{LINES[2]} hardly to be read"]), ("row 3 is no line", "has 45")),
+        ("A" * 100, ("taken for the text of a scanned code, as row 1 is longer", "it has 100 characters")),
         ("\x00\xff" * 50, ("not whole",)),
     ):
         typed.write_text(text)

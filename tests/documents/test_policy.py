@@ -246,7 +246,7 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     ),
     "a custodian left out": (
         instead({"rule": {"need": 1, "from": ["operators"]}}),
-        "custodian[3] is not used by the rule: registrar",
+        "custodian registrar (custodian[3]) is not used by the rule and would hold no share",
     ),
     "a group left out": (
         setting("group", "spare", to={"need": 1, "from": ["registrar"]}),
@@ -278,11 +278,11 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     ),
     "a custodian named twice": (
         setting("custodian", 3, "name", to="north-pier"),
-        "custodian[3].name is the same as custodian[0].name",
+        "custodian[3].name, north-pier, is the same as custodian[0].name",
     ),
     "custodians whose names differ in case": (
         setting("custodian", 1, "name", to="NORTH-pier"),
-        "custodian[1].name is the same as custodian[0].name",
+        "custodian[1].name, NORTH-pier, is the same as custodian[0].name",
     ),
     "a custodian's name with a separator": (
         setting("custodian", 2, "name", to="a/b"),
@@ -333,13 +333,28 @@ REFUSED: dict[str, tuple[Bend, str]] = {
         "label is not allowed: it holds control or invisible",
     ),
     "a label that is a number": (setting("label", to=7), "label should be text in quotes"),
-    "no person": (without("custodian", 1, "person"), "custodian[1].person is missing"),
-    "no site": (without("custodian", 1, "site"), "custodian[1].site is missing"),
-    "no manager": (without("custodian", 1, "reports_to"), "custodian[1].reports_to is missing"),
-    "an empty person": (setting("custodian", 1, "person", to=""), "custodian[1].person should not be empty"),
+    "no person": (without("custodian", 1, "person"), "custodian south-pier (custodian[1]): person is missing"),
+    "no site": (without("custodian", 1, "site"), "custodian south-pier (custodian[1]): site is missing"),
+    "no manager": (without("custodian", 1, "reports_to"), "custodian south-pier (custodian[1]): reports_to is missing"),
+    "an empty person": (
+        setting("custodian", 1, "person", to=""),
+        "custodian south-pier (custodian[1]): person should not be empty",
+    ),
+    "no site, and no name either": (
+        lambda d: (without("custodian", 1, "site")(d), without("custodian", 1, "name")(d)),
+        "custodian[1].name is missing",
+    ),
+    "no site, and a name that is none": (
+        lambda d: (setting("custodian", 1, "name", to="canary/")(d), setting("custodian", 1, "sight", to=SITE)(d)),
+        "custodian[1].sight is no key",
+    ),
+    "no site, and a name that is a number": (
+        lambda d: (setting("custodian", 1, "name", to=7)(d), setting("custodian", 1, "sight", to=SITE)(d)),
+        "custodian[1].sight is no key",
+    ),
     "a misspelt key": (
         lambda d: (without("custodian", 1, "site")(d), setting("custodian", 1, "sight", to=SITE)(d)),
-        "custodian[1].sight is no key that a policy has at this place",
+        "custodian south-pier (custodian[1]): sight is no key that a policy has at this place",
     ),
     "an unknown key": (setting("colour", to="canary"), "colour is no key that a policy has at this place"),
     "a key of the program's own": (setting("custodians", to=[]), "custodians is no key"),
@@ -349,11 +364,11 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     ),
     "a weight of 0": (
         setting("custodian", 0, "weight", to=0),
-        "custodian[0].weight should be greater than or equal to 1",
+        "custodian north-pier (custodian[0]): weight should be greater than or equal to 1",
     ),
     "a card at an absolute path": (
         setting("custodian", 0, "card", to="/canary"),
-        "custodian[0].card should be a path relative to the policy's folder",
+        "custodian north-pier (custodian[0]): card should be a path relative to the policy's folder",
     ),
     "an unknown key type": (setting("key_type", to="canary"), "key_type should be 'symmetric', 'signature', "),
     "a signature key without a reason": (
@@ -401,6 +416,14 @@ def test_a_mistake_is_named_by_its_key_and_no_value_is_told(name: str) -> None:
 
 
 TEXT = toml_of(DATA).decode()
+
+
+@pytest.mark.parametrize(
+    "custodians", ["7", '["north-pier"]', '[[{ name = "north-pier" }]]', '{ name = "north-pier" }']
+)
+def test_custodians_that_are_no_tables_are_named_by_their_place(custodians: str) -> None:
+    text = f'label = "canary"\ncustodian = {custodians}\n[rule]\nneed = 1\nfrom = ["north-pier"]\n'
+    assert refusal(text.encode()).what.startswith("custodian")
 
 
 @pytest.mark.parametrize(

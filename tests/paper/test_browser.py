@@ -8,6 +8,7 @@ browser skips with its name, and fails where ``SHARES_REQUIRE_BROWSER=1``.
 from __future__ import annotations
 
 import io
+import itertools
 import os
 import re
 from pathlib import Path
@@ -153,6 +154,43 @@ def test_it_prints_on_one_page_and_one_to_sign(show, for_card):
         assert out == [], name
         assert page.said == []
     assert {0, 13, 32} <= lines
+
+
+def test_the_room_of_a_page_is_used_and_nothing_sticks_together(show, for_card):
+    for name, document in cases(for_card).items():
+        page = show(document)
+        rows = page.evaluate(
+            """[...document.querySelectorAll('table.lines tbody tr')].map(row => {
+                const range = document.createRange();
+                range.selectNodeContents(row.cells[1]);
+                return range.getBoundingClientRect().top;
+            })"""
+        )
+        steps = [(below - above) / MILLIMETRE for above, below in itertools.pairwise(rows)]
+        within, between = [step for i, step in enumerate(steps) if (i + 1) % 4], steps[3::4]
+        # Letters of 11.5 points are 4.06 millimetres high; a typist's eye is led by the larger step after every four.
+        assert all(step > 4.1 for step in within), name
+        assert all(step > max(within) + 1.2 for step in between), name
+        tops = page.evaluate(
+            """[...document.querySelectorAll('.page')].map(e => {
+                const foot = e.querySelector('footer').getBoundingClientRect(), box = e.getBoundingClientRect();
+                const above = [...e.querySelectorAll('.columns, .form')].map(x => x.getBoundingClientRect().bottom);
+                return [box.bottom - foot.bottom, foot.top - Math.max(...above)];
+            })"""
+        )
+        assert all(abs(left) < 1 and gap >= 2 * MILLIMETRE - 1 for left, gap in tops), (name, tops)
+        if rows:
+            caption, head = page.evaluate(
+                """['.lines caption', '.lines thead th'].map(at => {
+                    const range = document.createRange();
+                    range.selectNodeContents(document.querySelector(at));
+                    return range.getBoundingClientRect();
+                })"""
+            )
+            assert head["top"] - caption["bottom"] > 1 * MILLIMETRE, name
+    short = show(dealt().shares[0])
+    height = short.evaluate("document.querySelector('.page').getBoundingClientRect().height")
+    assert ROOM[1] - height < 5 * MILLIMETRE
 
 
 @pytest.mark.parametrize("name", [NAMES[0], WIDE[0], HOSTILE[0]])

@@ -20,10 +20,10 @@ from strategies import crooked_split, flat, resealed
 from shares.documents.acknowledgement import DUTIES
 from shares.errors import ParameterError, VerificationError
 from shares.paper import sheet
-from shares.paper.paperform import from_paper, to_paper, to_text
+from shares.paper.paperform import LETTERS, from_paper, to_paper, to_text
 from shares.paper.sheet import MIN_MODULE, make_form, make_sheet, new_serial
 from shares.paper.transcription import gather
-from shares.paper.typedline import LETTERS, to_lines
+from shares.paper.typedline import to_lines
 
 
 class Page(HTMLParser):
@@ -70,12 +70,26 @@ def test_what_stands_on_it(share):
         "shares transcribe --to share.json",
         "Acknowledgement and receipt",
         "I acknowledge my duties",
+        "Sheet Harbour 0017, page 1 of 2",
+        "Sheet Harbour 0017, page 2 of 2",
         *DUTIES,
         "Signature",
     ):
         assert fact in page.text
     assert (made.serial, made.lines, made.level) == ("Harbour 0017", 13, "H")
     assert page.text.count("Harbour 0017") == 3  # title, sheet, receipt
+
+
+def test_the_receipt_ticks_what_the_sheet_asks_for(share, sealed, for_card):
+    """Who signs that the share was checked is told on page 1 how, before the signature."""
+    for document in (share, sealed, for_card):
+        steps, receipt = page_of(document).text.split("Acknowledgement and receipt")
+        [on_receipt] = re.findall(r"On receipt:(.*?)Sign the receipt", steps, flags=re.DOTALL)
+        for step in ("compare the record fingerprint", "Read the page back", "shares verify share.json --record"):
+            assert step in on_receipt
+        assert ("--key your.key.json" in on_receipt) == (document is for_card)
+        assert "I compared the record fingerprint" in receipt
+        assert "read back from page 1 and checked against the record (shares verify)" in receipt
 
 
 def test_the_lines_are_the_share(share, two_points, sealed):

@@ -8,14 +8,14 @@ from __future__ import annotations
 import base64
 
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 from paper.conftest import published
 
 from shares.errors import DocumentError
-from shares.paper.paperform import to_text
+from shares.paper.paperform import LETTERS, to_text
 from shares.paper.transcription import Transcription, gather
-from shares.paper.typedline import LETTERS, grouped, to_lines
+from shares.paper.typedline import grouped, to_lines
 
 BARE, TWO, *_ = (test for test in published()[0] if test["lines"])
 LINES, FORM = BARE["lines"], bytes.fromhex(BARE["form"])
@@ -51,10 +51,91 @@ def test_swapped_lines_are_put_right_and_named():
 
 
 @given(st.permutations(LINES))
-def test_any_order_will_do(lines):
+@example(LINES[::-1])
+@example(LINES[6:] + LINES[:6])
+def test_any_order_will_do_and_is_told_once(lines):
     gathered = gather(text(lines))
     assert gathered.data == FORM
-    assert bool(gathered.notes) == (lines != LINES)
+    assert len(gathered.notes) == (lines != LINES)
+
+
+def test_a_sheet_typed_from_its_end_is_told_once():
+    assert gather(text(LINES[::-1])).notes == (
+        "the lines stood in another order than on the sheet, and were put in theirs",
+    )
+
+
+@pytest.mark.parametrize(
+    "mark", ["{}  ", "{}\t", "{:02} ", "{}. ", "{}) ", "{}: ", "{} - ", "line {}: ", "Line {} ", " {}\t "]
+)
+def test_the_numbers_that_a_sheet_prints_may_stand_before_the_lines(mark):
+    for written in (grouped, str.lower, "\t".join):
+        rows = [f"{mark.format(i)}{written(line)}" for i, line in enumerate(LINES, start=1)]
+        gathered = gather("\n".join(rows))
+        assert (gathered.data, gathered.notes) == (FORM, ())
+    # A number does not make up for a character, and hides none that is wrong.
+    rows[4] = f"{mark.format(5)}{wrong(LINES[4], 1)}"
+    assert gather("\n".join(rows)).notes == ("line 5: character 7 was set right",)
+
+
+def told(given_text):
+    with pytest.raises(DocumentError) as caught:
+        gather(given_text)
+    assert not any(group in str(caught.value) for line in LINES for group in grouped(line).split())
+    return caught.value
+
+
+def test_a_row_with_a_note_behind_the_line_is_named():
+    """One long row once made a scanned code of all rows, without a word of it."""
+    for note, said in (
+        ("smudged", "row 3 is no line: it has 38 characters, and a line 31 and nothing beside them"),
+        ("could hardly be read, see page", "row 3 is no line: it has 55 characters"),
+        ("ok", "row 3 was taken for a line, but a line has 31 characters, and this has 33"),
+    ):
+        rows = [f"{i:2}  {grouped(line)}" for i, line in enumerate(LINES, start=1)]
+        rows[2] += f"   {note}"
+        problem = told("\n".join(rows))
+        assert said in problem.what
+        assert problem.what.endswith("; line 3 is missing")
+        assert "code" not in problem.what
+        assert problem.hint
+
+
+def test_the_text_of_a_whole_page_names_the_rows_that_are_no_lines():
+    """As a program that makes text of a printed page writes it: headings and facts before, what to do behind."""
+    lines = [f"{i} {grouped(line)}" for i, line in enumerate(LINES, start=1)]
+    before = [
+        "Secret share on paper   Sheet AAAA-AAAA, page 1 of 2",
+        "Custodian north-pier",
+        "",
+        "Line 1\u20134 5\u20138",
+    ]
+    behind = ["What to do, and when", "1. On receipt: compare the record", "\fAcknowledgement and receipt"]
+    problem = told("\n".join([*before, *lines, *behind]))
+    assert problem.what == (
+        "rows 1 to 2, 4, 18, 21 are no lines: a line has 31 characters and nothing beside them; "
+        "row 19 was taken for a line, but a line has 31 characters, and this has 26"
+    )
+    assert "leave nothing in the text but the lines" in problem.hint
+    assert gather("\n".join(lines)).data == FORM
+
+
+def test_what_is_taken_for_a_code_is_said_so():
+    code = to_text(FORM)
+    for changed, said in (
+        (
+            code[:-1],
+            "as row 1 is longer than a line, but the text is not whole: it has 311 characters, and not a multi",
+        ),
+        (
+            f"\n{code[:200]}1{code[201:]}",
+            "as row 2 is longer than a line, but the text is not whole: its character 201 is",
+        ),
+    ):
+        problem = told(changed)
+        assert problem.what.startswith("it was taken for the text of a scanned code, ")
+        assert said in problem.what
+        assert "scan it once more" in problem.hint
 
 
 @given(st.sets(st.integers(0, 12), min_size=1, max_size=12))
@@ -83,16 +164,19 @@ def test_a_line_of_another_sheet_is_not_noticed_before_the_check():
 
 def test_all_faults_are_told_at_once_and_nothing_of_the_lines():
     said = refusal([LINES[0], wrong(LINES[1], 5), LINES[2][:20], *LINES[3:8], *LINES[9:]])
-    assert "in row 2, more than two characters are wrong" in said
-    assert "in row 3, a line has 31 characters, and this has 20" in said
+    assert "row 2 was taken for a line, but more than two characters are wrong" in said
+    assert "row 3 is no line: it has 20 characters, and a line 31 and nothing beside them" in said
     assert "lines 2, 3, 9 are missing" in said
     assert not any(group in said for line in LINES for group in grouped(line).split())
 
 
 def test_of_many_faults_the_first_are_told():
-    said = refusal(["A" * 9] * 40)
-    assert said.count("in row") == 5
+    said = refusal(["A" * 28] * 40)
+    assert said.count("was taken for a line, but a line has 31 characters, and this has 28") == 5
     assert said.endswith("; and 36 more")
+    assert refusal(["A" * 9, LINES[0]] * 20).startswith(
+        "rows 1, 3, 5, 7, 9, and 15 more are no lines: a line has 31 characters and nothing beside them; lines 2, 3, "
+    )
 
 
 def test_what_was_set_right_is_noted_by_place_alone():

@@ -15,7 +15,8 @@ from paper.conftest import published
 
 from shares.errors import DocumentError
 from shares.paper.linecode import LENGTH
-from shares.paper.typedline import LETTERS, grouped, read_line, to_lines
+from shares.paper.paperform import LETTERS
+from shares.paper.typedline import grouped, read_line, to_lines
 
 VALID = [test for test in published()[0] if test["lines"]]
 LINES = VALID[0]["lines"]

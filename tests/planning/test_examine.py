@@ -59,6 +59,7 @@ def test_the_plans_of_the_examples() -> None:
 def test_the_first_draft_has_the_usual_mistakes() -> None:
     plan = examine(example("first-draft"))
     assert {finding.code for finding in plan.serious} == {
+        "too-few-sites",
         "site-suffices",
         "line-suffices",
         "person-blocks",
@@ -78,7 +79,7 @@ def test_strict_refuses_serious_findings_and_nothing_else() -> None:
     strict = examine(example("first-draft", **{"pad = 64": "strict = true"}))
     assert strict.refused
     with pytest.raises(
-        VerificationError, match="strict, and a serious finding stands \\(and 3 more\\): The shares at one"
+        VerificationError, match="strict, and a serious finding stands \\(and 4 more\\): With two sites, one"
     ):
         strict.require_sound()
     examine(example("tide-archive")).require_sound()  # strict, with a caution and a note

@@ -11,6 +11,7 @@ from typing import Any
 
 import pytest
 from hypothesis import given
+from hypothesis import strategies as st
 from strategies import authorised, policies, toml_of
 
 from shares.documents.policy import Policy, folded
@@ -84,6 +85,34 @@ def test_a_manager_suffices_with_their_own_share() -> None:
     reports = on("reports_to", "keeper of dry-dock", "north-pier", "south-pier")
     assert found(sound(**reports))["line-suffices"].about == ("keeper of dry-dock",)
     assert "line-suffices" not in codes(sound(**on("reports_to", "keeper of wharf", "north-pier", "south-pier")))
+
+
+@pytest.mark.parametrize(("member", "one", "many"), [("site", "site", "sites"), ("person", "person", "people")])
+def test_two_are_too_few_and_a_third_is_enough(member: str, one: str, many: str) -> None:
+    """2 of 3 custodians, spread over three places, two, and one."""
+    data = {**sound(), "custodian": sound()["custodian"][:3], "rule": {"need": 2, "from": list(NAMES[:3])}}
+    assert f"too-few-{many}" not in found(data)
+    data["custodian"][1][member] = data["custodian"][0][member]
+    two = found(data)[f"too-few-{many}"]
+    assert (two.severity, len(two.about)) == ("serious", 2)
+    assert two.what.startswith(f"With two {many}, one of them always makes a quorum or blocks every quorum")
+    assert two.advice == f"A third {one} is needed."
+    data["custodian"][2][member] = data["custodian"][0][member]
+    alone = found(data)[f"too-few-{many}"]
+    assert (alone.severity, len(alone.about)) == ("serious", 1)
+    assert "Two more are needed" in alone.advice
+
+
+@given(policies(), st.data())
+def test_what_is_said_of_too_few_holds_for_every_rule_and_every_distribution(data: dict[str, Any], draw: Any) -> None:
+    """Whatever the rule and however custodians are spread over two places, what makes a policy fail is found."""
+    told = found(data)
+    for member, many in (("site", "sites"), ("person", "people")):
+        assert (f"too-few-{many}" in told) == (len({folded(one[member]) for one in data["custodian"]}) < 3)
+    for member, one in (("site", "site"), ("person", "person")):
+        for custodian in data["custodian"]:
+            custodian[member] = draw.draw(st.sampled_from(["east side", "west side"]))
+        assert {f"{one}-suffices", f"{one}-blocks", "all-needed"} & codes(data)
 
 
 def test_weight_can_make_one_person_suffice() -> None:
