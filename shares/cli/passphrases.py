@@ -1,7 +1,8 @@
 """Where passphrases come from: files, inherited descriptors, or a hidden prompt. Never an option's value.
 
 Source: termios(3) (echo off), NIST SP 800-63B, sec. 5.1.1 (what a chosen one is worth).
-May import: shares.errors, shares.memory, shares.storage, shares.custody.passphrase, shares.cli.output.
+May import: shares.errors, shares.memory, shares.storage, shares.custody.passphrase, shares.cli.output,
+shares.cli.signals.
 Secret: every passphrase, read straight into locked memory. Public: where they come from, and whose they are.
 Does not: ask anything where there is no terminal.
 """
@@ -18,6 +19,7 @@ from typing import Any, Self, TypeVar
 import click
 
 from shares.cli.output import filled, warn
+from shares.cli.signals import unsuspended
 from shares.custody.passphrase import MAX_PASSPHRASE, weakness
 from shares.errors import ParameterError, WrongKeyError
 from shares.memory import Secret
@@ -198,7 +200,7 @@ def _one_line(source: str) -> Secret:
 
 def _prompt(text: str) -> Secret:
     """Ask on the terminal without echo. The bytes go from the terminal into locked memory."""
-    with _without_echo(), Secret(MAX_PASSPHRASE + 1) as room, room.view() as view:
+    with unsuspended(), _without_echo(), Secret(MAX_PASSPHRASE + 1) as room, room.view() as view:
         click.echo(text, nl=False, err=True)
         length = 0
         # In its usual mode the terminal gives whole lines, edited; a longer one comes in parts.
@@ -222,9 +224,6 @@ def _without_echo() -> Iterator[None]:
     before = termios.tcgetattr(_STDIN)
     silent = [*before]
     silent[3] = before[3] & ~termios.ECHO | termios.ECHONL
-    # Stopped by hand (Ctrl-Z), the terminal would stay without echo. Every other key that stops lets us put it back.
-    silent[6] = [*before[6]]
-    silent[6][termios.VSUSP] = os.fpathconf(_STDIN, "PC_VDISABLE").to_bytes(1, "big")
     # What was typed ahead is thrown away: it was shown.
     termios.tcsetattr(_STDIN, termios.TCSAFLUSH, silent)
     try:

@@ -9,7 +9,9 @@ Does not: hold back SIGKILL, which nothing can; the next run names what a killed
 from __future__ import annotations
 
 import contextlib
+import os
 import signal
+import termios
 from collections.abc import Callable, Iterator
 from types import FrameType
 from typing import NoReturn
@@ -45,6 +47,22 @@ def held_signals() -> Iterator[Callable[[], None]]:
     finally:
         for number, handler in before.items():
             signal.signal(number, handler)
+
+
+@contextlib.contextmanager
+def unsuspended() -> Iterator[None]:
+    """Switch off the key that suspends (Ctrl-Z) while standard input is a terminal that must not be left as it is.
+
+    Suspended, a program can neither turn echo on again nor wipe a screen with secrets on it.
+    """
+    before = termios.tcgetattr(0)
+    without = [*before[:6], [*before[6]]]
+    without[6][termios.VSUSP] = os.fpathconf(0, "PC_VDISABLE").to_bytes(1, "big")
+    termios.tcsetattr(0, termios.TCSADRAIN, without)
+    try:
+        yield
+    finally:
+        termios.tcsetattr(0, termios.TCSADRAIN, before)
 
 
 def _not_ignored() -> list[signal.Signals]:

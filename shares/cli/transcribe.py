@@ -9,7 +9,7 @@ from collections.abc import Iterator
 import click
 
 from shares.cli.output import filled, json_option, print_result, prose, warn
-from shares.cli.signals import held_signals
+from shares.cli.signals import held_signals, unsuspended
 from shares.documents.share import Share
 from shares.errors import DocumentError, ParameterError, StorageError
 from shares.paper.paperform import PaperShare, from_paper
@@ -99,7 +99,7 @@ def _from_source(source: str) -> Gathered:
 def _from_person() -> PaperShare:
     if not (os.isatty(STDIN) and os.isatty(STDERR)):
         raise ParameterError("there is no terminal to type at", hint="give the lines in a file with --from FILE")
-    with _own_screen():
+    with unsuspended(), _own_screen():
         click.echo(INTRODUCTION, err=True)
         typed = Transcription()
         while True:

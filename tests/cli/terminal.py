@@ -54,6 +54,11 @@ class Terminal:
         """Whether the terminal shows what is typed."""
         return bool(termios.tcgetattr(self._follower)[3] & termios.ECHO)
 
+    @property
+    def suspends(self) -> bool:
+        """Whether a key (Ctrl-Z) suspends the program."""
+        return termios.tcgetattr(self._follower)[6][termios.VSUSP] != b"\0"
+
     def finish(self) -> tuple[int, str]:
         """Wait for the program's end; return its exit code and its standard output."""
         assert self.process.stdout is not None

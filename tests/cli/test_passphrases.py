@@ -21,6 +21,7 @@ from strategies import crooked_split, flat, revealed
 from shares import memory
 from shares.cli import passphrases
 from shares.cli.passphrases import GivenPassphrases
+from shares.cli.signals import STOP
 from shares.custody.parties import load_key, write_party
 from shares.documents.party import new_party
 from shares.documents.wrapped_share import WrappedShare
@@ -374,7 +375,7 @@ def interrupted_by(number: signal.Signals) -> Any:
 
 STOPS = {
     "Ctrl-C": interrupted_by_key,
-    **{number.name: interrupted_by(number) for number in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)},
+    **{number.name: interrupted_by(number) for number in STOP},
 }
 
 
@@ -416,6 +417,17 @@ def test_echo_is_restored_though_nothing_can_be_shown(tmp_path: Path) -> None:
         assert code != 0
         assert terminal.echoes
     assert os.listdir(tmp_path) == []
+
+
+def test_the_key_that_suspends_is_off_meanwhile(wrapped: Path) -> None:
+    """Suspended at the prompt, the terminal would stay without echo."""
+    with on_terminal("verify", wrapped) as terminal:
+        assert terminal.suspends
+        terminal.wait_for("Passphrase")
+        assert not terminal.suspends
+        terminal.type(TYPED + "\n")
+        assert terminal.finish()[0] == 0
+        assert terminal.suspends
 
 
 def test_the_terminal_is_left_as_it_was_found(tmp_path: Path) -> None:

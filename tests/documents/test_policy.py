@@ -426,6 +426,13 @@ def test_custodians_that_are_no_tables_are_named_by_their_place(custodians: str)
     assert refusal(text.encode()).what.startswith("custodian")
 
 
+def test_keys_of_very_many_parts_are_refused_before_they_are_read() -> None:
+    """A line of 120,000 bytes once took twenty seconds and four gigabytes."""
+    problem = refusal(b'label = "x"\n' + b"a." * 60_000 + b"b = 1\n")
+    assert problem.what == "line 2 holds more than 100 dots"
+    refusal(b"# " + b"." * 200 + b"\n[rule")  # A rule drawn in a comment is none of these.
+
+
 @pytest.mark.parametrize(
     ("text", "place"),
     [
