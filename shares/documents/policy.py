@@ -292,7 +292,7 @@ def _custodian(name: str, i: int) -> str:
 def _place(loc: tuple[str | int, ...], tables: dict[str, object]) -> str:
     """Write where a value stands: by the custodian's name where there is one that can be read, else by its path."""
     match loc, tables.get("custodian"):
-        case ("custodian", int(i), key, *more), tuple(custodians) if key != "name":
+        case ("custodian", int(i), key, *more), tuple(custodians):
             match custodians[i]:
                 case {"name": str(name)} if _name_problem(name) is None:
                     return f"{_custodian(name, i)}: {_path(key, *more)}"

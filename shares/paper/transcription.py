@@ -21,8 +21,8 @@ from shares.paper.typedline import MAX_LINES, Reading, compact, read_line, unnum
 
 # Longer than any line, shorter than the shortest code.
 _LONGEST_LINE: Final = 40
-# A row that lacks, or has, more characters than this was never a line.
-_FAR: Final = 5
+# A row with more characters than this too few or too many is told as no line: in the text of a page most are words.
+_FAR: Final = 2
 _MOST_TOLD: Final = 5
 
 

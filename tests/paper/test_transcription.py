@@ -6,6 +6,7 @@ Source: tests/vectors/paper_v1.json (forms and lines of a second implementation)
 from __future__ import annotations
 
 import base64
+import itertools
 
 import pytest
 from hypothesis import example, given
@@ -88,17 +89,18 @@ def told(given_text):
 def test_a_row_with_a_note_behind_the_line_is_named():
     """One long row once made a scanned code of all rows, without a word of it."""
     for note, said in (
-        ("smudged", "row 3 is no line: it has 38 characters, and a line 31 and nothing beside them"),
-        ("could hardly be read, see page", "row 3 is no line: it has 55 characters"),
-        ("ok", "row 3 was taken for a line, but a line has 31 characters, and this has 33"),
+        ("smudged", "is no line: it has 38 characters, and a line 31 and nothing beside them"),
+        ("could hardly be read, see page", "is no line: it has 55 characters"),
+        ("ok", "was taken for a line, but a line has 31 characters, and this has 33"),
     ):
-        rows = [f"{i:2}  {grouped(line)}" for i, line in enumerate(LINES, start=1)]
-        rows[2] += f"   {note}"
-        problem = told("\n".join(rows))
-        assert said in problem.what
-        assert problem.what.endswith("; line 3 is missing")
-        assert "code" not in problem.what
-        assert problem.hint
+        for number, mark in itertools.product((1, 3, 13), ("", "{}  ")):
+            rows = [f"{mark.format(i)}{grouped(line)}" for i, line in enumerate(LINES, start=1)]
+            rows[number - 1] += f"   {note}"
+            problem = told("\n".join(rows))
+            assert f"row {number} {said}" in problem.what
+            assert f"; line {number} is missing" in problem.what
+            assert "code" not in problem.what
+            assert problem.hint
 
 
 def test_the_text_of_a_whole_page_names_the_rows_that_are_no_lines():
@@ -110,11 +112,16 @@ def test_the_text_of_a_whole_page_names_the_rows_that_are_no_lines():
         "",
         "Line 1\u20134 5\u20138",
     ]
-    behind = ["What to do, and when", "1. On receipt: compare the record", "\fAcknowledgement and receipt"]
+    behind = [
+        "What to do, and when",
+        "1. On receipt: compare the record",
+        "the receipt, and give only that back",
+        "\fAcknowledgement and receipt",
+    ]
     problem = told("\n".join([*before, *lines, *behind]))
     assert problem.what == (
-        "rows 1 to 2, 4, 18, 21 are no lines: a line has 31 characters and nothing beside them; "
-        "row 19 was taken for a line, but a line has 31 characters, and this has 26"
+        "rows 1 to 2, 4, 18 to 19, 22 are no lines: a line has 31 characters and nothing beside them; "
+        "row 20 was taken for a line, but a line has 31 characters, and this has 29"
     )
     assert "leave nothing in the text but the lines" in problem.hint
     assert gather("\n".join(lines)).data == FORM
@@ -171,8 +178,8 @@ def test_all_faults_are_told_at_once_and_nothing_of_the_lines():
 
 
 def test_of_many_faults_the_first_are_told():
-    said = refusal(["A" * 28] * 40)
-    assert said.count("was taken for a line, but a line has 31 characters, and this has 28") == 5
+    said = refusal(["A" * 29] * 40)
+    assert said.count("was taken for a line, but a line has 31 characters, and this has 29") == 5
     assert said.endswith("; and 36 more")
     assert refusal(["A" * 9, LINES[0]] * 20).startswith(
         "rows 1, 3, 5, 7, 9, and 15 more are no lines: a line has 31 characters and nothing beside them; lines 2, 3, "
