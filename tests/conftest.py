@@ -34,7 +34,7 @@ hypothesis.settings.load_profile(PROFILE)
 # Whoever started this run may have switched stop signals off for it, as nohup(1) and a shell's background do. Programs
 # under test inherit what is ignored, and would be deaf to the signals that tests send them; what is caught they do not
 # inherit. So this process catches such a signal and does nothing.
-for number in (signal.SIGINT, signal.SIGHUP):
+for number in (signal.SIGINT, signal.SIGHUP, signal.SIGQUIT):
     if signal.getsignal(number) is signal.SIG_IGN:
         signal.signal(number, lambda number, frame: None)
 

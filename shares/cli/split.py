@@ -146,7 +146,7 @@ def command(
     target, names = Path(set_folder), wanted.custodians
     folders = _delivery_folders(names, deliveries)
     check_targets(target, folders, [*wanted.beside, ENCRYPTED_NAME])
-    cautions = [*wanted.cautions, *wanted.card_cautions(), *_cautions(wanted.rule, other_shares(folders))]
+    cautions = [*wanted.cautions, *_cautions(wanted.rule, other_shares(folders))]
     signers: list[tuple[Role, str]] = [("dealer", dealer)] if dealer is not None else []
     signers += [("witness", witness) for witness in witnesses]
     with GivenPassphrases(passphrase_files, descriptors) as passphrases, Opening(passphrases) as at_hand:

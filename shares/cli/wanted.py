@@ -9,7 +9,7 @@ Does not: touch the secret.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -20,7 +20,7 @@ from shares.custody.payload import DEFAULT_PAD
 from shares.custody.split import flat_rule
 from shares.documents.base import MAX_FILE
 from shares.documents.party import PartyCard
-from shares.errors import ParameterError, VerificationError
+from shares.errors import ParameterError
 from shares.field.gf256 import DEFAULT_MODULUS, Field
 from shares.field.polynomial import Polynomial
 from shares.sharing.rule import Rule
@@ -28,6 +28,7 @@ from shares.storage import read_file
 
 if TYPE_CHECKING:
     from shares.documents.acknowledgement import Acknowledgement
+    from shares.planning.findings import Finding
 
 POLICY_NAME = "policy.toml"
 ACKNOWLEDGEMENTS = "acknowledgements"
@@ -58,19 +59,6 @@ class Wanted:
     acknowledged: list[str]
     beside: Mapping[str, bytes]
     cautions: list[str]
-
-    def card_cautions(self) -> list[str]:
-        """Say where a share would be wrapped for a card that may be another's: its holder opens it alone."""
-        told = [
-            f"the share of {name} is wrapped for the card of {card.name}, {card.fingerprint}: see that it is meant"
-            for name, card in self.cards.items()
-            if card.name != name
-        ]
-        for fingerprint in dict.fromkeys(card.fingerprint for card in self.cards.values()):
-            names = [name for name, card in self.cards.items() if card.fingerprint == fingerprint]
-            if len(names) > 1:
-                told.append(f"one party key opens the shares of {' and '.join(names)}: they count as one holder")
-        return told
 
     @property
     def custodians(self) -> tuple[str, ...]:
@@ -106,7 +94,7 @@ def from_options(
         policy=None,
         acknowledged=[],
         beside={},
-        cautions=[],
+        cautions=_card_cautions(given) if given else [],
     )
 
 
@@ -129,30 +117,20 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
     from shares.planning.examine import examine
 
     policy = Policy.parse(read_file(path, limit=MAX_FILE), where=path)
-    plan = examine(policy)
-    plan.require_sound()
     names = [custodian.name for custodian in policy.custodians]
     chosen = {
         custodian.name: load_card(Path(path).parent / custodian.card)
         for custodian in policy.custodians
         if custodian.card is not None
     } | cards_by_name(cards, names, option="--card")
-    if policy.strict and len({card.fingerprint for card in chosen.values()}) < len(chosen):
-        raise VerificationError(
-            "the policy is strict, and one party card stands for several custodians",
-            hint="one party key would open all of their shares: give each custodian a card of their own",
-        )
+    plan = examine(policy, cards=chosen)
+    plan.require_sound()
     found = _acknowledgements(acknowledged)
     if policy.acknowledgement or found:
         check_acknowledged(names, policy.label, found.values(), chosen)
     beside = {POLICY_NAME: policy.text} | {
         f"{ACKNOWLEDGEMENTS}/{one.custodian}.json": one.to_file() for one in found.values()
     }
-    cautions = [
-        f"{'serious: ' if one.severity == 'serious' else ''}{one.what.rstrip('.')}. {one.advice.rstrip('.')}"
-        for one in plan.findings
-        if one.severity != "note"
-    ]
     return Wanted(
         label=policy.label,
         rule=policy.rule(),
@@ -162,8 +140,23 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
         policy=policy.digest(),
         acknowledged=[one.words() for one in found.values()],
         beside=beside,
-        cautions=cautions,
+        cautions=_told(plan.findings),
     )
+
+
+def _card_cautions(cards: Mapping[str, PartyCard]) -> list[str]:
+    from shares.planning.cards import card_findings
+
+    return _told(card_findings(cards))
+
+
+def _told(findings: Iterable[Finding]) -> list[str]:
+    """Return what is to be cautioned about; notes are for the plan alone."""
+    return [
+        f"{'serious: ' if one.severity == 'serious' else ''}{one.what.rstrip('.')}. {one.advice.rstrip('.')}"
+        for one in findings
+        if one.severity != "note"
+    ]
 
 
 def _acknowledgements(paths: tuple[str, ...]) -> dict[str, Acknowledgement]:

@@ -18,7 +18,8 @@ if TYPE_CHECKING:
 
 
 def card_findings(cards: Mapping[str, PartyCard]) -> tuple[Finding, ...]:
-    """Return what is amiss with cards: cautions, as only people know whether it is meant.
+    """Return what is amiss with cards. One for several custodians is serious: they are one holder then, whatever the
+    policy says of people; one in another name is a caution, as only people know whether it is meant.
 
     Args:
         cards: the card of each custodian who has one, by the custodian's name.
@@ -45,7 +46,7 @@ def _shared(cards: Mapping[str, PartyCard]) -> Iterator[Finding]:
     for fingerprint, names in held.items():
         if len(names) > 1:
             yield Finding(
-                "caution",
+                "serious",
                 "card-of-several",
                 f"One card is given for {', '.join(names)}, fingerprint {fingerprint}.",
                 "Whoever has its key opens all of these shares: give each custodian a card of their own.",

@@ -145,7 +145,7 @@ def test_a_fault_in_the_program_is_one_line_without_its_text(dealt: Place, monke
     def broken(*_: object, **__: object) -> None:
         raise KeyError("hidden text")
 
-    monkeypatch.setattr("shares.cli.show.read_file", broken)
+    monkeypatch.setattr("shares.cli.show.regular_file", broken)
     result = run("show", "x")
     assert (result.code, result.out, result.err.count("\n")) == (1, "", 1)
     assert "a fault in this program: KeyError at cli" in result.err.replace("tests.", "")

@@ -113,12 +113,12 @@ def test_one_card_for_several_custodians(place: Place) -> None:
         text = text.replace(f'name = "{name}"\n', f'name = "{name}"\ncard = "north-pier.card.json"\n')
     policy = place.folder / "policy.toml"
     policy.write_text(text)
-    assert_refused(split(place, policy), 4, "one party card stands for several custodians", watched=place.folder)
+    assert_refused(split(place, policy), 4, "One card is given for north-pier, south-pier", watched=place.folder)
     policy.write_text(text.replace("strict = true", "strict = false"))
     done = run(*split(place, policy))
     assert done.code == 0
-    assert "one party key opens the shares of north-pier and south-pier and" in done.err
-    assert "the share of registrar is wrapped for the card of north-pier" in done.err
+    assert "Caution: serious: One card is given for north-pier, south-pier" in done.err
+    assert "The card of registrar is in the name of north-pier" in done.err
 
 
 def test_a_passphrase_for_nobody_is_refused(place: Place) -> None:
