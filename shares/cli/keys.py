@@ -32,6 +32,14 @@ key_option = click.option(
     callback=filled,
     help="A party key that opens shares wrapped for its card; once for each.",
 )
+trust_option = click.option(
+    "--trust",
+    "trusted_files",
+    multiple=True,
+    metavar="CARD",
+    callback=filled,
+    help="A party card whose fingerprint you have compared: the record must be signed by one such party.",
+)
 suite_option = click.option(
     "--suite",
     type=click.Choice(SUITES),

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import click
 
-from shares.cli.keys import key_option, opening, suite_option
+from shares.cli.keys import key_option, opening, suite_option, trust_option
 from shares.cli.output import filled, json_option, print_result, progress, prose, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -19,7 +19,7 @@ from shares.custody.parties import load_card
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
 from shares.documents.wrapping import Suite
-from shares.errors import ParameterError, StorageError
+from shares.errors import ParameterError, StorageError, VerificationError
 from shares.storage import leftovers, write_new
 from shares.streams import new_file
 
@@ -77,6 +77,7 @@ class _FeedsCommand(click.Command):
     help="The encrypted file whose key the shares hold, where the secret was encrypted.",
 )
 @suite_option
+@trust_option
 @key_option
 @passphrase_options
 @json_option
@@ -90,6 +91,7 @@ def command(
     receiver: str | None,
     encrypted_file: str | None,
     suite: Suite,
+    trusted_files: tuple[str, ...],
     keys: tuple[str, ...],
     passphrase_files: tuple[str, ...],
     descriptors: tuple[str, ...],
@@ -127,6 +129,12 @@ def command(
         raise ParameterError("--for goes with --to FILE", hint="the encrypted secret is written to that file")
     card = load_card(receiver) if receiver is not None else None
     record = load_record(record_file) if record_file is not None else None
+    if trusted_files and (record is None or not record.is_signed_by(map(load_card, trusted_files))):
+        raise VerificationError(
+            "no record signed by a party you trust is given",
+            where=record_file or "--trust",
+            hint="`shares verify --record R` says who signed it; ask the dealer for the signed record",
+        )
     with opening(keys, passphrase_files, descriptors) as at_hand:
         recovery = recover(load_shares(files, at_hand.share), record)
     _require_encrypted(recovery, encrypted_file, optional=card is not None)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import click
 
-from shares.cli.keys import key_option, opening
+from shares.cli.keys import key_option, opening, trust_option
 from shares.cli.output import filled, json_option, print_result, progress, prose
 from shares.cli.passphrases import passphrase_options
 from shares.custody.large import check_encrypted
@@ -46,14 +46,7 @@ NEXT = {
 @click.command()
 @click.argument("files", metavar="[SHARE...]", nargs=-1, callback=filled)
 @click.option("--record", "record_file", metavar="R", callback=filled, help="The set's public record.")
-@click.option(
-    "--trust",
-    "trusted_files",
-    multiple=True,
-    metavar="CARD",
-    callback=filled,
-    help="A party card whose fingerprint you have compared: the record must be signed by one such party.",
-)
+@trust_option
 @click.option(
     "--encrypted",
     "encrypted_file",
@@ -115,7 +108,7 @@ def command(
         "record": record.fingerprint if record else None,
         "encrypted_file": encrypted_file,
         "signatures": _signatures(record, trusted) if record else None,
-        "trusted": _is_signed_by(record, trusted) if record and trusted else None,
+        "trusted": record.is_signed_by(trusted) if record and trusted else None,
         "shares": [
             {"file": f.source, "custodian": f.custodian, "status": f.status.value, "reason": f.reason} for f in findings
         ],
@@ -154,13 +147,9 @@ def _signature_lines(record: Record, trusted: list[PartyCard]) -> list[str]:
         f"({'trusted' if one['trusted'] else other})."
         for one in _signatures(record, trusted)
     ]
-    if trusted and not _is_signed_by(record, trusted):
+    if trusted and not record.is_signed_by(trusted):
         lines.append("Next: it is signed by none of the parties you trust. Ask the dealer for the record, and compare.")
     return lines
-
-
-def _is_signed_by(record: Record, trusted: list[PartyCard]) -> bool:
-    return bool({one.card.fingerprint for one in record.signatures} & {card.fingerprint for card in trusted})
 
 
 def _repeated(presented: list[Presented]) -> list[int]:
@@ -199,7 +188,7 @@ def _lines(
 
 def _exit_code(findings: list[Finding], record: Record | None, trusted: list[PartyCard]) -> int:
     statuses = {finding.status for finding in findings}
-    if record and trusted and not _is_signed_by(record, trusted):
+    if record and trusted and not record.is_signed_by(trusted):
         return 4
     if statuses <= {Status.INTACT}:
         return 0

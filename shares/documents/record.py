@@ -9,7 +9,7 @@ Does not: hold persons or sites, which stay in the policy, or check shares; ``cu
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from datetime import datetime
 from typing import Annotated, Any, ClassVar, Literal, Self, TypeAlias
 
@@ -222,6 +222,11 @@ class Record(Document):
     def own_fingerprint(self) -> str:
         """Compute the fingerprint of what the record holds (signatures apart)."""
         return fingerprint("record", self.public(*(set(type(self).model_fields) - {"fingerprint", "signatures"})))
+
+    def is_signed_by(self, cards: Iterable[PartyCard]) -> bool:
+        """Say whether one of these parties has signed it, in any role."""
+        fingerprints = {card.fingerprint for card in cards}
+        return any(one.card.fingerprint in fingerprints for one in self.signatures)
 
     def custodian(self, name: str) -> Custodian | None:
         """Return what the record says of a custodian, or None where it does not name them."""

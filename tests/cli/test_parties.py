@@ -347,3 +347,14 @@ def test_nothing_to_check_and_no_cards_to_trust_are_refused(harbour: Harbour) ->
     record = harbour.place.record
     assert_refused(["verify", share, "--record", record, "--trust", share], 4, "a party card is wanted here")
     assert_refused(["verify", share, "--record", record, "--trust", "nowhere"], 5, "nowhere", "does not exist")
+
+
+def test_a_recovery_can_demand_a_trusted_record(harbour: Harbour) -> None:
+    base = ["recover", *harbour.place.shares[:3], "--check"]
+    record = signed(harbour, ("registrar", "witness"))
+    trusted = ["--trust", harbour.card("registrar")]
+    assert run(*base, "--record", record, *trusted).code == 0
+    words = "signed by a party you trust"
+    assert_refused([*base, "--record", record, "--trust", harbour.card("harbour-office")], 4, words)
+    assert_refused([*base, "--record", harbour.place.record, *trusted], 4, words, "shares verify --record")
+    assert_refused([*base, *trusted], 4, words)
