@@ -18,6 +18,7 @@ from shares.custody.encrypted_file import check_file, open_file
 from shares.custody.parties import load_card
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
+from shares.documents.record import Record
 from shares.documents.wrapping import Suite
 from shares.errors import ParameterError, StorageError, VerificationError
 from shares.storage import leftovers, write_new
@@ -153,7 +154,9 @@ def command(
         if recovery.share.encrypted_file is not None:
             went += "; it is the key of the encrypted file, which the receiver needs as well"
     against = (
-        f"the record with fingerprint {record.fingerprint}" if record else "the commitment that each share carries"
+        f"the record with fingerprint {record.fingerprint}, {_signers(record)}"
+        if record
+        else "the commitment that each share carries"
     )
     with contextlib.ExitStack() as stack:
         stack.enter_context(recovery.secret)
@@ -171,6 +174,11 @@ def command(
             to_command(recovery.secret, fed, output=STANDARD_ERROR if as_json else None)
         members, lines = _members(recovery, went, against), _lines(recovery, went, against)
         print_result(members, lines, as_json=as_json, aside=bool(fed))
+
+
+def _signers(record: Record) -> str:
+    names = ", ".join(f"{one.card.name} as {one.role}" for one in record.signatures)
+    return f"signed by {names}" if names else "which is unsigned"
 
 
 def _require_encrypted(recovery: Recovery, encrypted_file: str | None, *, optional: bool) -> None:
