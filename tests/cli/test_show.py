@@ -54,7 +54,9 @@ def test_the_search_for_leaks_finds_them(dealt: Place) -> None:
     rows = rows_of(dealt)
     text = dealt.shares[0].read_text()
     assert "base64url 0" in leaks(text, rows)
-    assert leaks(f"x{rows[0][5:14].hex()}x", rows) == ["hex"]
+    # Where a row's digits happen to have no letter among them, both forms of it are the same.
+    assert "hex" in leaks(f"x{rows[0][5:14].hex()}x", rows)
+    assert set(leaks(f"x{rows[0][5:14].hex()}x", rows)) <= {"hex", "HEX"}
     assert leaks(repr(list(rows[1][:9])), rows) == ["numbers"]
     assert leaks("nothing of the kind", rows) == []
 
