@@ -47,7 +47,7 @@ def test_a_script_signs_and_is_shown_the_duties(folder: Path) -> None:
 def test_a_person_reads_before_they_accept(folder: Path, answer: str, code: int) -> None:
     with on_terminal(*signing(folder)) as terminal:
         terminal.wait_for(DUTIES[-1][:40])
-        terminal.answer("Does north-pier accept them? [y/N]: ", answer)
+        terminal.answer("Does north-pier accept them? [y/N]:", answer)
         assert terminal.finish()[0] == code
     assert (folder / "ack").exists() is (code == 0)
 
