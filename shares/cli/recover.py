@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 import contextlib
-import os
 from pathlib import Path
 
 import click
 
 from shares.cli.keys import key_option, opening, suite_option, trust_option
-from shares.cli.output import filled, json_option, print_result, progress, prose, warn
+from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
 from shares.custody.deliver import fed as fed_command
@@ -20,7 +19,7 @@ from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
 from shares.documents.record import Record
 from shares.documents.wrapping import Suite
-from shares.errors import ParameterError, StorageError, VerificationError
+from shares.errors import ParameterError, VerificationError
 from shares.storage import leftovers, write_new
 from shares.streams import new_file
 
@@ -124,8 +123,8 @@ def command(
             where="--to -",
             hint="name a new file, or put the command that needs it after --; a file of this name is ./-",
         )
-    if target is not None and os.path.lexists(target):
-        raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
+    if target is not None:
+        refuse_taken(target)
     if receiver is not None and target is None:
         raise ParameterError("--for goes with --to FILE", hint="the encrypted secret is written to that file")
     card = load_card(receiver) if receiver is not None else None
@@ -193,6 +192,7 @@ def _require_encrypted(recovery: Recovery, encrypted_file: str | None, *, option
         hint = "give it with --encrypted FILE; `split` wrote it beside the record"
     if problem:
         recovery.secret.close()
+        recovery.payload.close()
         raise ParameterError(problem, where="--encrypted", hint=hint)
 
 

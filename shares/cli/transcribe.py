@@ -8,10 +8,10 @@ from collections.abc import Iterator
 
 import click
 
-from shares.cli.output import filled, json_option, print_result, prose, warn
+from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.signals import held_signals, unsuspended
 from shares.documents.share import Share
-from shares.errors import DocumentError, ParameterError, StorageError
+from shares.errors import DocumentError, ParameterError
 from shares.paper.paperform import PaperShare, from_paper
 from shares.paper.transcription import Gathered, Transcription, gather
 from shares.paper.typedline import Reading, compact
@@ -67,8 +67,7 @@ def command(target: str, source: str | None, as_json: bool) -> None:
       shares transcribe --to north-pier.share.json
       shares transcribe --from scanned.txt --to north-pier.share.json
     """
-    if os.path.lexists(target):
-        raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
+    refuse_taken(target)
     if source is not None:
         gathered = _from_source(source)
         share, notes = from_paper(gathered.data, where=_called(source)), list(gathered.notes)

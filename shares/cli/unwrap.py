@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
 
 import click
 
 from shares.cli.keys import key_option, opening
-from shares.cli.output import filled, json_option, print_result, progress, warn
+from shares.cli.output import filled, json_option, print_result, progress, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.deliver import open_sealed, to_file
 from shares.custody.encrypted_file import open_file
@@ -19,7 +18,7 @@ from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
-from shares.errors import DocumentError, ParameterError, StorageError
+from shares.errors import DocumentError, ParameterError
 from shares.storage import read_file, write_new
 from shares.streams import new_file
 
@@ -63,8 +62,7 @@ def command(
       shares unwrap registrar.wrapped.json --to bare.json \\
         --key registrar.key.json --passphrase-file registrar.passphrase
     """
-    if os.path.lexists(target):
-        raise StorageError("exists already and is never overwritten", where=target, hint="choose another name")
+    refuse_taken(target)
     data = read_file(file, limit=MAX_FILE)
     kind = parse_object(data, where=file).get("kind")
     record = load_record(record_file) if record_file is not None else None

@@ -14,7 +14,7 @@ from typing import Protocol, Self, TypeVar
 from shares.documents.party import OpenPartyKey, PartyKey
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
-from shares.documents.wrapping import ByCard, ByPassphrase, Envelope, open_by_passphrase
+from shares.documents.wrapping import ByCard, Envelope, Opener, passphrase_opener
 from shares.errors import VerificationError, WrongKeyError
 from shares.memory import Secret
 
@@ -73,13 +73,13 @@ class Opening:
         self,
         envelope: Envelope,
         name: str,
-        open_with: Callable[[Callable[[ByPassphrase | ByCard, bytes, bytes], Secret]], Opened],
+        open_with: Callable[[Opener], Opened],
     ) -> Opened:
         envelope.check_whole()
         wrapping = envelope.wrapping
         if isinstance(wrapping, ByCard):
             return open_with(self._party_of(wrapping.card).open)
-        return self._passphrases.opening(name, lambda passphrase: open_with(_by(passphrase)))
+        return self._passphrases.opening(name, lambda passphrase: open_with(passphrase_opener(passphrase)))
 
     def _party_of(self, card: str) -> OpenPartyKey:
         key = self._keys.get(card)
@@ -106,12 +106,3 @@ class Opening:
 
     def __exit__(self, *_: object) -> None:
         self.close()
-
-
-def _by(passphrase: Secret) -> Callable[[ByPassphrase | ByCard, bytes, bytes], Secret]:
-    def opener(wrapping: ByPassphrase | ByCard, sealed: bytes, bound: bytes) -> Secret:
-        if isinstance(wrapping, ByCard):
-            raise WrongKeyError("it is wrapped for a card, not by passphrase", hint="give the party key of that card")
-        return open_by_passphrase(wrapping, sealed, bound, passphrase)
-
-    return opener

@@ -17,12 +17,10 @@ from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
 from shares.documents.wrapping import (
     SUITES,
-    ByCard,
-    ByPassphrase,
     Sealer,
     Suite,
     card_sealer,
-    open_by_passphrase,
+    passphrase_opener,
     passphrase_sealer,
 )
 from shares.errors import VerificationError
@@ -60,13 +58,8 @@ class Packing:
     def by_passphrase(cls, passphrase: Secret) -> Self:
         """Wrapped under ``passphrase``, which the caller keeps until all is written, and wipes."""
 
-        def opener(wrapping: ByPassphrase | ByCard, sealed: bytes, bound: bytes) -> Secret:
-            if isinstance(wrapping, ByCard):
-                raise VerificationError("what was written reads back wrapped for a card")
-            return open_by_passphrase(wrapping, sealed, bound, passphrase)
-
         def unpack(data: bytes, where: str, _: Share) -> Share:
-            return WrappedShare.parse(data, where=where).open(opener)
+            return WrappedShare.parse(data, where=where).open(passphrase_opener(passphrase))
 
         return cls("wrapped by passphrase", WRAPPED_SUFFIX, _pack(passphrase_sealer(passphrase)), unpack)
 

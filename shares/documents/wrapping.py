@@ -208,6 +208,17 @@ def card_sealer(recipient: Recipient, suite: Suite = SUITES[0]) -> Sealer:
     return seal
 
 
+def passphrase_opener(passphrase: Secret) -> Opener:
+    """Return what opens content that was sealed under ``passphrase``; see ``open_by_passphrase``."""
+
+    def opener(wrapping: ByPassphrase | ByCard, sealed: bytes, bound: bytes) -> Secret:
+        if isinstance(wrapping, ByCard):
+            raise WrongKeyError("it is wrapped for a card, not by passphrase", hint="give the party key of that card")
+        return open_by_passphrase(wrapping, sealed, bound, passphrase)
+
+    return opener
+
+
 def open_by_passphrase(wrapping: ByPassphrase, sealed: bytes, bound: bytes, passphrase: Secret) -> Secret:
     """Return the content that was sealed under ``passphrase``.
 

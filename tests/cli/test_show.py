@@ -54,9 +54,10 @@ def test_the_search_for_leaks_finds_them(dealt: Place) -> None:
     rows = rows_of(dealt)
     text = dealt.shares[0].read_text()
     assert "base64url 0" in leaks(text, rows)
-    # Where a row's digits happen to have no letter among them, both forms of it are the same.
-    assert "hex" in leaks(f"x{rows[0][5:14].hex()}x", rows)
-    assert set(leaks(f"x{rows[0][5:14].hex()}x", rows)) <= {"hex", "HEX"}
+    digits = rows[0][5:14].hex()
+    # Eight digits that happen to have no letter among them are both forms at once.
+    both = any(piece.isdecimal() for piece in windows(digits))
+    assert leaks(f"x{digits}x", rows) == (["HEX", "hex"] if both else ["hex"])
     assert leaks(repr(list(rows[1][:9])), rows) == ["numbers"]
     assert leaks("nothing of the kind", rows) == []
 

@@ -92,7 +92,7 @@ def test_anothers_share_packed_alike_is_not_taken_for_it(name: str) -> None:
 
 def test_what_comes_back_wrapped_otherwise_is_refused() -> None:
     packed = Packing.by_passphrase(passphrase(NAME))
-    with pytest.raises(VerificationError, match="reads back wrapped for a card"):
+    with pytest.raises(VerificationError, match="wrapped for a card, not by passphrase"):
         packed.unpack(WrappedShare.wrap(NORTH, card_sealer(card(NAME).recipient())).to_file(), "it", NORTH)
     with pytest.raises(DocumentError, match="it: a wrapped share is wanted here, but it is a share"):
         packed.unpack(NORTH.to_file(), "it", NORTH)
