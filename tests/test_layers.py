@@ -23,8 +23,9 @@ FLOORS = (
     ("__main__",),
     ("cli",),
     ("shares",),
+    ("evidence",),
     ("custody",),
-    ("paper", "planning"),
+    ("history", "paper", "planning"),
     ("documents",),
     ("sharing",),
     ("field",),
@@ -41,7 +42,7 @@ THIRD_PARTIES = {
     "pydantic_core": {"documents"},
     "rfc8785": {"documents"},
     "cryptography": {"documents", "custody"},
-    "jinja2": {"paper"},
+    "jinja2": {"paper", "evidence"},
     "segno": {"paper"},
 }
 

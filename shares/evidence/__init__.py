@@ -1,0 +1,1 @@
+"""What can be shown of a set: attestations, drills, ceremonies, margin, exposure, audit."""

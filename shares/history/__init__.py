@@ -1,0 +1,1 @@
+"""What has happened to a set: its folder and its journal."""
