@@ -35,6 +35,16 @@ _MAX_DOTS = 100
 KeyType = Literal["symmetric", "signature", "private-decryption", "password", "other"]
 
 
+UNITS = {"min": timedelta(minutes=1), "h": timedelta(hours=1), "d": timedelta(days=1)}
+
+
+def _duration(value: object) -> timedelta:
+    form = re.fullmatch(r"([1-9][0-9]{0,3})(min|h|d)", value) if isinstance(value, str) else None
+    if form is None:
+        raise PydanticCustomError("shares_interval", 'should be a duration like "90min", "4h" or "2d"')
+    return int(form[1]) * UNITS[form[2]]
+
+
 def _interval(value: object) -> timedelta:
     form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", value) if isinstance(value, str) else None
     if form is None:
@@ -74,6 +84,7 @@ def _relative(path: str) -> str:
 
 
 Interval = Annotated[timedelta, PlainValidator(_interval)]
+Duration = Annotated[timedelta, PlainValidator(_duration)]
 
 
 def folded(text: str) -> str:
@@ -130,6 +141,12 @@ class Policy(Document):
     attest_every: Interval | None = None
     drill_every: Interval | None = None
     refresh_every: Interval | None = None
+    content_every: Interval = timedelta(days=365)
+    recover_within: Duration | None = None
+    respond_within: Duration = timedelta(hours=24)
+    keep_records: Interval = timedelta(days=2 * 365)
+    practice: bool = True
+    dual_control: bool = False
     strict: bool = False
     acknowledgement: bool = False
     custodians: Annotated[tuple[PolicyCustodian, ...], Member(alias="custodian", min_length=1, max_length=MAX_POINTS)]

@@ -1,0 +1,130 @@
+"""A set's folder for those who work with it: record, policy, journal, and evidence added beside them.
+
+Source: FORMAT.md, sec. 15.
+May import: shares.errors, shares.storage, shares.documents, shares.history.
+Secret: party keys that sign, passed through. Confidential: policy, journal. Public: the record.
+Does not: forgive: a record or policy that is not what it should be is refused. ``evidence.audit`` reads what it can.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import os
+from collections.abc import Sequence
+from datetime import datetime
+from pathlib import Path
+
+from shares.documents.base import MAX_FILE
+from shares.documents.entry import Entry, NamedDigest
+from shares.documents.event import Event
+from shares.documents.party import OpenPartyKey, PartyCard
+from shares.documents.policy import Policy
+from shares.documents.record import Record
+from shares.errors import ParameterError, VerificationError
+from shares.history.journal import Journal, append, load_journal
+from shares.storage import StrPath, make_folder, read_file, write_new
+
+RECORD_NAME = "record.json"
+POLICY_NAME = "policy.toml"
+
+
+class SetFolder:
+    """The folder of one set.
+
+    Args:
+        path: the folder.
+
+    Raises:
+        StorageError: the record cannot be read.
+        DocumentError: record or policy are none.
+        VerificationError: the policy is not the one that the record names.
+
+    Attributes:
+        record: the set's record.
+        policy: its policy, where it was split by one.
+    """
+
+    def __init__(self, path: StrPath) -> None:
+        self.path = Path(path)
+        where = os.fspath(self.path / RECORD_NAME)
+        self.record = Record.parse(read_file(where, limit=MAX_FILE), where=where)
+        self.policy = load_policy(self.path, self.record)
+
+    def journal(self) -> Journal:
+        """Read the journal as it stands now.
+
+        Raises:
+            StorageError: it cannot be read.
+        """
+        return load_journal(self.path)
+
+    def named(self, name: str) -> NamedDigest:
+        """Return a file of the folder as an entry names it.
+
+        Raises:
+            StorageError: it cannot be read, or is larger than 1 MiB.
+        """
+        data = read_file(self.path / name, limit=MAX_FILE)
+        return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+
+    def add(self, name: str, data: bytes) -> NamedDigest:
+        """Write a new file into the folder, mode 0600, and return it as an entry names it.
+
+        Raises:
+            StorageError: the name is taken, or the medium refuses.
+        """
+        make_folder((self.path / name).parent)
+        write_new(self.path / name, data, secret=True)
+        return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+
+    def append(
+        self,
+        event: Event,
+        *,
+        keys: Sequence[OpenPartyKey] = (),
+        cards: Sequence[PartyCard] = (),
+        documents: Sequence[NamedDigest] = (),
+        time: datetime | None = None,
+    ) -> Entry:
+        """Add an entry to the journal; see ``history.journal.append``.
+
+        Raises:
+            ParameterError: the policy asks for two signatures, and fewer parties sign.
+            StorageError: the journal cannot be written.
+        """
+        self.require_signers(keys)
+        return append(self.path, event, keys=keys, cards=cards, documents=documents, time=time)
+
+    def require_signers(self, keys: Sequence[OpenPartyKey]) -> None:
+        """Refuse an entry that the policy wants two parties to sign, before anything is done.
+
+        Raises:
+            ParameterError: fewer sign.
+        """
+        if self.policy is not None and self.policy.dual_control:
+            signing = {key.card.fingerprint for key in keys}
+            if len(signing) < 2:
+                raise ParameterError(
+                    f"the policy asks for dual control: two parties sign each entry, and {len(signing)} would",
+                    hint="give the party keys of two people, each with --sign",
+                )
+
+
+def load_policy(folder: Path, record: Record) -> Policy | None:
+    """Read the policy beside a record, where the record names one.
+
+    Raises:
+        StorageError, DocumentError: it cannot be read, or is none.
+        VerificationError: it is not the one that the record names.
+    """
+    if record.policy is None:
+        return None
+    where = os.fspath(folder / POLICY_NAME)
+    policy = Policy.parse(read_file(where, limit=MAX_FILE), where=where)
+    if policy.digest() != record.policy:
+        raise VerificationError(
+            "it is not the policy that the record names: it was changed since the split",
+            where=where,
+            hint="bring back the copy that was made at the split; a new policy goes with a new split",
+        )
+    return policy
