@@ -13,19 +13,20 @@ import os
 from collections.abc import Sequence
 from datetime import datetime
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from shares.documents.base import MAX_FILE
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
+from shares.history.files import POLICY_NAME, RECORD_NAME
 from shares.history.journal import Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 
-RECORD_NAME = "record.json"
-POLICY_NAME = "policy.toml"
+if TYPE_CHECKING:
+    from shares.documents.policy import Policy
 
 
 class SetFolder:
@@ -119,6 +120,9 @@ def load_policy(folder: Path, record: Record) -> Policy | None:
     """
     if record.policy is None:
         return None
+    # Imported late: a set that was split without a policy needs nothing of it.
+    from shares.documents.policy import Policy
+
     where = os.fspath(folder / POLICY_NAME)
     policy = Policy.parse(read_file(where, limit=MAX_FILE), where=where)
     if policy.digest() != record.policy:
