@@ -8,6 +8,7 @@ from pathlib import Path
 
 import click
 
+from shares.cli.feeding import FeedsCommand
 from shares.cli.keys import key_option, opening, sign_option, signers, suite_option, trust_option
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
@@ -45,21 +46,7 @@ NEXT = {
 }
 
 
-class _FeedsCommand(click.Command):
-    """Takes what follows ``--`` as a command and its arguments, never as shares."""
-
-    def parse_args(self, ctx: click.Context, args: list[str]) -> list[str]:
-        if "--" in args:
-            at = args.index("--")
-            ctx.meta["command"] = args[at + 1 :]
-            args = args[:at]
-        return super().parse_args(ctx, args)
-
-    def collect_usage_pieces(self, ctx: click.Context) -> list[str]:
-        return [*super().collect_usage_pieces(ctx), "[-- COMMAND ARG...]"]
-
-
-@click.command(cls=_FeedsCommand)
+@click.command(cls=FeedsCommand)
 @click.argument("files", metavar="SHARE...", nargs=-1, required=True, callback=filled)
 @click.option(
     "--record",

@@ -25,14 +25,13 @@ from shares.custody.split import Dealt
 from shares.custody.verify import examine
 from shares.documents.base import MAX_FILE
 from shares.errors import SharesError, StorageError, VerificationError
-from shares.history.files import RECORD_NAME
+from shares.history.files import PRACTICE_RECORD, RECORD_NAME
 from shares.history.journal import JOURNAL_NAME
 from shares.sharing.robust import count_quorums, covering_quorums, quorums
 from shares.sharing.rule import recover_payload
 from shares.storage import discard, leftovers, make_folder, read_back, write_new
 
 PRACTICE_SUFFIX = ".practice.json"
-PRACTICE_RECORD = "practice/record.json"
 MOST_TRIALS = 1000
 """With at most this many quorums every one is tried; beyond, a sample in which each share takes part."""
 

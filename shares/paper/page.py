@@ -16,6 +16,9 @@ from pathlib import Path
 
 import jinja2
 
+REPORT = Path(__file__).with_name("report.css")
+"""The style of reports: for a screen of any width, and for paper."""
+
 
 def render(template: Path, *styles: Path, **facts: object) -> bytes:
     """Return a page: the template, with ``style`` and ``style_hash`` for its head, and the facts that it shows.
