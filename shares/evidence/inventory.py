@@ -96,10 +96,14 @@ def take_inventory(journal: Journal, record: Record | None) -> Inventory:
         record: the set's: where the journal begins after the split, its custodians' originals are counted all the same.
     """
     counting = _Counting()
-    if record is not None and not any(isinstance(entry.event, Dealt) for entry in journal.entries):
+    # A split that did not finish stands in the journal too; the shares of the record's set are what counts.
+    dealt = [e.event for e in journal.entries if isinstance(e.event, Dealt)]
+    sets = {event.set for event in dealt} if record is None else {record.set}
+    if record is not None and not any(event.set == record.set for event in dealt):
         counting.deal(((one.name, None) for one in record.custodians), record.epoch)
     for entry in journal.entries:
-        counting.take(entry)
+        if not isinstance(entry.event, Dealt) or entry.event.set in sets:
+            counting.take(entry)
     return Inventory(tuple(counting.copies), tuple(counting.problems))
 
 

@@ -204,7 +204,7 @@ class _Steps:
             note="Fingerprint of the record",
         )
         signed = f"{self.set}/record.json"
-        for witness in (INTERNAL, EXTERNAL):
+        for witness in (EXTERNAL,) if self.policy.dual_control else (INTERNAL, EXTERNAL):
             target = f"{witness}.record.json"
             yield self._step(
                 witness,
@@ -226,8 +226,10 @@ class _Steps:
     def _split_command(self) -> str:
         files = [f"{one.name}.ack.json" for one in self.policy.custodians if self.policy.acknowledgement]
         acknowledged = "".join(f" --acknowledged {shlex.quote(file)}" for file in files)
+        # Under dual control the dealing has two signatures from the first; else witnesses sign what they compared.
+        second = f" --witness {INTERNAL}.key.json" if self.policy.dual_control else ""
         return (
-            f"shares split secret --policy policy.toml{acknowledged} --dealer dealer.key.json --set {self.set} "
+            f"shares split secret --policy policy.toml{acknowledged} --dealer dealer.key.json{second} --set {self.set} "
             "--deliver handover"
         )
 
@@ -266,11 +268,13 @@ class _Steps:
         )
 
     def _closing(self) -> Iterator[CeremonyStep]:
+        left = "records, practice shares (worth nothing)" if self.policy.practice else "records"
+        keep = "mkdir practice; mv handover/*.practice.json practice; " if self.policy.practice else ""
         yield self._step(
             DEALER,
             "Erase the secret, the shares and the sheets. Where the secret must live on elsewhere, its owner has it.",
-            f"Neither secret, shares nor sheets are listed. What is left: {self.set}, records, and what was brought.",
-            command="rm -r secret handover *.html; ls -A",
+            f"Neither secret, shares nor sheets are listed. What is left: {self.set}, {left}, and what was brought.",
+            command=f"{keep}rm -r secret handover *.html; ls -A",
         )
         yield self._step(
             ADMINISTRATOR,
