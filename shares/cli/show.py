@@ -9,6 +9,7 @@ import click
 from shares.cli.output import filled, json_option, print_result
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import MAX_FILE, parse_object
+from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.chunks import Header
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -29,6 +30,7 @@ KINDS = {
     "party-key": "party key (private, wrapped by passphrase)",
     "party-card": "party card (public)",
     "acknowledgement": "acknowledgement of duties",
+    "ceremony-script": "script of a key ceremony (confidential)",
     "encrypted-file": "encrypted file (of no use without a quorum of its set's shares)",
 }
 UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
@@ -149,6 +151,19 @@ def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
     return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": found.words()}
 
 
+def _ceremony_script(data: bytes, where: str) -> dict[str, object]:
+    script = CeremonyScript.parse(data, where=where)
+    return {
+        **script.public("label", "created", "rule", "planned", "standby", "dual_control"),
+        "policy": _hex(script.policy),
+        "software": f"shares {script.software.version}, {script.software.digest.hex()}",
+        "steps": len(script.steps),
+        "digest": script.digest().hex(),
+        "read_aloud": script.spoken(),
+        "agreed_by": [f"{one.card.name}, card {one.card.fingerprint}" for one in script.signatures],
+    }
+
+
 def _card_facts(card: PartyCard) -> dict[str, object]:
     return card.public("name", "contact", "created", "fingerprint")
 
@@ -160,6 +175,7 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     Record.KIND: _record,
     PartyKey.KIND: lambda data, where: _card_facts(PartyKey.parse(data, where=where).card),
     Acknowledgement.KIND: _acknowledgement,
+    CeremonyScript.KIND: _ceremony_script,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }
 

@@ -142,13 +142,18 @@ def ceremony_report(files: Files, *, script: bytes | None = None) -> CeremonyRep
     return CeremonyReport(
         script=followed,
         steps=steps,
-        exceptions=(*shown, *(Exceptional(problem) for problem in inventory.problems)),
+        exceptions=(*shown, *(Exceptional(what) for what in (*inventory.problems, *_worth_knowing(journal)))),
         missing=tuple(one.number for one in steps if not one.entries),
         record=record,
         copies=inventory.copies if record is not None else (),
         head=journal.head,
-        problems=tuple(f"line {problem.line}: {problem.what}" for problem in journal.problems),
+        problems=tuple(f"line {problem.line}: {problem.what}" for problem in journal.problems if problem.breaks),
     )
+
+
+def _worth_knowing(journal: Journal) -> list[str]:
+    """Return what is odd about the journal and does not break it: a clock that ran backwards, a line half written."""
+    return [f"line {problem.line} of the journal: {problem.what}" for problem in journal.problems if not problem.breaks]
 
 
 def _chosen(journal: Journal, wanted: bytes | None, where: str) -> bytes:
