@@ -17,7 +17,7 @@ from shares.storage import read_file
 
 RECORD_NAME = "record.json"
 POLICY_NAME = "policy.toml"
-PRACTICE_RECORD = "practice/record.json"
+PRACTICE_RECORD = "practice.json"
 
 
 class Files(Protocol):
