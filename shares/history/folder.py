@@ -8,7 +8,6 @@ Does not: forgive: a record or policy that is not what it should be is refused. 
 
 from __future__ import annotations
 
-import hashlib
 import os
 from collections.abc import Sequence
 from datetime import datetime
@@ -21,6 +20,7 @@ from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
+from shares.history.files import is_name_in_set
 from shares.history.journal import Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 
@@ -65,17 +65,21 @@ class SetFolder:
             StorageError: it cannot be read, or is larger than 1 MiB.
         """
         data = read_file(self.path / name, limit=MAX_FILE)
-        return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+        return NamedDigest.of(name, data)
 
     def add(self, name: str, data: bytes) -> NamedDigest:
         """Write a new file into the folder, mode 0600, and return it as an entry names it.
 
         Raises:
+            ParameterError: it is no name for a file in a set's folder.
             StorageError: the name is taken, or the medium refuses.
         """
+        if not is_name_in_set(name):
+            raise ParameterError("is no name for a file in a set's folder", where=ascii(name))
+        named = NamedDigest.of(name, data)
         make_folder((self.path / name).parent)
         write_new(self.path / name, data, secret=True)
-        return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+        return named
 
     def append(
         self,
@@ -102,7 +106,7 @@ class SetFolder:
             ParameterError: fewer sign.
         """
         if self.policy is not None and self.policy.dual_control:
-            signing = {key.card.fingerprint for key in keys}
+            signing = {key.card.ed25519 for key in keys}
             if len(signing) < 2:
                 raise ParameterError(
                     f"the policy asks for dual control: two parties sign each entry, and {len(signing)} would",
