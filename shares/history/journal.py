@@ -40,8 +40,7 @@ from shares.storage import read_file, write_new
 JOURNAL_NAME = "journal.jsonl"
 MAX_JOURNAL = 1 << 30
 """The largest journal, in bytes: 1 GiB."""
-_TORN_NAME = "journal.torn-"
-_TORN = re.compile(r"journal\.torn-[0-9a-f]{16}")
+_TORN = re.compile(r"journal\.torn-[0-9]+-[0-9a-f]{16}")
 
 ProblemKind: TypeAlias = Literal[
     "entry", "sequence", "chain", "signature", "time", "torn", "set-aside", "record", "missing", "altered", "renamed",
@@ -278,7 +277,7 @@ def append(
 
         _last(lines, folder)
         if lines.torn:
-            _keep(folder, lines.torn)
+            _keep(folder, lines)
             lines.cut()
         for name in unnamed(os.listdir(folder), lambda name: lines.holds(f'"path":"{name}"'.encode())):
             data = read_file(folder / name, limit=MAX_FILE)
@@ -341,11 +340,14 @@ def _made(
     return entry
 
 
-def _keep(folder: Path, torn: bytes) -> None:
-    """Write a torn line to a file of its own, unless a run that was stopped later has done so already."""
-    path = folder / f"{_TORN_NAME}{hashlib.sha256(torn).hexdigest()[:16]}"
-    if not os.path.lexists(path) or read_file(path, limit=MAX_FILE) != torn:
-        write_new(path, torn, secret=True)
+def _keep(folder: Path, lines: Lines) -> None:
+    """Write a torn line to a file of its own, unless a run that was stopped thereafter has done so already.
+
+    The name tells where and what: two pieces that are alike, as one byte easily is, are still two.
+    """
+    path = folder / f"journal.torn-{lines.end}-{hashlib.sha256(lines.torn).hexdigest()[:16]}"
+    if not os.path.lexists(path) or read_file(path, limit=MAX_FILE) != lines.torn:
+        write_new(path, lines.torn, secret=True)
 
 
 def unnamed(names: Iterable[str], holds: Callable[[str], bool]) -> list[str]:
