@@ -139,6 +139,10 @@ class Entry(Document):
         # For members named in ASCII and texts without control characters this is the form of RFC 8785, and faster.
         return _ENCODER.encode(self.model_dump(mode="json", by_alias=True)).encode("utf-8")
 
+    def head(self) -> Head:
+        """Return where a journal stands whose last entry this is."""
+        return head_of(self.sequence, line_digest(self.line()))
+
 
 def line_digest(line: bytes) -> bytes:
     """Return the digest of an entry's line: 32 bytes, what the next entry names as the one before it."""

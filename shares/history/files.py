@@ -17,6 +17,9 @@ from shares.errors import StorageError
 from shares.storage import read_file
 from shares.streams import refusing
 
+MAX_DOCUMENT = 16 << 20
+"""The largest file that an entry names, in bytes: 16 MiB, for scans."""
+
 
 class Files(Protocol):
     """Where the files of one set can be read."""

@@ -60,7 +60,7 @@ def test_an_empty_journal_stands_nowhere(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("signers", [(), ("harbour-office",), ("harbour-office", "registrar")])
 def test_the_reader_written_from_the_format_agrees(signers: tuple[str, ...], tmp_path: Path) -> None:
-    lines = lines_of([*events(4), note("Ölkanne, 3 × „geprüft“ \\ \" / \u2019 \U0001f6a2")], *signers)
+    lines = lines_of([*events(4), note('Ölkanne, 3 × „geprüft“ \\ " / \u2019 \U0001f6a2')], *signers)
     path = tmp_path / "journal.jsonl"
     path.write_bytes(text_of(lines))
     done = subprocess.run([sys.executable, by_hand.__file__, path], capture_output=True, check=False)
@@ -254,7 +254,11 @@ def test_a_card_is_introduced_once(tmp_path: Path) -> None:
         append(tmp_path, note("seen"), keys=[key(name) for name in names], cards=[key("registrar").card])
     journal = load_journal(tmp_path)
     assert journal.problems == ()
-    assert [[card.name for card in entry.cards] for entry in journal.entries] == [["harbour-office", "registrar"], [], []]
+    assert [[card.name for card in entry.cards] for entry in journal.entries] == [
+        ["harbour-office", "registrar"],
+        [],
+        [],
+    ]
     assert set(journal.cards) == {key(name).card.fingerprint for name in ("harbour-office", "registrar")}
 
 
