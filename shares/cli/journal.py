@@ -38,9 +38,9 @@ SHOWN = 20
 """How many problems are told one by one to people."""
 SIGNED = (
     "It proves that up to entry {last}, the last that is signed, nobody without the signing keys has changed, moved or "
-    "added a line, or removed one from within. Whose a key is, you know by comparing its card's fingerprint. Whoever holds all the keys could write another "
-    "journal from the start, and anyone could cut off its end: heads that others noted show that (--head), and so do "
-    "the signatures of custodians in their attestations."
+    "added a line, or removed one from within. Whose a key is, you know by comparing its card's fingerprint. Whoever "
+    "holds all the keys could write another journal from the start, and anyone could cut off its end: heads that "
+    "others noted show that (--head), and so do the signatures of custodians in their attestations."
 )
 UNSIGNED = (
     "No entry is signed, so by itself it proves nothing: whoever can write to the file could have written all of it "

@@ -95,12 +95,10 @@ class Journal:
         return self._standing.get(base64.b32decode(head.head.replace("-", ""))) == head.sequence
 
     def signers(self, entry: Entry) -> list[PartyCard]:
-        """The parties that signed an entry of this journal, those left out whose signature does not fit."""
-        return [
-            self.cards[one.card]
-            for one in entry.signatures
-            if one.card in self.cards and (entry.sequence, one) not in self._unproved
-        ]
+        """The parties that signed an entry of this journal, each once; not those whose signature does not fit."""
+        fitting = (one.card for one in entry.signatures if (entry.sequence, one) not in self._unproved)
+        parties = {self.cards[card].ed25519: self.cards[card] for card in fitting if card in self.cards}
+        return list(parties.values())
 
 
 def read_journal(data: bytes, *, progress: Callable[[int, int | None], None] | None = None) -> Journal:
@@ -183,7 +181,6 @@ class _Reader:
             elif card.ed25519 in keys:
                 # Two cards with one signing key are one party.
                 what = f"one party signed it twice, the second time as {card.name}"
-                self.unproved.add((entry.sequence, one))
             else:
                 keys.add(card.ed25519)
                 continue
