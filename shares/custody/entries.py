@@ -10,7 +10,6 @@ Does not: read a journal; ``history`` does, and ``evidence`` judges it.
 
 from __future__ import annotations
 
-import hashlib
 import re
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
@@ -59,7 +58,7 @@ class Entering:
         """
         self._end_unfinished(folder)
         cards = self.cards or {}
-        named = [NamedDigest(path=name, digest=hashlib.sha256(data).digest()) for name, data in companions.items()]
+        named = [NamedDigest.of(name, data) for name, data in companions.items()]
         for one in named:
             if _is_acknowledgement(one):
                 custodian = one.path.removeprefix(f"{ACKNOWLEDGEMENTS}/").removesuffix(".json")

@@ -10,6 +10,7 @@ Does not: judge whether a policy is wise (``planning`` does), touch files, or lo
 
 from __future__ import annotations
 
+import contextlib
 import difflib
 import hashlib
 import re
@@ -43,6 +44,17 @@ def _duration(value: object) -> timedelta:
     if form is None:
         raise PydanticCustomError("shares_interval", 'should be a duration like "90min", "4h" or "2d"')
     return int(form[1]) * UNITS[form[2]]
+
+
+def parse_duration(text: str) -> timedelta:
+    """Read a duration like ``90min``, ``4h`` or ``2d``.
+
+    Raises:
+        ParameterError: it is none.
+    """
+    with contextlib.suppress(PydanticCustomError):
+        return _duration(text)
+    raise ParameterError('a duration is written like "90min", "4h" or "2d"')
 
 
 def _interval(value: object) -> timedelta:
