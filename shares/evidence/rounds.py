@@ -9,7 +9,6 @@ Does not: say when a round is due, or what its answers amount to; an audit does.
 
 from __future__ import annotations
 
-import hashlib
 import os
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
@@ -22,7 +21,7 @@ from shares.documents.challenge import Challenge, Purpose
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Attested, Challenged, Dealt, Introduced
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.errors import ParameterError, StorageError, VerificationError
+from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
 from shares.evidence.judge import Judgement, check_challenge, judge
 from shares.history.folder import SetFolder
@@ -251,12 +250,6 @@ def _introduced(
 def _filed(folder: SetFolder, name: str, data: bytes) -> NamedDigest:
     """File an answer; one that a stopped run has filed and not entered is taken as it is."""
     path = folder.path / name
-    if not os.path.lexists(path):
-        return folder.add(name, data)
-    if read_file(path, limit=MAX_FILE) != data:
-        raise StorageError(
-            "another answer lies here that the journal does not name: a stopped run left it",
-            where=os.fspath(path),
-            hint="enter that one, or move it away",
-        )
-    return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+    if os.path.lexists(path) and read_file(path, limit=MAX_FILE) == data:
+        return folder.named(name)
+    return folder.add(folder.free_name(name), data)
