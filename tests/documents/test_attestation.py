@@ -1,6 +1,6 @@
 """Attestations: two signatures over one answer, neither of which can stand in for the other.
 
-Checked against: FORMAT.md, section 17, by the signer written from the text of section 9
+Checked against: FORMAT_EVIDENCE.md, section 17, by the signer written from the text of section 9
 (tests/vectors/make/wrapping_v1.py), and by the attestation key worked out from the share's file with the standard
 library (RFC 5869).
 """

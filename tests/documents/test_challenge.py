@@ -1,6 +1,6 @@
 """Challenges: one asker's question about one set, and not a bit of it can change.
 
-Checked against: FORMAT.md, section 17, by the signer written from the text of section 9
+Checked against: FORMAT_EVIDENCE.md, section 17, by the signer written from the text of section 9
 (tests/vectors/make/wrapping_v1.py).
 """
 
