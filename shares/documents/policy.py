@@ -10,13 +10,12 @@ Does not: judge whether a policy is wise (``planning`` does), touch files, or lo
 
 from __future__ import annotations
 
-import contextlib
 import difflib
 import hashlib
 import re
 import tomllib
 import unicodedata
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from datetime import timedelta
 from typing import Annotated, ClassVar, Literal, Self
 
@@ -32,36 +31,56 @@ from shares.field.polynomial import Polynomial
 from shares.sharing.rule import MAX_CHILDREN, MAX_DEPTH, MAX_POINTS, Rule
 
 DAYS = {"d": 1, "w": 7, "y": 365}
+UNITS = {"min": timedelta(minutes=1), "h": timedelta(hours=1), "d": timedelta(days=1)}
 _MAX_DOTS = 100
 KeyType = Literal["symmetric", "signature", "private-decryption", "password", "other"]
 
 
-UNITS = {"min": timedelta(minutes=1), "h": timedelta(hours=1), "d": timedelta(days=1)}
+def parse_duration(text: str) -> timedelta:
+    """Return a duration as policies write it.
 
+    Args:
+        text: a number from 1 to 9999, and ``min``, ``h`` or ``d``.
 
-def _duration(value: object) -> timedelta:
-    form = re.fullmatch(r"([1-9][0-9]{0,3})(min|h|d)", value) if isinstance(value, str) else None
+    Raises:
+        ParameterError: it is not written so.
+
+    >>> parse_duration("90min").total_seconds()
+    5400.0
+    """
+    form = re.fullmatch(r"([1-9][0-9]{0,3})(min|h|d)", text)
     if form is None:
-        raise PydanticCustomError("shares_interval", 'should be a duration like "90min", "4h" or "2d"')
+        raise ParameterError('should be a duration like "90min", "4h" or "2d"')
     return int(form[1]) * UNITS[form[2]]
 
 
-def parse_duration(text: str) -> timedelta:
-    """Read a duration like ``90min``, ``4h`` or ``2d``.
+def parse_interval(text: str) -> timedelta:
+    """Return an interval as policies write it.
+
+    Args:
+        text: a number from 1 to 9999, and ``d``, ``w`` or ``y`` for 1, 7 or 365 days.
 
     Raises:
-        ParameterError: it is none.
+        ParameterError: it is not written so.
+
+    >>> parse_interval("2w").days
+    14
     """
-    with contextlib.suppress(PydanticCustomError):
-        return _duration(text)
-    raise ParameterError('a duration is written like "90min", "4h" or "2d"')
-
-
-def _interval(value: object) -> timedelta:
-    form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", value) if isinstance(value, str) else None
+    form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", text)
     if form is None:
-        raise PydanticCustomError("shares_interval", 'should be an interval like "90d", "26w" or "1y"')
+        raise ParameterError('should be an interval like "90d", "26w" or "1y"')
     return timedelta(days=int(form[1]) * DAYS[form[2]])
+
+
+def _read_by(parse: Callable[[str], timedelta]) -> PlainValidator:
+    def read(value: object) -> timedelta:
+        try:
+            return parse(value if isinstance(value, str) else "")
+        except ParameterError as error:
+            reason = error.what
+        raise PydanticCustomError("shares_interval", "{reason}", {"reason": reason})
+
+    return PlainValidator(read)
 
 
 def _custodian_name(name: str) -> str:
@@ -95,8 +114,8 @@ def _relative(path: str) -> str:
     return path
 
 
-Interval = Annotated[timedelta, PlainValidator(_interval)]
-Duration = Annotated[timedelta, PlainValidator(_duration)]
+Interval = Annotated[timedelta, _read_by(parse_interval)]
+Duration = Annotated[timedelta, _read_by(parse_duration)]
 
 
 def folded(text: str) -> str:
