@@ -20,8 +20,9 @@ from typing import Final
 from shares import clock
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Departed, DrillClosed, Event, Incident, Recovered, Remedy, make_event
+from shares.documents.intervals import parse_duration
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.policy import folded, parse_duration
+from shares.documents.policy import folded
 from shares.errors import ParameterError
 from shares.history.folder import SetFolder
 
