@@ -8,8 +8,10 @@ import click
 
 from shares.cli.output import filled, json_option, print_result
 from shares.documents.acknowledgement import Acknowledgement
+from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.ceremony_script import CeremonyScript
+from shares.documents.challenge import Challenge
 from shares.documents.chunks import Header
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -31,6 +33,8 @@ KINDS = {
     "party-card": "party card (public)",
     "acknowledgement": "acknowledgement of duties",
     "ceremony-script": "script of a key ceremony (confidential)",
+    "challenge": "challenge (what custodians are asked; fresh, dated and signed)",
+    "attestation": "attestation (an answer to a challenge; `shares attest check` checks its signatures)",
     "encrypted-file": "encrypted file (of no use without a quorum of its set's shares)",
 }
 UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
@@ -164,6 +168,27 @@ def _ceremony_script(data: bytes, where: str) -> dict[str, object]:
     }
 
 
+def _challenge(data: bytes, where: str) -> dict[str, object]:
+    found = Challenge.parse(data, where=where)
+    return {
+        **found.public("label", "set", "epoch", "record", "purpose", "created", "due"),
+        "custodians": list(found.custodians),
+        "asker": f"{found.card.name}, card {found.card.fingerprint}",
+        "journal": found.journal.words() if found.journal else None,
+        "fingerprint": found.fingerprint,
+    }
+
+
+def _attestation(data: bytes, where: str) -> dict[str, object]:
+    found = Attestation.parse(data, where=where)
+    return {
+        **found.public("set", "epoch", "custodian", "challenge", "time", "grade", "result", "carrier", "opened"),
+        **found.public("place", "serial", "remark"),
+        "signed_by_share": found.share_signature is not None,
+        "signed_by": f"{found.card.name}, card {found.card.fingerprint}" if found.card else None,
+    }
+
+
 def _card_facts(card: PartyCard) -> dict[str, object]:
     return card.public("name", "contact", "created", "fingerprint")
 
@@ -176,6 +201,8 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     PartyKey.KIND: lambda data, where: _card_facts(PartyKey.parse(data, where=where).card),
     Acknowledgement.KIND: _acknowledgement,
     CeremonyScript.KIND: _ceremony_script,
+    Challenge.KIND: _challenge,
+    Attestation.KIND: _attestation,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }
 

@@ -13,8 +13,10 @@ from pathlib import Path
 from typing import Any
 
 from shares.documents.acknowledgement import Acknowledgement
+from shares.documents.attestation import Attestation
 from shares.documents.base import VERSION, Document
 from shares.documents.ceremony_script import CeremonyScript
+from shares.documents.challenge import Challenge
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
@@ -29,6 +31,8 @@ KINDS: tuple[type[Document], ...] = (
     PartyKey,
     PartyCard,
     Acknowledgement,
+    Challenge,
+    Attestation,
     CeremonyScript,
 )
 FOLDER = Path(__file__).with_name("schemas")

@@ -1,7 +1,8 @@
 """What a ceremony's log amounts to: exceptions first, then each step with its entries, and the shares by serial.
 
 Source: ETSI EN 319 411-1, sec. 6.5.1 (what a ceremony's report tells; from a summary, its signature rule from memory);
-CA/Browser Forum TLS Baseline Requirements, sec. 6.1.1.1; published root-zone practice (exceptions); FORMAT.md, sec. 19.
+CA/Browser Forum TLS Baseline Requirements, sec. 6.1.1.1; published root-zone practice (exceptions);
+FORMAT_EVIDENCE.md, sec. 19.
 May import: shares.errors, shares.documents, shares.history, shares.evidence.ceremony, .inventory.
 Secret: nothing. Confidential: persons, and where shares are. Public: nothing.
 Does not: call a ceremony good or bad: it tells what was entered, and what is missing. People judge.

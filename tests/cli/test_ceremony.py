@@ -15,7 +15,6 @@ from cli.harness import NAMES, Place, assert_refused, files_in, run, spawn
 from cli.terminal import on_terminal
 from parties import party
 
-from shares.cli.main import COMMANDS
 from shares.custody.parties import write_party
 from shares.documents.ceremony_script import CeremonyScript
 
@@ -256,13 +255,11 @@ def test_every_command_of_a_script_runs_as_it_is_printed(
         ran([*log, *two], known)
     told = run("ceremony", "report", "tide-archive-root", "--json").json
     assert (told["complete"], told["exceptions"], told["problems"]) == (True, [], [])
-    assert [share["custodian"] for share in told["shares"]] == list(NAMES[:3])
+    assert [(share["custodian"], share["sent"]) for share in told["shares"]] == [(name, "SERIAL") for name in NAMES[:3]]
 
 
 def ran(words: list[str], known: dict[str, str]) -> None:
     """Run a command, with the passphrases that people would type."""
-    if words[0] not in COMMANDS:
-        return
     options: list[Any] = []
     asking = {"acknowledge", "split", "verify", "record"}
     if words[0] in asking or "--sign" in words:

@@ -1,4 +1,4 @@
-"""The digest of the software: worked out a second time from FORMAT.md, section 19, and seen to notice every change."""
+"""The digest of the software: worked out again from FORMAT_EVIDENCE.md, section 19, and seen to notice every change."""
 
 from __future__ import annotations
 

@@ -1,6 +1,6 @@
 """Ceremony scripts: read as they were written, bound to the bytes of their file, signed as the format says.
 
-Checked against: FORMAT.md, section 19, by a script made and signed from its text alone
+Checked against: FORMAT_EVIDENCE.md, section 19, by a script made and signed from its text alone
 (tests/vectors/make/ceremony_v1.py); sha256sum(1) for the digest.
 """
 

@@ -241,9 +241,8 @@ def test_a_journal_that_was_changed_is_said_to_be(folder: Path) -> None:
     log(folder, 2)
     journal = folder / "journal.jsonl"
     journal.write_bytes(journal.read_bytes().replace(b"as it was", b"as we say"))
-    assert report(folder).problems == (
-        "line 2: it does not follow the entry before it: one was changed, removed, added or moved",
-    )
+    [problem] = report(folder).problems
+    assert problem.startswith("line 2: it does not follow ")
 
 
 def expected_of(order: Sequence[int]) -> tuple[list[int], list[int]]:
