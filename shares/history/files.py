@@ -15,6 +15,10 @@ from typing import Protocol
 from shares.errors import StorageError
 from shares.storage import read_file
 
+RECORD_NAME = "record.json"
+POLICY_NAME = "policy.toml"
+PRACTICE_RECORD = "practice/record.json"
+
 
 class Files(Protocol):
     """Where the files of one set can be read."""
