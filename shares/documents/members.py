@@ -107,6 +107,8 @@ def _decode_time(value: object) -> datetime:
 
 
 def _holds_unprintable(text: str) -> bool:
+    if text.isascii():  # Most are, and then the control characters are all that there is to look for.
+        return not text.isprintable()
     return any(unicodedata.category(c) in _UNPRINTABLE or c in _BLANK or _is_noncharacter(c) for c in text)
 
 
