@@ -15,6 +15,7 @@ from typing import Any
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.attestation import Attestation
 from shares.documents.base import VERSION, Document
+from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -32,6 +33,7 @@ KINDS: tuple[type[Document], ...] = (
     Acknowledgement,
     Challenge,
     Attestation,
+    CeremonyScript,
 )
 FOLDER = Path(__file__).with_name("schemas")
 
