@@ -2,7 +2,7 @@
 
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 5.4.1, wants life-cycle events of keys logged with date, person
 and description; the names of events are ours; FORMAT.md, sec. 16.
-May import: shares.sharing.rule, shares.documents.base, .members.
+May import: shares.errors, shares.sharing.rule, shares.documents.base, .members.
 Secret: nothing. Confidential: persons, places and serials. Public: the rest.
 Does not: judge events or follow from one to another; ``evidence`` does.
 """
@@ -12,11 +12,12 @@ from __future__ import annotations
 from typing import Annotated, Literal, TypeAlias, get_args
 
 from pydantic import Field as Member
-from pydantic import model_validator
+from pydantic import ValidationError, model_validator
 from pydantic_core import PydanticCustomError
 
 from shares.documents.base import Document
 from shares.documents.members import Digest, Epoch, Fingerprint, Name, SetId, Text, Time
+from shares.errors import ParameterError
 from shares.sharing.rule import MAX_POINTS
 
 Sequence = Annotated[int, Member(ge=1, le=2**32 - 1)]
@@ -250,12 +251,17 @@ class Resolved(Document):
 
 
 class ScriptStep(Document):
-    """A step of a ceremony was done; bound to the script by its digest."""
+    """A step of a ceremony was done; bound to the script by its digest.
+
+    Attributes:
+        repeats: whether the step had been done before, and was done again on purpose.
+    """
 
     what: Literal["step"]
     script: Digest
     step: Sequence
     initials: Text
+    repeats: bool = False
     remark: Text | None = None
 
 
@@ -283,6 +289,24 @@ class Destroyed(Document):
     by: Text
     witness: Text
     method: Text | None = None
+
+
+class Lost(Document):
+    """A copy of a share cannot be found, and is given up: it was not destroyed, and may turn up with anybody.
+
+    Attributes:
+        copy_: which copy, as in ``Destroyed``.
+        by: who says so.
+        witness: who has heard them, and is not the custodian.
+        reason: how it was lost, and where it was looked for.
+    """
+
+    what: Literal["lost"]
+    custodian: Name
+    copy_: Annotated[Text, Member(alias="copy")]
+    by: Text
+    witness: Text
+    reason: Text
 
 
 class Retired(Document):
@@ -328,8 +352,32 @@ Event: TypeAlias = (
     | ScriptStep
     | Deviation
     | Destroyed
+    | Lost
     | Retired
     | Noted
     | SetAside
 )
 EVENTS: tuple[type[Event], ...] = get_args(Event)
+_BY_WHAT = {get_args(event.model_fields["what"].annotation)[0]: event for event in EVENTS}
+
+
+def make_event(what: str, **members: object) -> Event:
+    """Return an event of what somebody has entered.
+
+    Args:
+        what: which event, like ``delivered``.
+        members: of it, by the names that they have in the document, like ``copy``.
+
+    Raises:
+        ParameterError: there is no such event, or a member is missing, unknown or not as the format says.
+    """
+    event = _BY_WHAT.get(what)
+    if event is None:
+        raise ParameterError(f"there is no event {what!a}", hint=f"one of {', '.join(_BY_WHAT)}")
+    try:
+        return event.model_validate(members | {"what": what})
+    except ValidationError as error:
+        details = error.errors(include_input=False, include_context=False, include_url=False)[0]
+    member = ".".join(str(part) for part in details["loc"]) or "it"
+    said = "is missing" if details["type"] == "missing" else f"is not as it should be: {details['msg']}"
+    raise ParameterError(f"{member} {said}", where=what)

@@ -107,6 +107,8 @@ def _decode_time(value: object) -> datetime:
 
 
 def _holds_unprintable(text: str) -> bool:
+    if text.isascii():  # Most are, and then the control characters are all that there is to look for.
+        return not text.isprintable()
     return any(unicodedata.category(c) in _UNPRINTABLE or c in _BLANK or _is_noncharacter(c) for c in text)
 
 
@@ -157,16 +159,20 @@ def _valid_name(name: str) -> str:
     return name
 
 
-def check_text(text: str) -> str:
-    """Return a label or notice if it may be one: 1 to 500 characters, nothing unprintable.
+def check_text(text: str, what: str = "a label") -> str:
+    """Return a label, notice or other text if it may be one: 1 to 500 characters, nothing unprintable.
+
+    Args:
+        text: the text.
+        what: what it is, for the refusal.
 
     Raises:
         ParameterError: which rule it breaks.
     """
     if not 1 <= len(text) <= MAX_TEXT:
-        raise ParameterError("a label has 1 to 500 characters")
+        raise ParameterError(f"{what} has 1 to {MAX_TEXT} characters")
     if _holds_unprintable(text) or _holds_unassigned(text):
-        raise ParameterError("a label must not hold control or invisible characters")
+        raise ParameterError(f"{what} must not hold control or invisible characters")
     return text
 
 

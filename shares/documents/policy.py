@@ -45,11 +45,30 @@ def _duration(value: object) -> timedelta:
     return int(form[1]) * UNITS[form[2]]
 
 
-def _interval(value: object) -> timedelta:
-    form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", value) if isinstance(value, str) else None
+def parse_interval(text: str) -> timedelta:
+    """Return an interval as policies write it.
+
+    Args:
+        text: a number from 1 to 9999, and ``d``, ``w`` or ``y`` for 1, 7 or 365 days.
+
+    Raises:
+        ParameterError: it is not written so.
+
+    >>> parse_interval("2w").days
+    14
+    """
+    form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", text)
     if form is None:
-        raise PydanticCustomError("shares_interval", 'should be an interval like "90d", "26w" or "1y"')
+        raise ParameterError('should be an interval like "90d", "26w" or "1y"')
     return timedelta(days=int(form[1]) * DAYS[form[2]])
+
+
+def _interval(value: object) -> timedelta:
+    try:
+        return parse_interval(value if isinstance(value, str) else "")
+    except ParameterError as error:
+        reason = error.what
+    raise PydanticCustomError("shares_interval", "{reason}", {"reason": reason})
 
 
 def _custodian_name(name: str) -> str:

@@ -175,12 +175,13 @@ class Known:
         who: a person, or ``somebody unknown``, or the dealer, or the machine of a recovery.
         kind: which of these.
         epoch: of the shares.
-        shares: custodians whose shares they held, saw, or can work out from those.
+        shares: custodians whose shares, or a part of them, they held, saw, or can work out from those.
         recoveries: entries of the recoveries, real or in drills, at which they were present.
         how: each way by which, in words, with the number of the entry.
-        suffices: whether what they held and saw, recoveries apart, makes a quorum by itself.
-        missing: the fewest more custodians whose shares they would need, recoveries apart; None where it cannot be
-            told: the rule of an earlier epoch is not in this record.
+        suffices: whether what they held and saw, recoveries apart, makes a quorum by itself; like the next two, None
+            where it cannot be told: the rule of an earlier epoch is not in this record.
+        missing: the fewest more custodians whose shares they would need, recoveries apart.
+        recovered: whether it makes a quorum together with what was recovered in their presence.
         left: since when they are gone.
     """
 
@@ -190,8 +191,9 @@ class Known:
     shares: tuple[str, ...]
     recoveries: tuple[int, ...]
     how: tuple[str, ...]
-    suffices: bool
+    suffices: bool | None
     missing: Bounds | None
+    recovered: bool | None
     left: datetime | None = None
 
 

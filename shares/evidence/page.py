@@ -43,6 +43,7 @@ CAUTIONS: Final = (
     "Whether this meets a law, standard or contract is for a professional to judge.",
 )
 """The limits of an audit, at the place where somebody relies on it."""
+_AT_ONCE: Final = {"dealer": "had all of it at the split", "machine": "had all of it at the recovery"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,15 +105,16 @@ def minute(time: datetime) -> str:
 
 
 def knows(known: Known) -> str:
-    """Say how near to a quorum somebody has come, by what they held and saw.
+    """Say how near to a quorum somebody has come.
 
     >>> from shares.planning.structure import Bounds
-    >>> knows(Known("R. Quay", "person", 1, ("north-pier",), (), (), suffices=False, missing=Bounds(2, 2)))
+    >>> knows(Known("A. Keel", "person", 1, ("north-pier",), (), (), False, Bounds(2, 2), False))
     'at least 2 more are needed'
     """
     if known.suffices:
-        at_once = {"dealer": "had all of it at the split", "machine": "had all of it at the recovery"}
-        return at_once.get(known.kind, "makes a quorum alone")
+        return _AT_ONCE.get(known.kind, "makes a quorum alone")
+    if known.recovered:
+        return "makes a quorum with what was recovered in their presence"
     if known.missing is None:
         return "cannot be told: the rule of that epoch is not in this record"
     return f"at least {known.missing.low:,} more {'is' if known.missing.low == 1 else 'are'} needed"

@@ -1,19 +1,21 @@
 """The files of a set, wherever they lie: in its folder, or in a pack made for an auditor.
 
 Source: none.
-May import: shares.errors, shares.storage.
-Secret: nothing. Confidential: policy, journal and evidence.
+May import: shares.errors, shares.storage, shares.streams.
+Secret: nothing. Confidential: policy, journal and evidence. Public: names, and the record.
 Does not: know what a file means. Names are relative and lead nowhere else.
 """
 
 from __future__ import annotations
 
 import os
+import stat
 from pathlib import Path
 from typing import Protocol
 
 from shares.errors import StorageError
 from shares.storage import read_file
+from shares.streams import refusing
 
 RECORD_NAME = "record.json"
 POLICY_NAME = "policy.toml"
@@ -50,23 +52,49 @@ class FolderFiles:
         return os.fspath(self.folder)
 
     def names(self) -> list[str]:
-        """Return the names of all regular files below the folder, sorted; those that a killed run left are not."""
+        """Return the names of all regular files below the folder, sorted; those that a killed run left are not.
+
+        Raises:
+            StorageError: a folder cannot be read.
+        """
         found = []
-        for folder, _, files in os.walk(self.folder):
-            found += [os.path.relpath(os.path.join(folder, name), self.folder) for name in files if name[0] != "."]
-        return sorted(found)
+        with refusing(self.where):
+            for folder, folders, files in os.walk(self.folder, onerror=_refused):
+                folders[:] = [name for name in folders if not name.startswith(".")]
+                paths = (os.path.join(folder, name) for name in files if not name.startswith("."))
+                found += [os.path.relpath(path, self.folder) for path in paths if _is_regular(path)]
+        return sorted(name for name in found if is_name_in_set(name))
 
     def read(self, name: str, *, limit: int) -> bytes:
-        """Return what a file holds."""
-        check_name_in_set(name)
+        """Return what a file holds.
+
+        Raises:
+            StorageError: its name leads elsewhere, a folder on the way is a link, or as for ``Files``.
+        """
+        if not is_name_in_set(name):
+            raise StorageError("is no name of a file in a set's folder", where=ascii(name))
+        for above in Path(name).parents:
+            if os.path.islink(self.folder / above) and above != Path():
+                raise StorageError("is a symbolic link", where=os.fspath(self.folder / above))
         return read_file(self.folder / name, limit=limit)
 
 
-def check_name_in_set(name: str) -> None:
-    """Refuse the name of a file that would lead out of the set's folder.
+def _refused(error: OSError) -> None:
+    raise error
 
-    Raises:
-        StorageError: it is absolute, or has a part that is empty or begins with a dot.
+
+def _is_regular(path: str) -> bool:
+    return stat.S_ISREG(os.lstat(path).st_mode)
+
+
+def is_name_in_set(name: str) -> bool:
+    """Say whether a file may have this name: it does not lead out of the set's folder, nor to what a killed run left.
+
+    Args:
+        name: with ``/`` between its parts.
+
+    >>> [name for name in ("drills/57/report.json", "../policy.toml", "/etc/motd", "a//b") if is_name_in_set(name)]
+    ['drills/57/report.json']
     """
-    if any(not part or part.startswith(".") for part in name.split("/")) or "\\" in name or "\0" in name:
-        raise StorageError("is no name of a file in a set's folder", where=repr(name))
+    bad = ("\\" in name, "\0" in name, any(not part or part.startswith(".") for part in name.split("/")))
+    return not any(bad)

@@ -8,7 +8,6 @@ Does not: forgive: a record or policy that is not what it should be is refused. 
 
 from __future__ import annotations
 
-import hashlib
 import itertools
 import os
 from collections.abc import Sequence
@@ -22,7 +21,7 @@ from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
-from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME
+from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, is_name_in_set
 from shares.history.journal import Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 
@@ -67,7 +66,7 @@ class SetFolder:
             StorageError: it cannot be read, or is larger than 1 MiB.
         """
         data = read_file(self.path / name, limit=MAX_FILE)
-        return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+        return NamedDigest.of(name, data)
 
     def practice_record(self) -> Record:
         """Read the record of the practice set that was dealt with this one.
@@ -88,11 +87,15 @@ class SetFolder:
         """Write a new file into the folder, mode 0600, and return it as an entry names it.
 
         Raises:
+            ParameterError: it is no name for a file in a set's folder.
             StorageError: the name is taken, or the medium refuses.
         """
+        if not is_name_in_set(name):
+            raise ParameterError("is no name for a file in a set's folder", where=ascii(name))
+        named = NamedDigest.of(name, data)
         make_folder((self.path / name).parent)
         write_new(self.path / name, data, secret=True)
-        return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+        return named
 
     def append(
         self,
@@ -119,7 +122,7 @@ class SetFolder:
             ParameterError: fewer sign.
         """
         if self.policy is not None and self.policy.dual_control:
-            signing = {key.card.fingerprint for key in keys}
+            signing = {key.card.ed25519 for key in keys}
             if len(signing) < 2:
                 raise ParameterError(
                     f"the policy asks for dual control: two parties sign each entry, and {len(signing)} would",

@@ -1,34 +1,52 @@
 """The journal of a set: lines that are only ever added, each chained to the one before it and signed.
 
 Source: S. Haber, W. S. Stornetta, "How to time-stamp a digital document", J. Cryptology 3, 1991 (linking by hashes);
-flock(2) and fsync(2) of the Linux manual pages; FORMAT.md, sec. 16.
+FORMAT.md, sec. 16.
 May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history.lines.
 Secret: the party keys that sign, passed through. Confidential: the entries. Public: their digests.
-Does not: say what events mean, or which must be there; ``evidence`` does.
+Does not: say what events mean, or which must be there; ``evidence`` does. What entries say of the set and of its other
+files, ``history.verify`` checks.
 """
 
 from __future__ import annotations
 
+import base64
 import hashlib
 import os
-from collections.abc import Callable, Sequence
+import re
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from datetime import datetime
 from pathlib import Path
+from typing import Literal, TypeAlias
 
 from shares import clock
 from shares.documents.base import MAX_FILE
-from shares.documents.entry import Entry, EntrySignature, Head, NamedDigest, head_of, line_digest
+from shares.documents.entry import (
+    MAX_ENTRY_SIGNATURES,
+    Entry,
+    EntrySignature,
+    Head,
+    NamedDigest,
+    head_of,
+    line_digest,
+)
 from shares.documents.event import Event, SetAside
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.signing import is_signed
-from shares.errors import DocumentError, StorageError
-from shares.history.lines import appended
+from shares.errors import DocumentError, ParameterError, StorageError
+from shares.history.lines import Lines, wait_for_writers, writing
 from shares.storage import read_file, write_new
 
 JOURNAL_NAME = "journal.jsonl"
 MAX_JOURNAL = 1 << 30
 """The largest journal, in bytes: 1 GiB."""
+_TORN_NAME = "journal.torn-"
+_TORN = re.compile(r"journal\.torn-[0-9a-f]{16}")
+
+ProblemKind: TypeAlias = Literal[
+    "entry", "sequence", "chain", "signature", "time", "torn", "set-aside", "record", "missing", "altered", "renamed",
+    "control", "trust", "head",
+]  # fmt: skip
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,14 +54,16 @@ class Problem:
     """Something wrong with a journal, and where.
 
     Attributes:
-        line: the line, from 1.
+        line: the line, from 1; in an unbroken journal that is the entry's number. 0 for the journal as a whole.
         what: what is wrong with it, in words.
-        breaks: whether the journal can no longer be believed from here on; else it is worth knowing and no more.
+        breaks: whether the journal, or what it names, can no longer be believed; else it is worth knowing and no more.
+        kind: what sort of thing it is, for programs.
     """
 
     line: int
     what: str
     breaks: bool = True
+    kind: ProblemKind = "entry"
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -53,7 +73,7 @@ class Journal:
     Attributes:
         entries: the entries that can be read, in order.
         digests: of each of them, 32 bytes: what the next one names.
-        cards: the party cards that entries have introduced, by fingerprint.
+        cards: the party cards that entries have introduced, by fingerprint. A card's name is what its maker wrote.
         problems: what is wrong with chain, sequence, time and signatures.
         torn: what a stopped run left after the last whole line.
     """
@@ -63,6 +83,8 @@ class Journal:
     cards: dict[str, PartyCard] = field(default_factory=dict)
     problems: tuple[Problem, ...] = ()
     torn: bytes = b""
+    _standing: dict[bytes, int] = field(default_factory=dict, repr=False)
+    _unproved: frozenset[tuple[int, EntrySignature]] = field(default=frozenset(), repr=False)
 
     @property
     def head(self) -> Head | None:
@@ -71,14 +93,15 @@ class Journal:
 
     def holds(self, head: Head) -> bool:
         """Say whether the journal once stood at ``head``: a journal that lost its tail, or was rewritten, did not."""
-        return any(
-            entry.sequence == head.sequence and head_of(entry.sequence, digest) == head
-            for entry, digest in zip(self.entries, self.digests, strict=True)
-        )
+        return self._standing.get(base64.b32decode(head.head.replace("-", ""))) == head.sequence
 
     def signers(self, entry: Entry) -> list[PartyCard]:
-        """The parties that signed an entry of this journal; those whose signature does not fit are in ``problems``."""
-        return [self.cards[one.card] for one in entry.signatures if one.card in self.cards]
+        """The parties that signed an entry of this journal, those left out whose signature does not fit."""
+        return [
+            self.cards[one.card]
+            for one in entry.signatures
+            if one.card in self.cards and (entry.sequence, one) not in self._unproved
+        ]
 
 
 def read_journal(data: bytes, *, progress: Callable[[int, int | None], None] | None = None) -> Journal:
@@ -95,10 +118,18 @@ def read_journal(data: bytes, *, progress: Callable[[int, int | None], None] | N
             progress(i, len(lines))
         reader.read(i + 1, line)
     if torn:
-        reader.problems.append(
-            Problem(len(lines) + 1, "it is no whole line: a run was stopped while it wrote", breaks=False)
-        )
-    return Journal(tuple(reader.entries), tuple(reader.digests), reader.cards, tuple(reader.problems), torn)
+        what = "it is no whole line: a run was stopped while it wrote, and the next entry sets it aside"
+        reader.report(len(lines) + 1, "torn", what, breaks=False)
+    standing = {digest[:20]: entry.sequence for entry, digest in zip(reader.entries, reader.digests, strict=True)}
+    return Journal(
+        tuple(reader.entries),
+        tuple(reader.digests),
+        reader.cards,
+        tuple(reader.problems),
+        torn,
+        standing,
+        frozenset(reader.unproved),
+    )
 
 
 class _Reader:
@@ -107,56 +138,78 @@ class _Reader:
         self.digests: list[bytes] = []
         self.cards: dict[str, PartyCard] = {}
         self.problems: list[Problem] = []
+        self.unproved: set[tuple[int, EntrySignature]] = set()
+        # Of the line before. One that cannot be read counts as the entry that should stand there, so that the lines
+        # after it are not blamed for more than that they follow something else.
+        self.number = 0
+        self.digest: bytes | None = None
+
+    def report(self, line: int, kind: ProblemKind, what: str, *, breaks: bool = True) -> None:
+        self.problems.append(Problem(line, what, breaks, kind))
 
     def read(self, number: int, line: bytes) -> None:
+        wanted, before, self.digest = self.number + 1, self.digest, line_digest(line)
+        self.number = wanted
         try:
-            entry = Entry.parse(line)
+            entry = Entry.of_line(line)
         except DocumentError as error:
-            self.problems.append(Problem(number, f"it is no entry: {error.what}"))
+            self.report(number, "entry", f"it is no entry: {error.what}")
             return
-        digest = line_digest(line)
-        self.problems += (Problem(number, what) for what in self._broken(entry, line))
+        self.number = entry.sequence
+        if entry.sequence != wanted:
+            self.report(number, "sequence", f"it says that it is entry {entry.sequence}, and entry {wanted} is due")
+        if entry.previous != before:
+            what = "it does not follow the line before it: one was changed, removed, added or moved"
+            self.report(number, "chain", what)
         if self.entries and entry.time < self.entries[-1].time:
             then = clock.to_text(self.entries[-1].time)
             what = f"its time, {clock.to_text(entry.time)}, lies before that of the entry before it, {then}"
-            self.problems.append(Problem(number, what, breaks=False))
-        self.entries.append(entry)
-        self.digests.append(digest)
-
-    def _broken(self, entry: Entry, line: bytes) -> list[str]:
-        broken = []
-        if entry.line() != line:
-            broken.append("it is not in canonical form")
-        before = self.entries[-1] if self.entries else None
-        if entry.sequence != (before.sequence + 1 if before else 1):
-            broken.append(f"it says that it is entry {entry.sequence}, after {before.sequence if before else 'none'}")
-        if entry.previous != (self.digests[-1] if self.digests else None):
-            broken.append("it does not follow the entry before it: one was changed, removed, added or moved")
+            self.report(number, "time", what, breaks=False)
         for card in entry.cards:
             self.cards.setdefault(card.fingerprint, card)
+        self._check_signatures(number, entry, line)
+        self.entries.append(entry)
+        self.digests.append(self.digest)
+
+    def _check_signatures(self, number: int, entry: Entry, line: bytes) -> None:
+        unsigned = entry.unsigned_text(line)
+        keys = set()
         for one in entry.signatures:
-            broken += self._signature_problem(entry, one)
-        if len({one.card for one in entry.signatures}) != len(entry.signatures):
-            broken.append("one party signed it twice")
-        return broken
+            card = self.cards.get(one.card)
+            if card is None:
+                what = f"it is signed by the card {one.card}, which no entry has introduced"
+            elif not entry.is_signed(one, card, unsigned):
+                what = f"the signature by {card.name} does not fit its content"
+                self.unproved.add((entry.sequence, one))
+            elif card.ed25519 in keys:
+                # Two cards with one signing key are one party.
+                what = f"one party signed it twice, the second time as {card.name}"
+                self.unproved.add((entry.sequence, one))
+            else:
+                keys.add(card.ed25519)
+                continue
+            self.report(number, "signature", what)
 
-    def _signature_problem(self, entry: Entry, one: EntrySignature) -> list[str]:
-        card = self.cards.get(one.card)
-        if card is None:
-            return [f"it is signed by the card {one.card}, which no entry has introduced"]
-        if not is_signed(card.ed25519, one.signature, entry.KIND, entry.signed_members(one.card)):
-            return [f"the signature by {card.name} does not fit its content"]
-        return []
 
-
-def load_journal(folder: Path) -> Journal:
+def load_journal(folder: Path, *, progress: Callable[[int, int | None], None] | None = None) -> Journal:
     """Read the journal of a set's folder; a missing one is empty.
+
+    Args:
+        folder: the set's.
+        progress: as for ``read_journal``.
 
     Raises:
         StorageError: it cannot be read.
     """
     path = folder / JOURNAL_NAME
-    return read_journal(read_file(path, limit=MAX_JOURNAL)) if os.path.lexists(path) else Journal()
+    if not os.path.lexists(path):
+        return Journal()
+    data = read_file(path, limit=MAX_JOURNAL)
+    if data and not data.endswith(b"\n"):
+        # Another process may be writing this line just now: it is waited for, and only what is then torn is torn.
+        wait_for_writers(path)
+        data = read_file(path, limit=MAX_JOURNAL)
+    return read_journal(data, progress=progress)
 
 
 def first_line(
@@ -171,12 +224,17 @@ def first_line(
 
     Args:
         event: what happened.
-        keys: of the parties that sign.
+        keys: of the parties that sign, at most 8; their cards are introduced.
         cards: of other parties, to be introduced.
         documents: what the event speaks of.
-        time: of the entry; now by default.
+        time: of the entry, UTC to the second; now by default.
+
+    Raises:
+        ParameterError: too many keys, one party's key twice, or a time that is none.
+        StorageError: the entry would be larger than 1 MiB.
     """
-    return _made(event, b"", keys, cards, documents, time).line() + b"\n"
+    cards = _distinct((*(key.card for key in keys), *cards))
+    return _made(event, 1, None, keys, cards, documents, time).line() + b"\n"
 
 
 def append(
@@ -195,64 +253,85 @@ def append(
     Args:
         folder: the set's.
         event: what happened.
-        keys: of the parties that sign; their cards are introduced where they are not yet.
+        keys: of the parties that sign, at most 8; their cards are introduced where they are not yet.
         cards: of other parties, to be introduced likewise.
         documents: what the event speaks of.
-        time: of the entry; now by default.
+        time: of the entry, UTC to the second; now by default.
 
     Returns:
         The entry, as it stands in the journal.
 
     Raises:
-        StorageError: the journal cannot be written, or its last line is no entry.
+        ParameterError: too many keys, one party's key twice, or a time that is none.
+        StorageError: the journal cannot be written, its last line is no entry, or the entry would be larger than 1 MiB.
     """
-    made: list[Entry] = []
+    needed = _distinct((*(key.card for key in keys), *cards))
+    with writing(folder / JOURNAL_NAME) as lines:
 
-    def line_after(before: bytes) -> bytes:
-        made[:] = [_made(event, before, keys, cards, documents, time)]
-        return made[0].line()
+        def add(event: Event, needed: Iterable[PartyCard], documents: Sequence[NamedDigest]) -> Entry:
+            sequence, previous = _last(lines, folder)
+            # Only a card has a member of this name, so that searching the text tells whether one was introduced.
+            new = [card for card in needed if not lines.holds(f'"fingerprint":"{card.fingerprint}"'.encode())]
+            entry = _made(event, sequence + 1, previous, keys, new, documents, time)
+            lines.add(entry.line())
+            return entry
 
-    def torn_line_after(before: bytes, torn: bytes) -> bytes:
-        return _set_aside(folder, before, torn, keys, time).line()
+        _last(lines, folder)
+        if lines.torn:
+            _keep(folder, lines.torn)
+            lines.cut()
+        for name in unnamed(os.listdir(folder), lambda name: lines.holds(f'"path":"{name}"'.encode())):
+            data = read_file(folder / name, limit=MAX_FILE)
+            remark = f"{len(data):,} bytes of a line that a stopped run did not finish"
+            add(SetAside(what="set-aside", remark=remark), (key.card for key in keys), (NamedDigest.of(name, data),))
+        return add(event, needed, documents)
 
-    appended(folder / JOURNAL_NAME, line_after, torn_line_after)
-    return made[0]
+
+def _distinct(cards: Iterable[PartyCard]) -> list[PartyCard]:
+    return list({card.fingerprint: card for card in cards}.values())
+
+
+def _last(lines: Lines, folder: Path) -> tuple[int, bytes | None]:
+    """Return number and digest of the last entry; 0 and None before the first."""
+    if not lines.end:
+        return 0, None
+    try:
+        return Entry.of_line(lines.last).sequence, line_digest(lines.last)
+    except DocumentError as error:
+        problem = error.what
+    raise StorageError(
+        f"its last line is no entry: {problem}",
+        where=os.fspath(folder / JOURNAL_NAME),
+        hint="nothing was added; bring back a copy of the journal, or where there is none keep this file under another "
+        "name: a new journal then begins, and audits say that the old one broke",
+    )
 
 
 def _made(
     event: Event,
-    before: bytes,
+    sequence: int,
+    previous: bytes | None,
     keys: Sequence[OpenPartyKey],
     cards: Sequence[PartyCard],
     documents: Sequence[NamedDigest],
     time: datetime | None,
 ) -> Entry:
-    """Return the signed entry that follows what a journal holds."""
-    last = before.rstrip(b"\n").rpartition(b"\n")[2]
-    sequence, previous, problem = 0, None, ""
-    if last:
-        try:
-            sequence, previous = Entry.parse(last).sequence, line_digest(last)
-        except DocumentError as error:
-            problem = error.what
-        if problem:
-            raise StorageError(
-                f"the last line of the journal is no entry: {problem}",
-                where=JOURNAL_NAME,
-                hint="`shares journal verify` says what is wrong; nothing was added",
-            )
-    needed = {card.fingerprint: card for card in (*(key.card for key in keys), *cards)}
-    # Only a card has a member of this name, so that searching the text tells whether one was introduced.
-    new = tuple(card for card in needed.values() if f'"fingerprint":"{card.fingerprint}"'.encode() not in before)
+    """Return a signed entry."""
+    if len(keys) > MAX_ENTRY_SIGNATURES:
+        raise ParameterError(f"an entry has at most {MAX_ENTRY_SIGNATURES} signatures")
+    if len({key.card.ed25519 for key in keys}) != len(keys):
+        raise ParameterError("one party's key is given twice to sign an entry", hint="give each key once")
+    time = clock.now() if time is None else time
+    clock.to_text(time)
     entry = Entry(
         kind="journal-entry",
         version=1,
-        sequence=sequence + 1,
-        time=clock.now() if time is None else time,
+        sequence=sequence,
+        time=time,
         previous=previous,
         event=event,
         documents=tuple(documents),
-        cards=new,
+        cards=tuple(cards),
         signatures=(),
     )
     for key in keys:
@@ -262,11 +341,18 @@ def _made(
     return entry
 
 
-def _set_aside(folder: Path, before: bytes, torn: bytes, keys: Sequence[OpenPartyKey], time: datetime | None) -> Entry:
-    """Move a torn last line to a file of its own, and return the entry that says so."""
-    digest = hashlib.sha256(torn).digest()
-    name = f"journal.torn-{digest.hex()[:16]}"
-    if not os.path.lexists(folder / name):
-        write_new(folder / name, torn, secret=True)
-    event = SetAside(what="set-aside", remark=f"{len(torn):,} bytes of a line that a stopped run did not finish")
-    return _made(event, before, keys, (), (NamedDigest(path=name, digest=digest),), time)
+def _keep(folder: Path, torn: bytes) -> None:
+    """Write a torn line to a file of its own, unless a run that was stopped later has done so already."""
+    path = folder / f"{_TORN_NAME}{hashlib.sha256(torn).hexdigest()[:16]}"
+    if not os.path.lexists(path) or read_file(path, limit=MAX_FILE) != torn:
+        write_new(path, torn, secret=True)
+
+
+def unnamed(names: Iterable[str], holds: Callable[[str], bool]) -> list[str]:
+    """Return the files of torn lines that no entry names: a run was stopped before it wrote that entry.
+
+    Args:
+        names: of the files in the set's folder.
+        holds: says whether an entry names a file.
+    """
+    return [name for name in sorted(names) if _TORN.fullmatch(name) and not holds(name)]

@@ -18,6 +18,7 @@ from vectors.make import wrapping_v1 as by_hand
 
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import Document
+from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
@@ -39,6 +40,7 @@ def samples() -> dict[str, Any]:
     with unlocked(NAME) as key:
         signed = DEALT.record.signed(key, "dealer", time=CREATED)
         accepted = Acknowledgement.signed_by(key, custodian=NAME, label="Tide archive", time=CREATED)
+        script = ceremony_script().signed(key, time=CREATED)
     secret = SealedSecret.seal(
         Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive", secret_commitment=bytes(32)
     )
@@ -52,8 +54,29 @@ def samples() -> dict[str, Any]:
         "party-key": party(NAME),
         "party-card": card(NAME),
         "acknowledgement": accepted,
+        "ceremony-script": script,
     }
     return {name: json.loads(document.to_file()) for name, document in made.items()}
+
+
+def ceremony_script() -> CeremonyScript:
+    """A script of one step."""
+    step = CeremonyStep(part="Dealing", role="dealer", what="Split.", command="ls", expected="Done.", note=None)
+    return CeremonyScript(
+        kind="ceremony-script",
+        version=1,
+        created=CREATED,
+        label="Tide archive",
+        policy=bytes(32),
+        rule="any 2 of 3",
+        software=Software(version="0.1.0", digest=bytes(32)),
+        dual_control=False,
+        planned=None,
+        standby="the day after",
+        roles=(CeremonyRole(role="dealer", duty="Works at the machine.", person=None),),
+        steps=(step,),
+        signatures=(),
+    )
 
 
 SAMPLES = samples()
@@ -232,6 +255,19 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         }.items()
     }
     | {"65 signatures": {"signatures": SAMPLES["signed record"]["signatures"] * 65}},
+    "ceremony-script": {
+        **some(*COMMON, *LABEL),
+        "policy too short": {"policy": "00" * 31},
+        "software without a digest": {"software": {"version": "0.1.0"}},
+        "dual control as a number": {"dual_control": 1},
+        "no roles": {"roles": []},
+        "no steps": {"steps": []},
+        "a step without a number of members": {"steps": [{"what": "Split."}]},
+        "a step with a number": {"steps": [{**SAMPLES["ceremony-script"]["steps"][0], "number": 1}]},
+        "a role of nobody": {"roles": [{"role": "dealer", "duty": "x"}]},
+        "a short signature": {"signatures": [{**SAMPLES["ceremony-script"]["signatures"][0], "signature": "A" * 85}]},
+        "nine signatures": {"signatures": SAMPLES["ceremony-script"]["signatures"] * 9},
+    },
 }
 CASES = [(sample, name, change) for sample, changes in PER_SAMPLE.items() for name, change in changes.items()]
 

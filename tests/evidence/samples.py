@@ -93,13 +93,14 @@ def a_year() -> Audit:
             MarginSince(on(6, 8), -1, -1), MarginSince(on(9, 3), 0, 1), MarginSince(on(9, 9), -1, -1),
         ),
         exposure=(
-            Known("A. Keel", "person", 1, ("north-pier",), (), ("dealt to them (entry 1)",), False, Bounds(2, 2)),
+            Known("A. Keel", "person", 1, ("north-pier",), (), ("dealt to them (entry 1)",), False, Bounds(2, 2), False),
             Known("E. Hull", "person", 1, ("dry-dock", "light-house", "registrar"), (46,),
-                  ("dealt to them (entry 1)", "typed in (entry 20)", "handed on (entry 21)"), True, Bounds(0, 0),
+                  ("dealt to them (entry 1)", "typed in (entry 20)", "handed on (entry 21)"), True, Bounds(0, 0), True,
                   on(11, 10)),
             Known("the dealer", "dealer", 1, ("north-pier", "south-pier", "light-house", "registrar", "dry-dock"), (),
-                  ("ran the split (entry 1)",), True, Bounds(0, 0)),
-            Known("B. Mast", "person", 0, ("south-pier",), (), ("an earlier epoch",), False, None),
+                  ("ran the split (entry 1)",), True, Bounds(0, 0), True),
+            Known("the machines of recoveries", "machine", 1, (), (46,), ("drill 46 (entry 47)",), False, EXACT, True),
+            Known("B. Mast", "person", 0, ("south-pier",), (), ("an earlier epoch",), None, None, None),
         ),
         drills=(
             DrillRow(20, "practice", "all custodians, with practice shares", on(4, 20), on(4, 20), True, 14_400, 2_500,
