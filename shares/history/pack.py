@@ -17,7 +17,7 @@ from typing import Final
 
 from shares.documents.base import MAX_FILE, parse_object
 from shares.errors import DocumentError, StorageError
-from shares.history.files import POLICY_NAME, RECORD_NAME, Files, check_name_in_set
+from shares.history.files import POLICY_NAME, RECORD_NAME, Files
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL
 from shares.history.tar import END, MAX_MEMBERS, MAX_NAME, content, header, index, padding
 from shares.storage import StrPath
@@ -136,7 +136,7 @@ def write_pack(files: Files, to: StrPath) -> Packed:
 
 def _belongs(name: str) -> bool:
     first, _, rest = name.partition("/")
-    return first in _FOLDERS and "/." not in name if rest else name in _NAMES or _TORN.fullmatch(name) is not None
+    return first in _FOLDERS if rest else name in _NAMES or _TORN.fullmatch(name) is not None
 
 
 def _limit(name: str) -> int:
@@ -144,7 +144,6 @@ def _limit(name: str) -> int:
 
 
 def _refuse_name(name: str, where: str) -> None:
-    check_name_in_set(name)
     try:
         length = len(name.encode("utf-8"))
     except UnicodeEncodeError:

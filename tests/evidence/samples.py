@@ -93,7 +93,8 @@ def a_year() -> Audit:
             MarginSince(on(6, 8), -1, -1), MarginSince(on(9, 3), 0, 1), MarginSince(on(9, 9), -1, -1),
         ),
         exposure=(
-            Known("A. Keel", "person", 1, ("north-pier",), (), ("dealt to them (entry 1)",), False, Bounds(2, 2), False),
+            Known("A. Keel", "person", 1, ("north-pier",), (), ("dealt to them (entry 1)",), False, Bounds(2, 2),
+                  False),
             Known("E. Hull", "person", 1, ("dry-dock", "light-house", "registrar"), (46,),
                   ("dealt to them (entry 1)", "typed in (entry 20)", "handed on (entry 21)"), True, Bounds(0, 0), True,
                   on(11, 10)),
