@@ -23,7 +23,8 @@ from shares.documents.event import Deviation, Event, ScriptStep
 from shares.documents.members import check_text
 from shares.documents.party import OpenPartyKey
 from shares.errors import ParameterError, StorageError, VerificationError
-from shares.history.folder import RECORD_NAME, SetFolder
+from shares.history.files import RECORD_NAME
+from shares.history.folder import SetFolder
 from shares.history.journal import JOURNAL_NAME, Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 

@@ -26,6 +26,7 @@ from shares.documents.event import (
     DrillOpened,
     HandedOn,
     Incident,
+    Lost,
     Recovered,
     Rehearsed,
     Transcribed,
@@ -173,6 +174,9 @@ def exposure(life: Life) -> tuple[Known, ...]:
             case Incident(exposed=True) if number not in withdrawn:
                 what = f"may know the shares of {', '.join(event.custodians)} by the incident of entry {number}"
                 ledger.add_people(event.persons, event.custodians, what)
+            case Lost():
+                what = f"may have found the lost copy of {event.custodian}, entry {number}"
+                ledger.add_people((), [event.custodian], what)
             case Rehearsed() if kinds.get(event.drill, "recovery") == "recovery":
                 ledger.add_recovery(number, event.persons, event.custodians, "a recovery drill")
             case Recovered():

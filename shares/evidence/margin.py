@@ -4,8 +4,7 @@ Silence is not consent: whoever has not proven their share counts as lost.
 
 Source: J. Benaloh, J. Leichter 1988 (threshold trees); trade practice: count what is confirmed, not what was dealt (the
 "live margin"). Exact where nobody stands in two branches of the rule, and up to 24 who do; else bounds that say so.
-May import: shares.planning.labels, shares.planning.part, shares.planning.structure,
-shares.evidence.audited, .life, .standing.
+May import: shares.documents.policy, shares.planning, shares.sharing.rule, shares.evidence.audited, .life, .standing.
 Secret: nothing. Confidential: people and sites. Public: the rule.
 Does not: say how likely a loss is, or who is confirmed; ``standing`` does.
 """
@@ -16,7 +15,8 @@ from collections.abc import Collection, Mapping, Sequence
 from datetime import datetime
 from functools import lru_cache
 
-from shares.evidence.audited import Margin, MarginSince
+from shares.documents.policy import folded
+from shares.evidence.audited import CustodianRow, Margin, MarginSince
 from shares.evidence.life import Life
 from shares.evidence.standing import Span
 from shares.planning.part import still_needed, without
@@ -73,17 +73,25 @@ def margin_of(
     return Bounds(block.low - 1, block.high - 1)
 
 
-def margin(life: Life, confirmed: Collection[str]) -> Margin:
-    """Return the margin at the time of the audit."""
+def margin(life: Life, rows: Sequence[CustodianRow]) -> Margin:
+    """Return the margin at the time of the audit.
+
+    Args:
+        life: of the set, up to that time.
+        rows: how the custodians stand.
+    """
+    confirmed = {row.name for row in rows if row.counts}
     paths = life.rule.paths()
     needed = still_needed(life.rule, {path for name in confirmed for path in paths[name]})
+    people = {row.name: folded(row.person) for row in rows}
+    sites = {row.name: folded(row.site) for row in rows if row.site is not None}
     return Margin(
         confirmed=len(confirmed),
-        total=len(life.names),
+        total=len(rows),
         custodians=margin_of(life.rule, confirmed),
-        people=margin_of(life.rule, confirmed, life.people) if life.policy else None,
-        sites=margin_of(life.rule, confirmed, life.sites) if life.sites else None,
-        whole=margin_of(life.rule, life.names),
+        people=margin_of(life.rule, confirmed, people) if life.policy else None,
+        sites=margin_of(life.rule, confirmed, sites) if life.policy else None,
+        whole=margin_of(life.rule, paths),
         missing=counted(needed, most_tried=MAX_NAMES).quorum if needed else Bounds(0, 0),
     )
 

@@ -10,6 +10,7 @@ Does not: find anything out itself.
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Sequence
+from datetime import datetime
 
 from shares.documents.party import PartyCard
 from shares.documents.record import Record
@@ -182,8 +183,8 @@ def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:
             Verdict.AT_RISK,
             "one-knows-a-quorum",
             f"One alone has known shares that make a quorum: {listed(able)}.",
-            "Replace the key and retire this set; new shares do not help. Where the rule itself lets one person suffice, "
-            "change it.",
+            "Replace the key and retire this set; new shares do not help. Where the rule itself lets one person "
+            "suffice, change it.",
             tuple(able),
         )
     for row in people:
@@ -229,3 +230,16 @@ def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
         elif task.overdue and task.kind in _OVERDUE:
             step, what = _OVERDUE[task.kind]
             yield Reason(Verdict.DUE, f"{task.kind}-overdue", f"{what}: {task.what} ({until}).", step, task.about)
+
+
+def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Reason]:
+    """Yield what is amiss with a set's end: nothing is due any more but what was left unaccounted for."""
+    held = [row.name for row in rows if row.copies]
+    if held:
+        yield Reason(
+            Verdict.AT_RISK,
+            "retired-with-copies",
+            f"The set was retired on {when:%Y-%m-%d}, and copies are not accounted for: {listed(held)}.",
+            "Find and destroy each of them before a witness: `shares retire status` lists them.",
+            tuple(held),
+        )

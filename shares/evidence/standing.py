@@ -6,7 +6,7 @@ incident, a departure, a copy destroyed, a new holder, a broken seal, a share fo
 
 Source: NIST SP 800-53, CP-9(1) (media tested at a defined frequency); PCI PIN 9-2 (a tamper sign is analysed; read in a
 summary); trade practice: a seal is no proof of content, and silence is no consent.
-May import: shares.documents, shares.evidence.audited, .life.
+May import: shares.documents, shares.history.journal, shares.evidence.audited, .inventory, .life.
 Secret: nothing. Confidential: persons, sites, proofs. Public: nothing.
 Does not: judge attestations; it is given what each of them proves.
 """
@@ -20,7 +20,6 @@ from typing import NamedTuple
 
 from shares.documents.event import (
     Attested,
-    Copied,
     Dealt,
     Departed,
     Destroyed,
@@ -28,13 +27,14 @@ from shares.documents.event import (
     HandedOn,
     Incident,
     Introduced,
+    Lost,
     Resolved,
 )
 from shares.evidence.audited import CustodianRow, Proof, Status
+from shares.evidence.inventory import take_inventory
 from shares.evidence.life import Life
+from shares.history.journal import Journal
 
-ORIGINAL = "original"
-"""How the journal calls the copy of a share that was dealt."""
 _FILLED = ("done", "no exposure", "reassigned", "refreshed")
 """Ways to resolve a departure after which the custodian's place is filled again."""
 
@@ -61,7 +61,6 @@ class _Standing:
     doubt: Status | None = None
     why: str = ""
     doubted: datetime | None = None
-    copies: dict[str, None] = field(default_factory=lambda: {ORIGINAL: None})
     proofs: list[Proof] = field(default_factory=list)
 
     def void(self, doubt: Status | None, why: str, time: datetime) -> None:
@@ -92,13 +91,6 @@ class _Standing:
         elif proof.grade == "content" and proof.result == "intact":
             self.unattributed = proof.time
 
-    def destroy(self, copy: str, number: int, time: datetime) -> None:
-        """Take a copy off; with the last one the share is gone."""
-        self.copies.pop(copy, None)
-        self.void("in doubt", f"the copy {copy} was destroyed, entry {number}", time)
-        if not self.copies:
-            self.doubt, self.why, self.doubted = "destroyed", f"every copy was destroyed, entry {number}", time
-
 
 class Standings:
     """How the custodians stand at the time of a life, and when they were confirmed before.
@@ -111,6 +103,18 @@ class Standings:
     def __init__(self, life: Life, proofs: Mapping[int, Proof]) -> None:
         self._life = life
         self._all = {name: _Standing(name, life.people[name], life.start) for name in life.names}
+        copies = take_inventory(Journal(life.entries), life.record).copies
+        own = {
+            name: [copy for copy in copies if (copy.custodian, copy.epoch) == (name, life.record.epoch)]
+            for name in life.names
+        }
+        self._held = {name: sum(copy.fate == "held" for copy in copies) for name, copies in own.items()}
+        # By which entry the last copy of a share came to its end.
+        self._ended = {
+            name: max(copy.entry or 0 for copy in own[name])
+            for name, held in self._held.items()
+            if own[name] and not held
+        }
         self._departed: dict[int, tuple[str, ...]] = {}
         self._spans: list[Span] = []
         self._confirmed: dict[str, Span] = {}
@@ -141,9 +145,6 @@ class Standings:
             case Introduced():
                 for one in self._of(event.custodian):
                     one.card = event.card
-            case Copied():
-                for one in self._of(event.custodian):
-                    one.copies[event.copy_] = None
             case Resolved():
                 for one in self._of(*self._departed.get(event.entry, ())):
                     if event.how in _FILLED:
@@ -167,9 +168,11 @@ class Standings:
                     one.void(None, "", time)
                     one.person, one.since = event.to, time
                 return touched
-            case Destroyed():
+            case Destroyed() | Lost():
                 for one in (touched := self._of(event.custodian)):
-                    one.destroy(event.copy_, number, time)
+                    one.void("in doubt", f"a copy was {event.what}, entry {number}", time)
+                    if self._ended.get(event.custodian) == number:
+                        one.doubt, one.why = "destroyed", f"no copy is left, entry {number}"
                 return touched
         return []
 
@@ -210,7 +213,7 @@ class Standings:
             sealed=one.sealed,
             due=due,
             card=one.card,
-            copies=len(one.copies),
+            copies=self._held[one.name],
             proofs=tuple(one.proofs),
         )
 
