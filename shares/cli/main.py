@@ -35,6 +35,7 @@ COMMANDS = {
     "verify": ("verify", "Check each share alone, without any secret."),
     "sheet": ("sheet", "Print a share: lines to type, a QR code, and a receipt."),
     "transcribe": ("transcribe", "Read a printed share back, typed or scanned."),
+    "attest": ("attest", "Ask custodians for proof of their shares; answer; check the answers."),
     "drill": ("drill", "Rehearse a recovery, and report what it showed."),
     "recover": ("recover", "Recover a secret from enough shares."),
     "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
