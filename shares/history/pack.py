@@ -17,7 +17,7 @@ from typing import Final
 
 from shares.documents.base import MAX_FILE, parse_object
 from shares.errors import DocumentError, StorageError
-from shares.history.files import Files, check_name_in_set
+from shares.history.files import POLICY_NAME, RECORD_NAME, Files
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL
 from shares.history.tar import END, MAX_MEMBERS, MAX_NAME, content, header, index, padding
 from shares.storage import StrPath
@@ -26,7 +26,7 @@ from shares.streams import new_file, regular_file
 MAX_PACKED: Final = 1 << 24
 """The largest file in a pack beside the journal, in bytes: 16 MiB, for scans."""
 # What a set's folder holds for others to see (FORMAT.md, sec. 15). All else stays where it is.
-_NAMES: Final = ("record.json", "policy.toml", JOURNAL_NAME)
+_NAMES: Final = (RECORD_NAME, POLICY_NAME, JOURNAL_NAME)
 _FOLDERS: Final = ("acknowledgements", "attestations", "ceremony", "documents", "drills", "practice")
 _TORN: Final = re.compile(r"journal\.torn-[0-9a-f]{16}")
 # Files that hold a share or a private key, sealed or not. What is damaged, or stands within something else, counts.
@@ -110,7 +110,7 @@ def write_pack(files: Files, to: StrPath) -> Packed:
     held = {JOURNAL_NAME: files.read(JOURNAL_NAME, limit=MAX_JOURNAL)} if JOURNAL_NAME in files.names() else {}
     names = sorted(files.names())
     packed = [name for name in names if _belongs(name)]
-    if "record.json" not in packed:
+    if RECORD_NAME not in packed:
         raise StorageError("holds no record, and so no set to pack", where=files.where, hint="name the set's folder")
     if len(packed) > MAX_MEMBERS:
         raise StorageError(f"holds more than {MAX_MEMBERS:,} files that belong in a pack", where=files.where)
@@ -136,7 +136,7 @@ def write_pack(files: Files, to: StrPath) -> Packed:
 
 def _belongs(name: str) -> bool:
     first, _, rest = name.partition("/")
-    return first in _FOLDERS and "/." not in name if rest else name in _NAMES or _TORN.fullmatch(name) is not None
+    return first in _FOLDERS if rest else name in _NAMES or _TORN.fullmatch(name) is not None
 
 
 def _limit(name: str) -> int:
@@ -144,7 +144,6 @@ def _limit(name: str) -> int:
 
 
 def _refuse_name(name: str, where: str) -> None:
-    check_name_in_set(name)
     try:
         length = len(name.encode("utf-8"))
     except UnicodeEncodeError:

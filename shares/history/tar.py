@@ -15,7 +15,7 @@ from dataclasses import dataclass
 from typing import Final
 
 from shares.errors import DocumentError, StorageError
-from shares.history.files import check_name_in_set
+from shares.history.files import is_name_in_set
 from shares.streams import Reader
 
 BLOCK: Final = 512
@@ -157,13 +157,7 @@ def _member(reader: Reader, place: int, block: bytes) -> tuple[str, Member]:
         raise _refused(f"{shown} has a header of another form of archive, or none", reader.where)
     if kind != b"0":
         raise _refused(f"{shown} is {_TYPES.get(kind, 'of a kind that POSIX does not have')}, not a file", reader.where)
-    try:
-        check_name_in_set(name)
-    except StorageError:
-        leads_out = True
-    else:
-        leads_out = False
-    if leads_out:
+    if not is_name_in_set(name):
         raise _refused(f"{shown} would lead out of the set's folder", reader.where)
     if size is None or header(name, size) != given:
         raise _refused(f"the header of {shown} is not as `shares audit pack` writes it", reader.where)

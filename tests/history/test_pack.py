@@ -168,12 +168,15 @@ def test_a_pack_within_the_folder_does_not_swallow_itself(folder):
     assert "first.tar" in second.left_out
 
 
-def test_what_is_no_regular_file_is_refused(folder, tmp_path):
+def test_what_is_no_regular_file_stays_out(folder, tmp_path):
     (folder / "documents/link.pdf").symlink_to("/etc/hostname")
-    assert "symbolic link" in refused(folder, tmp_path / "pack.tar").what
-    (folder / "documents/link.pdf").unlink()
+    (folder / "drills/9/elsewhere").symlink_to("/etc")
     os.mkfifo(folder / "documents/pipe")
-    assert "pipe" in refused(folder, tmp_path / "pack.tar").what
+    assert set(write_pack(FolderFiles(folder), tmp_path / "pack.tar").names) == {
+        *PACKED,
+        "journal.jsonl",
+        "record.json",
+    }
 
 
 def test_hidden_files_stay_out(folder, tmp_path):
@@ -182,7 +185,7 @@ def test_hidden_files_stay_out(folder, tmp_path):
     assert not [name for name in made.names if "/." in name]
 
 
-@pytest.mark.parametrize("name", ["documents/a\\b", "documents/" + "/".join(["d" * 99] * 5), "documents/\udcff"])
+@pytest.mark.parametrize("name", ["documents/" + "/".join(["d" * 99] * 5), "documents/\udcff"])
 def test_names_that_a_pack_cannot_hold_are_refused(folder, tmp_path, name):
     fill(folder, {name: b"x"})
     told = refused(folder, tmp_path / "pack.tar")

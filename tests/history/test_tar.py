@@ -22,7 +22,7 @@ from hypothesis import strategies as st
 
 from shares.errors import DocumentError, StorageError
 from shares.history import tar
-from shares.history.files import check_name_in_set
+from shares.history.files import is_name_in_set
 from shares.history.tar import END, MAX_NAME, content, header, index, padding
 from shares.streams import Reader, regular_file
 
@@ -184,8 +184,7 @@ def test_a_link_out_of_the_folder_is_refused(tmp_path):
     "name", ["/etc/hostname", "../up", "drills/../../up", "a//b", "./record.json", ".hidden", "a\\b", ""]
 )
 def test_names_that_lead_out_are_refused(tmp_path, name):
-    with pytest.raises(StorageError):
-        check_name_in_set(name)
+    assert not is_name_in_set(name)
     said = refused(tmp_path, header(name, 1) + b"x" + padding(1) + END)
     assert "lead out of the set's folder" in said
     assert repr(name)[1:-1] in said or name == "a\\b"
