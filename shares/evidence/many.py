@@ -1,7 +1,8 @@
 """Audit many sets: found below folders, shared out to processes or to any executor, one failure never another's.
 
 Source: none; ``concurrent.futures`` of the Python standard library is the interface to whatever does the work.
-May import: shares.errors, shares.clock, shares.storage, shares.documents.party, shares.history, shares.evidence.
+May import: shares.errors, shares.clock, shares.storage, shares.streams, shares.documents.party, shares.history,
+shares.evidence.
 Secret: nothing. Confidential: what audits tell. Public: paths.
 Does not: audit; ``evidence.audit`` does, one set at a time.
 """

@@ -83,9 +83,7 @@ class Kept:
         read = Policy.parse(policy) if policy else None
         tree = read.rule() if read else rule or Rule(3, NAMES)
         with Secret.of(b"made up, and worth nothing") as secret:
-            dealt = split(
-                secret, tree, label="Tide archive", created=START, policy=read.digest() if read else None
-            )
+            dealt = split(secret, tree, label="Tide archive", created=START, policy=read.digest() if read else None)
         practice = practice_for(dealt.record) if read and read.practice else None
         made = cls(folder, dealt, practice, signed)
         if policy:
@@ -105,7 +103,9 @@ class Kept:
             epoch=record.epoch,
             record=record.fingerprint,
             custodians=tuple(
-                DealtShare(name=one.name, packed="bare", card=known[one.name].fingerprint if one.name in known else None)
+                DealtShare(
+                    name=one.name, packed="bare", card=known[one.name].fingerprint if one.name in known else None
+                )
                 for one in record.custodians
             ),
             practice=practice.record.fingerprint if practice else None,
@@ -179,7 +179,9 @@ class Kept:
     def round(self, time: datetime, names: Sequence[str] | None = None) -> Challenge:
         """A round that these answer, all by default, one day later."""
         challenge = self.ask(time)
-        self.answer(challenge, list(self.record.rule.to_rule().paths()) if names is None else names, time + timedelta(1))
+        self.answer(
+            challenge, list(self.record.rule.to_rule().paths()) if names is None else names, time + timedelta(1)
+        )
         return challenge
 
     def drill(
