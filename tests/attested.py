@@ -19,7 +19,8 @@ from shares.documents.event import Dealt, DealtShare
 from shares.documents.record import Record
 from shares.documents.share import Share
 from shares.evidence.attest import answer, make_challenge
-from shares.history.folder import RECORD_NAME, SetFolder
+from shares.history.files import RECORD_NAME
+from shares.history.folder import SetFolder
 
 NAMES = HARBOUR[:3]
 DEALT = crooked_split(b"made up, and worthless", flat(2, 3))

@@ -92,6 +92,11 @@ class Attestation(Document):
             raise PydanticCustomError("shares_attestation", "{reason}", {"reason": problem})
         return self
 
+    @property
+    def is_good(self) -> bool:
+        """Whether what was looked at was found as it should be."""
+        return self.result == RESULTS[self.grade][0]
+
     def signed_members(self) -> dict[str, Any]:
         """Return what both signatures are over: everything but themselves, the card as its fingerprint."""
         facts = self.public(*(set(type(self).model_fields) - {"card", "share_signature", "party_signature"}))

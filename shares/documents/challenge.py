@@ -15,7 +15,7 @@ from pydantic import model_validator
 from pydantic_core import PydanticCustomError
 
 from shares import clock
-from shares.documents.base import Document, canonical, sha256, write_text
+from shares.documents.base import Document, canonical, read_aloud, sha256, write_text
 from shares.documents.entry import Head
 from shares.documents.event import Sequence
 from shares.documents.members import Digest, Epoch, Fingerprint, Name, SetId, Signature, Text, Time, Version
@@ -94,11 +94,15 @@ class Challenge(Document):
         """Return what an answer names: 32 bytes over the whole challenge, its signature included."""
         return sha256(b"shares/v1/challenge", canonical(self.model_dump(mode="json")))
 
+    @property
+    def fingerprint(self) -> str:
+        """What is read aloud of it, to know by another way that it is the one that was sent."""
+        return read_aloud(self.digest())
+
     def words(self) -> str:
-        """Say who asks whom for what, and until when."""
+        """Say whom it asks for what, and until when."""
         asked = "whether the share is there and whole" if self.purpose == "attestation" else "who is there"
-        who = f"{self.card.name}, card {self.card.fingerprint}"
-        return f"{who}, asks {', '.join(self.custodians)} {asked}, until {clock.to_text(self.due)}"
+        return f"{', '.join(self.custodians)} are asked {asked}, until {clock.to_text(self.due)}"
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

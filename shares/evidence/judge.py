@@ -232,7 +232,7 @@ def _signatures(attestation: Attestation, record: Record, card: str | None, *, p
 
 def _worth(attestation: Attestation) -> list[Problem]:
     problems = []
-    if attestation.result != RESULTS[attestation.grade][0]:
+    if not attestation.is_good:
         what = {
             "damaged": "the share is damaged: it is as good as lost until another copy is found",
             "inconsistent dealing": "the share does not lie on the dealing: the dealer was faulty or dishonest",

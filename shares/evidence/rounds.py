@@ -9,9 +9,8 @@ Does not: say when a round is due, or what its answers amount to; an audit does.
 
 from __future__ import annotations
 
-import hashlib
 import os
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from datetime import datetime
 
@@ -22,7 +21,8 @@ from shares.documents.challenge import Challenge, Purpose
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Attested, Challenged, Dealt, Introduced
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.errors import ParameterError, StorageError, VerificationError
+from shares.documents.record import Record
+from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
 from shares.evidence.judge import Judgement, check_challenge, judge
 from shares.history.folder import SetFolder
@@ -185,24 +185,60 @@ def enter(
         )
     known = _introduced(folder, known_cards(journal), cards or {}, keys, time)
     earlier = {name: _digest_of(entry) for name, entry in found.answers.items()}
-    entered = []
+
+    def enter_one(attestation: Attestation, judgement: Judgement) -> Entry:
+        name = f"{folder_of_round(challenge)}/{attestation.custodian}.json"
+        named = _filed(folder, name, attestation.to_file())
+        return folder.append(_event(attestation, judgement), keys=keys, documents=[named], time=time)
+
+    return _each_judged(folder.record, challenge, attestations, known, time, earlier, enter_one)
+
+
+def check_only(
+    record: Record,
+    challenge: Challenge,
+    attestations: Sequence[Attestation],
+    *,
+    cards: Mapping[str, PartyCard],
+    time: datetime | None = None,
+) -> list[Entered]:
+    """Judge answers as ``enter`` does, for whoever has no set's folder; nothing is filed or entered.
+
+    Args:
+        record: of the set and epoch.
+        challenge: the challenge.
+        attestations: the answers.
+        cards: custodians' party cards whose fingerprints were compared, by name.
+        time: when the answers came; now by default.
+
+    Raises:
+        SetMismatchError, EpochMismatchError, VerificationError: the challenge is not about this record.
+    """
+    check_challenge(challenge, record)
+    known = {name: card.fingerprint for name, card in cards.items()}
+    return _each_judged(record, challenge, attestations, known, clock.now() if time is None else time, {}, None)
+
+
+def _each_judged(
+    record: Record,
+    challenge: Challenge,
+    attestations: Sequence[Attestation],
+    known: Mapping[str, str],
+    time: datetime,
+    earlier: dict[str, bytes],
+    enter_one: Callable[[Attestation, Judgement], Entry] | None,
+) -> list[Entered]:
+    """Judge one answer after another, and enter each that is accepted: what came before tells a replay."""
+    judged = []
     for attestation in attestations:
-        judgement = judge(
-            attestation,
-            challenge,
-            folder.record,
-            card=known.get(attestation.custodian),
-            received=time,
-            earlier=earlier,
-        )
+        name = attestation.custodian
+        judgement = judge(attestation, challenge, record, card=known.get(name), received=time, earlier=earlier)
         entry = None
         if judgement.accepted:
-            name = f"{folder_of_round(challenge)}/{attestation.custodian}.json"
-            named = _filed(folder, name, attestation.to_file())
-            entry = folder.append(_event(attestation, judgement), keys=keys, documents=[named], time=time)
-            earlier[attestation.custodian] = named.digest
-        entered.append(Entered(judgement, entry))
-    return entered
+            entry = enter_one(attestation, judgement) if enter_one else None
+            earlier[name] = attestation.digest()
+        judged.append(Entered(judgement, entry))
+    return judged
 
 
 def _event(attestation: Attestation, judgement: Judgement) -> Attested:
@@ -251,12 +287,6 @@ def _introduced(
 def _filed(folder: SetFolder, name: str, data: bytes) -> NamedDigest:
     """File an answer; one that a stopped run has filed and not entered is taken as it is."""
     path = folder.path / name
-    if not os.path.lexists(path):
-        return folder.add(name, data)
-    if read_file(path, limit=MAX_FILE) != data:
-        raise StorageError(
-            "another answer lies here that the journal does not name: a stopped run left it",
-            where=os.fspath(path),
-            hint="enter that one, or move it away",
-        )
-    return NamedDigest(path=name, digest=hashlib.sha256(data).digest())
+    if os.path.lexists(path) and read_file(path, limit=MAX_FILE) == data:
+        return folder.named(name)
+    return folder.add(folder.free_name(name), data)

@@ -79,9 +79,9 @@ class _Standing:
         """Take what an attestation proves, or shows to be amiss."""
         self.proofs.append(proof)
         if proof.result in ("damaged", "inconsistent dealing"):
-            self.void("damaged", f"{proof.result}, by the attestation of entry {proof.entry}", proof.time)
+            self.void("damaged", f"found {proof.result}, entry {proof.entry}", proof.time)
         elif proof.result == "seal broken":
-            self.void("in doubt", f"seal broken, by the attestation of entry {proof.entry}", proof.time)
+            self.void("in doubt", f"seal found broken, entry {proof.entry}", proof.time)
         elif proof.grade == "content" and proof.counts:
             self.content = max(proof.time, self.content or proof.time)
             if self.doubt in ("damaged", "in doubt"):
@@ -231,4 +231,4 @@ class Standings:
             return "unattributed", "the share answered, and no known party key of the custodian signed", due
         if until is None and due > life.at:
             return "not yet attested", f"nothing proven since {one.since:%Y-%m-%d}", due
-        return "overdue", f"no proof in time, due was {due:%Y-%m-%d}", due
+        return "overdue", "no proof in time", due

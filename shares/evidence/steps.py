@@ -32,6 +32,11 @@ def title(role: str) -> str:
     return "ceremony administrator" if role == ADMINISTRATOR else role.replace("-", " ")
 
 
+def signing(dual_control: bool) -> str:
+    """Return the options by which an entry gets the two signatures that dual control asks for."""
+    return f" --sign {INTERNAL}.key.json --sign {ADMINISTRATOR}.key.json" if dual_control else ""
+
+
 def folder_name(label: str) -> str:
     """Return a name for the set's folder, made of its label.
 
@@ -190,7 +195,7 @@ class _Steps:
     def _dealing(self) -> Iterator[CeremonyStep]:
         yield self._step(
             DEALER,
-            "Before the eyes of the witnesses, bring or make the secret as the file `secret` in this folder. It is "
+            "Before the eyes of the witnesses, bring or make the secret as the file named secret, in this folder. It is "
             "never shown, and never typed into a command.",
             "The file is there, for its owner alone (-rw-------), and has the size that the owner of the key expects.",
             command="ls -l secret",
@@ -261,9 +266,10 @@ class _Steps:
         yield self._step(
             role,
             f"Seal the sheet in a pack. Read its serial aloud: it is written here, and on the list that goes another "
-            f"way. The pack leaves {way}. (A second copy, on a medium or on paper, is logged as `copied`.)",
+            f"way. The pack leaves {way}. (A second copy, on a medium or on paper, is logged as copied.)",
             "The seal is whole, and both lists have the same serial.",
-            command=f"shares journal add {self.set} delivered --custodian {name} --serial SERIAL{channel}",
+            command=f"shares journal add {self.set} delivered --custodian {name} --serial SERIAL{channel}"
+            + signing(self.policy.dual_control),
             note="Serial of the pack",
         )
 

@@ -16,6 +16,8 @@ from pathlib import Path
 
 import jinja2
 
+SHEET = Path(__file__).with_name("sheet.css")
+"""The style of forms that fill a sheet of paper."""
 REPORT = Path(__file__).with_name("report.css")
 """The style of reports: for a screen of any width, and for paper."""
 

@@ -25,7 +25,7 @@ from shares.documents.members import check_name, check_text
 from shares.documents.share import Share
 from shares.documents.wrapping import ByPassphrase
 from shares.errors import ParameterError, VerificationError
-from shares.paper.page import render
+from shares.paper.page import SHEET, render
 from shares.paper.paperform import BLOCK, LETTERS, PaperShare, from_paper, to_paper, to_text
 from shares.paper.transcription import gather
 from shares.paper.typedline import MAX_LINES, grouped, to_lines
@@ -145,4 +145,4 @@ def _code(text: str, millimetres: int, where: str | None) -> segno.QRCode:
 
 
 def _render(template: str, **facts: object) -> bytes:
-    return render(_HERE / template, _HERE / "sheet.css", duties=DUTIES, **facts)
+    return render(_HERE / template, SHEET, duties=DUTIES, **facts)
