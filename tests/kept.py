@@ -1,4 +1,4 @@
-"""A set of the demo harbour that is kept for a while: its folder, and what its custodians do, at times that tests choose.
+"""A set of the demo harbour that is kept for a while: its folder, and what custodians do, at times that tests choose.
 
 Everything is made as the commands make it, through the library, with times of its own.
 """
