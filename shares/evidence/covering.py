@@ -71,29 +71,31 @@ def schonheim_bound(v: int, k: int, t: int = 2) -> int:
 def lower_bound(tree: Tree, wanted: Sequence[int]) -> int:
     """Return a number of minimal quorums below which no covering goes.
 
-    Whoever is to meet d custodians below some node stands in d / m quorums or more, if a quorum has up to m places for
-    them there; and if a quorum takes up to m' custodians below a node, all the quorums of these together are m' times
-    the number of quorums at most. For k of n, where the root is the only node, this is the Schonheim bound.
+    Whoever is to meet d custodians below a node stands in d / m quorums or more, where a quorum with them has m others
+    there at most. And where a quorum takes m custodians at most below a node, there are as many quorums as all of these
+    custodians stand in, taken together, divided by m, or more. For k of n both steps are those of the Schonheim bound.
 
-    Source: Schonheim 1964, its two steps taken on every node.
+    Source: Schonheim 1964, his two steps taken at every node.
 
     >>> from shares.sharing.rule import Rule
     >>> tree = Tree(Rule(3, tuple("abcdefg")))
     >>> lower_bound(tree, partners(tree, Chance(0)).wanted)
     7
     """
-    sizes = tree.largest()
-    # With tangles a quorum may hold a custodian below a node for their place elsewhere: only the root counts then.
-    nodes = [(node.places, size) for node, size in zip(tree.nodes, sizes, strict=True)]
+    everyone = (1 << len(tree.names)) - 1
+    sizes, sizes_with = tree.largest(), tree.largest_with()
+    seats = [max(sizes_with[place] for place in members(places)) - 1 for places in tree.places_of]
+    stands_in = [-(-others.bit_count() // max(room, 1)) for others, room in zip(wanted, seats, strict=True)]
     if tree.tangled:
-        nodes = [((1 << len(tree.names)) - 1, sizes[0])]  # All custodians, by number.
-    meetings = [0] * len(wanted)
-    for places, size in nodes:
+        # A quorum may hold a custodian below a node for their place elsewhere, so that only the root tells.
+        groups = [(everyone, sizes[0])]
+    else:
+        groups = [(node.places, size) for node, size in zip(tree.nodes, sizes, strict=True)]
+    for group, size in groups:
         for one, others in enumerate(wanted):
-            met, seats = (others & places).bit_count(), size - (places >> one & 1)
-            if met:
-                meetings[one] = max(meetings[one], -(-met // seats))
-    return max(-(-sum(meetings[one] for one in members(places)) // size) for places, size in nodes)
+            if met := (others & group).bit_count():
+                stands_in[one] = max(stands_in[one], -(-met // (size - (group >> one & 1))))
+    return max(*stands_in, *(-(-sum(stands_in[one] for one in members(group)) // size) for group, size in groups))
 
 
 class Partners(NamedTuple):

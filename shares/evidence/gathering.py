@@ -14,7 +14,7 @@ Does not: say whom to choose. Where a custodian stands in two branches it gather
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import lru_cache, reduce
 from operator import or_
@@ -86,6 +86,7 @@ class Tree:
         self.tangled = len(self.owner) > len(self.names)
         self.table = TruthTable(rule) if self.tangled and len(self.names) <= MAX_NAMES else None
         self.several = sum(1 << number for number, places in enumerate(self.places_of) if places.bit_count() > 1)
+        self._measure()
         self.joinable = self.nodes[0].places
         for node in self.nodes:
             self.joinable &= ~_closed(node, _Met())
@@ -115,21 +116,54 @@ class Tree:
     def largest(self) -> list[int]:
         """Return for each node the most places that a minimal quorum takes below it; where there are weights, a bound.
 
-        A minimal choice falls short without its lightest item: so it has m items only where the m lightest of all, less
-        one of them, fall short.
-
         >>> Tree(Rule(2, (Rule(2, ("a", "b", "c")), "d", "d", "e"))).largest()
         [3, 2]
         """
-        sizes = [0] * len(self.nodes)
-        below = [[1 for at, _ in self.at if at == number] for number in range(len(self.nodes))]
+        return self._sizes[:]
+
+    def largest_with(self) -> list[int]:
+        """Return for each place the most places that a minimal quorum with it takes; where there are weights, a bound.
+
+        >>> tree = Tree(Rule(3, ("a", "a", "b", "c", "d")))  # a has weight 2
+        >>> tree.largest(), tree.largest_with()
+        ([3], [2, 3, 3, 3])
+        """
+        return [1 + self._besides(*step) for step in self.at]
+
+    def _besides(self, number: int, item: int) -> int:
+        """Return the most places that a minimal quorum takes beside those below an item of a node."""
+        node, below = self.nodes[number], self._below[number]
+        weight, _ = node.items[item]
+        others = sorted(other for i, (other, _) in enumerate(node.items) if i != item)
+        sizes = sorted((size for i, size in enumerate(below) if i != item), reverse=True)
+        here = sum(sizes[: _room(weight, others, node.need)])
+        return here + self._besides(*node.up) if node.up else here
+
+    def _measure(self) -> None:
+        """Work out the most places of a minimal quorum below each node, the deepest nodes first."""
+        self._sizes = [0] * len(self.nodes)
+        self._below = [[1] * len(node.items) for node in self.nodes]
         for number, node in reversed(list(enumerate(self.nodes))):
-            weights = sorted(weight for weight, _ in node.items)
-            most = max(m for m in range(1, len(weights) + 1) if sum(weights[1:m]) < node.need)
-            sizes[number] = sum(sorted(below[number], reverse=True)[:most])
+            lightest, *others = sorted(weight for weight, _ in node.items)
+            most = 1 + _room(lightest, others, node.need)
+            self._sizes[number] = sum(sorted(self._below[number], reverse=True)[:most])
             if node.up:
-                below[node.up[0]].append(sizes[number])
-        return sizes
+                parent, item = node.up
+                self._below[parent][item] = self._sizes[number]
+
+
+def _room(weight: int, others: Sequence[int], need: int) -> int:
+    """Return how many others, given in ascending order, a minimal choice holds at most beside an item of a weight.
+
+    A minimal choice falls short without its lightest item. The lightest others leave most room: taking a heavier one
+    adds as much to the weight as to the lightest weight at least.
+    """
+    total = weight
+    for room, other in enumerate(others):
+        total += other
+        if total - min(weight, others[0]) >= need:
+            return room
+    return len(others)
 
 
 @dataclass(slots=True)

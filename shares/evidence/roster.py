@@ -33,6 +33,7 @@ FEW_QUORUMS = 12
 """Up to so many minimal quorums all of them rehearse: one a month for a year."""
 
 _NAMED = 3
+_OWN = "each minimal quorum is a drill of its own"
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,7 +123,7 @@ def _of_quorums(quorums: Sequence[Group], held: Sequence[frozenset[str]], notes:
         covers="quorums",
         drills=left,
         bound=len(left),
-        bound_by="each minimal quorum is a drill of its own",
+        bound_by=_OWN,
         method="every minimal quorum",
         cycle=len(quorums),
         cycle_bound=len(quorums),
@@ -158,13 +159,18 @@ def _of_pairs(rule: Rule, held: Sequence[frozenset[str]], seed: int, notes: Sequ
     needed = sum(1 << number for number, others in enumerate(wanted) if others)
     apart = [needed & ~others & ~(1 << number) if others else 0 for number, others in enumerate(wanted)]
     pairs_apart = named(_pairs(apart))
+    if not needed:  # Everyone recovers alone, or is never needed.
+        bound_by, method = _OWN, "every minimal quorum"
+    else:
+        bound_by = "Schonheim 1964" if tree.flat else "Schonheim's argument at each node of the rule"
+        method = best.method if tree.largest()[0] > 2 else "every pair is a quorum"
     idle = [name for number, name in enumerate(tree.names) if not wanted[number] and (name,) not in alone]
     return Roster(
-        covers="pairs" if needed else "quorums",  # Where everyone recovers alone, these are all quorums.
+        covers="pairs" if needed else "quorums",
         drills=(*alone_left, *named(best.quorums)),
         bound=lower_bound(tree, left) + len(alone_left),
-        bound_by="Schonheim 1964" if tree.flat else "Schonheim's argument at each node of the rule",
-        method=best.method if needed else "every minimal quorum",
+        bound_by=bound_by,
+        method=method,
         cycle=len(alone) + len(whole.quorums),
         cycle_bound=len(alone) + lower_bound(tree, wanted),
         covered=(*(one for one in alone if one not in alone_left), *named(_pairs(covered))),
