@@ -66,8 +66,18 @@ def design(tree: Tree, wanted: Sequence[int], *, seed: int, known: Sequence[int]
 
 
 def no_planes(tree: Tree) -> list[str]:
-    """Say of each plane that would fit why there is none; where it is over a field there is nothing to say."""
-    return [reason for fit in _fits(tree) if (reason := why_no_plane(fit.order))]
+    """Say of each plane that would fit why it is not used; of planes over a field, which are used, nothing.
+
+    >>> from shares.sharing.rule import Rule
+    >>> [note] = no_planes(Tree(Rule(6, tuple(map(str, range(36))))))
+    >>> note[:63]
+    'The affine plane of order 6 would fit these numbers, but is not'
+    """
+    return [
+        f"The {fit.kind} plane of order {fit.order} would fit these numbers, but is not used: {reason}."
+        for fit in _fits(tree)
+        if (reason := why_no_plane(fit.order))
+    ]
 
 
 def _tries(tree: Tree, wanted: Sequence[int], chance: Chance, known: Sequence[int], fewest: int) -> Iterator[Design]:

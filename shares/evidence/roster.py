@@ -143,10 +143,11 @@ def _of_pairs(rule: Rule, held: Sequence[frozenset[str]], seed: int, notes: Sequ
     left = list(wanted)
     for company in held:
         meet(left, sum(1 << number for number, name in enumerate(tree.names) if name in company))
-    best = Design(trimmed(whole.quorums, left), whole.method)
+    best = whole
     if left != wanted:
         # What remains of the whole is kept unless another design for the rest is really shorter.
-        best = min(best, design(tree, left, seed=seed, known=known), key=lambda one: len(one.quorums))
+        kept = Design(trimmed(whole.quorums, left), whole.method)
+        best = min(kept, design(tree, left, seed=seed, known=known), key=lambda one: len(one.quorums))
 
     place = {name: number for number, name in enumerate(rule.paths())}
 
@@ -190,15 +191,16 @@ def _pairs(sets: Sequence[int]) -> Iterator[int]:
 def _notes_on_apart(tree: Tree, apart: Sequence[Group], idle: Sequence[str]) -> Iterator[str]:
     certain = not tree.tangled or tree.table is not None
     if idle:
-        yield f"{_listed(idle)}: in no minimal quorum, so on no roster."
+        found = "" if certain else " that was found (there may be one, as some custodians stand in several branches)"
+        yield f"{_listed(idle)}: in no minimal quorum{found}, so on no roster."
     if apart:
         pairs = f"{_listed([' and '.join(pair) for pair in apart])}: {_counted(len(apart), 'pair')}"
         if certain:
             yield f"{pairs} in no minimal quorum together, who never need each other and do not have to meet."
         else:
             yield (
-                f"{pairs} for whom no quorum that needs both was found. It is not certain that there is none, as some "
-                f"custodians stand in several branches: let them meet in a larger company."
+                f"{pairs} for whom no quorum that needs both was found. There may be one, as some custodians stand in "
+                f"several branches: let these pairs meet in a larger company."
             )
 
 

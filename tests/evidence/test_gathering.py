@@ -6,33 +6,15 @@ Source: the definitions, tried out (``minimal_by_trying``).
 from __future__ import annotations
 
 import pytest
+from coverings import names_in, parted, quorums_of
 from hypothesis import example, given
 from hypothesis import strategies as st
-from strategies import HARBOUR, minimal_by_trying, rules, sets_of
+from strategies import HARBOUR, rules, sets_of
 
 from shares.evidence.gathering import Gathering, Tree, members
 from shares.sharing.rule import Rule
 
 A, B, C, D, E = HARBOUR[:5]
-
-
-def parted(rule: Rule, where: str = "") -> Rule:
-    """The rule with every custodian at another node somebody else: nobody stands in two branches."""
-    return Rule(
-        rule.need,
-        tuple(
-            parted(child, f"{where}{x}") if isinstance(child, Rule) else f"{child}{where}"
-            for x, child in enumerate(rule.children)
-        ),
-    )
-
-
-def quorums_of(rule: Rule) -> set[frozenset[str]]:
-    return minimal_by_trying(rule, {name: name for name in rule.paths()})
-
-
-def names_in(tree: Tree, places: int) -> set[str]:
-    return {tree.names[tree.owner[place]] for place in members(places)}
 
 
 def test_members_are_the_bits_that_are_set() -> None:
