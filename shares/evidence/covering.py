@@ -116,6 +116,7 @@ def partners(tree: Tree, chance: Chance) -> Partners:
     It is certain where no custodian stands in two branches, and up to 24 custodians. Else there may be a quorum for two
     who are called no partners here: to tell is hard in general.
     """
+    # Whoever recovers alone needs nobody: that would be found out as well, by searching in vain.
     alone = [tree.rule.satisfied_by({name}) for name in tree.names]
     needed = sum(
         1 << number for number, places in enumerate(tree.places_of) if places & tree.joinable and not alone[number]

@@ -121,8 +121,8 @@ def _from_plane(fit: _Fit, tree: Tree, wanted: Sequence[int], chance: Chance) ->
     left, quorums = list(wanted), []
     for line in lines:
         present = [point for point in line if point < len(tree.names)]
-        quorum = gather(tree, present, left, chance) if len(present) > 1 else None
-        if quorum is not None:
+        quorum = gather(tree, present, left, chance)
+        if quorum is not None:  # It never is: any k custodians or fewer are in a quorum of k.
             quorums.append(quorum)
             meet(left, quorum)
     return trimmed(quorums, wanted)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import itertools
 from typing import Any
+from unittest import mock
 
 import pytest
 from coverings import TABLE, VECTORS, covered, fewest_by_trying, flat, names_in, pairs, pairs_of, parted, quorums_of
@@ -15,6 +16,7 @@ from hypothesis import example, given
 from hypothesis import strategies as st
 from strategies import HARBOUR, rules
 
+from shares.evidence import covering
 from shares.evidence.covering import Chance, gather, greedy, lower_bound, meet, partners, schonheim_bound, trimmed
 from shares.evidence.gathering import Tree, members
 from shares.sharing.rule import Rule
@@ -114,6 +116,20 @@ def test_where_a_gathering_fails_a_known_quorum_is_taken() -> None:
     assert gather(tree, (5, 7), lost, Chance(0)) is None
     assert greedy(tree, lost, Chance(0)) == []
     assert greedy(tree, lost, Chance(0), known=[0b10100011]) == [0b10100011]
+
+
+@given(rules(most=9))
+def test_up_to_24_custodians_a_table_decides_where_tries_fail(rule: Rule) -> None:
+    tree, quorums = Tree(rule), quorums_of(rule)
+    if tree.tangled:
+        with mock.patch.object(covering, "_TRIES", 0):
+            found = gather(tree, (0, 1), tree.places_of, Chance(0)) if len(tree.names) > 1 else None
+        holding = [one for one in quorums if set(tree.names[:2]) <= one]
+        assert (
+            {tree.names[number] for number in members(found)} in holding
+            if found
+            else not holding or len(tree.names) == 1
+        )
 
 
 def test_trimming_leaves_out_the_last_first() -> None:

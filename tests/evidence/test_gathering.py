@@ -94,3 +94,17 @@ def test_a_tree_tells_what_it_is() -> None:
     assert tree.places(0b101) == 0b1101
     assert tree.table is not None
     assert Tree(flat).table is None
+
+
+def test_weights_and_branches_at_one_node() -> None:
+    """A branch that was met stays open for its others, when what else has its weight is closed."""
+    tree = Tree(Rule(3, (A, A, D, Rule(2, (B, C, E)))))
+    gathering = Gathering(tree)
+    for name, others in ((A, {B, C, D, E}), (B, {C, E}), (C, set())):
+        gathering.add(tree.names.index(name))
+        assert names_in(tree, gathering.open) == others
+
+
+def test_the_largest_quorum_with_a_light_custodian() -> None:
+    """With weights 1, 2, 2, 2 and 6 needed, whoever has 1 leaves room for two others: with three they would be idle."""
+    assert Tree(Rule(6, (A, B, B, C, C, D, D))).largest_with() == [3, 3, 3, 3]

@@ -48,3 +48,34 @@ def test_without_work_or_need_nothing_changes() -> None:
     assert improved(tree, before, wanted, Chance(0), fewest=7, work=0) == before
     assert improved(tree, before, wanted, Chance(0), fewest=len(before), work=1_000_000) == before
     assert improved(tree, [], [0] * 7, Chance(0), fewest=0, work=1_000_000) == []
+
+
+@pytest.mark.parametrize(
+    "rule",
+    [
+        Rule(2, tuple(Rule(3, tuple(f"{group}{i}" for i in range(6))) for group in "abcd")),
+        Rule(3, (Rule(2, tuple("abcdef")), *"ghijklm")),
+        Rule(6, ("a", "a", "b", "b", *"cdefghijklm")),
+    ],
+    ids=["groups", "a group", "weights"],
+)
+def test_exchanges_keep_quorums_of_groups_and_weights_minimal(rule: Rule) -> None:
+    tree = Tree(rule)
+    wanted, _ = partners(tree, Chance(0))
+    longest = max((greedy(tree, wanted, Chance(seed)) for seed in range(10)), key=len)
+    found = improved(tree, longest, wanted, Chance(0), fewest=lower_bound(tree, wanted), work=1_000_000)
+    assert len(found) < len(longest)
+    assert covered(found) >= pairs(wanted)
+    for one in found:
+        company = {tree.names[number] for number in members(one)}
+        assert rule.satisfied_by(company)
+        assert not any(rule.satisfied_by(company - {name}) for name in company)
+
+
+def test_a_search_in_vain_gives_back_what_there_was() -> None:
+    """No four quorums cover 7 custodians in fours: the published number is 5, and the Schonheim bound 4."""
+    tree = Tree(flat(4, 7))
+    wanted, _ = partners(tree, Chance(0))
+    before = min((greedy(tree, wanted, Chance(seed)) for seed in range(10)), key=len)
+    assert len(before) == TABLE[7, 4] == lower_bound(tree, wanted) + 1
+    assert improved(tree, before, wanted, Chance(0), fewest=4, work=100_000) == before
