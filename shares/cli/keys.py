@@ -18,7 +18,7 @@ from shares.cli.output import filled
 from shares.cli.passphrases import GivenPassphrases
 from shares.custody.opening import Opening
 from shares.custody.parties import load_card, load_key
-from shares.documents.party import PartyCard
+from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.wrapping import SUITES
 from shares.errors import ParameterError
 
@@ -31,6 +31,14 @@ key_option = click.option(
     metavar="KEY",
     callback=filled,
     help="A party key that opens shares wrapped for its card; once for each.",
+)
+sign_option = click.option(
+    "--sign",
+    "signer_files",
+    multiple=True,
+    metavar="KEY",
+    callback=filled,
+    help="A party key that signs this; once for each, where the policy asks for two.",
 )
 trust_option = click.option(
     "--trust",
@@ -55,6 +63,11 @@ def opening(keys: tuple[str, ...], files: tuple[str, ...], descriptors: tuple[st
     loaded = [load_key(path) for path in keys]
     with GivenPassphrases(files, descriptors) as passphrases, Opening(passphrases, loaded) as opened:
         yield opened
+
+
+def signers(paths: tuple[str, ...], at_hand: Opening) -> list[OpenPartyKey]:
+    """Return the party keys that sign, opened; ``at_hand`` wipes them."""
+    return [at_hand.party(load_key(path)) for path in paths]
 
 
 def cards_by_name(given: tuple[str, ...], names: list[str], *, option: str) -> dict[str, PartyCard]:

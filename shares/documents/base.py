@@ -32,6 +32,11 @@ KINDS = (
     "party-key",
     "party-card",
     "acknowledgement",
+    "journal-entry",
+    "challenge",
+    "attestation",
+    "drill-report",
+    "ceremony-script",
 )
 VERSION = 1
 
@@ -180,6 +185,14 @@ def fingerprint(kind: str, members: dict[str, Any]) -> str:
     >>> fingerprint("record", {})
     'MWWV-AEU2-J6FP-IMWQ-W6L6-5ILL-Q6O7-KBX4'
     """
-    digest = sha256(b"shares/v1/fingerprint", kind.encode("ascii"), canonical(members))
+    return read_aloud(sha256(b"shares/v1/fingerprint", kind.encode("ascii"), canonical(members)))
+
+
+def read_aloud(digest: bytes) -> str:
+    """Return the first 160 bits of a digest as 8 groups of 4 base32 characters.
+
+    Args:
+        digest: 20 bytes or more.
+    """
     letters = base64.b32encode(digest[:20]).decode("ascii")
     return "-".join(letters[i : i + 4] for i in range(0, 32, 4))

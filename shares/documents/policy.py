@@ -2,7 +2,7 @@
 
 Source: TOML 1.0.0; FORMAT.md, sec. 12; NIST SP 800-57 Part 1 rev. 5 (signature keys are not backed up or archived as
 a rule, so splitting one needs a reason).
-May import: shares.errors, shares.field, shares.sharing.rule, shares.documents.base, .members.
+May import: shares.errors, shares.field, shares.sharing.rule, shares.documents.base, .intervals, .members.
 Secret: nothing. Public: nothing either: a policy is confidential, as it tells whom to coerce. Errors name keys and
 custodians, never a person, a site or any other value.
 Does not: judge whether a policy is wise (``planning`` does), touch files, or look at the party cards it names.
@@ -19,27 +19,20 @@ from collections.abc import Iterator
 from datetime import timedelta
 from typing import Annotated, ClassVar, Literal, Self
 
-from pydantic import AfterValidator, PlainValidator, PrivateAttr, ValidationError, model_validator
+from pydantic import AfterValidator, PrivateAttr, ValidationError, model_validator
 from pydantic import Field as Member
 from pydantic_core import PydanticCustomError
 
 from shares.documents.base import MAX_FILE, Document
+from shares.documents.intervals import Duration, Interval
 from shares.documents.members import Byte, Text, check_name
 from shares.errors import DocumentError, ParameterError
 from shares.field.gf256 import Field
 from shares.field.polynomial import Polynomial
 from shares.sharing.rule import MAX_CHILDREN, MAX_DEPTH, MAX_POINTS, Rule
 
-DAYS = {"d": 1, "w": 7, "y": 365}
 _MAX_DOTS = 100
 KeyType = Literal["symmetric", "signature", "private-decryption", "password", "other"]
-
-
-def _interval(value: object) -> timedelta:
-    form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", value) if isinstance(value, str) else None
-    if form is None:
-        raise PydanticCustomError("shares_interval", 'should be an interval like "90d", "26w" or "1y"')
-    return timedelta(days=int(form[1]) * DAYS[form[2]])
 
 
 def _custodian_name(name: str) -> str:
@@ -71,9 +64,6 @@ def _relative(path: str) -> str:
     if path.startswith("/"):
         raise PydanticCustomError("shares_path", "should be a path relative to the policy's folder")
     return path
-
-
-Interval = Annotated[timedelta, PlainValidator(_interval)]
 
 
 def folded(text: str) -> str:
@@ -130,6 +120,12 @@ class Policy(Document):
     attest_every: Interval | None = None
     drill_every: Interval | None = None
     refresh_every: Interval | None = None
+    content_every: Interval = timedelta(days=365)
+    recover_within: Duration | None = None
+    respond_within: Duration = timedelta(hours=24)
+    keep_records: Interval = timedelta(days=2 * 365)
+    practice: bool = True
+    dual_control: bool = False
     strict: bool = False
     acknowledgement: bool = False
     custodians: Annotated[tuple[PolicyCustodian, ...], Member(alias="custodian", min_length=1, max_length=MAX_POINTS)]

@@ -13,14 +13,28 @@ from pathlib import Path
 from typing import Any
 
 from shares.documents.acknowledgement import Acknowledgement
+from shares.documents.attestation import Attestation
 from shares.documents.base import VERSION, Document
+from shares.documents.ceremony_script import CeremonyScript
+from shares.documents.challenge import Challenge
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
 
-KINDS: tuple[type[Document], ...] = (Share, WrappedShare, SealedSecret, Record, PartyKey, PartyCard, Acknowledgement)
+KINDS: tuple[type[Document], ...] = (
+    Share,
+    WrappedShare,
+    SealedSecret,
+    Record,
+    PartyKey,
+    PartyCard,
+    Acknowledgement,
+    Challenge,
+    Attestation,
+    CeremonyScript,
+)
 FOLDER = Path(__file__).with_name("schemas")
 
 
