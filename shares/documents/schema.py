@@ -14,20 +14,30 @@ from typing import Any
 
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import VERSION, Document
+from shares.documents.entry import Entry
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
 
-KINDS: tuple[type[Document], ...] = (Share, WrappedShare, SealedSecret, Record, PartyKey, PartyCard, Acknowledgement)
+KINDS: tuple[type[Document], ...] = (
+    Share,
+    WrappedShare,
+    SealedSecret,
+    Record,
+    PartyKey,
+    PartyCard,
+    Acknowledgement,
+    Entry,
+)
 FOLDER = Path(__file__).with_name("schemas")
 
 
 def schema(kind: type[Document]) -> dict[str, Any]:
     """Return the JSON Schema of one kind of document."""
     draft = "https://json-schema.org/draft/2020-12/schema"
-    bare = json.loads(json.dumps(kind.model_json_schema()), object_hook=_without_prose)
+    bare = json.loads(json.dumps(kind.model_json_schema(mode="serialization")), object_hook=_without_prose)
     return {"$schema": draft, "title": kind.KIND, **bare}
 
 
