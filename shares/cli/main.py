@@ -38,6 +38,7 @@ COMMANDS = {
     "transcribe": ("transcribe", "Read a printed share back, typed or scanned."),
     "attest": ("attest", "Ask custodians for proof of their shares; answer; check the answers."),
     "drill": ("drill", "Rehearse a recovery, and report what it showed."),
+    "audit": ("audit", "Audit sets: would recovery work, and does the evidence hold?"),
     "recover": ("recover", "Recover a secret from enough shares."),
     "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
     "unwrap": ("unwrap", "Open a wrapped share, or a secret recovered for your card."),
@@ -52,7 +53,7 @@ COMMANDS = {
 
 EXIT_CODES = """\b
 Exit codes: 0 done, 1 failed, 2 usage, 3 not enough shares, 4 verification failed,
-5 file or I/O, 6 audit found something due (not in this version), 7 the command that was fed failed."""
+5 file or I/O, 6 audit found something due, 7 the command that was fed failed."""
 
 
 class _Commands(click.Group):

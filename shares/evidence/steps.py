@@ -265,8 +265,8 @@ class _Steps:
         channel = f" --channel {shlex.quote(one.channel)}" if one.channel else ""
         yield self._step(
             role,
-            "Seal the sheet in a pack. Read its serial aloud: it goes here, into the command for SERIAL, and on the list "
-            f"that goes another way. The pack leaves {way}. (A second copy, on paper or a medium, is logged as copied.)",
+            "Seal the sheet in a pack. Read its serial aloud: it goes here, into the command for SERIAL, and on the "
+            f"list that goes another way. The pack leaves {way}. (A second copy, on any medium, is logged as copied.)",
             "The seal is whole, and both lists have the same serial.",
             command=f"shares journal add {self.set} delivered --custodian {name} --serial SERIAL{channel}"
             + signing(self.policy.dual_control),
