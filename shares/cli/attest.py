@@ -29,7 +29,7 @@ from shares.custody.presented import load_record, load_shares
 from shares.documents.base import MAX_FILE
 from shares.documents.challenge import Challenge
 from shares.documents.event import Grade
-from shares.documents.policy import parse_interval
+from shares.documents.intervals import parse_interval
 from shares.errors import ParameterError, SharesError
 from shares.evidence.attest import answer as make_answer
 from shares.evidence.attest import check_asked

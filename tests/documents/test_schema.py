@@ -11,6 +11,7 @@ from typing import Any
 
 import jsonschema
 import pytest
+from attested import answered, challenge, sealed
 from hypothesis import given
 from parties import QUICK, card, party, passphrase, unlocked
 from strategies import CREATED, crooked_split, flat, moduli, octets, rules
@@ -19,6 +20,7 @@ from vectors.make import wrapping_v1 as by_hand
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import Document
 from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
+from shares.documents.entry import head_of
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
@@ -44,6 +46,7 @@ def samples() -> dict[str, Any]:
     secret = SealedSecret.seal(
         Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive", secret_commitment=bytes(32)
     )
+    asked = challenge(head=head_of(12, bytes(32)))
     made = {
         "share": share,
         "record": DEALT.record,
@@ -54,6 +57,9 @@ def samples() -> dict[str, Any]:
         "party-key": party(NAME),
         "party-card": card(NAME),
         "acknowledgement": accepted,
+        "challenge": asked,
+        "attestation": answered(asked),
+        "attestation of a seal": sealed(asked),
         "ceremony-script": script,
     }
     return {name: json.loads(document.to_file()) for name, document in made.items()}
@@ -268,6 +274,32 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         "a short signature": {"signatures": [{**SAMPLES["ceremony-script"]["signatures"][0], "signature": "A" * 85}]},
         "nine signatures": {"signatures": SAMPLES["ceremony-script"]["signatures"] * 9},
     },
+}
+OF_CHALLENGE: dict[str, dict[str, Any]] = {
+    "another purpose": {"purpose": "recovery"},
+    "nobody asked": {"custodians": []},
+    "a short nonce": {"nonce": "00" * 31},
+    "a local time": {"due": "2026-12-01T07:00:00+01:00"},
+    "a head without its number": {"journal": {"head": SAMPLES["challenge"]["record"]}},
+    "entry 0": {"journal": {"sequence": 0, "head": SAMPLES["challenge"]["record"]}},
+    "drill 0": {"drill": 0},
+    "no asker": {"card": None},
+    "a short signature": {"signature": "A" * 85},
+}
+OF_ATTESTATION: dict[str, dict[str, Any]] = {
+    "another grade": {"grade": "seen"},
+    "another result": {"result": "fine"},
+    "another carrier": {"carrier": "stone"},
+    "opened as number": {"opened": 0},
+    "an empty place": {"place": ""},
+    "a long remark": {"remark": "x" * 501},
+    "a short share signature": {"share_signature": "A" * 85},
+    "a short party signature": {"party_signature": "A" * 85},
+    "a challenge in capitals": {"challenge": "AB" * 32},
+}
+PER_SAMPLE |= {
+    "challenge": {**some(*COMMON, *FACTS[:-1], *LABEL), **OF_CHALLENGE},
+    "attestation": {**some(*COMMON, *FACTS[:-1]), **OF_ATTESTATION},
 }
 CASES = [(sample, name, change) for sample, changes in PER_SAMPLE.items() for name, change in changes.items()]
 

@@ -1,6 +1,6 @@
 """What an answer is worth: every flaw has its name, and only what is known, whole and attributed counts.
 
-Source of the rules: FORMAT.md, section 17. Everything here is judged with public material alone.
+Source of the rules: FORMAT_EVIDENCE.md, section 17. Everything here is judged with public material alone.
 """
 
 from __future__ import annotations
