@@ -200,10 +200,12 @@ def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:
 
 
 def drill_reasons(drills: Sequence[DrillRow]) -> Iterator[Reason]:
-    """Yield that the last drill of a kind failed, as long as none of recovery has passed since."""
+    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way."""
+    settled = {"attendance"}
     for row in reversed(drills):
-        if row.passed is None or row.kind == "attendance":
+        if row.passed is None or row.kind in settled:
             continue
+        settled |= {row.kind, "practice"} if row.passed else {row.kind}
         if not row.passed:
             # A recovery that only took too long did recover.
             level = Verdict.AT_RISK if row.kind == "recovery" and row.took is None else Verdict.DUE
@@ -213,8 +215,6 @@ def drill_reasons(drills: Sequence[DrillRow]) -> Iterator[Reason]:
                 f"The last {row.kind} drill, {row.number}, failed: {'; '.join(row.findings) or 'see its report'}.",
                 "Find out why, put it right, and repeat the drill.",
             )
-        if row.kind == "recovery" or row.passed:
-            return
 
 
 def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:

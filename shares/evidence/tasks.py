@@ -51,7 +51,7 @@ def tasks(
         *_set_by_entries(life, exposure),
         *_actions(life, reports),
     ]
-    return tuple(sorted(found, key=lambda task: (task.due, task.kind, task.about)))
+    return tuple(sorted(found, key=lambda task: (task.due, task.kind, task.entry or 0, task.about)))
 
 
 def _task(

@@ -1,4 +1,4 @@
-"""A set of the demo harbour that is kept for a while: its folder, and what its custodians do, at times that tests choose.
+"""A set of the demo harbour that is kept for a while: its folder, and what custodians do, at times that tests choose.
 
 Everything is made as the commands make it, through the library, with times of its own.
 """
@@ -77,13 +77,18 @@ class Kept:
         cards: Sequence[str] = NAMES,
         signed: bool = True,
         journal: bool = True,
+        epoch: int = 1,
+        set_id: bytes | None = None,
     ) -> Kept:
-        """Deal a set; ``cards``: the custodians whose party cards the journal knows."""
+        """Deal a set; ``cards``: the custodians whose party cards the journal knows. Another epoch is only written."""
         folder.mkdir(parents=True)
         read = Policy.parse(policy) if policy else None
         tree = read.rule() if read else rule or Rule(3, NAMES)
         with Secret.of(b"made up, and worth nothing") as secret:
             dealt = split(secret, tree, label="Tide archive", created=START, policy=read.digest() if read else None)
+        if set_id:
+            record = dealt.record.model_copy(update={"epoch": epoch, "set": set_id})
+            dealt = Dealt(record.model_copy(update={"fingerprint": record.own_fingerprint()}), dealt.shares)
         practice = practice_for(dealt.record) if read and read.practice else None
         made = cls(folder, dealt, practice, signed)
         if policy:
