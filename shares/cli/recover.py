@@ -126,7 +126,7 @@ def command(
     \b
     Examples:
       shares recover north-pier.share.json light-house.share.json registrar.share.json --to key.pem
-      shares recover *.share.json --record tide-archive/record.json --to key.pem \\
+      shares recover *.share.json --record tide-archive/record.json --check \\
         --reason "the archive's disk failed" --disposition 2026-12-31
       shares recover *.share.json -- openssl pkey -pubout
       shares recover north-pier.wrapped.json dry-dock.wrapped.json registrar.wrapped.json \\

@@ -10,7 +10,6 @@ Does not: read a journal; ``history`` does, and ``evidence`` judges it.
 
 from __future__ import annotations
 
-import hashlib
 import re
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
@@ -19,7 +18,6 @@ from pathlib import Path
 
 from shares.custody.packing import Packing
 from shares.custody.split import Dealt
-from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Acknowledged, DealtShare, Deviation, Disposition, Recovered
 from shares.documents.event import Dealt as DealtEvent
@@ -27,7 +25,7 @@ from shares.documents.members import check_text
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.errors import ParameterError
 from shares.history.folder import SetFolder
-from shares.history.journal import append
+from shares.history.journal import append, load_journal
 
 ACKNOWLEDGEMENTS = "acknowledgements"
 _DISPOSITIONS: tuple[Disposition, ...] = ("returned", "destroyed")
@@ -58,13 +56,13 @@ class Entering:
         Raises:
             StorageError: the journal cannot be written.
         """
+        self._end_unfinished(folder)
         cards = self.cards or {}
-        named = [NamedDigest(path=name, digest=hashlib.sha256(data).digest()) for name, data in companions.items()]
+        named = [NamedDigest.of(name, data) for name, data in companions.items()]
         for one in named:
             if _is_acknowledgement(one):
-                said = Acknowledgement.parse(companions[one.path], where=one.path)
-                event = Acknowledged(what="acknowledged", custodian=said.custodian)
-                append(folder, event, keys=self.keys, documents=[one])
+                custodian = one.path.removeprefix(f"{ACKNOWLEDGEMENTS}/").removesuffix(".json")
+                append(folder, Acknowledged(what="acknowledged", custodian=custodian), keys=self.keys, documents=[one])
         record = dealt.record
         append(
             folder,
@@ -88,14 +86,21 @@ class Entering:
             documents=[one for one in named if not _is_acknowledgement(one)],
         )
 
-    def undone(self, folder: Path, dealt: Dealt) -> None:
+    def _end_unfinished(self, folder: Path) -> None:
+        """Enter that the dealing which ends the journal came to nothing: a run was killed before its record stood."""
+        entries = load_journal(folder).entries
+        last = entries[-1].event if entries else None
+        if isinstance(last, DealtEvent):
+            self.undone(folder, last.set)
+
+    def undone(self, folder: Path, set_id: bytes) -> None:
         """Enter that a dealing already entered came to nothing; an entry is never taken back.
 
         Raises:
             StorageError: the journal cannot be written.
         """
-        remark = f"the split of set {dealt.record.set.hex()} did not finish: no record was written"
-        append(folder, Deviation(what="exception", remark=remark, remedy="its files were removed"), keys=self.keys)
+        remark = f"the split of set {set_id.hex()} did not finish: no record was written"
+        append(folder, Deviation(what="exception", remark=remark, remedy="its files are destroyed"), keys=self.keys)
 
 
 def _is_acknowledgement(one: NamedDigest) -> bool:

@@ -86,21 +86,18 @@ def check_targets(set_folder: Path, deliveries: Mapping[str, Path], companions: 
     record = set_folder / RECORD_NAME
     if os.path.lexists(record):
         raise StorageError("a set already has its record here", where=os.fspath(record), hint="choose a new folder")
-    for name in (*companions, PRACTICE_RECORD):
-        if os.path.lexists(set_folder / name):
-            raise StorageError(
-                "a file of another split, or one that did not finish, is here",
-                where=os.fspath(set_folder / name),
-                hint="choose a new folder",
-            )
-    beside = dict.fromkeys([set_folder, *((set_folder / name).parent for name in companions)])
+    beside = [set_folder / name for name in (*companions, PRACTICE_RECORD)]
     targets = [
-        share_path(folder, custodian, suffix)
-        for custodian, folder in deliveries.items()
-        for suffix in (BARE_SUFFIX, WRAPPED_SUFFIX, PRACTICE_SUFFIX)
+        *(
+            share_path(folder, custodian, suffix)
+            for custodian, folder in deliveries.items()
+            for suffix in (BARE_SUFFIX, WRAPPED_SUFFIX, PRACTICE_SUFFIX)
+        ),
+        *beside,
     ]
-    unfinished = [path for folder in (*beside, *dict.fromkeys(deliveries.values())) for path in leftovers(folder)]
-    there = [path for path in targets if os.path.lexists(path)] + unfinished
+    folders = dict.fromkeys([set_folder, *(path.parent for path in beside), *deliveries.values()])
+    there = [path for path in targets if os.path.lexists(path)]
+    there += [path for folder in folders for path in leftovers(folder)]
     if there:
         names = ", ".join(os.fspath(path) for path in there)
         raise StorageError(
@@ -165,10 +162,10 @@ def hand_over(
     try:
         for share in dealt.shares:
             act.write(paths[share.custodian], packed[share.custodian].pack(share))
+        for share in practice.shares if practice else ():
+            act.write(rehearsed[share.custodian], share.to_file())
         trials, total = _prove(dealt, paths, packed, progress)
         if practice:
-            for share in practice.shares:
-                act.write(rehearsed[share.custodian], share.to_file())
             _prove(practice, rehearsed, dict.fromkeys(rehearsed, Packing.bare()), None)
             act.write_back(PRACTICE_RECORD, practice.record.to_file())
         for name, data in beside.items():
@@ -215,7 +212,7 @@ class _Act:
         practice: Dealt | None,
     ) -> None:
         """Enter the dealing into the journal."""
-        self.entered = lambda: entering.undone(self.folder, dealt)
+        self.entered = lambda: entering.undone(self.folder, dealt.record.set)
         entering.dealing(self.folder, dealt, packings, companions, practice)
 
     def undo(self) -> None:

@@ -1,6 +1,6 @@
 """The attestation: a custodian's answer to a challenge, signed by the share itself, by the custodian, or by both.
 
-Source: ISO/IEC 9798-3 (the answer names the challenge, whose nonce is fresh); FORMAT.md, sec. 17.
+Source: ISO/IEC 9798-3 (the answer names the challenge, whose nonce is fresh); FORMAT_EVIDENCE.md, sec. 17.
 May import: shares.documents.base, .event, .members, .party, .share, .signing.
 Secret: the share that signs, and the party key, passed through. Confidential: the answer. Public: its signatures' keys.
 Does not: judge: whether the signatures fit, and the answer its challenge, is for ``evidence.judge`` to say.

@@ -1,6 +1,6 @@
 """The challenge: a fresh, dated and signed question to custodians, which one answer fits and no earlier one.
 
-Source: ISO/IEC 9798-3 (a nonce and a signature show that an answer is fresh); FORMAT.md, sec. 17.
+Source: ISO/IEC 9798-3 (a nonce and a signature show that an answer is fresh); FORMAT_EVIDENCE.md, sec. 17.
 May import: shares.clock, shares.sharing.rule, shares.documents.base, .entry, .event, .members, .party, .signing.
 Secret: nothing; the asker's party key is passed through. Confidential: who is asked, and when. Public: the rest.
 Does not: say who the asker is: people do, by the fingerprint of the card in it.

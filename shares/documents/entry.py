@@ -25,6 +25,7 @@ from shares.documents.signing import is_signed_text
 from shares.errors import DocumentError, ParameterError
 
 MAX_ENTRY_SIGNATURES = 8
+_ENCODER = json.JSONEncoder(ensure_ascii=False, sort_keys=True, separators=(",", ":"))
 
 
 class NamedDigest(Document):
@@ -136,8 +137,11 @@ class Entry(Document):
     def line(self) -> bytes:
         """Return the entry's line, without the line end: its canonical form."""
         # For members named in ASCII and texts without control characters this is the form of RFC 8785, and faster.
-        members = self.model_dump(mode="json", by_alias=True)
-        return json.dumps(members, ensure_ascii=False, sort_keys=True, separators=(",", ":")).encode("utf-8")
+        return _ENCODER.encode(self.model_dump(mode="json", by_alias=True)).encode("utf-8")
+
+    def head(self) -> Head:
+        """Return where a journal stands whose last entry this is."""
+        return head_of(self.sequence, line_digest(self.line()))
 
 
 def line_digest(line: bytes) -> bytes:

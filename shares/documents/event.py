@@ -359,6 +359,7 @@ Event: TypeAlias = (
 )
 EVENTS: tuple[type[Event], ...] = get_args(Event)
 _BY_WHAT = {get_args(event.model_fields["what"].annotation)[0]: event for event in EVENTS}
+EVENT_NAMES: tuple[str, ...] = tuple(_BY_WHAT)
 
 
 def make_event(what: str, **members: object) -> Event:

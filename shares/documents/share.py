@@ -43,7 +43,7 @@ from shares.sharing.rule import MAX_DEPTH, MAX_POINTS, Point
 HEADER = ("kind", "version", "set", "epoch", "custodian", "field", "paths", "secret_commitment", "encrypted_file")
 NOTES = ("label", "rule", "notice", "record")
 SHARE_ATTESTS = "attestation-share"
-"""The purpose of signatures by a share's attestation key (FORMAT.md, sec. 17): no party signs for it."""
+"""The purpose of signatures by a share's attestation key (FORMAT_EVIDENCE.md, sec. 17): no party signs for it."""
 MIN_ROW, MAX_ROW = 53, 131_072
 NOTICE = (
     "This is one custodian's secret share. Keep it private and whole; "

@@ -1,6 +1,6 @@
 """Asking custodians to attest, and a custodian's truthful answer.
 
-Source: FORMAT.md, sec. 17; ISO/IEC 9798-3 (the fresh nonce).
+Source: FORMAT_EVIDENCE.md, sec. 17; ISO/IEC 9798-3 (the fresh nonce).
 May import: shares.errors, shares.clock, shares.documents, shares.custody, shares.evidence.judge.
 Secret: the share that is looked at, and the party keys that sign. Confidential: what answers tell of places.
 Public: the rest.
@@ -78,9 +78,12 @@ def make_challenge(
         created: now by default.
 
     Raises:
-        ParameterError: nobody is asked, somebody twice or whom the record does not name; or ``due`` is past.
+        ParameterError: nobody is asked, somebody twice or whom the record does not name; ``due`` is past; or a
+            time is not in UTC and to the second.
     """
     created = clock.now() if created is None else created
+    for moment in (created, due):
+        clock.to_text(moment)
     unknown = [name for name in custodians if record.custodian(name) is None]
     if unknown:
         names = ", ".join(custodian.name for custodian in record.custodians)
@@ -127,9 +130,10 @@ def check_asked(
     Raises:
         SetMismatchError, EpochMismatchError: it is about another set or epoch.
         VerificationError: it is about another record, by a party that is not trusted, or dated ahead of this machine.
-        ParameterError: it asks others.
+        ParameterError: it asks others, or the time is not in UTC and to the second.
     """
     time = clock.now() if time is None else time
+    now = clock.to_text(time)
     check_challenge(challenge, record)
     if trusted and challenge.card.fingerprint not in {card.fingerprint for card in trusted}:
         raise VerificationError(
@@ -142,7 +146,7 @@ def check_asked(
         )
     if time < challenge.created - TOLERANCE:
         raise VerificationError(
-            f"the challenge is dated {clock.to_text(challenge.created)}, and it is {clock.to_text(time)} here",
+            f"the challenge is dated {clock.to_text(challenge.created)}, and it is {now} here",
             hint="set the clock of this machine, or ask for another challenge",
         )
 

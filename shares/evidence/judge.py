@@ -1,6 +1,6 @@
 """Whether an answer to a challenge is to be believed, and what it is worth: from public material alone.
 
-Source: FORMAT.md, sec. 17; that silence is no consent, and a seal no content, is common practice.
+Source: FORMAT_EVIDENCE.md, sec. 17; that silence is no consent, and a seal no content, is common practice.
 May import: shares.errors, shares.clock, shares.documents.
 Secret: nothing. Confidential: what answers tell of persons and places. Public: the judgement.
 Does not: touch files or the journal; ``evidence.rounds`` does. It believes the challenge, whose asker people know.

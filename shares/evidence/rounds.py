@@ -1,6 +1,6 @@
 """Rounds of attestation in a set's folder: a challenge filed, its answers judged and entered, and who is still silent.
 
-Source: FORMAT.md, sec. 17.
+Source: FORMAT_EVIDENCE.md, sec. 17.
 May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history, shares.evidence.attest,
 shares.evidence.judge.
 Secret: party keys that sign, passed through. Confidential: challenges, answers, journal. Public: nothing else.

@@ -17,9 +17,12 @@ from shares.errors import StorageError
 from shares.storage import read_file
 from shares.streams import refusing
 
+MAX_DOCUMENT = 16 << 20
+"""The largest file that an entry names, in bytes: 16 MiB, for scans."""
+
 RECORD_NAME = "record.json"
 POLICY_NAME = "policy.toml"
-PRACTICE_RECORD = "practice/record.json"
+PRACTICE_RECORD = "practice.json"
 
 
 class Files(Protocol):

@@ -21,7 +21,7 @@ from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
-from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, is_name_in_set
+from shares.history.files import MAX_DOCUMENT, POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, is_name_in_set
 from shares.history.journal import Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 
@@ -63,9 +63,9 @@ class SetFolder:
         """Return a file of the folder as an entry names it.
 
         Raises:
-            StorageError: it cannot be read, or is larger than 1 MiB.
+            StorageError: it cannot be read, or is larger than 16 MiB.
         """
-        data = read_file(self.path / name, limit=MAX_FILE)
+        data = read_file(self.path / name, limit=MAX_DOCUMENT)
         return NamedDigest.of(name, data)
 
     def practice_record(self) -> Record:

@@ -40,8 +40,7 @@ from shares.storage import read_file, write_new
 JOURNAL_NAME = "journal.jsonl"
 MAX_JOURNAL = 1 << 30
 """The largest journal, in bytes: 1 GiB."""
-_TORN_NAME = "journal.torn-"
-_TORN = re.compile(r"journal\.torn-[0-9a-f]{16}")
+_TORN = re.compile(r"journal\.torn-[0-9]+-[0-9a-f]{16}")
 
 ProblemKind: TypeAlias = Literal[
     "entry", "sequence", "chain", "signature", "time", "torn", "set-aside", "record", "missing", "altered", "renamed",
@@ -96,12 +95,10 @@ class Journal:
         return self._standing.get(base64.b32decode(head.head.replace("-", ""))) == head.sequence
 
     def signers(self, entry: Entry) -> list[PartyCard]:
-        """The parties that signed an entry of this journal, those left out whose signature does not fit."""
-        return [
-            self.cards[one.card]
-            for one in entry.signatures
-            if one.card in self.cards and (entry.sequence, one) not in self._unproved
-        ]
+        """The parties that signed an entry of this journal, each once; not those whose signature does not fit."""
+        fitting = (one.card for one in entry.signatures if (entry.sequence, one) not in self._unproved)
+        parties = {self.cards[card].ed25519: self.cards[card] for card in fitting if card in self.cards}
+        return list(parties.values())
 
 
 def read_journal(data: bytes, *, progress: Callable[[int, int | None], None] | None = None) -> Journal:
@@ -184,7 +181,6 @@ class _Reader:
             elif card.ed25519 in keys:
                 # Two cards with one signing key are one party.
                 what = f"one party signed it twice, the second time as {card.name}"
-                self.unproved.add((entry.sequence, one))
             else:
                 keys.add(card.ed25519)
                 continue
@@ -278,7 +274,7 @@ def append(
 
         _last(lines, folder)
         if lines.torn:
-            _keep(folder, lines.torn)
+            _keep(folder, lines)
             lines.cut()
         for name in unnamed(os.listdir(folder), lambda name: lines.holds(f'"path":"{name}"'.encode())):
             data = read_file(folder / name, limit=MAX_FILE)
@@ -341,11 +337,14 @@ def _made(
     return entry
 
 
-def _keep(folder: Path, torn: bytes) -> None:
-    """Write a torn line to a file of its own, unless a run that was stopped later has done so already."""
-    path = folder / f"{_TORN_NAME}{hashlib.sha256(torn).hexdigest()[:16]}"
-    if not os.path.lexists(path) or read_file(path, limit=MAX_FILE) != torn:
-        write_new(path, torn, secret=True)
+def _keep(folder: Path, lines: Lines) -> None:
+    """Write a torn line to a file of its own, unless a run that was stopped thereafter has done so already.
+
+    The name tells where and what: two pieces that are alike, as one byte easily is, are still two.
+    """
+    path = folder / f"journal.torn-{lines.end}-{hashlib.sha256(lines.torn).hexdigest()[:16]}"
+    if not os.path.lexists(path) or read_file(path, limit=MAX_FILE) != lines.torn:
+        write_new(path, lines.torn, secret=True)
 
 
 def unnamed(names: Iterable[str], holds: Callable[[str], bool]) -> list[str]:

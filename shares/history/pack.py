@@ -17,7 +17,7 @@ from typing import Final
 
 from shares.documents.base import MAX_FILE, parse_object
 from shares.errors import DocumentError, StorageError
-from shares.history.files import POLICY_NAME, RECORD_NAME, Files
+from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, Files
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL
 from shares.history.tar import END, MAX_MEMBERS, MAX_NAME, content, header, index, padding
 from shares.storage import StrPath
@@ -26,8 +26,8 @@ from shares.streams import new_file, regular_file
 MAX_PACKED: Final = 1 << 24
 """The largest file in a pack beside the journal, in bytes: 16 MiB, for scans."""
 # What a set's folder holds for others to see (FORMAT.md, sec. 15). All else stays where it is.
-_NAMES: Final = (RECORD_NAME, POLICY_NAME, JOURNAL_NAME)
-_FOLDERS: Final = ("acknowledgements", "attestations", "ceremony", "documents", "drills", "practice")
+_NAMES: Final = (RECORD_NAME, PRACTICE_RECORD, POLICY_NAME, JOURNAL_NAME)
+_FOLDERS: Final = ("acknowledgements", "attestations", "ceremony", "documents", "drills")
 _TORN: Final = re.compile(r"journal\.torn-[0-9a-f]{16}")
 # Files that hold a share or a private key, sealed or not. What is damaged, or stands within something else, counts.
 _SECRET: Final = ("share", "wrapped-share", "sealed-secret", "party-key")

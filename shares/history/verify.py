@@ -12,14 +12,13 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Iterable, Iterator, Sequence
 
-from shares.documents.base import MAX_FILE
 from shares.documents.entry import Entry, Head, NamedDigest
 from shares.documents.event import Dealt, SetAside
 from shares.documents.party import PartyCard
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import StorageError
-from shares.history.files import Files, is_name_in_set
+from shares.history.files import MAX_DOCUMENT, Files, is_name_in_set
 from shares.history.journal import Journal, Problem, unnamed
 
 
@@ -100,7 +99,7 @@ def _document_problems(journal: Journal, files: Files, names: frozenset[str]) ->
 
 def _content_problem(entry: Entry, document: NamedDigest, files: Files) -> Iterator[Problem]:
     try:
-        found = files.read(document.path, limit=MAX_FILE)
+        found = files.read(document.path, limit=MAX_DOCUMENT)
     except StorageError as error:
         what = f"it names {document.path}, which cannot be read: {error.what}"
         yield Problem(entry.sequence, what, kind="missing")

@@ -1,6 +1,6 @@
 """Attestations: two signatures over one answer, neither of which can stand in for the other.
 
-Checked against: FORMAT.md, section 17, by the signer written from the text of section 9
+Checked against: FORMAT_EVIDENCE.md, section 17, by the signer written from the text of section 9
 (tests/vectors/make/wrapping_v1.py), and by the attestation key worked out from the share's file with the standard
 library (RFC 5869).
 """
@@ -127,7 +127,7 @@ def test_a_key_of_small_order_has_signed_nothing() -> None:
         (MADE, {"colour": "blue"}, "does not know"),
         (MADE, {"kind": "challenge"}, "an attestation is wanted here, but it is a challenge"),
     ],
-    ids=lambda value: str(value) if isinstance(value, dict) else "",
+    ids=lambda value: "-".join(value) if isinstance(value, dict) else "",  # Values hold keys made anew in each run.
 )
 def test_what_contradicts_itself_is_refused(made: Attestation, change: dict[str, Any], reason: str) -> None:
     with pytest.raises(DocumentError, match=reason):

@@ -11,6 +11,7 @@ from typing import Any
 
 import jsonschema
 import pytest
+from attested import answered, challenge, sealed
 from hypothesis import given
 from parties import QUICK, card, party, passphrase, unlocked
 from strategies import CREATED, crooked_split, flat, moduli, octets, rules
@@ -19,6 +20,7 @@ from vectors.make import wrapping_v1 as by_hand
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import Document
 from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
+from shares.documents.entry import head_of
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
@@ -44,6 +46,7 @@ def samples() -> dict[str, Any]:
     secret = SealedSecret.seal(
         Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive", secret_commitment=bytes(32)
     )
+    asked = challenge(head=head_of(12, bytes(32)))
     made = {
         "share": share,
         "record": DEALT.record,
@@ -54,9 +57,14 @@ def samples() -> dict[str, Any]:
         "party-key": party(NAME),
         "party-card": card(NAME),
         "acknowledgement": accepted,
+        "challenge": asked,
+        "attestation": answered(asked),
+        "attestation of a seal": sealed(asked),
         "ceremony-script": script,
     }
-    return {name: json.loads(document.to_file()) for name, document in made.items()}
+    journal = (Path(__file__).parents[1] / "vectors/golden/v1/journal/journal.jsonl").read_text().splitlines()
+    entries = {f"journal-entry {i + 1}": json.loads(line) for i, line in enumerate(journal)}
+    return {name: json.loads(document.to_file()) for name, document in made.items()} | entries
 
 
 def ceremony_script() -> CeremonyScript:
@@ -269,6 +277,50 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         "nine signatures": {"signatures": SAMPLES["ceremony-script"]["signatures"] * 9},
     },
 }
+OF_CHALLENGE: dict[str, dict[str, Any]] = {
+    "another purpose": {"purpose": "recovery"},
+    "nobody asked": {"custodians": []},
+    "a short nonce": {"nonce": "00" * 31},
+    "a local time": {"due": "2026-12-01T07:00:00+01:00"},
+    "a head without its number": {"journal": {"head": SAMPLES["challenge"]["record"]}},
+    "entry 0": {"journal": {"sequence": 0, "head": SAMPLES["challenge"]["record"]}},
+    "drill 0": {"drill": 0},
+    "no asker": {"card": None},
+    "a short signature": {"signature": "A" * 85},
+}
+OF_ATTESTATION: dict[str, dict[str, Any]] = {
+    "another grade": {"grade": "seen"},
+    "another result": {"result": "fine"},
+    "another carrier": {"carrier": "stone"},
+    "opened as number": {"opened": 0},
+    "an empty place": {"place": ""},
+    "a long remark": {"remark": "x" * 501},
+    "a short share signature": {"share_signature": "A" * 85},
+    "a short party signature": {"party_signature": "A" * 85},
+    "a challenge in capitals": {"challenge": "AB" * 32},
+}
+PER_SAMPLE |= {
+    "challenge": {**some(*COMMON, *FACTS[:-1], *LABEL), **OF_CHALLENGE},
+    "attestation": {**some(*COMMON, *FACTS[:-1]), **OF_ATTESTATION},
+}
+ENTRY, EVENT = SAMPLES["journal-entry 2"], SAMPLES["journal-entry 2"]["event"]
+OF_ENTRY: dict[str, dict[str, Any]] = {
+    **some(*COMMON),
+    "number 0": {"sequence": 0},
+    "number 2^32": {"sequence": 2**32},
+    "a local time": {"time": "2026-12-01T07:00:00+01:00"},
+    "a short digest before": {"previous": "00" * 31},
+    "no event": {"event": {}},
+    "an unknown event": {"event": {**EVENT, "what": "forgotten"}},
+    "an event of other members": {"event": {**EVENT, "what": "delivered"}},
+    "an event with a member too many": {"event": {**EVENT, "words": "x"}},
+    "an event with a member too few": {"event": {"what": "introduced", "custodian": "registrar"}},
+    "a document without a digest": {"documents": [{"path": "record.json"}]},
+    "nine signatures": {"signatures": ENTRY["signatures"] * 9},
+    "a short signature": {"signatures": [{**ENTRY["signatures"][0], "signature": "A" * 85}]},
+    "a card that is none": {"cards": [{}]},
+}
+PER_SAMPLE["journal-entry 2"] = OF_ENTRY
 CASES = [(sample, name, change) for sample, changes in PER_SAMPLE.items() for name, change in changes.items()]
 
 
@@ -276,7 +328,8 @@ CASES = [(sample, name, change) for sample, changes in PER_SAMPLE.items() for na
 def test_samples_validate_and_parse(sample: str) -> None:
     members = SAMPLES[sample]
     VALIDATORS[members["kind"]].validate(members)
-    assert json.loads(BY_NAME[members["kind"]].parse(json.dumps(members).encode()).to_file()) == members  # type: ignore[attr-defined]
+    parsed = BY_NAME[members["kind"]].parse(json.dumps(members).encode())
+    assert parsed.model_dump(mode="json", by_alias=True) == members
 
 
 def test_there_is_a_sample_of_every_kind() -> None:

@@ -32,7 +32,7 @@ PACKED = {
     "drills/9/report.json": b"{}",
     "journal.torn-0123456789abcdef": b'{"kind":"journal-en',
     "policy.toml": b'label = "Tide archive root"\n',
-    "practice/record.json": b"{}",
+    "practice.json": b"{}",
 }
 LEFT = {"secret.encrypted": b"shares encrypted file\n", "notes.txt": b"x", "journal.torn-1": b"", "other/a.json": b"{}"}
 

@@ -1,6 +1,6 @@
 """The golden samples of a challenge and of answers to it, made of the flat set and the parties of `wrapped_v1`.
 
-Source: shares/documents/FORMAT.md, section 17. Everything drawn comes from a stated seed.
+Source: shares/documents/FORMAT_EVIDENCE.md, section 17. Everything drawn comes from a stated seed.
 May import: the standard library and the `_v1` modules beside it.
 Secret: nothing; keys here are made up, and worthless.
 Does not: test anything. test_make_set_v1.py does.
