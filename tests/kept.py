@@ -29,7 +29,7 @@ from shares.evidence.audited import Audit
 from shares.evidence.drill import open_drill, the_drill
 from shares.evidence.rehearsal import rehearse
 from shares.evidence.rounds import Entered, ask, enter
-from shares.history.files import FolderFiles
+from shares.history.files import PRACTICE_RECORD, FolderFiles
 from shares.history.folder import SetFolder
 from shares.history.journal import append
 from shares.memory import Secret
@@ -94,8 +94,8 @@ class Kept:
         if policy:
             (folder / "policy.toml").write_bytes(policy)
         if practice:
-            (folder / "practice").mkdir()
-            (folder / "practice/record.json").write_bytes(practice.record.to_file())
+            (folder / PRACTICE_RECORD).parent.mkdir(exist_ok=True)
+            (folder / PRACTICE_RECORD).write_bytes(practice.record.to_file())
         record = dealt.record
         if signed:
             with unlocked(OFFICE) as key:

@@ -26,7 +26,7 @@ from shares.errors import ParameterError
 from shares.evidence.after_action import close_drill, in_words, report_page
 from shares.evidence.drill import Drill, open_drill, rehearsed_together, the_drill
 from shares.evidence.rehearsal import Probe, Rehearsal, rehearse
-from shares.evidence.roster import roster
+from shares.evidence.roster import Covers, roster
 from shares.history.folder import SetFolder
 from shares.storage import write_new
 
@@ -344,9 +344,14 @@ def close_(
     callback=interval,
     help="How far back rehearsals count as done.",
 )
+@click.option(
+    "--covers",
+    type=click.Choice(["pairs", "quorums"]),
+    help="What is to be covered.  [default: every quorum where there are 12 at most, else every pair]",
+)
 @click.option("--seed", type=int, default=0, show_default=True, help="Decides among rosters that are equally good.")
 @json_option
-def roster_(folder: str, cycle: timedelta, seed: int, as_json: bool) -> None:
+def roster_(folder: str, cycle: timedelta, covers: Covers | None, seed: int, as_json: bool) -> None:
     """Say who should rehearse with whom, so that all who can need each other recover together in few drills.
 
     What past rehearsals of the SET have covered is left out. It tells who can recover: keep it like the policy.
@@ -357,7 +362,7 @@ def roster_(folder: str, cycle: timedelta, seed: int, as_json: bool) -> None:
     """
     of_set = SetFolder(folder)
     past = rehearsed_together(of_set.journal(), clock.now() - cycle)
-    found = roster(of_set.record.rule.to_rule(), past, seed=seed)
+    found = roster(of_set.record.rule.to_rule(), past, covers=covers, seed=seed)
     unit = "pair" if found.covers == "pairs" else "quorum"
     lines = [
         f"{len(found.drills)} drills for {of_set.record.label}, no fewer than {found.bound} ({found.bound_by}).",

@@ -19,7 +19,7 @@ from strategies import CREATED
 from shares.documents.ceremony_script import MAX_SCRIPT_SIGNATURES, CeremonyScript
 from shares.errors import DocumentError, ParameterError
 
-GOLDEN = Path(__file__).parents[1] / "vectors/golden/v1/evidence/ceremony_script.json"
+GOLDEN = Path(__file__).parents[1] / "vectors/golden/v1/ceremony/script.json"
 DATA = GOLDEN.read_bytes()
 MEMBERS: dict[str, Any] = json.loads(DATA)
 

@@ -1,18 +1,15 @@
-"""Make the golden ceremony script: ``python tests/vectors/make/ceremony_v1.py FOLDER``.
+"""The golden sample of a ceremony script, signed.
 
-By shares/documents/FORMAT.md, sec. 9 and 19, and `wrapping_v1`, which shares no code with the package. The signer is
-the harbour-office of the golden samples of wrapping.
+By shares/documents/FORMAT.md, sec. 9, FORMAT_EVIDENCE.md, sec. 19, and `wrapping_v1`, which shares no code with the
+package. The signer is the harbour-office of the golden samples of wrapping.
 """
 
-import sys
-from pathlib import Path
 from typing import Any
 
 import wrapped_v1
 import wrapping_v1 as by_hand
-from dealer_v1 import pretty, sha256
+from dealer_v1 import sha256
 
-NAME = "ceremony_script.json"
 CONTACT = "the office on the quay, \u00ab2nd floor\u00bb"
 SIGNED = "2026-12-02T09:30:00Z"
 
@@ -49,7 +46,3 @@ def script() -> dict[str, Any]:
     signature = wrapped_v1.private_keys("harbour-office").signing.sign(by_hand.signed("ceremony-script", members))
     entry = {"time": SIGNED, "card": card, "signature": by_hand.b64(signature)}
     return made | {"signatures": [entry]}
-
-
-if __name__ == "__main__":
-    (Path(sys.argv[1]) / NAME).write_text(pretty(script()), "utf-8")
