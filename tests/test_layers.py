@@ -42,7 +42,7 @@ THIRD_PARTIES = {
     "pydantic_core": {"documents"},
     "rfc8785": {"documents"},
     "cryptography": {"documents", "custody"},
-    "jinja2": {"paper", "evidence"},
+    "jinja2": {"paper"},
     "segno": {"paper"},
 }
 

@@ -25,8 +25,8 @@ from shares.documents.event import EVENT_NAMES, Departed, Event, HandedOn, Incid
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, StorageError, VerificationError
-from shares.history.files import MAX_DOCUMENT, FolderFiles
-from shares.history.folder import POLICY_NAME, RECORD_NAME, SetFolder, load_policy
+from shares.history.files import MAX_DOCUMENT, POLICY_NAME, RECORD_NAME, FolderFiles
+from shares.history.folder import SetFolder, load_policy
 from shares.history.heads import heads_in
 from shares.history.journal import JOURNAL_NAME, Journal, Problem, load_journal
 from shares.history.reports import NEEDS, Report, append_with, event_of

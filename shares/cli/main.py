@@ -31,16 +31,21 @@ COMMANDS = {
     "party": ("party", "Make and show party keys and cards."),
     "passphrase": ("passphrase", "Draw a random passphrase."),
     "acknowledge": ("acknowledge", "Accept a custodian's duties, before the share is handed over."),
+    "ceremony": ("ceremony", "Write the script of a key ceremony, log its steps, report on it."),
     "split": ("split", "Split a secret into shares, and check that they recover it."),
     "verify": ("verify", "Check each share alone, without any secret."),
     "sheet": ("sheet", "Print a share: lines to type, a QR code, and a receipt."),
     "transcribe": ("transcribe", "Read a printed share back, typed or scanned."),
+    "attest": ("attest", "Ask custodians for proof of their shares; answer; check the answers."),
+    "drill": ("drill", "Rehearse a recovery, and report what it showed."),
+    "audit": ("audit", "Audit sets: would recovery work, and does the evidence hold?"),
     "recover": ("recover", "Recover a secret from enough shares."),
     "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
     "unwrap": ("unwrap", "Open a wrapped share, or a secret recovered for your card."),
     "record": ("record", "Sign a record, as its dealer or a witness."),
     "journal": ("journal", "Show, extend and verify what has happened to a set."),
     "show": ("show", "Show the public facts of a share or record."),
+    "retire": ("retire", "End a set: each copy destroyed before a witness, then closed."),
     "polynomial": ("polynomial", "List and check field polynomials."),
     "selftest": ("selftest", "Test this installation and this machine."),
     "completion": ("completion", "Print the completion script for a shell."),
@@ -48,7 +53,7 @@ COMMANDS = {
 
 EXIT_CODES = """\b
 Exit codes: 0 done, 1 failed, 2 usage, 3 not enough shares, 4 verification failed,
-5 file or I/O, 6 audit found something due (not in this version), 7 the command that was fed failed."""
+5 file or I/O, 6 audit found something due, 7 the command that was fed failed."""
 
 
 class _Commands(click.Group):

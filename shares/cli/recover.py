@@ -3,23 +3,30 @@
 from __future__ import annotations
 
 import contextlib
+import os
 from pathlib import Path
 
 import click
 
-from shares.cli.keys import key_option, opening, suite_option, trust_option
+from shares.cli.feeding import FeedsCommand
+from shares.cli.keys import key_option, opening, sign_option, signers, suite_option, trust_option
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
 from shares.custody.deliver import fed as fed_command
 from shares.custody.deliver import sealed_for, to_command, to_file
 from shares.custody.encrypted_file import check_file, open_file
+from shares.custody.entries import Purpose
 from shares.custody.parties import load_card
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
+from shares.documents.party import OpenPartyKey
 from shares.documents.record import Record
 from shares.documents.wrapping import Suite
 from shares.errors import ParameterError, VerificationError
+from shares.history.files import RECORD_NAME
+from shares.history.folder import SetFolder
+from shares.history.journal import JOURNAL_NAME
 from shares.storage import leftovers, write_new
 from shares.streams import new_file
 
@@ -29,23 +36,17 @@ EXPOSED = (
     "this machine has now held the secret and the shares used. "
     "Decide what becomes of both: return, replace by a date, or destroy."
 )
+# After a recovery that was entered into the journal, which holds what was decided.
+KNOWN = "this machine has now held the secret and the shares used, and the set's journal says so. "
+RESOLVE = " Then enter that with `shares journal add`."
+NEXT = {
+    "returned": KNOWN + "Bring each share back to its custodian, and wipe this machine.",
+    "destroyed": KNOWN + "Destroy the key and these copies of the shares, before a witness, and wipe this machine.",
+    "replace": KNOWN + "Replace the key until {by:%Y-%m-%d}, and wipe this machine." + RESOLVE,
+}
 
 
-class _FeedsCommand(click.Command):
-    """Takes what follows ``--`` as a command and its arguments, never as shares."""
-
-    def parse_args(self, ctx: click.Context, args: list[str]) -> list[str]:
-        if "--" in args:
-            at = args.index("--")
-            ctx.meta["command"] = args[at + 1 :]
-            args = args[:at]
-        return super().parse_args(ctx, args)
-
-    def collect_usage_pieces(self, ctx: click.Context) -> list[str]:
-        return [*super().collect_usage_pieces(ctx), "[-- COMMAND ARG...]"]
-
-
-@click.command(cls=_FeedsCommand)
+@click.command(cls=FeedsCommand)
 @click.argument("files", metavar="SHARE...", nargs=-1, required=True, callback=filled)
 @click.option(
     "--record",
@@ -76,6 +77,17 @@ class _FeedsCommand(click.Command):
     callback=filled,
     help="The encrypted file whose key the shares hold, where the secret was encrypted.",
 )
+@click.option("--reason", metavar="TEXT", callback=filled, help="Why it is recovered, for the set's journal.")
+@click.option(
+    "--disposition",
+    metavar="returned|destroyed|DATE",
+    callback=filled,
+    help="What becomes of key and shares afterwards; DATE (like 2026-12-31): the key is replaced by then.",
+)
+@click.option(
+    "--present", "persons", multiple=True, metavar="PERSON", callback=filled, help="Who is present; once for each."
+)
+@sign_option
 @suite_option
 @trust_option
 @key_option
@@ -90,6 +102,10 @@ def command(
     check: bool,
     receiver: str | None,
     encrypted_file: str | None,
+    reason: str | None,
+    disposition: str | None,
+    persons: tuple[str, ...],
+    signer_files: tuple[str, ...],
     suite: Suite,
     trusted_files: tuple[str, ...],
     keys: tuple[str, ...],
@@ -104,10 +120,14 @@ def command(
     Wrapped shares are opened in memory, with --key or a passphrase. Bad shares are named; with more shares than needed
     it still recovers, searching at most 20,000 quorums or 20 seconds.
 
+    Where a journal lies beside the record, the recovery is entered into it before the secret goes anywhere: --reason
+    and --disposition are asked for then.
+
     \b
     Examples:
       shares recover north-pier.share.json light-house.share.json registrar.share.json --to key.pem
-      shares recover *.share.json --record record.json --check
+      shares recover *.share.json --record tide-archive/record.json --check \\
+        --reason "the archive's disk failed" --disposition 2026-12-31
       shares recover *.share.json -- openssl pkey -pubout
       shares recover north-pier.wrapped.json dry-dock.wrapped.json registrar.wrapped.json \\
         --passphrase-file north-pier.passphrase --passphrase-file dry-dock.passphrase \\
@@ -135,9 +155,16 @@ def command(
             where=record_file or "--trust",
             hint="`shares verify --record R` says who signed it; ask the dealer for the signed record",
         )
+    journaled = _journaled(record_file)
+    purpose = _purpose(reason, disposition, persons, wanted=journaled is not None)
     with opening(keys, passphrase_files, descriptors) as at_hand:
+        signing = signers(signer_files, at_hand) if journaled else []
+        if journaled:
+            journaled.require_signers(signing)
         recovery = recover(load_shares(files, at_hand.share), record)
-    _require_encrypted(recovery, encrypted_file, optional=card is not None)
+        _require_encrypted(recovery, encrypted_file, optional=card is not None)
+        if journaled and purpose:
+            _enter(journaled, purpose, recovery, signing)
     if not as_json:
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
@@ -171,8 +198,51 @@ def command(
             to_file(recovery.secret, Path(target))
         elif fed:
             to_command(recovery.secret, fed, output=STANDARD_ERROR if as_json else None)
-        members, lines = _members(recovery, went, against), _lines(recovery, went, against)
+        members = {**_members(recovery, went, against), "journaled": journaled is not None}
+        lines = _lines(recovery, went, against, purpose=purpose)
         print_result(members, lines, as_json=as_json, aside=bool(fed))
+
+
+def _journaled(record_file: str | None) -> SetFolder | None:
+    """Return the folder of the record where a journal lies in it."""
+    if record_file is None or Path(record_file).name != RECORD_NAME:
+        return None
+    folder = Path(record_file).parent
+    return SetFolder(folder) if os.path.lexists(folder / JOURNAL_NAME) else None
+
+
+def _purpose(reason: str | None, disposition: str | None, persons: tuple[str, ...], *, wanted: bool) -> Purpose | None:
+    """Return why the secret is recovered, asking at a terminal; None where there is no journal to enter it into.
+
+    Raises:
+        ParameterError: it is not stated and nobody can be asked, or stated where there is no journal.
+    """
+    if not wanted:
+        if reason is not None or disposition is not None or persons:
+            raise ParameterError(
+                "there is no journal to enter a reason, a disposition or persons into",
+                hint="give --record with the record in its set's folder",
+            )
+        return None
+    if os.isatty(0):
+        reason = reason or click.prompt("Why is the secret recovered", err=True)
+        disposition = disposition or click.prompt("Afterwards: returned, destroyed, or replaced by (date)", err=True)
+    if reason is None or disposition is None:
+        raise ParameterError(
+            "this set has a journal, which asks for --reason TEXT and --disposition returned|destroyed|DATE",
+            hint="what becomes of key and shares is decided before they are exposed",
+        )
+    return Purpose.of(reason, disposition, persons)
+
+
+def _enter(folder: SetFolder, purpose: Purpose, recovery: Recovery, signing: list[OpenPartyKey]) -> None:
+    """Enter the recovery; where that cannot be done, nothing is let go."""
+    try:
+        purpose.enter(folder, recovery.used, signing)
+    except BaseException:
+        recovery.secret.close()
+        recovery.payload.close()
+        raise
 
 
 def _signers(record: Record) -> str:
@@ -238,9 +308,9 @@ def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
     }
 
 
-def _lines(recovery: Recovery, went: str, against: str) -> list[str]:
+def _lines(recovery: Recovery, went: str, against: str, purpose: Purpose | None) -> list[str]:
     return [
         f"Recovered{f': {recovery.label}' if recovery.label else ''}, from {', '.join(recovery.used)}.",
         f"Checked against {against}; the secret was {went}.",
-        *prose(f"Next: {EXPOSED}"),
+        *prose(f"Next: {EXPOSED if purpose is None else NEXT[purpose.disposition].format(by=purpose.by)}"),
     ]

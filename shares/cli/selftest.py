@@ -7,6 +7,7 @@ import click
 import shares
 from shares.cli.output import json_option, print_result
 from shares.custody.selftest import selftest
+from shares.custody.software import software_digest
 from shares.field import kernel
 from shares.memory import locking, protect_process
 
@@ -26,11 +27,13 @@ def command(ctx: click.Context, as_json: bool) -> None:
     outcomes = selftest()
     failed = [outcome for outcome in outcomes if outcome.problem]
     running, lock, guard = kernel(), locking(), protect_process()
+    software = software_digest()
     members = {
         "done": not failed,
         "version": shares.__version__,
         "kernel": running.name,
         "path": running.path,
+        "software": software.hex(),
         "tests": [{"about": outcome.about, "problem": outcome.problem} for outcome in outcomes],
         "memory_locked": lock.works,
         "core_limit_zero": guard.core_limit,
@@ -38,6 +41,7 @@ def command(ctx: click.Context, as_json: bool) -> None:
     }
     lines = [
         f"shares {shares.__version__}, kernel {running.name} ({running.path})",
+        f"Software, to compare with another machine: {software.hex()}",
         *(
             f"  {'FAILED' if o.problem else 'right '}  {o.about}{f': {o.problem}' if o.problem else ''}"
             for o in outcomes

@@ -8,7 +8,9 @@ import click
 
 from shares.cli.output import filled, json_option, print_result
 from shares.documents.acknowledgement import Acknowledgement
+from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE, parse_object
+from shares.documents.challenge import Challenge
 from shares.documents.chunks import Header
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -29,6 +31,8 @@ KINDS = {
     "party-key": "party key (private, wrapped by passphrase)",
     "party-card": "party card (public)",
     "acknowledgement": "acknowledgement of duties",
+    "challenge": "challenge (what custodians are asked; fresh, dated and signed)",
+    "attestation": "attestation (an answer to a challenge; `shares attest check` checks its signatures)",
     "encrypted-file": "encrypted file (of no use without a quorum of its set's shares)",
 }
 UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
@@ -149,6 +153,27 @@ def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
     return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": found.words()}
 
 
+def _challenge(data: bytes, where: str) -> dict[str, object]:
+    found = Challenge.parse(data, where=where)
+    return {
+        **found.public("label", "set", "epoch", "record", "purpose", "created", "due"),
+        "custodians": list(found.custodians),
+        "asker": f"{found.card.name}, card {found.card.fingerprint}",
+        "journal": found.journal.words() if found.journal else None,
+        "fingerprint": found.fingerprint,
+    }
+
+
+def _attestation(data: bytes, where: str) -> dict[str, object]:
+    found = Attestation.parse(data, where=where)
+    return {
+        **found.public("set", "epoch", "custodian", "challenge", "time", "grade", "result", "carrier", "opened"),
+        **found.public("place", "serial", "remark"),
+        "signed_by_share": found.share_signature is not None,
+        "signed_by": f"{found.card.name}, card {found.card.fingerprint}" if found.card else None,
+    }
+
+
 def _card_facts(card: PartyCard) -> dict[str, object]:
     return card.public("name", "contact", "created", "fingerprint")
 
@@ -160,6 +185,8 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     Record.KIND: _record,
     PartyKey.KIND: lambda data, where: _card_facts(PartyKey.parse(data, where=where).card),
     Acknowledgement.KIND: _acknowledgement,
+    Challenge.KIND: _challenge,
+    Attestation.KIND: _attestation,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }
 

@@ -12,12 +12,13 @@ from shares.cli.output import filled, json_option, print_result, progress, prose
 from shares.cli.passphrases import GivenPassphrases, passphrase_options
 from shares.cli.signals import held_signals
 from shares.cli.wanted import from_options, from_policy
-from shares.custody.handover import HandedOver, check_targets, hand_over, other_shares
+from shares.custody.entries import Entering
+from shares.custody.handover import PRACTICE_SUFFIX, HandedOver, check_targets, hand_over, other_shares
 from shares.custody.large import ENCRYPTED_NAME, sourced
 from shares.custody.opening import Opening
 from shares.custody.packing import Packing
 from shares.custody.parties import load_key
-from shares.custody.split import Dealt, split
+from shares.custody.split import Dealt, practice_for, split
 from shares.documents.party import PartyCard
 from shares.documents.record import Role
 from shares.documents.wrapping import Suite
@@ -29,6 +30,8 @@ SEALED_NOTE = (
 )
 KEEP_ENCRYPTED = "No shares recover the secret without this file: keep copies, apart from the shares."
 MEBIBYTES = "MiB"
+FOR_DUAL_CONTROL = 2
+PRACTICE_NOTE = "Practice shares, worthless and bare, for rehearsals in the open: {files}"
 SHARED_CAUTION = "one passphrase wraps the shares of several custodians: whoever learns it opens them all."
 PLAIN_CAUTION = "the shares are written bare: all of them in one folder are the secret. Part them, and keep no copy."
 ONE_CAUTION = "there is no secrecy under this rule: a single share can be the whole secret."
@@ -151,6 +154,8 @@ def command(
     signers += [("witness", witness) for witness in witnesses]
     with GivenPassphrases(passphrase_files, descriptors) as passphrases, Opening(passphrases) as at_hand:
         loaded = [(role, load_key(path)) for role, path in signers]
+        if wanted.dual_control and len({key.card.fingerprint for _, key in loaded}) < FOR_DUAL_CONTROL:
+            raise ParameterError("the policy asks for dual control", hint="give --dealer KEY and --witness KEY")
         passphrases.only_for(list(dict.fromkeys([*names, *(key.card.name for _, key in loaded)])))
         signing = [(role, at_hand.party(key)) for role, key in loaded]
         packings = _packings(names, wanted.cards, suite, passphrases, plain=plain)
@@ -169,13 +174,22 @@ def command(
                 encrypted_file=source.encrypted_file,
                 policy=wanted.policy,
             )
+            practice = practice_for(dealt.record) if wanted.practice else None
             for role, key in signing:
                 dealt = dealt.signed(key, role)
+                practice = practice.signed(key, role) if practice else None
             with held_signals() as stop_here:
                 try:
                     shown = progress("Trial recovery", "quorums", stop_here)
                     done = hand_over(
-                        dealt, target, folders, packings=packings, companions=wanted.beside, progress=shown
+                        dealt,
+                        target,
+                        folders,
+                        packings=packings,
+                        companions=wanted.beside,
+                        practice=practice,
+                        entering=Entering([key for _, key in signing], wanted.cards),
+                        progress=shown,
                     )
                 finally:
                     dealt.close()
@@ -267,6 +281,7 @@ def _members(dealt: Dealt, done: HandedOver, packings: dict[str, Packing], cauti
         "fingerprint": dealt.record.fingerprint,
         "signers": [f"{one.card.name} as {one.role}" for one in dealt.record.signatures],
         "shares": {name: str(path) for name, path in done.shares.items()},
+        "practice": {name: str(path) for name, path in done.practice.items()},
         "packed": {name: packing.words for name, packing in packings.items()},
         "quorums_tried": done.trials,
         "quorums": done.quorums,
@@ -288,6 +303,7 @@ def _lines(
         f"Record (public): {done.record}, {f'signed by {signers}' if signers else 'unsigned'}",
         *(f"Beside it (confidential): {path}" for path in done.companions.values()),
         *([f"Encrypted secret: {encrypted}. {KEEP_ENCRYPTED}"] if encrypted else []),
+        *([PRACTICE_NOTE.format(files=_practice(done))] if done.practice else []),
         *(f"Duties accepted by {line}" for line in acknowledged),
         f"Fingerprint, to read aloud and write down: {dealt.record.fingerprint}",
         f"Checked: every share read back and verified alone; the secret recovered from {tried} quorums.",
@@ -295,3 +311,9 @@ def _lines(
         "Next: bring each share to its custodian and have it verified there with the record;",
         "then destroy the copies in the delivery folders, and the secret where it is no longer needed.",
     ]
+
+
+def _practice(done: HandedOver) -> str:
+    """Say where the practice shares are: in one pattern for each folder."""
+    folders = dict.fromkeys(path.parent for path in done.practice.values())
+    return ", ".join(str(folder / f"*{PRACTICE_SUFFIX}") for folder in folders)

@@ -2,7 +2,7 @@
 
 Source: none.
 May import: shares.errors, shares.field, shares.sharing.rule, shares.documents, shares.planning, shares.custody,
-shares.storage, shares.cli.keys, shares.cli.output.
+shares.history, shares.storage, shares.cli.keys, shares.cli.output.
 Secret: nothing. Confidential: the policy. Public: the rest.
 Does not: touch the secret.
 """
@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from shares.cli.keys import cards_by_name
+from shares.custody.entries import ACKNOWLEDGEMENTS
 from shares.custody.parties import load_card
 from shares.custody.payload import DEFAULT_PAD
 from shares.custody.split import flat_rule
@@ -23,15 +24,13 @@ from shares.documents.party import PartyCard
 from shares.errors import ParameterError
 from shares.field.gf256 import DEFAULT_MODULUS, Field
 from shares.field.polynomial import Polynomial
+from shares.history.files import POLICY_NAME
 from shares.sharing.rule import Rule
 from shares.storage import read_file
 
 if TYPE_CHECKING:
     from shares.documents.acknowledgement import Acknowledgement
     from shares.planning.findings import Finding
-
-POLICY_NAME = "policy.toml"
-ACKNOWLEDGEMENTS = "acknowledgements"
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,6 +47,8 @@ class Wanted:
         acknowledged: who has accepted the duties, and how, in words.
         beside: files that go into the set's folder beside the record, by name.
         cautions: what the examination of the policy found.
+        practice: whether a worthless set is dealt as well, for rehearsals.
+        dual_control: whether two parties sign each entry of the journal.
     """
 
     label: str
@@ -59,6 +60,8 @@ class Wanted:
     acknowledged: list[str]
     beside: Mapping[str, bytes]
     cautions: list[str]
+    practice: bool = True
+    dual_control: bool = False
 
     @property
     def custodians(self) -> tuple[str, ...]:
@@ -141,6 +144,8 @@ def from_policy(path: str, cards: tuple[str, ...], acknowledged: tuple[str, ...]
         acknowledged=[one.words() for one in found.values()],
         beside=beside,
         cautions=_told(plan.findings),
+        practice=policy.practice,
+        dual_control=policy.dual_control,
     )
 
 

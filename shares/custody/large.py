@@ -1,8 +1,8 @@
 """A secret too large to be shared itself: it is encrypted beside the record, and the key is split in its stead.
 
 Source: FORMAT.md, sec. 13.
-May import: shares.errors, shares.memory, shares.storage, shares.documents, shares.custody.encrypted_file,
-.handover, .payload.
+May import: shares.errors, shares.memory, shares.storage, shares.documents, shares.history,
+shares.custody.encrypted_file, .payload.
 Secret: the key. Public: the set's identifier, the digest of the encrypted file.
 Does not: split; ``custody.split`` does.
 """
@@ -18,10 +18,10 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from shares.custody.encrypted_file import Progress, check_file, digest_of, encrypt_file
-from shares.custody.handover import RECORD_NAME
 from shares.custody.payload import MAX_SECRET
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
+from shares.history.files import RECORD_NAME
 from shares.memory import Secret
 from shares.storage import StrPath, discard, make_folder, read_secret
 

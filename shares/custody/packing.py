@@ -12,6 +12,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Self
 
+from shares.documents.event import Packed
 from shares.documents.party import PartyCard
 from shares.documents.share import Share
 from shares.documents.wrapped_share import WrappedShare
@@ -36,6 +37,7 @@ class Packing:
 
     Attributes:
         words: how it is packed, for people; public.
+        method: the same in one word, for the journal.
         suffix: how the file's name ends, after the custodian's name.
         pack: takes the share and returns the bytes of its file.
         is_sealed: whether only the custodian can open it.
@@ -44,6 +46,7 @@ class Packing:
     """
 
     words: str
+    method: Packed
     suffix: str
     pack: Callable[[Share], bytes]
     unpack: Callable[[bytes, str, Share], Share]
@@ -52,7 +55,7 @@ class Packing:
     @classmethod
     def bare(cls) -> Self:
         """No wrapping: whoever has enough of these files has the secret."""
-        return cls("bare", BARE_SUFFIX, Share.to_file, lambda data, where, _: Share.parse(data, where=where))
+        return cls("bare", "bare", BARE_SUFFIX, Share.to_file, lambda data, where, _: Share.parse(data, where=where))
 
     @classmethod
     def by_passphrase(cls, passphrase: Secret) -> Self:
@@ -61,7 +64,7 @@ class Packing:
         def unpack(data: bytes, where: str, _: Share) -> Share:
             return WrappedShare.parse(data, where=where).open(passphrase_opener(passphrase))
 
-        return cls("wrapped by passphrase", WRAPPED_SUFFIX, _pack(passphrase_sealer(passphrase)), unpack)
+        return cls("wrapped by passphrase", "passphrase", WRAPPED_SUFFIX, _pack(passphrase_sealer(passphrase)), unpack)
 
     @classmethod
     def for_card(cls, card: PartyCard, suite: Suite = SUITES[0]) -> Self:
@@ -77,7 +80,8 @@ class Packing:
                 raise VerificationError("what was written reads back changed", where=where)
             return share
 
-        return cls(f"wrapped for the card {card.fingerprint}", WRAPPED_SUFFIX, pack, unpack, is_sealed=True)
+        words = f"wrapped for the card {card.fingerprint}"
+        return cls(words, "card", WRAPPED_SUFFIX, pack, unpack, is_sealed=True)
 
 
 def _pack(seal: Sealer) -> Callable[[Share], bytes]:

@@ -17,7 +17,7 @@ from datetime import datetime
 from shares import clock
 from shares.custody.payload import DEFAULT_PAD, commitment, make_payload
 from shares.documents.base import MAX_FILE, write_text
-from shares.documents.members import MAX_LONG_TEXT, check_name, check_text
+from shares.documents.members import MAX_LONG_TEXT, MAX_TEXT, check_name, check_text
 from shares.documents.party import OpenPartyKey
 from shares.documents.record import Custodian, Record, Role
 from shares.documents.share import Share
@@ -26,6 +26,9 @@ from shares.field.gf256 import Field
 from shares.memory import Secret
 from shares.sharing.consistency import check_matrix, checks_of
 from shares.sharing.rule import Rule, deal
+
+PRACTICE_LABEL = "Practice, worthless: "
+_WORTHLESS = 32
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -119,6 +122,20 @@ def split(
         identity = secrets.token_bytes(16) if set_id is None else set_id
         dealt = _deal(payload, rule, label, field, created, identity, encrypted_file, policy)
     return dealt
+
+
+def practice_for(record: Record) -> Dealt:
+    """Deal a worthless secret under the rule of a record, for rehearsals in the open: a set of its own.
+
+    Args:
+        record: of the set that is rehearsed for; the practice set says in its label that it is one.
+
+    Returns:
+        A dealing of 32 random bytes that protect nothing.
+    """
+    with Secret.of(secrets.token_bytes(_WORTHLESS)) as nothing:
+        label = f"{PRACTICE_LABEL}{record.label}"[:MAX_TEXT]
+        return split(nothing, record.rule.to_rule(), label=label, field=record.field, created=record.created)
 
 
 def _largest_share(rule: Rule, row_length: int) -> int:

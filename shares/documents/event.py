@@ -1,7 +1,7 @@
 """The events of a set's life, as its journal tells them: one class for each, told apart by ``what``.
 
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 5.4.1, wants life-cycle events of keys logged with date, person
-and description; the names of events are ours; FORMAT.md, sec. 16.
+and description; the names of events are ours; FORMAT_EVIDENCE.md, sec. 16.
 May import: shares.errors, shares.sharing.rule, shares.documents.base, .members.
 Secret: nothing. Confidential: persons, places and serials. Public: the rest.
 Does not: judge events or follow from one to another; ``evidence`` does.
@@ -251,12 +251,17 @@ class Resolved(Document):
 
 
 class ScriptStep(Document):
-    """A step of a ceremony was done; bound to the script by its digest."""
+    """A step of a ceremony was done; bound to the script by its digest.
+
+    Attributes:
+        repeats: whether the step had been done before, and was done again on purpose.
+    """
 
     what: Literal["step"]
     script: Digest
     step: Sequence
     initials: Text
+    repeats: bool = False
     remark: Text | None = None
 
 
@@ -284,6 +289,24 @@ class Destroyed(Document):
     by: Text
     witness: Text
     method: Text | None = None
+
+
+class Lost(Document):
+    """A copy of a share cannot be found, and is given up: it was not destroyed, and may turn up with anybody.
+
+    Attributes:
+        copy_: which copy, as in ``Destroyed``.
+        by: who says so.
+        witness: who has heard them, and is not the custodian.
+        reason: how it was lost, and where it was looked for.
+    """
+
+    what: Literal["lost"]
+    custodian: Name
+    copy_: Annotated[Text, Member(alias="copy")]
+    by: Text
+    witness: Text
+    reason: Text
 
 
 class Retired(Document):
@@ -329,6 +352,7 @@ Event: TypeAlias = (
     | ScriptStep
     | Deviation
     | Destroyed
+    | Lost
     | Retired
     | Noted
     | SetAside

@@ -25,6 +25,8 @@ from shares.memory import Secret
 
 MAX_LONG_TEXT = 65_536
 """The longest rule in words, in characters."""
+MAX_TEXT = 500
+"""The longest label, notice or remark, in characters."""
 _UNPRINTABLE = ("Cc", "Cf", "Cs", "Co", "Zl", "Zp")
 # Shown as nothing or as a space although their categories do not say so (FORMAT.md, sec. 1).
 _BLANK = frozenset(
@@ -157,16 +159,20 @@ def _valid_name(name: str) -> str:
     return name
 
 
-def check_text(text: str) -> str:
-    """Return a label or notice if it may be one: 1 to 500 characters, nothing unprintable.
+def check_text(text: str, what: str = "a label") -> str:
+    """Return a label, notice or other text if it may be one: 1 to 500 characters, nothing unprintable.
+
+    Args:
+        text: the text.
+        what: what it is, for the refusal.
 
     Raises:
         ParameterError: which rule it breaks.
     """
-    if not 1 <= len(text) <= 500:
-        raise ParameterError("a label has 1 to 500 characters")
+    if not 1 <= len(text) <= MAX_TEXT:
+        raise ParameterError(f"{what} has 1 to {MAX_TEXT} characters")
     if _holds_unprintable(text) or _holds_unassigned(text):
-        raise ParameterError("a label must not hold control or invisible characters")
+        raise ParameterError(f"{what} must not hold control or invisible characters")
     return text
 
 
@@ -233,7 +239,7 @@ Time = Annotated[
     WithJsonSchema({"type": "string", "pattern": "^[0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9]{2}:[0-9]{2}:[0-9]{2}Z$"}),
 ]
 Name = Annotated[str, AfterValidator(_valid_name), Field(min_length=1, max_length=64)]
-Text = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=500)]
+Text = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=MAX_TEXT)]
 LongText = Annotated[str, AfterValidator(_printable), Field(min_length=1, max_length=MAX_LONG_TEXT)]
 Fingerprint = Annotated[str, Field(pattern=r"^[A-Z2-7]{4}(-[A-Z2-7]{4}){7}$")]
 Version = Annotated[Literal[1], BeforeValidator(_not_bool)]

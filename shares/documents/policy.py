@@ -2,7 +2,7 @@
 
 Source: TOML 1.0.0; FORMAT.md, sec. 12; NIST SP 800-57 Part 1 rev. 5 (signature keys are not backed up or archived as
 a rule, so splitting one needs a reason).
-May import: shares.errors, shares.field, shares.sharing.rule, shares.documents.base, .members.
+May import: shares.errors, shares.field, shares.sharing.rule, shares.documents.base, .intervals, .members.
 Secret: nothing. Public: nothing either: a policy is confidential, as it tells whom to coerce. Errors name keys and
 custodians, never a person, a site or any other value.
 Does not: judge whether a policy is wise (``planning`` does), touch files, or look at the party cards it names.
@@ -10,7 +10,6 @@ Does not: judge whether a policy is wise (``planning`` does), touch files, or lo
 
 from __future__ import annotations
 
-import contextlib
 import difflib
 import hashlib
 import re
@@ -20,48 +19,20 @@ from collections.abc import Iterator
 from datetime import timedelta
 from typing import Annotated, ClassVar, Literal, Self
 
-from pydantic import AfterValidator, PlainValidator, PrivateAttr, ValidationError, model_validator
+from pydantic import AfterValidator, PrivateAttr, ValidationError, model_validator
 from pydantic import Field as Member
 from pydantic_core import PydanticCustomError
 
 from shares.documents.base import MAX_FILE, Document
+from shares.documents.intervals import Duration, Interval
 from shares.documents.members import Byte, Text, check_name
 from shares.errors import DocumentError, ParameterError
 from shares.field.gf256 import Field
 from shares.field.polynomial import Polynomial
 from shares.sharing.rule import MAX_CHILDREN, MAX_DEPTH, MAX_POINTS, Rule
 
-DAYS = {"d": 1, "w": 7, "y": 365}
 _MAX_DOTS = 100
 KeyType = Literal["symmetric", "signature", "private-decryption", "password", "other"]
-
-
-UNITS = {"min": timedelta(minutes=1), "h": timedelta(hours=1), "d": timedelta(days=1)}
-
-
-def _duration(value: object) -> timedelta:
-    form = re.fullmatch(r"([1-9][0-9]{0,3})(min|h|d)", value) if isinstance(value, str) else None
-    if form is None:
-        raise PydanticCustomError("shares_interval", 'should be a duration like "90min", "4h" or "2d"')
-    return int(form[1]) * UNITS[form[2]]
-
-
-def parse_duration(text: str) -> timedelta:
-    """Read a duration like ``90min``, ``4h`` or ``2d``.
-
-    Raises:
-        ParameterError: it is none.
-    """
-    with contextlib.suppress(PydanticCustomError):
-        return _duration(text)
-    raise ParameterError('a duration is written like "90min", "4h" or "2d"')
-
-
-def _interval(value: object) -> timedelta:
-    form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", value) if isinstance(value, str) else None
-    if form is None:
-        raise PydanticCustomError("shares_interval", 'should be an interval like "90d", "26w" or "1y"')
-    return timedelta(days=int(form[1]) * DAYS[form[2]])
 
 
 def _custodian_name(name: str) -> str:
@@ -93,10 +64,6 @@ def _relative(path: str) -> str:
     if path.startswith("/"):
         raise PydanticCustomError("shares_path", "should be a path relative to the policy's folder")
     return path
-
-
-Interval = Annotated[timedelta, PlainValidator(_interval)]
-Duration = Annotated[timedelta, PlainValidator(_duration)]
 
 
 def folded(text: str) -> str:

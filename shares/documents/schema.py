@@ -13,7 +13,10 @@ from pathlib import Path
 from typing import Any
 
 from shares.documents.acknowledgement import Acknowledgement
+from shares.documents.attestation import Attestation
 from shares.documents.base import VERSION, Document
+from shares.documents.ceremony_script import CeremonyScript
+from shares.documents.challenge import Challenge
 from shares.documents.entry import Entry
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -30,6 +33,9 @@ KINDS: tuple[type[Document], ...] = (
     PartyCard,
     Acknowledgement,
     Entry,
+    Challenge,
+    Attestation,
+    CeremonyScript,
 )
 FOLDER = Path(__file__).with_name("schemas")
 

@@ -2,7 +2,7 @@
 
 Source: FORMAT.md, sec. 4; RFC 5869 (HKDF), RFC 8032 (Ed25519).
 May import: shares.errors, shares.memory, shares.field, shares.sharing.rule, shares.documents.base,
-shares.documents.members.
+.members, .signing.
 Secret: the rows, hence the core and the attestation key. Public: the header, the commitment, the digest.
 Does not: judge a share against a record; ``custody.verify`` does.
 """
@@ -12,7 +12,7 @@ from __future__ import annotations
 import hashlib
 import hmac
 import itertools
-from typing import Annotated, ClassVar, Literal, Self
+from typing import Annotated, Any, ClassVar, Literal, Self
 
 from cryptography.hazmat.primitives import hashes, serialization
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
@@ -35,12 +35,15 @@ from shares.documents.members import (
     Text,
     Version,
 )
+from shares.documents.signing import signed_bytes
 from shares.field.gf256 import Field
 from shares.memory import Secret
 from shares.sharing.rule import MAX_DEPTH, MAX_POINTS, Point
 
 HEADER = ("kind", "version", "set", "epoch", "custodian", "field", "paths", "secret_commitment", "encrypted_file")
 NOTES = ("label", "rule", "notice", "record")
+SHARE_ATTESTS = "attestation-share"
+"""The purpose of signatures by a share's attestation key (FORMAT_EVIDENCE.md, sec. 17): no party signs for it."""
 MIN_ROW, MAX_ROW = 53, 131_072
 NOTICE = (
     "This is one custodian's secret share. Keep it private and whole; "
@@ -169,6 +172,14 @@ class Share(ShareFacts):
         """Return the public half of the share's attestation key: 32 bytes, Ed25519."""
         public = self._attestation_private_key().public_key()
         return public.public_bytes(serialization.Encoding.Raw, serialization.PublicFormat.Raw)
+
+    def attest(self, members: dict[str, Any]) -> bytes:
+        """Return the signature of this share's attestation key over an answer's members, 64 bytes.
+
+        Args:
+            members: public JSON members, those that an attestation signs.
+        """
+        return self._attestation_private_key().sign(signed_bytes(SHARE_ATTESTS, members))
 
     def _attestation_private_key(self) -> Ed25519PrivateKey:
         # The core and the seed become Python bytes here, and the library keeps its own copy: listed in SECURITY.md.

@@ -20,6 +20,10 @@ from shares.streams import refusing
 MAX_DOCUMENT = 16 << 20
 """The largest file that an entry names, in bytes: 16 MiB, for scans."""
 
+RECORD_NAME = "record.json"
+POLICY_NAME = "policy.toml"
+PRACTICE_RECORD = "practice.json"
+
 
 class Files(Protocol):
     """Where the files of one set can be read."""
@@ -70,8 +74,7 @@ class FolderFiles:
         Raises:
             StorageError: its name leads elsewhere, a folder on the way is a link, or as for ``Files``.
         """
-        if not is_name_in_set(name):
-            raise StorageError("is no name of a file in a set's folder", where=ascii(name))
+        check_name_in_set(name)
         for above in Path(name).parents:
             if os.path.islink(self.folder / above) and above != Path():
                 raise StorageError("is a symbolic link", where=os.fspath(self.folder / above))
@@ -97,3 +100,16 @@ def is_name_in_set(name: str) -> bool:
     """
     bad = ("\\" in name, "\0" in name, any(not part or part.startswith(".") for part in name.split("/")))
     return not any(bad)
+
+
+def check_name_in_set(name: str) -> None:
+    """Refuse a name that a file of a set may not have.
+
+    Args:
+        name: as for ``is_name_in_set``.
+
+    Raises:
+        StorageError: it is no such name.
+    """
+    if not is_name_in_set(name):
+        raise StorageError("is no name of a file in a set's folder", where=ascii(name))

@@ -8,24 +8,25 @@ Does not: forgive: a record or policy that is not what it should be is refused. 
 
 from __future__ import annotations
 
+import itertools
 import os
 from collections.abc import Sequence
 from datetime import datetime
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from shares.documents.base import MAX_FILE
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
-from shares.history.files import MAX_DOCUMENT, is_name_in_set
+from shares.history.files import MAX_DOCUMENT, POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, is_name_in_set
 from shares.history.journal import Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 
-RECORD_NAME = "record.json"
-POLICY_NAME = "policy.toml"
+if TYPE_CHECKING:
+    from shares.documents.policy import Policy
 
 
 class SetFolder:
@@ -66,6 +67,21 @@ class SetFolder:
         """
         data = read_file(self.path / name, limit=MAX_DOCUMENT)
         return NamedDigest.of(name, data)
+
+    def practice_record(self) -> Record:
+        """Read the record of the practice set that was dealt with this one.
+
+        Raises:
+            StorageError, DocumentError: it cannot be read, or is none.
+        """
+        where = os.fspath(self.path / PRACTICE_RECORD)
+        return Record.parse(read_file(where, limit=MAX_FILE), where=where)
+
+    def free_name(self, name: str) -> str:
+        """Return ``name``, or where a stopped run left a file of that name, ``name-2`` and so on."""
+        stem, dot, suffix = name.rpartition(".")
+        names = (f"{stem}-{number}{dot}{suffix}" for number in itertools.count(2))
+        return next(one for one in itertools.chain([name], names) if not os.path.lexists(self.path / one))
 
     def add(self, name: str, data: bytes) -> NamedDigest:
         """Write a new file into the folder, mode 0600, and return it as an entry names it.
@@ -123,6 +139,9 @@ def load_policy(folder: Path, record: Record) -> Policy | None:
     """
     if record.policy is None:
         return None
+    # Imported late: a set that was split without a policy needs nothing of it.
+    from shares.documents.policy import Policy
+
     where = os.fspath(folder / POLICY_NAME)
     policy = Policy.parse(read_file(where, limit=MAX_FILE), where=where)
     if policy.digest() != record.policy:

@@ -1,6 +1,6 @@
 """What people report by hand: which facts each event needs, and the entry made of them, with what they hand in.
 
-Source: FORMAT.md, sec. 16; the 24 hours for a leaver are what the trade asks for.
+Source: FORMAT_EVIDENCE.md, sec. 16; the 24 hours for a leaver are what the trade asks for.
 May import: shares.errors, shares.clock, shares.documents, .folder.
 Secret: party keys that sign, passed through. Confidential: what is reported. Public: nothing.
 Does not: take reports of what a command does itself, such as a split, an attestation, a drill or a recovery.
@@ -20,8 +20,9 @@ from typing import Final
 from shares import clock
 from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Departed, DrillClosed, Event, Incident, Recovered, Remedy, make_event
+from shares.documents.intervals import parse_duration
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.policy import folded, parse_duration
+from shares.documents.policy import folded
 from shares.errors import ParameterError
 from shares.history.folder import SetFolder
 

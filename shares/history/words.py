@@ -29,6 +29,7 @@ from shares.documents.event import (
     HandedOn,
     Incident,
     Introduced,
+    Lost,
     Noted,
     Received,
     Recovered,
@@ -109,6 +110,11 @@ def _said(event: Event) -> str:
             return (
                 f"copy {event.copy_} of {event.custodian}'s share destroyed by {event.by}"
                 f"{_more(', ', event.method)}, seen by {event.witness}"
+            )
+        case Lost():
+            return (
+                f"copy {event.copy_} of {event.custodian}'s share given up as lost by {event.by}, "
+                f"heard by {event.witness}: {event.reason}"
             )
         case Retired():
             return f"set retired, records kept until {_time(event.keep_until)}"

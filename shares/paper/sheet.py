@@ -1,10 +1,11 @@
 """The sheet: a share as one page to print, with a second page on which the custodian signs for it; and the form on
 which the duties are accepted beforehand.
 
-Source: ISO/IEC 18004 (QR code), by way of a library; W3C, "Content Security Policy Level 3"; "CSS Paged Media"; PCI PIN
-by way of trade practice (numbered packs, receipts); FORMAT.md, sec. 11.
+Source: ISO/IEC 18004 (QR code), by way of a library; PCI PIN by way of trade practice (numbered packs, receipts);
+FORMAT.md, sec. 11.
 May import: shares.errors, shares.documents.acknowledgement, shares.documents.members, shares.documents.share,
-shares.documents.wrapping, shares.paper.paperform, shares.paper.transcription, shares.paper.typedline.
+shares.documents.wrapping, shares.paper.page, shares.paper.paperform, shares.paper.transcription,
+shares.paper.typedline.
 Secret: the whole page, where the share is bare. It is Python text, which cannot be wiped.
 Public: its serial number, how many lines it has, the size of its code.
 Does not: print. A browser does, with no network: the page loads nothing.
@@ -12,15 +13,11 @@ Does not: print. A browser does, with no network: the page loads nothing.
 
 from __future__ import annotations
 
-import base64
-import hashlib
 import secrets
 from dataclasses import dataclass
-from functools import cache
 from pathlib import Path
 from typing import Final
 
-import jinja2
 import segno
 
 from shares.documents.acknowledgement import DUTIES
@@ -28,6 +25,7 @@ from shares.documents.members import check_name, check_text
 from shares.documents.share import Share
 from shares.documents.wrapping import ByPassphrase
 from shares.errors import ParameterError, VerificationError
+from shares.paper.page import SHEET, render
 from shares.paper.paperform import BLOCK, LETTERS, PaperShare, from_paper, to_paper, to_text
 from shares.paper.transcription import gather
 from shares.paper.typedline import MAX_LINES, grouped, to_lines
@@ -146,24 +144,5 @@ def _code(text: str, millimetres: int, where: str | None) -> segno.QRCode:
     )
 
 
-@cache
-def _style() -> str:
-    return (_HERE / "sheet.css").read_text("utf-8")
-
-
 def _render(template: str, **facts: object) -> bytes:
-    style = _style()
-    style_hash = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode("ascii")
-    page = _templates().get_template(template).render(duties=DUTIES, style=style, style_hash=style_hash, **facts)
-    return page.encode("utf-8")
-
-
-@cache
-def _templates() -> jinja2.Environment:
-    return jinja2.Environment(
-        loader=jinja2.FileSystemLoader(_HERE),
-        autoescape=True,
-        undefined=jinja2.StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
+    return render(_HERE / template, SHEET, duties=DUTIES, **facts)

@@ -18,7 +18,6 @@ import math
 from collections import Counter
 from collections.abc import Collection, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
-from fractions import Fraction
 from functools import lru_cache
 from typing import NamedTuple, TypeAlias
 
@@ -64,9 +63,13 @@ class Count:
     block: Bounds
 
     @classmethod
-    def of(cls, rule: Rule) -> Count:
+    def of(cls, rule: Rule, *, most_tried: int = MAX_NAMES) -> Count:
         """Count the names of a rule: exact where none stands in two branches, where there are at most 24, or where the
         bounds meet.
+
+        Args:
+            rule: over custodians, or over any label that they share.
+            most_tried: up to how many names all sets are tried, at most 24; that takes seconds at 24 and no time at 20.
 
         >>> piers = Rule(2, ("north-pier", "south-pier", "light-house", "registrar"))
         >>> Count.of(piers)
@@ -75,7 +78,7 @@ class Count:
         Count(total=2, quorum=Bounds(low=1, high=1), block=Bounds(low=2, high=2))
         """
         total, quorum, block = len(rule.paths()), _fewest(rule), _fewest(dual(rule))
-        if total <= MAX_NAMES and not (quorum.exact and block.exact):
+        if total <= most_tried and not (quorum.exact and block.exact):
             tried = _try_all(rule)
             quorum, block = Bounds(tried.fewest, tried.fewest), Bounds(tried.fewest_blocking, tried.fewest_blocking)
         return cls(total, quorum, block)
@@ -211,21 +214,23 @@ def _fewest(rule: Rule) -> Bounds:
     places = _places(rule)
     # A name pays a part of its price at each of its places. Whoever satisfies the rule pays no more than one for each
     # name, and just that where each has one place: so the cheapest way is a lower bound, and exact there.
-    low = math.ceil(_cheapest(rule, {name: Fraction(1, count) for name, count in places.items()}))
+    # Prices are in parts of one that make them whole numbers.
+    one = math.lcm(*places.values())
+    low = -(-_cheapest(rule, {name: one // count for name, count in places.items()}) // one)
     return Bounds(low, low if max(places.values()) == 1 else min(map(len, _reduced(rule))))
 
 
-def _cheapest(node: Rule, prices: Mapping[str, Fraction]) -> Fraction:
+def _cheapest(node: Rule, prices: Mapping[str, int]) -> int:
     """Return the least that satisfying a node costs, with every place paid for on its own (a knapsack)."""
     # cheapest[met]: the least price of items that count for ``met`` or more.
-    cheapest: list[Fraction | None] = [Fraction(0), *[None] * node.need]
+    cheapest: list[int | None] = [0, *[None] * node.need]
     for item, weight in _items(node):
         price = _cheapest(item, prices) if isinstance(item, Rule) else prices[item]
         for met in range(node.need, 0, -1):
             before, now = cheapest[max(met - weight, 0)], cheapest[met]
             if before is not None and (now is None or before + price < now):
                 cheapest[met] = before + price
-    return cheapest[node.need] or Fraction(0)
+    return cheapest[node.need] or 0
 
 
 def _reduced(rule: Rule) -> Iterator[tuple[str, ...]]:

@@ -29,6 +29,8 @@ NOBODY = 65534
 SECRET = b"Kj4qVz9Lm2Xw7RtB-made-up-8hPd\n"
 NAMES = ("north-pier", "south-pier", "light-house", "registrar", "dry-dock")
 LABEL = "Tide archive root"
+# What a recovery with a journal beside the record is asked for.
+PURPOSE = ("--reason=the archive's disk failed", "--disposition=destroyed")
 
 
 @dataclass(frozen=True)

@@ -65,7 +65,7 @@ def completed(line: str, folder: Path) -> list[str]:
         ("shares ver", ["verify"]),
         ("shares s", ["split", "sheet", "show", "selftest"]),
         ("shares polynomial ", ["check", "list"]),
-        ("shares recover --re", ["--record"]),
+        ("shares recover --re", ["--reason", "--record"]),
         ("shares completion f", ["fish"]),
     ],
 )

@@ -15,7 +15,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from cli.harness import NAMES, Place, assert_one_line, assert_refused, run, run_unprivileged
+from cli.harness import NAMES, PURPOSE, Place, assert_one_line, assert_refused, run, run_unprivileged
 from strategies import HARBOUR, crooked_split, flat
 
 from shares.documents.base import fingerprint
@@ -235,7 +235,7 @@ def test_a_bad_share_is_told_from_good_ones(case: str, dealt: Place) -> None:
     assert recovered.code == 0
     assert f"Caution: {bad} is {word}: " in recovered.err
     assert recovered.err.count("\n") == 1
-    assert run("recover", *dealt.shares, "--check", "--record", dealt.record).code == 0
+    assert run("recover", *dealt.shares, "--check", "--record", dealt.record, *PURPOSE).code == 0
     if case != "a record instead":
         assert_refused(["show", bad], 4, os.fspath(bad), words_of_show(words))
 
@@ -251,7 +251,7 @@ def test_a_bad_record_is_refused_before_any_share_is_judged(case: str, dealt: Pl
     dealt.record.write_bytes(change(dealt.record.read_bytes()))
     for arguments in (
         ["verify", *dealt.shares, "--record", dealt.record],
-        ["recover", *dealt.shares, "--record", dealt.record, "--to", dealt.folder / "out"],
+        ["recover", *dealt.shares, "--record", dealt.record, *PURPOSE, "--to", dealt.folder / "out"],
         ["show", dealt.record],
     ):
         said = words_of_show(words) if arguments[0] == "show" else words
@@ -282,7 +282,7 @@ def test_a_record_whose_facts_the_shares_contradict(change: Change, dealt: Place
     verified = run("verify", *dealt.shares, "--record", dealt.record)
     assert verified.code == 4
     assert verified.out.count("inconsistent dealing - ") == 5
-    refused = run("recover", *dealt.shares, "--record", dealt.record, "--to", dealt.folder / "out")
+    refused = run("recover", *dealt.shares, "--record", dealt.record, *PURPOSE, "--to", dealt.folder / "out")
     assert_one_line(refused)
     assert refused.code in (3, 4)
     assert not (dealt.folder / "out").exists()
@@ -458,11 +458,11 @@ def test_shares_of_two_sets(two_sets: tuple[Place, Place]) -> None:
     verified = run("verify", *two.shares, "--record", one.record)
     assert verified.out.count("foreign set - ") == 3
     assert_refused(["recover", one.shares[0], two.shares[1], "--check"], 4, "2 sets", "shares show")
-    assert_refused(["recover", one.shares[0], "--record", two.record, "--check"], 4, "the record's set")
+    assert_refused(["recover", one.shares[0], "--record", two.record, *PURPOSE, "--check"], 4, "the record's set")
     # Two quorums, and nothing says which is meant.
     line = assert_refused(["recover", *one.shares[:2], *two.shares[:2], "--check"], 4, "cannot be told", "record")
     assert "fault" not in line
-    assert run("recover", *one.shares[:2], *two.shares[:2], "--check", "--record", one.record).code == 0
+    assert run("recover", *one.shares[:2], *two.shares[:2], "--check", "--record", one.record, *PURPOSE).code == 0
     mixed = run("recover", *one.shares[:2], two.shares[1], "--to", one.folder / "out")
     assert mixed.code == 0
     assert f"{two.shares[1]} is foreign set" in mixed.err

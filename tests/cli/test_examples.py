@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import os
 import re
+import shutil
 import subprocess
 from pathlib import Path
 
@@ -94,8 +95,7 @@ def prepared(tmp_path: Path) -> Path:
         re.sub(r'^(name = "(.*)")$', r'\1\ncard = "\2.card.json"', policy, flags=re.M)
     )
     (tmp_path / "scan.pdf").write_bytes(b"a form, signed by hand")
-    (tmp_path / "tide-archive").mkdir()
-    (tmp_path / "tide-archive" / "record.json").write_bytes(place.record.read_bytes())
+    shutil.copytree(place.set, tmp_path / "tide-archive")
     for folder in ("media/stick", "dev/shm/handover", "home/.local/share/bash-completion/completions"):
         (tmp_path / folder).mkdir(parents=True)
     return tmp_path
@@ -108,7 +108,7 @@ def test_every_example_runs(page: tuple[str, ...], prepared: Path) -> None:
     for line in lines:
         if line.startswith("shares split"):
             (prepared / "key.pem").write_bytes((prepared / "made" / "key").read_bytes())
-            (prepared / "tide-archive" / "record.json").unlink(missing_ok=True)
+            shutil.rmtree(prepared / "tide-archive")
         if line.startswith("shares wrap"):
             (prepared / "north-pier.wrapped.json").unlink()
         done = subprocess.run(

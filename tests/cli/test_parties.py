@@ -12,7 +12,7 @@ from pathlib import Path
 
 import pytest
 from cli.harbour import Harbour
-from cli.harness import LABEL, Place, assert_refused, files_in, run
+from cli.harness import LABEL, PURPOSE, Place, assert_refused, files_in, run
 from parties import QUICK, card, edited, file_of, passphrase
 from vectors.make import wrapping_v1 as by_hand
 
@@ -334,7 +334,7 @@ def test_a_record_with_a_bent_signature_is_refused_before_any_share_is_judged(ha
     record.write_bytes(file_of(edited(record.read_bytes(), "signatures", 0, "role", to="dealer")))
     for arguments in (
         ["verify", *harbour.place.shares, "--record", record],
-        ["recover", *harbour.place.shares, "--record", record, "--check"],
+        ["recover", *harbour.place.shares, "--record", record, *PURPOSE, "--check"],
         ["show", record],
     ):
         assert_refused(arguments, 4, "the signature by registrar does not fit its content")

@@ -21,6 +21,7 @@ from cli.harness import (
     LABEL,
     NAMES,
     PROGRAM,
+    PURPOSE,
     SECRET,
     Place,
     assert_one_line,
@@ -52,7 +53,7 @@ def fed(*arguments: str) -> list[str]:
 
 @pytest.mark.parametrize("with_record", [True, False])
 def test_to_a_new_private_file(dealt: Place, with_record: bool) -> None:
-    record = ["--record", dealt.record] if with_record else []
+    record = ["--record", dealt.record, *PURPOSE] if with_record else []
     target = dealt.folder / "out"
     result = run("recover", *dealt.shares[:3], *record, "--to", target)
     assert (result.code, result.err) == (0, "")
@@ -308,7 +309,7 @@ def test_bad_shares_among_enough_are_named(
 ) -> None:
     for i in bad:
         change(dealt.shares[i])
-    record = ["--record", dealt.record] if with_record else []
+    record = ["--record", dealt.record, *PURPOSE] if with_record else []
     result = run("recover", *dealt.shares, *record, "--to", dealt.folder / "out")
     assert result.code == 0
     assert (dealt.folder / "out").read_bytes() == SECRET
@@ -326,7 +327,7 @@ def test_bad_shares_among_enough_are_named(
 def test_too_many_bad_shares_are_a_refusal(dealt: Place, change: Callable[[Path], None], with_record: bool) -> None:
     for path in dealt.shares[:3]:
         change(path)
-    record = ["--record", dealt.record] if with_record else []
+    record = ["--record", dealt.record, *PURPOSE] if with_record else []
     result = run("recover", *dealt.shares, *record, "--to", dealt.folder / "out")
     assert_one_line(result)
     assert result.code == (4 if change is forge and not with_record else 3)
@@ -336,7 +337,7 @@ def test_too_many_bad_shares_are_a_refusal(dealt: Place, change: Callable[[Path]
 @pytest.mark.parametrize("with_record", [True, False])
 def test_exactly_a_quorum_with_one_forged_is_never_a_wrong_secret(dealt: Place, with_record: bool) -> None:
     forge(dealt.shares[1])
-    record = ["--record", dealt.record] if with_record else []
+    record = ["--record", dealt.record, *PURPOSE] if with_record else []
     result = run("recover", *dealt.shares[:3], *record, "--to", dealt.folder / "out")
     assert_one_line(result)
     assert result.code in (3, 4)
@@ -357,7 +358,7 @@ def test_shares_are_enough_with_record_and_notes_lost(dealt: Place) -> None:
 def test_formatting_does_not_matter(dealt: Place) -> None:
     for path in dealt.shares[:3]:
         path.write_text(json.dumps(json.loads(path.read_bytes()), separators=(",", ":"), sort_keys=True))
-    assert run("recover", *dealt.shares[:3], "--record", dealt.record, "--check").code == 0
+    assert run("recover", *dealt.shares[:3], "--record", dealt.record, *PURPOSE, "--check").code == 0
 
 
 def test_a_closed_standard_error_hides_no_failure(dealt: Place) -> None:

@@ -25,6 +25,7 @@ from cli.harness import (
     LABEL,
     NAMES,
     PROGRAM,
+    PURPOSE,
     SECRET,
     Place,
     assert_one_line,
@@ -44,10 +45,15 @@ def recovered(place: Place, shares: list[Path], target: str = "out") -> bytes:
     return (place.folder / target).read_bytes()
 
 
+def files_of(name: str) -> list[str]:
+    """What a custodian is brought: the share, and a practice share."""
+    return [f"{name}.practice.json", f"{name}.share.json"]
+
+
 def test_a_set_is_written_private_and_complete(place: Place) -> None:
     done = place.split(need=2)
-    assert sorted(files_in(place.drop)) == sorted(f"{name}.share.json" for name in NAMES[:3])
-    assert sorted(files_in(place.set)) == ["record.json"]
+    assert sorted(files_in(place.drop)) == sorted(file for name in NAMES[:3] for file in files_of(name))
+    assert sorted(files_in(place.set)) == ["journal.jsonl", "practice.json", "record.json"]
     assert {stat.S_IMODE(path.stat().st_mode) for path in place.shares} == {0o600}
     assert stat.S_IMODE(place.record.stat().st_mode) == 0o644
     assert stat.S_IMODE(place.set.stat().st_mode) == 0o700
@@ -124,7 +130,7 @@ def test_255_custodians_are_the_most(tmp_path: Path) -> None:
     done = place.split(need=255, names=names)
     assert "all 1 quorums" in done.out
     assert len(place.shares) == 255
-    assert run("recover", *place.shares, "--record", place.record, "--to", place.folder / "out").code == 0
+    assert run("recover", *place.shares, "--record", place.record, *PURPOSE, "--to", place.folder / "out").code == 0
     assert (place.folder / "out").read_bytes() == SECRET
 
 
@@ -147,20 +153,20 @@ def test_each_custodian_may_have_a_folder_of_their_own(place: Place) -> None:
     for folder in folders.values():
         folder.mkdir()
     place.split(deliver=[f"{name}={folder}" for name, folder in folders.items()])
-    assert [list(files_in(folder)) for folder in folders.values()] == [[f"{name}.share.json"] for name in NAMES[:3]]
+    assert [list(files_in(folder)) for folder in folders.values()] == [files_of(name) for name in NAMES[:3]]
 
 
 def test_one_folder_for_one_and_another_for_the_rest(place: Place) -> None:
     (place.folder / "stick").mkdir()
     place.split(deliver=[place.drop, f"registrar={place.folder / 'stick'}"], names=["north-pier", "registrar"])
-    assert list(files_in(place.drop)) == ["north-pier.share.json"]
-    assert list(files_in(place.folder / "stick")) == ["registrar.share.json"]
+    assert list(files_in(place.drop)) == files_of("north-pier")
+    assert list(files_in(place.folder / "stick")) == files_of("registrar")
 
 
 def test_a_name_with_a_sign_of_equality_has_a_folder_of_its_own(place: Place) -> None:
     (place.folder / "stick").mkdir()
     place.split(deliver=[f"a=b={place.folder / 'stick'}", place.drop], names=["a", "a=b"])
-    assert list(files_in(place.folder / "stick")) == ["a=b.share.json"]
+    assert list(files_in(place.folder / "stick")) == files_of("a=b")
 
 
 def test_the_folders_above_the_set_are_made_and_are_private(place: Place) -> None:

@@ -11,7 +11,7 @@ import stat
 from pathlib import Path
 
 import pytest
-from cli.harness import SECRET, Place, assert_refused, run
+from cli.harness import PURPOSE, SECRET, Place, assert_refused, run
 
 from shares.custody.parties import write_party
 from shares.documents.party import PartyKey, new_party
@@ -61,7 +61,7 @@ def test_every_set_of_custodians_recovers_exactly_when_the_rule_says_so(place: P
         for chosen in itertools.combinations(EVERYONE, size):
             operators = sum(name in OPERATORS for name in chosen) >= 2
             oversight = "registrar" in chosen or set(AUDITORS) <= set(chosen)
-            done = run("recover", *map(place.share, chosen), "--record", place.record, "--check")
+            done = run("recover", *map(place.share, chosen), "--record", place.record, *PURPOSE, "--check")
             assert (chosen, done.code) == (chosen, 0 if operators and oversight else 3)
 
 
@@ -90,7 +90,7 @@ def test_cards_come_from_the_policy_and_from_options(place: Place) -> None:
         *("--key", place.folder / "registrar.key.json", "--passphrase-file", passphrase),
     ]
     out = place.folder / "out"
-    assert run("recover", *wrapped, *opening, "--record", place.record, "--to", out).code == 0
+    assert run("recover", *wrapped, *opening, "--record", place.record, *PURPOSE, "--to", out).code == 0
     assert out.read_bytes() == SECRET
 
 

@@ -12,7 +12,7 @@ import tempfile
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from cli.harness import Place, Result, files_in, run
+from cli.harness import PURPOSE, Place, Result, files_in, run
 from hypothesis import HealthCheck, settings
 from hypothesis import strategies as st
 from hypothesis.stateful import RuleBasedStateMachine, initialize, invariant, precondition, rule
@@ -161,7 +161,7 @@ class Harbour(RuleBasedStateMachine):
         own = data.draw(st.permutations(dealt.place.shares))
         given_ = own[: dealt.need + (0 if few else data.draw(st.integers(-1, 3)))]
         given_ += [] if few else [self.some(data) for _ in range(data.draw(st.integers(0, 2)))]
-        for record in ([], ["--record", dealt.place.record]) if given_ else ():
+        for record in ([], ["--record", dealt.place.record, *PURPOSE]) if given_ else ():
             target = self.fresh("out")
             result = self.ran("recover", *given_, *record, "--to", target)
             assert target.exists() is (result.code == 0)
@@ -177,7 +177,7 @@ class Harbour(RuleBasedStateMachine):
         if len(dealt.untouched) < dealt.need or (with_record and not dealt.record_untouched):
             return
         target = self.fresh("out")
-        record = ["--record", dealt.place.record] if with_record else []
+        record = ["--record", dealt.place.record, *PURPOSE] if with_record else []
         # All that is left of the set, the damaged among them; with the record they can do no harm.
         chosen = dealt.place.shares if with_record else sorted(dealt.untouched)
         assert self.ran("recover", *chosen, *record, "--to", target).code == 0
@@ -212,7 +212,7 @@ class Harbour(RuleBasedStateMachine):
     @invariant()
     def the_records_stand_where_they_were(self) -> None:
         for dealt in self.sets:
-            assert list(files_in(dealt.place.set)) == ["record.json"]
+            assert list(files_in(dealt.place.set)) == ["journal.jsonl", "practice.json", "record.json"]
 
 
 TestHarbour = Harbour.TestCase

@@ -14,7 +14,7 @@ from typing import Any
 
 import pytest
 from cli.harbour import Harbour
-from cli.harness import LABEL, NAMES, SECRET, Place, assert_one_line, assert_refused, files_in, run
+from cli.harness import LABEL, NAMES, PURPOSE, SECRET, Place, assert_one_line, assert_refused, files_in, run
 from parties import card, edited, file_of, passphrase, unlocked
 from strategies import bits_flipped, revealed
 from vectors.make import wrapping_v1 as by_hand
@@ -193,7 +193,8 @@ def test_a_set_is_split_for_cards_and_passphrases_and_signed(harbour: Harbour, s
     done = run(*split_arguments(harbour, *more, cards=(NORTH, SOUTH)))
     assert (done.code, done.err) == (0, "")
     drop = harbour.folder / "new" / "drop"
-    assert sorted(files_in(drop)) == sorted(f"{name}.wrapped.json" for name in NAMES[:3])
+    kinds = ("wrapped", "practice")
+    assert sorted(files_in(drop)) == sorted(f"{name}.{kind}.json" for name in NAMES[:3] for kind in kinds)
     assert {stat.S_IMODE(path.stat().st_mode) for path in drop.iterdir()} == {0o600}
     record = load_record(harbour.folder / "new" / "set" / "record.json")
     assert [(one.card.name, one.role) for one in record.signatures] == [
@@ -218,7 +219,8 @@ def test_a_set_is_split_for_cards_and_passphrases_and_signed(harbour: Harbour, s
     out = harbour.folder / "out"
     wrapped = [drop / f"{name}.wrapped.json" for name in (SOUTH, LIGHT)]
     opens = [*harbour.keys(SOUTH), *harbour.known(LIGHT)]
-    done = run("recover", *wrapped, "--record", harbour.folder / "new" / "set" / "record.json", "--to", out, *opens)
+    record_file = harbour.folder / "new" / "set" / "record.json"
+    done = run("recover", *wrapped, "--record", record_file, *PURPOSE, "--to", out, *opens)
     assert (done.code, done.err, out.read_bytes()) == (0, "", SECRET)
 
 
@@ -337,7 +339,7 @@ def test_wrapped_shares_recover(harbour: Harbour) -> None:
     files = [harbour.wrap(NORTH), harbour.wrap(SOUTH, SUITES[0]), harbour.wrap(LIGHT, SUITES[1])]
     opens = [*harbour.known(NORTH), *harbour.keys(SOUTH, LIGHT)]
     out = harbour.folder / "out"
-    for more in (["--check"], ["--to", out], ["--record", harbour.place.record, "--check"]):
+    for more in (["--check"], ["--to", out], ["--record", harbour.place.record, *PURPOSE, "--check"]):
         done = run("recover", *files, *opens, *more)
         assert (done.code, done.err) == (0, ""), more
         assert f"from {NORTH}, {SOUTH}, {LIGHT}" in done.out

@@ -11,6 +11,7 @@ from typing import Any
 
 import jsonschema
 import pytest
+from attested import answered, challenge, sealed
 from hypothesis import given
 from parties import QUICK, card, party, passphrase, unlocked
 from strategies import CREATED, crooked_split, flat, moduli, octets, rules
@@ -18,6 +19,8 @@ from vectors.make import wrapping_v1 as by_hand
 
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import Document
+from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
+from shares.documents.entry import head_of
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
@@ -39,9 +42,11 @@ def samples() -> dict[str, Any]:
     with unlocked(NAME) as key:
         signed = DEALT.record.signed(key, "dealer", time=CREATED)
         accepted = Acknowledgement.signed_by(key, custodian=NAME, label="Tide archive", time=CREATED)
+        script = ceremony_script().signed(key, time=CREATED)
     secret = SealedSecret.seal(
         Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive", secret_commitment=bytes(32)
     )
+    asked = challenge(head=head_of(12, bytes(32)))
     made = {
         "share": share,
         "record": DEALT.record,
@@ -52,10 +57,34 @@ def samples() -> dict[str, Any]:
         "party-key": party(NAME),
         "party-card": card(NAME),
         "acknowledgement": accepted,
+        "challenge": asked,
+        "attestation": answered(asked),
+        "attestation of a seal": sealed(asked),
+        "ceremony-script": script,
     }
     journal = (Path(__file__).parents[1] / "vectors/golden/v1/journal/journal.jsonl").read_text().splitlines()
     entries = {f"journal-entry {i + 1}": json.loads(line) for i, line in enumerate(journal)}
     return {name: json.loads(document.to_file()) for name, document in made.items()} | entries
+
+
+def ceremony_script() -> CeremonyScript:
+    """A script of one step."""
+    step = CeremonyStep(part="Dealing", role="dealer", what="Split.", command="ls", expected="Done.", note=None)
+    return CeremonyScript(
+        kind="ceremony-script",
+        version=1,
+        created=CREATED,
+        label="Tide archive",
+        policy=bytes(32),
+        rule="any 2 of 3",
+        software=Software(version="0.1.0", digest=bytes(32)),
+        dual_control=False,
+        planned=None,
+        standby="the day after",
+        roles=(CeremonyRole(role="dealer", duty="Works at the machine.", person=None),),
+        steps=(step,),
+        signatures=(),
+    )
 
 
 SAMPLES = samples()
@@ -234,6 +263,45 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         }.items()
     }
     | {"65 signatures": {"signatures": SAMPLES["signed record"]["signatures"] * 65}},
+    "ceremony-script": {
+        **some(*COMMON, *LABEL),
+        "policy too short": {"policy": "00" * 31},
+        "software without a digest": {"software": {"version": "0.1.0"}},
+        "dual control as a number": {"dual_control": 1},
+        "no roles": {"roles": []},
+        "no steps": {"steps": []},
+        "a step without a number of members": {"steps": [{"what": "Split."}]},
+        "a step with a number": {"steps": [{**SAMPLES["ceremony-script"]["steps"][0], "number": 1}]},
+        "a role of nobody": {"roles": [{"role": "dealer", "duty": "x"}]},
+        "a short signature": {"signatures": [{**SAMPLES["ceremony-script"]["signatures"][0], "signature": "A" * 85}]},
+        "nine signatures": {"signatures": SAMPLES["ceremony-script"]["signatures"] * 9},
+    },
+}
+OF_CHALLENGE: dict[str, dict[str, Any]] = {
+    "another purpose": {"purpose": "recovery"},
+    "nobody asked": {"custodians": []},
+    "a short nonce": {"nonce": "00" * 31},
+    "a local time": {"due": "2026-12-01T07:00:00+01:00"},
+    "a head without its number": {"journal": {"head": SAMPLES["challenge"]["record"]}},
+    "entry 0": {"journal": {"sequence": 0, "head": SAMPLES["challenge"]["record"]}},
+    "drill 0": {"drill": 0},
+    "no asker": {"card": None},
+    "a short signature": {"signature": "A" * 85},
+}
+OF_ATTESTATION: dict[str, dict[str, Any]] = {
+    "another grade": {"grade": "seen"},
+    "another result": {"result": "fine"},
+    "another carrier": {"carrier": "stone"},
+    "opened as number": {"opened": 0},
+    "an empty place": {"place": ""},
+    "a long remark": {"remark": "x" * 501},
+    "a short share signature": {"share_signature": "A" * 85},
+    "a short party signature": {"party_signature": "A" * 85},
+    "a challenge in capitals": {"challenge": "AB" * 32},
+}
+PER_SAMPLE |= {
+    "challenge": {**some(*COMMON, *FACTS[:-1], *LABEL), **OF_CHALLENGE},
+    "attestation": {**some(*COMMON, *FACTS[:-1]), **OF_ATTESTATION},
 }
 ENTRY, EVENT = SAMPLES["journal-entry 2"], SAMPLES["journal-entry 2"]["event"]
 OF_ENTRY: dict[str, dict[str, Any]] = {

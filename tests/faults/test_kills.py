@@ -15,6 +15,9 @@ import pytest
 from cli.harness import SECRET, Place, Result, assert_one_line, run
 from faults.tracing import Site, Traced, at_each, counted, distinct, trace_with
 
+from shares.custody.presented import load_record
+from shares.history.journal import load_journal
+
 pytestmark = pytest.mark.usefixtures("strace")
 
 NAMES = ("pier", "quay")
@@ -34,13 +37,31 @@ def split_with(folder: Path, site: Site, fault: str, *inject: str) -> tuple[Plac
 
 
 def files(place: Place) -> set[Path]:
-    """What a run has left: every file but the secret itself."""
-    return {path for path in place.folder.rglob("*") if path.is_file() and path != place.key}
+    """What a run has left: every file but the secret itself, and the journal: the next run goes on with that."""
+    kept = (place.key, place.set / "journal.jsonl")
+    return {path for path in place.folder.rglob("*") if path.is_file() and path not in kept}
+
+
+def whole(place: Place) -> set[Path]:
+    """The files of a finished split."""
+    practice = {place.drop / f"{name}.practice.json" for name in NAMES} | {place.set / "practice.json"}
+    return {*(place.share(name) for name in NAMES), place.record, *practice}
+
+
+def assert_journal_tells(place: Place) -> None:
+    """See that the last dealing which the journal tells is that of the record, and that others came to nothing."""
+    journal = load_journal(place.set)
+    assert journal.problems == ()
+    *before, last = [entry.event for entry in journal.entries]
+    assert last.what == "dealt"
+    assert last.record == load_record(place.record).fingerprint
+    assert [event.what for event in before] == ["dealt", "exception"] * (len(before) // 2)
 
 
 def assert_whole(place: Place) -> None:
     """See that the set is complete: nothing else lies there, every share verifies, every quorum recovers."""
-    assert files(place) == {*(place.share(name) for name in NAMES), place.record}
+    assert files(place) == whole(place)
+    assert_journal_tells(place)
     assert {stat.S_IMODE(path.stat().st_mode) for path in place.shares} == {0o600}
     assert run("verify", *place.shares, "--record", place.record).code == 0
     for quorum in itertools.combinations(place.shares, 2):
@@ -81,9 +102,9 @@ def sites_without_links(tmp_path_factory: pytest.TempPathFactory) -> list[Site]:
 def test_the_calls_are_found(sites: list[Site]) -> None:
     """The sweep is worth nothing if it misses the calls that matter."""
     calls = [site.call for site in sites]
-    assert [calls.count(call) for call in ("renameat2", "write", "fchmod")] == [3, 3, 3]
+    assert [calls.count(call) for call in ("renameat2", "write", "fchmod")] == [6, 7, 6]
     assert calls.count("fsync") >= 6
-    assert len(distinct(sites)) < len(sites) <= 120
+    assert len(distinct(sites)) < len(sites) <= 240
     whats = {site.what for site in sites}
     assert any("record.json.*.partial" in what for what in whats)
     assert any("*.share.json.*.partial" in what for what in whats)
@@ -121,7 +142,7 @@ def killed_without_links(sites: list[Site], tmp_path: Path) -> None:
 def assert_whole_or_named(place: Place) -> None:
     left = files(place)
     temporary = {path for path in left if path.name.endswith(".partial")}
-    assert left - temporary == {*(place.share(name) for name in NAMES), place.record}
+    assert left - temporary == whole(place)
     assert run("verify", *place.shares, "--record", place.record).code == 0
     assert run("recover", *place.shares, "--check").code == 0
 
@@ -174,7 +195,7 @@ def stopped(sites: list[Site], tmp_path: Path, signal: str) -> None:
             assert result.err.lstrip("\n") == "shares: stopped before it was done (nothing was left half written)\n"
             assert not files(place), site
     assert 0 < len(done) < len(sites)
-    assert all(re.search(r"record|set", site.what) for site in done)
+    assert all(re.search(r"record|set|journal|practice\.json", site.what) for site in done)
 
 
 @pytest.mark.parametrize("signal", ["TERM", "INT", "HUP"])

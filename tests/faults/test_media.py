@@ -54,7 +54,7 @@ def test_a_medium_for_the_record_that_is_full(medium: Mount, tmp_path: Path) -> 
     place = Place.make(tmp_path / "place")
     full = medium("full", "size=4k")
     (full / "filler").write_bytes(bytes(4096))
-    refused(run(*place.split_arguments(names=NAMES, folder=full)), "the medium is full", "record.json")
+    refused(run(*place.split_arguments(names=NAMES, folder=full)), "the medium is full")
     assert (shares_left(place), list(files_in(full))) == ([], ["filler"])
 
 
@@ -176,7 +176,8 @@ def test_a_medium_that_lacks_something(tmp_path: Path, inject: tuple[str, ...]) 
     place = Place.make(tmp_path / "place")
     traced = trace(place.folder, place.split_arguments(names=NAMES), *inject)
     assert traced.result.code == 0, traced.result.err
-    assert {path.name for path in shares_left(place)} == {*(f"{name}.share.json" for name in NAMES), "record.json"}
+    expected = {f"{name}.{kind}.json" for name in NAMES for kind in ("share", "practice")}
+    assert {path.name for path in shares_left(place)} == expected | {"record.json", "practice.json", "journal.jsonl"}
     assert {stat.S_IMODE(path.stat().st_mode) for path in place.shares} == {0o600}
     assert run("verify", *place.shares, "--record", place.record).code == 0
     target = tmp_path / "out"

@@ -1,20 +1,18 @@
 """The sheet in a real browser: it prints on the pages it should, loads nothing, and what is on it gives the share back.
 
 Source: Chromium, headless, driven by playwright; zxing-cpp reads the code from a picture of the page; ISO 216 (A4) and
-ANSI Y14.1 (Letter) for the sizes of paper; W3C, "Accessible Rich Internet Applications" (roles and names). A missing
-browser skips with its name, and fails where ``SHARES_REQUIRE_BROWSER=1``.
+ANSI Y14.1 (Letter) for the sizes of paper; W3C, "Accessible Rich Internet Applications" (roles and names).
 """
 
 from __future__ import annotations
 
 import io
 import itertools
-import os
 import re
-from pathlib import Path
 
 import pytest
 import zxingcpp
+from browser import started
 from paper.conftest import CARD, identity
 from PIL import Image
 from strategies import revealed
@@ -30,16 +28,6 @@ from shares.paper.paperform import from_paper, to_paper
 from shares.paper.sheet import MIN_MODULE, make_form, make_sheet
 from shares.paper.transcription import Transcription, gather
 
-BROWSER = Path("/usr/bin/chromium")
-QUIET = [
-    "--no-sandbox",
-    "--disable-gpu",
-    "--disable-quic",
-    "--no-first-run",
-    "--disable-background-networking",
-    "--disable-component-update",
-    "--disable-sync",
-]
 MILLIMETRE = 96 / 25.4  # CSS pixels
 # Letter is the shorter paper and A4 the narrower one; less the margins of the style.
 ROOM = (180 * MILLIMETRE, (11 * 25.4 - 24) * MILLIMETRE)
@@ -52,16 +40,7 @@ HOSTILE = ("<script>alert(1)", "<img src=x onerror=alert(2)>", *NAMES[:3])
 
 @pytest.fixture(scope="module")
 def browser():
-    if not BROWSER.exists():
-        if os.environ.get("SHARES_REQUIRE_BROWSER") == "1":
-            pytest.fail(f"SHARES_REQUIRE_BROWSER=1, and {BROWSER} is not installed")
-        pytest.skip(f"{BROWSER} is not installed")
-    from playwright.sync_api import sync_playwright
-
-    with sync_playwright() as playwright:
-        started = playwright.chromium.launch(executable_path=BROWSER, args=QUIET)
-        yield started
-        started.close()
+    yield from started()
 
 
 @pytest.fixture

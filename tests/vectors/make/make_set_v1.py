@@ -18,6 +18,7 @@ from itertools import combinations
 from pathlib import Path
 from typing import Any
 
+import attested_v1
 import journal_v1
 import record_cases_v1
 import recovery_cases_v1
@@ -236,6 +237,7 @@ def files() -> dict[str, str]:
             algorithm, name.split("_")[-1].replace("v1", name.split("_")[0]), REFUSALS, groups
         )
     made |= {f"golden/v1/wrapped/{name}": text for name, text in wrapped_v1.files(flat).items()}
+    made |= {f"golden/v1/attested/{name}": text for name, text in attested_v1.files(flat).items()}
     cards = [wrapped_v1.documents(flat)[f"{name}.card.json"] for name in ("harbour-office", "registrar")]
     made["golden/v1/journal/journal.jsonl"] = journal_v1.text(flat.record, cards)
     notes = {flag: valid_note(flag) for flag in wrapped_v1.FLAGS}

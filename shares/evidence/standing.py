@@ -1,0 +1,234 @@
+"""How each custodian stands: what they have proven of their share, what has come between, and when proof is due again.
+
+A custodian is confirmed by a proof of content within the policy's ``attest_every``; or by a pack seen closed within it,
+together with a proof of content within ``content_every``. Whatever may have touched the share voids earlier proofs: an
+incident, a departure, a copy destroyed, a new holder, a broken seal, a share found damaged.
+
+Source: NIST SP 800-53, CP-9(1) (media tested at a defined frequency); PCI PIN 9-2 (a tamper sign is analysed; read in a
+summary); trade practice: a seal is no proof of content, and silence is no consent.
+May import: shares.documents, shares.history.journal, shares.evidence.audited, .inventory, .life.
+Secret: nothing. Confidential: persons, sites, proofs. Public: nothing.
+Does not: judge attestations; it is given what each of them proves.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from datetime import datetime
+from typing import NamedTuple
+
+from shares.documents.event import (
+    Attested,
+    Dealt,
+    Departed,
+    Destroyed,
+    Event,
+    HandedOn,
+    Incident,
+    Introduced,
+    Lost,
+    Resolved,
+)
+from shares.evidence.audited import CustodianRow, Proof, Status
+from shares.evidence.inventory import take_inventory
+from shares.evidence.life import Life
+from shares.history.journal import Journal
+
+_FILLED = ("done", "no exposure", "reassigned", "refreshed")
+"""Ways to resolve a departure after which the custodian's place is filled again."""
+
+
+class Span(NamedTuple):
+    """A time during which a custodian was confirmed: from ``since`` on, and no longer at ``until``."""
+
+    custodian: str
+    since: datetime
+    until: datetime
+
+
+@dataclass(slots=True, eq=False)
+class _Standing:
+    """One custodian's, while the journal is read."""
+
+    name: str
+    person: str
+    since: datetime
+    card: str | None = None
+    content: datetime | None = None
+    sealed: datetime | None = None
+    unattributed: datetime | None = None
+    doubt: Status | None = None
+    why: str = ""
+    doubted: datetime | None = None
+    proofs: list[Proof] = field(default_factory=list)
+
+    def void(self, doubt: Status | None, why: str, time: datetime) -> None:
+        """Forget what was proven: something may have touched the share. Whoever has left, or whose share is destroyed,
+        stays so."""
+        self.content = self.sealed = self.unattributed = None
+        if self.doubt not in ("departed", "destroyed"):
+            self.doubt, self.why, self.doubted = doubt, why, time
+
+    def fill(self, time: datetime) -> None:
+        """Let the place be filled again after a departure; what was proven before counts no more."""
+        if self.doubt == "departed":
+            self.doubt, self.why, self.doubted, self.since = None, "", None, time
+
+    def prove(self, proof: Proof) -> None:
+        """Take what an attestation proves, or shows to be amiss."""
+        self.proofs.append(proof)
+        if proof.result in ("damaged", "inconsistent dealing"):
+            self.void("damaged", f"found {proof.result}, entry {proof.entry}", proof.time)
+        elif proof.result == "seal broken":
+            self.void("in doubt", f"seal found broken, entry {proof.entry}", proof.time)
+        elif proof.grade == "content" and proof.counts:
+            self.content = max(proof.time, self.content or proof.time)
+            if self.doubt in ("damaged", "in doubt"):
+                self.doubt, self.why, self.doubted = None, "", None
+        elif proof.grade == "sealed" and proof.counts:
+            self.sealed = max(proof.time, self.sealed or proof.time)
+        elif proof.grade == "content" and proof.result == "intact":
+            self.unattributed = proof.time
+
+
+class Standings:
+    """How the custodians stand at the time of a life, and when they were confirmed before.
+
+    Args:
+        life: of the set, up to the time of the audit.
+        proofs: what each attestation of the journal proves, by the number of its entry.
+    """
+
+    def __init__(self, life: Life, proofs: Mapping[int, Proof]) -> None:
+        self._life = life
+        self._all = {name: _Standing(name, life.people[name], life.start) for name in life.names}
+        copies = take_inventory(Journal(life.entries), life.record).copies
+        own = {
+            name: [copy for copy in copies if (copy.custodian, copy.epoch) == (name, life.record.epoch)]
+            for name in life.names
+        }
+        self._held = {name: sum(copy.fate == "held" for copy in copies) for name, copies in own.items()}
+        # By which entry the last copy of a share came to its end.
+        self._ended = {
+            name: max(copy.entry or 0 for copy in own[name])
+            for name, held in self._held.items()
+            if own[name] and not held
+        }
+        self._departed: dict[int, tuple[str, ...]] = {}
+        self._spans: list[Span] = []
+        self._confirmed: dict[str, Span] = {}
+        time = life.start
+        for entry in life.entries:
+            # A clock that ran backwards makes no proof last longer.
+            time = max(time, entry.time)
+            for one in self._touched(entry.sequence, entry.event, time, proofs):
+                self._note(one, time)
+
+    def rows(self) -> tuple[CustodianRow, ...]:
+        """Return how each custodian stands, in the record's order."""
+        return tuple(self._row(one) for one in self._all.values())
+
+    def spans(self) -> list[Span]:
+        """Return when each custodian was confirmed; those still confirmed until their proof expires."""
+        return [*self._spans, *self._confirmed.values()]
+
+    def _touched(self, number: int, event: Event, time: datetime, proofs: Mapping[int, Proof]) -> list[_Standing]:
+        """Let an event have its effect; return whose standing it may have changed."""
+        match event:
+            case Dealt() if event.record == self._life.record.fingerprint:
+                for share in event.custodians:
+                    if share.name in self._all:
+                        person = self._life.people[share.name]
+                        self._all[share.name] = _Standing(share.name, person, time, share.card)
+                return list(self._all.values())
+            case Introduced():
+                for one in self._of(event.custodian):
+                    one.card = event.card
+            case Resolved():
+                for one in self._of(*self._departed.get(event.entry, ())):
+                    if event.how in _FILLED:
+                        one.fill(time)
+            case Attested() if number in proofs:
+                for one in (touched := self._of(event.custodian)):
+                    one.prove(proofs[number])
+                return touched
+            case Incident():
+                for one in (touched := self._of(*event.custodians)):
+                    one.void("in doubt", f"an incident, entry {number}", time)
+                return touched
+            case Departed():
+                self._departed[number] = event.custodians
+                for one in (touched := self._of(*event.custodians)):
+                    one.void("departed", f"{event.person} has left, entry {number}", time)
+                return touched
+            case HandedOn():
+                for one in (touched := self._of(event.custodian)):
+                    one.fill(time)
+                    one.void(None, "", time)
+                    one.person, one.since = event.to, time
+                return touched
+            case Destroyed() | Lost():
+                for one in (touched := self._of(event.custodian)):
+                    one.void("in doubt", f"a copy was {event.what}, entry {number}", time)
+                    if self._ended.get(event.custodian) == number:
+                        one.doubt, one.why = "destroyed", f"no copy is left, entry {number}"
+                return touched
+        return []
+
+    def _of(self, *names: str) -> list[_Standing]:
+        return [self._all[name] for name in names if name in self._all]
+
+    def _until(self, one: _Standing) -> datetime | None:
+        """Return until when a custodian is confirmed, by what they have proven so far; None where by nothing."""
+        held = self._life.intervals
+        if one.content is None or one.doubt is not None:
+            return None
+        until = one.content + held.attest_every
+        if one.sealed is not None:
+            until = max(until, min(one.sealed + held.attest_every, one.content + held.content_every))
+        return until
+
+    def _note(self, one: _Standing, time: datetime) -> None:
+        """Keep from when until when a custodian was confirmed, once that has changed."""
+        before, until = self._confirmed.pop(one.name, None), self._until(one)
+        if before is not None:
+            time_before = min(before.until, time)
+            if until is not None and before.until >= time:
+                self._confirmed[one.name] = Span(one.name, before.since, until)
+                return
+            self._spans.append(Span(one.name, before.since, time_before))
+        if until is not None and until > time:
+            self._confirmed[one.name] = Span(one.name, time, until)
+
+    def _row(self, one: _Standing) -> CustodianRow:
+        status, why, due = self._stands(one)
+        return CustodianRow(
+            name=one.name,
+            person=one.person,
+            site=self._life.sites.get(one.name) if self._life.sites else None,
+            status=status,
+            why=why,
+            content=one.content,
+            sealed=one.sealed,
+            due=due,
+            card=one.card,
+            copies=self._held[one.name],
+            proofs=tuple(one.proofs),
+        )
+
+    def _stands(self, one: _Standing) -> tuple[Status, str, datetime | None]:
+        life, until = self._life, self._until(one)
+        if one.doubt is not None:
+            gone = one.doubt in ("departed", "destroyed")
+            return one.doubt, one.why, None if gone else one.doubted
+        if until is not None and until > life.at:
+            if one.content is not None and one.content + life.intervals.attest_every > life.at:
+                return "confirmed", f"content proven {one.content:%Y-%m-%d}", until
+            return "sealed", f"pack seen closed {one.sealed:%Y-%m-%d}, content proven {one.content:%Y-%m-%d}", until
+        due = until or one.since + life.intervals.attest_every
+        if one.unattributed is not None and one.unattributed + life.intervals.attest_every > life.at:
+            return "unattributed", "the share answered, and no known party key of the custodian signed", due
+        if until is None and due > life.at:
+            return "not yet attested", f"nothing proven since {one.since:%Y-%m-%d}", due
+        return "overdue", "no proof in time", due

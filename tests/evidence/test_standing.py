@@ -1,0 +1,200 @@
+"""How custodians stand: each event has its effect on what was proven, and time has too.
+
+Checked against: the table of the module's docstring, event by event.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from kept import NAMES, START, Kept, day, policy_text
+from parties import card
+
+from shares.documents.event import (
+    Copied,
+    Departed,
+    Destroyed,
+    Event,
+    HandedOn,
+    Incident,
+    Introduced,
+    Lost,
+    Received,
+    Resolved,
+)
+from shares.evidence.audited import CustodianRow
+
+NAME = "north-pier"
+
+
+@pytest.fixture
+def kept(tmp_path: Path) -> Kept:
+    return Kept.make(tmp_path / "set", policy_text(content_every="200d"))
+
+
+def row(kept: Kept, at: float, name: str = NAME) -> CustodianRow:
+    return next(one for one in kept.audit(day(at)).custodians if one.name == name)
+
+
+def status(kept: Kept, at: float) -> str:
+    return row(kept, at).status
+
+
+def prove(kept: Kept, at: float, **how: object) -> None:
+    kept.answer(kept.ask(day(at), [NAME]), [NAME], day(at), **how)  # type: ignore[arg-type]
+
+
+def incident(exposed: bool = False) -> Incident:
+    return Incident(what="incident", custodians=(NAME,), persons=(), exposed=exposed, due=day(60), remark="?")
+
+
+def destroyed(copy: str) -> Destroyed:
+    return Destroyed(what="destroyed", custodian=NAME, copy=copy, by="keeper one", witness="keeper two")
+
+
+def test_fresh_then_confirmed_then_overdue(kept: Kept) -> None:
+    assert status(kept, 1) == "not yet attested"
+    assert row(kept, 1).due == day(90)
+    assert status(kept, 90) == "overdue"
+    prove(kept, 20)
+    assert (status(kept, 19), status(kept, 20), status(kept, 109)) == ("not yet attested", "confirmed", "confirmed")
+    assert (row(kept, 30).content, row(kept, 30).due) == (day(20), day(110))
+    assert status(kept, 110) == "overdue"
+    assert not row(kept, 110).counts
+
+
+def test_a_sealed_pack_counts_with_content_in_the_longer_interval(kept: Kept) -> None:
+    prove(kept, 10, grade="sealed")
+    assert status(kept, 11) == "not yet attested"  # A seal alone proves no content.
+    prove(kept, 20)
+    prove(kept, 100, grade="sealed")
+    assert status(kept, 105) == "confirmed"
+    assert (status(kept, 110), row(kept, 110).counts, row(kept, 110).due) == ("sealed", True, day(190))
+    prove(kept, 180, grade="sealed")
+    assert row(kept, 185).due == day(220)  # Content was last proven on day 20, and is wanted after 200 days.
+    assert status(kept, 220) == "overdue"
+
+
+def test_a_broken_seal_voids_what_was_proven(kept: Kept) -> None:
+    prove(kept, 10)
+    prove(kept, 20, grade="sealed", seal="broken")
+    assert status(kept, 21) == "in doubt"
+    prove(kept, 22, grade="sealed")
+    assert status(kept, 23) == "in doubt"
+    prove(kept, 24)
+    assert status(kept, 25) == "confirmed"
+
+
+def test_damage_is_due_at_once_and_healed_by_content(kept: Kept) -> None:
+    prove(kept, 10)
+    prove(kept, 20, damaged=True)
+    assert (status(kept, 21), row(kept, 21).due, row(kept, 21).content) == ("damaged", day(20), None)
+    prove(kept, 25)
+    assert status(kept, 26) == "confirmed"
+
+
+def test_an_unattributed_answer_counts_for_nothing(kept: Kept) -> None:
+    prove(kept, 10, party=False)
+    assert (status(kept, 11), row(kept, 11).counts) == ("unattributed", False)
+    assert row(kept, 11).proofs[0].attributed is False
+    assert status(kept, 101) == "overdue"
+
+
+def test_an_answer_by_a_card_that_the_journal_does_not_know_is_unattributed(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text(), cards=())
+    prove(kept, 10)
+    assert status(kept, 11) == "unattributed"
+    event = Introduced(what="introduced", custodian=NAME, card=card(NAME).fingerprint)
+    kept.append(event, day(12), cards=[card(NAME)])
+    assert status(kept, 13) == "unattributed"  # The answer came before the card did.
+    prove(kept, 14)
+    assert (status(kept, 15), row(kept, 15).card) == ("confirmed", card(NAME).fingerprint)
+
+
+def test_a_late_answer_is_a_fact(kept: Kept) -> None:
+    kept.answer(kept.ask(day(10), [NAME], due=day(12)), [NAME], day(15))
+    assert (status(kept, 16), row(kept, 16).proofs[0].late) == ("confirmed", True)
+
+
+VOIDING: list[tuple[Event, str]] = [
+    (incident(), "in doubt"),
+    (incident(exposed=True), "in doubt"),
+    (HandedOn(what="handed-on", custodian=NAME, to="keeper six"), "not yet attested"),
+    (Departed(what="departed", person="keeper one", custodians=(NAME,), due=day(31)), "departed"),
+    (destroyed("original"), "destroyed"),
+    (Lost(what="lost", custodian=NAME, copy="original", by="a", witness="b", reason="?"), "destroyed"),
+    (Received(what="received", custodian=NAME), "confirmed"),
+    (Copied(what="copied", custodian=NAME, copy="4711"), "confirmed"),
+]
+
+
+@pytest.mark.parametrize(("event", "then"), VOIDING)
+def test_what_may_have_touched_the_share_voids_proof(kept: Kept, event: Event, then: str) -> None:
+    prove(kept, 10)
+    kept.append(event, day(30))
+    assert status(kept, 29) == "confirmed"
+    assert status(kept, 30) == then
+    prove(kept, 35)
+    final = "confirmed" if then not in ("departed", "destroyed") else then
+    assert status(kept, 36) == final
+    other = row(kept, 36, "south-pier")
+    assert other.status == "not yet attested"
+
+
+def test_after_a_departure_only_whoever_fills_the_place_counts(kept: Kept) -> None:
+    left = kept.append(Departed(what="departed", person="keeper one", custodians=(NAME,), due=day(31)), day(30))
+    kept.append(incident(), day(31))
+    assert (status(kept, 32), row(kept, 32).due) == ("departed", None)
+    kept.append(HandedOn(what="handed-on", custodian=NAME, to="keeper six"), day(40))
+    assert (status(kept, 41), row(kept, 41).person, row(kept, 41).due) == ("not yet attested", "keeper six", day(130))
+    prove(kept, 42)
+    assert status(kept, 43) == "confirmed"
+    kept.append(Resolved(what="resolved", entry=left.sequence, how="done"), day(44))
+    assert status(kept, 45) == "confirmed"
+
+
+def test_a_departure_that_was_resolved_lets_the_custodian_prove_anew(kept: Kept) -> None:
+    prove(kept, 10)
+    left = kept.append(Departed(what="departed", person="keeper one", custodians=(NAME,), due=day(31)), day(30))
+    kept.append(Resolved(what="resolved", entry=left.sequence, how="share destroyed"), day(31))
+    assert status(kept, 32) == "departed"
+    kept.append(Resolved(what="resolved", entry=left.sequence, how="done"), day(33))
+    assert status(kept, 34) == "not yet attested"
+    prove(kept, 35)
+    assert status(kept, 36) == "confirmed"
+
+
+def test_with_a_copy_left_the_share_is_in_doubt_and_then_gone(kept: Kept) -> None:
+    prove(kept, 10)
+    kept.append(Copied(what="copied", custodian=NAME, copy="4711"), day(11))
+    assert row(kept, 12).copies == 2
+    kept.append(destroyed("original"), day(13))
+    assert (status(kept, 14), row(kept, 14).copies) == ("in doubt", 1)
+    prove(kept, 15)
+    assert status(kept, 16) == "confirmed"
+    kept.append(destroyed("4711"), day(17))
+    assert (status(kept, 18), row(kept, 18).copies, row(kept, 18).due) == ("destroyed", 0, None)
+
+
+def test_an_entry_that_bears_an_earlier_time_makes_no_proof_last_longer(kept: Kept) -> None:
+    """The clock of the machine ran backwards: the entry's own, earlier time counts for the proof."""
+    kept.append(incident(), day(30))
+    prove(kept, 20)
+    assert (status(kept, 31), row(kept, 31).content, row(kept, 31).due) == ("confirmed", day(20), day(110))
+    margins = kept.audit(day(31)).margins
+    assert margins[0].time == START
+
+
+def test_without_policy_a_year_is_taken_and_said(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set")
+    audited = kept.audit(day(364))
+    assert audited.custodians[0].status == "not yet attested"
+    assert kept.audit(day(365)).custodians[0].status == "overdue"
+    assert audited.intervals
+    assert audited.intervals.assumed == ("attest_every", "content_every", "drill_every")
+    assert len([note for note in audited.notes if "365 days are taken" in note]) == 3
+
+
+def test_rows_are_in_the_records_order(kept: Kept) -> None:
+    assert tuple(one.name for one in kept.audit(day(1)).custodians) == NAMES
