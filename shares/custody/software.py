@@ -1,6 +1,6 @@
 """The digest of this program as it is installed, so that two machines can be compared.
 
-Source: FIPS 180-4 (SHA-256), RFC 8785 (canonical form); FORMAT.md, sec. 19.
+Source: FIPS 180-4 (SHA-256), RFC 8785 (canonical form); FORMAT_EVIDENCE.md, sec. 19.
 May import: shares.storage, shares.documents.base.
 Secret: nothing. Public: everything.
 Does not: cover Python, the libraries or the system: the hashes of the wheels and the medium that was started do. A

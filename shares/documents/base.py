@@ -51,6 +51,7 @@ class Document(BaseModel):
         extra="forbid",
         hide_input_in_errors=True,
         defer_build=True,  # A command pays for the documents that it meets, not for all kinds.
+        json_schema_serialization_defaults_required=True,  # What a program may leave out, a document has.
         cache_strings="none",  # The parser would keep short strings of any document in a cache of its own.
     )
 

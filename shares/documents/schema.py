@@ -17,6 +17,7 @@ from shares.documents.attestation import Attestation
 from shares.documents.base import VERSION, Document
 from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
+from shares.documents.entry import Entry
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
@@ -34,6 +35,7 @@ KINDS: tuple[type[Document], ...] = (
     Challenge,
     Attestation,
     CeremonyScript,
+    Entry,
 )
 FOLDER = Path(__file__).with_name("schemas")
 
@@ -41,7 +43,7 @@ FOLDER = Path(__file__).with_name("schemas")
 def schema(kind: type[Document]) -> dict[str, Any]:
     """Return the JSON Schema of one kind of document."""
     draft = "https://json-schema.org/draft/2020-12/schema"
-    bare = json.loads(json.dumps(kind.model_json_schema()), object_hook=_without_prose)
+    bare = json.loads(json.dumps(kind.model_json_schema(mode="serialization")), object_hook=_without_prose)
     return {"$schema": draft, "title": kind.KIND, **bare}
 
 

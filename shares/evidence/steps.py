@@ -195,7 +195,7 @@ class _Steps:
     def _dealing(self) -> Iterator[CeremonyStep]:
         yield self._step(
             DEALER,
-            "Before the eyes of the witnesses, bring or make the secret as the file named secret, in this folder. It "
+            "Before the eyes of the witnesses, bring or make the secret as the file named secret in this folder. It "
             "is never shown, and never typed into a command.",
             "The file is there, for its owner alone (-rw-------), and has the size that the owner of the key expects.",
             command="ls -l secret",

@@ -71,7 +71,19 @@ class TruthTable:
 
     def minimal_sets(self) -> Iterator[tuple[str, ...]]:
         """Yield each minimal set, names in the rule's order."""
-        left = self._minimal
+        return self._members(self._minimal)
+
+    def minimal_set_with(self, *names: str) -> tuple[str, ...] | None:
+        """Return a minimal set that holds all of these names, or None where there is none.
+
+        >>> TruthTable(Rule(2, ("a", "b", Rule(1, ("b", "c"))))).minimal_set_with("a", "c")
+        ('a', 'c')
+        """
+        holding = reduce(and_, (self._with[name] for name in names), self._minimal)
+        return next(self._members(holding), None)
+
+    def _members(self, left: int) -> Iterator[tuple[str, ...]]:
+        """Yield each set of a table, names in the rule's order."""
         while left:
             lowest = left & -left
             left ^= lowest

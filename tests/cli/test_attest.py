@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import re
+from datetime import timedelta
 from pathlib import Path
 from typing import Any
 
@@ -11,13 +12,16 @@ import pytest
 from cli.harbour import Harbour
 from cli.harness import NAMES, Result, assert_one_line, assert_refused, files_in, run, spawn
 from cli.terminal import on_terminal
+from parties import unlocked
 
+from shares import clock
 from shares.documents.attestation import Attestation
 from shares.documents.challenge import Challenge
 from shares.documents.event import Attested, Introduced
 from shares.documents.share import Share
 from shares.documents.wrapping import Suite
-from shares.evidence.rounds import rounds
+from shares.evidence.rounds import ask, rounds
+from shares.history.folder import SetFolder
 from shares.history.journal import load_journal
 from shares.storage import read_file
 
@@ -239,6 +243,29 @@ def test_a_sheet_answers_through_transcribe(quay: Quay) -> None:
     assert (made.carrier, made.opened, made.serial) == ("paper", True, "TB-18")
     done = run(*quay.check_arguments("north-pier", more=(*quay.entering(), *quay.cards("north-pier"))))
     assert done.code == 0
+
+
+def test_attendance_in_a_drill_is_answered_without_any_share(quay: Quay) -> None:
+    now = clock.now()
+    with unlocked(OFFICE) as key:
+        made, _ = ask(
+            SetFolder(quay.place.set),
+            keys=[key],
+            due=now + timedelta(days=1),
+            custodians=["dry-dock"],
+            purpose="attendance",
+            drill=1,
+            time=now,
+        )
+    quay.challenge.write_bytes(made.to_file())
+    done = run(*quay.answer_arguments("dry-dock", "--present", "--place", "the quay"))
+    assert (done.code, "Answered for dry-dock: present." in done.out) == (0, True)
+    assert "are asked who is there" in done.err
+    done = run(*quay.check_arguments("dry-dock", more=(*quay.entering(), *quay.cards("dry-dock"))))
+    assert (done.code, "present, attributed, does not count (entry " in done.out) == (0, True)
+    quay.answer_file("dry-dock").unlink()
+    share = quay.answer_arguments("dry-dock", "--share", quay.place.share("dry-dock"))
+    assert_not_answered(share, 2, "asks who is there", watched=quay.harbour.folder)
 
 
 def test_a_broken_seal_is_told(quay: Quay) -> None:

@@ -86,7 +86,7 @@ def test_a_pack_that_is_none_is_named_and_takes_no_other_with_it(dealt, pack, tm
     if bend == "of another program":
         with tarfile.open(other, "w") as made:
             made.add(dealt.set, arcname="../set")
-        words[bend] = "another form of archive"
+        words[bend] = "tells more than a long name"
     else:
         other.write_bytes({"cut": data[:-700], "compressed": b"\x1f\x8b" + data, "not a pack": b"x" * 2000}[bend])
     done = run("audit", other, pack, "--json")

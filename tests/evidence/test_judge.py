@@ -103,6 +103,8 @@ def test_each_flaw_is_named(case: str) -> None:
     found = judged(attestation, **known)
     assert found.flaws == flaws
     assert found.accepted is (flaws <= KEPT)
+    unattributed = {Flaw.FORGED_PARTY, Flaw.NO_PARTY, Flaw.OTHER_CARD, Flaw.UNKNOWN_CARD}
+    assert not (found.attributed and flaws & unattributed)
     assert found.counts is (flaws <= {Flaw.LATE})
     assert all(problem.what and not problem.what.endswith(".") for problem in found.problems)
 

@@ -5,6 +5,7 @@ Sources of the numbers: the counts of k-subsets (``math.comb``); the rule follow
 
 from __future__ import annotations
 
+import itertools
 import math
 
 import pytest
@@ -28,6 +29,17 @@ def test_a_table_agrees_with_trying_every_set(drawn: tuple[Rule, dict[str, str]]
     hitting = [chosen for chosen in sets_of(label_of.values()) if all(chosen & one for one in expected)]
     assert table.fewest_blocking == min(map(len, hitting))
     assert set(table.idle) == set(label_of.values()) - set().union(*expected)
+
+
+@given(labelled())
+def test_a_minimal_set_with_some_names_is_found_where_there_is_one(drawn: tuple[Rule, dict[str, str]]) -> None:
+    rule, label_of = drawn
+    expected = minimal_by_trying(rule, label_of)
+    table = TruthTable(relabelled(rule, label_of))
+    for one, other in itertools.product(table.names, repeat=2):
+        found = table.minimal_set_with(one, other)
+        holding = {chosen for chosen in expected if {one, other} <= chosen}
+        assert frozenset(found) in holding if found else not holding
 
 
 @pytest.mark.parametrize(("need", "total"), [(1, 24), (12, 24), (24, 24), (2, 3), (1, 1), (7, 16), (16, 17)])
