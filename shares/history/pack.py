@@ -26,8 +26,8 @@ from shares.streams import new_file, regular_file
 MAX_PACKED: Final = 1 << 24
 """The largest file in a pack beside the journal, in bytes: 16 MiB, for scans."""
 # What a set's folder holds for others to see (FORMAT.md, sec. 15). All else stays where it is.
-_NAMES: Final = (RECORD_NAME, PRACTICE_RECORD, POLICY_NAME, JOURNAL_NAME)
-_FOLDERS: Final = ("acknowledgements", "attestations", "ceremony", "documents", "drills")
+_NAMES: Final = (RECORD_NAME, POLICY_NAME, PRACTICE_RECORD, JOURNAL_NAME)
+_FOLDERS: Final = ("acknowledgements", "affidavits", "attestations", "ceremony", "documents", "drills")
 _TORN: Final = re.compile(r"journal\.torn-[0-9a-f]{16}")
 # Files that hold a share or a private key, sealed or not. What is damaged, or stands within something else, counts.
 _SECRET: Final = ("share", "wrapped-share", "sealed-secret", "party-key")
