@@ -30,7 +30,7 @@ PACKED = {
     "documents/affidavit.pdf": b"%PDF",
     "drills/9/report.html": b"<!DOCTYPE html>",
     "drills/9/report.json": b"{}",
-    "journal.torn-0123456789abcdef": b'{"kind":"journal-en',
+    "journal.torn-1234-0123456789abcdef": b'{"kind":"journal-en',
     "policy.toml": b'label = "Tide archive root"\n',
     "practice.json": b"{}",
 }
