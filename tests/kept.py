@@ -194,7 +194,7 @@ class Kept:
     ) -> int:
         """A drill in which these bring their shares; return its number."""
         with unlocked(OFFICE) as key:
-            number = open_drill(self.set, kind, keys=[key], at=time).sequence
+            number = open_drill(self.set, kind, keys=[key], at=time)[0].number
             dealt = self.practice if kind == "practice" else self.dealt
             assert dealt
             brought = [Presented(one.custodian, one) for one in dealt.shares if one.custodian in names]

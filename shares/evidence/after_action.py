@@ -21,7 +21,7 @@ from shares.documents.event import Attested, DrillClosed, Rehearsed
 from shares.documents.members import MAX_TEXT, check_text
 from shares.documents.party import OpenPartyKey
 from shares.errors import ParameterError, VerificationError
-from shares.evidence.drill import Drill, seconds_between
+from shares.evidence.drill import Drill, seconds_between, the_drill
 from shares.history.folder import SetFolder
 from shares.paper.page import REPORT, render
 
@@ -57,6 +57,8 @@ def close_drill(
     folder.require_signers(keys)
     for text in findings:
         check_text(text)
+    # As it stands now: since the caller looked, it may have been rehearsed, or closed by another.
+    drill = the_drill(folder.journal(), drill.number)
     report = _report(folder, drill, findings, actions, clock.now() if at is None else at)
     for key in keys:
         report = report.signed(key)
