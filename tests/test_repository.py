@@ -92,7 +92,9 @@ def test_top_level_holds_what_was_agreed_and_nothing_else() -> None:
 
 
 def test_no_file_of_the_package_is_too_long_to_read() -> None:
-    lengths = {name: (ROOT / name).read_bytes().count(b"\n") for name in tracked() if name.startswith("shares/")}
+    # The schemas are written by a program, of modules that people can read.
+    names = [name for name in tracked() if name.startswith("shares/") and "/schemas/" not in name]
+    lengths = {name: (ROOT / name).read_bytes().count(b"\n") for name in names}
     assert {name: lines for name, lines in lengths.items() if lines > MOST_LINES} == {}
     assert len(lengths) > 30
 

@@ -13,6 +13,7 @@ from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
 from shares.documents.chunks import Header
+from shares.documents.drill_report import DrillReport
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
@@ -32,6 +33,7 @@ KINDS = {
     "party-key": "party key (private, wrapped by passphrase)",
     "party-card": "party card (public)",
     "acknowledgement": "acknowledgement of duties",
+    "drill-report": "report of a drill (confidential)",
     "ceremony-script": "script of a key ceremony (confidential)",
     "challenge": "challenge (what custodians are asked; fresh, dated and signed)",
     "attestation": "attestation (an answer to a challenge; `shares attest check` checks its signatures)",
@@ -168,6 +170,16 @@ def _ceremony_script(data: bytes, where: str) -> dict[str, object]:
     }
 
 
+def _drill_report(data: bytes, where: str) -> dict[str, object]:
+    found = DrillReport.parse(data, where=where)
+    return {
+        **found.public("set", "epoch", "record", "label", "drill", "drill_kind", "opened", "closed", "passed"),
+        **found.public("recovery_seconds", "target_seconds", "findings", "journal"),
+        "actions": [f"{one.owner}, by {one.due:%Y-%m-%d}: {one.what}" for one in found.actions],
+        "signatures": [f"{one.card.name}, card {one.card.fingerprint}" for one in found.signatures],
+    }
+
+
 def _challenge(data: bytes, where: str) -> dict[str, object]:
     found = Challenge.parse(data, where=where)
     return {
@@ -202,6 +214,7 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     Acknowledgement.KIND: _acknowledgement,
     CeremonyScript.KIND: _ceremony_script,
     Challenge.KIND: _challenge,
+    DrillReport.KIND: _drill_report,
     Attestation.KIND: _attestation,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }

@@ -1,7 +1,7 @@
 """The journal's entry: one event, chained to the entry before it, and signed by whoever made it.
 
 Source: S. Haber, W. S. Stornetta, "How to time-stamp a digital document", J. Cryptology 3, 1991 (linking by hashes);
-FORMAT.md, sec. 16.
+FORMAT_EVIDENCE.md, sec. 16.
 May import: shares.errors, shares.documents.base, .event, .members, .party, .signing.
 Secret: nothing. Confidential: what events tell of persons and places. Public: the rest.
 Does not: know its file, or the entries before it; ``history.journal`` does.

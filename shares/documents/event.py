@@ -1,7 +1,7 @@
 """The events of a set's life, as its journal tells them: one class for each, told apart by ``what``.
 
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 5.4.1, wants life-cycle events of keys logged with date, person
-and description; the names of events are ours; FORMAT.md, sec. 16.
+and description; the names of events are ours; FORMAT_EVIDENCE.md, sec. 16.
 May import: shares.errors, shares.sharing.rule, shares.documents.base, .members.
 Secret: nothing. Confidential: persons, places and serials. Public: the rest.
 Does not: judge events or follow from one to another; ``evidence`` does.

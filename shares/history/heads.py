@@ -1,6 +1,6 @@
 """Where a journal is known to have stood: heads noted by hand, read aloud, or quoted in other documents.
 
-Source: FORMAT.md, sec. 16.
+Source: FORMAT_EVIDENCE.md, sec. 16.
 May import: shares.errors, shares.documents.
 Secret: nothing. Public: heads.
 Does not: say whether a journal stood there; ``Journal.holds`` does.

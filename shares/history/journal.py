@@ -1,7 +1,7 @@
 """The journal of a set: lines that are only ever added, each chained to the one before it and signed.
 
 Source: S. Haber, W. S. Stornetta, "How to time-stamp a digital document", J. Cryptology 3, 1991 (linking by hashes);
-FORMAT.md, sec. 16.
+FORMAT_EVIDENCE.md, sec. 16.
 May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history.lines.
 Secret: the party keys that sign, passed through. Confidential: the entries. Public: their digests.
 Does not: say what events mean, or which must be there; ``evidence`` does. What entries say of the set and of its other

@@ -1,6 +1,6 @@
 """What people report by hand: which facts each event needs, and the entry made of them, with what they hand in.
 
-Source: FORMAT.md, sec. 16; the 24 hours for a leaver are what the trade asks for.
+Source: FORMAT_EVIDENCE.md, sec. 16; the 24 hours for a leaver are what the trade asks for.
 May import: shares.errors, shares.clock, shares.documents, .folder.
 Secret: party keys that sign, passed through. Confidential: what is reported. Public: nothing.
 Does not: take reports of what a command does itself, such as a split, an attestation, a drill or a recovery.

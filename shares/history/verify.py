@@ -1,6 +1,6 @@
 """A journal held against what it speaks of: the record, the policy, the files it names, and heads noted elsewhere.
 
-Source: FORMAT.md, sec. 16.
+Source: FORMAT_EVIDENCE.md, sec. 16.
 May import: shares.errors, shares.documents, shares.history.files, shares.history.journal.
 Secret: nothing. Confidential: the policy, and what entries and files tell. Public: the record, digests.
 Does not: judge what happened, or what is overdue; ``evidence`` does. Whoever holds every signing key could write

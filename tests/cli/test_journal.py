@@ -1,11 +1,12 @@
 """``shares journal``: by hand and by script, what happened is added, shown, checked, and its head read aloud.
 
-Checked against: tests/history/by_hand.py, a reader written from FORMAT.md, section 16, alone.
+Checked against: tests/history/by_hand.py, a reader written from FORMAT_EVIDENCE.md, section 16, alone.
 """
 
 from __future__ import annotations
 
 import json
+import tempfile
 from pathlib import Path
 
 import pytest
@@ -273,14 +274,18 @@ def test_a_folder_without_a_journal_is_refused(tmp_path: Path, command: str, fol
     assert_refused(["journal", command, tmp_path / "nowhere"], 5, "nowhere")
 
 
-def test_a_journal_that_may_not_be_written_is_refused(folder: Path) -> None:
-    for path in (folder, *folder.iterdir()):
-        path.chmod(0o555)
-    before = (folder / "journal.jsonl").read_bytes()
-    above = folder.parent
-    for path in (above, above.parent, above.parent.parent):
-        path.chmod(0o755)
-    done = run_unprivileged("journal", "add", folder, "noted", "--remark=x")
-    assert (done.code, "permission denied" in assert_one_line(done)) == (5, True)
-    assert (folder / "journal.jsonl").read_bytes() == before
-    assert run_unprivileged("journal", "verify", folder).code == 0
+def test_a_journal_that_may_not_be_written_is_refused_and_read() -> None:
+    # The folders of pytest are closed to others.
+    with tempfile.TemporaryDirectory() as open_folder:
+        folder = set_folder(Path(open_folder) / "set", "harbour-office")
+        for path in (Path(open_folder), folder, *folder.iterdir()):
+            path.chmod(0o755)
+        before = (folder / "journal.jsonl").read_bytes()
+        (folder / "journal.jsonl").chmod(0o444)
+        done = run_unprivileged("journal", "add", folder, "noted", "--remark=x")
+        assert (done.code, "permission denied" in assert_one_line(done)) == (5, True)
+        assert (folder / "journal.jsonl").read_bytes() == before
+        assert run_unprivileged("journal", "verify", folder).code == 0
+        (folder / "journal.jsonl").chmod(0o000)
+        done = run_unprivileged("journal", "verify", folder)
+        assert (done.code, "permission denied" in assert_one_line(done)) == (5, True)

@@ -47,6 +47,9 @@ def test_a_set_from_what_is_held_to_its_end(dealt: Place) -> None:
     assert f"Keep record, policy, journal, affidavits and their paper until {told['keep_until']}" in closed.out
     assert f"records are kept until {told['keep_until']}." in run(*retiring(dealt, "status")).out
     assert_refused(retiring(dealt, "close"), 2, "the set was retired on", watched=dealt.folder)
+    # A copy that turns up afterwards is entered, and not passed over.
+    assert run("journal", "add", dealt.set, "copied", "--custodian", "registrar", "--copy", "S-1").code == 0
+    assert "Entered since, and to be accounted for: 1." in run(*retiring(dealt, "status")).out
 
 
 def test_what_is_lost_is_not_said_to_be_destroyed(dealt: Place) -> None:

@@ -99,7 +99,8 @@ def test_a_step_logged_twice_says_that_it_repeats(folder: Path) -> None:
     with pytest.raises(ParameterError, match="step 2 has no entry that could be repeated"):
         log(folder, 2, repeats=True)
     assert (folder / "journal.jsonl").read_bytes() == before
-    log(folder, 1, repeats=True)
+    log(folder, 2)
+    log(folder, 1, repeats=True, time=at(3))
     assert whats(report(folder)) == []
     assert len(report(folder).steps[0].entries) == 2
 
@@ -176,6 +177,7 @@ def test_dual_control_binds_before_there_is_a_record_and_after(folder: Path) -> 
         # A script that was made from another policy does not undo what the set's own asks for.
         with pytest.raises(ParameterError, match="dual control"):
             log(folder, 2, SCRIPT, keys=(one,))
+        assert not (folder / script_name(SCRIPT.digest())).exists()
         log(folder, 2, DUAL, keys=(one, two))
     found = report(folder)
     assert found.steps[1].signers == ("registrar", "harbour-office")
@@ -204,6 +206,7 @@ def test_the_report_names_what_the_log_itself_shows(folder: Path) -> None:
         "2026-12-01T07:07:00Z",
     ]
     assert [one.step for one in report(folder).exceptions][:3] == [2, 2, 2]
+    assert report(folder).problems == ()
 
 
 def test_an_exception_without_a_script_counts_while_the_ceremony_goes_on(folder: Path) -> None:

@@ -103,6 +103,19 @@ def test_entries_about_nobody_are_told(of_set: SetFolder) -> None:
     assert [(copy.custodian, copy.name) for copy in taken(of_set).held][3:] == [("dry-dock", "S-1")]
 
 
+def test_a_copy_that_is_called_an_original_is_none(of_set: SetFolder) -> None:
+    copied(of_set, "registrar", "original of the sheet")
+    enter(of_set, Delivered, what="delivered", custodian="registrar", serial="P-1")
+    assert [(copy.name, copy.sent) for copy in taken(of_set).copies[2:]] == [
+        ("original", "P-1"),
+        ("original of the sheet", None),
+    ]
+    copied(of_set, "north-pier", "original, epoch 2")
+    dealt_again(of_set)
+    own = [copy.name for copy in taken(of_set).copies if copy.custodian == "north-pier"]
+    assert own == ["original", "original, epoch 2", "original, epoch 2 (2)"]
+
+
 def test_who_it_was_handed_on_to_is_kept(of_set: SetFolder) -> None:
     for person in ("A. Person", "B. Person"):
         enter(of_set, HandedOn, what="handed-on", custodian="registrar", to=person)

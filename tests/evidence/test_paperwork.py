@@ -1,20 +1,21 @@
 """Scripts, reports and affidavits on paper: in a real browser, whole, on the paper they are made for, and harmless.
 
-Source: Chromium, headless, driven by playwright; ISO 216 (A4) and ANSI Y14.1 (Letter). A missing browser skips with its
-name, and fails where ``SHARES_REQUIRE_BROWSER=1``.
+Source: axe-core (rules of WCAG 2.0 to 2.2, levels A and AA, and its best practices), from a package that carries it;
+ISO 216 (A4) and ANSI Y14.1 (Letter).
 """
 
 from __future__ import annotations
 
-import os
+import importlib.resources
 import re
 from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
+import axe_playwright_python
 import pytest
+from browser import started
 from evidence.harbour_set import NAMES, at, deal, enter, policy
-from paper.test_browser import BROWSER, QUIET
 from parties import unlocked
 from strategies import CREATED
 
@@ -28,6 +29,7 @@ from shares.evidence.paperwork import affidavit_page, report_lines, report_page,
 from shares.evidence.script import make_script
 from shares.history.files import FolderFiles
 
+AXE = (importlib.resources.files(axe_playwright_python) / "axe.min.js").read_text("utf-8")
 SOFTWARE = Software(version="0.1.0", digest=bytes(range(32)))
 MILLIMETRE = 96 / 25.4  # CSS pixels
 WIDTHS = {"A4": 186 * MILLIMETRE, "Letter": (8.5 * 25.4 - 24) * MILLIMETRE}
@@ -36,16 +38,7 @@ HOSTILE = "<script>alert(1)</script><img src=x onerror=alert(2)>"
 
 @pytest.fixture(scope="module")
 def browser() -> Iterator[Any]:
-    if not BROWSER.exists():
-        if os.environ.get("SHARES_REQUIRE_BROWSER") == "1":
-            pytest.fail(f"SHARES_REQUIRE_BROWSER=1, and {BROWSER} is not installed")
-        pytest.skip(f"{BROWSER} is not installed")
-    from playwright.sync_api import sync_playwright
-
-    with sync_playwright() as playwright:
-        started = playwright.chromium.launch(executable_path=BROWSER, args=QUIET)
-        yield started
-        started.close()
+    yield from started()
 
 
 @pytest.fixture
@@ -179,3 +172,25 @@ def test_an_affidavit_is_one_page_with_room_for_both_to_sign(
     assert "".join(copy.name.split()) in "".join(told.split())
     assert page.locator("table.form th", has_text="Signature").count() == 2
     assert "I am not the custodian of this share" in told
+
+
+def violations(page: Any) -> dict[str, list[str]]:
+    """What axe finds wrong, rule by rule; it must have looked at something."""
+    page.evaluate(AXE)
+    found = page.evaluate("axe.run(document, {resultTypes: ['violations', 'passes']})")
+    assert len(found["passes"]) > 10
+    return {rule["id"]: [node["html"][:100] for node in rule["nodes"]] for rule in found["violations"]}
+
+
+def test_the_pages_keep_nobody_out(show: Callable[[bytes], Any], tmp_path: Path) -> None:
+    pages = {
+        "script": script_page(scripts()["signed"]),
+        "report": reported(tmp_path / "set", "plain")[1],
+        "affidavit": affidavit_page(deal(tmp_path / "other").record, Copy("registrar", "original", 1)),
+    }
+    for name, data in pages.items():
+        page = show(data)
+        page.emulate_media(media="screen")
+        assert (name, violations(page)) == (name, {})
+    page.evaluate("document.documentElement.removeAttribute('lang')")
+    assert "html-has-lang" in violations(page)

@@ -116,6 +116,12 @@ def test_who_watches_keeps_no_share_and_has_no_second_role(witness: str) -> None
         made(people={witness: "A. Person", "dealer": "a. person"})
 
 
+def test_a_strict_policy_that_a_split_would_refuse_has_no_script() -> None:
+    weak = policy("strict = true").text.replace(b"Keeper of south-pier", b"Keeper of north-pier")
+    with pytest.raises(VerificationError, match="the policy is strict, and a serious finding stands"):
+        make_script(Policy.parse(weak), SOFTWARE)
+
+
 def test_who_works_and_keeps_a_share_is_cautioned_about() -> None:
     people = {"dealer": "keeper of registrar", "administrator": "A. Person"}
     assert made(people=people).roles[3].person == "keeper of registrar"

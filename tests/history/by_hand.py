@@ -1,8 +1,8 @@
-"""Check a journal from FORMAT.md, section 16, alone: chain, sequence and signatures. Nothing of the package is used.
+"""Check a journal by its published format alone: chain, sequence and signatures. Nothing of the package is used.
 
-Source: FORMAT.md, sections 1, 9 and 16; FIPS 180-4 by hashlib; RFC 8032 by the library ``cryptography``. Canonical JSON
-(RFC 8785) of what stands in a journal is what ``json`` writes with sorted names and no white space, since every number
-is a small integer, every name ASCII, and no text holds a control character.
+Source: FORMAT.md, sections 1 and 9; FORMAT_EVIDENCE.md, section 16; FIPS 180-4 by hashlib; RFC 8032 by the library
+``cryptography``. Canonical JSON (RFC 8785) of what stands in a journal is what ``json`` writes with sorted names and no
+white space, since every number is a small integer, every name ASCII, and no text holds a control character.
 """
 
 from __future__ import annotations

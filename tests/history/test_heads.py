@@ -1,6 +1,6 @@
 """Heads noted by hand, read aloud, or quoted in documents.
 
-Source: FORMAT.md, section 16: eight groups of four characters, and the number of the entry.
+Source: FORMAT_EVIDENCE.md, section 16: eight groups of four characters, and the number of the entry.
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
 """The journal: whatever was done to it is found, and named with its line.
 
-Checked against: a reader written from FORMAT.md, section 16, alone (by_hand.py), which uses hashlib and the library
-``cryptography`` and nothing of the package; RFC 8785 by the library ``rfc8785``. Ed25519 itself is held against RFC
-8032 in tests/documents/test_signing.py.
+Checked against: a reader written from FORMAT_EVIDENCE.md, section 16, alone (by_hand.py), which uses hashlib and the
+library ``cryptography`` and nothing of the package; RFC 8785 by the library ``rfc8785``. Ed25519 itself is held against
+RFC 8032 in tests/documents/test_signing.py.
 """
 
 from __future__ import annotations

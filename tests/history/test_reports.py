@@ -1,6 +1,6 @@
 """What people report by hand: every event takes what it needs and refuses the rest, and says which option is meant.
 
-Source: 24 hours for a leaver are what the trade asks for; all else is this project's own format (FORMAT.md, sec. 16).
+Source: 24 hours for a leaver are what the trade asks for; all else is this project's own (FORMAT_EVIDENCE.md, sec. 16).
 """
 
 from __future__ import annotations
@@ -86,7 +86,7 @@ def test_every_other_fact_is_refused_and_named(folder: SetFolder) -> None:
 
 def test_what_commands_do_themselves_is_not_reported() -> None:
     own = {"dealt", "challenged", "attested", "drill-opened", "rehearsed", "drill-closed", "recovered", "step",
-           "destroyed", "retired", "set-aside"}  # fmt: skip
+           "destroyed", "lost", "retired", "set-aside"}  # fmt: skip
     assert set(NEEDS) == set(EVENT_NAMES) - own
 
 
@@ -100,7 +100,7 @@ def test_what_commands_do_themselves_is_not_reported() -> None:
         ("departed", {"person": ("A. Keeper",)}, "--custodian: the set has no policy"),
         ("resolved", {"entry": 9, "how": "done"}, "--entry: the journal has no entry 9"),
         ("resolved", {"entry": 1, "how": "done"}, "--entry: entry 1 sets no task: it is dealt"),
-        ("incident", {"custodian": ("north-pier",), "remark": "x", "within": "soon"}, "--within: a duration"),
+        ("incident", {"custodian": ("north-pier",), "remark": "x", "within": "soon"}, "--within: should be a duration"),
         ("noted", {"remark": "x" * 501}, "noted: remark is not as it should be"),
         ("noted", {"remark": "a\x1bb"}, "control or invisible"),
     ],

@@ -1,6 +1,6 @@
 """A journal against what it speaks of: each thing that does not fit is named, and told apart from the others.
 
-Source: this project's own format (FORMAT.md, section 16).
+Source: this project's own format (FORMAT_EVIDENCE.md, section 16).
 """
 
 from __future__ import annotations

@@ -1,6 +1,6 @@
 """The golden sample of a journal: one entry of every event, signed by two parties, beside the set that it tells of.
 
-Source: shares/documents/FORMAT.md, section 16.
+Source: shares/documents/FORMAT_EVIDENCE.md, section 16.
 May import: the standard library and the `_v1` modules beside it.
 Secret: nothing; the keys are those of `wrapped_v1`, made up and worthless.
 Does not: test anything. test_make_set_v1.py and tests/history/test_golden.py do.
@@ -49,13 +49,15 @@ def events(record: Json, card: Json) -> list[Json]:
         {"what": "incident", "custodians": ["south-pier"], "persons": [], "exposed": True, "due": DUE,
          "remark": "seal HT-0003 found broken, “as if by a gull” \u2013 Möwe"},
         {"what": "resolved", "entry": 16, "action": None, "how": "key replaced", "remark": None},
-        {"what": "step", "script": SCRIPT, "step": 7, "initials": "AK", "remark": None},
+        {"what": "step", "script": SCRIPT, "step": 7, "initials": "AK", "repeats": False, "remark": None},
         {"what": "exception", "remark": "the clock of the machine was an hour late", "remedy": "set by the witness",
          "script": SCRIPT, "step": 8, "initials": "BK"},
         {"what": "set-aside", "remark": "12 bytes of a line that a stopped run did not finish"},
         {"what": "noted", "remark": 'paths with \\ and quotation marks " stay as they are'},
         {"what": "destroyed", "custodian": "south-pier", "copy": "original", "by": "C. Keeper",
          "witness": "auditor-east", "method": "cross-cut"},
+        {"what": "lost", "custodian": "south-pier", "copy": "HT-0004", "by": "C. Keeper", "witness": "auditor-east",
+         "reason": "washed off the quay"},
         {"what": "retired", "keep_until": "2028-02-01T12:00:00Z", "remark": None},
     ]  # fmt: skip
 
