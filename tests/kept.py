@@ -29,7 +29,7 @@ from shares.evidence.audited import Audit
 from shares.evidence.drill import open_drill, the_drill
 from shares.evidence.rehearsal import rehearse
 from shares.evidence.rounds import Entered, ask, enter
-from shares.history.files import FolderFiles
+from shares.history.files import PRACTICE_RECORD, FolderFiles
 from shares.history.folder import SetFolder
 from shares.history.journal import append
 from shares.memory import Secret
@@ -94,8 +94,8 @@ class Kept:
         if policy:
             (folder / "policy.toml").write_bytes(policy)
         if practice:
-            (folder / "practice").mkdir()
-            (folder / "practice/record.json").write_bytes(practice.record.to_file())
+            (folder / PRACTICE_RECORD).parent.mkdir(exist_ok=True)
+            (folder / PRACTICE_RECORD).write_bytes(practice.record.to_file())
         record = dealt.record
         if signed:
             with unlocked(OFFICE) as key:
@@ -194,7 +194,7 @@ class Kept:
     ) -> int:
         """A drill in which these bring their shares; return its number."""
         with unlocked(OFFICE) as key:
-            number = open_drill(self.set, kind, keys=[key], at=time).sequence
+            number = open_drill(self.set, kind, keys=[key], at=time)[0].number
             dealt = self.practice if kind == "practice" else self.dealt
             assert dealt
             brought = [Presented(one.custodian, one) for one in dealt.shares if one.custodian in names]

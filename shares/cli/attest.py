@@ -20,6 +20,7 @@ from shares.cli.attested import (
     read_answers,
     who_answers,
 )
+from shares.cli.intervals import interval
 from shares.cli.keys import cards_by_name, key_option, opening, sign_option, signers
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
@@ -29,7 +30,6 @@ from shares.custody.presented import load_record, load_shares
 from shares.documents.base import MAX_FILE
 from shares.documents.challenge import Challenge
 from shares.documents.event import Grade
-from shares.documents.intervals import parse_interval
 from shares.errors import ParameterError, SharesError
 from shares.evidence.attest import answer as make_answer
 from shares.evidence.attest import check_asked
@@ -41,10 +41,6 @@ SEND = (
     "Next: give it to those who are asked, by the known way, and read its fingerprint aloud to them by another one. "
     "They answer with `shares attest answer`; `shares attest check` takes the answers."
 )
-
-
-def _interval(_: click.Context, __: click.Parameter, value: str) -> timedelta:
-    return parse_interval(value)
 
 
 @click.group()
@@ -69,7 +65,7 @@ def command() -> None:
     default="14d",
     show_default=True,
     metavar="INTERVAL",
-    callback=_interval,
+    callback=interval,
     help="Until when to answer, from now: days, weeks or years, like 14d, 2w or 1y.",
 )
 @sign_option

@@ -12,7 +12,8 @@ from shares.history.pack import Packed, write_pack
 
 CAUTION = (
     "The pack is confidential: policy, journal and evidence tell who holds what, and where. Hand it to the auditor in "
-    "person, or encrypted. No share is in it."
+    "person, or encrypted. No file in it is a share or key of this program; a scan or picture of one would not be "
+    "noticed: look at what lies in documents/ yourself."
 )
 
 

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+from datetime import timedelta
 from pathlib import Path
 
 import click
 
+from shares import clock
 from shares.cli.feeding import FeedsCommand
+from shares.cli.intervals import interval
 from shares.cli.keys import key_option, opening, sign_option, signers
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
@@ -21,8 +24,9 @@ from shares.documents.event import DrillKind
 from shares.documents.members import encode_bytes
 from shares.errors import ParameterError
 from shares.evidence.after_action import close_drill, in_words, report_page
-from shares.evidence.drill import Drill, open_drill, the_drill
+from shares.evidence.drill import Drill, open_drill, rehearsed_together, the_drill
 from shares.evidence.rehearsal import Probe, Rehearsal, rehearse
+from shares.evidence.roster import Covers, roster
 from shares.history.folder import SetFolder
 from shares.storage import write_new
 
@@ -33,7 +37,7 @@ drill_option = click.option("--drill", "number", type=int, metavar="N", help="Wh
 
 CALLED = {
     "attendance": "Next: give the challenge to those called, by the known way; they answer with "
-    "`shares attest answer --present`, and `shares drill rehearse` takes the answers.",
+    "`shares attest answer --present`, and `shares attest check --set` enters the answers. Then close the drill.",
     "practice": "Next: those called bring their practice shares (NAME.practice.json); `shares drill rehearse` "
     "recovers the worthless secret from them.",
     "recovery": "Next: a quorum brings its shares to a machine that may know the secret; `shares drill rehearse` "
@@ -70,6 +74,15 @@ def command() -> None:
 @click.option("--custodian", "custodians", multiple=True, metavar="NAME", help="Who is called.  [default: all]")
 @click.option("--scope", metavar="TEXT", callback=filled, help="What it covers.")
 @click.option("--objective", "objectives", multiple=True, metavar="TEXT", callback=filled, help="What it is to show.")
+@click.option("--to", "target", metavar="C", callback=filled, help="In one of attendance: new file, to hand out.")
+@click.option(
+    "--due",
+    default="2d",
+    show_default=True,
+    metavar="INTERVAL",
+    callback=interval,
+    help="In one of attendance: how long those called have to answer.",
+)
 @sign_option
 @passphrase_options
 @json_option
@@ -79,6 +92,8 @@ def open_(
     custodians: tuple[str, ...],
     scope: str | None,
     objectives: tuple[str, ...],
+    target: str | None,
+    due: timedelta,
     signer_files: tuple[str, ...],
     passphrase_files: tuple[str, ...],
     descriptors: tuple[str, ...],
@@ -87,25 +102,34 @@ def open_(
     """Call a drill of the SET: of attendance, of practice with worthless shares, or of recovery with the real ones.
 
     \b
-    Example:
+    Examples:
       shares drill open tide-archive --kind practice
+      shares drill open tide-archive --kind attendance --to called.json --sign harbour-office.key.json \\
+        --passphrase-file harbour-office.passphrase
     """
+    if (target is not None) != (kind == "attendance"):
+        raise ParameterError("a drill of attendance, and no other, has a file to hand out: --to C", hint="see --help")
+    if target is not None:
+        refuse_taken(target)
     of_set = SetFolder(folder)
-    with opening((), passphrase_files, descriptors) as at_hand:
-        entry = open_drill(
+    with opening((), passphrase_files, descriptors) as at_hand, held_signals():
+        drill, asked = open_drill(
             of_set,
             kind,
             custodians=custodians,
             scope=scope,
             objectives=objectives,
+            due=due,
             keys=signers(signer_files, at_hand),
         )
-    drill = the_drill(of_set.journal(), entry.sequence)
-    target = drill.event.target
+        if target is not None and asked is not None:
+            write_new(target, asked.to_file(), secret=True)
+    within = drill.event.target
     lines = [
         f"Drill {drill.number} is open: {kind}, {of_set.record.label}.",
         f"Called: {', '.join(drill.event.custodians)}.",
-        *([f"To recover within {in_words(target)}, counted from now."] if target is not None else []),
+        *([f"To recover within {in_words(within)}, counted from now."] if within is not None else []),
+        *([f"Challenge to hand out: {target}, fingerprint {asked.fingerprint}"] if asked is not None else []),
         *prose(CALLED[kind]),
     ]
     members = {
@@ -113,7 +137,8 @@ def open_(
         "drill": drill.number,
         "kind": kind,
         "custodians": drill.event.custodians,
-        "target_seconds": target,
+        "target_seconds": within,
+        "file": target,
     }
     print_result(members, lines, as_json=as_json)
 
@@ -307,3 +332,57 @@ def close_(
     }
     print_result(members, lines, as_json=as_json)
     ctx.exit(0 if report.passed else FAILED)
+
+
+@command.command("roster")
+@click.argument("folder", metavar="SET", callback=filled)
+@click.option(
+    "--cycle",
+    default="2y",
+    show_default=True,
+    metavar="INTERVAL",
+    callback=interval,
+    help="How far back rehearsals count as done.",
+)
+@click.option(
+    "--covers",
+    type=click.Choice(["pairs", "quorums"]),
+    help="What is to be covered.  [default: every quorum where there are 12 at most, else every pair]",
+)
+@click.option("--seed", type=int, default=0, show_default=True, help="Decides among rosters that are equally good.")
+@json_option
+def roster_(folder: str, cycle: timedelta, covers: Covers | None, seed: int, as_json: bool) -> None:
+    """Say who should rehearse with whom, so that all who can need each other recover together in few drills.
+
+    What past rehearsals of the SET have covered is left out. It tells who can recover: keep it like the policy.
+
+    \b
+    Example:
+      shares drill roster tide-archive
+    """
+    of_set = SetFolder(folder)
+    past = rehearsed_together(of_set.journal(), clock.now() - cycle)
+    found = roster(of_set.record.rule.to_rule(), past, covers=covers, seed=seed)
+    unit = "pair" if found.covers == "pairs" else "quorum"
+    lines = [
+        f"{len(found.drills)} drills for {of_set.record.label}, no fewer than {found.bound} ({found.bound_by}).",
+        *(f"  {number}: {', '.join(names)}" for number, names in enumerate(found.drills, 1)),
+        f"Found by: {found.method}. A whole cycle has {found.cycle}, and no cycle fewer than {found.cycle_bound}.",
+        f"Covered by past drills: {len(found.covered):,}; by these: {len(found.left):,}; counted by {unit}.",
+        *(line for note in found.notes for line in prose(note)),
+    ]
+    members = {
+        "done": True,
+        "covers": found.covers,
+        "drills": found.drills,
+        "bound": found.bound,
+        "bound_by": found.bound_by,
+        "method": found.method,
+        "cycle": found.cycle,
+        "cycle_bound": found.cycle_bound,
+        "covered": found.covered,
+        "left": found.left,
+        "apart": found.apart,
+        "notes": found.notes,
+    }
+    print_result(members, lines, as_json=as_json)

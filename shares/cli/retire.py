@@ -81,7 +81,7 @@ def status_(folder: str, as_json: bool) -> None:
         f"{len(copies) - len(held)} of {len(copies)} copies are accounted for. {NOT_COUNTED}",
         *(line for copy in copies for line in prose(f"  {_words(copy)}")),
         *(line for problem in found.inventory.problems for line in prose(f"Note: {problem}.")),
-        f"Retired: entry {found.retired.sequence}; records are kept until {until}."
+        _retired_line(found.retired.sequence, until, len(held))
         if found.retired
         else "Next: `shares retire destroyed` enters each; `shares retire close` ends the set."
         if held
@@ -247,6 +247,11 @@ def close_(
     if not as_json:
         warn(CLOSING_CAUTION)
     print_result(members, lines, as_json=as_json)
+
+
+def _retired_line(entry: int, until: str | None, held: int) -> str:
+    since = f" Entered since, and to be accounted for: {held}." if held else ""
+    return f"Retired: entry {entry}; records are kept until {until}.{since}"
 
 
 def _tell(of_set: SetFolder, copy: Copy, entry: Entry, how: str, caution: str, *, as_json: bool) -> None:

@@ -10,8 +10,10 @@ from shares.cli.output import filled, json_option, print_result
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE, parse_object
+from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
 from shares.documents.chunks import Header
+from shares.documents.drill_report import DrillReport
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
@@ -31,6 +33,8 @@ KINDS = {
     "party-key": "party key (private, wrapped by passphrase)",
     "party-card": "party card (public)",
     "acknowledgement": "acknowledgement of duties",
+    "drill-report": "report of a drill (confidential)",
+    "ceremony-script": "script of a key ceremony (confidential)",
     "challenge": "challenge (what custodians are asked; fresh, dated and signed)",
     "attestation": "attestation (an answer to a challenge; `shares attest check` checks its signatures)",
     "encrypted-file": "encrypted file (of no use without a quorum of its set's shares)",
@@ -153,6 +157,29 @@ def _acknowledgement(data: bytes, where: str) -> dict[str, object]:
     return {**found.public("custodian", "label", "time"), "duties": list(found.duties), "accepted": found.words()}
 
 
+def _ceremony_script(data: bytes, where: str) -> dict[str, object]:
+    script = CeremonyScript.parse(data, where=where)
+    return {
+        **script.public("label", "created", "rule", "planned", "standby", "dual_control"),
+        "policy": _hex(script.policy),
+        "software": f"shares {script.software.version}, {script.software.digest.hex()}",
+        "steps": len(script.steps),
+        "digest": script.digest().hex(),
+        "read_aloud": script.spoken(),
+        "agreed_by": [f"{one.card.name}, card {one.card.fingerprint}" for one in script.signatures],
+    }
+
+
+def _drill_report(data: bytes, where: str) -> dict[str, object]:
+    found = DrillReport.parse(data, where=where)
+    return {
+        **found.public("set", "epoch", "record", "label", "drill", "drill_kind", "opened", "closed", "passed"),
+        **found.public("recovery_seconds", "target_seconds", "findings", "journal"),
+        "actions": [f"{one.owner}, by {one.due:%Y-%m-%d}: {one.what}" for one in found.actions],
+        "signatures": [f"{one.card.name}, card {one.card.fingerprint}" for one in found.signatures],
+    }
+
+
 def _challenge(data: bytes, where: str) -> dict[str, object]:
     found = Challenge.parse(data, where=where)
     return {
@@ -185,7 +212,9 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     Record.KIND: _record,
     PartyKey.KIND: lambda data, where: _card_facts(PartyKey.parse(data, where=where).card),
     Acknowledgement.KIND: _acknowledgement,
+    CeremonyScript.KIND: _ceremony_script,
     Challenge.KIND: _challenge,
+    DrillReport.KIND: _drill_report,
     Attestation.KIND: _attestation,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }

@@ -38,10 +38,12 @@ class Entering:
     Attributes:
         keys: of the parties that sign the entries.
         cards: the custodians' party cards, as far as known; they are introduced by the entry.
+        time: of the entries; now by default.
     """
 
     keys: Sequence[OpenPartyKey] = ()
     cards: Mapping[str, PartyCard] | None = None
+    time: datetime | None = None
 
     def dealing(
         self,
@@ -62,7 +64,8 @@ class Entering:
         for one in named:
             if _is_acknowledgement(one):
                 custodian = one.path.removeprefix(f"{ACKNOWLEDGEMENTS}/").removesuffix(".json")
-                append(folder, Acknowledged(what="acknowledged", custodian=custodian), keys=self.keys, documents=[one])
+                event = Acknowledged(what="acknowledged", custodian=custodian)
+                append(folder, event, keys=self.keys, documents=[one], time=self.time)
         record = dealt.record
         append(
             folder,
@@ -84,6 +87,7 @@ class Entering:
             keys=self.keys,
             cards=list(cards.values()),
             documents=[one for one in named if not _is_acknowledgement(one)],
+            time=self.time,
         )
 
     def _end_unfinished(self, folder: Path) -> None:
@@ -100,7 +104,12 @@ class Entering:
             StorageError: the journal cannot be written.
         """
         remark = f"the split of set {set_id.hex()} did not finish: no record was written"
-        append(folder, Deviation(what="exception", remark=remark, remedy="its files are destroyed"), keys=self.keys)
+        append(
+            folder,
+            Deviation(what="exception", remark=remark, remedy="its files are destroyed"),
+            keys=self.keys,
+            time=self.time,
+        )
 
 
 def _is_acknowledgement(one: NamedDigest) -> bool:

@@ -1,10 +1,11 @@
 """The digest of this program as it is installed, so that two machines can be compared.
 
-Source: FIPS 180-4 (SHA-256), RFC 8785 (canonical form); FORMAT.md, sec. 19.
+Source: FIPS 180-4 (SHA-256), RFC 8785 (canonical form); FORMAT_EVIDENCE.md, sec. 19.
 May import: shares.storage, shares.documents.base.
 Secret: nothing. Public: everything.
 Does not: cover Python, the libraries or the system: the hashes of the wheels and the medium that was started do. A
-program that was tampered with can print any digest; compare with one that another machine computed over the files.
+program that was tampered with can print any digest; compare with one that another machine computed over the files. A
+checkout holds more files than a wheel: compare installations of one kind.
 """
 
 from __future__ import annotations

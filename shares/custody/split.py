@@ -38,9 +38,9 @@ class Dealt:
     record: Record
     shares: tuple[Share, ...]
 
-    def signed(self, key: OpenPartyKey, role: Role) -> Dealt:
+    def signed(self, key: OpenPartyKey, role: Role, *, time: datetime | None = None) -> Dealt:
         """Return this dealing with its record signed; see ``Record.signed``."""
-        return replace(self, record=self.record.signed(key, role))
+        return replace(self, record=self.record.signed(key, role, time=time))
 
     def close(self) -> None:
         """Wipe the shares."""

@@ -1,7 +1,7 @@
 """The ceremony script: who does what in which order when a secret is split, written down before anybody begins.
 
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 6.1.1.1 (a script is prepared and followed; a witness); ETSI EN
-319 411-1, sec. 6.5.1 (roles and steps, from a summary); FORMAT.md, sec. 19.
+319 411-1, sec. 6.5.1 (roles and steps, from a summary); FORMAT_EVIDENCE.md, sec. 19.
 May import: shares.errors, shares.clock, shares.documents.base, .members, .party, .signing.
 Secret: nothing. Confidential: persons, and how shares travel. Public: the rest.
 Does not: know which steps a ceremony needs (``evidence.script`` does), or what was done; the journal says that.

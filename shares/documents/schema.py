@@ -17,6 +17,7 @@ from shares.documents.attestation import Attestation
 from shares.documents.base import VERSION, Document
 from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
+from shares.documents.drill_report import DrillReport
 from shares.documents.entry import Entry
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -32,10 +33,11 @@ KINDS: tuple[type[Document], ...] = (
     PartyKey,
     PartyCard,
     Acknowledgement,
-    Entry,
     Challenge,
     Attestation,
     CeremonyScript,
+    Entry,
+    DrillReport,
 )
 FOLDER = Path(__file__).with_name("schemas")
 

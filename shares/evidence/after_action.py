@@ -21,7 +21,7 @@ from shares.documents.event import Attested, DrillClosed, Rehearsed
 from shares.documents.members import MAX_TEXT, check_text
 from shares.documents.party import OpenPartyKey
 from shares.errors import ParameterError, VerificationError
-from shares.evidence.drill import Drill, seconds_between
+from shares.evidence.drill import Drill, seconds_between, the_drill
 from shares.history.folder import SetFolder
 from shares.paper.page import REPORT, render
 
@@ -57,6 +57,8 @@ def close_drill(
     folder.require_signers(keys)
     for text in findings:
         check_text(text)
+    # As it stands now: since the caller looked, it may have been rehearsed, or closed by another.
+    drill = the_drill(folder.journal(), drill.number)
     report = _report(folder, drill, findings, actions, clock.now() if at is None else at)
     for key in keys:
         report = report.signed(key)
@@ -162,9 +164,9 @@ def _steps(drill: Drill, closed: datetime) -> Iterator[DrillStep]:
 def _rehearsed_in_words(event: Rehearsed) -> str:
     probed = ""
     if event.probe is not None:
-        probed = f"; the probe ended with code {event.probe} after {event.probe_seconds} s"
+        probed = f"; the probe ended with code {event.probe} after {in_words(event.probe_seconds or 0)}"
     names = ", ".join(event.custodians) or "no usable share"
-    return f"rehearsed by {names}, in {event.seconds} s: {event.outcome}{probed}"
+    return f"rehearsed by {names}, in {in_words(event.seconds)}: {event.outcome}{probed}"
 
 
 def report_page(report: DrillReport) -> bytes:
@@ -175,11 +177,11 @@ def report_page(report: DrillReport) -> bytes:
 def in_words(seconds: int) -> str:
     """Say a duration in days, hours and minutes.
 
-    >>> in_words(15_000), in_words(42), in_words(90_000)
-    ('4 h 10 min', '42 s', '1 d 1 h')
+    >>> in_words(15_000), in_words(42), in_words(0)
+    ('4 h 10 min', '42 s', 'less than a second')
     """
     days, rest = divmod(seconds, 86_400)
     hours, rest = divmod(rest, 3600)
     minutes, left = divmod(rest, 60)
     parts = [f"{count} {unit}" for count, unit in ((days, "d"), (hours, "h"), (minutes, "min")) if count]
-    return " ".join(parts[:2]) if parts else f"{left} s"
+    return " ".join(parts[:2]) if parts else f"{left} s" if left else "less than a second"

@@ -1,7 +1,7 @@
 """A ceremony's log: each step and each exception becomes an entry of the journal, bound to the script by its digest.
 
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 5.4.1 (what is recorded of an event) and 6.1.1.1 (a script is
-followed); published root-zone practice (deviations are exceptions, written down with their remedy); FORMAT.md, sec. 19.
+followed); published root-zone practice (exceptions are written down with their remedy); FORMAT_EVIDENCE.md, sec. 19.
 May import: shares.errors, shares.storage, shares.documents, shares.history.
 Secret: party keys that sign, passed through. Confidential: script and journal. Public: nothing.
 Does not: need a record: a ceremony begins before there is one. Nor judge: ``evidence.ceremony_report`` tells all.

@@ -1,7 +1,8 @@
 """What a ceremony's log amounts to: exceptions first, then each step with its entries, and the shares by serial.
 
 Source: ETSI EN 319 411-1, sec. 6.5.1 (what a ceremony's report tells; from a summary, its signature rule from memory);
-CA/Browser Forum TLS Baseline Requirements, sec. 6.1.1.1; published root-zone practice (exceptions); FORMAT.md, sec. 19.
+CA/Browser Forum TLS Baseline Requirements, sec. 6.1.1.1; published root-zone practice (exceptions);
+FORMAT_EVIDENCE.md, sec. 19.
 May import: shares.errors, shares.documents, shares.history, shares.evidence.ceremony, .inventory.
 Secret: nothing. Confidential: persons, and where shares are. Public: nothing.
 Does not: call a ceremony good or bad: it tells what was entered, and what is missing. People judge.
@@ -142,13 +143,18 @@ def ceremony_report(files: Files, *, script: bytes | None = None) -> CeremonyRep
     return CeremonyReport(
         script=followed,
         steps=steps,
-        exceptions=(*shown, *(Exceptional(problem) for problem in inventory.problems)),
+        exceptions=(*shown, *(Exceptional(what) for what in (*inventory.problems, *_worth_knowing(journal)))),
         missing=tuple(one.number for one in steps if not one.entries),
         record=record,
         copies=inventory.copies if record is not None else (),
         head=journal.head,
-        problems=tuple(f"line {problem.line}: {problem.what}" for problem in journal.problems),
+        problems=tuple(f"line {problem.line}: {problem.what}" for problem in journal.problems if problem.breaks),
     )
+
+
+def _worth_knowing(journal: Journal) -> list[str]:
+    """Return what is odd about the journal and does not break it: a clock that ran backwards, a line half written."""
+    return [f"line {problem.line} of the journal: {problem.what}" for problem in journal.problems if not problem.breaks]
 
 
 def _chosen(journal: Journal, wanted: bytes | None, where: str) -> bytes:

@@ -18,8 +18,8 @@ from shares.evidence.calendar import day
 
 WIDTH: Final = 360
 HEIGHT: Final = 170
-LEFT, RIGHT, TOP, BOTTOM = 28, 350, 14, 146
-"""Edges of the plot within the picture, in its own units: about pixels on a small telephone."""
+LEFT, RIGHT, TOP, BOTTOM = 28, 336, 14, 146
+"""Edges of the plot in the picture, in its own units, pixels on a small telephone; a date may stand at each side."""
 _MOST_DATES: Final = 5
 _MOST_LINES: Final = 8
 _MONTHS_BETWEEN: Final = (1, 2, 3, 6, 12, 24, 60, 120)

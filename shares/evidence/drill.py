@@ -1,7 +1,7 @@
 """Drills as the journal tells them: called, rehearsed, closed; and the calling of one.
 
 Source: NIST SP 800-53 rev. 5, CP-4 (test the plan, review the results, start corrective action); FORMAT.md, sec. 16.
-May import: shares.errors, shares.documents, shares.history.
+May import: shares.errors, shares.documents, shares.history, shares.evidence.retire, .rounds.
 Secret: party keys that sign, passed through. Confidential: the rest. Public: nothing.
 Does not: keep any state of its own: a drill is what the entries of its number say.
 """
@@ -10,14 +10,17 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from datetime import datetime
+from datetime import datetime, timedelta
 
+from shares.documents.challenge import Challenge
 from shares.documents.entry import Entry
 from shares.documents.event import Attested, Challenged, DrillClosed, DrillKind, DrillOpened, Rehearsed
 from shares.documents.members import MAX_TEXT, check_text
 from shares.documents.party import OpenPartyKey
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
+from shares.evidence.retire import refuse_retired
+from shares.evidence.rounds import ask
 from shares.history.folder import SetFolder
 from shares.history.journal import Journal
 
@@ -123,10 +126,11 @@ def open_drill(
     custodians: Sequence[str] = (),
     scope: str | None = None,
     objectives: Sequence[str] = (),
+    due: timedelta = timedelta(days=2),
     keys: Sequence[OpenPartyKey] = (),
     at: datetime | None = None,
-) -> Entry:
-    """Call a drill: enter it into the journal. Its number is that of the entry.
+) -> tuple[Drill, Challenge | None]:
+    """Call a drill: enter it into the journal, and in one of attendance ask those called to answer.
 
     Args:
         folder: the set's.
@@ -134,19 +138,29 @@ def open_drill(
         custodians: who is called; all by default.
         scope: what it covers, in words.
         objectives: what it is to show; the usual ones of its kind by default.
-        keys: of the parties that sign.
+        due: how long those called to attend have to answer.
+        keys: of the parties that sign; the first of them asks in a drill of attendance.
         at: the time of the entry; now by default.
 
+    Returns:
+        The drill, and the challenge to hand out in one of attendance.
+
     Raises:
-        ParameterError: no such custodian, a text out of range, no practice set, or too few signers.
+        ParameterError: no such custodian, a text out of range, no practice set, too few signers, nobody who asks, or a
+            set that was retired.
         StorageError: the journal cannot be written.
     """
+    refuse_retired(folder)
     known = [custodian.name for custodian in folder.record.custodians]
     for name in custodians:
         if name not in known:
             raise ParameterError(f"the record names no custodian {name}", hint=f"it names {', '.join(known)}")
     if kind == "practice":
         practice_record(folder)
+    if kind == "attendance" and not keys:
+        raise ParameterError(
+            "whoever calls a drill of attendance signs what custodians are asked", hint="give --sign KEY"
+        )
     for text in (*objectives, *([scope] if scope is not None else [])):
         check_text(text)
     target = folder.policy.recover_within if folder.policy and kind != "attendance" else None
@@ -158,7 +172,20 @@ def open_drill(
         custodians=tuple(custodians) or tuple(known),
         target=int(target.total_seconds()) if target else None,
     )
-    return folder.append(event, keys=keys, time=at)
+    entry = folder.append(event, keys=keys, time=at)
+    drill = Drill(entry.sequence, entry.time, event, (), {}, None)
+    if kind != "attendance":
+        return drill, None
+    asked, _ = ask(
+        folder,
+        keys=keys,
+        due=entry.time + due,
+        custodians=event.custodians,
+        purpose="attendance",
+        drill=entry.sequence,
+        time=entry.time,
+    )
+    return drill, asked
 
 
 def practice_record(folder: SetFolder) -> Record:
@@ -182,3 +209,18 @@ def practice_record(folder: SetFolder) -> Record:
             "the practice record is not the one that the journal names", hint="bring back the one of the split"
         )
     return found
+
+
+def rehearsed_together(journal: Journal, since: datetime | None = None) -> list[tuple[str, ...]]:
+    """Return whose shares recovered together in each rehearsal that passed, real or practice.
+
+    Args:
+        journal: the set's.
+        since: leave out what was before; by default nothing.
+    """
+    return [
+        entry.event.custodians
+        for drill in drills(journal)
+        for entry in drill.rehearsals
+        if isinstance(entry.event, Rehearsed) and entry.event.passed and (since is None or entry.time >= since)
+    ]

@@ -32,6 +32,7 @@ class Copy:
         custodian: whose share.
         name: ``original`` for the one that was dealt (``original, epoch 2`` for one of a later epoch), else its serial.
         epoch: of the share.
+        dealt: whether it came from a split, and is no copy of one that did.
         packed: how it left the split, where the journal says so.
         sent: the serial of the pack, as it was sent.
         received: the serial that was seen on receipt.
@@ -48,6 +49,7 @@ class Copy:
     custodian: str
     name: str
     epoch: int
+    dealt: bool = True
     packed: str | None = None
     sent: str | None = None
     received: str | None = None
@@ -114,7 +116,16 @@ class _Counting:
 
     def deal(self, custodians: Iterable[tuple[str, str | None]], epoch: int) -> None:
         name = ORIGINAL if not self.copies else f"{ORIGINAL}, epoch {epoch}"
-        self.copies += [Copy(custodian, name, epoch, packed) for custodian, packed in custodians]
+        for custodian, packed in custodians:
+            self.copies.append(Copy(custodian, self._free_name(custodian, name), epoch, packed=packed))
+
+    def _free_name(self, custodian: str, name: str) -> str:
+        """Return a name that no copy of this custodian has: rather one too many to account for than one too few."""
+        taken = {folded(copy.name) for copy in self.copies if copy.custodian == custodian}
+        free, number = name, 2
+        while folded(free) in taken:
+            free, number = f"{name} ({number})", number + 1
+        return free
 
     def take(self, entry: Entry) -> None:
         event = entry.event
@@ -138,20 +149,17 @@ class _Counting:
         at = self._latest(event.custodian)
         if at is None:
             self.problems.append(f"entry {entry.sequence} tells of a copy of a share that was not dealt")
-        # A serial that is there already is counted once more: rather one copy too many to account for than one too few.
-        taken = {folded(copy.name) for copy in self.copies if copy.custodian == event.custodian}
-        name, number = event.copy_, 2
-        while folded(name) in taken:
-            name, number = f"{event.copy_} ({number})", number + 1
+        name = self._free_name(event.custodian, event.copy_)
         if name != event.copy_:
             self.problems.append(
                 f"entry {entry.sequence} tells of a copy that {event.custodian} had: counted as {name}"
             )
-        self.copies.append(Copy(event.custodian, name, 1 if at is None else self.copies[at].epoch))
+        epoch = 1 if at is None else self.copies[at].epoch
+        self.copies.append(Copy(event.custodian, name, epoch, dealt=False))
 
     def _latest(self, custodian: str) -> int | None:
         """Return where the original of the newest epoch stands."""
-        places = [i for i, c in enumerate(self.copies) if c.custodian == custodian and c.name.startswith(ORIGINAL)]
+        places = [i for i, c in enumerate(self.copies) if c.custodian == custodian and c.dealt]
         return places[-1] if places else None
 
     def _change(self, entry: Entry, custodian: str, **facts: object) -> None:

@@ -9,7 +9,6 @@ Does not: audit; ``evidence.audit`` does, one set at a time.
 
 from __future__ import annotations
 
-import contextlib
 import itertools
 import multiprocessing
 import os
@@ -188,8 +187,7 @@ def _shared_out(paths: Sequence[str], work: _Work, executor: Executor | None, jo
                 waiting.clear()
                 pool.shutdown(wait=False)
                 pool = _processes(jobs)
-            for path in suspects:
-                yield _alone(path, work, executor)
+            yield from _one_by_one(suspects, work, executor)
     finally:
         for _, future in waiting:
             future.cancel()
@@ -207,10 +205,22 @@ def _submitted(pool: Executor, work: _Work, chunk: Sequence[str]) -> Future[list
         return failed
 
 
-def _alone(path: str, work: _Work, executor: Executor | None) -> Audit:
-    with contextlib.nullcontext(executor) if executor else _processes(1) as pool:
-        future = _submitted(pool, work, [path])
-        return work.broken_off(path) if future.exception() else future.result()[0]
+def _one_by_one(paths: Sequence[str], work: _Work, executor: Executor | None) -> Iterator[Audit]:
+    """Audit each set with nothing else under way; whichever stops its process is known then."""
+    pool = executor or _processes(1)
+    try:
+        for path in paths:
+            future = _submitted(pool, work, [path])
+            if future.exception() is None:
+                yield from future.result()
+                continue
+            yield work.broken_off(path)
+            if executor is None:
+                pool.shutdown(wait=False)
+                pool = _processes(1)
+    finally:
+        if executor is None:
+            pool.shutdown(wait=False, cancel_futures=True)
 
 
 def _processes(jobs: int) -> ProcessPoolExecutor:

@@ -43,6 +43,8 @@ CAUTIONS: Final = (
     "Whether this meets a law, standard or contract is for a professional to judge.",
 )
 """The limits of an audit, at the place where somebody relies on it."""
+MOST_DETAILED: Final = 500
+"""So many sets, the worst, are told in full: a page of more than about 10 MB is slow to open."""
 _AT_ONCE: Final = {"dealer": "had all of it at the split", "machine": "had all of it at the recovery"}
 
 
@@ -61,6 +63,8 @@ class _Shown:
 def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
     """Return the page of one or more audits: HTML in UTF-8, which loads and runs nothing.
 
+    Of several, a table names all, worst first; the worst MOST_DETAILED are told in full.
+
     Args:
         audits: one for each set, at least one.
         program: what made them, like ``shares 1.0``.
@@ -71,6 +75,7 @@ def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
         REPORT,
         _STYLE,
         sets=shown,
+        detailed=shown[:MOST_DETAILED],
         program=program,
         counted=[(verdict, sum(one.audit.verdict == verdict for one in shown)) for verdict in reversed(Verdict)],
         means=MEANS,

@@ -1,6 +1,6 @@
 """Scripts, reports and affidavits for people: as pages to print, and as text.
 
-Source: FORMAT.md, sec. 19, for what they show; PCI PIN 3.1, 24-2 (an affidavit of destruction; from memory).
+Source: FORMAT_EVIDENCE.md, sec. 19, for what they show; PCI PIN 3.1, 24-2 (an affidavit of destruction; from memory).
 May import: shares.clock, shares.documents, shares.paper, shares.evidence.ceremony_report, .inventory, .steps.
 Secret: nothing. Confidential: persons, and where shares are. Public: nothing.
 Does not: decide anything. Whatever comes from documents is escaped on pages.

@@ -89,7 +89,9 @@ def rehearse(
     for person in persons:
         check_text(person)
     if drill.event.kind == "attendance":
-        raise ParameterError("nothing is recovered in a drill of attendance", hint="give the custodians' answers")
+        raise ParameterError(
+            "nothing is recovered in a drill of attendance", hint="`shares attest check` takes the answers"
+        )
     practice = drill.event.kind == "practice"
     if practice and probe:
         raise ParameterError("a practice secret opens nothing", hint="leave the command out")

@@ -3,9 +3,9 @@
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 6.1.1.1 (script, witness or video); ETSI EN 319 411-1, sec.
 6.5.1 (roles; from a summary); DNSSEC practice statements by RFC 6841 (who audits takes no part in the quorum). WebTrust
 for CAs 4.1 from memory. The names of roles are those of published root-zone practice.
-May import: shares.errors, shares.clock, shares.documents, shares.evidence.steps.
+May import: shares.errors, shares.clock, shares.documents, shares.planning, shares.evidence.steps.
 Secret: nothing. Confidential: persons, and how shares travel. Public: the rest.
-Does not: write files or pages (``evidence.paperwork`` renders), or judge the policy (``planning`` does).
+Does not: write files or pages (``evidence.paperwork`` renders), or judge the policy: ``planning`` does.
 """
 
 from __future__ import annotations
@@ -22,6 +22,7 @@ from shares.documents.party import PartyCard
 from shares.documents.policy import Policy, folded
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.steps import ADMINISTRATOR, DEALER, EXTERNAL, INTERNAL, steps_for, title
+from shares.planning.examine import examine
 
 DUTIES: Final = {
     ADMINISTRATOR: "Leads: reads each step aloud, and says when the next one begins. Handles neither secret nor share.",
@@ -56,7 +57,8 @@ def make_script(
 
     Raises:
         ParameterError: an unknown role, a text that may not be, or more custodians than one script has room for.
-        VerificationError: a witness keeps a share or has a second role; says which rule it breaks.
+        VerificationError: a witness keeps a share or has a second role; or the policy is strict, and a serious finding
+            stands, so that `split` would refuse it.
     """
     people = dict(people or {})
     for role, person in people.items():
@@ -67,6 +69,7 @@ def make_script(
         if text is not None:
             check_text(text, "a day and place")
     _check_separation(policy, people)
+    examine(policy, cards=cards).require_sound()
     words = policy.rule().words()
     if len(words) > MAX_LONG_TEXT:
         raise ParameterError(f"the rule in words would be longer than {MAX_LONG_TEXT:,} characters")

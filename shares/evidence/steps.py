@@ -140,7 +140,7 @@ class _Steps:
             "but for the one that records.",
             "Every role is filled. Administrator, dealer and witnesses are different people; no witness keeps a share. "
             "The external witness is here, or all of it is on video.",
-            note="Video: where it is kept",
+            note="Video: where it is kept, and its SHA-256",
         )
         yield self._step(
             ADMINISTRATOR,
@@ -195,7 +195,7 @@ class _Steps:
     def _dealing(self) -> Iterator[CeremonyStep]:
         yield self._step(
             DEALER,
-            "Before the eyes of the witnesses, bring or make the secret as the file named secret, in this folder. It "
+            "Before the eyes of the witnesses, bring or make the secret as the file named secret in this folder. It "
             "is never shown, and never typed into a command.",
             "The file is there, for its owner alone (-rw-------), and has the size that the owner of the key expects.",
             command="ls -l secret",
@@ -265,8 +265,8 @@ class _Steps:
         channel = f" --channel {shlex.quote(one.channel)}" if one.channel else ""
         yield self._step(
             role,
-            f"Seal the sheet in a pack. Read its serial aloud: it is written here, and on the list that goes another "
-            f"way. The pack leaves {way}. (A second copy, on a medium or on paper, is logged as copied.)",
+            "Seal the sheet in a pack. Read its serial aloud: it goes here, into the command for SERIAL, and on the "
+            f"list that goes another way. The pack leaves {way}. (A second copy, on any medium, is logged as copied.)",
             "The seal is whole, and both lists have the same serial.",
             command=f"shares journal add {self.set} delivered --custodian {name} --serial SERIAL{channel}"
             + signing(self.policy.dual_control),

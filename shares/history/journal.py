@@ -40,7 +40,8 @@ from shares.storage import read_file, write_new
 JOURNAL_NAME = "journal.jsonl"
 MAX_JOURNAL = 1 << 30
 """The largest journal, in bytes: 1 GiB."""
-_TORN = re.compile(r"journal\.torn-[0-9]+-[0-9a-f]{16}")
+TORN = re.compile(r"journal\.torn-[0-9]+-[0-9a-f]{16}")
+"""The name of a file that keeps what a stopped run left of a line."""
 
 ProblemKind: TypeAlias = Literal[
     "entry", "sequence", "chain", "signature", "time", "torn", "set-aside", "record", "missing", "altered", "renamed",
@@ -354,4 +355,4 @@ def unnamed(names: Iterable[str], holds: Callable[[str], bool]) -> list[str]:
         names: of the files in the set's folder.
         holds: says whether an entry names a file.
     """
-    return [name for name in sorted(names) if _TORN.fullmatch(name) and not holds(name)]
+    return [name for name in sorted(names) if TORN.fullmatch(name) and not holds(name)]

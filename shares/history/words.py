@@ -102,7 +102,9 @@ def _said(event: Event) -> str:
             action = "" if event.action is None else f", action {event.action}"
             return f"task of entry {event.entry}{action} done, {event.how}"
         case ScriptStep():
-            return f"step {event.step} of the ceremony done, initials {event.initials}"
+            return (
+                f"step {event.step} of the ceremony done{' again' if event.repeats else ''}, initials {event.initials}"
+            )
         case Deviation():
             step = "" if event.step is None else f" at step {event.step}"
             return f"exception{step}: {event.remark}{_more('; remedy: ', event.remedy)}"

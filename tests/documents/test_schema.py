@@ -20,6 +20,7 @@ from vectors.make import wrapping_v1 as by_hand
 from shares.documents.acknowledgement import Acknowledgement
 from shares.documents.base import Document
 from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
+from shares.documents.drill_report import Action, DrillReport, DrillStep, Participant
 from shares.documents.entry import head_of
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
@@ -43,6 +44,7 @@ def samples() -> dict[str, Any]:
         signed = DEALT.record.signed(key, "dealer", time=CREATED)
         accepted = Acknowledgement.signed_by(key, custodian=NAME, label="Tide archive", time=CREATED)
         script = ceremony_script().signed(key, time=CREATED)
+        report = drill_report().signed(key)
     secret = SealedSecret.seal(
         Secret.of(b"made up"), to_card, set_id=bytes(16), epoch=1, label="Tide archive", secret_commitment=bytes(32)
     )
@@ -61,6 +63,7 @@ def samples() -> dict[str, Any]:
         "attestation": answered(asked),
         "attestation of a seal": sealed(asked),
         "ceremony-script": script,
+        "drill-report": report,
     }
     journal = (Path(__file__).parents[1] / "vectors/golden/v1/journal/journal.jsonl").read_text().splitlines()
     entries = {f"journal-entry {i + 1}": json.loads(line) for i, line in enumerate(journal)}
@@ -83,6 +86,39 @@ def ceremony_script() -> CeremonyScript:
         standby="the day after",
         roles=(CeremonyRole(role="dealer", duty="Works at the machine.", person=None),),
         steps=(step,),
+        signatures=(),
+    )
+
+
+def drill_report() -> DrillReport:
+    """A report of a drill in which one custodian of two took part."""
+    record = DEALT.record
+    took_part = (True, 90, "the pier house"), (False, None, None)
+    return DrillReport(
+        kind="drill-report",
+        version=1,
+        set=record.set,
+        epoch=1,
+        record=record.fingerprint,
+        label="Tide archive",
+        drill=3,
+        drill_kind="recovery",
+        scope="from storage",
+        objectives=("a quorum is assembled",),
+        opened=CREATED,
+        closed=CREATED,
+        participants=tuple(
+            Participant(custodian=name, took_part=took, seconds=seconds, place=place)
+            for name, (took, seconds, place) in zip(("north-pier", "south-pier"), took_part, strict=True)
+        ),
+        persons=("A. Keeper",),
+        steps=(DrillStep(time=CREATED, what="called"),),
+        recovery_seconds=90,
+        target_seconds=14_400,
+        passed=True,
+        findings=("the room was locked",),
+        actions=(Action(owner="registrar", due=CREATED, what="a second key"),),
+        journal=head_of(3, bytes(32)),
         signatures=(),
     )
 
@@ -275,6 +311,19 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         "a role of nobody": {"roles": [{"role": "dealer", "duty": "x"}]},
         "a short signature": {"signatures": [{**SAMPLES["ceremony-script"]["signatures"][0], "signature": "A" * 85}]},
         "nine signatures": {"signatures": SAMPLES["ceremony-script"]["signatures"] * 9},
+    },
+    "drill-report": {
+        **some(*COMMON, *FACTS[:-1], *LABEL),
+        "drill 0": {"drill": 0},
+        "another kind of drill": {"drill_kind": "rehearsal"},
+        "a fraction of a second": {"recovery_seconds": 1.5},
+        "passed as a number": {"passed": 1},
+        "a participant of nobody": {"participants": [{"took_part": True, "seconds": 1, "place": None}]},
+        "an action without a date": {"actions": [{"owner": "registrar", "what": "a key"}]},
+        "101 actions": {"actions": SAMPLES["drill-report"]["actions"] * 101},
+        "no head": {"journal": None},
+        "a short signature": {"signatures": [{**SAMPLES["drill-report"]["signatures"][0], "signature": "A" * 85}]},
+        "nine signatures": {"signatures": SAMPLES["drill-report"]["signatures"] * 9},
     },
 }
 OF_CHALLENGE: dict[str, dict[str, Any]] = {

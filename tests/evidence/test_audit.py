@@ -23,7 +23,7 @@ from shares.errors import StorageError
 from shares.evidence import audit as module
 from shares.evidence.audit import audit
 from shares.evidence.audited import Audit, Reason, Verdict
-from shares.history.files import FolderFiles
+from shares.history.files import PRACTICE_RECORD, FolderFiles
 from shares.history.journal import append, read_journal
 from shares.sharing.rule import Rule
 
@@ -250,20 +250,20 @@ def test_a_drill_that_only_the_journal_says_passed_did_not(kept: Kept) -> None:
     assert audited.drills[-1].passed is False
 
 
-@pytest.mark.parametrize("name", ["record.json", "policy.toml", "journal.jsonl", "practice/record.json"])
+@pytest.mark.parametrize("name", ["record.json", "policy.toml", "journal.jsonl", PRACTICE_RECORD])
 def test_a_file_that_is_missing(kept: Kept, name: str) -> None:
     (kept.folder / name).unlink()
     expected = {
         "record.json": ("record-unreadable", Verdict.BROKEN),
         "policy.toml": ("policy-missing", Verdict.DUE),
         "journal.jsonl": ("no-journal", Verdict.DUE),
-        "practice/record.json": ("practice-missing", Verdict.DUE),
+        PRACTICE_RECORD: ("practice-missing", Verdict.DUE),
     }
     code, level = expected[name]
     assert found(kept)[code] is level
 
 
-@pytest.mark.parametrize("name", ["record.json", "policy.toml", "journal.jsonl", "practice/record.json"])
+@pytest.mark.parametrize("name", ["record.json", "policy.toml", "journal.jsonl", PRACTICE_RECORD])
 @pytest.mark.parametrize(
     "content", [b"", b"\x00", b"{}", b"[[[[", b'{"kind": "record", "version": 1}', b"\xff\xfe" * 50]
 )
@@ -275,7 +275,7 @@ def test_a_file_of_rubbish(kept: Kept, name: str, content: bytes) -> None:
     assert audited.reasons[0].next
 
 
-@pytest.mark.parametrize("name", ["record.json", "policy.toml", "journal.jsonl", "practice/record.json"])
+@pytest.mark.parametrize("name", ["record.json", "policy.toml", "journal.jsonl", PRACTICE_RECORD])
 def test_a_link_or_folder_in_a_files_place(kept: Kept, name: str, tmp_path: Path) -> None:
     path = kept.folder / name
     shutil.move(path, tmp_path / "elsewhere")
@@ -300,7 +300,7 @@ def test_the_record_of_another_set_is_not_the_journals(kept: Kept, tmp_path: Pat
 
 def test_a_practice_record_of_another_set_is_none(kept: Kept, tmp_path: Path) -> None:
     other = Kept.make(tmp_path / "other", policy_text())
-    shutil.copy(other.folder / "practice/record.json", kept.folder / "practice/record.json")
+    shutil.copy(other.folder / PRACTICE_RECORD, kept.folder / PRACTICE_RECORD)
     assert found(kept)["practice-altered"] is Verdict.BROKEN
 
 

@@ -13,7 +13,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from shares.evidence.audited import MarginSince
-from shares.evidence.chart import BOTTOM, LEFT, RIGHT, TOP, chart, margin_in_words
+from shares.evidence.chart import BOTTOM, LEFT, RIGHT, TOP, WIDTH, chart, margin_in_words
 
 STEPS = st.lists(st.tuples(st.integers(0, 4000), st.integers(-1, 254), st.integers(0, 3)), min_size=1, max_size=30).map(
     lambda found: [
@@ -71,6 +71,8 @@ def test_the_line_is_the_margin_at_every_time(steps, most):
     assert told[-1] == margin_in_words(steps[-1].low, steps[-1].high)
     assert all(now != before for now, before in zip(told[1:], told, strict=False))
     assert len(made.dates) <= 5
+    # Seven characters of about six units each, centred, stay within the picture.
+    assert all(21 <= tick.at <= WIDTH - 21 for tick in made.dates)
     assert 1 <= len(made.heights) <= 9
 
 

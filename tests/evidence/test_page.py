@@ -235,6 +235,15 @@ def test_of_many_the_worst_comes_first_and_links_lead_to_each(show):
     assert page.url.endswith(targets[0])
 
 
+def test_of_very_many_the_worst_are_told_in_full(show, monkeypatch):
+    monkeypatch.setattr("shares.evidence.page.MOST_DETAILED", 3)
+    page = show(PAGES["many"])
+    rows = page.locator("main > section").first.locator("tbody tr")
+    assert (rows.count(), rows.get_by_role("link").count(), page.locator("article").count()) == (8, 3, 3)
+    assert "The first 3 follow in full" in page.locator("main > section").first.inner_text()
+    assert page.locator("article .verdict").all_inner_texts()[0].startswith("Broken")
+
+
 def test_every_verdict_is_told_in_words_and_by_its_border(show):
     borders = set()
     for verdict in Verdict:

@@ -30,7 +30,7 @@ PACKED = {
     "documents/affidavit.pdf": b"%PDF",
     "drills/9/report.html": b"<!DOCTYPE html>",
     "drills/9/report.json": b"{}",
-    "journal.torn-0123456789abcdef": b'{"kind":"journal-en',
+    "journal.torn-1234-0123456789abcdef": b'{"kind":"journal-en',
     "policy.toml": b'label = "Tide archive root"\n',
     "practice.json": b"{}",
 }
@@ -130,6 +130,10 @@ def test_nobody_is_handed_a_share_or_key(folder, tmp_path, kind, name):
         told = refused(folder, tmp_path / "pack.tar")
         assert f"holds a {kind}, " in told.what
         assert told.where == f"{folder}, {name}"
+        # What was found travels no further: not in the refusal, nor in an error behind it.
+        assert (told.__cause__, told.__context__) == (None, None)
+        text = f"{told} {told!r} {told.args} {vars(told)}"
+        assert not any(len(value) > 40 and value in text for value in map(str, members.values()))
     (folder / name).unlink()
     write_pack(FolderFiles(folder), tmp_path / "pack.tar")
 

@@ -19,6 +19,7 @@ from pathlib import Path
 from typing import Any
 
 import attested_v1
+import ceremony_v1
 import journal_v1
 import record_cases_v1
 import recovery_cases_v1
@@ -240,6 +241,7 @@ def files() -> dict[str, str]:
     made |= {f"golden/v1/attested/{name}": text for name, text in attested_v1.files(flat).items()}
     cards = [wrapped_v1.documents(flat)[f"{name}.card.json"] for name in ("harbour-office", "registrar")]
     made["golden/v1/journal/journal.jsonl"] = journal_v1.text(flat.record, cards)
+    made["golden/v1/ceremony/script.json"] = pretty(ceremony_v1.script())
     notes = {flag: valid_note(flag) for flag in wrapped_v1.FLAGS}
     group = {"source": source("9 and 10"), "seed": wrapped_v1.SEED, "tests": wrapped_v1.tests(flat)}
     made["wrapped_v1.json"] = vectors("opening of what is wrapped", "wrapped", notes, [group])
