@@ -76,7 +76,7 @@ def test_what_leads_elsewhere_is_not_read(name: str, tmp_path: Path) -> None:
 def test_names_that_a_file_may_have() -> None:
     for name in ("record.json", "a/b/c", "acknowledgements/north pier.json", "öl"):
         assert is_name_in_set(name)
-    for name in ("", ".", "..", "/a", "a/", "a//b", "a/../b", "a/.b", ".a", "a\\b", "a\0b"):
+    for name in ("", ".", "..", "/a", "a/", "a//b", "a/../b", "a/.b", ".a", "a\\b", "a\0b", "a\nb", "a\x7fb"):
         assert not is_name_in_set(name)
 
 

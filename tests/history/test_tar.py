@@ -26,9 +26,9 @@ from shares.history.files import is_name_in_set
 from shares.history.tar import END, MAX_NAME, content, header, index, padding
 from shares.streams import Reader, regular_file
 
-PARTS = st.text(st.characters(exclude_characters="/\\\0", exclude_categories=["Cs"]), min_size=1, max_size=120).filter(
-    lambda part: not part.startswith(".")
-)
+PARTS = st.text(
+    st.characters(exclude_characters="/\\", exclude_categories=["Cs", "Cc"]), min_size=1, max_size=120
+).filter(lambda part: not part.startswith("."))
 NAMES = st.lists(PARTS, min_size=1, max_size=4).map("/".join).filter(lambda name: len(name.encode()) <= MAX_NAME)
 LONG = "acknowledgements/" + "\u6e2f" * 64 + ".json"
 
