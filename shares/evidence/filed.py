@@ -23,7 +23,7 @@ from shares.documents.event import Attested, Challenged, Dealt, DrillClosed, Dri
 from shares.documents.record import Record
 from shares.errors import SharesError
 from shares.evidence.audited import Proof
-from shares.evidence.judge import Judgement, judge
+from shares.evidence.judge import Earlier, Judgement, judge
 from shares.history.files import Files
 from shares.history.journal import Journal
 
@@ -70,7 +70,7 @@ class _Reader:
     filed: Filed = field(default_factory=Filed)
     cards: dict[str, str] = field(default_factory=dict)
     challenges: dict[bytes, Challenge | None] = field(default_factory=dict)
-    answered: dict[bytes, dict[str, bytes]] = field(default_factory=dict)
+    answered: dict[bytes, dict[str, Earlier]] = field(default_factory=dict)
     drills: dict[int, DrillOpened] = field(default_factory=dict)
     rehearsed: set[int] = field(default_factory=set)
 
@@ -148,7 +148,9 @@ class _Reader:
         except SharesError as error:
             self._claim(entry, f"names an answer that proves nothing of this record: {error.what}")
             return None
-        earlier.setdefault(attestation.custodian, attestation.digest())
+        before = earlier.get(attestation.custodian)
+        if before is None or (judgement.attributed and not before.attributed):
+            earlier[attestation.custodian] = Earlier(attestation.digest(), judgement.attributed)
         return judgement
 
     def _closed(self, entry: Entry, event: DrillClosed) -> None:

@@ -126,6 +126,19 @@ def check_challenge(challenge: Challenge, record: Record) -> None:
         raise VerificationError(f"the challenge asks {', '.join(unknown)}, whom the record does not name", hint=hint)
 
 
+@dataclass(frozen=True, slots=True)
+class Earlier:
+    """An answer that a custodian has given to a challenge before.
+
+    Attributes:
+        digest: of the answer, 32 bytes.
+        attributed: whether the custodian's known party key signed it.
+    """
+
+    digest: bytes
+    attributed: bool
+
+
 def judge(
     attestation: Attestation,
     challenge: Challenge,
@@ -133,7 +146,7 @@ def judge(
     *,
     card: str | None,
     received: datetime,
-    earlier: Mapping[str, bytes],
+    earlier: Mapping[str, Earlier],
 ) -> Judgement:
     """Judge one answer to a challenge, with public material alone.
 
@@ -143,7 +156,7 @@ def judge(
         record: of the set and epoch that the challenge is about.
         card: the fingerprint of the custodian's party card, where one is known.
         received: when the answer came.
-        earlier: who has answered this challenge before, and the ``digest`` of that answer.
+        earlier: who has answered this challenge before, and how.
 
     Raises:
         SetMismatchError, EpochMismatchError, VerificationError: the challenge is not about this record.
@@ -153,7 +166,7 @@ def judge(
     attributed = party and attestation.card is not None and attestation.card.fingerprint == card
     problems = _foreign(attestation, challenge, record)
     if not problems:
-        problems += _repeated(attestation, earlier)
+        problems += _repeated(attestation, earlier.get(attestation.custodian), attributed=attributed)
         problems += _untimely(attestation, challenge, received)
         problems += _signatures(attestation, record, card, party=party)
         problems += _worth(attestation)
@@ -181,12 +194,15 @@ def _foreign(attestation: Attestation, challenge: Challenge, record: Record) -> 
     return []
 
 
-def _repeated(attestation: Attestation, earlier: Mapping[str, bytes]) -> list[Problem]:
-    before = earlier.get(attestation.custodian)
+def _repeated(attestation: Attestation, before: Earlier | None, *, attributed: bool) -> list[Problem]:
+    """Say whether the custodian has answered before. An attributed answer may follow one that is not: that one can have
+    been given by whoever ever had the share, or without the party key by mistake."""
     if before is None:
         return []
-    if before == attestation.digest():
+    if before.digest == attestation.digest():
         return [Problem(Flaw.REPLAY, "this very answer was given before")]
+    if attributed and not before.attributed:
+        return []
     return [Problem(Flaw.ANSWERED, "this custodian has answered before; a new answer needs a new challenge")]
 
 

@@ -24,7 +24,7 @@ from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
-from shares.evidence.judge import Judgement, check_challenge, judge
+from shares.evidence.judge import Earlier, Judgement, check_challenge, judge
 from shares.evidence.retire import refuse_retired
 from shares.history.folder import SetFolder
 from shares.history.journal import Journal
@@ -41,7 +41,7 @@ class Round:
     Attributes:
         challenged: the entry of the challenge.
         event: what it says.
-        answers: the entry of each custodian's answer, by name.
+        answers: the entry of each custodian's answer, by name: the first, or the first that is attributed.
     """
 
     challenged: Entry
@@ -70,7 +70,10 @@ def rounds(journal: Journal) -> dict[bytes, Round]:
         if isinstance(event, Challenged):
             found.setdefault(event.challenge, Round(entry, event, {}))
         elif isinstance(event, Attested) and event.challenge in found:
-            found[event.challenge].answers.setdefault(event.custodian, entry)
+            answers = found[event.challenge].answers
+            before = answers.get(event.custodian)
+            if before is None or (event.attributed and not _is_attributed(before)):
+                answers[event.custodian] = entry
     return found
 
 
@@ -186,7 +189,7 @@ def enter(
             hint="give the challenge that was filed there; another set's answers prove nothing here",
         )
     known = _introduced(folder, known_cards(journal), cards or {}, keys, time)
-    earlier = {name: _digest_of(entry) for name, entry in found.answers.items()}
+    earlier = {name: Earlier(_digest_of(entry), _is_attributed(entry)) for name, entry in found.answers.items()}
 
     def enter_one(attestation: Attestation, judgement: Judgement) -> Entry:
         name = f"{folder_of_round(challenge)}/{attestation.custodian}.json"
@@ -227,7 +230,7 @@ def _each_judged(
     attestations: Sequence[Attestation],
     known: Mapping[str, str],
     time: datetime,
-    earlier: dict[str, bytes],
+    earlier: dict[str, Earlier],
     enter_one: Callable[[Attestation, Judgement], Entry] | None,
 ) -> list[Entered]:
     """Judge one answer after another, and enter each that is accepted: what came before tells a replay."""
@@ -238,7 +241,7 @@ def _each_judged(
         entry = None
         if judgement.accepted:
             entry = enter_one(attestation, judgement) if enter_one else None
-            earlier[name] = attestation.digest()
+            earlier[name] = Earlier(attestation.digest(), judgement.attributed)
         judged.append(Entered(judgement, entry))
     return judged
 
@@ -261,6 +264,10 @@ def _event(attestation: Attestation, judgement: Judgement) -> Attested:
 def _digest_of(entry: Entry) -> bytes:
     """Return the digest of the answer that an entry names; of nothing where it names none."""
     return entry.documents[0].digest if entry.documents else b""
+
+
+def _is_attributed(entry: Entry) -> bool:
+    return isinstance(entry.event, Attested) and entry.event.attributed
 
 
 def _introduced(

@@ -20,7 +20,7 @@ from shares.documents.attestation import Attestation
 from shares.documents.challenge import Challenge
 from shares.documents.record import Record
 from shares.errors import EpochMismatchError, SetMismatchError, VerificationError
-from shares.evidence.judge import KEPT, TOLERANCE, Flaw, Judgement, check_challenge, judge
+from shares.evidence.judge import KEPT, TOLERANCE, Earlier, Flaw, Judgement, check_challenge, judge
 
 CHALLENGE = challenge()
 GOOD = answered(CHALLENGE)
@@ -64,9 +64,10 @@ CASES: dict[str, tuple[Attestation, dict[str, Any], set[Flaw]]] = {
         {"asked": TO_OTHERS}, {Flaw.NOT_ASKED}),
     "a seal where attendance is asked": (altered(sealed(CHALLENGE), challenge=ATTENDANCE.digest().hex()),
         {"asked": ATTENDANCE}, {Flaw.OTHER_GRADE}),
-    "the same again": (GOOD, {"earlier": {"north-pier": GOOD.digest()}}, {Flaw.REPLAY}),
-    "another answer": (GOOD, {"earlier": {"north-pier": bytes(32)}}, {Flaw.ANSWERED}),
-    "another's answer before": (GOOD, {"earlier": {"south-pier": GOOD.digest()}}, set()),
+    "the same again": (GOOD, {"earlier": {"north-pier": Earlier(GOOD.digest(), True)}}, {Flaw.REPLAY}),
+    "another answer": (GOOD, {"earlier": {"north-pier": Earlier(bytes(32), True)}}, {Flaw.ANSWERED}),
+    "another's answer before": (GOOD, {"earlier": {"south-pier": Earlier(GOOD.digest(), True)}}, set()),
+    "an unattributed answer before": (GOOD, {"earlier": {"north-pier": Earlier(bytes(32), False)}}, set()),
     "made late": (answered(CHALLENGE, time=DUE + timedelta(seconds=1)), {}, {Flaw.IN_FUTURE}),
     "made and come late": (answered(CHALLENGE, time=DUE + timedelta(seconds=1)), {"received": DUE}, {Flaw.LATE}),
     "come late": (GOOD, {"received": DUE + timedelta(seconds=1)}, {Flaw.LATE}),

@@ -128,6 +128,22 @@ def test_replays_are_named_and_not_entered(folder: SetFolder) -> None:
     assert files_in(folder.path) == before
 
 
+def test_an_attributed_answer_may_follow_one_that_is_not(folder: SetFolder) -> None:
+    made = asked_of(folder)
+    alone, own = answered(made, signer=None), answered(made)
+    assert [one.judgement.counts for one in enter(folder, made, [alone, own], time=NEXT_DAY)] == [False, True]
+    (found,) = rounds(folder.journal()).values()
+    assert isinstance(found.answers["north-pier"].event, Attested)
+    assert found.answers["north-pier"].event.attributed
+    # The other way round, and once more, it is refused: whoever had the share cannot unsay what the custodian said.
+    again = enter(folder, made, [alone, own], time=NEXT_DAY)
+    assert [one.judgement.accepted for one in again] == [False, False]
+    assert [flaw in one.judgement.flaws for flaw, one in zip((Flaw.ANSWERED, Flaw.REPLAY), again, strict=True)] == [
+        True,
+        True,
+    ]
+
+
 def test_a_challenge_of_another_folder_is_refused(folder: SetFolder, tmp_path: Path) -> None:
     before = files_in(folder.path)
     with pytest.raises(VerificationError, match="knows no such challenge"):
