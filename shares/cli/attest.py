@@ -49,10 +49,11 @@ def command() -> None:
 
     \b
     Examples:
-      shares attest challenge tide-archive --to challenge.json --sign harbour-office.key.json
+      shares attest challenge tide-archive --to challenge.json --sign harbour-office.key.json \\
+        --passphrase-file harbour-office.passphrase
       shares attest answer challenge.json --record record.json --share north-pier.share.json \\
-        --sign north-pier.key.json --to north-pier.answer.json
-      shares attest check challenge.json north-pier.answer.json --set tide-archive
+        --sign north-pier.key.json --passphrase-file north-pier.passphrase --to north-pier.answer.json
+      shares attest check challenge.json north-pier.answer.json --set tide-archive --card north-pier.card.json
     """
 
 
@@ -87,7 +88,8 @@ def challenge(
 
     \b
     Example:
-      shares attest challenge tide-archive --to challenge.json --due 14d --sign harbour-office.key.json
+      shares attest challenge tide-archive --to challenge.json --due 14d \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     refuse_taken(target)
     of_set = SetFolder(folder)
@@ -181,9 +183,9 @@ def answer_(
     \b
     Examples:
       shares attest answer challenge.json --record record.json --share north-pier.share.json \\
-        --sign north-pier.key.json --to north-pier.answer.json
-      shares attest answer challenge.json --record record.json --sealed --serial TB-0017 --place "the pier house" \\
-        --sign north-pier.key.json --to north-pier.answer.json
+        --sign north-pier.key.json --passphrase-file north-pier.passphrase --to north-pier.answer.json
+      shares attest answer challenge.json --record record.json --sealed --serial TB-0017 --place "the dock house" \\
+        --sign dry-dock.key.json --passphrase-file dry-dock.passphrase --to dry-dock.answer.json
     """
     if (share_file is not None) + sealed + present != 1:
         raise ParameterError("give exactly one of --share S, --sealed and --present", hint="see --help")
@@ -272,7 +274,8 @@ def check_(
 
     \b
     Example:
-      shares attest check challenge.json *.answer.json --set tide-archive --sign harbour-office.key.json
+      shares attest check challenge.json *.answer.json --set tide-archive --card north-pier.card.json \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     if (folder is None) == (record_file is None):
         raise ParameterError("give either --set SET, to enter the answers, or --record R", hint="see --help")

@@ -56,7 +56,7 @@ def command() -> None:
     \b
     Example:
       shares drill open tide-archive --kind practice
-      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json
+      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json
       shares drill close tide-archive --finding "the meeting room was locked" \\
         --action registrar 2027-01-15 "keep a second key" --sign harbour-office.key.json \\
         --passphrase-file harbour-office.passphrase
@@ -181,7 +181,7 @@ def rehearse_(
 
     \b
     Examples:
-      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json
+      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json
       shares drill rehearse tide-archive *.share.json --present "A. Keeper" -- openssl pkey -noout
     """
     words: list[str] | None = ctx.meta.get("command")

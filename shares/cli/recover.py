@@ -24,6 +24,7 @@ from shares.documents.party import OpenPartyKey
 from shares.documents.record import Record
 from shares.documents.wrapping import Suite
 from shares.errors import ParameterError, VerificationError
+from shares.evidence.retire import is_retired
 from shares.history.files import RECORD_NAME
 from shares.history.folder import SetFolder
 from shares.history.journal import JOURNAL_NAME
@@ -161,6 +162,8 @@ def command(
         signing = signers(signer_files, at_hand) if journaled else []
         if journaled:
             journaled.require_signers(signing)
+            if is_retired(journaled.journal()):
+                warn("the journal says that this set was retired, and its shares destroyed: ask where these are from.")
         recovery = recover(load_shares(files, at_hand.share), record)
         _require_encrypted(recovery, encrypted_file, optional=card is not None)
         if journaled and purpose:

@@ -164,9 +164,9 @@ def _steps(drill: Drill, closed: datetime) -> Iterator[DrillStep]:
 def _rehearsed_in_words(event: Rehearsed) -> str:
     probed = ""
     if event.probe is not None:
-        probed = f"; the probe ended with code {event.probe} after {event.probe_seconds} s"
+        probed = f"; the probe ended with code {event.probe} after {in_words(event.probe_seconds or 0)}"
     names = ", ".join(event.custodians) or "no usable share"
-    return f"rehearsed by {names}, in {event.seconds} s: {event.outcome}{probed}"
+    return f"rehearsed by {names}, in {in_words(event.seconds)}: {event.outcome}{probed}"
 
 
 def report_page(report: DrillReport) -> bytes:
@@ -177,11 +177,11 @@ def report_page(report: DrillReport) -> bytes:
 def in_words(seconds: int) -> str:
     """Say a duration in days, hours and minutes.
 
-    >>> in_words(15_000), in_words(42), in_words(90_000)
-    ('4 h 10 min', '42 s', '1 d 1 h')
+    >>> in_words(15_000), in_words(42), in_words(0)
+    ('4 h 10 min', '42 s', 'less than a second')
     """
     days, rest = divmod(seconds, 86_400)
     hours, rest = divmod(rest, 3600)
     minutes, left = divmod(rest, 60)
     parts = [f"{count} {unit}" for count, unit in ((days, "d"), (hours, "h"), (minutes, "min")) if count]
-    return " ".join(parts[:2]) if parts else f"{left} s"
+    return " ".join(parts[:2]) if parts else f"{left} s" if left else "less than a second"

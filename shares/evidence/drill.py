@@ -1,7 +1,7 @@
 """Drills as the journal tells them: called, rehearsed, closed; and the calling of one.
 
 Source: NIST SP 800-53 rev. 5, CP-4 (test the plan, review the results, start corrective action); FORMAT.md, sec. 16.
-May import: shares.errors, shares.documents, shares.history, shares.evidence.rounds.
+May import: shares.errors, shares.documents, shares.history, shares.evidence.retire, .rounds.
 Secret: party keys that sign, passed through. Confidential: the rest. Public: nothing.
 Does not: keep any state of its own: a drill is what the entries of its number say.
 """
@@ -19,6 +19,7 @@ from shares.documents.members import MAX_TEXT, check_text
 from shares.documents.party import OpenPartyKey
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
+from shares.evidence.retire import refuse_retired
 from shares.evidence.rounds import ask
 from shares.history.folder import SetFolder
 from shares.history.journal import Journal
@@ -145,9 +146,11 @@ def open_drill(
         The drill, and the challenge to hand out in one of attendance.
 
     Raises:
-        ParameterError: no such custodian, a text out of range, no practice set, too few signers, or nobody who asks.
+        ParameterError: no such custodian, a text out of range, no practice set, too few signers, nobody who asks, or a
+            set that was retired.
         StorageError: the journal cannot be written.
     """
+    refuse_retired(folder)
     known = [custodian.name for custodian in folder.record.custodians]
     for name in custodians:
         if name not in known:

@@ -60,6 +60,21 @@ def is_retired(journal: Journal) -> bool:
     return any(isinstance(entry.event, Retired) for entry in journal.entries)
 
 
+def refuse_retired(folder: SetFolder) -> None:
+    """Refuse to ask for proofs or drills of a set that was closed.
+
+    Raises:
+        ParameterError: it was.
+        StorageError: the journal cannot be read.
+    """
+    if is_retired(folder.journal()):
+        raise ParameterError(
+            "the set was retired: its shares are destroyed, and nothing is asked of its custodians any more",
+            where=os.fspath(folder.path),
+            hint="`shares retire status` says how each copy ended",
+        )
+
+
 def ending(folder: SetFolder) -> Ending:
     """Return how far a set has come to its end.
 

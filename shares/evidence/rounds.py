@@ -2,7 +2,7 @@
 
 Source: FORMAT_EVIDENCE.md, sec. 17.
 May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history, shares.evidence.attest,
-shares.evidence.judge.
+shares.evidence.judge, shares.evidence.retire.
 Secret: party keys that sign, passed through. Confidential: challenges, answers, journal. Public: nothing else.
 Does not: say when a round is due, or what its answers amount to; an audit does.
 """
@@ -25,6 +25,7 @@ from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
 from shares.evidence.judge import Judgement, check_challenge, judge
+from shares.evidence.retire import refuse_retired
 from shares.history.folder import SetFolder
 from shares.history.journal import Journal
 from shares.storage import read_file
@@ -115,7 +116,7 @@ def ask(
         The challenge, and its entry, which names the file.
 
     Raises:
-        ParameterError: nobody signs, or fewer than the policy wants; or as for ``make_challenge``.
+        ParameterError: nobody signs, or fewer than the policy wants; the set is retired; or as for ``make_challenge``.
         StorageError: folder or journal cannot be read or written.
     """
     if not keys:
@@ -123,6 +124,7 @@ def ask(
             "a challenge is signed, and no party key is given", hint="give --sign KEY: custodians know who asks by it"
         )
     folder.require_signers(keys)
+    refuse_retired(folder)
     time = clock.now() if time is None else time
     challenge = make_challenge(
         folder.record,

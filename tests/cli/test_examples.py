@@ -54,9 +54,29 @@ PAGES: list[tuple[str, ...]] = [
     ("retire", "lost"),
     ("retire", "affidavit"),
     ("retire", "close"),
+    ("attest",),
+    ("attest", "challenge"),
+    ("attest", "answer"),
+    ("attest", "check"),
+    ("drill",),
+    ("drill", "open"),
+    ("drill", "rehearse"),
+    ("drill", "close"),
+    ("drill", "roster"),
+    ("journal",),
+    ("journal", "show"),
+    ("journal", "add"),
+    ("journal", "verify"),
+    ("journal", "head"),
+    ("audit",),
+    ("audit", "pack"),
+    ("sheet",),
     ("selftest",),
     ("completion",),
 ]
+# Examples that show a refusal or a finding, and what their exit codes are: of a head that the journal never had, of an
+# audit of a set that nobody has attested yet.
+CODES = {"shares polynomial check 0x11c": 4, "shares journal verify": 4, "shares audit": 6}
 
 
 def examples(page: tuple[str, ...]) -> list[str]:
@@ -81,7 +101,7 @@ def prepared(tmp_path: Path) -> Path:
     )
     place = Place.make(tmp_path / "made", key)
     place.split(need=3, names=NAMES)
-    for path in place.shares:
+    for path in [*place.drop.iterdir()]:
         path.rename(tmp_path / path.name)
     keys = {}
     for name in (*NAMES, "auditor-east", "auditor-west", "harbour-office", "new"):
@@ -118,6 +138,21 @@ def go_before(page: tuple[str, ...], folder: Path) -> None:
         assert run("ceremony", "script", folder / "policy.toml", "--to", script.parent).code == 0
     if page == ("ceremony", "report"):
         assert run("ceremony", "log", of_set, "--script", script, "--step", "1", "--initials", "A.K.").code == 0
+    office = ("--sign", folder / "harbour-office.key.json", "--passphrase-file", folder / "harbour-office.passphrase")
+    if page in (("attest", "answer"), ("attest", "check")):
+        assert run("attest", "challenge", of_set, "--to", folder / "challenge.json", *office).code == 0
+    if page == ("attest", "check"):
+        answer = ["attest", "answer", folder / "challenge.json", "--record", folder / "record.json"]
+        answer += ["--share", folder / "north-pier.share.json", "--to", folder / "north-pier.answer.json"]
+        own = ("--sign", folder / "north-pier.key.json", "--passphrase-file", folder / "north-pier.passphrase")
+        assert run(*answer, *own).code == 0
+    if page in (("drill", "rehearse"), ("drill", "close")):
+        assert run("drill", "open", of_set, "--kind", "practice").code == 0
+    if page == ("drill", "close"):
+        practice = [folder / f"{name}.practice.json" for name in NAMES[:3]]
+        assert run("drill", "rehearse", of_set, *practice).code == 0
+    if page == ("audit",):
+        shutil.copytree(of_set, folder / "srv" / "sets" / "tide-archive")
     if page == ("retire", "close"):
         for name in NAMES:
             assert run("retire", "destroyed", of_set, "--custodian", name, "--by", "A", "--witness", "B").code == 0
@@ -132,10 +167,15 @@ def test_every_example_runs(page: tuple[str, ...], prepared: Path) -> None:
         if line.startswith("shares split"):
             (prepared / "key.pem").write_bytes((prepared / "made" / "key").read_bytes())
             shutil.rmtree(prepared / "tide-archive")
+        if line.startswith("shares drill rehearse") and "*.share.json" in line:
+            office = ("--sign", prepared / "harbour-office.key.json")
+            phrase = ("--passphrase-file", prepared / "harbour-office.passphrase")
+            assert run("drill", "close", prepared / "tide-archive", *office, *phrase).code == 0
+            assert run("drill", "open", prepared / "tide-archive", "--kind", "recovery").code == 0
         if line.startswith("shares wrap"):
             (prepared / "north-pier.wrapped.json").unlink()
         done = subprocess.run(
-            ["bash", "-c", re.sub(r" (/media|/dev/shm)/", rf" {prepared}\1/", line)],
+            ["bash", "-c", re.sub(r" (/media|/dev/shm|/srv)/", rf" {prepared}\1/", line)],
             cwd=prepared,
             env={**os.environ, "PATH": f"{PROGRAM.parent}:{os.environ['PATH']}", "HOME": str(prepared / "home")},
             stdin=subprocess.DEVNULL,
@@ -144,11 +184,12 @@ def test_every_example_runs(page: tuple[str, ...], prepared: Path) -> None:
             timeout=60,
             check=False,
         )
-        expected = 4 if line == "shares polynomial check 0x11c" else 0
+        expected = next((code for start, code in CODES.items() if line.startswith(start)), 0)
+        expected = 0 if line.startswith("shares audit pack") else expected
         assert (line, done.returncode, done.stderr if done.returncode != expected else "") == (line, expected, "")
         if "--to key.pem" in line:
             assert (prepared / "key.pem").read_bytes() == (prepared / "made" / "key").read_bytes()
-        if "openssl" in line:
+        if "-pubout" in line:
             assert done.stdout.startswith("-----BEGIN PUBLIC KEY-----")
     written = prepared / "home/.local/share/bash-completion/completions/shares"
     assert written.exists() is (page == ("completion",))

@@ -22,7 +22,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from shares.documents.base import canonical, parse_object
-from shares.documents.entry import Entry, Head, line_digest
+from shares.documents.entry import Entry, Head, NamedDigest, line_digest
+from shares.documents.event import make_event
 from shares.documents.party import OpenPartyKey, _card
 from shares.errors import ParameterError, StorageError
 from shares.history import journal as module
@@ -284,7 +285,16 @@ def test_the_first_line_is_a_journal(tmp_path: Path) -> None:
 
 
 @pytest.mark.parametrize(
-    "last", [b"\n", b"rubbish\n", SIGNED[5] + b" \n", bytes(100) + b"\n", b"x" * (3 << 20) + b"\n", b"x" * (3 << 20)]
+    "last",
+    [
+        b"\n",
+        b"rubbish\n",
+        b'rubbish\n{"torn',
+        SIGNED[5] + b" \n",
+        bytes(100) + b"\n",
+        b"x" * (3 << 20) + b"\n",
+        b"x" * (3 << 20),
+    ],
 )
 def test_nothing_is_added_after_what_is_no_entry(last: bytes, tmp_path: Path) -> None:
     path = tmp_path / "journal.jsonl"
@@ -303,6 +313,17 @@ def test_an_entry_that_is_too_large_is_refused(tmp_path: Path) -> None:
     with pytest.raises(StorageError, match="larger than 1 MiB"):
         append(tmp_path, event, cards=cards)
     assert (tmp_path / "journal.jsonl").read_bytes() == before
+
+
+def test_a_line_that_is_too_long_is_no_entry_however_well_formed() -> None:
+    persons, papers = ("x" * 500,) * 1000, (NamedDigest(path="x" * 500, digest=bytes(32)),) * 1000
+    event = make_event("incident", custodians=(), persons=persons, exposed=True, due=START, remark="long")
+    entry = Entry.of_line(lines_of([event])[0])
+    assert read_journal(text_of([entry.line()])).problems == ()
+    line = entry.model_copy(update={"documents": papers}).line()
+    assert len(line) > 1 << 20
+    (problem,) = read_journal(text_of([line])).problems
+    assert "larger than 1 MiB" in problem.what
 
 
 def test_times_that_are_none_are_refused(tmp_path: Path) -> None:
