@@ -18,6 +18,7 @@ from hypothesis import strategies as st
 from kept import NAMES, OFFICE, PEOPLE, START, Kept, day, policy_text
 from parties import card, unlocked
 
+from shares.documents.drill_report import DrillReport
 from shares.documents.event import Attested, Dealt, Destroyed, Deviation, DrillClosed, Noted, Retired, Transcribed
 from shares.errors import StorageError
 from shares.evidence import audit as module
@@ -204,8 +205,10 @@ def test_documents_that_are_missing_or_altered_are_named_and_prove_nothing(kept:
     assert row.proofs[-1].counts is False
     altered = attestations(kept)[0]
     altered.write_bytes(altered.read_bytes() + b"\n")
-    told = [reason.what for reason in kept.audit(day(30)).reasons]
-    assert any(altered.name in what and "altered" in what for what in told)
+    audited = kept.audit(day(30))
+    assert any(altered.name in reason.what and "altered" in reason.what for reason in audited.reasons)
+    row = next(row for row in audited.custodians if row.name == altered.stem)
+    assert [proof.counts for proof in row.proofs] == [False, True]
 
 
 def test_a_forged_claim_is_named_and_counts_for_nothing(kept: Kept) -> None:
@@ -247,6 +250,19 @@ def test_a_drill_that_only_the_journal_says_passed_did_not(kept: Kept) -> None:
     kept.append(DrillClosed(what="drill-closed", drill=number, passed=True), day(26), documents=entry.documents)
     audited = kept.audit(day(30))
     assert "claim" in {reason.code for reason in audited.reasons}
+    assert audited.drills[-1].passed is False
+
+
+def test_a_report_of_a_drill_that_nobody_rehearsed_is_a_claim(kept: Kept) -> None:
+    """Whoever holds the office's key writes a report of success over a drill in which no quorum came."""
+    number = kept.drill("recovery", day(25), NAMES[:2])
+    true = DrillReport.parse((kept.folder / f"drills/{number}/report.json").read_bytes())
+    with unlocked(OFFICE) as key:
+        forged = true.model_copy(update={"passed": True, "signatures": ()}).signed(key)
+    named = kept.set.add(f"drills/{number}/report-2.json", forged.to_file())
+    kept.append(DrillClosed(what="drill-closed", drill=number, passed=True), day(26), documents=[named])
+    audited = kept.audit(day(30))
+    assert [reason.code for reason in audited.reasons if reason.level is Verdict.BROKEN] == ["claim"]
     assert audited.drills[-1].passed is False
 
 

@@ -179,11 +179,15 @@ def test_with_a_copy_left_the_share_is_in_doubt_and_then_gone(kept: Kept) -> Non
 
 def test_an_entry_that_bears_an_earlier_time_makes_no_proof_last_longer(kept: Kept) -> None:
     """The clock of the machine ran backwards: the entry's own, earlier time counts for the proof."""
+    kept.round(day(10))
     kept.append(incident(), day(30))
     prove(kept, 20)
     assert (status(kept, 31), row(kept, 31).content, row(kept, 31).due) == ("confirmed", day(20), day(110))
-    margins = kept.audit(day(31)).margins
-    assert margins[0].time == START
+    audited = kept.audit(day(31))
+    assert audited.margin
+    # What comes after an entry cannot have come before it: until the incident's time nothing is proven anew.
+    assert (audited.margins[-1].low, audited.margins[-1].high) == audited.margin.custodians
+    assert audited.margins[0].time == START
 
 
 def test_without_policy_a_year_is_taken_and_said(tmp_path: Path) -> None:
