@@ -23,7 +23,7 @@ from shares.documents.drill_report import Action
 from shares.documents.event import DrillKind
 from shares.documents.members import encode_bytes
 from shares.errors import ParameterError
-from shares.evidence.after_action import close_drill, in_words, report_page
+from shares.evidence.after_action import close_drill, how_it_went, in_words, report_page
 from shares.evidence.drill import Drill, open_drill, rehearsed_together, the_drill
 from shares.evidence.rehearsal import Probe, Rehearsal, rehearse
 from shares.evidence.roster import Covers, roster
@@ -44,7 +44,7 @@ CALLED = {
     "recovers it in memory, gives it to a probe after --, and writes it nowhere.",
 }
 EXPOSED = (
-    "this machine has now held the secret and the shares used, and the journal says so. "
+    "this machine has now held {secret}the shares brought, and the journal says so. "
     + "Wipe it, and bring each share back."
 )
 
@@ -63,7 +63,7 @@ def command() -> None:
     """
 
 
-@command.command("open")
+@command.command("open", short_help="Call a drill.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.option(
     "--kind",
@@ -143,7 +143,7 @@ def open_(
     print_result(members, lines, as_json=as_json)
 
 
-@command.command("rehearse", cls=FeedsCommand)
+@command.command("rehearse", cls=FeedsCommand, short_help="Recover in a drill, and enter how it went.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.argument("files", metavar="SHARE...", nargs=-1, callback=filled)
 @drill_option
@@ -247,19 +247,20 @@ def _members(drill: Drill, done: Rehearsal) -> dict[str, object]:
 
 def _lines(drill: Drill, done: Rehearsal) -> list[str]:
     event, shown = done.event, _shown(drill, done)
-    went = f"Drill {drill.number}, {drill.event.kind}: {event.outcome}"
+    went = f"Drill {drill.number}, {drill.event.kind}: {how_it_went(event)}"
     lines = prose(f"{went}, from {', '.join(event.custodians) or 'no usable share'}.")
     if shown is not None:
         lines += ["The practice secret, which is worthless and the same for every quorum:", f"  {shown}"]
     if event.probe is not None:
         lines.append(f"The probe ended with code {event.probe} after {event.probe_seconds} s.")
     lines.append(f"Entered as entry {done.entry.sequence}.")
-    if drill.event.kind == "recovery":
-        lines += prose(f"Next: {EXPOSED}")
+    if done.brought:
+        secret = "the secret and " if done.recovery and drill.event.kind == "recovery" else ""
+        lines += prose(f"Next: {EXPOSED.format(secret=secret)}")
     return [*lines, "Then close the drill with `shares drill close`."]
 
 
-@command.command("close")
+@command.command("close", short_help="Close a drill with a signed report.")
 @click.argument("folder", metavar="SET", callback=filled)
 @drill_option
 @click.option("--finding", "findings", multiple=True, metavar="TEXT", callback=filled, help="What was observed.")
@@ -302,9 +303,12 @@ def close_(
         refuse_taken(page)
     of_set = SetFolder(folder)
     drill = the_drill(of_set.journal(), number)
-    assigned = [Action(owner=owner, due=end_of_day(due), what=what) for owner, due, what in actions]
+    assigned = [Action(owner=owner, due=end_of_day(due, where="--action"), what=what) for owner, due, what in actions]
+    for action in assigned:
+        if action.due < clock.now():
+            warn(f"the action of {action.owner} was due on {action.due:%Y-%m-%d}, which is past.")
     with opening((), passphrase_files, descriptors) as at_hand:
-        report, filed = close_drill(
+        report, filed, entry = close_drill(
             of_set, drill, findings=findings, actions=assigned, keys=signers(signer_files, at_hand)
         )
     if page is not None:
@@ -317,7 +321,7 @@ def close_(
         *(f"  finding: {finding}" for finding in report.findings),
         *(f"  action {i}: {one.owner}, by {one.due:%Y-%m-%d}: {one.what}" for i, one in enumerate(report.actions, 1)),
         f"Signed report: {report_file}" + (f"; for people: {page}" if page is not None else ""),
-        "Next: have the actions done, and enter each with `shares journal add SET resolved`.",
+        *prose(_after(folder, entry.sequence, len(report.actions))),
     ]
     members = {
         "done": report.passed,
@@ -334,7 +338,18 @@ def close_(
     ctx.exit(0 if report.passed else FAILED)
 
 
-@command.command("roster")
+def _after(folder: str, entry: int, actions: int) -> str:
+    """Say what comes after a drill is closed."""
+    if not actions:
+        return "Next: give the report to those who took part, and to whoever plans the next drill."
+    which = "1" if actions == 1 else f"1 to {actions}"
+    return (
+        f"Next: have the actions done, and enter each with `shares journal add {folder} resolved --entry {entry} "
+        f"--action {which} --how done`."
+    )
+
+
+@command.command("roster", short_help="Say who should rehearse with whom.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.option(
     "--cycle",

@@ -45,7 +45,9 @@ def test_several_are_found_in_their_order() -> None:
     "text",
     [
         "", "57", HEAD.head, f"57 {HEAD.head[:-1]}", f"57 {HEAD.head}-AAAA", "{}", '{"journal": null}', "[" * 100_000,
-        f"0 {HEAD.head}", f"{2**32} {HEAD.head}", f"{10**30} {HEAD.head}", '{"sequence": 1, "head": "x"}', "\ud800",
+        f"0 {HEAD.head}", f"{2**32} {HEAD.head}", f"{10**30} {HEAD.head}",
+        f'{{"sequence": true, "head": "{HEAD.head}"}}',
+        '{"sequence": 1, "head": "x"}', "\ud800",
     ],
 )  # fmt: skip
 def test_what_holds_none_is_refused(text: str) -> None:
