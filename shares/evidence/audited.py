@@ -74,10 +74,11 @@ Status: TypeAlias = Literal[
     "in doubt",
     "departed",
     "destroyed",
+    "lost",
 ]
 """How a custodian stands. ``confirmed``: proven the share's content in time; ``sealed``: seen the pack closed in time,
-and proven its content in the longer interval; both count toward the margin. ``in doubt``: an incident since. The rest
-says why the custodian does not count."""
+and proven its content in the longer interval; both count toward the margin. ``in doubt``: an incident since. ``lost``: no
+copy is left, and one of them was not destroyed. The rest says why the custodian does not count."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,7 +116,7 @@ class CustodianRow:
         sealed: when the pack was last seen closed.
         due: until when the next proof is to come; None where none is asked for any more.
         card: fingerprint of the custodian's party card, where one is known.
-        copies: how many copies of the share are on record and not destroyed, the one that was dealt among them.
+        copies: how many copies of the share are on record and neither destroyed nor lost, the one that was dealt among them.
         proofs: all attestations, in the journal's order.
     """
 
@@ -227,7 +228,7 @@ class DrillRow:
 
 
 TaskKind: TypeAlias = Literal[
-    "attestation", "answer", "drill", "refresh", "departure", "incident", "replacement", "action"
+    "attestation", "answer", "drill", "refresh", "departure", "incident", "loss", "replacement", "action"
 ]
 
 

@@ -45,6 +45,12 @@ _STATUS: dict[Status, tuple[str, str, str]] = {
         "Every copy of the share was destroyed",
         "Reassign the place, or retire the set.",
     ),
+    "lost": (
+        "custodian-lost",
+        "No copy of the share is left, and it was lost, not destroyed",
+        "Treat it as an incident: whoever finds it knows the share. Decide on refreshing, which makes it worthless, or "
+        "on reassigning the place.",
+    ),
     "unattributed": (
         "custodian-unattributed",
         "The share answered, and the custodian's known party key did not sign",
@@ -218,10 +224,10 @@ def drill_reasons(drills: Sequence[DrillRow]) -> Iterator[Reason]:
 
 
 def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
-    """Yield what is overdue; a departure or incident is urgent from the first hour on."""
+    """Yield what is overdue; a departure, incident or loss is urgent from the first hour on."""
     for task in tasks:
         until = f"due {task.due:%Y-%m-%d %H:%M} UTC"
-        if task.kind in ("departure", "incident"):
+        if task.kind in ("departure", "incident", "loss"):
             urgent = "Overdue: " if task.overdue else ""
             resolve = f" Then enter it: `shares journal add SET resolved --entry {task.entry}`."
             yield Reason(

@@ -16,6 +16,7 @@ from shares.documents.event import (
     Departed,
     HandedOn,
     Incident,
+    Lost,
     Recovered,
     Resolved,
     Transcribed,
@@ -105,6 +106,23 @@ def test_refreshing_is_asked_for_where_the_policy_asks(tmp_path: Path, kept: Kep
     other = Kept.make(tmp_path / "other", policy_text(refresh_every="100d"))
     assert tasks(other, 1, "refresh")[0].due == day(100)
     assert "refresh-overdue" in codes(other, 101)
+
+
+def test_a_loss_is_dealt_with_like_an_incident(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text(respond_within="36h"))
+    gone = Lost(what="lost", custodian="dry-dock", copy="original", by="a", witness="b", reason="a flooded cellar")
+    number = kept.append(gone, day(30)).sequence
+    (task,) = tasks(kept, 30.5, "loss")
+    assert (task.due, task.entry, task.about, task.overdue) == (day(31, 12), number, ("dry-dock",), False)
+    assert "Refresh" in task.advice
+    assert "reassign the place of dry-dock" in task.advice
+    assert "(2 more would make a quorum)" in task.advice
+    assert "loss-open" in codes(kept, 30.5)
+    assert tasks(kept, 32, "loss")[0].overdue
+    kept.append(Resolved(what="resolved", entry=number, how="reassigned"), day(33))
+    assert tasks(kept, 34, "loss") == []
+    assert "loss-open" not in codes(kept, 34)
+    assert "custodian-lost" in codes(kept, 34)  # The place is still empty.
 
 
 def test_a_leaver_who_holds_a_place_is_to_be_replaced(kept: Kept) -> None:
