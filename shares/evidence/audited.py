@@ -77,8 +77,8 @@ Status: TypeAlias = Literal[
     "lost",
 ]
 """How a custodian stands. ``confirmed``: proven the share's content in time; ``sealed``: seen the pack closed in time,
-and proven its content in the longer interval; both count toward the margin. ``in doubt``: an incident since. ``lost``: no
-copy is left, and one of them was not destroyed. The rest says why the custodian does not count."""
+and proven its content in the longer interval; both count toward the margin. ``in doubt``: an incident since.
+``lost``: no copy is left, and one of them was not destroyed. The rest says why the custodian does not count."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,7 +116,7 @@ class CustodianRow:
         sealed: when the pack was last seen closed.
         due: until when the next proof is to come; None where none is asked for any more.
         card: fingerprint of the custodian's party card, where one is known.
-        copies: how many copies of the share are on record and neither destroyed nor lost, the one that was dealt among them.
+        copies: how many copies of the share are on record and neither destroyed nor lost, with the one that was dealt.
         proofs: all attestations, in the journal's order.
     """
 
@@ -228,7 +228,7 @@ class DrillRow:
 
 
 TaskKind: TypeAlias = Literal[
-    "attestation", "answer", "drill", "refresh", "departure", "incident", "loss", "replacement", "action"
+    "attestation", "answer", "drill", "refresh", "departure", "incident", "loss", "replacement", "action", "closing"
 ]
 
 
@@ -242,7 +242,8 @@ class Task:
         due: until when.
         overdue: whether that has passed at the time of the audit.
         about: custodians or people concerned.
-        entry: the entry that set the task, which ``resolved`` names; None where an attestation or drill ends it.
+        entry: the entry that set the task, which ``resolved`` names, or of the drill that is to be closed; None where an
+            attestation or drill ends it.
         action: which action of a drill's report, from 1.
         advice: what the exposure says about how, for departures and incidents.
     """

@@ -1,7 +1,8 @@
 """The life of a set as its journal tells it up to a time: what exposure, margin, drills and tasks are worked out from.
 
 Source: none.
-May import: shares.documents, shares.history.reports, shares.planning.labels, shares.sharing.rule, shares.evidence.audited.
+May import: shares.documents, shares.history.reports, shares.planning.labels, shares.sharing.rule,
+shares.evidence.audited.
 Secret: nothing. Confidential: persons, sites and events. Public: the record.
 Does not: judge what the journal says, or whether it can be believed; ``evidence.audit`` does.
 """

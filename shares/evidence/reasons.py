@@ -61,6 +61,10 @@ _STATUS: dict[Status, tuple[str, str, str]] = {
 _OVERDUE: dict[TaskKind, tuple[str, str]] = {
     "answer": ("Find out, by the known way, why they are silent; then challenge anew.", "An answer is overdue"),
     "drill": ("`shares drill open` calls one.", "A drill is overdue"),
+    "closing": (
+        "Close it with a report of what it showed: `shares drill close SET --drill {drill}`.",
+        "A drill is open",
+    ),
     "refresh": ("Renew the shares, or say in a new policy that it is not needed.", "Renewal is overdue"),
     "replacement": ("Replace the key, then enter that with `shares journal add`.", "A replacement is overdue"),
     "action": ("See to it, then enter that with `shares journal add`.", "An action of a drill's report is overdue"),
@@ -206,21 +210,24 @@ def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:
 
 
 def drill_reasons(drills: Sequence[DrillRow]) -> Iterator[Reason]:
-    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way."""
+    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way.
+
+    One that is still open has failed as soon as a rehearsal did, until another passes: left open it is worth no more.
+    """
     settled = {"attendance"}
     for row in reversed(drills):
-        if row.passed is None or row.kind in settled:
+        failed_so_far = row.passed is None and row.outcomes and row.took is None
+        if row.kind in settled or (row.passed is None and not failed_so_far):
             continue
         settled |= {row.kind, "practice"} if row.passed else {row.kind}
         if not row.passed:
             # A recovery that only took too long did recover.
             level = Verdict.AT_RISK if row.kind == "recovery" and row.took is None else Verdict.DUE
-            yield Reason(
-                level,
-                f"{row.kind}-drill-failed",
-                f"The last {row.kind} drill, {row.number}, failed: {'; '.join(row.findings) or 'see its report'}.",
-                "Find out why, put it right, and repeat the drill.",
-            )
+            said = "; ".join(row.findings) or "see its report"
+            what = f"The last {row.kind} drill, {row.number}, failed: {said}."
+            if failed_so_far:
+                what = f"The {row.kind} drill {row.number} is still open, and failed so far: {'; '.join(row.outcomes)}."
+            yield Reason(level, f"{row.kind}-drill-failed", what, "Find out why, put it right, and repeat the drill.")
 
 
 def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
@@ -235,6 +242,8 @@ def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
             )
         elif task.overdue and task.kind in _OVERDUE:
             step, what = _OVERDUE[task.kind]
+            if task.kind == "closing":
+                step = step.format(drill=task.entry)
             yield Reason(Verdict.DUE, f"{task.kind}-overdue", f"{what}: {task.what} ({until}).", step, task.about)
 
 

@@ -14,7 +14,7 @@ Does not: store tasks: the journal sets them and ends them. People decide; a pra
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from datetime import datetime
+from datetime import datetime, timedelta
 
 from shares.documents.drill_report import DrillReport
 from shares.documents.event import Attested, Challenged, Dealt, Departed, DrillClosed, Incident, Lost, Recovered
@@ -24,6 +24,8 @@ from shares.evidence.exposure import UNKNOWN
 from shares.evidence.life import Life
 
 DECIDE = "A practised key-management professional decides."
+OPEN_FOR = timedelta(days=7)
+"""How long a drill may stay open: what it showed is told while those who were there remember it."""
 _MOST_NAMED = 6
 
 
@@ -47,6 +49,7 @@ def tasks(
         *_attestations(life, rows),
         *_silent(life),
         _drill(life, drills),
+        *_closings(life, drills),
         *_refresh(life),
         *_set_by_entries(life, exposure),
         *_actions(life, reports),
@@ -107,6 +110,13 @@ def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:
     since = max(passed, default=life.start)
     last = f"the last one passed {since:%Y-%m-%d}" if passed else "none has passed yet"
     return _task(life, "drill", f"hold a drill of recovery or practice: {last}", since + life.intervals.drill_every)
+
+
+def _closings(life: Life, drills: Sequence[DrillRow]) -> Iterator[Task]:
+    for row in drills:
+        if row.closed is None:
+            what = f"close drill {row.number}, of {row.kind}, open since {row.opened:%Y-%m-%d}"
+            yield _task(life, "closing", what, row.opened + OPEN_FOR, about=row.custodians, entry=row.number)
 
 
 def _refresh(life: Life) -> Iterator[Task]:

@@ -9,19 +9,23 @@ from datetime import timedelta
 from pathlib import Path
 
 import pytest
-from kept import NAMES, Kept, day, policy_text
+from kept import NAMES, OFFICE, Kept, day, policy_text
+from parties import unlocked
 
 from shares.documents.drill_report import Action
 from shares.documents.event import (
     Departed,
+    DrillKind,
     HandedOn,
     Incident,
     Lost,
     Recovered,
+    Rehearsed,
     Resolved,
     Transcribed,
 )
 from shares.evidence.audited import Task
+from shares.evidence.drill import open_drill
 
 
 @pytest.fixture
@@ -89,6 +93,42 @@ def test_a_practice_drill_does_not_make_up_for_a_recovery_that_failed(kept: Kept
     kept.drill("practice", day(31), NAMES[:3])
     assert str(kept.audit(day(32)).verdict) == "at risk"
     assert "recovery-drill-failed" in codes(kept, 32)
+
+
+def rehearsed(number: int, outcome: str) -> Rehearsed:
+    passed = outcome == "passed"
+    return Rehearsed(
+        what="rehearsed", drill=number, custodians=NAMES[:3], persons=(), passed=passed, outcome=outcome, seconds=9
+    )
+
+
+@pytest.mark.parametrize(("kind", "level"), [("recovery", "at risk"), ("practice", "due")])
+def test_a_drill_that_is_left_open_has_failed_all_the_same(kept: Kept, kind: DrillKind, level: str) -> None:
+    kept.round(day(1))
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, kind, keys=[key], at=day(10))[0].number
+    assert kept.audit(day(11)).reasons == ()
+    (task,) = tasks(kept, 11, "closing")
+    assert (task.due, task.entry, task.overdue) == (day(17), number, False)
+    kept.append(rehearsed(number, "one share is damaged"), day(11))
+    (reason,) = kept.audit(day(12)).reasons
+    assert (reason.code, str(reason.level)) == (f"{kind}-drill-failed", level)
+    assert "still open" in reason.what
+    assert "one share is damaged" in reason.what
+    assert f"{kind}-drill-failed" in codes(kept, 12)
+    kept.append(rehearsed(number, "passed"), day(13))
+    assert codes(kept, 14) == []
+    (reason,) = kept.audit(day(18)).reasons
+    assert (reason.code, str(reason.level)) == ("closing-overdue", "due")
+    assert f"`shares drill close SET --drill {number}`" in reason.next
+
+
+def test_an_open_drill_that_failed_is_made_up_for_by_a_later_one(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, "recovery", keys=[key], at=day(10))[0].number
+    kept.append(rehearsed(number, "one share is damaged"), day(11))
+    kept.drill("recovery", day(12), NAMES[:3])
+    assert "recovery-drill-failed" not in codes(kept, 13)
 
 
 def test_a_recovery_that_took_too_long_is_due_and_no_risk(tmp_path: Path) -> None:
