@@ -242,8 +242,8 @@ class Task:
         due: until when.
         overdue: whether that has passed at the time of the audit.
         about: custodians or people concerned.
-        entry: the entry that set the task, which ``resolved`` names, or of the drill that is to be closed; None where an
-            attestation or drill ends it.
+        entry: the entry that set the task, which ``resolved`` names, or of the drill that is to be closed; None where
+            an attestation or drill ends it.
         action: which action of a drill's report, from 1.
         advice: what the exposure says about how, for departures and incidents.
     """
@@ -302,7 +302,7 @@ class Intervals:
 
 @dataclass(frozen=True, slots=True)
 class Counts:
-    """How much was checked."""
+    """How much was checked; ``heads``: where documents, or the auditor's notes, say that the journal stood."""
 
     entries: int = 0
     later_entries: int = 0
@@ -310,6 +310,7 @@ class Counts:
     signatures: int = 0
     documents: int = 0
     attestations: int = 0
+    heads: int = 0
 
 
 @dataclass(frozen=True, slots=True)

@@ -139,6 +139,34 @@ def claim_reasons(claims: Sequence[str]) -> Iterator[Reason]:
         yield _broken("claim", f"Journal: {len(claims) - _MOST_PROBLEMS:,} more claims like these.")
 
 
+def stray_reasons(names: Sequence[str], *, journal: bool) -> Iterator[Reason]:
+    """Yield that documents lie there of which no entry tells.
+
+    Args:
+        names: their files.
+        journal: whether there is a journal at all.
+    """
+    said = f"{len(names):,} {'document lies' if len(names) == 1 else 'documents lie'}"
+    if names and journal:
+        yield Reason(
+            Verdict.DUE,
+            "entry-missing",
+            f"{said} there that no entry names: {listed(names)}. An entry is missing: somebody removed it, or a run "
+            "was stopped.",
+            "Compare the journal with copies, and with heads that others noted (--head). Where a run was stopped, "
+            "enter what it left: `shares journal add SET noted --remark TEXT --document FILE`.",
+            tuple(names),
+        )
+    elif names:
+        yield Reason(
+            Verdict.BROKEN,
+            "journal-removed",
+            f"The set has no journal, and {said} there that come of one: {listed(names)}. It was removed.",
+            "Bring it back from a copy, and compare its head with one that was noted elsewhere. Begin no other.",
+            tuple(names),
+        )
+
+
 def margin_reasons(life: Life, margin: Margin, rows: Sequence[CustodianRow]) -> Iterator[Reason]:
     """Yield what the margin says: too little is at risk, unless it is only that the first round is not yet due."""
     if margin.custodians.low < 0:
