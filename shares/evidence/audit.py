@@ -148,12 +148,14 @@ def _worked_out(files: Files, life: Life, journal: Journal, filed: Filed, found:
         found.reasons += [
             *reasons.margin_reasons(life, now, rows),
             *reasons.custodian_reasons(rows),
+            *reasons.card_reasons(rows, journal.cards),
             *reasons.exposure_reasons(known, record.epoch),
             *reasons.drill_reasons(drilled),
             *reasons.task_reasons(to_do),
         ]
     else:
         found.reasons += reasons.retired_reasons(rows, retired[0].time)
+    found.notes += standings.notes
     for name in life.intervals.assumed:
         days = getattr(life.intervals, name).days
         found.notes.append(f"The policy says no {name}: {days} days are taken.")
@@ -254,7 +256,7 @@ class _Findings:
             return Journal(), Filed()
         try:
             journal = read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL))
-            filed = read_filed(journal, files, record)
+            filed = read_filed(journal, files, record, policy)
             strays = find_strays(files, self.names, journal, set_id=record.set, read=filed.read)
             self.heads = tuple(dict.fromkeys((*filed.heads, *strays.heads, *self.heads)))
             problems = verify(journal, files, record, policy, heads=self.heads, trusted=trusted)

@@ -90,7 +90,9 @@ class Proof:
         entry: the number of the journal's entry.
         grade: ``content``, ``sealed`` or ``present``.
         result: what the custodian found, in the words of ``verify``, or of the seal.
-        counts: whether it confirms the custodian: holds, is intact, and signed by the custodian's known party key.
+        counts: whether it confirms the custodian: holds, is intact, signed by the custodian's known party key, and asked
+            for after whatever last touched the share.
+        asked: the number of the entry that tells of its challenge; 0 where none does.
     """
 
     time: datetime
@@ -101,6 +103,7 @@ class Proof:
     late: bool
     opened: bool
     counts: bool
+    asked: int = 0
 
 
 @dataclass(frozen=True, slots=True)

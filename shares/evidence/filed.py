@@ -19,12 +19,21 @@ from shares.documents.base import MAX_FILE, Document
 from shares.documents.challenge import Challenge
 from shares.documents.drill_report import DrillReport
 from shares.documents.entry import Entry, Head, NamedDigest
-from shares.documents.event import Attested, Challenged, Dealt, DrillClosed, DrillOpened, Introduced, Rehearsed
+from shares.documents.event import (
+    Attested,
+    Challenged,
+    Dealt,
+    DrillClosed,
+    DrillOpened,
+    Rehearsed,
+)
+from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import SharesError
 from shares.evidence.audited import Proof
 from shares.evidence.judge import Earlier, Judgement, judge
 from shares.history.files import Files
+from shares.history.holders import Holders
 from shares.history.journal import Journal
 
 One = TypeVar("One", bound=Document)
@@ -49,16 +58,18 @@ class Filed:
     claims: list[str] = field(default_factory=list)
 
 
-def read_filed(journal: Journal, files: Files, record: Record) -> Filed:
+def read_filed(journal: Journal, files: Files, record: Record, policy: Policy | None = None) -> Filed:
     """Read what a journal names, and judge it again with public material alone; never raises for what files hold.
 
     Args:
         journal: as it was read.
         files: of the set.
         record: the set's.
+        policy: the set's, where it has one: who leaves, and with which shares.
     """
     # Attestations of an earlier epoch cannot be judged by this record, and prove nothing of it.
-    reader = _Reader(files, record, begun=not any(_deals(entry, record) for entry in journal.entries))
+    holders = Holders((custodian.name for custodian in record.custodians), policy)
+    reader = _Reader(files, record, holders, begun=not any(_deals(entry, record) for entry in journal.entries))
     for entry in journal.entries:
         reader.read(entry)
     return reader.filed
@@ -68,22 +79,21 @@ def read_filed(journal: Journal, files: Files, record: Record) -> Filed:
 class _Reader:
     files: Files
     record: Record
+    holders: Holders
     begun: bool
     filed: Filed = field(default_factory=Filed)
-    cards: dict[str, str] = field(default_factory=dict)
     challenges: dict[bytes, Challenge | None] = field(default_factory=dict)
+    asked: dict[bytes, int] = field(default_factory=dict)
     answered: dict[bytes, dict[str, Earlier]] = field(default_factory=dict)
     drills: dict[int, DrillOpened] = field(default_factory=dict)
     rehearsed: set[int] = field(default_factory=set)
 
     def read(self, entry: Entry) -> None:
         event = entry.event
+        self.holders.take(event)
         match event:
             case Dealt():
                 self.begun = self.begun or _deals(entry, self.record)
-                self.cards |= {share.name: share.card for share in event.custodians if share.card is not None}
-            case Introduced():
-                self.cards[event.custodian] = event.card
             case Challenged():
                 self._challenged(entry, event)
             case Attested() if self.begun:
@@ -106,6 +116,7 @@ class _Reader:
             self._claim(entry, "tells of another challenge than the one that it names")
             challenge = None
         self.challenges.setdefault(event.challenge, challenge)
+        self.asked.setdefault(event.challenge, entry.sequence)
 
     def _attested(self, entry: Entry, event: Attested) -> None:
         if event.challenge not in self.challenges:
@@ -121,7 +132,15 @@ class _Reader:
         if judgement is None:
             # Its bad news are heeded, and its good ones are not believed.
             proof = Proof(
-                entry.time, entry.sequence, event.grade, event.result, False, event.late, event.opened, counts=False
+                time=entry.time,
+                entry=entry.sequence,
+                grade=event.grade,
+                result=event.result,
+                attributed=False,
+                late=event.late,
+                opened=event.opened,
+                counts=False,
+                asked=self.asked[event.challenge],
             )
         else:
             proof = Proof(
@@ -133,6 +152,7 @@ class _Reader:
                 late=judgement.late,
                 opened=event.opened,
                 counts=judgement.accepted and judgement.attributed and judgement.whole,
+                asked=self.asked[event.challenge],
             )
         self.filed.proofs[entry.sequence] = proof
 
@@ -143,7 +163,7 @@ class _Reader:
                 attestation,
                 challenge,
                 self.record,
-                card=self.cards.get(attestation.custodian),
+                card=self.holders.cards.get(attestation.custodian),
                 received=entry.time,
                 earlier=earlier,
             )

@@ -9,10 +9,11 @@ Does not: find anything out itself.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from datetime import datetime
 
 from shares.documents.party import PartyCard
+from shares.documents.policy import folded
 from shares.documents.record import Record
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Margin, Reason, Status, Task, TaskKind, Verdict
 from shares.evidence.life import Life
@@ -210,6 +211,30 @@ def custodian_reasons(rows: Sequence[CustodianRow]) -> Iterator[Reason]:
             names = tuple(row.name for row in found)
             why = "; ".join(dict.fromkeys(row.why for row in found[:3]))
             yield Reason(Verdict.DUE, code, f"{what}: {listed(names)} ({why}).", step, names)
+
+
+def card_reasons(rows: Sequence[CustodianRow], cards: Mapping[str, PartyCard]) -> Iterator[Reason]:
+    """Yield that one party's card stands for several custodians: whoever has its key answers for all of them.
+
+    Args:
+        rows: how the custodians stand.
+        cards: those that the journal has introduced, by fingerprint; two with one signing key are one party.
+    """
+    by_key: dict[bytes | str, list[CustodianRow]] = {}
+    for row in rows:
+        if row.card is not None:
+            by_key.setdefault(cards[row.card].ed25519 if row.card in cards else row.card, []).append(row)
+    for found in by_key.values():
+        # Where policy or journal name one person for them, the margin in people tells what that means.
+        if len({folded(row.person) for row in found}) > 1:
+            names = tuple(row.name for row in found)
+            yield Reason(
+                Verdict.DUE,
+                "card-shared",
+                f"One party's card, {found[0].card}, stands for several custodians: {listed(names)}.",
+                "Have each custodian make a party key of their own, introduce its card, and ask them again.",
+                names,
+            )
 
 
 def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:

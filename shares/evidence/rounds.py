@@ -19,14 +19,16 @@ from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE
 from shares.documents.challenge import Challenge, Purpose
 from shares.documents.entry import Entry, NamedDigest
-from shares.documents.event import Attested, Challenged, Dealt, Introduced
+from shares.documents.event import Attested, Challenged, Introduced
 from shares.documents.party import OpenPartyKey, PartyCard
+from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
 from shares.evidence.judge import Earlier, Judgement, check_challenge, judge
 from shares.evidence.retire import refuse_retired
 from shares.history.folder import SetFolder
+from shares.history.holders import Holders
 from shares.history.journal import Journal
 from shares.storage import read_file
 
@@ -77,15 +79,12 @@ def rounds(journal: Journal) -> dict[bytes, Round]:
     return found
 
 
-def known_cards(journal: Journal) -> dict[str, str]:
-    """Return the fingerprint of each custodian's party card, as the journal told last."""
-    known: dict[str, str] = {}
+def known_cards(journal: Journal, record: Record, policy: Policy | None) -> dict[str, str]:
+    """Return the fingerprint of each custodian's party card, as the journal told last of whoever holds the share now."""
+    holders = Holders((custodian.name for custodian in record.custodians), policy)
     for entry in journal.entries:
-        if isinstance(entry.event, Dealt):
-            known |= {share.name: share.card for share in entry.event.custodians if share.card is not None}
-        elif isinstance(entry.event, Introduced):
-            known[entry.event.custodian] = entry.event.card
-    return known
+        holders.take(entry.event)
+    return holders.cards
 
 
 def folder_of_round(challenge: Challenge) -> str:
@@ -188,7 +187,7 @@ def enter(
             where=os.fspath(folder.path),
             hint="give the challenge that was filed there; another set's answers prove nothing here",
         )
-    known = _introduced(folder, known_cards(journal), cards or {}, keys, time)
+    known = _introduced(folder, known_cards(journal, folder.record, folder.policy), cards or {}, keys, time)
     earlier = {name: Earlier(_digest_of(entry), _is_attributed(entry)) for name, entry in found.answers.items()}
 
     def enter_one(attestation: Attestation, judgement: Judgement) -> Entry:

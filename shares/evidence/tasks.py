@@ -95,9 +95,9 @@ def _silent(life: Life) -> Iterator[Task]:
                 asked[event.challenge] = entry.sequence, event.due, dict.fromkeys(event.custodians)
             case Attested() as event if event.challenge in asked:
                 asked[event.challenge][2].pop(event.custodian, None)
-            case Departed() as event:
+            case Departed():
                 for _, _, names in asked.values():
-                    for name in event.custodians:
+                    for name in life.leaving[entry.sequence]:
                         names.pop(name, None)
     for number, due, names in asked.values():
         if names:
@@ -133,8 +133,8 @@ def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
         match event:
             case Departed():
                 what = f"{event.person} has left: end what they could still do"
-                advice = departure_advice(event, exposure)
-                about = (event.person, *event.custodians)
+                advice = departure_advice(event, life.leaving[number], exposure)
+                about = (event.person, *life.leaving[number])
                 yield _task(life, "departure", what, event.due, about=about, entry=number, advice=advice)
             case Incident():
                 what = f"deal with the incident: {event.remark}"
@@ -162,11 +162,12 @@ def _actions(life: Life, reports: Mapping[int, DrillReport]) -> Iterator[Task]:
                 yield _task(life, "action", what, action.due, about=about, entry=closed, action=number)
 
 
-def departure_advice(event: Departed, exposure: Sequence[Known]) -> str:
+def departure_advice(event: Departed, places: Sequence[str], exposure: Sequence[Known]) -> str:
     """Say how a departure is dealt with, from what the leaver has known.
 
     Args:
         event: the departure.
+        places: the custodians whose place it empties.
         exposure: who has known what.
     """
     known = [row for row in exposure if row.kind == "person" and folded(row.who) == folded(event.person)]
@@ -174,9 +175,9 @@ def departure_advice(event: Departed, exposure: Sequence[Known]) -> str:
     if said:
         return said
     shares = listed(list(dict.fromkeys(name for row in known for name in row.shares)))
-    if event.custodians:
+    if places:
         return (
-            f"Reassign: the place of {listed(event.custodians)} goes to somebody else. A pack can be handed over, the "
+            f"Reassign: the place of {listed(places)} goes to somebody else. A pack can be handed over, the "
             f"knowledge of {shares or 'its share'} stays with who left{_missing(known)}: new shares make it worthless, "
             f"handing the old one on does not. {DECIDE}"
         )

@@ -537,6 +537,7 @@ def test_no_margin_left_is_due(tmp_path: Path) -> None:
 def test_who_has_known_a_quorum_is_a_risk(kept: Kept) -> None:
     for name in ("registrar", "dry-dock"):
         kept.append(Transcribed(what="transcribed", custodian=name, persons=(PEOPLE["north-pier"],)), day(21))
+    kept.round(day(22))
     (reason,) = kept.audit(day(30)).reasons
     assert (reason.level, reason.about) == (Verdict.AT_RISK, ("keeper one",))
 
