@@ -104,7 +104,8 @@ def command(
         # The template engine is loaded for a page alone.
         from shares.evidence.page import audit_page
 
-        write_new(page, audit_page(audits, program=f"shares {shares.__version__}"), secret=True)
+        program = f"shares {shares.__version__}"
+        write_new(page, audit_page(audits, program=program, trusted=trusted, heads=heads), secret=True)
     worst = max((audited.verdict for audited in audits), key=lambda verdict: verdict.rank)
     code = VerificationError.exit_code if worst is Verdict.BROKEN else 0 if worst is Verdict.GOOD else DUE
     counts = Counter(audited.verdict for audited in audits)
@@ -186,6 +187,7 @@ def _custodian_lines(rows: Sequence[CustodianRow]) -> Iterator[str]:
     width = max((len(row.name) for row in rows), default=0)
     for row in rows:
         due = f"; due {row.due:%Y-%m-%d}" if row.due else ""
+        due += f"; silent: asked, no answer by {row.silent:%Y-%m-%d}" if row.silent else ""
         yield f"    {row.name:<{width}}  {row.status}: {row.why}{due}"
 
 

@@ -90,8 +90,8 @@ class Proof:
         entry: the number of the journal's entry.
         grade: ``content``, ``sealed`` or ``present``.
         result: what the custodian found, in the words of ``verify``, or of the seal.
-        counts: whether it confirms the custodian: holds, is intact, signed by the custodian's known party key, and asked
-            for after whatever last touched the share.
+        counts: whether it confirms the custodian: holds, is intact, signed by the custodian's known party key, and was
+            asked for after whatever last touched the share.
         asked: the number of the entry that tells of its challenge; 0 where none does.
     """
 
@@ -121,6 +121,7 @@ class CustodianRow:
         card: fingerprint of the custodian's party card, where one is known.
         copies: how many copies of the share are on record and neither destroyed nor lost, with the one that was dealt.
         proofs: all attestations, in the journal's order.
+        unanswered: when each challenge was due that passed without an answer, and was not asked anew before.
     """
 
     name: str
@@ -134,6 +135,13 @@ class CustodianRow:
     card: str | None
     copies: int
     proofs: tuple[Proof, ...] = ()
+    unanswered: tuple[datetime, ...] = ()
+
+    @property
+    def silent(self) -> datetime | None:
+        """Since when the custodian is silent: asked, and no answer of any kind since; None who is not."""
+        last = max(self.unanswered, default=None)
+        return last if last and all(proof.time < last for proof in self.proofs) else None
 
     @property
     def counts(self) -> bool:

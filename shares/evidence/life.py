@@ -1,8 +1,8 @@
 """The life of a set as its journal tells it up to a time: what exposure, margin, drills and tasks are worked out from.
 
 Source: none.
-May import: shares.documents, shares.history.holders, shares.history.reports, shares.planning.labels, shares.sharing.rule,
-shares.evidence.audited.
+May import: shares.documents, shares.history.holders, shares.history.reports, shares.planning.labels,
+shares.sharing.rule, shares.evidence.audited.
 Secret: nothing. Confidential: persons, sites and events. Public: the record.
 Does not: judge what the journal says, or whether it can be believed; ``evidence.audit`` does.
 """
@@ -114,7 +114,7 @@ class Life:
 
     @cached_property
     def leaving(self) -> dict[int, tuple[str, ...]]:
-        """Whose places each departure empties, by the number of its entry: what the person held then, by the journal."""
+        """Whose places each departure empties, by the number of its entry: all that the person held then among them."""
         holders, found = Holders(self.names, self.policy), dict[int, tuple[str, ...]]()
         for entry in self.entries:
             names = holders.take(entry.event)

@@ -11,7 +11,9 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from datetime import datetime
+from typing import get_args
 
+from shares.documents.event import Remedy
 from shares.documents.party import PartyCard
 from shares.documents.policy import folded
 from shares.documents.record import Record
@@ -67,8 +69,8 @@ _OVERDUE: dict[TaskKind, tuple[str, str]] = {
         "A drill is open",
     ),
     "refresh": ("Renew the shares, or say in a new policy that it is not needed.", "Renewal is overdue"),
-    "replacement": ("Replace the key, then enter that with `shares journal add`.", "A replacement is overdue"),
-    "action": ("See to it, then enter that with `shares journal add`.", "An action of a drill's report is overdue"),
+    "replacement": ("Replace the key.", "A replacement is overdue"),
+    "action": ("See to it.", "An action of a drill's report is overdue"),
 }
 
 
@@ -100,6 +102,8 @@ def journal_reasons(problems: Iterable[Problem]) -> tuple[list[Reason], list[str
     reasons, notes, broken = list[Reason](), list[str](), list[Problem]()
     for problem in problems:
         place = f"Journal, line {problem.line}" if problem.line else "Journal"
+        if problem.kind in ("trust", "control"):
+            place = "Journal"  # They name entries, of which the line is only the first.
         if problem.kind in _WORTH_KNOWING:
             notes.append(f"{place}: {problem.what}.")
         elif problem.kind in ("trust", "control"):
@@ -289,15 +293,24 @@ def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
         until = f"due {task.due:%Y-%m-%d %H:%M} UTC"
         if task.kind in ("departure", "incident", "loss"):
             urgent = "Overdue: " if task.overdue else ""
-            resolve = f" Then enter it: `shares journal add SET resolved --entry {task.entry}`."
-            yield Reason(
-                Verdict.DUE, f"{task.kind}-open", f"{urgent}{task.what} ({until}).", task.advice + resolve, task.about
-            )
+            step = f"{task.advice} {_resolve(task)}"
+            yield Reason(Verdict.DUE, f"{task.kind}-open", f"{urgent}{task.what} ({until}).", step, task.about)
         elif task.overdue and task.kind in _OVERDUE:
             step, what = _OVERDUE[task.kind]
             if task.kind == "closing":
                 step = step.format(drill=task.entry)
+            elif task.entry is not None:
+                step = f"{step} {_resolve(task)}"
             yield Reason(Verdict.DUE, f"{task.kind}-overdue", f"{what}: {task.what} ({until}).", step, task.about)
+
+
+def _resolve(task: Task) -> str:
+    """Say by which command the end of a task is entered."""
+    action = f" --action {task.action}" if task.action is not None else ""
+    usual = {"replacement": '"key replaced"', "action": "done"}.get(task.kind)
+    command = f"`shares journal add SET resolved --entry {task.entry}{action} --how {usual or 'HOW'}`"
+    others = ", ".join(f'"{how}"' if " " in how else how for how in get_args(Remedy))
+    return f"Then enter it: {command}." if usual else f"Then enter it: {command}, HOW being one of: {others}."
 
 
 def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Reason]:

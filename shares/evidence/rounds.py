@@ -80,7 +80,7 @@ def rounds(journal: Journal) -> dict[bytes, Round]:
 
 
 def known_cards(journal: Journal, record: Record, policy: Policy | None) -> dict[str, str]:
-    """Return the fingerprint of each custodian's party card, as the journal told last of whoever holds the share now."""
+    """Return the fingerprint of each custodian's party card, as the journal told last of who holds the share now."""
     holders = Holders((custodian.name for custodian in record.custodians), policy)
     for entry in journal.entries:
         holders.take(entry.event)

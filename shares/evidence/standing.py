@@ -8,7 +8,8 @@ whoever holds it, until its content is proven anew.
 
 Source: NIST SP 800-53, CP-9(1) (media tested at a defined frequency); PCI PIN 9-2 (a tamper sign is analysed; read in a
 summary); trade practice: a seal is no proof of content, and silence is no consent.
-May import: shares.documents, shares.history.journal, shares.evidence.audited, .inventory, .life.
+May import: shares.documents, shares.history.journal, shares.evidence.asked, .audited, .inventory,
+.life.
 Secret: nothing. Confidential: persons, sites, proofs. Public: nothing.
 Does not: judge attestations; it is given what each of them proves.
 """
@@ -34,6 +35,7 @@ from shares.documents.event import (
     Transcribed,
 )
 from shares.documents.policy import folded
+from shares.evidence.asked import unanswered
 from shares.evidence.audited import CustodianRow, Proof, Status
 from shares.evidence.inventory import take_inventory
 from shares.evidence.life import Life
@@ -145,6 +147,7 @@ class Standings:
         }
         self.notes: list[str] = []
         self._departed: dict[int, tuple[str, ...]] = {}
+        self._unanswered = unanswered(life)
         self._spans: list[Span] = []
         self._confirmed: dict[str, Span] = {}
         time = life.start
@@ -265,6 +268,7 @@ class Standings:
             card=one.card,
             copies=self._held[one.name],
             proofs=tuple(one.proofs),
+            unanswered=self._unanswered.get(one.name, ()),
         )
 
     def _stands(self, one: _Standing) -> tuple[Status, str, datetime | None]:

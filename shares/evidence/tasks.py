@@ -17,8 +17,9 @@ from collections.abc import Iterator, Mapping, Sequence
 from datetime import datetime, timedelta
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Attested, Challenged, Dealt, Departed, DrillClosed, Incident, Lost, Recovered
+from shares.documents.event import Departed, DrillClosed, Incident, Lost, Recovered
 from shares.documents.policy import folded
+from shares.evidence.asked import still_asked
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Task, TaskKind
 from shares.evidence.exposure import UNKNOWN
 from shares.evidence.life import Life
@@ -82,27 +83,11 @@ def _attestations(life: Life, rows: Sequence[CustodianRow]) -> Iterator[Task]:
 
 def _silent(life: Life) -> Iterator[Task]:
     """Yield one task for each challenge with custodians who have neither answered it nor a later one."""
-    asked: dict[bytes, tuple[int, datetime, dict[str, None]]] = {}
-    for entry in life.entries:
-        match entry.event:
-            case Dealt():
-                asked.clear()
-            case Challenged(drill=None) as event:
-                # The latest challenge is the one to answer.
-                for _, _, names in asked.values():
-                    for name in event.custodians:
-                        names.pop(name, None)
-                asked[event.challenge] = entry.sequence, event.due, dict.fromkeys(event.custodians)
-            case Attested() as event if event.challenge in asked:
-                asked[event.challenge][2].pop(event.custodian, None)
-            case Departed():
-                for _, _, names in asked.values():
-                    for name in life.leaving[entry.sequence]:
-                        names.pop(name, None)
-    for number, due, names in asked.values():
-        if names:
-            what = f"answer the challenge of entry {number}: {listed(list(names))}"
-            yield _task(life, "answer", what, due, about=list(names))
+    for one in still_asked(life):
+        if one.silent:
+            names = list(one.silent)
+            what = f"answer the challenge of entry {one.number}: {listed(names)}"
+            yield _task(life, "answer", what, one.due, about=names)
 
 
 def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:

@@ -91,7 +91,8 @@ def event_of(folder: SetFolder, what: str, report: Report, *, time: datetime | N
     Args:
         folder: the set's.
         what: which event, one of ``NEEDS``.
-        report: the facts. Custodians of a departure are by default those whose share the person holds by policy and journal.
+        report: the facts. Custodians of a departure are by default those whose share the person holds by policy and
+            journal.
         time: of the report; now by default.
 
     Raises:

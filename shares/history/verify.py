@@ -139,7 +139,8 @@ def _signer_problems(journal: Journal, policy: Policy | None, trusted: Sequence[
             what = f"{_entries(alone)} signed by fewer than two parties, and the policy asks for dual control"
             yield Problem(alone[0], what, kind="control")
     if known:
-        foreign = those(not keys & known for keys in signers)
+        # Those that nobody signed are told above.
+        foreign = those(bool(keys) and not keys & known for keys in signers)
         if foreign:
             yield Problem(foreign[0], f"{_entries(foreign)} signed by no party whose card is trusted", kind="trust")
 

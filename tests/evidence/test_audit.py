@@ -130,6 +130,8 @@ def test_an_unsigned_entry_is_never_better_than_unsigned(kept: Kept) -> None:
     append(kept.folder, Noted(what="noted", remark="by whom?"), time=day(25))
     assert found(kept) == {"journal-not-vouched": Verdict.UNSIGNED}
     assert kept.audit(day(30)).counts.unsigned_entries == 1
+    (reason,) = kept.audit(day(30), trusted=[card(OFFICE)]).reasons  # One, not a second that nobody trusted signed.
+    assert reason.what.startswith(f"Journal: entry {len(lines(kept))} is not signed")
 
 
 def test_dual_control_is_looked_for(tmp_path: Path) -> None:

@@ -67,11 +67,22 @@ def test_whoever_is_silent_is_named_until_they_answer_or_are_asked_anew(kept: Ke
     assert (task.about, task.due, task.overdue) == (NAMES[3:], day(24), False)
     assert tasks(kept, 25, "answer")[0].overdue
     assert "answer-overdue" in codes(kept, 25)
+    (silent,) = {row.silent for row in kept.audit(day(25)).custodians if row.name in NAMES[3:]}
+    assert (silent, {row.silent for row in kept.audit(day(25)).custodians[:3]}) == (day(24), {None})
     second = kept.ask(day(26), NAMES[3:])
     assert [(task.about, task.due) for task in tasks(kept, 27, "answer")] == [(NAMES[3:], day(40))]
     kept.answer(second, NAMES[3:4], day(28))
     kept.append(departed("keeper five", "dry-dock"), day(29))
     assert tasks(kept, 45, "answer") == []
+    # What passed in silence is told of whoever answered later as well; asked anew in time, nobody was silent.
+    rows = {row.name: row for row in kept.audit(day(45)).custodians}
+    assert (rows["registrar"].unanswered, rows["registrar"].silent) == ((day(24),), None)
+    assert (rows["dry-dock"].unanswered, rows["dry-dock"].silent) == ((day(24),), day(24))
+    assert rows["north-pier"].unanswered == ()
+    kept.ask(day(46), NAMES[:1])
+    kept.ask(day(50), NAMES[:1])
+    assert [row.unanswered for row in kept.audit(day(63)).custodians[:1]] == [()]
+    assert [row.unanswered for row in kept.audit(day(65)).custodians[:1]] == [(day(64),)]
 
 
 def test_drills_are_due_from_the_last_that_passed(kept: Kept) -> None:
@@ -139,6 +150,23 @@ def test_a_recovery_that_took_too_long_is_due_and_no_risk(tmp_path: Path) -> Non
     (reason,) = audited.reasons
     assert (reason.code, reason.level, str(audited.verdict)) == ("recovery-drill-failed", "due", "due")
     assert "5 h" in reason.what
+
+
+def test_each_task_names_the_command_that_ends_it(kept: Kept) -> None:
+    left = kept.append(departed("keeper two", "south-pier"), day(30)).sequence
+    gave = Recovered(
+        what="recovered", custodians=NAMES[:3], persons=(), reason="a fire", disposition="replace", by=day(31)
+    )
+    replaced = kept.append(gave, day(30)).sequence
+    action = Action(what="call by telephone", owner=OFFICE, due=day(32))
+    kept.drill("practice", day(30), NAMES[:3], actions=[action, action])
+    closed = kept.set.journal().entries[-1].sequence
+    said = " ".join(reason.next for reason in kept.audit(day(40)).reasons)
+    assert f"`shares journal add SET resolved --entry {left} --how HOW`" in said
+    assert 'refreshed, reassigned, "key replaced"' in said
+    assert f'`shares journal add SET resolved --entry {replaced} --how "key replaced"`' in said
+    for number in (1, 2):
+        assert f"`shares journal add SET resolved --entry {closed} --action {number} --how done`" in said
 
 
 def test_refreshing_is_asked_for_where_the_policy_asks(tmp_path: Path, kept: Kept) -> None:
