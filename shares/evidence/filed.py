@@ -23,11 +23,13 @@ from shares.documents.event import (
     Attested,
     Challenged,
     Dealt,
+    Destroyed,
     DrillClosed,
     DrillOpened,
+    Lost,
     Rehearsed,
 )
-from shares.documents.policy import Policy
+from shares.documents.policy import Policy, folded
 from shares.documents.record import Record
 from shares.errors import SharesError
 from shares.evidence.audited import Proof
@@ -104,6 +106,11 @@ class _Reader:
                 self.rehearsed.add(event.drill)
             case DrillClosed():
                 self._closed(entry, event)
+            case Destroyed() | Lost():
+                by = folded(event.witness) == folded(event.by)
+                if by or self.holders.is_party(event.custodian, event.witness):
+                    what = f"says that a copy of {event.custodian} was {event.what}, and its witness is no third party"
+                    self._claim(entry, what)
 
     def _claim(self, entry: Entry, what: str) -> None:
         self.filed.claims.append(f"entry {entry.sequence} {what}")

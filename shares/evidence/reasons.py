@@ -314,7 +314,7 @@ def _resolve(task: Task) -> str:
 
 
 def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Reason]:
-    """Yield what is amiss with a set's end: nothing is due any more but what was left unaccounted for."""
+    """Yield what is amiss with a set's end: copies left unaccounted for, and those that only were given up as lost."""
     held = [row.name for row in rows if row.copies]
     if held:
         yield Reason(
@@ -323,4 +323,13 @@ def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Re
             f"The set was retired on {when:%Y-%m-%d}, and copies are not accounted for: {listed(held)}.",
             "Find and destroy each of them before a witness: `shares retire status` lists them.",
             tuple(held),
+        )
+    lost = [row.name for row in rows if row.status == "lost"]
+    if lost:
+        yield Reason(
+            Verdict.AT_RISK,
+            "retired-with-lost",
+            f"The set was retired on {when:%Y-%m-%d}, and copies were lost, not destroyed: {listed(lost)}.",
+            "They may turn up with anybody: see that the key is replaced, and protects nothing any more.",
+            tuple(lost),
         )

@@ -17,7 +17,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from datetime import datetime, timedelta
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Departed, DrillClosed, Incident, Lost, Recovered
+from shares.documents.event import Departed, DrillClosed, Incident, Lost, Recovered, Resolved
 from shares.documents.policy import folded
 from shares.evidence.asked import still_asked
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Task, TaskKind
@@ -27,6 +27,8 @@ from shares.evidence.life import Life
 DECIDE = "A practised key-management professional decides."
 OPEN_FOR = timedelta(days=7)
 """How long a drill may stay open: what it showed is told while those who were there remember it."""
+OUTLIVES: tuple[TaskKind, ...] = ("departure", "incident", "loss", "replacement")
+"""What is still to be done when a set is retired: the key may be known, and in use."""
 _MOST_NAMED = 6
 
 
@@ -111,9 +113,11 @@ def _refresh(life: Life) -> Iterator[Task]:
 
 
 def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
+    # Nothing else ends it: shares that are renewed or reassigned leave the key as it was.
+    replaced = {event.entry for _, event in life.each(Resolved) if event.how == "key replaced" and not event.action}
     for entry in life.entries:
         number, event = entry.sequence, entry.event
-        if (number, None) in life.resolved:
+        if (number, None) in life.resolved and not isinstance(event, Recovered):
             continue
         match event:
             case Departed():
@@ -131,7 +135,7 @@ def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
                 due = entry.time + life.respond_within
                 advice = loss_advice(event, exposure)
                 yield _task(life, "loss", what, due, about=(event.custodian,), entry=number, advice=advice)
-            case Recovered(disposition="replace", by=datetime() as by):
+            case Recovered(disposition="replace", by=datetime() as by) if number not in replaced:
                 what = f"replace the key that was recovered: {event.reason}"
                 yield _task(life, "replacement", what, by, about=event.custodians, entry=number)
 

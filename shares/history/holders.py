@@ -33,6 +33,7 @@ class Holders:
         said = {one.name: one.person for one in policy.custodians} if policy else {}
         self._first = {name: said.get(name, name) for name in names}
         self.now = dict(self._first)
+        self._ever = {name: {holder} for name, holder in self.now.items()}
         self.cards: dict[str, str] = {}
 
     def take(self, event: Event) -> tuple[str, ...]:
@@ -45,11 +46,13 @@ class Holders:
             case Dealt():
                 for share in event.custodians:
                     self.now[share.name] = self._first.get(share.name, share.name)
+                    self._ever[share.name] = {self.now[share.name]}
                     self._know(share.name, share.card)
             case Introduced():
                 self._know(event.custodian, event.card)
             case HandedOn():
                 self.now[event.custodian] = event.to
+                self._ever.setdefault(event.custodian, set()).add(event.to)
                 self._know(event.custodian, None)
             case Departed():
                 names = tuple(dict.fromkeys((*event.custodians, *self.held_by(event.person))))
@@ -57,6 +60,10 @@ class Holders:
                     self._know(name, None)
                 return names
         return ()
+
+    def is_party(self, custodian: str, person: str) -> bool:
+        """Say whether a person holds, or since the dealing has held, a custodian's share: no third party to it."""
+        return folded(person) in map(folded, (custodian, *self._ever.get(custodian, ())))
 
     def held_by(self, person: str) -> tuple[str, ...]:
         """Return whose shares a person holds; spelling as in ``folded``, and a first holder by the custodian's name."""

@@ -261,7 +261,7 @@ def test_a_journal_that_was_removed_is_never_better_than_the_true_one(kept: Kept
     assert "no-journal" not in codes
     shutil.rmtree(kept.folder / "attestations")
     shutil.rmtree(kept.folder / "drills")
-    assert found(kept)["no-journal"] is Verdict.DUE
+    assert found(kept)["no-journal"] is Verdict.AT_RISK
 
 
 def test_heads_that_were_noted_elsewhere(kept: Kept) -> None:
@@ -410,7 +410,7 @@ def test_a_file_that_is_missing(kept: Kept, name: str) -> None:
     (kept.folder / name).unlink()
     expected = {
         "record.json": ("record-unreadable", Verdict.BROKEN),
-        "policy.toml": ("policy-missing", Verdict.DUE),
+        "policy.toml": ("policy-missing", Verdict.AT_RISK),
         "journal.jsonl": ("journal-removed", Verdict.BROKEN),
         PRACTICE_RECORD: ("practice-missing", Verdict.DUE),
     }
