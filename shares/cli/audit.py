@@ -9,6 +9,7 @@ import click
 
 import shares
 from shares.cli import audit_pack
+from shares.cli.heads import heads_given
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.clock import from_text, to_text
 from shares.custody.parties import load_card
@@ -53,6 +54,14 @@ class _OrPack(click.Command):
     callback=filled,
     help="A party card whose fingerprint you have compared: one such party must have signed record and journal.",
 )
+@click.option(
+    "--head",
+    "noted",
+    multiple=True,
+    metavar="HEAD",
+    callback=filled,
+    help='Where the journal is known to have stood: "57 ABCD-...", or a file that quotes it; of one set alone.',
+)
 @click.option("--html", "page", metavar="FILE", callback=filled, help="Write a page as well, to be read and filed.")
 @click.option("--jobs", type=click.IntRange(1), metavar="N", help="So many processes; one a processor by default.")
 @json_option
@@ -62,6 +71,7 @@ def command(
     paths: tuple[str, ...],
     at: str | None,
     trusted_files: tuple[str, ...],
+    noted: tuple[str, ...],
     page: str | None,
     jobs: int | None,
     as_json: bool,
@@ -78,17 +88,18 @@ def command(
       shares audit tide-archive --html report.html
       shares audit /srv/sets --trust harbour-office.card.json --json
       shares audit pack tide-archive --to tide-archive.tar
-      shares audit tide-archive.tar --trust harbour-office.card.json
+      shares audit tide-archive.tar --trust harbour-office.card.json --head noted-on-monday.txt
     """
     if page is not None:
         refuse_taken(page)
     when = from_text(at) if at is not None else None
     trusted = [load_card(path) for path in trusted_files]
+    heads = heads_given(noted)
     found = find_sets(paths)
     if found.passed_over:
         warn(f"{len(found.passed_over):,} folder(s) hold no set, and were passed over: {_few(found.passed_over)}.")
     bar = progress("Auditing", "sets")
-    audits = list(audit_many(found.sets, jobs=jobs, at=when, trusted=trusted, progress=bar))
+    audits = list(audit_many(found.sets, jobs=jobs, at=when, trusted=trusted, heads=heads, progress=bar))
     if page is not None:
         # The template engine is loaded for a page alone.
         from shares.evidence.page import audit_page

@@ -14,20 +14,19 @@ from typing import Any, get_args
 import click
 
 from shares import clock
+from shares.cli.heads import heads_given
 from shares.cli.keys import opening, sign_option, signers
 from shares.cli.output import filled, json_option, print_result, progress, prose, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_card
 from shares.custody.presented import load_record
-from shares.documents.base import MAX_FILE
-from shares.documents.entry import Entry, Head
+from shares.documents.entry import Entry
 from shares.documents.event import EVENT_NAMES, Departed, Event, HandedOn, Incident, Introduced, Remedy
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, StorageError, VerificationError
 from shares.history.files import MAX_DOCUMENT, POLICY_NAME, RECORD_NAME, FolderFiles
 from shares.history.folder import SetFolder, load_policy
-from shares.history.heads import heads_in
 from shares.history.journal import JOURNAL_NAME, Journal, Problem, load_journal
 from shares.history.reports import NEEDS, Report, append_with, event_of
 from shares.history.verify import verify as check
@@ -221,7 +220,7 @@ def verify(
     Example:
       shares journal verify tide-archive --head "57 ABCD-EFGH-IJKL-MNOP-QRST-UVWX-YZ23-4567"
     """
-    heads = [head for one in noted for head in _heads(one)]
+    heads = heads_given(noted)
     trusted = [load_card(file) for file in trusted_files]
     record, policy = _record_and_policy(Path(folder))
     journal = _load(folder)
@@ -295,19 +294,6 @@ def _time(text: str) -> datetime:
     except ParameterError as error:
         problem = error.what
     raise ParameterError(problem, where="--since")
-
-
-def _heads(given: str) -> list[Head]:
-    """Read the heads that an option gives, or a file that it names."""
-    if os.path.lexists(given):
-        text, where = read_file(given, limit=MAX_FILE).decode("utf-8", "replace"), given
-    else:
-        text, where = given, "--head"
-    try:
-        return heads_in(text)
-    except ParameterError as error:
-        problem = error
-    raise ParameterError(problem.what, where=where, hint=problem.hint)
 
 
 def _entry_members(entry: Entry, journal: Journal | None) -> dict[str, Any]:

@@ -92,7 +92,7 @@ def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
 def _shown(audit: Audit) -> _Shown:
     return _Shown(
         audit=audit,
-        title=audit.label or "A set that cannot be read",
+        title=audit.label or ("A set that cannot be read" if audit.head is None else "A set that is not split yet"),
         calendar=calendar(audit) if audit.custodians or audit.drills or audit.tasks else None,
         chart=chart(audit.margins, audit.at, most=audit.margin.whole.high if audit.margin else 0),
         tasks=tuple(sorted(audit.tasks, key=lambda task: task.due)),

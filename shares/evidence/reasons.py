@@ -45,6 +45,12 @@ _STATUS: dict[Status, tuple[str, str, str]] = {
         "Every copy of the share was destroyed",
         "Reassign the place, or retire the set.",
     ),
+    "lost": (
+        "custodian-lost",
+        "No copy of the share is left, and it was lost, not destroyed",
+        "Treat it as an incident: whoever finds it knows the share. Decide on refreshing, which makes it worthless, or "
+        "on reassigning the place.",
+    ),
     "unattributed": (
         "custodian-unattributed",
         "The share answered, and the custodian's known party key did not sign",
@@ -55,6 +61,10 @@ _STATUS: dict[Status, tuple[str, str, str]] = {
 _OVERDUE: dict[TaskKind, tuple[str, str]] = {
     "answer": ("Find out, by the known way, why they are silent; then challenge anew.", "An answer is overdue"),
     "drill": ("`shares drill open` calls one.", "A drill is overdue"),
+    "closing": (
+        "Close it with a report of what it showed: `shares drill close SET --drill {drill}`.",
+        "A drill is open",
+    ),
     "refresh": ("Renew the shares, or say in a new policy that it is not needed.", "Renewal is overdue"),
     "replacement": ("Replace the key, then enter that with `shares journal add`.", "A replacement is overdue"),
     "action": ("See to it, then enter that with `shares journal add`.", "An action of a drill's report is overdue"),
@@ -129,6 +139,34 @@ def claim_reasons(claims: Sequence[str]) -> Iterator[Reason]:
         yield _broken("claim", f"Journal: {len(claims) - _MOST_PROBLEMS:,} more claims like these.")
 
 
+def stray_reasons(names: Sequence[str], *, journal: bool) -> Iterator[Reason]:
+    """Yield that documents lie there of which no entry tells.
+
+    Args:
+        names: their files.
+        journal: whether there is a journal at all.
+    """
+    said = f"{len(names):,} {'document lies' if len(names) == 1 else 'documents lie'}"
+    if names and journal:
+        yield Reason(
+            Verdict.DUE,
+            "entry-missing",
+            f"{said} there that no entry names: {listed(names)}. An entry is missing: somebody removed it, or a run "
+            "was stopped.",
+            "Compare the journal with copies, and with heads that others noted (--head). Where a run was stopped, "
+            "enter what it left: `shares journal add SET noted --remark TEXT --document FILE`.",
+            tuple(names),
+        )
+    elif names:
+        yield Reason(
+            Verdict.BROKEN,
+            "journal-removed",
+            f"The set has no journal, and {said} there that come of one: {listed(names)}. It was removed.",
+            "Bring it back from a copy, and compare its head with one that was noted elsewhere. Begin no other.",
+            tuple(names),
+        )
+
+
 def margin_reasons(life: Life, margin: Margin, rows: Sequence[CustodianRow]) -> Iterator[Reason]:
     """Yield what the margin says: too little is at risk, unless it is only that the first round is not yet due."""
     if margin.custodians.low < 0:
@@ -200,28 +238,31 @@ def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:
 
 
 def drill_reasons(drills: Sequence[DrillRow]) -> Iterator[Reason]:
-    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way."""
+    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way.
+
+    One that is still open has failed as soon as a rehearsal did, until another passes: left open it is worth no more.
+    """
     settled = {"attendance"}
     for row in reversed(drills):
-        if row.passed is None or row.kind in settled:
+        failed_so_far = row.passed is None and row.outcomes and row.took is None
+        if row.kind in settled or (row.passed is None and not failed_so_far):
             continue
         settled |= {row.kind, "practice"} if row.passed else {row.kind}
         if not row.passed:
             # A recovery that only took too long did recover.
             level = Verdict.AT_RISK if row.kind == "recovery" and row.took is None else Verdict.DUE
-            yield Reason(
-                level,
-                f"{row.kind}-drill-failed",
-                f"The last {row.kind} drill, {row.number}, failed: {'; '.join(row.findings) or 'see its report'}.",
-                "Find out why, put it right, and repeat the drill.",
-            )
+            said = "; ".join(row.findings) or "see its report"
+            what = f"The last {row.kind} drill, {row.number}, failed: {said}."
+            if failed_so_far:
+                what = f"The {row.kind} drill {row.number} is still open, and failed so far: {'; '.join(row.outcomes)}."
+            yield Reason(level, f"{row.kind}-drill-failed", what, "Find out why, put it right, and repeat the drill.")
 
 
 def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
-    """Yield what is overdue; a departure or incident is urgent from the first hour on."""
+    """Yield what is overdue; a departure, incident or loss is urgent from the first hour on."""
     for task in tasks:
         until = f"due {task.due:%Y-%m-%d %H:%M} UTC"
-        if task.kind in ("departure", "incident"):
+        if task.kind in ("departure", "incident", "loss"):
             urgent = "Overdue: " if task.overdue else ""
             resolve = f" Then enter it: `shares journal add SET resolved --entry {task.entry}`."
             yield Reason(
@@ -229,6 +270,8 @@ def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
             )
         elif task.overdue and task.kind in _OVERDUE:
             step, what = _OVERDUE[task.kind]
+            if task.kind == "closing":
+                step = step.format(drill=task.entry)
             yield Reason(Verdict.DUE, f"{task.kind}-overdue", f"{what}: {task.what} ({until}).", step, task.about)
 
 

@@ -14,16 +14,18 @@ Does not: store tasks: the journal sets them and ends them. People decide; a pra
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from datetime import datetime
+from datetime import datetime, timedelta
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Attested, Challenged, Dealt, Departed, DrillClosed, Incident, Recovered
+from shares.documents.event import Attested, Challenged, Dealt, Departed, DrillClosed, Incident, Lost, Recovered
 from shares.documents.policy import folded
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Task, TaskKind
 from shares.evidence.exposure import UNKNOWN
 from shares.evidence.life import Life
 
 DECIDE = "A practised key-management professional decides."
+OPEN_FOR = timedelta(days=7)
+"""How long a drill may stay open: what it showed is told while those who were there remember it."""
 _MOST_NAMED = 6
 
 
@@ -47,6 +49,7 @@ def tasks(
         *_attestations(life, rows),
         *_silent(life),
         _drill(life, drills),
+        *_closings(life, drills),
         *_refresh(life),
         *_set_by_entries(life, exposure),
         *_actions(life, reports),
@@ -109,6 +112,13 @@ def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:
     return _task(life, "drill", f"hold a drill of recovery or practice: {last}", since + life.intervals.drill_every)
 
 
+def _closings(life: Life, drills: Sequence[DrillRow]) -> Iterator[Task]:
+    for row in drills:
+        if row.closed is None:
+            what = f"close drill {row.number}, of {row.kind}, open since {row.opened:%Y-%m-%d}"
+            yield _task(life, "closing", what, row.opened + OPEN_FOR, about=row.custodians, entry=row.number)
+
+
 def _refresh(life: Life) -> Iterator[Task]:
     every = life.intervals.refresh_every
     if every is not None:
@@ -131,6 +141,11 @@ def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
                 advice = incident_advice(event, exposure)
                 about = (*event.custodians, *event.persons)
                 yield _task(life, "incident", what, event.due, about=about, entry=number, advice=advice)
+            case Lost():
+                what = f"deal with the lost copy of {event.custodian}: {event.copy_}, {event.reason}"
+                due = entry.time + life.respond_within
+                advice = loss_advice(event, exposure)
+                yield _task(life, "loss", what, due, about=(event.custodian,), entry=number, advice=advice)
             case Recovered(disposition="replace", by=datetime() as by):
                 what = f"replace the key that was recovered: {event.reason}"
                 yield _task(life, "replacement", what, by, about=event.custodians, entry=number)
@@ -190,6 +205,20 @@ def incident_advice(event: Incident, exposure: Sequence[Known]) -> str:
         return said
     who = listed(event.persons) if event.persons else UNKNOWN
     return f"Refresh: {who} may know {names}{_missing(known)}; new shares make that worthless. {DECIDE}"
+
+
+def loss_advice(event: Lost, exposure: Sequence[Known]) -> str:
+    """Say how a loss is dealt with: as an incident, since somebody unknown may have found the copy.
+
+    Args:
+        event: the loss.
+        exposure: who has known what.
+    """
+    known = [row for row in exposure if row.kind == "unknown"]
+    return _worst(known) or (
+        f"Treat it as an incident: it may turn up with anybody{_missing(known)}. Refresh, so that it is worth nothing, "
+        f"or reassign the place of {event.custodian}. {DECIDE}"
+    )
 
 
 def _worst(known: Sequence[Known]) -> str:

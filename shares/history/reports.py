@@ -19,7 +19,7 @@ from typing import Final
 
 from shares import clock
 from shares.documents.entry import Entry, NamedDigest
-from shares.documents.event import Departed, DrillClosed, Event, Incident, Recovered, Remedy, make_event
+from shares.documents.event import Departed, DrillClosed, Event, Incident, Lost, Recovered, Remedy, make_event
 from shares.documents.intervals import parse_duration
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.policy import folded
@@ -47,10 +47,10 @@ _SEVERAL: Final = {
     ("incident", "custodian"),
     ("incident", "person"),
 }
-_TASKS: Final = (Departed, Incident, Recovered, DrillClosed)
-_LIST: Final = "`shares journal show` lists the entries; departed, incident, recovered and drill-closed set tasks"
+_TASKS: Final = (Departed, Incident, Lost, Recovered, DrillClosed)
+_LIST: Final = "`shares journal show` lists the entries; departed, incident, lost, recovered and drill-closed set tasks"
 RESPOND_WITHIN: Final = timedelta(hours=24)
-"""How soon a departure or incident is dealt with where no policy says."""
+"""How soon a departure, incident or loss is dealt with where no policy says."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

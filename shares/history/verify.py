@@ -51,7 +51,7 @@ def verify(
         *_document_problems(journal, files, frozenset(names)),
         *_set_aside(journal, names),
         *_signer_problems(journal, policy, trusted),
-        *_head_problems(journal, heads),
+        *head_problems(journal, heads),
     )
 
 
@@ -144,7 +144,13 @@ def _signer_problems(journal: Journal, policy: Policy | None, trusted: Sequence[
             yield Problem(foreign[0], f"{_entries(foreign)} signed by no party whose card is trusted", kind="trust")
 
 
-def _head_problems(journal: Journal, heads: Sequence[Head]) -> Iterator[Problem]:
+def head_problems(journal: Journal, heads: Iterable[Head]) -> Iterator[Problem]:
+    """Yield each head at which a journal never stood.
+
+    Args:
+        journal: as it was read.
+        heads: noted elsewhere, or quoted in documents.
+    """
     for head in heads:
         if journal.holds(head):
             continue

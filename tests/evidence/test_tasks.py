@@ -9,18 +9,23 @@ from datetime import timedelta
 from pathlib import Path
 
 import pytest
-from kept import NAMES, Kept, day, policy_text
+from kept import NAMES, OFFICE, Kept, day, policy_text
+from parties import unlocked
 
 from shares.documents.drill_report import Action
 from shares.documents.event import (
     Departed,
+    DrillKind,
     HandedOn,
     Incident,
+    Lost,
     Recovered,
+    Rehearsed,
     Resolved,
     Transcribed,
 )
 from shares.evidence.audited import Task
+from shares.evidence.drill import open_drill
 
 
 @pytest.fixture
@@ -90,6 +95,42 @@ def test_a_practice_drill_does_not_make_up_for_a_recovery_that_failed(kept: Kept
     assert "recovery-drill-failed" in codes(kept, 32)
 
 
+def rehearsed(number: int, outcome: str) -> Rehearsed:
+    passed = outcome == "passed"
+    return Rehearsed(
+        what="rehearsed", drill=number, custodians=NAMES[:3], persons=(), passed=passed, outcome=outcome, seconds=9
+    )
+
+
+@pytest.mark.parametrize(("kind", "level"), [("recovery", "at risk"), ("practice", "due")])
+def test_a_drill_that_is_left_open_has_failed_all_the_same(kept: Kept, kind: DrillKind, level: str) -> None:
+    kept.round(day(1))
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, kind, keys=[key], at=day(10))[0].number
+    assert kept.audit(day(11)).reasons == ()
+    (task,) = tasks(kept, 11, "closing")
+    assert (task.due, task.entry, task.overdue) == (day(17), number, False)
+    kept.append(rehearsed(number, "one share is damaged"), day(11))
+    (reason,) = kept.audit(day(12)).reasons
+    assert (reason.code, str(reason.level)) == (f"{kind}-drill-failed", level)
+    assert "still open" in reason.what
+    assert "one share is damaged" in reason.what
+    assert f"{kind}-drill-failed" in codes(kept, 12)
+    kept.append(rehearsed(number, "passed"), day(13))
+    assert codes(kept, 14) == []
+    (reason,) = kept.audit(day(18)).reasons
+    assert (reason.code, str(reason.level)) == ("closing-overdue", "due")
+    assert f"`shares drill close SET --drill {number}`" in reason.next
+
+
+def test_an_open_drill_that_failed_is_made_up_for_by_a_later_one(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, "recovery", keys=[key], at=day(10))[0].number
+    kept.append(rehearsed(number, "one share is damaged"), day(11))
+    kept.drill("recovery", day(12), NAMES[:3])
+    assert "recovery-drill-failed" not in codes(kept, 13)
+
+
 def test_a_recovery_that_took_too_long_is_due_and_no_risk(tmp_path: Path) -> None:
     kept = Kept.make(tmp_path / "set", policy_text(recover_within="4h"))
     kept.round(day(1))
@@ -105,6 +146,23 @@ def test_refreshing_is_asked_for_where_the_policy_asks(tmp_path: Path, kept: Kep
     other = Kept.make(tmp_path / "other", policy_text(refresh_every="100d"))
     assert tasks(other, 1, "refresh")[0].due == day(100)
     assert "refresh-overdue" in codes(other, 101)
+
+
+def test_a_loss_is_dealt_with_like_an_incident(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text(respond_within="36h"))
+    gone = Lost(what="lost", custodian="dry-dock", copy="original", by="a", witness="b", reason="a flooded cellar")
+    number = kept.append(gone, day(30)).sequence
+    (task,) = tasks(kept, 30.5, "loss")
+    assert (task.due, task.entry, task.about, task.overdue) == (day(31, 12), number, ("dry-dock",), False)
+    assert "Refresh" in task.advice
+    assert "reassign the place of dry-dock" in task.advice
+    assert "(2 more would make a quorum)" in task.advice
+    assert "loss-open" in codes(kept, 30.5)
+    assert tasks(kept, 32, "loss")[0].overdue
+    kept.append(Resolved(what="resolved", entry=number, how="reassigned"), day(33))
+    assert tasks(kept, 34, "loss") == []
+    assert "loss-open" not in codes(kept, 34)
+    assert "custodian-lost" in codes(kept, 34)  # The place is still empty.
 
 
 def test_a_leaver_who_holds_a_place_is_to_be_replaced(kept: Kept) -> None:
