@@ -105,6 +105,7 @@ def answer_members(made: Attestation, asked: Challenge, target: str) -> dict[str
         "file": target,
         **made.public("custodian", "grade", "result", "carrier", "opened", "time"),
         "challenge": made.challenge.hex(),
+        "journal": made.journal.model_dump() if made.journal else None,
         "asker": asked.card.public("name", "fingerprint"),
         "signed_by_share": made.share_signature is not None,
         "card": made.card.fingerprint if made.card else None,
@@ -126,6 +127,9 @@ def answer_lines(made: Attestation, asked: Challenge, target: str) -> list[str]:
         lines.append(f"It is late: due was {clock.to_text(asked.due)}.")
     if made.card is None:
         lines += prose(UNATTRIBUTED)
+    if made.journal is not None:
+        note = "keep a copy, and an audit can see by it that the journal was not rewritten since."
+        lines += prose(f"It says where the journal of the set stood, {made.journal.words()}: {note}")
     lines += prose(NEXT.get(made.result, WHAT_IT_IS))
     if made.carrier == "paper":
         lines += prose("Destroy the file that was typed from paper; seal the sheet again, and note the new serial.")
