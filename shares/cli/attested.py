@@ -183,9 +183,7 @@ def _member(given: GivenAnswer, found: Entered | None) -> dict[str, object]:
     }
 
 
-def check_lines(
-    told: Sequence[Told], asked: Challenge, silent: Sequence[str], *, entered: bool, signed: bool
-) -> list[str]:
+def check_lines(told: Sequence[Told], asked: Challenge, silent: Sequence[str], *, entered: bool) -> list[str]:
     """Tell what was found of each answer, who is silent, and what it all proves."""
     lines = [_line(given, found) for given, found in told]
     counting = sum(found is not None and found.judgement.counts for _, found in told)
@@ -196,8 +194,6 @@ def check_lines(
         lines.append("All who were asked have answered.")
     if counting:
         lines += prose(PROVES)
-    if entered and not signed and any(found and found.entry for _, found in told):
-        lines.append("The entries are unsigned: an audit says so. --sign KEY signs them.")
     if not entered:
         lines.append("Nothing was entered: --set SET files and enters them.")
     return lines

@@ -15,6 +15,7 @@ from cli.terminal import on_terminal
 from parties import unlocked
 
 from shares import clock
+from shares.cli.keys import UNSIGNED_ENTRY
 from shares.documents.attestation import Attestation
 from shares.documents.challenge import Challenge
 from shares.documents.event import Attested, Introduced
@@ -161,7 +162,7 @@ def test_all_good_is_exit_code_0(quay: Quay) -> None:
     assert done.code == 0
     assert "2 of 2 count toward the margin" in done.out
     assert "All who were asked have answered." in done.out
-    assert "The entries are unsigned" in done.out
+    assert UNSIGNED_ENTRY in done.err
 
 
 def test_every_command_says_the_same_in_json(quay: Quay) -> None:
