@@ -112,7 +112,7 @@ def main(folder: Path) -> int:
     ):
         pass
     action = Action(owner="registrar", due=end_of_day("2026-10-31"), what="wipe the drill machine before a witness")
-    report, _ = close_drill(of_set, drill, actions=[action], keys=[office, witness], at=on(9, 9))
+    report, _, _ = close_drill(of_set, drill, actions=[action], keys=[office, witness], at=on(9, 9))
     (folder / "drill.html").write_bytes(report_page(report))
 
     # October: the second round. The light-house answers; the share of auditor-west is damaged, and its keeper says so.
@@ -137,6 +137,9 @@ def main(folder: Path) -> int:
     print(f"{found.label}: {found.verdict.value}")
     for reason in found.reasons:
         print(f"  {reason.what}")
+    print(
+        f"Look at {folder / 'audit.html'} and {folder / 'drill.html'}; the auditor takes {folder / 'tide-archive.tar'}"
+    )
     for key in keys.values():
         key.close()
     dealt.close()

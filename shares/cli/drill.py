@@ -8,9 +8,10 @@ from pathlib import Path
 import click
 
 from shares import clock
+from shares.cli import roster
 from shares.cli.feeding import FeedsCommand
 from shares.cli.intervals import interval
-from shares.cli.keys import key_option, opening, sign_option, signers
+from shares.cli.keys import key_option, opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -23,10 +24,9 @@ from shares.documents.drill_report import Action
 from shares.documents.event import DrillKind
 from shares.documents.members import encode_bytes
 from shares.errors import ParameterError
-from shares.evidence.after_action import close_drill, in_words, report_page
-from shares.evidence.drill import Drill, open_drill, rehearsed_together, the_drill
+from shares.evidence.after_action import close_drill, how_it_went, in_words, report_page
+from shares.evidence.drill import Drill, open_drill, the_drill
 from shares.evidence.rehearsal import Probe, Rehearsal, rehearse
-from shares.evidence.roster import Covers, roster
 from shares.history.folder import SetFolder
 from shares.storage import write_new
 
@@ -44,7 +44,7 @@ CALLED = {
     "recovers it in memory, gives it to a probe after --, and writes it nowhere.",
 }
 EXPOSED = (
-    "this machine has now held the secret and the shares used, and the journal says so. "
+    "this machine has now held {secret}the shares brought, and the journal says so. "
     + "Wipe it, and bring each share back."
 )
 
@@ -55,15 +55,17 @@ def command() -> None:
 
     \b
     Example:
-      shares drill open tide-archive --kind practice
-      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json
+      shares drill open tide-archive --kind practice \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
+      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
       shares drill close tide-archive --finding "the meeting room was locked" \\
         --action registrar 2027-01-15 "keep a second key" --sign harbour-office.key.json \\
         --passphrase-file harbour-office.passphrase
     """
 
 
-@command.command("open")
+@command.command("open", short_help="Call a drill.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.option(
     "--kind",
@@ -103,7 +105,8 @@ def open_(
 
     \b
     Examples:
-      shares drill open tide-archive --kind practice
+      shares drill open tide-archive --kind practice \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
       shares drill open tide-archive --kind attendance --to called.json --sign harbour-office.key.json \\
         --passphrase-file harbour-office.passphrase
     """
@@ -124,6 +127,7 @@ def open_(
         )
         if target is not None and asked is not None:
             write_new(target, asked.to_file(), secret=True)
+    warn_unsigned(signer_files, as_json=as_json)
     within = drill.event.target
     lines = [
         f"Drill {drill.number} is open: {kind}, {of_set.record.label}.",
@@ -143,7 +147,7 @@ def open_(
     print_result(members, lines, as_json=as_json)
 
 
-@command.command("rehearse", cls=FeedsCommand)
+@command.command("rehearse", cls=FeedsCommand, short_help="Recover in a drill, and enter how it went.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.argument("files", metavar="SHARE...", nargs=-1, callback=filled)
 @drill_option
@@ -181,8 +185,10 @@ def rehearse_(
 
     \b
     Examples:
-      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json
-      shares drill rehearse tide-archive *.share.json --present "A. Keeper" -- openssl pkey -noout
+      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
+      shares drill rehearse tide-archive *.share.json --present "A. Keeper" \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase -- openssl pkey -noout
     """
     words: list[str] | None = ctx.meta.get("command")
     of_set = SetFolder(folder)
@@ -200,6 +206,7 @@ def rehearse_(
         presented = load_shares(files, at_hand.share)
         probe = _probe(words, encrypted_file) if words else None
         done = rehearse(of_set, drill, presented, probe=probe, persons=persons, keys=signing)
+    warn_unsigned(signer_files, as_json=as_json)
     with done:
         print_result(_members(drill, done), _lines(drill, done), as_json=as_json)
     if done.failure is not None:
@@ -247,19 +254,20 @@ def _members(drill: Drill, done: Rehearsal) -> dict[str, object]:
 
 def _lines(drill: Drill, done: Rehearsal) -> list[str]:
     event, shown = done.event, _shown(drill, done)
-    went = f"Drill {drill.number}, {drill.event.kind}: {event.outcome}"
+    went = f"Drill {drill.number}, {drill.event.kind}: {how_it_went(event)}"
     lines = prose(f"{went}, from {', '.join(event.custodians) or 'no usable share'}.")
     if shown is not None:
         lines += ["The practice secret, which is worthless and the same for every quorum:", f"  {shown}"]
     if event.probe is not None:
         lines.append(f"The probe ended with code {event.probe} after {event.probe_seconds} s.")
     lines.append(f"Entered as entry {done.entry.sequence}.")
-    if drill.event.kind == "recovery":
-        lines += prose(f"Next: {EXPOSED}")
+    if done.brought:
+        secret = "the secret and " if done.recovery and drill.event.kind == "recovery" else ""
+        lines += prose(f"Next: {EXPOSED.format(secret=secret)}")
     return [*lines, "Then close the drill with `shares drill close`."]
 
 
-@command.command("close")
+@command.command("close", short_help="Close a drill with a signed report.")
 @click.argument("folder", metavar="SET", callback=filled)
 @drill_option
 @click.option("--finding", "findings", multiple=True, metavar="TEXT", callback=filled, help="What was observed.")
@@ -302,9 +310,12 @@ def close_(
         refuse_taken(page)
     of_set = SetFolder(folder)
     drill = the_drill(of_set.journal(), number)
-    assigned = [Action(owner=owner, due=end_of_day(due), what=what) for owner, due, what in actions]
+    assigned = [Action(owner=owner, due=end_of_day(due, where="--action"), what=what) for owner, due, what in actions]
+    for action in assigned:
+        if action.due < clock.now():
+            warn(f"the action of {action.owner} was due on {action.due:%Y-%m-%d}, which is past.")
     with opening((), passphrase_files, descriptors) as at_hand:
-        report, filed = close_drill(
+        report, filed, entry = close_drill(
             of_set, drill, findings=findings, actions=assigned, keys=signers(signer_files, at_hand)
         )
     if page is not None:
@@ -317,7 +328,7 @@ def close_(
         *(f"  finding: {finding}" for finding in report.findings),
         *(f"  action {i}: {one.owner}, by {one.due:%Y-%m-%d}: {one.what}" for i, one in enumerate(report.actions, 1)),
         f"Signed report: {report_file}" + (f"; for people: {page}" if page is not None else ""),
-        "Next: have the actions done, and enter each with `shares journal add SET resolved`.",
+        *prose(_after(folder, entry.sequence, len(report.actions))),
     ]
     members = {
         "done": report.passed,
@@ -334,55 +345,15 @@ def close_(
     ctx.exit(0 if report.passed else FAILED)
 
 
-@command.command("roster")
-@click.argument("folder", metavar="SET", callback=filled)
-@click.option(
-    "--cycle",
-    default="2y",
-    show_default=True,
-    metavar="INTERVAL",
-    callback=interval,
-    help="How far back rehearsals count as done.",
-)
-@click.option(
-    "--covers",
-    type=click.Choice(["pairs", "quorums"]),
-    help="What is to be covered.  [default: every quorum where there are 12 at most, else every pair]",
-)
-@click.option("--seed", type=int, default=0, show_default=True, help="Decides among rosters that are equally good.")
-@json_option
-def roster_(folder: str, cycle: timedelta, covers: Covers | None, seed: int, as_json: bool) -> None:
-    """Say who should rehearse with whom, so that all who can need each other recover together in few drills.
+def _after(folder: str, entry: int, actions: int) -> str:
+    """Say what comes after a drill is closed."""
+    if not actions:
+        return "Next: give the report to those who took part, and to whoever plans the next drill."
+    which = "1" if actions == 1 else f"1 to {actions}"
+    return (
+        f"Next: have the actions done, and enter each with `shares journal add {folder} resolved --entry {entry} "
+        f"--action {which} --how done`."
+    )
 
-    What past rehearsals of the SET have covered is left out. It tells who can recover: keep it like the policy.
 
-    \b
-    Example:
-      shares drill roster tide-archive
-    """
-    of_set = SetFolder(folder)
-    past = rehearsed_together(of_set.journal(), clock.now() - cycle)
-    found = roster(of_set.record.rule.to_rule(), past, covers=covers, seed=seed)
-    unit = "pair" if found.covers == "pairs" else "quorum"
-    lines = [
-        f"{len(found.drills)} drills for {of_set.record.label}, no fewer than {found.bound} ({found.bound_by}).",
-        *(f"  {number}: {', '.join(names)}" for number, names in enumerate(found.drills, 1)),
-        f"Found by: {found.method}. A whole cycle has {found.cycle}, and no cycle fewer than {found.cycle_bound}.",
-        f"Covered by past drills: {len(found.covered):,}; by these: {len(found.left):,}; counted by {unit}.",
-        *(line for note in found.notes for line in prose(note)),
-    ]
-    members = {
-        "done": True,
-        "covers": found.covers,
-        "drills": found.drills,
-        "bound": found.bound,
-        "bound_by": found.bound_by,
-        "method": found.method,
-        "cycle": found.cycle,
-        "cycle_bound": found.cycle_bound,
-        "covered": found.covered,
-        "left": found.left,
-        "apart": found.apart,
-        "notes": found.notes,
-    }
-    print_result(members, lines, as_json=as_json)
+command.add_command(roster.command)

@@ -9,7 +9,7 @@ from pathlib import Path
 import click
 
 from shares.cli.feeding import FeedsCommand
-from shares.cli.keys import key_option, opening, sign_option, signers, suite_option, trust_option
+from shares.cli.keys import UNSIGNED_ENTRY, key_option, opening, sign_option, signers, suite_option, trust_option
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -20,6 +20,7 @@ from shares.custody.entries import Purpose
 from shares.custody.parties import load_card
 from shares.custody.presented import Status, load_record, load_shares
 from shares.custody.recover import Recovery, recover
+from shares.documents.event import Dealt
 from shares.documents.party import OpenPartyKey
 from shares.documents.record import Record
 from shares.documents.wrapping import Suite
@@ -27,7 +28,7 @@ from shares.errors import ParameterError, VerificationError
 from shares.evidence.retire import is_retired
 from shares.history.files import RECORD_NAME
 from shares.history.folder import SetFolder
-from shares.history.journal import JOURNAL_NAME
+from shares.history.journal import JOURNAL_NAME, Journal
 from shares.storage import leftovers, write_new
 from shares.streams import new_file
 
@@ -37,13 +38,14 @@ EXPOSED = (
     "this machine has now held the secret and the shares used. "
     "Decide what becomes of both: return, replace by a date, or destroy."
 )
+UNRECORDED = "No journal tells of this recovery: where the set has one, enter it there."
 # After a recovery that was entered into the journal, which holds what was decided.
 KNOWN = "this machine has now held the secret and the shares used, and the set's journal says so. "
 RESOLVE = " Then enter that with `shares journal add`."
 NEXT = {
     "returned": KNOWN + "Bring each share back to its custodian, and wipe this machine.",
     "destroyed": KNOWN + "Destroy the key and these copies of the shares, before a witness, and wipe this machine.",
-    "replace": KNOWN + "Replace the key until {by:%Y-%m-%d}, and wipe this machine." + RESOLVE,
+    "replace": KNOWN + "Replace the key by {by:%Y-%m-%d}, and wipe this machine." + RESOLVE,
 }
 
 
@@ -162,13 +164,14 @@ def command(
         signing = signers(signer_files, at_hand) if journaled else []
         if journaled:
             journaled.require_signers(signing)
-            if is_retired(journaled.journal()):
-                warn("the journal says that this set was retired, and its shares destroyed: ask where these are from.")
         recovery = recover(load_shares(files, at_hand.share), record)
         _require_encrypted(recovery, encrypted_file, optional=card is not None)
         if journaled and purpose:
             _enter(journaled, purpose, recovery, signing)
+    cautions = _cautions(journaled.journal(), journaled.record) if journaled else []
     if not as_json:
+        for caution in cautions:
+            warn(f"{caution}.")
         for finding in recovery.findings:
             if finding.status is not Status.INTACT:
                 warn(f"{finding.source} is {finding.status}: {finding.reason}.")
@@ -201,8 +204,9 @@ def command(
             to_file(recovery.secret, Path(target))
         elif fed:
             to_command(recovery.secret, fed, output=STANDARD_ERROR if as_json else None)
-        members = {**_members(recovery, went, against), "journaled": journaled is not None}
-        lines = _lines(recovery, went, against, purpose=purpose)
+        members = {**_members(recovery, went, against), "journaled": journaled is not None, "cautions": cautions}
+        notes = [UNRECORDED] if journaled is None else [] if signer_files else [f"Caution: {UNSIGNED_ENTRY}"]
+        lines = _lines(recovery, went, against, purpose, notes)
         print_result(members, lines, as_json=as_json, aside=bool(fed))
 
 
@@ -241,11 +245,34 @@ def _purpose(reason: str | None, disposition: str | None, persons: tuple[str, ..
 def _enter(folder: SetFolder, purpose: Purpose, recovery: Recovery, signing: list[OpenPartyKey]) -> None:
     """Enter the recovery; where that cannot be done, nothing is let go."""
     try:
-        purpose.enter(folder, recovery.used, signing)
+        purpose.enter(folder, _opened(recovery, folder), signing)
     except BaseException:
         recovery.secret.close()
         recovery.payload.close()
         raise
+
+
+def _cautions(journal: Journal, record: Record) -> list[str]:
+    """Caution where the journal says that the set should not be recovered, or cannot be relied on."""
+    dealt = any(isinstance(one.event, Dealt) and one.event.record == record.fingerprint for one in journal.entries)
+    found = {
+        "the journal says that this set was retired, and its shares destroyed: ask where these are from": is_retired(
+            journal
+        ),
+        "the journal does not hold: `shares journal verify` says where": any(
+            problem.breaks for problem in journal.problems
+        ),
+        "the journal does not tell of this set's dealing: it is another's, or its beginning is gone": not dealt,
+    }
+    return [caution for caution, applies in found.items() if applies]
+
+
+def _opened(recovery: Recovery, folder: SetFolder) -> list[str]:
+    """Return whose shares of the set were opened here: those used first, and those that were not needed."""
+    apart = (Status.FOREIGN, Status.OTHER_EPOCH, Status.UNKNOWN)
+    others = [one.custodian for one in recovery.findings if one.custodian is not None and one.status not in apart]
+    named = {custodian.name for custodian in folder.record.custodians}
+    return [name for name in dict.fromkeys([*recovery.used, *others]) if name in named]
 
 
 def _signers(record: Record) -> str:
@@ -311,9 +338,10 @@ def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
     }
 
 
-def _lines(recovery: Recovery, went: str, against: str, purpose: Purpose | None) -> list[str]:
+def _lines(recovery: Recovery, went: str, against: str, purpose: Purpose | None, notes: list[str]) -> list[str]:
     return [
         f"Recovered{f': {recovery.label}' if recovery.label else ''}, from {', '.join(recovery.used)}.",
         f"Checked against {against}; the secret was {went}.",
+        *(line for note in notes for line in prose(note)),
         *prose(f"Next: {EXPOSED if purpose is None else NEXT[purpose.disposition].format(by=purpose.by)}"),
     ]

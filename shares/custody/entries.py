@@ -145,10 +145,19 @@ class Purpose:
         for kept in _DISPOSITIONS:
             if disposition == kept:
                 return cls(reason, kept, None, tuple(persons))
-        return cls(reason, "replace", end_of_day(disposition), tuple(persons))
+        try:
+            return cls(reason, "replace", end_of_day(disposition), tuple(persons))
+        except ParameterError as error:
+            problem = error.what
+        raise ParameterError(f"{problem}, nor `returned` or `destroyed`", where="--disposition")
 
-    def enter(self, folder: SetFolder, used: Sequence[str], keys: Sequence[OpenPartyKey]) -> Entry:
+    def enter(self, folder: SetFolder, opened: Sequence[str], keys: Sequence[OpenPartyKey]) -> Entry:
         """Enter the recovery into the journal, before the secret goes anywhere.
+
+        Args:
+            folder: the set's.
+            opened: whose shares of the set were opened here, whether they were needed or not: all are known now.
+            keys: of the parties that sign.
 
         Raises:
             ParameterError: the policy asks for two signatures, and fewer parties sign.
@@ -156,7 +165,7 @@ class Purpose:
         """
         event = Recovered(
             what="recovered",
-            custodians=tuple(used),
+            custodians=tuple(opened),
             persons=self.persons,
             reason=self.reason,
             disposition=self.disposition,
@@ -165,8 +174,12 @@ class Purpose:
         return folder.append(event, keys=keys)
 
 
-def end_of_day(date: str) -> datetime:
+def end_of_day(date: str, *, where: str | None = None) -> datetime:
     """Return the last second of a day, UTC.
+
+    Args:
+        date: like ``2026-12-31``.
+        where: which option says it, for the refusal.
 
     Raises:
         ParameterError: it is no date like ``2026-12-31``.
@@ -180,4 +193,4 @@ def end_of_day(date: str) -> datetime:
             return datetime(int(form[1]), int(form[2]), int(form[3]), 23, 59, 59, tzinfo=UTC)
         except ValueError:
             pass
-    raise ParameterError("it is no date like 2026-12-31, nor `returned` or `destroyed`", where=date)
+    raise ParameterError("it is no date like 2026-12-31", where=where)

@@ -159,6 +159,18 @@ class DrillOpened(Document):
     """How soon the secret is to be recovered, in seconds from the opening."""
 
 
+class Brought(Document):
+    """Shares of the set were brought to a rehearsal and opened there, before anything was done with them.
+
+    Whatever comes of it, that machine and whoever was present may have known them since.
+    """
+
+    what: Literal["brought"]
+    drill: Sequence
+    custodians: Names
+    persons: Texts
+
+
 class Rehearsed(Document):
     """A quorum tried to recover in a drill, or custodians answered in one of attendance.
 
@@ -166,7 +178,7 @@ class Rehearsed(Document):
         drill: the number of the entry that opened it.
         custodians: whose shares were used, or who answered.
         persons: who was present.
-        outcome: ``passed``, or what went wrong, in words.
+        outcome: ``passed``, with what was set aside, or what went wrong.
         seconds: how long the recovery itself took.
         probe: the exit code of the command that was fed, where one was.
     """
@@ -343,6 +355,7 @@ Event: TypeAlias = (
     | Challenged
     | Attested
     | DrillOpened
+    | Brought
     | Rehearsed
     | DrillClosed
     | Recovered

@@ -34,7 +34,7 @@ def close_drill(
     actions: Sequence[Action] = (),
     keys: Sequence[OpenPartyKey],
     at: datetime | None = None,
-) -> tuple[DrillReport, NamedDigest]:
+) -> tuple[DrillReport, NamedDigest, Entry]:
     """Close a drill with a signed report, filed in the set's folder and entered into the journal.
 
     Args:
@@ -46,7 +46,7 @@ def close_drill(
         at: the time; now by default.
 
     Returns:
-        The report, and the file that it is in.
+        The report, the file that it is in, and the entry that names it.
 
     Raises:
         ParameterError: nobody signs, or a text out of range.
@@ -64,8 +64,7 @@ def close_drill(
         report = report.signed(key)
     filed = folder.add(folder.free_name(f"drills/{drill.number}/report.json"), report.to_file())
     event = DrillClosed(what="drill-closed", drill=drill.number, passed=report.passed)
-    folder.append(event, keys=keys, documents=[filed], time=at)
-    return report, filed
+    return report, filed, folder.append(event, keys=keys, documents=[filed], time=at)
 
 
 def _report(
@@ -133,7 +132,7 @@ def _shown(folder: SetFolder, drill: Drill) -> Iterator[str]:
         yield "nothing was rehearsed"
     for entry in drill.rehearsals:
         if isinstance(entry.event, Rehearsed) and entry.event.outcome != "passed":
-            yield entry.event.outcome
+            yield entry.event.outcome if entry.event.passed else f"a rehearsal failed: {entry.event.outcome}"[:MAX_TEXT]
     if _too_slow(drill):
         took, target = in_words(drill.recovered or 0), in_words(drill.event.target or 0)
         yield f"recovered {took} after the call; the target is {target}"
@@ -166,7 +165,12 @@ def _rehearsed_in_words(event: Rehearsed) -> str:
     if event.probe is not None:
         probed = f"; the probe ended with code {event.probe} after {in_words(event.probe_seconds or 0)}"
     names = ", ".join(event.custodians) or "no usable share"
-    return f"rehearsed by {names}, in {in_words(event.seconds)}: {event.outcome}{probed}"
+    return f"rehearsed by {names}, in {in_words(event.seconds)}: {how_it_went(event)}{probed}"
+
+
+def how_it_went(event: Rehearsed) -> str:
+    """Say how a rehearsal went, in words."""
+    return event.outcome if event.passed else f"failed: {event.outcome}"
 
 
 def report_page(report: DrillReport) -> bytes:

@@ -20,6 +20,7 @@ from typing import Literal
 
 from shares.documents.event import (
     Attested,
+    Brought,
     Dealt,
     Departed,
     DrillKind,
@@ -147,6 +148,7 @@ def exposure(life: Life) -> tuple[Known, ...]:
         life: of the set, up to the time of the audit.
     """
     kinds: dict[int, DrillKind] = {entry.sequence: event.kind for entry, event in life.each(DrillOpened)}
+    brought: dict[int, frozenset[str]] = {}
     withdrawn = {entry for (entry, action), event in life.resolved.items() if not action and event.how == "no exposure"}
     ledgers = [_Ledger(life, 0, None, life.record.created)] if life.dealt is None else []
     left: dict[str, datetime] = {}
@@ -177,7 +179,12 @@ def exposure(life: Life) -> tuple[Known, ...]:
             case Lost():
                 what = f"may have found the lost copy of {event.custodian}, entry {number}"
                 ledger.add_people((), [event.custodian], what)
-            case Rehearsed() if kinds.get(event.drill, "recovery") == "recovery":
+            case Brought():
+                brought[event.drill] = frozenset(event.custodians)
+                ledger.add_recovery(number, event.persons, event.custodians, "a drill")
+            case Rehearsed() if not brought.get(event.drill, frozenset()).issuperset(event.custodians) and (
+                kinds.get(event.drill, "recovery") == "recovery"
+            ):
                 ledger.add_recovery(number, event.persons, event.custodians, "a recovery drill")
             case Recovered():
                 ledger.add_recovery(number, event.persons, event.custodians, "a recovery")

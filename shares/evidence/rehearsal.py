@@ -18,7 +18,7 @@ from typing import Self, TypeAlias
 from shares.custody.presented import Presented, Status
 from shares.custody.recover import Recovery, recover
 from shares.documents.entry import Entry
-from shares.documents.event import Rehearsed
+from shares.documents.event import Brought, Rehearsed
 from shares.documents.members import MAX_TEXT, check_text
 from shares.documents.party import OpenPartyKey
 from shares.documents.record import Record
@@ -35,12 +35,14 @@ class Rehearsal:
     """How one rehearsal went.
 
     Attributes:
+        brought: whose shares of the set itself were opened.
         entry: what was entered into the journal.
         event: the same, for short.
         recovery: what was recovered, its secrets wiped unless it is worthless; None where nothing was.
         failure: why it failed, with its exit code; None where it passed.
     """
 
+    brought: tuple[str, ...]
     entry: Entry
     event: Rehearsed
     recovery: Recovery | None
@@ -88,6 +90,7 @@ def rehearse(
     folder.require_signers(keys)
     for person in persons:
         check_text(person)
+    real = _of_set(presented, folder.record)
     if drill.event.kind == "attendance":
         raise ParameterError(
             "nothing is recovered in a drill of attendance", hint="`shares attest check` takes the answers"
@@ -96,14 +99,22 @@ def rehearse(
     if practice and probe:
         raise ParameterError("a practice secret opens nothing", hint="leave the command out")
     record = practice_record(folder) if practice else folder.record
+    if real:
+        # Before the secret can go anywhere: what is known from here on is known, even where this run is killed.
+        folder.append(
+            Brought(what="brought", drill=drill.number, custodians=real, persons=tuple(persons)), keys=keys, time=at
+        )
     started = time.monotonic()
     recovery: Recovery | None = None
     failure: SharesError | None = None
     status: int | None = None
     probing = 0.0
     try:
-        if practice:
-            _refuse_real_shares(presented, folder.record)
+        if practice and real:
+            raise VerificationError(
+                f"real shares were brought to a drill of practice: of {', '.join(real)}",
+                hint="whoever was present may have seen them: enter it with `shares journal add SET incident`",
+            )
         recovery = recover(presented, record)
         if probe:
             began = time.monotonic()
@@ -124,7 +135,7 @@ def rehearse(
     event = Rehearsed(
         what="rehearsed",
         drill=drill.number,
-        custodians=_brought(presented, recovery, record),
+        custodians=recovery.used if recovery else _of_set(presented, record),
         persons=tuple(persons),
         passed=failure is None,
         outcome=_outcome(recovery, failure)[:MAX_TEXT],
@@ -132,16 +143,14 @@ def rehearse(
         probe=status,
         probe_seconds=round(probing) if status is not None else None,
     )
-    return Rehearsal(folder.append(event, keys=keys, time=at), event, recovery, failure)
+    return Rehearsal(real, folder.append(event, keys=keys, time=at), event, recovery, failure)
 
 
-def _refuse_real_shares(presented: Sequence[Presented], record: Record) -> None:
-    real = [one.share.custodian for one in presented if one.share is not None and one.share.set == record.set]
-    if real:
-        raise VerificationError(
-            f"real shares were brought to a drill of practice: of {', '.join(real)}",
-            hint="whoever was present may have seen them: enter it with `shares journal add SET incident`",
-        )
+def _of_set(presented: Sequence[Presented], record: Record) -> tuple[str, ...]:
+    """Return whose shares of a record's set were opened."""
+    named = {custodian.name for custodian in record.custodians}
+    found = (one.share.custodian for one in presented if one.share is not None and one.share.set == record.set)
+    return tuple(dict.fromkeys(name for name in found if name in named))
 
 
 def _exit_code(status: int | None) -> int:
@@ -149,18 +158,9 @@ def _exit_code(status: int | None) -> int:
     return 255 if status is None else status if status >= 0 else 128 - status
 
 
-def _brought(presented: Sequence[Presented], recovery: Recovery | None, record: Record) -> tuple[str, ...]:
-    """Return whose shares were used, or, where nothing was recovered, whose were brought."""
-    if recovery:
-        return recovery.used
-    named = {custodian.name for custodian in record.custodians}
-    found = (one.share.custodian for one in presented if one.share is not None and one.share.set == record.set)
-    return tuple(dict.fromkeys(name for name in found if name in named))
-
-
 def _outcome(recovery: Recovery | None, failure: SharesError | None) -> str:
     if failure:
-        return f"failed: {failure.what}"
+        return failure.what
     aside = [
         f"{one.custodian or one.source} is {one.status}"
         for one in (recovery.findings if recovery else ())

@@ -46,6 +46,8 @@ def heads_in(text: str) -> list[Head]:
 def _quoted(value: object) -> Iterator[tuple[int, str]]:
     """Find what has the form of a head, however deep: documents quote them under names of their own."""
     match value:
+        case {"sequence": bool()}:
+            return  # JSON's true is a number to Python, and none here.
         case {"sequence": int(number), "head": str(head)} if re.fullmatch(r"[A-Z2-7]{4}(-[A-Z2-7]{4}){7}", head):
             yield number, head
         case dict():

@@ -16,6 +16,7 @@ from shares import clock
 from shares.documents.event import (
     Acknowledged,
     Attested,
+    Brought,
     Challenged,
     Copied,
     Dealt,
@@ -83,6 +84,8 @@ def _said(event: Event) -> str:
             return _attested(event)
         case DrillOpened():
             return f"drill of {event.kind} opened for {_all(event.custodians)}: {event.scope}"
+        case Brought():
+            return f"shares of {_all(event.custodians)} brought to drill {event.drill}, and opened there"
         case Rehearsed():
             passed = "passed" if event.passed else f"failed, {event.outcome}"
             return f"drill {event.drill} rehearsed by {_all(event.custodians)} in {event.seconds} s: {passed}"

@@ -16,7 +16,7 @@ from cryptography.hazmat.primitives import serialization
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Rehearsed
+from shares.documents.event import Brought, Rehearsed
 from shares.history.journal import load_journal
 
 OFFICE = "harbour-office"
@@ -153,8 +153,35 @@ def test_real_shares_at_a_drill_of_practice_are_named(harbour: Harbour) -> None:
     done = run("drill", "rehearse", harbour.place.set, harbour.place.shares[0], *practice(harbour, NAMES[1], NAMES[2]))
     assert done.code == 4
     assert "real shares were brought to a drill of practice" in done.out
+    assert "this machine has now held the shares brought" in done.out.replace("\n", " ")
+    (brought,) = [one.event for one in load_journal(harbour.place.set).entries if isinstance(one.event, Brought)]
+    assert brought.custodians == (harbour.place.shares[0].name.removesuffix(".share.json"),)
     assert "incident" in done.err
     assert SECRET.decode().strip() not in done.out + done.err
+
+
+def test_a_run_that_its_probe_kills_has_entered_whose_shares_it_opened(harbour: Harbour) -> None:
+    """What the probe got is known from then on, whatever becomes of the program that gave it."""
+    number = opened(harbour, "recovery")
+    stolen = harbour.folder / "stolen"
+    arguments = ["drill", "rehearse", harbour.place.set, *harbour.place.shares, "--present", "A. Keeper"]
+    killed = spawn(*arguments, "--", "sh", "-c", f"cat > {stolen}; kill -9 $PPID")
+    assert (killed.code, stolen.read_bytes()) == (-9, SECRET)
+    *_, last = load_journal(harbour.place.set).entries
+    assert isinstance(last.event, Brought)
+    assert (last.event.drill, last.event.persons) == (number, ("A. Keeper",))
+    assert set(last.event.custodians) == set(NAMES[:3])
+    told = run("audit", harbour.place.set, "--json").json["sets"][0]["exposure"]
+    (keeper,) = [one for one in told if one["who"] == "A. Keeper"]
+    assert set(keeper["shares"]) == set(NAMES[:3]) or keeper["recoveries"]
+
+
+def test_practice_shares_at_a_drill_of_recovery_expose_nothing(harbour: Harbour) -> None:
+    opened(harbour, "recovery")
+    done = run("drill", "rehearse", harbour.place.set, *practice(harbour, *NAMES[:2]))
+    assert done.code == 4
+    assert "has now held" not in done.out
+    assert "brought" not in events(harbour)
 
 
 def test_a_drill_of_attendance_is_answered(harbour: Harbour) -> None:
@@ -205,7 +232,11 @@ def test_bad_input_is_refused_and_changes_nothing(harbour: Harbour) -> None:
         (["drill", "rehearse", folder, share, "--drill", "3", "--"], 2, "no command after --"),
         (["drill", "rehearse", folder, share, "--drill", "9"], 2, "there is no drill 9; known: 2, 3"),
         (["drill", "close", folder, "--drill", "2"], 2, "--sign"),
-        (["drill", "close", folder, "--drill", "2", *signing(harbour), "--action", "x", "soon", "y"], 2, "soon"),
+        (
+            ["drill", "close", folder, "--drill", "2", *signing(harbour), "--action", "x", "soon", "y"],
+            2,
+            "no date",
+        ),
     ):
         assert_refused(arguments, code, word, watched=harbour.place.folder)
 

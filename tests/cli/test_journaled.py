@@ -154,13 +154,37 @@ def test_a_recovery_is_entered_with_its_reason(harbour: Harbour) -> None:
     words = ["--reason", "the disk failed", "--disposition", "2027-01-31", "--present", "A. Keeper"]
     done = run("recover", *place.shares[:2], "--record", place.record, "--check", *words)
     assert done.code == 0
-    assert "Replace the key until 2027-01-31" in done.out.replace("\n", " ")
+    assert "Replace the key by 2027-01-31" in done.out.replace("\n", " ")
     *_, event = events(place)
     assert isinstance(event, Recovered)
     assert (event.reason, event.disposition, event.persons) == ("the disk failed", "replace", ("A. Keeper",))
     assert set(event.custodians) == {share.name.removesuffix(".share.json") for share in place.shares[:2]}
     assert event.by is not None
     assert event.by.isoformat() == "2027-01-31T23:59:59+00:00"
+
+
+def test_every_share_that_was_opened_is_entered_needed_or_not(harbour: Harbour) -> None:
+    place = harbour.place
+    place.split()
+    assert run("recover", *place.shares, "--record", place.record, *PURPOSE, "--check").code == 0
+    *_, event = events(place)
+    assert isinstance(event, Recovered)
+    assert set(event.custodians) == set(NAMES[:3])
+
+
+def test_a_recovery_beside_a_journal_that_does_not_hold_says_so(harbour: Harbour) -> None:
+    place = harbour.place
+    place.split()
+    append(place.set, Noted(what="noted", remark="all is well"))
+    journal = place.set / "journal.jsonl"
+    _, rest = journal.read_bytes().split(b"\n", 1)
+    journal.write_bytes(rest)  # The line of the dealing is gone.
+    done = run("recover", *place.shares[:2], "--record", place.record, *PURPOSE, "--check")
+    assert done.code == 0
+    assert "the journal does not hold" in done.err
+    assert "does not tell of this set's dealing" in done.err
+    told = run("recover", *place.shares[:2], "--record", place.record, *PURPOSE, "--check", "--json")
+    assert (told.err, len(told.json["cautions"])) == ("", 2)
 
 
 def test_a_recovery_that_cannot_be_entered_lets_nothing_go(harbour: Harbour) -> None:

@@ -8,6 +8,7 @@ from __future__ import annotations
 import json
 
 import pytest
+from attested import answered, challenge
 from history.making import events, lines_of, text_of
 from hypothesis import given
 from hypothesis import strategies as st
@@ -36,6 +37,10 @@ def test_a_head_is_found_however_it_was_noted(text: str) -> None:
     assert heads_in(text) == [HEAD]
 
 
+def test_one_is_found_in_an_answer_to_a_challenge() -> None:
+    assert heads_in(answered(challenge(head=HEAD)).to_file().decode()) == [HEAD]
+
+
 def test_several_are_found_in_their_order() -> None:
     other = head_of(4, bytes(32))
     assert heads_in(f"{HEAD.words()}\n{other.words()}\n") == [HEAD, other]
@@ -45,7 +50,9 @@ def test_several_are_found_in_their_order() -> None:
     "text",
     [
         "", "57", HEAD.head, f"57 {HEAD.head[:-1]}", f"57 {HEAD.head}-AAAA", "{}", '{"journal": null}', "[" * 100_000,
-        f"0 {HEAD.head}", f"{2**32} {HEAD.head}", f"{10**30} {HEAD.head}", '{"sequence": 1, "head": "x"}', "\ud800",
+        f"0 {HEAD.head}", f"{2**32} {HEAD.head}", f"{10**30} {HEAD.head}",
+        f'{{"sequence": true, "head": "{HEAD.head}"}}',
+        '{"sequence": 1, "head": "x"}', "\ud800",
     ],
 )  # fmt: skip
 def test_what_holds_none_is_refused(text: str) -> None:
