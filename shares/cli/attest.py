@@ -21,7 +21,7 @@ from shares.cli.attested import (
     who_answers,
 )
 from shares.cli.intervals import interval
-from shares.cli.keys import cards_by_name, key_option, opening, sign_option, signers
+from shares.cli.keys import cards_by_name, key_option, opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -53,7 +53,8 @@ def command() -> None:
         --passphrase-file harbour-office.passphrase
       shares attest answer challenge.json --record record.json --share north-pier.share.json \\
         --sign north-pier.key.json --passphrase-file north-pier.passphrase --to north-pier.answer.json
-      shares attest check challenge.json north-pier.answer.json --set tide-archive --card north-pier.card.json
+      shares attest check challenge.json north-pier.answer.json --set tide-archive --card north-pier.card.json \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
 
 
@@ -299,9 +300,11 @@ def check_(
     judged = iter(results)
     told = [(one, next(judged) if one.attestation is not None else None) for one in given]
     code = check_code(told, whole=True)
+    if any(one.entry for one in results):
+        warn_unsigned(signer_files, as_json=as_json)
     print_result(
         check_members(told, asked, silent, code),
-        check_lines(told, asked, silent, entered=folder is not None, signed=bool(signer_files)),
+        check_lines(told, asked, silent, entered=folder is not None),
         as_json=as_json,
     )
     ctx.exit(code)

@@ -105,6 +105,7 @@ def answer_members(made: Attestation, asked: Challenge, target: str) -> dict[str
         "file": target,
         **made.public("custodian", "grade", "result", "carrier", "opened", "time"),
         "challenge": made.challenge.hex(),
+        "journal": made.journal.model_dump() if made.journal else None,
         "asker": asked.card.public("name", "fingerprint"),
         "signed_by_share": made.share_signature is not None,
         "card": made.card.fingerprint if made.card else None,
@@ -126,6 +127,9 @@ def answer_lines(made: Attestation, asked: Challenge, target: str) -> list[str]:
         lines.append(f"It is late: due was {clock.to_text(asked.due)}.")
     if made.card is None:
         lines += prose(UNATTRIBUTED)
+    if made.journal is not None:
+        note = "keep a copy, and an audit can see by it that the journal was not rewritten since."
+        lines += prose(f"It says where the journal of the set stood, {made.journal.words()}: {note}")
     lines += prose(NEXT.get(made.result, WHAT_IT_IS))
     if made.carrier == "paper":
         lines += prose("Destroy the file that was typed from paper; seal the sheet again, and note the new serial.")
@@ -179,9 +183,7 @@ def _member(given: GivenAnswer, found: Entered | None) -> dict[str, object]:
     }
 
 
-def check_lines(
-    told: Sequence[Told], asked: Challenge, silent: Sequence[str], *, entered: bool, signed: bool
-) -> list[str]:
+def check_lines(told: Sequence[Told], asked: Challenge, silent: Sequence[str], *, entered: bool) -> list[str]:
     """Tell what was found of each answer, who is silent, and what it all proves."""
     lines = [_line(given, found) for given, found in told]
     counting = sum(found is not None and found.judgement.counts for _, found in told)
@@ -192,8 +194,6 @@ def check_lines(
         lines.append("All who were asked have answered.")
     if counting:
         lines += prose(PROVES)
-    if entered and not signed and any(found and found.entry for _, found in told):
-        lines.append("The entries are unsigned: an audit says so. --sign KEY signs them.")
     if not entered:
         lines.append("Nothing was entered: --set SET files and enters them.")
     return lines

@@ -7,7 +7,7 @@ from pathlib import Path
 import click
 
 import shares
-from shares.cli.keys import opening, sign_option, signers
+from shares.cli.keys import opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.clock import to_text
@@ -43,7 +43,8 @@ def command() -> None:
     \b
     Example:
       shares ceremony script policy.toml --to ceremony
-      shares ceremony log tide-archive --script ceremony/script.json --step 1 --initials "A.K."
+      shares ceremony log tide-archive --script ceremony/script.json --step 1 --initials "A.K." \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
       shares ceremony report tide-archive --html report.html
     """
 
@@ -203,9 +204,11 @@ def log_(
 
     \b
     Examples:
-      shares ceremony log tide-archive --script ceremony/script.json --step 1 --initials "A.K., R.W."
+      shares ceremony log tide-archive --script ceremony/script.json --step 1 --initials "A.K., R.W." \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
       shares ceremony log tide-archive --step 7 --initials "A.K." --exception "the clock was 3 minutes slow" \\
-        --remedy "set by the second clock, seen by both witnesses"
+        --remedy "set by the second clock, seen by both witnesses" \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     if exception is None and step is None:
         raise ParameterError("--step N is needed", hint="an exception alone may have none")
@@ -230,6 +233,7 @@ def log_(
         several = len(logged.skipped) > 1
         which = f"steps {ranges(logged.skipped)}, which come" if several else f"step {logged.skipped[0]}, which comes"
         warn(f"there is no entry yet of {which} before it.")
+    warn_unsigned(signer_files, as_json=as_json)
     print_result(_log_members(logged, step), _log_lines(logged, step, exception), as_json=as_json)
 
 

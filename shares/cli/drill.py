@@ -11,7 +11,7 @@ from shares import clock
 from shares.cli import roster
 from shares.cli.feeding import FeedsCommand
 from shares.cli.intervals import interval
-from shares.cli.keys import key_option, opening, sign_option, signers
+from shares.cli.keys import key_option, opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -127,6 +127,7 @@ def open_(
         )
         if target is not None and asked is not None:
             write_new(target, asked.to_file(), secret=True)
+    warn_unsigned(signer_files, as_json=as_json)
     within = drill.event.target
     lines = [
         f"Drill {drill.number} is open: {kind}, {of_set.record.label}.",
@@ -205,6 +206,7 @@ def rehearse_(
         presented = load_shares(files, at_hand.share)
         probe = _probe(words, encrypted_file) if words else None
         done = rehearse(of_set, drill, presented, probe=probe, persons=persons, keys=signing)
+    warn_unsigned(signer_files, as_json=as_json)
     with done:
         print_result(_members(drill, done), _lines(drill, done), as_json=as_json)
     if done.failure is not None:

@@ -15,7 +15,7 @@ import click
 
 from shares import clock
 from shares.cli.heads import heads_given
-from shares.cli.keys import opening, sign_option, signers
+from shares.cli.keys import opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, progress, prose, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_card
@@ -155,7 +155,8 @@ def add(
     Examples:
       shares journal add tide-archive received --custodian north-pier --serial HT-0031 \\
         --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
-      shares journal add tide-archive noted --remark "The safe of the light-house was replaced on Monday"
+      shares journal add tide-archive noted --remark "The safe of the light-house was replaced on Monday" \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     set_folder, time = SetFolder(folder), clock.now()
     card = None if card_file is None else load_card(card_file)
@@ -182,9 +183,11 @@ def add(
         cards = () if card is None else (card,)
         made = append_with(set_folder, event, attached, keys=keys, cards=cards, time=time)
     stands = made.head()
-    for line in _cautions(made):
+    found = _cautions(made)
+    for line in () if as_json else found:
         warn(line)
-    members = {"done": True, **_entry_members(made, None), "head": stands.public("sequence", "head")}
+    warn_unsigned(signer_files, as_json=as_json)
+    members = {"done": True, **_entry_members(made, None), "head": stands.public("sequence", "head"), "cautions": found}
     lines = [f"Added: {words(event)}.", *_next(event), f"The journal stands at {stands.words()}."]
     print_result(members, lines, as_json=as_json)
 

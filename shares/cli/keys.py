@@ -14,7 +14,7 @@ from typing import Any, TypeVar
 
 import click
 
-from shares.cli.output import filled
+from shares.cli.output import filled, warn
 from shares.cli.passphrases import GivenPassphrases
 from shares.custody.opening import Opening
 from shares.custody.parties import load_card, load_key
@@ -23,6 +23,10 @@ from shares.documents.wrapping import SUITES
 from shares.errors import ParameterError
 
 Function = TypeVar("Function", bound=Callable[..., Any])
+
+UNSIGNED_ENTRY = (
+    "the entry is unsigned, and cannot be signed later: an audit says so for good. --sign KEY signs it when it is made."
+)
 
 key_option = click.option(
     "--key",
@@ -68,6 +72,17 @@ def opening(keys: tuple[str, ...], files: tuple[str, ...], descriptors: tuple[st
 def signers(paths: tuple[str, ...], at_hand: Opening) -> list[OpenPartyKey]:
     """Return the party keys that sign, opened; ``at_hand`` wipes them."""
     return [at_hand.party(load_key(path)) for path in paths]
+
+
+def warn_unsigned(signer_files: tuple[str, ...], *, as_json: bool = False) -> None:
+    """Caution that nobody has signed an entry of the journal; programs see that by its signers.
+
+    Args:
+        signer_files: what ``--sign`` gave.
+        as_json: whether a program reads the result.
+    """
+    if not signer_files and not as_json:
+        warn(UNSIGNED_ENTRY)
 
 
 def cards_by_name(given: tuple[str, ...], names: list[str], *, option: str) -> dict[str, PartyCard]:

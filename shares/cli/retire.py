@@ -7,7 +7,7 @@ from typing import Any, TypeVar
 
 import click
 
-from shares.cli.keys import opening, sign_option, signers
+from shares.cli.keys import opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.clock import to_text
@@ -129,7 +129,8 @@ def destroyed_(
     \b
     Example:
       shares retire destroyed tide-archive --custodian north-pier --by "the keeper of the north pier" \\
-        --witness "an auditor from outside" --method "shredded crosswise" --affidavit scan.pdf
+        --witness "an auditor from outside" --method "shredded crosswise" --affidavit scan.pdf \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     of_set = SetFolder(folder)
     with opening((), passphrase_files, descriptors) as at_hand:
@@ -137,6 +138,7 @@ def destroyed_(
         meant, entry = destroyed(
             of_set, custodian, copy=copy, by=by, witness=witness, method=method, affidavit=affidavit, keys=keys
         )
+    warn_unsigned(signer_files, as_json=as_json)
     _tell(of_set, meant, entry, f"destroyed by {by}, seen by {witness}", MEANS_OF_ERASURE, as_json=as_json)
 
 
@@ -167,12 +169,14 @@ def lost_(
     \b
     Example:
       shares retire lost tide-archive --custodian dry-dock --by "the dock master" \\
-        --witness "an auditor from outside" --reason "not in the safe after the flood of 2027"
+        --witness "an auditor from outside" --reason "not in the safe after the flood of 2027" \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     of_set = SetFolder(folder)
     with opening((), passphrase_files, descriptors) as at_hand:
         keys = signers(signer_files, at_hand)
         meant, entry = lost(of_set, custodian, copy=copy, by=by, witness=witness, reason=reason, keys=keys)
+    warn_unsigned(signer_files, as_json=as_json)
     _tell(of_set, meant, entry, f"given up as lost by {by}, before {witness}", LOST_CAUTION, as_json=as_json)
 
 
@@ -246,6 +250,7 @@ def close_(
     }
     if not as_json:
         warn(CLOSING_CAUTION)
+    warn_unsigned(signer_files, as_json=as_json)
     print_result(members, lines, as_json=as_json)
 
 

@@ -1,7 +1,7 @@
 """The attestation: a custodian's answer to a challenge, signed by the share itself, by the custodian, or by both.
 
 Source: ISO/IEC 9798-3 (the answer names the challenge, whose nonce is fresh); FORMAT_EVIDENCE.md, sec. 17.
-May import: shares.documents.base, .event, .members, .party, .share, .signing.
+May import: shares.documents.base, .entry, .event, .members, .party, .share, .signing.
 Secret: the share that signs, and the party key, passed through. Confidential: the answer. Public: its signatures' keys.
 Does not: judge: whether the signatures fit, and the answer its challenge, is for ``evidence.judge`` to say.
 """
@@ -15,6 +15,7 @@ from pydantic import model_validator
 from pydantic_core import PydanticCustomError
 
 from shares.documents.base import Document, write_text
+from shares.documents.entry import Head
 from shares.documents.event import Grade
 from shares.documents.members import Digest, Epoch, Name, SetId, Signature, Text, Time, Version
 from shares.documents.party import OpenPartyKey, PartyCard
@@ -37,6 +38,7 @@ class Attestation(Document):
 
     Attributes:
         challenge: the digest of the challenge that this answers.
+        journal: where the set's journal stood, as that challenge says: a note of it that the custodian signs.
         grade: ``content``: the share was read; ``sealed``: pack and seal were seen; ``present``: attendance.
         result: what was found.
         carrier: what the share was read from, where it was read.
@@ -56,6 +58,7 @@ class Attestation(Document):
     epoch: Epoch
     custodian: Name
     challenge: Digest
+    journal: Head | None
     time: Time
     grade: Grade
     result: Result

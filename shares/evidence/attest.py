@@ -218,6 +218,7 @@ def answer(
         epoch=record.epoch,
         custodian=custodian,
         challenge=challenge.digest(),
+        journal=challenge.journal,
         time=time,
         grade=grade,
         result=result,

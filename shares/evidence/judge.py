@@ -187,6 +187,9 @@ def _foreign(attestation: Attestation, challenge: Challenge, record: Record) -> 
         return [Problem(Flaw.OTHER_EPOCH, f"it is about epoch {attestation.epoch}, not {record.epoch}")]
     if attestation.challenge != challenge.digest():
         return [Problem(Flaw.OTHER_CHALLENGE, "it answers another challenge: an old answer proves nothing now")]
+    if attestation.journal != challenge.journal:
+        what = "it says that the journal stood elsewhere than the challenge says: it answers another challenge"
+        return [Problem(Flaw.OTHER_CHALLENGE, what)]
     if attestation.custodian not in challenge.custodians:
         return [Problem(Flaw.NOT_ASKED, "this challenge does not ask this custodian")]
     if (attestation.grade == "present") != (challenge.purpose == "attendance"):

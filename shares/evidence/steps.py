@@ -33,8 +33,8 @@ def title(role: str) -> str:
 
 
 def signing(dual_control: bool) -> str:
-    """Return the options by which an entry gets the two signatures that dual control asks for."""
-    return f" --sign {INTERNAL}.key.json --sign {ADMINISTRATOR}.key.json" if dual_control else ""
+    """Return the options by which an entry is signed: by the dealer, and under dual control by a witness as well."""
+    return f" --sign {DEALER}.key.json" + (f" --sign {INTERNAL}.key.json" if dual_control else "")
 
 
 def folder_name(label: str) -> str:

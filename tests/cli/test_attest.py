@@ -15,6 +15,7 @@ from cli.terminal import on_terminal
 from parties import unlocked
 
 from shares import clock
+from shares.cli.keys import UNSIGNED_ENTRY
 from shares.documents.attestation import Attestation
 from shares.documents.challenge import Challenge
 from shares.documents.event import Attested, Introduced
@@ -110,6 +111,8 @@ def test_a_round_from_the_question_to_the_journal(quay: Quay) -> None:
     assert "Signed by the share and by north-pier, card " in first.out
     assert "Challenge by harbour-office, card " in first.err
     assert "an answer proves possession to whoever asked" in first.err
+    assert challenge.journal is not None
+    assert f"where the journal of the set stood, {challenge.journal.words()}" in first.out.replace("\n", " ")
     assert "sealed pack" not in first.out
     assert quay.answer_file("north-pier").stat().st_mode & 0o777 == 0o600
     quay.answer("south-pier", "--sealed", "--serial", "TB-0017")
@@ -159,7 +162,7 @@ def test_all_good_is_exit_code_0(quay: Quay) -> None:
     assert done.code == 0
     assert "2 of 2 count toward the margin" in done.out
     assert "All who were asked have answered." in done.out
-    assert "The entries are unsigned" in done.out
+    assert UNSIGNED_ENTRY in done.err
 
 
 def test_every_command_says_the_same_in_json(quay: Quay) -> None:
@@ -181,6 +184,7 @@ def test_every_command_says_the_same_in_json(quay: Quay) -> None:
         "card": None,
         "late": False,
     }
+    assert answered.json["journal"] == asked["journal"] is not None
     quay.answer_file("junk").write_text("{}")
     checked = run(*quay.check_arguments("north-pier", "junk", more=("--record", quay.place.record, "--json")))
     assert (checked.code, checked.json["done"], checked.json["silent"]) == (4, False, list(NAMES[1:]))

@@ -15,8 +15,10 @@ from cli.harness import NAMES, Place, assert_refused, files_in, run, spawn
 from cli.terminal import on_terminal
 from parties import party
 
+from shares.cli.keys import UNSIGNED_ENTRY
 from shares.custody.parties import write_party
 from shares.documents.ceremony_script import CeremonyScript
+from shares.history.journal import load_journal
 
 POLICIES = Path(__file__).resolve().parents[2] / "examples" / "policies"
 
@@ -123,12 +125,15 @@ def test_who_works_and_keeps_a_share_is_cautioned_about(folder: Path) -> None:
 def test_steps_are_logged_and_the_next_is_told(folder: Path) -> None:
     script = scripted(folder)
     first = run(*logging(folder, "--step", "1"))
-    assert (first.code, first.err) == (0, "")
+    unsigned = f"Caution: {UNSIGNED_ENTRY}\n"
+    assert (first.code, first.err) == (0, unsigned)
     assert f"Logged: step 1 of {len(script.steps)}, done, " in first.out
     assert "Next: step 2, ceremony administrator: Examine the policy" in first.out
     third = run(*logging(folder, "--step", "4", "--remark", "no video"))
-    assert third.err == "Caution: there is no entry yet of steps 2, 3, which come before it.\n"
-    told = run("ceremony", "log", folder / "set", "--initials", "A.K.", "--step", "3", "--json").json
+    assert third.err == "Caution: there is no entry yet of steps 2, 3, which come before it.\n" + unsigned
+    fourth = run("ceremony", "log", folder / "set", "--initials", "A.K.", "--step", "3", "--json")
+    assert fourth.err == ""
+    told = fourth.json
     assert (told["entry"], told["step"], told["skipped"], told["next"]) == (3, 3, [2], 5)
     last = run(*logging(folder, "--step", str(len(script.steps))))
     assert "Next: no later step is left." in last.out
@@ -245,7 +250,7 @@ def test_every_command_of_a_script_runs_as_it_is_printed(
     Path("secret").write_bytes(b"made up")
     everyone = (*NAMES[:3], "dealer", "internal-witness", "external-witness", "administrator")
     known = {name: f"--passphrase-file={name}={harbour.phrase(name)}" for name in everyone}
-    two = ["--sign", "internal-witness.key.json", "--sign", "administrator.key.json"] if dual else []
+    two = ["--sign", "dealer.key.json", *(["--sign", "internal-witness.key.json"] if dual else [])]
     for number, step in enumerate(script.steps, start=1):
         for words in of_script(step.command or ""):
             for name in NAMES[:3] if "NAME.key.json" in words else ("SERIAL",):
@@ -253,6 +258,8 @@ def test_every_command_of_a_script_runs_as_it_is_printed(
                 ran(told, known)
         log = f"ceremony log tide-archive-root --script script.json --step {number} --initials X".split()
         ran([*log, *two], known)
+    journal = load_journal(Path("tide-archive-root"))
+    assert {len(journal.signers(entry)) for entry in journal.entries} == {2 if dual else 1}
     told = run("ceremony", "report", "tide-archive-root", "--json").json
     assert (told["complete"], told["exceptions"], told["problems"]) == (True, [], [])
     assert [(share["custodian"], share["sent"]) for share in told["shares"]] == [(name, "SERIAL") for name in NAMES[:3]]

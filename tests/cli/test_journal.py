@@ -16,6 +16,7 @@ from history.making import key, note, set_folder
 from history.test_folder import POLICY, with_policy
 from parties import party
 
+from shares.cli.keys import UNSIGNED_ENTRY
 from shares.history.journal import append, load_journal
 from shares.history.reports import NEEDS
 
@@ -118,8 +119,9 @@ def test_a_departure_says_until_when_and_cautions(folder: Path) -> None:
 def test_cautions_stand_where_they_matter(folder: Path, arguments: list[str], words: list[str]) -> None:
     done = run("journal", "add", folder, *arguments)
     assert done.code == 0
-    assert done.err.count("Caution:") == len(words)
-    assert all(word in done.err for word in words)
+    assert done.err.count("Caution:") == len(words) + 1
+    assert all(word in done.err for word in (*words, f"Caution: {UNSIGNED_ENTRY}"))
+    assert run("journal", "add", folder, *arguments, "--json").err == ""
 
 
 def test_a_card_is_introduced_with_the_usual_caution(folder: Path) -> None:

@@ -10,6 +10,7 @@ from cli.harbour import Harbour
 from cli.harness import NAMES, Place, assert_refused, files_in, run
 from cli.terminal import on_terminal
 
+from shares.cli.keys import UNSIGNED_ENTRY
 from shares.clock import from_text
 from shares.history.journal import load_journal
 
@@ -35,10 +36,12 @@ def test_a_set_from_what_is_held_to_its_end(dealt: Place) -> None:
         assert_refused(retiring(dealt, "close"), 4, words, "shares retire lost", watched=dealt.folder)
         done = run(*destroying(dealt, name, "--method", "shredded crosswise"))
         assert (done.code, "Caution: deleting is not destroying" in done.err) == (0, True)
+        assert UNSIGNED_ENTRY in done.err
         assert f"Entered: {name}'s copy (original), destroyed by A. Person, seen by B. Person" in done.out
     assert "Next: `shares retire close` ends the set." in done.out
     closed = run(*retiring(dealt, "close"))
     assert (closed.code, "cannot prove that nothing is left" in closed.err) == (0, True)
+    assert UNSIGNED_ENTRY in closed.err
     assert "5 copies were destroyed." in closed.out
     told = run(*retiring(dealt, "status", "--json")).json
     assert (told["retired"], told["held"], {copy["fate"] for copy in told["copies"]}) == (True, 0, {"destroyed"})
@@ -59,6 +62,7 @@ def test_what_is_lost_is_not_said_to_be_destroyed(dealt: Place) -> None:
     assert_refused(losing, 2, "Missing option '--reason'", watched=dealt.folder)
     done = run(*losing, "--reason", "the flood of 2027")
     assert (done.code, "Caution: it was not destroyed" in done.err) == (0, True)
+    assert UNSIGNED_ENTRY in done.err
     closed = run(*retiring(dealt, "close"))
     assert "4 copies were destroyed.\nNot destroyed but lost: north-pier, original: lost, by A. Person" in closed.out
     assert "Exposure stays." in closed.out
@@ -113,11 +117,13 @@ def test_a_changed_journal_ends_nothing(dealt: Place) -> None:
 def test_who_signs_stands_in_the_journal(harbour: Harbour) -> None:
     place = harbour.place
     signing = ["--sign", harbour.key("auditor-east"), *harbour.known("auditor-east")]
-    assert run(*destroying(place, "registrar", *signing, "--json")).json["left"][0] == "north-pier (original)"
+    done = run(*destroying(place, "registrar", *signing, "--json"))
+    assert (done.json["left"][0], done.err) == ("north-pier (original)", "")
+    assert UNSIGNED_ENTRY not in run(*destroying(place, "dry-dock", *signing)).err
     journal = load_journal(place.set)
     assert [card.name for card in journal.signers(journal.entries[-1])] == ["auditor-east"]
     before = files_in(place.set)
-    with on_terminal(*destroying(place, "dry-dock", "--sign", harbour.key("registrar"))) as terminal:
+    with on_terminal(*destroying(place, "light-house", "--sign", harbour.key("registrar"))) as terminal:
         terminal.answer("Passphrase of registrar:", "a wrong one")
         terminal.wait_for("Passphrase of registrar:")
         terminal.type("\x03")

@@ -347,6 +347,7 @@ OF_ATTESTATION: dict[str, dict[str, Any]] = {
     "a short share signature": {"share_signature": "A" * 85},
     "a short party signature": {"party_signature": "A" * 85},
     "a challenge in capitals": {"challenge": "AB" * 32},
+    "a head without its number": {"journal": {"head": SAMPLES["challenge"]["record"]}},
 }
 PER_SAMPLE |= {
     "challenge": {**some(*COMMON, *FACTS[:-1], *LABEL), **OF_CHALLENGE},

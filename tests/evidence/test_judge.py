@@ -18,6 +18,7 @@ from strategies import crooked_split, flat, flipped, with_rows
 
 from shares.documents.attestation import Attestation
 from shares.documents.challenge import Challenge
+from shares.documents.entry import head_of
 from shares.documents.record import Record
 from shares.errors import EpochMismatchError, SetMismatchError, VerificationError
 from shares.evidence.judge import KEPT, TOLERANCE, Earlier, Flaw, Judgement, check_challenge, judge
@@ -52,6 +53,8 @@ def test_a_good_answer_counts() -> None:
 
 TO_OTHERS = challenge(custodians=("south-pier",))
 ATTENDANCE = challenge(purpose="attendance", drill=3)
+HEAD = head_of(12, bytes(range(32)))
+NOTED = challenge(head=HEAD)
 UNSIGNED_CHANGES = {"set": OTHER.set.hex(), "epoch": 2, "custodian": "south-pier", "remark": "x", "opened": True}
 
 
@@ -60,6 +63,11 @@ CASES: dict[str, tuple[Attestation, dict[str, Any], set[Flaw]]] = {
     "another set": (altered(GOOD, set=OTHER.set.hex()), {}, {Flaw.OTHER_SET}),
     "another epoch": (altered(GOOD, epoch=2), {}, {Flaw.OTHER_EPOCH}),
     "an old answer": (GOOD, {"asked": challenge()}, {Flaw.OTHER_CHALLENGE}),
+    "another head of the journal": (altered(GOOD, journal=HEAD.public("sequence", "head")), {},
+        {Flaw.OTHER_CHALLENGE}),
+    "the challenge's head": (answered(NOTED), {"asked": NOTED}, set()),
+    "no head where the challenge has one": (altered(answered(NOTED), journal=None), {"asked": NOTED},
+        {Flaw.OTHER_CHALLENGE}),
     "somebody not asked": (altered(answered(challenge()), challenge=TO_OTHERS.digest().hex()),
         {"asked": TO_OTHERS}, {Flaw.NOT_ASKED}),
     "a seal where attendance is asked": (altered(sealed(CHALLENGE), challenge=ATTENDANCE.digest().hex()),

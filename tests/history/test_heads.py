@@ -8,6 +8,7 @@ from __future__ import annotations
 import json
 
 import pytest
+from attested import answered, challenge
 from history.making import events, lines_of, text_of
 from hypothesis import given
 from hypothesis import strategies as st
@@ -34,6 +35,10 @@ HEAD = head_of(57, bytes(range(32)))
 )
 def test_a_head_is_found_however_it_was_noted(text: str) -> None:
     assert heads_in(text) == [HEAD]
+
+
+def test_one_is_found_in_an_answer_to_a_challenge() -> None:
+    assert heads_in(answered(challenge(head=HEAD)).to_file().decode()) == [HEAD]
 
 
 def test_several_are_found_in_their_order() -> None:

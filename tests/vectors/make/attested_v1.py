@@ -46,7 +46,7 @@ def answer(flat: Dealing, asked: Json, custodian: str, signer: Json | None, **sa
     """Make an answer, signed by the share where its content was seen, and by the party, where there is one."""
     digest = hashlib.sha256(b"shares/v1/challenge" + by_hand.canonical(asked)).hexdigest()
     made: Json = {"kind": "attestation", "version": 1, "set": asked["set"], "epoch": asked["epoch"]}
-    made |= {"custodian": custodian, "challenge": digest}
+    made |= {"custodian": custodian, "challenge": digest, "journal": asked["journal"]}
     for name in ("time", "grade", "result", "carrier", "opened", "place", "serial", "remark"):
         made[name] = said.get(name)
     over = made | {"card": signer["fingerprint"] if signer else None}
