@@ -93,7 +93,12 @@ def _silent(life: Life) -> Iterator[Task]:
 
 
 def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:
-    passed = [row.closed for row in drills if row.closed and row.passed and row.kind != "attendance"]
+    # What was shown was shown when it was rehearsed: a report that comes late moves nothing.
+    passed = [
+        row.opened + timedelta(seconds=row.took)
+        for row in drills
+        if row.passed and row.took is not None and row.kind != "attendance"
+    ]
     since = max(passed, default=life.start)
     last = f"the last one passed {since:%Y-%m-%d}" if passed else "none has passed yet"
     return _task(life, "drill", f"hold a drill of recovery or practice: {last}", since + life.intervals.drill_every)

@@ -12,9 +12,25 @@ import pytest
 from kept import NAMES, OFFICE, PEOPLE, Kept, day, policy_text
 from parties import card, unlocked
 
-from shares.documents.event import Departed, HandedOn, Incident, Introduced, Resolved
+from shares.documents.drill_report import DrillReport
+from shares.documents.event import (
+    Departed,
+    Destroyed,
+    DrillClosed,
+    HandedOn,
+    Incident,
+    Introduced,
+    Lost,
+    Recovered,
+    Rehearsed,
+    Resolved,
+    Retired,
+)
+from shares.evidence.after_action import close_drill
 from shares.evidence.attest import answer
 from shares.evidence.audited import CustodianRow, Reason, Verdict
+from shares.evidence.drill import open_drill, the_drill
+from shares.evidence.rehearsal import rehearse
 from shares.evidence.rounds import enter
 from shares.history.journal import append
 
@@ -173,3 +189,163 @@ def test_a_card_that_was_planted_before_the_split_is_forgotten_at_it(tmp_path: P
         (entered,) = enter(kept.set, challenge, [one], keys=[key], time=day(2))
     assert entered.judgement.attributed is False
     assert row(kept, 3).status == "unattributed"
+
+
+# A set's end.
+
+
+def end(kept: Kept, kind: type[Destroyed] | type[Lost], witness: str = "auditor-east") -> None:
+    for name in NAMES:
+        more = {"reason": "a flood"} if kind is Lost else {}
+        members = {"what": kind.model_fields["what"].annotation.__args__[0], "custodian": name, "copy": "original"}  # type: ignore[union-attr]
+        kept.append(kind.model_validate({**members, "by": PEOPLE[name], "witness": witness, **more}), day(20))
+    kept.append(Retired(what="retired", keep_until=day(800)), day(21))
+
+
+def test_a_set_that_was_destroyed_before_a_witness_is_at_its_end(kept: Kept) -> None:
+    end(kept, Destroyed)
+    assert found(kept, 700) == {}
+
+
+def test_what_was_lost_is_no_end(kept: Kept) -> None:
+    end(kept, Lost)
+    reasons = found(kept, 700)
+    assert (reasons["retired-with-lost"].level, reasons["retired-with-lost"].about) == (Verdict.AT_RISK, NAMES)
+    assert {"one-knows-a-quorum", "loss-open"} <= set(reasons)
+
+
+def test_who_knew_a_quorum_is_not_forgotten_with_the_set(kept: Kept) -> None:
+    event = Incident(what="incident", custodians=NAMES, persons=("a thief",), exposed=True, due=day(20), remark="seen")
+    kept.append(event, day(12))
+    kept.append(Departed(what="departed", person=HOLDER, custodians=(), due=day(14)), day(13))
+    end(kept, Destroyed)
+    reasons = found(kept, 700)
+    assert reasons["one-knows-a-quorum"].level is Verdict.AT_RISK
+    assert {"incident-open", "departure-open"} <= set(reasons)
+    assert {task.kind for task in kept.audit(day(700)).tasks} == {"incident", "departure"}
+
+
+@pytest.mark.parametrize("witness", ["keeper ONE", NAME, "keeper six"])
+@pytest.mark.parametrize("kind", [Destroyed, Lost])
+def test_a_witness_who_is_no_third_party_is_a_false_claim(
+    kept: Kept, witness: str, kind: type[Destroyed] | type[Lost]
+) -> None:
+    kept.append(HandedOn(what="handed-on", custodian=NAME, to="keeper six"), day(11))
+    kept.append(HandedOn(what="handed-on", custodian=NAME, to="keeper seven"), day(12))
+    end(kept, kind, witness)
+    assert found(kept)["claim"].level is Verdict.BROKEN
+    assert "no third party" in found(kept)["claim"].what
+
+
+def test_only_a_key_that_was_replaced_ends_a_replacement(kept: Kept) -> None:
+    gave = Recovered(
+        what="recovered", custodians=NAMES[:3], persons=(), reason="a fire", disposition="replace", by=day(13)
+    )
+    number = kept.append(gave, day(12)).sequence
+    for how in ("done", "no exposure", "refreshed"):
+        kept.append(Resolved(what="resolved", entry=number, how=how), day(13))  # type: ignore[arg-type]
+    kept.append(Resolved(what="resolved", entry=number, action=1, how="key replaced"), day(13))
+    assert "replacement-overdue" in found(kept)
+    kept.append(Resolved(what="resolved", entry=number, how="key replaced"), day(13))
+    assert "replacement-overdue" not in found(kept)
+
+
+def test_an_action_that_is_done_fills_no_place(kept: Kept) -> None:
+    number = kept.append(Departed(what="departed", person=HOLDER, custodians=(), due=day(13)), day(12)).sequence
+    kept.append(Resolved(what="resolved", entry=number, action=1, how="no exposure"), day(12))
+    assert row(kept).status == "departed"
+    assert "departure-open" in found(kept)
+
+
+# Files that are gone.
+
+
+@pytest.mark.parametrize("name", ["policy.toml", "journal.jsonl"])
+def test_without_policy_or_journal_a_set_is_at_risk(tmp_path: Path, name: str) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text())
+    (kept.folder / name).unlink()
+    assert kept.audit(day(1)).verdict is Verdict.AT_RISK
+    (kept.folder / name).mkdir()
+    assert kept.audit(day(1)).verdict.rank >= Verdict.AT_RISK.rank
+
+
+# Drills.
+
+
+def test_a_report_that_comes_late_puts_the_next_drill_off_by_nothing(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, "recovery", keys=[key], at=day(12))[0].number
+        drill = the_drill(kept.set.journal(), number)
+        people = list(PEOPLE.values())
+        rehearse(kept.set, drill, [kept.share(name) for name in NAMES], persons=people, keys=[key], at=day(13)).close()
+        close_drill(kept.set, drill, keys=[key], at=day(150))
+    (task,) = [one for one in kept.audit(day(151)).tasks if one.kind == "drill"]
+    assert task.due == day(13 + 180)
+
+
+def test_a_rehearsal_without_a_quorum_did_not_pass(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, "recovery", keys=[key], at=day(12))[0].number
+        event = Rehearsed(
+            what="rehearsed", drill=number, custodians=NAMES[:2], persons=(), passed=True, outcome="passed", seconds=1
+        )
+        kept.append(event, day(12))
+        close_drill(kept.set, the_drill(kept.set.journal(), number), keys=[key], at=day(13))
+    audited = kept.audit(day(30))
+    assert [reason.code for reason in audited.reasons if reason.level is Verdict.BROKEN] == ["claim"] * 2
+    assert audited.drills[-1].passed is False
+
+
+def forged(kept: Kept, number: int, *, signed: bool = True, **told: object) -> None:
+    """File and enter a report that tells otherwise than the true one, and close its drill by it."""
+    true = DrillReport.parse((kept.folder / f"drills/{number}/report.json").read_bytes())
+    with unlocked(OFFICE) as key:
+        report = true.model_copy(update={"signatures": (), **told})
+        report = report.signed(key) if signed else report
+    named = kept.set.add(f"drills/{number}/other.json", report.to_file())
+    kept.append(DrillClosed(what="drill-closed", drill=number, passed=report.passed), day(29), documents=[named])
+
+
+def test_a_report_that_nobody_signed_is_a_false_claim(kept: Kept) -> None:
+    number = kept.drill("recovery", day(12), NAMES[:3])
+    forged(kept, number, signed=False)
+    assert "nobody signed" in found(kept)["claim"].what
+
+
+def test_a_report_of_success_of_a_drill_that_was_too_slow_is_a_false_claim(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text(recover_within="2h"))
+    number = kept.drill("recovery", day(12), NAMES[:3], hours=3)
+    assert "claim" not in found(kept)
+    forged(kept, number, passed=True)
+    assert "longer than its target" in found(kept)["claim"].what
+
+
+def test_attendance_is_what_the_answers_prove(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        drill, challenge = open_drill(kept.set, "attendance", keys=[key], at=day(12))
+        assert challenge
+        kept.answer(challenge, NAMES[:2], day(13), grade="present")
+        kept.answer(challenge, NAMES[2:], day(20), grade="present")  # These were late.
+        close_drill(kept.set, the_drill(kept.set.journal(), drill.number), keys=[key], at=day(21))
+    audited = kept.audit(day(30))
+    assert (audited.drills[-1].passed, "claim" in found(kept)) == (False, False)
+    forged(kept, drill.number, passed=True, findings=())
+    assert "no quorum answered in time" in found(kept)["claim"].what
+    assert kept.audit(day(30)).drills[-1].passed is False
+
+
+def test_attendance_that_was_true_is_believed(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        drill, challenge = open_drill(kept.set, "attendance", keys=[key], at=day(12))
+        assert challenge
+        kept.answer(challenge, NAMES[:3], day(13), grade="present")
+        close_drill(kept.set, the_drill(kept.set.journal(), drill.number), keys=[key], at=day(21))
+    assert (kept.audit(day(30)).drills[-1].passed, found(kept)) == (True, {})
+
+
+def test_real_shares_at_a_drill_of_practice_are_known_to_those_present(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        drill, _ = open_drill(kept.set, "practice", keys=[key], at=day(12))
+        rehearse(kept.set, drill, [kept.share(name) for name in NAMES], persons=["a guest"], keys=[key], at=day(12))
+    known = {one.who: one for one in kept.audit(day(13)).exposure}
+    assert (known["a guest"].recovered, known["the machines of recoveries"].suffices) == (True, True)
