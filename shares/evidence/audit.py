@@ -32,6 +32,7 @@ from shares.documents.record import Record
 from shares.errors import SharesError
 from shares.evidence import reasons
 from shares.evidence.audited import Audit, Counts, DrillRow, ExceptionRow, Reason, Signer, Verdict
+from shares.evidence.belief import Belief
 from shares.evidence.drill import drills
 from shares.evidence.exposure import exposure
 from shares.evidence.filed import Filed, read_filed
@@ -42,7 +43,7 @@ from shares.evidence.strays import find_strays
 from shares.evidence.tasks import OUTLIVES, tasks
 from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, Files
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL, Journal, read_journal
-from shares.history.verify import head_problems, verify
+from shares.history.verify import head_problems, numbered, verify
 
 _BEFORE_SPLIT = (ScriptStep, Deviation, Noted, Introduced, Acknowledged, SetAside)
 """All that happens before a split."""
@@ -75,8 +76,10 @@ def audit(
     found.reasons += reasons.record_reasons(record, trusted)
     policy = found.policy(files, record)
     journal, filed = found.journal(files, record, policy, trusted)
-    life = Life.until(now, record, policy, journal.entries)
-    later = len(journal.entries) - len(life.entries)
+    belief = Belief.of(journal, trusted)
+    life = Life.until(now, record, policy, journal.entries, belief)
+    later = sum(entry.time > now for entry in journal.entries)
+    found.not_believed(belief.not_believed(journal))
     found.later(later, by_choice=at is not None)
     found.practice(files, life)
     audited = _worked_out(files, life, journal, filed, found)
@@ -261,7 +264,7 @@ class _Findings:
             return Journal(), Filed()
         try:
             journal = read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL))
-            filed = read_filed(journal, files, record, policy)
+            filed = read_filed(journal, files, record, policy, Belief.of(journal, trusted))
             strays = find_strays(files, self.names, journal, set_id=record.set, read=filed.read)
             self.heads = tuple(dict.fromkeys((*filed.heads, *strays.heads, *self.heads)))
             problems = verify(journal, files, record, policy, heads=self.heads, trusted=trusted)
@@ -274,6 +277,12 @@ class _Findings:
         self.reasons += [*found, *reasons.claim_reasons(filed.claims), *missing]
         self.notes += notes
         return journal, filed
+
+    def not_believed(self, numbers: Sequence[int]) -> None:
+        """Say of which entries the good news is not believed."""
+        if numbers:
+            listed = numbered(numbers)
+            self.notes.append(f"Good news is not believed where nobody whom you trust has signed it: {listed}.")
 
     def later(self, count: int, *, by_choice: bool) -> None:
         """Say that entries bear a later time than that of the audit."""

@@ -34,6 +34,7 @@ from shares.documents.policy import Policy, folded
 from shares.documents.record import Record
 from shares.errors import SharesError
 from shares.evidence.audited import Proof
+from shares.evidence.belief import ALL_BELIEVED, Belief
 from shares.evidence.judge import Earlier, Judgement, judge
 from shares.history.files import Files
 from shares.history.holders import Holders
@@ -62,7 +63,9 @@ class Filed:
     claims: list[str] = field(default_factory=list)
 
 
-def read_filed(journal: Journal, files: Files, record: Record, policy: Policy | None = None) -> Filed:
+def read_filed(
+    journal: Journal, files: Files, record: Record, policy: Policy | None, belief: Belief = ALL_BELIEVED
+) -> Filed:
     """Read what a journal names, and judge it again with public material alone; never raises for what files hold.
 
     Args:
@@ -70,12 +73,13 @@ def read_filed(journal: Journal, files: Files, record: Record, policy: Policy | 
         files: of the set.
         record: the set's.
         policy: the set's, where it has one: who leaves, and with which shares.
+        belief: who is believed to tell whose card is whose.
     """
+    names = [custodian.name for custodian in record.custodians]
+    holders, believed = Holders(names, policy), Holders(names, policy)
     # Attestations of an earlier epoch cannot be judged by this record, and prove nothing of it.
-    holders = Holders((custodian.name for custodian in record.custodians), policy)
-    reader = _Reader(
-        files, record, holders, record.rule.to_rule(), begun=not any(_deals(entry, record) for entry in journal.entries)
-    )
+    begun = not any(_deals(entry, record) for entry in journal.entries)
+    reader = _Reader(files, record, holders, believed, record.rule.to_rule(), belief, begun)
     for entry in journal.entries:
         reader.read(entry)
     return reader.filed
@@ -85,8 +89,11 @@ def read_filed(journal: Journal, files: Files, record: Record, policy: Policy | 
 class _Reader:
     files: Files
     record: Record
+    # Who holds what by all entries, and by those alone that are believed.
     holders: Holders
+    believed: Holders
     rule: Rule
+    belief: Belief
     begun: bool
     filed: Filed = field(default_factory=Filed)
     challenges: dict[bytes, Challenge | None] = field(default_factory=dict)
@@ -102,6 +109,8 @@ class _Reader:
     def read(self, entry: Entry) -> None:
         event = entry.event
         self.holders.take(event)
+        if (held := self.belief.held(entry)) is not None:
+            self.believed.take(held)
         match event:
             case Dealt():
                 self.begun = self.begun or _deals(entry, self.record)
@@ -165,15 +174,17 @@ class _Reader:
                 asked=self.asked[event.challenge],
             )
         else:
+            # An entry is no false claim where it is only not believed whose card it was.
+            known = self.believed.cards.get(event.custodian) == self.holders.cards.get(event.custodian)
             proof = Proof(
                 time=min(attestation.time, entry.time) if attestation else entry.time,
                 entry=entry.sequence,
                 grade=event.grade,
                 result=event.result,
-                attributed=judgement.attributed,
+                attributed=judgement.attributed and known,
                 late=judgement.late,
                 opened=event.opened,
-                counts=judgement.accepted and judgement.attributed and judgement.whole,
+                counts=judgement.accepted and judgement.attributed and judgement.whole and known,
                 asked=self.asked[event.challenge],
             )
         self.filed.proofs[entry.sequence] = proof

@@ -2,7 +2,7 @@
 
 Source: none.
 May import: shares.documents, shares.history.holders, shares.history.reports, shares.planning.labels,
-shares.sharing.rule, shares.evidence.audited.
+shares.sharing.rule, shares.evidence.audited, .belief.
 Secret: nothing. Confidential: persons, sites and events. Public: the record.
 Does not: judge what the journal says, or whether it can be believed; ``evidence.audit`` does.
 """
@@ -20,6 +20,7 @@ from shares.documents.event import Dealt, Departed, Event, Resolved
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.evidence.audited import Intervals
+from shares.evidence.belief import ALL_BELIEVED, Belief
 from shares.history.holders import Holders
 from shares.history.reports import RESPOND_WITHIN
 from shares.planning import labels
@@ -41,17 +42,27 @@ class Life:
         policy: its policy, where it has one that fits.
         entries: no later than ``at``.
         at: the time that counts as now.
+        belief: whose good news is believed.
     """
 
     record: Record
     policy: Policy | None
     entries: tuple[Entry, ...]
     at: datetime
+    belief: Belief = ALL_BELIEVED
 
     @classmethod
-    def until(cls, at: datetime, record: Record, policy: Policy | None, entries: Iterable[Entry]) -> Life:
-        """Return the life of a set up to a time; entries that bear a later one are left out."""
-        return cls(record, policy, tuple(entry for entry in entries if entry.time <= at), at)
+    def until(
+        cls,
+        at: datetime,
+        record: Record,
+        policy: Policy | None,
+        entries: Iterable[Entry],
+        belief: Belief = ALL_BELIEVED,
+    ) -> Life:
+        """Return the life of a set up to a time: entries of a later one are left out, and so is what is not believed."""
+        told = (belief.told(entry) for entry in entries if entry.time <= at)
+        return cls(record, policy, tuple(entry for entry in told if entry is not None), at, belief)
 
     @cached_property
     def rule(self) -> Rule:
@@ -117,8 +128,9 @@ class Life:
         """Whose places each departure empties, by the number of its entry: all that the person held then among them."""
         holders, found = Holders(self.names, self.policy), dict[int, tuple[str, ...]]()
         for entry in self.entries:
-            names = holders.take(entry.event)
-            if isinstance(entry.event, Departed):
+            event = self.belief.held(entry)
+            names = holders.take(event) if event else ()
+            if isinstance(event, Departed):
                 found[entry.sequence] = names
         return found
 

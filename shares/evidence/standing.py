@@ -130,7 +130,8 @@ class Standings:
     def __init__(self, life: Life, proofs: Mapping[int, Proof]) -> None:
         self._life = life
         self._all = {name: _Standing(name, life.people[name], life.start) for name in life.names}
-        copies = take_inventory(Journal(life.entries), life.record).copies
+        counted = [entry for entry in life.entries if not self._is_doubted(entry.sequence, entry.event)]
+        copies = take_inventory(Journal(tuple(counted)), life.record).copies
         own = {
             name: [copy for copy in copies if (copy.custodian, copy.epoch) == (name, life.record.epoch)]
             for name in life.names
@@ -206,6 +207,11 @@ class Standings:
                     one.leave("departed", f"{event.person} has left, entry {number}", number)
                     one.card = None
                 return touched
+            case HandedOn() if self._is_doubted(number, event):
+                # Something may have touched the share; that somebody has it now is not believed.
+                for one in (touched := self._of(event.custodian)):
+                    one.forget(number)
+                return touched
             case HandedOn():
                 # Handing on changes who holds the share, and not what was found of it.
                 for one in (touched := self._of(event.custodian)):
@@ -219,6 +225,9 @@ class Standings:
                     self._ends(one, number)
                 return touched
         return []
+
+    def _is_doubted(self, number: int, event: Event) -> bool:
+        return number in self._life.belief.doubted and isinstance(event, Destroyed | HandedOn)
 
     def _ends(self, one: _Standing, number: int) -> None:
         """Empty the place where the last copy came to its end; what was lost is not said to be destroyed."""

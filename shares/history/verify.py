@@ -37,7 +37,7 @@ def verify(
         journal: as ``read_journal`` read it.
         files: those of its set.
         record: the set's.
-        policy: the set's, where there is one: whether two parties sign each entry.
+        policy: the set's, where there is one: whether two parties sign each entry, of those trusted if some are given.
         heads: where the journal is known to have stood: noted elsewhere, or quoted in attestations and reports.
         trusted: cards whose fingerprints were compared; where some are given, one of these parties signs each entry.
 
@@ -134,9 +134,11 @@ def _signer_problems(journal: Journal, policy: Policy | None, trusted: Sequence[
         what = f"{_entries(unsigned)} not signed: whoever could write to the file may have written that"
         yield Problem(unsigned[0], what, breaks=False, kind="trust")
     if policy is not None and policy.dual_control:
-        alone = those(len(keys) < 2 for keys in signers)
+        # Where parties are trusted, anybody's second key is no second party.
+        alone = those(len(keys & known if known else keys) < 2 for keys in signers)
         if alone:
-            what = f"{_entries(alone)} signed by fewer than two parties, and the policy asks for dual control"
+            whom = "parties whose cards are trusted" if known else "parties"
+            what = f"{_entries(alone)} signed by fewer than two {whom}, and the policy asks for dual control"
             yield Problem(alone[0], what, kind="control")
     if known:
         # Those that nobody signed are told above.
@@ -160,8 +162,12 @@ def head_problems(journal: Journal, heads: Iterable[Head]) -> Iterator[Problem]:
         yield Problem(0, f"it never stood at {head.words()}, as was noted elsewhere: {lost}", kind="head")
 
 
-def _entries(numbers: Sequence[int]) -> str:
-    """Write ascending numbers in a few words, with the verb: ``entries 1, 3 to 7 are``."""
+def numbered(numbers: Sequence[int]) -> str:
+    """Write ascending numbers of entries in a few words.
+
+    >>> numbered([1, 3, 4, 5, 7]), numbered([2])
+    ('entries 1, 3 to 5, 7', 'entry 2')
+    """
     runs: list[list[int]] = []
     for number in numbers:
         if runs and number == runs[-1][-1] + 1:
@@ -169,4 +175,9 @@ def _entries(numbers: Sequence[int]) -> str:
         else:
             runs.append([number])
     said = ", ".join(f"{run[0]} to {run[1]}" if len(run) > 1 else str(run[0]) for run in runs)
-    return f"entry {said} is" if len(numbers) == 1 else f"entries {said} are"
+    return f"entry {said}" if len(numbers) == 1 else f"entries {said}"
+
+
+def _entries(numbers: Sequence[int]) -> str:
+    """Write the same with the verb: ``entries 1, 3 to 7 are``."""
+    return f"{numbered(numbers)} {'is' if len(numbers) == 1 else 'are'}"

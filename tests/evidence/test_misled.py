@@ -6,6 +6,7 @@ Checked against: what the person who keeps the journal, or who once held a share
 from __future__ import annotations
 
 import shutil
+from collections.abc import Sequence
 from pathlib import Path
 
 import pytest
@@ -14,13 +15,16 @@ from parties import card, unlocked
 
 from shares.documents.drill_report import DrillReport
 from shares.documents.event import (
+    Dealt,
     Departed,
     Destroyed,
     DrillClosed,
+    Event,
     HandedOn,
     Incident,
     Introduced,
     Lost,
+    Noted,
     Recovered,
     Rehearsed,
     Resolved,
@@ -28,7 +32,7 @@ from shares.documents.event import (
 )
 from shares.evidence.after_action import close_drill
 from shares.evidence.attest import answer
-from shares.evidence.audited import CustodianRow, Reason, Verdict
+from shares.evidence.audited import Audit, CustodianRow, Reason, Verdict
 from shares.evidence.drill import open_drill, the_drill
 from shares.evidence.rehearsal import rehearse
 from shares.evidence.rounds import enter
@@ -349,3 +353,108 @@ def test_real_shares_at_a_drill_of_practice_are_known_to_those_present(kept: Kep
         rehearse(kept.set, drill, [kept.share(name) for name in NAMES], persons=["a guest"], keys=[key], at=day(12))
     known = {one.who: one for one in kept.audit(day(13)).exposure}
     assert (known["a guest"].recovered, known["the machines of recoveries"].suffices) == (True, True)
+
+
+# Who says so.
+
+
+def foreign(kept: Kept, event: Event, at: float, *, cards: Sequence[str] = ()) -> int:
+    """Enter what nobody signs whom the audit trusts: by a party of the stranger's own making, or by none."""
+    with unlocked("dry-dock") as key:
+        introduced = [card(name) for name in cards]
+        return append(kept.folder, event, keys=[key] if cards else [], cards=introduced, time=day(at)).sequence
+
+
+def trusting(kept: Kept, at: float = 30) -> Audit:
+    return kept.audit(day(at), trusted=[card(OFFICE)])
+
+
+def codes(audited: Audit) -> set[str]:
+    return {reason.code for reason in audited.reasons}
+
+
+def test_bad_news_is_believed_of_anybody_and_good_news_is_not(kept: Kept) -> None:
+    assert trusting(kept).verdict is Verdict.GOOD
+    event = Incident(what="incident", custodians=NAMES, persons=("a thief",), exposed=True, due=day(13), remark="seen")
+    number = foreign(kept, event, 12)
+    before = codes(trusting(kept))
+    assert {"incident-open", "one-knows-a-quorum", "no-quorum", "journal-not-vouched"} <= before
+    settled = Resolved(what="resolved", entry=number, how="no exposure")
+    last = foreign(kept, settled, 13, cards=[NAME])
+    audited = trusting(kept)
+    assert codes(audited) == before
+    assert any(f"not believed where nobody whom you trust has signed it: entry {last}" in n for n in audited.notes)
+    # Without anybody trusted, entries are as they are, and somebody trusted may say the same.
+    assert "incident-open" not in found(kept)
+    kept.append(settled, day(14))
+    assert not {"incident-open", "one-knows-a-quorum"} & codes(trusting(kept))
+
+
+def test_a_stranger_says_of_nobody_that_a_card_is_theirs(kept: Kept) -> None:
+    event = Introduced(what="introduced", custodian=NAME, card=card("dry-dock").fingerprint)
+    foreign(kept, event, 12, cards=["dry-dock"])
+    mine = next(one for one in trusting(kept).custodians if one.name == NAME)
+    assert (mine.card, mine.status) == (card(NAME).fingerprint, "confirmed")
+
+
+def test_a_stranger_who_deals_anew_makes_no_card_known(kept: Kept) -> None:
+    dealt = kept.set.journal().entries[0].event
+    assert isinstance(dealt, Dealt)
+    planted = tuple(one.model_copy(update={"card": card("dry-dock").fingerprint}) for one in dealt.custodians)
+    foreign(kept, dealt.model_copy(update={"custodians": planted}), 12, cards=["dry-dock"])
+    assert {one.card for one in trusting(kept).custodians} == {None}
+    assert {one.status for one in trusting(kept).custodians} == {"not yet attested"}
+
+
+def test_a_stranger_fills_no_place(kept: Kept) -> None:
+    kept.append(Departed(what="departed", person=HOLDER, custodians=(NAME,), due=day(13)), day(12))
+    foreign(kept, HandedOn(what="handed-on", custodian=NAME, to="a guest"), 13)
+    foreign(kept, HandedOn(what="handed-on", custodian="registrar", to="a guest"), 13)
+    audited = trusting(kept)
+    status = {one.name: (one.status, one.person) for one in audited.custodians}
+    assert status[NAME] == ("departed", HOLDER)
+    assert status["registrar"] == ("not yet attested", PEOPLE["registrar"])  # Somebody may have touched it.
+    guest = next(one for one in audited.exposure if one.who == "a guest")
+    assert set(guest.shares) == {NAME, "registrar"}
+    # So is whoever leaves afterwards still who holds the share.
+    kept.append(Departed(what="departed", person=PEOPLE["registrar"], custodians=(), due=day(15)), day(14))
+    assert next(one for one in trusting(kept).custodians if one.name == "registrar").status == "departed"
+
+
+def test_a_stranger_ends_no_set(kept: Kept) -> None:
+    for name in NAMES:
+        event = Destroyed(what="destroyed", custodian=name, copy="original", by=PEOPLE[name], witness="auditor-east")
+        foreign(kept, event, 12)
+    foreign(kept, Retired(what="retired", keep_until=day(800)), 13)
+    audited = trusting(kept)
+    assert audited.retired is None
+    assert {(one.status, one.copies) for one in audited.custodians} == {("in doubt", 1)}
+    kept.append(Retired(what="retired", keep_until=day(800)), day(14))
+    assert "retired-with-copies" in codes(trusting(kept))
+
+
+def test_a_stranger_closes_no_drill_with_success(kept: Kept) -> None:
+    true = DrillReport.parse(next(kept.folder.glob("drills/*/report.json")).read_bytes())
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, "recovery", keys=[key], at=day(12))[0].number
+    with unlocked("dry-dock") as key:
+        rehearse(kept.set, the_drill(kept.set.journal(), number), [kept.share(name) for name in NAMES], at=day(12))
+        close_drill(kept.set, the_drill(kept.set.journal(), number), keys=[key], at=day(12))
+    assert true.passed
+    assert kept.audit(day(30)).drills[-1].passed is True
+    assert trusting(kept).drills[-1].passed is None
+    due = next(task.due for task in trusting(kept).tasks if task.kind == "drill")
+    assert due < day(12 + 180)
+
+
+def test_a_key_of_anybody_is_no_second_party(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text(dual_control=True), journal=False)
+    dealt = Kept.make(tmp_path / "other", policy_text()).set.journal().entries[0].event
+    with unlocked(OFFICE) as key, unlocked("registrar") as second, unlocked("dry-dock") as thrown_away:
+        append(kept.folder, dealt, keys=[key, second], time=day(0))
+        both = [key.card, second.card]
+        assert "journal-not-dual" not in codes(kept.audit(day(1), trusted=both))
+        append(kept.folder, Noted(what="noted", remark="?"), keys=[key, thrown_away], time=day(0))
+        assert "journal-not-dual" not in codes(kept.audit(day(1)))
+        reasons = {one.code: one.what for one in kept.audit(day(1), trusted=both).reasons}
+    assert "entry 2 is signed by fewer than two parties whose cards are trusted" in reasons["journal-not-dual"]
