@@ -23,6 +23,7 @@ from shares.documents.event import EVENT_NAMES, Remedy
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, StorageError, VerificationError
+from shares.history.doubts import JUDGED, doubts
 from shares.history.files import MAX_DOCUMENT, POLICY_NAME, RECORD_NAME, Files, FolderFiles
 from shares.history.folder import SetFolder, load_policy
 from shares.history.heads import heads_in
@@ -164,13 +165,14 @@ def add(
         remark=remark,
     )
     event = event_of(set_folder, what, report, time=time)
+    odd = doubts(event, set_folder.journal(), set_folder.record, card) if isinstance(event, JUDGED) else []
     attached = {file: read_file(file, limit=MAX_DOCUMENT) for file in files}
     with opening((), passphrase_files, descriptors) as at_hand:
         keys = signers(signer_files, at_hand)
         cards = () if card is None else (card,)
         made = append_with(set_folder, event, attached, keys=keys, cards=cards, time=time)
     stands = made.head()
-    found = cautions(made)
+    found = [*odd, *cautions(made)]
     for line in () if as_json else found:
         warn(line)
     warn_unsigned(signer_files, as_json=as_json)

@@ -19,13 +19,14 @@ from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE
 from shares.documents.challenge import Challenge, Purpose
 from shares.documents.entry import Entry, NamedDigest
-from shares.documents.event import Attested, Challenged, Dealt, Introduced
+from shares.documents.event import Attested, Challenged, Introduced
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
 from shares.evidence.judge import Earlier, Judgement, check_challenge, judge
 from shares.evidence.retire import refuse_retired
+from shares.history.doubts import known_cards
 from shares.history.folder import SetFolder
 from shares.history.journal import Journal
 from shares.storage import read_file
@@ -75,17 +76,6 @@ def rounds(journal: Journal) -> dict[bytes, Round]:
             if before is None or (event.attributed and not _is_attributed(before)):
                 answers[event.custodian] = entry
     return found
-
-
-def known_cards(journal: Journal) -> dict[str, str]:
-    """Return the fingerprint of each custodian's party card, as the journal told last."""
-    known: dict[str, str] = {}
-    for entry in journal.entries:
-        if isinstance(entry.event, Dealt):
-            known |= {share.name: share.card for share in entry.event.custodians if share.card is not None}
-        elif isinstance(entry.event, Introduced):
-            known[entry.event.custodian] = entry.event.card
-    return known
 
 
 def folder_of_round(challenge: Challenge) -> str:

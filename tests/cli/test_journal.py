@@ -46,7 +46,7 @@ def test_what_happened_is_added_signed_and_shown(folder: Path) -> None:
     done = run(
         "journal", "add", folder, "received", "--custodian=north-pier", "--serial=HT-0031", *sign(folder, "registrar")
     )
-    assert (done.code, done.err) == (0, "")
+    assert (done.code, done.err.count("Caution:"), "was sent" in done.err) == (0, 1, True)
     head = run("journal", "head", folder).out.strip()
     assert done.out == f"Added: share of north-pier received, serial HT-0031.\nThe journal stands at {head}.\n"
     shown = run("journal", "show", folder)
