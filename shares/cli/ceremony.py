@@ -245,7 +245,7 @@ def _log_members(logged: Logged, step: int | None) -> dict[str, object]:
         "script": logged.script.digest().hex(),
         "step": step,
         "skipped": list(logged.skipped),
-        "next": logged.following,
+        "next": step if logged.pending else logged.following,
     }
 
 
@@ -253,6 +253,8 @@ def _log_lines(logged: Logged, step: int | None, exception: str | None) -> list[
     what = "exception" if exception is not None else "done"
     place = f"step {step} of {len(logged.script.steps)}, " if step is not None else ""
     lines = [f"Logged: {place}{what}, {to_text(logged.entry.time)}, entry {logged.entry.sequence}."]
+    if logged.pending:
+        return [*lines, *prose(f"Next: step {step} itself has no entry yet. Log it when it is done.")]
     if logged.following is None:
         return [*lines, "Next: no later step is left. `shares ceremony report` tells how it went."]
     following = logged.script.steps[logged.following - 1]

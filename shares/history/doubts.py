@@ -94,7 +94,7 @@ def _of_copy(event: Copied, journal: Journal) -> Iterator[str]:
             continue
         if folded(before.copy_) == folded(event.copy_):
             yield (
-                f"entry {entry.sequence} tells of a copy {event.copy_} of {event.custodian} already: this one counts as "
-                "another, and has to be accounted for as well."
+                f"entry {entry.sequence} tells of a copy {event.copy_} of {event.custodian} already: this one counts "
+                "as another, and has to be accounted for as well."
             )
             return
