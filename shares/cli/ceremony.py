@@ -49,7 +49,7 @@ def command() -> None:
     """
 
 
-@command.command("script")
+@command.command("script", short_help="Write the script from a policy: steps, roles, room for initials.")
 @click.argument("policy", metavar="POLICY", callback=filled)
 @click.option("--to", "target", required=True, metavar="DIR", callback=filled, help="Folder for the script's files.")
 @click.option(
@@ -170,7 +170,7 @@ def _script_lines(made: CeremonyScript, names: list[Path]) -> list[str]:
     ]
 
 
-@command.command("log")
+@command.command("log", short_help="Log a step as done, or an exception.")
 @click.argument("folder", metavar="SET", callback=filled)
 @script_option
 @click.option("--step", type=int, metavar="N", help="The number of the step.")
@@ -261,7 +261,7 @@ def _log_lines(logged: Logged, step: int | None, exception: str | None) -> list[
     return [*lines, *prose(f"Next: step {logged.following}, {following.role}: {following.what}")]
 
 
-@command.command("report")
+@command.command("report", short_help="Report how a ceremony went, exceptions first.")
 @click.argument("folder", metavar="SET", callback=filled)
 @script_option
 @click.option("--html", "page", metavar="FILE", callback=filled, help="Write it as a page to this new file as well.")

@@ -12,6 +12,7 @@ from typing import get_args
 import click
 
 from shares import clock
+from shares.cli.intervals import moment
 from shares.cli.journal_words import cautions, entry_lines, entry_members, next_lines, proves, verified_lines
 from shares.cli.keys import opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, progress, warn
@@ -48,13 +49,13 @@ def command() -> None:
 set_argument = click.argument("folder", metavar="SET", callback=filled)
 
 
-@command.command()
+@command.command(short_help="Show the entries: when, what, and who signed.")
 @set_argument
-@click.option("--since", metavar="TIME", callback=filled, help="From this time on, like 2026-12-01T07:00:00Z.")
+@click.option("--since", metavar="TIME", callback=moment, help="From this time on, like 2026-12-01T07:00:00Z.")
 @click.option("--event", "wanted", multiple=True, type=click.Choice(EVENT_NAMES), help="Only these; once for each.")
 @json_option
 @click.pass_context
-def show(ctx: click.Context, folder: str, since: str | None, wanted: tuple[str, ...], as_json: bool) -> None:
+def show(ctx: click.Context, folder: str, since: datetime | None, wanted: tuple[str, ...], as_json: bool) -> None:
     """Show the entries of the journal in SET, a set's folder or a pack: number, time, what happened, who signed.
 
     Exit code 4, with the entries all the same, when the journal is broken.
@@ -63,12 +64,11 @@ def show(ctx: click.Context, folder: str, since: str | None, wanted: tuple[str, 
     Example:
       shares journal show tide-archive --since 2026-12-01T00:00:00Z
     """
-    start = None if since is None else _time(since)
     journal = _load(_files(folder))
     chosen = [
         entry
         for entry in journal.entries
-        if (start is None or entry.time >= start) and (not wanted or entry.event.what in wanted)
+        if (since is None or entry.time >= since) and (not wanted or entry.event.what in wanted)
     ]
     broken = [problem for problem in journal.problems if problem.breaks]
     if broken:
@@ -82,7 +82,7 @@ def show(ctx: click.Context, folder: str, since: str | None, wanted: tuple[str, 
     ctx.exit(code)
 
 
-@command.command()
+@command.command(short_help="Add what has happened to the journal.")
 @set_argument
 @click.argument("what", metavar="EVENT", type=click.Choice(list(NEEDS)))
 @click.option(
@@ -182,7 +182,7 @@ def add(
     print_result(members, lines, as_json=as_json)
 
 
-@command.command()
+@command.command(short_help="Check chain, signatures, and all that is named.")
 @set_argument
 @click.option(
     "--head",
@@ -239,7 +239,7 @@ def verify(
     ctx.exit(code)
 
 
-@command.command()
+@command.command(short_help="Say where the journal stands, to be noted elsewhere.")
 @set_argument
 @json_option
 def head(folder: str, as_json: bool) -> None:
@@ -283,14 +283,6 @@ def _record_and_policy(files: Files) -> tuple[Record, Policy | None]:
         warn("the policy is not beside the record: nothing says whether two parties have to sign each entry.")
         return record, None
     return record, load_policy(files, record)
-
-
-def _time(text: str) -> datetime:
-    try:
-        return clock.from_text(text)
-    except ParameterError as error:
-        problem = error.what
-    raise ParameterError(problem, where="--since")
 
 
 def _heads(given: str) -> list[Head]:

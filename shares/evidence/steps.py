@@ -166,9 +166,9 @@ class _Steps:
         )
         yield self._step(
             DEALER,
-            "Make a folder in memory. Copy script, policy, acknowledgements, all cards, and the party keys of the dealer "
-            "and both witnesses into it. "
-            "From now on the internal witness logs each step when it is done; those before this one first, in order.",
+            "Make a folder in memory. Copy script, policy, acknowledgements, all cards, and the party keys of the "
+            "dealer and both witnesses into it. From now on the internal witness logs each step when it is done; those "
+            "before this one first, in order.",
             "No message.",
             command=f"umask 077; mkdir /dev/shm/ceremony; cd /dev/shm/ceremony; mkdir handover {self.set}",
         )
