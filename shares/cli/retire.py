@@ -77,8 +77,9 @@ def status_(folder: str, as_json: bool) -> None:
     found = ending(SetFolder(folder))
     held, copies = found.inventory.held, found.inventory.copies
     until = _kept_until(found.retired)
+    them = "copy is" if len(copies) == 1 else "copies are"
     lines = [
-        f"{len(copies) - len(held)} of {len(copies)} copies are accounted for. {NOT_COUNTED}",
+        f"{len(copies) - len(held)} of {len(copies)} {them} accounted for. {NOT_COUNTED}",
         *(line for copy in copies for line in prose(f"  {_words(copy)}")),
         *(line for problem in found.inventory.problems for line in prose(f"Note: {problem}.")),
         _retired_line(found.retired.sequence, until, len(held))

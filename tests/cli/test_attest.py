@@ -115,7 +115,8 @@ def test_a_round_from_the_question_to_the_journal(quay: Quay) -> None:
     assert f"where the journal of the set stood, {challenge.journal.words()}" in first.out.replace("\n", " ")
     assert "sealed pack" not in first.out
     assert quay.answer_file("north-pier").stat().st_mode & 0o777 == 0o600
-    quay.answer("south-pier", "--sealed", "--serial", "TB-0017")
+    closed = quay.answer("south-pier", "--sealed", "--serial", "TB-0017")
+    assert "it counts only beside an earlier proof of content" in closed.out.replace("\n", " ")
     damaged = quay.answer("light-house", "--custodian", "light-house", code=4)
     assert "Answered for light-house: damaged." in damaged.out
     assert "tell whoever asked at once" in damaged.out
