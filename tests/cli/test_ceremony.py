@@ -174,7 +174,7 @@ def test_what_does_not_go_together_is_refused(folder: Path) -> None:
         "A",
     ]
     assert_refused(elsewhere, 5, "is no set's folder", watched=folder)
-    assert_refused(["ceremony", "report", folder / "set"], 2, "tells of no ceremonies", watched=folder)
+    assert_refused(["ceremony", "report", folder / "set"], 2, "tells of no ceremony", watched=folder)
     run(*logging(folder, "--step", "1"))
     assert_refused(logging(folder, "--step", "1"), 2, "has an entry already (entry 1)", "--repeats", watched=folder)
 
