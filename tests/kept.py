@@ -200,8 +200,8 @@ class Kept:
             brought = [Presented(one.custodian, one) for one in dealt.shares if one.custodian in names]
             later = time + timedelta(hours=hours)
             people = [PEOPLE[name] for name in names]
-            rehearse(self.set, the_drill(self.set.journal()), brought, persons=people, keys=[key], at=later)
-            drill = the_drill(self.set.journal())
+            rehearse(self.set, the_drill(self.set.journal(), number), brought, persons=people, keys=[key], at=later)
+            drill = the_drill(self.set.journal(), number)
             close_drill(self.set, drill, actions=actions, keys=[key], at=later + timedelta(hours=1))
         return number
 

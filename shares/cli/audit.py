@@ -10,6 +10,7 @@ import click
 
 import shares
 from shares.cli import audit_pack
+from shares.cli.heads import heads_given
 from shares.cli.intervals import moment
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.clock import to_text
@@ -55,6 +56,14 @@ class _OrPack(click.Command):
     callback=filled,
     help="A party card whose fingerprint you have compared: one such party must have signed record and journal.",
 )
+@click.option(
+    "--head",
+    "noted",
+    multiple=True,
+    metavar="HEAD",
+    callback=filled,
+    help='Where the journal is known to have stood: "57 ABCD-...", or a file that quotes it; of one set alone.',
+)
 @click.option("--html", "page", metavar="FILE", callback=filled, help="Write a page as well, to be read and filed.")
 @click.option("--jobs", type=click.IntRange(1), metavar="N", help="So many processes; one a processor by default.")
 @json_option
@@ -64,6 +73,7 @@ def command(
     paths: tuple[str, ...],
     at: datetime | None,
     trusted_files: tuple[str, ...],
+    noted: tuple[str, ...],
     page: str | None,
     jobs: int | None,
     as_json: bool,
@@ -80,21 +90,23 @@ def command(
       shares audit tide-archive --html report.html
       shares audit /srv/sets --trust harbour-office.card.json --json
       shares audit pack tide-archive --to tide-archive.tar
-      shares audit tide-archive.tar --trust harbour-office.card.json
+      shares audit tide-archive.tar --trust harbour-office.card.json --head noted-on-monday.txt
     """
     if page is not None:
         refuse_taken(page)
     trusted = [load_card(path) for path in trusted_files]
+    heads = heads_given(noted)
     found = find_sets(paths)
     if found.passed_over:
         warn(f"{len(found.passed_over):,} folder(s) hold no set, and were passed over: {_few(found.passed_over)}.")
     bar = progress("Auditing", "sets")
-    audits = list(audit_many(found.sets, jobs=jobs, at=at, trusted=trusted, progress=bar))
+    audits = list(audit_many(found.sets, jobs=jobs, at=at, trusted=trusted, heads=heads, progress=bar))
     if page is not None:
         # The template engine is loaded for a page alone.
         from shares.evidence.page import audit_page
 
-        write_new(page, audit_page(audits, program=f"shares {shares.__version__}"), secret=True)
+        program = f"shares {shares.__version__}"
+        write_new(page, audit_page(audits, program=program, trusted=trusted, heads=heads), secret=True)
     worst = max((audited.verdict for audited in audits), key=lambda verdict: verdict.rank)
     code = VerificationError.exit_code if worst is Verdict.BROKEN else 0 if worst is Verdict.GOOD else DUE
     counts = Counter(audited.verdict for audited in audits)
@@ -176,6 +188,7 @@ def _custodian_lines(rows: Sequence[CustodianRow]) -> Iterator[str]:
     width = max((len(row.name) for row in rows), default=0)
     for row in rows:
         due = f"; due {row.due:%Y-%m-%d}" if row.due else ""
+        due += f"; silent: asked, no answer by {row.silent:%Y-%m-%d}" if row.silent else ""
         yield f"    {row.name:<{width}}  {row.status}: {row.why}{due}"
 
 

@@ -8,9 +8,10 @@ from pathlib import Path
 import click
 
 from shares import clock
+from shares.cli import roster
 from shares.cli.feeding import FeedsCommand
 from shares.cli.intervals import interval
-from shares.cli.keys import key_option, opening, sign_option, signers
+from shares.cli.keys import key_option, opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -24,9 +25,8 @@ from shares.documents.event import DrillKind
 from shares.documents.members import encode_bytes
 from shares.errors import ParameterError
 from shares.evidence.after_action import close_drill, how_it_went, in_words, report_page
-from shares.evidence.drill import Drill, open_drill, rehearsed_together, the_drill
+from shares.evidence.drill import Drill, open_drill, the_drill
 from shares.evidence.rehearsal import Probe, Rehearsal, rehearse
-from shares.evidence.roster import Covers, roster
 from shares.history.folder import SetFolder
 from shares.storage import write_new
 
@@ -55,8 +55,10 @@ def command() -> None:
 
     \b
     Example:
-      shares drill open tide-archive --kind practice
-      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json
+      shares drill open tide-archive --kind practice \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
+      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
       shares drill close tide-archive --finding "the meeting room was locked" \\
         --action registrar 2027-01-15 "keep a second key" --sign harbour-office.key.json \\
         --passphrase-file harbour-office.passphrase
@@ -103,7 +105,8 @@ def open_(
 
     \b
     Examples:
-      shares drill open tide-archive --kind practice
+      shares drill open tide-archive --kind practice \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
       shares drill open tide-archive --kind attendance --to called.json --sign harbour-office.key.json \\
         --passphrase-file harbour-office.passphrase
     """
@@ -124,6 +127,7 @@ def open_(
         )
         if target is not None and asked is not None:
             write_new(target, asked.to_file(), secret=True)
+    warn_unsigned(signer_files, as_json=as_json)
     within = drill.event.target
     lines = [
         f"Drill {drill.number} is open: {kind}, {of_set.record.label}.",
@@ -181,8 +185,10 @@ def rehearse_(
 
     \b
     Examples:
-      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json
-      shares drill rehearse tide-archive *.share.json --present "A. Keeper" -- openssl pkey -noout
+      shares drill rehearse tide-archive north-pier.practice.json dry-dock.practice.json registrar.practice.json \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
+      shares drill rehearse tide-archive *.share.json --present "A. Keeper" \\
+        --sign harbour-office.key.json --passphrase-file harbour-office.passphrase -- openssl pkey -noout
     """
     words: list[str] | None = ctx.meta.get("command")
     of_set = SetFolder(folder)
@@ -200,6 +206,7 @@ def rehearse_(
         presented = load_shares(files, at_hand.share)
         probe = _probe(words, encrypted_file) if words else None
         done = rehearse(of_set, drill, presented, probe=probe, persons=persons, keys=signing)
+    warn_unsigned(signer_files, as_json=as_json)
     with done:
         print_result(_members(drill, done), _lines(drill, done), as_json=as_json)
     if done.failure is not None:
@@ -349,55 +356,4 @@ def _after(folder: str, entry: int, actions: int) -> str:
     )
 
 
-@command.command("roster", short_help="Say who should rehearse with whom.")
-@click.argument("folder", metavar="SET", callback=filled)
-@click.option(
-    "--cycle",
-    default="2y",
-    show_default=True,
-    metavar="INTERVAL",
-    callback=interval,
-    help="How far back rehearsals count as done.",
-)
-@click.option(
-    "--covers",
-    type=click.Choice(["pairs", "quorums"]),
-    help="What is to be covered.  [default: every quorum where there are 12 at most, else every pair]",
-)
-@click.option("--seed", type=int, default=0, show_default=True, help="Decides among rosters that are equally good.")
-@json_option
-def roster_(folder: str, cycle: timedelta, covers: Covers | None, seed: int, as_json: bool) -> None:
-    """Say who should rehearse with whom, so that all who can need each other recover together in few drills.
-
-    What past rehearsals of the SET have covered is left out. It tells who can recover: keep it like the policy.
-
-    \b
-    Example:
-      shares drill roster tide-archive
-    """
-    of_set = SetFolder(folder)
-    past = rehearsed_together(of_set.journal(), clock.now() - cycle)
-    found = roster(of_set.record.rule.to_rule(), past, covers=covers, seed=seed)
-    unit = "pair" if found.covers == "pairs" else "quorum"
-    lines = [
-        f"{len(found.drills)} drills for {of_set.record.label}, no fewer than {found.bound} ({found.bound_by}).",
-        *(f"  {number}: {', '.join(names)}" for number, names in enumerate(found.drills, 1)),
-        f"Found by: {found.method}. A whole cycle has {found.cycle}, and no cycle fewer than {found.cycle_bound}.",
-        f"Covered by past drills: {len(found.covered):,}; by these: {len(found.left):,}; counted by {unit}.",
-        *(line for note in found.notes for line in prose(note)),
-    ]
-    members = {
-        "done": True,
-        "covers": found.covers,
-        "drills": found.drills,
-        "bound": found.bound,
-        "bound_by": found.bound_by,
-        "method": found.method,
-        "cycle": found.cycle,
-        "cycle_bound": found.cycle_bound,
-        "covered": found.covered,
-        "left": found.left,
-        "apart": found.apart,
-        "notes": found.notes,
-    }
-    print_result(members, lines, as_json=as_json)
+command.add_command(roster.command)

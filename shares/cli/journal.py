@@ -12,6 +12,7 @@ from typing import get_args
 import click
 
 from shares import clock
+from shares.cli.heads import heads_given
 from shares.cli.intervals import moment
 from shares.cli.journal_words import cautions, entry_lines, entry_members, next_lines, proves, verified_lines
 from shares.cli.keys import opening, sign_option, signers, warn_unsigned
@@ -19,15 +20,13 @@ from shares.cli.output import filled, json_option, print_result, progress, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_card
 from shares.documents.base import MAX_FILE
-from shares.documents.entry import Head
 from shares.documents.event import EVENT_NAMES, Remedy
 from shares.documents.policy import Policy
 from shares.documents.record import Record
-from shares.errors import ParameterError, StorageError, VerificationError
+from shares.errors import StorageError, VerificationError
 from shares.history.doubts import JUDGED, doubts
 from shares.history.files import MAX_DOCUMENT, POLICY_NAME, RECORD_NAME, Files, FolderFiles
 from shares.history.folder import SetFolder, load_policy
-from shares.history.heads import heads_in
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL, Journal, load_journal, read_journal
 from shares.history.pack import PackFiles
 from shares.history.reports import NEEDS, Report, append_with, event_of
@@ -213,7 +212,7 @@ def verify(
     Example:
       shares journal verify tide-archive --head "57 ABCD-EFGH-IJKL-MNOP-QRST-UVWX-YZ23-4567"
     """
-    heads = [head for one in noted for head in _heads(one)]
+    heads = heads_given(noted)
     trusted = [load_card(file) for file in trusted_files]
     files = _files(folder)
     record, policy = _record_and_policy(files)
@@ -283,16 +282,3 @@ def _record_and_policy(files: Files) -> tuple[Record, Policy | None]:
         warn("the policy is not beside the record: nothing says whether two parties have to sign each entry.")
         return record, None
     return record, load_policy(files, record)
-
-
-def _heads(given: str) -> list[Head]:
-    """Read the heads that an option gives, or a file that it names."""
-    if os.path.lexists(given):
-        text, where = read_file(given, limit=MAX_FILE).decode("utf-8", "replace"), given
-    else:
-        text, where = given, "--head"
-    try:
-        return heads_in(text)
-    except ParameterError as error:
-        problem = error
-    raise ParameterError(problem.what, where=where, hint=problem.hint)

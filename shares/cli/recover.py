@@ -9,7 +9,7 @@ from pathlib import Path
 import click
 
 from shares.cli.feeding import FeedsCommand
-from shares.cli.keys import key_option, opening, sign_option, signers, suite_option, trust_option
+from shares.cli.keys import UNSIGNED_ENTRY, key_option, opening, sign_option, signers, suite_option, trust_option
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
@@ -38,6 +38,7 @@ EXPOSED = (
     "this machine has now held the secret and the shares used. "
     "Decide what becomes of both: return, replace by a date, or destroy."
 )
+UNRECORDED = "No journal tells of this recovery: where the set has one, enter it there."
 # After a recovery that was entered into the journal, which holds what was decided.
 KNOWN = "this machine has now held the secret and the shares used, and the set's journal says so. "
 RESOLVE = " Then enter that with `shares journal add`."
@@ -204,7 +205,8 @@ def command(
         elif fed:
             to_command(recovery.secret, fed, output=STANDARD_ERROR if as_json else None)
         members = {**_members(recovery, went, against), "journaled": journaled is not None, "cautions": cautions}
-        lines = _lines(recovery, went, against, purpose=purpose)
+        notes = [UNRECORDED] if journaled is None else [] if signer_files else [f"Caution: {UNSIGNED_ENTRY}"]
+        lines = _lines(recovery, went, against, purpose, notes)
         print_result(members, lines, as_json=as_json, aside=bool(fed))
 
 
@@ -336,11 +338,10 @@ def _members(recovery: Recovery, went: str, against: str) -> dict[str, object]:
     }
 
 
-def _lines(recovery: Recovery, went: str, against: str, purpose: Purpose | None) -> list[str]:
-    unrecorded = "No journal tells of it: where the set has one, enter it there." if purpose is None else ""
+def _lines(recovery: Recovery, went: str, against: str, purpose: Purpose | None, notes: list[str]) -> list[str]:
     return [
         f"Recovered{f': {recovery.label}' if recovery.label else ''}, from {', '.join(recovery.used)}.",
         f"Checked against {against}; the secret was {went}.",
-        *([unrecorded] if unrecorded else []),
+        *(line for note in notes for line in prose(note)),
         *prose(f"Next: {EXPOSED if purpose is None else NEXT[purpose.disposition].format(by=purpose.by)}"),
     ]

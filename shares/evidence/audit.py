@@ -15,7 +15,17 @@ from datetime import datetime
 
 from shares import clock
 from shares.documents.base import MAX_FILE
-from shares.documents.event import Dealt, Deviation, Retired
+from shares.documents.entry import Head
+from shares.documents.event import (
+    Acknowledged,
+    Dealt,
+    Deviation,
+    Introduced,
+    Noted,
+    Retired,
+    ScriptStep,
+    SetAside,
+)
 from shares.documents.party import PartyCard
 from shares.documents.policy import Policy
 from shares.documents.record import Record
@@ -28,13 +38,19 @@ from shares.evidence.filed import Filed, read_filed
 from shares.evidence.life import Life
 from shares.evidence.margin import margin, margins
 from shares.evidence.standing import Standings
+from shares.evidence.strays import find_strays
 from shares.evidence.tasks import tasks
 from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, Files
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL, Journal, read_journal
-from shares.history.verify import verify
+from shares.history.verify import head_problems, verify
+
+_BEFORE_SPLIT = (ScriptStep, Deviation, Noted, Introduced, Acknowledged, SetAside)
+"""All that happens before a split."""
 
 
-def audit(files: Files, *, at: datetime | None = None, trusted: Sequence[PartyCard] = ()) -> Audit:
+def audit(
+    files: Files, *, at: datetime | None = None, trusted: Sequence[PartyCard] = (), heads: Sequence[Head] = ()
+) -> Audit:
     """Audit one set.
 
     Args:
@@ -43,12 +59,16 @@ def audit(files: Files, *, at: datetime | None = None, trusted: Sequence[PartyCa
             at otherwise. Now by default, and then an entry of the future is a finding.
         trusted: cards whose fingerprints were compared: one of these parties must have signed the record, and every
             entry of the journal.
+        heads: where its journal is known to have stood: noted elsewhere, or read aloud.
 
     Returns:
         What was found. Whatever the files hold, it is named there; nothing is raised for it.
     """
     now = clock.now() if at is None else at
-    found = _Findings(_names(files))
+    found = _Findings(_names(files), tuple(heads))
+    begun = _before_split(files, found, now)
+    if begun is not None:
+        return _sorted(begun)
     record = found.record(files)
     if record is None:
         return _sorted(Audit(files.where, now, Verdict.BROKEN, tuple(found.reasons)))
@@ -72,10 +92,45 @@ def audit(files: Files, *, at: datetime | None = None, trusted: Sequence[PartyCa
                 signatures=len(record.signatures) + sum(len(entry.signatures) for entry in journal.entries),
                 documents=len({named.path for entry in journal.entries for named in entry.documents}),
                 attestations=len(filed.proofs),
+                heads=len(found.heads),
             ),
             reasons=tuple(found.reasons),
             notes=tuple(found.notes),
         )
+    )
+
+
+def _before_split(files: Files, found: _Findings, now: datetime) -> Audit | None:
+    """Return the audit of a folder in which a ceremony is under way and nothing was split; None of any other."""
+    if RECORD_NAME in found.names or JOURNAL_NAME not in found.names:
+        return None
+    try:
+        journal = read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL))
+    except SharesError:
+        return None
+    events = [entry.event for entry in journal.entries]
+    if not any(isinstance(event, ScriptStep) for event in events):
+        return None
+    # A set that was split leaves more behind than its record.
+    if not all(isinstance(event, _BEFORE_SPLIT) for event in events):
+        return None
+    if find_strays(files, found.names, journal).names:
+        return None
+    found.before_split()
+    problems, found.notes = reasons.journal_reasons((*journal.problems, *head_problems(journal, found.heads)))
+    return Audit(
+        where=files.where,
+        at=now,
+        verdict=Verdict.DUE,
+        reasons=(*found.reasons, *problems),
+        notes=tuple(found.notes),
+        head=journal.head.words() if journal.head else None,
+        counts=Counts(
+            entries=len(events),
+            unsigned_entries=sum(not entry.signatures for entry in journal.entries),
+            signatures=sum(len(entry.signatures) for entry in journal.entries),
+            heads=len(found.heads),
+        ),
     )
 
 
@@ -135,11 +190,18 @@ class _Findings:
     """Reasons and notes, gathered while one file after the other is read."""
 
     names: frozenset[str]
+    heads: tuple[Head, ...]
     reasons: list[Reason] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
 
     def _add(self, level: Verdict, code: str, what: str, step: str) -> None:
         self.reasons.append(Reason(level, code, what, step))
+
+    def before_split(self) -> None:
+        """Say that nothing is split yet."""
+        what = "Nothing is split yet: a ceremony is under way, by the journal."
+        step = "Go on with the next step of its script: `shares ceremony report` tells which were done."
+        self._add(Verdict.DUE, "not-split", what, step)
 
     def record(self, files: Files) -> Record | None:
         """Read the record, or say why it cannot be read."""
@@ -180,6 +242,12 @@ class _Findings:
     ) -> tuple[Journal, Filed]:
         """Read the journal and what it names, and say what is wrong with them."""
         if JOURNAL_NAME not in self.names:
+            strays = find_strays(files, self.names, Journal(), set_id=record.set)
+            self.reasons += reasons.stray_reasons(strays.names, journal=False)
+            self.heads = tuple(dict.fromkeys((*strays.heads, *self.heads)))
+            self.reasons += reasons.journal_reasons(head_problems(Journal(), self.heads))[0]
+            if strays.names or self.heads:
+                return Journal(), Filed()
             what = "The set has no journal: nothing is known of what became of its shares."
             step = "Look for it in copies; where there never was one, begin it: `shares journal add`."
             self._add(Verdict.DUE, "no-journal", what, step)
@@ -187,13 +255,16 @@ class _Findings:
         try:
             journal = read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL))
             filed = read_filed(journal, files, record)
-            problems = verify(journal, files, record, policy, heads=filed.heads, trusted=trusted)
+            strays = find_strays(files, self.names, journal, set_id=record.set, read=filed.read)
+            self.heads = tuple(dict.fromkeys((*filed.heads, *strays.heads, *self.heads)))
+            problems = verify(journal, files, record, policy, heads=self.heads, trusted=trusted)
         except SharesError as error:
             step = "See the reason given, and read the journal from a copy."
             self._add(Verdict.BROKEN, "journal-unreadable", f"The journal cannot be read: {error.what}.", step)
             return Journal(), Filed()
         found, notes = reasons.journal_reasons(problems)
-        self.reasons += [*found, *reasons.claim_reasons(filed.claims)]
+        missing = reasons.stray_reasons(strays.names, journal=True)
+        self.reasons += [*found, *reasons.claim_reasons(filed.claims), *missing]
         self.notes += notes
         return journal, filed
 
@@ -229,7 +300,7 @@ def _names(files: Files) -> frozenset[str]:
     try:
         return frozenset(files.names())
     except SharesError:
-        return frozenset([POLICY_NAME, JOURNAL_NAME, PRACTICE_RECORD])
+        return frozenset([RECORD_NAME, POLICY_NAME, JOURNAL_NAME, PRACTICE_RECORD])
 
 
 def _drill_rows(life: Life, filed: Filed) -> Iterator[DrillRow]:

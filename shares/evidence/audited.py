@@ -74,10 +74,11 @@ Status: TypeAlias = Literal[
     "in doubt",
     "departed",
     "destroyed",
+    "lost",
 ]
 """How a custodian stands. ``confirmed``: proven the share's content in time; ``sealed``: seen the pack closed in time,
-and proven its content in the longer interval; both count toward the margin. ``in doubt``: an incident since. The rest
-says why the custodian does not count."""
+and proven its content in the longer interval; both count toward the margin. ``in doubt``: an incident since.
+``lost``: no copy is left, and one of them was not destroyed. The rest says why the custodian does not count."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,8 +116,9 @@ class CustodianRow:
         sealed: when the pack was last seen closed.
         due: until when the next proof is to come; None where none is asked for any more.
         card: fingerprint of the custodian's party card, where one is known.
-        copies: how many copies of the share are on record and not destroyed, the one that was dealt among them.
+        copies: how many copies of the share are on record and neither destroyed nor lost, with the one that was dealt.
         proofs: all attestations, in the journal's order.
+        unanswered: when each challenge was due that passed without an answer, and was not asked anew before.
     """
 
     name: str
@@ -130,6 +132,13 @@ class CustodianRow:
     card: str | None
     copies: int
     proofs: tuple[Proof, ...] = ()
+    unanswered: tuple[datetime, ...] = ()
+
+    @property
+    def silent(self) -> datetime | None:
+        """Since when the custodian is silent: asked, and no answer of any kind since; None who is not."""
+        last = max(self.unanswered, default=None)
+        return last if last and all(proof.time < last for proof in self.proofs) else None
 
     @property
     def counts(self) -> bool:
@@ -227,7 +236,7 @@ class DrillRow:
 
 
 TaskKind: TypeAlias = Literal[
-    "attestation", "answer", "drill", "refresh", "departure", "incident", "replacement", "action"
+    "attestation", "answer", "drill", "refresh", "departure", "incident", "loss", "replacement", "action", "closing"
 ]
 
 
@@ -241,7 +250,8 @@ class Task:
         due: until when.
         overdue: whether that has passed at the time of the audit.
         about: custodians or people concerned.
-        entry: the entry that set the task, which ``resolved`` names; None where an attestation or drill ends it.
+        entry: the entry that set the task, which ``resolved`` names, or of the drill that is to be closed; None where
+            an attestation or drill ends it.
         action: which action of a drill's report, from 1.
         advice: what the exposure says about how, for departures and incidents.
     """
@@ -300,7 +310,7 @@ class Intervals:
 
 @dataclass(frozen=True, slots=True)
 class Counts:
-    """How much was checked."""
+    """How much was checked; ``heads``: where documents, or the auditor's notes, say that the journal stood."""
 
     entries: int = 0
     later_entries: int = 0
@@ -308,6 +318,7 @@ class Counts:
     signatures: int = 0
     documents: int = 0
     attestations: int = 0
+    heads: int = 0
 
 
 @dataclass(frozen=True, slots=True)

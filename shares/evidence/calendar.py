@@ -25,6 +25,7 @@ LEGEND: Final = {
     "S": "pack seen closed: no proof of content",
     "P": "present: attendance alone",
     "N": "answered, but it does not count",
+    "?": "asked, and no answer by this day: silence is no consent",
     "D": "drill that passed",
     "F": "drill that failed",
     "O": "drill that is still open",
@@ -133,13 +134,15 @@ def _of_set(audit: Audit) -> Iterator[Mark]:
         yield _drill_mark(drill)
     for task in audit.tasks:
         # What a custodian owes stands in the custodian's own row.
-        if task.kind != "attestation":
+        if task.kind != "attestation" and not (task.kind == "answer" and task.overdue):
             yield _due_mark(task.due, task.what, overdue=task.overdue)
 
 
 def _of_custodian(one: CustodianRow, audit: Audit) -> Iterator[Mark]:
     for proof in one.proofs:
         yield Mark(proof.time, _proof_mark(proof), _proof_in_words(proof))
+    for due in one.unanswered:
+        yield Mark(due, "?", f"silent: asked, no answer by {day(due)}")
     for drill in audit.drills:
         if one.name in drill.custodians:
             yield _drill_mark(drill)

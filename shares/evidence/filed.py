@@ -38,12 +38,14 @@ class Filed:
         proofs: what each attestation proves, by the number of its entry; of entries of the record's epoch alone.
         reports: each drill's report, by the number of the drill.
         heads: where challenges and reports say that the journal stood.
+        read: the files of these.
         claims: what entries claim and their documents do not prove, in words that begin with the entry's number.
     """
 
     proofs: dict[int, Proof] = field(default_factory=dict)
     reports: dict[int, DrillReport] = field(default_factory=dict)
     heads: list[Head] = field(default_factory=list)
+    read: set[str] = field(default_factory=set)
     claims: list[str] = field(default_factory=list)
 
 
@@ -98,11 +100,11 @@ class _Reader:
 
     def _challenged(self, entry: Entry, event: Challenged) -> None:
         challenge = self._document(entry, Challenge)
+        if challenge and challenge.journal:
+            self.filed.heads.append(challenge.journal)
         if challenge and (challenge.digest(), challenge.custodians) != (event.challenge, event.custodians):
             self._claim(entry, "tells of another challenge than the one that it names")
             challenge = None
-        if challenge and challenge.journal:
-            self.filed.heads.append(challenge.journal)
         self.challenges.setdefault(event.challenge, challenge)
 
     def _attested(self, entry: Entry, event: Attested) -> None:
@@ -182,10 +184,12 @@ class _Reader:
         if NamedDigest.of(named.path, data) != named:
             return None
         try:
-            return kind.parse(data, where=named.path)
+            document = kind.parse(data, where=named.path)
         except SharesError as error:
             self._claim(entry, f"names {named.path}, which is no valid {kind.KIND.replace('-', ' ')}: {error.what}")
             return None
+        self.filed.read.add(named.path)
+        return document
 
 
 def _deals(entry: Entry, record: Record) -> bool:

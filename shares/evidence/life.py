@@ -1,7 +1,8 @@
 """The life of a set as its journal tells it up to a time: what exposure, margin, drills and tasks are worked out from.
 
 Source: none.
-May import: shares.documents, shares.planning.labels, shares.sharing.rule, shares.evidence.audited.
+May import: shares.documents, shares.history.reports, shares.planning.labels, shares.sharing.rule,
+shares.evidence.audited.
 Secret: nothing. Confidential: persons, sites and events. Public: the record.
 Does not: judge what the journal says, or whether it can be believed; ``evidence.audit`` does.
 """
@@ -19,6 +20,7 @@ from shares.documents.event import Dealt, Event, Resolved
 from shares.documents.policy import Policy, folded
 from shares.documents.record import Record
 from shares.evidence.audited import Intervals
+from shares.history.reports import RESPOND_WITHIN
 from shares.planning import labels
 from shares.sharing.rule import Rule
 
@@ -92,6 +94,11 @@ class Life:
             refresh_every=policy.refresh_every if policy else None,
             assumed=tuple(name for name, interval in said.items() if interval is None),
         )
+
+    @property
+    def respond_within(self) -> timedelta:
+        """How soon an incident is dealt with: by the policy, else within a day."""
+        return self.policy.respond_within if self.policy else RESPOND_WITHIN
 
     @cached_property
     def dealt(self) -> Entry | None:

@@ -1,7 +1,7 @@
 """Audit many sets: found below folders, shared out to processes or to any executor, one failure never another's.
 
 Source: none; ``concurrent.futures`` of the Python standard library is the interface to whatever does the work.
-May import: shares.errors, shares.clock, shares.storage, shares.streams, shares.documents.party, shares.history,
+May import: shares.errors, shares.clock, shares.storage, shares.streams, shares.documents, shares.history,
 shares.evidence.
 Secret: nothing. Confidential: what audits tell. Public: paths.
 Does not: audit; ``evidence.audit`` does, one set at a time.
@@ -21,6 +21,7 @@ from datetime import datetime
 from pathlib import Path
 
 from shares import clock
+from shares.documents.entry import Head
 from shares.documents.party import PartyCard
 from shares.errors import ParameterError, SharesError
 from shares.evidence.audit import audit
@@ -95,6 +96,7 @@ def audit_many(
     jobs: int | None = None,
     at: datetime | None = None,
     trusted: Sequence[PartyCard] = (),
+    heads: Sequence[Head] = (),
     progress: Callable[[int, int], None] | None = None,
 ) -> Iterator[Audit]:
     """Audit sets, and yield what was found of each, in the order given.
@@ -106,19 +108,24 @@ def audit_many(
         jobs: how many processes; as many as there are processors by default. Without meaning for an executor.
         at: as for ``audit``.
         trusted: as for ``audit``.
+        heads: as for ``audit``; of one set alone.
         progress: called with (sets done, sets).
 
     Yields:
         One ``Audit`` for each set, whatever became of it: of one whose process died, say, that it was broken off.
 
     Raises:
-        ParameterError: ``jobs`` is less than one.
+        ParameterError: ``jobs`` is less than one, or heads are given with more than one set.
     """
     jobs = len(os.sched_getaffinity(0)) if jobs is None else jobs
     if jobs < 1:
         raise ParameterError("one process at least is needed", where="jobs")
     paths = [os.fspath(path) for path in sets]
-    work = _Work(at, clock.now(), tuple(trusted))
+    if heads and len(paths) > 1:
+        raise ParameterError(
+            "a head is of one journal, and several sets are given", where="--head", hint="audit its set alone"
+        )
+    work = _Work(at, clock.now(), tuple(trusted), tuple(heads))
     if executor is None and min(jobs, len(paths)) <= 1:
         audits: Iterator[Audit] = (one for path in paths for one in work([path]))
     else:
@@ -136,6 +143,7 @@ class _Work:
     at: datetime | None
     now: datetime
     trusted: tuple[PartyCard, ...]
+    heads: tuple[Head, ...]
 
     def __call__(self, paths: Sequence[str]) -> list[Audit]:
         return [self._one(path) for path in paths]
@@ -143,7 +151,7 @@ class _Work:
     def _one(self, path: str) -> Audit:
         try:
             files: Files = FolderFiles(Path(path)) if os.path.isdir(path) else PackFiles(path)
-            return audit(files, at=self.at, trusted=self.trusted)
+            return audit(files, at=self.at, trusted=self.trusted, heads=self.heads)
         except SharesError as error:
             return self.failed(path, "unreadable", f"It cannot be read: {error.what}", error.hint or "check the path")
         except Exception as error:  # noqa: BLE001 - the other sets are audited all the same; the text may hold anything

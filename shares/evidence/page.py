@@ -2,7 +2,8 @@
 
 Source: W3C, "Web Content Accessibility Guidelines 2.2" (text for what is drawn, headings, contrast, reflow); NIST SP
 800-53, CP-4 (results are reviewed); the order, worst first, is ours.
-May import: shares.paper.page, shares.evidence.after_action, .audited, .calendar, .chart.
+May import: shares.clock, shares.documents, shares.paper.page, shares.evidence.after_action, .audited, .calendar,
+.chart.
 Secret: nothing. Confidential: the page: it tells who holds what, and where. Public: nothing.
 Does not: find out or judge anything: all of it is the audit's.
 """
@@ -15,6 +16,9 @@ from datetime import datetime
 from pathlib import Path
 from typing import Final
 
+from shares.clock import to_text
+from shares.documents.entry import Head
+from shares.documents.party import PartyCard
 from shares.evidence import chart as chart_frame
 from shares.evidence.after_action import in_words
 from shares.evidence.audited import Audit, Known, Task, Verdict
@@ -38,7 +42,8 @@ CAUTIONS: Final = (
     "It records who attested to what. It proves no erasure, no physical control of a share or pack, and nobody's "
     "honesty: nothing shows that a share was never copied.",
     "It is only as complete as the journal. What nobody entered is not in it, and whoever holds the keys that sign it "
-    "could write another one: compare the head below with one that was noted elsewhere at the time.",
+    'could write another one: compare its head, which stands under "What was checked", with one '
+    "that was noted elsewhere at the time.",
     "It knows the parties by their cards alone. Whose card each is shows when people compare fingerprints in person.",
     "Whether this meets a law, standard or contract is for a professional to judge.",
 )
@@ -60,7 +65,9 @@ class _Shown:
     where: str
 
 
-def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
+def audit_page(
+    audits: Sequence[Audit], *, program: str, trusted: Sequence[PartyCard] = (), heads: Sequence[Head] = ()
+) -> bytes:
     """Return the page of one or more audits: HTML in UTF-8, which loads and runs nothing.
 
     Of several, a table names all, worst first; the worst MOST_DETAILED are told in full.
@@ -68,6 +75,8 @@ def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
     Args:
         audits: one for each set, at least one.
         program: what made them, like ``shares 1.0``.
+        trusted: the cards that were trusted in them, so that the page says how to come to the same result.
+        heads: the heads that they were given, likewise.
     """
     shown = sorted((_shown(audit) for audit in audits), key=lambda one: -one.audit.verdict.rank)
     return render(
@@ -77,6 +86,8 @@ def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
         sets=shown,
         detailed=shown[:MOST_DETAILED],
         program=program,
+        again=_again(audits[0].at, trusted, heads),
+        trusted=trusted,
         counted=[(verdict, sum(one.audit.verdict == verdict for one in shown)) for verdict in reversed(Verdict)],
         means=MEANS,
         cautions=CAUTIONS,
@@ -89,10 +100,17 @@ def audit_page(audits: Sequence[Audit], *, program: str) -> bytes:
     )
 
 
+def _again(at: datetime, trusted: Sequence[PartyCard], heads: Sequence[Head]) -> str:
+    """Return the command that comes to the same result: without the time of the audit, it would be that of another."""
+    options = [f"--at {to_text(at)}", *(f"--trust CARD{i}" for i in range(1, len(trusted) + 1))]
+    options += [f'--head "{head.sequence} {head.head}"' for head in heads]
+    return " ".join(["shares audit SET", *options])
+
+
 def _shown(audit: Audit) -> _Shown:
     return _Shown(
         audit=audit,
-        title=audit.label or "A set that cannot be read",
+        title=audit.label or ("A set that cannot be read" if audit.head is None else "A set that is not split yet"),
         calendar=calendar(audit) if audit.custodians or audit.drills or audit.tasks else None,
         chart=chart(audit.margins, audit.at, most=audit.margin.whole.high if audit.margin else 0),
         tasks=tuple(sorted(audit.tasks, key=lambda task: task.due)),

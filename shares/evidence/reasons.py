@@ -11,7 +11,9 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Sequence
 from datetime import datetime
+from typing import get_args
 
+from shares.documents.event import Remedy
 from shares.documents.party import PartyCard
 from shares.documents.record import Record
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Margin, Reason, Status, Task, TaskKind, Verdict
@@ -45,6 +47,12 @@ _STATUS: dict[Status, tuple[str, str, str]] = {
         "Every copy of the share was destroyed",
         "Reassign the place, or retire the set.",
     ),
+    "lost": (
+        "custodian-lost",
+        "No copy of the share is left, and it was lost, not destroyed",
+        "Treat it as an incident: whoever finds it knows the share. Decide on refreshing, which makes it worthless, or "
+        "on reassigning the place.",
+    ),
     "unattributed": (
         "custodian-unattributed",
         "The share answered, and the custodian's known party key did not sign",
@@ -55,9 +63,13 @@ _STATUS: dict[Status, tuple[str, str, str]] = {
 _OVERDUE: dict[TaskKind, tuple[str, str]] = {
     "answer": ("Find out, by the known way, why they are silent; then challenge anew.", "An answer is overdue"),
     "drill": ("`shares drill open` calls one.", "A drill is overdue"),
+    "closing": (
+        "Close it with a report of what it showed: `shares drill close SET --drill {drill}`.",
+        "A drill is open",
+    ),
     "refresh": ("Renew the shares, or say in a new policy that it is not needed.", "Renewal is overdue"),
-    "replacement": ("Replace the key, then enter that with `shares journal add`.", "A replacement is overdue"),
-    "action": ("See to it, then enter that with `shares journal add`.", "An action of a drill's report is overdue"),
+    "replacement": ("Replace the key.", "A replacement is overdue"),
+    "action": ("See to it.", "An action of a drill's report is overdue"),
 }
 
 
@@ -89,6 +101,8 @@ def journal_reasons(problems: Iterable[Problem]) -> tuple[list[Reason], list[str
     reasons, notes, broken = list[Reason](), list[str](), list[Problem]()
     for problem in problems:
         place = f"Journal, line {problem.line}" if problem.line else "Journal"
+        if problem.kind in ("trust", "control"):
+            place = "Journal"  # They name entries, of which the line is only the first.
         if problem.kind in _WORTH_KNOWING:
             notes.append(f"{place}: {problem.what}.")
         elif problem.kind in ("trust", "control"):
@@ -127,6 +141,34 @@ def claim_reasons(claims: Sequence[str]) -> Iterator[Reason]:
         yield _broken("claim", f"Journal: {claim}.")
     if len(claims) > _MOST_PROBLEMS:
         yield _broken("claim", f"Journal: {len(claims) - _MOST_PROBLEMS:,} more claims like these.")
+
+
+def stray_reasons(names: Sequence[str], *, journal: bool) -> Iterator[Reason]:
+    """Yield that documents lie there of which no entry tells.
+
+    Args:
+        names: their files.
+        journal: whether there is a journal at all.
+    """
+    said = f"{len(names):,} {'document lies' if len(names) == 1 else 'documents lie'}"
+    if names and journal:
+        yield Reason(
+            Verdict.DUE,
+            "entry-missing",
+            f"{said} there that no entry names: {listed(names)}. An entry is missing: somebody removed it, or a run "
+            "was stopped.",
+            "Compare the journal with copies, and with heads that others noted (--head). Where a run was stopped, "
+            "enter what it left: `shares journal add SET noted --remark TEXT --document FILE`.",
+            tuple(names),
+        )
+    elif names:
+        yield Reason(
+            Verdict.BROKEN,
+            "journal-removed",
+            f"The set has no journal, and {said} there that come of one: {listed(names)}. It was removed.",
+            "Bring it back from a copy, and compare its head with one that was noted elsewhere. Begin no other.",
+            tuple(names),
+        )
 
 
 def margin_reasons(life: Life, margin: Margin, rows: Sequence[CustodianRow]) -> Iterator[Reason]:
@@ -200,36 +242,50 @@ def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:
 
 
 def drill_reasons(drills: Sequence[DrillRow]) -> Iterator[Reason]:
-    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way."""
+    """Yield that the last drill of a kind failed; a recovery makes up for practice as well, and not the other way.
+
+    One that is still open has failed as soon as a rehearsal did, until another passes: left open it is worth no more.
+    """
     settled = {"attendance"}
     for row in reversed(drills):
-        if row.passed is None or row.kind in settled:
+        failed_so_far = row.passed is None and row.outcomes and row.took is None
+        if row.kind in settled or (row.passed is None and not failed_so_far):
             continue
         settled |= {row.kind, "practice"} if row.passed else {row.kind}
         if not row.passed:
             # A recovery that only took too long did recover.
             level = Verdict.AT_RISK if row.kind == "recovery" and row.took is None else Verdict.DUE
-            yield Reason(
-                level,
-                f"{row.kind}-drill-failed",
-                f"The last {row.kind} drill, {row.number}, failed: {'; '.join(row.findings) or 'see its report'}.",
-                "Find out why, put it right, and repeat the drill.",
-            )
+            said = "; ".join(row.findings) or "see its report"
+            what = f"The last {row.kind} drill, {row.number}, failed: {said}."
+            if failed_so_far:
+                what = f"The {row.kind} drill {row.number} is still open, and failed so far: {'; '.join(row.outcomes)}."
+            yield Reason(level, f"{row.kind}-drill-failed", what, "Find out why, put it right, and repeat the drill.")
 
 
 def task_reasons(tasks: Sequence[Task]) -> Iterator[Reason]:
-    """Yield what is overdue; a departure or incident is urgent from the first hour on."""
+    """Yield what is overdue; a departure, incident or loss is urgent from the first hour on."""
     for task in tasks:
         until = f"due {task.due:%Y-%m-%d %H:%M} UTC"
-        if task.kind in ("departure", "incident"):
+        if task.kind in ("departure", "incident", "loss"):
             urgent = "Overdue: " if task.overdue else ""
-            resolve = f" Then enter it: `shares journal add SET resolved --entry {task.entry}`."
-            yield Reason(
-                Verdict.DUE, f"{task.kind}-open", f"{urgent}{task.what} ({until}).", task.advice + resolve, task.about
-            )
+            step = f"{task.advice} {_resolve(task)}"
+            yield Reason(Verdict.DUE, f"{task.kind}-open", f"{urgent}{task.what} ({until}).", step, task.about)
         elif task.overdue and task.kind in _OVERDUE:
             step, what = _OVERDUE[task.kind]
+            if task.kind == "closing":
+                step = step.format(drill=task.entry)
+            elif task.entry is not None:
+                step = f"{step} {_resolve(task)}"
             yield Reason(Verdict.DUE, f"{task.kind}-overdue", f"{what}: {task.what} ({until}).", step, task.about)
+
+
+def _resolve(task: Task) -> str:
+    """Say by which command the end of a task is entered."""
+    action = f" --action {task.action}" if task.action is not None else ""
+    usual = {"replacement": '"key replaced"', "action": "done"}.get(task.kind)
+    command = f"`shares journal add SET resolved --entry {task.entry}{action} --how {usual or 'HOW'}`"
+    others = ", ".join(f'"{how}"' if " " in how else how for how in get_args(Remedy))
+    return f"Then enter it: {command}." if usual else f"Then enter it: {command}, HOW being one of: {others}."
 
 
 def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Reason]:

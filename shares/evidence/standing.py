@@ -2,11 +2,13 @@
 
 A custodian is confirmed by a proof of content within the policy's ``attest_every``; or by a pack seen closed within it,
 together with a proof of content within ``content_every``. Whatever may have touched the share voids earlier proofs: an
-incident, a departure, a copy destroyed, a new holder, a broken seal, a share found damaged.
+incident, a departure, a copy destroyed or lost, a new holder, a broken seal, a share found damaged. A finding of the
+share stays with the share, whoever holds it, until its content is proven anew.
 
 Source: NIST SP 800-53, CP-9(1) (media tested at a defined frequency); PCI PIN 9-2 (a tamper sign is analysed; read in a
 summary); trade practice: a seal is no proof of content, and silence is no consent.
-May import: shares.documents, shares.history.journal, shares.evidence.audited, .inventory, .life.
+May import: shares.documents, shares.history.journal, shares.evidence.asked, .audited, .inventory,
+.life.
 Secret: nothing. Confidential: persons, sites, proofs. Public: nothing.
 Does not: judge attestations; it is given what each of them proves.
 """
@@ -16,7 +18,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from datetime import datetime
-from typing import NamedTuple
+from typing import Literal, NamedTuple
 
 from shares.documents.event import (
     Attested,
@@ -30,6 +32,7 @@ from shares.documents.event import (
     Lost,
     Resolved,
 )
+from shares.evidence.asked import unanswered
 from shares.evidence.audited import CustodianRow, Proof, Status
 from shares.evidence.inventory import take_inventory
 from shares.evidence.life import Life
@@ -58,22 +61,36 @@ class _Standing:
     content: datetime | None = None
     sealed: datetime | None = None
     unattributed: datetime | None = None
-    doubt: Status | None = None
+    # A finding of the share, until its content is proven anew; and beside it, why the place is empty. The one outlives
+    # the other: whoever takes the place over takes the finding with it.
+    doubt: Literal["damaged", "in doubt"] | None = None
     why: str = ""
     doubted: datetime | None = None
+    gone: Literal["departed", "destroyed", "lost"] | None = None
+    gone_why: str = ""
     proofs: list[Proof] = field(default_factory=list)
 
-    def void(self, doubt: Status | None, why: str, time: datetime) -> None:
-        """Forget what was proven: something may have touched the share. Whoever has left, or whose share is destroyed,
-        stays so."""
+    def forget(self) -> None:
+        """Let nothing that was proven count any more: something may have touched the share."""
         self.content = self.sealed = self.unattributed = None
-        if self.doubt not in ("departed", "destroyed"):
-            self.doubt, self.why, self.doubted = doubt, why, time
+
+    def void(self, doubt: Literal["damaged", "in doubt"], why: str, time: datetime) -> None:
+        """Doubt the share. Damage that was found is not made less by a doubt, and the first finding sets the date."""
+        self.forget()
+        if self.doubt != "damaged":
+            self.doubt, self.why, self.doubted = doubt, why, self.doubted or time
+
+    def leave(self, gone: Literal["departed", "destroyed", "lost"], why: str) -> None:
+        """Empty the place. Whose share is destroyed or lost stays so, whoever leaves."""
+        self.forget()
+        if gone != "departed" or self.gone is None:
+            self.gone, self.gone_why = gone, why
 
     def fill(self, time: datetime) -> None:
         """Let the place be filled again after a departure; what was proven before counts no more."""
-        if self.doubt == "departed":
-            self.doubt, self.why, self.doubted, self.since = None, "", None, time
+        if self.gone == "departed":
+            self.forget()
+            self.gone, self.gone_why, self.since = None, "", time
 
     def prove(self, proof: Proof) -> None:
         """Take what an attestation proves, or shows to be amiss."""
@@ -84,8 +101,7 @@ class _Standing:
             self.void("in doubt", f"seal found broken, entry {proof.entry}", proof.time)
         elif proof.grade == "content" and proof.counts:
             self.content = max(proof.time, self.content or proof.time)
-            if self.doubt in ("damaged", "in doubt"):
-                self.doubt, self.why, self.doubted = None, "", None
+            self.doubt, self.why, self.doubted = None, "", None
         elif proof.grade == "sealed" and proof.counts:
             self.sealed = max(proof.time, self.sealed or proof.time)
         elif proof.grade == "content" and proof.result == "intact":
@@ -109,13 +125,17 @@ class Standings:
             for name in life.names
         }
         self._held = {name: sum(copy.fate == "held" for copy in copies) for name, copies in own.items()}
-        # By which entry the last copy of a share came to its end.
+        # Of shares of which no copy is left, by which entry the last one came to its end, and which copies were lost.
         self._ended = {
-            name: max(copy.entry or 0 for copy in own[name])
+            name: (
+                max(copy.entry or 0 for copy in own[name]),
+                [copy.entry for copy in own[name] if copy.fate == "lost"],
+            )
             for name, held in self._held.items()
             if own[name] and not held
         }
         self._departed: dict[int, tuple[str, ...]] = {}
+        self._unanswered = unanswered(life)
         self._spans: list[Span] = []
         self._confirmed: dict[str, Span] = {}
         time = life.start
@@ -160,21 +180,30 @@ class Standings:
             case Departed():
                 self._departed[number] = event.custodians
                 for one in (touched := self._of(*event.custodians)):
-                    one.void("departed", f"{event.person} has left, entry {number}", time)
+                    one.leave("departed", f"{event.person} has left, entry {number}")
                 return touched
             case HandedOn():
+                # Handing on changes who holds the share, and not what was found of it.
                 for one in (touched := self._of(event.custodian)):
                     one.fill(time)
-                    one.void(None, "", time)
+                    one.forget()
                     one.person, one.since = event.to, time
                 return touched
             case Destroyed() | Lost():
                 for one in (touched := self._of(event.custodian)):
                     one.void("in doubt", f"a copy was {event.what}, entry {number}", time)
-                    if self._ended.get(event.custodian) == number:
-                        one.doubt, one.why = "destroyed", f"no copy is left, entry {number}"
+                    self._ends(one, number)
                 return touched
         return []
+
+    def _ends(self, one: _Standing, number: int) -> None:
+        """Empty the place where the last copy came to its end; what was lost is not said to be destroyed."""
+        ended, lost = self._ended.get(one.name, (0, []))
+        if ended == number and lost:
+            entries = ", ".join(f"entry {entry}" for entry in lost)
+            one.leave("lost", f"no copy is left: lost, {entries}; it may turn up with anybody")
+        elif ended == number:
+            one.leave("destroyed", f"no copy is left, entry {number}")
 
     def _of(self, *names: str) -> list[_Standing]:
         return [self._all[name] for name in names if name in self._all]
@@ -182,7 +211,7 @@ class Standings:
     def _until(self, one: _Standing) -> datetime | None:
         """Return until when a custodian is confirmed, by what they have proven so far; None where by nothing."""
         held = self._life.intervals
-        if one.content is None or one.doubt is not None:
+        if one.content is None or one.doubt is not None or one.gone is not None:
             return None
         until = one.content + held.attest_every
         if one.sealed is not None:
@@ -215,13 +244,15 @@ class Standings:
             card=one.card,
             copies=self._held[one.name],
             proofs=tuple(one.proofs),
+            unanswered=self._unanswered.get(one.name, ()),
         )
 
     def _stands(self, one: _Standing) -> tuple[Status, str, datetime | None]:
         life, until = self._life, self._until(one)
+        if one.gone is not None:
+            return one.gone, one.gone_why, None
         if one.doubt is not None:
-            gone = one.doubt in ("departed", "destroyed")
-            return one.doubt, one.why, None if gone else one.doubted
+            return one.doubt, one.why, one.doubted
         if until is not None and until > life.at:
             if one.content is not None and one.content + life.intervals.attest_every > life.at:
                 return "confirmed", f"content proven {one.content:%Y-%m-%d}", until

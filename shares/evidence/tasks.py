@@ -14,16 +14,19 @@ Does not: store tasks: the journal sets them and ends them. People decide; a pra
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from datetime import datetime
+from datetime import datetime, timedelta
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Attested, Challenged, Dealt, Departed, DrillClosed, Incident, Recovered
+from shares.documents.event import Departed, DrillClosed, Incident, Lost, Recovered
 from shares.documents.policy import folded
+from shares.evidence.asked import still_asked
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Task, TaskKind
 from shares.evidence.exposure import UNKNOWN
 from shares.evidence.life import Life
 
 DECIDE = "A practised key-management professional decides."
+OPEN_FOR = timedelta(days=7)
+"""How long a drill may stay open: what it showed is told while those who were there remember it."""
 _MOST_NAMED = 6
 
 
@@ -47,6 +50,7 @@ def tasks(
         *_attestations(life, rows),
         *_silent(life),
         _drill(life, drills),
+        *_closings(life, drills),
         *_refresh(life),
         *_set_by_entries(life, exposure),
         *_actions(life, reports),
@@ -79,27 +83,11 @@ def _attestations(life: Life, rows: Sequence[CustodianRow]) -> Iterator[Task]:
 
 def _silent(life: Life) -> Iterator[Task]:
     """Yield one task for each challenge with custodians who have neither answered it nor a later one."""
-    asked: dict[bytes, tuple[int, datetime, dict[str, None]]] = {}
-    for entry in life.entries:
-        match entry.event:
-            case Dealt():
-                asked.clear()
-            case Challenged(drill=None) as event:
-                # The latest challenge is the one to answer.
-                for _, _, names in asked.values():
-                    for name in event.custodians:
-                        names.pop(name, None)
-                asked[event.challenge] = entry.sequence, event.due, dict.fromkeys(event.custodians)
-            case Attested() as event if event.challenge in asked:
-                asked[event.challenge][2].pop(event.custodian, None)
-            case Departed() as event:
-                for _, _, names in asked.values():
-                    for name in event.custodians:
-                        names.pop(name, None)
-    for number, due, names in asked.values():
-        if names:
-            what = f"answer the challenge of entry {number}: {listed(list(names))}"
-            yield _task(life, "answer", what, due, about=list(names))
+    for one in still_asked(life):
+        if one.silent:
+            names = list(one.silent)
+            what = f"answer the challenge of entry {one.number}: {listed(names)}"
+            yield _task(life, "answer", what, one.due, about=names)
 
 
 def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:
@@ -107,6 +95,13 @@ def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:
     since = max(passed, default=life.start)
     last = f"the last one passed {since:%Y-%m-%d}" if passed else "none has passed yet"
     return _task(life, "drill", f"hold a drill of recovery or practice: {last}", since + life.intervals.drill_every)
+
+
+def _closings(life: Life, drills: Sequence[DrillRow]) -> Iterator[Task]:
+    for row in drills:
+        if row.closed is None:
+            what = f"close drill {row.number}, of {row.kind}, open since {row.opened:%Y-%m-%d}"
+            yield _task(life, "closing", what, row.opened + OPEN_FOR, about=row.custodians, entry=row.number)
 
 
 def _refresh(life: Life) -> Iterator[Task]:
@@ -131,6 +126,11 @@ def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
                 advice = incident_advice(event, exposure)
                 about = (*event.custodians, *event.persons)
                 yield _task(life, "incident", what, event.due, about=about, entry=number, advice=advice)
+            case Lost():
+                what = f"deal with the lost copy of {event.custodian}: {event.copy_}, {event.reason}"
+                due = entry.time + life.respond_within
+                advice = loss_advice(event, exposure)
+                yield _task(life, "loss", what, due, about=(event.custodian,), entry=number, advice=advice)
             case Recovered(disposition="replace", by=datetime() as by):
                 what = f"replace the key that was recovered: {event.reason}"
                 yield _task(life, "replacement", what, by, about=event.custodians, entry=number)
@@ -190,6 +190,20 @@ def incident_advice(event: Incident, exposure: Sequence[Known]) -> str:
         return said
     who = listed(event.persons) if event.persons else UNKNOWN
     return f"Refresh: {who} may know {names}{_missing(known)}; new shares make that worthless. {DECIDE}"
+
+
+def loss_advice(event: Lost, exposure: Sequence[Known]) -> str:
+    """Say how a loss is dealt with: as an incident, since somebody unknown may have found the copy.
+
+    Args:
+        event: the loss.
+        exposure: who has known what.
+    """
+    known = [row for row in exposure if row.kind == "unknown"]
+    return _worst(known) or (
+        f"Treat it as an incident: it may turn up with anybody{_missing(known)}. Refresh, so that it is worth nothing, "
+        f"or reassign the place of {event.custodian}. {DECIDE}"
+    )
 
 
 def _worst(known: Sequence[Known]) -> str:

@@ -49,7 +49,7 @@ _SEVERAL: Final = {
     ("incident", "person"),
 }
 RESPOND_WITHIN: Final = timedelta(hours=24)
-"""How soon a departure or incident is dealt with where no policy says."""
+"""How soon a departure, incident or loss is dealt with where no policy says."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

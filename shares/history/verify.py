@@ -51,7 +51,7 @@ def verify(
         *_document_problems(journal, files, frozenset(names)),
         *_set_aside(journal, names),
         *_signer_problems(journal, policy, trusted),
-        *_head_problems(journal, heads),
+        *head_problems(journal, heads),
     )
 
 
@@ -139,12 +139,19 @@ def _signer_problems(journal: Journal, policy: Policy | None, trusted: Sequence[
             what = f"{_entries(alone)} signed by fewer than two parties, and the policy asks for dual control"
             yield Problem(alone[0], what, kind="control")
     if known:
-        foreign = those(not keys & known for keys in signers)
+        # Those that nobody signed are told above.
+        foreign = those(bool(keys) and not keys & known for keys in signers)
         if foreign:
             yield Problem(foreign[0], f"{_entries(foreign)} signed by no party whose card is trusted", kind="trust")
 
 
-def _head_problems(journal: Journal, heads: Sequence[Head]) -> Iterator[Problem]:
+def head_problems(journal: Journal, heads: Iterable[Head]) -> Iterator[Problem]:
+    """Yield each head at which a journal never stood.
+
+    Args:
+        journal: as it was read.
+        heads: noted elsewhere, or quoted in documents.
+    """
     for head in heads:
         if journal.holds(head):
             continue

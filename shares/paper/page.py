@@ -26,7 +26,7 @@ def render(template: Path, *styles: Path, **facts: object) -> bytes:
     """Return a page: the template, with ``style`` and ``style_hash`` for its head, and the facts that it shows.
 
     Args:
-        template: of HTML; what it extends or includes lies beside it.
+        template: of HTML, which sets its title and includes ``head.html``; what else it includes lies beside it.
         styles: style sheets, put together in this order.
         facts: what the template names.
     """
@@ -44,7 +44,7 @@ def _text(path: Path) -> str:
 @cache
 def _templates(folder: Path) -> jinja2.Environment:
     return jinja2.Environment(
-        loader=jinja2.FileSystemLoader(folder),
+        loader=jinja2.FileSystemLoader([folder, Path(__file__).parent]),
         autoescape=True,
         undefined=jinja2.StrictUndefined,
         trim_blocks=True,

@@ -102,6 +102,25 @@ def test_trust(harbour: Path) -> None:
     assert_refused(["audit", harbour / "sets/good", "--trust", harbour / "sets/good/record.json"], 4, "a party card")
 
 
+def test_a_head_that_was_noted_elsewhere_shows_a_journal_that_was_cut(harbour: Path, tmp_path: Path) -> None:
+    folder = shutil.copytree(harbour / "sets/good", tmp_path / "good")
+    head = Kept(folder, None, None).set.journal().head  # type: ignore[arg-type]
+    assert head
+    (tmp_path / "note.txt").write_text(f"On Monday it stood at {head.sequence} {head.head}.\n")
+    assert run("audit", "pack", folder, "--to", tmp_path / "whole.tar").code == 0
+    lines = (folder / "journal.jsonl").read_bytes().splitlines(keepends=True)
+    (folder / "journal.jsonl").write_bytes(b"".join(lines[:-1]))
+    assert run("audit", "pack", folder, "--to", tmp_path / "cut.tar").code == 0
+    for given in (f"{head.sequence} {head.head}", tmp_path / "note.txt"):
+        assert run("audit", tmp_path / "whole.tar", AT, "--head", given).code == 0
+        for cut in (folder, tmp_path / "cut.tar"):
+            told = run("audit", cut, AT, "--head", given)
+            assert (told.code, "it never stood at entry 7" in " ".join(told.out.split())) == (4, True)
+    assert run("audit", folder, AT).code == 6
+    assert_refused(["audit", harbour / "sets", "--head", tmp_path / "note.txt"], 2, "several sets")
+    assert_refused(["audit", folder, "--head", "tide"], 2, "no head")
+
+
 def test_a_page_is_written_once_for_its_reader_alone(harbour: Path, tmp_path: Path) -> None:
     page = tmp_path / "report.html"
     done = run("audit", harbour / "sets", AT, "--html", page)

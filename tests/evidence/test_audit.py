@@ -6,6 +6,7 @@ Checked against: the table of ``Verdict``; each tampering is one that a person w
 from __future__ import annotations
 
 import json
+import os
 import pickle
 import shutil
 from collections.abc import Callable
@@ -19,13 +20,24 @@ from kept import NAMES, OFFICE, PEOPLE, START, Kept, day, policy_text
 from parties import card, unlocked
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Attested, Dealt, Destroyed, Deviation, DrillClosed, Noted, Retired, Transcribed
+from shares.documents.event import (
+    Attested,
+    Dealt,
+    Destroyed,
+    Deviation,
+    DrillClosed,
+    Noted,
+    Retired,
+    ScriptStep,
+    Transcribed,
+)
 from shares.errors import StorageError
 from shares.evidence import audit as module
 from shares.evidence.audit import audit
 from shares.evidence.audited import Audit, Reason, Verdict
 from shares.history.files import PRACTICE_RECORD, FolderFiles
 from shares.history.journal import append, read_journal
+from shares.history.reports import append_with
 from shares.sharing.rule import Rule
 
 
@@ -118,6 +130,8 @@ def test_an_unsigned_entry_is_never_better_than_unsigned(kept: Kept) -> None:
     append(kept.folder, Noted(what="noted", remark="by whom?"), time=day(25))
     assert found(kept) == {"journal-not-vouched": Verdict.UNSIGNED}
     assert kept.audit(day(30)).counts.unsigned_entries == 1
+    (reason,) = kept.audit(day(30), trusted=[card(OFFICE)]).reasons  # One, not a second that nobody trusted signed.
+    assert reason.what.startswith(f"Journal: entry {len(lines(kept))} is not signed")
 
 
 def test_dual_control_is_looked_for(tmp_path: Path) -> None:
@@ -165,7 +179,8 @@ def test_a_removed_tail_is_caught_by_the_heads_that_documents_quote(kept: Kept) 
     journal = lines(kept)
     challenged = max(i for i, line in enumerate(journal) if b'"what":"challenged"' in line)
     write(kept, *journal[: challenged + 1])
-    assert "journal" not in found(kept)  # What nobody has noted elsewhere cannot be missed.
+    assert "journal" not in found(kept)  # No head tells; but the answers lie there, and no entry names them.
+    assert found(kept)["entry-missing"] is Verdict.DUE
     spliced = json.loads(journal[challenged])
     # Whoever holds the office's key writes another history before the challenge, and goes on from there.
     write(kept, *journal[: challenged - 1])
@@ -176,6 +191,130 @@ def test_a_removed_tail_is_caught_by_the_heads_that_documents_quote(kept: Kept) 
     audited = kept.audit(day(30))
     assert spliced["event"]["what"] == "challenged"
     assert any("never stood at" in reason.what for reason in audited.reasons if reason.level is Verdict.BROKEN)
+
+
+def without_its_last_round(kept: Kept) -> list[Path]:
+    """Cut the journal before its last challenge; return the documents of which it no longer tells."""
+    before = set(kept.folder.glob("*/*/*.json"))
+    write(kept, *lines(kept)[:-6])
+    named = {named.path for entry in kept.set.journal().entries for named in entry.documents}
+    return sorted(path for path in before if os.fspath(path.relative_to(kept.folder)) not in named)
+
+
+def test_documents_that_no_entry_names_tell_that_the_journal_was_cut(kept: Kept) -> None:
+    strays = without_its_last_round(kept)
+    assert len(strays) == 6
+    audited = kept.audit(day(25))
+    (reason,) = audited.reasons
+    assert (reason.level, reason.code) == (Verdict.DUE, "entry-missing")
+    assert reason.about == tuple(os.fspath(path.relative_to(kept.folder)) for path in strays)
+    # Cut further, to before where the challenge says that the journal stood, it is shown to be cut.
+    write(kept, *lines(kept)[:-1])
+    codes = found(kept, 25)
+    assert (codes["journal"], codes["entry-missing"]) == (Verdict.BROKEN, Verdict.DUE)
+
+
+def test_the_report_of_a_drill_that_no_entry_tells_of_is_heard(kept: Kept) -> None:
+    """Whoever removes a drill that failed leaves its report, which quotes a head; under no name is it passed over."""
+    number = kept.drill("recovery", day(25), NAMES[:2])
+    journal = lines(kept)
+    write(kept, *journal[:-1])
+    assert found(kept)["entry-missing"] is Verdict.DUE  # A run that was stopped leaves the same.
+    assert "journal" not in found(kept)
+    write(kept, *journal[: number - 1])
+    assert (found(kept)["journal"], found(kept)["entry-missing"]) == (Verdict.BROKEN, Verdict.DUE)
+    (kept.folder / f"drills/{number}/report.json").rename(kept.folder / f"drills/{number}/other.json")
+    assert found(kept)["journal"] is Verdict.BROKEN
+
+
+def test_a_head_is_heard_though_the_entry_that_names_its_document_is_of_another_kind(kept: Kept) -> None:
+    without_its_last_round(kept)
+    write(kept, *lines(kept)[:-1])
+    named = [kept.set.named(os.fspath(path.relative_to(kept.folder))) for path in kept.folder.glob("*/*/*.json")]
+    kept.append(Noted(what="noted", remark="nothing to see"), day(22), documents=named)
+    codes = found(kept, 25)
+    assert "entry-missing" not in codes
+    assert codes["journal"] is Verdict.BROKEN
+
+
+def test_what_a_stopped_run_left_is_settled_by_an_entry_that_keeps_a_copy(kept: Kept) -> None:
+    strays = without_its_last_round(kept)
+    attached = {path.name: path.read_bytes() for path in strays}
+    with unlocked(OFFICE) as key:
+        noted = Noted(what="noted", remark="the run was stopped")
+        append_with(kept.set, noted, attached, keys=[key], time=day(24))
+    assert found(kept, 25) == {}
+
+
+def test_a_document_of_another_set_quotes_no_head_of_this_one(kept: Kept, tmp_path: Path) -> None:
+    other = Kept.make(tmp_path / "other", policy_text())
+    other.round(day(1))
+    shutil.copytree(other.folder / "attestations", kept.folder / "attestations", dirs_exist_ok=True)
+    assert found(kept) == {"entry-missing": Verdict.DUE}
+
+
+def test_a_journal_that_was_removed_is_never_better_than_the_true_one(kept: Kept) -> None:
+    (kept.folder / "journal.jsonl").unlink()
+    codes = found(kept)
+    assert codes["journal-removed"] is Verdict.BROKEN
+    assert codes["journal"] is Verdict.BROKEN  # The heads that the documents quote.
+    assert "no-journal" not in codes
+    shutil.rmtree(kept.folder / "attestations")
+    shutil.rmtree(kept.folder / "drills")
+    assert found(kept)["no-journal"] is Verdict.DUE
+
+
+def test_heads_that_were_noted_elsewhere(kept: Kept) -> None:
+    head = kept.set.journal().head
+    assert head
+    assert found(kept, heads=[head]) == {}
+    assert kept.audit(day(30), heads=[head]).counts.heads == kept.audit(day(30)).counts.heads + 1
+    write(kept, *lines(kept)[:-1])
+    (reason,) = [one for one in kept.audit(day(30), heads=[head]).reasons if one.level is Verdict.BROKEN]
+    assert head.words() in reason.what
+    (kept.folder / "journal.jsonl").unlink()
+    assert found(kept, heads=[head])["journal"] is Verdict.BROKEN
+
+
+# Before the split.
+
+
+def ceremony(folder: Path) -> None:
+    for step in (1, 2):
+        event = ScriptStep(what="step", script=bytes(32), step=step, initials="A.K.")
+        append(folder, event, time=day(step))
+
+
+def test_a_ceremony_under_way_is_due_and_not_broken(tmp_path: Path) -> None:
+    ceremony(tmp_path)
+    audited = audit(FolderFiles(tmp_path), at=day(3))
+    (reason,) = audited.reasons
+    assert (audited.verdict, reason.code) == (Verdict.DUE, "not-split")
+    assert "Nothing is split yet" in reason.what
+    assert audited.head
+    assert audited.head.startswith("entry 2, ")
+    assert (audited.counts.entries, audited.label) == (2, None)
+    head = read_journal((tmp_path / "journal.jsonl").read_bytes()).head
+    assert head
+    whole = (tmp_path / "journal.jsonl").read_bytes()
+    (tmp_path / "journal.jsonl").write_bytes(whole[: whole.index(b"\n") + 1])
+    assert audit(FolderFiles(tmp_path), at=day(3), heads=[head]).verdict is Verdict.BROKEN
+    (tmp_path / "journal.jsonl").write_bytes(whole.replace(b"A.K.", b"A.L.", 1))
+    assert audit(FolderFiles(tmp_path), at=day(3)).verdict is Verdict.BROKEN
+
+
+def test_a_set_whose_record_is_gone_is_no_ceremony(good: Kept, tmp_path: Path) -> None:
+    ceremony(tmp_path)
+    shutil.copytree(good.folder / "attestations", tmp_path / "attestations")
+    assert audit(FolderFiles(tmp_path), at=day(3)).verdict is Verdict.BROKEN
+    shutil.rmtree(tmp_path / "attestations")
+    append(tmp_path, Transcribed(what="transcribed", custodian="dry-dock", persons=("keeper one",)), time=day(2))
+    assert audit(FolderFiles(tmp_path), at=day(3)).verdict is Verdict.BROKEN
+    (tmp_path / "journal.jsonl").write_bytes(b"")
+    assert audit(FolderFiles(tmp_path), at=day(3)).verdict is Verdict.BROKEN
+
+
+# Files that are missing or altered.
 
 
 def test_the_tail_of_another_journal_does_not_fit(kept: Kept, tmp_path: Path) -> None:
@@ -272,7 +411,7 @@ def test_a_file_that_is_missing(kept: Kept, name: str) -> None:
     expected = {
         "record.json": ("record-unreadable", Verdict.BROKEN),
         "policy.toml": ("policy-missing", Verdict.DUE),
-        "journal.jsonl": ("no-journal", Verdict.DUE),
+        "journal.jsonl": ("journal-removed", Verdict.BROKEN),
         PRACTICE_RECORD: ("practice-missing", Verdict.DUE),
     }
     code, level = expected[name]

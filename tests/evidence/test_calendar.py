@@ -88,12 +88,18 @@ def test_the_year_of_the_sample_reads_as_it_went():
         ("N", "share read: damaged, 2026-09-09, a seal was opened, does not count")
     ]
     assert said["light-house"]["Jun 2026"] == [("!", "overdue since 2026-06-07: the next attestation")]
+    assert said["registrar"]["Sep 2026"] == [("?", "silent: asked, no answer by 2026-09-15")]
     assert said["dry-dock"] == {}
     assert said["The set"]["Nov 2026"] == [
         ("!", "overdue since 2026-11-11: E. Hull has left: end what they could still do"),
         ("O", "attendance drill 55 is still open, 2026-11-28"),
     ]
     assert [mark for mark, _ in made.legend] == list(LEGEND)
+
+
+def test_whoever_owes_an_answer_has_the_mark_in_their_own_row_and_not_in_the_sets():
+    tasks = [Task("answer", "answer the challenge of entry 9", on(11, 2), overdue, ("a",)) for overdue in (True, False)]
+    assert sum(map(len, calendar(replace(good(), drills=(), tasks=tuple(tasks))).rows[0].cells)) == 1
 
 
 def test_only_marks_that_occur_are_explained():

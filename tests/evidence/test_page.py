@@ -15,10 +15,12 @@ import axe_playwright_python
 import pytest
 from browser import started
 from evidence.samples import AT, a_year, custodian, good, of_verdict, on, proof, unreadable
+from parties import card
 
 from shares.evidence.audited import ExceptionRow, MarginSince, Verdict
 from shares.evidence.calendar import LEGEND
 from shares.evidence.page import CAUTIONS, MEANS, audit_page
+from shares.history.heads import heads_in
 
 AXE = (importlib.resources.files(axe_playwright_python) / "axe.min.js").read_text("utf-8")
 SCRIPT = "<script>alert(1)</script>"
@@ -267,6 +269,25 @@ def test_what_is_drawn_is_also_told(show):
     assert calendar.locator(".mark").count() == calendar.locator(".aloud").count() > 15
     explained = page.locator(".legend dt").all_inner_texts()
     assert set(calendar.locator(".mark").all_inner_texts()) == set(explained) == set(LEGEND)
+
+
+def test_silence_is_told_by_its_word_and_explained(show):
+    page = show([a_year()])
+    row = page.locator("table.wide tr", has=page.get_by_role("rowheader", name="registrar", exact=True))
+    assert "silent: asked, no answer by 2026-09-15" in row.first.inner_text()
+    assert LEGEND["?"] in page.locator(".legend").inner_text()
+
+
+def test_it_says_how_to_come_to_the_same_result():
+    plain = audit_page([a_year()], program="shares 1.0").decode()
+    assert "<code>shares audit SET --at 2026-12-01T07:00:00Z</code>." in plain
+    head = heads_in(a_year().head)
+    page = audit_page([a_year()], program="shares 1.0", trusted=[card("harbour-office"), card("registrar")], heads=head)
+    told = re.sub(r"\s+", " ", page.decode())
+    assert "--at 2026-12-01T07:00:00Z --trust CARD1 --trust CARD2 --head &#34;57 QFZA-" in told
+    assert f"CARD1 is the card of harbour-office, <code>{card('harbour-office').fingerprint}</code>" in told
+    assert f"CARD2 is the card of registrar, <code>{card('registrar').fingerprint}</code>" in told
+    assert "head below" not in told
 
 
 def test_it_prints_in_black_on_white_on_both_papers(show):

@@ -123,7 +123,7 @@ VOIDING: list[tuple[Event, str]] = [
     (HandedOn(what="handed-on", custodian=NAME, to="keeper six"), "not yet attested"),
     (Departed(what="departed", person="keeper one", custodians=(NAME,), due=day(31)), "departed"),
     (destroyed("original"), "destroyed"),
-    (Lost(what="lost", custodian=NAME, copy="original", by="a", witness="b", reason="?"), "destroyed"),
+    (Lost(what="lost", custodian=NAME, copy="original", by="a", witness="b", reason="?"), "lost"),
     (Received(what="received", custodian=NAME), "confirmed"),
     (Copied(what="copied", custodian=NAME, copy="4711"), "confirmed"),
 ]
@@ -136,7 +136,7 @@ def test_what_may_have_touched_the_share_voids_proof(kept: Kept, event: Event, t
     assert status(kept, 29) == "confirmed"
     assert status(kept, 30) == then
     prove(kept, 35)
-    final = "confirmed" if then not in ("departed", "destroyed") else then
+    final = "confirmed" if then not in ("departed", "destroyed", "lost") else then
     assert status(kept, 36) == final
     other = row(kept, 36, "south-pier")
     assert other.status == "not yet attested"
@@ -147,11 +147,82 @@ def test_after_a_departure_only_whoever_fills_the_place_counts(kept: Kept) -> No
     kept.append(incident(), day(31))
     assert (status(kept, 32), row(kept, 32).due) == ("departed", None)
     kept.append(HandedOn(what="handed-on", custodian=NAME, to="keeper six"), day(40))
-    assert (status(kept, 41), row(kept, 41).person, row(kept, 41).due) == ("not yet attested", "keeper six", day(130))
+    # The incident stays with the share, whoever holds it now.
+    assert (status(kept, 41), row(kept, 41).person, row(kept, 41).due) == ("in doubt", "keeper six", day(31))
     prove(kept, 42)
     assert status(kept, 43) == "confirmed"
     kept.append(Resolved(what="resolved", entry=left.sequence, how="done"), day(44))
     assert status(kept, 45) == "confirmed"
+
+
+FINDINGS: list[tuple[str, str]] = [("damage", "damaged"), ("incident", "in doubt"), ("seal", "in doubt")]
+
+
+@pytest.mark.parametrize(("finding", "then"), FINDINGS)
+@pytest.mark.parametrize("leaves", [False, True])
+def test_handing_on_changes_the_person_and_not_the_finding(kept: Kept, finding: str, then: str, leaves: bool) -> None:
+    prove(kept, 10)
+    if finding == "damage":
+        prove(kept, 20, damaged=True)
+    elif finding == "seal":
+        prove(kept, 20, grade="sealed", seal="broken")
+    else:
+        kept.append(incident(), day(20))
+    before = row(kept, 21)
+    assert (before.status, before.due) == (then, day(20))
+    if leaves:
+        kept.append(Departed(what="departed", person="keeper one", custodians=(NAME,), due=day(31)), day(30))
+        assert status(kept, 31) == "departed"
+    kept.append(HandedOn(what="handed-on", custodian=NAME, to="keeper six"), day(40))
+    after = row(kept, 41)
+    assert (after.status, after.due, after.why, after.person) == (then, day(20), before.why, "keeper six")
+    kept.append(HandedOn(what="handed-on", custodian=NAME, to="keeper one"), day(42))
+    assert (status(kept, 43), row(kept, 43).due) == (then, day(20))
+    prove(kept, 44, grade="sealed")
+    assert status(kept, 45) == then
+    prove(kept, 46)
+    assert status(kept, 47) == "confirmed"
+
+
+def test_damage_is_not_made_less_by_an_incident(kept: Kept) -> None:
+    prove(kept, 10, damaged=True)
+    kept.append(incident(), day(20))
+    assert (status(kept, 21), row(kept, 21).due) == ("damaged", day(10))
+
+
+def test_what_a_leaver_proves_does_not_count_for_whoever_comes(kept: Kept) -> None:
+    left = kept.append(Departed(what="departed", person="keeper one", custodians=(NAME,), due=day(31)), day(30))
+    prove(kept, 31)
+    kept.append(Resolved(what="resolved", entry=left.sequence, how="done"), day(33))
+    assert status(kept, 34) == "not yet attested"
+
+
+def lost(copy: str = "original") -> Lost:
+    return Lost(what="lost", custodian=NAME, copy=copy, by="a", witness="b", reason="a flooded cellar")
+
+
+def test_a_lost_share_is_said_to_be_lost_until_it_is_found_and_destroyed(kept: Kept) -> None:
+    prove(kept, 10)
+    number = kept.append(lost(), day(20)).sequence
+    found = row(kept, 21)
+    assert (found.status, found.copies, found.due, found.counts) == ("lost", 0, None, False)
+    assert found.why == f"no copy is left: lost, entry {number}; it may turn up with anybody"
+    (reason,) = [one for one in kept.audit(day(21)).reasons if one.code == "custodian-lost"]
+    assert "destroyed" not in reason.what.replace("not destroyed", "")
+    assert "incident" in reason.next
+    assert [(known.who, known.shares) for known in kept.audit(day(21)).exposure if known.kind == "unknown"] == [
+        ("somebody unknown", (NAME,))
+    ]
+    kept.append(destroyed("original"), day(30))
+    assert status(kept, 31) == "destroyed"
+
+
+def test_where_one_of_several_copies_was_lost_the_share_is_lost(kept: Kept) -> None:
+    kept.append(Copied(what="copied", custodian=NAME, copy="4711"), day(11))
+    number = kept.append(lost("4711"), day(13)).sequence
+    assert (status(kept, 14), row(kept, 14).copies) == ("in doubt", 1)
+    kept.append(destroyed("original"), day(15))
+    assert (status(kept, 16), f"lost, entry {number};" in row(kept, 16).why) == ("lost", True)
 
 
 def test_a_departure_that_was_resolved_lets_the_custodian_prove_anew(kept: Kept) -> None:

@@ -9,18 +9,23 @@ from datetime import timedelta
 from pathlib import Path
 
 import pytest
-from kept import NAMES, Kept, day, policy_text
+from kept import NAMES, OFFICE, Kept, day, policy_text
+from parties import unlocked
 
 from shares.documents.drill_report import Action
 from shares.documents.event import (
     Departed,
+    DrillKind,
     HandedOn,
     Incident,
+    Lost,
     Recovered,
+    Rehearsed,
     Resolved,
     Transcribed,
 )
 from shares.evidence.audited import Task
+from shares.evidence.drill import open_drill
 
 
 @pytest.fixture
@@ -62,11 +67,22 @@ def test_whoever_is_silent_is_named_until_they_answer_or_are_asked_anew(kept: Ke
     assert (task.about, task.due, task.overdue) == (NAMES[3:], day(24), False)
     assert tasks(kept, 25, "answer")[0].overdue
     assert "answer-overdue" in codes(kept, 25)
+    (silent,) = {row.silent for row in kept.audit(day(25)).custodians if row.name in NAMES[3:]}
+    assert (silent, {row.silent for row in kept.audit(day(25)).custodians[:3]}) == (day(24), {None})
     second = kept.ask(day(26), NAMES[3:])
     assert [(task.about, task.due) for task in tasks(kept, 27, "answer")] == [(NAMES[3:], day(40))]
     kept.answer(second, NAMES[3:4], day(28))
     kept.append(departed("keeper five", "dry-dock"), day(29))
     assert tasks(kept, 45, "answer") == []
+    # What passed in silence is told of whoever answered later as well; asked anew in time, nobody was silent.
+    rows = {row.name: row for row in kept.audit(day(45)).custodians}
+    assert (rows["registrar"].unanswered, rows["registrar"].silent) == ((day(24),), None)
+    assert (rows["dry-dock"].unanswered, rows["dry-dock"].silent) == ((day(24),), day(24))
+    assert rows["north-pier"].unanswered == ()
+    kept.ask(day(46), NAMES[:1])
+    kept.ask(day(50), NAMES[:1])
+    assert [row.unanswered for row in kept.audit(day(63)).custodians[:1]] == [()]
+    assert [row.unanswered for row in kept.audit(day(65)).custodians[:1]] == [(day(64),)]
 
 
 def test_drills_are_due_from_the_last_that_passed(kept: Kept) -> None:
@@ -90,6 +106,42 @@ def test_a_practice_drill_does_not_make_up_for_a_recovery_that_failed(kept: Kept
     assert "recovery-drill-failed" in codes(kept, 32)
 
 
+def rehearsed(number: int, outcome: str) -> Rehearsed:
+    passed = outcome == "passed"
+    return Rehearsed(
+        what="rehearsed", drill=number, custodians=NAMES[:3], persons=(), passed=passed, outcome=outcome, seconds=9
+    )
+
+
+@pytest.mark.parametrize(("kind", "level"), [("recovery", "at risk"), ("practice", "due")])
+def test_a_drill_that_is_left_open_has_failed_all_the_same(kept: Kept, kind: DrillKind, level: str) -> None:
+    kept.round(day(1))
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, kind, keys=[key], at=day(10))[0].number
+    assert kept.audit(day(11)).reasons == ()
+    (task,) = tasks(kept, 11, "closing")
+    assert (task.due, task.entry, task.overdue) == (day(17), number, False)
+    kept.append(rehearsed(number, "one share is damaged"), day(11))
+    (reason,) = kept.audit(day(12)).reasons
+    assert (reason.code, str(reason.level)) == (f"{kind}-drill-failed", level)
+    assert "still open" in reason.what
+    assert "one share is damaged" in reason.what
+    assert f"{kind}-drill-failed" in codes(kept, 12)
+    kept.append(rehearsed(number, "passed"), day(13))
+    assert codes(kept, 14) == []
+    (reason,) = kept.audit(day(18)).reasons
+    assert (reason.code, str(reason.level)) == ("closing-overdue", "due")
+    assert f"`shares drill close SET --drill {number}`" in reason.next
+
+
+def test_an_open_drill_that_failed_is_made_up_for_by_a_later_one(kept: Kept) -> None:
+    with unlocked(OFFICE) as key:
+        number = open_drill(kept.set, "recovery", keys=[key], at=day(10))[0].number
+    kept.append(rehearsed(number, "one share is damaged"), day(11))
+    kept.drill("recovery", day(12), NAMES[:3])
+    assert "recovery-drill-failed" not in codes(kept, 13)
+
+
 def test_a_recovery_that_took_too_long_is_due_and_no_risk(tmp_path: Path) -> None:
     kept = Kept.make(tmp_path / "set", policy_text(recover_within="4h"))
     kept.round(day(1))
@@ -100,11 +152,45 @@ def test_a_recovery_that_took_too_long_is_due_and_no_risk(tmp_path: Path) -> Non
     assert "5 h" in reason.what
 
 
+def test_each_task_names_the_command_that_ends_it(kept: Kept) -> None:
+    left = kept.append(departed("keeper two", "south-pier"), day(30)).sequence
+    gave = Recovered(
+        what="recovered", custodians=NAMES[:3], persons=(), reason="a fire", disposition="replace", by=day(31)
+    )
+    replaced = kept.append(gave, day(30)).sequence
+    action = Action(what="call by telephone", owner=OFFICE, due=day(32))
+    kept.drill("practice", day(30), NAMES[:3], actions=[action, action])
+    closed = kept.set.journal().entries[-1].sequence
+    said = " ".join(reason.next for reason in kept.audit(day(40)).reasons)
+    assert f"`shares journal add SET resolved --entry {left} --how HOW`" in said
+    assert 'refreshed, reassigned, "key replaced"' in said
+    assert f'`shares journal add SET resolved --entry {replaced} --how "key replaced"`' in said
+    for number in (1, 2):
+        assert f"`shares journal add SET resolved --entry {closed} --action {number} --how done`" in said
+
+
 def test_refreshing_is_asked_for_where_the_policy_asks(tmp_path: Path, kept: Kept) -> None:
     assert tasks(kept, 1, "refresh") == []
     other = Kept.make(tmp_path / "other", policy_text(refresh_every="100d"))
     assert tasks(other, 1, "refresh")[0].due == day(100)
     assert "refresh-overdue" in codes(other, 101)
+
+
+def test_a_loss_is_dealt_with_like_an_incident(tmp_path: Path) -> None:
+    kept = Kept.make(tmp_path / "set", policy_text(respond_within="36h"))
+    gone = Lost(what="lost", custodian="dry-dock", copy="original", by="a", witness="b", reason="a flooded cellar")
+    number = kept.append(gone, day(30)).sequence
+    (task,) = tasks(kept, 30.5, "loss")
+    assert (task.due, task.entry, task.about, task.overdue) == (day(31, 12), number, ("dry-dock",), False)
+    assert "Refresh" in task.advice
+    assert "reassign the place of dry-dock" in task.advice
+    assert "(2 more would make a quorum)" in task.advice
+    assert "loss-open" in codes(kept, 30.5)
+    assert tasks(kept, 32, "loss")[0].overdue
+    kept.append(Resolved(what="resolved", entry=number, how="reassigned"), day(33))
+    assert tasks(kept, 34, "loss") == []
+    assert "loss-open" not in codes(kept, 34)
+    assert "custodian-lost" in codes(kept, 34)  # The place is still empty.
 
 
 def test_a_leaver_who_holds_a_place_is_to_be_replaced(kept: Kept) -> None:
