@@ -58,25 +58,31 @@ def unanswered(life: Life) -> dict[str, tuple[datetime, ...]]:
 def _walked(life: Life) -> tuple[list[Asked], dict[str, list[datetime]]]:
     asked: dict[bytes, Asked] = {}
     passed: dict[str, list[datetime]] = {}
+    # What each custodian is still to answer: one challenge at most, so that many of them are walked through quickly.
+    waiting: dict[str, Asked] = {}
+
+    def end(names: tuple[str, ...], time: datetime) -> None:
+        """Let earlier challenges be answered no more by these; what was due by then has passed in silence."""
+        for name in names:
+            one = waiting.pop(name, None)
+            if one is not None and name in one.silent:
+                if one.due < time:
+                    passed.setdefault(name, []).append(one.due)
+                del one.silent[name]
+
     for entry in life.entries:
         match entry.event:
             case Dealt():
                 asked.clear()
                 passed.clear()
+                waiting.clear()
             case Challenged(drill=None) as event:
-                _end(asked, event.custodians, passed, entry.time)
-                asked[event.challenge] = Asked(entry.sequence, event.due, dict.fromkeys(event.custodians))
+                end(event.custodians, entry.time)
+                one = Asked(entry.sequence, event.due, dict.fromkeys(event.custodians))
+                asked[event.challenge] = one
+                waiting |= dict.fromkeys(event.custodians, one)
             case Attested() as event if event.challenge in asked:
                 asked[event.challenge].silent.pop(event.custodian, None)
-            case Departed() as event:
-                _end(asked, event.custodians, passed, entry.time)
+            case Departed():
+                end(life.leaving[entry.sequence], entry.time)
     return list(asked.values()), passed
-
-
-def _end(asked: dict[bytes, Asked], names: tuple[str, ...], passed: dict[str, list[datetime]], time: datetime) -> None:
-    """Let earlier challenges be answered no more by these; what was due by then has passed in silence."""
-    for one in asked.values():
-        for name in names:
-            if name in one.silent and one.due < time:
-                passed.setdefault(name, []).append(one.due)
-            one.silent.pop(name, None)

@@ -39,7 +39,7 @@ from shares.evidence.life import Life
 from shares.evidence.margin import margin, margins
 from shares.evidence.standing import Standings
 from shares.evidence.strays import find_strays
-from shares.evidence.tasks import tasks
+from shares.evidence.tasks import OUTLIVES, tasks
 from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, Files
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL, Journal, read_journal
 from shares.history.verify import head_problems, verify
@@ -148,12 +148,19 @@ def _worked_out(files: Files, life: Life, journal: Journal, filed: Filed, found:
         found.reasons += [
             *reasons.margin_reasons(life, now, rows),
             *reasons.custodian_reasons(rows),
+            *reasons.card_reasons(rows, journal.cards),
             *reasons.exposure_reasons(known, record.epoch),
             *reasons.drill_reasons(drilled),
             *reasons.task_reasons(to_do),
         ]
     else:
-        found.reasons += reasons.retired_reasons(rows, retired[0].time)
+        to_do = tuple(task for task in to_do if task.kind in OUTLIVES)
+        found.reasons += [
+            *reasons.retired_reasons(rows, retired[0].time),
+            *reasons.exposure_reasons(known, record.epoch),
+            *reasons.task_reasons(to_do),
+        ]
+    found.notes += standings.notes
     for name in life.intervals.assumed:
         days = getattr(life.intervals, name).days
         found.notes.append(f"The policy says no {name}: {days} days are taken.")
@@ -175,7 +182,7 @@ def _worked_out(files: Files, life: Life, journal: Journal, filed: Filed, found:
         margins=margins(life.rule, standings.spans(), life.start, life.at),
         exposure=known,
         drills=drilled,
-        tasks=to_do if retired is None else (),
+        tasks=to_do,
         exceptions=tuple(
             ExceptionRow(entry.sequence, entry.time, event.remark, event.remedy)
             for entry, event in life.each(Deviation)
@@ -219,7 +226,7 @@ class _Findings:
             return None
         if POLICY_NAME not in self.names:
             what = "The policy that the record names is missing: persons, sites and intervals are not known."
-            self._add(Verdict.DUE, "policy-missing", what, "Bring back the copy that was made at the split.")
+            self._add(Verdict.AT_RISK, "policy-missing", what, "Bring back the copy that was made at the split.")
             return None
         step = "Bring back the copy that was made at the split; a new policy goes with a new split."
         try:
@@ -250,11 +257,11 @@ class _Findings:
                 return Journal(), Filed()
             what = "The set has no journal: nothing is known of what became of its shares."
             step = "Look for it in copies; where there never was one, begin it: `shares journal add`."
-            self._add(Verdict.DUE, "no-journal", what, step)
+            self._add(Verdict.AT_RISK, "no-journal", what, step)
             return Journal(), Filed()
         try:
             journal = read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL))
-            filed = read_filed(journal, files, record)
+            filed = read_filed(journal, files, record, policy)
             strays = find_strays(files, self.names, journal, set_id=record.set, read=filed.read)
             self.heads = tuple(dict.fromkeys((*filed.heads, *strays.heads, *self.heads)))
             problems = verify(journal, files, record, policy, heads=self.heads, trusted=trusted)

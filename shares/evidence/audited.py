@@ -27,8 +27,8 @@ class Verdict(StrEnum):
     good         record and journal hold and are signed, a quorum is confirmed, and nothing is due
     unsigned     nobody vouches for the record, or for an entry of the journal, or nobody whom you trust
     due          something is to be done: an attestation, drill or task is overdue, or is yet to come for the first time
-    at risk      the confirmed custodians make no quorum, somebody has known one, a recovery drill failed, or a record
-                 is signed by none of the parties that are trusted
+    at risk      the confirmed custodians make no quorum, somebody has known one, a recovery drill failed, a record is
+                 signed by none of the parties that are trusted, or its policy or journal is missing
     broken       something does not hold: record, chain, signature, digest, or an entry that claims what is not proven
     ===========  ======================================================================================================
     """
@@ -90,7 +90,9 @@ class Proof:
         entry: the number of the journal's entry.
         grade: ``content``, ``sealed`` or ``present``.
         result: what the custodian found, in the words of ``verify``, or of the seal.
-        counts: whether it confirms the custodian: holds, is intact, and signed by the custodian's known party key.
+        counts: whether it confirms the custodian: holds, is intact, signed by the custodian's known party key, and was
+            asked for after whatever last touched the share.
+        asked: the number of the entry that tells of its challenge; 0 where none does.
     """
 
     time: datetime
@@ -101,6 +103,7 @@ class Proof:
     late: bool
     opened: bool
     counts: bool
+    asked: int = 0
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,8 +1,8 @@
 """The life of a set as its journal tells it up to a time: what exposure, margin, drills and tasks are worked out from.
 
 Source: none.
-May import: shares.documents, shares.history.reports, shares.planning.labels, shares.sharing.rule,
-shares.evidence.audited.
+May import: shares.documents, shares.history.holders, shares.history.reports, shares.planning.labels,
+shares.sharing.rule, shares.evidence.audited.
 Secret: nothing. Confidential: persons, sites and events. Public: the record.
 Does not: judge what the journal says, or whether it can be believed; ``evidence.audit`` does.
 """
@@ -16,10 +16,11 @@ from functools import cached_property
 from typing import TypeVar
 
 from shares.documents.entry import Entry
-from shares.documents.event import Dealt, Event, Resolved
-from shares.documents.policy import Policy, folded
+from shares.documents.event import Dealt, Departed, Event, Resolved
+from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.evidence.audited import Intervals
+from shares.history.holders import Holders
 from shares.history.reports import RESPOND_WITHIN
 from shares.planning import labels
 from shares.sharing.rule import Rule
@@ -111,6 +112,16 @@ class Life:
         """When the record's epoch began."""
         return self.dealt.time if self.dealt else self.record.created
 
+    @cached_property
+    def leaving(self) -> dict[int, tuple[str, ...]]:
+        """Whose places each departure empties, by the number of its entry: all that the person held then among them."""
+        holders, found = Holders(self.names, self.policy), dict[int, tuple[str, ...]]()
+        for entry in self.entries:
+            names = holders.take(entry.event)
+            if isinstance(entry.event, Departed):
+                found[entry.sequence] = names
+        return found
+
     def each(self, kind: type[One]) -> Iterator[tuple[Entry, One]]:
         """Return all events of one kind with their entries."""
         return ((entry, entry.event) for entry in self.entries if isinstance(entry.event, kind))
@@ -123,7 +134,3 @@ class Life:
             if event.entry < entry.sequence:  # What is not yet there cannot be done.
                 found[event.entry, event.action] = event
         return found
-
-    def is_person(self, custodian: str, person: str) -> bool:
-        """Say whether a custodian is this person by the policy, or bears that name."""
-        return folded(person) in (folded(self.people.get(custodian, custodian)), folded(custodian))

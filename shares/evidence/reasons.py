@@ -9,12 +9,13 @@ Does not: find anything out itself.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from datetime import datetime
 from typing import get_args
 
 from shares.documents.event import Remedy
 from shares.documents.party import PartyCard
+from shares.documents.policy import folded
 from shares.documents.record import Record
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Margin, Reason, Status, Task, TaskKind, Verdict
 from shares.evidence.life import Life
@@ -216,6 +217,30 @@ def custodian_reasons(rows: Sequence[CustodianRow]) -> Iterator[Reason]:
             yield Reason(Verdict.DUE, code, f"{what}: {listed(names)} ({why}).", step, names)
 
 
+def card_reasons(rows: Sequence[CustodianRow], cards: Mapping[str, PartyCard]) -> Iterator[Reason]:
+    """Yield that one party's card stands for several custodians: whoever has its key answers for all of them.
+
+    Args:
+        rows: how the custodians stand.
+        cards: those that the journal has introduced, by fingerprint; two with one signing key are one party.
+    """
+    by_key: dict[bytes | str, list[CustodianRow]] = {}
+    for row in rows:
+        if row.card is not None:
+            by_key.setdefault(cards[row.card].ed25519 if row.card in cards else row.card, []).append(row)
+    for found in by_key.values():
+        # Where policy or journal name one person for them, the margin in people tells what that means.
+        if len({folded(row.person) for row in found}) > 1:
+            names = tuple(row.name for row in found)
+            yield Reason(
+                Verdict.DUE,
+                "card-shared",
+                f"One party's card, {found[0].card}, stands for several custodians: {listed(names)}.",
+                "Have each custodian make a party key of their own, introduce its card, and ask them again.",
+                names,
+            )
+
+
 def exposure_reasons(exposure: Sequence[Known], epoch: int) -> Iterator[Reason]:
     """Yield who has known a quorum of the epoch. Recoveries that were decided on are told apart, in the exposure."""
     people = [row for row in exposure if row.kind in ("person", "unknown")]
@@ -289,7 +314,7 @@ def _resolve(task: Task) -> str:
 
 
 def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Reason]:
-    """Yield what is amiss with a set's end: nothing is due any more but what was left unaccounted for."""
+    """Yield what is amiss with a set's end: copies left unaccounted for, and those that only were given up as lost."""
     held = [row.name for row in rows if row.copies]
     if held:
         yield Reason(
@@ -298,4 +323,13 @@ def retired_reasons(rows: Sequence[CustodianRow], when: datetime) -> Iterator[Re
             f"The set was retired on {when:%Y-%m-%d}, and copies are not accounted for: {listed(held)}.",
             "Find and destroy each of them before a witness: `shares retire status` lists them.",
             tuple(held),
+        )
+    lost = [row.name for row in rows if row.status == "lost"]
+    if lost:
+        yield Reason(
+            Verdict.AT_RISK,
+            "retired-with-lost",
+            f"The set was retired on {when:%Y-%m-%d}, and copies were lost, not destroyed: {listed(lost)}.",
+            "They may turn up with anybody: see that the key is replaced, and protects nothing any more.",
+            tuple(lost),
         )

@@ -29,6 +29,7 @@ from shares.documents.policy import folded
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.inventory import Copy, Inventory, take_inventory
 from shares.history.folder import SetFolder
+from shares.history.holders import Holders
 from shares.history.journal import Journal
 from shares.storage import StrPath, read_file
 
@@ -259,8 +260,10 @@ def _check_witness(folder: SetFolder, copy: Copy, by: str, witness: str) -> None
         raise VerificationError(
             "the witness is the one who did it: nobody witnesses their own act", where="--witness", hint="have another"
         )
-    persons = [one.person for one in folder.policy.custodians if one.name == copy.custodian] if folder.policy else []
-    if folded(witness) in map(folded, (copy.custodian, *persons, *copy.holders)):
+    holders = Holders((custodian.name for custodian in folder.record.custodians), folder.policy)
+    for entry in folder.journal().entries:
+        holders.take(entry.event)
+    if holders.is_party(copy.custodian, witness):
         raise VerificationError(
             f"the witness is the custodian {copy.custodian}, and must be a third party",
             where="--witness",

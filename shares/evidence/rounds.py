@@ -27,8 +27,8 @@ from shares.evidence.attest import make_challenge
 from shares.evidence.inventory import take_inventory
 from shares.evidence.judge import Earlier, Judgement, check_challenge, judge
 from shares.evidence.retire import refuse_retired
-from shares.history.doubts import known_cards
 from shares.history.folder import SetFolder
+from shares.history.holders import known_cards
 from shares.history.journal import Journal
 from shares.storage import read_file
 
@@ -207,7 +207,7 @@ def enter(
             where=os.fspath(folder.path),
             hint="give the challenge that was filed there; another set's answers prove nothing here",
         )
-    known = _introduced(folder, known_cards(journal), cards or {}, keys, time)
+    known = _introduced(folder, known_cards(journal, folder.record, folder.policy), cards or {}, keys, time)
     earlier = {name: Earlier(_digest_of(entry), _is_attributed(entry)) for name, entry in found.answers.items()}
 
     def enter_one(attestation: Attestation, judgement: Judgement) -> Entry:

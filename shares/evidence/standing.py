@@ -2,8 +2,9 @@
 
 A custodian is confirmed by a proof of content within the policy's ``attest_every``; or by a pack seen closed within it,
 together with a proof of content within ``content_every``. Whatever may have touched the share voids earlier proofs: an
-incident, a departure, a copy destroyed or lost, a new holder, a broken seal, a share found damaged. A finding of the
-share stays with the share, whoever holds it, until its content is proven anew.
+incident, a departure, a copy destroyed or lost, a new holder or card, somebody else who typed it, a broken seal, a
+share found damaged. What was asked for before that proves nothing since. A finding of the share stays with the share,
+whoever holds it, until its content is proven anew.
 
 Source: NIST SP 800-53, CP-9(1) (media tested at a defined frequency); PCI PIN 9-2 (a tamper sign is analysed; read in a
 summary); trade practice: a seal is no proof of content, and silence is no consent.
@@ -16,7 +17,7 @@ Does not: judge attestations; it is given what each of them proves.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from datetime import datetime
 from typing import Literal, NamedTuple
 
@@ -31,7 +32,9 @@ from shares.documents.event import (
     Introduced,
     Lost,
     Resolved,
+    Transcribed,
 )
+from shares.documents.policy import folded
 from shares.evidence.asked import unanswered
 from shares.evidence.audited import CustodianRow, Proof, Status
 from shares.evidence.inventory import take_inventory
@@ -58,6 +61,8 @@ class _Standing:
     person: str
     since: datetime
     card: str | None = None
+    # The entry that last touched the share, its card or its holder: what was asked for before proves nothing since.
+    touched: int = 0
     content: datetime | None = None
     sealed: datetime | None = None
     unattributed: datetime | None = None
@@ -70,41 +75,44 @@ class _Standing:
     gone_why: str = ""
     proofs: list[Proof] = field(default_factory=list)
 
-    def forget(self) -> None:
-        """Let nothing that was proven count any more: something may have touched the share."""
+    def forget(self, entry: int) -> None:
+        """Let nothing that was proven count any more, nor what was asked for: something may have touched the share."""
+        self.touched = entry
         self.content = self.sealed = self.unattributed = None
 
-    def void(self, doubt: Literal["damaged", "in doubt"], why: str, time: datetime) -> None:
+    def void(self, doubt: Literal["damaged", "in doubt"], why: str, time: datetime, entry: int) -> None:
         """Doubt the share. Damage that was found is not made less by a doubt, and the first finding sets the date."""
-        self.forget()
+        self.forget(entry)
         if self.doubt != "damaged":
             self.doubt, self.why, self.doubted = doubt, why, self.doubted or time
 
-    def leave(self, gone: Literal["departed", "destroyed", "lost"], why: str) -> None:
+    def leave(self, gone: Literal["departed", "destroyed", "lost"], why: str, entry: int) -> None:
         """Empty the place. Whose share is destroyed or lost stays so, whoever leaves."""
-        self.forget()
+        self.forget(entry)
         if gone != "departed" or self.gone is None:
             self.gone, self.gone_why = gone, why
 
-    def fill(self, time: datetime) -> None:
+    def fill(self, time: datetime, entry: int) -> None:
         """Let the place be filled again after a departure; what was proven before counts no more."""
         if self.gone == "departed":
-            self.forget()
+            self.forget(entry)
             self.gone, self.gone_why, self.since = None, "", time
 
     def prove(self, proof: Proof) -> None:
         """Take what an attestation proves, or shows to be amiss."""
+        if proof.counts and proof.asked <= self.touched:
+            proof = replace(proof, counts=False)
         self.proofs.append(proof)
         if proof.result in ("damaged", "inconsistent dealing"):
-            self.void("damaged", f"found {proof.result}, entry {proof.entry}", proof.time)
+            self.void("damaged", f"found {proof.result}, entry {proof.entry}", proof.time, proof.entry)
         elif proof.result == "seal broken":
-            self.void("in doubt", f"seal found broken, entry {proof.entry}", proof.time)
+            self.void("in doubt", f"seal found broken, entry {proof.entry}", proof.time, proof.entry)
         elif proof.grade == "content" and proof.counts:
             self.content = max(proof.time, self.content or proof.time)
             self.doubt, self.why, self.doubted = None, "", None
         elif proof.grade == "sealed" and proof.counts:
             self.sealed = max(proof.time, self.sealed or proof.time)
-        elif proof.grade == "content" and proof.result == "intact":
+        elif proof.grade == "content" and proof.result == "intact" and proof.asked > self.touched:
             self.unattributed = proof.time
 
 
@@ -114,6 +122,9 @@ class Standings:
     Args:
         life: of the set, up to the time of the audit.
         proofs: what each attestation of the journal proves, by the number of its entry.
+
+    Attributes:
+        notes: what is worth knowing of it: each change of a custodian's card.
     """
 
     def __init__(self, life: Life, proofs: Mapping[int, Proof]) -> None:
@@ -134,6 +145,7 @@ class Standings:
             for name, held in self._held.items()
             if own[name] and not held
         }
+        self.notes: list[str] = []
         self._departed: dict[int, tuple[str, ...]] = {}
         self._unanswered = unanswered(life)
         self._spans: list[Span] = []
@@ -160,38 +172,50 @@ class Standings:
                 for share in event.custodians:
                     if share.name in self._all:
                         person = self._life.people[share.name]
-                        self._all[share.name] = _Standing(share.name, person, time, share.card)
+                        self._all[share.name] = _Standing(share.name, person, time, share.card, number)
                 return list(self._all.values())
             case Introduced():
-                for one in self._of(event.custodian):
+                for one in (touched := self._of(event.custodian)):
+                    if one.card not in (None, event.card):
+                        one.forget(number)
+                        self.notes.append(
+                            f"Entry {number} changed the card of {one.name}: what was proven before counts no more."
+                        )
                     one.card = event.card
-            case Resolved():
+                return touched
+            case Transcribed():
+                for one in (touched := self._of(event.custodian)):
+                    if any(folded(person) != folded(one.person) for person in event.persons):
+                        one.forget(number)
+                return touched
+            case Resolved(action=None):
                 for one in self._of(*self._departed.get(event.entry, ())):
                     if event.how in _FILLED:
-                        one.fill(time)
+                        one.fill(time, number)
             case Attested() if number in proofs:
                 for one in (touched := self._of(event.custodian)):
                     one.prove(proofs[number])
                 return touched
             case Incident():
                 for one in (touched := self._of(*event.custodians)):
-                    one.void("in doubt", f"an incident, entry {number}", time)
+                    one.void("in doubt", f"an incident, entry {number}", time, number)
                 return touched
             case Departed():
-                self._departed[number] = event.custodians
-                for one in (touched := self._of(*event.custodians)):
-                    one.leave("departed", f"{event.person} has left, entry {number}")
+                self._departed[number] = names = self._life.leaving[number]
+                for one in (touched := self._of(*names)):
+                    one.leave("departed", f"{event.person} has left, entry {number}", number)
+                    one.card = None
                 return touched
             case HandedOn():
                 # Handing on changes who holds the share, and not what was found of it.
                 for one in (touched := self._of(event.custodian)):
-                    one.fill(time)
-                    one.forget()
-                    one.person, one.since = event.to, time
+                    one.fill(time, number)
+                    one.forget(number)
+                    one.person, one.since, one.card = event.to, time, None
                 return touched
             case Destroyed() | Lost():
                 for one in (touched := self._of(event.custodian)):
-                    one.void("in doubt", f"a copy was {event.what}, entry {number}", time)
+                    one.void("in doubt", f"a copy was {event.what}, entry {number}", time, number)
                     self._ends(one, number)
                 return touched
         return []
@@ -201,9 +225,9 @@ class Standings:
         ended, lost = self._ended.get(one.name, (0, []))
         if ended == number and lost:
             entries = ", ".join(f"entry {entry}" for entry in lost)
-            one.leave("lost", f"no copy is left: lost, {entries}; it may turn up with anybody")
+            one.leave("lost", f"no copy is left: lost, {entries}; it may turn up with anybody", number)
         elif ended == number:
-            one.leave("destroyed", f"no copy is left, entry {number}")
+            one.leave("destroyed", f"no copy is left, entry {number}", number)
 
     def _of(self, *names: str) -> list[_Standing]:
         return [self._all[name] for name in names if name in self._all]

@@ -17,7 +17,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from datetime import datetime, timedelta
 
 from shares.documents.drill_report import DrillReport
-from shares.documents.event import Departed, DrillClosed, Incident, Lost, Recovered
+from shares.documents.event import Departed, DrillClosed, Incident, Lost, Recovered, Resolved
 from shares.documents.policy import folded
 from shares.evidence.asked import still_asked
 from shares.evidence.audited import CustodianRow, DrillRow, Known, Task, TaskKind
@@ -27,6 +27,8 @@ from shares.evidence.life import Life
 DECIDE = "A practised key-management professional decides."
 OPEN_FOR = timedelta(days=7)
 """How long a drill may stay open: what it showed is told while those who were there remember it."""
+OUTLIVES: tuple[TaskKind, ...] = ("departure", "incident", "loss", "replacement")
+"""What is still to be done when a set is retired: the key may be known, and in use."""
 _MOST_NAMED = 6
 
 
@@ -91,7 +93,12 @@ def _silent(life: Life) -> Iterator[Task]:
 
 
 def _drill(life: Life, drills: Sequence[DrillRow]) -> Task:
-    passed = [row.closed for row in drills if row.closed and row.passed and row.kind != "attendance"]
+    # What was shown was shown when it was rehearsed: a report that comes late moves nothing.
+    passed = [
+        row.opened + timedelta(seconds=row.took)
+        for row in drills
+        if row.passed and row.took is not None and row.kind != "attendance"
+    ]
     since = max(passed, default=life.start)
     last = f"the last one passed {since:%Y-%m-%d}" if passed else "none has passed yet"
     return _task(life, "drill", f"hold a drill of recovery or practice: {last}", since + life.intervals.drill_every)
@@ -111,15 +118,17 @@ def _refresh(life: Life) -> Iterator[Task]:
 
 
 def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
+    # Nothing else ends it: shares that are renewed or reassigned leave the key as it was.
+    replaced = {event.entry for _, event in life.each(Resolved) if event.how == "key replaced" and not event.action}
     for entry in life.entries:
         number, event = entry.sequence, entry.event
-        if (number, None) in life.resolved:
+        if (number, None) in life.resolved and not isinstance(event, Recovered):
             continue
         match event:
             case Departed():
                 what = f"{event.person} has left: end what they could still do"
-                advice = departure_advice(event, exposure)
-                about = (event.person, *event.custodians)
+                advice = departure_advice(event, life.leaving[number], exposure)
+                about = (event.person, *life.leaving[number])
                 yield _task(life, "departure", what, event.due, about=about, entry=number, advice=advice)
             case Incident():
                 what = f"deal with the incident: {event.remark}"
@@ -131,7 +140,7 @@ def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
                 due = entry.time + life.respond_within
                 advice = loss_advice(event, exposure)
                 yield _task(life, "loss", what, due, about=(event.custodian,), entry=number, advice=advice)
-            case Recovered(disposition="replace", by=datetime() as by):
+            case Recovered(disposition="replace", by=datetime() as by) if number not in replaced:
                 what = f"replace the key that was recovered: {event.reason}"
                 yield _task(life, "replacement", what, by, about=event.custodians, entry=number)
 
@@ -147,11 +156,12 @@ def _actions(life: Life, reports: Mapping[int, DrillReport]) -> Iterator[Task]:
                 yield _task(life, "action", what, action.due, about=about, entry=closed, action=number)
 
 
-def departure_advice(event: Departed, exposure: Sequence[Known]) -> str:
+def departure_advice(event: Departed, places: Sequence[str], exposure: Sequence[Known]) -> str:
     """Say how a departure is dealt with, from what the leaver has known.
 
     Args:
         event: the departure.
+        places: the custodians whose place it empties.
         exposure: who has known what.
     """
     known = [row for row in exposure if row.kind == "person" and folded(row.who) == folded(event.person)]
@@ -159,9 +169,9 @@ def departure_advice(event: Departed, exposure: Sequence[Known]) -> str:
     if said:
         return said
     shares = listed(list(dict.fromkeys(name for row in known for name in row.shares)))
-    if event.custodians:
+    if places:
         return (
-            f"Reassign: the place of {listed(event.custodians)} goes to somebody else. A pack can be handed over, the "
+            f"Reassign: the place of {listed(places)} goes to somebody else. A pack can be handed over, the "
             f"knowledge of {shares or 'its share'} stays with who left{_missing(known)}: new shares make it worthless, "
             f"handing the old one on does not. {DECIDE}"
         )

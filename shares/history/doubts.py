@@ -1,7 +1,7 @@
 """What does not agree with the journal in a report by hand: said to whoever makes it, and entered all the same.
 
 Source: PCI PIN 9-2 (serials of packs are compared on receipt; from a summary); the rest is common practice, no source.
-May import: shares.documents, shares.history.journal.
+May import: shares.documents, .holders, .journal.
 Secret: nothing. Confidential: serials, and who holds which card. Public: nothing.
 Does not: refuse anything: what people saw is a fact, and an audit judges it.
 """
@@ -14,21 +14,11 @@ from shares.documents.event import Copied, Dealt, Delivered, Event, Introduced, 
 from shares.documents.party import PartyCard
 from shares.documents.policy import folded
 from shares.documents.record import Record
+from shares.history.holders import known_cards
 from shares.history.journal import Journal
 
 JUDGED = (Introduced, Received, Copied)
 """The events that there can be doubts about: for all others the journal need not be read."""
-
-
-def known_cards(journal: Journal) -> dict[str, str]:
-    """Return the fingerprint of each custodian's party card, as the journal told last."""
-    known: dict[str, str] = {}
-    for entry in journal.entries:
-        if isinstance(entry.event, Dealt):
-            known |= {share.name: share.card for share in entry.event.custodians if share.card is not None}
-        elif isinstance(entry.event, Introduced):
-            known[entry.event.custodian] = entry.event.card
-    return known
 
 
 def doubts(event: Event, journal: Journal, record: Record, card: PartyCard | None = None) -> list[str]:
@@ -58,7 +48,7 @@ def _of_card(custodian: str, card: PartyCard, journal: Journal, record: Record) 
             f"the card is the dealer's, who signed the record: what {custodian} attests would be the dealer's word. "
             "Ask them for a card of their own."
         )
-    for other, fingerprint in known_cards(journal).items():
+    for other, fingerprint in known_cards(journal, record, None).items():
         known = journal.cards.get(fingerprint)
         same = fingerprint == card.fingerprint or (known is not None and known.ed25519 == card.ed25519)
         if other != custodian and same:

@@ -1,7 +1,7 @@
 """What people report by hand: which facts each event needs, and the entry made of them, with what they hand in.
 
 Source: FORMAT_EVIDENCE.md, sec. 16; the 24 hours for a leaver are what the trade asks for.
-May import: shares.errors, shares.clock, shares.documents, .folder, .set_tasks.
+May import: shares.errors, shares.clock, shares.documents, .folder, .holders, .set_tasks.
 Secret: party keys that sign, passed through. Confidential: what is reported. Public: nothing.
 Does not: take reports of what a command does itself, such as a split, an attestation, a drill or a recovery.
 """
@@ -22,9 +22,9 @@ from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Event, Remedy, make_event
 from shares.documents.intervals import parse_duration
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.policy import folded
 from shares.errors import ParameterError
 from shares.history.folder import SetFolder
+from shares.history.holders import Holders
 from shares.history.set_tasks import check_task
 
 # What each event needs, and what it may have besides: fields of ``Report``, and so options of the command.
@@ -90,7 +90,8 @@ def event_of(folder: SetFolder, what: str, report: Report, *, time: datetime | N
     Args:
         folder: the set's.
         what: which event, one of ``NEEDS``.
-        report: the facts. Custodians of a departure are by default those whose share the person holds by the policy.
+        report: the facts. Custodians of a departure are by default those whose share the person holds by policy and
+            journal.
         time: of the report; now by default.
 
     Raises:
@@ -175,15 +176,17 @@ def _taken(what: str) -> str:
 
 
 def _held_by(folder: SetFolder, persons: tuple[str, ...]) -> tuple[str, ...]:
-    """Return whose shares a person holds, as far as the policy says."""
-    planned = folder.policy.custodians if folder.policy else ()
-    held = tuple(one.name for one in planned if folded(one.person) in map(folded, persons))
+    """Return whose shares a person holds now, as far as policy and journal say."""
+    holders = Holders((custodian.name for custodian in folder.record.custodians), folder.policy)
+    for entry in folder.journal().entries:
+        holders.take(entry.event)
+    held = tuple(dict.fromkeys(name for person in persons for name in holders.held_by(person)))
     if held:
         return held
     raise ParameterError(
-        "the policy names no share that this person holds"
-        if planned
-        else "the set has no policy that says who holds what",
+        "neither policy nor journal names a share that this person holds"
+        if folder.policy
+        else "the set has no policy that says who holds what, and the journal hands this person none",
         where="--custodian",
         hint="name each custodian whose share they held or could reach",
     )

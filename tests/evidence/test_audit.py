@@ -261,7 +261,7 @@ def test_a_journal_that_was_removed_is_never_better_than_the_true_one(kept: Kept
     assert "no-journal" not in codes
     shutil.rmtree(kept.folder / "attestations")
     shutil.rmtree(kept.folder / "drills")
-    assert found(kept)["no-journal"] is Verdict.DUE
+    assert found(kept)["no-journal"] is Verdict.AT_RISK
 
 
 def test_heads_that_were_noted_elsewhere(kept: Kept) -> None:
@@ -410,7 +410,7 @@ def test_a_file_that_is_missing(kept: Kept, name: str) -> None:
     (kept.folder / name).unlink()
     expected = {
         "record.json": ("record-unreadable", Verdict.BROKEN),
-        "policy.toml": ("policy-missing", Verdict.DUE),
+        "policy.toml": ("policy-missing", Verdict.AT_RISK),
         "journal.jsonl": ("journal-removed", Verdict.BROKEN),
         PRACTICE_RECORD: ("practice-missing", Verdict.DUE),
     }
@@ -539,6 +539,7 @@ def test_no_margin_left_is_due(tmp_path: Path) -> None:
 def test_who_has_known_a_quorum_is_a_risk(kept: Kept) -> None:
     for name in ("registrar", "dry-dock"):
         kept.append(Transcribed(what="transcribed", custodian=name, persons=(PEOPLE["north-pier"],)), day(21))
+    kept.round(day(22))
     (reason,) = kept.audit(day(30)).reasons
     assert (reason.level, reason.about) == (Verdict.AT_RISK, ("keeper one",))
 

@@ -15,9 +15,10 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from kept import NAMES, START, Kept, day, policy_text
+from parties import card
 from strategies import HARBOUR, labelled, rules, satisfies, sets_of
 
-from shares.documents.event import HandedOn
+from shares.documents.event import HandedOn, Introduced
 from shares.evidence.margin import counted, margin_of, margins
 from shares.evidence.standing import Span
 from shares.planning.structure import Bounds
@@ -117,6 +118,9 @@ def test_by_custodians_people_and_sites(kept: Kept) -> None:
 def test_after_handing_on_people_are_who_holds_now(kept: Kept) -> None:
     for name in ("south-pier", "light-house"):
         kept.append(HandedOn(what="handed-on", custodian=name, to="Keeper ONE"), day(1))
+        kept.append(
+            Introduced(what="introduced", custodian=name, card=card(name).fingerprint), day(1), cards=[card(name)]
+        )
     kept.round(day(2))
     margin = kept.audit(day(4)).margin
     assert margin

@@ -21,8 +21,8 @@ from shares.documents.policy import Policy
 from shares.errors import ParameterError, SetMismatchError, StorageError, VerificationError
 from shares.evidence.judge import Flaw
 from shares.evidence.rounds import ask, enter, folder_of_round, rounds
-from shares.history.doubts import known_cards
 from shares.history.folder import SetFolder
+from shares.history.holders import known_cards
 
 
 @pytest.fixture
@@ -157,7 +157,7 @@ def test_a_challenge_of_another_folder_is_refused(folder: SetFolder, tmp_path: P
 
 def test_a_card_that_is_given_is_introduced_once(tmp_path: Path) -> None:
     folder = set_folder(tmp_path / "set", cards=False)
-    assert known_cards(folder.journal()) == {}
+    assert known_cards(folder.journal(), folder.record, folder.policy) == {}
     made = asked_of(folder)
     answers = [answered(made, "north-pier"), answered(made, "south-pier")]
     entered = enter(folder, made, answers, cards={"north-pier": card("north-pier")}, time=NEXT_DAY)
@@ -165,7 +165,7 @@ def test_a_card_that_is_given_is_introduced_once(tmp_path: Path) -> None:
     assert entered[1].judgement.flaws == {Flaw.UNKNOWN_CARD}
     journal = folder.journal()
     assert journal.problems == ()
-    assert known_cards(journal) == {"north-pier": CARDS["north-pier"]}
+    assert known_cards(journal, folder.record, folder.policy) == {"north-pier": CARDS["north-pier"]}
     assert journal.cards[CARDS["north-pier"]] == card("north-pier")
     enter(folder, made, [], cards={"north-pier": card("north-pier")}, time=NEXT_DAY)
     assert sum(isinstance(entry.event, Introduced) for entry in folder.journal().entries) == 1

@@ -89,13 +89,13 @@ def test_drills_are_due_from_the_last_that_passed(kept: Kept) -> None:
     (task,) = tasks(kept, 1, "drill")
     assert task.due == day(180)
     kept.drill("practice", day(20), NAMES[:3])
-    assert tasks(kept, 21, "drill")[0].due == day(200, 2)
+    assert tasks(kept, 21, "drill")[0].due == day(200, 1)
     kept.drill("recovery", day(30), NAMES[:2])
-    assert tasks(kept, 31, "drill")[0].due == day(200, 2)
+    assert tasks(kept, 31, "drill")[0].due == day(200, 1)
     assert "recovery-drill-failed" in codes(kept, 31)
     assert "drill-overdue" in codes(kept, 201)
     kept.drill("recovery", day(201), NAMES[:3])
-    assert tasks(kept, 202, "drill")[0].due == day(381, 2)
+    assert tasks(kept, 202, "drill")[0].due == day(381, 1)
     assert not {"recovery-drill-failed", "drill-overdue"} & set(codes(kept, 202))
 
 

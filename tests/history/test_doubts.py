@@ -12,8 +12,9 @@ from history.making import key, set_folder
 
 from shares.documents.event import make_event
 from shares.documents.party import PartyCard
-from shares.history.doubts import doubts, known_cards
+from shares.history.doubts import doubts
 from shares.history.folder import SetFolder
+from shares.history.holders import known_cards
 
 NAME = "north-pier"
 
@@ -58,7 +59,7 @@ def test_a_card_is_of_one_custodian_and_not_the_dealers(folder: SetFolder) -> No
     own, other = key(NAME).card, key("registrar").card
     introduced = make_event("introduced", custodian=NAME, card=own.fingerprint)
     folder.append(introduced, cards=[own])
-    assert known_cards(folder.journal())[NAME] == own.fingerprint
+    assert known_cards(folder.journal(), folder.record, folder.policy)[NAME] == own.fingerprint
     assert odd_card(folder, own) == ""
     assert odd_card(folder, other) == "the card is of registrar, not north-pier."
     folder.append(make_event("introduced", custodian="south-pier", card=other.fingerprint), cards=[other])

@@ -15,7 +15,7 @@ import pytest
 from history.making import START, key, note, set_folder
 from history.test_folder import POLICY, with_policy
 
-from shares.documents.event import EVENT_NAMES, Departed, Incident, make_event
+from shares.documents.event import EVENT_NAMES, Departed, HandedOn, Incident, make_event
 from shares.errors import ParameterError, StorageError
 from shares.history.folder import SetFolder
 from shares.history.reports import NEEDS, Report, append_with, event_of
@@ -136,8 +136,22 @@ def test_the_policy_says_whose_share_a_leaver_holds(tmp_path: Path) -> None:
     event = event_of(folder, "departed", only(person=("north-pier keeper",)))
     assert isinstance(event, Departed)
     assert event.custodians == ("north-pier", "south-pier")
-    with pytest.raises(ParameterError, match="names no share that this person holds"):
+    with pytest.raises(ParameterError, match="names a share that this person holds"):
         event_of(folder, "departed", only(person=("somebody else",)))
+
+
+def test_the_journal_says_whose_share_a_leaver_was_handed(tmp_path: Path) -> None:
+    text = POLICY.replace(b"dual_control = true", b"")
+    folder = SetFolder(with_policy(tmp_path / "set", text))
+    for name, to in (("north-pier", "south-pier keeper"), ("south-pier", "A. Newcomer")):
+        folder.append(HandedOn(what="handed-on", custodian=name, to=to))
+    held = {"south-pier keeper": ("north-pier",), "a.  newcomer": ("south-pier",)}
+    for person, names in held.items():
+        event = event_of(folder, "departed", only(person=(person,)))
+        assert isinstance(event, Departed)
+        assert event.custodians == names
+    with pytest.raises(ParameterError, match="names a share that this person holds"):
+        event_of(folder, "departed", only(person=("north-pier keeper",)))
 
 
 def test_an_incident_counts_as_exposed_unless_it_is_said_not_to_be(folder: SetFolder) -> None:
