@@ -73,6 +73,7 @@ class Drill:
 def drills(journal: Journal) -> list[Drill]:
     """Return the drills of a journal, in the order in which they were opened."""
     found: dict[int, Drill] = {}
+    rehearsals: dict[int, list[Entry]] = {}
     asked: dict[bytes, int] = {}
     for entry in journal.entries:
         event = entry.event
@@ -83,11 +84,10 @@ def drills(journal: Journal) -> list[Drill]:
         elif isinstance(event, Attested) and asked.get(event.challenge) in found:
             found[asked[event.challenge]].answers.setdefault(event.custodian, entry)
         elif isinstance(event, Rehearsed) and event.drill in found:
-            one = found[event.drill]
-            found[event.drill] = replace(one, rehearsals=(*one.rehearsals, entry))
+            rehearsals.setdefault(event.drill, []).append(entry)
         elif isinstance(event, DrillClosed) and event.drill in found:
             found[event.drill] = replace(found[event.drill], closed=entry)
-    return list(found.values())
+    return [replace(drill, rehearsals=tuple(rehearsals.get(number, ()))) for number, drill in found.items()]
 
 
 def seconds_between(since: datetime, until: datetime) -> int:

@@ -120,6 +120,10 @@ def _refresh(life: Life) -> Iterator[Task]:
 def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
     # Nothing else ends it: shares that are renewed or reassigned leave the key as it was.
     replaced = {event.entry for _, event in life.each(Resolved) if event.how == "key replaced" and not event.action}
+    known: dict[str, list[Known]] = {}
+    for row in exposure:
+        if row.kind in ("person", "unknown"):
+            known.setdefault(folded(row.who), []).append(row)
     for entry in life.entries:
         number, event = entry.sequence, entry.event
         if (number, None) in life.resolved and not isinstance(event, Recovered):
@@ -127,18 +131,18 @@ def _set_by_entries(life: Life, exposure: Sequence[Known]) -> Iterator[Task]:
         match event:
             case Departed():
                 what = f"{event.person} has left: end what they could still do"
-                advice = departure_advice(event, life.leaving[number], exposure)
+                advice = departure_advice(event, life.leaving[number], known)
                 about = (event.person, *life.leaving[number])
                 yield _task(life, "departure", what, event.due, about=about, entry=number, advice=advice)
             case Incident():
                 what = f"deal with the incident: {event.remark}"
-                advice = incident_advice(event, exposure)
+                advice = incident_advice(event, known)
                 about = (*event.custodians, *event.persons)
                 yield _task(life, "incident", what, event.due, about=about, entry=number, advice=advice)
             case Lost():
                 what = f"deal with the lost copy of {event.custodian}: {event.copy_}, {event.reason}"
                 due = entry.time + life.respond_within
-                advice = loss_advice(event, exposure)
+                advice = loss_advice(event, known)
                 yield _task(life, "loss", what, due, about=(event.custodian,), entry=number, advice=advice)
             case Recovered(disposition="replace", by=datetime() as by) if number not in replaced:
                 what = f"replace the key that was recovered: {event.reason}"
@@ -156,15 +160,15 @@ def _actions(life: Life, reports: Mapping[int, DrillReport]) -> Iterator[Task]:
                 yield _task(life, "action", what, action.due, about=about, entry=closed, action=number)
 
 
-def departure_advice(event: Departed, places: Sequence[str], exposure: Sequence[Known]) -> str:
+def departure_advice(event: Departed, places: Sequence[str], exposure: Mapping[str, Sequence[Known]]) -> str:
     """Say how a departure is dealt with, from what the leaver has known.
 
     Args:
         event: the departure.
         places: the custodians whose place it empties.
-        exposure: who has known what.
+        exposure: what each person, or somebody unknown, has known: by the folded name.
     """
-    known = [row for row in exposure if row.kind == "person" and folded(row.who) == folded(event.person)]
+    known = [row for row in exposure.get(folded(event.person), ()) if row.kind == "person"]
     said = _worst(known)
     if said:
         return said
@@ -180,12 +184,12 @@ def departure_advice(event: Departed, places: Sequence[str], exposure: Sequence[
     return f"No share is known to have been seen by {event.person}: enter how it was settled, and why."
 
 
-def incident_advice(event: Incident, exposure: Sequence[Known]) -> str:
+def incident_advice(event: Incident, exposure: Mapping[str, Sequence[Known]]) -> str:
     """Say how an incident is dealt with, from what those concerned have known.
 
     Args:
         event: the incident.
-        exposure: who has known what.
+        exposure: what each person, or somebody unknown, has known: by the folded name.
     """
     names = listed(event.custodians)
     if not event.exposed:
@@ -194,7 +198,7 @@ def incident_advice(event: Incident, exposure: Sequence[Known]) -> str:
             f"enter it as exposed. Whoever still has the share attests anew. {DECIDE}"
         )
     people = [folded(person) for person in event.persons] or [folded(UNKNOWN)]
-    known = [row for row in exposure if row.kind in ("person", "unknown") and folded(row.who) in people]
+    known = [row for person in dict.fromkeys(people) for row in exposure.get(person, ())]
     said = _worst(known)
     if said:
         return said
@@ -202,14 +206,14 @@ def incident_advice(event: Incident, exposure: Sequence[Known]) -> str:
     return f"Refresh: {who} may know {names}{_missing(known)}; new shares make that worthless. {DECIDE}"
 
 
-def loss_advice(event: Lost, exposure: Sequence[Known]) -> str:
+def loss_advice(event: Lost, exposure: Mapping[str, Sequence[Known]]) -> str:
     """Say how a loss is dealt with: as an incident, since somebody unknown may have found the copy.
 
     Args:
         event: the loss.
-        exposure: who has known what.
+        exposure: what each person, or somebody unknown, has known: by the folded name.
     """
-    known = [row for row in exposure if row.kind == "unknown"]
+    known = [row for row in exposure.get(folded(UNKNOWN), ()) if row.kind == "unknown"]
     return _worst(known) or (
         f"Treat it as an incident: it may turn up with anybody{_missing(known)}. Refresh, so that it is worth nothing, "
         f"or reassign the place of {event.custodian}. {DECIDE}"

@@ -40,6 +40,8 @@ from shares.storage import read_file, write_new
 JOURNAL_NAME = "journal.jsonl"
 MAX_JOURNAL = 1 << 30
 """The largest journal, in bytes: 1 GiB."""
+MAX_UNREADABLE = 1_000
+"""After so many lines that are no entries no more is read: it is no journal, and that was said often enough."""
 TORN = re.compile(r"journal\.torn-[0-9]+-[0-9a-f]{16}")
 """The name of a file that keeps what a stopped run left of a line."""
 
@@ -109,15 +111,22 @@ def read_journal(data: bytes, *, progress: Callable[[int, int | None], None] | N
         data: the bytes of the file.
         progress: called with (lines read, lines).
     """
-    *lines, torn = data.split(b"\n")
-    reader = _Reader()
-    for i, line in enumerate(lines):
+    # Line by line: a file of nothing but line ends would take many times its size if it were split as a whole.
+    count, reader, start = data.count(b"\n"), _Reader(), 0
+    for i in range(count):
+        if reader.unreadable == MAX_UNREADABLE:
+            what = f"{MAX_UNREADABLE:,} lines are no entries: from this one on, {count - i:,} lines were not read"
+            reader.report(i + 1, "entry", what)
+            break
         if progress:
-            progress(i, len(lines))
-        reader.read(i + 1, line)
+            progress(i, count)
+        end = data.index(b"\n", start)
+        reader.read(i + 1, data[start:end])
+        start = end + 1
+    torn = data[data.rfind(b"\n") + 1 :]
     if torn:
         what = "it is no whole line: a run was stopped while it wrote, and the next entry sets it aside"
-        reader.report(len(lines) + 1, "torn", what, breaks=False)
+        reader.report(count + 1, "torn", what, breaks=False)
     standing = {digest[:20]: entry.sequence for entry, digest in zip(reader.entries, reader.digests, strict=True)}
     return Journal(
         tuple(reader.entries),
@@ -137,6 +146,7 @@ class _Reader:
         self.cards: dict[str, PartyCard] = {}
         self.problems: list[Problem] = []
         self.unproved: set[tuple[int, EntrySignature]] = set()
+        self.unreadable = 0
         # Of the line before. One that cannot be read counts as the entry that should stand there, so that the lines
         # after it are not blamed for more than that they follow something else.
         self.number = 0
@@ -151,6 +161,7 @@ class _Reader:
         try:
             entry = Entry.of_line(line)
         except DocumentError as error:
+            self.unreadable += 1
             self.report(number, "entry", f"it is no entry: {error.what}")
             return
         self.number = entry.sequence

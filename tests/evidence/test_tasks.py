@@ -24,6 +24,8 @@ from shares.documents.event import (
     Resolved,
     Transcribed,
 )
+from shares.documents.policy import folded
+from shares.evidence import tasks as module
 from shares.evidence.audited import Task
 from shares.evidence.drill import open_drill
 
@@ -296,3 +298,27 @@ def test_tasks_come_earliest_first(kept: Kept) -> None:
     due = [task.due for task in kept.audit(day(31)).tasks]
     assert due == sorted(due)
     assert len(due) >= 4
+
+
+def test_the_cost_of_incidents_grows_with_their_number(kept: Kept, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A flood of incidents with many names must not take a time that grows with the square of its length."""
+    calls = 0
+
+    def counting(text: str) -> str:
+        nonlocal calls
+        calls += 1
+        return folded(text)
+
+    monkeypatch.setattr(module, "folded", counting)
+    counts = []
+    for i in range(2):
+        for j in range(10):
+            people = tuple(f"passer-by {10 * i + j}, {n}" for n in range(5))
+            event = Incident(
+                what="incident", custodians=NAMES[:1], persons=people, exposed=True, due=day(9), remark="?"
+            )
+            kept.append(event, day(1))
+        calls = 0
+        assert len(tasks(kept, 2, "incident")) == 10 * (i + 1)
+        counts.append(calls)
+    assert counts[1] <= 2 * counts[0]

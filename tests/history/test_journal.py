@@ -27,7 +27,7 @@ from shares.documents.event import make_event
 from shares.documents.party import OpenPartyKey, _card
 from shares.errors import ParameterError, StorageError
 from shares.history import journal as module
-from shares.history.journal import Journal, append, first_line, load_journal, read_journal
+from shares.history.journal import MAX_UNREADABLE, Journal, append, first_line, load_journal, read_journal
 
 SIGNED = lines_of(events(6), "harbour-office", "registrar")
 OTHER = lines_of(events(8), "harbour-office", start=START + timedelta(minutes=1))
@@ -345,3 +345,17 @@ def test_progress_is_told() -> None:
     told: list[tuple[int, int | None]] = []
     read_journal(text_of(SIGNED), progress=lambda done, total: told.append((done, total)))
     assert told == [(i, 6) for i in range(6)]
+
+
+def test_a_flood_of_lines_that_are_no_entries_is_not_read_through() -> None:
+    flood = text_of(SIGNED[:1])
+    seen: list[int] = []
+    journal = read_journal(flood + b"\n" * 50_000 + b"torn", progress=lambda done, _: seen.append(done))
+    assert len(journal.entries) == 1
+    assert (len(seen), journal.torn) == (MAX_UNREADABLE + 1, b"torn")
+    *told, last, torn = journal.problems
+    assert [problem.line for problem in told] == list(range(2, MAX_UNREADABLE + 2))
+    assert (last.line, last.breaks, torn.kind) == (MAX_UNREADABLE + 2, True, "torn")
+    assert last.what == "1,000 lines are no entries: from this one on, 49,000 lines were not read"
+    # One fewer, and all is read.
+    assert len(read_journal(b"\n" * MAX_UNREADABLE).problems) == MAX_UNREADABLE
