@@ -33,7 +33,7 @@ from shares.documents.event import Grade
 from shares.errors import ParameterError, SharesError
 from shares.evidence.attest import answer as make_answer
 from shares.evidence.attest import check_asked
-from shares.evidence.rounds import ask, check_only, enter, rounds
+from shares.evidence.rounds import ask, check_only, doubts_of_asked, enter, rounds
 from shares.history.folder import SetFolder
 from shares.storage import read_file, write_new
 
@@ -58,7 +58,7 @@ def command() -> None:
     """
 
 
-@command.command()
+@command.command(short_help="Ask custodians for a fresh proof of their shares.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.option("--to", "target", required=True, metavar="C", callback=filled, help="New file, to hand out.")
 @click.option("--custodian", "custodians", multiple=True, metavar="NAME", help="Who is asked.  [default: all]")
@@ -95,6 +95,7 @@ def challenge(
     refuse_taken(target)
     of_set = SetFolder(folder)
     now = clock.now()
+    doubtful = doubts_of_asked(of_set.record, of_set.journal(), custodians)
     with opening((), passphrase_files, descriptors) as at_hand, held_signals():
         made, entry = ask(of_set, keys=signers(signer_files, at_hand), due=now + due, custodians=custodians, time=now)
         filed = Path(folder) / entry.documents[0].path
@@ -113,7 +114,10 @@ def challenge(
         "custodians": made.custodians,
         "due": clock.to_text(made.due),
         "journal": made.journal.model_dump() if made.journal else None,
+        "cautions": doubtful,
     }
+    for line in () if as_json else doubtful:
+        warn(line)
     lines = [
         *prose(f"Challenge, {made.label}: {made.words()}."),
         f"To hand out: {target}; kept: {filed}; entry {entry.sequence} of the journal.",
@@ -123,7 +127,7 @@ def challenge(
     print_result(members, lines, as_json=as_json)
 
 
-@command.command("answer")
+@command.command("answer", short_help="Answer a challenge with your share, or its sealed pack.")
 @click.argument("file", metavar="C", callback=filled)
 @click.option("--record", "record_file", required=True, metavar="R", callback=filled, help="Your copy of the record.")
 @click.option("--share", "share_file", metavar="S", callback=filled, help="Your share, wrapped or not: it is checked.")
@@ -237,7 +241,7 @@ def _have_agreed(asked: Challenge, name: str, *, is_trusted: bool, as_json: bool
         )
 
 
-@command.command("check")
+@command.command("check", short_help="Check answers, and enter them in the journal.")
 @click.argument("file", metavar="C", callback=filled)
 @click.argument("files", metavar="A...", nargs=-1, required=True, callback=filled)
 @click.option("--set", "folder", metavar="SET", callback=filled, help="Enter the answers in this set's journal.")
@@ -285,8 +289,10 @@ def check_(
     asked = Challenge.parse(read_file(file, limit=MAX_FILE), where=file)
     given = read_answers(files)
     attestations = [one.attestation for one in given if one.attestation is not None]
+    policy = None
     if folder is not None:
         of_set = SetFolder(folder)
+        policy = of_set.policy
         known = cards_by_name(cards, [one.name for one in of_set.record.custodians], option="--card")
         with opening((), passphrase_files, descriptors) as at_hand, held_signals():
             results = enter(of_set, asked, attestations, keys=signers(signer_files, at_hand), cards=known)
@@ -304,7 +310,7 @@ def check_(
         warn_unsigned(signer_files, as_json=as_json)
     print_result(
         check_members(told, asked, silent, code),
-        check_lines(told, asked, silent, entered=folder is not None),
+        check_lines(told, asked, silent, entered=folder is not None, policy=policy),
         as_json=as_json,
     )
     ctx.exit(code)

@@ -9,6 +9,7 @@ Does not: judge, or enter anything.
 
 from __future__ import annotations
 
+import shlex
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -18,7 +19,9 @@ from shares.custody.presented import parse_share
 from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE
 from shares.documents.challenge import Challenge
+from shares.documents.policy import Policy
 from shares.errors import ParameterError, SharesError, StorageError
+from shares.evidence.judge import Flaw, Judgement
 from shares.evidence.rounds import Entered
 from shares.storage import read_file
 
@@ -33,6 +36,14 @@ NEXT = {
 UNATTRIBUTED = (
     "The share alone signed: whoever ever had it whole could have answered, so it does not count toward the margin. "
     "A party key (--sign) makes it yours."
+)
+SEALED_COUNTS = (
+    "A closed pack proves nothing of its content: it counts only beside an earlier proof of content by the same "
+    "custodian, and until that is {} old ({})."
+)
+INCIDENT = (
+    "{} answered before, and now reports: {}. A second answer is not entered, so enter that as an incident: `shares "
+    "journal add SET incident --custodian {} --remark TEXT`."
 )
 SILENCE = "Silence is no consent: ask each of them by the known way."
 PROVES = (
@@ -130,10 +141,23 @@ def answer_lines(made: Attestation, asked: Challenge, target: str) -> list[str]:
     if made.journal is not None:
         note = "keep a copy, and an audit can see by it that the journal was not rewritten since."
         lines += prose(f"It says where the journal of the set stood, {made.journal.words()}: {note}")
+    if made.result == "seal intact":
+        lines += prose(sealed_counts(None))
     lines += prose(NEXT.get(made.result, WHAT_IT_IS))
     if made.carrier == "paper":
         lines += prose("Destroy the file that was typed from paper; seal the sheet again, and note the new serial.")
     return lines
+
+
+def sealed_counts(policy: Policy | None) -> str:
+    """Say what an answer about a closed pack is worth, and for how long.
+
+    Args:
+        policy: the set's, where it is at hand.
+    """
+    if policy is None:
+        return SEALED_COUNTS.format("365 days", "the policy may say otherwise, with content_every")
+    return SEALED_COUNTS.format(f"{policy.content_every.days} days", "content_every in the policy")
 
 
 def check_code(told: Sequence[Told], *, whole: bool) -> int:
@@ -183,11 +207,23 @@ def _member(given: GivenAnswer, found: Entered | None) -> dict[str, object]:
     }
 
 
-def check_lines(told: Sequence[Told], asked: Challenge, silent: Sequence[str], *, entered: bool) -> list[str]:
+def check_lines(
+    told: Sequence[Told], asked: Challenge, silent: Sequence[str], *, entered: bool, policy: Policy | None
+) -> list[str]:
     """Tell what was found of each answer, who is silent, and what it all proves."""
     lines = [_line(given, found) for given, found in told]
     counting = sum(found is not None and found.judgement.counts for _, found in told)
-    lines.append(f"{counting} of {len(told)} count toward the margin of {asked.label}.")
+    if asked.purpose == "attendance":
+        there = len(asked.custodians) - len(silent)
+        lines.append(f"{there} of {len(asked.custodians)} who were asked have answered.")
+    else:
+        lines.append(f"{counting} of {len(told)} count toward the margin of {asked.label}.")
+    if any(found and _is_sealed(found.judgement) for _, found in told):
+        lines += prose(sealed_counts(policy))
+    for _, found in told:
+        if found and {Flaw.ANSWERED, Flaw.NOT_WHOLE} <= found.judgement.flaws:
+            name = found.judgement.custodian
+            lines += prose(INCIDENT.format(name, found.judgement.result, shlex.quote(name)))
     if silent:
         lines += prose(f"Still silent: {', '.join(silent)}; due is {clock.to_text(asked.due)}. {SILENCE}")
     else:
@@ -199,14 +235,22 @@ def check_lines(told: Sequence[Told], asked: Challenge, silent: Sequence[str], *
     return lines
 
 
+def _is_sealed(judgement: Judgement) -> bool:
+    return judgement.accepted and judgement.attributed and judgement.grade == "sealed" and judgement.whole
+
+
 def _line(given: GivenAnswer, found: Entered | None) -> str:
     if found is None:
         return f"{given.file}: unreadable - {given.problem.what if given.problem else 'nothing is in it'}"
     judgement = found.judgement
     if not judgement.accepted:
         verdict = "refused"
+    elif judgement.grade == "present":
+        verdict = "answered"
     elif judgement.counts:
         verdict = f"{judgement.result}, counts"
+    elif _is_sealed(judgement):
+        verdict = f"{judgement.result}, attributed, counts beside an earlier proof of content"
     else:
         verdict = f"{judgement.result}, {'attributed' if judgement.attributed else 'unattributed'}, does not count"
     why = "; ".join(problem.what for problem in judgement.problems)

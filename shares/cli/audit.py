@@ -4,14 +4,16 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Iterator, Sequence
+from datetime import datetime
 
 import click
 
 import shares
 from shares.cli import audit_pack
 from shares.cli.heads import heads_given
+from shares.cli.intervals import moment
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken, warn
-from shares.clock import from_text, to_text
+from shares.clock import to_text
 from shares.custody.parties import load_card
 from shares.errors import VerificationError
 from shares.evidence.audited import Audit, CustodianRow, Known, Margin, Verdict
@@ -45,7 +47,7 @@ class _OrPack(click.Command):
 
 @click.command(cls=_OrPack)
 @click.argument("paths", metavar="SET...", nargs=-1, required=True, callback=filled)
-@click.option("--at", metavar="TIME", callback=filled, help="Audit as of a time, like 2026-12-01T07:00:00Z.")
+@click.option("--at", metavar="TIME", callback=moment, help="Audit as of a time, like 2026-12-01T07:00:00Z.")
 @click.option(
     "--trust",
     "trusted_files",
@@ -69,7 +71,7 @@ class _OrPack(click.Command):
 def command(
     ctx: click.Context,
     paths: tuple[str, ...],
-    at: str | None,
+    at: datetime | None,
     trusted_files: tuple[str, ...],
     noted: tuple[str, ...],
     page: str | None,
@@ -92,14 +94,13 @@ def command(
     """
     if page is not None:
         refuse_taken(page)
-    when = from_text(at) if at is not None else None
     trusted = [load_card(path) for path in trusted_files]
     heads = heads_given(noted)
     found = find_sets(paths)
     if found.passed_over:
         warn(f"{len(found.passed_over):,} folder(s) hold no set, and were passed over: {_few(found.passed_over)}.")
     bar = progress("Auditing", "sets")
-    audits = list(audit_many(found.sets, jobs=jobs, at=when, trusted=trusted, heads=heads, progress=bar))
+    audits = list(audit_many(found.sets, jobs=jobs, at=at, trusted=trusted, heads=heads, progress=bar))
     if page is not None:
         # The template engine is loaded for a page alone.
         from shares.evidence.page import audit_page

@@ -49,7 +49,7 @@ def command() -> None:
     """
 
 
-@command.command("script")
+@command.command("script", short_help="Write the script from a policy: steps, roles, room for initials.")
 @click.argument("policy", metavar="POLICY", callback=filled)
 @click.option("--to", "target", required=True, metavar="DIR", callback=filled, help="Folder for the script's files.")
 @click.option(
@@ -170,7 +170,7 @@ def _script_lines(made: CeremonyScript, names: list[Path]) -> list[str]:
     ]
 
 
-@command.command("log")
+@command.command("log", short_help="Log a step as done, or an exception.")
 @click.argument("folder", metavar="SET", callback=filled)
 @script_option
 @click.option("--step", type=int, metavar="N", help="The number of the step.")
@@ -245,7 +245,7 @@ def _log_members(logged: Logged, step: int | None) -> dict[str, object]:
         "script": logged.script.digest().hex(),
         "step": step,
         "skipped": list(logged.skipped),
-        "next": logged.following,
+        "next": step if logged.pending else logged.following,
     }
 
 
@@ -253,13 +253,15 @@ def _log_lines(logged: Logged, step: int | None, exception: str | None) -> list[
     what = "exception" if exception is not None else "done"
     place = f"step {step} of {len(logged.script.steps)}, " if step is not None else ""
     lines = [f"Logged: {place}{what}, {to_text(logged.entry.time)}, entry {logged.entry.sequence}."]
+    if logged.pending:
+        return [*lines, *prose(f"Next: step {step} itself has no entry yet. Log it when it is done.")]
     if logged.following is None:
         return [*lines, "Next: no later step is left. `shares ceremony report` tells how it went."]
     following = logged.script.steps[logged.following - 1]
     return [*lines, *prose(f"Next: step {logged.following}, {following.role}: {following.what}")]
 
 
-@command.command("report")
+@command.command("report", short_help="Report how a ceremony went, exceptions first.")
 @click.argument("folder", metavar="SET", callback=filled)
 @script_option
 @click.option("--html", "page", metavar="FILE", callback=filled, help="Write it as a page to this new file as well.")

@@ -4,47 +4,35 @@ from __future__ import annotations
 
 import dataclasses
 import os
-import textwrap
 from collections import Counter
-from collections.abc import Sequence
 from datetime import datetime
 from pathlib import Path
-from typing import Any, get_args
+from typing import get_args
 
 import click
 
 from shares import clock
 from shares.cli.heads import heads_given
+from shares.cli.intervals import moment
+from shares.cli.journal_words import cautions, entry_lines, entry_members, next_lines, proves, verified_lines
 from shares.cli.keys import opening, sign_option, signers, warn_unsigned
-from shares.cli.output import filled, json_option, print_result, progress, prose, warn
+from shares.cli.output import filled, json_option, print_result, progress, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_card
-from shares.custody.presented import load_record
-from shares.documents.entry import Entry
-from shares.documents.event import EVENT_NAMES, Departed, Event, HandedOn, Incident, Introduced, Remedy
+from shares.documents.base import MAX_FILE
+from shares.documents.event import EVENT_NAMES, Remedy
 from shares.documents.policy import Policy
 from shares.documents.record import Record
-from shares.errors import ParameterError, StorageError, VerificationError
-from shares.history.files import MAX_DOCUMENT, POLICY_NAME, RECORD_NAME, FolderFiles
+from shares.errors import StorageError, VerificationError
+from shares.history.doubts import JUDGED, doubts
+from shares.history.files import MAX_DOCUMENT, POLICY_NAME, RECORD_NAME, Files, FolderFiles
 from shares.history.folder import SetFolder, load_policy
-from shares.history.journal import JOURNAL_NAME, Journal, Problem, load_journal
+from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL, Journal, load_journal, read_journal
+from shares.history.pack import PackFiles
 from shares.history.reports import NEEDS, Report, append_with, event_of
 from shares.history.verify import verify as check
 from shares.history.words import words
 from shares.storage import read_file
-
-SHOWN = 20
-"""How many problems are told one by one to people."""
-SIGNED = (
-    "It proves that up to entry {last}, the last that is signed, nobody without the signing keys has changed, moved or "
-    "added a line, or removed one from within. Whose a key is, you know by comparing its card's fingerprint. Whoever "
-    "holds all the keys could write another journal from the start, and anyone could cut off its end: heads that "
-    "others noted show that (--head), and so do the signatures of custodians in their attestations."
-)
-UNSIGNED = (
-    "No entry is signed, so by itself it proves nothing: whoever can write to the file could have written all of it "
-    "anew. A head that somebody noted elsewhere (--head) proves what stands up to it."
-)
 
 
 @click.group()
@@ -60,14 +48,14 @@ def command() -> None:
 set_argument = click.argument("folder", metavar="SET", callback=filled)
 
 
-@command.command()
+@command.command(short_help="Show the entries: when, what, and who signed.")
 @set_argument
-@click.option("--since", metavar="TIME", callback=filled, help="From this time on, like 2026-12-01T07:00:00Z.")
+@click.option("--since", metavar="TIME", callback=moment, help="From this time on, like 2026-12-01T07:00:00Z.")
 @click.option("--event", "wanted", multiple=True, type=click.Choice(EVENT_NAMES), help="Only these; once for each.")
 @json_option
 @click.pass_context
-def show(ctx: click.Context, folder: str, since: str | None, wanted: tuple[str, ...], as_json: bool) -> None:
-    """Show the entries of the journal in the folder SET: number, time, what happened, who signed.
+def show(ctx: click.Context, folder: str, since: datetime | None, wanted: tuple[str, ...], as_json: bool) -> None:
+    """Show the entries of the journal in SET, a set's folder or a pack: number, time, what happened, who signed.
 
     Exit code 4, with the entries all the same, when the journal is broken.
 
@@ -75,26 +63,25 @@ def show(ctx: click.Context, folder: str, since: str | None, wanted: tuple[str, 
     Example:
       shares journal show tide-archive --since 2026-12-01T00:00:00Z
     """
-    start = None if since is None else _time(since)
-    journal = _load(folder)
+    journal = _load(_files(folder))
     chosen = [
         entry
         for entry in journal.entries
-        if (start is None or entry.time >= start) and (not wanted or entry.event.what in wanted)
+        if (since is None or entry.time >= since) and (not wanted or entry.event.what in wanted)
     ]
     broken = [problem for problem in journal.problems if problem.breaks]
     if broken:
         warn(f"the journal is broken, first at line {broken[0].line}: `shares journal verify` says how.")
     code = VerificationError.exit_code if broken else 0
-    members = {"done": not broken, "exit": code, "entries": [_entry_members(entry, journal) for entry in chosen]}
+    members = {"done": not broken, "exit": code, "entries": [entry_members(entry, journal) for entry in chosen]}
     signers = {card.fingerprint: card.name for entry in chosen for card in journal.signers(entry)}
-    lines = [line for entry in chosen for line in _entry_lines(entry, journal)] or ["No entry."]
+    lines = [line for entry in chosen for line in entry_lines(entry, journal)] or ["No entry."]
     lines += [f"{name} signed by the card {card}." for card, name in signers.items()]
     print_result(members, lines, as_json=as_json)
     ctx.exit(code)
 
 
-@command.command()
+@command.command(short_help="Add what has happened to the journal.")
 @set_argument
 @click.argument("what", metavar="EVENT", type=click.Choice(list(NEEDS)))
 @click.option(
@@ -177,22 +164,24 @@ def add(
         remark=remark,
     )
     event = event_of(set_folder, what, report, time=time)
+    odd = doubts(event, set_folder.journal(), set_folder.record, card) if isinstance(event, JUDGED) else []
     attached = {file: read_file(file, limit=MAX_DOCUMENT) for file in files}
     with opening((), passphrase_files, descriptors) as at_hand:
         keys = signers(signer_files, at_hand)
         cards = () if card is None else (card,)
         made = append_with(set_folder, event, attached, keys=keys, cards=cards, time=time)
     stands = made.head()
-    found = _cautions(made)
+    found = [*odd, *cautions(made)]
     for line in () if as_json else found:
         warn(line)
     warn_unsigned(signer_files, as_json=as_json)
-    members = {"done": True, **_entry_members(made, None), "head": stands.public("sequence", "head"), "cautions": found}
-    lines = [f"Added: {words(event)}.", *_next(event), f"The journal stands at {stands.words()}."]
+    members = {"done": True, **entry_members(made, None), "head": stands.public("sequence", "head")}
+    members["cautions"] = found
+    lines = [f"Added: {words(event)}.", *next_lines(event), f"The journal stands at {stands.words()}."]
     print_result(members, lines, as_json=as_json)
 
 
-@command.command()
+@command.command(short_help="Check chain, signatures, and all that is named.")
 @set_argument
 @click.option(
     "--head",
@@ -215,7 +204,7 @@ def add(
 def verify(
     ctx: click.Context, folder: str, noted: tuple[str, ...], trusted_files: tuple[str, ...], as_json: bool
 ) -> None:
-    """Check the journal in the folder SET: chain, signatures, the record, and every document that it names.
+    """Check the journal in SET, a set's folder or a pack: chain, signatures, the record, and every document it names.
 
     Exit code 0 when it is whole, 4 when it is broken anywhere; each place is named.
 
@@ -225,9 +214,10 @@ def verify(
     """
     heads = heads_given(noted)
     trusted = [load_card(file) for file in trusted_files]
-    record, policy = _record_and_policy(Path(folder))
-    journal = _load(folder)
-    problems = check(journal, FolderFiles(Path(folder)), record, policy, heads=heads, trusted=trusted)
+    files = _files(folder)
+    record, policy = _record_and_policy(files)
+    journal = _load(files)
+    problems = check(journal, files, record, policy, heads=heads, trusted=trusted)
     broken = any(problem.breaks for problem in problems)
     signed = Counter(card.fingerprint for entry in journal.entries for card in journal.signers(entry))
     code = VerificationError.exit_code if broken else 0
@@ -242,17 +232,17 @@ def verify(
         "heads_given": len(heads),
         "signers": [{"name": journal.cards[one].name, "card": one, "entries": n} for one, n in signed.items()],
         "problems": [dataclasses.asdict(problem) for problem in problems],
-        "proves": None if broken else _proves(journal),
+        "proves": None if broken else proves(journal),
     }
-    print_result(members, _verified_lines(members, problems, journal), as_json=as_json)
+    print_result(members, verified_lines(members, problems, journal), as_json=as_json)
     ctx.exit(code)
 
 
-@command.command()
+@command.command(short_help="Say where the journal stands, to be noted elsewhere.")
 @set_argument
 @json_option
 def head(folder: str, as_json: bool) -> None:
-    """Say where the journal in the folder SET stands, short enough to be read aloud and noted elsewhere.
+    """Say where the journal in SET, a set's folder or a pack, stands: short enough to read aloud and note elsewhere.
 
     Whoever has noted it can show later that nothing before it was changed, and that nothing was cut off.
 
@@ -260,7 +250,7 @@ def head(folder: str, as_json: bool) -> None:
     Example:
       shares journal head tide-archive
     """
-    journal = _load(folder)
+    journal = _load(_files(folder))
     broken = next((problem for problem in journal.problems if problem.breaks), None)
     if broken or journal.head is None:
         raise VerificationError(
@@ -271,101 +261,24 @@ def head(folder: str, as_json: bool) -> None:
     print_result({"done": True, **journal.head.public("sequence", "head")}, [journal.head.words()], as_json=as_json)
 
 
-def _load(folder: str) -> Journal:
-    path = Path(folder)
-    if not os.path.lexists(path / JOURNAL_NAME):
-        raise StorageError("holds no journal", where=folder, hint="name the folder of a set")
-    return load_journal(path, progress=progress("Checking the journal", "entries"))
+def _files(path: str) -> Files:
+    """Return the files of a set: of its folder, or in a pack."""
+    return PackFiles(path) if os.path.isfile(path) else FolderFiles(Path(path))
 
 
-def _record_and_policy(path: Path) -> tuple[Record, Policy | None]:
-    record = load_record(path / RECORD_NAME)
-    if record.policy is not None and not os.path.lexists(path / POLICY_NAME):
-        warn("the policy is not in this folder: nothing says whether two parties have to sign each entry.")
+def _load(files: Files) -> Journal:
+    told = progress("Checking the journal", "entries")
+    if isinstance(files, FolderFiles):
+        if not os.path.lexists(files.folder / JOURNAL_NAME):
+            raise StorageError("holds no journal", where=files.where, hint="name the folder of a set, or a pack of it")
+        return load_journal(files.folder, progress=told)
+    return read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL), progress=told)
+
+
+def _record_and_policy(files: Files) -> tuple[Record, Policy | None]:
+    where = os.path.join(files.where, RECORD_NAME)
+    record = Record.parse(files.read(RECORD_NAME, limit=MAX_FILE), where=where)
+    if record.policy is not None and POLICY_NAME not in files.names():
+        warn("the policy is not beside the record: nothing says whether two parties have to sign each entry.")
         return record, None
-    return record, load_policy(path, record)
-
-
-def _proves(journal: Journal) -> str:
-    last = next((entry.sequence for entry in reversed(journal.entries) if entry.signatures), None)
-    return SIGNED.format(last=last) if last else UNSIGNED
-
-
-def _time(text: str) -> datetime:
-    try:
-        return clock.from_text(text)
-    except ParameterError as error:
-        problem = error.what
-    raise ParameterError(problem, where="--since")
-
-
-def _entry_members(entry: Entry, journal: Journal | None) -> dict[str, Any]:
-    """Return an entry for JSON: its own members, its sentence, and who signed it, as far as the signature fits."""
-    cards = journal.signers(entry) if journal else None
-    signers = [one.card for one in entry.signatures] if cards is None else [card.fingerprint for card in cards]
-    return {**entry.public("sequence", "time", "event", "documents"), "words": words(entry.event), "signers": signers}
-
-
-def _entry_lines(entry: Entry, journal: Journal) -> list[str]:
-    names = ", ".join(card.name for card in journal.signers(entry)) or "unsigned"
-    before = f"{entry.sequence:>5}  {clock.to_text(entry.time)}  "
-    return textwrap.wrap(
-        f"{words(entry.event)} [{names}]",
-        100,
-        initial_indent=before,
-        subsequent_indent=" " * len(before),
-        break_long_words=False,
-        break_on_hyphens=False,
-    )
-
-
-def _cautions(entry: Entry) -> list[str]:
-    """Say what a report means for the shares, where that is easily overlooked."""
-    match entry.event:
-        case Departed():
-            return [
-                "who leaves keeps what they know. A share that was handed back may have been copied: renew the shares, "
-                "or replace the key where they held enough of them."
-            ]
-        case Incident(exposed=True):
-            return ["whoever may know a share counts as knowing it: leave that custodian out, and renew the shares."]
-        case HandedOn():
-            return ["the one before still knows the share. Two shares in one person's mind may be a quorum."]
-        case Introduced(custodian=name):
-            other = [card.name for card in entry.cards if card.fingerprint == entry.event.card and card.name != name]
-            return [
-                *(f"the card is of {card}, not {name}." for card in other),
-                "a card proves nothing of a person: compare its fingerprint with them before you rely on it.",
-            ]
-    return []
-
-
-def _next(event: Event) -> list[str]:
-    if isinstance(event, Departed | Incident):
-        return [f"Next: deal with it by {clock.to_text(event.due)}, and enter that: shares journal add ... resolved."]
-    return []
-
-
-def _count(number: int, what: str) -> str:
-    return f"{number:,} {what if number == 1 else what.replace('entry', 'entrie') + 's'}"
-
-
-def _verified_lines(members: dict[str, Any], problems: Sequence[Problem], journal: Journal) -> list[str]:
-    lines = []
-    for problem in problems[:SHOWN]:
-        place = f"Line {problem.line}" if problem.line else "The journal"
-        lines += prose(f"{place}: {problem.what}{'' if problem.breaks else ' (noticed)'}.")
-    if len(problems) > SHOWN:
-        lines.append(f"And {len(problems) - SHOWN} more; --json lists them all.")
-    counts = f"{_count(members['entries'], 'entry')}, {_count(members['documents'], 'document')} named"
-    given = f", {_count(members['heads_given'], 'head')} noted elsewhere" if members["heads_given"] else ""
-    whole = "broken" if any(problem.breaks for problem in problems) else "whole"
-    lines.append(f"The journal of {members['label']} is {whole}: {counts}{given}.")
-    lines += [
-        f"Signed by {one['name']}, card {one['card']}: {_count(one['entries'], 'entry')}." for one in members["signers"]
-    ]
-    if whole == "broken":
-        lines += prose("Next: change nothing in this folder, compare it with other copies, and tell who relies on it.")
-    elif journal.head:
-        lines += [f"It stands at {journal.head.words()}.", *prose(members["proves"])]
-    return lines
+    return record, load_policy(files, record)

@@ -33,7 +33,7 @@ def command() -> None:
     """
 
 
-@command.command()
+@command.command(short_help="Make a party key and card.")
 @click.argument("name", callback=filled)
 @click.option("--in", "folder", default=".", metavar="DIR", callback=filled, help="Existing folder.  [default: .]")
 @click.option("--contact", metavar="TEXT", callback=filled, help="How the party is reached. It is public.")
@@ -65,7 +65,7 @@ def new(
         print_result(members, lines, as_json=as_json)
 
 
-@command.command()
+@command.command(short_help="Show a party card, checked, with its fingerprint.")
 @click.argument("card", callback=filled)
 @json_option
 def show(card: str, as_json: bool) -> None:
@@ -85,7 +85,7 @@ def show(card: str, as_json: bool) -> None:
     print_result({"done": True, **_facts(found)}, lines, as_json=as_json)
 
 
-@command.command()
+@command.command(short_help="Wrap a party key under a new passphrase.")
 @click.argument("key", callback=filled)
 @click.option("--to", "target", required=True, metavar="FILE", callback=filled, help="New file for the key.")
 @click.option(

@@ -61,7 +61,7 @@ def command() -> None:
     """
 
 
-@command.command("status")
+@command.command("status", short_help="Show every copy, and what became of it.")
 @click.argument("folder", metavar="SET", callback=filled)
 @json_option
 def status_(folder: str, as_json: bool) -> None:
@@ -77,8 +77,9 @@ def status_(folder: str, as_json: bool) -> None:
     found = ending(SetFolder(folder))
     held, copies = found.inventory.held, found.inventory.copies
     until = _kept_until(found.retired)
+    them = "copy is" if len(copies) == 1 else "copies are"
     lines = [
-        f"{len(copies) - len(held)} of {len(copies)} copies are accounted for. {NOT_COUNTED}",
+        f"{len(copies) - len(held)} of {len(copies)} {them} accounted for. {NOT_COUNTED}",
         *(line for copy in copies for line in prose(f"  {_words(copy)}")),
         *(line for problem in found.inventory.problems for line in prose(f"Note: {problem}.")),
         _retired_line(found.retired.sequence, until, len(held))
@@ -98,7 +99,7 @@ def status_(folder: str, as_json: bool) -> None:
     print_result(members, lines, as_json=as_json)
 
 
-@command.command("destroyed")
+@command.command("destroyed", short_help="Enter that a copy was destroyed before a witness.")
 @click.argument("folder", metavar="SET", callback=filled)
 @custodian_option
 @copy_option
@@ -142,7 +143,7 @@ def destroyed_(
     _tell(of_set, meant, entry, f"destroyed by {by}, seen by {witness}", MEANS_OF_ERASURE, as_json=as_json)
 
 
-@command.command("lost")
+@command.command("lost", short_help="Enter that a copy is given up as lost.")
 @click.argument("folder", metavar="SET", callback=filled)
 @custodian_option
 @copy_option
@@ -180,7 +181,7 @@ def lost_(
     _tell(of_set, meant, entry, f"given up as lost by {by}, before {witness}", LOST_CAUTION, as_json=as_json)
 
 
-@command.command("affidavit")
+@command.command("affidavit", short_help="Write the form that declares a destruction.")
 @click.argument("folder", metavar="SET", callback=filled)
 @custodian_option
 @copy_option
@@ -205,7 +206,7 @@ def affidavit_(folder: str, custodian: str, copy: str | None, target: str, as_js
     print_result({"done": True, "file": target, **_copy_members(meant)}, lines, as_json=as_json)
 
 
-@command.command("close")
+@command.command("close", short_help="End the set: every copy is accounted for.")
 @click.argument("folder", metavar="SET", callback=filled)
 @click.option("--remark", metavar="TEXT", callback=filled, help="What is to be noted.")
 @sign_option
@@ -233,7 +234,7 @@ def close_(
     until = _kept_until(entry)
     gone = len(found.inventory.copies) - len(found.lost)
     lines = [
-        f"Retired: {of_set.record.label}, entry {entry.sequence}. {gone} copies were destroyed.",
+        f"Retired: {of_set.record.label}, entry {entry.sequence}. {_copies(gone)} destroyed.",
         *(line for copy in found.lost for line in prose(f"Not destroyed but lost: {_words(copy)}. Exposure stays.")),
         f"Keep record, policy, journal, affidavits and their paper until {until}; destroy nothing of them before.",
         *([KEEP_ENCRYPTED] if of_set.record.encrypted_file is not None and not found.lost else []),
@@ -252,6 +253,10 @@ def close_(
         warn(CLOSING_CAUTION)
     warn_unsigned(signer_files, as_json=as_json)
     print_result(members, lines, as_json=as_json)
+
+
+def _copies(number: int) -> str:
+    return f"{number} {'copy was' if number == 1 else 'copies were'}"
 
 
 def _retired_line(entry: int, until: str | None, held: int) -> str:

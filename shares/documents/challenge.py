@@ -102,7 +102,8 @@ class Challenge(Document):
     def words(self) -> str:
         """Say whom it asks for what, and until when."""
         asked = "whether the share is there and whole" if self.purpose == "attestation" else "who is there"
-        return f"{', '.join(self.custodians)} are asked {asked}, until {clock.to_text(self.due)}"
+        verb = "is" if len(self.custodians) == 1 else "are"
+        return f"{', '.join(self.custodians)} {verb} asked {asked}, until {clock.to_text(self.due)}"
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

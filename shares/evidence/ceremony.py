@@ -40,12 +40,14 @@ class Logged:
         script: the ceremony's.
         skipped: steps before the one logged that have no entry yet.
         following: the first step after it that has none, or None at the end.
+        pending: whether an exception was logged at a step that has no entry of its own yet.
     """
 
     entry: Entry
     script: CeremonyScript
     skipped: tuple[int, ...]
     following: int | None
+    pending: bool
 
 
 def script_name(digest: bytes) -> str:
@@ -221,4 +223,4 @@ def _kept(folder: Path, script: CeremonyScript) -> NamedDigest:
 def _logged(entry: Entry, script: CeremonyScript, done: dict[int, int], step: int) -> Logged:
     left = [number for number in range(1, len(script.steps) + 1) if number not in done]
     skipped = tuple(number for number in left if number < step)
-    return Logged(entry, script, skipped, next((number for number in left if number > step), None))
+    return Logged(entry, script, skipped, next((number for number in left if number > step), None), step in left)

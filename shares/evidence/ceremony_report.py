@@ -165,7 +165,9 @@ def _chosen(journal: Journal, wanted: bytes | None, where: str) -> bytes:
         return wanted
     if len(told) != 1:
         raise ParameterError(
-            f"the journal tells of {len(told) or 'no'} ceremonies{', so say which' if told else ''}",
+            f"the journal tells of {len(told)} ceremonies, so say which"
+            if told
+            else "the journal tells of no ceremony",
             where=where,
             hint="give the script's file with --script" if told else "`shares ceremony log` enters its steps",
         )

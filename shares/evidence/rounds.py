@@ -2,7 +2,7 @@
 
 Source: FORMAT_EVIDENCE.md, sec. 17.
 May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history, shares.evidence.attest,
-shares.evidence.judge, shares.evidence.retire.
+shares.evidence.inventory, shares.evidence.judge, shares.evidence.retire.
 Secret: party keys that sign, passed through. Confidential: challenges, answers, journal. Public: nothing else.
 Does not: say when a round is due, or what its answers amount to; an audit does.
 """
@@ -19,16 +19,16 @@ from shares.documents.attestation import Attestation
 from shares.documents.base import MAX_FILE
 from shares.documents.challenge import Challenge, Purpose
 from shares.documents.entry import Entry, NamedDigest
-from shares.documents.event import Attested, Challenged, Introduced
+from shares.documents.event import Attested, Challenged, Departed, HandedOn, Introduced
 from shares.documents.party import OpenPartyKey, PartyCard
-from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
 from shares.evidence.attest import make_challenge
+from shares.evidence.inventory import take_inventory
 from shares.evidence.judge import Earlier, Judgement, check_challenge, judge
 from shares.evidence.retire import refuse_retired
 from shares.history.folder import SetFolder
-from shares.history.holders import Holders
+from shares.history.holders import known_cards
 from shares.history.journal import Journal
 from shares.storage import read_file
 
@@ -79,18 +79,38 @@ def rounds(journal: Journal) -> dict[bytes, Round]:
     return found
 
 
-def known_cards(journal: Journal, record: Record, policy: Policy | None) -> dict[str, str]:
-    """Return the fingerprint of each custodian's party card, as the journal told last of who holds the share now."""
-    holders = Holders((custodian.name for custodian in record.custodians), policy)
-    for entry in journal.entries:
-        holders.take(entry.event)
-    return holders.cards
-
-
 def folder_of_round(challenge: Challenge) -> str:
     """Return the name of the folder, within the set's, where a challenge and its answers are kept."""
     day = challenge.created.date().isoformat()
     return f"{ATTESTATIONS}/{day}-{challenge.digest()[:6].hex()}"
+
+
+def doubts_of_asked(record: Record, journal: Journal, custodians: Sequence[str]) -> list[str]:
+    """Say of whom no answer can be expected: whose person has left, or who has no copy of the share any more.
+
+    Args:
+        record: the set's.
+        journal: the set's.
+        custodians: who is to be asked; all of them where none is named.
+    """
+    names = custodians or [custodian.name for custodian in record.custodians]
+    left: dict[str, Entry] = {}
+    for entry in journal.entries:
+        event = entry.event
+        if isinstance(event, Departed):
+            left |= dict.fromkeys(event.custodians, entry)
+        elif isinstance(event, HandedOn | Introduced):
+            # Somebody else has the place since.
+            left.pop(event.custodian, None)
+    copies = [copy for copy in take_inventory(journal, record).copies if copy.epoch == record.epoch]
+    gone = {copy.custodian for copy in copies} - {copy.custodian for copy in copies if copy.fate == "held"}
+    said = []
+    for name in names:
+        if name in left:
+            said.append(f"{name} is asked, and entry {left[name].sequence} tells that the person who held it has left.")
+        if name in gone:
+            said.append(f"{name} is asked, and every copy of that share is entered as destroyed or lost.")
+    return said
 
 
 def ask(

@@ -166,11 +166,21 @@ class _Steps:
         )
         yield self._step(
             DEALER,
-            "Make a folder in memory. Copy script, policy, cards, acknowledgements and the dealer's party key into it. "
-            "From now on the internal witness logs each step when it is done; those before this one first, in order.",
+            "Make a folder in memory. Copy script, policy, acknowledgements, all cards, and the party keys of the "
+            "dealer and both witnesses into it. From now on the internal witness logs each step when it is done; those "
+            "before this one first, in order.",
             "No message.",
             command=f"umask 077; mkdir /dev/shm/ceremony; cd /dev/shm/ceremony; mkdir handover {self.set}",
         )
+        for role in (DEALER, INTERNAL, EXTERNAL):
+            yield self._step(
+                role,
+                "Show your party card as it lies beside your key in this folder, and read its fingerprint aloud from "
+                "a paper that you brought. Everyone writes it down: signatures of record and log are known by it.",
+                "The same 8 groups of 4 on the screen and on the paper, and another card for each of the three.",
+                command=f"shares party show {role}.card.json",
+                note="Fingerprint of the card",
+            )
         yield self._step(
             INTERNAL,
             "Compare script and policy with this paper.",

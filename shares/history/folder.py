@@ -21,7 +21,15 @@ from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.record import Record
 from shares.errors import ParameterError, VerificationError
-from shares.history.files import MAX_DOCUMENT, POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, is_name_in_set
+from shares.history.files import (
+    MAX_DOCUMENT,
+    POLICY_NAME,
+    PRACTICE_RECORD,
+    RECORD_NAME,
+    Files,
+    FolderFiles,
+    is_name_in_set,
+)
 from shares.history.journal import Journal, append, load_journal
 from shares.storage import StrPath, make_folder, read_file, write_new
 
@@ -49,7 +57,7 @@ class SetFolder:
         self.path = Path(path)
         where = os.fspath(self.path / RECORD_NAME)
         self.record = Record.parse(read_file(where, limit=MAX_FILE), where=where)
-        self.policy = load_policy(self.path, self.record)
+        self.policy = load_policy(FolderFiles(self.path), self.record)
 
     def journal(self) -> Journal:
         """Read the journal as it stands now.
@@ -130,8 +138,12 @@ class SetFolder:
                 )
 
 
-def load_policy(folder: Path, record: Record) -> Policy | None:
+def load_policy(files: Files, record: Record) -> Policy | None:
     """Read the policy beside a record, where the record names one.
+
+    Args:
+        files: those of the set.
+        record: the set's.
 
     Raises:
         StorageError, DocumentError: it cannot be read, or is none.
@@ -142,8 +154,8 @@ def load_policy(folder: Path, record: Record) -> Policy | None:
     # Imported late: a set that was split without a policy needs nothing of it.
     from shares.documents.policy import Policy
 
-    where = os.fspath(folder / POLICY_NAME)
-    policy = Policy.parse(read_file(where, limit=MAX_FILE), where=where)
+    where = os.path.join(files.where, POLICY_NAME)
+    policy = Policy.parse(files.read(POLICY_NAME, limit=MAX_FILE), where=where)
     if policy.digest() != record.policy:
         raise VerificationError(
             "it is not the policy that the record names: it was changed since the split",

@@ -4,7 +4,7 @@ A card belongs to a person. Whoever takes a share over is not known by the card 
 own is introduced, nobody's signature is theirs.
 
 Source: FORMAT_EVIDENCE.md, sec. 16.
-May import: shares.documents.
+May import: shares.documents, .journal.
 Secret: nothing. Confidential: persons. Public: names, fingerprints of cards.
 Does not: say what a share is worth, or whether its place is filled; ``evidence.standing`` does.
 """
@@ -15,6 +15,16 @@ from collections.abc import Iterable
 
 from shares.documents.event import Dealt, Departed, Event, HandedOn, Introduced
 from shares.documents.policy import Policy, folded
+from shares.documents.record import Record
+from shares.history.journal import Journal
+
+
+def known_cards(journal: Journal, record: Record, policy: Policy | None) -> dict[str, str]:
+    """Return the fingerprint of each custodian's party card, as the journal told last of who holds the share now."""
+    holders = Holders((custodian.name for custodian in record.custodians), policy)
+    for entry in journal.entries:
+        holders.take(entry.event)
+    return holders.cards
 
 
 class Holders:

@@ -1,7 +1,7 @@
 """What people report by hand: which facts each event needs, and the entry made of them, with what they hand in.
 
 Source: FORMAT_EVIDENCE.md, sec. 16; the 24 hours for a leaver are what the trade asks for.
-May import: shares.errors, shares.clock, shares.documents, .folder, .holders.
+May import: shares.errors, shares.clock, shares.documents, .folder, .holders, .set_tasks.
 Secret: party keys that sign, passed through. Confidential: what is reported. Public: nothing.
 Does not: take reports of what a command does itself, such as a split, an attestation, a drill or a recovery.
 """
@@ -19,12 +19,13 @@ from typing import Final
 
 from shares import clock
 from shares.documents.entry import Entry, NamedDigest
-from shares.documents.event import Departed, DrillClosed, Event, Incident, Lost, Recovered, Remedy, make_event
+from shares.documents.event import Event, Remedy, make_event
 from shares.documents.intervals import parse_duration
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.errors import ParameterError
 from shares.history.folder import SetFolder
 from shares.history.holders import Holders
+from shares.history.set_tasks import check_task
 
 # What each event needs, and what it may have besides: fields of ``Report``, and so options of the command.
 NEEDS: Final[dict[str, tuple[tuple[str, ...], tuple[str, ...]]]] = {
@@ -47,8 +48,6 @@ _SEVERAL: Final = {
     ("incident", "custodian"),
     ("incident", "person"),
 }
-_TASKS: Final = (Departed, Incident, Lost, Recovered, DrillClosed)
-_LIST: Final = "`shares journal show` lists the entries; departed, incident, lost, recovered and drill-closed set tasks"
 RESPOND_WITHIN: Final = timedelta(hours=24)
 """How soon a departure, incident or loss is dealt with where no policy says."""
 
@@ -97,7 +96,7 @@ def event_of(folder: SetFolder, what: str, report: Report, *, time: datetime | N
 
     Raises:
         ParameterError: a fact is missing, out of place, or cannot be: its option is named.
-        StorageError: the journal cannot be read.
+        StorageError, DocumentError: the journal, or the report of the drill that is meant, cannot be read.
     """
     needed, allowed = NEEDS[what]
     if what == "departed" and report.person and not report.custodian:
@@ -114,7 +113,7 @@ def event_of(folder: SetFolder, what: str, report: Report, *, time: datetime | N
             raise ParameterError(f"{what} needs it", where=_option(name), hint=_taken(what))
     _check_custodians(folder, report.custodian)
     if report.entry is not None:
-        _check_task(folder, report.entry)
+        check_task(folder, report.entry, report.action)
     members = {
         name: said[name] for name in said if name not in ("custodian", "person", "card", "within", "not_exposed")
     }
@@ -201,15 +200,6 @@ def _check_custodians(folder: SetFolder, names: tuple[str, ...]) -> None:
             raise ParameterError("is no custodian of this set", where=f"--custodian {name}", hint=hint)
         if name in names[:i]:
             raise ParameterError("is given twice", where=f"--custodian {name}")
-
-
-def _check_task(folder: SetFolder, number: int) -> None:
-    found = [entry.event for entry in folder.journal().entries if entry.sequence == number]
-    if not found:
-        raise ParameterError(f"the journal has no entry {number}", where="--entry", hint=_LIST)
-    if not isinstance(found[0], _TASKS):
-        problem = f"entry {number} sets no task: it is {found[0].what}"
-        raise ParameterError(problem, where="--entry", hint=_LIST)
 
 
 def _within(folder: SetFolder, text: str | None) -> timedelta:

@@ -51,7 +51,7 @@ def words(event: Event) -> str:
 
     >>> from shares.documents.event import make_event
     >>> words(make_event("delivered", custodian="north-pier", serial="HT-0001", channel="own boat"))
-    'share of north-pier sent, serial HT-0001, by own boat'
+    'share of north-pier sent, serial HT-0001, by way of: own boat'
     """
     remark = getattr(event, "remark", None)
     said = _said(event)
@@ -68,7 +68,7 @@ def _said(event: Event) -> str:
         case Acknowledged():
             return f"duties accepted by {event.custodian}"
         case Delivered():
-            return f"share of {event.custodian} sent{_serial(event.serial)}{_more(', by ', event.channel)}"
+            return f"share of {event.custodian} sent{_serial(event.serial)}{_more(', by way of: ', event.channel)}"
         case Received():
             return f"share of {event.custodian} received{_serial(event.serial)}"
         case Copied():

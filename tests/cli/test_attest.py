@@ -18,10 +18,10 @@ from shares import clock
 from shares.cli.keys import UNSIGNED_ENTRY
 from shares.documents.attestation import Attestation
 from shares.documents.challenge import Challenge
-from shares.documents.event import Attested, Introduced
+from shares.documents.event import Attested, Introduced, make_event
 from shares.documents.share import Share
 from shares.documents.wrapping import Suite
-from shares.evidence.rounds import ask, rounds
+from shares.evidence.rounds import ask, doubts_of_asked, rounds
 from shares.history.folder import SetFolder
 from shares.history.journal import load_journal
 from shares.storage import read_file
@@ -115,7 +115,8 @@ def test_a_round_from_the_question_to_the_journal(quay: Quay) -> None:
     assert f"where the journal of the set stood, {challenge.journal.words()}" in first.out.replace("\n", " ")
     assert "sealed pack" not in first.out
     assert quay.answer_file("north-pier").stat().st_mode & 0o777 == 0o600
-    quay.answer("south-pier", "--sealed", "--serial", "TB-0017")
+    closed = quay.answer("south-pier", "--sealed", "--serial", "TB-0017")
+    assert "it counts only beside an earlier proof of content" in closed.out.replace("\n", " ")
     damaged = quay.answer("light-house", "--custodian", "light-house", code=4)
     assert "Answered for light-house: damaged." in damaged.out
     assert "tell whoever asked at once" in damaged.out
@@ -125,11 +126,12 @@ def test_a_round_from_the_question_to_the_journal(quay: Quay) -> None:
     lines = done.out.splitlines()
     assert done.code == 4
     assert lines[0].startswith(f"{quay.answer_file('north-pier')} (north-pier): intact, counts (entry ")
-    assert "(south-pier): seal intact, attributed, does not count (entry " in lines[1]
+    assert "(south-pier): seal intact, attributed, counts beside an earlier proof of content (entry " in lines[1]
     assert lines[1].endswith("- pack and seal were seen, and no proof of content was given")
     assert "(light-house): damaged, attributed, does not count (entry " in lines[2]
     assert lines[3] == "1 of 3 count toward the margin of Tide archive root."
-    assert lines[4].startswith("Still silent: registrar; due is ")
+    assert "until that is 365 days old (the policy may say otherwise" in done.out.replace("\n", " ")
+    assert "Still silent: registrar; due is " in done.out
     assert "Silence is no consent" in done.out
 
     journal = load_journal(quay.place.set)
@@ -249,6 +251,40 @@ def test_a_sheet_answers_through_transcribe(quay: Quay) -> None:
     assert done.code == 0
 
 
+def test_what_comes_to_light_after_the_answer_is_an_incident(quay: Quay) -> None:
+    quay.ask("--custodian", "north-pier")
+    entering = (*quay.entering(), *quay.cards("north-pier"))
+    quay.answer("north-pier")
+    run(*quay.check_arguments("north-pier", more=entering))
+    quay.answer_file("north-pier").unlink()
+    quay.answer("north-pier", "--sealed", "--broken", "--serial", "TB-0017", code=4)
+    done = run(*quay.check_arguments("north-pier", more=entering))
+    told = done.out.replace("\n", " ")
+    assert (done.code, "refused - this custodian has answered before" in told) == (4, True)
+    assert "north-pier answered before, and now reports: seal broken." in told
+    assert "`shares journal add SET incident --custodian north-pier --remark TEXT`" in told
+
+
+def test_who_cannot_answer_is_named_when_they_are_asked(quay: Quay) -> None:
+    folder = SetFolder(quay.place.set)
+    assert doubts_of_asked(folder.record, folder.journal(), ()) == []
+    folder.append(make_event("departed", person="A. Keeper", custodians=("north-pier",), due=clock.now()))
+    for what in ("destroyed", "lost"):
+        more = {"reason": "the flood"} if what == "lost" else {}
+        name = {"destroyed": "registrar", "lost": "dry-dock"}[what]
+        folder.append(make_event(what, custodian=name, copy="original", by="A", witness="B", **more))
+    folder.append(make_event("copied", custodian="dry-dock", copy="S-1"))
+    done = quay.ask()
+    number = len(load_journal(quay.place.set).entries) - 4
+    assert f"north-pier is asked, and entry {number} tells that the person who held it has left." in done.err
+    assert "registrar is asked, and every copy of that share is entered as destroyed or lost." in done.err
+    assert done.err.count("Caution:") == 2
+    folder.append(make_event("handed-on", custodian="north-pier", to="B. Keeper"))
+    quay.challenge.unlink()
+    told = quay.ask("--json", "--custodian", "north-pier", "--custodian", "registrar")
+    assert (told.err, [line.split()[0] for line in told.json["cautions"]]) == ("", ["registrar"])
+
+
 def test_attendance_in_a_drill_is_answered_without_any_share(quay: Quay) -> None:
     now = clock.now()
     with unlocked(OFFICE) as key:
@@ -264,9 +300,10 @@ def test_attendance_in_a_drill_is_answered_without_any_share(quay: Quay) -> None
     quay.challenge.write_bytes(made.to_file())
     done = run(*quay.answer_arguments("dry-dock", "--present", "--place", "the quay"))
     assert (done.code, "Answered for dry-dock: present." in done.out) == (0, True)
-    assert "are asked who is there" in done.err
+    assert "dry-dock is asked who is there" in done.err
     done = run(*quay.check_arguments("dry-dock", more=(*quay.entering(), *quay.cards("dry-dock"))))
-    assert (done.code, "present, attributed, does not count (entry " in done.out) == (0, True)
+    assert (done.code, "(dry-dock): answered (entry " in done.out) == (0, True)
+    assert ("margin" in done.out, "1 of 1 who were asked have answered." in done.out) == (False, True)
     quay.answer_file("dry-dock").unlink()
     share = quay.answer_arguments("dry-dock", "--share", quay.place.share("dry-dock"))
     assert_not_answered(share, 2, "asks who is there", watched=quay.harbour.folder)
@@ -315,7 +352,7 @@ def test_a_challenge_is_refused_before_anything_is_written(quay: Quay) -> None:
     signed = quay.signed_by(OFFICE)
     assert_refused(quay.ask_arguments(*signed, "--custodian", "nobody"), 2, "no custodian nobody", watched=folder)
     for due in ("0d", "soon", "14", "1h"):
-        assert_refused(quay.ask_arguments(*signed, "--due", due), 2, "interval like", watched=folder)
+        assert_refused(quay.ask_arguments(*signed, "--due", due), 2, "--due: should be an interval", watched=folder)
     quay.challenge.write_text("taken")
     assert_refused(quay.ask_arguments(*signed), 5, "exists already", watched=folder)
 

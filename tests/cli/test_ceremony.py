@@ -135,6 +135,12 @@ def test_steps_are_logged_and_the_next_is_told(folder: Path) -> None:
     assert fourth.err == ""
     told = fourth.json
     assert (told["entry"], told["step"], told["skipped"], told["next"]) == (3, 3, [2], 5)
+    strange = ("--step", "2", "--exception", "it rained in")
+    assert "Next: step 2 itself has no entry yet. Log it when it is done." in run(*logging(folder, *strange)).out
+    assert run(*logging(folder, *strange, "--json")).json["next"] == 2
+    assert "Next: step 2, " in run(*logging(folder, "--exception", "a gull came in")).out
+    run(*logging(folder, "--step", "2"))
+    assert "Next: step 5, " in run(*logging(folder, *strange)).out
     last = run(*logging(folder, "--step", str(len(script.steps))))
     assert "Next: no later step is left." in last.out
 
@@ -168,7 +174,7 @@ def test_what_does_not_go_together_is_refused(folder: Path) -> None:
         "A",
     ]
     assert_refused(elsewhere, 5, "is no set's folder", watched=folder)
-    assert_refused(["ceremony", "report", folder / "set"], 2, "tells of no ceremonies", watched=folder)
+    assert_refused(["ceremony", "report", folder / "set"], 2, "tells of no ceremony", watched=folder)
     run(*logging(folder, "--step", "1"))
     assert_refused(logging(folder, "--step", "1"), 2, "has an entry already (entry 1)", "--repeats", watched=folder)
 

@@ -153,6 +153,7 @@ def go_before(page: tuple[str, ...], folder: Path) -> None:
         assert run("drill", "rehearse", of_set, *practice).code == 0
     if page == ("audit",):
         shutil.copytree(of_set, folder / "srv" / "sets" / "tide-archive")
+        (folder / "noted-on-monday.txt").write_text(run("journal", "head", of_set).out)
     if page == ("retire", "close"):
         for name in NAMES:
             assert run("retire", "destroyed", of_set, "--custodian", name, "--by", "A", "--witness", "B").code == 0

@@ -17,7 +17,9 @@ from history.test_folder import POLICY, with_policy
 from parties import party
 
 from shares.cli.keys import UNSIGNED_ENTRY
+from shares.history.files import FolderFiles
 from shares.history.journal import append, load_journal
+from shares.history.pack import write_pack
 from shares.history.reports import NEEDS
 
 
@@ -44,7 +46,7 @@ def test_what_happened_is_added_signed_and_shown(folder: Path) -> None:
     done = run(
         "journal", "add", folder, "received", "--custodian=north-pier", "--serial=HT-0031", *sign(folder, "registrar")
     )
-    assert (done.code, done.err) == (0, "")
+    assert (done.code, done.err.count("Caution:"), "was sent" in done.err) == (0, 1, True)
     head = run("journal", "head", folder).out.strip()
     assert done.out == f"Added: share of north-pier received, serial HT-0031.\nThe journal stands at {head}.\n"
     shown = run("journal", "show", folder)
@@ -264,9 +266,29 @@ def test_without_its_policy_the_journal_is_checked_as_far_as_it_goes(tmp_path: P
     assert "dual control" in run("journal", "verify", planned).out
     (planned / "policy.toml").unlink()
     done = run("journal", "verify", planned)
-    assert "Caution: the policy is not in this folder" in done.err
+    assert "Caution: the policy is not beside the record" in done.err
     assert "dual control" not in done.out
     assert_refused(["journal", "add", planned, "noted", "--remark=x"], 5, "policy.toml", watched=planned)
+
+
+@pytest.mark.parametrize("command", ["show", "head", "verify"])
+def test_a_pack_is_read_as_its_folder_is(folder: Path, tmp_path: Path, command: str) -> None:
+    planned = with_policy(tmp_path / "planned", POLICY)
+    append(planned, note("windy"))
+    append(folder, note("calm"), keys=[key("harbour-office")])
+    pack, packed, none = (tmp_path / f"{name}.tar" for name in ("pack", "packed", "none"))
+    write_pack(FolderFiles(folder), pack)
+    write_pack(FolderFiles(planned), packed)
+    for original, copy in ((folder, pack), (planned, packed)):
+        for options in ((), ("--json",)):
+            here, there = (run("journal", command, one, *options) for one in (original, copy))
+            assert (there.code, there.out, there.err) == (here.code, here.out, here.err)
+    assert run("journal", command, pack).code == 0
+    none.write_bytes(b"a tape of something else" * 100)
+    refused = run("journal", command, none)
+    assert (refused.code, refused.err.startswith("shares: "), str(none) in refused.err) == (4, True, True)
+    pack.write_bytes(pack.read_bytes().replace(b'"remark":"calm"', b'"remark":"wild"'))
+    assert run("journal", command, pack).code == 4
 
 
 @pytest.mark.parametrize("command", ["show", "head", "verify"])

@@ -36,6 +36,13 @@ LEAVES = {(name,): command for name, command in COMMANDS.items() if not isinstan
 # What every command has.
 
 
+@pytest.mark.parametrize("group", ["attest", "ceremony", "journal", "party", "record", "retire"])
+def test_no_line_of_a_groups_help_is_cut_off(group: str) -> None:
+    told = run(group, "--help").out
+    assert "Commands:" in told
+    assert "..." not in told.partition("Commands:")[2]
+
+
 def test_the_version_names_the_kernel() -> None:
     result = run("--version")
     running = kernel()

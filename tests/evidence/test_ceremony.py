@@ -149,7 +149,7 @@ def test_another_script_under_the_same_name_is_refused(folder: Path) -> None:
 def test_two_scripts_are_told_apart(folder: Path) -> None:
     with pytest.raises(ParameterError, match="the folder holds no scripts"):
         load_script(folder, None)
-    with pytest.raises(ParameterError, match="the journal tells of no ceremonies"):
+    with pytest.raises(ParameterError, match="the journal tells of no ceremony"):
         report(folder)
     other = make_script(policy(), Software(version="0.1.0", digest=bytes(32)), created=at(1))
     log(folder, 1)

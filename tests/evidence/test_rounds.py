@@ -20,8 +20,9 @@ from shares.documents.event import Attested, Challenged, Introduced
 from shares.documents.policy import Policy
 from shares.errors import ParameterError, SetMismatchError, StorageError, VerificationError
 from shares.evidence.judge import Flaw
-from shares.evidence.rounds import ask, enter, folder_of_round, known_cards, rounds
+from shares.evidence.rounds import ask, enter, folder_of_round, rounds
 from shares.history.folder import SetFolder
+from shares.history.holders import known_cards
 
 
 @pytest.fixture

@@ -16,6 +16,7 @@ from shares.documents.base import MAX_FILE
 from shares.documents.ceremony_script import CeremonyScript, CeremonyStep, Software
 from shares.documents.policy import Policy
 from shares.errors import ParameterError, VerificationError
+from shares.evidence.paperwork import log_command
 from shares.evidence.script import DUTIES, cautions, make_script
 from shares.evidence.steps import EVERYONE, folder_name, title
 
@@ -98,6 +99,22 @@ def test_cards_are_read_aloud_and_keys_are_used() -> None:
     assert step.role == "custodian registrar"
     assert [" --key " in one for one in commands(script, "shares verify")] == [False, False, True]
     assert "unseen by others: north-pier, south-pier." in told(script)
+    shown = [step for step in script.steps if (step.command or "").startswith("shares party show ")]
+    assert [step.command.split()[-1].partition(".")[0] for step in shown if step.command and step is not shown[0]] == [
+        "dealer", "internal-witness", "external-witness",
+    ]  # fmt: skip
+    assert all(step.note == "Fingerprint of the card" for step in shown[1:])
+    split = next(i for i, step in enumerate(script.steps) if "shares split" in (step.command or ""))
+    assert all(script.steps.index(step) < split for step in shown)
+
+
+@pytest.mark.parametrize("dual", [False, True])
+def test_whatever_is_entered_is_signed(dual: bool) -> None:
+    script = made("dual_control = true" if dual else "")
+    signed = " --sign dealer.key.json" + " --sign internal-witness.key.json" * dual
+    entering = [log_command(script), *commands(script, "shares journal add")]
+    assert len(entering) == 4
+    assert all(command.endswith(signed) and command.count("--sign") == 1 + dual for command in entering)
 
 
 def test_days_and_people_are_those_given() -> None:

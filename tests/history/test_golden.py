@@ -24,7 +24,7 @@ SENTENCES = """\
 epoch 1 dealt to north-pier, south-pier, light-house, registrar, harbour-office
 card of registrar made known: {card}
 duties accepted by north-pier: form signed by hand
-share of north-pier sent, serial HT-0001, by own boat
+share of north-pier sent, serial HT-0001, by way of: own boat
 share of north-pier received, serial HT-0001
 share of north-pier copied, copy HT-0002: on paper, for the dry-dock
 share of north-pier typed or scanned, seen by A. Keeper, B. Keeper
