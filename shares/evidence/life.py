@@ -60,7 +60,7 @@ class Life:
         entries: Iterable[Entry],
         belief: Belief = ALL_BELIEVED,
     ) -> Life:
-        """Return the life of a set up to a time: entries of a later one are left out, and so is what is not believed."""
+        """Return the life of a set up to a time: without entries of a later one, and without what is not believed."""
         told = (belief.told(entry) for entry in entries if entry.time <= at)
         return cls(record, policy, tuple(entry for entry in told if entry is not None), at, belief)
 
