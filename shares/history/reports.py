@@ -113,7 +113,7 @@ def event_of(folder: SetFolder, what: str, report: Report, *, time: datetime | N
             raise ParameterError(f"{what} needs it", where=_option(name), hint=_taken(what))
     _check_custodians(folder, report.custodian)
     if report.entry is not None:
-        check_task(folder, report.entry, report.action)
+        check_task(folder, report.entry, report.action, report.how)
     members = {
         name: said[name] for name in said if name not in ("custodian", "person", "card", "within", "not_exposed")
     }

@@ -13,7 +13,7 @@ from collections.abc import Iterator
 from shares.documents.base import MAX_FILE
 from shares.documents.drill_report import DrillReport
 from shares.documents.entry import Entry
-from shares.documents.event import Departed, DrillClosed, DrillOpened, Incident, Lost, Recovered, Resolved
+from shares.documents.event import Departed, DrillClosed, DrillOpened, Incident, Lost, Recovered, Remedy, Resolved
 from shares.errors import ParameterError, SharesError
 from shares.history.files import FolderFiles
 from shares.history.folder import SetFolder
@@ -23,16 +23,17 @@ from shares.history.words import words
 _SHOWN = 5
 
 
-def check_task(folder: SetFolder, number: int, action: int | None) -> None:
+def check_task(folder: SetFolder, number: int, action: int | None, how: Remedy | None) -> None:
     """Refuse a report of a task as done that no entry has set.
 
     Args:
         folder: the set's.
         number: of the entry that is said to have set it.
         action: which action of a drill's report, from 1.
+        how: it was done.
 
     Raises:
-        ParameterError: it set none; says which tasks are open.
+        ParameterError: it set none, or is not done by that; says which tasks are open.
         StorageError, DocumentError: the drill's report cannot be read.
     """
     journal = folder.journal()
@@ -55,6 +56,8 @@ def check_task(folder: SetFolder, number: int, action: int | None) -> None:
         problem = f"entry {number} sets no task: it is {found.event.what}"
     elif action is not None:
         where, problem = "--action", f"entry {number} is {found.event.what}, and no drill's report with actions"
+    elif isinstance(found.event, Recovered) and how != "key replaced":
+        where, problem = "--how", f"entry {number} asks for a new key: only `key replaced` ends that"
     if problem:
         raise ParameterError(problem, where=where, hint=_hint(list(open_tasks(folder, journal))))
 
@@ -66,7 +69,13 @@ def open_tasks(folder: SetFolder, journal: Journal) -> Iterator[tuple[int, int |
         folder: the set's; a drill's report that cannot be read there is passed over.
         journal: the set's.
     """
-    done = {(e.event.entry, e.event.action) for e in journal.entries if isinstance(e.event, Resolved)}
+    recovered = {entry.sequence for entry in journal.entries if isinstance(entry.event, Recovered)}
+    # Nothing but a new key ends what a recovery asks for.
+    done = {
+        (event.entry, event.action)
+        for event in (entry.event for entry in journal.entries)
+        if isinstance(event, Resolved) and (event.entry not in recovered or event.how == "key replaced")
+    }
     for entry in journal.entries:
         if _sets_one(entry) and (entry.sequence, None) not in done:
             yield entry.sequence, None, words(entry.event)

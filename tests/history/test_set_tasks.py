@@ -61,7 +61,16 @@ def test_tasks_are_open_until_they_are_resolved(folder: SetFolder) -> None:
 
 @pytest.mark.parametrize(("entry", "action"), [*OPEN, (8, 1), (8, 2)])
 def test_what_was_set_can_be_resolved(folder: SetFolder, entry: int, action: int | None) -> None:
-    check_task(folder, entry, action)
+    check_task(folder, entry, action, "key replaced" if entry == 4 else "done")
+
+
+def test_only_a_new_key_ends_what_a_recovery_asks_for(folder: SetFolder) -> None:
+    with pytest.raises(ParameterError, match="--how: entry 4 asks for a new key"):
+        check_task(folder, 4, None, "refreshed")
+    folder.append(make_event("resolved", entry=4, action=None, how="refreshed"))
+    assert (4, None) in [task[:2] for task in open_tasks(folder, folder.journal())]
+    folder.append(make_event("resolved", entry=4, action=None, how="key replaced"))
+    assert (4, None) not in [task[:2] for task in open_tasks(folder, folder.journal())]
 
 
 @pytest.mark.parametrize(
@@ -81,7 +90,7 @@ def test_what_was_not_set_is_refused_and_what_is_open_listed(
     folder: SetFolder, entry: int, action: int | None, words: str
 ) -> None:
     with pytest.raises(ParameterError) as refusal:
-        check_task(folder, entry, action)
+        check_task(folder, entry, action, "done")
     assert words in str(refusal.value)
     assert "open: --entry 2 (A. Keeper leaves" in str(refusal.value)
     assert "--entry 9 --action 1 (do 1); and 1 more" in str(refusal.value)
@@ -90,10 +99,10 @@ def test_what_was_not_set_is_refused_and_what_is_open_listed(
 def test_a_report_that_is_gone_is_named_and_nothing_else_is_hidden(folder: SetFolder) -> None:
     (folder.path / "drills/8/report.json").unlink()
     with pytest.raises(StorageError, match=r"report\.json"):
-        check_task(folder, 9, 1)
+        check_task(folder, 9, 1, "done")
     assert [task[:2] for task in open_tasks(folder, folder.journal())] == OPEN[:4]
 
 
 def test_where_nothing_is_open_it_says_so(tmp_path: Path) -> None:
     with pytest.raises(ParameterError, match="no task is open"):
-        check_task(SetFolder(set_folder(tmp_path / "set")), 1, None)
+        check_task(SetFolder(set_folder(tmp_path / "set")), 1, None, "done")
