@@ -160,6 +160,8 @@ def command(
         )
     journaled = _journaled(record_file)
     purpose = _purpose(reason, disposition, persons, wanted=journaled is not None)
+    # The journal is read before there is a secret to be wiped.
+    cautions = _cautions(journaled.journal(), journaled.record) if journaled else []
     with opening(keys, passphrase_files, descriptors) as at_hand:
         signing = signers(signer_files, at_hand) if journaled else []
         if journaled:
@@ -168,7 +170,6 @@ def command(
         _require_encrypted(recovery, encrypted_file, optional=card is not None)
         if journaled and purpose:
             _enter(journaled, purpose, recovery, signing)
-    cautions = _cautions(journaled.journal(), journaled.record) if journaled else []
     if not as_json:
         for caution in cautions:
             warn(f"{caution}.")
