@@ -1,0 +1,1 @@
+"""Threshold keys: born among custodians or dealt to them, then used by a quorum and never assembled."""
