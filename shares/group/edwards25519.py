@@ -29,9 +29,9 @@ _IDENTITY: Final = (1).to_bytes(SIZE, "little")
 
 @final
 class Scalar:
-    """A number modulo the group's order, in the library's hands alone. It shows nothing and is compared in constant time.
+    """A number modulo the group's order, in the library's hands alone. It shows nothing; comparing is constant time.
 
-    Numbers that are public are written as ``int``; ``+ - *`` between scalars and ``scalar * point`` read as in the papers.
+    Public numbers are written as ``int``; ``+ - *`` between scalars and ``scalar * point`` read as in the papers.
 
     >>> three, four = Scalar.of(3), Scalar.of(4)
     >>> three * four - Scalar.of(5) == Scalar.of(7)
@@ -163,8 +163,8 @@ class Point:
             VerificationError: it is not 32 bytes, no canonical encoding, not on the curve, the identity, or not in the
                 group of prime order.
 
-        Source: RFC 9591, sec. 6.1, DeserializeElement: as RFC 8032, sec. 5.1.3, and the identity and every point outside
-            the group of prime order are refused.
+        Source: RFC 9591, sec. 6.1, DeserializeElement: as RFC 8032, sec. 5.1.3, and the identity and every point
+            outside the group of prime order are refused.
         """
         octets = bytes(octets)
         if len(octets) != SIZE or not sodium.crypto_core_ed25519_is_valid_point(octets):
