@@ -37,6 +37,13 @@ KINDS = (
     "attestation",
     "drill-report",
     "ceremony-script",
+    "key-record",
+    "key-share",
+    "task",
+    "task-message",
+    "task-step",
+    "task-done",
+    "nonce-batch",
 )
 VERSION = 1
 

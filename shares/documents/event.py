@@ -2,7 +2,7 @@
 
 Source: CA/Browser Forum TLS Baseline Requirements, sec. 5.4.1, wants life-cycle events of keys logged with date, person
 and description; the names of events are ours; FORMAT_EVIDENCE.md, sec. 16.
-May import: shares.errors, shares.sharing.rule, shares.documents.base, .members.
+May import: shares.errors, shares.sharing.rule, shares.documents.base, .key_event, .members.
 Secret: nothing. Confidential: persons, places and serials. Public: the rest.
 Does not: judge events or follow from one to another; ``evidence`` does.
 """
@@ -16,6 +16,7 @@ from pydantic import ValidationError, model_validator
 from pydantic_core import PydanticCustomError
 
 from shares.documents.base import Document
+from shares.documents.key_event import KeyEvent
 from shares.documents.members import Digest, Epoch, Fingerprint, Name, SetId, Text, Time
 from shares.errors import ParameterError
 from shares.sharing.rule import MAX_POINTS
@@ -369,6 +370,7 @@ Event: TypeAlias = (
     | Retired
     | Noted
     | SetAside
+    | KeyEvent
 )
 EVENTS: tuple[type[Event], ...] = get_args(Event)
 _BY_WHAT = {get_args(event.model_fields["what"].annotation)[0]: event for event in EVENTS}

@@ -39,7 +39,7 @@ def encode_bytes(data: bytes | memoryview) -> str:
     return base64.urlsafe_b64encode(data).rstrip(b"=").decode("ascii")
 
 
-def _decoded(text: object) -> bytes:
+def decode_bytes(text: object) -> bytes:
     """Decode base64url canonically: one value, one encoding."""
     data = None
     if isinstance(text, str) and re.fullmatch(r"[A-Za-z0-9_-]+", text):
@@ -55,7 +55,7 @@ def _decoded(text: object) -> bytes:
 
 
 def _decode_secret(text: object) -> Secret:
-    return text if isinstance(text, Secret) else Secret.of(_decoded(text))
+    return text if isinstance(text, Secret) else Secret.of(decode_bytes(text))
 
 
 def _encode_secret(row: Secret) -> str:
@@ -64,7 +64,7 @@ def _encode_secret(row: Secret) -> str:
 
 
 def _decode_public(text: object) -> bytes:
-    return text if isinstance(text, bytes) else _decoded(text)
+    return text if isinstance(text, bytes) else decode_bytes(text)
 
 
 def _decode_hex(text: object) -> bytes:

@@ -30,7 +30,7 @@ _IDENTITY: Final = (1).to_bytes(SIZE, "little")
 
 @final
 class Scalar:
-    """A number modulo the group's order, in the library's hands alone: it shows nothing, and compares in constant time.
+    """A number modulo the group's order, in the library's hands alone. It shows nothing; comparing is constant time.
 
     Public numbers are written as ``int``; ``+ - *`` between scalars and ``scalar * point`` read as in the papers.
 

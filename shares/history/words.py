@@ -41,6 +41,7 @@ from shares.documents.event import (
     SetAside,
     Transcribed,
 )
+from shares.documents.key_event import Approved, KeyBorn, NoncesCommitted, TaskAsked, TaskFinished
 
 _GRADES = {"content": "attested", "sealed": "showed the pack closed", "present": "answered"}
 _DISPOSITIONS = {"returned": "the shares return to their custodians", "destroyed": "the key is destroyed"}
@@ -125,7 +126,22 @@ def _said(event: Event) -> str:
             return f"set retired, records kept until {_time(event.keep_until)}"
         case Noted() | SetAside():
             return event.remark
+        case KeyBorn():
+            how = "generated jointly" if event.origin == "joint" else "dealt"
+            return f"key {how}, epoch {event.epoch}, record {event.record}"
+        case NoncesCommitted():
+            return f"{event.count:,} nonces made by {event.custodian}, and commitments to them handed out"
+        case TaskAsked():
+            return f"{_all(event.parties)} asked to {event.work} (task {event.task.hex()[:16]})"
+        case Approved():
+            return f"{event.custodian} agreed to {event.work}: {event.summary} (task {event.task.hex()[:16]})"
+        case TaskFinished():
+            return f"task {event.task.hex()[:16]} to {event.work} finished{_result(event.result)}"
     assert_never(event)
+
+
+def _result(digest: bytes | None) -> str:
+    return "" if digest is None else f", its result has the SHA-256 {digest.hex()}"
 
 
 def _attested(event: Attested) -> str:

@@ -21,11 +21,11 @@ from shares.documents.members import (
     _decode_field,
     _decode_hex,
     _decode_time,
-    _decoded,
     _printable,
     _valid_name,
     check_name,
     check_text,
+    decode_bytes,
     encode_bytes,
 )
 from shares.errors import ParameterError
@@ -45,7 +45,7 @@ def refused(decode, value: object) -> bool:
 def test_base64url_comes_back_and_is_the_standard_librarys(data: bytes) -> None:
     text = encode_bytes(data)
     assert text == base64.urlsafe_b64encode(data).decode().rstrip("=")
-    assert _decoded(text) == data
+    assert decode_bytes(text) == data
     assert encode_bytes(memoryview(data)) == text
 
 
@@ -54,14 +54,14 @@ def test_of_all_short_texts_exactly_the_canonical_ones_decode(length: int) -> No
     """1 character never; 2 where the last 4 bits are zero, 3 where the last 2 are: 256 and 65,536 texts."""
     if length == 3:
         texts = ("".join(text) for text in itertools.product("A-_9", ALPHABET, ALPHABET))
-        accepted = [text for text in texts if not refused(_decoded, text)]
+        accepted = [text for text in texts if not refused(decode_bytes, text)]
         assert len(accepted) == 4 * 64 * 16
     else:
         accepted = [
-            text for text in map("".join, itertools.product(ALPHABET, repeat=length)) if not refused(_decoded, text)
+            text for text in map("".join, itertools.product(ALPHABET, repeat=length)) if not refused(decode_bytes, text)
         ]
         assert len(accepted) == {1: 0, 2: 256}[length]
-    assert all(encode_bytes(_decoded(text)) == text for text in accepted)
+    assert all(encode_bytes(decode_bytes(text)) == text for text in accepted)
 
 
 @given(st.text(max_size=12) | st.text(ALPHABET + "+/= \n\u00e9", max_size=12))
@@ -73,14 +73,14 @@ def test_of_all_short_texts_exactly_the_canonical_ones_decode(length: int) -> No
 @example("+/++")
 @example("\u0661\u0662\u0663\u0664")  # Digits, but not of ASCII.
 def test_a_text_that_decodes_is_the_only_one_for_its_bytes(text: str) -> None:
-    if not refused(_decoded, text):
-        assert encode_bytes(_decoded(text)) == text
+    if not refused(decode_bytes, text):
+        assert encode_bytes(decode_bytes(text)) == text
         assert set(text) <= set(ALPHABET)
 
 
 @pytest.mark.parametrize("value", [None, 1, True, b"QQ", ["QQ"], {"QQ": 1}, 1.5])
 def test_what_is_no_text_is_no_base64url(value: object) -> None:
-    assert refused(_decoded, value)
+    assert refused(decode_bytes, value)
 
 
 @given(octets(1, 40))

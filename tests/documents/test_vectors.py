@@ -19,7 +19,7 @@ from cryptography.hazmat.primitives.kdf.hkdf import HKDF
 from pydantic_core import PydanticCustomError
 
 from shares.documents.base import canonical
-from shares.documents.members import _decoded, encode_bytes
+from shares.documents.members import decode_bytes, encode_bytes
 from shares.errors import DocumentError
 
 VECTORS = Path(__file__).parents[1] / "vectors"
@@ -40,9 +40,9 @@ def test_base64url_without_padding(plain: str, encoded: str) -> None:
     text = encoded.rstrip("=")
     assert encode_bytes(plain.encode()) == text
     if text:
-        assert _decoded(text) == plain.encode()
+        assert decode_bytes(text) == plain.encode()
         with pytest.raises(PydanticCustomError):
-            _decoded(text + "=")
+            decode_bytes(text + "=")
 
 
 @pytest.mark.parametrize(("plain", "encoded"), pairs("BASE32"))
