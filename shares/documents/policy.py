@@ -2,7 +2,7 @@
 
 Source: TOML 1.0.0; FORMAT.md, sec. 12; NIST SP 800-57 Part 1 rev. 5 (signature keys are not backed up or archived as
 a rule, so splitting one needs a reason).
-May import: shares.errors, shares.field, shares.sharing.rule, shares.documents.base, .intervals, .members.
+May import: shares.errors, shares.field, shares.sharing.rule, shares.documents.base, .intervals, .members, .rates.
 Secret: nothing. Public: nothing either: a policy is confidential, as it tells whom to coerce. Errors name keys and
 custodians, never a person, a site or any other value.
 Does not: judge whether a policy is wise (``planning`` does), touch files, or look at the party cards it names.
@@ -26,6 +26,7 @@ from pydantic_core import PydanticCustomError
 from shares.documents.base import MAX_FILE, Document
 from shares.documents.intervals import Duration, Interval
 from shares.documents.members import Byte, Text, check_name
+from shares.documents.rates import CommonRates, Portion, Rate, Rates
 from shares.errors import DocumentError, ParameterError
 from shares.field.gf256 import Field
 from shares.field.polynomial import Polynomial
@@ -85,6 +86,8 @@ class PolicyCustodian(Document):
         channel: the way by which it travels.
         card: the path of the custodian's party card, relative to the policy's folder.
         weight: the number of leaves that the custodian gets wherever the policy names them.
+        medium: on what the share is kept: paper, a stick, a card, or another kind.
+        loss, leak, departure, absent: as in ``Rates``, for this custodian alone.
     """
 
     name: Annotated[str, AfterValidator(_custodian_name)]
@@ -95,6 +98,11 @@ class PolicyCustodian(Document):
     channel: Text | None = None
     card: Annotated[Text, AfterValidator(_relative)] | None = None
     weight: Byte = 1
+    medium: Text | None = None
+    loss: Rate | None = None
+    leak: Rate | None = None
+    departure: Rate | None = None
+    absent: Portion | None = None
 
 
 class PolicyNode(Document):
@@ -131,6 +139,10 @@ class Policy(Document):
     custodians: Annotated[tuple[PolicyCustodian, ...], Member(alias="custodian", min_length=1, max_length=MAX_POINTS)]
     groups: Annotated[dict[str, PolicyNode], Member(alias="group")] = Member(default_factory=dict)
     root: Annotated[PolicyNode, Member(alias="rule")]
+    rates: Rates = Member(default_factory=Rates)
+    sites: Annotated[tuple[CommonRates, ...], Member(alias="site")] = ()
+    lines: Annotated[tuple[CommonRates, ...], Member(alias="line")] = ()
+    media: Annotated[tuple[CommonRates, ...], Member(alias="medium")] = ()
     _text: bytes = PrivateAttr(default=b"")
     _rule: Rule = PrivateAttr()
 
@@ -215,6 +227,7 @@ class Policy(Document):
         for i, custodian in enumerate(self.custodians):
             if custodian.name not in reached:
                 yield f"{_custodian(custodian.name, i)} is not used by the rule and would hold no share"
+        yield from self._rates_of_nobody()
 
     def _names_twice(self) -> Iterator[str]:
         places: dict[str, str] = {}
@@ -231,6 +244,19 @@ class Policy(Document):
             first = places.setdefault(name.casefold(), path)
             if first != path:
                 yield f"{path} has the same name as {first} (upper and lower case do not differ)"
+
+    def _rates_of_nobody(self) -> Iterator[str]:
+        labels = (("site", "site", self.sites), ("line", "reports_to", self.lines), ("medium", "medium", self.media))
+        for key, label, tables in labels:
+            known = {folded(getattr(custodian, label) or "") for custodian in self.custodians}
+            places: dict[str, str] = {}
+            for i, table in enumerate(tables):
+                path = f"{key}[{i}].name"
+                if folded(table.name) not in known:
+                    yield f"{path} is what no custodian has as {label}"
+                first = places.setdefault(folded(table.name), path)
+                if first != path:
+                    yield f"{path} is the same as {first} (case, width and spacing do not count)"
 
 
 def _names_unknown(path: str, node: PolicyNode, known: dict[str, None]) -> Iterator[str]:

@@ -1,6 +1,6 @@
 """Examine a policy before anything is split: how its rule counts, who makes a quorum, and what is amiss.
 
-The odds of a loss will be a module beside ``structure``, on the same policy.
+The odds of a loss are worked out by ``odds``, on the same policy.
 
 Source: PCI PIN Security Requirements 3.1, 21-2 (count in people as well as in shares); G. R. Blakley 1979 (from memory:
 losing a share and giving it away are two budgets, so both the smallest quorum and the smallest blocking set count).

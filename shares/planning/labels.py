@@ -1,4 +1,4 @@
-"""By what the custodians of a policy are counted together: person, site, reporting line, and the way of delivery.
+"""By what the custodians of a policy are counted together: person, site, reporting line, medium, and way of delivery.
 
 Two spellings that differ in case, width or spacing are one label, shown as it is first written.
 
@@ -52,6 +52,13 @@ def carriers(policy: Policy) -> dict[str, str]:
     """Return who brings each share to its custodian, where that is stated."""
     return _spelled_alike(
         (custodian.name, custodian.carrier) for custodian in policy.custodians if custodian.carrier is not None
+    )
+
+
+def media(policy: Policy) -> dict[str, str]:
+    """Return on what each share is kept, where that is stated."""
+    return _spelled_alike(
+        (custodian.name, custodian.medium) for custodian in policy.custodians if custodian.medium is not None
     )
 
 

@@ -1,0 +1,144 @@
+"""The odds of a policy: that its key is lost, that it is exposed, and that no quorum comes together on a day.
+
+* *Loss*: within the years looked at there is a moment at which no quorum of shares is left. Attestations and repairs
+  are those of ``renewal``; a refresh is not counted as a repair.
+* *Exposure*: someone comes to know a quorum of shares of one epoch. A refresh begins an epoch and makes what leaked
+  before worthless; a repair does not. Leaks are not found out.
+* *Absence*: on a day taken at random, those who can be reached within ``recover_within`` and have their shares make no
+  quorum. An absence of a mean of ``absent_for`` days goes on for exponentially long. With attestations it is the
+  average of the long run, without them that of the years looked at.
+
+All three are exact for the model, up to rounding (some 12 digits); ``odds`` returns None where that is too much work.
+They are as good as the rates, and no better: what links custodians and is in no cause is not in the odds.
+
+Source: Barlow, Proschan 1975; Cox 1962. Blakley 1979 (from memory: shares lost and shares given away are two budgets).
+May import: shares.errors, .events, .model, .renewal, .structure.
+Secret: nothing. Public: nothing either, as for the model.
+Does not: simulate, advise, or say what odds are good enough.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+from shares.errors import ParameterError
+from shares.planning.events import Events, leaked, lost, missing
+from shares.planning.model import DAYS_OF_A_YEAR, Cause, Model
+from shares.planning.renewal import Upkeep, mean_days_unattended, portion_unattended
+from shares.planning.structure import dual
+
+MAX_YEARS = 1000
+
+
+@dataclass(frozen=True, slots=True)
+class Odds:
+    """Chances over a number of years, 0 to 1.
+
+    Attributes:
+        loss: that at some time no quorum is left.
+        exposure: that a quorum of shares of one epoch is known to someone who must not know it.
+        absence: that on a day no quorum can be brought together.
+        years_to_loss: the mean time until no quorum is left; infinite where that cannot happen.
+    """
+
+    loss: float
+    exposure: float
+    absence: float
+    years_to_loss: float
+
+
+@dataclass(frozen=True, slots=True)
+class Contribution:
+    """By how much each of the odds falls when one cause is taken away, and all else stays.
+
+    The parts do not add up to the whole: what takes two causes goes away with either.
+
+    Attributes:
+        kind: "share" for all shares' own losses, "person" for all people; "site", "line" or "medium".
+        name: the site, manager or medium; empty for shares and people.
+        loss, exposure, absence: differences of chances, 0 or more.
+    """
+
+    kind: str
+    name: str
+    loss: float
+    exposure: float
+    absence: float
+
+
+def odds(model: Model, years: float) -> Odds | None:
+    """Work out the odds of a policy over some years.
+
+    Args:
+        model: as ``model_of`` returns it.
+        years: of 365 days, at least a day and at most 1,000 years; rounded to days.
+
+    Returns:
+        None where the rule or the causes are too entangled for an exact answer: then simulate.
+
+    Raises:
+        ParameterError: a span of years that is out of range.
+    """
+    days = days_of(years)
+    away, leaks = _missing(model), Events.of(model.rule, [(one.members, leaked(one)) for one in model.causes])
+    losses = Events.of(dual(model.rule), [(one.members, lost(one)) for one in model.causes])
+    if away is None or leaks is None or losses is None:
+        return None
+    exposure = _exposed(leaks, model.refresh_every, days)
+    if model.attest_every is None:
+        mean = mean_days_unattended(losses.daily, losses.within)
+        return Odds(losses.within(days), exposure, portion_unattended(away.within, days), mean / DAYS_OF_A_YEAR)
+    upkeep = Upkeep(model.attest_every, model.repair_after, losses.daily, losses.within)
+    return Odds(upkeep.within(days), exposure, upkeep.portion(away.within), upkeep.mean_days() / DAYS_OF_A_YEAR)
+
+
+def contributions(model: Model, years: float) -> tuple[Contribution, ...] | None:
+    """Work out how much of the odds each cause makes: shares' own losses, people, each site, line and medium.
+
+    Args and Raises are those of ``odds``.
+
+    Returns:
+        One for every cause that is not without effect, in the order of the model; None as for ``odds``.
+    """
+    whole = odds(model, years)
+    found = []
+    for kind, name in dict.fromkeys(_named(cause) for cause in model.causes):
+        less = odds(replace(model, causes=tuple(one for one in model.causes if _named(one) != (kind, name))), years)
+        if whole is None or less is None:
+            return None
+        parts = [getattr(whole, of) - getattr(less, of) for of in ("loss", "exposure", "absence")]
+        if any(part > 0 for part in parts):
+            found.append(Contribution(kind, name, *(max(0.0, part) for part in parts)))
+    return tuple(found)
+
+
+def days_of(years: float) -> int:
+    """Return a span of years in days.
+
+    Raises:
+        ParameterError: it is shorter than a day, longer than 1,000 years, or no number.
+    """
+    if not 1 / DAYS_OF_A_YEAR <= years <= MAX_YEARS:
+        raise ParameterError(
+            f"odds are over at least one day and at most {MAX_YEARS:,} years",
+            where="years",
+            hint="10 is common: as long as the key is to be kept",
+        )
+    return max(1, round(years * DAYS_OF_A_YEAR))
+
+
+def _named(cause: Cause) -> tuple[str, str]:
+    return cause.kind, "" if cause.kind in ("share", "person") else cause.name
+
+
+def _missing(model: Model) -> Events | None:
+    return Events.of(dual(model.rule), [(one.members, missing(one, model.patience)) for one in model.causes])
+
+
+def _exposed(leaks: Events, every: int | None, days: int) -> float:
+    epochs, rest = (0, days) if every is None else divmod(days, every)
+    whole, partly = leaks.within(every) if every and epochs else 0.0, leaks.within(rest)
+    if 1.0 in (whole, partly):
+        return 1.0
+    return -math.expm1(epochs * math.log1p(-whole) + math.log1p(-partly))

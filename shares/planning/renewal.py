@@ -1,0 +1,129 @@
+"""A life of attestations and repairs, as a process that begins anew again and again.
+
+The story told. On day 0 every share is in place. An attestation every A days finds what was lost since. Where nothing
+was, the set is as new. Where something was and a quorum is left, everything is made good D days later: whoever has lost
+a share meanwhile says so when the repair begins and is served as well, so the set is as new again, and the next
+attestation comes A days after. Where too few are left, at any time, the key is gone for good, and the story ends.
+
+So a life is a row of independent *rounds*: A days with no loss at all; or A + D days with a loss, mended; or a round in
+which the end comes. What is wanted of the whole life follows from one function, the chance u(t) that t days after a
+dealing, with nothing mended, no quorum is left. Whether A is longer than D does not matter.
+
+Source: D. R. Cox, "Renewal Theory", 1962 (renewal equation, and long-run averages by the round); Barlow, Proschan 1975
+(inspection and repair of k-out-of-n systems).
+May import: .curve.
+Secret: nothing. Public: nothing either, as for the model.
+Does not: know what u is made of, or that a repair took several tries.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TypeAlias
+
+from shares.planning.curve import Curve
+
+OverTime: TypeAlias = Callable[[float], float]
+"""A chance, 0 to 1, as a function of the days since a dealing."""
+
+_NEGLIGIBLE = 1e-14
+"""What one minus a chance is not exact beyond."""
+
+
+@dataclass(frozen=True, slots=True)
+class Upkeep:
+    """Attestations, and repairs of what they find.
+
+    Attributes:
+        every: days between attestations, 1 or more; the text above calls it A.
+        delay: days from an attestation to the repair, 0 or more; D above.
+        losses: events a day that lose any share at all.
+        gone: the chance that so many days after a dealing no quorum is left, nothing being mended; u above.
+    """
+
+    every: int
+    delay: int
+    losses: float
+    gone: OverTime
+
+    @property
+    def _quiet(self) -> float:
+        """The chance of a round with no loss."""
+        return math.exp(-self.losses * self.every)
+
+    @property
+    def _ending(self) -> float:
+        """The chance that a round is the last: no quorum is left at its end, and it is no quiet one."""
+        return self.gone(self.every + self.delay) - self._quiet * self.gone(self.delay)
+
+    def within(self, days: int) -> float:
+        """Return the chance that the key is gone within so many days, 1 or more.
+
+        >>> halving = Upkeep(every=1, delay=0, losses=math.log(2), gone=lambda days: 1 - 0.5**days)
+        >>> halving.within(3)
+        0.875
+        """
+        if days <= self.every:
+            return self.gone(days)
+        whole, quiet, ending = self.every + self.delay, self._quiet, self._ending
+        mended = max(0.0, -math.expm1(-self.losses * self.every) - ending)
+        curve = Curve.of(self.gone, min(whole, days))
+        # begun[day]: the chance that a round begins on this day.
+        begun, lost = [1.0] + [0.0] * days, 0.0
+        for day in range(days):
+            if chance := begun[day]:
+                left = days - day
+                if left > self.every:
+                    begun[day + self.every] += chance * quiet
+                if left >= whole:
+                    lost += chance * ending
+                    begun[day + whole] += chance * mended
+                elif left > self.every:
+                    lost += chance * (curve.at(left) - quiet * curve.at(left - self.every))
+                else:
+                    lost += chance * curve.at(left)
+        return min(lost, 1.0)
+
+    def mean_days(self) -> float:
+        """Return the mean number of days until the key is gone; infinite where that cannot happen."""
+        ending = self._ending
+        if ending <= 0:
+            return math.inf
+        left = Curve.of(lambda days: 1 - self.gone(days), self.every + self.delay, scale=1.0)
+        return (left.integral(self.every + self.delay) - self._quiet * left.integral(self.delay)) / ending
+
+    def portion(self, away: OverTime) -> float:
+        """Return the part of days, in the long run, on which something is the case.
+
+        Args:
+            away: the chance that it is, so many days after a dealing.
+        """
+        whole = self.every + self.delay
+        curve = Curve.of(away, whole)
+        days = self.every - math.expm1(-self.losses * self.every) * self.delay
+        return (curve.integral(whole) - self._quiet * curve.integral(self.delay)) / days
+
+
+def mean_days_unattended(losses: float, gone: OverTime) -> float:
+    """Return the mean number of days until the key is gone where nobody asks; infinite where that cannot happen.
+
+    Args:
+        losses: events a day that lose any share at all.
+        gone: the chance that the key is gone after so many days; it takes infinity.
+    """
+    if gone(math.inf) == 0:
+        return math.inf
+    # It is as likely as not that the key outlasts the first events by far: so each span is twice the one before.
+    start, end, total = 0.0, 1 / losses, 0.0
+    while True:
+        total += Curve.of(lambda days: 1 - gone(days), end, start=start, scale=1.0).integral(end)
+        if 1 - gone(end) < _NEGLIGIBLE:
+            return total
+        start, end = end, 2 * end
+
+
+def portion_unattended(away: OverTime, days: int) -> float:
+    """Return the part of the next days, 1 or more, on which something is the case where nobody asks."""
+    return Curve.of(away, days).integral(days) / days

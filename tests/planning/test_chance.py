@@ -1,0 +1,109 @@
+"""Chances that those who are hit satisfy a rule: published tails, and every set of hits tried one by one.
+
+Checked against: binomial and Poisson-binomial tails as exact fractions (vectors/reliability_k_of_n.json, which agree
+with scipy 1.17.1); the availability table of the planning page, to its digits; sums over all sets of events, in exact
+fractions, with the rule followed by hand.
+"""
+
+from __future__ import annotations
+
+import itertools
+import json
+import math
+from fractions import Fraction
+from pathlib import Path
+from typing import Any
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from strategies import HARBOUR, rules
+
+from shares.planning.chance import Chance
+from shares.planning.structure import dual
+from shares.sharing.rule import Rule
+
+VECTORS = json.loads((Path(__file__).parents[1] / "vectors" / "reliability_k_of_n.json").read_text())
+CLOSE = 1e-12
+
+
+def of(rule: Rule, *shared: frozenset[str]) -> Chance:
+    chance = Chance.of(rule, shared)
+    assert chance is not None
+    return chance
+
+
+def flat(need: int, chances: list[float]) -> tuple[Rule, dict[str, float]]:
+    alone = {f"pier {i}": chance for i, chance in enumerate(chances)}
+    return Rule(need, tuple(alone)), alone
+
+
+def blocked(need: int, away: list[float]) -> float:
+    """The chance that no quorum is left."""
+    rule, alone = flat(need, away)
+    return of(dual(rule)).at(alone)
+
+
+@pytest.mark.parametrize("case", VECTORS["binomial"], ids=lambda case: f"{case['k']} of {case['n']} at {case['p']}")
+def test_equal_chances_make_binomial_tails(case: dict[str, Any]) -> None:
+    present = Fraction(case["p"])
+    rule, alone = flat(case["k"], [float(present)] * case["n"])
+    assert math.isclose(of(rule).at(alone), case["available"], rel_tol=CLOSE)
+    assert math.isclose(blocked(case["k"], [float(1 - present)] * case["n"]), case["unavailable"], rel_tol=CLOSE)
+
+
+@pytest.mark.parametrize("case", VECTORS["poisson_binomial"], ids=lambda case: f"{case['k']} of {case['p']}")
+def test_different_chances_make_poisson_binomial_tails(case: dict[str, Any]) -> None:
+    present = [Fraction(p) for p in case["p"]]
+    rule, alone = flat(case["k"], list(map(float, present)))
+    assert math.isclose(of(rule).at(alone), case["available"], rel_tol=CLOSE)
+    assert math.isclose(blocked(case["k"], [float(1 - p) for p in present]), case["unavailable"], rel_tol=CLOSE)
+
+
+@pytest.mark.parametrize("case", VECTORS["smallest_n"], ids=lambda case: f"{case['k']} at {case['p']}")
+def test_the_smallest_total_that_meets_a_target(case: dict[str, Any]) -> None:
+    away, target = float(1 - Fraction(case["p"])), float(1 - Fraction(case["target"]))
+    found = next(n for n in itertools.count(case["k"]) if blocked(case["k"], [away] * n) <= target)
+    assert found == case["smallest_n"]
+
+
+@pytest.mark.parametrize(
+    ("away", "percent"),
+    [
+        (0.05, {(2, 3): "0.7", (3, 5): "0.1", (4, 7): "0.02", (5, 7): "0.4"}),
+        (0.10, {(2, 3): "2.8", (3, 5): "0.9", (4, 7): "0.3", (5, 7): "2.6"}),
+        (1 - 0.95**5, {(2, 3): "13.0", (3, 5): "8.0", (4, 7): "5.1", (5, 7): "19.6", (3, 6): "2.6"}),
+    ],
+)
+def test_the_availability_table(away: float, percent: dict[tuple[int, int], str]) -> None:
+    for (need, total), expected in percent.items():
+        digits = len(expected.partition(".")[2])
+        assert f"{100 * blocked(need, [away] * total):.{digits}f}" == expected
+
+
+def by_trying(
+    rule: Rule, shared: list[frozenset[str]], alone: dict[str, Fraction], together: list[Fraction]
+) -> Fraction:
+    """Go through every set of events that happen."""
+    events = [(frozenset({name}), chance) for name, chance in alone.items()] + list(zip(shared, together, strict=True))
+    total = Fraction(0)
+    for happen in itertools.product((False, True), repeat=len(events)):
+        hit = frozenset().union(*(who for (who, _), happens in zip(events, happen, strict=True) if happens))
+        if rule.satisfied_by(hit):
+            total += math.prod(p if happens else 1 - p for (_, p), happens in zip(events, happen, strict=True))
+    return total
+
+
+CHANCES = st.one_of(st.sampled_from([Fraction(0), Fraction(1), Fraction(1, 2), Fraction(1, 10**9)]), st.fractions(0, 1))
+
+
+@given(st.data())
+def test_shared_events_agree_with_trying_every_set_of_events(data: st.DataObject) -> None:
+    rule = data.draw(rules(most=6))
+    alone = {name: data.draw(CHANCES) for name in rule.paths()}
+    shared = data.draw(st.lists(st.frozensets(st.sampled_from(HARBOUR)), max_size=4))
+    together = [data.draw(CHANCES) for _ in shared]
+    expected = by_trying(rule, shared, alone, together)
+    found = of(rule, *shared).at({name: float(p) for name, p in alone.items()}, list(map(float, together)))
+    # Relative, not absolute: the smallest chances count as well.
+    assert math.isclose(found, expected, rel_tol=CLOSE)
