@@ -273,16 +273,25 @@ def policies(draw: st.DrawFn, *, most: int = 6, heaviest: int = 3) -> dict[str, 
     return {"label": "Tide archive", "custodian": custodians, "group": nodes, "rule": rule}
 
 
+LISTS = ("custodian", "site", "line", "medium")
+"""The keys of a policy that hold lists of tables."""
+
+
 def toml_of(data: dict[str, Any]) -> bytes:
     """Write policy data as TOML; the JSON forms of text, numbers, booleans and lists are TOML as well."""
 
+    def holds_tables(value: Any) -> bool:
+        return isinstance(value, dict) or (isinstance(value, list) and any(isinstance(one, dict) for one in value))
+
     def lines(table: dict[str, Any]) -> str:
-        plain = {key: value for key, value in table.items() if not isinstance(value, dict) and key != "custodian"}
+        plain = {key: value for key, value in table.items() if key != "custodian" and not holds_tables(value)}
         return "".join(f"{key} = {json.dumps(value, ensure_ascii=False)}\n" for key, value in plain.items())
 
     text = lines(data)
-    for custodian in data.get("custodian", []):
-        text += f"[[custodian]]\n{lines(custodian)}"
+    for key in LISTS:
+        text += "".join(f"[[{key}]]\n{lines(table)}" for table in data.get(key, []))
+    if "rates" in data:
+        text += f"[rates]\n{lines(data['rates'])}"
     for name, group in data.get("group", {}).items():
         text += f"[group.{json.dumps(name, ensure_ascii=False)}]\n{lines(group)}"
     return (text + f"[rule]\n{lines(data['rule'])}" if "rule" in data else text).encode()

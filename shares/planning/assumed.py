@@ -5,14 +5,18 @@ there is none, and the number is common practice or a guess that is said to be o
 
 Source: the 5 % of shares a year that planning arithmetic commonly takes as lost unnoticed; else
 ``reason`` says.
-May import: nothing of this package.
-Secret: nothing. Public: everything.
-Does not: know a policy; ``model`` takes from here what a policy leaves open.
+May import: shares.documents.policy, shares.documents.rates.
+Secret: nothing. Public: the numbers; which of them a policy needs is as confidential as the policy.
+Does not: put them in place; ``model`` does.
 """
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Set
 from typing import Final, Literal, NamedTuple, TypeAlias
+
+from shares.documents.policy import Policy, folded
+from shares.documents.rates import CommonRates
 
 Kind: TypeAlias = Literal["share", "person", "site", "line", "medium"]
 
@@ -32,12 +36,16 @@ class Assumed(NamedTuple):
     reason: str
 
 
-SHARE_LOSS: Final = 0.04
-"""One share mislaid, thrown away or unreadable. With departures it makes the 5 % a year of planning arithmetic."""
-
+SHARE: Final = Assumed(
+    0.04,
+    0.0,
+    0.0,
+    "4 % of shares a year are mislaid, thrown away or unreadable, and with departures 5 %, which planning commonly "
+    "counts on; on paper 3 %, on paper in a safe 2 %, on a stick 6 %, as it forgets without power, on a card 4 % "
+    "(guesses).",
+)
 SHARE_LOSS_ON: Final = {"paper": 0.03, "safe": 0.02, "stick": 0.06, "card": 0.04}
-"""The same by medium, where it is one of these: a sheet; a sheet in a locked safe; flash memory, which forgets without
-power; a chip card. Guesses around 4 %, in the order in which archivists trust these."""
+"""``SHARE.loss`` by medium, where it is one of these."""
 
 DEPARTURE: Final = 0.10
 HANDED_ON: Final = 0.90
@@ -55,17 +63,54 @@ SITE: Final = Assumed(
     0.002,
     0.002,
     0.005,
-    "Fire or flood, and a break-in that takes all, once in 500 years each (guesses); closed two days a year.",
+    "Fire or flood destroys all shares at a site, and a break-in takes all, once in 500 years each (guesses); a site "
+    "is closed two days a year.",
 )
 LINE: Final = Assumed(
     0.001,
     0.002,
     0.0,
-    "One order, or the end of a whole department, destroys or gathers all shares of a line once in 1,000 and 500 years "
-    "(guesses).",
+    "One order, or the end of a department, destroys all shares of a reporting line once in 1,000 years and gathers "
+    "all once in 500 (guesses).",
 )
-MEDIUM: Final = Assumed(0.0, 0.0, 0.0, "Sheets do not fail together.")
+MEDIUM: Final = Assumed(0.0, 0.0, 0.0, "Shares on paper do not fail together, nor on a medium not known here.")
 MEDIUM_OF_ONE_MAKE: Final = Assumed(
-    0.002, 0.0, 0.0, "Sticks and cards bought together fail together once in 500 years (a guess)."
+    0.002, 0.0, 0.0, "Sticks, and cards, are bought together and fail together once in 500 years (a guess)."
 )
-OF_ONE_MAKE: Final = frozenset({"stick", "card"})
+MEDIUM_FAILING: Final = {"stick": MEDIUM_OF_ONE_MAKE, "card": MEDIUM_OF_ONE_MAKE}
+"""What befalls all shares on one kind of medium, where it is one of these; ``MEDIUM`` is for the others."""
+
+INDEPENDENT: Final = (
+    "Custodians have nothing in common but persons, sites, reporting lines and media; all else befalls each of them "
+    "independently of the others."
+)
+
+
+def assumptions(policy: Policy) -> tuple[str, ...]:
+    """Return what the odds of a policy rest on beside what it states: one text for each kind of event that it leaves
+    open, wholly or partly. The independence of custodians comes first, and is always assumed.
+
+    Args:
+        policy: as ``Policy.parse`` returns it.
+    """
+    rates, custodians = policy.rates, policy.custodians
+    of_person = [
+        getattr(one, key) is None and getattr(rates, key) is None
+        for one in custodians
+        for key in ("leak", "departure", "absent")
+    ]
+    media = {folded(one.medium) for one in custodians if one.medium is not None}
+    open_: dict[str, bool] = {
+        SHARE.reason: any(one.loss is None and rates.loss is None for one in custodians),
+        PERSON.reason: any(of_person) or rates.handed_on is None or rates.absent_for is None,
+        SITE.reason: _left_open(policy.sites, {folded(one.site) for one in custodians}),
+        LINE.reason: _left_open(policy.lines, {folded(one.reports_to) for one in custodians}),
+        MEDIUM.reason: _left_open(policy.media, media - MEDIUM_FAILING.keys()),
+        MEDIUM_OF_ONE_MAKE.reason: _left_open(policy.media, media & MEDIUM_FAILING.keys()),
+    }
+    return (INDEPENDENT, *(reason for reason, is_open in open_.items() if is_open))
+
+
+def _left_open(tables: Iterable[CommonRates], names: Set[str]) -> bool:
+    stated = {folded(one.name) for one in tables if None not in (one.loss, one.leak, one.absent)}
+    return not names <= stated

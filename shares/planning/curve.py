@@ -96,7 +96,7 @@ def _pieces(
                 values[place] = function(middle + half * math.cos(math.pi * place))
         largest[0] = max(largest[0], *map(abs, values.values()))
         coefficients = _coefficients([values[place] for place in places])
-        if max(map(abs, coefficients[-3:])) <= TOLERANCE * largest[0] or (degree == _DEGREES[-1] and not halvings):
+        if max(map(abs, coefficients[-2:])) <= TOLERANCE * largest[0] or (degree == _DEGREES[-1] and not halvings):
             yield _Piece(start, end, coefficients, _integrated(coefficients, half))
             return
     yield from _pieces(function, start, middle, largest, halvings - 1)

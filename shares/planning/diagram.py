@@ -23,7 +23,7 @@ from shares.sharing.rule import Rule
 
 MAX_CUSTODIANS = 255
 """The diagram is made by a recursion as deep as there are custodians; so many share any one threshold."""
-MAX_STEPS = 200_000
+MAX_STEPS = 100_000
 """So many steps of composition are made before a rule is called too entangled; about a second."""
 
 _NO, _YES = 0, 1

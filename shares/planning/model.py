@@ -18,8 +18,9 @@ import math
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from datetime import timedelta
+from typing import Literal
 
-from shares.documents.policy import Policy, PolicyCustodian, folded
+from shares.documents.policy import Policy, folded
 from shares.documents.rates import CommonRates
 from shares.errors import ParameterError
 from shares.planning import assumed, labels
@@ -135,39 +136,33 @@ def _days(interval: timedelta | None) -> int | None:
 
 def _shares(policy: Policy) -> Iterator[Cause]:
     for custodian in policy.custodians:
-        usual = assumed.SHARE_LOSS_ON.get(folded(custodian.medium or ""), assumed.SHARE_LOSS)
+        usual = assumed.SHARE_LOSS_ON.get(folded(custodian.medium or ""), assumed.SHARE.loss)
         loss = _first(custodian.loss, policy.rates.loss, usual)
         yield Cause("share", custodian.name, frozenset({custodian.name}), loss=yearly(loss))
 
 
 def _persons(policy: Policy) -> Iterator[Cause]:
     kept = 1 - _first(policy.rates.handed_on, assumed.HANDED_ON)
-    custodians = {custodian.name: custodian for custodian in policy.custodians}
     for person, names in labels.holders(labels.people(policy)).items():
+        taken = kept * yearly(_highest(policy, names, "departure", assumed.DEPARTURE))
+        leak = yearly(_highest(policy, names, "leak", assumed.PERSON.leak))
+        absent = _highest(policy, names, "absent", assumed.PERSON.absent)
+        yield Cause("person", person, frozenset(names), taken, leak + taken, absent)
 
-        def highest(
-            own: Callable[[PolicyCustodian], float | None],
-            general: float | None,
-            usual: float,
-            names: set[str] = names,
-        ) -> float:
-            return max(_first(own(custodians[name]), general, usual) for name in names)
 
-        taken = kept * yearly(highest(lambda one: one.departure, policy.rates.departure, assumed.DEPARTURE))
-        leak = highest(lambda one: one.leak, policy.rates.leak, assumed.PERSON.leak)
-        absent = highest(lambda one: one.absent, policy.rates.absent, assumed.PERSON.absent)
-        yield Cause("person", person, frozenset(names), taken, yearly(leak) + taken, absent)
+def _highest(policy: Policy, names: set[str], key: Literal["departure", "leak", "absent"], usual: float) -> float:
+    general: float | None = getattr(policy.rates, key)
+    return max(_first(getattr(one, key), general, usual) for one in policy.custodians if one.name in names)
 
 
 def _common(policy: Policy) -> Iterator[Cause]:
-    media = dict.fromkeys(assumed.OF_ONE_MAKE, assumed.MEDIUM_OF_ONE_MAKE)
     yield from _all_of("site", labels.holders(labels.sites(policy)), policy.sites, lambda _: assumed.SITE)
     yield from _all_of("line", labels.commanded(policy), policy.lines, lambda _: assumed.LINE)
     yield from _all_of(
         "medium",
         labels.holders(labels.media(policy)),
         policy.media,
-        lambda medium: media.get(medium, assumed.MEDIUM),
+        lambda medium: assumed.MEDIUM_FAILING.get(medium, assumed.MEDIUM),
     )
 
 
@@ -177,15 +172,9 @@ def _all_of(
     stated = {folded(table.name): table for table in tables}
     for name, members in groups.items():
         given, else_ = stated.get(folded(name)), usual(folded(name))
-        loss, leak, absent = (
-            (else_.loss, else_.leak, else_.absent)
-            if given is None
-            else (
-                _first(given.loss, else_.loss),
-                _first(given.leak, else_.leak),
-                _first(given.absent, else_.absent),
-            )
-        )
+        loss = _first(given.loss if given else None, else_.loss)
+        leak = _first(given.leak if given else None, else_.leak)
+        absent = _first(given.absent if given else None, else_.absent)
         yield Cause(kind, name, frozenset(members), yearly(loss), yearly(leak), absent)
 
 

@@ -91,6 +91,30 @@ def test_what_is_left_out_is_as_the_format_says() -> None:
     )
 
 
+def test_rates_where_they_are_stated_and_where_not() -> None:
+    rates = policy_of().rates
+    assert rates.loss is rates.leak is rates.departure is rates.handed_on is rates.absent is rates.absent_for is None
+    assert rates.repair_after == timedelta(days=14)
+    first, *others = DATA["custodian"]
+    stated = policy_of(
+        rates={"loss": "4 %/y", "leak": "0.01/y", "handed_on": "90 %", "absent_for": "12h", "repair_after": "3d"},
+        custodian=[{**first, "medium": "Paper", "loss": "0 %/y", "departure": "12.5 %/y", "absent": "0.5 %"}, *others],
+        site=[{"name": SITE.upper(), "loss": "0.1 %/y"}],
+        line=[{"name": MANAGER, "leak": "0.2 %/y"}],
+        medium=[{"name": "paper", "absent": "1 %"}],
+    )
+    rates, first = stated.rates, stated.custodians[0]
+    assert (rates.loss, rates.leak, rates.handed_on, rates.departure) == (0.04, 0.01, 0.9, None)
+    assert (rates.absent_for, rates.repair_after) == (timedelta(hours=12), timedelta(days=3))
+    assert (first.medium, first.loss, first.leak, first.departure, first.absent) == ("Paper", 0.0, None, 0.125, 0.005)
+    assert (stated.sites[0].loss, stated.sites[0].leak, stated.lines[0].leak, stated.media[0].absent) == (
+        0.001,
+        None,
+        0.002,
+        0.01,
+    )
+
+
 def test_the_digest_is_over_the_bytes_as_given() -> None:
     text = b"# a note\r\n" + toml_of(DATA)
     policy = Policy.parse(text)
@@ -227,6 +251,47 @@ OPERATORS = ("group", "operators")
 FROM = (*OPERATORS, "from")
 
 REFUSED: dict[str, tuple[Bend, str]] = {
+    "a rate without a unit": (setting("custodian", 0, "loss", to="0.04"), "loss should be a rate with its unit, like "),
+    "a rate that is a number": (
+        setting("rates", to={"loss": 0.04}),
+        "rates.loss should be a rate with its unit, like ",
+    ),
+    "a rate of 100 %": (
+        setting("rates", to={"leak": "100 %/y"}),
+        "rates.leak should be below 100 %/y: it is the chance",
+    ),
+    "a rate below 0": (setting("rates", to={"leak": "-1 %/y"}), "rates.leak should be a rate with its unit, like "),
+    "absences above 100 %": (setting("rates", to={"absent": "101 %"}), "rates.absent should be at most 100 %"),
+    "absences by the year": (setting("rates", to={"absent": "10 %/y"}), "rates.absent should be a percentage, like "),
+    "no time for repairs": (
+        setting("rates", to={"repair_after": "0d"}),
+        "rates.repair_after should be a duration like ",
+    ),
+    "an unknown rate": (
+        setting("rates", to={"theft": "1 %/y"}),
+        "rates.theft is no key that a policy has at this place",
+    ),
+    "rates of nobody's site": (
+        setting("site", to=[{"name": SITE}, {"name": "canary elsewhere"}]),
+        "site[1].name is what no custodian has as site",
+    ),
+    "rates of nobody's manager": (
+        setting("line", to=[{"name": SITE}]),
+        "line[0].name is what no custodian has as reports_to",
+    ),
+    "rates of nobody's medium": (
+        setting("medium", to=[{"name": "canary paper"}]),
+        "medium[0].name is what no custodian has as medium",
+    ),
+    "rates of a site twice": (
+        setting("site", to=[{"name": SITE}, {"name": SITE.upper()}]),
+        "site[1].name is the same as site[0].name (case, width and spacing do not count)",
+    ),
+    "rates of no name": (setting("site", to=[{"loss": "1 %/y"}]), "site[0].name is missing"),
+    "a departure from a site": (
+        setting("site", to=[{"name": SITE, "departure": "1 %/y"}]),
+        "site[0].departure is no key that a policy has at this place",
+    ),
     "an unknown name": (setting(*FROM, 2, to="wharf"), "group.operators.from[2] names no custodian and no group"),
     "a misspelt name": (
         setting("rule", "from", 1, to="registar"),

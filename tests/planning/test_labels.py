@@ -58,3 +58,12 @@ def test_ways_of_delivery_where_they_are_stated() -> None:
     )
     assert labels.carriers(policy) == {"north-pier": "harbour boat", "south-pier": "harbour boat"}
     assert labels.channels(policy) == {"north-pier": "by hand", "registrar": "by hand"}
+
+
+def test_media_where_they_are_stated() -> None:
+    policy = policy_of(
+        {"name": "north-pier", "medium": "paper"},
+        {"name": "south-pier", "medium": "Paper"},
+        {"name": "registrar"},
+    )
+    assert labels.media(policy) == {"north-pier": "paper", "south-pier": "paper"}
