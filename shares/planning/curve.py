@@ -15,14 +15,15 @@ from __future__ import annotations
 
 import math
 from bisect import bisect_left
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from itertools import accumulate
 
 _DEGREES = (8, 16, 32)
 TOLERANCE = 1e-14
 """How large the last coefficients may be, relative to the largest value met so far."""
-_MOST_HALVINGS = 20
+_MOST_PIECES = 200
+"""More are not worth it: what is still not smooth then is noise, as with numbers too small to have all their digits."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,6 +34,10 @@ class _Piece:
     end: float
     coefficients: tuple[float, ...]
     integral: tuple[float, ...]
+
+    def settled(self, largest: float) -> bool:
+        """Say whether the last coefficients are no more than noise beside the largest value."""
+        return max(map(abs, self.coefficients[-2:])) <= TOLERANCE * largest
 
     def at(self, t: float, coefficients: Sequence[float]) -> float:
         """Clenshaw's recurrence."""
@@ -65,8 +70,16 @@ class Curve:
         >>> abs(curve.at(0.3) - math.exp(0.3)) < 1e-13, abs(curve.integral(1.0) - (math.e - 1)) < 1e-13
         (True, True)
         """
-        pieces = tuple(_pieces(function, start, end, [scale], _MOST_HALVINGS))
-        return cls(pieces, (0.0, *accumulate(piece.at(piece.end, piece.integral) for piece in pieces)))
+        pieces, ahead, largest = list[_Piece](), [(start, end)], scale
+        while ahead:
+            first, last = ahead.pop()
+            piece, values = _through(function, first, last, largest)
+            largest = max(largest, values)
+            if piece.settled(largest) or len(pieces) + len(ahead) >= _MOST_PIECES:
+                pieces.append(piece)
+            else:
+                ahead += [((first + last) / 2, last), (first, (first + last) / 2)]
+        return cls(tuple(pieces), (0.0, *accumulate(piece.at(piece.end, piece.integral) for piece in pieces)))
 
     def at(self, t: float) -> float:
         """Return the function's value."""
@@ -83,9 +96,8 @@ class Curve:
         return min(bisect_left(self._pieces, t, key=lambda piece: piece.end), len(self._pieces) - 1)
 
 
-def _pieces(
-    function: Callable[[float], float], start: float, end: float, largest: list[float], halvings: int
-) -> Iterator[_Piece]:
+def _through(function: Callable[[float], float], start: float, end: float, largest: float) -> tuple[_Piece, float]:
+    """Return the polynomial of the lowest degree tried that settles, or else of the highest, and the largest value."""
     values: dict[float, float] = {}
     middle, half = (start + end) / 2, (end - start) / 2
     for degree in _DEGREES:
@@ -94,13 +106,12 @@ def _pieces(
         for place in places:
             if place not in values:
                 values[place] = function(middle + half * math.cos(math.pi * place))
-        largest[0] = max(largest[0], *map(abs, values.values()))
+        largest = max(largest, *map(abs, values.values()))
         coefficients = _coefficients([values[place] for place in places])
-        if max(map(abs, coefficients[-2:])) <= TOLERANCE * largest[0] or (degree == _DEGREES[-1] and not halvings):
-            yield _Piece(start, end, coefficients, _integrated(coefficients, half))
-            return
-    yield from _pieces(function, start, middle, largest, halvings - 1)
-    yield from _pieces(function, middle, end, largest, halvings - 1)
+        piece = _Piece(start, end, coefficients, _integrated(coefficients, half))
+        if piece.settled(largest):
+            break
+    return piece, largest
 
 
 def _coefficients(values: Sequence[float]) -> tuple[float, ...]:

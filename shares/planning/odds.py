@@ -12,7 +12,7 @@ All three are exact for the model, up to rounding (some 12 digits); ``odds`` ret
 They are as good as the rates, and no better: what links custodians and is in no cause is not in the odds.
 
 Source: Barlow, Proschan 1975; Cox 1962. Blakley 1979 (from memory: shares lost and shares given away are two budgets).
-May import: shares.errors, .events, .model, .renewal, .structure.
+May import: shares.errors, shares.sharing.rule, .events, .model, .renewal, .structure.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: simulate, advise, or say what odds are good enough.
 """
@@ -20,13 +20,15 @@ Does not: simulate, advise, or say what odds are good enough.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 from shares.errors import ParameterError
-from shares.planning.events import Events, leaked, lost, missing
+from shares.planning.events import Events, Force, leaked, lost, missing
 from shares.planning.model import DAYS_OF_A_YEAR, Cause, Model
 from shares.planning.renewal import Upkeep, mean_days_unattended, portion_unattended
 from shares.planning.structure import dual
+from shares.sharing.rule import Rule
 
 MAX_YEARS = 1000
 
@@ -52,7 +54,8 @@ class Odds:
 class Contribution:
     """By how much each of the odds falls when one cause is taken away, and all else stays.
 
-    The parts do not add up to the whole: what takes two causes goes away with either.
+    The parts do not add up to the whole: what takes two causes goes away with either. A cause that does no harm alone
+    may even help by a hair where repairs take time (see ``renewal``): its part is 0 then.
 
     Attributes:
         kind: "share" for all shares' own losses, "person" for all people; "site", "line" or "medium".
@@ -81,9 +84,11 @@ def odds(model: Model, years: float) -> Odds | None:
         ParameterError: a span of years that is out of range.
     """
     days = days_of(years)
-    away, leaks = _missing(model), Events.of(model.rule, [(one.members, leaked(one)) for one in model.causes])
-    losses = Events.of(dual(model.rule), [(one.members, lost(one)) for one in model.causes])
-    if away is None or leaks is None or losses is None:
+    if (losses := _events(dual(model.rule), model, lost)) is None:
+        return None
+    if (leaks := _events(model.rule, model, leaked)) is None:
+        return None
+    if (away := _events(dual(model.rule), model, lambda cause: missing(cause, model.patience))) is None:
         return None
     exposure = _exposed(leaks, model.refresh_every, days)
     if model.attest_every is None:
@@ -102,10 +107,12 @@ def contributions(model: Model, years: float) -> tuple[Contribution, ...] | None
         One for every cause that is not without effect, in the order of the model; None as for ``odds``.
     """
     whole = odds(model, years)
+    if whole is None:
+        return None
     found = []
     for kind, name in dict.fromkeys(_named(cause) for cause in model.causes):
         less = odds(replace(model, causes=tuple(one for one in model.causes if _named(one) != (kind, name))), years)
-        if whole is None or less is None:
+        if less is None:
             return None
         parts = [getattr(whole, of) - getattr(less, of) for of in ("loss", "exposure", "absence")]
         if any(part > 0 for part in parts):
@@ -132,8 +139,8 @@ def _named(cause: Cause) -> tuple[str, str]:
     return cause.kind, "" if cause.kind in ("share", "person") else cause.name
 
 
-def _missing(model: Model) -> Events | None:
-    return Events.of(dual(model.rule), [(one.members, missing(one, model.patience)) for one in model.causes])
+def _events(rule: Rule, model: Model, force: Callable[[Cause], Force]) -> Events | None:
+    return Events.of(rule, [(cause.members, force(cause)) for cause in model.causes])
 
 
 def _exposed(leaks: Events, every: int | None, days: int) -> float:

@@ -112,7 +112,8 @@ class Upkeep:
 
 
 def mean_days_unattended(losses: float, gone: OverTime) -> float:
-    """Return the mean number of days until the key is gone where nobody asks; infinite where that cannot happen.
+    """Return the mean number of days until the key is gone where nobody asks; infinite where that cannot
+    happen, or takes longer than can be told.
 
     Args:
         losses: events a day that lose any share at all.
@@ -122,11 +123,12 @@ def mean_days_unattended(losses: float, gone: OverTime) -> float:
         return math.inf
     # It is as likely as not that the key outlasts the first events by far: so each span is twice the one before.
     start, end, total = 0.0, 1 / losses, 0.0
-    while True:
+    while end < math.inf:
         total += Curve.of(lambda days: 1 - gone(days), end, start=start, scale=1.0).integral(end)
         if 1 - gone(end) < _NEGLIGIBLE:
             return total
         start, end = end, 2 * end
+    return math.inf
 
 
 def portion_unattended(away: OverTime, days: int) -> float:

@@ -61,3 +61,14 @@ def test_noise_below_the_scale_is_not_followed() -> None:
 
     Curve.of(function, 1.0, scale=1.0)
     assert len(asked) == 9
+
+
+def test_what_is_not_smooth_comes_to_an_end() -> None:
+    asked = list[float]()
+
+    def function(t: float) -> float:
+        asked.append(t)
+        return 5e-324 * (len(asked) % 3)
+
+    Curve.of(function, 1.0)
+    assert len(asked) < 20_000
