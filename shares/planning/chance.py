@@ -125,23 +125,28 @@ class Chance:
 
 def _order(rule: Rule, shared: Sequence[frozenset[str]]) -> list[str]:
     """Return the custodians in an order that keeps those of a group together, and few events in mind at once."""
-    return list(dict.fromkeys(_asked(rule, shared, set())))
+    left = [set(event) for event in shared]
+    return list(dict.fromkeys(_asked(rule, shared, left)))
 
 
-def _asked(node: Rule, shared: Sequence[frozenset[str]], before: set[str]) -> Iterator[str]:
-    """Yield a node's custodians, always going on with the child that leaves the fewest events in mind after it."""
-    left = dict.fromkeys(node.children)
-    below = {child: set(child.paths()) if isinstance(child, Rule) else {child} for child in left}
+def _asked(node: Rule, shared: Sequence[frozenset[str]], left: Sequence[set[str]]) -> Iterator[str]:
+    """Yield a node's custodians, always going on with the child that leaves the fewest events in mind after it.
+
+    Args:
+        left: whom each event hits that has not been asked yet; kept up to date.
+    """
+    below = {child: set(child.paths()) if isinstance(child, Rule) else {child} for child in node.children}
 
     def kept_after(child: Rule | str) -> int:
-        after = before | below[child]
-        return sum(bool(event & after) and not event <= after for event in shared)
+        after = [len(event - below[child]) for event in left]
+        return sum(0 < still < len(event) for still, event in zip(after, shared, strict=True))
 
-    while left:
-        child = min(left, key=kept_after) if shared else next(iter(left))
-        del left[child]
+    while below:
+        child = min(below, key=kept_after) if shared else next(iter(below))
         if isinstance(child, Rule):
-            yield from _asked(child, shared, before)
+            yield from _asked(child, shared, left)
         else:
-            before.add(child)
+            for event in left:
+                event.discard(child)
             yield child
+        del below[child]

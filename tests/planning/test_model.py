@@ -87,7 +87,7 @@ def test_who_is_hit_together() -> None:
         policy_of(
             {"name": "north-pier", "person": "One", "site": "Pier House", "leak": "3 %/y", "medium": "paper"},
             {"name": "south-pier", "person": "one", "site": "pier  house", "absent": "50 %", "medium": "Paper"},
-            {"name": "harbour-office", "person": "board"},
+            {"name": "harbour-office", "person": "board", "reports_to": "trust"},
         )
     )
     together = {(cause.kind, cause.name): cause for cause in model.causes if len(cause.members) > 1}
@@ -134,6 +134,11 @@ def test_assumptions_are_told_where_the_policy_leaves_something_open() -> None:
     }
     everything = policy_of({"name": "north-pier", "site": "quay"}, **stated)
     assert assumptions(everything) == (assumed.INDEPENDENT,)
+    partly = {**stated, "site": [{"name": "quay", "loss": "1 %/y"}]}
+    assert assumptions(policy_of({"name": "north-pier", "site": "quay"}, **partly)) == (
+        assumed.INDEPENDENT,
+        assumed.SITE.reason,
+    )
     for key in ("leak", "departure", "absent", "handed_on", "absent_for"):
         rates = {name: value for name, value in stated["rates"].items() if name != key}
         assert assumptions(policy_of({"name": "north-pier", "site": "quay"}, **{**stated, "rates": rates})) == (

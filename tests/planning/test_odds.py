@@ -69,6 +69,9 @@ def test_absence_is_of_a_day_taken_at_random() -> None:
     patient = replace(alike(3, 5, absent=0.1), recover_within=8, absent_for=7)
     assert math.isclose(of(patient).absence, tail(3, 5, 0.1 / math.e), rel_tol=1e-12)
     assert of(alike(3, 5, absent=1.0)).absence == 1.0
+    # Nobody asks: the share of days is the mean over the ten years.
+    unasked = yearly(0.05) * 10
+    assert math.isclose(of(alike(1, 1, loss=0.05)).absence, 1 + math.expm1(-unasked) / unasked, rel_tol=1e-11)
     # One custodian: lost at rate a, found after 100 days, made good after 20 more.
     one = replace(alike(1, 2, loss=0.0), attest_every=100, repair_after=20)
     rate = 0.001
