@@ -186,7 +186,7 @@ class Point:
         """
         octets = bytes(memoryview(octets))
         if len(octets) != SIZE or not sodium.crypto_core_ed25519_is_valid_point(octets):
-            raise VerificationError("it is no point of the group: not canonical, not on the curve, or of small order")
+            raise VerificationError("it is no point of the group of prime order, in its one encoding")
         return cls(octets)
 
     def encode(self) -> bytes:
