@@ -11,8 +11,13 @@ Shared strategies live in ``strategies.py`` beside this file; ``pythonpath`` in 
 
 from __future__ import annotations
 
+import json
 import os
 import signal
+from collections.abc import Callable
+from functools import cache
+from pathlib import Path
+from typing import Any
 
 import hypothesis
 import pytest
@@ -37,6 +42,13 @@ hypothesis.settings.load_profile(PROFILE)
 for number in (signal.SIGINT, signal.SIGHUP, signal.SIGQUIT):
     if signal.getsignal(number) is signal.SIG_IGN:
         signal.signal(number, lambda number, frame: None)
+
+
+@pytest.fixture(scope="session")
+def vectors() -> Callable[[str], Any]:
+    """Load a file of published values by its name in ``vectors/``."""
+    folder = Path(__file__).parent / "vectors"
+    return cache(lambda name: json.loads((folder / f"{name}.json").read_text("utf-8")))
 
 
 def pytest_configure(config: pytest.Config) -> None:

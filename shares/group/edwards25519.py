@@ -29,7 +29,7 @@ _IDENTITY: Final = (1).to_bytes(SIZE, "little")
 
 @final
 class Scalar:
-    """A number modulo the group's order, in the library's hands alone. It shows nothing; comparing is constant time.
+    """A number modulo the group's order, in the library's hands alone: it shows nothing, and compares in constant time.
 
     Public numbers are written as ``int``; ``+ - *`` between scalars and ``scalar * point`` read as in the papers.
 
@@ -57,6 +57,20 @@ class Scalar:
         return cls((number % ORDER).to_bytes(SIZE, "little"))
 
     @classmethod
+    def of_index(cls, x: int) -> Self:
+        """Return a custodian's index, 1 to ORDER - 1, as the place where a polynomial is evaluated.
+
+        Raises:
+            ParameterError: it is out of range. 0 and ORDER would be the secret's own place, and x and x + ORDER would
+                be one custodian.
+
+        Source: RFC 9591, sec. 4.2: identifiers are not zero, and different.
+        """
+        if not 0 < x < ORDER:
+            raise ParameterError("an index must be from 1 to the order of the group less 1")
+        return cls.of(x)
+
+    @classmethod
     def decode(cls, octets: bytes | memoryview) -> Self:
         """Return the scalar with this encoding: 32 bytes, little endian, below the order. One value, one encoding.
 
@@ -67,7 +81,7 @@ class Scalar:
         """
         # A reduced scalar is the one that reducing leaves as it is: no comparison of a secret with the order is needed.
         # public: whether an encoding is refused.
-        octets = bytes(octets)
+        octets = bytes(memoryview(octets))  # bytes(32) would be a zero.
         if len(octets) != SIZE or not hmac.compare_digest(_reduce(octets + bytes(SIZE)), octets):
             raise VerificationError("it is no number below the order of the group in its one encoding")
         return cls(octets)
@@ -110,9 +124,13 @@ class Scalar:
         return Scalar(sodium.crypto_core_ed25519_scalar_invert(self._octets))
 
     def __add__(self, other: Scalar) -> Scalar:
+        if not isinstance(other, Scalar):
+            return NotImplemented
         return Scalar(sodium.crypto_core_ed25519_scalar_add(self._octets, other._octets))
 
     def __sub__(self, other: Scalar) -> Scalar:
+        if not isinstance(other, Scalar):
+            return NotImplemented
         return Scalar(sodium.crypto_core_ed25519_scalar_sub(self._octets, other._octets))
 
     def __neg__(self) -> Scalar:
@@ -166,7 +184,7 @@ class Point:
         Source: RFC 9591, sec. 6.1, DeserializeElement: as RFC 8032, sec. 5.1.3, and the identity and every point
             outside the group of prime order are refused.
         """
-        octets = bytes(octets)
+        octets = bytes(memoryview(octets))
         if len(octets) != SIZE or not sodium.crypto_core_ed25519_is_valid_point(octets):
             raise VerificationError("it is no point of the group: not canonical, not on the curve, or of small order")
         return cls(octets)
@@ -176,9 +194,13 @@ class Point:
         return self._octets
 
     def __add__(self, other: Point) -> Point:
+        if not isinstance(other, Point):
+            return NotImplemented
         return _not_identity(sodium.crypto_core_ed25519_add(self._octets, other._octets))
 
     def __sub__(self, other: Point) -> Point:
+        if not isinstance(other, Point):
+            return NotImplemented
         return _not_identity(sodium.crypto_core_ed25519_sub(self._octets, other._octets))
 
     def __rmul__(self, scalar: Scalar) -> Point:

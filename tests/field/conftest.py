@@ -1,18 +1,14 @@
-"""What the tests of the field share: both kernels, the published vectors, a reference library."""
+"""What the tests of the field share: both kernels, a reference library."""
 
 from __future__ import annotations
 
-import json
 import os
 from functools import cache
-from pathlib import Path
 
 import pytest
 
 from shares.errors import KernelUnavailableError
 from shares.field import kernel
-
-VECTORS = Path(__file__).parents[1] / "vectors"
 
 
 @pytest.fixture(scope="session", params=["native", "portable"])
@@ -29,12 +25,6 @@ def implementation(request):
         if demanded == "native":
             raise
         pytest.skip("the native kernel is not built here")
-
-
-@pytest.fixture(scope="session")
-def vectors():
-    """Load a file of published values by name."""
-    return cache(lambda name: json.loads((VECTORS / f"{name}.json").read_text()))
 
 
 @pytest.fixture(scope="session")
