@@ -92,14 +92,18 @@ def whole(tbs: bytes, signature: bytes = bytes(_SIGNATURE_SIZE)) -> bytes:
     return bytes((0x30, 0x80 | len(octets))) + octets + content
 
 
-def read_certificate(data: bytes) -> x509.Certificate:
+def read_certificate(data: bytes, *, what: str = "a certificate") -> x509.Certificate:
     """Read a certificate, PEM or DER.
+
+    Args:
+        data: the file's bytes.
+        what: what they are, for a refusal.
 
     Raises:
         DocumentError: it is none, or more than one, or larger than 1 MiB.
     """
-    certificate = _read(data, "a certificate", x509.load_pem_x509_certificate, x509.load_der_x509_certificate)
-    with reading("a certificate"):
+    certificate = _read(data, what, x509.load_pem_x509_certificate, x509.load_der_x509_certificate)
+    with reading(what):
         certificate.subject, certificate.issuer, certificate.extensions, certificate.public_key()
     return certificate
 
@@ -125,14 +129,18 @@ def read_request(data: bytes) -> x509.CertificateSigningRequest:
     return request
 
 
-def read_list(data: bytes) -> x509.CertificateRevocationList:
+def read_list(data: bytes, *, what: str = "a revocation list") -> x509.CertificateRevocationList:
     """Read a revocation list, PEM or DER.
+
+    Args:
+        data: the file's bytes.
+        what: what they are, for a refusal.
 
     Raises:
         DocumentError: it is none, or more than one, or larger than 1 MiB.
     """
-    listed = _read(data, "a revocation list", x509.load_pem_x509_crl, x509.load_der_x509_crl)
-    with reading("a revocation list"):
+    listed = _read(data, what, x509.load_pem_x509_crl, x509.load_der_x509_crl)
+    with reading(what):
         listed.issuer, listed.extensions, [entry.extensions for entry in listed]
     return listed
 
@@ -143,8 +151,7 @@ def read_certificate_body(tbs: bytes) -> x509.Certificate:
     Raises:
         DocumentError: they are none.
     """
-    with reading("the body of a certificate"):
-        certificate = read_certificate(whole(tbs))
+    certificate = read_certificate(whole(tbs), what="the body of a certificate")
     serial = certificate.serial_number
     octets = serial.to_bytes(serial.bit_length() // 8 + 1, signed=True) if serial > 0 else b""
     head = _VERSION_3 + bytes((0x02, len(octets))) + octets + _ALGORITHM
@@ -162,7 +169,7 @@ def read_list_body(tbs: bytes) -> x509.CertificateRevocationList:
     Raises:
         DocumentError: they are none.
     """
-    listed = read_list(whole(tbs))
+    listed = read_list(whole(tbs), what="the body of a revocation list")
     if listed.tbs_certlist_bytes != tbs or not _content(tbs).startswith(_VERSION_2 + _ALGORITHM):
         raise DocumentError("it is not the body of a revocation list that this key can sign: version 2, Ed25519")
     return listed

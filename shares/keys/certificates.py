@@ -13,6 +13,7 @@ with it.
 
 from __future__ import annotations
 
+import ipaddress
 import re
 from datetime import datetime
 from typing import Final, Literal
@@ -35,11 +36,12 @@ Purpose = Literal["authority", "server", "client"]
 _USES: Final = {"server": ExtendedKeyUsageOID.SERVER_AUTH, "client": ExtendedKeyUsageOID.CLIENT_AUTH}
 _LEAST_RSA_BITS = 2048
 _CURVES = (ec.SECP256R1, ec.SECP384R1, ec.SECP521R1)
+_ADDRESSES = (ipaddress.IPv4Address, ipaddress.IPv6Address)  # Not a network, which the library would take as well.
 _MAX_NAMES = 100
 _LABEL = r"[A-Za-z0-9]([A-Za-z0-9-]{0,61}[A-Za-z0-9])?"
 _HOST = re.compile(rf"(?=.{{1,253}}\Z)(\*\.)?{_LABEL}(\.{_LABEL})*")
 _MAILBOX = re.compile(r"[!#-'*+\-/-9=?A-Z^-~.]{1,64}@[A-Za-z0-9.-]{1,253}")
-_ADDRESS = re.compile(r"[A-Za-z][A-Za-z0-9+.-]*:[!-~]{1,500}")
+_URI = re.compile(r"[A-Za-z][A-Za-z0-9+.-]*:[!-~]{1,500}")
 
 
 def root(
@@ -275,9 +277,9 @@ def _names(request: x509.CertificateSigningRequest) -> x509.SubjectAlternativeNa
     if not 1 <= len(list(names)) <= _MAX_NAMES:
         raise ParameterError(f"a request has 1 to {_MAX_NAMES} alternative names")
     for number, name in enumerate(names, 1):
-        kinds = ((x509.DNSName, _HOST), (x509.RFC822Name, _MAILBOX), (x509.UniformResourceIdentifier, _ADDRESS))
+        kinds = ((x509.DNSName, _HOST), (x509.RFC822Name, _MAILBOX), (x509.UniformResourceIdentifier, _URI))
         known = any(isinstance(name, kind) and form.fullmatch(name.value) for kind, form in kinds)
-        if not known and not isinstance(name, x509.IPAddress):
+        if not known and not (isinstance(name, x509.IPAddress) and isinstance(name.value, _ADDRESSES)):
             raise ParameterError(
                 f"alternative name {number} of the request is no host name, IP address, mail address or URI in plain"
                 " letters",
