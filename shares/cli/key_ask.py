@@ -80,9 +80,10 @@ def asking_options(*options: Callable[[Function], Function]) -> Callable[[Functi
 
     def added(function: Function) -> Function:
         @functools.wraps(function)
-        def packed(**given: Any) -> object:
-            fields = {name: given.pop(name) for name in Asked.__slots__ if name in given}
-            return function(**given, asked=Asked(**{"batches": (), **fields}))
+        def packed(**given: object) -> object:
+            fields: dict[str, Any] = {"batches": ()}
+            fields |= {name: given.pop(name) for name in Asked.__slots__ if name in given}
+            return function(**given, asked=Asked(**fields))
 
         made: Any = packed
         for option in (

@@ -16,7 +16,6 @@ import secrets
 from collections.abc import Mapping, Sequence
 from datetime import datetime
 from pathlib import Path
-from typing import Any
 
 from shares import clock
 from shares.documents.base import MAX_FILE
@@ -143,7 +142,7 @@ def check_signers(record: KeyRecord, signers: Sequence[str]) -> None:
         )
 
 
-def _signed(author: OpenPartyKey, due: datetime, **members: Any) -> Task:
+def _signed(author: OpenPartyKey, due: datetime, **members: object) -> Task:
     created = clock.now()
     if due <= created:
         raise ParameterError("the task is due in the past", hint="give those who are asked some days")
@@ -197,9 +196,7 @@ def asked(task: Task) -> TaskAsked:
     )
 
 
-def unused(
-    folder: KeyFolder, batches: Sequence[NonceBatch], signers: Sequence[str]
-) -> dict[str, NonceCommitments]:
+def unused(folder: KeyFolder, batches: Sequence[NonceBatch], signers: Sequence[str]) -> dict[str, NonceCommitments]:
     """Return for each signer the first pair of commitments that no task asked for here has named.
 
     Another party that asks for tasks may have named it: then the signer refuses, and nothing is lost but time.
