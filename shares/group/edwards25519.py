@@ -30,7 +30,7 @@ _IDENTITY: Final = (1).to_bytes(SIZE, "little")
 
 @final
 class Scalar:
-    """A number modulo the group's order, in the library's hands alone: it shows nothing, and compares in constant time.
+    """A number modulo the group's order, in the library's hands alone. It shows nothing; comparing is constant time.
 
     Public numbers are written as ``int``; ``+ - *`` between scalars and ``scalar * point`` read as in the papers.
 
@@ -187,7 +187,7 @@ class Point:
         """
         octets = bytes(memoryview(octets))
         if len(octets) != SIZE or not sodium.crypto_core_ed25519_is_valid_point(octets):
-            raise VerificationError("it is no point of the group: not canonical, not on the curve, or of small order")
+            raise VerificationError("it is no point of the group of prime order, in its one encoding")
         return cls(octets)
 
     def encode(self) -> bytes:

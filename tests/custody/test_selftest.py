@@ -28,6 +28,12 @@ def test_everything_passes_here() -> None:
     assert len(selftest()) >= 10
 
 
+def test_the_point_to_refuse_is_what_its_comment_says() -> None:
+    point = curve.add(curve.BASE, (0, curve.P - 1))
+    assert curve.order(point) == 2 * curve.L
+    assert curve.encode(point).hex() == module._MIXED_ORDER
+
+
 def broken(*_: object, **__: object) -> None:
     raise ParameterError("broken")
 
