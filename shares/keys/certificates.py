@@ -7,8 +7,7 @@ Source: RFC 5280, sec. 4 (certificates) and 6 (paths), RFC 2986 (requests), RFC 
 RFC 8410 (Ed25519), NIST SP 800-131A rev. 2, sec. 3 (sizes of RSA keys).
 May import: shares.errors, .certificate_parts, .public_key.
 Secret: nothing. Public: everything.
-Does not: sign. The library's builders want a key to sign with, so they get one that is thrown away, and its signature
-with it.
+Does not: sign.
 """
 
 from __future__ import annotations
@@ -21,7 +20,7 @@ from typing import Final, Literal
 from cryptography import x509
 from cryptography.hazmat.primitives.asymmetric import ec, rsa
 from cryptography.hazmat.primitives.asymmetric.ed448 import Ed448PublicKey
-from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey, Ed25519PublicKey
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 from cryptography.hazmat.primitives.asymmetric.types import CertificatePublicKeyTypes
 from cryptography.hazmat.primitives.serialization import Encoding
 from cryptography.x509.oid import ExtendedKeyUsageOID
@@ -67,7 +66,7 @@ def root(
     """
     name = parts.name_from_text(subject)
     builder = _begun(name, name, loaded(public_key), not_before, not_after)
-    body = _built(_with_authority(builder, path_length))
+    body = parts.certificate_body(_with_authority(builder, path_length))
     check(body, public_key)
     return body
 
@@ -127,7 +126,7 @@ def from_request(
         builder = builder.add_extension(x509.ExtendedKeyUsage([_USES[purpose]]), critical=False)
     if names is not None:
         builder = builder.add_extension(names, critical=not list(asked.subject))
-    body = _built(builder)
+    body = parts.certificate_body(builder)
     check(body, public_key, issuer)
     return body
 
@@ -250,10 +249,6 @@ def _with_authority(builder: x509.CertificateBuilder, path_length: int | None) -
 
 def _usage(*uses: str) -> x509.KeyUsage:
     return x509.KeyUsage(**{use: use in uses for use in parts.KEY_USES})
-
-
-def _built(builder: x509.CertificateBuilder) -> bytes:
-    return builder.sign(Ed25519PrivateKey.generate(), None).tbs_certificate_bytes
 
 
 def _strong(request: x509.CertificateSigningRequest) -> CertificatePublicKeyTypes:
