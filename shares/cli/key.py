@@ -7,7 +7,7 @@ from pathlib import Path
 
 import click
 
-from shares.cli import key_ask, key_make
+from shares.cli import key_ask, key_certify, key_make, key_use
 from shares.cli.keys import opening, signers, trust_option
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken
 from shares.cli.passphrases import passphrase_options
@@ -206,5 +206,15 @@ def _paths(source: Path, record_file: str | None) -> tuple[Path | None, Path]:
     return source, Path(record_file)
 
 
-for one in (key_make.deal_command, key_make.join_command, key_ask.sign_command):
+for one in (
+    key_make.deal_command,
+    key_make.join_command,
+    key_use.commit_command,
+    key_ask.sign_command,
+    key_certify.root_command,
+    key_certify.certify_command,
+    key_certify.revoke_command,
+    key_use.open_command,
+    key_use.finish_command,
+):
     command.add_command(one)

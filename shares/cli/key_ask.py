@@ -10,7 +10,7 @@ Does not: answer a task; ``shares task next`` does, on each custodian's machine.
 from __future__ import annotations
 
 import functools
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from datetime import timedelta
 from typing import Any, TypeVar
@@ -122,7 +122,8 @@ def ask_to_sign(
     *,
     form: Form,
     namespace: str | None = None,
-    words: tuple[str, ...] = (),
+    issuer: bytes | None = None,
+    words: Sequence[str] = (),
 ) -> None:
     """Ask for a signature as the options say, and print what was asked.
 
@@ -132,6 +133,7 @@ def ask_to_sign(
         asked: the options.
         form: what becomes of it.
         namespace: of an OpenSSH signature.
+        issuer: the certificate above the one that is asked for.
         words: about the content, for whoever asks.
     """
     check_signers(folder.record, asked.names)
@@ -152,11 +154,11 @@ def ask_to_sign(
             remark=asked.remark,
         )
         with held_signals():
-            ask(folder, task, asked.path, content, author)
+            ask(folder, task, asked.path, content, author, issuer=issuer)
             print_asked(task, asked.path, words, as_json=asked.as_json)
 
 
-def print_asked(task: Task, path: str, words: tuple[str, ...], *, as_json: bool, after: str = NEXT) -> None:
+def print_asked(task: Task, path: str, words: Sequence[str], *, as_json: bool, after: str = NEXT) -> None:
     """Print what was asked, and what comes next."""
     members = {
         "done": True,

@@ -32,6 +32,7 @@ from shares.storage import StrPath, read_file
 
 ASKED = "asked"
 """The folder, within a key's, of the tasks that were asked for."""
+TASK_SUFFIX, ISSUER_SUFFIX = ".json", ".issuer.pem"
 
 
 def new_joining(
@@ -149,7 +150,15 @@ def _signed(author: OpenPartyKey, due: datetime, **members: object) -> Task:
     return Task.signed_by(author, **members, nonce=secrets.token_bytes(32), created=created, due=due)
 
 
-def ask(folder: KeyFolder, task: Task, path: StrPath, content: bytes, author: OpenPartyKey) -> TaskFolder:
+def ask(
+    folder: KeyFolder,
+    task: Task,
+    path: StrPath,
+    content: bytes,
+    author: OpenPartyKey,
+    *,
+    issuer: bytes | None = None,
+) -> TaskFolder:
     """Make the folder of a task about a key, which is then carried to the custodians.
 
     The task is kept in the key's folder and entered into its journal first: a commitment that it names is known to be
@@ -161,14 +170,31 @@ def ask(folder: KeyFolder, task: Task, path: StrPath, content: bytes, author: Op
         path: a new folder.
         content: what is signed or opened.
         author: who signs the entry.
+        issuer: for a certificate or revocation list, the certificate above: kept until it is put together.
 
     Raises:
         StorageError: the folder holds a task already, or a medium refuses.
     """
     check_free(path)
-    kept = folder.add(f"{ASKED}/{task.digest().hex()[:32]}.json", task.to_file())
-    folder.append(asked(task), keys=(author,), documents=(kept,))
+    kept = [folder.add(_kept(task, TASK_SUFFIX), task.to_file())]
+    if issuer is not None:
+        kept.append(folder.add(_kept(task, ISSUER_SUFFIX), issuer))
+    folder.append(asked(task), keys=(author,), documents=kept)
     return TaskFolder.create(path, task, content=content, record=folder.record)
+
+
+def issuer_of(folder: KeyFolder, task: Task) -> bytes | None:
+    """Return the certificate above the one that a task asked for here is about; None where there is none.
+
+    Raises:
+        StorageError: it cannot be read.
+    """
+    path = folder.path / _kept(task, ISSUER_SUFFIX)
+    return read_file(path, limit=MAX_FILE) if os.path.lexists(path) else None
+
+
+def _kept(task: Task, suffix: str) -> str:
+    return f"{ASKED}/{task.digest().hex()[:32]}{suffix}"
 
 
 def check_free(path: StrPath) -> None:
@@ -244,7 +270,7 @@ def _tasks_asked(folder: KeyFolder) -> list[Task]:
     return [
         Task.parse(read_file(place / name, limit=MAX_FILE), where=os.fspath(place / name))
         for name in names
-        if name.endswith(".json") and not name.startswith(".")
+        if name.endswith(TASK_SUFFIX) and not name.startswith(".")
     ]
 
 
