@@ -1,4 +1,4 @@
-"""Parties of the demo harbour that draw a number together: a task for tests of the exchange, with something secret in it.
+"""Parties of the demo harbour that draw a number together: a task with something secret in it, for tests.
 
 Each party seals a random number for every other one, adds up what it has and was sent, and shows the digest of its sum;
 what comes of it is a file with all the digests. No purpose of the product is needed for that. Source: none.
