@@ -171,7 +171,7 @@ def print_asked(task: Task, path: str, words: Sequence[str], *, as_json: bool, a
     }
     lines = [
         *prose(f"Asked: {task.words()}."),
-        *(line for one in words for line in prose(one)),
+        *words,
         f"Fingerprint of the task, to read aloud: {task.fingerprint}",
         *prose(after.format(path=path)),
     ]

@@ -150,7 +150,7 @@ def revoke_command(
 
     \b
     Example:
-      shares key revoke release-key server.pem --issuer root.pem --reason key_compromise --task to-sign \\
+      shares key revoke release-key server.pem --issuer root.pem --reason keyCompromise --task to-sign \\
         --signer north-pier --signer light-house --sign harbour-office.key.json \\
         --passphrase-file harbour-office.passphrase
     """

@@ -49,7 +49,7 @@ OPEN_NEXT = (
     "`shares key finish` opens the message here, where the key that they seal for lies."
 )
 NOT_FOR_LONG = (
-    "X25519 does not withstand quantum computers: what must stay secret for ten years is not sent to such a key."
+    "Caution: X25519 does not withstand quantum computers: what must stay secret for ten years is not sent to such a key."
 )
 VERIFY = {
     "plain": "Next: verify it as others will, for instance with `openssl pkeyutl -verify -rawin`.",
@@ -156,7 +156,7 @@ def open_command(
         )
         with held_signals():
             begin_opening(key_folder, ask(key_folder, task, asked.path, data, author), author)
-            print_asked(task, asked.path, [NOT_FOR_LONG], as_json=asked.as_json, after=OPEN_NEXT)
+            print_asked(task, asked.path, prose(NOT_FOR_LONG), as_json=asked.as_json, after=OPEN_NEXT)
 
 
 @click.command("finish", cls=FeedsCommand, short_help="Put together what came of a task.")
