@@ -140,7 +140,7 @@ class OpeningPart:
             f"You help to open a message of {work.content.size:,} bytes, encrypted to the key {record.label}.",
             f"Its SHA-256 is {in_groups(work.content.digest)}; its encapsulated key is {in_groups(work.encapsulated)}.",
             self._receiver_words(),
-            f"{task.author.name} ({task.author.fingerprint}) asks for it. What is in it cannot be seen before.",
+            f"{task.author.name} ({task.author.fingerprint}) asks for it. Nobody can see what is in it before it is open.",
             f"Caution: you open every message with this encapsulated key, not this one alone, and {work.receiver} "
             "learns what is in them.",
             "Caution: who has seen another message to this key can make one out of it that opens both, and you cannot "
