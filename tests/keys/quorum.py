@@ -69,11 +69,10 @@ class Quorum:
                 **{"due": DUE, "created": CREATED, **more},  # type: ignore[arg-type]
             )
 
-    def part(self, task: Task, name: str, **more: object) -> OpeningPart:
+    def part(self, task: Task, name: str) -> OpeningPart:
         """A custodian's part; the party key stays open, as nothing here is worth wiping."""
-        return OpeningPart(
-            task, name, self.record, self.shares.get(name), unlocked(name), self.folders.get(name, Path()), **more
-        )  # type: ignore[arg-type]
+        folder = self.folders.get(name, Path())
+        return OpeningPart(task, name, self.record, self.shares.get(name), unlocked(name), folder)
 
     def spoken(self, task: Task, message: bytes, *custodians: str) -> dict[str, Secret | None]:
         """What custodians give the receiver."""

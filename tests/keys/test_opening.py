@@ -13,6 +13,7 @@ import subprocess
 import sys
 import traceback
 from collections.abc import Callable
+from datetime import UTC, datetime
 from pathlib import Path
 
 import curve
@@ -56,10 +57,13 @@ from shares.errors import (
 from shares.group.edwards25519 import BASE, Point, Scalar
 from shares.group.montgomery import lift, public_of
 from shares.group.proofs import prove_equal
+from shares.history import next as engine
+from shares.history.exchange import TaskFolder
+from shares.history.steps import OwnSteps
 from shares.keys import opened as memory_of
 from shares.keys import opening_task
 from shares.keys.hpke import AEADS
-from shares.keys.opening import OpeningCourse, combine
+from shares.keys.opening import Opened, OpeningCourse, OpeningPart, combine, outcome
 from shares.keys.own_share import own_share
 from shares.keys.partial import PARTIAL_SIZE, checked_result, partial_result, proof_context
 from shares.keys.public_key import sealing_pem
@@ -277,10 +281,8 @@ def points_off() -> dict[str, bytes]:
     """Encapsulated keys that no honest sender makes."""
     p = curve.P
     sample = curve.multiply(12345, curve.BASE)
-    mixed = {
-        f"of order {n} L": curve.add(sample, torsion)
-        for n, torsion in zip((8, 4, 8, 2), curve.TORSION[1:5], strict=True)
-    }
+    orders = zip((8, 4, 8, 2), curve.TORSION[1:5], strict=True)
+    mixed = {f"of order {n} L, {i}": curve.add(sample, torsion) for i, (n, torsion) in enumerate(orders)}
     small = {curve.u_of(point) for point in curve.TORSION[1:]}
     numbers = {
         "p": p,
@@ -645,36 +647,24 @@ def test_a_custodian_is_told_what_they_agree_to(quorum) -> None:
 # The end.
 
 
-def test_the_receiver_ends_the_task_by_taking_the_plaintext(quorum) -> None:
+def test_the_receiver_keeps_what_opens_until_it_is_used(quorum) -> None:
     message = message_of(quorum)
     task = quorum.task(message)
     given = quorum.spoken(task, message, *quorum.names) | {"light-house": Secret(PARTIAL_SIZE)}
     inbox = told(task, message, given)
-    taken = []
-    with pytest.raises(ParameterError, match="where the plaintext goes") as refusal:
-        quorum.part(task, "auditor-east").finish(inbox, Secret(0), [{}, given])
-    assert "shares key finish" in str(refusal.value.hint)
-
-    def refuse(plaintext: Secret) -> None:
-        raise StorageError("the name is taken")
-
-    with pytest.raises(StorageError):
-        quorum.part(task, "auditor-east", deliver=refuse).finish(inbox, Secret(0), [{}, given])
-
-    def take(plaintext: Secret) -> None:
-        taken.append(plaintext)
-        with plaintext.view() as view:
-            assert bytes(view) == PLAINTEXT
-
-    outcome = quorum.part(task, "auditor-east", deliver=take).finish(inbox, Secret(0), [{}, given])
-    assert outcome.files == ()
-    assert isinstance(outcome.event, TaskFinished)
-    assert (outcome.event.result, outcome.event.remark) == (None, "set aside: light-house")
-    assert any("light-house" in line for line in outcome.words)
-    with pytest.raises(ValueError, match="closed"):  # Whoever took it has it; it does not lie about here.
-        taken[0].view()
+    kept = quorum.part(task, "auditor-east").finish(inbox, Secret(0), [{}, given])
+    assert (kept.ends, kept.event, kept.files) == (False, None, ())
+    assert "shares key finish" in kept.words[0]
+    told_all = outcome(task, combine(task, quorum.record, inbox, [{}, given]))
+    assert isinstance(told_all.event, TaskFinished)
+    assert (told_all.event.result, told_all.event.remark) == (None, "set aside: light-house")
+    assert [f"{len(PLAINTEXT)} bytes" in told_all.words[0], "light-house" in told_all.words[1]] == [True, True]
+    good = {name: given[name] for name in ("north-pier", "south-pier")}
+    told_few = outcome(task, combine(task, quorum.record, told(task, message, good), [{}, good]))
+    assert isinstance(told_few.event, TaskFinished)
+    assert told_few.event.remark is None
     custodian = quorum.part(task, "north-pier").finish(inbox, Secret(0), [{}, {}])
-    assert custodian.files == ()
+    assert (custodian.ends, custodian.files) == (True, ())
     assert isinstance(custodian.event, TaskFinished)
 
 
@@ -693,15 +683,14 @@ def test_nothing_secret_shows(quorum, tmp_path, caplog) -> None:
     shown += [repr(said), repr(part), said.body.model_dump_json(), repr(part.event(1, asked(task, message)))]
     given = quorum.spoken(task, message, *quorum.names)
     whole = told(task, message, given)
-    outcome = quorum.part(task, "auditor-east", deliver=lambda _: None).finish(whole, Secret(0), [{}, given])
-    shown += [repr(outcome), repr(combine(task, quorum.record, whole, [{}, given]))]
+    result = combine(task, quorum.record, whole, [{}, given])
+    shown += [repr(result), repr(outcome(task, result)), repr(part.finish(whole, Secret(0), [{}, {}]))]
     wrong = quorum.task(message, info=b"tide")
     for bad in (*bad_partials(quorum, task, message).values(), Secret(0)):
         mixed = {"north-pier": given["north-pier"], "south-pier": bad}
         shown += refused(lambda mixed=mixed: combine(task, quorum.record, told(task, message, mixed), [{}, mixed]))
     results = by_hand(quorum, wrong)
     shown += refused(lambda: combine(wrong, quorum.record, told(wrong, message, results), [{}, results]))
-    shown += refused(lambda: quorum.part(task, "auditor-east").finish(whole, Secret(0), [{}, given]))
     quorum.shares["south-pier"] = quorum.shares["north-pier"]
     shown += refused(lambda: quorum.spoken(task, message, "south-pier"))
     text = "\n".join([*shown, caplog.text]).encode()
@@ -743,3 +732,105 @@ def test_the_ten_line_sender_is_understood(quorum, tmp_path) -> None:
     assert quorum.opened(task, octets_sent, quorum.spoken(task, octets_sent, "north-pier", "light-house")) == PLAINTEXT
     assert subprocess.run(command, capture_output=True, check=False).returncode  # It replaces nothing.
     assert message.read_bytes() == octets_sent
+
+
+# With the engine: folders, sealed boxes, files, journals.
+
+
+class Desk:
+    """One party's machine: its own copy of the task's folder, and its own folder."""
+
+    def __init__(self, root: Path, quorum: Quorum, task: Task, message: bytes, name: str) -> None:
+        self.task, self.name = task, name
+        self.mine = root / name / "mine"
+        self.mine.mkdir(parents=True)
+        self.folder = TaskFolder.create(root / name / "task", task, content=message, record=quorum.record)
+        self.course = OpeningCourse(task, quorum.record)
+        self.own = OwnSteps(self.mine, task, card(name))
+        self.record = quorum.record
+        with unlocked(name) as key:
+            self.part = OpeningPart(task, name, quorum.record, quorum.shares.get(name), key, self.mine)
+
+    def take(self) -> str:
+        at = engine.turn(self.folder, self.course, self.own)
+        with unlocked(self.name) as key:
+            part = OpeningPart(self.task, self.name, self.record, self.part._share, key, self.mine)
+            if at.doing in ("speak", "repeat"):
+                engine.speak(self.folder, at, self.course, part, self.own, key)
+            elif at.doing == "finish":
+                engine.finish(at, self.course, part, self.own, key)
+        return at.doing
+
+    def opened(self) -> Opened:
+        found = engine.standing(self.course, self.folder.read())
+        with unlocked(self.name) as key, engine.opened(found.inbox, self.course, self.own, key) as (_, received):
+            return combine(self.task, self.record, found.inbox, received)
+
+    def send(self, other: Desk) -> None:
+        shutil.copytree(self.folder.path / "messages", other.folder.path / "messages", dirs_exist_ok=True)
+
+
+def desks(root: Path, quorum: Quorum, receiver: str, *custodians: str) -> tuple[Desk, list[Desk]]:
+    message = message_of(quorum)
+    task = quorum.task(message, *custodians, receiver=receiver, due=datetime(2099, 12, 8, tzinfo=UTC))
+    made = {name: Desk(root, quorum, task, message, name) for name in task.names}
+    return made[receiver], [made[name] for name in OpeningCourse(task, quorum.record).custodians]
+
+
+def test_an_opening_goes_from_folder_to_folder(tmp_path) -> None:
+    quorum = Quorum(tmp_path, 2, 3)
+    receiver, custodians = desks(tmp_path / "desks", quorum, "auditor-east")
+    assert [one.take() for one in custodians] == ["wait"] * 3
+    assert receiver.take() == "speak"
+    for one in custodians[:2]:
+        receiver.send(one)
+        assert one.take() == "speak"
+        one.send(receiver)
+    # Two of three are enough, though the third is still awaited.
+    assert receiver.take() == "wait"
+    assert octets(receiver.opened().plaintext) == PLAINTEXT
+    receiver.send(custodians[2])
+    assert custodians[2].take() == "speak"
+    custodians[2].send(receiver)
+    assert receiver.take() == "finish"
+    assert receiver.take() == "finish"  # What opens the message stays until it was used.
+    opened = receiver.opened()
+    assert opened.set_aside == ()
+    assert octets(opened.plaintext) == PLAINTEXT
+    engine.close(receiver.own)
+    assert receiver.take() == "done"
+    with pytest.raises(NotEnoughSharesError):  # And is gone afterwards.
+        receiver.opened()
+    receiver.send(custodians[0])
+    assert custodians[0].take() == "finish"
+    assert custodians[0].take() == "done"
+    assert PLAINTEXT not in b"".join(path.read_bytes() for path in tmp_path.rglob("*") if path.is_file())
+
+
+def test_a_receiver_who_is_a_custodian_seals_for_themselves_as_well(tmp_path) -> None:
+    quorum = Quorum(tmp_path, 2, 3)
+    receiver, custodians = desks(tmp_path / "desks", quorum, "south-pier", "south-pier", "north-pier")
+    assert receiver in custodians
+    assert receiver.take() == "speak"
+    assert receiver.take() == "speak"
+    north = custodians[0]
+    receiver.send(north)
+    assert north.take() == "speak"
+    north.send(receiver)
+    assert octets(receiver.opened().plaintext) == PLAINTEXT
+
+
+def test_a_custodian_who_cheats_is_named_from_folder_to_folder(tmp_path) -> None:
+    quorum = Quorum(tmp_path, 2, 3)
+    receiver, custodians = desks(tmp_path / "desks", quorum, "auditor-east")
+    receiver.take()
+    for one in custodians:
+        receiver.send(one)
+        with pytest.MonkeyPatch.context() as cheat:
+            if one.name == "south-pier":
+                cheat.setattr("shares.keys.opening.partial_result", lambda *_: Secret.of(secrets.token_bytes(96)))
+            one.take()
+        one.send(receiver)
+    opened = receiver.opened()
+    assert [one.by for one in opened.set_aside] == ["south-pier"]
+    assert octets(opened.plaintext) == PLAINTEXT
