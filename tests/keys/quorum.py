@@ -22,14 +22,17 @@ from shares.documents.key_share import KeyShare
 from shares.documents.task import Task
 from shares.documents.task_message import Body, OpeningKey, Partial, TaskMessage
 from shares.documents.wrapping import card_sealer
-from shares.group.edwards25519 import Scalar
-from shares.group.montgomery import public_of
+from shares.group.edwards25519 import BASE, Scalar
+from shares.group.montgomery import lift, public_of
+from shares.group.proofs import prove_equal
 from shares.history.rounds import Inbox, Received
 from shares.keys.opening import OpeningPart, combine
 from shares.keys.opening_task import new_opening
+from shares.keys.partial import PARTIAL_SIZE, partial_result, proof_context
 from shares.memory import Secret
 from shares.sharing.verifiable import evaluate, feldman, polynomial
 
+PLAINTEXT = b"the words that open the harbour gate"
 DUE = CREATED + timedelta(days=7)
 AEADS = {"aes-256-gcm": (2, AESGCM), "chacha20-poly1305": (3, ChaCha20Poly1305)}
 
@@ -171,3 +174,57 @@ def flipped(data: bytes, bits: Sequence[int]) -> bytes:
     for bit in bits:
         number ^= 1 << bit
     return number.to_bytes(len(data), "little")
+
+
+def message_of(quorum: Quorum, plaintext: bytes = PLAINTEXT, **more: object) -> bytes:
+    return sent(quorum.public_key, plaintext, **more)  # type: ignore[arg-type]
+
+
+def two_with_one_key(quorum: Quorum) -> tuple[bytes, bytes]:
+    """Two messages with one encapsulated key, as no honest sender makes them."""
+    ephemeral = X25519PrivateKey.generate()
+    first, second = (message_of(quorum, text, ephemeral=ephemeral) for text in (PLAINTEXT, b"another secret"))
+    assert first[:32] == second[:32]
+    return first, second
+
+
+def by_hand(quorum: Quorum, task: Task) -> dict[str, Secret | None]:
+    """Partial results of custodians who remember nothing."""
+    point = lift(task.work.encapsulated)
+    return {
+        name: partial_result(quorum.scalars[name], point, proof_context(task, quorum.record, i + 1))
+        for i, name in enumerate(quorum.names)
+    }
+
+
+def bad_partials(quorum: Quorum, task: Task, message: bytes) -> dict[str, Secret | None]:
+    """What light-house may give instead of its partial result, and none of which may count."""
+    point, record = lift(message[:32]), quorum.record
+    index, share = record.holder("light-house").index, quorum.scalars["light-house"]
+    context = proof_context(task, record, index)
+    good = octets(partial_result(share, point, context))
+    other_share = quorum.scalars["north-pier"]
+    another = message_of(quorum)
+    other_task = quorum.task(another)
+    same_message = quorum.task(message)
+    shifted = share + Scalar.of(1)
+    made = {
+        "another's share": partial_result(other_share, point, context),
+        "another's share under another's name": partial_result(other_share, point, proof_context(task, record, 1)),
+        "a share that was changed": partial_result(shifted, point, context),
+        "a right point with another's proof": good[:32] + prove_equal(other_share, point, context).encode(),
+        "a wrong point with a right proof": (shifted * point).encode() + good[32:],
+        "from another task": partial_result(share, lift(another[:32]), proof_context(other_task, record, index)),
+        "from another task about this very message": partial_result(
+            share, point, proof_context(same_message, record, index)
+        ),
+        "for another index": partial_result(share, point, proof_context(task, record, 1)),
+        "for another point": partial_result(share, BASE, context),
+        "without its end": good[:-1],
+        "with something at its end": good + b"\0",
+        "nothing": b"",
+        "zeros": bytes(PARTIAL_SIZE),
+        "the identity": b"\1" + bytes(31) + good[32:],
+        "nothing that opens": None,
+    }
+    return {name: Secret.of(value) if isinstance(value, bytes) else value for name, value in made.items()}

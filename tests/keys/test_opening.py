@@ -1,4 +1,4 @@
-"""Opening by a quorum: what opens, what is refused, who is named, what is remembered, and what stays in the dark.
+"""Opening by a quorum: what opens, what nobody serves, who takes part, what agreeing means, what stays in the dark.
 
 Checked against: RFC 9180, appendix A, with the receiver's key among custodians; senders of ``cryptography`` and of
 ``quorum``; the curve in plain integers (``curve``), for points that no honest sender has.
@@ -8,79 +8,61 @@ from __future__ import annotations
 
 import itertools
 import secrets
-import shutil
 import subprocess
 import sys
 import traceback
 from collections.abc import Callable
-from datetime import UTC, datetime
 from pathlib import Path
 
 import curve
 import pytest
 from cryptography.hazmat.primitives import hpke
-from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PrivateKey, X25519PublicKey
-from hypothesis import given
-from hypothesis import strategies as st
+from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PublicKey
 from keys.quorum import (
     DUE,
+    PLAINTEXT,
     Quorum,
     asked,
+    bad_partials,
+    by_hand,
     clamped,
     flipped,
+    message_of,
     octets,
     sealed,
-    sent,
     told,
+    two_with_one_key,
 )
 from parties import QUICK, card, passphrase, unlocked
-from strategies import CREATED
 
-from shares import storage
 from shares.documents.key_event import Approved, TaskFinished
 from shares.documents.key_share import KeyShare
 from shares.documents.members import encode_bytes
-from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import new_party
 from shares.documents.task import Joining, Task
-from shares.documents.task_message import OpeningKey
 from shares.documents.wrapping import card_sealer
 from shares.errors import (
-    DocumentError,
-    NotEnoughSharesError,
     ParameterError,
     SharesError,
-    StorageError,
     VerificationError,
     WrongKeyError,
 )
 from shares.group.edwards25519 import BASE, Point, Scalar
 from shares.group.montgomery import lift, public_of
-from shares.group.proofs import prove_equal
-from shares.history import next as engine
-from shares.history.exchange import TaskFolder
-from shares.history.steps import OwnSteps
-from shares.keys import opened as memory_of
 from shares.keys import opening_task
 from shares.keys.hpke import AEADS
-from shares.keys.opening import Opened, OpeningCourse, OpeningPart, combine, outcome
+from shares.keys.opening import OpeningCourse, combine, outcome
 from shares.keys.own_share import own_share
-from shares.keys.partial import PARTIAL_SIZE, checked_result, partial_result, proof_context
+from shares.keys.partial import PARTIAL_SIZE
 from shares.keys.public_key import sealing_pem
 from shares.memory import Secret
 from shares.sharing.verifiable import recombine
-
-PLAINTEXT = b"the words that open the harbour gate"
 
 
 @pytest.fixture
 def quorum(tmp_path: Path) -> Quorum:
     """2 of 3."""
     return Quorum(tmp_path)
-
-
-def message_of(quorum: Quorum, plaintext: bytes = PLAINTEXT, **more: object) -> bytes:
-    return sent(quorum.public_key, plaintext, **more)  # type: ignore[arg-type]
 
 
 # What opens.
@@ -145,133 +127,6 @@ def test_a_receiver_who_is_no_custodian_only_receives(quorum) -> None:
         quorum.part(task, "auditor-east").speak(1, asked(task, message), Secret(0), [{}])
     with pytest.raises(ParameterError, match="nobody else"):
         quorum.part(task, "north-pier").speak(0, asked(task, message), Secret(0), [])
-
-
-# What the receiver is given that is no good.
-
-
-def bad_partials(quorum: Quorum, task: Task, message: bytes) -> dict[str, Secret | None]:
-    """What light-house may give instead of its partial result, and none of which may count."""
-    point, record = lift(message[:32]), quorum.record
-    index, share = record.holder("light-house").index, quorum.scalars["light-house"]
-    context = proof_context(task, record, index)
-    good = octets(partial_result(share, point, context))
-    other_share = quorum.scalars["north-pier"]
-    another = message_of(quorum)
-    other_task = quorum.task(another)
-    same_message = quorum.task(message)
-    shifted = share + Scalar.of(1)
-    made = {
-        "another's share": partial_result(other_share, point, context),
-        "another's share under another's name": partial_result(other_share, point, proof_context(task, record, 1)),
-        "a share that was changed": partial_result(shifted, point, context),
-        "a right point with another's proof": good[:32] + prove_equal(other_share, point, context).encode(),
-        "a wrong point with a right proof": (shifted * point).encode() + good[32:],
-        "from another task": partial_result(share, lift(another[:32]), proof_context(other_task, record, index)),
-        "from another task about this very message": partial_result(
-            share, point, proof_context(same_message, record, index)
-        ),
-        "for another index": partial_result(share, point, proof_context(task, record, 1)),
-        "for another point": partial_result(share, BASE, context),
-        "without its end": good[:-1],
-        "with something at its end": good + b"\0",
-        "nothing": b"",
-        "zeros": bytes(PARTIAL_SIZE),
-        "the identity": b"\1" + bytes(31) + good[32:],
-        "nothing that opens": None,
-    }
-    return {name: Secret.of(value) if isinstance(value, bytes) else value for name, value in made.items()}
-
-
-def test_a_bad_partial_result_is_named(quorum) -> None:
-    message = message_of(quorum)
-    task = quorum.task(message)
-    bad = bad_partials(quorum, task, message)
-    for what, partial in bad.items():
-        # As many as are needed: it cannot be done, and light-house is why.
-        given = quorum.spoken(task, message, "north-pier") | {"light-house": partial}
-        with pytest.raises(NotEnoughSharesError, match=r"and 1 do; that of light-house does not: ") as refusal:
-            combine(task, quorum.record, told(task, message, given), [{}, given])
-        assert refusal.value.hint == "awaited: south-pier", what
-        # One more: it is set aside.
-        given = quorum.spoken(task, message, "north-pier", "south-pier") | {"light-house": partial}
-        plaintext, aside = combine(task, quorum.record, told(task, message, given), [{}, given])
-        assert octets(plaintext) == PLAINTEXT, what
-        assert [one.by for one in aside] == ["light-house"], what
-    assert len(bad) == 15
-
-
-def test_all_bad_ones_are_named(quorum) -> None:
-    message = message_of(quorum)
-    task = quorum.task(message)
-    given = quorum.spoken(task, message, "light-house") | {"north-pier": None, "south-pier": Secret(PARTIAL_SIZE)}
-    with pytest.raises(NotEnoughSharesError, match=r"north-pier does not: .*south-pier does not: ") as refusal:
-        combine(task, quorum.record, told(task, message, given), [{}, given])
-    assert "new task" in str(refusal.value.hint)
-
-
-def test_a_message_that_says_something_else_is_no_partial_result(quorum) -> None:
-    message = message_of(quorum)
-    task = quorum.task(message)
-    given = quorum.spoken(task, message, "north-pier", "south-pier")
-    inbox = told(task, message, given, OpeningKey(what="opening-key", x25519=bytes([9]) + bytes(31)))
-    with pytest.raises(NotEnoughSharesError):
-        combine(task, quorum.record, inbox, [{}, given])
-    with pytest.raises(NotEnoughSharesError, match="and 0 do"):
-        combine(task, quorum.record, asked(task, message), [{}])
-
-
-def test_each_byte_of_a_partial_result_counts(quorum) -> None:
-    message = message_of(quorum)
-    task = quorum.task(message)
-    point, index = lift(message[:32]), quorum.record.holder("north-pier").index
-    context = proof_context(task, quorum.record, index)
-    good = octets(partial_result(quorum.scalars["north-pier"], point, context))
-    assert checked_result(Secret.of(good), quorum.record, index, point, context)
-    for bit in range(0, 8 * PARTIAL_SIZE, 7):  # Every byte, and every place in a byte.
-        with pytest.raises(VerificationError):
-            checked_result(Secret.of(flipped(good, [bit])), quorum.record, index, point, context)
-
-
-@given(bits=st.sets(st.integers(0, 8 * PARTIAL_SIZE - 1), min_size=1, max_size=20))
-def test_no_alteration_of_a_partial_result_passes(tmp_path_factory, bits) -> None:
-    quorum = Quorum(tmp_path_factory.mktemp("k"))
-    point = lift(message_of(quorum)[:32])
-    good = octets(partial_result(quorum.scalars["north-pier"], point, b""))
-    with pytest.raises(VerificationError):
-        checked_result(Secret.of(flipped(good, sorted(bits))), quorum.record, 1, point, b"")
-
-
-def test_a_message_that_does_not_open_is_told_from_a_wrong_key(quorum) -> None:
-    message = message_of(quorum, info=b"tide", associated=b"table")
-    bound = {"info": b"tide", "associated": b"table"}
-    wrong = [
-        (message, {}),
-        (message, {"info": b"tide"}),
-        (message, {"associated": b"table"}),
-        (message, {"info": b"table", "associated": b"tide"}),
-        (message, {**bound, "cipher": "chacha20-poly1305"}),
-        (flipped(message, [8 * 40]), bound),
-        (message[:-1], bound),
-        (message + b"\0", bound),
-        (message[:32] + bytes(16), bound),
-    ]
-    for altered, facts in wrong:
-        task = quorum.task(altered, **facts)
-        given = by_hand(quorum, task)
-        with pytest.raises(VerificationError, match="the key is right"):
-            combine(task, quorum.record, told(task, altered, given), [{}, given])
-    task = quorum.task(message, **bound)
-    assert quorum.opened(task, message, quorum.spoken(task, message, "north-pier", "south-pier")) == PLAINTEXT
-
-
-def by_hand(quorum: Quorum, task: Task) -> dict[str, Secret | None]:
-    """Partial results of custodians who remember nothing."""
-    point = lift(task.work.encapsulated)
-    return {
-        name: partial_result(quorum.scalars[name], point, proof_context(task, quorum.record, i + 1))
-        for i, name in enumerate(quorum.names)
-    }
 
 
 # Messages that must not be served.
@@ -459,140 +314,6 @@ def flipped_share(share: KeyShare) -> KeyShare:
     return share.model_copy(update={"sealed": flipped(share.sealed, [3])}).with_digest()
 
 
-# What is remembered.
-
-
-def two_with_one_key(quorum: Quorum) -> tuple[bytes, bytes]:
-    """Two messages with one encapsulated key, as no honest sender makes them."""
-    ephemeral = X25519PrivateKey.generate()
-    first, second = (message_of(quorum, text, ephemeral=ephemeral) for text in (PLAINTEXT, b"another secret"))
-    assert first[:32] == second[:32]
-    return first, second
-
-
-def test_a_second_ciphertext_for_one_encapsulated_key_is_refused(quorum) -> None:
-    first, second = two_with_one_key(quorum)
-    task, later = quorum.task(first), quorum.task(second)
-    quorum.spoken(task, first, "north-pier")
-    part = quorum.part(later, "north-pier")
-    for act in (lambda: part.prospect(1, asked(later, second)), lambda: quorum.spoken(later, second, "north-pier")):
-        with pytest.raises(VerificationError, match="served already, for another message") as refusal:
-            act()
-        assert "do not take part" in str(refusal.value.hint)
-    # Another custodian has served neither, and knows nothing of it.
-    assert quorum.spoken(later, second, "south-pier")
-    with pytest.raises(VerificationError, match="served already"):
-        quorum.spoken(task, first, "south-pier")
-
-
-def test_the_same_message_again_is_allowed_and_said(quorum) -> None:
-    message = message_of(quorum)
-    task = quorum.task(message)
-    part = quorum.part(task, "north-pier")
-    assert not any("very message before" in line for line in part.prospect(1, asked(task, message)))
-    quorum.spoken(task, message, "north-pier")
-    (path,) = (quorum.folders["north-pier"] / "opened").iterdir()
-    before = path.read_bytes()
-    again = quorum.task(message, receiver="auditor-west")
-    lines = quorum.part(again, "north-pier").prospect(1, asked(again, message))
-    assert any("this very message before, for auditor-east" in line for line in lines)
-    given = quorum.spoken(again, message, "north-pier", "south-pier")
-    assert quorum.opened(again, message, given) == PLAINTEXT
-    assert path.read_bytes() == before
-    assert path.stat().st_mode & 0o777 == 0o600
-
-
-def test_what_is_served_is_on_the_medium_before_it_leaves(quorum, monkeypatch) -> None:
-    """A run that dies in between has served nothing and remembers: the same message goes on, another does not."""
-    first, second = two_with_one_key(quorum)
-    task, later = quorum.task(first), quorum.task(second)
-    with monkeypatch.context() as broken:
-        broken.setattr("shares.keys.opening.partial_result", lambda *_: (_ for _ in ()).throw(KeyboardInterrupt))
-        with pytest.raises(KeyboardInterrupt):
-            quorum.spoken(task, first, "north-pier")
-    with pytest.raises(VerificationError, match="served already"):
-        quorum.spoken(later, second, "north-pier")
-    assert quorum.spoken(task, first, "north-pier")
-
-
-def test_of_two_processes_one_is_first(quorum, monkeypatch) -> None:
-    first, second = two_with_one_key(quorum)
-    task, later = quorum.task(first), quorum.task(second)
-    write = storage.write_new
-
-    def after_another(path, data, *, secret) -> None:
-        monkeypatch.setattr(storage, "write_new", write)
-        quorum.spoken(later, second, "north-pier")
-        write(path, data, secret=secret)
-
-    monkeypatch.setattr(storage, "write_new", after_another)
-    with pytest.raises(VerificationError, match="served already, for another message"):
-        quorum.spoken(task, first, "north-pier")
-
-    def after_itself(path, data, *, secret) -> None:
-        monkeypatch.setattr(storage, "write_new", write)
-        quorum.spoken(task, first, "south-pier")
-        write(path, data, secret=secret)
-
-    monkeypatch.setattr(storage, "write_new", after_itself)
-    assert quorum.spoken(task, first, "south-pier")
-
-
-def test_without_a_memory_nothing_is_served(quorum, monkeypatch) -> None:
-    message = message_of(quorum)
-    task = quorum.task(message)
-
-    def full(path, data, *, secret) -> None:
-        raise StorageError("the medium is full", where=str(path))
-
-    with monkeypatch.context() as broken:
-        broken.setattr(storage, "write_new", full)
-        with pytest.raises(StorageError, match="full"):
-            quorum.spoken(task, message, "north-pier")
-    path = memory_of.file_of(quorum.folders["north-pier"], message[:32])
-    served = OpenedMessage(
-        kind="opened-message",
-        version=1,
-        key=quorum.record.key,
-        encapsulated=secrets.token_bytes(32),
-        content=task.work.content,
-        task=task.digest(),
-        receiver="auditor-east",
-        time=CREATED,
-    )
-    for damaged, error in (
-        (b"", DocumentError),
-        (b"{}", DocumentError),
-        (quorum.record.to_file(), DocumentError),
-        (served.to_file(), VerificationError),
-        (
-            served.model_copy(update={"encapsulated": message[:32], "key": bytes([1] * 16)}).to_file(),
-            VerificationError,
-        ),
-    ):
-        path.write_bytes(damaged)
-        with pytest.raises(error) as refusal:
-            quorum.spoken(task, message, "north-pier")
-        assert refusal.value.where == str(path)
-    path.unlink()
-    path.symlink_to("nowhere")
-    with pytest.raises(StorageError):
-        quorum.spoken(task, message, "north-pier")
-    path.unlink()
-    path.write_bytes(served.model_copy(update={"encapsulated": message[:32]}).to_file())
-    assert quorum.spoken(task, message, "north-pier")
-    assert OpenedMessage.parse(path.read_bytes()).to_file() == path.read_bytes()
-
-
-def test_a_restored_folder_has_forgotten(quorum) -> None:
-    """Not a promise but its limit, which the format page states."""
-    first, second = two_with_one_key(quorum)
-    task, later = quorum.task(first), quorum.task(second)
-    quorum.spoken(task, first, "north-pier")
-    shutil.rmtree(quorum.folders["north-pier"])
-    assert quorum.spoken(later, second, "north-pier")
-
-
 # What agreeing means.
 
 
@@ -732,105 +453,3 @@ def test_the_ten_line_sender_is_understood(quorum, tmp_path) -> None:
     assert quorum.opened(task, octets_sent, quorum.spoken(task, octets_sent, "north-pier", "light-house")) == PLAINTEXT
     assert subprocess.run(command, capture_output=True, check=False).returncode  # It replaces nothing.
     assert message.read_bytes() == octets_sent
-
-
-# With the engine: folders, sealed boxes, files, journals.
-
-
-class Desk:
-    """One party's machine: its own copy of the task's folder, and its own folder."""
-
-    def __init__(self, root: Path, quorum: Quorum, task: Task, message: bytes, name: str) -> None:
-        self.task, self.name = task, name
-        self.mine = root / name / "mine"
-        self.mine.mkdir(parents=True)
-        self.folder = TaskFolder.create(root / name / "task", task, content=message, record=quorum.record)
-        self.course = OpeningCourse(task, quorum.record)
-        self.own = OwnSteps(self.mine, task, card(name))
-        self.record = quorum.record
-        with unlocked(name) as key:
-            self.part = OpeningPart(task, name, quorum.record, quorum.shares.get(name), key, self.mine)
-
-    def take(self) -> str:
-        at = engine.turn(self.folder, self.course, self.own)
-        with unlocked(self.name) as key:
-            part = OpeningPart(self.task, self.name, self.record, self.part._share, key, self.mine)
-            if at.doing in ("speak", "repeat"):
-                engine.speak(self.folder, at, self.course, part, self.own, key)
-            elif at.doing == "finish":
-                engine.finish(at, self.course, part, self.own, key)
-        return at.doing
-
-    def opened(self) -> Opened:
-        found = engine.standing(self.course, self.folder.read())
-        with unlocked(self.name) as key, engine.opened(found.inbox, self.course, self.own, key) as (_, received):
-            return combine(self.task, self.record, found.inbox, received)
-
-    def send(self, other: Desk) -> None:
-        shutil.copytree(self.folder.path / "messages", other.folder.path / "messages", dirs_exist_ok=True)
-
-
-def desks(root: Path, quorum: Quorum, receiver: str, *custodians: str) -> tuple[Desk, list[Desk]]:
-    message = message_of(quorum)
-    task = quorum.task(message, *custodians, receiver=receiver, due=datetime(2099, 12, 8, tzinfo=UTC))
-    made = {name: Desk(root, quorum, task, message, name) for name in task.names}
-    return made[receiver], [made[name] for name in OpeningCourse(task, quorum.record).custodians]
-
-
-def test_an_opening_goes_from_folder_to_folder(tmp_path) -> None:
-    quorum = Quorum(tmp_path, 2, 3)
-    receiver, custodians = desks(tmp_path / "desks", quorum, "auditor-east")
-    assert [one.take() for one in custodians] == ["wait"] * 3
-    assert receiver.take() == "speak"
-    for one in custodians[:2]:
-        receiver.send(one)
-        assert one.take() == "speak"
-        one.send(receiver)
-    # Two of three are enough, though the third is still awaited.
-    assert receiver.take() == "wait"
-    assert octets(receiver.opened().plaintext) == PLAINTEXT
-    receiver.send(custodians[2])
-    assert custodians[2].take() == "speak"
-    custodians[2].send(receiver)
-    assert receiver.take() == "finish"
-    assert receiver.take() == "finish"  # What opens the message stays until it was used.
-    opened = receiver.opened()
-    assert opened.set_aside == ()
-    assert octets(opened.plaintext) == PLAINTEXT
-    engine.close(receiver.own)
-    assert receiver.take() == "done"
-    with pytest.raises(NotEnoughSharesError):  # And is gone afterwards.
-        receiver.opened()
-    receiver.send(custodians[0])
-    assert custodians[0].take() == "finish"
-    assert custodians[0].take() == "done"
-    assert PLAINTEXT not in b"".join(path.read_bytes() for path in tmp_path.rglob("*") if path.is_file())
-
-
-def test_a_receiver_who_is_a_custodian_seals_for_themselves_as_well(tmp_path) -> None:
-    quorum = Quorum(tmp_path, 2, 3)
-    receiver, custodians = desks(tmp_path / "desks", quorum, "south-pier", "south-pier", "north-pier")
-    assert receiver in custodians
-    assert receiver.take() == "speak"
-    assert receiver.take() == "speak"
-    north = custodians[0]
-    receiver.send(north)
-    assert north.take() == "speak"
-    north.send(receiver)
-    assert octets(receiver.opened().plaintext) == PLAINTEXT
-
-
-def test_a_custodian_who_cheats_is_named_from_folder_to_folder(tmp_path) -> None:
-    quorum = Quorum(tmp_path, 2, 3)
-    receiver, custodians = desks(tmp_path / "desks", quorum, "auditor-east")
-    receiver.take()
-    for one in custodians:
-        receiver.send(one)
-        with pytest.MonkeyPatch.context() as cheat:
-            if one.name == "south-pier":
-                cheat.setattr("shares.keys.opening.partial_result", lambda *_: Secret.of(secrets.token_bytes(96)))
-            one.take()
-        one.send(receiver)
-    opened = receiver.opened()
-    assert [one.by for one in opened.set_aside] == ["south-pier"]
-    assert octets(opened.plaintext) == PLAINTEXT
