@@ -21,7 +21,7 @@ START = datetime(2026, 12, 1, 7, 0, tzinfo=UTC)
 DUE = START + timedelta(days=7)
 
 Cheat = Callable[["Exchange", Said | None], Said | Mapping[str, Said] | None]
-"""Takes what a party would say, None where its program refuses; returns what it says, to all or by receiver, or nothing."""
+"""Takes what a party would say, None where its program refuses; returns what it says, to all, by receiver, or nothing."""
 
 
 def octets(secret: Secret) -> bytes:
