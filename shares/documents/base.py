@@ -44,6 +44,8 @@ KINDS = (
     "task-step",
     "task-done",
     "nonce-batch",
+    "nonce-pair",
+    "nonce-marks",
 )
 VERSION = 1
 

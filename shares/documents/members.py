@@ -106,7 +106,8 @@ def _decode_time(value: object) -> datetime:
     raise PydanticCustomError("shares_time", "not a UTC time like 2026-12-01T07:00:00Z")
 
 
-def _holds_unprintable(text: str) -> bool:
+def holds_unprintable(text: str) -> bool:
+    """Say whether a text holds a character that shows as nothing, steers a terminal or turns the order of others."""
     if text.isascii():  # Most are, and then the control characters are all that there is to look for.
         return not text.isprintable()
     return any(unicodedata.category(c) in _UNPRINTABLE or c in _BLANK or _is_noncharacter(c) for c in text)
@@ -141,7 +142,7 @@ def _name_problem(name: str) -> str | None:
         return "must not be empty"
     if len(name) > 64 or len(name.encode("utf-8", "surrogatepass")) > 200:
         return "has at most 64 characters and 200 bytes in UTF-8"
-    if _holds_unprintable(name):
+    if holds_unprintable(name):
         return "must not hold control or invisible characters"
     if "/" in name or "\\" in name:
         return "must not hold a path separator"
@@ -171,7 +172,7 @@ def check_text(text: str, what: str = "a label") -> str:
     """
     if not 1 <= len(text) <= MAX_TEXT:
         raise ParameterError(f"{what} has 1 to {MAX_TEXT} characters")
-    if _holds_unprintable(text) or _holds_unassigned(text):
+    if holds_unprintable(text) or _holds_unassigned(text):
         raise ParameterError(f"{what} must not hold control or invisible characters")
     return text
 
@@ -184,7 +185,7 @@ def _not_bool(value: object) -> object:
 
 
 def _printable(text: str) -> str:
-    if _holds_unprintable(text):
+    if holds_unprintable(text):
         raise PydanticCustomError("shares_text", "it holds control or invisible characters")
     return text
 

@@ -1,0 +1,52 @@
+"""What a custodian is told, before agreeing, of the bytes that a threshold key is to sign.
+
+Source: The Unicode Standard, sec. 23 (special characters), by the rule of ``documents.members``; FIPS 180-4 (SHA-256).
+May import: shares.documents.members.
+Secret: nothing. Public: everything.
+Does not: look at what is to be signed; the module of each format does, and finds all that it says in the bytes alone.
+"""
+
+from __future__ import annotations
+
+import textwrap
+from dataclasses import dataclass
+
+from shares.documents.members import holds_unprintable
+
+
+@dataclass(frozen=True, slots=True)
+class Description:
+    """What some bytes are, in words that nothing in them can disturb.
+
+    Attributes:
+        kind: what they are, as it follows 'this is'.
+        lines: what they say, one fact a line.
+        cautions: what to think of before they are signed, one sentence or two each.
+    """
+
+    kind: str
+    lines: tuple[str, ...]
+    cautions: tuple[str, ...] = ()
+
+
+def shown(text: str) -> str:
+    """Return a text of unknown origin with all that is invisible, or turns or moves other text, written out.
+
+    Args:
+        text: anything that came from elsewhere.
+
+    >>> shown("harbour\\u202ecod.exe")
+    'harbour<U+202E>cod.exe'
+    """
+    if not holds_unprintable(text):
+        return text
+    return "".join(f"<U+{ord(c):04X}>" if holds_unprintable(c) else c for c in text)
+
+
+def in_groups(data: bytes) -> str:
+    """Return bytes as lower-case hexadecimal in groups of eight, to be compared by eye.
+
+    >>> in_groups(bytes(range(6)))
+    '00010203 0405'
+    """
+    return " ".join(textwrap.wrap(data.hex(), 8))
