@@ -301,7 +301,7 @@ class JointPart:
             " seen the same messages. No machine has ever held the key.",
             "Next: read the record's fingerprint aloud among all custodians. It must be the same for each; where it is"
             " not, do not use the key.",
-            f"Keep share.json where only you reach it: when fewer than {record.need} key shares are left, the key is lost.",
+            f"Keep share.json where only you reach it: with fewer than {record.need} key shares left, the key is lost.",
         )
 
 
