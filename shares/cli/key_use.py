@@ -48,9 +48,7 @@ OPEN_NEXT = (
     "messages; each runs `shares task next {path} --mine FOLDER --key KEY` once. As soon as enough have, "
     "`shares key finish` opens the message here, where the key that they seal for lies."
 )
-NOT_FOR_LONG = (
-    "Caution: X25519 does not withstand quantum computers: what must stay secret for ten years is not sent to such a key."
-)
+NOT_FOR_LONG = "Caution: X25519 does not withstand quantum computers. What must stay secret for ten years is not sent to such a key."
 VERIFY = {
     "plain": "Next: verify it as others will, for instance with `openssl pkeyutl -verify -rawin`.",
     "openssh": "Next: verify it as others will, with `ssh-keygen -Y verify`.",
@@ -62,9 +60,7 @@ VERIFY = {
 @click.command("commit", short_help="Make nonces beforehand, for signatures to come.")
 @click.argument("folder", metavar="KEYDIR", callback=filled)
 @click.option("--key", "key_file", required=True, metavar="KEY", callback=filled, help="The custodian's party key.")
-@click.option(
-    "--count", type=int, default=100, show_default=True, metavar="N", help="For how many signatures."
-)
+@click.option("--count", type=int, default=100, show_default=True, metavar="N", help="For how many signatures.")
 @click.option("--to", "target", required=True, metavar="FILE", callback=filled, help="New file for the commitments.")
 @passphrase_options
 @json_option

@@ -2,7 +2,7 @@
 
 Source: P. Feldman, "A practical scheme for non-interactive verifiable secret sharing", FOCS 1987 (s B = sum of
 x^j A_j); RFC 9591, appendix C.2; FORMAT_KEYS.md, sec. 21 and 22.
-May import: shares.errors, shares.documents, shares.group.edwards25519, shares.sharing.verifiable.
+May import: shares.errors, shares.documents, shares.group.edwards25519, .own_share.
 Secret: the scalar of a key share, while it is compared. Public: the rest.
 Does not: say who the parties are: people do, by the fingerprints of their cards.
 """
@@ -19,9 +19,9 @@ from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
 from shares.documents.party import PartyCard
 from shares.documents.wrapping import ByCard, Opener
-from shares.errors import DocumentError, EpochMismatchError, SetMismatchError, VerificationError
+from shares.errors import DocumentError, EpochMismatchError, SetMismatchError, VerificationError, WrongKeyError
 from shares.group.edwards25519 import Scalar
-from shares.sharing.verifiable import check_feldman
+from shares.keys.own_share import own_share
 
 ANOTHER = "find the record that it belongs to; the key share may be perfectly good"
 
@@ -99,15 +99,16 @@ def opened(share: KeyShare, record: KeyRecord, opener: Opener) -> Scalar:
             another number was dealt.
     """
     check_belongs(share, record)
-    scalar = share.open(opener)
     try:
-        check_feldman(scalar, share.index, record.commitments, record.need)
-        return scalar
-    except VerificationError:
-        pass
+        return own_share(share, record, share.custodian, opener)
+    except WrongKeyError:
+        raise
+    except VerificationError as error:
+        problem = error
     raise VerificationError(
-        f"the key share of {share.custodian} is not the one that the record commits to",
-        hint="do not use it: keep the file, and tell the others; whoever dealt it was at fault, or it was exchanged",
+        f"the key share of {share.custodian} does not hold: {problem.what}",
+        hint=problem.hint
+        or "do not use it: keep the file, and tell the others; whoever dealt it was at fault, or it was exchanged",
     )
 
 

@@ -1,7 +1,7 @@
 """Put together what came of a task: a signature, for whoever asked; a message's content, for its receiver alone.
 
 Source: RFC 9591, sec. 5.3 (the coordinator aggregates, without a secret); FORMAT_KEYS.md, sec. 28 (openings).
-May import: shares.clock, shares.errors, shares.documents, shares.history, .asking, .folder, .opening, .signing.
+May import: shares.errors, shares.memory, shares.documents, shares.history, .asking, .folder, .opening, .signing.
 Secret: the plaintext of an opening, handed to whoever takes it; the receiver's party key, passed through. Public: the
 signature.
 Does not: write files but the journal; the caller does.
@@ -10,7 +10,7 @@ Does not: write files but the journal; the caller does.
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 
 from shares.documents.key_event import KeyEvent, TaskFinished
@@ -23,8 +23,13 @@ from shares.history.rounds import Course
 from shares.history.steps import OwnSteps
 from shares.keys.asking import issuer_of
 from shares.keys.folder import KeyFolder
-from shares.keys.opening import Deliver, OpeningCourse, OpeningPart
+from shares.keys.opening import OpeningCourse, OpeningPart, combine
+from shares.keys.opening import outcome as end_of_opening
 from shares.keys.signing import SigningCourse, finish_signing
+from shares.memory import Secret
+
+Deliver = Callable[[Secret], None]
+"""Takes the plaintext to where the receiver wants it: all of it, or it raises."""
 
 
 def signed(folder: KeyFolder, task: TaskFolder) -> bytes:
@@ -59,7 +64,7 @@ def begin_opening(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey) -> Pat
     Returns:
         The file of the message.
     """
-    course, part, own = _receiving(folder, task, key, None)
+    course, part, own = _receiving(folder, task, key)
     return speak(task, turn(task, course, own), course, part, own, key)
 
 
@@ -83,7 +88,7 @@ def open_message(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey, deliver
         VerificationError: the task has failed, or the message does not open.
         ParameterError: the task is over, or the key is not the receiver's.
     """
-    course, part, own = _receiving(folder, task, key, deliver)
+    course, _, own = _receiving(folder, task, key)
     at = turn(task, course, own)
     _refuse_failed(at.standing)
     if at.doing == "done":
@@ -94,12 +99,15 @@ def open_message(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey, deliver
         )
     if at.round == 0:
         raise _awaited(at.standing)
-    with opened(at.standing.inbox, course, own, key) as (state, received):
-        outcome = part.finish(at.standing.inbox, state, received)
-    if isinstance(outcome.event, TaskFinished):
-        enter_once(folder, outcome.event, key)
+    with opened(at.standing.inbox, course, own, key) as (_, received):
+        found = combine(task.task, folder.record, at.standing.inbox, received)
+        with found.plaintext as plaintext:
+            deliver(plaintext)
+            end = end_of_opening(task.task, found)
+    if isinstance(end.event, TaskFinished):
+        enter_once(folder, end.event, key)
     close(own)
-    return outcome.words
+    return end.words
 
 
 def finished(task: Task, data: bytes) -> TaskFinished:
@@ -114,9 +122,7 @@ def enter_once(folder: KeyFolder, event: KeyEvent, key: OpenPartyKey) -> None:
         folder.append(event, keys=(key,))
 
 
-def _receiving(
-    folder: KeyFolder, task: TaskFolder, key: OpenPartyKey, deliver: Deliver | None
-) -> tuple[Course, OpeningPart, OwnSteps]:
+def _receiving(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey) -> tuple[Course, OpeningPart, OwnSteps]:
     course = OpeningCourse(task.task, folder.record)
     me = task.task.party_by(key.card)
     if me is None or me.name != course.work.receiver:
@@ -124,7 +130,7 @@ def _receiving(
             f"the receiver of this message is {course.work.receiver}", hint="give the receiver's party key"
         )
     share = folder.share() if folder.holds_share else None
-    part = OpeningPart(task.task, me.name, folder.record, share, key, folder.path, deliver)
+    part = OpeningPart(task.task, me.name, folder.record, share, key, folder.path)
     return course, part, OwnSteps(folder.path, task.task, key.card)
 
 

@@ -51,7 +51,7 @@ def test_a_number_that_was_not_dealt_is_named() -> None:
     record = key().record
     for wrong in (Scalar.of(1), Scalar.drawn()):
         false = KeyShare.wrap(wrong, record, "north-pier", card_sealer(card("north-pier").recipient()))
-        with unlocked("north-pier") as own, pytest.raises(VerificationError, match="north-pier is not the one"):
+        with unlocked("north-pier") as own, pytest.raises(VerificationError, match="north-pier does not hold: "):
             opened(false, record, own.open)
 
 
