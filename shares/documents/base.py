@@ -46,6 +46,7 @@ KINDS = (
     "nonce-batch",
     "nonce-pair",
     "nonce-marks",
+    "opened-message",
 )
 VERSION = 1
 

@@ -4,7 +4,7 @@ Like a certificate, a list is a body that its author builds once and that every 
 that leaves out what an earlier one revoked would put it in force again.
 
 Source: RFC 5280, sec. 5 (lists), 5.3.1 (reasons) and 5.2.3 (numbers).
-May import: shares.errors, .certificate_parts, .public_key.
+May import: shares.errors, shares.clock, .certificate_parts, .public_key.
 Secret: nothing. Public: everything.
 Does not: keep the earlier lists, or sign.
 """

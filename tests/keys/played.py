@@ -100,3 +100,17 @@ def issued(
 def tool(folder: Path, *command: str, given: bytes = b"") -> subprocess.CompletedProcess[bytes]:
     """Run a real tool in a folder and return what it said; whether it agreed is for the test to ask."""
     return subprocess.run(command, cwd=folder, input=given, capture_output=True, check=False)
+
+
+def in_other_time(body: bytes, moment: datetime) -> bytes:
+    """Write one time of a body anew as GeneralizedTime, which RFC 5280 keeps for 2050 and later; lengths are mended."""
+    short = b"\x17\x0d" + f"{moment:%y%m%d%H%M%S}Z".encode()
+    assert body.count(short) == 1
+    place = body.index(short)
+    changed = bytearray(body.replace(short, b"\x18\x0f" + f"{moment:%Y%m%d%H%M%S}Z".encode()))
+    assert changed[:2] == b"\x30\x81"
+    changed[2] += 2
+    for header in (place - 2, place - 17):  # The validity of a certificate, which a list has not.
+        if changed[header : header + 2] == b"\x30\x1e":
+            changed[header + 1] += 2
+    return bytes(changed)

@@ -138,12 +138,14 @@ def test_what_is_not_understood_is_shown_as_such() -> None:
     assert "..." not in line
     other = x509.AuthorityKeyIdentifier(None, [x509.DirectoryName(x509.Name.from_rfc4514_string("CN=a"))], 5)
     whom = with_extension(other)
-    assert any("2.5.29.35" in line for line in whom.lines)
+    both = with_extension(x509.AuthorityKeyIdentifier(bytes(20), other.authority_cert_issuer, 5))
+    assert any(line.startswith("extension 2.5.29.35") for line in whom.lines)
+    assert any(line.startswith("extension 2.5.29.35") for line in both.lines)
     purpose = with_extension(x509.ExtendedKeyUsage([x509.ObjectIdentifier("1.2.3.5")]))
     assert "purpose: 1.2.3.5" in purpose.lines
     names = with_extension(x509.SubjectAlternativeName([x509.RegisteredID(x509.ObjectIdentifier("1.2.3"))]))
     assert "names: ?RegisteredID" in names.lines
-    for said in (unknown, limits, whom, purpose, names):
+    for said in (unknown, limits, whom, both, purpose, names):
         assert any("not read here" in caution for caution in said.cautions)
 
 
@@ -204,15 +206,25 @@ def test_a_long_list_says_how_much_is_not_shown() -> None:
     assert sum(" since " in line for line in lines) == 50
 
 
-def test_what_a_list_says_otherwise_is_shown_as_such() -> None:
-    entry = x509.RevokedCertificateBuilder(5, START).add_extension(x509.InvalidityDate(START), critical=False).build()
+def list_said(*entry_extensions: x509.ExtensionType, more: tuple[x509.ExtensionType, ...] = ()) -> Description:
+    entry = x509.RevokedCertificateBuilder(5, START)
+    for extension in entry_extensions:
+        entry = entry.add_extension(extension, critical=False)
     builder = x509.CertificateRevocationListBuilder(
-        x509.Name.from_rfc4514_string(ROOT_NAME), START, after(1), [], [entry]
-    ).add_extension(x509.DeltaCRLIndicator(1), critical=True)
-    said = described_list(builder.sign(QUORUM, None).tbs_certlist_bytes)
-    assert any(line.startswith("extension 2.5.29.27 (critical), not read here") for line in said.lines)
-    assert "5 since 2026-12-01T07:00:00Z, extensions not read here: 2.5.29.24" in said.lines
-    assert any("not read here" in caution for caution in said.cautions)
+        x509.Name.from_rfc4514_string(ROOT_NAME), START, after(1), [], [entry.build()]
+    )
+    for extension in more:
+        builder = builder.add_extension(extension, critical=True)
+    return described_list(builder.sign(QUORUM, None).tbs_certlist_bytes)
+
+
+def test_what_a_list_says_otherwise_is_shown_as_such() -> None:
+    delta = list_said(more=(x509.DeltaCRLIndicator(1),))
+    assert any(line.startswith("extension 2.5.29.27 (critical), not read here") for line in delta.lines)
+    dated = list_said(x509.InvalidityDate(START))
+    assert "5 since 2026-12-01T07:00:00Z, extensions not read here: 2.5.29.24" in dated.lines
+    for said, cried in ((delta, True), (dated, True), (list_said(), False)):
+        assert any("not read here" in caution for caution in said.cautions) == cried
 
 
 # --- Hostile bytes: a refusal in words, or words that steer nothing.

@@ -28,6 +28,7 @@ from keys.played import (
     a_root,
     after,
     body_of,
+    in_other_time,
     issued,
     plain_builder,
     tool,
@@ -316,6 +317,9 @@ def test_the_issuer_must_be_an_authority_of_this_key() -> None:
     for critical in (True, False):
         with pytest.raises(ParameterError, match="not checked here"):
             a_body(an_issuer(CA, (limits, critical)))
+    with pytest.raises(ParameterError, match=r"not checked here: 2\.5\.29\.36"):
+        a_body(an_issuer(CA, (x509.PolicyConstraints(0, None), True)))
+    assert a_body(an_issuer(CA, (x509.PolicyConstraints(0, None), False)), not_after=after(20))
 
 
 def test_the_issuer_must_outlive_what_it_issues() -> None:
@@ -437,6 +441,30 @@ def test_bodies_that_this_key_cannot_sign_are_refused() -> None:
     check(plain_of_serial(b"\x01"), KEY, top)
     check(plain_of_serial(b"\x00\x80"), KEY, top)
     check(plain_of_serial(b"\x7f" + bytes(19)), KEY, top)
+
+
+def test_a_time_in_its_other_encoding_is_refused() -> None:
+    body = body_of(plain_builder())
+    check(body, KEY, a_root())
+    for moment in (START, after(30)):
+        with pytest.raises(DocumentError):
+            check(in_other_time(body, moment), KEY, a_root())
+
+
+def test_a_name_longer_than_names_may_be_is_refused() -> None:
+    # RFC 5280, appendix A.1: ub-common-name is 64. The library reads more, and warns.
+    def named(letters: int) -> bytes:
+        body = body_of(plain_builder("CN=" + "a" * 64))
+        longer = body.replace(b"\x0c\x40" + b"a" * 64, bytes((0x0C, letters)) + b"a" * letters)
+        place = body.index(b"\x06\x03\x55\x04\x03\x0c\x40")
+        changed, more = bytearray(longer), letters - 64
+        for length in (2, place - 1, place - 3, place - 5):
+            changed[length] += more
+        return bytes(changed)
+
+    check(named(64), KEY, a_root())
+    with pytest.raises(DocumentError):
+        check(named(65), KEY, a_root())
 
 
 def plain_of_serial(octets: bytes) -> bytes:

@@ -5,6 +5,7 @@ Checked against: the sender's plaintext (``quorum``). What a memory cannot know 
 
 from __future__ import annotations
 
+import hashlib
 import secrets
 import shutil
 from pathlib import Path
@@ -156,3 +157,13 @@ def test_a_restored_folder_has_forgotten(quorum) -> None:
     quorum.spoken(task, first, "north-pier")
     shutil.rmtree(quorum.folders["north-pier"])
     assert quorum.spoken(later, second, "north-pier")
+
+
+def test_the_golden_sample_is_read_for_ever() -> None:
+    """Written by hand from the format page: name, members and bytes."""
+    (path,) = (Path(__file__).parents[1] / "vectors/golden/v1/opened").iterdir()
+    remembered = OpenedMessage.parse(path.read_bytes())
+    assert path.name == f"{hashlib.sha256(remembered.encapsulated).hexdigest()}.json"
+    assert path.name == memory_of.file_of(Path(), remembered.encapsulated).name
+    assert (remembered.content.size, remembered.receiver, remembered.time) == (84, "auditor-east", CREATED)
+    assert remembered.to_file() == path.read_bytes()

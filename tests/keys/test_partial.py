@@ -5,8 +5,11 @@ Checked against: a sender that shares no code with the package (``quorum``); the
 
 from __future__ import annotations
 
+import hashlib
+import json
 from pathlib import Path
 
+import curve
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -119,3 +122,25 @@ def test_a_message_that_does_not_open_is_told_from_a_wrong_key(quorum) -> None:
             combine(task, quorum.record, told(task, altered, given), [{}, given])
     task = quorum.task(message, **bound)
     assert quorum.opened(task, message, quorum.spoken(task, message, "north-pier", "south-pier")) == PLAINTEXT
+
+
+def test_a_partial_result_is_what_the_format_page_says(quorum) -> None:
+    """Section 28 of FORMAT_KEYS.md, computed again in plain integers with the standard library."""
+    message = message_of(quorum)
+    task = quorum.task(message)
+    index, share = 2, int.from_bytes(quorum.scalars["south-pier"].encode(), "little")
+    u = int.from_bytes(message[:32], "little")
+    e = curve.decode(((u - 1) * pow(u + 1, -1, curve.P) % curve.P).to_bytes(32, "little"))
+    given = octets(quorum.spoken(task, message, "south-pier")["south-pier"])
+    d, c, z = given[:32], *(int.from_bytes(given[i : i + 32], "little") for i in (32, 64))
+    assert d == curve.encode(curve.multiply(share, e))
+    facts = {"index": index, "record": quorum.record.fingerprint, "task": task.digest().hex()}
+    context = b"shares/v1/partial-result" + json.dumps(facts, separators=(",", ":")).encode()
+    public = curve.multiply(share, curve.BASE)
+    nonces = [
+        curve.add(curve.multiply(z, base), curve.multiply(-c, of))
+        for base, of in ((curve.BASE, public), (e, curve.decode(d)))
+    ]
+    points = b"".join(curve.encode(point) for point in (public, e, curve.decode(d), *nonces))
+    hashed = b"shares/v1/proof/equality" + len(context).to_bytes(8, "big") + context + points
+    assert c == int.from_bytes(hashlib.sha512(hashed).digest(), "little") % curve.L

@@ -12,7 +12,20 @@ from cryptography import x509
 from cryptography.hazmat.primitives.serialization import Encoding
 from hypothesis import given
 from hypothesis import strategies as st
-from keys.played import KEY, OTHER, QUORUM, ROOT_NAME, START, a_request, a_root, after, issued, plain_builder, tool
+from keys.played import (
+    KEY,
+    OTHER,
+    QUORUM,
+    ROOT_NAME,
+    START,
+    a_request,
+    a_root,
+    after,
+    in_other_time,
+    issued,
+    plain_builder,
+    tool,
+)
 
 from shares.errors import DocumentError, ParameterError, VerificationError
 from shares.keys.certificate_parts import whole
@@ -239,6 +252,7 @@ def test_each_prefix_and_each_longer_body_is_refused() -> None:
         body + b"\0",
         whole(body),
         body.replace(ed25519, bytes.fromhex("300506032b6571"), 1),
+        in_other_time(body, after(5)),
         body.replace(b"\x02\x01\x01" + ed25519, b"\x02\x01\x00" + ed25519, 1),
     ):
         with pytest.raises(DocumentError):
