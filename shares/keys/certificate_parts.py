@@ -44,6 +44,7 @@ _LIBRARY_REFUSES = (
     ValueError,
     TypeError,
     OverflowError,
+    LookupError,  # Of a name in a kind of string that it does not know, up to its version 48.
     NotImplementedError,
     UnsupportedAlgorithm,
     Warning,
@@ -262,6 +263,9 @@ def period(start: datetime, end: datetime) -> str:
 
 def read_issuer(data: bytes, public_key: bytes, *, lists: bool = False) -> x509.Certificate:
     """Read the certificate of an authority whose key is the threshold key.
+
+    A root's own signature is checked. One that stands under another authority is taken as given: that authority's key is
+    not at hand.
 
     Args:
         data: PEM or DER.
