@@ -1,8 +1,8 @@
 """edwards25519 in plain integers, for tests alone: nothing here is the package's, and nothing is constant in time.
 
-Source: RFC 8032, sec. 5.1 (curve, base point, encodings, recovery of x); D. J. Bernstein, P. Birkner, M. Joye, T. Lange,
-C. Peters, "Twisted Edwards Curves", AFRICACRYPT 2008, sec. 6 (addition without inversion); RFC 7748, sec. 4.1 (map to
-curve25519); RFC 9496, sec. 4.3.1 (ristretto255, for vectors in that encoding).
+Source: RFC 8032, sec. 5.1 (curve, base point, encodings, recovery of x); D. J. Bernstein, P. Birkner, M. Joye,
+T. Lange, C. Peters, "Twisted Edwards Curves", AFRICACRYPT 2008, sec. 6 (addition without inversion); RFC 7748, sec. 4.1
+(map to curve25519); RFC 9496, sec. 4.3.1 (ristretto255, for vectors in that encoding).
 """
 
 from __future__ import annotations

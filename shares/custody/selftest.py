@@ -1,7 +1,7 @@
 """Self-test: known answers of everything a split and a recovery rest on, and what this machine can protect.
 
 Source: beside each test; the values are published ones.
-May import: shares.errors, shares.memory, shares.field, shares.documents, shares.sharing, shares.custody.
+May import: shares.errors, shares.memory, shares.field, shares.group, shares.documents, shares.sharing, shares.custody.
 Secret: nothing; the secrets here are published examples or made up. Public: every result.
 Does not: replace the test suite, or measure time.
 """
@@ -35,11 +35,19 @@ from shares.documents.wrapping import (
     open_by_passphrase,
     passphrase_sealer,
 )
-from shares.errors import SharesError
+from shares.errors import SharesError, VerificationError
 from shares.field.gf256 import Field
 from shares.field.irreducible import count_irreducible, irreducibles
+from shares.group.edwards25519 import BASE, SIZE, Point, Scalar
+from shares.group.hashing import SECOND_BASE, SECOND_BASE_LABEL, hashed_point
 from shares.memory import Secret
 from shares.sharing.shamir import evaluate, interpolate
+
+# RFC 8032, sec. 7.1, TEST 1.
+_TEST_1 = "9d61b19deffd5a60ba844af492ec2cc44449c5697b326919703bac031cae7f60"
+_TEST_1_PUBLIC = "d75a980182b10ab7d54bfed3c964073a0ee172f3daa62325af021a68f707511a"
+# BASE + (0, -1): of order 2 L, twice that of the group.
+_MIXED_ORDER = "9599999999999999999999999999999999999999999999999999999999999999"
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,10 +129,24 @@ def _hashes() -> bool:
 
 def _signatures() -> bool:
     """RFC 8032, sec. 7.1, TEST 1: the public half of an Ed25519 key."""
-    key = bytes.fromhex("9d61b19deffd5a60ba844af492ec2cc44449c5697b326919703bac031cae7f60")
-    public = Ed25519PrivateKey.from_private_bytes(key).public_key()
+    public = Ed25519PrivateKey.from_private_bytes(bytes.fromhex(_TEST_1)).public_key()
     raw = public.public_bytes(serialization.Encoding.Raw, serialization.PublicFormat.Raw)
-    return raw.hex() == "d75a980182b10ab7d54bfed3c964073a0ee172f3daa62325af021a68f707511a"
+    return raw.hex() == _TEST_1_PUBLIC
+
+
+def _group() -> bool:
+    """RFC 8032, sec. 7.1, TEST 1: the key's point from its secret scalar. The second base again from its label.
+
+    RFC 9591, sec. 6.1: a point of mixed order, which an older library lets pass, is refused.
+    """
+    lower = bytearray(hashlib.sha512(bytes.fromhex(_TEST_1)).digest()[:SIZE])
+    lower[0], lower[31] = lower[0] & 0xF8, lower[31] & 0x7F | 0x40  # Sec. 5.1.5: clamped.
+    public = Scalar.reduced(bytes(lower) + bytes(SIZE)) * BASE
+    try:
+        Point.decode(bytes.fromhex(_MIXED_ORDER))
+    except VerificationError:
+        return public.encode().hex() == _TEST_1_PUBLIC and hashed_point(SECOND_BASE_LABEL) == SECOND_BASE
+    return False
 
 
 def _encodings() -> bool:
@@ -170,6 +192,7 @@ _TESTS: dict[str, Callable[[], bool]] = {
     "whole job: split, verify and recover 3-of-5": _whole_job,
     "hashes: SHA-256, SHAKE256, HKDF (FIPS 180-4, FIPS 202, RFC 5869)": _hashes,
     "signatures: Ed25519 (RFC 8032)": _signatures,
+    "group: a key's point, the second base, a point to refuse (RFC 8032, RFC 9591)": _group,
     "passphrases: Argon2id (RFC 9106)": _stretching,
     "wrapping: a share under a passphrase and for a card, both suites": _wrapping,
     "encodings: base64url, base32, canonical JSON (RFC 4648, RFC 8785)": _encodings,

@@ -11,6 +11,7 @@ scalars and its multiplications run in constant time (libsodium's own claim); de
 
 from __future__ import annotations
 
+import functools
 import hmac
 import secrets
 from collections.abc import Iterable
@@ -29,7 +30,7 @@ _IDENTITY: Final = (1).to_bytes(SIZE, "little")
 
 @final
 class Scalar:
-    """A number modulo the group's order, in the library's hands alone: it shows nothing, and compares in constant time.
+    """A number modulo the group's order, in the library's hands alone. It shows nothing; comparing is constant time.
 
     Public numbers are written as ``int``; ``+ - *`` between scalars and ``scalar * point`` read as in the papers.
 
@@ -227,18 +228,16 @@ BASE: Final = Point(bytes([0x58]) + bytes([0x66]) * 31)
 
 
 def total(points: Iterable[Point]) -> Point:
-    """Return the sum of one point or more.
+    """Return the sum of one point or more. What the sums on the way are does not matter, the identity included.
 
     Raises:
-        VerificationError: it is the identity, or a sum on the way is.
+        VerificationError: it is the identity.
         ParameterError: there is none to add.
     """
-    added = None
-    for point in points:
-        added = point if added is None else added + point
-    if added is None:
+    encodings = [point.encode() for point in points]
+    if not encodings:
         raise ParameterError("there are no points to add")
-    return added
+    return _not_identity(functools.reduce(sodium.crypto_core_ed25519_add, encodings))
 
 
 def _reduce(octets: bytes) -> bytes:

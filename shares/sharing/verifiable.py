@@ -110,7 +110,7 @@ def public_share(commitments: Sequence[Point], x: int) -> Point:
 
     Raises:
         ParameterError: the index is out of range, or there is no commitment.
-        VerificationError: a sum on the way is the identity, which no honest dealer's is.
+        VerificationError: it is the identity, or a sum on the way is: no honest dealer's are, but for one in 2^252.
 
     Source: Feldman 1987, by Horner's rule.
     """
@@ -251,7 +251,7 @@ def recombine(points: Mapping[int, Point]) -> Point:
 
     Raises:
         ParameterError: an index is out of range, or there is no point.
-        VerificationError: a sum on the way is the identity.
+        VerificationError: the sum is the identity.
 
     Source: Shamir 1979, sec. 2 (Lagrange); Y. Desmedt, Y. Frankel, "Threshold cryptosystems", CRYPTO '89.
     """

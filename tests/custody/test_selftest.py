@@ -8,12 +8,15 @@ from __future__ import annotations
 import base64
 import hashlib
 
+import curve
 import pytest
 
 from shares.custody import selftest as module
 from shares.custody.selftest import selftest
 from shares.errors import ParameterError, VerificationError
 from shares.field.gf256 import Field
+from shares.group import edwards25519
+from shares.group.edwards25519 import BASE
 
 
 def failures() -> list[str]:
@@ -22,7 +25,13 @@ def failures() -> list[str]:
 
 def test_everything_passes_here() -> None:
     assert failures() == []
-    assert len(selftest()) >= 9
+    assert len(selftest()) >= 10
+
+
+def test_the_point_to_refuse_is_what_its_comment_says() -> None:
+    point = curve.add(curve.BASE, (0, curve.P - 1))
+    assert curve.order(point) == 2 * curve.L
+    assert curve.encode(point).hex() == module._MIXED_ORDER
 
 
 def broken(*_: object, **__: object) -> None:
@@ -39,6 +48,12 @@ BREAKAGE = {
     "SHA-256": ((hashlib, "sha256", hashlib.sha512), "hashes"),
     "SHAKE256": ((hashlib, "shake_256", hashlib.shake_128), "hashes"),
     "Argon2id": ((module, "Argon2id", lambda **_: module.HKDF(module.hashes.SHA256(), 32, None, b"")), "passphrases"),
+    "multiplication": ((module, "BASE", BASE + BASE), "group"),
+    "second base": ((module, "SECOND_BASE", BASE), "group"),
+    "points of mixed order": (
+        (edwards25519.sodium, "crypto_core_ed25519_is_valid_point", lambda octets: curve.decode(octets) is not None),
+        "group",
+    ),
     "opening a wrapping": ((module, "open_by_passphrase", broken), "wrapping"),
     "base32": ((base64, "b32encode", base64.b16encode), "encodings"),
     "canonical JSON": ((module, "canonical", lambda value: str(value).encode()), "encodings"),

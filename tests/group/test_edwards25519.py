@@ -258,6 +258,7 @@ class TestPoint:
             lambda: Scalar.of(0) * point,
             lambda: Scalar.of(0) * BASE,
             lambda: total([point, point, Scalar.of(-2 * a) * BASE]),
+            lambda: total([point, Scalar.of(-a) * BASE]),
         ):
             with pytest.raises(VerificationError, match="is the identity"):
                 way()
@@ -266,6 +267,8 @@ class TestPoint:
         points = [Scalar.of(number) * BASE for number in (1, 2, 3)]
         assert total(points) == total(iter(points)) == Scalar.of(6) * BASE
         assert total(points[:1]) == BASE
+        # 1 + 2 - 3 is the identity on the way, and no sum.
+        assert total([*points[:2], Scalar.of(-3) * BASE, points[1], Scalar.of(-2) * BASE, BASE]) == BASE
         with pytest.raises(ParameterError):
             total([])
 
