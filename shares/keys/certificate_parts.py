@@ -264,8 +264,7 @@ def period(start: datetime, end: datetime) -> str:
 def read_issuer(data: bytes, public_key: bytes, *, lists: bool = False) -> x509.Certificate:
     """Read the certificate of an authority whose key is the threshold key.
 
-    A root's own signature is checked. One that stands under another authority is taken as given: that authority's key is
-    not at hand.
+    A root's own signature is checked. What stands under another authority is taken as given: its key is not at hand.
 
     Args:
         data: PEM or DER.
