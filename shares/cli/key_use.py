@@ -1,8 +1,8 @@
 """``shares key commit``, ``open`` and ``finish``: what needs a party's own folder, before and after others answer.
 
 Source: none.
-May import: shares.clock, shares.errors, shares.storage, shares.custody, shares.documents, shares.history, shares.keys,
-shares.cli.
+May import: shares.clock, shares.errors, shares.memory, shares.storage, shares.custody, shares.documents,
+shares.history, shares.keys, shares.cli.
 Secret: party keys, nonces and key share while they are used; the content of an opened message. Public: what is printed.
 Does not: print what was in a message.
 """
@@ -48,7 +48,9 @@ OPEN_NEXT = (
     "messages; each runs `shares task next {path} --mine FOLDER --key KEY` once. As soon as enough have, "
     "`shares key finish` opens the message here, where the key that they seal for lies."
 )
-NOT_FOR_LONG = "Caution: X25519 does not withstand quantum computers. What must stay secret for ten years is not sent to such a key."
+NOT_FOR_LONG = (
+    "Caution: X25519 does not withstand quantum computers. It is not for what must stay secret for ten years."
+)
 VERIFY = {
     "plain": "Next: verify it as others will, for instance with `openssl pkeyutl -verify -rawin`.",
     "openssh": "Next: verify it as others will, with `ssh-keygen -Y verify`.",

@@ -17,14 +17,11 @@ from curve import decode as decode_point
 from keys.joining import born, interpolated, joint, key, public_half, task
 from keys.rounds import Exchange, octets
 
-from shares.documents.key_event import Approved
+from shares.documents.key_event import Approved, KeyBorn
 from shares.documents.key_record import KeyRecord
-from shares.documents.key_share import KeyShare
 from shares.documents.members import encode_bytes
 from shares.documents.task_message import Confirmation, Dealing, Reveal
-from shares.documents.wrapping import card_sealer
 from shares.errors import ParameterError, VerificationError
-from shares.group.edwards25519 import Scalar
 from shares.keys.generation import Contribution
 from shares.keys.joint import JointCourse, JointPart
 from shares.keys.verdict import record_of
@@ -87,23 +84,22 @@ def test_nobody_speaks_who_has_nothing_to_answer() -> None:
     assert exchange.course.speakers(4, exchange.inbox("registrar")) == exchange.task.names
 
 
-def test_what_is_kept_shrinks_to_a_sealed_share() -> None:
+def test_what_is_kept_shrinks_to_a_share() -> None:
     exchange = joint()
     lengths = []
     for round in range(6):
         exchange.speak(round)
         lengths.append(len(exchange.states["light-house"]))
-    assert lengths[:5] == [0, 6 * 32, 6 * 32, 6 * 32, 32]
-    KeyShare.parse(exchange.states["light-house"])
+    # Both polynomials while they may be asked for, then what this party deals to itself, then its key share.
+    assert lengths == [0, 6 * 32, 6 * 32, 6 * 32, 32, 32]
+    assert exchange.states["light-house"] == born(exchange, "light-house")[1].to_bytes(32, "little")
 
 
-def test_finishing_twice_gives_the_same_files() -> None:
-    exchange = joint().run()
-    first, second = (exchange.outcome("dry-dock") for _ in range(2))
-    assert first.files == second.files
-    assert first.event == second.event
-    assert first.event is not None
-    assert first.event.record == KeyRecord.parse(first.files[-1].data).fingerprint
+def test_what_comes_of_it_is_told_to_the_journal() -> None:
+    outcome = joint().run().outcome("dry-dock")
+    assert isinstance(outcome.event, KeyBorn)
+    record = KeyRecord.parse(outcome.files[-1].data)
+    assert (outcome.event.record, outcome.event.origin, outcome.event.epoch) == (record.fingerprint, "joint", 1)
 
 
 def test_the_words_say_what_to_compare() -> None:
@@ -139,20 +135,18 @@ def test_a_task_that_no_key_can_come_of_is_refused() -> None:
         JointCourse(task(2, 65))
 
 
-def test_a_kept_share_of_another_generation_is_refused() -> None:
+def test_a_kept_share_that_does_not_fit_is_refused() -> None:
     exchange, other = joint().run(), joint().run()
-    exchange.states["registrar"] = other.states["registrar"]
-    with pytest.raises(VerificationError, match="belongs to another record"):
-        exchange.outcome("registrar")
+    for wrong in (other.states["registrar"], exchange.states["dry-dock"], bytes(32)):
+        exchange.states["registrar"] = wrong
+        with pytest.raises(VerificationError, match="does not fit the record"):
+            exchange.outcome("registrar")
 
 
-def test_a_kept_share_of_a_neighbour_is_refused() -> None:
-    exchange = joint().run()
-    record, share = born(exchange, "dry-dock")
-    seal = card_sealer(exchange.keys["registrar"].card.recipient())
-    wrong = KeyShare.wrap(Scalar.of(share), record, "registrar", seal)
-    exchange.states["registrar"] = wrong.to_file()
-    with pytest.raises(VerificationError, match="does not fit the record"):
+def test_nothing_is_finished_before_all_have_signed() -> None:
+    exchange = joint(cheats={(5, "dry-dock"): lambda exchange, said: None}).run()
+    assert exchange.silent == ["dry-dock"]
+    with pytest.raises(VerificationError, match="does not fit the record that all have signed"):
         exchange.outcome("registrar")
 
 
