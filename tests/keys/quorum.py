@@ -28,7 +28,7 @@ from shares.group.proofs import prove_equal
 from shares.history.rounds import Inbox, Received
 from shares.keys.opening import OpeningPart, combine
 from shares.keys.opening_task import new_opening
-from shares.keys.partial import PARTIAL_SIZE, partial_result, proof_context
+from shares.keys.partial import partial_result, proof_context
 from shares.memory import Secret
 from shares.sharing.verifiable import evaluate, feldman, polynomial
 
@@ -223,7 +223,7 @@ def bad_partials(quorum: Quorum, task: Task, message: bytes) -> dict[str, Secret
         "without its end": good[:-1],
         "with something at its end": good + b"\0",
         "nothing": b"",
-        "zeros": bytes(PARTIAL_SIZE),
+        "zeros": bytes(96),
         "the identity": b"\1" + bytes(31) + good[32:],
         "nothing that opens": None,
     }

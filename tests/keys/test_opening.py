@@ -45,7 +45,6 @@ from shares.errors import (
     ParameterError,
     SharesError,
     VerificationError,
-    WrongKeyError,
 )
 from shares.group.edwards25519 import BASE, Point, Scalar
 from shares.group.montgomery import lift, public_of
@@ -53,7 +52,6 @@ from shares.keys import opening_task
 from shares.keys.hpke import AEADS
 from shares.keys.opening import OpeningCourse, combine, outcome
 from shares.keys.own_share import own_share
-from shares.keys.partial import PARTIAL_SIZE
 from shares.keys.public_key import sealing_pem
 from shares.memory import Secret
 from shares.sharing.verifiable import recombine
@@ -290,17 +288,18 @@ def test_a_custodian_uses_the_right_key_share_alone(quorum, tmp_path) -> None:
             quorum.scalars["south-pier"], record, "north-pier", card_sealer(card("north-pier").recipient(), "x25519")
         )
         for given, of, name, opener, error in (
-            (share, record, "south-pier", key.open, VerificationError),
-            (share, record, "dry-dock", key.open, ParameterError),
-            (share, record, "north-pier", other_key.open, WrongKeyError),
-            (share, Quorum(tmp_path / "other").record, "north-pier", key.open, VerificationError),
-            (share.model_copy(update={"epoch": 2}), record, "north-pier", key.open, VerificationError),
-            (share.model_copy(update={"index": 2}), record, "north-pier", key.open, VerificationError),
-            (share.model_copy(update={"need": 3}), record, "north-pier", key.open, VerificationError),
-            (flipped_share(share), record, "north-pier", key.open, VerificationError),
-            (swapped, record, "north-pier", key.open, VerificationError),
+            (share, record, "south-pier", key.open, "not that of south-pier"),
+            (share, record, "dry-dock", key.open, "dry-dock is no custodian"),
+            (share, record, "north-pier", other_key.open, "wrapped for the card"),
+            (share, Quorum(tmp_path / "other").record, "north-pier", key.open, "another key or epoch"),
+            (share.model_copy(update={"epoch": 2}), record, "north-pier", key.open, "another key or epoch"),
+            (share.model_copy(update={"index": 2}), record, "north-pier", key.open, "not that of north-pier"),
+            (share.model_copy(update={"need": 3}), record, "north-pier", key.open, "not that of north-pier"),
+            (share.model_copy(update={"label": "x"}), record, "north-pier", key.open, "damaged or edited"),
+            (flipped_share(share), record, "north-pier", key.open, "were changed"),
+            (swapped, record, "north-pier", key.open, "does not fit the public commitments"),
         ):
-            with pytest.raises(error):
+            with pytest.raises(SharesError, match=error):
                 own_share(given, of, name, opener)
     message = message_of(quorum)
     task = quorum.task(message)
@@ -371,7 +370,7 @@ def test_a_custodian_is_told_what_they_agree_to(quorum) -> None:
 def test_the_receiver_keeps_what_opens_until_it_is_used(quorum) -> None:
     message = message_of(quorum)
     task = quorum.task(message)
-    given = quorum.spoken(task, message, *quorum.names) | {"light-house": Secret(PARTIAL_SIZE)}
+    given = quorum.spoken(task, message, *quorum.names) | {"light-house": Secret(96)}
     inbox = told(task, message, given)
     kept = quorum.part(task, "auditor-east").finish(inbox, Secret(0), [{}, given])
     assert (kept.ends, kept.event, kept.files) == (False, None, ())
