@@ -19,7 +19,7 @@ from shares.documents.task import Joining, Opening, Signing, Task
 from shares.documents.task_message import MAX_ROUNDS
 from shares.errors import ParameterError, SharesError
 from shares.history.exchange import Problem, TaskFolder
-from shares.history.next import Standing, Turn, finish, speak, standing, turn
+from shares.history.next import Standing, Turn, close, finish, speak, standing, turn
 from shares.history.rounds import Course, Failure, Outcome, Part
 from shares.history.steps import OwnSteps
 from shares.keys.parts import course_of, part_of
@@ -74,6 +74,9 @@ def take_next(
     own, course = OwnSteps(mine, folder.task, key.card), course_of(folder)
     call = _Call(folder, course, own, yes=yes, as_json=as_json)
     at = turn(folder, course, own)
+    if at.doing == "erase":
+        close(own)
+        at = turn(folder, course, own)
     if at.doing in ("speak", "repeat", "finish"):
         with opening((), passphrase_files, descriptors) as at_hand:
             opened = at_hand.party(key)
@@ -205,7 +208,7 @@ def _warn_of(problems: Sequence[Problem]) -> None:
 
 
 def _round(found: Standing, round: int) -> str:
-    return f"round {round + 1} of {len(found.names)} ({found.names[round]})"
+    return f"round {round}, {found.names[round]}"
 
 
 def _state(found: Standing) -> str:
@@ -256,8 +259,8 @@ def _task_lines(task: Task) -> Iterator[str]:
 
 
 def _standing_lines(task: Task, found: Standing) -> Iterator[str]:
-    for round, name in enumerate(found.names[: found.round], start=1):
-        yield f"Round {round} of {len(found.names)} ({name}): complete."
+    for round, name in enumerate(found.names[: found.round]):
+        yield f"Round {round}, {name}: complete."
     if found.failure:
         yield from _failure_lines(found.failure)
     elif found.complete:

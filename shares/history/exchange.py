@@ -201,6 +201,7 @@ class TaskFolder:
         """
         folder, data = self.path / MESSAGES_NAME, message.to_file()
         make_folder(folder)
+        _check_folder(folder)
         for number in itertools.count(1):
             path = folder / f"{message.round}-{message.sender}{'' if number == 1 else f'-{number}'}.json"
             if not os.path.lexists(path):
@@ -214,16 +215,10 @@ class TaskFolder:
         """Return whatever could be a message, by name."""
         folder = self.path / MESSAGES_NAME
         try:
-            if not stat.S_ISDIR(os.lstat(folder).st_mode):
-                raise StorageError(
-                    "is a link or file, not a folder",
-                    where=os.fspath(folder),
-                    hint="ask for the whole folder of the task",
-                )
+            _check_folder(folder)
             with os.scandir(folder) as entries:
-                names = list(
-                    itertools.islice((one.name for one in entries if _may_be_message(one.name)), MAX_MESSAGES + 1)
-                )
+                possible = (one.name for one in entries if _may_be_message(one.name))
+                names = list(itertools.islice(possible, MAX_MESSAGES + 1))
         except FileNotFoundError:
             return []
         except StorageError:
@@ -262,6 +257,19 @@ class TaskFolder:
         made, due = clock.to_text(message.created), clock.to_text(self.task.due)
         what = f"{message.sender}'s message of round {message.round} is late: made {made}, and the task was due {due}"
         return Problem("late", what, message.sender, stops=True)
+
+
+def _check_folder(folder: Path) -> None:
+    """Refuse a link in the place of the folder of messages: it could lead anywhere.
+
+    Raises:
+        StorageError: it is a link or a file.
+        OSError: as the system says.
+    """
+    if not stat.S_ISDIR(os.lstat(folder).st_mode):
+        raise StorageError(
+            "is a link or file, not a folder", where=os.fspath(folder), hint="ask for the whole folder of the task"
+        )
 
 
 def conflict_words(round: int, sender: str) -> str:

@@ -26,7 +26,7 @@ from shares.history.rounds import Course, Failure, Inbox, Outcome, Part, Receive
 from shares.history.steps import OwnSteps
 from shares.memory import Secret
 
-Doing: TypeAlias = Literal["speak", "repeat", "wait", "finish", "done", "failed"]
+Doing: TypeAlias = Literal["speak", "repeat", "wait", "finish", "erase", "done", "failed"]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -66,8 +66,9 @@ class Turn:
     """What one party is to do now.
 
     Attributes:
-        doing: say something in ``round``; send again what was said there; wait; bring the task to its end; nothing,
-            since it is over for this party; or nothing, since it has failed.
+        doing: say something in ``round``; send again what was said there; wait; bring the task to its end; erase what a
+            run that was stopped there has left; nothing, since it is over for this party; or nothing, since it has
+            failed.
         round: which.
     """
 
@@ -131,6 +132,8 @@ def turn(folder: TaskFolder, course: Course, own: OwnSteps) -> Turn:
     found = standing(course, reading)
     own.check_seen(found.inbox, found.round)
     if own.done() is not None:
+        if own.remains():
+            return Turn("erase", found.round, found)
         repeat = own.name in found.awaited and found.round in own.messages()
         return Turn("repeat" if repeat else "done", found.round, found)
     if found.inbox.content is None:
@@ -235,7 +238,7 @@ def opened(
 
 
 def close(own: OwnSteps) -> None:
-    """End a task whose outcome did not, once what this party keeps has been used.
+    """End a task for one party, and erase what it keeps: after an outcome that did not, or a run that was stopped.
 
     Args:
         own: the party's steps.
@@ -305,7 +308,7 @@ def _enter(mine: Path, event: Event | None, key: OpenPartyKey) -> None:
 
 
 def _stopped(problems: Sequence[Problem]) -> Failure | None:
-    found = next((problem for problem in problems if problem.stops and problem.kind != "content"), None)
+    found = next((problem for problem in problems if problem.stops), None)
     if found is None:
         return None
     return Failure(found.sender if found.kind == "late" else None, found.what)

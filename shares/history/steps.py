@@ -254,8 +254,12 @@ class OwnSteps:
             done = TaskDone(kind="task-done", version=1, task=self.task.digest(), party=self.name, messages=messages)
             make_folder(self.folder)
             write_new(self.folder / DONE_NAME, done.to_file(), secret=False)
-        for path in [self.folder / name for name in self._names() if _ERASED.fullmatch(name)] + self.leftovers():
+        for path in self.remains():
             discard(path)
+
+    def remains(self) -> list[Path]:
+        """List the files that are erased when the task is over for this party."""
+        return [*(self.folder / name for name in self._names() if _ERASED.fullmatch(name)), *self.leftovers()]
 
     def leftovers(self) -> list[Path]:
         """List what runs that were stopped have left; sealed, where it is a state."""

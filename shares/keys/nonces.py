@@ -2,7 +2,8 @@
 
 Source: RFC 9591, sec. 5.1 and 5.2 (nonces are made beforehand, used once and deleted); D. Boneh, V. Shoup, "A Graduate
     Course in Applied Cryptography", sec. 19.2 (two signatures with one nonce give the key away); rename(2), stat(2).
-May import: shares.errors, shares.memory, shares.storage, shares.documents, shares.group.edwards25519, .frost.
+May import: shares.errors, shares.memory, shares.storage, shares.streams, shares.documents, .frost,
+    shares.group.edwards25519.
 Secret: nonces, sealed on disk for the signer's own card; the key share and party key are passed through. Public:
 commitments, names of files, how many there are.
 Does not: notice that a whole disk, file system or virtual machine was put back to an earlier time: nothing on it can.
@@ -39,6 +40,7 @@ from shares.keys import frost
 from shares.keys.frost import Nonces
 from shares.memory import Secret
 from shares.storage import empty, make_folder, read_file, rename_new, sync, write_new
+from shares.streams import refusing
 
 _NEW: Final = "make new ones with `shares key commit`, and use them in a new task"
 _KEPT_MODE: Final = 0o600
@@ -179,21 +181,31 @@ class NonceStore:
             )
 
     def _spend(self, name: str, wanted: Path) -> None:
-        """Rename a pair that was never used. Another process may do the same right now: then nothing happens here."""
+        """Rename a pair that was never used, unless another process does so right now."""
         path = self._unspent(name)
         try:
             pair = self._checked(NoncePair.parse(read_file(path, limit=MAX_FILE), where=os.fspath(path)), name)
-            self._check_mark(path, name, pair.batch)
-            rename_new(path, wanted.name)
+            is_original = self._is_original(path, pair)
+            if is_original:
+                rename_new(path, wanted.name)
         except StorageError:
             if os.path.lexists(path):
                 raise
-            if not self._spent(name):
-                raise VerificationError(
-                    "the nonces of these commitments do not lie here",
-                    where=os.fspath(self.folder),
-                    hint=f"they were made elsewhere, or removed: {_NEW}",
-                ) from None
+            is_original = None
+        if is_original or self._spent(name):
+            return
+        where = os.fspath(self.folder)
+        if is_original is None:
+            raise VerificationError(
+                "the nonces of these commitments do not lie here",
+                where=where,
+                hint=f"they were made elsewhere, or removed: {_NEW}",
+            )
+        raise VerificationError(
+            "this folder was copied or restored: its nonces are not safe",
+            where=where,
+            hint=f"they may have been used already, where it was copied from: {_NEW}",
+        )
 
     def _checked(self, pair: NoncePair, name: str) -> NoncePair:
         """Refuse nonces of another key, epoch, signer or name than the file is taken for."""
@@ -204,18 +216,14 @@ class NonceStore:
             )
         return pair
 
-    def _check_mark(self, path: Path, name: str, batch: str) -> None:
-        listed = self._marks(batch)
-        known = {}
-        if os.path.lexists(listed):
-            marks = NonceMarks.parse(read_file(listed, limit=MAX_FILE), where=os.fspath(listed)).marks
-            known = {one.pair: one.mark for one in marks}
-        if name not in known or known[name] not in (None, _mark(path)):
-            raise VerificationError(
-                "this folder was copied or restored: its nonces are not safe",
-                where=os.fspath(self.folder),
-                hint=f"they may have been used already, where it was copied from: {_NEW}",
-            )
+    def _is_original(self, path: Path, pair: NoncePair) -> bool:
+        """Say whether a file is the very one that was written, as far as the medium tells."""
+        listed, name = self._marks(pair.batch), pair_id(pair.hiding, pair.binding)
+        if not os.path.lexists(listed):
+            return False
+        marks = NonceMarks.parse(read_file(listed, limit=MAX_FILE), where=os.fspath(listed)).marks
+        known = {one.pair: one.mark for one in marks}
+        return name in known and known[name] in (None, _mark(path))
 
 
 def _mark(path: Path) -> bytes | None:
@@ -224,7 +232,8 @@ def _mark(path: Path) -> bytes | None:
 
     Source: stat(2): st_ino; st_ctime, which a file gets when it is written, renamed or restored, and which nobody sets.
     """
-    status = path.lstat()
+    with refusing(path):
+        status = path.lstat()
     if stat.S_IMODE(status.st_mode) != _KEPT_MODE:
         return None
     return sha256(b"shares/v1/nonce-mark", f"{status.st_ino}:{status.st_ctime_ns}".encode("ascii"))

@@ -1,7 +1,7 @@
 """Which course and which part belong to a task: one line for each purpose.
 
 Source: FORMAT_KEYS.md, sec. 23.
-May import: shares.errors, shares.storage, shares.documents, shares.history, .opening.
+May import: shares.errors, shares.storage, shares.documents, shares.history, .joint, .opening, .signing.
 Secret: the party key, passed through. Public: the task, the record.
 Does not: know what happens in any of them.
 """
@@ -16,10 +16,12 @@ from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Joining, Opening, Signing
-from shares.errors import ParameterError
+from shares.errors import ParameterError, StorageError
 from shares.history.exchange import TaskFolder
 from shares.history.rounds import Course, Part
+from shares.keys.joint import JointCourse, JointPart
 from shares.keys.opening import OpeningCourse, OpeningPart
+from shares.keys.signing import SigningCourse, SigningPart
 from shares.storage import read_file
 
 SHARE_NAME = "share.json"
@@ -36,6 +38,10 @@ def course_of(folder: TaskFolder) -> Course:
     """
     task = folder.task
     match task.work:
+        case Joining():
+            return JointCourse(task)
+        case Signing():
+            return SigningCourse(task, _record(folder))
         case Opening():
             return OpeningCourse(task, _record(folder))
 
@@ -56,6 +62,15 @@ def part_of(folder: TaskFolder, name: str, mine: Path, key: OpenPartyKey) -> Par
     """
     task = folder.task
     match task.work:
+        case Joining():
+            return JointPart(task, name, key)
+        case Signing():
+            share = _share(mine)
+            if share is None:
+                raise StorageError(
+                    "there is no key share", where=os.fspath(mine / SHARE_NAME), hint="name your folder of this key"
+                )
+            return SigningPart(task, name, _record(folder), share, key, mine)
         case Opening():
             return OpeningPart(task, name, _record(folder), _share(mine), key, mine)
 

@@ -14,6 +14,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import Any
 
 from parties import card, unlocked
 
@@ -35,22 +36,22 @@ TELLTALE = bytes.fromhex("deadbeefcafe5eed")
 """How every secret number begins, so that a search finds it."""
 
 
-def new_task(names: Sequence[str] = NAMES, *, due: datetime = DUE, created: datetime = MADE) -> Task:
+def new_task(names: Sequence[str] = NAMES, **changes: Any) -> Task:
     """A task that these parties do together, asked for by the harbour office."""
     with unlocked("harbour-office") as key:
-        return Task.signed_by(
-            key,
-            key=bytes(16),
-            epoch=1,
-            record=None,
-            label="Harbour draw",
-            work=Joining(what="join", need=2),
-            parties=tuple(TaskParty(name=name, card=card(name)) for name in names),
-            remark=None,
-            nonce=secrets.token_bytes(32),
-            created=created,
-            due=due,
-        )
+        members: dict[str, Any] = {
+            "key": bytes(16),
+            "epoch": 1,
+            "record": None,
+            "label": "Harbour draw",
+            "work": Joining(what="join", need=2),
+            "parties": tuple(TaskParty(name=name, card=card(name)) for name in names),
+            "remark": None,
+            "nonce": secrets.token_bytes(32),
+            "created": MADE,
+            "due": DUE,
+        }
+        return Task.signed_by(key, **{**members, **changes})
 
 
 class Draw:
@@ -156,6 +157,8 @@ class Desk:
                 engine.speak(TaskFolder(self.folder), at, self.course, self.part, self.own(), opened)
             elif at.doing == "finish":
                 engine.finish(at, self.course, self.part, self.own(), opened)
+            elif at.doing == "erase":
+                engine.close(self.own())
         return at.doing
 
     def message(self, round: int) -> TaskMessage:
@@ -192,4 +195,6 @@ def to_the_end(machines: dict[str, Desk]) -> None:
         for desk in machines.values():
             desk.take()
         exchange(machines)
+        if {desk.turn().doing for desk in machines.values()} == {"done"}:
+            return
     assert {desk.turn().doing for desk in machines.values()} == {"done"}

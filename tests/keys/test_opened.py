@@ -1,6 +1,6 @@
 """A custodian's memory: one encapsulated key serves one message, whatever stops or races the run.
 
-Checked against: the sender's plaintext (``quorum``). What a memory cannot know is tested as well, as its limit.
+Checked against: the sender's plaintext (``openings``). What a memory cannot know is tested as well, as its limit.
 """
 
 from __future__ import annotations
@@ -11,7 +11,7 @@ import shutil
 from pathlib import Path
 
 import pytest
-from keys.quorum import (
+from keys.openings import (
     PLAINTEXT,
     Quorum,
     asked,

@@ -1,7 +1,7 @@
 """Opening by a quorum: what opens, what nobody serves, who takes part, what agreeing means, what stays in the dark.
 
 Checked against: RFC 9180, appendix A, with the receiver's key among custodians; senders of ``cryptography`` and of
-``quorum``; the curve in plain integers (``curve``), for points that no honest sender has.
+``openings``; the curve in plain integers (``curve``), for points that no honest sender has.
 """
 
 from __future__ import annotations
@@ -18,7 +18,7 @@ import curve
 import pytest
 from cryptography.hazmat.primitives import hpke
 from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PublicKey
-from keys.quorum import (
+from keys.openings import (
     DUE,
     PLAINTEXT,
     Quorum,

@@ -1,6 +1,6 @@
 """Partial results that are no good: each is named, and set aside where enough others are there.
 
-Checked against: a sender that shares no code with the package (``quorum``); the sender's plaintext is what comes out.
+Checked against: a sender that shares no code with the package (``openings``); the sender's plaintext is what comes out.
 """
 
 from __future__ import annotations
@@ -13,7 +13,7 @@ import curve
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from keys.quorum import (
+from keys.openings import (
     PLAINTEXT,
     Quorum,
     asked,
