@@ -110,6 +110,7 @@ def test_a_custodian_may_receive(quorum) -> None:
     assert course.speakers(0, asked(task, message)) == ("north-pier",)
     assert course.speakers(1, asked(task, message)) == ("north-pier", "south-pier")
     assert quorum.opened(task, message, quorum.spoken(task, message, "north-pier", "south-pier")) == PLAINTEXT
+    assert "You are the receiver" in " ".join(quorum.part(task, "north-pier").prospect(1, asked(task, message)))
     assert "a custodian of this key" in " ".join(quorum.part(task, "south-pier").prospect(1, asked(task, message)))
 
 
