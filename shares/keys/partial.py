@@ -19,7 +19,7 @@ from shares.documents.base import canonical
 from shares.documents.key_record import KeyRecord
 from shares.documents.task import Task
 from shares.group.edwards25519 import SIZE, Point, Scalar
-from shares.group.montgomery import public_of
+from shares.group.montgomery import agreed
 from shares.group.proofs import Proof, check_equal, prove_equal
 from shares.memory import Secret
 from shares.sharing.verifiable import public_share, recombine
@@ -79,4 +79,4 @@ def agreement(results: Mapping[int, Point]) -> Secret:
 
     Source: RFC 7748, sec. 4.1 and 6.1: u of s E.
     """
-    return Secret.of(public_of(recombine(results)))
+    return Secret.of(agreed(recombine(results)))
