@@ -142,7 +142,7 @@ class OpeningPart:
             "see that. Agree only for a receiver who may read whatever was encrypted to this key.",
             "Caution: X25519 does not withstand quantum computers. It is not for secrets that must last ten years.",
         ]
-        if known is not None:
+        if known is not None and known.task != task.digest():  # A run of this task that was stopped is no news.
             when = clock.to_text(known.time)
             lines.insert(3, f"You have helped to open this very message before, for {known.receiver}, at {when}.")
         return lines
@@ -150,6 +150,8 @@ class OpeningPart:
     def _receiver_words(self) -> str:
         task, work = self._course.task, self._work
         party = task.party(work.receiver)
+        if work.receiver == self._me:
+            return "You are the receiver, who alone learns what is in it."
         if work.receiver in self._course.custodians or party is None:
             return f"The receiver, who alone learns what is in it, is {work.receiver}, a custodian of this key."
         return (

@@ -1,7 +1,7 @@
 """HPKE's receiving side, with the receiver's key among custodians.
 
 Checked against: RFC 9180, appendix A (base mode, X25519), every value of the KEM and of the key schedule;
-``cryptography``'s own X25519, HPKE sender; a sender written with ``hashlib`` and ``hmac`` (``quorum``).
+``cryptography``'s own X25519, HPKE sender; a sender written with ``hashlib`` and ``hmac`` (``openings``).
 """
 
 from __future__ import annotations
@@ -14,7 +14,7 @@ from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PrivateKey, X
 from cryptography.hazmat.primitives.ciphers.aead import AESGCM
 from hypothesis import given
 from hypothesis import strategies as st
-from keys.quorum import clamped, octets, sealed, sent
+from keys.openings import clamped, octets, sealed, sent
 
 from shares.errors import VerificationError
 from shares.group.edwards25519 import BASE, Scalar

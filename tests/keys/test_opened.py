@@ -1,6 +1,6 @@
 """A custodian's memory: one encapsulated key serves one message, whatever stops or races the run.
 
-Checked against: the sender's plaintext (``quorum``). What a memory cannot know is tested as well, as its limit.
+Checked against: the sender's plaintext (``openings``). What a memory cannot know is tested as well, as its limit.
 """
 
 from __future__ import annotations
@@ -11,7 +11,7 @@ import shutil
 from pathlib import Path
 
 import pytest
-from keys.quorum import (
+from keys.openings import (
     PLAINTEXT,
     Quorum,
     asked,
@@ -57,6 +57,8 @@ def test_the_same_message_again_is_allowed_and_said(quorum) -> None:
     part = quorum.part(task, "north-pier")
     assert not any("very message before" in line for line in part.prospect(1, asked(task, message)))
     quorum.spoken(task, message, "north-pier")
+    # A run that was stopped begins again: that is no second time.
+    assert not any("very message before" in line for line in part.prospect(1, asked(task, message)))
     (path,) = (quorum.folders["north-pier"] / "opened").iterdir()
     before = path.read_bytes()
     again = quorum.task(message, receiver="auditor-west")

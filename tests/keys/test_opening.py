@@ -1,7 +1,7 @@
 """Opening by a quorum: what opens, what nobody serves, who takes part, what agreeing means, what stays in the dark.
 
 Checked against: RFC 9180, appendix A, with the receiver's key among custodians; senders of ``cryptography`` and of
-``quorum``; the curve in plain integers (``curve``), for points that no honest sender has.
+``openings``; the curve in plain integers (``curve``), for points that no honest sender has.
 """
 
 from __future__ import annotations
@@ -18,7 +18,7 @@ import curve
 import pytest
 from cryptography.hazmat.primitives import hpke
 from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PublicKey
-from keys.quorum import (
+from keys.openings import (
     DUE,
     PLAINTEXT,
     Quorum,
@@ -45,7 +45,6 @@ from shares.errors import (
     ParameterError,
     SharesError,
     VerificationError,
-    WrongKeyError,
 )
 from shares.group.edwards25519 import BASE, Point, Scalar
 from shares.group.montgomery import lift, public_of
@@ -53,7 +52,6 @@ from shares.keys import opening_task
 from shares.keys.hpke import AEADS
 from shares.keys.opening import OpeningCourse, combine, outcome
 from shares.keys.own_share import own_share
-from shares.keys.partial import PARTIAL_SIZE
 from shares.keys.public_key import sealing_pem
 from shares.memory import Secret
 from shares.sharing.verifiable import recombine
@@ -112,6 +110,7 @@ def test_a_custodian_may_receive(quorum) -> None:
     assert course.speakers(0, asked(task, message)) == ("north-pier",)
     assert course.speakers(1, asked(task, message)) == ("north-pier", "south-pier")
     assert quorum.opened(task, message, quorum.spoken(task, message, "north-pier", "south-pier")) == PLAINTEXT
+    assert "You are the receiver" in " ".join(quorum.part(task, "north-pier").prospect(1, asked(task, message)))
     assert "a custodian of this key" in " ".join(quorum.part(task, "south-pier").prospect(1, asked(task, message)))
 
 
@@ -290,17 +289,18 @@ def test_a_custodian_uses_the_right_key_share_alone(quorum, tmp_path) -> None:
             quorum.scalars["south-pier"], record, "north-pier", card_sealer(card("north-pier").recipient(), "x25519")
         )
         for given, of, name, opener, error in (
-            (share, record, "south-pier", key.open, VerificationError),
-            (share, record, "dry-dock", key.open, ParameterError),
-            (share, record, "north-pier", other_key.open, WrongKeyError),
-            (share, Quorum(tmp_path / "other").record, "north-pier", key.open, VerificationError),
-            (share.model_copy(update={"epoch": 2}), record, "north-pier", key.open, VerificationError),
-            (share.model_copy(update={"index": 2}), record, "north-pier", key.open, VerificationError),
-            (share.model_copy(update={"need": 3}), record, "north-pier", key.open, VerificationError),
-            (flipped_share(share), record, "north-pier", key.open, VerificationError),
-            (swapped, record, "north-pier", key.open, VerificationError),
+            (share, record, "south-pier", key.open, "not that of south-pier"),
+            (share, record, "dry-dock", key.open, "dry-dock is no custodian"),
+            (share, record, "north-pier", other_key.open, "wrapped for the card"),
+            (share, Quorum(tmp_path / "other").record, "north-pier", key.open, "another key or epoch"),
+            (share.model_copy(update={"epoch": 2}), record, "north-pier", key.open, "another key or epoch"),
+            (share.model_copy(update={"index": 2}), record, "north-pier", key.open, "not that of north-pier"),
+            (share.model_copy(update={"need": 3}), record, "north-pier", key.open, "not that of north-pier"),
+            (share.model_copy(update={"label": "x"}), record, "north-pier", key.open, "damaged or edited"),
+            (flipped_share(share), record, "north-pier", key.open, "were changed"),
+            (swapped, record, "north-pier", key.open, "does not fit the public commitments"),
         ):
-            with pytest.raises(error):
+            with pytest.raises(SharesError, match=error):
                 own_share(given, of, name, opener)
     message = message_of(quorum)
     task = quorum.task(message)
@@ -371,7 +371,7 @@ def test_a_custodian_is_told_what_they_agree_to(quorum) -> None:
 def test_the_receiver_keeps_what_opens_until_it_is_used(quorum) -> None:
     message = message_of(quorum)
     task = quorum.task(message)
-    given = quorum.spoken(task, message, *quorum.names) | {"light-house": Secret(PARTIAL_SIZE)}
+    given = quorum.spoken(task, message, *quorum.names) | {"light-house": Secret(96)}
     inbox = told(task, message, given)
     kept = quorum.part(task, "auditor-east").finish(inbox, Secret(0), [{}, given])
     assert (kept.ends, kept.event, kept.files) == (False, None, ())

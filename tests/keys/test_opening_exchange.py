@@ -1,6 +1,6 @@
 """Openings from folder to folder: the engine of tasks, sealed boxes, files and journals, with the parts of an opening.
 
-Checked against: a sender that shares no code with the package (``quorum``).
+Checked against: a sender that shares no code with the package (``openings``).
 """
 
 from __future__ import annotations
@@ -11,7 +11,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 import pytest
-from keys.quorum import (
+from keys.openings import (
     PLAINTEXT,
     Quorum,
     message_of,

@@ -1,6 +1,6 @@
 """Partial results that are no good: each is named, and set aside where enough others are there.
 
-Checked against: a sender that shares no code with the package (``quorum``); the sender's plaintext is what comes out.
+Checked against: a sender that shares no code with the package (``openings``); the sender's plaintext is what comes out.
 """
 
 from __future__ import annotations
@@ -13,7 +13,7 @@ import curve
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from keys.quorum import (
+from keys.openings import (
     PLAINTEXT,
     Quorum,
     asked,
@@ -32,7 +32,7 @@ from shares.errors import (
 )
 from shares.group.montgomery import lift
 from shares.keys.opening import combine
-from shares.keys.partial import PARTIAL_SIZE, checked_result, partial_result, proof_context
+from shares.keys.partial import checked_result, partial_result, proof_context
 from shares.memory import Secret
 
 
@@ -63,7 +63,7 @@ def test_a_bad_partial_result_is_named(quorum) -> None:
 def test_all_bad_ones_are_named(quorum) -> None:
     message = message_of(quorum)
     task = quorum.task(message)
-    given = quorum.spoken(task, message, "light-house") | {"north-pier": None, "south-pier": Secret(PARTIAL_SIZE)}
+    given = quorum.spoken(task, message, "light-house") | {"north-pier": None, "south-pier": Secret(96)}
     with pytest.raises(NotEnoughSharesError, match=r"north-pier does not: .*south-pier does not: ") as refusal:
         combine(task, quorum.record, told(task, message, given), [{}, given])
     assert "new task" in str(refusal.value.hint)
@@ -87,12 +87,12 @@ def test_each_byte_of_a_partial_result_counts(quorum) -> None:
     context = proof_context(task, quorum.record, index)
     good = octets(partial_result(quorum.scalars["north-pier"], point, context))
     assert checked_result(Secret.of(good), quorum.record, index, point, context)
-    for bit in range(0, 8 * PARTIAL_SIZE, 7):  # Every byte, and every place in a byte.
+    for bit in range(8 * 7):  # Every byte, and every place in a byte.
         with pytest.raises(VerificationError):
             checked_result(Secret.of(flipped(good, [bit])), quorum.record, index, point, context)
 
 
-@given(bits=st.sets(st.integers(0, 8 * PARTIAL_SIZE - 1), min_size=1, max_size=20))
+@given(bits=st.sets(st.integers(0, 8 * 96 - 1), min_size=1, max_size=20))
 def test_no_alteration_of_a_partial_result_passes(tmp_path_factory, bits) -> None:
     quorum = Quorum(tmp_path_factory.mktemp("k"))
     point = lift(message_of(quorum)[:32])
