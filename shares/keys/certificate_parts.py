@@ -17,8 +17,7 @@ from typing import Final, TypeVar
 
 from cryptography import x509
 from cryptography.exceptions import UnsupportedAlgorithm
-from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
-from cryptography.utils import CryptographyDeprecationWarning
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey, Ed25519PublicKey
 
 from shares import clock
 from shares.documents.members import check_text
@@ -40,16 +39,15 @@ KEY_USES: Final = (
 )
 """What a key may be used for, as the library names it (RFC 5280, sec. 4.2.1.3)."""
 _ALGORITHM: Final = bytes.fromhex("300506032b6570")  # SEQUENCE { 1.3.101.112 }, without parameters (RFC 8410, sec. 3).
-_VERSION_3: Final = bytes.fromhex("a003020102")  # [0] { INTEGER 2 } (RFC 5280, sec. 4.1.2.1).
-_VERSION_2: Final = bytes.fromhex("020101")  # INTEGER 1 (RFC 5280, sec. 5.1.2.1).
 _SIGNATURE_SIZE = 64
 _LIBRARY_REFUSES = (
     ValueError,
     TypeError,
     OverflowError,
+    LookupError,  # Of a name in a kind of string that it does not know, up to its version 48.
     NotImplementedError,
     UnsupportedAlgorithm,
-    CryptographyDeprecationWarning,
+    Warning,
     x509.InvalidVersion,
     x509.DuplicateExtension,
     x509.UnsupportedGeneralNameType,
@@ -66,7 +64,7 @@ def reading(what: str) -> Iterator[None]:
         DocumentError: the bytes are not what they should be.
     """
     with warnings.catch_warnings():
-        warnings.simplefilter("error", CryptographyDeprecationWarning)
+        warnings.simplefilter("error")
         try:
             yield
             return
@@ -92,14 +90,18 @@ def whole(tbs: bytes, signature: bytes = bytes(_SIGNATURE_SIZE)) -> bytes:
     return bytes((0x30, 0x80 | len(octets))) + octets + content
 
 
-def read_certificate(data: bytes) -> x509.Certificate:
+def read_certificate(data: bytes, *, what: str = "a certificate") -> x509.Certificate:
     """Read a certificate, PEM or DER.
+
+    Args:
+        data: the file's bytes.
+        what: what they are, for a refusal.
 
     Raises:
         DocumentError: it is none, or more than one, or larger than 1 MiB.
     """
-    certificate = _read(data, "a certificate", x509.load_pem_x509_certificate, x509.load_der_x509_certificate)
-    with reading("a certificate"):
+    certificate = _read(data, what, x509.load_pem_x509_certificate, x509.load_der_x509_certificate)
+    with reading(what):
         certificate.subject, certificate.issuer, certificate.extensions, certificate.public_key()
     return certificate
 
@@ -125,14 +127,18 @@ def read_request(data: bytes) -> x509.CertificateSigningRequest:
     return request
 
 
-def read_list(data: bytes) -> x509.CertificateRevocationList:
+def read_list(data: bytes, *, what: str = "a revocation list") -> x509.CertificateRevocationList:
     """Read a revocation list, PEM or DER.
+
+    Args:
+        data: the file's bytes.
+        what: what they are, for a refusal.
 
     Raises:
         DocumentError: it is none, or more than one, or larger than 1 MiB.
     """
-    listed = _read(data, "a revocation list", x509.load_pem_x509_crl, x509.load_der_x509_crl)
-    with reading("a revocation list"):
+    listed = _read(data, what, x509.load_pem_x509_crl, x509.load_der_x509_crl)
+    with reading(what):
         listed.issuer, listed.extensions, [entry.extensions for entry in listed]
     return listed
 
@@ -140,32 +146,60 @@ def read_list(data: bytes) -> x509.CertificateRevocationList:
 def read_certificate_body(tbs: bytes) -> x509.Certificate:
     """Read the bytes that are signed to make a certificate of version 3 by an Ed25519 key.
 
+    What was read is written again and compared, so the bytes say what is read in them, in its one encoding, and nothing
+    beside it.
+
     Raises:
         DocumentError: they are none.
     """
-    with reading("the body of a certificate"):
-        certificate = read_certificate(whole(tbs))
-    serial = certificate.serial_number
-    octets = serial.to_bytes(serial.bit_length() // 8 + 1, signed=True) if serial > 0 else b""
-    head = _VERSION_3 + bytes((0x02, len(octets))) + octets + _ALGORITHM
-    if certificate.tbs_certificate_bytes != tbs or not 1 <= len(octets) <= 20 or not _content(tbs).startswith(head):
-        raise DocumentError(
-            "it is not the body of a certificate that this key can sign: version 3, a positive serial number of at most"
-            " 20 bytes, Ed25519"
+    what = "the body of a certificate"
+    draft = read_certificate(whole(tbs), what=what)
+    with reading(what):
+        builder = (
+            x509.CertificateBuilder()
+            .subject_name(draft.subject)
+            .issuer_name(draft.issuer)
+            .public_key(draft.public_key())
+            .serial_number(draft.serial_number)
+            .not_valid_before(draft.not_valid_before_utc)
+            .not_valid_after(draft.not_valid_after_utc)
         )
-    return certificate
+        for found in draft.extensions:
+            builder = builder.add_extension(found.value, critical=found.critical)
+        again = certificate_body(builder)
+    if again != tbs:
+        raise DocumentError(f"it is not {what} of version 3 in its one encoding, for an Ed25519 key to sign")
+    return draft
 
 
 def read_list_body(tbs: bytes) -> x509.CertificateRevocationList:
-    """Read the bytes that are signed to make a revocation list of version 2 by an Ed25519 key.
+    """Read the bytes that are signed to make a revocation list of version 2 by an Ed25519 key, in the same way.
 
     Raises:
         DocumentError: they are none.
     """
-    listed = read_list(whole(tbs))
-    if listed.tbs_certlist_bytes != tbs or not _content(tbs).startswith(_VERSION_2 + _ALGORITHM):
-        raise DocumentError("it is not the body of a revocation list that this key can sign: version 2, Ed25519")
-    return listed
+    what = "the body of a revocation list"
+    draft = read_list(whole(tbs), what=what)
+    with reading(what):
+        builder = x509.CertificateRevocationListBuilder(
+            draft.issuer, draft.last_update_utc, draft.next_update_utc, revoked_certificates=list(draft)
+        )
+        for found in draft.extensions:
+            builder = builder.add_extension(found.value, critical=found.critical)
+        again = list_body(builder)
+    if again != tbs:
+        raise DocumentError(f"it is not {what} of version 2 in its one encoding, for an Ed25519 key to sign")
+    return draft
+
+
+def certificate_body(builder: x509.CertificateBuilder) -> bytes:
+    """Return what is to be signed of a certificate. Its builder wants a key to sign with: it is thrown away."""
+    return builder.sign(Ed25519PrivateKey.generate(), None).tbs_certificate_bytes
+
+
+def list_body(builder: x509.CertificateRevocationListBuilder) -> bytes:
+    """Return what is to be signed of a revocation list, likewise."""
+    return builder.sign(Ed25519PrivateKey.generate(), None).tbs_certlist_bytes
 
 
 def name_from_text(text: str) -> x509.Name:
@@ -229,6 +263,8 @@ def period(start: datetime, end: datetime) -> str:
 
 def read_issuer(data: bytes, public_key: bytes, *, lists: bool = False) -> x509.Certificate:
     """Read the certificate of an authority whose key is the threshold key.
+
+    A root's own signature is checked. What stands under another authority is taken as given: its key is not at hand.
 
     Args:
         data: PEM or DER.
@@ -305,8 +341,3 @@ def _read(data: bytes, what: str, from_pem: Callable[[bytes], Read], from_der: C
         raise DocumentError("it holds several PEM blocks", hint=f"give {what} alone")
     with reading(what):
         return from_pem(data)
-
-
-def _content(sequence: bytes) -> bytes:
-    """Return what is in a SEQUENCE that was read before, so that its header is known to be well formed."""
-    return sequence[2 + (sequence[1] & 0x7F if sequence[1] & 0x80 else 0) :]

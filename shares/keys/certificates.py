@@ -7,12 +7,12 @@ Source: RFC 5280, sec. 4 (certificates) and 6 (paths), RFC 2986 (requests), RFC 
 RFC 8410 (Ed25519), NIST SP 800-131A rev. 2, sec. 3 (sizes of RSA keys).
 May import: shares.errors, .certificate_parts, .public_key.
 Secret: nothing. Public: everything.
-Does not: sign. The library's builders want a key to sign with, so they get one that is thrown away, and its signature
-with it.
+Does not: sign.
 """
 
 from __future__ import annotations
 
+import ipaddress
 import re
 from datetime import datetime
 from typing import Final, Literal
@@ -20,7 +20,7 @@ from typing import Final, Literal
 from cryptography import x509
 from cryptography.hazmat.primitives.asymmetric import ec, rsa
 from cryptography.hazmat.primitives.asymmetric.ed448 import Ed448PublicKey
-from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey, Ed25519PublicKey
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 from cryptography.hazmat.primitives.asymmetric.types import CertificatePublicKeyTypes
 from cryptography.hazmat.primitives.serialization import Encoding
 from cryptography.x509.oid import ExtendedKeyUsageOID
@@ -35,11 +35,12 @@ Purpose = Literal["authority", "server", "client"]
 _USES: Final = {"server": ExtendedKeyUsageOID.SERVER_AUTH, "client": ExtendedKeyUsageOID.CLIENT_AUTH}
 _LEAST_RSA_BITS = 2048
 _CURVES = (ec.SECP256R1, ec.SECP384R1, ec.SECP521R1)
+_ADDRESSES = (ipaddress.IPv4Address, ipaddress.IPv6Address)  # Not a network, which the library would take as well.
 _MAX_NAMES = 100
 _LABEL = r"[A-Za-z0-9]([A-Za-z0-9-]{0,61}[A-Za-z0-9])?"
 _HOST = re.compile(rf"(?=.{{1,253}}\Z)(\*\.)?{_LABEL}(\.{_LABEL})*")
 _MAILBOX = re.compile(r"[!#-'*+\-/-9=?A-Z^-~.]{1,64}@[A-Za-z0-9.-]{1,253}")
-_ADDRESS = re.compile(r"[A-Za-z][A-Za-z0-9+.-]*:[!-~]{1,500}")
+_URI = re.compile(r"[A-Za-z][A-Za-z0-9+.-]*:[!-~]{1,500}")
 
 
 def root(
@@ -65,7 +66,7 @@ def root(
     """
     name = parts.name_from_text(subject)
     builder = _begun(name, name, loaded(public_key), not_before, not_after)
-    body = _built(_with_authority(builder, path_length))
+    body = parts.certificate_body(_with_authority(builder, path_length))
     check(body, public_key)
     return body
 
@@ -125,7 +126,7 @@ def from_request(
         builder = builder.add_extension(x509.ExtendedKeyUsage([_USES[purpose]]), critical=False)
     if names is not None:
         builder = builder.add_extension(names, critical=not list(asked.subject))
-    body = _built(builder)
+    body = parts.certificate_body(builder)
     check(body, public_key, issuer)
     return body
 
@@ -250,10 +251,6 @@ def _usage(*uses: str) -> x509.KeyUsage:
     return x509.KeyUsage(**{use: use in uses for use in parts.KEY_USES})
 
 
-def _built(builder: x509.CertificateBuilder) -> bytes:
-    return builder.sign(Ed25519PrivateKey.generate(), None).tbs_certificate_bytes
-
-
 def _strong(request: x509.CertificateSigningRequest) -> CertificatePublicKeyTypes:
     """Return the request's key, unless it is of a kind or size that nobody should be known by for years."""
     key = request.public_key()
@@ -275,9 +272,9 @@ def _names(request: x509.CertificateSigningRequest) -> x509.SubjectAlternativeNa
     if not 1 <= len(list(names)) <= _MAX_NAMES:
         raise ParameterError(f"a request has 1 to {_MAX_NAMES} alternative names")
     for number, name in enumerate(names, 1):
-        kinds = ((x509.DNSName, _HOST), (x509.RFC822Name, _MAILBOX), (x509.UniformResourceIdentifier, _ADDRESS))
+        kinds = ((x509.DNSName, _HOST), (x509.RFC822Name, _MAILBOX), (x509.UniformResourceIdentifier, _URI))
         known = any(isinstance(name, kind) and form.fullmatch(name.value) for kind, form in kinds)
-        if not known and not isinstance(name, x509.IPAddress):
+        if not known and not (isinstance(name, x509.IPAddress) and isinstance(name.value, _ADDRESSES)):
             raise ParameterError(
                 f"alternative name {number} of the request is no host name, IP address, mail address or URI in plain"
                 " letters",

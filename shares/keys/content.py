@@ -17,10 +17,9 @@ import re
 from collections.abc import Iterator
 from typing import Final
 
-from shares.documents.members import holds_unprintable
 from shares.errors import DocumentError
 from shares.keys.certificate_words import described_certificate, described_list
-from shares.keys.description import Description, in_groups, shown
+from shares.keys.description import Description, in_groups, is_hidden, shown
 from shares.keys.ssh_signature import described as described_ssh_signature
 
 _MOST_LINES, _MOST_COLUMNS = 12, 100
@@ -41,10 +40,6 @@ _PROTOCOLS: Final = (
     (re.compile(rb"SSHSIG"), "the body of an SSH signature in a form that is not read here"),
     (re.compile(rb"\0\0\0.[a-z0-9-]{1,60}-cert-v01@openssh\.com", re.DOTALL), "the body of an SSH certificate"),
     (re.compile(rb"\0\0\0[\x14-\x40].{20,64}\x32.{8,600}ssh-connection", re.DOTALL), "a login by SSH"),
-    (
-        re.compile(rb"\x30[\x20-\x7f\x81-\x84]"),
-        "a structure in ASN.1 DER, as certificates are, of a kind not read here",
-    ),
 )
 _PEM = re.compile(rb"^-----BEGIN ([A-Z0-9 ]{1,60})-----\r?$", re.MULTILINE)
 
@@ -115,9 +110,10 @@ def _text(message: bytes) -> str | None:
 def _first_lines(text: str) -> Iterator[str]:
     lines = text.removesuffix("\n").split("\n")
     for line in lines[:_MOST_LINES]:
-        safe = shown(line.removesuffix("\r").replace("\t", "    "))
-        more = len(safe) - _MOST_COLUMNS
-        yield safe if more <= 0 else f"{safe[:_MOST_COLUMNS]} ... and {more} more characters"
+        line = line.removesuffix("\r").replace("\t", "    ")
+        more = len(line) - _MOST_COLUMNS
+        safe = shown(line[:_MOST_COLUMNS])
+        yield safe if more <= 0 else f"{safe} ... and {more} more character{'' if more == 1 else 's'}"
     if len(lines) > _MOST_LINES:
         more = len(lines) - _MOST_LINES
         yield f"... and {more} more line{'' if more == 1 else 's'}"
@@ -131,9 +127,10 @@ def _pem_blocks(message: bytes) -> Iterator[str]:
 
 
 def _text_cautions(message: bytes, text: str) -> Iterator[str]:
-    if any(holds_unprintable(c) for c in set(text) - {"\n", "\r", "\t"}):
+    if any(is_hidden(c) for c in set(text) - {"\n", "\r", "\t"}):
         yield "It holds characters that are invisible or reorder others: they are written out here, like <U+202E>."
     if any(b"PRIVATE KEY" in found[1] for found in _PEM.finditer(message)):
         yield "It holds a private key. Whoever has this file has that key."
-    if text.count("\n") > _MOST_LINES:
+    lines = text.split("\n", _MOST_LINES)
+    if lines[_MOST_LINES:] not in ([], [""]) or any(len(line) > _MOST_COLUMNS for line in lines[:_MOST_LINES]):
         yield "Only the beginning is shown: read the file itself before you agree."

@@ -38,9 +38,16 @@ def shown(text: str) -> str:
     >>> shown("harbour\\u202ecod.exe")
     'harbour<U+202E>cod.exe'
     """
-    if not holds_unprintable(text):
-        return text
-    return "".join(f"<U+{ord(c):04X}>" if holds_unprintable(c) else c for c in text)
+    return "".join(f"<U+{ord(c):04X}>" if is_hidden(c) else c for c in text)
+
+
+def is_hidden(c: str) -> bool:
+    """Say whether a character shows as nothing or as a space that is none, or steers, or is not known to show at all.
+
+    Args:
+        c: one character.
+    """
+    return not c.isprintable() or holds_unprintable(c)
 
 
 def in_groups(data: bytes) -> str:
