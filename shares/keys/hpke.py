@@ -87,13 +87,12 @@ class ReceiverContext:
         """
         plaintext = Secret(max(len(ciphertext) - TAG, 0))
         opened = False
-        if len(ciphertext) >= TAG:
-            try:
-                with self.key.view() as key, self.nonce.view() as nonce, plaintext.view() as out:
-                    self._aead.algorithm(key).decrypt_into(nonce, ciphertext, associated, out)
-                opened = True
-            except InvalidTag:
-                pass
+        try:
+            with self.key.view() as key, self.nonce.view() as nonce, plaintext.view() as out:
+                self._aead.algorithm(key).decrypt_into(nonce, ciphertext, associated, out)
+            opened = True
+        except InvalidTag:
+            pass
         if not opened:
             plaintext.close()
             raise VerificationError("the ciphertext does not open")

@@ -13,6 +13,7 @@ custodian's; the others have theirs.
 
 from __future__ import annotations
 
+import os
 from pathlib import Path
 from typing import Final
 
@@ -43,7 +44,7 @@ def earlier(own: Path, new: OpenedMessage) -> OpenedMessage | None:
         StorageError: it cannot be read.
     """
     path = file_of(own, new.encapsulated)
-    if not path.exists() and not path.is_symlink():
+    if not os.path.lexists(path):
         return None
     known = OpenedMessage.parse(storage.read_file(path, limit=MAX_FILE), where=str(path))
     if (known.key, known.encapsulated) != (new.key, new.encapsulated):

@@ -15,7 +15,7 @@ Does not: carry messages or write the plaintext: ``history`` and the caller do.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Final, NamedTuple
 
@@ -24,6 +24,7 @@ from shares.documents.event import Event
 from shares.documents.key_event import Approved, TaskFinished
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
+from shares.documents.members import MAX_TEXT
 from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Opening, Task
@@ -42,9 +43,6 @@ from shares.memory import Secret
 
 RECEIVERS_KEY: Final = 0
 PARTIAL_RESULTS: Final = 1
-
-Deliver = Callable[[Secret], None]
-"""Takes the plaintext to where the receiver wants it: all of it, or it raises and nothing is lost."""
 
 
 class Opened(NamedTuple):
@@ -101,7 +99,6 @@ class OpeningPart:
         share: the custodian's key share; None for a receiver who is no custodian.
         key: the party's own.
         folder: the party's own, where what was served is remembered.
-        deliver: for the receiver who ends the task: where the plaintext goes.
 
     Raises:
         VerificationError: as for ``OpeningCourse``.
@@ -115,7 +112,6 @@ class OpeningPart:
         share: KeyShare | None,
         key: OpenPartyKey,
         folder: Path,
-        deliver: Deliver | None = None,
     ) -> None:
         self._course = OpeningCourse(task, record)
         self._work = self._course.work
@@ -123,7 +119,6 @@ class OpeningPart:
         self._share = share
         self._key = key
         self._folder = folder
-        self._deliver = deliver
 
     def prospect(self, round: int, inbox: Inbox) -> Sequence[str]:
         """Return what the party is about to do. A message whose encapsulated key was served for another is refused.
@@ -140,14 +135,14 @@ class OpeningPart:
             f"You help to open a message of {work.content.size:,} bytes, encrypted to the key {record.label}.",
             f"Its SHA-256 is {in_groups(work.content.digest)}; its encapsulated key is {in_groups(work.encapsulated)}.",
             self._receiver_words(),
-            f"{task.author.name} ({task.author.fingerprint}) asks for it. What is in it cannot be seen before.",
+            f"{task.author.name} ({task.author.fingerprint}) asks for it. Nobody sees what is in it before it is open.",
             f"Caution: you open every message with this encapsulated key, not this one alone, and {work.receiver} "
             "learns what is in them.",
             "Caution: who has seen another message to this key can make one out of it that opens both, and you cannot "
             "see that. Agree only for a receiver who may read whatever was encrypted to this key.",
             "Caution: X25519 does not withstand quantum computers. It is not for secrets that must last ten years.",
         ]
-        if known is not None:
+        if known is not None and known.task != task.digest():  # A run of this task that was stopped is no news.
             when = clock.to_text(known.time)
             lines.insert(3, f"You have helped to open this very message before, for {known.receiver}, at {when}.")
         return lines
@@ -155,6 +150,8 @@ class OpeningPart:
     def _receiver_words(self) -> str:
         task, work = self._course.task, self._work
         party = task.party(work.receiver)
+        if work.receiver == self._me:
+            return "You are the receiver, who alone learns what is in it."
         if work.receiver in self._course.custodians or party is None:
             return f"The receiver, who alone learns what is in it, is {work.receiver}, a custodian of this key."
         return (
@@ -197,29 +194,13 @@ class OpeningPart:
         return Said(body=Partial(what="partial"), state=Secret(0), sealed={self._work.receiver: partial})
 
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
-        """Return the end of it: for the receiver, once the plaintext is delivered.
-
-        Raises:
-            ParameterError: the receiver has not said where the plaintext goes.
-            NotEnoughSharesError, VerificationError: as for ``combine``.
-        """
+        """Return a custodian's end of it. The receiver's state is kept until ``combine`` has made use of it."""
         task, receiver = self._course.task, self._work.receiver
-        remark, words = None, [f"Your part is done: {receiver} can open the message once k partial results hold."]
         if self._me == receiver:
-            if self._deliver is None:
-                raise ParameterError(
-                    "the partial results are here, and it is to be said where the plaintext goes",
-                    hint="shares key finish puts them together, and writes or hands on what is in the message",
-                )
-            opened = combine(task, self._course.record, inbox, received)
-            with opened.plaintext as plaintext:
-                self._deliver(plaintext)
-                words = [f"The message is open: {len(plaintext):,} bytes. The key was not assembled."]
-            words += [f"Set aside: {one.by}: {one.what}." for one in opened.set_aside]
-            if opened.set_aside:
-                remark = f"set aside: {', '.join(str(one.by) for one in opened.set_aside)}"[:500]
-        finished = TaskFinished(what="task-finished", task=task.digest(), work="open", result=None, remark=remark)
-        return Outcome(files=(), event=finished, words=words)
+            words = "All partial results are here. `shares key finish` puts them together and takes the message out."
+            return Outcome(files=(), event=None, words=(words,), ends=False)
+        words = f"Your part is done. {receiver} can open the message; you have learnt nothing of what is in it."
+        return Outcome(files=(), event=_finished(task, None), words=(words,))
 
     def _served(self) -> OpenedMessage:
         return OpenedMessage(
@@ -277,6 +258,23 @@ def combine(task: Task, record: KeyRecord, inbox: Inbox, received: Sequence[Rece
         )
     enough = dict(list(results.items())[: record.need])
     return Opened(_decrypted(work, record, message, agreement(enough)), tuple(bad))
+
+
+def outcome(task: Task, opened: Opened) -> Outcome:
+    """Return what the receiver's journal and the receiver are told, once the plaintext is where it belongs.
+
+    Args:
+        task: an opening.
+        opened: what came of it; of the plaintext, its length alone is told.
+    """
+    words = [f"The message is open: {len(opened.plaintext):,} bytes. The key was not assembled for it."]
+    words += [f"Set aside is the partial result of {one.by}: {one.what}." for one in opened.set_aside]
+    names = ", ".join(str(one.by) for one in opened.set_aside)
+    return Outcome(files=(), event=_finished(task, f"set aside: {names}"[:MAX_TEXT] if names else None), words=words)
+
+
+def _finished(task: Task, remark: str | None) -> TaskFinished:
+    return TaskFinished(what="task-finished", task=task.digest(), work="open", result=None, remark=remark)
 
 
 def _decrypted(work: Opening, record: KeyRecord, message: bytes, dh: Secret) -> Secret:

@@ -13,16 +13,21 @@ import hashlib
 import secrets
 from collections.abc import Sequence
 from datetime import datetime
+from typing import Final
 
 from shares import clock
 from shares.documents.key_event import MAX_CONTENT, Content
 from shares.documents.key_record import KeyRecord
+from shares.documents.members import check_text
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.task import Cipher, Opening, Task, TaskParty
 from shares.errors import ParameterError, VerificationError
 from shares.group.edwards25519 import Point
 from shares.group.montgomery import lift
 from shares.keys.hpke import KEY_SIZE, TAG
+
+MAX_BOUND: Final = 65_536
+"""The longest info, and the longest associated data, in bytes: both stand in the task."""
 
 
 def new_opening(
@@ -57,7 +62,7 @@ def new_opening(
 
     Raises:
         ParameterError: too few custodians or one the record does not name, a receiver with a custodian's name, a
-            message that is too large.
+            message, info or associated data that is too large, a due time that is past, words that no page can show.
         VerificationError: it is no message to an X25519 key, or its encapsulated key is one that must not be served.
     """
     if len(message) > MAX_CONTENT:
@@ -65,6 +70,14 @@ def new_opening(
             f"the message is larger than {MAX_CONTENT >> 20} MiB",
             hint="encrypt the file under a key of its own, and send that key to the custodians' key",
         )
+    if len(info) > MAX_BOUND or len(associated) > MAX_BOUND:
+        raise ParameterError(f"info and associated data have at most {MAX_BOUND:,} bytes each")
+    created = clock.now() if created is None else created
+    if due <= created:
+        raise ParameterError("the task is due before it is made", hint="give a later time")
+    for words in (label, remark):
+        if words is not None:
+            check_text(words)
     _encapsulated(message)
     known = record.holder_by(receiver)
     asked = {record.holder(name).name for name in custodians} | ({known.name} if known else set())
@@ -96,7 +109,7 @@ def new_opening(
         parties=tuple(parties),
         remark=remark,
         nonce=secrets.token_bytes(32),
-        created=clock.now() if created is None else created,
+        created=created,
         due=due,
     )
 
@@ -116,8 +129,8 @@ def custodians_of(task: Task, record: KeyRecord) -> tuple[str, ...]:
     """Return who gives a partial result, having checked that everybody is who the record says.
 
     Raises:
-        VerificationError: the task is about another key or epoch, asks too few, or has somebody take part who is neither
-            a custodian as the record has them nor the receiver.
+        VerificationError: the task is about another key or epoch, asks too few, or somebody takes part who is neither a
+            custodian as the record has them nor the receiver.
     """
     if (task.key, task.epoch, task.record) != (record.key, record.epoch, record.fingerprint):
         raise VerificationError(

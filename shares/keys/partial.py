@@ -6,7 +6,7 @@ formula. Nobody ever has s, nor any multiple of it but this one.
 Source: Y. Desmedt, Y. Frankel, "Threshold cryptosystems", CRYPTO '89; D. Chaum, T. P. Pedersen, "Wallet Databases with
 Observers", CRYPTO '92, sec. 3.2 (the proof); V. Shoup, R. Gennaro, "Securing Threshold Cryptosystems against Chosen
 Ciphertext Attack", J. Cryptology 15, 2002 (parts proved and checked one by one).
-May import: shares.memory, shares.documents, shares.group, shares.sharing.verifiable, shares.errors.
+May import: shares.memory, shares.documents, shares.group, shares.sharing.verifiable.
 Secret: key shares, partial results, and what comes of them. Public: the key's commitments, E, proofs.
 Does not: know who is asked, or open anything with the result.
 """
@@ -14,20 +14,15 @@ Does not: know who is asked, or open anything with the result.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Final
 
 from shares.documents.base import canonical
 from shares.documents.key_record import KeyRecord
 from shares.documents.task import Task
-from shares.errors import VerificationError
 from shares.group.edwards25519 import SIZE, Point, Scalar
-from shares.group.montgomery import public_of
+from shares.group.montgomery import agreed
 from shares.group.proofs import Proof, check_equal, prove_equal
 from shares.memory import Secret
 from shares.sharing.verifiable import public_share, recombine
-
-PARTIAL_SIZE: Final = 3 * SIZE
-"""Bytes of a partial result: the point D_i, then its proof, challenge and response."""
 
 
 def proof_context(task: Task, record: KeyRecord, index: int) -> bytes:
@@ -70,8 +65,6 @@ def checked_result(partial: Secret, record: KeyRecord, index: int, encapsulated:
     Raises:
         VerificationError: it is no partial result of this custodian for E in this task.
     """
-    if len(partial) != PARTIAL_SIZE:
-        raise VerificationError(f"a partial result has {PARTIAL_SIZE} bytes")
     with partial.view() as view:
         result, proof = Point.decode(view[:SIZE]), Proof.decode(view[SIZE:])
     check_equal(public_share(record.commitments, index), encapsulated, result, proof, context)
@@ -86,4 +79,4 @@ def agreement(results: Mapping[int, Point]) -> Secret:
 
     Source: RFC 7748, sec. 4.1 and 6.1: u of s E.
     """
-    return Secret.of(public_of(recombine(results)))
+    return Secret.of(agreed(recombine(results)))
