@@ -206,7 +206,7 @@ def new_file(path: StrPath, *, secret: bool) -> Iterator[Write]:
         with _created(folder, temporary, path, mode, undo) as write:
             yield write
         with refusing(path):
-            named = _give_name(folder, temporary, path.name)
+            named = give_name(folder, temporary, path.name)
         if not named:
             with _created(folder, path.name, path, mode, undo) as write:
                 _copy(folder, temporary, path, write)
@@ -265,8 +265,14 @@ def _copy(folder: int, name: str, path: Path, write: Write) -> None:
                 write(filled)
 
 
-def _give_name(folder: int, temporary: str, name: str) -> bool:
-    """Give a finished file its final name unless that is taken; say whether this medium has a way to do so."""
+def give_name(folder: int, temporary: str, name: str) -> bool:
+    """Give a finished file another name unless that is taken; say whether this medium has a way to do so.
+
+    The old name may stay beside it: it is the caller's to remove.
+
+    Raises:
+        OSError: as the system says, and that the name is taken.
+    """
     for exclusive in (_rename_new, _link_new):
         try:
             exclusive(folder, temporary, name)

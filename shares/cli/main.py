@@ -43,6 +43,7 @@ COMMANDS = {
     "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
     "unwrap": ("unwrap", "Open a wrapped share, or a secret recovered for your card."),
     "record": ("record", "Sign a record, as its dealer or a witness."),
+    "task": ("task", "Do your part in a task of several parties, and see where it stands."),
     "journal": ("journal", "Show, extend and verify what has happened to a set."),
     "show": ("show", "Show the public facts of a share or record."),
     "retire": ("retire", "End a set: each copy destroyed before a witness, then closed."),

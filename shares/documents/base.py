@@ -44,6 +44,9 @@ KINDS = (
     "task-step",
     "task-done",
     "nonce-batch",
+    "nonce-pair",
+    "nonce-marks",
+    "opened-message",
 )
 VERSION = 1
 

@@ -19,6 +19,7 @@ from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
 from shares.documents.drill_report import DrillReport
 from shares.documents.entry import Entry
+from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
@@ -38,6 +39,7 @@ KINDS: tuple[type[Document], ...] = (
     CeremonyScript,
     Entry,
     DrillReport,
+    OpenedMessage,
 )
 FOLDER = Path(__file__).with_name("schemas")
 

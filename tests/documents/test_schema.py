@@ -22,6 +22,8 @@ from shares.documents.base import Document
 from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
 from shares.documents.drill_report import Action, DrillReport, DrillStep, Participant
 from shares.documents.entry import head_of
+from shares.documents.key_event import Content
+from shares.documents.opened_message import OpenedMessage
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
@@ -64,6 +66,7 @@ def samples() -> dict[str, Any]:
         "attestation of a seal": sealed(asked),
         "ceremony-script": script,
         "drill-report": report,
+        "opened-message": opened_message(),
     }
     journal = (Path(__file__).parents[1] / "vectors/golden/v1/journal/journal.jsonl").read_text().splitlines()
     entries = {f"journal-entry {i + 1}": json.loads(line) for i, line in enumerate(journal)}
@@ -120,6 +123,20 @@ def drill_report() -> DrillReport:
         actions=(Action(owner="registrar", due=CREATED, what="a second key"),),
         journal=head_of(3, bytes(32)),
         signatures=(),
+    )
+
+
+def opened_message() -> OpenedMessage:
+    """What a custodian remembers of a message of 100 bytes."""
+    return OpenedMessage(
+        kind="opened-message",
+        version=1,
+        key=bytes(16),
+        encapsulated=bytes([9]) + bytes(31),
+        content=Content(size=100, digest=bytes(32)),
+        task=bytes(32),
+        receiver=NAME,
+        time=CREATED,
     )
 
 
@@ -325,6 +342,16 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         "a short signature": {"signatures": [{**SAMPLES["drill-report"]["signatures"][0], "signature": "A" * 85}]},
         "nine signatures": {"signatures": SAMPLES["drill-report"]["signatures"] * 9},
     },
+}
+PER_SAMPLE["opened-message"] = {
+    **some(*COMMON),
+    "a short key id": {"key": "00" * 15},
+    "an encapsulated key too long": {"encapsulated": "A" * 44},
+    "a digest alone": {"content": {"digest": "00" * 32}},
+    "more than 64 MiB": {"content": {"size": (64 << 20) + 1, "digest": "00" * 32}},
+    "a size below 0": {"content": {"size": -1, "digest": "00" * 32}},
+    "no receiver": {"receiver": ""},
+    "a local time": {"time": "2026-12-01T07:00:00+01:00"},
 }
 OF_CHALLENGE: dict[str, dict[str, Any]] = {
     "another purpose": {"purpose": "recovery"},
