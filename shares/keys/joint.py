@@ -209,13 +209,18 @@ class JointPart:
         signatures = [one.signature for one in said(inbox, CONFIRMATIONS, Confirmation).values()]
         record = record_of(inbox).signed(signatures)
         with state.view() as view:
-            data = bytes(view)
-        share = KeyShare.parse(data)
-        if share.record != record.fingerprint or not record.is_confirmed():
-            raise VerificationError("the key share that was kept belongs to another record than all have signed")
-        self._check(share.open(self._key.open), record)
+            value = Scalar.decode(view)
+        if not record.is_confirmed() or not is_revealed(value, record.commitments, self._index, self._need):
+            raise VerificationError(
+                "the key share that was kept does not fit the record that all have signed",
+                hint="your own steps were changed since: do not use this key, and begin a new task",
+            )
+        share = KeyShare.wrap(value, record, self._me, card_sealer(self._key.card.recipient()))
         born = KeyBorn(what="key-born", key=record.key, epoch=record.epoch, record=record.fingerprint, origin="joint")
-        files = (NewFile("share.json", data, secret=True), NewFile("record.json", record.to_file(), secret=False))
+        files = (
+            NewFile("share.json", share.to_file(), secret=True),
+            NewFile("record.json", record.to_file(), secret=False),
+        )
         return Outcome(files, born, self._words(inbox, record))
 
     def _deal(self) -> Said:
@@ -265,11 +270,8 @@ class JointPart:
             raise VerificationError("the state of this task does not fit what this party has said")
         if culprit:
             return _accusing(culprit, "what it revealed does not fit what it dealt to me", dealt[culprit])
-        record = record_of(inbox)
-        share = KeyShare.wrap(sum_of(shares.values()), record, self._me, card_sealer(self._key.card.recipient()))
-        # Sealed here and now, so that finishing twice writes the same file.
-        body = Confirmation(what="confirmation", signature=record.signature_by(self._key))
-        return Said(body, Secret.of(share.to_file()))
+        body = Confirmation(what="confirmation", signature=record_of(inbox).signature_by(self._key))
+        return Said(body, Secret.of(sum_of(shares.values()).encode()))
 
     def _dealt(self, inbox: Inbox, received: Sequence[Received]) -> dict[str, Dealt]:
         """Return what each other party dealt to this one: as shown to all where it was disputed."""
@@ -285,10 +287,6 @@ class JointPart:
             found[name] = dealt
         return found
 
-    def _check(self, share: Scalar, record: KeyRecord) -> None:
-        if not is_revealed(share, record.commitments, self._index, self._need):
-            raise VerificationError("the key share that was kept does not fit the record: begin a new task")
-
     def _others(self) -> list[str]:
         return [name for name in self._task.names if name != self._me]
 
@@ -301,7 +299,7 @@ class JointPart:
             " seen the same messages. No machine has ever held the key.",
             "Next: read the record's fingerprint aloud among all custodians. It must be the same for each; where it is"
             " not, do not use the key.",
-            f"Keep share.json where only you reach it: when fewer than {record.need} key shares are left, the key is lost.",
+            f"Keep share.json where only you reach it: with fewer than {record.need} key shares left, the key is lost.",
         )
 
 

@@ -99,6 +99,15 @@ def shown_to(inbox: Inbox, name: str) -> dict[str, Dealt]:
     return {dealer: _dealt(one) for dealer, answer in answers.items() for one in answer.shares if one.to == name}
 
 
+def sums_of(inbox: Inbox) -> Commitments:
+    """Return the commitments to the key's polynomial: the sums of what each party has revealed.
+
+    Raises:
+        VerificationError: one of them is the identity.
+    """
+    return summed(list(commitments_of(said(inbox, REVEALS, Reveal)).values()), joining(inbox.task).need)
+
+
 def record_of(inbox: Inbox) -> KeyRecord:
     """Return the record of the key that comes of what was said before the confirmations, unsigned.
 
@@ -118,7 +127,7 @@ def record_of(inbox: Inbox) -> KeyRecord:
         created=max(times),
         origin="joint",
         custodians=[Holder(name=one.name, index=index_of(task, one.name), card=one.card) for one in task.parties],
-        commitments=summed([one.commitments for one in said(inbox, REVEALS, Reveal).values()], joining(task).need),
+        commitments=sums_of(inbox),
         generation=inbox.seen(CONFIRMATIONS),
     )
 
@@ -183,7 +192,7 @@ def _dealt(shown: ShownShare) -> Dealt:
 def _of_reveals(inbox: Inbox) -> Iterator[Failure]:
     yield from _lengths(said(inbox, REVEALS, Reveal), joining(inbox.task).need)
     try:
-        record_of(inbox)
+        sums_of(inbox)
     except VerificationError:
         yield Failure(None, "the contributions cancel out, which chance does not do: some parties have agreed on it")
 
