@@ -12,28 +12,34 @@ from __future__ import annotations
 import contextlib
 import os
 import re
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Final
 
 from shares.errors import StorageError
 from shares.memory import Secret
 from shares.streams import (
+    CREATE,
     Octets,
     Reader,
     folder_of,
     give_name,
+    medium_sync,
     new_file,
     refusing,
     regular_file,
     remove,
+    remove_if_possible,
     secret_source,
     sync_folder,
+    write_all,
 )
 from shares.streams import StrPath as StrPath
 
 _CHUNK: Final = 65536
 _PARTIAL: Final = re.compile(r"\..+\.[0-9a-f]{16}\.partial", re.DOTALL)
 
+_MANY: Final = 16
 _CHECK: Final = "check that it is the right file"
 
 
@@ -107,6 +113,42 @@ def write_new(path: StrPath, data: Octets, *, secret: bool) -> None:
     """
     with new_file(path, secret=secret) as write:
         write(data)
+
+
+def write_many_new(folder: StrPath, files: Mapping[str, bytes]) -> None:
+    """Write many new files, of mode 0600, and put them on the medium together: much faster than one by one.
+
+    A killed run may leave any of them, and one of them incomplete. So they count for nothing until a file that is
+    written after them, by ``write_new``, says so.
+
+    Args:
+        folder: where; it must exist.
+        files: their names and contents.
+
+    Raises:
+        StorageError: a name is taken, or the medium or folder refuses; then nothing of this call is left behind.
+
+    Source: syncfs(2).
+    """
+    # Few files are not worth waiting for all that others have written to the medium.
+    together = medium_sync() if len(files) >= _MANY else None
+    with refusing(folder), folder_of(Path(folder) / "any") as held, contextlib.ExitStack() as undo:
+        for name, data in files.items():
+            descriptor = os.open(name, CREATE, 0o600, dir_fd=held)
+            undo.callback(remove_if_possible, held, name)
+            try:
+                # As for one new file: a medium without modes that refuses this loses nothing.
+                with contextlib.suppress(OSError):
+                    os.fchmod(descriptor, 0o600)
+                write_all(descriptor, data)
+                if together is None:
+                    os.fsync(descriptor)
+            finally:
+                os.close(descriptor)
+        if together is not None:
+            together(held)
+        sync_folder(held)
+        undo.pop_all()
 
 
 def make_folder(path: StrPath) -> None:

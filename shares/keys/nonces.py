@@ -33,13 +33,13 @@ from shares.documents.base import MAX_FILE, sha256
 from shares.documents.key_record import KeyRecord
 from shares.documents.nonce_batch import MAX_BATCH, NonceBatch, NonceMark, NonceMarks, NoncePair, pair_id
 from shares.documents.party import OpenPartyKey
-from shares.documents.wrapping import card_sealer
+from shares.documents.wrapping import Sealer, card_sealer
 from shares.errors import ParameterError, StorageError, VerificationError
 from shares.group.edwards25519 import Point, Scalar
 from shares.keys import frost
 from shares.keys.frost import Nonces
 from shares.memory import Secret
-from shares.storage import empty, make_folder, read_file, rename_new, sync, write_new
+from shares.storage import empty, make_folder, read_file, rename_new, sync, write_many_new, write_new
 from shares.streams import refusing
 
 _NEW: Final = "make new ones with `shares key commit`, and use them in a new task"
@@ -81,17 +81,15 @@ class NonceStore:
             raise ParameterError(f"1 to {MAX_BATCH} pairs of nonces are made at a time")
         make_folder(self.folder)
         batch = secrets.token_hex(16)
-        commitments, marks = [], []
-        for _ in range(count):
-            nonces = frost.commit(share)
-            pair = (nonces.hiding_commitment, nonces.binding_commitment)
-            path = self._unspent(pair_id(*pair))
-            write_new(path, self._sealed(nonces, batch).to_file(), secret=True)
-            commitments.append(pair)
-            marks.append(NonceMark(pair=pair_id(*pair), mark=_mark(path)))
+        seal = card_sealer(self.key.card.recipient())
+        made = [self._sealed(frost.commit(share), batch, seal) for _ in range(count)]
+        paths = {self._unspent(pair_id(one.hiding, one.binding)): one for one in made}
+        write_many_new(self.folder, {path.name: one.to_file() for path, one in paths.items()})
+        # The marks are read off the files as they lie there, and with them they become a promise.
+        marks = [NonceMark(pair=pair_id(one.hiding, one.binding), mark=_mark(path)) for path, one in paths.items()]
         listed = NonceMarks(kind="nonce-marks", version=1, batch=batch, marks=tuple(marks))
         write_new(self._marks(batch), listed.to_file(), secret=True)
-        return commitments
+        return [(one.hiding, one.binding) for one in made]
 
     def batch(self, share: Scalar, count: int) -> NonceBatch:
         """Make pairs of nonces and return the signed document by which the commitments to them are handed out.
@@ -167,7 +165,7 @@ class NonceStore:
         """Return the names of files that say of a pair that it was used: one, if any, in an honest folder."""
         return sorted(path.name for path in self.folder.glob(f"spent-{name}-*"))
 
-    def _sealed(self, nonces: Nonces, batch: str) -> NoncePair:
+    def _sealed(self, nonces: Nonces, batch: str, seal: Sealer) -> NoncePair:
         hiding, binding = nonces.hiding_commitment, nonces.binding_commitment
         with Secret.of(nonces.encode()) as content:
             return NoncePair.wrap(
@@ -177,7 +175,7 @@ class NonceStore:
                 batch=batch,
                 hiding=hiding,
                 binding=binding,
-                seal=card_sealer(self.key.card.recipient()),
+                seal=seal,
             )
 
     def _spend(self, name: str, wanted: Path) -> None:
