@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import textwrap
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -12,7 +13,7 @@ import click
 
 from shares import clock
 from shares.cli.keys import opening
-from shares.cli.output import filled, json_option, print_result, say, warn
+from shares.cli.output import filled, json_option, print_result, prose, say, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_key
 from shares.documents.task import Joining, Opening, Signing, Task
@@ -136,10 +137,15 @@ class _Call:
         if asks and self.asked:
             return False
         if not self.as_json:
-            inbox = at.standing.before(at.round)
-            say(_task_lines(self.folder.task) if not self.took else [])
+            # What the task is, whoever is asked must read; else it is said in one line.
+            say(_task_lines(self.folder.task) if asks else [f"Task: {self.folder.task.words()}."][len(self.took) :])
             say([f"Now, as {self.own.name}, {_round(at.standing, at.round)}:"])
-            say(f"  - {line}" for line in part.prospect(at.round, inbox))
+            for line in part.prospect(at.round, at.standing.before(at.round)):
+                say(
+                    textwrap.wrap(
+                        line, 96, initial_indent="  - " if line[:1].strip() else "  ", subsequent_indent="    "
+                    )
+                )
         if asks and not self.yes:
             if not os.isatty(0):
                 raise ParameterError(
@@ -173,8 +179,10 @@ class _Call:
     def lines(self, at: Turn) -> Iterator[str]:
         for round, path in self.took:
             yield f"Said by {self.own.name}, {_round(at.standing, round)}: {path}"
+        if self.took:
+            yield SEND
         if self.outcome is not None:
-            yield from self.outcome.words
+            yield from (part for line in self.outcome.words for part in prose(line))
         elif at.doing == "failed":
             yield from _failure_lines(at.standing.failure)
         elif at.doing == "done":
@@ -183,8 +191,6 @@ class _Call:
             yield f"Awaited, {_round(at.standing, at.round)}: {', '.join(at.standing.awaited)}."
         else:
             yield "It is your turn again, and you are asked again: repeat the command."
-        if self.took:
-            yield SEND
 
 
 def _refuse_within(mine: Path, path: Path) -> None:
@@ -276,5 +282,5 @@ def _standing_lines(task: Task, found: Standing) -> Iterator[str]:
 
 def _failure_lines(failure: Failure | None) -> Iterator[str]:
     if failure is not None:
-        yield f"The task has failed{f', by {failure.by}' if failure.by else ''}: {failure.what}."
-        yield FAILED
+        yield from prose(f"The task has failed{f', by {failure.by}' if failure.by else ''}: {failure.what}.")
+        yield from prose(FAILED)
