@@ -40,6 +40,7 @@ COMMANDS = {
     "drill": ("drill", "Rehearse a recovery, and report what it showed."),
     "audit": ("audit", "Audit sets: would recovery work, and does the evidence hold?"),
     "recover": ("recover", "Recover a secret from enough shares."),
+    "key": ("key", "Keys that a quorum uses and nobody holds: make, sign, open, show, verify."),
     "wrap": ("wrap", "Wrap a bare share, under a passphrase or for a card."),
     "unwrap": ("unwrap", "Open a wrapped share, or a secret recovered for your card."),
     "record": ("record", "Sign a record, as its dealer or a witness."),
