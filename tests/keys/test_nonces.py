@@ -113,6 +113,23 @@ def test_the_same_purpose_gives_the_same_share(store: NonceStore, pair: Pair) ->
     assert share_of(store, pair, b"x") == share_of(store, pair, b"x")
 
 
+def test_a_run_after_a_killed_one_puts_the_new_name_on_the_medium(
+    store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The killed run may have renamed the file in memory alone; a power cut would undo that after the share is out."""
+    store.take(*pair, ONE)
+    synced: list[str] = []
+    real = os.fsync
+
+    def watch(descriptor: int) -> None:
+        synced.append(os.readlink(f"/proc/self/fd/{descriptor}"))
+        real(descriptor)
+
+    monkeypatch.setattr(os, "fsync", watch)
+    store.take(*pair, ONE)
+    assert synced == [os.fspath(store.folder)]
+
+
 def test_another_purpose_is_refused(store: NonceStore, pair: Pair) -> None:
     share_of(store, pair, b"x")
     for _ in range(2):
