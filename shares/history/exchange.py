@@ -91,6 +91,7 @@ class TaskFolder:
         self.path = Path(path)
         where = os.fspath(self.path / TASK_NAME)
         self.task = Task.parse(read_file(where, limit=MAX_FILE), where=where)
+        self._digest = self.task.digest()
         self.record: KeyRecord | None = None
         if self.task.record is not None:
             where = os.fspath(self.path / RECORD_NAME)
@@ -241,7 +242,7 @@ class TaskFolder:
             message = TaskMessage.parse(read_file(path, limit=MAX_MESSAGE))
         except SharesError as error:
             return Problem("unreadable", f"{name}: {error.what}")
-        if message.task != self.task.digest():
+        if message.task != self._digest:
             return Problem("foreign", f"{name}: it is a message of another task")
         party = self.task.party(message.sender)
         if party is None:

@@ -7,12 +7,13 @@ from __future__ import annotations
 
 import json
 import shutil
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 
 import pytest
-from cli.harness import Result, assert_one_line, assert_refused, files_in, run, with_json
+from cli.harness import Result, assert_one_line, assert_refused, files_in, run, spawn, with_json
 from cli.terminal import on_terminal
 from history.exchanging import NAMES, new_task
 from parties import party, unlocked
@@ -218,6 +219,29 @@ def test_after_the_due_date(harbour: Harbour, tmp_path: Path) -> None:
     assert (done.code, "was due 2026-11-02T00:00:00Z" in done.json["error"]["what"]) == (4, True)
     assert "past its due date" in harbour.show().out
     assert not (harbour.task / "messages" / "0-north-pier.json").exists()
+
+
+def test_three_runs_at_once_say_one_thing(harbour: Harbour) -> None:
+    with ThreadPoolExecutor(3) as pool:
+        runs = list(pool.map(lambda _: spawn(*harbour.arguments("north-pier", "--yes")), range(3)))
+    assert [(one.code, one.err.count("Traceback")) for one in runs] == [(0, 0)] * 3
+    assert [path.name for path in (harbour.task / "messages").iterdir()] == ["0-north-pier.json"]
+    assert [entry.event.what for entry in load_journal(harbour.mine("north-pier")).entries] == ["approved"]
+
+
+def test_what_a_stopped_end_has_left_is_erased_and_what_a_stopped_run_has_left_is_named(harbour: Harbour) -> None:
+    for _ in range(7):
+        for name in NAMES:
+            harbour.next(name)
+    steps = next(harbour.mine("north-pier").glob("tasks/*"))
+    (steps / "step-5.json").write_bytes(b"not erased yet")
+    left = harbour.task / "messages" / ".0-north-pier.json.0123456789abcdef.partial"
+    left.write_bytes(b"{")
+    done = harbour.next("north-pier")
+    assert (done.code, done.out) == (0, "The task is over for north-pier; nothing is left to be done.\n")
+    assert "left by a run that was stopped" in done.err
+    assert [path.name for path in steps.iterdir()] == ["done.json"]
+    assert left.exists()
 
 
 def test_nothing_secret_is_printed_or_lies_in_the_open(harbour: Harbour) -> None:
