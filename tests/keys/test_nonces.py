@@ -165,6 +165,22 @@ def test_a_batch_has_its_limits(store: NonceStore, count: int) -> None:
     assert not store.folder.exists()
 
 
+def test_what_is_left_is_counted(store: NonceStore) -> None:
+    assert (store.unused(), store.leftovers()) == (0, [])
+    first, *_ = store.make(dealt().scalars[ME], 3)
+    store.make(dealt().scalars[ME], 2)
+    assert (store.unused(), store.leftovers()) == (5, [])
+    (path,) = store.folder.glob(f"pair-{pair_id(*first)}.json")
+    data = path.read_bytes()
+    store.take(*first, ONE)
+    assert store.unused() == 4
+    path.write_bytes(data)  # A spent pair that is put back is none that is left.
+    assert (store.unused(), store.leftovers()) == (4, [])
+    unpromised = store.folder / f"pair-{'0' * 32}.json"
+    unpromised.write_bytes(data[:100])
+    assert (store.unused(), store.leftovers()) == (4, [unpromised])
+
+
 # What is not this signer's, of this key.
 
 
