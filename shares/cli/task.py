@@ -92,7 +92,7 @@ def take_next(
                 at = turn(folder, course, own)
     code = 4 if at.doing == "failed" else 0
     if not as_json:
-        _warn_of([*at.standing.problems, *_left(own)])
+        _warn_of([*_besides(at.standing), *_left(own)])
     print_result(call.members(at, code), call.lines(at), as_json=as_json)
     ctx.exit(code)
 
@@ -213,6 +213,11 @@ def _warn_of(problems: Sequence[Problem]) -> None:
         warn(f"{problem.what}.")
 
 
+def _besides(found: Standing) -> list[Problem]:
+    """Return the problems that are not said already, as what the task has failed by."""
+    return [problem for problem in found.problems if not found.failure or problem.what != found.failure.what]
+
+
 def _round(found: Standing, round: int) -> str:
     return f"round {round}, {found.names[round]}"
 
@@ -276,7 +281,7 @@ def _standing_lines(task: Task, found: Standing) -> Iterator[str]:
         yield f"Awaited: {', '.join(found.awaited)}."
         if task.is_late(clock.now()):
             yield "The task is past its due date: nobody can speak in it any more. Next: begin a new task."
-    for problem in found.problems:
+    for problem in _besides(found):
         yield f"Problem: {problem.what}."
 
 

@@ -11,10 +11,16 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from cli.harness import NAMES, Result, run
+from cryptography import x509
+from cryptography.hazmat.primitives import hpke
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
+from cryptography.hazmat.primitives.asymmetric.x25519 import X25519PublicKey
+from cryptography.hazmat.primitives.serialization import Encoding
 from parties import party
 
 from shares.custody.parties import write_party
 from shares.documents.key_record import KeyRecord
+from shares.group.montgomery import public_of
 
 OFFICE, AUDITOR = "harbour-office", "auditor-east"
 LABEL = "Harbour release key"
@@ -27,6 +33,7 @@ class Keyed:
     folder: Path
     names: tuple[str, ...] = NAMES[:3]
     need: int = 2
+    delivered: str = "made"
 
     @classmethod
     def make(cls, folder: Path, names: Sequence[str] = NAMES[:3], need: int = 2) -> Keyed:
@@ -54,7 +61,7 @@ class Keyed:
 
     def own(self, name: str) -> Path:
         """A custodian's folder."""
-        return self.folder / "made" / name
+        return self.folder / self.delivered / name
 
     def path(self, name: str) -> Path:
         return self.folder / name
@@ -72,7 +79,7 @@ class Keyed:
             "need": self.need,
             "label": LABEL,
             "key-folder": self.key,
-            "deliver": self.folder / "made",
+            "deliver": self.folder / self.delivered,
             **changes,
         }
         cards = [f"--custodian={self.folder / f'{name}.card.json'}" for name in self.names]
@@ -112,3 +119,37 @@ class Keyed:
         done = run("key", "finish", self.key, task, "--to", self.path(target), *self.as_(OFFICE))
         assert done.code == 0, done.err
         return self.path(target)
+
+
+def key_before(page: str, folder: Path) -> None:
+    """Do what an example of ``shares key`` takes to be done, in a folder with the parties' files."""
+    if page in ("deal", "join"):
+        return
+    keyed = Keyed(folder, delivered=".").dealt()
+    keyed.path("release.txt").write_text("release 7 of the tide tables\n")
+    first, second = keyed.names[:2]
+    if page in ("certify", "revoke"):
+        root = keyed.ask("root", "CN=Harbour Trust Root", task="root-task")
+        keyed.answer(root, first, second)
+        keyed.finish(root, "root.pem")
+        request(keyed.path("request.pem"))
+    if page == "revoke":
+        more = ["--issuer", str(keyed.path("root.pem")), "--for", "server"]
+        task = keyed.ask("certify", keyed.path("request.pem"), task="server-task", more=more)
+        keyed.answer(task, first, second)
+        keyed.finish(task, "server.pem")
+    if page == "open":
+        u = X25519PublicKey.from_public_bytes(public_of(keyed.record.public_key))
+        suite = hpke.Suite(hpke.KEM.X25519, hpke.KDF.HKDF_SHA256, hpke.AEAD.AES_256_GCM)
+        keyed.path("message.bin").write_bytes(suite.encrypt(b"the berth plan", u))
+    if page == "finish":
+        keyed.answer(keyed.ask("sign", keyed.path("release.txt"), task="to-sign"), first, second)
+
+
+def request(path: Path) -> None:
+    """Write a request for a server's certificate, in PEM."""
+    key = Ed25519PrivateKey.generate()
+    names = x509.SubjectAlternativeName([x509.DNSName("tide.example")])
+    subject = x509.Name([x509.NameAttribute(x509.NameOID.COMMON_NAME, "tide.example")])
+    made = x509.CertificateSigningRequestBuilder().subject_name(subject).add_extension(names, critical=False)
+    path.write_bytes(made.sign(key, None).public_bytes(Encoding.PEM))
