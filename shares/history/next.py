@@ -1,6 +1,7 @@
 """Where a task stands, whose turn it is, and one party's next step: stored whole before anything of it is released.
 
-Source: FORMAT_KEYS.md, sec. 24 and 25; R. Canetti et al. and others call a run that says who broke it identifiable.
+Source: FORMAT_KEYS.md, sec. 24 and 25; Y. Ishai, R. Ostrovsky, V. Zikas, "Secure multi-party computation with
+identifiable abort", CRYPTO 2014 (a task that fails says by whom, as far as that can be told).
 May import: shares.errors, shares.clock, shares.documents, shares.memory, .exchange, .journal, .rounds, .steps.
 Secret: states and what is sealed, on their way between a party's part and its steps. Public: messages, who is awaited.
 Does not: know any purpose; a course and a part, which ``keys`` makes, do. Ask anybody; the command does.

@@ -1,7 +1,7 @@
 """What a task is made of, whatever its purpose: rounds, who speaks in each, what a party says and what comes of it.
 
-Source: RFC 9591, sec. 5 (rounds, a coordinator without secrets); J. A. Garay et al. and others call it identifiable
-abort: a task that fails says who made it fail.
+Source: RFC 9591, sec. 5 (rounds, a coordinator without secrets); Y. Ishai, R. Ostrovsky, V. Zikas, "Secure multi-party
+computation with identifiable abort", CRYPTO 2014: a task that fails says who made it fail.
 May import: shares.errors, shares.memory, shares.documents.
 Secret: states and what is sealed, passed through. Public: the rest.
 Does not: touch files (``exchange`` and ``steps`` do), or know any purpose; ``keys`` does.

@@ -7,8 +7,8 @@ Secret: key shares and nonces, as scalars that only the library computes with. P
 identifiers, commitments and messages.
 Does not: keep nonces, of which ``nonces`` takes care, or know who a signer is: here they are numbers.
 
-Whoever gets two shares of a signature made with one nonce computes the signer's key share (sec. 7.3 is about less: how
-nonces are drawn). So ``Nonces`` are used up by signing, and there is no way to look into them and go on.
+Whoever gets two shares of a signature that were made with one nonce works out the signer's key share (sec. 7.3). So
+``Nonces`` are used up by signing, and there is no way to look into them and go on.
 """
 
 from __future__ import annotations
@@ -131,7 +131,8 @@ def nonce_generate(secret: Scalar, random_bytes: Callable[[int], bytes] = secret
         secret: the signer's key share.
         random_bytes: the source; another one than the system's is for published vectors alone.
 
-    Source: RFC 9591, sec. 4.1; sec. 7.3 says why a nonce is never derived from the message alone.
+    Source: RFC 9591, sec. 4.1, and sec. 7.3: it must be random. Were it derived from the message, as RFC 8032 does, the
+    other signers could have it repeated beside other commitments.
     """
     return H3(random_bytes(32) + secret.encode())
 

@@ -152,6 +152,28 @@ class NonceStore:
         name = pair_id(hiding, binding)
         return os.path.lexists(self._unspent(name)) and not self._spent(name)
 
+    def unused(self) -> int:
+        """Count the pairs that were promised and never used.
+
+        Raises:
+            StorageError, DocumentError: what tells of them cannot be read.
+        """
+        return sum(not self._spent(name) for name in self._pairs() & self._promised())
+
+    def leftovers(self) -> list[Path]:
+        """List what runs that were killed while they made nonces have left: pairs that were never promised.
+
+        Raises:
+            StorageError, DocumentError: as for ``unused``.
+        """
+        return [self._unspent(name) for name in sorted(self._pairs() - self._promised())]
+
+    def _pairs(self) -> set[str]:
+        return {path.stem.removeprefix("pair-") for path in self.folder.glob("pair-*.json")}
+
+    def _promised(self) -> set[str]:
+        return {one.pair for path in self.folder.glob("batch-*.json") for one in _marks_in(path)}
+
     def _unspent(self, name: str) -> Path:
         return self.folder / f"pair-{name}.json"
 
@@ -219,9 +241,12 @@ class NonceStore:
         listed, name = self._marks(pair.batch), pair_id(pair.hiding, pair.binding)
         if not os.path.lexists(listed):
             return False
-        marks = NonceMarks.parse(read_file(listed, limit=MAX_FILE), where=os.fspath(listed)).marks
-        known = {one.pair: one.mark for one in marks}
+        known = {one.pair: one.mark for one in _marks_in(listed)}
         return name in known and known[name] in (None, _mark(path))
+
+
+def _marks_in(path: Path) -> tuple[NonceMark, ...]:
+    return NonceMarks.parse(read_file(path, limit=MAX_FILE), where=os.fspath(path)).marks
 
 
 def _mark(path: Path) -> bytes | None:

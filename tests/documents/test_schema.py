@@ -13,6 +13,7 @@ import jsonschema
 import pytest
 from attested import answered, challenge, sealed
 from hypothesis import given
+from keys.samples import as_json, key_documents, key_mutations
 from parties import QUICK, card, party, passphrase, unlocked
 from strategies import CREATED, crooked_split, flat, moduli, octets, rules
 from vectors.make import wrapping_v1 as by_hand
@@ -70,7 +71,9 @@ def samples() -> dict[str, Any]:
     }
     journal = (Path(__file__).parents[1] / "vectors/golden/v1/journal/journal.jsonl").read_text().splitlines()
     entries = {f"journal-entry {i + 1}": json.loads(line) for i, line in enumerate(journal)}
-    return {name: json.loads(document.to_file()) for name, document in made.items()} | entries
+    return (
+        {name: json.loads(document.to_file()) for name, document in made.items()} | entries | as_json(key_documents())
+    )
 
 
 def ceremony_script() -> CeremonyScript:
@@ -380,6 +383,7 @@ PER_SAMPLE |= {
     "challenge": {**some(*COMMON, *FACTS[:-1], *LABEL), **OF_CHALLENGE},
     "attestation": {**some(*COMMON, *FACTS[:-1]), **OF_ATTESTATION},
 }
+PER_SAMPLE |= key_mutations(SAMPLES)
 ENTRY, EVENT = SAMPLES["journal-entry 2"], SAMPLES["journal-entry 2"]["event"]
 OF_ENTRY: dict[str, dict[str, Any]] = {
     **some(*COMMON),
