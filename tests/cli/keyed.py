@@ -122,7 +122,7 @@ class Keyed:
 
 
 def key_before(page: str, folder: Path) -> None:
-    """Do what an example of ``shares key`` takes to be done, in a folder with the parties' files."""
+    """Do what an example of ``shares key`` or ``shares task`` takes to be done, in a folder with the parties' files."""
     if page in ("deal", "join"):
         return
     keyed = Keyed(folder, delivered=".").dealt()
@@ -142,6 +142,8 @@ def key_before(page: str, folder: Path) -> None:
         u = X25519PublicKey.from_public_bytes(public_of(keyed.record.public_key))
         suite = hpke.Suite(hpke.KEM.X25519, hpke.KDF.HKDF_SHA256, hpke.AEAD.AES_256_GCM)
         keyed.path("message.bin").write_bytes(suite.encrypt(b"the berth plan", u))
+    if page == "task":
+        keyed.ask("sign", keyed.path("release.txt"), task="sign-release")
     if page == "finish":
         keyed.answer(keyed.ask("sign", keyed.path("release.txt"), task="to-sign"), first, second)
 

@@ -83,6 +83,9 @@ PAGES: list[tuple[str, ...]] = [
     ("key", "finish"),
     ("key", "show"),
     ("key", "verify"),
+    ("task",),
+    ("task", "next"),
+    ("task", "show"),
     ("sheet",),
     ("selftest",),
     ("completion",),
@@ -164,8 +167,8 @@ def go_before(page: tuple[str, ...], folder: Path) -> None:
     if page == ("drill", "close"):
         practice = [folder / f"{name}.practice.json" for name in NAMES[:3]]
         assert run("drill", "rehearse", of_set, *practice).code == 0
-    if page[:1] == ("key",):
-        key_before(page[-1], folder)
+    if page[:1] in (("key",), ("task",)):
+        key_before(page[-1] if page[0] == "key" else "task", folder)
     if page == ("audit",):
         shutil.copytree(of_set, folder / "srv" / "sets" / "tide-archive")
         (folder / "noted-on-monday.txt").write_text(run("journal", "head", of_set).out)
