@@ -160,7 +160,8 @@ class JointPart:
         record = record_of(inbox)
         return (
             "Your machine checks your key share against what all have shown. If it holds, you sign the key's record:"
-            " that you have a share, and that you have seen the same messages as all who sign.",
+            " that you have a share, and that you have seen the same messages as all who sign. If not, your machine"
+            " shows whose contribution does not hold, and this key is not born.",
             *_of_record(record),
         )
 

@@ -128,6 +128,19 @@ def test_a_part_is_played_by_the_party_of_that_card(me: str, whose: str, error: 
         JointPart(task(), me, key(whose))
 
 
+@pytest.mark.parametrize("round", [0, 6])
+def test_nothing_is_said_in_rounds_of_others(round: int) -> None:
+    exchange = joint()
+    with pytest.raises(ParameterError, match=f"nothing is said in round {round}"):
+        exchange.parts["registrar"].speak(round, exchange.inbox("registrar"), Secret(0), [])
+
+
+def test_a_task_of_another_purpose_is_refused() -> None:
+    other = task().model_copy(update={"work": None})
+    with pytest.raises(ParameterError, match="is not one to generate a key"):
+        JointCourse(other)
+
+
 def test_a_task_that_no_key_can_come_of_is_refused() -> None:
     with pytest.raises(VerificationError, match="no key can come of this task"):
         JointCourse(task(epoch=2))
