@@ -10,6 +10,7 @@ Does not: answer a task; ``shares task next`` does, on each custodian's machine.
 from __future__ import annotations
 
 import functools
+import hashlib
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from datetime import timedelta
@@ -18,17 +19,19 @@ from typing import Any, TypeVar
 import click
 
 from shares import clock
-from shares.cli.intervals import interval
+from shares.cli.intervals import interval, later
 from shares.cli.keys import opening, signers
 from shares.cli.output import filled, json_option, print_result, prose
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
 from shares.documents.base import MAX_FILE
 from shares.documents.key_event import MAX_CONTENT, Form
+from shares.documents.members import check_text
 from shares.documents.nonce_batch import NonceBatch
 from shares.documents.task import Task
 from shares.keys.asking import ask, check_free, check_signers, new_signing, unused
 from shares.keys.folder import KeyFolder
+from shares.keys.ssh_signature import to_be_signed
 from shares.storage import read_file
 
 Function = TypeVar("Function", bound=Callable[..., Any])
@@ -55,10 +58,19 @@ class Asked:
     as_json: bool
 
 
+def short_text(_: click.Context, parameter: click.Parameter, value: str | None) -> str | None:
+    """Read a text that goes into a task, where it is given.
+
+    Raises:
+        ParameterError: it is no text of a document.
+    """
+    return None if value is None else check_text(value, parameter.opts[0])
+
+
 due_option = click.option(
     "--due", default="7d", show_default=True, metavar="INTERVAL", callback=interval, help="How long there is to answer."
 )
-remark_option = click.option("--remark", metavar="TEXT", callback=filled, help="For the custodians to read.")
+remark_option = click.option("--remark", metavar="TEXT", callback=short_text, help="For the custodians to read.")
 author_option = click.option(
     "--sign", "signer_file", required=True, metavar="KEY", callback=filled, help="Party key of whoever asks."
 )
@@ -147,7 +159,7 @@ def ask_to_sign(
             folder.record,
             signers=asked.names,
             author=author,
-            due=clock.now() + asked.due,
+            due=later(clock.now(), asked.due),
             form=form,
             namespace=namespace,
             commitments=commitments,
@@ -185,7 +197,7 @@ def print_asked(task: Task, path: str, words: Sequence[str], *, as_json: bool, a
     "--openssh",
     "namespace",
     metavar="NAMESPACE",
-    callback=filled,
+    callback=short_text,
     help='Make an OpenSSH signature for this namespace, like "file"; else a plain one of 64 bytes.',
 )
 @asking_options(signer_option, batch_option)
@@ -202,4 +214,6 @@ def sign_command(folder: str, content: str, namespace: str | None, asked: Asked)
     """
     form: Form = "plain" if namespace is None else "openssh"
     data = read_file(content, limit=MAX_CONTENT)
+    if namespace is not None:
+        to_be_signed(hashlib.sha512(data).digest(), namespace)  # What it refuses nobody is asked for.
     ask_to_sign(KeyFolder(folder), data, asked, form=form, namespace=namespace)

@@ -14,7 +14,7 @@ from typing import get_args
 import click
 
 from shares import clock
-from shares.cli.intervals import interval
+from shares.cli.intervals import interval, later
 from shares.cli.key_ask import Asked, ask_to_sign, asking_options, batch_option, signer_option
 from shares.cli.output import filled
 from shares.documents.base import MAX_FILE
@@ -58,7 +58,7 @@ def root_command(folder: str, subject: str, valid: timedelta, path_length: int |
         key.record.public_key.encode(),
         subject=subject,
         not_before=now,
-        not_after=now + valid,
+        not_after=later(now, valid),
         path_length=path_length,
     )
     ask_to_sign(key, body, asked, form="certificate", words=_words(key, body))
@@ -110,7 +110,7 @@ def certify_command(
         issuer=issuer,
         purpose=purpose,
         not_before=now,
-        not_after=now + valid,
+        not_after=later(now, valid),
         path_length=path_length or 0,
     )
     dropped = certificates.left_out(request, purpose)
@@ -165,7 +165,7 @@ def revoke_command(
         [Revoked(serial, now, reason) for serial in serials],
         issuer=issuer,
         this_update=now,
-        next_update=now + until,
+        next_update=later(now, until),
         earlier=None if earlier_file is None else read_file(earlier_file, limit=MAX_FILE),
     )
     ask_to_sign(key, body, asked, form="revocation-list", issuer=issuer, words=_words(key, body)[:-1])

@@ -16,6 +16,7 @@ import click
 
 from shares import clock
 from shares.cli.deliveries import delivery_folders
+from shares.cli.intervals import later
 from shares.cli.key_ask import author_option, due_option, print_asked, remark_option
 from shares.cli.keys import signers, suite_option
 from shares.cli.output import filled, json_option, print_result, prose, warn
@@ -205,7 +206,7 @@ def join_command(
     check_free(path)
     with GivenPassphrases(passphrase_files, descriptors) as passphrases, Opening(passphrases) as at_hand:
         author = signers((signer_file,), at_hand)[0]
-        task = new_joining(cards, need, label=label, author=author, due=clock.now() + due, remark=remark)
+        task = new_joining(cards, need, label=label, author=author, due=later(clock.now(), due), remark=remark)
     with held_signals():
         TaskFolder.create(path, task)
         print_asked(task, path, (), as_json=as_json, after=JOIN_NEXT)

@@ -16,6 +16,7 @@ import click
 
 from shares import clock
 from shares.cli.feeding import FeedsCommand
+from shares.cli.intervals import later
 from shares.cli.key_ask import Asked, asked_custodian_option, asking_options, author_option, print_asked
 from shares.cli.keys import opening, signers
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken
@@ -146,7 +147,7 @@ def open_command(
             custodians=asked.names,
             receiver=author.card,
             author=author,
-            due=clock.now() + asked.due,
+            due=later(clock.now(), asked.due),
             cipher=cipher,
             info=info,
             associated=aad,

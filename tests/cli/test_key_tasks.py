@@ -100,6 +100,21 @@ class TestSigning:
     def test_signers_that_are_no_quorum_are_refused(self, keyed: Keyed, names: Sequence[str], words: str) -> None:
         assert_refused(sign_arguments(keyed, *keyed.as_(OFFICE), names=names), 2, words, watched=keyed.folder)
 
+    @pytest.mark.parametrize(
+        ("more", "words"),
+        [
+            (["--remark", "a\nb"], "--remark"),
+            (["--remark", "x" * 501], "--remark"),
+            (["--remark", ""], "--remark"),
+            (["--openssh", "a\x1bb"], "--openssh"),
+            (["--openssh", ""], "--openssh"),
+            (["--due", "9999y"], "the year 9999"),
+            (["--due", "0d"], "--due"),
+        ],
+    )
+    def test_what_no_task_can_say_is_refused(self, keyed: Keyed, more: list[str], words: str) -> None:
+        assert_refused(sign_arguments(keyed, *more, *keyed.as_(OFFICE)), 2, words, watched=keyed.folder)
+
     def test_a_folder_is_for_one_task(self, keyed: Keyed) -> None:
         keyed.ask("sign", keyed.path("release.txt"), task="t")
         assert_refused(sign_arguments(keyed, *keyed.as_(OFFICE)), 5, "a task is here already", watched=keyed.folder)
@@ -269,6 +284,25 @@ class TestForms:
         done = run("key", "root", keyed.key, subject, "--valid", "2y", "--path-length", "1", *task)
         for words in (f"subject: {subject}", "730 days", "at most 1", "cannot be taken back"):
             assert words in done.out
+
+    @pytest.mark.parametrize(
+        ("verb", "more", "code"),
+        [
+            ("root", ["no distinguished name"], 2),
+            ("root", ["CN=Root", "--valid", "9999y"], 2),
+            ("root", ["CN=Root", "--path-length", "256"], 2),
+            ("certify", ["release.txt", "--issuer", "release.txt", "--for", "server"], 4),
+            ("certify", ["missing", "--issuer", "release.txt", "--for", "server"], 5),
+            ("revoke", ["release.txt", "--issuer", "release.txt"], 4),
+            ("revoke", ["--issuer", "missing"], 5),
+        ],
+    )
+    def test_what_cannot_be_certified_is_not_asked_for(
+        self, keyed: Keyed, verb: str, more: list[str], code: int, monkeypatch: pytest.MonkeyPatch
+    ) -> None:
+        monkeypatch.chdir(keyed.folder)
+        arguments = ["key", verb, keyed.key, *more, "--task", "t", f"--signer={FIRST}", f"--signer={SECOND}"]
+        assert_refused([*arguments, *keyed.as_(OFFICE)], code, watched=keyed.folder)
 
     def test_a_path_length_is_for_authorities(self, keyed: Keyed) -> None:
         arguments = ["key", "certify", keyed.key, "r", "--for", "server", "--path-length", "1", "--issuer", "i"]

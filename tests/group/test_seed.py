@@ -12,7 +12,8 @@ from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 from hypothesis import given
 from hypothesis import strategies as st
 
-from shares.errors import ParameterError
+from shares.errors import ParameterError, VerificationError
+from shares.group import seed as module
 from shares.group.edwards25519 import BASE
 from shares.group.seed import scalar_of_seed
 
@@ -45,3 +46,9 @@ def test_the_scalar_is_the_pruned_hash_modulo_the_order(seed: bytes) -> None:
 def test_a_seed_has_32_bytes(length: int) -> None:
     with pytest.raises(ParameterError):
         scalar_of_seed(bytes(length))
+
+
+def test_a_faulty_machine_is_noticed(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(module.sodium, "crypto_sign_ed25519_sk_to_curve25519", lambda _: bytes([1]) * 32)
+    with pytest.raises(VerificationError, match="does not give its public half"):
+        scalar_of_seed(bytes(32))

@@ -96,6 +96,17 @@ def test_round_0_may_be_said_again(opening: tuple[KeyFolder, TaskFolder]) -> Non
     assert said.read_bytes() == before
 
 
+def test_a_receiver_who_has_not_spoken_is_awaited(opening: tuple[KeyFolder, TaskFolder]) -> None:
+    """A run that was stopped when the task was written, and no more."""
+    folder, task = opening
+    for path in (*(task.path / "messages").iterdir(), *(folder.path / "tasks").rglob("*.json")):
+        path.unlink()
+    with unlocked(OFFICE) as office:
+        with pytest.raises(NotEnoughSharesError, match="harbour-office has still to speak"):
+            open_message(folder, task, office, Taken())
+        assert begin_opening(folder, task, office).name == "0-harbour-office.json"
+
+
 def test_without_what_was_kept_nothing_opens(opening: tuple[KeyFolder, TaskFolder]) -> None:
     """Another copy of the office's folder, older than the task."""
     folder, task = opening
