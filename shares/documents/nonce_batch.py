@@ -1,6 +1,6 @@
 """Nonces of a signer: sealed each by itself, marked so that copies are noticed, and the commitments handed out.
 
-Source: RFC 9591, sec. 5.1 (commitments may be made before a message is known); FORMAT_KEYS.md, sec. 27.
+Source: RFC 9591, sec. 5.1 (commitments may be made before a message is known); FORMAT_KEYS.md, sec. 29.
 May import: shares.clock, shares.errors, shares.documents.base, .group_members, .key_record, .members, .party, .signing,
 .wrapping; shares.group.edwards25519, shares.memory.
 Secret: the nonces inside a ``NoncePair``. Private: ``NonceMarks``. Public: the batch.
