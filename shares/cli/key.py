@@ -43,7 +43,14 @@ UNKNOWN = "Who those are, the fingerprints of their cards say: compare them alou
 KNOWN = "One who signed it has a card that you trust."
 
 
-@click.group()
+class _InOrder(click.Group):
+    """A group whose help lists commands in the order of a key's life."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        return list(self.commands)
+
+
+@click.group(cls=_InOrder)
 def command() -> None:
     """Keys that a quorum uses and nobody holds: make one, sign with it, open messages to it.
 
@@ -56,7 +63,7 @@ def command() -> None:
     """
 
 
-@command.command(short_help="Show a key's public facts, and export its public half.")
+@click.command(short_help="Show a key's public facts, and export its public half.")
 @click.argument("source", metavar="KEYDIR|RECORD", callback=filled)
 @click.option("--pem", "pem_file", metavar="FILE", callback=filled, help="Write the public key to this new PEM file.")
 @click.option("--openssh", "ssh_file", metavar="FILE", callback=filled, help="The same as an OpenSSH public key.")
@@ -95,7 +102,7 @@ def show(source: str, pem_file: str | None, ssh_file: str | None, x25519_file: s
     print_result(members, [*_shown(record), *(f"Written: {path}" for path in wanted)], as_json=as_json)
 
 
-@command.command(short_help="Check a key share against the public record, and the record itself.")
+@click.command(short_help="Check a key share against the public record, and the record itself.")
 @click.argument("source", metavar="KEYDIR|SHARE|RECORD", callback=filled)
 @click.option("--record", "record_file", metavar="R", callback=filled, help="With a SHARE: the key's record.")
 @click.option("--key", "key_file", metavar="KEY", callback=filled, help="The custodian's party key: opens it.")
@@ -216,5 +223,7 @@ for one in (
     key_certify.revoke_command,
     key_use.open_command,
     key_use.finish_command,
+    show,
+    verify,
 ):
     command.add_command(one)
