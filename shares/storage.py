@@ -1,4 +1,4 @@
-"""Whole files: read, written, listed and undone; folders. Reading cannot be led astray, and files are whole or absent.
+"""Whole files: read, written, renamed, undone; folders. Reading cannot be led astray, and files are whole or absent.
 
 Source: open(2), mkdir(2), posix_fadvise(2) of the Linux manual pages.
 May import: errors, memory, streams.
@@ -12,27 +12,34 @@ from __future__ import annotations
 import contextlib
 import os
 import re
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Final
 
 from shares.errors import StorageError
 from shares.memory import Secret
 from shares.streams import (
+    CREATE,
     Octets,
     Reader,
     folder_of,
+    give_name,
+    medium_sync,
     new_file,
     refusing,
     regular_file,
     remove,
+    remove_if_possible,
     secret_source,
     sync_folder,
+    write_all,
 )
 from shares.streams import StrPath as StrPath
 
 _CHUNK: Final = 65536
 _PARTIAL: Final = re.compile(r"\..+\.[0-9a-f]{16}\.partial", re.DOTALL)
 
+_MANY: Final = 16
 _CHECK: Final = "check that it is the right file"
 
 
@@ -108,6 +115,42 @@ def write_new(path: StrPath, data: Octets, *, secret: bool) -> None:
         write(data)
 
 
+def write_many_new(folder: StrPath, files: Mapping[str, bytes]) -> None:
+    """Write many new files, of mode 0600, and put them on the medium together: much faster than one by one.
+
+    A killed run may leave any of them, and one of them incomplete. So they count for nothing until a file that is
+    written after them, by ``write_new``, says so.
+
+    Args:
+        folder: where; it must exist.
+        files: their names and contents.
+
+    Raises:
+        StorageError: a name is taken, or the medium or folder refuses; then nothing of this call is left behind.
+
+    Source: syncfs(2).
+    """
+    # Few files are not worth waiting for all that others have written to the medium.
+    together = medium_sync() if len(files) >= _MANY else None
+    with refusing(folder), folder_of(Path(folder) / "any") as held, contextlib.ExitStack() as undo:
+        for name, data in files.items():
+            descriptor = os.open(name, CREATE, 0o600, dir_fd=held)
+            undo.callback(remove_if_possible, held, name)
+            try:
+                # As for one new file: a medium without modes that refuses this loses nothing.
+                with contextlib.suppress(OSError):
+                    os.fchmod(descriptor, 0o600)
+                write_all(descriptor, data)
+                if together is None:
+                    os.fsync(descriptor)
+            finally:
+                os.close(descriptor)
+        if together is not None:
+            together(held)
+        sync_folder(held)
+        undo.pop_all()
+
+
 def make_folder(path: StrPath) -> None:
     """Make a folder, and those above it that are missing, each of mode 0700; one that exists is left as it is.
 
@@ -166,6 +209,59 @@ def discard(path: StrPath) -> None:
     with refusing(path), folder_of(path) as folder:
         remove(folder, path.name)
         sync_folder(folder)
+
+
+def rename_new(path: StrPath, name: str) -> None:
+    """Give a file another name in its folder, in one step that never replaces; on return that is on the medium.
+
+    Of several processes that do so to one file at once, one succeeds. Where a medium has links alone, more than one
+    may, and each then finds all the names in the folder.
+
+    Args:
+        path: the file.
+        name: its new name, in the same folder.
+
+    Raises:
+        StorageError: the file is missing, the name is taken, or the medium refuses or has no such step.
+    """
+    path = Path(path)
+    with refusing(path), folder_of(path) as folder:
+        if not give_name(folder, path.name, name):
+            raise StorageError(
+                "lies on a medium where files cannot be renamed safely",
+                where=os.fspath(path),
+                hint="use another medium",
+            )
+        remove(folder, path.name)
+        sync_folder(folder)
+
+
+def sync(folder: StrPath) -> None:
+    """Put on the medium what was named, renamed and removed in a folder, by whomever.
+
+    Raises:
+        StorageError: the folder is missing, or the medium refuses.
+    """
+    with refusing(folder), folder_of(Path(folder) / "any") as held:
+        sync_folder(held)
+
+
+def empty(path: StrPath) -> None:
+    """Take away what a file holds, and leave its name. The medium may keep the old blocks.
+
+    Args:
+        path: a regular file; no link is followed.
+
+    Raises:
+        StorageError: it is missing, or the system refuses.
+    """
+    with refusing(path):
+        descriptor = os.open(path, os.O_WRONLY | os.O_NOFOLLOW | os.O_CLOEXEC | os.O_NONBLOCK)
+        try:
+            os.ftruncate(descriptor, 0)
+            os.fsync(descriptor)
+        finally:
+            os.close(descriptor)
 
 
 def _read(path: StrPath, limit: int, *, fresh: bool) -> bytes:

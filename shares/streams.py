@@ -25,7 +25,7 @@ Write: TypeAlias = Callable[[Octets], None]
 """Writes all of what it is given, after what it was given before."""
 
 _READ: Final = os.O_RDONLY | os.O_CLOEXEC | os.O_NOCTTY
-_CREATE: Final = os.O_WRONLY | os.O_CREAT | os.O_EXCL | os.O_NOFOLLOW | os.O_CLOEXEC
+CREATE: Final = os.O_WRONLY | os.O_CREAT | os.O_EXCL | os.O_NOFOLLOW | os.O_CLOEXEC
 _COPIED_AT_ONCE: Final = 65_536
 
 # Linux's number for rename(2) without replacing, which the standard library does not name (linux/fs.h).
@@ -206,11 +206,11 @@ def new_file(path: StrPath, *, secret: bool) -> Iterator[Write]:
         with _created(folder, temporary, path, mode, undo) as write:
             yield write
         with refusing(path):
-            named = _give_name(folder, temporary, path.name)
+            named = give_name(folder, temporary, path.name)
         if not named:
             with _created(folder, path.name, path, mode, undo) as write:
                 _copy(folder, temporary, path, write)
-        undo.callback(_remove_if_possible, folder, path.name)
+        undo.callback(remove_if_possible, folder, path.name)
         with refusing(path):
             remove(folder, temporary)
             sync_folder(folder)
@@ -221,8 +221,8 @@ def new_file(path: StrPath, *, secret: bool) -> Iterator[Write]:
 def _created(folder: int, name: str, path: Path, mode: int, undo: contextlib.ExitStack) -> Iterator[Write]:
     """Create one file exclusively, and put what is written to it on the medium."""
     with refusing(path):
-        descriptor = os.open(name, _CREATE, 0o600, dir_fd=folder)
-    undo.callback(_remove_if_possible, folder, name)
+        descriptor = os.open(name, CREATE, 0o600, dir_fd=folder)
+    undo.callback(remove_if_possible, folder, name)
 
     def write(data: Octets) -> None:
         with refusing(path):
@@ -265,8 +265,14 @@ def _copy(folder: int, name: str, path: Path, write: Write) -> None:
                 write(filled)
 
 
-def _give_name(folder: int, temporary: str, name: str) -> bool:
-    """Give a finished file its final name unless that is taken; say whether this medium has a way to do so."""
+def give_name(folder: int, temporary: str, name: str) -> bool:
+    """Give a finished file another name unless that is taken; say whether this medium has a way to do so.
+
+    The old name may stay beside it: it is the caller's to remove.
+
+    Raises:
+        OSError: as the system says, and that the name is taken.
+    """
     for exclusive in (_rename_new, _link_new):
         try:
             exclusive(folder, temporary, name)
@@ -305,8 +311,9 @@ def remove(folder: int, name: str) -> None:
         os.unlink(name, dir_fd=folder)
 
 
-def _remove_if_possible(folder: int, name: str) -> None:
-    # While undoing, the first error is the one to report; what stays is named by storage.leftovers().
+def remove_if_possible(folder: int, name: str) -> None:
+    """Remove a file while undoing: then the first error is the one to report, not one of this."""
+    # What stays is named by storage.leftovers().
     with contextlib.suppress(OSError):
         os.unlink(name, dir_fd=folder)
 
@@ -322,6 +329,27 @@ def sync_folder(folder: int) -> None:
     except OSError as error:
         if error.errno not in _UNSUPPORTED:
             raise
+
+
+def medium_sync() -> Callable[[int], None] | None:
+    """Return what writes out a whole medium, given an open folder on it; None where the system has no such call.
+
+    Before Linux 5.8 it does not tell of data that could not be written.
+
+    Source: syncfs(2), which the standard library does not have.
+    """
+    import ctypes
+
+    syncfs = getattr(ctypes.CDLL(None, use_errno=True), "syncfs", None)
+    if syncfs is None:
+        return None
+
+    def sync(folder: int) -> None:
+        if syncfs(folder) != 0:
+            code = ctypes.get_errno()
+            raise OSError(code, os.strerror(code))
+
+    return sync
 
 
 @contextlib.contextmanager

@@ -546,6 +546,108 @@ def test_discarding_removes_one_file_and_may_be_repeated(tmp_path: Path) -> None
     assert (tmp_path / "folder").is_dir()
 
 
+# Renaming, emptying, many files at once.
+
+
+def test_renaming_never_replaces(tmp_path: Path, medium: str) -> None:
+    for name in ("a", "b"):
+        storage.write_new(tmp_path / name, name.encode(), secret=True)
+    if medium == "create":
+        with pytest.raises(StorageError, match="renamed safely"):
+            storage.rename_new(tmp_path / "a", "c")
+    else:
+        storage.rename_new(tmp_path / "a", "c")
+        assert (tmp_path / "c").read_bytes() == b"a"
+        with pytest.raises(StorageError, match="exists already"):
+            storage.rename_new(tmp_path / "b", "c")
+        with pytest.raises(StorageError, match="does not exist"):
+            storage.rename_new(tmp_path / "a", "d")
+    assert sorted(os.listdir(tmp_path)) == (["a", "b"] if medium == "create" else ["b", "c"])
+
+
+@pytest.mark.parametrize("act", ["rename_new", "sync", "write_many_new"])
+def test_a_folder_is_put_on_the_medium(tmp_path: Path, act: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Each of these ends with fsync(2) of the folder."""
+    (tmp_path / "a").write_bytes(b"")
+    synced: list[str] = []
+    real = os.fsync
+
+    def watch(descriptor: int) -> None:
+        synced.append(os.readlink(f"/proc/self/fd/{descriptor}"))
+        real(descriptor)
+
+    monkeypatch.setattr(os, "fsync", watch)
+    match act:
+        case "rename_new":
+            storage.rename_new(tmp_path / "a", "b")
+        case "sync":
+            storage.sync(tmp_path)
+        case _:
+            storage.write_many_new(tmp_path, {"b": DATA})
+    assert synced[-1] == os.fspath(tmp_path)
+
+
+def test_emptying_leaves_the_name(tmp_path: Path) -> None:
+    storage.write_new(tmp_path / "file", DATA, secret=True)
+    (tmp_path / "link").symlink_to("file")
+    os.mkfifo(tmp_path / "pipe")
+    (tmp_path / "folder").mkdir()
+    for name in ("link", "pipe", "folder", "missing"):
+        with pytest.raises(StorageError):
+            storage.empty(tmp_path / name)
+    assert (tmp_path / "file").read_bytes() == DATA
+    for _ in range(2):
+        storage.empty(tmp_path / "file")
+        assert (tmp_path / "file").read_bytes() == b""
+    assert mode_of(tmp_path / "file") == 0o600
+
+
+@pytest.mark.parametrize("count", [0, 1, 15, 16, 40])
+@pytest.mark.parametrize("together", [True, False])
+def test_many_files_are_written(tmp_path: Path, count: int, together: bool, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Whether the system can write out a whole medium or not; then each file is by itself."""
+    if not together:
+        monkeypatch.setattr(storage, "medium_sync", lambda: None)
+    before = os.umask(0o777)
+    files = {f"file{number}": DATA + bytes([number]) for number in range(count)}
+    try:
+        storage.write_many_new(tmp_path, files)
+    finally:
+        os.umask(before)
+    assert {path.name: path.read_bytes() for path in tmp_path.iterdir()} == files
+    assert {mode_of(path) for path in tmp_path.iterdir()} <= {0o600}
+
+
+@pytest.mark.parametrize("occupied", ["file0", "file19"])
+def test_many_files_are_written_or_none(tmp_path: Path, occupied: str) -> None:
+    (tmp_path / occupied).write_bytes(b"before")
+    with pytest.raises(StorageError, match="exists already"):
+        storage.write_many_new(tmp_path, {f"file{number}": DATA for number in range(20)})
+    assert os.listdir(tmp_path) == [occupied]
+    assert (tmp_path / occupied).read_bytes() == b"before"
+    with pytest.raises(StorageError, match="does not exist"):
+        storage.write_many_new(tmp_path / "missing", {"file": DATA})
+
+
+def test_a_medium_that_cannot_be_written_out_is_refused(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def fails(folder: int) -> None:
+        raise OSError(errno.EIO, "as the system answers")
+
+    monkeypatch.setattr(storage, "medium_sync", lambda: fails)
+    with pytest.raises(StorageError, match="the medium reports an error"):
+        storage.write_many_new(tmp_path, {f"file{number}": DATA for number in range(20)})
+    assert os.listdir(tmp_path) == []
+
+
+def test_the_systems_own_call_says_what_it_refuses(tmp_path: Path) -> None:
+    sync = streams.medium_sync()
+    assert sync is not None
+    with streams.folder_of(tmp_path / "any") as folder:
+        sync(folder)
+    with pytest.raises(OSError, match="Bad file descriptor"):
+        sync(-1)
+
+
 # Reading documents.
 
 

@@ -39,6 +39,19 @@ def moment(_: click.Context, parameter: click.Parameter, value: str | None) -> d
     return None if value is None else _read(clock.from_text, parameter, value)
 
 
+def later(moment: datetime, span: timedelta) -> datetime:
+    """Return the moment that lies so far ahead of another.
+
+    Raises:
+        ParameterError: no calendar has it.
+    """
+    try:
+        return moment + span
+    except OverflowError:
+        pass
+    raise ParameterError("it would end after the year 9999", hint="give a shorter time, like 10y")
+
+
 def _read(parse: Callable[[str], Read], parameter: click.Parameter, value: str) -> Read:
     try:
         return parse(value)

@@ -19,8 +19,9 @@ from shares.cli.keys import opening, sign_option, signers, warn_unsigned
 from shares.cli.output import filled, json_option, print_result, progress, warn
 from shares.cli.passphrases import passphrase_options
 from shares.custody.parties import load_card
-from shares.documents.base import MAX_FILE
+from shares.documents.base import MAX_FILE, parse_object
 from shares.documents.event import EVENT_NAMES, Remedy
+from shares.documents.key_record import KeyRecord
 from shares.documents.policy import Policy
 from shares.documents.record import Record
 from shares.errors import StorageError, VerificationError
@@ -275,9 +276,12 @@ def _load(files: Files) -> Journal:
     return read_journal(files.read(JOURNAL_NAME, limit=MAX_JOURNAL), progress=told)
 
 
-def _record_and_policy(files: Files) -> tuple[Record, Policy | None]:
+def _record_and_policy(files: Files) -> tuple[Record | KeyRecord, Policy | None]:
     where = os.path.join(files.where, RECORD_NAME)
-    record = Record.parse(files.read(RECORD_NAME, limit=MAX_FILE), where=where)
+    data = files.read(RECORD_NAME, limit=MAX_FILE)
+    if parse_object(data, where=where).get("kind") == KeyRecord.KIND:
+        return KeyRecord.parse(data, where=where), None
+    record = Record.parse(data, where=where)
     if record.policy is not None and POLICY_NAME not in files.names():
         warn("the policy is not beside the record: nothing says whether two parties have to sign each entry.")
         return record, None

@@ -93,6 +93,13 @@ def warn(line: str) -> None:
         click.echo(_printable(f"Caution: {line}"), err=True)
 
 
+def say(lines: Iterable[str]) -> None:
+    """Print lines for people to standard error: what is about to be done."""
+    with contextlib.suppress(OSError):
+        for line in lines:
+            click.echo(_printable(line), err=True)
+
+
 def print_error(error: SharesError, *, as_json: bool) -> None:
     """Print a refusal: what, where, what next; one line on standard error, or JSON on standard output."""
     if as_json:

@@ -14,12 +14,17 @@ from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
 from shares.documents.chunks import Header
 from shares.documents.drill_report import DrillReport
+from shares.documents.key_record import KeyRecord
+from shares.documents.key_share import KeyShare
+from shares.documents.nonce_batch import NonceBatch
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share, ShareFacts
+from shares.documents.task import Task
+from shares.documents.task_message import TaskMessage
 from shares.documents.wrapped_share import WrappedShare
-from shares.documents.wrapping import ByCard, ByPassphrase
+from shares.documents.wrapping import ByCard, ByPassphrase, Envelope
 from shares.errors import DocumentError
 from shares.field.polynomial import Polynomial
 from shares.storage import read_file
@@ -37,6 +42,11 @@ KINDS = {
     "ceremony-script": "script of a key ceremony (confidential)",
     "challenge": "challenge (what custodians are asked; fresh, dated and signed)",
     "attestation": "attestation (an answer to a challenge; `shares attest check` checks its signatures)",
+    "key-record": "record of a threshold key (public; `shares key show` tells more, and exports)",
+    "key-share": "key share (its number is sealed; `shares key verify` checks it)",
+    "task": "task (`shares task show` on its folder says where it stands)",
+    "task-message": "message of a task (`shares task show` on the task's folder judges it)",
+    "nonce-batch": "commitments of a signer (public; each is used once)",
     "encrypted-file": "encrypted file (of no use without a quorum of its set's shares)",
 }
 UNSIGNED = "unsigned: compare the fingerprint with the one read aloud at the split"
@@ -201,6 +211,55 @@ def _attestation(data: bytes, where: str) -> dict[str, object]:
     }
 
 
+def _key_record(data: bytes, where: str) -> dict[str, object]:
+    record = KeyRecord.parse(data, where=where)
+    return {
+        **record.public("label", "key", "epoch", "created", "origin", "need"),
+        "custodians": [one.name for one in record.custodians],
+        "public_key": record.public_key.encode().hex(),
+        "fingerprint": record.fingerprint,
+        "signatures": [f"{one.card.name}, card {one.card.fingerprint}" for one in record.signatures],
+    }
+
+
+def _key_share(data: bytes, where: str) -> dict[str, object]:
+    share = KeyShare.parse(data, where=where)
+    return {
+        **share.public("label", "key", "epoch", "record", "custodian", "index", "need"),
+        "wrapped": _how(share.wrapping),
+        **_whole(share),
+    }
+
+
+def _task(data: bytes, where: str) -> dict[str, object]:
+    task = Task.parse(data, where=where)
+    return {
+        **task.public("label", "key", "epoch", "record", "remark", "created", "due"),
+        "work": task.work.what,
+        "parties": list(task.names),
+        "author": f"{task.author.name}, card {task.author.fingerprint}",
+        "fingerprint": task.fingerprint,
+    }
+
+
+def _task_message(data: bytes, where: str) -> dict[str, object]:
+    said = TaskMessage.parse(data, where=where)
+    return {
+        **said.public("task", "round", "sender", "created"),
+        "says": said.body.what,
+        "sealed_for": [one.to for one in said.sealed],
+    }
+
+
+def _nonce_batch(data: bytes, where: str) -> dict[str, object]:
+    batch = NonceBatch.parse(data, where=where)
+    return {
+        **batch.public("key", "epoch", "record", "signer", "created"),
+        "pairs": len(batch.commitments),
+        "signed_by": f"{batch.card.name}, card {batch.card.fingerprint}",
+    }
+
+
 def _card_facts(card: PartyCard) -> dict[str, object]:
     return card.public("name", "contact", "created", "fingerprint")
 
@@ -216,6 +275,11 @@ FACTS: dict[str, Callable[[bytes, str], dict[str, object]]] = {
     Challenge.KIND: _challenge,
     DrillReport.KIND: _drill_report,
     Attestation.KIND: _attestation,
+    KeyRecord.KIND: _key_record,
+    KeyShare.KIND: _key_share,
+    Task.KIND: _task,
+    TaskMessage.KIND: _task_message,
+    NonceBatch.KIND: _nonce_batch,
     PartyCard.KIND: lambda data, where: _card_facts(PartyCard.parse(data, where=where)),
 }
 
@@ -226,7 +290,7 @@ def _how(wrapping: ByPassphrase | ByCard) -> str:
     return f"by passphrase (Argon2id, {wrapping.memory // 1024} MiB, {wrapping.passes} passes, {wrapping.lanes} lanes)"
 
 
-def _whole(document: Share | WrappedShare | SealedSecret) -> dict[str, object]:
+def _whole(document: Share | Envelope) -> dict[str, object]:
     return {"own_digest": "fits" if document.is_whole() else "does not fit: the file was damaged or edited"}
 
 

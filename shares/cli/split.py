@@ -7,6 +7,7 @@ from pathlib import Path
 
 import click
 
+from shares.cli.deliveries import delivery_folders
 from shares.cli.keys import suite_option
 from shares.cli.output import filled, json_option, print_result, progress, prose, warn
 from shares.cli.passphrases import GivenPassphrases, passphrase_options
@@ -147,7 +148,7 @@ def command(
     if plain and cards:
         raise ParameterError("--plain writes bare shares, and --card wraps them", hint="give one of the two")
     target, names = Path(set_folder), wanted.custodians
-    folders = _delivery_folders(names, deliveries)
+    folders = delivery_folders(names, deliveries)
     check_targets(target, folders, [*wanted.beside, ENCRYPTED_NAME])
     cautions = [*wanted.cautions, *_cautions(wanted.rule, other_shares(folders))]
     signers: list[tuple[Role, str]] = [("dealer", dealer)] if dealer is not None else []
@@ -226,48 +227,6 @@ def _cautions(rule: Rule, strangers: list[Path]) -> list[str]:
     if strangers:
         cautions.append(OTHERS_CAUTION.format(names=", ".join(map(str, strangers))))
     return cautions
-
-
-def _delivery_folders(custodians: tuple[str, ...], deliveries: tuple[str, ...]) -> dict[str, Path]:
-    """Return each custodian's folder: NAME=DIR where it is given, else the one DIR for all."""
-    own: dict[str, Path] = {}
-    common: list[Path] = []
-    for delivery in deliveries:
-        # A name may hold a sign of equality itself.
-        name = max((name for name in custodians if delivery.startswith(f"{name}=")), key=len, default=None)
-        if name is None:
-            common.append(_common_folder(delivery))
-        elif name in own:
-            raise ParameterError(f"two delivery folders are given for {name}", where="--deliver")
-        elif delivery == f"{name}=":
-            raise ParameterError(f"the delivery folder of {name} is empty", where="--deliver")
-        else:
-            own[name] = Path(delivery.removeprefix(f"{name}="))
-    if len(common) > 1:
-        raise ParameterError(
-            "more than one folder is given for all custodians",
-            where="--deliver",
-            hint="write NAME=DIR, with a custodian's name",
-        )
-    without = [name for name in custodians if name not in own]
-    if without and not common:
-        raise ParameterError(
-            f"no delivery folder is given for {', '.join(without)}",
-            where="--deliver",
-            hint="add NAME=DIR for each of them, or one DIR for all who have none of their own",
-        )
-    return own | {name: folder for folder in common for name in without}
-
-
-def _common_folder(delivery: str) -> Path:
-    folder = Path(delivery)
-    if "=" in delivery and not folder.is_dir():
-        raise ParameterError(
-            "it begins with no custodian's name, and is no folder",
-            where=f"--deliver {delivery}",
-            hint="write NAME=DIR with a name given by --custodian",
-        )
-    return folder
 
 
 def _members(dealt: Dealt, done: HandedOver, packings: dict[str, Packing], cautions: list[str]) -> dict[str, object]:

@@ -44,6 +44,9 @@ KINDS = (
     "task-step",
     "task-done",
     "nonce-batch",
+    "nonce-pair",
+    "nonce-marks",
+    "opened-message",
 )
 VERSION = 1
 
@@ -90,7 +93,12 @@ def _check_kind(members: dict[str, Any], wanted: str, where: str | None) -> None
     kind, version = members.get("kind"), members.get("version")
     if kind != wanted:
         if kind in KINDS:
-            raise OtherKindError(f"{_a(wanted)} is wanted here, but it is {_a(str(kind))}", where=where)
+            is_key = str(kind).startswith("key-") and not wanted.startswith("key-")
+            raise OtherKindError(
+                f"{_a(wanted)} is wanted here, but it is {_a(str(kind))}",
+                where=where,
+                hint="a threshold key has commands of its own: see `shares key --help`" if is_key else None,
+            )
         raise DocumentError(
             f"{_a(wanted)} is wanted here, but it does not say that it is one of this program's documents", where=where
         )

@@ -19,10 +19,17 @@ from shares.documents.ceremony_script import CeremonyScript
 from shares.documents.challenge import Challenge
 from shares.documents.drill_report import DrillReport
 from shares.documents.entry import Entry
+from shares.documents.key_record import KeyRecord
+from shares.documents.key_share import KeyShare
+from shares.documents.nonce_batch import NonceBatch, NonceMarks, NoncePair
+from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.share import Share
+from shares.documents.task import Task
+from shares.documents.task_message import TaskMessage
+from shares.documents.task_step import TaskDone, TaskStep
 from shares.documents.wrapped_share import WrappedShare
 
 KINDS: tuple[type[Document], ...] = (
@@ -38,6 +45,16 @@ KINDS: tuple[type[Document], ...] = (
     CeremonyScript,
     Entry,
     DrillReport,
+    KeyRecord,
+    KeyShare,
+    Task,
+    TaskMessage,
+    TaskStep,
+    TaskDone,
+    NoncePair,
+    NonceMarks,
+    NonceBatch,
+    OpenedMessage,
 )
 FOLDER = Path(__file__).with_name("schemas")
 

@@ -170,7 +170,7 @@ class Task(Document):
         return self.public(*(set(type(self).model_fields) - {"signature"}))
 
     @classmethod
-    def signed_by(cls, key: OpenPartyKey, **members: object) -> Self:
+    def signed_by(cls, key: OpenPartyKey, /, **members: object) -> Self:
         """Return the task with these members, signed.
 
         Args:

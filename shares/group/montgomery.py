@@ -6,8 +6,8 @@ itself: whichever of the two ``lift`` returns, its multiples have the u that X25
 Source: RFC 7748, sec. 4.1 (the birational maps, u = (1 + y) / (1 - y) and y = (u - 1) / (u + 1)) and 5 (encoding of u);
     RFC 8032, sec. 5.1.2 (encoding of points).
 May import: shares.errors, .edwards25519.
-Secret: nothing. Public: everything; Python's integers compute here, so a secret u (a shared secret of X25519) must not
-be lifted.
+Secret: what ``agreed`` takes and returns, which only the library computes with. Public: everything else; Python's
+integers compute there, so a secret u (a shared secret of X25519) must not be lifted.
 Does not: multiply. A scalar that is not clamped multiplies the lifted point, which is why ``lift`` insists on the group
 of prime order, where X25519 would let clamping take small factors away.
 """
@@ -15,6 +15,8 @@ of prime order, where X25519 would let clamping take small factors away.
 from __future__ import annotations
 
 from typing import Final
+
+import nacl.bindings as sodium
 
 from shares.errors import VerificationError
 from shares.group.edwards25519 import SIZE, Point
@@ -37,6 +39,18 @@ def public_of(point: Point) -> bytes:
     # No point has y = 1: that would be the identity.
     y = int.from_bytes(point.encode(), "little") % _SIGN
     return ((1 + y) * pow(1 - y, -1, _P) % _P).to_bytes(SIZE, "little")
+
+
+def agreed(point: Point) -> bytes:
+    """Return u of a secret point, 32 bytes: what X25519 would have computed. It equals ``public_of``, in the library.
+
+    Source: RFC 7748, sec. 4.1; libsodium, crypto_sign_ed25519_pk_to_curve25519.
+
+    >>> from shares.group.edwards25519 import BASE
+    >>> agreed(BASE) == public_of(BASE)
+    True
+    """
+    return sodium.crypto_sign_ed25519_pk_to_curve25519(point.encode())
 
 
 def lift(u: bytes) -> Point:

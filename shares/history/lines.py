@@ -29,6 +29,10 @@ PATIENCE: Final = 60.0
 # O_NONBLOCK: a pipe in the file's place is refused at once instead of waited for.
 _OPEN: Final = os.O_NOFOLLOW | os.O_NONBLOCK | os.O_NOCTTY | os.O_CLOEXEC
 _PAUSE: Final = 0.02
+# What flock(2) answers where a medium has no locks on folders.
+_UNSUPPORTED: Final = frozenset(
+    {errno.EBADF, errno.EINVAL, errno.ENOLCK, errno.ENOSYS, errno.ENOTSUP, errno.EOPNOTSUPP}
+)
 _PIECE: Final = 1 << 20
 
 
@@ -127,6 +131,25 @@ def writing(path: Path) -> Iterator[Lines]:
             yield lines
         finally:
             os.close(descriptor)
+
+
+@contextlib.contextmanager
+def alone_in(folder: Path) -> Iterator[None]:
+    """Let no other process be within ``alone_in`` this folder meanwhile, where its medium can tell.
+
+    Raises:
+        StorageError: another process has been for a minute, or the folder cannot be opened.
+
+    Source: flock(2). On a medium without locks what keeps processes apart is that files are created exclusively.
+    """
+    with folder_of(folder / "any") as descriptor:
+        with refusing(folder):
+            try:
+                _lock(descriptor, fcntl.LOCK_EX, folder)
+            except OSError as error:
+                if isinstance(error, StorageError) or error.errno not in _UNSUPPORTED:
+                    raise
+        yield
 
 
 def wait_for_writers(path: Path) -> None:

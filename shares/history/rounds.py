@@ -1,7 +1,7 @@
 """What a task is made of, whatever its purpose: rounds, who speaks in each, what a party says and what comes of it.
 
-Source: RFC 9591, sec. 5 (rounds, a coordinator without secrets); J. A. Garay et al. and others call it identifiable
-abort: a task that fails says who made it fail.
+Source: RFC 9591, sec. 5 (rounds, a coordinator without secrets); Y. Ishai, R. Ostrovsky, V. Zikas, "Secure multi-party
+computation with identifiable abort", CRYPTO 2014: a task that fails says who made it fail.
 May import: shares.errors, shares.memory, shares.documents.
 Secret: states and what is sealed, passed through. Public: the rest.
 Does not: touch files (``exchange`` and ``steps`` do), or know any purpose; ``keys`` does.
@@ -92,33 +92,42 @@ class Outcome:
         files: to be written into the party's own folder, in this order; the last one is the commit point.
         event: for its journal.
         words: what happened, what it proves, what next.
+        ends: whether the party's steps, and with them all they keep, are erased now. False where another command has
+            still to use what they keep, and ends the task then.
     """
 
     files: Sequence[NewFile]
     event: Event | None
     words: Sequence[str]
+    ends: bool = True
 
 
 class Course(Protocol):
     """The rounds of one purpose, as everybody can follow them, holding no secret.
 
+    The inboxes that it is asked about hold whole rounds only: each message of them was checked to come from who speaks
+    there, and to name the same messages of earlier rounds. With no round yet, it may look at the task alone.
+
     Attributes:
         rounds: what is said in each round, in a few words.
-        private: whether anything is sealed: round 0 is then about fresh keys, which ``history.steps`` makes itself.
+        private: whether anything is sealed: round 0 is then about fresh keys, which ``history.next`` makes itself.
     """
 
     rounds: Sequence[str]
     private: bool
 
     def speakers(self, round: int, inbox: Inbox) -> Sequence[str]:
-        """Return who speaks in a round, once all earlier rounds are complete; nobody skips the round."""
+        """Return who speaks in a round, once all earlier rounds are complete and fine; nobody skips the round."""
 
     def failure(self, inbox: Inbox) -> Failure | None:
         """Say why the task has failed already, judging by the rounds that are complete; None while it has not."""
 
 
 class Part(Protocol):
-    """What one party does in a task. It keeps no state of its own between rounds: it is given what it has kept."""
+    """What one party does in a task. It keeps no state of its own between rounds: it is given what it has kept.
+
+    Where the course is private, round 0 is not its own to say; whether to take part in it at all is.
+    """
 
     def prospect(self, round: int, inbox: Inbox) -> Sequence[str]:
         """Return what this party is about to do in a round, in words, cautions included, before anything is done."""

@@ -14,6 +14,8 @@ from collections.abc import Iterable, Iterator, Sequence
 
 from shares.documents.entry import Entry, Head, NamedDigest
 from shares.documents.event import Dealt, SetAside
+from shares.documents.key_event import KeyBorn
+from shares.documents.key_record import KeyRecord
 from shares.documents.party import PartyCard
 from shares.documents.policy import Policy
 from shares.documents.record import Record
@@ -25,7 +27,7 @@ from shares.history.journal import Journal, Problem, unnamed
 def verify(
     journal: Journal,
     files: Files,
-    record: Record,
+    record: Record | KeyRecord,
     policy: Policy | None,
     *,
     heads: Sequence[Head] = (),
@@ -36,7 +38,7 @@ def verify(
     Args:
         journal: as ``read_journal`` read it.
         files: those of its set.
-        record: the set's.
+        record: the set's, or the threshold key's.
         policy: the set's, where there is one: whether two parties sign each entry, of those trusted if some are given.
         heads: where the journal is known to have stood: noted elsewhere, or quoted in attestations and reports.
         trusted: cards whose fingerprints were compared; where some are given, one of these parties signs each entry.
@@ -47,7 +49,7 @@ def verify(
     names = files.names()
     return (
         *journal.problems,
-        *_record_problems(journal, record),
+        *(_record_problems(journal, record) if isinstance(record, Record) else _key_problems(journal, record)),
         *_document_problems(journal, files, frozenset(names)),
         *_set_aside(journal, names),
         *_signer_problems(journal, policy, trusted),
@@ -76,6 +78,18 @@ def _record_problems(journal: Journal, record: Record) -> Iterator[Problem]:
         yield Problem(0, what, kind="record")
     elif [share.name for share in latest.custodians] != [custodian.name for custodian in record.custodians]:
         yield Problem(0, "the set was dealt to other custodians than those of the record", kind="record")
+
+
+def _key_problems(journal: Journal, record: KeyRecord) -> Iterator[Problem]:
+    births = [(entry.sequence, entry.event) for entry in journal.entries if isinstance(entry.event, KeyBorn)]
+    for number, born in births:
+        if (born.key, born.epoch, born.record) != (record.key, record.epoch, record.fingerprint):
+            what = f"it tells of the key record {born.record}, and the one here is {record.fingerprint}"
+            yield Problem(number, what, kind="record")
+    if not births:
+        # Whoever only asks for tasks begins a journal when the key has long been there.
+        what = "no entry tells how the key was born: this journal was begun later, or its beginning is gone"
+        yield Problem(0, what, breaks=False, kind="record")
 
 
 def _document_problems(journal: Journal, files: Files, names: frozenset[str]) -> Iterator[Problem]:

@@ -116,11 +116,11 @@ def public_share(commitments: Sequence[Point], x: int) -> Point:
     """
     if not commitments:
         raise ParameterError("there are no commitments")
-    at = Scalar.of_index(x)
-    *lower, value = commitments
-    for commitment in reversed(lower):
-        value = at * value + commitment
-    return value
+    Scalar.of_index(x)  # It refuses an index out of range.
+    constant, *higher = commitments
+    # Not by Horner's rule: a dealer could choose commitments whose sum on the way is the identity, and be told from the
+    # definition by that alone.
+    return total([constant, *(Scalar.of(pow(x, j, ORDER)) * a_j for j, a_j in enumerate(higher, start=1))])
 
 
 def check_degree(commitments: Sequence[Point], need: int) -> None:

@@ -13,6 +13,7 @@ from pathlib import Path
 
 import pytest
 from cli.harness import NAMES, PROGRAM, Place, run
+from cli.keyed import key_before
 from cryptography.hazmat.primitives import serialization
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 
@@ -70,6 +71,21 @@ PAGES: list[tuple[str, ...]] = [
     ("journal", "head"),
     ("audit",),
     ("audit", "pack"),
+    ("key",),
+    ("key", "deal"),
+    ("key", "join"),
+    ("key", "commit"),
+    ("key", "sign"),
+    ("key", "root"),
+    ("key", "certify"),
+    ("key", "revoke"),
+    ("key", "open"),
+    ("key", "finish"),
+    ("key", "show"),
+    ("key", "verify"),
+    ("task",),
+    ("task", "next"),
+    ("task", "show"),
     ("sheet",),
     ("selftest",),
     ("completion",),
@@ -151,6 +167,8 @@ def go_before(page: tuple[str, ...], folder: Path) -> None:
     if page == ("drill", "close"):
         practice = [folder / f"{name}.practice.json" for name in NAMES[:3]]
         assert run("drill", "rehearse", of_set, *practice).code == 0
+    if page[:1] in (("key",), ("task",)):
+        key_before(page[-1] if page[0] == "key" else "task", folder)
     if page == ("audit",):
         shutil.copytree(of_set, folder / "srv" / "sets" / "tide-archive")
         (folder / "noted-on-monday.txt").write_text(run("journal", "head", of_set).out)

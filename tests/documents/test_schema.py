@@ -13,6 +13,7 @@ import jsonschema
 import pytest
 from attested import answered, challenge, sealed
 from hypothesis import given
+from keys.samples import as_json, key_documents, key_mutations
 from parties import QUICK, card, party, passphrase, unlocked
 from strategies import CREATED, crooked_split, flat, moduli, octets, rules
 from vectors.make import wrapping_v1 as by_hand
@@ -22,6 +23,8 @@ from shares.documents.base import Document
 from shares.documents.ceremony_script import CeremonyRole, CeremonyScript, CeremonyStep, Software
 from shares.documents.drill_report import Action, DrillReport, DrillStep, Participant
 from shares.documents.entry import head_of
+from shares.documents.key_event import Content
+from shares.documents.opened_message import OpenedMessage
 from shares.documents.schema import FOLDER, KINDS, schema, schema_files
 from shares.documents.sealed_secret import SealedSecret
 from shares.documents.wrapped_share import WrappedShare
@@ -64,10 +67,13 @@ def samples() -> dict[str, Any]:
         "attestation of a seal": sealed(asked),
         "ceremony-script": script,
         "drill-report": report,
+        "opened-message": opened_message(),
     }
     journal = (Path(__file__).parents[1] / "vectors/golden/v1/journal/journal.jsonl").read_text().splitlines()
     entries = {f"journal-entry {i + 1}": json.loads(line) for i, line in enumerate(journal)}
-    return {name: json.loads(document.to_file()) for name, document in made.items()} | entries
+    return (
+        {name: json.loads(document.to_file()) for name, document in made.items()} | entries | as_json(key_documents())
+    )
 
 
 def ceremony_script() -> CeremonyScript:
@@ -120,6 +126,20 @@ def drill_report() -> DrillReport:
         actions=(Action(owner="registrar", due=CREATED, what="a second key"),),
         journal=head_of(3, bytes(32)),
         signatures=(),
+    )
+
+
+def opened_message() -> OpenedMessage:
+    """What a custodian remembers of a message of 100 bytes."""
+    return OpenedMessage(
+        kind="opened-message",
+        version=1,
+        key=bytes(16),
+        encapsulated=bytes([9]) + bytes(31),
+        content=Content(size=100, digest=bytes(32)),
+        task=bytes(32),
+        receiver=NAME,
+        time=CREATED,
     )
 
 
@@ -326,6 +346,16 @@ PER_SAMPLE: dict[str, dict[str, dict[str, Any]]] = {
         "nine signatures": {"signatures": SAMPLES["drill-report"]["signatures"] * 9},
     },
 }
+PER_SAMPLE["opened-message"] = {
+    **some(*COMMON),
+    "a short key id": {"key": "00" * 15},
+    "an encapsulated key too long": {"encapsulated": "A" * 44},
+    "a digest alone": {"content": {"digest": "00" * 32}},
+    "more than 64 MiB": {"content": {"size": (64 << 20) + 1, "digest": "00" * 32}},
+    "a size below 0": {"content": {"size": -1, "digest": "00" * 32}},
+    "no receiver": {"receiver": ""},
+    "a local time": {"time": "2026-12-01T07:00:00+01:00"},
+}
 OF_CHALLENGE: dict[str, dict[str, Any]] = {
     "another purpose": {"purpose": "recovery"},
     "nobody asked": {"custodians": []},
@@ -353,6 +383,7 @@ PER_SAMPLE |= {
     "challenge": {**some(*COMMON, *FACTS[:-1], *LABEL), **OF_CHALLENGE},
     "attestation": {**some(*COMMON, *FACTS[:-1]), **OF_ATTESTATION},
 }
+PER_SAMPLE |= key_mutations(SAMPLES)
 ENTRY, EVENT = SAMPLES["journal-entry 2"], SAMPLES["journal-entry 2"]["event"]
 OF_ENTRY: dict[str, dict[str, Any]] = {
     **some(*COMMON),

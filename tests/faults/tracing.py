@@ -116,6 +116,7 @@ def _named_alike(rest: str, folder: Path) -> str:
     what = re.split(r"\) +=|0x|\{| <unfinished", rest)[0]
     what = what.replace(f"{folder}/", "").replace(os.fspath(folder), "*").replace(os.getcwd(), ".")
     what = re.sub(r"\.[0-9a-f]{16}\.partial", ".*.partial", what)
+    what = re.sub(r"[0-9a-f]{32,64}", "*", what)  # digests and random names
     what = re.sub(r"[\w-]+\.share\.json", "*.share.json", what)
     return re.sub(r"\b\d+<", "<", what).rstrip(' ,)["')
 

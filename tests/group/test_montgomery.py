@@ -13,7 +13,7 @@ from hypothesis import strategies as st
 
 from shares.errors import VerificationError
 from shares.group.edwards25519 import BASE, ORDER, Scalar
-from shares.group.montgomery import lift, public_of
+from shares.group.montgomery import agreed, lift, public_of
 
 NOT_CANONICAL = "it is not in its one encoding"
 MINUS_ONE = "is -1, to which no point"
@@ -189,3 +189,9 @@ class TestRefusals:
         mixed = curve.add(curve.multiply(0xC0FFEE, curve.BASE), torsion)
         with pytest.raises(VerificationError, match=SMALL):
             lift(little(curve.u_of(mixed)))
+
+
+def test_a_secret_point_is_mapped_by_the_library_to_the_same_u() -> None:
+    for _ in range(100):
+        point = Scalar.drawn() * BASE
+        assert agreed(point) == public_of(point)

@@ -188,7 +188,9 @@ class TestEncoding:
             Proof.decode(bytes(length))
 
     @pytest.mark.parametrize(
-        "octets", [bytes(64), bytes(32) + EQUALITY.encode()[32:], EQUALITY.encode()[:32] + bytes(32)]
+        "octets",
+        [bytes(64), bytes(32) + EQUALITY.encode()[32:], EQUALITY.encode()[:32] + bytes(32)],
+        ids=["both", "challenge", "response"],
     )
     def test_zeros(self, octets):
         for check in (self.possession, self.equality):

@@ -1,7 +1,8 @@
 """The golden sample of a journal, with one entry of every event: it stays readable for ever, to the letter.
 
-Source: tests/vectors/golden/v1/journal, made by tests/vectors/make/journal_v1.py from shares/documents/FORMAT.md,
-section 16, with no code of this package; the second reader is by_hand.py, written from the same page.
+Source: tests/vectors/golden/v1/journal and .../keyed, made by tests/vectors/make/journal_v1.py and keyed_v1.py from
+shares/documents/FORMAT_EVIDENCE.md, section 16, and FORMAT_KEYS.md, section 26, with no code of this package; the
+second reader is by_hand.py, written from the same page.
 """
 
 from __future__ import annotations
@@ -11,6 +12,7 @@ from pathlib import Path
 from history import by_hand
 
 from shares.documents.event import EVENT_NAMES
+from shares.documents.key_event import KeyBorn, TaskAsked
 from shares.documents.record import Record
 from shares.history.files import FolderFiles
 from shares.history.journal import load_journal, read_journal
@@ -20,6 +22,14 @@ from shares.history.words import words
 FOLDER = Path(__file__).parents[1] / "vectors" / "golden" / "v1"
 DATA = (FOLDER / "journal" / "journal.jsonl").read_bytes()
 RECORD = Record.parse((FOLDER / "flat" / "record.json").read_bytes())
+OF_A_KEY = (FOLDER / "keyed" / "journal.jsonl").read_bytes()
+OF_A_KEY_SENTENCES = """\
+key dealt, epoch 1, record {record}
+2 nonces made by north-pier, and commitments to them handed out
+north-pier, south-pier, harbour-office asked to open (task {task}): by boat
+north-pier agreed to open: a letter, 72 bytes (task {task})
+task {task} to open finished
+"""
 SENTENCES = """\
 epoch 1 dealt to north-pier, south-pier, light-house, registrar, harbour-office
 card of registrar made known: {card}
@@ -59,8 +69,20 @@ def test_it_is_whole_and_read_alike_by_both_readers() -> None:
     assert signers == [["harbour-office"], ["harbour-office", "registrar"]] * 12 + [["harbour-office"]]
 
 
-def test_it_holds_one_entry_of_every_event() -> None:
-    assert sorted(entry.event.what for entry in read_journal(DATA).entries) == sorted(EVENT_NAMES)
+def test_it_and_that_of_a_key_hold_one_entry_of_every_event() -> None:
+    told = [entry.event.what for data in (DATA, OF_A_KEY) for entry in read_journal(data).entries]
+    assert sorted(told) == sorted(EVENT_NAMES)
+
+
+def test_that_of_a_key_is_whole_and_said_in_sentences() -> None:
+    journal = read_journal(OF_A_KEY)
+    assert journal.problems == ()
+    assert by_hand.check(OF_A_KEY)[0] == []
+    assert b"".join(entry.line() + b"\n" for entry in journal.entries) == OF_A_KEY
+    (asked,) = (entry.event for entry in journal.entries if isinstance(entry.event, TaskAsked))
+    (born,) = (entry.event for entry in journal.entries if isinstance(entry.event, KeyBorn))
+    expected = OF_A_KEY_SENTENCES.format(record=born.record, task=asked.task.hex()[:16])
+    assert [words(entry.event) for entry in journal.entries] == expected.splitlines()
 
 
 def test_what_is_written_of_its_entries_is_the_same_to_the_byte() -> None:

@@ -68,9 +68,14 @@ def line_digest(line: bytes) -> bytes:
 
 
 def lines(record: Json, cards: list[Json]) -> list[bytes]:
-    """Write the journal: the first party signs every entry, the second every other."""
+    """Write the journal of a set."""
+    return chained(events(record, cards[-1]), cards, {4: [{"path": "record.json", "digest": "1d" * 32}]})
+
+
+def chained(told: list[Json], cards: list[Json], named: dict[int, list[Json]] | None = None) -> list[bytes]:
+    """Write a journal: the first party signs every entry, the second, where there is one, every other."""
     made: list[bytes] = []
-    for i, event in enumerate(events(record, cards[-1])):
+    for i, event in enumerate(told):
         unsigned: Json = {
             "kind": "journal-entry",
             "version": 1,
@@ -78,7 +83,7 @@ def lines(record: Json, cards: list[Json]) -> list[bytes]:
             "time": f"2026-01-{i + 5:02}T09:{i:02}:00Z",
             "previous": line_digest(made[-1]).hex() if made else None,
             "event": event,
-            "documents": [{"path": "record.json", "digest": "1d" * 32}] if i == 4 else [],
+            "documents": (named or {}).get(i, []),
             "cards": cards[i : i + 1],
         }
         signatures = []

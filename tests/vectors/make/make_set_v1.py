@@ -21,6 +21,7 @@ from typing import Any
 import attested_v1
 import ceremony_v1
 import journal_v1
+import keyed_v1
 import record_cases_v1
 import recovery_cases_v1
 import share_cases_v1
@@ -241,6 +242,7 @@ def files() -> dict[str, str]:
     made |= {f"golden/v1/attested/{name}": text for name, text in attested_v1.files(flat).items()}
     cards = [wrapped_v1.documents(flat)[f"{name}.card.json"] for name in ("harbour-office", "registrar")]
     made["golden/v1/journal/journal.jsonl"] = journal_v1.text(flat.record, cards)
+    made |= {f"golden/v1/keyed/{name}": text for name, text in keyed_v1.files().items()}
     made["golden/v1/ceremony/script.json"] = pretty(ceremony_v1.script())
     notes = {flag: valid_note(flag) for flag in wrapped_v1.FLAGS}
     group = {"source": source("9 and 10"), "seed": wrapped_v1.SEED, "tests": wrapped_v1.tests(flat)}

@@ -1,0 +1,152 @@
+"""Put together what came of a task: a signature, for whoever asked; a message's content, for its receiver alone.
+
+Source: RFC 9591, sec. 5.3 (the coordinator aggregates, without a secret); FORMAT_KEYS.md, sec. 28 (openings).
+May import: shares.errors, shares.memory, shares.documents, shares.history, .asking, .folder, .opening, .signing.
+Secret: the plaintext of an opening, handed to whoever takes it; the receiver's party key, passed through. Public: the
+signature.
+Does not: write files but the journal; the caller does.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Callable, Sequence
+from pathlib import Path
+
+from shares.documents.key_event import KeyEvent, TaskFinished
+from shares.documents.party import OpenPartyKey
+from shares.documents.task import Task
+from shares.errors import NotEnoughSharesError, ParameterError, VerificationError
+from shares.history.exchange import TaskFolder
+from shares.history.next import Standing, close, opened, speak, standing, turn
+from shares.history.rounds import Course
+from shares.history.steps import OwnSteps
+from shares.keys.asking import issuer_of
+from shares.keys.folder import KeyFolder
+from shares.keys.opening import OpeningCourse, OpeningPart, combine
+from shares.keys.opening import outcome as end_of_opening
+from shares.keys.signing import SigningCourse, finish_signing
+from shares.memory import Secret
+
+Deliver = Callable[[Secret], None]
+"""Takes the plaintext to where the receiver wants it: all of it, or it raises."""
+
+
+def signed(folder: KeyFolder, task: TaskFolder) -> bytes:
+    """Return the signature, certificate or list that a task was about, checked. It takes no secret.
+
+    Args:
+        folder: of the key, in which the task was asked for.
+        task: its folder, with all messages.
+
+    Raises:
+        NotEnoughSharesError: somebody has not spoken yet.
+        VerificationError: the task has failed; who made it fail is named. Or it is about another key.
+        ParameterError: the certificate above the one that is made was not kept here.
+    """
+    course = SigningCourse(task.task, folder.record)
+    found = standing(course, task.read())
+    _refuse_failed(found)
+    if not found.complete:
+        raise _awaited(found)
+    data, _ = finish_signing(task.task, folder.record, found.inbox, issuer=issuer_of(folder, task.task))
+    return data
+
+
+def begin_opening(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey) -> Path:
+    """Say what the receiver says in round 0: a fresh key, kept in the folder's steps until the message is open.
+
+    Args:
+        folder: the receiver's own, of the key.
+        task: its folder.
+        key: the receiver's party key.
+
+    Returns:
+        The file of the message.
+    """
+    course, part, own = _receiving(folder, task, key)
+    return speak(task, turn(task, course, own), course, part, own, key)
+
+
+def open_message(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey, deliver: Deliver) -> Sequence[str]:
+    """Put partial results together, as soon as enough of them hold, and hand the content of the message over.
+
+    The journal tells of it, and then the receiver's key of this task is erased. Where handing over fails, all stays as
+    it was, to be tried again.
+
+    Args:
+        folder: the receiver's own, in which the task was asked for.
+        task: its folder, with the messages so far.
+        key: the receiver's party key.
+        deliver: takes the plaintext, or raises.
+
+    Returns:
+        What happened, in words.
+
+    Raises:
+        NotEnoughSharesError: fewer than k partial results hold; who is bad or awaited is named.
+        VerificationError: the task has failed, or the message does not open.
+        ParameterError: the task is over, or the key is not the receiver's.
+    """
+    course, _, own = _receiving(folder, task, key)
+    at = turn(task, course, own)
+    _refuse_failed(at.standing)
+    if at.doing == "done":
+        raise ParameterError(
+            "this task is over, and what was sealed for it can no longer be read",
+            where=str(task.path),
+            hint="to read the message again ask for a new task",
+        )
+    if at.round == 0:
+        raise _awaited(at.standing)
+    with opened(at.standing.inbox, course, own, key) as (_, received):
+        found = combine(task.task, folder.record, at.standing.inbox, received)
+        with found.plaintext as plaintext:
+            deliver(plaintext)
+            end = end_of_opening(task.task, found)
+    if isinstance(end.event, TaskFinished):
+        enter_once(folder, end.event, key)
+    close(own)
+    return end.words
+
+
+def finished(task: Task, data: bytes) -> TaskFinished:
+    """Return what a journal says of a signature that was put together."""
+    result = hashlib.sha256(data).digest()
+    return TaskFinished(what="task-finished", task=task.digest(), work="sign", result=result)
+
+
+def enter_once(folder: KeyFolder, event: KeyEvent, key: OpenPartyKey) -> None:
+    """Add an entry to the journal, unless it says so already."""
+    if event not in [entry.event for entry in folder.journal().entries]:
+        folder.append(event, keys=(key,))
+
+
+def _receiving(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey) -> tuple[Course, OpeningPart, OwnSteps]:
+    course = OpeningCourse(task.task, folder.record)
+    me = task.task.party_by(key.card)
+    if me is None or me.name != course.work.receiver:
+        raise ParameterError(
+            f"the receiver of this message is {course.work.receiver}", hint="give the receiver's party key"
+        )
+    share = folder.share() if folder.holds_share else None
+    part = OpeningPart(task.task, me.name, folder.record, share, key, folder.path)
+    return course, part, OwnSteps(folder.path, task.task, key.card)
+
+
+def _refuse_failed(found: Standing) -> None:
+    if found.failure is not None:
+        # Words about single messages follow: they are why it cannot be finished, where no one's fault is proved.
+        by = f"{found.failure.by}: " if found.failure.by else ""
+        raise VerificationError(
+            f"the task has failed: {by}{found.failure.what}",
+            hint="begin a new one; `shares task show` tells all that is wrong",
+        )
+
+
+def _awaited(found: Standing) -> NotEnoughSharesError:
+    return NotEnoughSharesError(
+        f"{', '.join(found.awaited)} {'has' if len(found.awaited) == 1 else 'have'} still to speak "
+        f"({found.names[found.round]})",
+        hint="bring their messages into the task's folder, and try again",
+    )

@@ -1,0 +1,418 @@
+"""``shares key sign``, ``open``, ``commit``, ``finish`` and the certificates: asked, answered, put together.
+
+Checked against: ``openssl`` and ``ssh-keygen``, which verify what a quorum has signed; the sender in examples/, which
+uses ``cryptography`` alone.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import subprocess
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+
+import pytest
+from cli.harness import Result, assert_refused, files_in, run
+from cli.keyed import OFFICE, Keyed
+from cli.test_key import tool
+from parties import unlocked
+
+from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, TaskFinished
+from shares.documents.task import Task
+from shares.documents.task_message import SignatureShare, TaskMessage
+from shares.group.edwards25519 import Scalar
+from shares.history.journal import load_journal
+
+SENDER = Path(__file__).resolve().parents[2] / "examples" / "send_to_key.py"
+FIRST, SECOND, THIRD = "north-pier", "south-pier", "light-house"
+CONTENT = b"the berth plan, not for everybody\n"
+
+
+@pytest.fixture(scope="module")
+def once(tmp_path_factory: pytest.TempPathFactory) -> Keyed:
+    keyed = Keyed.make(tmp_path_factory.mktemp("keyed") / "harbour").dealt()
+    assert run("key", "show", keyed.key, "--pem", keyed.path("k.pem"), "--x25519-pem", keyed.path("x.pem")).code == 0
+    return keyed
+
+
+@pytest.fixture
+def keyed(once: Keyed, tmp_path: Path) -> Keyed:
+    """A key dealt 2 of 3, and its public halves in k.pem and x.pem."""
+    return once.copy(tmp_path / "harbour")
+
+
+def events(folder: Path, kind: type) -> list:
+    return [entry.event for entry in load_journal(folder).entries if isinstance(entry.event, kind)]
+
+
+def sign_arguments(keyed: Keyed, *more: str | Path, names: Sequence[str] = (FIRST, SECOND), task: str = "t") -> list:
+    signers = [f"--signer={name}" for name in names]
+    return ["key", "sign", keyed.key, keyed.path("release.txt"), "--task", keyed.path(task), *signers, *more]
+
+
+def finish(keyed: Keyed, task: Path, *more: str | Path) -> list:
+    return ["key", "finish", keyed.key, task, *keyed.as_(OFFICE), *more]
+
+
+def commit(keyed: Keyed, name: str, count: int = 3) -> Path:
+    target = keyed.path(f"{name}.commitments.json")
+    done = run("key", "commit", keyed.own(name), "--count", str(count), "--to", target, *keyed.as_(name, "--key"))
+    assert done.code == 0, done.err
+    return target
+
+
+class TestSigning:
+    def test_a_quorum_signs_and_openssl_verifies(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="to-sign")
+        assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 3, FIRST, SECOND, watched=keyed.folder)
+        keyed.answer(task, FIRST, SECOND)
+        signature = keyed.finish(task, "sig")
+        assert len(signature.read_bytes()) == 64
+        verify = ["openssl", "pkeyutl", "-verify", "-pubin", "-inkey", keyed.path("k.pem"), "-rawin"]
+        assert "Success" in tool(*verify, "-in", keyed.path("release.txt"), "-sigfile", signature)
+        # The office's journal tells what was asked and what came of it, the signers' what they agreed to.
+        (asked,), (finished,) = events(keyed.key, TaskAsked), events(keyed.key, TaskFinished)
+        assert asked.task == finished.task == Task.parse((task / "task.json").read_bytes()).digest()
+        assert finished.result == hashlib.sha256(signature.read_bytes()).digest()
+        (agreed,) = events(keyed.own(FIRST), Approved)
+        assert "release 7 of the tide tables" in agreed.summary
+        assert run("journal", "verify", keyed.key).code == run("journal", "verify", keyed.own(FIRST)).code == 0
+
+    def test_what_is_asked_is_told(self, keyed: Keyed) -> None:
+        by_hand = run(*sign_arguments(keyed, "--remark", "release day", "--due", "2d", *keyed.as_(OFFICE)))
+        assert "Asked: north-pier, south-pier: sign (Harbour release key), until " in by_hand.out
+        task = Task.parse((keyed.path("t") / "task.json").read_bytes())
+        assert task.fingerprint in by_hand.out
+        assert (task.remark, (task.due - task.created).days) == ("release day", 2)
+        told = run(*sign_arguments(keyed, "--json", *keyed.as_(OFFICE), task="u")).json
+        assert (told["work"], told["parties"], told["done"]) == ("sign", [FIRST, SECOND], True)
+        assert (keyed.path("u") / "content").read_bytes() == keyed.path("release.txt").read_bytes()
+
+    @pytest.mark.parametrize(
+        ("names", "words"),
+        [
+            ((FIRST,), "2 custodians are needed, and 1 are named"),
+            ((FIRST, FIRST), "named twice"),
+            ((FIRST, "dry-dock"), "dry-dock is no custodian"),
+        ],
+    )
+    def test_signers_that_are_no_quorum_are_refused(self, keyed: Keyed, names: Sequence[str], words: str) -> None:
+        assert_refused(sign_arguments(keyed, *keyed.as_(OFFICE), names=names), 2, words, watched=keyed.folder)
+
+    @pytest.mark.parametrize(
+        ("more", "words"),
+        [
+            (["--remark", "a\nb"], "--remark"),
+            (["--remark", "x" * 501], "--remark"),
+            (["--remark", ""], "--remark"),
+            (["--openssh", "a\x1bb"], "--openssh"),
+            (["--openssh", ""], "--openssh"),
+            (["--due", "9999y"], "the year 9999"),
+            (["--due", "0d"], "--due"),
+        ],
+    )
+    def test_what_no_task_can_say_is_refused(self, keyed: Keyed, more: list[str], words: str) -> None:
+        assert_refused(sign_arguments(keyed, *more, *keyed.as_(OFFICE)), 2, words, watched=keyed.folder)
+
+    def test_a_folder_is_for_one_task(self, keyed: Keyed) -> None:
+        keyed.ask("sign", keyed.path("release.txt"), task="t")
+        assert_refused(sign_arguments(keyed, *keyed.as_(OFFICE)), 5, "a task is here already", watched=keyed.folder)
+
+    def test_content_that_is_not_there_is_refused(self, keyed: Keyed) -> None:
+        arguments = ["key", "sign", keyed.key, keyed.path("missing"), "--task", keyed.path("t"), f"--signer={FIRST}"]
+        assert_refused([*arguments, *keyed.as_(OFFICE)], 5, "missing", watched=keyed.folder)
+        nowhere = [
+            "key",
+            "sign",
+            keyed.path("nowhere"),
+            keyed.path("release.txt"),
+            *arguments[4:],
+            f"--signer={SECOND}",
+        ]
+        assert_refused([*nowhere, *keyed.as_(OFFICE)], 5, "nowhere", watched=keyed.folder)
+
+    def test_altered_content_is_not_signed(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        (task / "content").write_bytes(b"release 8\n")
+        assert keyed.next(task, FIRST).code == 4
+        assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, watched=keyed.folder)
+
+    def test_who_cheats_is_named(self, keyed: Keyed) -> None:
+        """A signer whose machine says a wrong share, under its own good signature."""
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        for name in (FIRST, SECOND):
+            assert keyed.next(task, name).code == 0
+        said = next((task / "messages").glob("1-*.json"))
+        good = TaskMessage.parse(said.read_bytes())
+        with unlocked(good.sender) as cheat:
+            said.write_bytes(
+                TaskMessage.signed_by(
+                    cheat,
+                    task=good.task,
+                    round=good.round,
+                    sender=good.sender,
+                    seen=good.seen,
+                    body=SignatureShare(what="signature-share", share=Scalar.drawn()),
+                ).to_file()
+            )
+        other = FIRST if good.sender == SECOND else SECOND
+        keyed.next(task, other)
+        line = assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, "the task has failed", good.sender)
+        assert other not in line
+        assert not keyed.path("sig").exists()
+
+    def test_nothing_is_fed_but_what_was_in_a_message(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        for more, words in (
+            (["--", "cat"], "only what was in a message"),
+            (["--to", "-"], "nothing of it is printed"),
+            ([], "exactly one of"),
+            (["--to", "x", "--", "cat"], "exactly one of"),
+            (["--"], "exactly one of"),
+        ):
+            assert_refused(finish(keyed, task, *more), 2, words, watched=keyed.folder)
+
+    def test_another_keys_folder_does_not_finish_it(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        other = Keyed.make(keyed.folder / "other").dealt()
+        assert_refused(finish(other, task, "--to", keyed.path("sig")), 4, "another key", watched=keyed.folder)
+
+
+class TestCommitments:
+    def test_one_visit_is_enough_and_no_pair_is_named_twice(self, keyed: Keyed) -> None:
+        batches = [f"--batch={commit(keyed, name, 2)}" for name in (FIRST, SECOND)]
+        named = []
+        for number in range(2):
+            task = keyed.ask("sign", keyed.path("release.txt"), task=f"t{number}", more=batches)
+            keyed.answer(task, FIRST, SECOND, rounds=1)
+            assert len(keyed.finish(task, f"sig{number}").read_bytes()) == 64
+            work = Task.parse((task / "task.json").read_bytes()).work
+            named += [one.hiding.encode() for one in work.commitments]  # type: ignore[union-attr]
+        assert len(set(named)) == len(named) == 4
+        arguments = sign_arguments(keyed, *batches, *keyed.as_(OFFICE), task="t2")
+        assert_refused(arguments, 3, FIRST, SECOND, "shares key commit", watched=keyed.folder)
+        (committed,) = events(keyed.own(FIRST), NoncesCommitted)
+        assert committed.count == 2
+
+    def test_a_signer_refuses_what_was_used_before(self, keyed: Keyed) -> None:
+        """Where the office forgets what it asked for, the signers do not."""
+        batches = [f"--batch={commit(keyed, name)}" for name in (FIRST, SECOND)]
+        keyed.answer(keyed.ask("sign", keyed.path("release.txt"), task="t0", more=batches), FIRST, SECOND, rounds=1)
+        for kept in (keyed.key / "asked").iterdir():
+            kept.unlink()
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t1", more=batches)
+        refused = keyed.next(task, FIRST)
+        assert refused.code == 4
+        assert "nonce was used" in refused.err
+
+    def test_batches_of_others_are_refused(self, keyed: Keyed) -> None:
+        good = commit(keyed, FIRST)
+        other = Keyed.make(keyed.folder / "other").dealt()
+        foreign = commit(other, SECOND)
+        for batches in ([f"--batch={good}", f"--batch={foreign}"], [f"--batch={good}"]):
+            code, words = (4, "another key") if len(batches) > 1 else (3, SECOND)
+            assert_refused(sign_arguments(keyed, *batches, *keyed.as_(OFFICE)), code, words, watched=keyed.folder)
+        by_hand = run("show", good)
+        assert "commitments of a signer" in by_hand.out
+
+    def test_only_a_custodian_commits(self, keyed: Keyed) -> None:
+        target = keyed.path("c.json")
+        arguments = ["key", "commit", keyed.key, "--to", target, *keyed.as_(OFFICE, "--key")]
+        assert_refused(arguments, 5, "holds no key share", watched=keyed.folder)
+        for count in ("0", "1001"):
+            own = ["key", "commit", keyed.own(FIRST), "--count", count, "--to", target, *keyed.as_(FIRST, "--key")]
+            assert_refused(own, 2, "1000", watched=keyed.folder)
+
+
+class TestForms:
+    def test_ssh_keygen_verifies(self, keyed: Keyed) -> None:
+        release, ssh = keyed.path("release.txt"), keyed.path("k.pub")
+        task = keyed.ask("sign", release, task="t", more=["--openssh", "file"])
+        keyed.answer(task, FIRST, SECOND)
+        signature = keyed.finish(task, "release.txt.sig")
+        assert run("key", "show", keyed.key, "--openssh", ssh).code == 0
+        keyed.path("allowed").write_text(f"harbour {ssh.read_text()}")
+        verify = ["ssh-keygen", "-Y", "verify", "-f", keyed.path("allowed"), "-I", "harbour", "-n", "file"]
+        assert "Good" in tool(*verify, "-s", signature, stdin=release.read_bytes())
+
+    def test_an_authority_of_the_quorum_serves_openssl(self, keyed: Keyed) -> None:
+        """Root, intermediate, a server below it is the intermediate's own affair; a server below the root; a list."""
+        root = keyed.ask("root", "CN=Harbour Trust Root,O=Harbour Trust", task="t-root")
+        keyed.answer(root, FIRST, SECOND)
+        root_pem = keyed.finish(root, "root.pem")
+        for name, more in (
+            ("authority", ["-subj", "/CN=Harbour Intermediate"]),
+            ("server", ["-subj", "/CN=tide.example", "-addext", "subjectAltName=DNS:tide.example"]),
+        ):
+            key, request = keyed.path(f"{name}.key"), keyed.path(f"{name}.req")
+            tool("openssl", "req", "-newkey", "ed25519", "-nodes", "-keyout", key, "-out", request, *more)
+            task = keyed.ask("certify", request, task=f"t-{name}", more=["--issuer", str(root_pem), "--for", name])
+            keyed.answer(task, FIRST, SECOND)
+            made = keyed.finish(task, f"{name}.pem")
+            assert tool("openssl", "verify", "-CAfile", root_pem, made).endswith(": OK\n")
+        more = ["--issuer", str(root_pem), "--reason", "keyCompromise"]
+        revoke = keyed.ask("revoke", keyed.path("server.pem"), task="t-list", more=more)
+        keyed.answer(revoke, FIRST, SECOND)
+        listed = keyed.finish(revoke, "list.pem")
+        check = ["openssl", "verify", "-crl_check", "-CRLfile", listed, "-CAfile", root_pem]
+        assert tool(*check, keyed.path("authority.pem")).endswith(": OK\n")
+        refused = subprocess.run([*check, keyed.path("server.pem")], capture_output=True, text=True, check=False)
+        assert "certificate revoked" in refused.stderr
+        # The next list continues it, and signing anew below another certificate is refused before anybody is asked.
+        more = ["--issuer", str(root_pem), "--earlier", str(listed)]
+        again = keyed.ask("revoke", keyed.path("authority.pem"), task="t-list-2", more=more)
+        keyed.answer(again, FIRST, SECOND)
+        assert "2" in tool("openssl", "crl", "-in", keyed.finish(again, "list-2.pem"), "-noout", "-crlnumber")
+        arguments = [
+            "key",
+            "certify",
+            keyed.key,
+            keyed.path("server.req"),
+            "--for",
+            "server",
+            "--task",
+            keyed.path("n"),
+        ]
+        arguments += ["--issuer", keyed.path("authority.pem"), f"--signer={FIRST}", f"--signer={SECOND}"]
+        assert_refused([*arguments, *keyed.as_(OFFICE)], 4, watched=keyed.folder)
+
+    def test_the_author_is_told_what_the_signers_will_be(self, keyed: Keyed) -> None:
+        signers = [f"--signer={name}" for name in (FIRST, SECOND)]
+        subject = "CN=Harbour Trust Root,O=Harbour Trust"
+        task = ["--task", keyed.path("t"), *signers, *keyed.as_(OFFICE)]
+        done = run("key", "root", keyed.key, subject, "--valid", "2y", "--path-length", "1", *task)
+        for words in (f"subject: {subject}", "730 days", "at most 1", "cannot be taken back"):
+            assert words in done.out
+
+    @pytest.mark.parametrize(
+        ("verb", "more", "code"),
+        [
+            ("root", ["no distinguished name"], 2),
+            ("root", ["CN=Root", "--valid", "9999y"], 2),
+            ("root", ["CN=Root", "--path-length", "256"], 2),
+            ("certify", ["release.txt", "--issuer", "release.txt", "--for", "server"], 4),
+            ("certify", ["missing", "--issuer", "release.txt", "--for", "server"], 5),
+            ("revoke", ["release.txt", "--issuer", "release.txt"], 4),
+            ("revoke", ["--issuer", "missing"], 5),
+        ],
+    )
+    def test_what_cannot_be_certified_is_not_asked_for(
+        self, keyed: Keyed, verb: str, more: list[str], code: int, monkeypatch: pytest.MonkeyPatch
+    ) -> None:
+        monkeypatch.chdir(keyed.folder)
+        arguments = ["key", verb, keyed.key, *more, "--task", "t", f"--signer={FIRST}", f"--signer={SECOND}"]
+        assert_refused([*arguments, *keyed.as_(OFFICE)], code, watched=keyed.folder)
+
+    def test_a_path_length_is_for_authorities(self, keyed: Keyed) -> None:
+        arguments = ["key", "certify", keyed.key, "r", "--for", "server", "--path-length", "1", "--issuer", "i"]
+        arguments += ["--task", keyed.path("t"), f"--signer={FIRST}", f"--signer={SECOND}", *keyed.as_(OFFICE)]
+        assert_refused(arguments, 2, "--path-length", watched=keyed.folder)
+
+
+def sent(keyed: Keyed, content: bytes = CONTENT, name: str = "message.bin") -> Path:
+    """A message to the key, by the sender in examples/."""
+    keyed.path("plain").write_bytes(content)
+    tool(sys.executable, SENDER, keyed.path("x.pem"), keyed.path("plain"), keyed.path(name))
+    keyed.path("plain").unlink()
+    return keyed.path(name)
+
+
+class TestOpening:
+    def test_the_receiver_alone_has_what_was_in_it(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND, THIRD))
+        assert_refused(finish(keyed, task, "--to", keyed.path("o")), 3, FIRST, THIRD, watched=keyed.folder)
+        for name in (THIRD, FIRST):
+            assert keyed.next(task, name).code == 0
+        target = keyed.path("opened")
+        # Two of three are enough. Where the command fails all stays as it was, to be tried again.
+        failed = run(*finish(keyed, task, "--", "sh", "-c", "cat >/dev/null; exit 9"))
+        assert (failed.code, failed.out) == (7, "")
+        fed = run(*finish(keyed, task, "--json", "--", "sh", "-c", "exit 3"))
+        assert (fed.code, fed.json["error"]["status"]) == (7, 3)
+        done = run(*finish(keyed, task, "--to", target))
+        assert (done.code, "The message is open" in done.out, CONTENT.decode() in done.out) == (0, True, False)
+        assert (target.read_bytes(), target.stat().st_mode & 0o777) == (CONTENT, 0o600)
+        again = finish(keyed, task, "--to", keyed.path("again"))
+        assert_refused(again, 2, "this task is over", watched=keyed.folder)
+        (asked,), (finished,) = events(keyed.key, TaskAsked), events(keyed.key, TaskFinished)
+        assert (asked.work, finished.work, finished.result) == ("open", "open", None)
+
+    def test_it_is_fed_to_a_command(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
+        keyed.answer(task, FIRST, SECOND, rounds=1)
+        done = run(*finish(keyed, task, "--", "sha256sum"))
+        assert (done.code, done.out.split()[0]) == (0, hashlib.sha256(CONTENT).hexdigest())
+        assert "given to sha256sum" in done.err
+
+    def test_a_custodian_may_be_the_receiver(self, keyed: Keyed) -> None:
+        own, message = keyed.own(FIRST), sent(keyed)
+        ask = ["key", "open", own, message, "--task", keyed.path("t"), f"--custodian={SECOND}", *keyed.as_(FIRST)]
+        assert run(*ask).code == 0
+        for name in (FIRST, SECOND):
+            assert keyed.next(keyed.path("t"), name).code == 0
+        done = run("key", "finish", own, keyed.path("t"), "--to", keyed.path("o"), *keyed.as_(FIRST))
+        assert (done.code, keyed.path("o").read_bytes()) == (0, CONTENT)
+
+    def test_nobody_else_reads_the_answers(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
+        keyed.answer(task, FIRST, SECOND, rounds=1)
+        arguments = ["key", "finish", keyed.key, task, "--to", keyed.path("o"), *keyed.as_(FIRST)]
+        assert_refused(arguments, 2, "the receiver of this message is harbour-office", watched=keyed.folder)
+
+    def test_a_message_that_must_not_be_served_is_not_asked_for(self, keyed: Keyed) -> None:
+        for encapsulated in (bytes(32), b"\xff" * 32, (2**255 - 20).to_bytes(32, "little")):
+            keyed.path("bad").write_bytes(encapsulated + bytes(40))
+            arguments = ["key", "open", keyed.key, keyed.path("bad"), "--task", keyed.path("t"), f"--custodian={FIRST}"]
+            arguments += [f"--custodian={SECOND}", *keyed.as_(OFFICE)]
+            assert_refused(arguments, 4, "encapsulated key", watched=keyed.folder)
+
+    def test_another_ciphertext_for_one_encapsulated_key_is_refused(self, keyed: Keyed) -> None:
+        message = sent(keyed)
+        keyed.answer(keyed.ask("open", message, task="t", names=(FIRST, SECOND)), FIRST, SECOND, rounds=1)
+        data = bytearray(message.read_bytes())
+        data[-1] ^= 1
+        keyed.path("other.bin").write_bytes(data)
+        task = keyed.ask("open", keyed.path("other.bin"), task="u", names=(FIRST, SECOND))
+        refused = keyed.next(task, FIRST)
+        assert refused.code == 4
+        assert "encapsulated key" in refused.err
+
+    def test_what_was_in_it_is_nowhere_else(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
+        keyed.answer(task, FIRST, SECOND, rounds=1)
+        told: list[Result] = [run(*finish(keyed, task, "--to", keyed.path("o"), "--json"))]
+        assert told[0].code == 0
+        assert CONTENT.decode().strip() not in told[0].out + told[0].err
+        found = [name for name, (_, content) in files_in(keyed.folder).items() if content and CONTENT in content]
+        assert found == ["o"]
+
+
+class TestJoining:
+    def test_what_cannot_be_is_refused(self, keyed: Keyed) -> None:
+        cards = [f"--custodian={keyed.path(f'{name}.card.json')}" for name in (FIRST, SECOND)]
+        arguments = ["key", "join", keyed.path("t"), "--label=Harbour key", *cards, *keyed.as_(OFFICE)]
+        assert_refused([*arguments, "--need=3"], 2, "not 3", watched=keyed.folder)
+        assert_refused([*arguments, "--need=2", cards[0]], 2, "two custodians have one name", watched=keyed.folder)
+        assert_refused([*arguments, "--need=2", "--due=soon"], 2, "--due", watched=keyed.folder)
+        assert run(*arguments, "--need=2").code == 0
+        assert_refused([*arguments, "--need=2"], 5, "a task is here already", watched=keyed.folder)
+
+    def test_a_key_is_born_and_signs(self, keyed: Keyed) -> None:
+        """With the custodians' own folders made new, and the office knowing nothing but the record."""
+        joint = Keyed.make(keyed.folder / "joint")
+        cards = [f"--custodian={joint.path(f'{name}.card.json')}" for name in joint.names]
+        arguments = ["key", "join", joint.path("j"), "--label=Harbour key", "--need=2", *cards, *joint.as_(OFFICE)]
+        assert run(*arguments).code == 0
+        joint.answer(joint.path("j"), *joint.names, rounds=6)
+        for name in joint.names:
+            assert run("key", "verify", joint.own(name), *joint.as_(name, "--key")).code == 0
+        assert "generated jointly" in run("key", "show", joint.own(FIRST)).out
+        assert run("journal", "verify", joint.own(FIRST)).code == 0
+        joint.key.mkdir()
+        (joint.key / "record.json").write_bytes((joint.own(FIRST) / "record.json").read_bytes())
+        task = joint.ask("sign", joint.path("release.txt"), task="t", names=(THIRD, FIRST))
+        joint.answer(task, THIRD, FIRST)
+        assert len(joint.finish(task, "sig").read_bytes()) == 64
+        arguments = ["key", "finish", joint.key, joint.path("j"), "--to", joint.path("x"), *joint.as_(OFFICE)]
+        assert_refused(arguments, 2, "shares task next", watched=joint.folder)

@@ -1,0 +1,266 @@
+"""``shares task``: what a custodian is told, asked and given, by hand and by script; exit codes as the README has them.
+
+Checked against: nothing outside; the task is a real one, a key that three parties generate together.
+"""
+
+from __future__ import annotations
+
+import json
+import shutil
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from datetime import UTC, datetime, timedelta
+from pathlib import Path
+
+import pytest
+from cli.harness import Result, assert_one_line, assert_refused, files_in, run, spawn, with_json
+from cli.terminal import on_terminal
+from history.exchanging import NAMES, new_task
+from parties import party, unlocked
+
+from shares.documents.key_record import KeyRecord
+from shares.documents.task_message import OpeningKey, Review, TaskMessage
+from shares.history.exchange import TaskFolder
+from shares.history.journal import load_journal
+from shares.history.rounds import Inbox
+
+
+@dataclass(frozen=True)
+class Harbour:
+    """A task's folder that everybody reaches, and a folder of their own for each party."""
+
+    root: Path
+
+    @property
+    def task(self) -> Path:
+        return self.root / "task"
+
+    def mine(self, name: str) -> Path:
+        return self.root / name
+
+    def arguments(self, name: str, *more: str | Path) -> list[str | Path]:
+        key, phrase = self.root / f"{name}.key.json", self.root / f"{name}.passphrase"
+        return ["task", "next", self.task, "--mine", self.mine(name), "--key", key, "--passphrase-file", phrase, *more]
+
+    def next(self, name: str, *more: str) -> Result:
+        return run(*self.arguments(name, "--yes", *more))
+
+    def show(self, *more: str) -> Result:
+        return run("task", "show", self.task, *more)
+
+
+@pytest.fixture
+def harbour(tmp_path: Path) -> Harbour:
+    for name in (*NAMES, "registrar"):
+        (tmp_path / f"{name}.key.json").write_bytes(party(name).to_file())
+        (tmp_path / f"{name}.passphrase").write_text(f"the passphrase of {name}\n")
+    TaskFolder.create(tmp_path / "task", new_task())
+    return Harbour(tmp_path)
+
+
+def state(result: Result) -> tuple[int, str]:
+    told = result.json
+    assert (told["exit"], told["done"]) == (result.code, result.code == 0)
+    return result.code, told["state"]
+
+
+def test_three_parties_have_a_key_in_the_end(harbour: Harbour) -> None:
+    ends: dict[str, dict[str, object]] = {}
+    for _ in range(7):
+        for name in NAMES:
+            done = harbour.next(name, "--json")
+            assert (done.code, done.err) == (0, "")
+            if done.json["files"]:
+                ends[name] = done.json
+    assert {name: end["state"] for name, end in ends.items()} == dict.fromkeys(NAMES, "finished")
+    records = {(harbour.mine(name) / "record.json").read_bytes() for name in NAMES}
+    assert len(records) == 1
+    assert KeyRecord.parse(records.pop()).is_confirmed()
+    for name in NAMES:
+        again = harbour.next(name)
+        assert again.out == f"The task is over for {name}; nothing is left to be done.\n"
+        assert [entry.event.what for entry in load_journal(harbour.mine(name)).entries] == ["approved", "key-born"]
+    assert harbour.show("--json").json["state"] == "complete"
+    assert "Everything has been said." in harbour.show().out
+
+
+def test_what_is_said_before_anything_is_done(harbour: Harbour) -> None:
+    done = harbour.next("north-pier")
+    task = TaskFolder(harbour.task).task
+    for words in (task.fingerprint, "harbour-office", "Compare", "Now, as north-pier, round 0, fresh keys:"):
+        assert words in done.err
+    assert done.out.splitlines() == [
+        f"Said by north-pier, round 0, fresh keys: {harbour.task}/messages/0-north-pier.json",
+        "Next: send the task's folder, or the new message in it, to the others.",
+        "Awaited, round 0, fresh keys: south-pier, light-house.",
+    ]
+    waiting = harbour.next("north-pier")
+    assert (waiting.code, waiting.out, waiting.err) == (
+        0,
+        "Awaited, round 0, fresh keys: south-pier, light-house.\n",
+        "",
+    )
+    assert state(harbour.next("north-pier", "--json")) == (0, "waiting")
+
+
+def test_without_a_terminal_it_asks_nothing_and_does_nothing(harbour: Harbour) -> None:
+    refused = run(*harbour.arguments("north-pier"))
+    assert (refused.code, refused.out) == (2, "")
+    assert "You join in generating the key" in refused.err
+    assert "--yes agrees" in refused.err.splitlines()[-1]
+    told = run(*harbour.arguments("north-pier", "--json"))
+    assert (told.code, told.err, told.json["error"]["code"]) == (2, "", "parameter")
+    assert not harbour.mine("north-pier").exists()
+    assert list((harbour.task / "messages").iterdir()) == []
+
+
+@pytest.mark.parametrize(("reply", "code"), [("y", 0), ("n", 1), ("", 1)])
+def test_what_a_custodian_agrees_to_at_a_terminal(harbour: Harbour, reply: str, code: int) -> None:
+    with on_terminal(*harbour.arguments("north-pier")) as terminal:
+        terminal.wait_for("Fingerprint of the task")
+        terminal.answer("Do you agree? [y/N]:", reply)
+        assert terminal.finish()[0] == code
+    assert (harbour.task / "messages" / "0-north-pier.json").exists() is (code == 0)
+
+
+def test_one_call_does_one_thing_that_it_asks_about(harbour: Harbour, monkeypatch: pytest.MonkeyPatch) -> None:
+    """The last to speak in a round goes on with the next by itself, and stops where agreement is asked for anew."""
+    for name in NAMES[:2]:
+        harbour.next(name)
+    last = harbour.next("light-house", "--json").json
+    assert [Path(path).name for path in last["messages"]] == ["0-light-house.json", "1-light-house.json"]
+    monkeypatch.setattr("shares.keys.joint.JointPart.asks", lambda *_: True)
+    harbour.next("north-pier")
+    turn = harbour.next("south-pier", "--json").json
+    assert [Path(path).name for path in turn["messages"]] == ["1-south-pier.json"]
+    assert (turn["again"], turn["state"]) == (True, "spoke")
+
+
+def test_refusals(harbour: Harbour, tmp_path: Path) -> None:
+    watched = harbour.root
+    assert_refused(harbour.arguments("registrar", "--yes"), 4, "no party of this task", watched=watched)
+    inside = harbour.arguments("north-pier", "--yes")
+    inside[inside.index("--mine") + 1] = harbour.task / "own"
+    assert_refused(inside, 2, "lies within the task's", watched=watched)
+    wrong = harbour.arguments("north-pier", "--yes")
+    wrong[-2] = tmp_path / "south-pier.passphrase"
+    assert_refused(wrong, 4, "passphrase", watched=watched)
+    (harbour.task / "task.json").rename(tmp_path / "task.json")
+    assert_refused(harbour.arguments("north-pier", "--yes"), 5, "task.json", "does not exist", watched=watched)
+    assert_refused(["task", "show", harbour.task], 5, "task.json", "does not exist")
+    (harbour.task / "task.json").write_bytes((tmp_path / "north-pier.key.json").read_bytes())
+    assert_refused(["task", "show", harbour.task], 4, "a task is wanted here, but it is a party key")
+
+
+def test_a_restored_folder_is_refused(harbour: Harbour, tmp_path: Path) -> None:
+    harbour.next("north-pier")
+    shutil.rmtree(harbour.mine("north-pier"))
+    line = assert_refused(harbour.arguments("north-pier", "--yes"), 4, "was restored from an older copy")
+    assert "ask for a new task" in line
+
+
+def signed(harbour: Harbour, name: str, minute: int, **changes: object) -> TaskMessage:
+    task = TaskFolder(harbour.task).task
+    members = {"body": OpeningKey(what="opening-key", x25519=b"\x09" + bytes(31)), **changes}
+    with unlocked(name) as key:
+        return TaskMessage.signed_by(
+            key,
+            task=task.digest(),
+            round=0,
+            sender=name,
+            seen=Inbox(task, ()).seen(0),
+            created=datetime(2026, 12, 1, 9, minute, tzinfo=UTC),
+            **members,  # type: ignore[arg-type]
+        )
+
+
+def test_a_conflict_fails_the_task_for_everybody(harbour: Harbour) -> None:
+    for minute in (1, 2):
+        TaskFolder(harbour.task).release(signed(harbour, "south-pier", minute))
+    for done in (harbour.next("north-pier"), harbour.show()):
+        assert done.code == 4
+        told = " ".join(done.out.split())
+        assert "two different messages of south-pier in round 0: conflict: misbehaviour or restored state" in told
+        assert "begin a new task" in told
+    assert state(harbour.next("north-pier", "--json")) == (4, "failed")
+    shown = harbour.show("--json")
+    assert state(shown) == (4, "failed")
+    assert [(one["kind"], one["sender"]) for one in shown.json["problems"]] == [("conflict", "south-pier")]
+    assert not harbour.mine("north-pier").exists()
+
+
+def test_who_makes_a_task_fail_is_named(harbour: Harbour) -> None:
+    TaskFolder(harbour.task).release(signed(harbour, "south-pier", 1, body=Review(what="review", complaints=())))
+    for name in ("north-pier", "light-house"):
+        harbour.next(name)
+    told = harbour.show("--json")
+    assert (told.code, told.json["failure"]["by"]) == (4, "south-pier")
+    assert "The task has failed, by south-pier:" in harbour.next("north-pier").out
+
+
+def test_files_that_do_not_count_are_named_and_stop_nothing(harbour: Harbour) -> None:
+    messages = harbour.task / "messages"
+    (messages / "x\x1b[2J.json").write_bytes(b"{}")
+    (messages / "foreign.json").write_bytes(TaskFolder(harbour.task).task.to_file())
+    done = harbour.next("north-pier")
+    assert done.code == 0
+    cautions = [line for line in done.err.splitlines() if line.startswith("Caution: ")]
+    assert len(cautions) == 2
+    assert "\x1b" not in done.err + done.out
+    shown = harbour.show()
+    assert (shown.code, shown.out.count("Problem: ")) == (0, 2)
+
+
+def test_after_the_due_date(harbour: Harbour, tmp_path: Path) -> None:
+    shutil.rmtree(harbour.task)
+    made = datetime(2026, 11, 1, tzinfo=UTC)
+    TaskFolder.create(harbour.task, new_task(created=made, due=made + timedelta(days=1)))
+    done = harbour.next("north-pier", "--json")
+    assert (done.code, "was due 2026-11-02T00:00:00Z" in done.json["error"]["what"]) == (4, True)
+    assert "past its due date" in harbour.show().out
+    assert not (harbour.task / "messages" / "0-north-pier.json").exists()
+
+
+def test_three_runs_at_once_say_one_thing(harbour: Harbour) -> None:
+    with ThreadPoolExecutor(3) as pool:
+        runs = list(pool.map(lambda _: spawn(*harbour.arguments("north-pier", "--yes")), range(3)))
+    assert [(one.code, one.err.count("Traceback")) for one in runs] == [(0, 0)] * 3
+    assert [path.name for path in (harbour.task / "messages").iterdir()] == ["0-north-pier.json"]
+    assert [entry.event.what for entry in load_journal(harbour.mine("north-pier")).entries] == ["approved"]
+
+
+def test_what_a_stopped_end_has_left_is_erased_and_what_a_stopped_run_has_left_is_named(harbour: Harbour) -> None:
+    for _ in range(7):
+        for name in NAMES:
+            harbour.next(name)
+    steps = next(harbour.mine("north-pier").glob("tasks/*"))
+    (steps / "step-5.json").write_bytes(b"not erased yet")
+    left = harbour.task / "messages" / ".0-north-pier.json.0123456789abcdef.partial"
+    left.write_bytes(b"{")
+    done = harbour.next("north-pier")
+    assert (done.code, done.out) == (0, "The task is over for north-pier; nothing is left to be done.\n")
+    assert "left by a run that was stopped" in done.err
+    assert [path.name for path in steps.iterdir()] == ["done.json"]
+    assert left.exists()
+
+
+def test_nothing_secret_is_printed_or_lies_in_the_open(harbour: Harbour) -> None:
+    printed = ""
+    for _ in range(2):
+        for name in NAMES:
+            done = harbour.next(name)
+            printed += done.out + done.err
+    assert "passphrase of" not in printed
+    for path, (mode, content) in files_in(harbour.root).items():
+        if "/step-" in path:
+            assert mode & 0o777 == 0o600
+            assert content is not None
+            assert set(json.loads(content)["wrapping"]) == {"method", "suite", "card", "key", "commitment"}
+
+
+def test_json_alone_is_printed_where_it_is_asked_for(harbour: Harbour) -> None:
+    (harbour.task / "messages" / "x.json").write_bytes(b"{}")
+    done = run(*with_json(harbour.arguments("north-pier", "--yes")))
+    assert (done.code, done.err) == (0, "")
+    assert [one["kind"] for one in done.json["problems"]] == ["unreadable"]
+    assert_one_line(run("task", "show", harbour.root / "nothing"))

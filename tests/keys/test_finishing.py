@@ -1,0 +1,121 @@
+"""The end of a task, stopped at each place: nothing is lost, nothing is told twice, and what is kept is erased once."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from cli.harness import run
+from cli.keyed import OFFICE, Keyed
+from cli.test_key_tasks import CONTENT, FIRST, SECOND, sent
+from parties import unlocked
+
+from shares.errors import NotEnoughSharesError, ParameterError, StorageError, VerificationError
+from shares.history.exchange import TaskFolder
+from shares.keys import finishing
+from shares.keys.finishing import begin_opening, open_message, signed
+from shares.keys.folder import KeyFolder
+from shares.memory import Secret
+
+
+@pytest.fixture(scope="module")
+def once(tmp_path_factory: pytest.TempPathFactory) -> Keyed:
+    keyed = Keyed.make(tmp_path_factory.mktemp("keyed") / "harbour").dealt()
+    assert run("key", "show", keyed.key, "--x25519-pem", keyed.path("x.pem")).code == 0
+    return keyed
+
+
+@pytest.fixture
+def opening(once: Keyed, tmp_path: Path) -> tuple[KeyFolder, TaskFolder]:
+    """The office's folder, and that of a task to open a message, answered by two."""
+    keyed = once.copy(tmp_path / "harbour")
+    path = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
+    keyed.answer(path, FIRST, SECOND, rounds=1)
+    return KeyFolder(keyed.key), TaskFolder(path)
+
+
+class Taken(list[bytes]):
+    """What was delivered."""
+
+    def __call__(self, plaintext: Secret) -> None:
+        with plaintext.view() as view:
+            self.append(bytes(view))
+
+
+def told(folder: KeyFolder) -> list[str]:
+    return [entry.event.what for entry in folder.journal().entries]
+
+
+def steps(folder: KeyFolder) -> list[str]:
+    return sorted(path.name for path in (folder.path / "tasks").rglob("*.json"))
+
+
+def test_a_message_is_opened_once(opening: tuple[KeyFolder, TaskFolder]) -> None:
+    taken = Taken()
+    with unlocked(OFFICE) as office:
+        assert steps(opening[0]) == ["step-0.json"]
+        open_message(*opening, office, taken)
+        assert (taken, steps(opening[0])) == ([CONTENT], ["done.json"])
+        with pytest.raises(ParameterError, match="over"):
+            open_message(*opening, office, taken)
+        assert len(taken) == 1
+
+
+@pytest.mark.parametrize("place", ["deliver", "enter_once", "close"])
+def test_whatever_stops_it_it_is_done_again(
+    opening: tuple[KeyFolder, TaskFolder], place: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    folder, taken = opening[0], Taken()
+
+    def stop(*_: object) -> None:
+        raise StorageError("no space left")
+
+    with unlocked(OFFICE) as office:
+        with monkeypatch.context() as patched:
+            if place != "deliver":
+                patched.setattr(finishing, place, stop)
+            with pytest.raises(StorageError):
+                open_message(*opening, office, stop if place == "deliver" else taken)
+        open_message(*opening, office, taken)
+    assert set(taken) == {CONTENT}
+    assert told(folder).count("task-finished") == 1
+    assert steps(folder) == ["done.json"]
+
+
+def test_round_0_may_be_said_again(opening: tuple[KeyFolder, TaskFolder]) -> None:
+    """A run that was stopped before its message was released; what is released then is the same to the byte."""
+    folder, task = opening
+    (said,) = (task.path / "messages").glob("0-*.json")
+    before = said.read_bytes()
+    for answer in (task.path / "messages").iterdir():
+        answer.unlink()
+    with unlocked(OFFICE) as office:
+        assert begin_opening(folder, task, office) == said
+        with pytest.raises(NotEnoughSharesError, match="needed"):
+            open_message(folder, task, office, Taken())
+    assert said.read_bytes() == before
+
+
+def test_a_receiver_who_has_not_spoken_is_awaited(opening: tuple[KeyFolder, TaskFolder]) -> None:
+    """A run that was stopped when the task was written, and no more."""
+    folder, task = opening
+    for path in (*(task.path / "messages").iterdir(), *(folder.path / "tasks").rglob("*.json")):
+        path.unlink()
+    with unlocked(OFFICE) as office:
+        with pytest.raises(NotEnoughSharesError, match="harbour-office has still to speak"):
+            open_message(folder, task, office, Taken())
+        assert begin_opening(folder, task, office).name == "0-harbour-office.json"
+
+
+def test_without_what_was_kept_nothing_opens(opening: tuple[KeyFolder, TaskFolder]) -> None:
+    """Another copy of the office's folder, older than the task."""
+    folder, task = opening
+    for path in (folder.path / "tasks").rglob("*.json"):
+        path.unlink()
+    with unlocked(OFFICE) as office, pytest.raises(VerificationError):
+        open_message(folder, task, office, Taken())
+
+
+def test_an_opening_is_no_signature(opening: tuple[KeyFolder, TaskFolder]) -> None:
+    with pytest.raises(ParameterError):
+        signed(*opening)

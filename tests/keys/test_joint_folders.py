@@ -1,0 +1,103 @@
+"""Joint generation as it is really done: a folder a party, messages sealed, signed, stored and carried.
+
+Source: FORMAT_KEYS.md, sec. 24 to 27; the resulting key is worked out by the integers of ``curve`` (RFC 8032).
+"""
+
+from __future__ import annotations
+
+import dataclasses
+from pathlib import Path
+
+from history.exchanging import Desk, exchange, to_the_end
+from keys.joining import interpolated, key, public_half, task
+from keys.test_joint_cheats import NAMES, NORTH, SOUTH
+
+from shares.documents.key_record import KeyRecord
+from shares.documents.key_share import KeyShare
+from shares.documents.task import Task
+from shares.history.exchange import TaskFolder
+from shares.history.journal import read_journal
+from shares.history.rounds import Inbox, Received, Said
+from shares.keys.generation import Dealt
+from shares.keys.joint import JointCourse, JointPart
+from shares.memory import Secret
+
+
+def desks(root: Path, made: Task, parts: dict[str, JointPart] | None = None) -> dict[str, Desk]:
+    """A machine for each party, with nothing but the task and its own key."""
+    found = {}
+    for name in made.names:
+        part = (parts or {}).get(name) or JointPart(made, name, key(name))
+        desk = Desk(root / name, name, part, JointCourse(made))  # type: ignore[arg-type]
+        desk.mine.mkdir(parents=True)
+        TaskFolder.create(desk.folder, made)
+        found[name] = desk
+    return found
+
+
+def test_five_folders_and_one_key(tmp_path: Path) -> None:
+    machines = desks(tmp_path, task())
+    to_the_end(machines)
+    records = {(desk.mine / "record.json").read_bytes() for desk in machines.values()}
+    assert len(records) == 1
+    record = KeyRecord.parse(records.pop())
+    assert record.is_confirmed()
+    assert not list(machines[NORTH].messages.glob("3-*"))
+    shares = {}
+    for x, (name, desk) in enumerate(machines.items(), 1):
+        share = KeyShare.parse((desk.mine / "share.json").read_bytes())
+        assert (share.custodian, share.index, share.record) == (name, x, record.fingerprint)
+        shares[x] = int.from_bytes(share.open(key(name).open).encode(), "little")
+        events = [entry.event.what for entry in read_journal((desk.mine / "journal.jsonl").read_bytes()).entries]
+        assert events == ["approved", "key-born"]
+    assert public_half(interpolated({x: shares[x] for x in (1, 3, 5)})) == record.public_key.encode()
+    kept = b"".join(path.read_bytes() for path in sorted(tmp_path.rglob("*.json*")))
+    assert not any(form in kept for share in shares.values() for form in _forms(share))
+
+
+def _forms(share: int) -> list[bytes]:
+    octets = share.to_bytes(32, "little")
+    return [octets, octets.hex().encode(), str(share).encode()]
+
+
+class Crooked(JointPart):
+    """Deals to one party what it has not committed to, and shows the same again."""
+
+    def speak(self, round: int, inbox: Inbox, state: Secret, received: list[Received]) -> Said:  # type: ignore[override]
+        said = super().speak(round, inbox, state, received)
+        if round != 1:
+            return said
+        wrong = Dealt.decode(said.sealed[SOUTH])
+        return dataclasses.replace(said, sealed={**said.sealed, SOUTH: Dealt(wrong.blind, wrong.share).encode()})
+
+
+class Stubborn(Crooked):
+    def speak(self, round: int, inbox: Inbox, state: Secret, received: list[Received]) -> Said:  # type: ignore[override]
+        said = super().speak(round, inbox, state, received)
+        if round != 3:
+            return said
+        shown = tuple(one.model_copy(update={"share": one.blind, "blind": one.share}) for one in said.body.shares)  # type: ignore[union-attr]
+        return dataclasses.replace(said, body=said.body.model_copy(update={"shares": shown}))
+
+
+def test_a_complaint_goes_through_folders_too(tmp_path: Path) -> None:
+    made = task()
+    machines = desks(tmp_path, made, {NORTH: Crooked(made, NORTH, key(NORTH))})
+    to_the_end(machines)
+    assert [path.name for path in machines[SOUTH].messages.glob("3-*")] == [f"3-{NORTH}.json"]
+    assert len({(desk.mine / "record.json").read_bytes() for desk in machines.values()}) == 1
+
+
+def test_who_insists_on_a_wrong_dealing_is_named_and_nothing_is_written(tmp_path: Path) -> None:
+    made = task()
+    machines = desks(tmp_path, made, {NORTH: Stubborn(made, NORTH, key(NORTH))})
+    for _ in range(6):
+        for desk in machines.values():
+            desk.take()
+        exchange(machines)
+    for name in NAMES:
+        failure = machines[name].standing().failure
+        assert failure is not None
+        assert failure.by == NORTH
+        assert machines[name].turn().doing == "failed"
+        assert not (machines[name].mine / "record.json").exists()

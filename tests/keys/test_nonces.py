@@ -1,0 +1,616 @@
+"""Nonces on disk: each is used for one share at most, whatever is killed, raced, copied or restored.
+
+Checked against: the equation of a signature share (RFC 9591, sec. 5.2), whose value shows whether two were made of one
+nonce; the kernel's own kills, renames and links; and cp(1) as what people restore folders with.
+"""
+
+from __future__ import annotations
+
+import errno
+import itertools
+import json
+import os
+import shutil
+import signal
+import stat
+import subprocess
+import warnings
+from collections.abc import Callable
+from pathlib import Path
+
+import pytest
+from keys.quorum import Key, dealt
+from parties import unlocked
+
+from shares import streams
+from shares.documents.nonce_batch import MAX_BATCH, NonceBatch, NoncePair, pair_id
+from shares.documents.party import OpenPartyKey
+from shares.errors import (
+    DocumentError,
+    ParameterError,
+    SharesError,
+    StorageError,
+    VerificationError,
+    WrongKeyError,
+)
+from shares.group.edwards25519 import BASE, Point
+from shares.keys import frost, nonces
+from shares.keys.nonces import NonceStore
+
+ME = "north-pier"
+ONE, OTHER = bytes([1]) * 32, bytes([2]) * 32
+Pair = tuple[Point, Point]
+
+
+def store_in(folder: Path, own: OpenPartyKey, key: Key | None = None) -> NonceStore:
+    return NonceStore(folder / "nonces", (key or dealt()).record, ME, own)
+
+
+def share_of(store: NonceStore, pair: Pair, message: bytes) -> bytes:
+    """This signer's share of a signature over a message, its purpose being the message. The other signer stays."""
+    key = dealt()
+    partner = frost.Commitment(2, BASE, BASE)
+    agreed = frost.Agreed(key.record.public_key, message, [frost.Commitment(1, *pair), partner])
+    taken = store.take(*pair, message.ljust(32, b"\0"))
+    return frost.sign(1, key.scalars[ME], taken, agreed).encode()
+
+
+def refuse(*_: object, **__: object) -> None:
+    raise OSError(errno.EPERM, "as a medium without it answers")
+
+
+def files(store: NonceStore) -> list[str]:
+    return sorted(path.name.split("-")[0] for path in store.folder.iterdir())
+
+
+@pytest.fixture
+def own():
+    with unlocked(ME) as key:
+        yield key
+
+
+@pytest.fixture
+def store(tmp_path: Path, own: OpenPartyKey) -> NonceStore:
+    return store_in(tmp_path, own)
+
+
+@pytest.fixture
+def pair(store: NonceStore) -> Pair:
+    (made,) = store.make(dealt().scalars[ME])
+    return made
+
+
+@pytest.fixture(params=["rename", "link"])
+def medium(request: pytest.FixtureRequest, monkeypatch: pytest.MonkeyPatch) -> str:
+    """Each way a medium lets a file get another name in one step."""
+    if request.param == "link":
+        monkeypatch.setattr(streams, "_rename_new", refuse)
+    return str(request.param)
+
+
+# Used, and used once.
+
+
+def test_nonces_are_those_of_their_commitments(store: NonceStore, pair: Pair) -> None:
+    assert store.holds(*pair)
+    assert files(store) == ["batch", "pair"]
+    hiding, binding = store.take(*pair, ONE).used()
+    assert (hiding * BASE, binding * BASE) == pair
+    assert not store.holds(*pair)
+    assert files(store) == ["batch", "spent"]
+
+
+def test_files_are_the_signers_alone(store: NonceStore, pair: Pair) -> None:
+    store.take(*pair, ONE)
+    modes = {stat.S_IMODE(path.stat().st_mode) for path in store.folder.iterdir()}
+    assert modes == {0o600}
+    assert stat.S_IMODE(store.folder.stat().st_mode) == 0o700
+
+
+def test_the_same_purpose_gives_the_same_share(store: NonceStore, pair: Pair) -> None:
+    assert share_of(store, pair, b"x") == share_of(store, pair, b"x")
+
+
+def test_a_run_after_a_killed_one_puts_the_new_name_on_the_medium(
+    store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The killed run may have renamed the file in memory alone; a power cut would undo that after the share is out."""
+    store.take(*pair, ONE)
+    synced: list[str] = []
+    real = os.fsync
+
+    def watch(descriptor: int) -> None:
+        synced.append(os.readlink(f"/proc/self/fd/{descriptor}"))
+        real(descriptor)
+
+    monkeypatch.setattr(os, "fsync", watch)
+    store.take(*pair, ONE)
+    assert synced == [os.fspath(store.folder)]
+
+
+def test_another_purpose_is_refused(store: NonceStore, pair: Pair) -> None:
+    share_of(store, pair, b"x")
+    for _ in range(2):
+        with pytest.raises(VerificationError, match="this nonce was used for another message"):
+            share_of(store, pair, b"y")
+    assert share_of(store, pair, b"x")
+
+
+def test_what_is_erased_is_gone_for_ever(store: NonceStore, pair: Pair) -> None:
+    store.erase(*pair, ONE)  # Not spent: nothing to erase.
+    assert store.holds(*pair)
+    store.take(*pair, ONE)
+    store.erase(*pair, ONE)
+    store.erase(*pair, ONE)
+    (spent,) = store.folder.glob("spent-*")
+    assert spent.read_bytes() == b""
+    with pytest.raises(VerificationError, match="erased: its share was given out"):
+        store.take(*pair, ONE)
+    with pytest.raises(VerificationError, match="this nonce was used for another"):
+        store.take(*pair, OTHER)
+
+
+def test_each_pair_of_a_batch_is_its_own(store: NonceStore) -> None:
+    pairs = store.make(dealt().scalars[ME], 7)
+    assert len(set(pairs)) == 7
+    for number, pair in enumerate(pairs):
+        assert store.take(*pair, bytes([number]) * 32)
+    assert files(store) == ["batch"] + 7 * ["spent"]
+
+
+@pytest.mark.parametrize("count", [0, -1, MAX_BATCH + 1])
+def test_a_batch_has_its_limits(store: NonceStore, count: int) -> None:
+    with pytest.raises(ParameterError, match="at a time"):
+        store.make(dealt().scalars[ME], count)
+    assert not store.folder.exists()
+
+
+def test_what_is_left_is_counted(store: NonceStore) -> None:
+    assert (store.unused(), store.leftovers()) == (0, [])
+    first, *_ = store.make(dealt().scalars[ME], 3)
+    store.make(dealt().scalars[ME], 2)
+    assert (store.unused(), store.leftovers()) == (5, [])
+    (path,) = store.folder.glob(f"pair-{pair_id(*first)}.json")
+    data = path.read_bytes()
+    store.take(*first, ONE)
+    assert store.unused() == 4
+    path.write_bytes(data)  # A spent pair that is put back is none that is left.
+    assert (store.unused(), store.leftovers()) == (4, [])
+    unpromised = store.folder / f"pair-{'0' * 32}.json"
+    unpromised.write_bytes(data[:100])
+    assert (store.unused(), store.leftovers()) == (4, [unpromised])
+
+
+# What is not this signer's, of this key.
+
+
+def test_unknown_commitments_are_refused(store: NonceStore, pair: Pair) -> None:
+    for wrong in ((pair[1], pair[0]), (pair[0], BASE)):
+        with pytest.raises(VerificationError, match="do not lie here"):
+            store.take(*wrong, ONE)
+    assert store.holds(*pair)
+
+
+def test_nonces_of_another_key_are_refused(tmp_path: Path, own: OpenPartyKey, store: NonceStore, pair: Pair) -> None:
+    foreign = store_in(tmp_path, own, dealt(number=1))
+    with pytest.raises(VerificationError, match="another key, epoch or signer"):
+        foreign.take(*pair, ONE)
+    assert store.holds(*pair)
+    store.take(*pair, ONE)
+    with pytest.raises(VerificationError, match="another key, epoch or signer"):
+        foreign.take(*pair, ONE)
+
+
+def test_another_party_key_opens_nothing(store: NonceStore, pair: Pair) -> None:
+    with unlocked("south-pier") as other:
+        store.key = other
+        with pytest.raises(WrongKeyError):
+            store.take(*pair, ONE)
+
+
+def test_a_file_under_another_ones_name_is_refused(store: NonceStore) -> None:
+    first, second = store.make(dealt().scalars[ME], 2)
+    place = store.folder / f"pair-{pair_id(*first)}.json"
+    place.unlink()
+    (store.folder / f"pair-{pair_id(*second)}.json").rename(place)
+    with pytest.raises(VerificationError, match="another key, epoch or signer"):
+        store.take(*first, ONE)
+
+
+@pytest.mark.parametrize("member", ["sealed", "hiding", "batch", "digest", "record"])
+def test_damaged_nonces_are_refused(store: NonceStore, pair: Pair, member: str) -> None:
+    store.take(*pair, ONE)  # From here on no mark is asked for.
+    (spent,) = store.folder.glob("spent-*")
+    members = json.loads(spent.read_text())
+    text = members[member]
+    members[member] = ("B" if text[0] == "A" else "A") + text[1:] if member != "batch" else "0" * 32
+    if member == "digest":
+        members[member] = "0" * 64
+    spent.write_text(json.dumps(members))
+    with pytest.raises((VerificationError, DocumentError)):
+        store.take(*pair, ONE)
+
+
+# Copied and restored.
+
+
+def test_a_pair_that_is_put_back_has_a_spent_one_beside_it(store: NonceStore, pair: Pair) -> None:
+    (path,) = store.folder.glob("pair-*")
+    kept = store.folder.parent / "kept"
+    shutil.copy2(path, kept)
+    given = {share_of(store, pair, b"x")}
+    shutil.copy2(kept, path)
+    with pytest.raises(VerificationError, match="this nonce was used for another"):
+        share_of(store, pair, b"y")
+    given.add(share_of(store, pair, b"x"))
+    assert len(given) == 1
+    store.erase(*pair, b"x".ljust(32, b"\0"))
+    for message in (b"x", b"y"):
+        with pytest.raises(VerificationError, match="this nonce was used"):
+            share_of(store, pair, message)
+
+
+def by_copy(folder: Path, backup: Path) -> Callable[[], object]:
+    subprocess.run(["cp", "-a", folder, backup], check=True)
+
+    def restore() -> None:
+        shutil.rmtree(folder)
+        subprocess.run(["cp", "-a", backup, folder], check=True)
+
+    return restore
+
+
+def by_moving_the_copy(folder: Path, backup: Path) -> Callable[[], object]:
+    subprocess.run(["cp", "-a", folder, backup], check=True)
+
+    def restore() -> None:
+        shutil.rmtree(folder)
+        backup.rename(folder)
+
+    return restore
+
+
+def in_place(folder: Path, backup: Path) -> Callable[[], object]:
+    """The folder stays the same; what is in it is removed and put back. Inode numbers may come again."""
+    subprocess.run(["cp", "-a", folder, backup], check=True)
+
+    def restore() -> None:
+        for path in folder.iterdir():
+            path.unlink()
+        subprocess.run(["cp", "-a", f"{backup}/.", folder], check=True)
+
+    return restore
+
+
+def by_hard_links(folder: Path, backup: Path) -> Callable[[], object]:
+    subprocess.run(["cp", "-al", folder, backup], check=True)
+
+    def restore() -> None:
+        shutil.rmtree(folder)
+        backup.rename(folder)
+
+    return restore
+
+
+def by_archive(folder: Path, backup: Path) -> Callable[[], object]:
+    subprocess.run(["tar", "-C", folder.parent, "-cpf", backup, folder.name], check=True)
+
+    def restore() -> None:
+        shutil.rmtree(folder)
+        subprocess.run(["tar", "-C", folder.parent, "-xpf", backup], check=True)
+
+    return restore
+
+
+@pytest.mark.parametrize("saving", [by_copy, by_moving_the_copy, in_place, by_hard_links, by_archive])
+def test_a_restored_folder_is_refused(
+    tmp_path: Path, own: OpenPartyKey, saving: Callable[[Path, Path], Callable[[], object]]
+) -> None:
+    store = store_in(tmp_path, own)
+    (pair,) = store.make(dealt().scalars[ME])
+    restore = saving(store.folder, tmp_path / "backup")
+    if saving is not by_hard_links:  # A link that is made to the file changes it: it is refused at once.
+        share_of(store, pair, b"x")
+    restore()
+    assert files(store) == ["batch", "pair"]
+    for message in (b"x", b"y"):
+        with pytest.raises(VerificationError, match=r"copied or restored: its nonces are not safe") as refused:
+            share_of(store, pair, message)
+        assert "shares key commit" in str(refused.value.hint)
+    # New ones are made and used there.
+    (fresh,) = store.make(dealt().scalars[ME])
+    assert share_of(store, fresh, b"y")
+
+
+def test_a_folder_that_is_only_moved_is_the_same(
+    tmp_path: Path, own: OpenPartyKey, store: NonceStore, pair: Pair
+) -> None:
+    store.folder.rename(tmp_path / "elsewhere")
+    (tmp_path / "moved").mkdir()
+    (tmp_path / "elsewhere").rename(tmp_path / "moved" / "nonces")
+    assert share_of(store_in(tmp_path / "moved", own), pair, b"x")
+
+
+def test_without_marks_a_pair_was_never_promised(store: NonceStore, pair: Pair) -> None:
+    (marks,) = store.folder.glob("batch-*")
+    marks.unlink()
+    with pytest.raises(VerificationError, match="copied or restored"):
+        store.take(*pair, ONE)
+
+
+def test_on_a_medium_without_modes_there_are_no_marks(
+    tmp_path: Path, own: OpenPartyKey, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The limit that the module names: nonces work there, and a restored folder goes unnoticed."""
+    monkeypatch.setattr(nonces, "_KEPT_MODE", 0o755)
+    store = store_in(tmp_path, own)
+    (pair,) = store.make(dealt().scalars[ME])
+    restore = by_copy(store.folder, tmp_path / "backup")
+    restore()
+    assert share_of(store, pair, b"x")
+
+
+# Killed and raced.
+
+
+def in_child(work: Callable[[], bytes], kill_at: int | None = None, *, after: bool = False) -> tuple[int, bytes]:
+    """Do work in a forked child that is killed at its n-th call to the system, before or after it.
+
+    Returns:
+        The exit status (negative: the signal; 4: refused), and what came out of the work.
+    """
+    reader, writer = os.pipe()
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", DeprecationWarning)
+        child = os.fork()
+    if child == 0:
+        leave, answer = os._exit, os.write
+        signal.alarm(30)
+        status = 1
+        try:
+            if kill_at is not None:
+                kill_at_call(kill_at, after=after)
+            answer(writer, work())
+            status = 0
+        except (VerificationError, StorageError):
+            status = 4
+        finally:
+            leave(status)
+    os.close(writer)
+    with os.fdopen(reader, "rb") as stream:
+        answered = stream.read()
+    return os.waitstatus_to_exitcode(os.waitpid(child, 0)[1]), answered
+
+
+def kill_at_call(number: int, *, after: bool) -> None:
+    """Count this process's calls that touch files from here on, and kill it at one of them."""
+    counter = itertools.count()
+
+    def counted(call: Callable[..., object]) -> Callable[..., object]:
+        def wrapped(*arguments: object, **named: object) -> object:
+            due = next(counter) == number
+            if due and not after:
+                os.kill(os.getpid(), signal.SIGKILL)
+            answer = call(*arguments, **named)
+            if due:
+                os.kill(os.getpid(), signal.SIGKILL)
+            return answer
+
+        return wrapped
+
+    for name in (
+        "open",
+        "read",
+        "write",
+        "fchmod",
+        "fsync",
+        "close",
+        "link",
+        "unlink",
+        "ftruncate",
+        "scandir",
+        "mkdir",
+    ):
+        setattr(os, name, counted(getattr(os, name)))
+    streams._rename_new = counted(streams._rename_new)  # type: ignore[assignment]
+
+
+def kills(attempt: Callable[[int, bool], int]) -> int:
+    """Attempt something that is killed at each call, until it is through before that; return how often it was."""
+    for number in itertools.count():
+        statuses = {attempt(number, after) for after in (False, True)}
+        if statuses == {0}:
+            return number
+        assert statuses <= {0, -signal.SIGKILL}, number
+
+
+def fresh(folder: Path, number: int) -> tuple[Callable[[bytes], bytes], Pair]:
+    """A folder of its own with one pair, and what gives a share of it; each time with the party key opened anew."""
+    place = folder / str(number)
+    with unlocked(ME) as own:
+        (pair,) = store_in(place, own).make(dealt().scalars[ME])
+
+    def share(message: bytes) -> bytes:
+        with unlocked(ME) as again:
+            return share_of(store_in(place, again), pair, message)
+
+    return share, pair
+
+
+def or_nothing(share: Callable[[bytes], bytes], message: bytes) -> bytes | None:
+    try:
+        return share(message)
+    except VerificationError:
+        return None
+
+
+@pytest.mark.parametrize("then", [b"x", b"y"])
+def test_killed_at_any_call_a_nonce_gives_one_share(tmp_path: Path, medium: str, then: bytes) -> None:
+    def attempt(number: int, after: bool) -> int:
+        share, _ = fresh(tmp_path, 2 * number + after)
+        status, first = in_child(lambda: share(b"x"), number, after=after)
+        # The next run is for the same message, or for another; then each is tried once more.
+        given = {first} - {b""} | {or_nothing(share, message) for message in (then, b"x", b"y", b"x")} - {None}
+        assert len(given) == 1, (medium, number, after)
+        if then == b"x":
+            # A crash is harmless: the next run signs the same message.
+            assert given == {or_nothing(share, b"x")}
+        return status
+
+    assert kills(attempt) > 10
+
+
+def test_killed_while_erasing(tmp_path: Path) -> None:
+    outcomes = set()
+
+    def attempt(number: int, after: bool) -> int:
+        share, pair = fresh(tmp_path, 2 * number + after)
+        first = share(b"x")
+
+        def erase() -> bytes:
+            with unlocked(ME) as own:
+                store_in(tmp_path / str(2 * number + after), own).erase(*pair, b"x".ljust(32, b"\0"))
+            return b"done"
+
+        status, _ = in_child(erase, number, after=after)
+        again = or_nothing(share, b"x")
+        assert again in (first, None)
+        assert or_nothing(share, b"y") is None
+        outcomes.add((status, again is None))
+        return status
+
+    assert kills(attempt) >= 4
+    assert outcomes >= {(0, True), (-signal.SIGKILL, False)}
+
+
+def test_killed_while_nonces_are_made(tmp_path: Path) -> None:
+    """What is left was never promised: it is refused, or whole."""
+    seen = set()
+
+    def attempt(number: int, after: bool) -> int:
+        place = tmp_path / f"{number}-{after}"
+
+        def make() -> bytes:
+            with unlocked(ME) as own:
+                store_in(place, own).make(dealt().scalars[ME])
+            return b"done"
+
+        status, _ = in_child(make, number, after=after)
+        with unlocked(ME) as own:
+            store = store_in(place, own)
+            for path in store.folder.glob("pair-*") if store.folder.exists() else ():
+                try:
+                    left = NoncePair.parse(path.read_bytes())
+                    outcome = taken_or_why(store, (left.hiding, left.binding))
+                except DocumentError:
+                    outcome = "incomplete"
+                assert outcome == "whole" or (outcome in ("refused", "incomplete") and status != 0)
+                seen.add(outcome)
+        return status
+
+    assert kills(attempt) > 10
+    assert seen == {"whole", "refused", "incomplete"}
+
+
+def taken_or_why(store: NonceStore, pair: Pair) -> str:
+    try:
+        hiding, binding = store.take(*pair, ONE).used()
+    except VerificationError as error:
+        return "refused" if "copied or restored" in error.what else error.what
+    return "whole" if (hiding * BASE, binding * BASE) == pair else "other nonces"
+
+
+@pytest.mark.parametrize("messages", [(b"x", b"y"), (b"x", b"x"), (b"x", b"y", b"z", b"x")])
+def test_processes_that_race_for_a_nonce(tmp_path: Path, medium: str, messages: tuple[bytes, ...]) -> None:
+    """They start together, in front of one closed gate."""
+    won = 0
+    for trial in range(12):
+        share, _ = fresh(tmp_path, trial)
+        gate = tmp_path / f"gate{trial}"
+        children = []
+        for message in messages:
+            reader, writer = os.pipe()
+            with warnings.catch_warnings():
+                warnings.simplefilter("ignore", DeprecationWarning)
+                child = os.fork()
+            if child == 0:
+                signal.alarm(30)
+                status = 1
+                try:
+                    while not gate.exists():
+                        pass
+                    os.write(writer, share(message))
+                    status = 0
+                except SharesError:
+                    status = 4
+                finally:
+                    os._exit(status)
+            os.close(writer)
+            children.append((child, reader))
+        gate.touch()
+        given = set()
+        for child, reader in children:
+            with os.fdopen(reader, "rb") as stream:
+                given.add(stream.read())
+            assert os.waitstatus_to_exitcode(os.waitpid(child, 0)[1]) in (0, 4)
+        given.discard(b"")
+        assert len(given) <= 1, (medium, trial)
+        won += len(given)
+    assert won >= 6
+
+
+def test_a_pair_put_back_while_another_is_spent_is_noticed(store: NonceStore, pair: Pair) -> None:
+    """Two spent names of one pair: nobody gets a share, not even who had one."""
+    (path,) = store.folder.glob("pair-*")
+    data = path.read_bytes()
+    store.take(*pair, ONE)
+    (store.folder / f"spent-{pair_id(*pair)}-{OTHER.hex()}").write_bytes(data)
+    for purpose in (ONE, OTHER):
+        with pytest.raises(VerificationError, match="this nonce was used for another"):
+            store.take(*pair, purpose)
+
+
+def test_a_medium_without_a_safe_rename_is_refused(
+    store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(streams, "_rename_new", refuse)
+    monkeypatch.setattr(os, "link", refuse)
+    with pytest.raises(StorageError, match="renamed safely"):
+        store.take(*pair, ONE)
+    assert store.holds(*pair)
+
+
+def test_a_full_medium_spends_nothing(store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch) -> None:
+    def full(*_: object, **__: object) -> None:
+        raise OSError(errno.ENOSPC, "full")
+
+    with monkeypatch.context() as patch:
+        patch.setattr(streams, "_rename_new", full)
+        with pytest.raises(StorageError, match="full"):
+            store.take(*pair, ONE)
+    assert store.holds(*pair)
+    assert store.take(*pair, ONE)
+
+
+# In the dark.
+
+
+def test_nonces_lie_sealed(store: NonceStore, pair: Pair) -> None:
+    taken = store.take(*pair, ONE)
+    hiding, binding = (one.encode() for one in taken.used())
+    everything = b"".join(path.read_bytes() for path in store.folder.iterdir())
+    for secret in (hiding, binding, dealt().scalars[ME].encode()):
+        assert secret not in everything
+        assert secret.hex().encode() not in everything
+
+
+# Handed out.
+
+
+def test_a_batch_is_handed_out_signed(store: NonceStore, own: OpenPartyKey) -> None:
+    batch = store.batch(dealt().scalars[ME], 5)
+    assert NonceBatch.parse(batch.to_file()) == batch
+    assert (batch.signer, batch.key, batch.record) == (ME, dealt().record.key, dealt().record.fingerprint)
+    assert batch.card == own.card
+    assert len(batch.commitments) == 5
+    assert all(store.holds(one.hiding, one.binding) for one in batch.commitments)
