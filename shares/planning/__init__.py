@@ -1,1 +1,1 @@
-"""Looking at a policy before anything is split: who makes a quorum, and who can block one. Public data only."""
+"""Looking at a policy before anything is split: who makes a quorum, who blocks one, and the odds. Public data only."""
