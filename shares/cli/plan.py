@@ -4,18 +4,28 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
+from itertools import chain
 from pathlib import Path
 
 import click
 
-from shares.cli.output import filled, json_option, print_result, prose
+from shares.cli.output import filled, json_option, print_result, progress, prose
+from shares.cli.plan_compare import comparison_lines, side_members
+from shares.cli.plan_odds import outlook_lines, outlook_members, rest_lines, rest_members, table
+from shares.cli.plan_targets import target_lines, target_members
 from shares.custody.parties import load_card
 from shares.documents.base import MAX_FILE
 from shares.documents.party import PartyCard
 from shares.documents.policy import Policy
-from shares.errors import VerificationError
+from shares.errors import ParameterError, VerificationError
+from shares.planning.advice import outlook
+from shares.planning.assumed import assumptions
+from shares.planning.compare import side
 from shares.planning.examine import Plan, examine
+from shares.planning.model import model_of
+from shares.planning.odds import days_of, odds
 from shares.planning.structure import MAX_LISTED, Bounds
+from shares.planning.targets import meeting, parse_targets
 from shares.storage import read_file
 
 CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, and where."
@@ -23,30 +33,76 @@ CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, a
 
 @click.command()
 @click.argument("policy", metavar="POLICY", callback=filled)
+@click.option("--years", type=float, default=10.0, show_default=True, help="Over how many years odds are told.")
+@click.option("--odds", "full", is_flag=True, help="Tell every cause, change and assumption, however long it takes.")
+@click.option(
+    "--targets",
+    metavar="TARGETS",
+    callback=filled,
+    help="Find the smallest rule and the longest intervals that have odds like loss=1e-6,exposure=1e-6.",
+)
+@click.option("--compare", metavar="OTHER", callback=filled, help="Set the policy beside another one.")
 @json_option
 @click.pass_context
-def command(ctx: click.Context, policy: str, as_json: bool) -> None:
+def command(
+    ctx: click.Context, policy: str, years: float, full: bool, targets: str | None, compare: str | None, as_json: bool
+) -> None:
     """Examine the policy in the TOML file POLICY before anything is split. It holds no secret, but is confidential.
 
     Told are the smallest numbers of custodians, people, sites and reporting lines that make a quorum or block every
     quorum, the minimal quorums, and what is amiss. The party cards that it names are read. Exit code 0; 4 where the
-    policy says `strict = true` and a serious finding stands, as `split` refuses it then.
+    policy says `strict = true` and a serious finding stands, as `split` refuses it then. With --targets or --compare
+    nothing of this is told, and the exit code is 0.
 
     Serious is that one person, or one site, alone makes a quorum or leaves none when lost; that those of one reporting
     line, or the shares that go one way, make a quorum; that every custodian is needed; that there are fewer than three
     people or sites. A caution needs a decision that only people can make; a note is good to know.
+
+    Then come the odds over --years: that the key is lost, that it is exposed, that no quorum comes together on a day;
+    their largest causes; advice; and what to change first. Causes and changes are left out where they would take long
+    (more than 24 custodians, or many sites, lines and media that cross one another), unless --odds asks for them.
+    Rates come from the policy, or are assumed and said to be. Whether odds are good enough is for people to say.
 
     What a policy holds is in FORMAT.md, section 12; examples to begin with are in examples/policies/ of the source.
 
     \b
     Example:
       shares plan tide-archive.toml
+      shares plan tide-archive.toml --targets loss=0.1%,exposure=0.1% --years 10
     """
-    read = Policy.parse(read_file(policy, limit=MAX_FILE), where=policy)
-    plan = examine(read, cards=_cards(read, Path(policy).parent))
-    code = VerificationError.exit_code if plan.refused else 0
-    print_result({"done": code == 0, "exit": code, **_members(plan)}, _lines(plan), as_json=as_json)
+    days_of(years)
+    if targets is not None and compare is not None:
+        raise ParameterError("--targets and --compare answer two questions", hint="ask one after the other")
+    wanted = None if targets is None else parse_targets(targets)
+    read, code = _read(policy), 0
+    open_ = assumptions(read)
+    if wanted is not None:
+        model = model_of(read)
+        now, answer = odds(model, years), meeting(model, wanted, years, progress=progress("Rules", "rules"))
+        members = {"years": years, **target_members(wanted, now, answer)}
+        lines = target_lines(wanted, now, answer, years)
+    elif compare is not None:
+        other = _read(compare)
+        first, second = (policy, side(read, years)), (compare, side(other, years))
+        open_ = tuple(dict.fromkeys((*open_, *assumptions(other))))
+        members = {"years": years, "policies": [side_members(*first), side_members(*second)]}
+        lines = comparison_lines(first, second, years)
+    else:
+        plan = examine(read, cards=_cards(read, Path(policy).parent))
+        code = VerificationError.exit_code if plan.refused else 0
+        view = outlook(model_of(read), years, full=full, progress=progress("Changes", "changes"))
+        members = {**_members(plan), **outlook_members(view)}
+        lines = chain(_lines(plan), [""], outlook_lines(view, full=full))
+    print_result(
+        {"done": code == 0, "exit": code, "confidential": CONFIDENTIAL, **members, **rest_members(open_)},
+        chain(lines, [""], rest_lines(open_, full=full), [CONFIDENTIAL]),
+        as_json=as_json,
+    )
     ctx.exit(code)
+
+
+def _read(path: str) -> Policy:
+    return Policy.parse(read_file(path, limit=MAX_FILE), where=path)
 
 
 def _cards(policy: Policy, folder: Path) -> dict[str, PartyCard]:
@@ -57,7 +113,6 @@ def _cards(policy: Policy, folder: Path) -> dict[str, PartyCard]:
 def _members(plan: Plan) -> dict[str, object]:
     quorums = plan.quorums
     return {
-        "confidential": CONFIDENTIAL,
         "label": plan.label,
         "rule": plan.rule.words(),
         "points": plan.rule.size,
@@ -88,10 +143,7 @@ def _lines(plan: Plan) -> Iterator[str]:
     rows = [("", "in all", "make a quorum", "block every quorum")] + [
         (what, str(count.total), str(count.quorum), str(count.block)) for what, count in plan.counts.items()
     ]
-    widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
-    for what, *numbers in rows:
-        cells = [f"{number:>{width}}" for number, width in zip(numbers, widths[1:], strict=True)]
-        yield "  ".join([f"{what:<{widths[0]}}", *cells]).rstrip()
+    yield from table(rows)
     yield "The last two columns: the fewest that can do so. If all who block every quorum are lost, so is the key."
     if not plan.exact:
         yield from prose(
@@ -105,7 +157,6 @@ def _lines(plan: Plan) -> Iterator[str]:
         yield from prose(f"{finding.severity.capitalize()}: {finding.what} {finding.advice}")
     yield ""
     yield from prose(_verdict(plan))
-    yield CONFIDENTIAL
 
 
 def _quorum_lines(plan: Plan) -> Iterator[str]:
@@ -131,4 +182,4 @@ def _verdict(plan: Plan) -> str:
             "Serious findings stand. `shares split` tells them and goes on, since the policy does not say "
             "`strict = true`. Better change the policy first."
         )
-    return "Nothing serious was found in the structure. How likely losses are is not part of this."
+    return "Nothing serious was found in the structure."

@@ -1,0 +1,200 @@
+"""How ``shares plan`` tells odds: the table, the advice, what to change first, what is assumed, and the cautions.
+
+Source: none.
+May import: shares.planning, .output.
+Secret: nothing. Public: nothing either, as for the policy.
+Does not: work anything out.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from collections import Counter
+from collections.abc import Iterable, Iterator, Sequence
+
+from shares.cli.output import prose
+from shares.planning import assumed, numbers
+from shares.planning.advice import Change, Outlook, cause_words, largest
+from shares.planning.odds import Contribution, Odds
+
+CAUTIONS = (
+    "Odds are as good as the rates they come from, and no better. That custodians share nothing but people, sites, "
+    "reporting lines and media is an assumption. Have a professional decide."
+)
+_MOST_CHANGES = 5
+_IN_SHORT = {
+    assumed.SHARE.reason: "losses of single shares",
+    assumed.PERSON.reason: "what people do",
+    assumed.SITE.reason: "what befalls sites",
+    assumed.LINE.reason: "what befalls reporting lines",
+    assumed.MEDIUM.reason: "what befalls media",
+    assumed.MEDIUM_OF_ONE_MAKE.reason: "what befalls sticks and cards",
+}
+
+
+_GLUE = "\N{NO-BREAK SPACE}"
+
+
+def sentences(text: str) -> list[str]:
+    """Break text into lines as ``prose`` does, yet never within "5.3 %" or "1 in 20"."""
+    glued = re.sub(r"(?<=\d) (?=%)|(?<=\b1) (?=in \d)|(?<=\b1 in) (?=\d)", _GLUE, text)
+    return [line.replace(_GLUE, " ") for line in prose(glued)]
+
+
+def table(rows: Sequence[Sequence[str]], *, left: int = 1) -> Iterator[str]:
+    """Yield rows as lines in columns.
+
+    Args:
+        rows: the cells; all rows have as many.
+        left: so many columns, and the last one, begin at their left; the others end at their right.
+    """
+    widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
+    for row in rows:
+        cells = [
+            f"{cell:<{width}}" if i < left else f"{cell:>{width}}"
+            for i, (cell, width) in enumerate(zip(row, widths, strict=True))
+        ]
+        yield "  ".join(cells).rstrip()
+
+
+def odds_members(odds: Odds | None) -> dict[str, object] | None:
+    """Return odds for JSON, which has no infinity: null years are 'never'."""
+    if odds is None:
+        return None
+    years = None if odds.years_to_loss == math.inf else odds.years_to_loss
+    return {"loss": odds.loss, "exposure": odds.exposure, "absence": odds.absence, "years_to_loss": years}
+
+
+def cause_members(causes: Iterable[Contribution]) -> list[dict[str, object]]:
+    """Return what each cause adds, for JSON."""
+    return [
+        {
+            "kind": cause.kind,
+            "name": cause.name,
+            "loss": cause.loss,
+            "exposure": cause.exposure,
+            "absence": cause.absence,
+        }
+        for cause in causes
+    ]
+
+
+def outlook_members(view: Outlook) -> dict[str, object]:
+    """Return all that is known of a policy's odds, for JSON."""
+    return {
+        "years": view.years,
+        "odds": odds_members(view.odds),
+        "causes": None if view.causes is None else cause_members(view.causes),
+        "changes": None
+        if view.changes is None
+        else [
+            {
+                "kind": change.kind,
+                "what": change.words,
+                "odds": odds_members(change.odds),
+                "gain": {"loss": change.loss, "exposure": change.exposure},
+            }
+            for change in view.changes
+        ],
+        "advice": list(view.advice),
+    }
+
+
+def rest_members(assumptions: Sequence[str]) -> dict[str, object]:
+    """Return for JSON what all odds rest on, and the cautions."""
+    return {"assumptions": list(assumptions), "cautions": CAUTIONS}
+
+
+def outlook_lines(view: Outlook, *, full: bool) -> Iterator[str]:
+    """Yield what people are told of a policy's odds.
+
+    Args:
+        view: what was worked out.
+        full: whether every cause and change is told, not the largest alone.
+    """
+    if view.odds is not None:
+        yield from _odds_lines(view, view.odds, full=full)
+        yield ""
+    yield from sentences(" ".join(view.advice))
+    if view.odds is not None and view.changes:
+        yield from _change_lines(view.odds, view.changes, full=full)
+
+
+def _odds_lines(view: Outlook, odds: Odds, *, full: bool) -> Iterator[str]:
+    rows = [(f"odds over {numbers.horizon(view.years)}", "chance", "", "" if full else "mostly by")]
+    for of, what in (
+        ("loss", "loss: no quorum is left"),
+        ("exposure", "exposure: a quorum is known"),
+        ("absence", "no quorum on a given day"),
+    ):
+        chance = float(getattr(odds, of))
+        by = "" if full or view.causes is None else "; ".join(largest(view.causes, of))
+        rows.append((what, numbers.chance(chance), numbers.one_in(chance), by))
+    yield from _last_left(rows)
+    yield f"Mean time until the first loss: {numbers.years(odds.years_to_loss)}."
+    if full and view.causes:
+        yield ""
+        yield from table(
+            [("what each cause adds", "loss", "exposure", "no quorum")]
+            + [
+                (cause_words(one), *(numbers.chance(part) for part in (one.loss, one.exposure, one.absence)))
+                for one in view.causes
+            ]
+        )
+
+
+def _last_left(rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
+    """Yield a table whose last column begins at its left."""
+    for line, row in zip(table([row[:-1] for row in rows] if rows else []), rows, strict=True):
+        width = sum(max(map(len, column)) for column in list(zip(*rows, strict=True))[:-1]) + 2 * (len(row) - 2)
+        yield f"{line:<{width}}  {row[-1]}".rstrip()
+
+
+def _change_lines(now: Odds, changes: Sequence[Change], *, full: bool) -> Iterator[str]:
+    told = [(words, change) for words, change in _unlike(changes) if full or change.gain > 0]
+    if not told:
+        return
+    yield ""
+    rows = [("what to change first", "loss", "exposure")]
+    rows.append(("(as it is)", numbers.chance(now.loss), numbers.chance(now.exposure)))
+    rows += [
+        (words, numbers.chance(change.odds.loss), numbers.chance(change.odds.exposure))
+        for words, change in (told if full else told[:_MOST_CHANGES])
+    ]
+    yield from table(rows)
+    yield "Each alone, in the order of what it takes off both odds together."
+
+
+def _unlike(changes: Sequence[Change]) -> Iterator[tuple[str, Change]]:
+    """Yield changes with their words, and tell those of one kind with the same numbers once."""
+
+    def told(change: Change) -> tuple[str, str, str]:
+        return change.kind, numbers.chance(change.odds.loss), numbers.chance(change.odds.exposure)
+
+    alike = Counter(map(told, changes))
+    for change in changes:
+        others = alike.pop(told(change), 0) - 1
+        if others >= 0:
+            more = f" ({others} more alike)" if others else ""
+            yield change.words.removeprefix("to ") + more, change
+
+
+def rest_lines(assumptions: Sequence[str], *, full: bool) -> Iterator[str]:
+    """Yield what all odds rest on beside what the policy states, and the cautions.
+
+    Args:
+        assumptions: as ``assumed.assumptions`` returns them.
+        full: whether they are told in full.
+    """
+    if full:
+        for reason in assumptions:
+            yield from prose(f"Assumed: {reason}")
+    else:
+        short = [_IN_SHORT[reason] for reason in assumptions if reason in _IN_SHORT]
+        if short:
+            yield from prose(
+                f"Assumed, as the policy does not state all of it: the rates of {', '.join(short)}. What is assumed, "
+                "and why: --odds; how to state your own: FORMAT.md, section 12."
+            )
+    yield from prose(CAUTIONS)

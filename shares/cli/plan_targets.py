@@ -1,0 +1,95 @@
+"""How ``shares plan --targets`` tells which rules and intervals have the odds that are wanted.
+
+Source: none.
+May import: shares.planning, .output, .plan_odds.
+Secret: nothing. Public: nothing either, as for the policy.
+Does not: search.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from shares.cli.plan_odds import cause_members, odds_members, sentences, table
+from shares.planning import numbers
+from shares.planning.advice import largest
+from shares.planning.odds import Odds
+from shares.planning.targets import MAX_CUSTODIANS, Answer, Targets
+
+IMAGINED = (
+    "Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed, over the "
+    f"policy's custodians, up to {MAX_CUSTODIANS}, taken so that as few as possible share a site or a manager. Where "
+    "more are needed, each is imagined like one of these again, from the first on: same site, manager and medium, "
+    "another person."
+)
+
+
+def target_members(targets: Targets, now: Odds | None, answer: Answer) -> dict[str, object]:
+    """Return targets and what was found for them, for JSON."""
+    return {
+        "targets": targets._asdict(),
+        "odds": odds_members(now),
+        "met_by_the_policy": None if now is None else targets.met_by(now),
+        "met": answer.met,
+        "choices": [
+            {
+                "need": choice.need,
+                "total": choice.total,
+                "imagined": choice.imagined,
+                "attest_every_days": choice.attest_every,
+                "refresh_every_days": choice.refresh_every,
+                "odds": odds_members(choice.odds),
+            }
+            for choice in answer.choices
+        ],
+        "causes": cause_members(answer.causes),
+        "imagined": IMAGINED,
+    }
+
+
+def target_lines(targets: Targets, now: Odds | None, answer: Answer, years: float) -> Iterator[str]:
+    """Yield for people what was found for targets."""
+    over = numbers.horizon(years)
+    wanted = " and ".join(
+        f"{what} at most {numbers.chance(chance)}" for what, chance in targets._asdict().items() if chance < 1
+    )
+    yield from sentences(f"Wanted over {over}: {wanted}. {_of_the_policy(targets, now)}")
+    yield ""
+    if answer.met:
+        yield "The smallest rule that has these odds, and larger ones with less to do:"
+    else:
+        yield from sentences("No rule that was tried has these odds. What comes nearest:")
+    rows = [("rule", "attest", "refresh", "loss", "exposure", "imagined")]
+    rows += [
+        (
+            f"{choice.need} of {choice.total}",
+            numbers.every(choice.attest_every),
+            numbers.every(choice.refresh_every),
+            numbers.chance(choice.odds.loss),
+            numbers.chance(choice.odds.exposure),
+            str(choice.imagined or "none"),
+        )
+        for choice in answer.choices
+    ]
+    yield from (f"  {line}" for line in table(rows))
+    if answer.causes:
+        yield from sentences(_in_the_way(targets, answer))
+    yield ""
+    yield from sentences(IMAGINED)
+
+
+def _of_the_policy(targets: Targets, now: Odds | None) -> str:
+    if now is None:
+        return "The policy itself is too large to be worked out exactly."
+    told = f"loss {numbers.chance(now.loss)}, exposure {numbers.chance(now.exposure)}"
+    return f"The policy as it is: {told}; that is {'enough' if targets.met_by(now) else 'not enough'}."
+
+
+def _in_the_way(targets: Targets, answer: Answer) -> str:
+    odds = answer.choices[0].odds
+    told = [
+        f"of {what}, {' and '.join(largest(answer.causes, what))}"
+        for what in ("loss", "exposure")
+        if getattr(odds, what) > getattr(targets, what) and largest(answer.causes, what)
+    ]
+    return f"What stands in the way: {'; '.join(told)}. More sites and managers help where more custodians do not."

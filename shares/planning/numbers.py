@@ -1,0 +1,85 @@
+"""Odds in words: as many digits as are meant, in the form in which people compare them.
+
+Rates are guesses to one digit or two, so no number that follows from them is told with more than two.
+
+Source: practice of risk communication (from memory: "1 in 20" is understood by more people than 0.05 is).
+May import: nothing of this package.
+Secret: nothing. Public: whatever is written.
+Does not: judge what is large or small.
+"""
+
+from __future__ import annotations
+
+import math
+
+_CERTAIN = 0.995
+_ONE_DIGIT_BELOW = 1e-4
+
+
+def chance(p: float) -> str:
+    """Write a chance, 0 to 1: a percentage, or one digit and a power of ten below 0.01 %.
+
+    >>> [chance(p) for p in (0.0, 4.2e-7, 0.000096, 0.00096, 0.0532, 0.57499, 0.996)]
+    ['none', '4e-7', '1e-4', '0.096 %', '5.3 %', '57 %', 'above 99 %']
+    """
+    if p == 0:
+        return "none"
+    if p >= _CERTAIN:
+        return "above 99 %"
+    if p < _ONE_DIGIT_BELOW:
+        digit, power = f"{p:.0e}".split("e")
+        return f"{digit}e{int(power)}"
+    return f"{_two_digits(100 * p)} %"
+
+
+def one_in(p: float) -> str:
+    """Write a chance as one in so many; nothing where that reads worse than a percentage does.
+
+    >>> [one_in(p) for p in (0.0532, 0.0009, 4e-7, 0.57, 0.0)]
+    ['1 in 19', '1 in 1,100', '', '', '']
+    """
+    return f"1 in {_two_digits(1 / p)}" if 1e-5 <= p <= 1 / 3 else ""
+
+
+def years(span: float) -> str:
+    """Write a mean time in years, of which none is too long.
+
+    >>> [years(span) for span in (0.04, 10.9, 181.99, 2.6e5, 1.3e17, math.inf)]
+    ['15 days', '11 years', '180 years', '260,000 years', 'more than a million years', 'never']
+    """
+    if span == math.inf:
+        return "never"
+    if span > 1e6:
+        return "more than a million years"
+    return f"{_two_digits(365 * span)} days" if span < 1 else f"{_two_digits(span)} years"
+
+
+def horizon(span: float) -> str:
+    """Write a number of years that somebody gave, as they meant it.
+
+    >>> horizon(10.0), horizon(1.0), horizon(0.5)
+    ('10 years', '1 year', '0.5 years')
+    """
+    return "1 year" if span == 1 else f"{span:,.6g} years"
+
+
+def every(days: int | None) -> str:
+    """Write an interval of 1 day or more; None is none at all.
+
+    >>> every(None), every(1), every(90), every(365), every(730)
+    ('never', 'every day', 'every 90 days', 'every year', 'every 2 years')
+    """
+    if days is None:
+        return "never"
+    number, unit = (days // 365, "year") if days % 365 == 0 else (days, "day")
+    return f"every {unit}" if number == 1 else f"every {number:,} {unit}s"
+
+
+def _two_digits(number: float) -> str:
+    """Round to two digits, with no exponent and no trailing point.
+
+    >>> [_two_digits(n) for n in (0.52, 1.0, 5.32, 57.499, 1880.5)]
+    ['0.52', '1', '5.3', '57', '1,900']
+    """
+    rounded = float(f"{number:.1e}")
+    return f"{rounded:,.0f}" if rounded >= 10 else f"{rounded:g}"

@@ -1,0 +1,228 @@
+"""The other way round: from the odds that are wanted to the smallest rule and the longest intervals that have them.
+
+Looked at are all rules k of n up to 12 custodians, each of weight 1 in one group, in which neither one makes a quorum
+nor all are needed, with intervals from a list of those that people keep, a week to five years or never. The custodians
+are the policy's own, taken so that as few as possible share a site or a manager; where more are wanted, each is
+imagined like one of these again, from the first on: on the same site, in the same line and on the same medium, but
+another person. So more custodians do not bring more sites.
+
+Loss does not depend on how often shares are refreshed, nor exposure on how often they are attested: so both intervals
+are found at once. Odds are taken to grow with an interval; that what is told meets the targets is worked out, and only
+that no longer interval does rests on this.
+
+Source: search through all cases, in a fixed order; bisection.
+May import: shares.errors, shares.sharing.rule, .changes, .model, .odds.
+Secret: nothing. Public: nothing either, as for the model.
+Does not: look at trees of groups, at other sites, or at what anything costs.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from collections import Counter
+from collections.abc import Callable, Iterable, Iterator
+from dataclasses import dataclass, replace
+from typing import NamedTuple
+
+from shares.errors import ParameterError
+from shares.planning.changes import attesting_every, refreshing_every, with_another
+from shares.planning.model import DAYS_OF_A_YEAR, Model
+from shares.planning.odds import Contribution, Odds, contributions, odds
+from shares.sharing.rule import Rule
+
+MAX_CUSTODIANS = 12
+INTERVALS: tuple[int | None, ...] = (None, 1825, 730, 365, 182, 91, 30, 14, 7)
+"""Days between attestations or refreshes that are tried, the longest first; None is never."""
+
+
+class Targets(NamedTuple):
+    """What odds are wanted.
+
+    Attributes:
+        loss, exposure: chances that are not to be exceeded; 1 where anything is good enough.
+    """
+
+    loss: float
+    exposure: float
+
+    def met_by(self, found: Odds) -> bool:
+        """Say whether odds are as good as is wanted."""
+        return found.loss <= self.loss and found.exposure <= self.exposure
+
+    def missed_by(self, found: Odds) -> float:
+        """Return how far odds are from the targets: the larger of both ratios, as a logarithm; 0 where they are met."""
+        ratios = (found.loss / self.loss, found.exposure / self.exposure)
+        return max(0.0, math.log(max(*ratios, 1.0)))
+
+
+@dataclass(frozen=True, slots=True)
+class Choice:
+    """A rule k of n with its intervals, and the odds that it has.
+
+    Attributes:
+        need, total: k and n.
+        imagined: how many of the custodians are not the policy's.
+        attest_every, refresh_every: days; None for never.
+        odds: over the years asked for.
+    """
+
+    need: int
+    total: int
+    imagined: int
+    attest_every: int | None
+    refresh_every: int | None
+    odds: Odds
+
+    @property
+    def rounds(self) -> float:
+        """How many attestations and refreshes a year there are."""
+        return sum(DAYS_OF_A_YEAR / days for days in (self.attest_every, self.refresh_every) if days)
+
+
+@dataclass(frozen=True, slots=True)
+class Answer:
+    """What was found for targets.
+
+    Attributes:
+        met: whether the targets can be met.
+        choices: the smallest rule that meets them, and then larger ones, each with fewer rounds a year than the one
+            before; or else the one that comes nearest.
+        causes: what stands in the way: the causes of the odds that come nearest; none where the targets are met.
+    """
+
+    met: bool
+    choices: tuple[Choice, ...]
+    causes: tuple[Contribution, ...] = ()
+
+
+def parse_targets(text: str) -> Targets:
+    """Read targets, as the command line has them.
+
+    Args:
+        text: ``loss=`` and ``exposure=``, or one of them, each with a number above 0 and below 1 or a percentage.
+
+    Raises:
+        ParameterError: it is not written so.
+
+    >>> parse_targets("loss=1e-6,exposure=0.1 %")
+    Targets(loss=1e-06, exposure=0.001)
+    """
+    found: dict[str, float] = {}
+    for part in text.split(","):
+        form = re.fullmatch(r"\s*(loss|exposure)\s*=\s*([0-9]{1,3}(?:\.[0-9]{1,12})?(?:e-[0-9]{1,2})?)\s*(%?)\s*", part)
+        if form is None or form[1] in found:
+            raise ParameterError(
+                "targets are written like loss=1e-6,exposure=0.1%, each at most once", hint="either may be left out"
+            )
+        found[form[1]] = float(form[2]) / (100 if form[3] else 1)
+        if not 0 < found[form[1]] < 1:
+            raise ParameterError(
+                f"the target for {form[1]} is not above 0 and below 1", hint="no rule makes a danger nothing"
+            )
+    return Targets(found.get("loss", 1.0), found.get("exposure", 1.0))
+
+
+def meeting(
+    model: Model, targets: Targets, years: float, *, progress: Callable[[int, int | None], None] | None = None
+) -> Answer:
+    """Find the smallest rule and the longest intervals that meet targets, or what comes nearest.
+
+    Args:
+        model: whose custodians, sites, lines, media and rates are used; its rule and intervals are not.
+        targets: what is wanted.
+        years: as for ``odds``.
+        progress: called with the number of rules looked at and to look at.
+
+    Returns:
+        Of the rules of one size, the one with the fewest rounds a year, then with the smaller threshold. What comes
+        nearest misses its worse target by the smallest factor, with intervals of a week where longer ones do not do.
+
+    Raises:
+        ParameterError: a span of years that is out of range, or no rule could be worked out exactly.
+    """
+    names, peopled = _people(model)
+    nearest: tuple[float, Choice] | None = None
+    choices = list[Choice]()
+    for done, (total, need) in enumerate(pairs := list(_rules())):
+        if progress:
+            progress(done, len(pairs))
+        flat = replace(peopled, rule=Rule(need, names[:total]))
+        imagined = max(0, total - len(model.custodians))
+        best = _with(flat, len(INTERVALS) - 1, len(INTERVALS) - 1, years)
+        if best is None:
+            continue
+        missed = targets.missed_by(best)
+        if missed and (nearest is None or (missed, total) < (nearest[0], nearest[1].total)):
+            nearest = missed, Choice(need, total, imagined, INTERVALS[-1], INTERVALS[-1], best)
+        # A rule that asks for more rounds a year than a smaller one is no choice.
+        if not missed:
+            found = _at_leisure(flat, targets, years, imagined)
+            if choices and choices[-1].total == total and found.rounds < choices[-1].rounds:
+                choices[-1] = found
+            elif not choices or (choices[-1].total < total and found.rounds < choices[-1].rounds):
+                choices.append(found)
+    if choices:
+        return Answer(True, tuple(choices))
+    if nearest is None:
+        raise ParameterError("rules over these custodians are too large to be worked out exactly")
+    choice = nearest[1]
+    flat = replace(peopled, rule=Rule(choice.need, names[: choice.total]))
+    reached = Targets(max(targets.loss, choice.odds.loss), max(targets.exposure, choice.odds.exposure))
+    found = _at_leisure(flat, reached, years, choice.imagined)
+    kept = refreshing_every(attesting_every(flat, found.attest_every), found.refresh_every)
+    return Answer(False, (found,), contributions(kept, years) or ())
+
+
+def _rules() -> Iterator[tuple[int, int]]:
+    for total in range(3, MAX_CUSTODIANS + 1):
+        for need in range(2, total):
+            yield total, need
+
+
+def _at_leisure(flat: Model, targets: Targets, years: float, imagined: int) -> Choice:
+    """Return a rule that meets targets at the shortest intervals with the longest that do."""
+    # Both bisections go on side by side, as one pass gives both odds.
+    shortest = len(INTERVALS) - 1
+    low, high = [0, 0], [shortest, shortest]
+    while low != high:
+        middle = [(a + b) // 2 for a, b in zip(low, high, strict=True)]
+        found = _with(flat, middle[0], middle[1], years)
+        fits = found is not None and (found.loss <= targets.loss, found.exposure <= targets.exposure)
+        for i, good in enumerate(fits or (False, False)):
+            if low[i] < high[i]:
+                low[i], high[i] = (low[i], middle[i]) if good else (middle[i] + 1, high[i])
+    chosen = _with(flat, low[0], low[1], years)
+    if chosen is None:  # pragma: no cover - the same rule was worked out before.
+        raise ParameterError("a rule over these custodians is too large to be worked out exactly")
+    return Choice(flat.rule.need, len(flat.custodians), imagined, INTERVALS[low[0]], INTERVALS[low[1]], chosen)
+
+
+def _with(flat: Model, attest: int, refresh: int, years: float) -> Odds | None:
+    return odds(refreshing_every(attesting_every(flat, INTERVALS[attest]), INTERVALS[refresh]), years)
+
+
+def _people(model: Model) -> tuple[tuple[str, ...], Model]:
+    """Return the names of the custodians looked at, in the order in which they are taken, and their model."""
+    names = list(_apart(model))[:MAX_CUSTODIANS]
+    peopled = replace(model, rule=Rule(1, tuple(names)))
+    for i in range(MAX_CUSTODIANS - len(names)):
+        before = set(peopled.custodians)
+        peopled = with_another(peopled, names[i])
+        names += [name for name in peopled.custodians if name not in before]
+    return tuple(names), peopled
+
+
+def _apart(model: Model) -> Iterator[str]:
+    """Yield the custodians, always the first of those whose person, site, line and medium were met least often."""
+    groups = {name: [cause for cause in _shared(model) if name in cause] for name in model.custodians}
+    met, left = Counter[frozenset[str]](), list(model.custodians)
+    while left:
+        name = min(left, key=lambda one: sum(met[group] for group in groups[one]))
+        left.remove(name)
+        met.update(groups[name])
+        yield name
+
+
+def _shared(model: Model) -> Iterable[frozenset[str]]:
+    return [cause.members for cause in model.causes if len(cause.members) > 1]
