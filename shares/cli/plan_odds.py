@@ -176,7 +176,7 @@ def _unlike(changes: Sequence[Change]) -> Iterator[tuple[str, Change]]:
     for change in changes:
         others = alike.pop(told(change), 0) - 1
         if others >= 0:
-            more = f" ({others} more alike)" if others else ""
+            more = f" (or {others} other{'s' if others > 1 else ''})" if others else ""
             yield change.words.removeprefix("to ") + more, change
 
 

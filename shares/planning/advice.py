@@ -91,7 +91,8 @@ def outlook(
     found: tuple[Change, ...] | None = None
     if now is not None and (full or len(model.custodians) <= _MOST_CUSTODIANS):
         tries = list(_single(model))
-        if full or _work(model) * (len(tries) + len(model.causes) - 2 * len(model.custodians)) <= _MOST_WORK:
+        taken_away = {one.kind if one.kind in ("share", "person") else (one.kind, one.name) for one in model.causes}
+        if full or _work(model) * (len(tries) + len(taken_away)) <= _MOST_WORK:
             causes = contributions(model, years)
             found = _tried(tries, now, years, progress)
     return Outlook(years, now, causes, found, advice(model, years, now, causes, found))

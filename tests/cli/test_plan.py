@@ -12,7 +12,12 @@ from parties import party
 
 from shares.cli.plan import CONFIDENTIAL
 from shares.documents.policy import Policy
+from shares.planning.advice import outlook
+from shares.planning.assumed import assumptions
 from shares.planning.examine import examine
+from shares.planning.model import model_of
+from shares.planning.numbers import every
+from shares.planning.targets import Targets, meeting
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
 TIDE = EXAMPLES / "tide-archive.toml"
@@ -65,7 +70,8 @@ def test_json_tells_the_same(path: Path) -> None:
             "block": {"low": count.block.low, "high": count.block.high},
         }
     assert members["minimal_quorums"]["listed"] == [list(quorum) for quorum in plan.quorums.listed]
-    assert members["minimal_quorums"]["low"] == members["minimal_quorums"]["high"] == len(plan.quorums.listed)
+    few = len(plan.quorums.listed) or 495  # binomial(12, 8), too many to list
+    assert members["minimal_quorums"]["low"] == members["minimal_quorums"]["high"] == few
     assert [finding["code"] for finding in members["findings"]] == [finding.code for finding in plan.findings]
     text = " ".join(run("plan", path).out.split())
     for finding in members["findings"]:
@@ -217,3 +223,178 @@ def test_strange_text_cannot_steer_the_terminal(tmp_path: Path) -> None:
     path = changed(tmp_path, TIDE, 'label = "Tide', 'label = "\\u001b[31mTide')
     line = assert_refused(["plan", path], 4, "label is not allowed")
     assert line.strip().isprintable()
+
+
+def test_odds_come_with_causes_advice_and_what_to_change() -> None:
+    """The numbers are those of the library, which tests/planning checks."""
+    policy = Policy.parse((EXAMPLES / "tide-gate.toml").read_bytes())
+    view = outlook(model_of(policy), 10)
+    assert view.odds is not None
+    result = run("plan", EXAMPLES / "tide-gate.toml")
+    said = " ".join(result.out.split())
+    assert result.code == 0
+    for part in (
+        "odds over 10 years chance mostly by loss: no quorum is left 60 % single shares lost; people",
+        "exposure: a quorum is known 0.96 % 1 in 100 people; the site",
+        "Mean time until the first loss: 9.5 years.",
+        " ".join(view.advice),
+        "what to change first loss exposure (as it is) 60 % 0.96 % attest every year 3.3 % 0.96 % need 7 instead",
+        "have another custodian like north-pier (or 2 others)",
+        "Assumed, as the policy does not state all of it: the rates of losses of single shares, what people do,",
+        "Odds are as good as the rates they come from, and no better.",
+        "is an assumption. Have a professional decide.",
+    ):
+        assert part in said
+    assert "need 9 instead of 8" not in said  # It does harm.
+    assert all(len(line) <= 105 for line in result.out.splitlines())
+
+
+def test_json_tells_all_of_the_odds() -> None:
+    path = EXAMPLES / "first-draft.toml"
+    policy = Policy.parse(path.read_bytes())
+    view = outlook(model_of(policy), 2.5)
+    assert view.odds is not None
+    assert view.causes is not None
+    assert view.changes is not None
+    told = run("plan", path, "--years", "2.5", "--json").json
+    assert told["years"] == 2.5
+    assert told["odds"] == {name: getattr(view.odds, name) for name in ("loss", "exposure", "absence", "years_to_loss")}
+    assert [(one["kind"], one["name"], one["loss"]) for one in told["causes"]] == [
+        (one.kind, one.name, one.loss) for one in view.causes
+    ]
+    assert [(one["what"], one["gain"]["loss"], one["odds"]["exposure"]) for one in told["changes"]] == [
+        (one.words, one.loss, one.odds.exposure) for one in view.changes
+    ]
+    assert (told["advice"], told["assumptions"]) == (list(view.advice), list(assumptions(policy)))
+    assert "professional" in told["cautions"]
+
+
+def test_all_causes_changes_and_assumptions_where_they_are_asked_for() -> None:
+    path = EXAMPLES / "first-draft.toml"
+    result = run("plan", path, "--odds")
+    said = " ".join(result.out.split())
+    for reason in assumptions(Policy.parse(path.read_bytes())):
+        assert f"Assumed: {reason}" in said
+    assert "what each cause adds loss exposure no quorum single shares lost 42 % none 21 %" in said
+    assert "need 3 instead of 2 of (harbour-office, north-pier, south-pier) 71 % 4.2 %" in said
+
+
+def test_rates_that_are_all_stated_leave_nothing_to_assume(tmp_path: Path) -> None:
+    text = TIDE.read_text() + (
+        '[rates]\nloss = "0 %/y"\nleak = "0 %/y"\ndeparture = "0 %/y"\nhanded_on = "100 %"\nabsent = "0 %"\n'
+        'absent_for = "1d"\n'
+    )
+    for key, names in (
+        ("site", ["north pier", "south pier", "light-house", "harbour office", "audit house east", "audit house west"]),
+        ("line", ["harbour master", "board of the trust", "audit committee"]),
+    ):
+        for name in names:
+            text += f'[[{key}]]\nname = "{name}"\nloss = "0 %/y"\nleak = "0 %/y"\nabsent = "0 %"\n'
+    path = tmp_path / "policy.toml"
+    path.write_text(text)
+    said = " ".join(run("plan", path).out.split())
+    assert "loss: no quorum is left none" in said
+    assert "Mean time until the first loss: never." in said
+    assert "There is nothing to change that these odds would show." in said
+    assert "Assumed" not in said
+    assert "what to change first" not in said
+    told = run("plan", path, "--json").json
+    assert told["odds"]["years_to_loss"] is None  # JSON has no infinity.
+    assert told["causes"] == []
+
+
+def test_rules_too_large_to_be_worked_out_are_examined_all_the_same(tmp_path: Path) -> None:
+    names = [f"pier {i}" for i in range(60)]
+    text = 'label = "Tide archive"\nkey_type = "other"\n' + "".join(
+        f'[[custodian]]\nname = "{name}"\nperson = "keeper of {name}"\nsite = "{name}"\nreports_to = "{name}"\n'
+        for name in names
+    )
+    for i in range(6):
+        text += f"[group.g{i}]\nneed = 10\nfrom = {json.dumps([names[(7 * i + 11 * j) % 60] for j in range(30)])}\n"
+    path = tmp_path / "policy.toml"
+    path.write_text(text + '[rule]\nneed = 3\nfrom = ["g0", "g1", "g2", "g3", "g4", "g5"]\n')
+    result = run("plan", path)
+    assert result.code == 0
+    assert "is too large to be worked out exactly, so there are no odds here." in " ".join(result.out.split())
+    assert run("plan", path, "--json").json["odds"] is None
+    said = " ".join(run("plan", path, "--compare", TIDE).out.split())
+    assert "loss too large 5.3 %" in said
+    assert "better" not in said
+
+
+def test_targets_find_rules_and_intervals() -> None:
+    path = EXAMPLES / "tide-gate.toml"
+    wanted = ("--targets", "loss=1%,exposure=1%", "--years", "5")
+    answer = meeting(model_of(Policy.parse(path.read_bytes())), Targets(0.01, 0.01), 5)
+    result = run("plan", path, *wanted)
+    said = " ".join(result.out.split())
+    assert (result.code, result.err) == (0, "")
+    assert "Wanted over 5 years: loss at most 1 % and exposure at most 1 %. The policy as it is: loss" in said
+    assert "; that is not enough. The smallest rule that has these odds, and larger ones with less to do:" in said
+    for choice in answer.choices:
+        assert f" {choice.need} of {choice.total} {every(choice.attest_every)} {every(choice.refresh_every)} " in said
+    for part in ("another person", "Assumed, as", "Have a professional decide", CONFIDENTIAL):
+        assert part in said
+    told = run("plan", path, *wanted, "--json").json
+    assert (told["done"], told["met"], told["met_by_the_policy"], told["causes"]) == (True, True, False, [])
+    assert told["targets"] == {"loss": 0.01, "exposure": 0.01}
+    assert [(one["need"], one["total"], one["attest_every_days"], one["odds"]["loss"]) for one in told["choices"]] == [
+        (one.need, one.total, one.attest_every, one.odds.loss) for one in answer.choices
+    ]
+
+
+def test_targets_out_of_reach_are_met_as_nearly_as_can_be() -> None:
+    path = EXAMPLES / "first-draft.toml"
+    result = run("plan", path, "--targets", "loss=1e-6,exposure=1e-6")
+    said = " ".join(result.out.split())
+    assert result.code == 0
+    assert "No rule that was tried has these odds. What comes nearest:" in said
+    assert "What stands in the way: of loss, the " in said
+    assert "More sites and managers help" in said
+    told = run("plan", path, "--targets", "loss=1e-6,exposure=1e-6", "--json").json
+    assert (told["done"], told["met"], len(told["choices"])) == (True, False, 1)
+    assert told["causes"]
+
+
+def test_two_policies_side_by_side() -> None:
+    other = EXAMPLES / "break-glass.toml"
+    result = run("plan", TIDE, "--compare", other)
+    said = " ".join(result.out.split())
+    assert (result.code, result.err) == (0, "")
+    for part in (
+        f"First: {TIDE}, Tide archive backup root.",
+        f"Second: {other}, Break-glass password of the gate house.",
+        "custodians 6 5 fewest people that make a quorum 3 3",
+        "attested every 90 days every 182 days refreshed never every 2 years loss 5.3 % 0.52 % exposure 3.3 % 0.74 %",
+        "The second policy is better in loss, exposure and absence, and worse in nothing.",
+        CONFIDENTIAL,
+    ):
+        assert part in said
+    told = run("plan", TIDE, "--compare", other, "--json").json
+    assert [one["policy"] for one in told["policies"]] == [str(TIDE), str(other)]
+    for one, path in zip(told["policies"], (TIDE, other), strict=True):
+        assert one["odds"] == run("plan", path, "--json").json["odds"]
+
+
+@pytest.mark.parametrize(
+    ("more", "words"),
+    [
+        (("--years", "0"), "at least one day and at most 1,000 years"),
+        (("--years", "10000"), "at least one day and at most 1,000 years"),
+        (("--years", "nan"), "at least one day and at most 1,000 years"),
+        (("--years", "ten"), "not a valid float"),
+        (("--targets", "loss"), "targets are written like loss=1e-6,exposure=0.1%"),
+        (("--targets", "loss=2"), "not above 0 and below 1"),
+        (("--targets", ""), "an empty value is given"),
+        (("--compare", ""), "an empty value is given"),
+        (("--targets", "loss=0.1", "--compare", TIDE), "answer two questions"),
+    ],
+)
+def test_questions_that_are_none(more: tuple[str, ...], words: str) -> None:
+    assert_refused(["plan", TIDE, *more], 2, words)
+
+
+def test_the_other_policy_is_refused_in_its_own_name(tmp_path: Path) -> None:
+    path = changed(tmp_path, TIDE, "need = 2", "need 2")
+    assert_refused(["plan", TIDE, "--compare", path], 4, f"{path}: it is not TOML")
+    assert_refused(["plan", TIDE, "--compare", tmp_path / "none.toml"], 5, "does not exist")

@@ -1,0 +1,190 @@
+"""What to change first: every change is worked out, none is told twice, and the words say what the numbers do.
+
+Sources: binomial tails by ``math.comb``; the odds of each changed model, worked out anew for every custodian.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import replace
+from pathlib import Path
+
+import pytest
+
+from shares.documents.policy import Policy
+from shares.errors import ParameterError
+from shares.planning.advice import Change, advice, cause_words, largest, outlook
+from shares.planning.changes import moved, with_another
+from shares.planning.model import Cause, Model, model_of, yearly
+from shares.planning.odds import Contribution, Odds, contributions, odds
+from shares.sharing.rule import Rule
+
+EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
+TIDE = model_of(Policy.parse((EXAMPLES / "tide-archive.toml").read_bytes()))
+GATE = model_of(Policy.parse((EXAMPLES / "tide-gate.toml").read_bytes()))
+
+
+def alike(need: int, total: int, *, loss: float = 0.05, leak: float = 0.01) -> Model:
+    names = tuple(f"pier {i}" for i in range(total))
+    causes = tuple(Cause("share", name, frozenset({name}), yearly(loss), yearly(leak)) for name in names)
+    return Model(Rule(need, names), causes)
+
+
+def tail(fewest: int, total: int, chance: float) -> float:
+    return math.fsum(math.comb(total, i) * chance**i * (1 - chance) ** (total - i) for i in range(fewest, total + 1))
+
+
+def changes_of(model: Model, *, full: bool = False) -> tuple[Change, ...]:
+    found = outlook(model, 10, full=full).changes
+    assert found is not None
+    return found
+
+
+def test_changes_of_a_plain_rule_have_the_odds_that_arithmetic_gives() -> None:
+    found = {change.words: change for change in changes_of(alike(3, 5))}
+    lost, leaked = 1 - 0.95**10, 1 - 0.99**10
+    for words, need, total in (
+        ("to need 2 instead of 3", 2, 5),
+        ("to need 4 instead of 3", 4, 5),
+        ("to have another custodian like pier 0", 3, 6),
+    ):
+        change = found.pop(words)
+        assert math.isclose(change.odds.loss, tail(total - need + 1, total, lost), rel_tol=1e-9)
+        assert math.isclose(change.odds.exposure, tail(need, total, leaked), rel_tol=1e-9)
+        assert math.isclose(change.loss, tail(3, 5, lost) - change.odds.loss, rel_tol=1e-9)
+        assert math.isclose(change.exposure, tail(3, 5, leaked) - change.odds.exposure, rel_tol=1e-9)
+    refreshed = found.pop("to refresh every year")
+    assert math.isclose(refreshed.odds.exposure, 1 - (1 - tail(3, 5, 0.01)) ** 10, rel_tol=1e-9)
+    assert found.pop("to attest every year").odds.loss < tail(3, 5, lost) / 5
+    assert not found
+
+
+@pytest.mark.parametrize("model", [TIDE, GATE, alike(2, 4)], ids=["tide archive", "tide gate", "alike"])
+def test_changes_are_sorted_and_no_custodian_is_forgotten(model: Model) -> None:
+    found = changes_of(model)
+    gains = [change.gain for change in found]
+    assert gains == sorted(gains, reverse=True)
+    now = odds(model, 10)
+    assert now is not None
+    assert all(
+        change.gain == pytest.approx(now.loss + now.exposure - change.odds.loss - change.odds.exposure)
+        for change in found
+    )
+    for kind, changed in (("custodian", with_another), ("site", moved)):
+        told = [change.odds.loss for change in found if change.kind == kind]
+        assert len(told) < len(model.custodians)
+        for name in model.custodians:
+            if kind == "custodian" or any(c.kind == "site" and {name} < c.members for c in model.causes):
+                after = odds(changed(model, name), 10)
+                assert after is not None
+                assert any(math.isclose(after.loss, one, rel_tol=1e-9) for one in told)
+
+
+def test_each_threshold_is_tried_and_named_by_its_group() -> None:
+    told = {change.words for change in changes_of(TIDE) if change.kind == "threshold"}
+    assert told == {
+        "to need 1 instead of 2 at the top",
+        "to need 1 instead of 2 of (north-pier, south-pier, light-house)",
+        "to need 3 instead of 2 of (north-pier, south-pier, light-house)",
+        "to need 2 instead of 1 of (registrar, a group)",
+        "to need 1 instead of 2 of (auditor-east, auditor-west)",
+    }
+    # The weight of a custodian stays where it is, and a change to the group of the auditors is one to that group alone.
+    auditors = next(change for change in changes_of(TIDE) if change.words.endswith("(auditor-east, auditor-west)"))
+    operators = Rule(2, ("north-pier", "south-pier", "light-house"))
+    by_hand = Rule(2, (operators, Rule(1, ("registrar", Rule(1, ("auditor-east", "auditor-west"))))))
+    assert auditors.odds == odds(replace(TIDE, rule=by_hand), 10)
+
+
+def test_intervals_are_halved_down_to_a_day() -> None:
+    told = [change.words for change in changes_of(replace(TIDE, attest_every=3, refresh_every=1))]
+    assert "to attest every day" in told
+    assert not [words for words in told if "refresh" in words]
+
+
+def test_a_rule_without_room_has_no_other_custodian() -> None:
+    names = tuple(f"pier {i}" for i in range(255))
+    model = Model(Rule(255, names), tuple(Cause("share", name, frozenset({name}), 0.01) for name in names[:1]))
+    assert {change.kind for change in changes_of(model, full=True)} == {"attest", "refresh", "threshold"}
+
+
+def test_what_would_take_long_is_done_where_it_is_asked_for() -> None:
+    many = alike(2, 25)
+    assert outlook(many, 10).odds == odds(many, 10)
+    assert (outlook(many, 10).changes, outlook(many, 10).causes) == (None, None)
+    assert "--odds does it" in outlook(many, 10).advice[1]
+    seen = list[tuple[int, int | None]]()
+    full = outlook(many, 10, full=True, progress=lambda done, total: seen.append((done, total)))
+    assert full.causes == contributions(many, 10)
+    assert full.changes is not None
+    assert seen == [(i, len(full.changes)) for i in range(len(full.changes))]
+    # Twelve custodians, whose sites, lines and media all cross one another.
+    names = tuple(f"pier {i}" for i in range(12))
+    groups = (
+        [("site", i % 3, i) for i in range(12)]
+        + [("line", i % 4, i) for i in range(12)]
+        + [("medium", i // 4, i) for i in range(12)]
+    )
+    members: dict[tuple[str, int], set[str]] = {}
+    for kind, group, i in groups:
+        members.setdefault((kind, group), set()).add(names[i])
+    crossing = tuple(Cause(kind, str(group), frozenset(of), 0.01, 0.01) for (kind, group), of in members.items())  # type: ignore[arg-type]
+    assert outlook(replace(alike(5, 12), causes=(*alike(5, 12).causes, *crossing)), 10).changes is None
+    assert outlook(GATE, 10).changes is not None
+
+
+def test_what_is_too_large_is_said_calmly() -> None:
+    names = [f"pier {i}" for i in range(60)]
+    groups = tuple(Rule(10, tuple(names[(7 * i + 11 * j) % 60] for j in range(30))) for i in range(6))
+    view = outlook(Model(Rule(3, groups), (Cause("site", "a", frozenset(names), 0.1, 0.1),)), 10, full=True)
+    assert (view.odds, view.causes, view.changes) == (None, None, None)
+    assert "too large to be worked out exactly" in view.advice[0]
+    assert len(view.advice) == 3
+
+
+def test_three_sentences_say_what_the_numbers_do() -> None:
+    view = outlook(GATE, 10)
+    assert view.odds is not None
+    assert view.changes is not None
+    danger, best, besides = view.advice
+    assert "lost with a chance of 60 % and exposed with one of 0.96 % (1 in 100): loss is the greater danger" in danger
+    assert danger.endswith("above all by single shares lost.")
+    assert best == "Of single changes it helps most to attest every year: loss goes from 60 % to 3.3 %."
+    assert view.changes[0].words in best
+    assert besides.startswith("Nobody asks for the shares")
+
+    def third(loss: float, exposure: float, refresh: int | None) -> str:
+        return advice(
+            replace(GATE, attest_every=90, refresh_every=refresh), 10, Odds(loss, exposure, 0.02, 1), None, None
+        )[2]
+
+    assert third(0.1, 0.2, None).startswith("There is no refresh")
+    assert "2 % (1 in 50)" in third(0.2, 0.1, None)
+    assert third(0.2, 0.1, None) == third(0.1, 0.2, 365)
+
+
+def test_words_for_the_ends() -> None:
+    now = Odds(0.01, 0.2, 0.0, 9.0)
+    assert "exposure is the greater danger." in advice(GATE, 10, now, (), None)[0]
+    assert "as great as the other" in advice(GATE, 10, replace(now, loss=0.11), (), None)[0]
+    worse = Change("custodian", "to do harm", now, -0.1, 0.0)
+    assert advice(GATE, 10, now, (), (worse,))[1].startswith("No single change tried takes more off")
+    slight = Change("site", "to do next to nothing", replace(now, loss=0.00999), 0.00001, 0.0)
+    assert advice(GATE, 10, now, (), (slight,))[1].endswith("though by little.")
+    safe = Model(Rule(1, ("north-pier",)), ())
+    assert outlook(safe, 10).advice[1] == "There is nothing to change that these odds would show."
+    with pytest.raises(ParameterError):
+        outlook(safe, 0)
+
+
+def test_the_largest_causes_are_two_at_most_and_none_is_small() -> None:
+    causes = [
+        Contribution("share", "", 0.3, 0.0, 0.0),
+        Contribution("site", "dry dock", 0.5, 0.02, 0.0),
+        Contribution("line", "board", 0.4, 0.001, 0.0),
+        Contribution("medium", "stick", 0.0, 0.0, 0.0),
+    ]
+    assert largest(tuple(causes), "loss") == ("the site dry dock", "the line of board")
+    assert largest(tuple(causes), "exposure") == ("the site dry dock",)
+    assert largest(tuple(causes), "absence") == largest((), "loss") == ()
+    assert cause_words(causes[3]) == "the medium stick"

@@ -1,0 +1,47 @@
+"""Odds in words: what is read back from them is what was meant, to the digits that are told."""
+
+from __future__ import annotations
+
+import math
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from shares.planning.numbers import chance, every, horizon, one_in, years
+
+
+def read(text: str) -> float:
+    return float(text.removesuffix(" %")) / 100 if text.endswith(" %") else float(text)
+
+
+@given(st.floats(-20, -0.01).map(lambda power: 10**power))
+def test_a_chance_is_told_to_the_digits_that_are_meant(p: float) -> None:
+    told = chance(p)
+    if p >= 0.995:
+        assert told == "above 99 %"
+    else:
+        assert math.isclose(read(told), p, rel_tol=0.05 if p >= 1e-4 else 0.34)
+        assert sum(c.isdigit() for c in told.split("e")[0].replace("0.", "").lstrip("0")) <= 2
+
+
+@given(st.floats(1e-5, 1 / 3))
+def test_one_in_so_many(p: float) -> None:
+    assert math.isclose(float(one_in(p).removeprefix("1 in ").replace(",", "")), 1 / p, rel_tol=0.05)
+
+
+def test_the_ends() -> None:
+    assert (chance(0.0), chance(1.0), chance(0.994), chance(5e-324)) == ("none", "above 99 %", "99 %", "5e-324")
+    assert one_in(0.34) == one_in(9e-6) == one_in(1.0) == one_in(0.0) == ""
+    assert (years(math.inf), years(1e6), years(1.0), years(0.0)) == ("never", "1,000,000 years", "1 years", "0 days")
+
+
+@pytest.mark.parametrize(
+    ("days", "words"), [(364, "every 364 days"), (3650, "every 10 years"), (1825, "every 5 years")]
+)
+def test_intervals(days: int, words: str) -> None:
+    assert every(days) == words
+
+
+def test_horizons() -> None:
+    assert (horizon(1000.0), horizon(0.25), horizon(1.0)) == ("1,000 years", "0.25 years", "1 year")
