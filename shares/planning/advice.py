@@ -108,7 +108,7 @@ def largest(causes: tuple[Contribution, ...], of: str) -> tuple[str, ...]:
     """
     parts = {cause_words(cause): float(getattr(cause, of)) for cause in causes}
     most = max(parts.values(), default=0.0)
-    ranked = sorted(parts, key=lambda words: -parts[words])[:2]
+    ranked = sorted(parts, key=lambda words: -_told(parts[words]))[:2]
     return tuple(words for words in ranked if parts[words] > 0 and parts[words] >= most / 10)
 
 
@@ -209,7 +209,12 @@ def _tried(
         after = odds(changed, years)
         if after is not None:
             found.append(Change(kind, words, after, now.loss - after.loss, now.exposure - after.exposure))
-    return tuple(sorted(found, key=lambda change: -change.gain))
+    return tuple(sorted(found, key=lambda change: -_told(change.gain)))
+
+
+def _told(number: float) -> float:
+    """Round off the noise of the arithmetic, so that what is alike stays in its order on every machine."""
+    return float(f"{number:.8e}")
 
 
 def _single(model: Model) -> Iterator[tuple[str, str, Model]]:

@@ -62,7 +62,7 @@ def test_changes_of_a_plain_rule_have_the_odds_that_arithmetic_gives() -> None:
 @pytest.mark.parametrize("model", [TIDE, GATE, alike(2, 4)], ids=["tide archive", "tide gate", "alike"])
 def test_changes_are_sorted_and_no_custodian_is_forgotten(model: Model) -> None:
     found = changes_of(model)
-    gains = [change.gain for change in found]
+    gains = [float(f"{change.gain:.8e}") for change in found]
     assert gains == sorted(gains, reverse=True)
     now = odds(model, 10)
     assert now is not None

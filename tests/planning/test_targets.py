@@ -187,25 +187,9 @@ def test_targets_as_people_write_them(text: str, targets: tuple[float, float]) -
 @pytest.mark.parametrize(
     "text",
     [
-        "loss",
-        "loss=",
-        "loss=x",
-        "loss=0",
-        "loss=1",
-        "loss=100%",
-        "loss=-0.1",
-        "loss=1e6",
-        "loss=nan",
-        "loss=0.1,loss=0.1",
-        "absence=0.1",
-        "loss=0.1;exposure=0.1",
-        "",
-        ",",
-        "loss=0.1,",
-        "loss=1e-400",
-        "loss=0.0%",
-        "loss=0.1/y",
-        "Loss=0.1",
+        *("loss", "loss=", "loss=x", "loss=0", "loss=1", "loss=100%", "loss=-0.1", "loss=1e6", "loss=nan", "", ","),
+        *("loss=0.1,loss=0.1", "absence=0.1", "loss=0.1;exposure=0.1", "loss=0.1,", "loss=1e-400", "loss=0.0%"),
+        *("loss=0.1/y", "Loss=0.1"),
     ],
 )
 def test_targets_that_are_none(text: str) -> None:
