@@ -172,13 +172,14 @@ def ends(clocks: Clocks, lot: Lot, every: int | None, delay: int, days: int, his
         ended[running[now]] = end[now] < np.inf
         lived[running[now]] = start[now] + end[now]
         running, start = running[~now], start[~now] + whole
-    return Ends(
-        within=int(np.count_nonzero(ended & (lived <= days))),
-        ended=int(np.count_nonzero(ended)),
-        lived=float(lived.sum()),
-        squared=float(np.square(lived).sum()),
-        of_ended=float(lived[ended].sum()),
-    )
+    with np.errstate(over="ignore"):
+        return Ends(
+            within=int(np.count_nonzero(ended & (lived <= days))),
+            ended=int(np.count_nonzero(ended)),
+            lived=float(lived.sum()),
+            squared=float(np.square(lived).sum()),
+            of_ended=float(lived[ended].sum()),
+        )
 
 
 def away(clocks: Clocks, lot: Lot, every: int | None, delay: int, days: int, histories: int) -> int:
