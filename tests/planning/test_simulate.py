@@ -37,17 +37,17 @@ def alike(need: int, total: int, *, loss: float = 0.0, leak: float = 0.0, absent
 
 
 def any_model(seed: int) -> Model:
-    """A model of 1 to 9 custodians who stand in one to three branches, with causes that overlap."""
+    """A model of up to 9 custodians who stand in one to three branches, with causes that overlap."""
     lot = random.Random(seed)
-    names = [f"pier {i}" for i in range(lot.randint(1, 9))]
+    names = [f"pier {i}" for i in range(lot.randint(3, 9))]
 
     def node(depth: int) -> Rule:
-        below = [
-            node(depth - 1) if depth and lot.random() < 0.4 else lot.choice(names) for _ in range(lot.randint(1, 5))
+        below = lot.sample(names, lot.randint(2, len(names))) + [
+            node(depth - 1) for _ in range(depth * lot.randint(0, 2))
         ]
-        return Rule(lot.randint(1, len(below)), tuple(below))
+        return Rule(lot.randint(1, len(below) - 1), tuple(below))
 
-    rate = lambda most: lot.choice([0.0, most * lot.random()])  # noqa: E731
+    rate = lambda most: most * lot.random() * (lot.random() < 0.8)  # noqa: E731
     causes = [
         *(Cause("share", name, frozenset({name}), rate(0.3), 0.0, 0.0) for name in names),
         *(Cause("person", name, frozenset({name}), rate(0.1), rate(0.2), rate(0.4)) for name in names),
@@ -229,6 +229,26 @@ def test_a_mean_life_is_that_of_lives_longer_than_the_years_looked_at() -> None:
     model = replace(alike(3, 5, loss=0.05), attest_every=90, repair_after=14)
     for years in (1, 10, 100):
         assert_agree(simulate(model, years, histories=100_000, seed=3), model, years)
+
+
+def test_the_interval_of_a_mean_life() -> None:
+    """One custodian whom nobody asks lives for an exponential time: its deviation is its mean."""
+    found = simulate(alike(1, 1, loss=0.05), 10, histories=10_000, seed=1).years_to_loss
+    assert found is not None
+    assert found.seen == 10_000
+    assert math.isclose(math.log(found.high / found.value), 1.96 / 100, rel_tol=0.05)
+    # Rare losses among many rounds come as independent events do: the deviation is that of their number.
+    model = replace(alike(3, 5, loss=0.05), attest_every=365)
+    found = simulate(model, 10, histories=20_000, seed=1).years_to_loss
+    assert found is not None
+    assert math.isclose(math.log(found.high / found.value), 1.96 / math.sqrt(found.seen), rel_tol=0.05)
+
+
+def test_exposure_has_nothing_to_do_with_attestation() -> None:
+    model = replace(alike(3, 5, loss=0.1, leak=0.1), attest_every=90, refresh_every=365)
+    found = simulate(model, 10, histories=10_000, seed=1)
+    for other in (replace(model, repair_after=300), replace(model, attest_every=None)):
+        assert simulate(other, 10, histories=10_000, seed=1).exposure == found.exposure
 
 
 # Seeds, batches, refusals.
