@@ -21,6 +21,7 @@ Does not: print, exit or log. ``shares.cli`` turns an error into one line, in on
       StorageError        (also OSError)             5  file or I/O
       CommandFailedError                             7  the command that was fed failed
       KernelUnavailableError (also RuntimeError)     1  the demanded kernel cannot be loaded
+      ExtraMissingError                              1  an extra is not installed: says which
 
 Exit code 6 (an audit found something due) is a result, not an error.
 """
@@ -155,3 +156,9 @@ class KernelUnavailableError(SharesError, RuntimeError):
     """The kernel that ``SHARES_KERNEL`` demands cannot be loaded."""
 
     code = "kernel-unavailable"
+
+
+class ExtraMissingError(SharesError):
+    """What was asked for takes an extra that is not installed; the message says which."""
+
+    code = "extra-missing"
