@@ -186,6 +186,7 @@ def events(key: Json, work: Json) -> list[Json]:
         {"what": "task-asked", **about, "parties": names, "content": content, "form": None, "remark": "by boat"},
         {"what": "approved", **about, "custodian": "north-pier", "content": content, "summary": "a letter, 72 bytes"},
         {"what": "task-finished", **about, "result": None, "remark": None},
+        {"what": "task-failed", **about, "by": "south-pier", "reason": "the partial result of south-pier is wrong"},
     ]
 
 
