@@ -11,6 +11,7 @@ from __future__ import annotations
 
 import functools
 import hashlib
+import shlex
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from datetime import timedelta
@@ -21,7 +22,7 @@ import click
 from shares import clock
 from shares.cli.intervals import interval, later
 from shares.cli.keys import opening, signers
-from shares.cli.output import filled, json_option, print_result, prose
+from shares.cli.output import filled, json_option, print_result, prose, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
 from shares.documents.base import MAX_FILE
@@ -38,8 +39,14 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 
 NEXT = (
     "Next: carry the folder {path} to each of them, or send copies and bring the messages together in its folder "
-    "messages; each runs `shares task next {path} --mine FOLDER --key KEY`, until `shares task show {path}` says that "
-    "all have spoken. Then `shares key finish`."
+    "messages; each runs `shares task next {path} --mine KEYDIR --key KEY`, until `shares task show {path}` says that "
+    "all have spoken. Then:"
+)
+FINISH = "  shares key finish {folder} {path} --to FILE --sign {signer}"
+LONG = timedelta(days=90)
+KEEPS = (
+    "until {due} or the task's end each of them keeps what they need for it, sealed, in their folder. A shorter --due "
+    "leaves that about for less long."
 )
 
 
@@ -167,11 +174,30 @@ def ask_to_sign(
         )
         with held_signals():
             ask(folder, task, asked.path, content, author, issuer=issuer)
-            print_asked(task, asked.path, words, as_json=asked.as_json)
+            print_asked(task, asked.path, words, as_json=asked.as_json, then=finish_line(folder, asked))
 
 
-def print_asked(task: Task, path: str, words: Sequence[str], *, as_json: bool, after: str = NEXT) -> None:
-    """Print what was asked, and what comes next."""
+def finish_line(folder: KeyFolder, asked: Asked) -> str:
+    """Return the command that will put together what comes of a task, to be pasted."""
+    words = {"folder": folder.where, "path": asked.path, "signer": asked.signer_file}
+    return FINISH.format(**{name: shlex.quote(word) for name, word in words.items()})
+
+
+def print_asked(
+    task: Task, path: str, words: Sequence[str], *, as_json: bool, after: str = NEXT, then: str | None = None
+) -> None:
+    """Print what was asked, and what comes next.
+
+    Args:
+        task: as it was asked for.
+        path: its folder.
+        words: about its content, for whoever asked.
+        as_json: whether a program reads it.
+        after: what comes next; ``{path}`` in it is the folder.
+        then: a command for the end, on a line of its own.
+    """
+    if task.due - task.created > LONG and not as_json:
+        warn(KEEPS.format(due=clock.to_text(task.due)))
     members = {
         "done": True,
         "task": path,
@@ -185,7 +211,8 @@ def print_asked(task: Task, path: str, words: Sequence[str], *, as_json: bool, a
         *prose(f"Asked: {task.words()}."),
         *words,
         f"Fingerprint of the task, to read aloud: {task.fingerprint}",
-        *prose(after.format(path=path)),
+        *prose(after.format(path=shlex.quote(path))),
+        *([then] if then else []),
     ]
     print_result(members, lines, as_json=as_json)
 

@@ -116,10 +116,12 @@ def finished(task: Task, data: bytes) -> TaskFinished:
     return TaskFinished(what="task-finished", task=task.digest(), work="sign", result=result)
 
 
-def enter_once(folder: KeyFolder, event: KeyEvent, key: OpenPartyKey) -> None:
-    """Add an entry to the journal, unless it says so already."""
-    if event not in [entry.event for entry in folder.journal().entries]:
-        folder.append(event, keys=(key,))
+def enter_once(folder: KeyFolder, event: KeyEvent, key: OpenPartyKey) -> bool:
+    """Add an entry to the journal, unless it says so already; return whether it was added."""
+    if event in [entry.event for entry in folder.journal().entries]:
+        return False
+    folder.append(event, keys=(key,))
+    return True
 
 
 def _receiving(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey) -> tuple[Course, OpeningPart, OwnSteps]:
