@@ -7,13 +7,15 @@ uses ``cryptography`` alone.
 from __future__ import annotations
 
 import hashlib
+import os
+import re
 import subprocess
 import sys
 from collections.abc import Sequence
 from pathlib import Path
 
 import pytest
-from cli.harness import Result, assert_refused, files_in, run
+from cli.harness import PROGRAM, Result, assert_refused, files_in, run
 from cli.keyed import OFFICE, Keyed
 from cli.test_key import tool
 from parties import unlocked
@@ -69,6 +71,10 @@ class TestSigning:
         keyed.answer(task, FIRST, SECOND)
         signature = keyed.finish(task, "sig")
         assert len(signature.read_bytes()) == 64
+        again = run(*finish(keyed, task, "--to", keyed.path("sig-2"), "--json")).json
+        assert (again["again"], again["signers"]) == (True, [FIRST, SECOND])
+        assert again["sha256"] == hashlib.sha256(keyed.path("sig-2").read_bytes()).hexdigest()
+        assert keyed.path("sig-2").read_bytes() == signature.read_bytes()
         verify = ["openssl", "pkeyutl", "-verify", "-pubin", "-inkey", keyed.path("k.pem"), "-rawin"]
         assert "Success" in tool(*verify, "-in", keyed.path("release.txt"), "-sigfile", signature)
         # The office's journal tells what was asked and what came of it, the signers' what they agreed to.
@@ -85,8 +91,11 @@ class TestSigning:
         task = Task.parse((keyed.path("t") / "task.json").read_bytes())
         assert task.fingerprint in by_hand.out
         assert (task.remark, (task.due - task.created).days) == ("release day", 2)
+        assert f"shares key finish {keyed.key} {keyed.path('t')} --to FILE --sign " in by_hand.out
+        assert by_hand.err == ""
         told = run(*sign_arguments(keyed, "--json", *keyed.as_(OFFICE), task="u")).json
         assert (told["work"], told["parties"], told["done"]) == ("sign", [FIRST, SECOND], True)
+        assert told["exit"] == 0
         assert (keyed.path("u") / "content").read_bytes() == keyed.path("release.txt").read_bytes()
 
     @pytest.mark.parametrize(
@@ -114,6 +123,11 @@ class TestSigning:
     )
     def test_what_no_task_can_say_is_refused(self, keyed: Keyed, more: list[str], words: str) -> None:
         assert_refused(sign_arguments(keyed, *more, *keyed.as_(OFFICE)), 2, words, watched=keyed.folder)
+
+    def test_a_task_that_lies_about_for_long_is_cautioned_of(self, keyed: Keyed) -> None:
+        done = run(*sign_arguments(keyed, "--due", "1y", *keyed.as_(OFFICE)))
+        assert done.code == 0
+        assert "Caution: until " in done.err
 
     def test_a_folder_is_for_one_task(self, keyed: Keyed) -> None:
         keyed.ask("sign", keyed.path("release.txt"), task="t")
@@ -226,6 +240,25 @@ class TestCommitments:
 
 
 class TestForms:
+    def test_the_commands_to_verify_by_can_be_pasted(self, keyed: Keyed) -> None:
+        """As printed, but for the names in capitals; in a folder with a space, which is quoted."""
+        spaced = keyed.copy(keyed.folder.parent / "harbour 2")
+        for more, word, capitals in (
+            ([], "Success", {"PEM": "p"}),
+            (["--openssh", "tide'tables"], "Good", {"PUB": "q", "ALLOWED": "r"}),
+        ):
+            task = spaced.ask("sign", spaced.path("release.txt"), task=f"t{word}", more=more)
+            spaced.answer(task, FIRST, SECOND)
+            done = run(*finish(spaced, task, "--to", spaced.path(f"sig-{word}")))
+            script = "\n".join(line for line in done.out.splitlines() if line.startswith("  "))
+            for capital, name in capitals.items():
+                script = re.sub(rf"\b{capital}\b", name, script)
+            path = {"PATH": f"{PROGRAM.parent}:{os.environ['PATH']}"}
+            told = subprocess.run(
+                ["sh", "-e"], input=script, cwd=spaced.folder, env=path, capture_output=True, text=True
+            )
+            assert (told.returncode, word in told.stdout) == (0, True), told.stderr
+
     def test_ssh_keygen_verifies(self, keyed: Keyed) -> None:
         release, ssh = keyed.path("release.txt"), keyed.path("k.pub")
         task = keyed.ask("sign", release, task="t", more=["--openssh", "file"])
@@ -353,6 +386,18 @@ class TestOpening:
             assert keyed.next(keyed.path("t"), name).code == 0
         done = run("key", "finish", own, keyed.path("t"), "--to", keyed.path("o"), *keyed.as_(FIRST))
         assert (done.code, keyed.path("o").read_bytes()) == (0, CONTENT)
+
+    def test_what_is_asked_lies_in_the_askers_own_folder(self, keyed: Keyed) -> None:
+        """A custodian's steps in the office's folder, or another's, would cry wolf at the custodian's own ones."""
+        message = sent(keyed)
+        for folder, who, words in (
+            (keyed.key, FIRST, "holds no key share"),
+            (keyed.own(SECOND), FIRST, f"is the folder of {SECOND}"),
+            (keyed.own(SECOND), OFFICE, f"is the folder of {SECOND}"),
+        ):
+            ask = ["key", "open", folder, message, "--task", keyed.path("t"), f"--custodian={SECOND}"]
+            ask += [f"--custodian={THIRD}", *keyed.as_(who)]
+            assert_refused(ask, 2, words, "your own folder", watched=keyed.folder)
 
     def test_nobody_else_reads_the_answers(self, keyed: Keyed) -> None:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
