@@ -196,7 +196,7 @@ class Task(Document):
 
     def digest(self) -> bytes:
         """Return what every message of the task names: 32 bytes over all of it, its signature included."""
-        return sha256(b"shares/v1/task", canonical(self.model_dump(mode="json")))
+        return sha256(b"shares/v1/task-digest", canonical(self.model_dump(mode="json")))
 
     @property
     def fingerprint(self) -> str:

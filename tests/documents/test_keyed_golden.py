@@ -96,7 +96,7 @@ def test_the_key_share_is_of_the_record(drawn) -> None:
 
 
 def test_the_messages_are_of_the_task(drawn) -> None:
-    assert TASK.digest() == drawn[0].digest("task", drawn[0].task(drawn[0].record(), drawn[0].message_to_key()))
+    assert TASK.digest() == drawn[0].digest("task-digest", drawn[0].task(drawn[0].record(), drawn[0].message_to_key()))
     for message, round in ((FIRST, 0), (SECOND, 1)):
         party = TASK.party(message.sender)
         assert party is not None

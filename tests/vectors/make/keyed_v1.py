@@ -121,21 +121,27 @@ def digest(kind: str, document: Json) -> bytes:
 
 
 def message(work: Json, round: int, sender: str, seen: bytes, body: Json, sealed: list[Json]) -> Json:
-    made: Json = {"kind": "task-message", "version": 1, "task": digest("task", work).hex(), "round": round}
+    made: Json = {"kind": "task-message", "version": 1, "task": digest("task-digest", work).hex(), "round": round}
     made |= {"sender": sender, "seen": seen.hex(), "body": body, "sealed": sealed}
     made |= {"created": f"2026-03-0{round + 3}T09:00:00Z"}
     return {**made, "signature": sign(sender, "task-message", made)}
 
 
 def seen(work: Json, *before: Json) -> bytes:
-    digests = [digest("task", work), *(digest("task-message", one) for one in before)]
+    digests = [digest("task-digest", work), *(digest("task-message", one) for one in before)]
     return hashlib.sha256(b"shares/v1/task-seen" + b"".join(digests)).digest()
 
 
 def box(work: Json, round: int, sender: str, to: str, content: bytes) -> str:
     """Seal for a fresh key, single shot, by RFC 9180."""
     info = b"shares/v1/task-box" + canonical(
-        {"task": digest("task", work).hex(), **some(work, "key", "epoch"), "round": round, "from": sender, "to": to}
+        {
+            "task": digest("task-digest", work).hex(),
+            **some(work, "key", "epoch"),
+            "round": round,
+            "from": sender,
+            "to": to,
+        }
     )
     ephemeral = X25519PrivateKey.from_private_bytes(seed("box/ephemeral"))
     public, recipient = ephemeral.public_key().public_bytes_raw(), fresh_key(to).public_key().public_bytes_raw()
@@ -176,7 +182,7 @@ def nonces(key: Json) -> dict[str, Json]:
 
 def events(key: Json, work: Json) -> list[Json]:
     """Give one event of each kind in a key's life."""
-    about = {"task": digest("task", work).hex(), "work": "open"}
+    about = {"task": digest("task-digest", work).hex(), "work": "open"}
     content = work["work"]["content"]
     born = {"what": "key-born", **some(key, "key", "epoch", "origin"), "record": key["fingerprint"], "remark": None}
     names = [one["name"] for one in work["parties"]]
@@ -200,7 +206,7 @@ def files() -> dict[str, str]:
     boxed = [{"to": RECEIVER, "box": box(work, 1, "north-pier", RECEIVER, draw("keyed/partial", 96))}]
     second = message(work, 1, "north-pier", seen(work, first), {"what": "partial"}, boxed)
     opened: Json = {"kind": "opened-message", "version": 1, "key": KEY, "encapsulated": b64(content[:32])}
-    opened |= {"content": work["work"]["content"], "task": digest("task", work).hex(), "receiver": RECEIVER}
+    opened |= {"content": work["work"]["content"], "task": digest("task-digest", work).hex(), "receiver": RECEIVER}
     done: Json = {"kind": "task-done", "version": 1, "task": second["task"], "party": "north-pier"}
     state = private = seed(f"{RECEIVER}/fresh")
     made = {
