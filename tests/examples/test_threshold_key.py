@@ -41,7 +41,9 @@ def test_it_says_what_was_to_be_shown(told: tuple[Path, str]) -> None:
         "Five custodians have generated a key, and no machine has ever held it:",
         "Each has checked their own key share; the records are the same: True",
         "openssl: Signature Verified Successfully",
+        'ssh-keygen: Good "release" signature for the-quorum',
         "below.pem: OK",
+        "certificate revoked",
         "the same as was sent: True",
     ):
         assert words in out
