@@ -10,7 +10,6 @@ Does not: answer a task; ``shares task next`` does, on each custodian's machine.
 from __future__ import annotations
 
 import functools
-import hashlib
 import shlex
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
@@ -32,7 +31,7 @@ from shares.documents.nonce_batch import NonceBatch
 from shares.documents.task import Task
 from shares.keys.asking import ask, check_free, check_signers, new_signing, unused
 from shares.keys.folder import KeyFolder
-from shares.keys.ssh_signature import to_be_signed
+from shares.keys.forms import Signable
 from shares.storage import read_file
 
 Function = TypeVar("Function", bound=Callable[..., Any])
@@ -134,27 +133,16 @@ asked_custodian_option = click.option(
 )
 
 
-def ask_to_sign(
-    folder: KeyFolder,
-    content: bytes,
-    asked: Asked,
-    *,
-    form: Form,
-    namespace: str | None = None,
-    issuer: bytes | None = None,
-    words: Sequence[str] = (),
-) -> None:
+def ask_to_sign(folder: KeyFolder, wanted: Signable, asked: Asked, *, words: Sequence[str] = ()) -> None:
     """Ask for a signature as the options say, and print what was asked.
 
     Args:
         folder: the key's.
-        content: what is to be signed.
+        wanted: what is to be signed.
         asked: the options.
-        form: what becomes of it.
-        namespace: of an OpenSSH signature.
-        issuer: the certificate above the one that is asked for.
         words: about the content, for whoever asks.
     """
+    wanted.message(folder.record.public_key.encode())  # What it refuses nobody is asked for.
     check_signers(folder.record, asked.names)
     check_free(asked.path)
     batches = [NonceBatch.parse(read_file(path, limit=MAX_FILE), where=path) for path in asked.batches]
@@ -162,18 +150,20 @@ def ask_to_sign(
     with opening((), asked.passphrase_files, asked.descriptors) as at_hand:
         author = signers((asked.signer_file,), at_hand)[0]
         task = new_signing(
-            content,
+            wanted.content,
             folder.record,
             signers=asked.names,
             author=author,
             due=later(clock.now(), asked.due),
-            form=form,
-            namespace=namespace,
+            form=wanted.form,
+            namespace=wanted.namespace,
+            issuer=wanted.issuer,
+            earlier=wanted.earlier,
             commitments=commitments,
             remark=asked.remark,
         )
         with held_signals():
-            ask(folder, task, asked.path, content, author, issuer=issuer)
+            ask(folder, task, asked.path, wanted.content, author, issuer=wanted.issuer, earlier=wanted.earlier)
             print_asked(task, asked.path, words, as_json=asked.as_json, then=finish_line(folder, asked))
 
 
@@ -240,7 +230,4 @@ def sign_command(folder: str, content: str, namespace: str | None, asked: Asked)
         --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     form: Form = "plain" if namespace is None else "openssh"
-    data = read_file(content, limit=MAX_CONTENT)
-    if namespace is not None:
-        to_be_signed(hashlib.sha512(data).digest(), namespace)  # What it refuses nobody is asked for.
-    ask_to_sign(KeyFolder(folder), data, asked, form=form, namespace=namespace)
+    ask_to_sign(KeyFolder(folder), Signable(read_file(content, limit=MAX_CONTENT), form, namespace), asked)

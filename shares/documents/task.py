@@ -67,6 +67,8 @@ class Signing(Document):
         form: what becomes of it: a signature over the content as it is, a detached OpenSSH signature, or a certificate
             or revocation list whose bytes to be signed the content is.
         namespace: of an OpenSSH signature, what it is for; None for other forms.
+        issuer: the certificate under which a certificate or list is to stand; None for a root, and for other forms.
+        earlier: the list that a revocation list continues; None where it is the first, and for other forms.
         commitments: of every signer, where they were made beforehand; else none, and a first round makes them.
     """
 
@@ -74,7 +76,22 @@ class Signing(Document):
     form: Form
     namespace: Text | None
     content: Content
+    issuer: Content | None
+    earlier: Content | None
     commitments: Annotated[tuple[NonceCommitments, ...], Member(max_length=MAX_HOLDERS)]
+
+    @model_validator(mode="after")
+    def _has_what_its_form_is_checked_by(self) -> Self:
+        problem = None
+        if self.form == "revocation-list" and self.issuer is None:
+            problem = "a revocation list is checked by its issuer's certificate, and it names none"
+        elif self.issuer is not None and self.form not in ("certificate", "revocation-list"):
+            problem = "a certificate or revocation list, and nothing else, has an issuer"
+        elif self.earlier is not None and self.form != "revocation-list":
+            problem = "a revocation list, and nothing else, continues an earlier one"
+        if problem:
+            raise PydanticCustomError("shares_task", "{reason}", {"reason": problem})
+        return self
 
 
 class Opening(Document):

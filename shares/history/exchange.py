@@ -21,13 +21,15 @@ from shares import clock
 from shares.documents.base import MAX_FILE
 from shares.documents.key_event import MAX_CONTENT, Content
 from shares.documents.key_record import KeyRecord
-from shares.documents.task import Joining, Task
+from shares.documents.task import Joining, Signing, Task
 from shares.documents.task_message import MAX_ROUNDS, TaskMessage
 from shares.errors import ParameterError, SharesError, StorageError, VerificationError
 from shares.history.rounds import Inbox
 from shares.storage import StrPath, leftovers, make_folder, read_file, write_new
 
-TASK_NAME, RECORD_NAME, CONTENT_NAME, MESSAGES_NAME = "task.json", "record.json", "content", "messages"
+TASK_NAME, RECORD_NAME, MESSAGES_NAME = "task.json", "record.json", "messages"
+CONTENT_NAME, ISSUER_NAME, EARLIER_NAME = "content", "issuer", "earlier"
+"""The files beside a task that it names by size and digest: what it is about, and what that is checked by."""
 MAX_MESSAGE = 1 << 18
 """The largest file of a message, in bytes: 256 KiB. The largest that anybody has to say is about half of that."""
 MAX_MESSAGES = 2_048
@@ -105,7 +107,14 @@ class TaskFolder:
 
     @classmethod
     def create(
-        cls, path: StrPath, task: Task, *, content: bytes | None = None, record: KeyRecord | None = None
+        cls,
+        path: StrPath,
+        task: Task,
+        *,
+        content: bytes | None = None,
+        issuer: bytes | None = None,
+        earlier: bytes | None = None,
+        record: KeyRecord | None = None,
     ) -> TaskFolder:
         """Make the folder of a new task; ``task.json`` is written last, and with it the task is there.
 
@@ -113,21 +122,25 @@ class TaskFolder:
             path: a new folder, or one that holds no task yet.
             task: what is to be done.
             content: what is signed or opened, exactly as the task names it; None for a key that is being born.
-            record: of the key that is used; None likewise.
+            issuer: the certificate that the task names as issuer; None where it names none.
+            earlier: the revocation list that it names as the earlier one, likewise.
+            record: of the key that is used; None for a key that is being born.
 
         Raises:
-            ParameterError: content or record are not what the task names.
+            ParameterError: one of them is not what the task names.
             StorageError: a name is taken, or the medium refuses.
         """
         if (record is None) != (task.record is None) or (record is not None and not _is_named(record, task)):
             raise ParameterError("the record is not the one that the task names")
+        beside: dict[str, bytes | None] = {CONTENT_NAME: content, ISSUER_NAME: issuer, EARLIER_NAME: earlier}
         wanted = _wanted(task)
-        if (content is None) != (wanted is None) or (content is not None and _of(content) != wanted):
-            raise ParameterError("the content is not the one that the task names")
+        for name, data in beside.items():
+            if (None if data is None else _of(data)) != wanted[name]:
+                raise ParameterError(f"the file {name} is not the one that the task names")
         folder = Path(path)
         make_folder(folder / MESSAGES_NAME)
         files = (
-            (CONTENT_NAME, content),
+            *beside.items(),
             (RECORD_NAME, None if record is None else record.to_file()),
             (TASK_NAME, task.to_file()),
         )
@@ -137,21 +150,28 @@ class TaskFolder:
         return cls(folder)
 
     def content(self) -> bytes | None:
-        """Return what the task is about, exactly as it names it; None where there is nothing.
+        """Return what the task is about, exactly as it names it; see ``beside``."""
+        return self.beside(CONTENT_NAME)
+
+    def beside(self, name: str) -> bytes | None:
+        """Return a file beside the task, exactly as it names it; None where it names none.
+
+        Args:
+            name: ``CONTENT_NAME``, ``ISSUER_NAME`` or ``EARLIER_NAME``.
 
         Raises:
             StorageError: the file is missing or cannot be read.
             VerificationError: it is not the one that the task names.
         """
-        wanted = _wanted(self.task)
+        wanted = _wanted(self.task)[name]
         if wanted is None:
             return None
-        where = os.fspath(self.path / CONTENT_NAME)
+        where = os.fspath(self.path / name)
         found = read_file(where, limit=MAX_CONTENT)
         if _of(found) != wanted:
+            about = "what the task is about" if name == CONTENT_NAME else f"the {name} that the task names"
             raise VerificationError(
-                f"it is not what the task is about, which has {wanted.size:,} bytes and "
-                f"the SHA-256 {wanted.digest.hex()}",
+                f"it is not {about}, which has {wanted.size:,} bytes and the SHA-256 {wanted.digest.hex()}",
                 where=where,
                 hint="do nothing with this task; ask whoever made it for the whole folder",
             )
@@ -301,8 +321,14 @@ def _holds(path: Path, data: bytes) -> bool:
         return False
 
 
-def _wanted(task: Task) -> Content | None:
-    return None if isinstance(task.work, Joining) else task.work.content
+def _wanted(task: Task) -> dict[str, Content | None]:
+    work = task.work
+    signing = work if isinstance(work, Signing) else None
+    return {
+        CONTENT_NAME: None if isinstance(work, Joining) else work.content,
+        ISSUER_NAME: signing.issuer if signing else None,
+        EARLIER_NAME: signing.earlier if signing else None,
+    }
 
 
 def _of(content: bytes) -> Content:

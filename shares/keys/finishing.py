@@ -1,7 +1,7 @@
 """Put together what came of a task: a signature, for whoever asked; a message's content, for its receiver alone.
 
 Source: RFC 9591, sec. 5.3 (the coordinator aggregates, without a secret); FORMAT_KEYS.md, sec. 28 (openings).
-May import: shares.errors, shares.memory, shares.documents, shares.history, .asking, .folder, .opening, .signing.
+May import: shares.errors, shares.memory, shares.documents, shares.history, .folder, .opening, .signing.
 Secret: the plaintext of an opening, handed to whoever takes it; the receiver's party key, passed through. Public: the
 signature.
 Does not: write files but the journal; the caller does.
@@ -17,11 +17,10 @@ from shares.documents.key_event import KeyEvent, TaskFinished
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Task
 from shares.errors import NotEnoughSharesError, ParameterError, VerificationError
-from shares.history.exchange import TaskFolder
+from shares.history.exchange import EARLIER_NAME, ISSUER_NAME, TaskFolder
 from shares.history.next import Standing, close, opened, speak, standing, turn
 from shares.history.rounds import Course
 from shares.history.steps import OwnSteps
-from shares.keys.asking import issuer_of
 from shares.keys.folder import KeyFolder
 from shares.keys.opening import OpeningCourse, OpeningPart, combine
 from shares.keys.opening import outcome as end_of_opening
@@ -42,14 +41,15 @@ def signed(folder: KeyFolder, task: TaskFolder) -> bytes:
     Raises:
         NotEnoughSharesError: somebody has not spoken yet.
         VerificationError: the task has failed; who made it fail is named. Or it is about another key.
-        ParameterError: the certificate above the one that is made was not kept here.
+        StorageError: a file that the task names is missing.
     """
-    course = SigningCourse(task.task, folder.record)
+    issuer, earlier = task.beside(ISSUER_NAME), task.beside(EARLIER_NAME)
+    course = SigningCourse(task.task, folder.record, issuer=issuer, earlier=earlier)
     found = standing(course, task.read())
     _refuse_failed(found)
     if not found.complete:
         raise _awaited(found)
-    data, _ = finish_signing(task.task, folder.record, found.inbox, issuer=issuer_of(folder, task.task))
+    data, _ = finish_signing(task.task, folder.record, found.inbox, issuer=issuer, earlier=earlier)
     return data
 
 

@@ -1,7 +1,8 @@
 """Which course and which part belong to a task: one line for each purpose.
 
 Source: FORMAT_KEYS.md, sec. 23.
-May import: shares.errors, shares.storage, shares.documents, shares.history, .joint, .opening, .signing.
+May import: shares.errors, shares.storage, shares.documents, shares.history, .folder, .joint, .opening,
+.signing.
 Secret: the party key, passed through. Public: the task, the record.
 Does not: know what happens in any of them.
 """
@@ -17,14 +18,13 @@ from shares.documents.key_share import KeyShare
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Joining, Opening, Signing
 from shares.errors import ParameterError, StorageError
-from shares.history.exchange import TaskFolder
+from shares.history.exchange import EARLIER_NAME, ISSUER_NAME, TaskFolder
 from shares.history.rounds import Course, Part
+from shares.keys.folder import SHARE_NAME
 from shares.keys.joint import JointCourse, JointPart
 from shares.keys.opening import OpeningCourse, OpeningPart
 from shares.keys.signing import SigningCourse, SigningPart
 from shares.storage import read_file
-
-SHARE_NAME = "share.json"
 
 
 def course_of(folder: TaskFolder) -> Course:
@@ -34,14 +34,17 @@ def course_of(folder: TaskFolder) -> Course:
         folder: the task's.
 
     Raises:
-        VerificationError: the task contradicts the record of the key that it uses.
+        VerificationError: the task contradicts the record of the key that it uses, or a file that it names is another.
+        StorageError: such a file is missing.
     """
     task = folder.task
     match task.work:
         case Joining():
             return JointCourse(task)
         case Signing():
-            return SigningCourse(task, _record(folder))
+            return SigningCourse(
+                task, _record(folder), issuer=folder.beside(ISSUER_NAME), earlier=folder.beside(EARLIER_NAME)
+            )
         case Opening():
             return OpeningCourse(task, _record(folder))
 
@@ -70,7 +73,16 @@ def part_of(folder: TaskFolder, name: str, mine: Path, key: OpenPartyKey) -> Par
                 raise StorageError(
                     "there is no key share", where=os.fspath(mine / SHARE_NAME), hint="name your folder of this key"
                 )
-            return SigningPart(task, name, _record(folder), share, key, mine)
+            return SigningPart(
+                task,
+                name,
+                _record(folder),
+                share,
+                key,
+                mine,
+                issuer=folder.beside(ISSUER_NAME),
+                earlier=folder.beside(EARLIER_NAME),
+            )
         case Opening():
             return OpeningPart(task, name, _record(folder), _share(mine), key, mine)
 
