@@ -10,8 +10,8 @@ Does not: know what is said in a round; ``task_message`` does. What is signed or
 
 from __future__ import annotations
 
-from datetime import datetime
-from typing import Annotated, Any, ClassVar, Literal, Self, TypeAlias
+from datetime import datetime, timedelta
+from typing import Annotated, Any, ClassVar, Final, Literal, Self, TypeAlias
 
 from pydantic import Field as Member
 from pydantic import model_validator
@@ -38,6 +38,8 @@ from shares.documents.members import (
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.signing import is_signed
 
+_AHEAD: Final = timedelta(hours=1)
+_FAR: Final = timedelta(days=366)
 Cipher: TypeAlias = Literal["aes-256-gcm", "chacha20-poly1305"]
 
 
@@ -166,6 +168,8 @@ class Task(Document):
             return "it names one party twice"
         if len({one.card.ed25519 for one in self.parties}) != len(names):
             return "two of its parties have one party key"
+        if any(one.name != one.card.name for one in self.parties):
+            return "it gives a party another name than its card does"
         if self.due <= self.created:
             return "it is due before it was made"
         if (self.record is None) != isinstance(work, Joining):
@@ -224,10 +228,27 @@ class Task(Document):
         """Say whether a time lies after the one until which the task was to be done."""
         return time > self.due
 
+    def oddities(self, time: datetime) -> tuple[str, ...]:
+        """Return what is unusual about its times, each a sentence, for whoever is asked to take part.
+
+        Args:
+            time: now, UTC.
+        """
+        found = []
+        if self.created > time + _AHEAD:
+            found.append(
+                f"It says that it was made at {clock.to_text(self.created)}, which this clock has yet to reach."
+            )
+        if self.due > time + _FAR:
+            found.append(
+                f"It is due {clock.to_text(self.due)}, in more than a year: what you say can be used until then."
+            )
+        return tuple(found)
+
     def words(self) -> str:
-        """Say what is to be done, by whom and until when, in one line."""
+        """Say what is to be done, by whom and until when, in one line, however many spaces its label has."""
         work = {"join": "generate a key together", "sign": "sign", "open": "open a message"}[self.work.what]
-        return f"{', '.join(self.names)}: {work} ({self.label}), until {clock.to_text(self.due)}"
+        return f"{', '.join(self.names)}: {work} ({' '.join(self.label.split())}), until {clock.to_text(self.due)}"
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

@@ -34,6 +34,9 @@ MAX_MESSAGE = 1 << 18
 """The largest file of a message, in bytes: 256 KiB. The largest that anybody has to say is about half of that."""
 MAX_MESSAGES = 2_048
 """The most files of messages in a folder: three times what the most parties can have to say."""
+MAX_ALL, MAX_STRAY = 1 << 25, 64
+"""The most bytes of all of them, 32 MiB, twice what the most parties can have to say; and the most files that are no
+signed messages of the task. Each is read, and reading one of the largest takes a twentieth of a second."""
 
 ProblemKind: TypeAlias = Literal[
     "unreadable", "foreign", "stranger", "signature", "late", "conflict", "out-of-turn", "other-view", "content",
@@ -49,13 +52,16 @@ class Problem:
         kind: what sort of thing it is, for programs.
         what: in words, with the file's name where it is about one.
         sender: whose message it is; None where that cannot be told.
-        stops: whether the task cannot be finished with it. Else the file is left out, and nothing is lost by it.
+        stops: whether the task cannot be finished with it. Else the file is left out, and nothing is lost by it. Of a
+            folder that was only read: whether that may be.
+        round: in which it stops, or may.
     """
 
     kind: ProblemKind
     what: str
     sender: str | None = None
     stops: bool = False
+    round: int | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -181,7 +187,7 @@ class TaskFolder:
         """Read and judge everything that lies in the folder.
 
         Raises:
-            StorageError: the messages cannot be listed, or are too many.
+            StorageError: the messages cannot be listed, or are too many or too large; or too many files are none.
         """
         problems, content = [], None
         try:
@@ -193,6 +199,8 @@ class TaskFolder:
             judged = self._judge(path)
             if isinstance(judged, Problem):
                 problems.append(judged)
+                if len(problems) > MAX_STRAY:
+                    raise self._flooded(f"{MAX_STRAY} files that are no messages of this task")
             else:
                 signed.setdefault(judged.digest(), judged)
         by_place: dict[tuple[int, str], list[TaskMessage]] = {}
@@ -226,8 +234,12 @@ class TaskFolder:
         for number in itertools.count(1):
             path = folder / f"{message.round}-{message.sender}{'' if number == 1 else f'-{number}'}.json"
             if not os.path.lexists(path):
-                write_new(path, data, secret=False)
-                return path
+                try:
+                    write_new(path, data, secret=False)
+                except StorageError:
+                    # Another run of this party may have been faster with the same message.
+                    if not os.path.lexists(path):
+                        raise
             if _holds(path, data):
                 return path
         raise AssertionError  # pragma: no cover - the count does not end
@@ -238,8 +250,9 @@ class TaskFolder:
         try:
             _check_folder(folder)
             with os.scandir(folder) as entries:
-                possible = (one.name for one in entries if _may_be_message(one.name))
-                names = list(itertools.islice(possible, MAX_MESSAGES + 1))
+                possible = (one for one in entries if _may_be_message(one.name))
+                found = list(itertools.islice(possible, MAX_MESSAGES + 1))
+                sizes = [one.stat(follow_symlinks=False).st_size for one in found]
         except FileNotFoundError:
             return []
         except StorageError:
@@ -247,13 +260,18 @@ class TaskFolder:
         except OSError as error:
             reason = (error.strerror or type(error).__name__).lower()
             raise StorageError(reason, where=os.fspath(folder), hint="check its owner and mode") from error
-        if len(names) > MAX_MESSAGES:
-            raise StorageError(
-                f"holds more than {MAX_MESSAGES:,} files",
-                where=os.fspath(folder),
-                hint="no task has so many messages; take away what does not belong there",
-            )
-        return [folder / name for name in sorted(names)]
+        if len(found) > MAX_MESSAGES:
+            raise self._flooded(f"{MAX_MESSAGES:,} files")
+        if sum(min(size, MAX_MESSAGE) for size in sizes) > MAX_ALL:
+            raise self._flooded(f"{MAX_ALL >> 20} MiB")
+        return sorted(folder / one.name for one in found)
+
+    def _flooded(self, most: str) -> StorageError:
+        return StorageError(
+            f"holds more than {most}",
+            where=os.fspath(self.path / MESSAGES_NAME),
+            hint="no task has so many messages; take away what does not belong there",
+        )
 
     def _judge(self, path: Path) -> TaskMessage | Problem:
         """Read one file: a message for this task by one of its parties, or what is wrong with it."""
@@ -277,7 +295,7 @@ class TaskFolder:
             return None
         made, due = clock.to_text(message.created), clock.to_text(self.task.due)
         what = f"{message.sender}'s message of round {message.round} is late: made {made}, and the task was due {due}"
-        return Problem("late", what, message.sender, stops=True)
+        return Problem("late", what, message.sender, stops=True, round=message.round)
 
 
 def _check_folder(folder: Path) -> None:
@@ -302,7 +320,7 @@ def conflict_words(round: int, sender: str) -> str:
 
 
 def _conflict(round: int, sender: str) -> Problem:
-    return Problem("conflict", conflict_words(round, sender), sender, stops=True)
+    return Problem("conflict", conflict_words(round, sender), sender, stops=True, round=round)
 
 
 def _may_be_message(name: str) -> bool:

@@ -9,8 +9,10 @@ Does not: write files but the journal; the caller does.
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
-from collections.abc import Callable, Sequence
+import itertools
+from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 
 from shares.documents.key_event import KeyEvent, TaskFinished
@@ -18,15 +20,18 @@ from shares.documents.party import OpenPartyKey
 from shares.documents.task import Task
 from shares.errors import NotEnoughSharesError, ParameterError, VerificationError
 from shares.history.exchange import EARLIER_NAME, ISSUER_NAME, TaskFolder
-from shares.history.next import Standing, close, opened, speak, standing, turn
-from shares.history.rounds import Course
+from shares.history.next import close, opened, speak, turn
+from shares.history.rounds import Course, Inbox
+from shares.history.standing import Standing, standing
 from shares.history.steps import OwnSteps
 from shares.keys.folder import KeyFolder
-from shares.keys.opening import OpeningCourse, OpeningPart, combine
+from shares.keys.opening import PARTIAL_RESULTS, OpeningCourse, OpeningPart, combine
 from shares.keys.opening import outcome as end_of_opening
 from shares.keys.signing import SigningCourse, finish_signing
 from shares.memory import Secret
 
+_SEVERAL = 16
+"""How many partial results more of one custodian are looked at, where there are several."""
 Deliver = Callable[[Secret], None]
 """Takes the plaintext to where the receiver wants it: all of it, or it raises."""
 
@@ -99,15 +104,20 @@ def open_message(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey, deliver
         )
     if at.round == 0:
         raise _awaited(at.standing)
-    with opened(at.standing.inbox, course, own, key) as (_, received):
-        found = combine(task.task, folder.record, at.standing.inbox, received)
+    inbox = at.standing.inbox
+    with contextlib.ExitStack() as wiped:
+        received, *more = (
+            wiped.enter_context(opened(one, course, own, key))[1] for one in (inbox, *_besides(at.standing))
+        )
+        besides = [one[PARTIAL_RESULTS] for one in more]
+        found = combine(task.task, folder.record, inbox, received, besides=besides)
         with found.plaintext as plaintext:
             deliver(plaintext)
             end = end_of_opening(task.task, found)
     if isinstance(end.event, TaskFinished):
         enter_once(folder, end.event, key)
     close(own)
-    return end.words
+    return [*end.words, *(f"Left aside: {one.what}." for one in at.standing.problems if one.sender is not None)]
 
 
 def finished(task: Task, data: bytes) -> TaskFinished:
@@ -134,6 +144,13 @@ def _receiving(folder: KeyFolder, task: TaskFolder, key: OpenPartyKey) -> tuple[
     share = folder.share() if folder.holds_share else None
     part = OpeningPart(task.task, me.name, folder.record, share, key, folder.path)
     return course, part, OwnSteps(folder.path, task.task, key.card)
+
+
+def _besides(found: Standing) -> Iterator[Inbox]:
+    """Yield the messages as they are with what else those have said who have said several things."""
+    for several in itertools.islice(itertools.zip_longest(*(ones[1:] for ones in found.doubled.values())), _SEVERAL):
+        others = {one.sender: one for one in several if one is not None}
+        yield Inbox(found.inbox.task, (*found.before(PARTIAL_RESULTS).rounds, others), found.inbox.content)
 
 
 def _refuse_failed(found: Standing) -> None:

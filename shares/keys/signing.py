@@ -12,7 +12,7 @@ Does not: carry messages or write files: ``history`` and the caller do.
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from pathlib import Path
 from typing import Final
 
@@ -24,7 +24,7 @@ from shares.documents.key_share import KeyShare
 from shares.documents.members import MAX_TEXT
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Signing, Task
-from shares.documents.task_message import Commitment, SignatureShare
+from shares.documents.task_message import Commitment, SignatureShare, TaskMessage
 from shares.errors import ParameterError, SharesError, VerificationError
 from shares.group.edwards25519 import Point
 from shares.history.rounds import Failure, Inbox, Outcome, Received, Said
@@ -90,6 +90,18 @@ class SigningCourse:
         if signed is not None:
             return None
         return Failure(wrong[0] if wrong else None, _misbehaved(wrong))
+
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        """Say whether a share of the signature verifies (RFC 9591, sec. 5.4); of one signer, one number does."""
+        body, index = message.body, self.record.holder(message.sender).index
+        public = public_share(self.record.commitments, index)
+        return isinstance(body, SignatureShare) and frost.verify_signature_share(
+            index, public, body.share, self.agreed(inbox)
+        )
+
+    def spares(self, names: Collection[str]) -> bool:
+        """Say that everybody has to sign whom the task names."""
+        return not names
 
     @property
     def last(self) -> int:

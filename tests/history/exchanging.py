@@ -10,7 +10,7 @@ import dataclasses
 import hashlib
 import secrets
 import shutil
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -26,6 +26,7 @@ from shares.documents.task_message import Complaint, Review, TaskMessage
 from shares.history import next as engine
 from shares.history.exchange import TaskFolder
 from shares.history.rounds import Failure, Inbox, NewFile, Outcome, Received, Said
+from shares.history.standing import Standing, standing
 from shares.history.steps import OwnSteps
 from shares.memory import Secret
 
@@ -68,6 +69,12 @@ class Draw:
             if not isinstance(message.body, Review) or not message.body.complaints:
                 return Failure(name, "it shows no sum")
         return None
+
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        return isinstance(message.body, Review) and bool(message.body.complaints)
+
+    def spares(self, names: Collection[str]) -> bool:
+        return not names
 
 
 @dataclass
@@ -150,8 +157,8 @@ class Desk:
     def turn(self) -> engine.Turn:
         return engine.turn(TaskFolder(self.folder), self.course, self.own())
 
-    def standing(self) -> engine.Standing:
-        return engine.standing(self.course, TaskFolder(self.folder).read())
+    def standing(self) -> Standing:
+        return standing(self.course, TaskFolder(self.folder).read())
 
     def take(self, key: OpenPartyKey | None = None) -> str:
         """Do what is to be done now, once; return what it was."""

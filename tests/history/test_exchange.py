@@ -26,8 +26,8 @@ from shares.documents.task_message import OpeningKey, TaskMessage
 from shares.errors import DocumentError, ParameterError, StorageError, VerificationError
 from shares.group.edwards25519 import BASE, Scalar
 from shares.history.exchange import MAX_MESSAGE, MAX_MESSAGES, TaskFolder
-from shares.history.next import standing
 from shares.history.rounds import Inbox
+from shares.history.standing import standing
 
 
 def said(name: str, task: Task, *, by: str | None = None, **changes: Any) -> TaskMessage:

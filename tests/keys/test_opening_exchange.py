@@ -25,6 +25,7 @@ from shares.errors import (
 )
 from shares.history import next as engine
 from shares.history.exchange import TaskFolder
+from shares.history.standing import standing
 from shares.history.steps import OwnSteps
 from shares.keys.opening import Opened, OpeningCourse, OpeningPart, combine
 from shares.memory import Secret
@@ -55,7 +56,7 @@ class Desk:
         return at.doing
 
     def opened(self) -> Opened:
-        found = engine.standing(self.course, self.folder.read())
+        found = standing(self.course, self.folder.read())
         with unlocked(self.name) as key, engine.opened(found.inbox, self.course, self.own, key) as (_, received):
             return combine(self.task, self.record, found.inbox, received)
 
