@@ -272,7 +272,7 @@ def test_a_key_share_of_another_key_or_custodian_is_refused(tmp_path: Path) -> N
     for wrong in (other.shares[ME], key.shares[NAMES[1]]):
         with unlocked(ME) as own:
             signer = SigningPart(task, ME, key.record, wrong, own, tmp_path)
-            with pytest.raises(VerificationError, match="key share"):
+            with pytest.raises(SharesError, match="key share"):
                 signer.speak(0, Inbox(task, (), CONTENT), Secret(0), ())
     assert not list(tmp_path.iterdir())
 
