@@ -18,8 +18,9 @@ from shares.documents.key_share import KeyShare
 from shares.errors import ParameterError
 from shares.group.montgomery import public_of
 from shares.history.files import RECORD_NAME
-from shares.keys.checking import check_belongs, check_record, opened, public_key_in
+from shares.keys.checking import check_record, public_key_in
 from shares.keys.folder import SHARE_NAME, load_key_record
+from shares.keys.own_share import check_belongs, own_share
 from shares.keys.public_key import pem, sealing_pem, ssh_line
 from shares.storage import read_file, write_new
 
@@ -144,7 +145,7 @@ def verify(
         if share is None:
             raise ParameterError("there is no key share here that --key could open", where=source)
         with opening((key_file,), passphrase_files, descriptors) as at_hand:
-            opened(share, record, signers((key_file,), at_hand)[0].open)
+            own_share(share, record, share.custodian, signers((key_file,), at_hand)[0].open)
     proves = RECORD_ALONE if share is None else SHARE_CLOSED if key_file is None else SHARE_PROVES
     proves = proves.format(fingerprint=record.fingerprint, who=KNOWN if trusted_files else UNKNOWN)
     members = {

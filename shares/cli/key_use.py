@@ -32,11 +32,11 @@ from shares.documents.task import Cipher, Opening, Signing
 from shares.errors import ParameterError
 from shares.history.exchange import CONTENT_NAME, TaskFolder
 from shares.keys.asking import ask, check_free
-from shares.keys.checking import opened
 from shares.keys.finishing import begin_opening, enter_once, finished, open_message, signed
 from shares.keys.folder import KeyFolder
 from shares.keys.nonces import NonceStore
 from shares.keys.opening_task import new_opening
+from shares.keys.own_share import own_share
 from shares.keys.signing import NONCES
 from shares.memory import Secret
 from shares.storage import read_file, write_new
@@ -114,7 +114,7 @@ def commit_command(
     share = key_folder.share()
     with opening((), passphrase_files, descriptors) as at_hand:
         key = signers((key_file,), at_hand)[0]
-        value = opened(share, key_folder.record, key.open)
+        value = own_share(share, key_folder.record, share.custodian, key.open)
         store = NonceStore(key_folder.path / NONCES, key_folder.record, share.custodian, key)
         with held_signals():
             batch = store.batch(value, count)

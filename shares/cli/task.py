@@ -171,7 +171,7 @@ def drop(
         if not click.confirm("Give it up for good?", err=True):
             raise SharesError("you did not agree", hint="nothing was erased")
     with opening((), passphrase_files, descriptors) as at_hand:
-        give_up(own, at_hand.party(key))
+        give_up(own, at_hand.party(key), folder.record, found.failure)
     members = {"done": True, "exit": 0, "state": "dropped", **task_members(folder, found), "party": own.name}
     lines = [
         f"Given up by {own.name}: {folder.task.words()}.",

@@ -1,23 +1,24 @@
 """Give a task up for one party: what it has said stays, and what it kept to go on with is erased.
 
 Source: RFC 9591, sec. 5.1 (nonces are deleted); FORMAT_KEYS.md, sec. 25 and 29.
-May import: shares.documents, shares.history, shares.storage, .signing.
+May import: shares.documents, shares.history, .nonces, .signing.
 Secret: nothing is opened; sealed states and nonces are erased. The party key, passed through. Public: messages.
 Does not: tell the others, or erase media, which may keep old blocks.
 """
 
 from __future__ import annotations
 
-from shares.documents.event import Noted
+from shares.documents.key_event import TaskFailed
+from shares.documents.key_record import KeyRecord
 from shares.documents.members import MAX_TEXT
-from shares.documents.nonce_batch import pair_id
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Signing
 from shares.documents.task_message import Commitment, Confirmation
 from shares.history.next import drop
+from shares.history.rounds import Failure
 from shares.history.steps import OwnSteps
+from shares.keys.nonces import NonceStore
 from shares.keys.signing import NONCES
-from shares.storage import discard, empty
 
 
 def costs(own: OwnSteps) -> str | None:
@@ -38,34 +39,38 @@ def costs(own: OwnSteps) -> str | None:
     return None
 
 
-def give_up(own: OwnSteps, key: OpenPartyKey) -> None:
+def give_up(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None, failure: Failure | None) -> None:
     """End a task for a party, whatever has become of it. The journal tells of it first; it may be repeated.
 
-    Nonces that it would use are erased too, and their names stay: no later task can use them.
+    Nonces that it would use are erased too: no later task can use them.
 
     Args:
         own: the party's steps.
         key: its party key.
+        record: of the key that the task uses; None where it is being born.
+        failure: why the task has failed; None where it has not.
 
     Raises:
         ParameterError: it is over for this party already.
         StorageError: something cannot be written or erased.
         VerificationError: the steps are not this party's.
     """
-    task = own.task
-    noted = Noted(what="noted", remark=f"task {task.digest().hex()} was given up: {task.words()}"[:MAX_TEXT])
-    drop(own, noted, key, lambda: _erase_nonces(own))
+    event = TaskFailed(
+        what="task-failed",
+        task=own.task.digest(),
+        work=own.task.work.what,
+        by=failure.by if failure else None,
+        reason=(failure.what if failure else f"given up by {own.name}")[:MAX_TEXT],
+    )
+    drop(own, event, key, lambda: _erase_nonces(own, key, record))
 
 
-def _erase_nonces(own: OwnSteps) -> None:
-    if not isinstance(own.task.work, Signing):
+def _erase_nonces(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None) -> None:
+    if record is None or not isinstance(own.task.work, Signing):
         return
     pairs = [(one.hiding, one.binding) for one in own.task.work.commitments if one.signer == own.name]
     said = [one.body for one in own.messages().values()]
     pairs += [(body.hiding, body.binding) for body in said if isinstance(body, Commitment)]
-    folder = own.mine / NONCES
-    for name in (pair_id(*pair) for pair in pairs):
-        for spent in folder.glob(f"spent-{name}-*"):
-            empty(spent)
-        for path in folder.glob(f"pair-{name}.json"):
-            discard(path)
+    store = NonceStore(own.mine / NONCES, record, own.name, key)
+    for pair in pairs:
+        store.erase(*pair)

@@ -9,7 +9,7 @@
     opened/         for which encapsulated keys this custodian has served already
 
 Source: FORMAT_KEYS.md, sec. 21 and 22.
-May import: shares.errors, shares.storage, shares.documents, shares.history, .checking.
+May import: shares.errors, shares.storage, shares.documents, shares.history, .checking, .own_share.
 Secret: party keys that sign, passed through; the key share stays wrapped. Confidential: the journal. Public: the
 record.
 Does not: know what is done in a task; what lies in the folders below belongs to the modules that write there.
@@ -30,7 +30,8 @@ from shares.documents.party import OpenPartyKey, PartyCard
 from shares.errors import ParameterError, StorageError
 from shares.history.files import RECORD_NAME
 from shares.history.journal import Journal, append, load_journal
-from shares.keys.checking import check_belongs, check_record
+from shares.keys.checking import check_record
+from shares.keys.own_share import check_belongs
 from shares.storage import StrPath, make_folder, read_file, write_new
 
 SHARE_NAME = "share.json"

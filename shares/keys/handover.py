@@ -1,7 +1,8 @@
 """Hand over a dealt key: to each custodian a folder of their own, then, as the commit point, the dealer's record.
 
 Source: design laws 5 and 6 of this project (DEVELOPERS.md): all or nothing, and nothing is called done unchecked.
-May import: shares.errors, shares.storage, shares.documents, shares.history, .checking, .deal, .folder.
+May import: shares.errors, shares.storage, shares.documents, shares.history, .deal, .folder,
+.own_share.
 Secret: nothing in the open: key shares come here wrapped. Public: records, paths.
 Does not: gather key shares in one place unless all delivery folders are one.
 """
@@ -20,9 +21,9 @@ from shares.documents.party import OpenPartyKey
 from shares.errors import StorageError, VerificationError
 from shares.history.files import RECORD_NAME
 from shares.history.journal import JOURNAL_NAME, first_line
-from shares.keys.checking import check_belongs
 from shares.keys.deal import DealtKey
 from shares.keys.folder import SHARE_NAME, load_key_record
+from shares.keys.own_share import check_belongs
 from shares.storage import discard, leftovers, make_folder, read_back, read_file, write_new
 
 

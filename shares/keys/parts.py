@@ -2,7 +2,7 @@
 
 Source: FORMAT_KEYS.md, sec. 23.
 May import: shares.errors, shares.storage, shares.documents, shares.history, .folder, .joint, .opening,
-.signing.
+.own_share, .signing.
 Secret: the party key, passed through. Public: the task, the record.
 Does not: know what happens in any of them.
 """
@@ -23,6 +23,7 @@ from shares.history.rounds import Course, Part
 from shares.keys.folder import SHARE_NAME
 from shares.keys.joint import JointCourse, JointPart
 from shares.keys.opening import OpeningCourse, OpeningPart
+from shares.keys.own_share import check_is_of
 from shares.keys.signing import SigningCourse, SigningPart
 from shares.storage import read_file
 
@@ -61,14 +62,15 @@ def part_of(folder: TaskFolder, name: str, mine: Path, key: OpenPartyKey) -> Par
     Raises:
         StorageError: the key share cannot be read.
         DocumentError: it is none.
-        VerificationError: it is of another record than the task names, or damaged.
+        SetMismatchError, EpochMismatchError, VerificationError: it is another party's, of another record than the task
+            names, or damaged.
     """
     task = folder.task
     match task.work:
         case Joining():
             return JointPart(task, name, key)
         case Signing():
-            share = _share(mine)
+            share = _share(folder, name, mine)
             if share is None:
                 raise StorageError(
                     "there is no key share", where=os.fspath(mine / SHARE_NAME), hint="name your folder of this key"
@@ -84,12 +86,17 @@ def part_of(folder: TaskFolder, name: str, mine: Path, key: OpenPartyKey) -> Par
                 earlier=folder.beside(EARLIER_NAME),
             )
         case Opening():
-            return OpeningPart(task, name, _record(folder), _share(mine), key, mine)
+            return OpeningPart(task, name, _record(folder), _share(folder, name, mine), key, mine)
 
 
-def _share(mine: Path) -> KeyShare | None:
+def _share(folder: TaskFolder, name: str, mine: Path) -> KeyShare | None:
+    """Return the party's key share, which is looked at before anybody is asked; None where none lies there."""
     path = mine / SHARE_NAME
-    return KeyShare.parse(read_file(path, limit=MAX_FILE), where=os.fspath(path)) if os.path.lexists(path) else None
+    if not os.path.lexists(path):
+        return None
+    share = KeyShare.parse(read_file(path, limit=MAX_FILE), where=os.fspath(path))
+    check_is_of(name, share, _record(folder))
+    return share
 
 
 def _record(folder: TaskFolder) -> KeyRecord:

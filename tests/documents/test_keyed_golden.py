@@ -17,7 +17,7 @@ from shares.documents.key_share import KeyShare
 from shares.documents.nonce_batch import BoundPair, NonceBatch, NonceMarks, NoncePair, pair_id
 from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import OpenPartyKey
-from shares.documents.task import Task
+from shares.documents.task import Signing, Task
 from shares.documents.task_box import open_box
 from shares.documents.task_message import OpeningKey, TaskMessage, box_info
 from shares.documents.task_step import TaskDone, TaskStep
@@ -31,6 +31,7 @@ KINDS: dict[str, type[Document]] = {
     "record.json": KeyRecord,
     "north-pier.share.json": KeyShare,
     "task.json": Task,
+    "task-to-sign.json": Task,
     "0-harbour-office.json": TaskMessage,
     "1-north-pier.json": TaskMessage,
     "harbour-office.step-0.json": TaskStep,
@@ -108,6 +109,14 @@ def test_the_messages_are_of_the_task(drawn) -> None:
         SECOND.digest()
         == drawn[0].hashlib.sha256(b"shares/v1/task-message" + canonical(SECOND.model_dump(mode="json"))).digest()
     )
+
+
+def test_a_task_to_sign_names_what_it_is_checked_by() -> None:
+    work = Task.parse(data("task-to-sign.json")).work
+    assert isinstance(work, Signing)
+    assert work.issuer is not None
+    assert work.earlier is not None
+    assert (work.form, work.content.size, work.issuer.size, work.earlier.size) == ("revocation-list", 200, 300, 250)
 
 
 def test_the_box_opens_with_the_fresh_key_of_round_0(drawn) -> None:

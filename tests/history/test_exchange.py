@@ -21,7 +21,7 @@ from parties import card, unlocked
 
 from shares.documents.key_event import MAX_CONTENT, Content
 from shares.documents.key_record import Holder, KeyRecord
-from shares.documents.task import Opening, Task
+from shares.documents.task import Opening, Signing, Task
 from shares.documents.task_message import OpeningKey, TaskMessage
 from shares.errors import DocumentError, ParameterError, StorageError, VerificationError
 from shares.group.edwards25519 import BASE, Scalar
@@ -283,6 +283,42 @@ def test_content_is_exactly_what_the_task_names(tmp_path: Path) -> None:
     path.symlink_to(tmp_path / "task" / "task.json")
     with pytest.raises(StorageError, match="symbolic link"):
         folder.content()
+
+
+def listing(record: KeyRecord, issuer: bytes, earlier: bytes | None) -> Task:
+    """A task to sign a revocation list."""
+
+    def named(data: bytes | None) -> Content | None:
+        return None if data is None else Content(size=len(data), digest=hashlib.sha256(data).digest())
+
+    files = {"content": named(CONTENT), "issuer": named(issuer), "earlier": named(earlier)}
+    work = {"what": "sign", "form": "revocation-list", "namespace": None, "commitments": (), **files}
+    return new_task(work=Signing.model_validate(work), record=record.fingerprint)
+
+
+def test_what_content_is_checked_by_lies_beside_the_task(tmp_path: Path) -> None:
+    record = key_record()
+    task = listing(record, b"issuer", b"earlier")
+    files = {"content": CONTENT, "issuer": b"issuer", "earlier": b"earlier", "record": record}
+    for name in ("issuer", "earlier"):
+        for wrong in (None, b"another"):
+            with pytest.raises(ParameterError, match=f"the file {name} is not the one that the task names"):
+                TaskFolder.create(tmp_path / "task", task, **{**files, name: wrong})  # type: ignore[arg-type]
+    with pytest.raises(ParameterError, match="the file earlier is not"):
+        TaskFolder.create(tmp_path / "task", listing(record, b"issuer", None), **files)  # type: ignore[arg-type]
+    assert not (tmp_path / "task").exists()
+    folder = TaskFolder.create(tmp_path / "task", task, **files)  # type: ignore[arg-type]
+    for name in ("issuer", "earlier"):
+        assert folder.beside(name) == name.encode() == (folder.path / name).read_bytes()
+        (folder.path / name).write_bytes(b"another")
+        with pytest.raises(VerificationError, match=f"it is not the {name} that the task names"):
+            folder.beside(name)
+        (folder.path / name).unlink()
+        with pytest.raises(StorageError, match="does not exist"):
+            folder.beside(name)
+    first = TaskFolder.create(tmp_path / "first", listing(record, b"issuer", None), **{**files, "earlier": None})  # type: ignore[arg-type]
+    (first.path / "earlier").write_bytes(b"what the task does not name is not looked at")
+    assert first.beside("earlier") is None
 
 
 def test_the_record_is_the_one_that_the_task_names(tmp_path: Path) -> None:

@@ -12,10 +12,10 @@ from shares.documents.key_event import KeyBorn
 from shares.errors import SetMismatchError, StorageError, VerificationError
 from shares.group.edwards25519 import Scalar
 from shares.keys import handover
-from shares.keys.checking import opened
 from shares.keys.deal import DealtKey, deal
 from shares.keys.folder import KeyFolder
 from shares.keys.handover import check_places, hand_over
+from shares.keys.own_share import own_share
 
 NAMES = ("north-pier", "south-pier", "light-house")
 
@@ -46,7 +46,7 @@ def test_each_custodian_finds_a_folder_to_work_with(
     for name, place in places.items():
         folder = KeyFolder(place)
         with unlocked(name) as own:
-            opened(folder.share(), folder.record, own.open)
+            own_share(folder.share(), folder.record, name, own.open)
         (born,) = folder.journal().entries
         assert isinstance(born.event, KeyBorn)
         assert [one.name for one in folder.journal().signers(born)] == ["harbour-office"]

@@ -292,10 +292,10 @@ def test_a_custodian_uses_the_right_key_share_alone(quorum, tmp_path) -> None:
             (share, record, "south-pier", key.open, "not that of south-pier"),
             (share, record, "dry-dock", key.open, "dry-dock is no custodian"),
             (share, record, "north-pier", other_key.open, "wrapped for the card"),
-            (share, Quorum(tmp_path / "other").record, "north-pier", key.open, "another key or epoch"),
-            (share.model_copy(update={"epoch": 2}), record, "north-pier", key.open, "another key or epoch"),
-            (share.model_copy(update={"index": 2}), record, "north-pier", key.open, "not that of north-pier"),
-            (share.model_copy(update={"need": 3}), record, "north-pier", key.open, "not that of north-pier"),
+            (share, Quorum(tmp_path / "other").record, "north-pier", key.open, "of the key|names the record"),
+            (changed(share, epoch=2), record, "north-pier", key.open, "of epoch 2"),
+            (changed(share, index=2), record, "north-pier", key.open, "stands elsewhere"),
+            (changed(share, need=3), record, "north-pier", key.open, "another number of custodians"),
             (share.model_copy(update={"label": "x"}), record, "north-pier", key.open, "damaged or edited"),
             (flipped_share(share), record, "north-pier", key.open, "were changed"),
             (swapped, record, "north-pier", key.open, "does not fit the public commitments"),
@@ -308,6 +308,10 @@ def test_a_custodian_uses_the_right_key_share_alone(quorum, tmp_path) -> None:
     with pytest.raises(VerificationError, match="does not fit the public commitments"):
         quorum.part(task, "north-pier").speak(1, asked(task, message), Secret(0), [{}])
     assert not quorum.folders["north-pier"].exists()
+
+
+def changed(share: KeyShare, **facts: object) -> KeyShare:
+    return share.model_copy(update=facts).with_digest()
 
 
 def flipped_share(share: KeyShare) -> KeyShare:

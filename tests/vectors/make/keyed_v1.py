@@ -116,6 +116,22 @@ def task(key: Json, content: bytes) -> Json:
     return {**made, "signature": sign(RECEIVER, "task", made)}
 
 
+def task_to_sign(key: Json, asked: Json) -> Json:
+    """Make a task to sign a revocation list that continues an earlier one, with commitments made beforehand."""
+
+    def named(what: str, size: int) -> Json:
+        content = draw(f"keyed/{what}", size)
+        return {"size": len(content), "digest": hashlib.sha256(content).hexdigest()}
+
+    names = CUSTODIANS[:NEED]
+    pairs = [{what: point_of(seed(f"{what} {i}")) for what in ("hiding", "binding")} for i in range(NEED)]
+    work: Json = {"what": "sign", "form": "revocation-list", "namespace": None, "content": named("list", 200)}
+    work |= {"issuer": named("issuer", 300), "earlier": named("earlier", 250)}
+    work |= {"commitments": [{"signer": name, **pair} for name, pair in zip(names, pairs, strict=True)]}
+    made = {**by_hand.without(asked, "signature"), "work": work, "parties": asked["parties"][:NEED], "remark": None}
+    return {**made, "signature": sign(RECEIVER, "task", made)}
+
+
 def digest(kind: str, document: Json) -> bytes:
     return hashlib.sha256(f"shares/v1/{kind}".encode() + canonical(document)).digest()
 
@@ -216,6 +232,7 @@ def files() -> dict[str, str]:
         "record.json": key,
         "north-pier.share.json": key_share(key),
         "task.json": work,
+        "task-to-sign.json": task_to_sign(key, work),
         "0-harbour-office.json": first,
         "1-north-pier.json": second,
         "harbour-office.step-0.json": step(first, card(RECEIVER, None), private),
