@@ -194,7 +194,7 @@ def print_asked(
         "digest": task.digest().hex(),
         "fingerprint": task.fingerprint,
         "work": task.work.what,
-        "parties": list(task.names),
+        "parties": list(task.asked),
         "due": clock.to_text(task.due),
     }
     lines = [

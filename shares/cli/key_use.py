@@ -241,7 +241,7 @@ def finish_command(
         author = signers((signer_file,), at_hand)[0]
         with held_signals():
             if isinstance(task.task.work, Signing) and target is not None:
-                data = signed(key_folder, task)
+                data = signed(key_folder, task, author)
                 write_new(target, data, secret=False)
                 entered = enter_once(key_folder, finished(task.task, data), author)
                 members |= {"signers": list(task.task.names), "sha256": hashlib.sha256(data).hexdigest()}

@@ -10,16 +10,18 @@ from typing import Any
 
 import click
 
+from shares import clock
 from shares.cli.keys import opening
 from shares.cli.output import filled, json_option, print_result, prose, say, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.task_words import (
-    SEND,
+    LATE,
     about_lines,
     besides,
     failure_lines,
     indented,
     round_words,
+    send_lines,
     standing_lines,
     standing_members,
     state_of,
@@ -31,7 +33,7 @@ from shares.documents.task import Joining
 from shares.documents.task_message import MAX_ROUNDS
 from shares.errors import ParameterError, SharesError
 from shares.history.exchange import Problem, TaskFolder
-from shares.history.next import Turn, close, finish, speak, turn
+from shares.history.next import Turn, check_time, close, finish, speak, turn
 from shares.history.rounds import Course, Outcome, Part
 from shares.history.standing import standing
 from shares.history.steps import OwnSteps
@@ -50,8 +52,8 @@ def command() -> None:
 
 
 @command.command("next", short_help="Do what is yours to do now in a task.")
-@click.argument("path", metavar="FOLDER", callback=filled)
-@click.option("--mine", required=True, metavar="DIR", callback=filled, help="Your own folder; never the task's.")
+@click.argument("path", metavar="TASKDIR", callback=filled)
+@click.option("--mine", required=True, metavar="KEYDIR", callback=filled, help="Your own folder; never the task's.")
 @click.option("--key", "key_file", required=True, metavar="KEY", callback=filled, help="Your party key.")
 @click.option("--yes", is_flag=True, help="You have read what the task is about, and agree: do not ask.")
 @passphrase_options
@@ -67,9 +69,11 @@ def take_next(
     descriptors: tuple[str, ...],
     as_json: bool,
 ) -> None:
-    """Do what is yours to do now in the task of FOLDER: it says what that is, asks, and writes your messages.
+    """Do what is yours to do now in the task of TASKDIR: it says what that is, asks, and writes your messages.
 
-    One call does one thing that it asks about, at most. A run that is stopped is repeated: the same message is sent.
+    KEYDIR is your own folder of the key, or for a key that is being born a new one. You are asked before you agree to
+    something; what commits you to nothing is done unasked, and so one call may speak in several rounds, but asks once
+    at most. A run that is stopped is repeated: the same message is sent.
 
     \b
     Example:
@@ -104,11 +108,11 @@ def take_next(
 
 
 @command.command(short_help="Show where a task stands.")
-@click.argument("path", metavar="FOLDER", callback=filled)
+@click.argument("path", metavar="TASKDIR", callback=filled)
 @json_option
 @click.pass_context
 def show(ctx: click.Context, path: str, as_json: bool) -> None:
-    """Show what the task of FOLDER is about, who has spoken, who is awaited, and what is wrong. It needs no key.
+    """Show what the task of TASKDIR is about, who has spoken, who is awaited, and what is wrong. It needs no key.
 
     \b
     Example:
@@ -124,14 +128,14 @@ def show(ctx: click.Context, path: str, as_json: bool) -> None:
         **task_members(folder, found),
         **standing_members(found),
     }
-    lines = [*task_lines(folder), *about_lines(folder, found), *standing_lines(folder.task, found)]
+    lines = [*task_lines(folder), *about_lines(folder, found), *standing_lines(folder, found)]
     print_result(members, lines, as_json=as_json)
     ctx.exit(code)
 
 
 @command.command(short_help="Give a task up, and erase what you keep for it.")
-@click.argument("path", metavar="FOLDER", callback=filled)
-@click.option("--mine", required=True, metavar="DIR", callback=filled, help="Your own folder; never the task's.")
+@click.argument("path", metavar="TASKDIR", callback=filled)
+@click.option("--mine", required=True, metavar="KEYDIR", callback=filled, help="Your own folder; never the task's.")
 @click.option("--key", "key_file", required=True, metavar="KEY", callback=filled, help="Your party key.")
 @click.option("--yes", is_flag=True, help="You give the task up for good: do not ask.")
 @passphrase_options
@@ -145,7 +149,7 @@ def drop(
     descriptors: tuple[str, ...],
     as_json: bool,
 ) -> None:
-    """Give up the task of FOLDER, which has failed or is not wanted: what you keep for it is erased, nonces included.
+    """Give up the task of TASKDIR, which has failed or is not wanted: what you keep for it is erased, nonces included.
 
     What you have said stays, and you say nothing more in it. Your journal tells of it.
 
@@ -201,6 +205,7 @@ class _Call:
         asks = part.asks(at.round)
         if asks and self.asked:
             return False
+        check_time(self.folder.task)  # Nobody is asked about what can no longer be said.
         # Whoever is asked must have read what about, whatever is printed on standard output.
         if not self.as_json or (asks and not self.yes and os.isatty(0)):
             say(task_lines(self.folder) if asks else [f"Task: {self.folder.task.words()}."][len(self.took) :])
@@ -241,7 +246,7 @@ class _Call:
         for round, path in self.took:
             yield f"Said by {self.own.name}, {round_words(at.standing, round)}: {path}"
         if self.took:
-            yield SEND
+            yield from send_lines(self.folder.task, at.standing)
         if self.outcome is not None:
             yield from (part for line in self.outcome.words for part in prose(line))
         elif at.doing == "failed":
@@ -250,6 +255,8 @@ class _Call:
             yield f"The task is over for {self.own.name}; nothing is left to be done."
         elif at.doing == "wait":
             yield f"Awaited, {round_words(at.standing, at.round)}: {', '.join(at.standing.awaited)}."
+            if self.folder.task.is_late(clock.now()):
+                yield LATE
         else:
             yield "It is your turn again, and you are asked again: repeat the command."
 

@@ -23,7 +23,17 @@ from shares.keys.description import Description
 
 _WIDTH = 96
 ASKED_BY = "Compare the task's fingerprint with whoever asks, by another way than the one the folder came by."
-SEND = "Next: send the task's folder, or the new message in it, to the others."
+SEND = (
+    "Next: send the task's folder, or the new message in it, to the others. When all have spoken, run this once more "
+    "with their messages: what your folder keeps for the task is erased then."
+)
+SEND_TO = (
+    "Next: send the task's folder, or the new message in it, to {name}, who puts it together: `shares key finish`."
+)
+DAMAGED = (
+    "Next: this says nothing of the task, but that this copy of it is damaged. Do nothing with it, and ask whoever made "
+    "the task for the whole folder."
+)
 FAILED = (
     "Next: do not go on with this task. Keep its folder, find out what happened, and begin a new task; without whoever "
     "is named, if somebody is. `shares task drop` then erases what this machine keeps for it."
@@ -34,13 +44,31 @@ BORN_ELSEWHERE = (
 )
 
 
+ALL_SAID = {
+    "join": "Everything has been said. Next: each party runs `shares task next`, and has what comes of it.",
+    "sign": "Everything has been said. Next: whoever asked runs `shares key finish`, and each signer `shares task next` "
+    "once more, which erases what is left.",
+    "open": "Everything has been said. Next: the receiver runs `shares key finish`, and each other custodian `shares "
+    "task next` once more, which erases what is left.",
+}
+ENOUGH = "Enough have spoken, if their partial results hold. Next: the receiver runs `shares key finish`, which finds that out."
+LATE = "The task is past its due date: nobody can speak in it any more. Next: begin a new task."
+
+
 def round_words(found: Standing, round: int) -> str:
     """Name a round, by number and by what is said in it."""
     return f"round {round}, {found.names[round]}"
 
 
+def is_damaged(found: Standing) -> bool:
+    """Say whether this copy of a task lacks what the task is about, or has something else in its place."""
+    return any(problem.kind == "content" for problem in found.problems)
+
+
 def state_of(found: Standing) -> str:
     """Say in one word where a task stands."""
+    if is_damaged(found):
+        return "damaged"
     return "failed" if found.failure else "complete" if found.complete else "waiting"
 
 
@@ -116,20 +144,31 @@ def indented(line: str) -> list[str]:
     return textwrap.wrap(line, _WIDTH, initial_indent=first, subsequent_indent="    ")
 
 
-def standing_lines(task: Task, found: Standing) -> Iterator[str]:
+def send_lines(task: Task, found: Standing) -> list[str]:
+    """Say to whom what was just said is sent."""
+    if found.complete and not isinstance(task.work, Joining):
+        name = task.work.receiver if isinstance(task.work, Opening) else task.author.name
+        return prose(SEND_TO.format(name=name))
+    return prose(SEND)
+
+
+def standing_lines(folder: TaskFolder, found: Standing) -> Iterator[str]:
     """Yield where a task stands: which rounds are complete, who is awaited, what is wrong."""
+    task = folder.task
     for round, name in enumerate(found.names[: found.round]):
-        yield f"Round {round}, {name}: complete."
+        yield f"Round {round}, {name}: {'complete' if found.inbox.of(round) else 'not needed'}."
     if found.failure:
         yield from failure_lines(found)
     elif found.complete:
-        yield "Everything has been said. Next: each party runs `shares task next`, and has what comes of it."
+        yield from prose(ALL_SAID[task.work.what])
     else:
         words = round_words(found, found.round).capitalize()
         yield f"{words}: {', '.join(found.spoken) or 'nobody'} spoke so far."
         yield f"Awaited: {', '.join(found.awaited)}."
-        if task.is_late(clock.now()):
-            yield "The task is past its due date: nobody can speak in it any more. Next: begin a new task."
+        if _suffices(folder, found):
+            yield from prose(ENOUGH)
+        elif task.is_late(clock.now()):
+            yield LATE
     for problem in besides(found):
         yield f"Problem: {problem.what}."
 
@@ -138,6 +177,10 @@ def failure_lines(found: Standing) -> Iterator[str]:
     """Yield why a task has failed, and what next."""
     failure: Failure | None = found.failure
     if failure is None:
+        return
+    if is_damaged(found):
+        yield from prose(f"This copy of the task is damaged: {failure.what}.")
+        yield from prose(DAMAGED)
         return
     yield from prose(f"The task has failed{f', by {failure.by}' if failure.by else ''}: {failure.what}.")
     yield from prose(FAILED)
@@ -148,3 +191,10 @@ def failure_lines(found: Standing) -> Iterator[str]:
 def besides(found: Standing) -> Sequence[Problem]:
     """Return the problems that are not said already, as what the task has failed by."""
     return [problem for problem in found.problems if not found.failure or problem.what != found.failure.what]
+
+
+def _suffices(folder: TaskFolder, found: Standing) -> bool:
+    """Say whether as many have spoken as the key needs, where not all who were asked have to."""
+    if not isinstance(folder.task.work, Opening) or folder.record is None:
+        return False
+    return found.round == len(found.names) - 1 and len(found.spoken) >= folder.record.need

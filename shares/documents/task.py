@@ -207,6 +207,12 @@ class Task(Document):
         """The parties' names, in their order."""
         return tuple(one.name for one in self.parties)
 
+    @property
+    def asked(self) -> tuple[str, ...]:
+        """The names of those who are asked for something: all parties but a receiver."""
+        receiver = self.work.receiver if isinstance(self.work, Opening) else None
+        return tuple(name for name in self.names if name != receiver)
+
     def party(self, name: str) -> TaskParty | None:
         """Return the party of that name, or None."""
         return next((one for one in self.parties if one.name == name), None)
@@ -248,7 +254,9 @@ class Task(Document):
     def words(self) -> str:
         """Say what is to be done, by whom and until when, in one line, however many spaces its label has."""
         work = {"join": "generate a key together", "sign": "sign", "open": "open a message"}[self.work.what]
-        return f"{', '.join(self.names)}: {work} ({' '.join(self.label.split())}), until {clock.to_text(self.due)}"
+        receives = f" for {self.work.receiver}" if isinstance(self.work, Opening) else ""
+        label, due = " ".join(self.label.split()), clock.to_text(self.due)
+        return f"{', '.join(self.asked)}: {work}{receives} ({label}), until {due}"
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

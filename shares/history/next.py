@@ -18,6 +18,7 @@ from typing import Literal, TypeAlias
 from shares import clock
 from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey
+from shares.documents.task import Task
 from shares.documents.task_box import new_box_key, seal_box
 from shares.documents.task_message import Body, OpeningKey, SealedFor, TaskMessage, box_info
 from shares.errors import ParameterError, SharesError, VerificationError
@@ -109,18 +110,27 @@ def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnStep
         # Another run of this party may have spoken meanwhile: its message is the one to send.
         message = own.messages().get(at.round)
         if message is None:
-            time = clock.now()
-            if own.task.is_late(time):
-                due, now = clock.to_text(own.task.due), clock.to_text(time)
-                raise VerificationError(
-                    f"the task was due {due}, and it is {now} by this machine's clock",
-                    hint="set the clock if it is wrong; else ask for a new task",
-                )
+            check_time(own.task)
             message = _say(at.round, earlier, course, part, own, key)
         if own.done() is None:
             _enter(own.mine, part.event(at.round, earlier), key)
         part.kept(at.round, earlier)
     return folder.release(message)
+
+
+def check_time(task: Task) -> None:
+    """Refuse to speak in a task that is past its due date.
+
+    Raises:
+        VerificationError: it is.
+    """
+    time = clock.now()
+    if task.is_late(time):
+        due, now = clock.to_text(task.due), clock.to_text(time)
+        raise VerificationError(
+            f"the task was due {due}, and it is {now} by this machine's clock",
+            hint="set the clock if it is wrong; else ask for a new task",
+        )
 
 
 def finish(at: Turn, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> Outcome:

@@ -215,7 +215,7 @@ def asked(task: Task) -> TaskAsked:
         what="task-asked",
         task=task.digest(),
         work=work.what,
-        parties=task.names,
+        parties=task.asked,
         content=None if isinstance(work, Joining) else work.content,
         form=work.form if isinstance(work, Signing) else None,
         remark=task.remark,

@@ -1,22 +1,21 @@
 """Give a task up for one party: what it has said stays, and what it kept to go on with is erased.
 
 Source: RFC 9591, sec. 5.1 (nonces are deleted); FORMAT_KEYS.md, sec. 25 and 29.
-May import: shares.documents, shares.history, .nonces, .signing.
+May import: shares.documents, shares.history, .finishing, .nonces, .signing.
 Secret: nothing is opened; sealed states and nonces are erased. The party key, passed through. Public: messages.
 Does not: tell the others, or erase media, which may keep old blocks.
 """
 
 from __future__ import annotations
 
-from shares.documents.key_event import TaskFailed
 from shares.documents.key_record import KeyRecord
-from shares.documents.members import MAX_TEXT
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Signing
 from shares.documents.task_message import Commitment, Confirmation
 from shares.history.next import drop
 from shares.history.rounds import Failure
 from shares.history.steps import OwnSteps
+from shares.keys.finishing import failed
 from shares.keys.nonces import NonceStore
 from shares.keys.signing import NONCES
 
@@ -55,13 +54,7 @@ def give_up(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None, failure:
         StorageError: something cannot be written or erased.
         VerificationError: the steps are not this party's.
     """
-    event = TaskFailed(
-        what="task-failed",
-        task=own.task.digest(),
-        work=own.task.work.what,
-        by=failure.by if failure else None,
-        reason=(failure.what if failure else f"given up by {own.name}")[:MAX_TEXT],
-    )
+    event = failed(own.task, failure or Failure(None, f"given up by {own.name}"))
     drop(own, event, key, lambda: _erase_nonces(own, key, record))
 
 

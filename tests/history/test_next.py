@@ -388,7 +388,7 @@ def test_the_wrong_party_key_is_refused(tmp_path: Path) -> None:
     # Another party of the task, in this one's folder, finds that it knows nothing of its messages.
     desk.take()
     assert OwnSteps(desk.mine, task, card("south-pier")).name == "south-pier"
-    with pytest.raises(VerificationError, match="it is a step of another task, or of another party"):
+    with pytest.raises(VerificationError, match="is the folder of north-pier"):
         OwnSteps(desk.mine, task, card("south-pier")).steps()
 
 

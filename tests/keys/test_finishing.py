@@ -117,5 +117,5 @@ def test_without_what_was_kept_nothing_opens(opening: tuple[KeyFolder, TaskFolde
 
 
 def test_an_opening_is_no_signature(opening: tuple[KeyFolder, TaskFolder]) -> None:
-    with pytest.raises(ParameterError):
-        signed(*opening)
+    with unlocked(OFFICE) as office, pytest.raises(ParameterError):
+        signed(*opening, office)
