@@ -46,12 +46,12 @@ BORN_ELSEWHERE = (
 
 ALL_SAID = {
     "join": "Everything has been said. Next: each party runs `shares task next`, and has what comes of it.",
-    "sign": "Everything has been said. Next: whoever asked runs `shares key finish`, and each signer `shares task next` "
-    "once more, which erases what is left.",
-    "open": "Everything has been said. Next: the receiver runs `shares key finish`, and each other custodian `shares "
-    "task next` once more, which erases what is left.",
+    "sign": "Everything has been said. Next: whoever asked runs `shares key finish`, and each signer runs "
+    "`shares task next` once more, which erases what is left.",
+    "open": "Everything has been said. Next: the receiver runs `shares key finish`, and each other custodian runs "
+    "`shares task next` once more, which erases what is left.",
 }
-ENOUGH = "Enough have spoken, if their partial results hold. Next: the receiver runs `shares key finish`, which finds that out."
+ENOUGH = "Enough have spoken, if their partial results hold. Next: the receiver runs `shares key finish`."
 LATE = "The task is past its due date: nobody can speak in it any more. Next: begin a new task."
 
 
@@ -182,7 +182,7 @@ def failure_lines(found: Standing) -> Iterator[str]:
         yield from prose(f"This copy of the task is damaged: {failure.what}.")
         yield from prose(DAMAGED)
         return
-    yield from prose(f"The task has failed{f', by {failure.by}' if failure.by else ''}: {failure.what}.")
+    yield from prose(f"The task has failed: {failure.words()}.")
     yield from prose(FAILED)
     if isinstance(found.inbox.task.work, Joining) and found.round >= len(found.names) - 1:
         yield from prose(BORN_ELSEWHERE)

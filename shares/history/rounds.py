@@ -64,6 +64,10 @@ class Failure:
     by: str | None
     what: str
 
+    def words(self) -> str:
+        """Say what is wrong, and by whom, where that does not name the party already."""
+        return f"{self.by}: {self.what}" if self.by and self.by not in self.what else self.what
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Said:

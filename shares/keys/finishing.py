@@ -182,9 +182,8 @@ def _refuse_failed(folder: KeyFolder, found: Standing, key: OpenPartyKey) -> Non
     if found.failure is not None:
         enter_once(folder, failed(found.inbox.task, found.failure), key)
         # Words about single messages follow: they are why it cannot be finished, where no one's fault is proved.
-        by = f"{found.failure.by}: " if found.failure.by else ""
         raise VerificationError(
-            f"the task has failed: {by}{found.failure.what}",
+            f"the task has failed: {found.failure.words()}",
             hint="begin a new one; `shares task show` tells all that is wrong",
         )
 

@@ -53,7 +53,7 @@ def check_places(key_folder: Path, deliveries: Mapping[str, Path]) -> None:
         raise StorageError(
             f"found {len(taken)} file(s) or folder(s) of another key, or left by a run that did not finish: {names}",
             hint="where the key's record stands in its dealer's folder they are in use: choose other folders; else the "
-            "key was never born, and what is left of it is destroyed",
+            "key was never born: destroy what is left of it",
         )
 
 

@@ -318,7 +318,7 @@ def _decrypted(work: Opening, record: KeyRecord, message: bytes, dh: Secret) -> 
         except VerificationError:
             pass
     raise VerificationError(
-        "the key is right, for k partial results hold; and yet the message does not open",
+        f"the key is right, for {record.need} partial results hold; and yet the message does not open",
         hint="it is damaged, is to another key, or was bound to other info or associated data or encrypted with the "
         "other cipher: ask the sender, and begin a new task with what they say",
     )

@@ -38,6 +38,8 @@ from shares.sharing.verifiable import public_share
 
 COMMITMENTS: Final = "commitments"
 SHARES: Final = "signature shares"
+_MOST_SUMMED: Final = 4
+"""How many lines of what a signer was told the journal keeps: of a certificate subject, issuer, time and number."""
 NONCES: Final = "nonces"
 """The folder, within a signer's own, where the nonces lie."""
 
@@ -246,14 +248,13 @@ class SigningPart:
         if self._course.rounds[round] == COMMITMENTS:
             return None
         told = self._told(inbox)
-        summary = "; ".join((told.kind, *told.lines[2:]))  # Size and digest stand beside it.
         return Approved(
             what="approved",
             task=self._course.task.digest(),
             work="sign",
             custodian=self._me,
             content=self._course.work.content,
-            summary=summary if len(summary) <= MAX_TEXT else f"{summary[: MAX_TEXT - 4]} ...",
+            summary=_summary(told),
         )
 
     def speak(self, round: int, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Said:
@@ -391,6 +392,12 @@ def finish_signing(
     course = SigningCourse(task, record, issuer=issuer, earlier=earlier)
     signature = course.signature(inbox)
     return course.signable(inbox).finished(record.public_key.encode(), signature)
+
+
+def _summary(told: Description) -> str:
+    """Say in one line what a signer was told: the kind, and what comes first of the rest but size and digest."""
+    summary = "; ".join((told.kind, *told.lines[2 : 2 + _MOST_SUMMED]))
+    return summary if len(summary) <= MAX_TEXT else f"{summary[: MAX_TEXT - 4].rsplit(' ', 1)[0]} ..."
 
 
 def _misbehaved(names: Sequence[str]) -> str:
