@@ -120,6 +120,7 @@ def answer(task: str, author: Machine, machines: list[Machine]) -> None:
 
 
 def main(folder: Path) -> int:
+    folder = folder.resolve()  # Each command runs in the folder of its own machine.
     folder.mkdir(mode=0o700)
     office = Machine(folder, OFFICE)
     custodians = [Machine(folder, name) for name in CUSTODIANS]

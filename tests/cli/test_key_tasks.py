@@ -12,6 +12,7 @@ import re
 import subprocess
 import sys
 from collections.abc import Sequence
+from datetime import timedelta
 from pathlib import Path
 
 import pytest
@@ -20,11 +21,16 @@ from cli.keyed import OFFICE, Keyed
 from cli.test_key import tool
 from parties import unlocked
 
+from shares import clock
 from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, TaskFinished
 from shares.documents.task import Task
 from shares.documents.task_message import SignatureShare, TaskMessage
 from shares.group.edwards25519 import Scalar
 from shares.history.journal import load_journal
+from shares.keys.asking import ask, new_signing
+from shares.keys.folder import KeyFolder
+from shares.keys.forms import Signable
+from shares.keys.revocation import Revoked, revocation_list
 
 SENDER = Path(__file__).resolve().parents[2] / "examples" / "send_to_key.py"
 FIRST, SECOND, THIRD = "north-pier", "south-pier", "light-house"
@@ -310,6 +316,47 @@ class TestForms:
         arguments += ["--issuer", keyed.path("authority.pem"), f"--signer={FIRST}", f"--signer={SECOND}"]
         assert_refused([*arguments, *keyed.as_(OFFICE)], 4, watched=keyed.folder)
 
+    def test_a_list_that_forgets_is_refused_by_every_signer(self, keyed: Keyed) -> None:
+        """An author whose own program looks away: the task is well signed, its list leaves out what was revoked."""
+        root = keyed.ask("root", "CN=Harbour Trust Root", task="t-root")
+        keyed.answer(root, FIRST, SECOND)
+        root_pem = keyed.finish(root, "root.pem").read_bytes()
+        public_key = keyed.record.public_key.encode()
+        now = clock.now()
+
+        def body(*serials: int, number: int) -> bytes:
+            revoked = [Revoked(serial, now) for serial in serials]
+            return revocation_list(
+                public_key,
+                revoked,
+                issuer=root_pem,
+                this_update=now,
+                next_update=now + timedelta(days=9),
+                number=number,
+            )
+
+        def asked(name: str, content: bytes, **beside: bytes) -> Path:
+            with unlocked(OFFICE) as author:
+                folder = KeyFolder(keyed.key)
+                given = {"signers": (FIRST, SECOND), "author": author, "due": now + timedelta(days=7)}
+                with pytest.MonkeyPatch.context() as patch:
+                    patch.setattr(Signable, "message", lambda *_: b"")
+                    task = new_signing(content, folder.record, form="revocation-list", **given, **beside)
+                ask(folder, task, keyed.path(name), content, author, **beside)
+            return keyed.path(name)
+
+        first = asked("t-first", body(77, number=1), issuer=root_pem)
+        keyed.answer(first, FIRST, SECOND)
+        earlier = keyed.finish(first, "first.pem").read_bytes()
+        task = asked("t-second", body(78, number=2), issuer=root_pem, earlier=earlier)
+        before = files_in(task)
+        done = keyed.next(task, FIRST)
+        assert (done.code, files_in(task)) == (4, before)
+        assert "leaves out 1 of what the earlier list revokes" in done.out
+        # Without what it is checked by nothing is done with a task at all.
+        (task / "earlier").unlink()
+        assert_refused(["task", "show", task], 5, "does not exist", watched=keyed.folder)
+
     def test_the_author_is_told_what_the_signers_will_be(self, keyed: Keyed) -> None:
         signers = [f"--signer={name}" for name in (FIRST, SECOND)]
         subject = "CN=Harbour Trust Root,O=Harbour Trust"
@@ -336,6 +383,15 @@ class TestForms:
         monkeypatch.chdir(keyed.folder)
         arguments = ["key", verb, keyed.key, *more, "--task", "t", f"--signer={FIRST}", f"--signer={SECOND}"]
         assert_refused([*arguments, *keyed.as_(OFFICE)], code, watched=keyed.folder)
+
+    def test_what_others_act_on_is_not_asked_for_as_plain_bytes(self, keyed: Keyed) -> None:
+        body = keyed.path("body")
+        arguments = ["key", "sign", keyed.key, body, "--task", keyed.path("t"), f"--signer={FIRST}"]
+        arguments += [f"--signer={SECOND}", *keyed.as_(OFFICE)]
+        for content in (b"\x30\x80" + bytes(40), b"shares/v1/sign/task{}", b"SSHSIG\0\0"):
+            body.write_bytes(content)
+            assert_refused(arguments, 2, "as plain bytes", "--openssh", watched=keyed.folder)
+        assert run(*arguments, "--openssh=file").code == 0
 
     def test_a_path_length_is_for_authorities(self, keyed: Keyed) -> None:
         arguments = ["key", "certify", keyed.key, "r", "--for", "server", "--path-length", "1", "--issuer", "i"]
