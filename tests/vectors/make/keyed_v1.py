@@ -1,6 +1,6 @@
 """The golden samples of threshold keys: a key that was dealt, and a message that is opened by it, as files of a task.
 
-Source: shares/documents/FORMAT_KEYS.md, sections 21 to 28. No curve is needed: an Ed25519 public key is the base point
+Source: shares/documents/FORMAT_KEYS.md, sections 21 to 29. No curve is needed: an Ed25519 public key is the base point
 times a number that its seed gives (RFC 8032, section 5.1.5), so seeds are drawn, and numbers worked out from them.
 May import: the standard library, `cryptography` and the `_v1` modules beside it.
 Secret: nothing; keys here are made up, and worthless.
