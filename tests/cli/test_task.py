@@ -79,7 +79,11 @@ def test_three_parties_have_a_key_in_the_end(harbour: Harbour) -> None:
     for name in NAMES:
         again = harbour.next(name)
         assert again.out == f"The task is over for {name}; nothing is left to be done.\n"
-        assert [entry.event.what for entry in load_journal(harbour.mine(name)).entries] == ["approved", "key-born"]
+        assert [entry.event.what for entry in load_journal(harbour.mine(name)).entries] == [
+            "approved",
+            "approved",
+            "key-born",
+        ]
     assert harbour.show("--json").json["state"] == "complete"
     assert "Everything has been said." in harbour.show().out
 
