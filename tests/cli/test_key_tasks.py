@@ -517,3 +517,48 @@ class TestJoining:
         assert len(joint.finish(task, "sig").read_bytes()) == 64
         arguments = ["key", "finish", joint.key, joint.path("j"), "--to", joint.path("x"), *joint.as_(OFFICE)]
         assert_refused(arguments, 2, "shares task next", watched=joint.folder)
+
+
+class TestTold:
+    """What a task is about is told by every command that shows it, not by the one alone that asks."""
+
+    def test_show_and_both_kinds_of_json_say_what_the_content_is(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="to-sign")
+        shown = run("task", "show", task)
+        assert "What is signed is text." in shown.out
+        assert "release 7 of the tide tables" in shown.out
+        assert f"By the key: {keyed.record.label}" in shown.out
+        asked = keyed.next(task, FIRST).err
+        assert "What is signed is text." in asked
+        for done in (run("task", "show", task, "--json"), keyed.next(task, FIRST, "--json")):
+            about = done.json["about"]
+            assert (about["kind"], about["lines"][2]) == ("text", "release 7 of the tide tables")
+            assert about["cautions"] == []
+        (task / "content").write_bytes(b"something else")
+        assert run("task", "show", task, "--json").json["about"] is None
+
+    def test_of_a_message_the_cautions_are_told(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="to-open")
+        assert "What is opened is a message that is encrypted to the key." in run("task", "show", task).out
+        told = run("task", "show", task, "--json").json["about"]
+        assert any("every message with this encapsulated key" in one for one in told["cautions"])
+
+    def test_a_signature_that_is_given_up_leaves_no_nonces(self, keyed: Keyed) -> None:
+        nonces = keyed.own(FIRST) / "nonces"
+        beforehand = ["--batch", *[str(commit(keyed, name)) for name in (FIRST,)]]
+        more = [*beforehand, f"--batch={commit(keyed, SECOND)}"]
+        known = {path.name for path in nonces.iterdir()}
+        first = keyed.ask("sign", keyed.path("release.txt"), task="one", more=more)
+        second = keyed.ask("sign", keyed.path("release.txt"), task="two")
+        assert keyed.next(first, FIRST).code == 0
+        assert keyed.next(second, FIRST).code == 0
+        for task in (first, second):
+            own = ["--mine", keyed.own(FIRST), *keyed.as_(FIRST, "--key")]
+            done = run("task", "drop", task, *own, "--yes")
+            assert done.code == 0, done.err
+        left = {path.name for path in nonces.glob("pair-*")}
+        assert left < known
+        assert len(left) == 2
+        assert all(path.stat().st_size == 0 for path in nonces.glob("spent-*"))
+        assert len(list(nonces.glob("spent-*"))) == 1
+        assert not list((keyed.own(FIRST) / "tasks").rglob("step-*"))

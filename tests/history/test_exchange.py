@@ -14,6 +14,7 @@ import shutil
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
+from unittest import mock
 
 import pytest
 from history.exchanging import MADE, NAMES, Draw, desks, new_task
@@ -25,7 +26,8 @@ from shares.documents.task import Opening, Signing, Task
 from shares.documents.task_message import OpeningKey, TaskMessage
 from shares.errors import DocumentError, ParameterError, StorageError, VerificationError
 from shares.group.edwards25519 import BASE, Scalar
-from shares.history.exchange import MAX_MESSAGE, MAX_MESSAGES, TaskFolder
+from shares.history import exchange as exchange_module
+from shares.history.exchange import MAX_ALL, MAX_MESSAGE, MAX_MESSAGES, MAX_STRAY, TaskFolder
 from shares.history.rounds import Inbox
 from shares.history.standing import standing
 
@@ -183,6 +185,40 @@ def test_a_flood_of_files_is_refused(folder: TaskFolder) -> None:
         put(folder, f"{i}.json", b"")
     with pytest.raises(StorageError, match="holds more than"):
         folder.read()
+
+
+def test_a_flood_of_files_that_are_no_messages_is_refused_before_all_are_read(folder: TaskFolder) -> None:
+    folder.release(said("north-pier", folder.task))
+    for i in range(MAX_STRAY):
+        put(folder, f"{i}.json", b"{}" if i % 2 else said("north-pier", new_task()))
+    assert len(folder.read().problems) == MAX_STRAY
+    put(folder, "x.json", b"{}")
+    with mock.patch.object(TaskMessage, "parse", side_effect=TaskMessage.parse) as parse:
+        with pytest.raises(StorageError, match=f"more than {MAX_STRAY} files that are no messages of this task"):
+            folder.read()
+        assert parse.call_count <= MAX_STRAY + 2
+
+
+def test_a_flood_of_large_files_is_refused_before_any_is_read(folder: TaskFolder) -> None:
+    for i in range(MAX_ALL // MAX_MESSAGE + 1):
+        with (folder.path / "messages" / f"{i}.json").open("wb") as sparse:
+            sparse.truncate(MAX_MESSAGE if i else 1)
+    with mock.patch.object(TaskMessage, "parse", side_effect=TaskMessage.parse) as parse:
+        with pytest.raises(StorageError, match="holds more than 32 MiB"):
+            folder.read()
+        assert parse.call_count == 0
+
+
+def test_where_another_run_sends_the_same_message_just_now_it_is_sent_once(folder: TaskFolder) -> None:
+    message, real = said("north-pier", folder.task), exchange_module.write_new
+
+    def slow(path: Path, data: bytes, *, secret: bool) -> None:
+        real(path, data, secret=secret)  # The other run.
+        real(path, data, secret=secret)
+
+    with mock.patch.object(exchange_module, "write_new", slow):
+        assert folder.release(message).name == "0-north-pier.json"
+    assert len(list((folder.path / "messages").iterdir())) == 1
 
 
 def test_a_link_in_the_place_of_the_messages_is_not_followed(folder: TaskFolder, tmp_path: Path) -> None:

@@ -18,7 +18,7 @@ from cryptography import x509
 from cryptography.exceptions import InvalidSignature
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 from keys.quorum import CONTENT, NAMES, Key, a_task, committed, dealt, named, part, played, said, speak
-from parties import card, unlocked
+from parties import card, namesake, unlocked
 from strategies import CREATED
 
 from shares.documents.key_event import Approved, TaskFinished
@@ -242,7 +242,7 @@ def test_a_signature_needs_every_share(tmp_path: Path) -> None:
 def foreign_tasks() -> dict[str, Task]:
     key = dealt()
     outside = tuple(TaskParty(name=name, card=card(name)) for name in (*NAMES[:2], "auditor-east"))
-    exchanged = tuple(TaskParty(name=one, card=card(two)) for one, two in itertools.pairwise(NAMES))
+    exchanged = tuple(TaskParty(name=name, card=namesake(name)) for name in NAMES[:3])
     return {
         "another key": a_task(dealt(number=1)),
         "another epoch": a_task(key, epoch=2),
