@@ -31,8 +31,8 @@ SEND_TO = (
     "Next: send the task's folder, or the new message in it, to {name}, who puts it together: `shares key finish`."
 )
 DAMAGED = (
-    "Next: that says nothing of the task itself. Do nothing with this copy, and ask whoever made the task for the whole "
-    "folder."
+    "Next: that says nothing of the task itself. Do nothing with this copy, and ask whoever made the task for the "
+    "whole folder."
 )
 FAILED = (
     "Next: do not go on with this task. Keep its folder, find out what happened, and begin a new task; without whoever "

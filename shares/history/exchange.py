@@ -8,6 +8,7 @@ Does not: know what a message means, or who speaks when; ``next`` asks the task'
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
 import itertools
 import os
@@ -25,7 +26,7 @@ from shares.documents.task import Joining, Signing, Task
 from shares.documents.task_message import MAX_ROUNDS, TaskMessage
 from shares.errors import ParameterError, SharesError, StorageError, VerificationError
 from shares.history.rounds import Inbox
-from shares.storage import StrPath, leftovers, make_folder, read_file, write_new
+from shares.storage import StrPath, discard, leftovers, make_folder, read_file, write_new
 
 TASK_NAME, RECORD_NAME, MESSAGES_NAME = "task.json", "record.json", "messages"
 CONTENT_NAME, ISSUER_NAME, EARLIER_NAME = "content", "issuer", "earlier"
@@ -134,7 +135,7 @@ class TaskFolder:
 
         Raises:
             ParameterError: one of them is not what the task names.
-            StorageError: a name is taken, or the medium refuses.
+            StorageError: a name is taken, or the medium refuses; then no file of this call is left.
         """
         if (record is None) != (task.record is None) or (record is not None and not _is_named(record, task)):
             raise ParameterError("the record is not the one that the task names")
@@ -150,9 +151,14 @@ class TaskFolder:
             (RECORD_NAME, None if record is None else record.to_file()),
             (TASK_NAME, task.to_file()),
         )
-        for name, data in files:
-            if data is not None:
+        with contextlib.ExitStack() as undo:
+            for name, data in files:
+                # What a killed run has left of the same content need not be written again.
+                if data is None or (name != TASK_NAME and _holds(folder / name, data)):
+                    continue
                 write_new(folder / name, data, secret=False)
+                undo.callback(_discard_if_possible, folder / name)
+            undo.pop_all()
         return cls(folder)
 
     def content(self) -> bytes | None:
@@ -334,9 +340,14 @@ def _shown(name: str) -> str:
 
 def _holds(path: Path, data: bytes) -> bool:
     try:
-        return read_file(path, limit=MAX_MESSAGE) == data
+        return read_file(path, limit=len(data)) == data
     except StorageError:
         return False
+
+
+def _discard_if_possible(path: Path) -> None:
+    with contextlib.suppress(StorageError):
+        discard(path)
 
 
 def _wanted(task: Task) -> dict[str, Content | None]:

@@ -21,7 +21,6 @@ from shares.documents.event import Event
 from shares.documents.key_event import Approved, Content, TaskFinished
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
-from shares.documents.members import MAX_TEXT
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Signing, Task
 from shares.documents.task_message import Commitment, SignatureShare, TaskMessage
@@ -38,8 +37,6 @@ from shares.sharing.verifiable import public_share
 
 COMMITMENTS: Final = "commitments"
 SHARES: Final = "signature shares"
-_MOST_SUMMED: Final = 4
-"""How many lines of what a signer was told the journal keeps: of a certificate subject, issuer, time and number."""
 NONCES: Final = "nonces"
 """The folder, within a signer's own, where the nonces lie."""
 
@@ -254,7 +251,7 @@ class SigningPart:
             work="sign",
             custodian=self._me,
             content=self._course.work.content,
-            summary=_summary(told),
+            summary=told.summary(),
         )
 
     def speak(self, round: int, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Said:
@@ -392,12 +389,6 @@ def finish_signing(
     course = SigningCourse(task, record, issuer=issuer, earlier=earlier)
     signature = course.signature(inbox)
     return course.signable(inbox).finished(record.public_key.encode(), signature)
-
-
-def _summary(told: Description) -> str:
-    """Say in one line what a signer was told: the kind, and what comes first of the rest but size and digest."""
-    summary = "; ".join((told.kind, *told.lines[2 : 2 + _MOST_SUMMED]))
-    return summary if len(summary) <= MAX_TEXT else f"{summary[: MAX_TEXT - 4].rsplit(' ', 1)[0]} ..."
 
 
 def _misbehaved(names: Sequence[str]) -> str:

@@ -384,6 +384,30 @@ def test_no_folder_is_made_of_what_does_not_belong_together(tmp_path: Path) -> N
         assert not (tmp_path / "task").exists()
 
 
+def test_what_could_not_be_finished_is_not_in_the_way(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A full medium leaves nothing; what a killed run leaves is gone on from."""
+    record = key_record()
+    task, real = letter(record), exchange_module.write_new
+
+    def full(path: Path, data: bytes, *, secret: bool) -> None:
+        if Path(path).name == "task.json":
+            raise StorageError("no space left")
+        real(path, data, secret=secret)
+
+    with monkeypatch.context() as patched:
+        patched.setattr(exchange_module, "write_new", full)
+        with pytest.raises(StorageError, match="no space left"):
+            TaskFolder.create(tmp_path / "t", task, content=CONTENT, record=record)
+    assert [path.name for path in (tmp_path / "t").iterdir()] == ["messages"]
+    (tmp_path / "t" / "content").write_bytes(CONTENT)
+    TaskFolder.create(tmp_path / "t", task, content=CONTENT, record=record)
+    (tmp_path / "u").mkdir()
+    (tmp_path / "u" / "content").write_bytes(CONTENT[1:])
+    with pytest.raises(StorageError, match="exists already"):
+        TaskFolder.create(tmp_path / "u", task, content=CONTENT, record=record)
+    assert (tmp_path / "u" / "content").read_bytes() == CONTENT[1:]
+
+
 def test_a_folder_that_holds_a_task_gets_no_other(folder: TaskFolder) -> None:
     before = (folder.path / "task.json").read_bytes()
     with pytest.raises(StorageError, match="exists already"):
