@@ -182,7 +182,7 @@ def failure_lines(found: Standing) -> Iterator[str]:
         yield from prose(f"This copy of the task is damaged: {failure.what}.")
         yield from prose(DAMAGED)
         return
-    yield from prose(f"The task has failed: {failure.words()}.")
+    yield from prose(f"{failure.words()[:1].upper()}{failure.words()[1:]}.")
     yield from prose(FAILED)
     if isinstance(found.inbox.task.work, Joining) and found.round >= len(found.names) - 1:
         yield from prose(BORN_ELSEWHERE)

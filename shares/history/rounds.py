@@ -65,8 +65,8 @@ class Failure:
     what: str
 
     def words(self) -> str:
-        """Say what is wrong, and by whom, where that does not name the party already."""
-        return f"{self.by}: {self.what}" if self.by and self.by not in self.what else self.what
+        """Say that a task has failed, by whom, if somebody is named, and what is wrong."""
+        return f"the task has failed{f', by {self.by}' if self.by else ''}: {self.what}"
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -183,7 +183,7 @@ def _refuse_failed(folder: KeyFolder, found: Standing, key: OpenPartyKey) -> Non
         enter_once(folder, failed(found.inbox.task, found.failure), key)
         # Words about single messages follow: they are why it cannot be finished, where no one's fault is proved.
         raise VerificationError(
-            f"the task has failed: {found.failure.words()}",
+            found.failure.words(),
             hint="begin a new one; `shares task show` tells all that is wrong",
         )
 
