@@ -24,8 +24,8 @@ from shares.keys.description import Description
 _WIDTH = 96
 ASKED_BY = "Compare the task's fingerprint with whoever asks, by another way than the one the folder came by."
 SEND = (
-    "Next: send the task's folder, or the new message in it, to the others. When all have spoken, run this once more "
-    "with their messages: what your folder keeps for the task is erased then."
+    "Next: send the task's folder, or the new message in it, to the others. Run this again with their messages, until "
+    "the task is over for you: then what your folder keeps for it is erased."
 )
 SEND_TO = (
     "Next: send the task's folder, or the new message in it, to {name}, who puts it together: `shares key finish`."

@@ -22,7 +22,7 @@ from cli.test_key import tool
 from parties import unlocked
 
 from shares import clock
-from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, TaskFinished
+from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, TaskFailed, TaskFinished
 from shares.documents.task import Task
 from shares.documents.task_message import SignatureShare, TaskMessage
 from shares.group.edwards25519 import Scalar
@@ -156,7 +156,43 @@ class TestSigning:
         task = keyed.ask("sign", keyed.path("release.txt"), task="t")
         (task / "content").write_bytes(b"release 8\n")
         assert keyed.next(task, FIRST).code == 4
-        assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, watched=keyed.folder)
+        assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, "the whole folder", watched=keyed.folder)
+        shown = run("task", "show", task)
+        assert (shown.code, "This copy of the task is damaged" in shown.out) == (4, True)
+        assert "failed" not in shown.out
+        assert run("task", "show", task, "--json").json["state"] == "damaged"
+        assert events(keyed.key, TaskFailed) == []
+
+    def test_past_its_due_date_nobody_is_asked(self, keyed: Keyed, monkeypatch: pytest.MonkeyPatch) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        for name in (FIRST, SECOND):
+            assert keyed.next(task, name).code == 0
+        due = Task.parse((task / "task.json").read_bytes()).due
+        monkeypatch.setattr(clock, "now", lambda: due + timedelta(days=1))
+        refused = keyed.next(task, FIRST)
+        assert (refused.code, refused.out) == (4, "")
+        assert "the task was due" in refused.err
+        assert "Asked for by" not in refused.err
+        line = assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 3, FIRST, "nobody can speak in it")
+        assert "try again" not in line
+        assert "begin a new task" in run("task", "show", task).out
+
+    def test_whose_folder_it_is_is_said_before_anybody_is_asked(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        arguments = ["task", "next", task, "--mine", keyed.own(FIRST), *keyed.as_(SECOND, "--key"), "--yes"]
+        assert_refused(arguments, 4, f"not that of {SECOND}, but of {FIRST}", watched=keyed.folder)
+        assert keyed.next(task, FIRST).code == 0
+        assert_refused(arguments, 4, f"is the folder of {FIRST}", "name your own", watched=keyed.folder)
+        other = Keyed.make(keyed.folder / "other").dealt()
+        foreign = ["task", "next", task, "--mine", other.own(SECOND), *keyed.as_(SECOND, "--key"), "--yes"]
+        assert_refused(foreign, 4, "the key share is of the key", watched=keyed.folder)
+
+    def test_where_what_was_said_is_sent(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        told = [" ".join(keyed.next(task, name).out.split()) for name in (FIRST, SECOND, FIRST)]
+        to_office = "to harbour-office, who puts it together: `shares key finish`"
+        assert [to_office in one for one in told] == [False, False, True]
+        assert "to the others. Run this again with their messages" in told[0]
 
     def test_who_cheats_is_named(self, keyed: Keyed) -> None:
         """A signer whose machine says a wrong share, under its own good signature."""
@@ -181,6 +217,11 @@ class TestSigning:
         line = assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, "the task has failed", good.sender)
         assert other not in line
         assert not keyed.path("sig").exists()
+        # An auditor sees it in the office's journal, told once however often it is tried.
+        assert run(*finish(keyed, task, "--to", keyed.path("sig"))).code == 4
+        (told,) = events(keyed.key, TaskFailed)
+        assert (told.by, told.work, good.sender in told.reason) == (good.sender, "sign", True)
+        assert f"failed, by {good.sender}: " in " ".join(run("journal", "show", keyed.key).out.split())
 
     def test_nothing_is_fed_but_what_was_in_a_message(self, keyed: Keyed) -> None:
         task = keyed.ask("sign", keyed.path("release.txt"), task="t")
@@ -412,7 +453,9 @@ class TestOpening:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND, THIRD))
         assert_refused(finish(keyed, task, "--to", keyed.path("o")), 3, FIRST, THIRD, watched=keyed.folder)
         for name in (THIRD, FIRST):
+            assert "Enough have spoken" not in run("task", "show", task).out
             assert keyed.next(task, name).code == 0
+        assert "Enough have spoken" in run("task", "show", task).out
         target = keyed.path("opened")
         # Two of three are enough. Where the command fails all stays as it was, to be tried again.
         failed = run(*finish(keyed, task, "--", "sh", "-c", "cat >/dev/null; exit 9"))
@@ -421,11 +464,13 @@ class TestOpening:
         assert (fed.code, fed.json["error"]["status"]) == (7, 3)
         done = run(*finish(keyed, task, "--to", target))
         assert (done.code, "The message is open" in done.out, CONTENT.decode() in done.out) == (0, True, False)
+        assert "run `shares task next` once more" in " ".join(done.out.split())
         assert (target.read_bytes(), target.stat().st_mode & 0o777) == (CONTENT, 0o600)
         again = finish(keyed, task, "--to", keyed.path("again"))
         assert_refused(again, 2, "this task is over", watched=keyed.folder)
         (asked,), (finished,) = events(keyed.key, TaskAsked), events(keyed.key, TaskFinished)
         assert (asked.work, finished.work, finished.result) == ("open", "open", None)
+        assert asked.parties == (FIRST, SECOND, THIRD)
 
     def test_it_is_fed_to_a_command(self, keyed: Keyed) -> None:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
@@ -478,6 +523,18 @@ class TestOpening:
         refused = keyed.next(task, FIRST)
         assert refused.code == 4
         assert "encapsulated key" in refused.err
+
+    def test_the_journal_tells_that_too_few_answers_hold(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
+        keyed.answer(task, FIRST, SECOND, rounds=1)
+        (said,) = (task / "messages").glob(f"1-{SECOND}.json")
+        good = TaskMessage.parse(said.read_bytes())
+        with unlocked(SECOND) as cheat:
+            empty = {"task": good.task, "round": 1, "sender": SECOND, "seen": good.seen, "body": good.body}
+            said.write_bytes(TaskMessage.signed_by(cheat, **empty).to_file())
+        assert_refused(finish(keyed, task, "--to", keyed.path("o")), 3, SECOND)
+        (told,) = events(keyed.key, TaskFailed)
+        assert (told.work, SECOND in told.reason, FIRST in told.reason) == ("open", True, False)
 
     def test_what_was_in_it_is_nowhere_else(self, keyed: Keyed) -> None:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))

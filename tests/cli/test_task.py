@@ -95,7 +95,8 @@ def test_what_is_said_before_anything_is_done(harbour: Harbour) -> None:
         assert words in done.err
     assert done.out.splitlines() == [
         f"Said by north-pier, round 0, fresh keys: {harbour.task}/messages/0-north-pier.json",
-        "Next: send the task's folder, or the new message in it, to the others.",
+        "Next: send the task's folder, or the new message in it, to the others. Run this again with their",
+        "messages, until the task is over for you: then what your folder keeps for it is erased.",
         "Awaited, round 0, fresh keys: south-pier, light-house.",
     ]
     waiting = harbour.next("north-pier")
@@ -340,8 +341,9 @@ def test_a_failed_task_is_given_up_and_nothing_of_it_is_kept_but_what_was_said(h
     assert (done.code, "is erased" in done.out) == (0, True)
     assert kept(harbour, "north-pier") == ["done.json"]
     events = [entry.event for entry in load_journal(harbour.mine("north-pier")).entries]
-    assert [event.what for event in events] == ["approved", "noted"]
-    assert TaskFolder(harbour.task).task.digest().hex() in events[-1].remark  # type: ignore[union-attr]
+    assert [event.what for event in events] == ["approved", "task-failed"]
+    assert TaskFolder(harbour.task).task.digest() == events[-1].task  # type: ignore[union-attr]
+    assert events[-1].reason.startswith("two different messages of south-pier")  # type: ignore[union-attr]
     assert "over for north-pier" in harbour.next("north-pier").out
     assert_refused(drop(harbour, "north-pier", "--yes"), 2, "is over for north-pier", watched=harbour.root)
 
