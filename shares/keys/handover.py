@@ -80,7 +80,7 @@ def hand_over(
     born = KeyBorn(what="key-born", key=record.key, epoch=record.epoch, record=record.fingerprint, origin=record.origin)
     line = first_line(born, keys=(dealer,))
     places = {name: folder / name for name, folder in deliveries.items()}
-    act = _Act()
+    act = _Act(key_folder / RECORD_NAME)
     try:
         for share in dealt.shares:
             place = places[share.custodian]
@@ -100,7 +100,8 @@ def hand_over(
 class _Act:
     """The files and folders that one handing over has made so far, so that they can be taken back."""
 
-    def __init__(self) -> None:
+    def __init__(self, commit: Path) -> None:
+        self._commit = commit
         self._written: dict[Path, bytes] = {}
         self._folders: list[Path] = []
 
@@ -115,11 +116,15 @@ class _Act:
             raise VerificationError("what is read back differs from what was written", where=os.fspath(path))
 
     def undo(self) -> None:
-        """Remove what was written, the last first: a record never outlives its key shares."""
+        """Remove what was written, the last first. Where the dealer's record cannot be removed all stays: it must never
+        outlive the key shares."""
         for path, data in reversed(self._written.items()):
-            with contextlib.suppress(StorageError):
+            try:
                 if os.path.isfile(path) and read_file(path, limit=MAX_FILE) == data:
                     discard(path)
+            except StorageError:
+                if path == self._commit:
+                    return
         for folder in reversed(self._folders):
             with contextlib.suppress(OSError):  # Somebody else has put something there, or it was never made.
                 os.rmdir(folder)

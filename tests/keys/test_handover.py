@@ -95,6 +95,29 @@ def test_what_reads_back_otherwise_is_not_called_done(
     assert sorted(path.name for path in tmp_path.rglob("*")) == ["other", "stick"]
 
 
+def test_a_record_that_cannot_be_removed_keeps_its_key_shares(
+    dealt: DealtKey, tmp_path: Path, deliveries: dict[str, Path], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The dealer's medium turns read-only between the writing of the record and the look at it."""
+    record = tmp_path / "key" / "record.json"
+    real_read, real_discard = handover.read_back, handover.discard
+
+    def read_back(path: Path, limit: int) -> bytes:
+        return b"{}" if path == record else real_read(path, limit=limit)
+
+    def discard(path: Path) -> None:
+        if path.parent == record.parent:
+            raise StorageError("read-only file system")
+        real_discard(path)
+
+    monkeypatch.setattr(handover, "read_back", read_back)
+    monkeypatch.setattr(handover, "discard", discard)
+    with pytest.raises(VerificationError, match="differs"):
+        handed_over(dealt, tmp_path / "key", deliveries)
+    assert record.is_file()
+    assert all((folder / name / "share.json").is_file() for name, folder in deliveries.items())
+
+
 def test_nothing_of_another_key_is_touched(dealt: DealtKey, tmp_path: Path, deliveries: dict[str, Path]) -> None:
     handed_over(dealt, tmp_path / "key", deliveries)
     before = files_in(tmp_path)
