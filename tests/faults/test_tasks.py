@@ -96,7 +96,9 @@ def wrong_after_finishing(folder: Path) -> list[str]:
 
 @pytest.mark.usefixtures("strace")
 @pytest.mark.parametrize(
-    ("which", "wrong"), [("dealing", wrong_after_dealing), ("finishing", wrong_after_finishing)], ids=str
+    ("which", "wrong"),
+    [("dealing", wrong_after_dealing), ("finishing", wrong_after_finishing)],
+    ids=["dealing", "finishing"],
 )
 def test_a_step_that_is_killed_at_any_call_is_gone_on_with(
     tmp_path: Path, which: str, wrong: Callable[[Path], list[str]]
