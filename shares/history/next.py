@@ -151,8 +151,8 @@ def turn(folder: TaskFolder, course: Course, own: OwnSteps) -> Turn:
 def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> Path:
     """Say what is this party's to say in a round, or again what it has said, to the byte.
 
-    Message and state are put on the medium in one file; then the party's journal tells of it; then the message is
-    released. Whatever stops that, the next run goes on with the same message.
+    Message and state are put on the medium in one file; then the party's journal tells of it; then the part erases what
+    the message was made of; then it is released. Whatever stops that, the next run goes on with the same message.
 
     Args:
         folder: the task's.
@@ -187,7 +187,8 @@ def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnStep
             message = _say(at.round, earlier, course, part, own, key)
         if own.done() is None:
             _enter(own.mine, part.event(at.round, earlier), key)
-    return folder.release(message)
+        part.kept(at.round, earlier)
+        return folder.release(message)
 
 
 def finish(at: Turn, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> Outcome:

@@ -151,6 +151,16 @@ class Part(Protocol):
             VerificationError: something in the inbox is wrong in a way that ends the task.
         """
 
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Do what has to be done once this party's message of a round is kept, before it is released.
+
+        It may be done again: after a run that was killed meanwhile.
+
+        Args:
+            round: which.
+            inbox: with all earlier rounds complete.
+        """
+
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
         """Return what comes of the task for this party, all rounds being complete.
 

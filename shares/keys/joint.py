@@ -201,6 +201,9 @@ class JointPart:
             return self._confirm(inbox, state, received)
         raise ParameterError(f"nothing is said in round {round} of a joint generation")
 
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Nothing has to be erased before a message is released."""
+
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
         """Return the key share and, last, the record that all have signed.
 

@@ -193,6 +193,9 @@ class OpeningPart:
         partial = partial_result(share, encapsulated, proof_context(task, record, record.holder(self._me).index))
         return Said(body=Partial(what="partial"), state=Secret(0), sealed={self._work.receiver: partial})
 
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Nothing has to be erased before a message is released."""
+
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
         """Return a custodian's end of it. The receiver's state is kept until ``combine`` has made use of it."""
         task, receiver = self._course.task, self._work.receiver

@@ -241,15 +241,23 @@ class SigningPart:
         signed = frost.sign(record.holder(self._me).index, share, nonces, agreed)
         return Said(body=SignatureShare(what="signature-share", share=signed), state=Secret(0))
 
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Erase the nonces of a share that is kept, whatever becomes of the task.
+
+        Raises:
+            StorageError: the folder of nonces refuses.
+        """
+        if self._course.rounds[round] == SHARES:
+            self._store.erase(*self._course.commitments(inbox)[self._me])
+
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
-        """Check the signature and erase the nonces that it took. Whoever asked puts the signature together.
+        """Check the signature. Whoever asked puts it together.
 
         Raises:
             VerificationError: it does not verify: who sent a wrong share is named.
         """
         course = self._course
         signature = course.signature(inbox)
-        self._store.erase(*course.commitments(inbox)[self._me], self._purpose(course.agreed(inbox), inbox))
         task = course.task.digest()
         finished = TaskFinished(what="task-finished", task=task, work="sign", result=hashlib.sha256(signature).digest())
         words = ("The signature is made, and verifies with the key's public half. Your nonces are erased.",)

@@ -14,7 +14,7 @@ import pytest
 from shares.documents.base import Document, canonical
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
-from shares.documents.nonce_batch import NonceBatch, NonceMarks, NoncePair, pair_id
+from shares.documents.nonce_batch import BoundPair, NonceBatch, NonceMarks, NoncePair, pair_id
 from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Task
@@ -38,6 +38,7 @@ KINDS: dict[str, type[Document]] = {
     "north-pier.done.json": TaskDone,
     "opened.json": OpenedMessage,
     "pair.json": NoncePair,
+    "bound.json": BoundPair,
     "marks.json": NonceMarks,
     "batch.json": NonceBatch,
 }
@@ -130,10 +131,13 @@ def test_steps_and_what_is_left_of_them(drawn) -> None:
 
 def test_nonces_are_those_that_were_handed_out(drawn) -> None:
     pair, batch = NoncePair.parse(data("pair.json")), NonceBatch.parse(data("batch.json"))
-    marks = NonceMarks.parse(data("marks.json"))
+    marks, bound = NonceMarks.parse(data("marks.json")), BoundPair.parse(data("bound.json"))
     with party_key(drawn, "north-pier") as key:
         content = octets(pair.content(key.open))
+        assert octets(bound.content(key.open)) == content
     assert Scalar.decode(content[:32]) * BASE == pair.hiding == batch.commitments[0].hiding
     assert Scalar.decode(content[32:]) * BASE == pair.binding == batch.commitments[0].binding
     assert [one.pair for one in marks.marks] == [pair_id(one.hiding, one.binding) for one in batch.commitments]
-    assert pair.batch == marks.batch == marks.marks[0].pair
+    assert marks.is_by(batch.card)
+    assert (bound.purpose, bound.mark) == (drawn[0].seed("purpose"), drawn[0].seed("spent mark"))
+    assert pair.batch == bound.batch == marks.batch == marks.marks[0].pair

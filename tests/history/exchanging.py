@@ -72,10 +72,11 @@ class Draw:
 
 @dataclass
 class Drawer:
-    """A party's part. ``cheats`` makes it show no sum."""
+    """A party's part. ``cheats`` makes it show no sum; ``told`` are the rounds whose message it knows to be kept."""
 
     name: str
     cheats: bool = False
+    told: list[int] = dataclasses.field(default_factory=list)
 
     def prospect(self, round: int, inbox: Inbox) -> Sequence[str]:
         return [f"takes part in round {round} of the draw"]
@@ -95,6 +96,9 @@ class Drawer:
         digest = self._sum(state, received)
         told = () if self.cheats else (Complaint(against=self.name, reason=digest.hex()),)
         return Said(Review(what="review", complaints=told), Secret.of(TELLTALE + bytes(24)))
+
+    def kept(self, round: int, inbox: Inbox) -> None:
+        self.told.append(round)
 
     def _sum(self, state: Secret, received: Sequence[Received]) -> bytes:
         sent = received[1]

@@ -102,22 +102,27 @@ def test_content_of_any_size(tmp_path: Path, size: int) -> None:
     assert is_signed(key, finish_signing(task, key.record, inbox)[0], content)
 
 
-def test_nonces_are_erased_at_the_end_and_never_before(tmp_path: Path) -> None:
+def test_nonces_are_erased_when_the_share_is_kept_and_never_before(tmp_path: Path) -> None:
     key = dealt()
     task = a_task(key)
     inbox = played(task, key, tmp_path)
-    (spent,) = (tmp_path / ME / "nonces").glob("spent-*")
+    nonces = tmp_path / ME / "nonces"
+    (bound,) = nonces.glob("bound-*")
     # Asked again, a signer gives the same share, as after a crash.
     again = speak(task, ME, key, tmp_path, 1, Inbox(task, inbox.rounds[:1], CONTENT))
     assert again.body == inbox.rounds[1][ME].body
-    assert spent.stat().st_size > 0
     with unlocked(ME) as own:
-        outcome = part(task, ME, key, own, tmp_path).finish(inbox, Secret(0), ())
+        signer = part(task, ME, key, own, tmp_path)
+        signer.kept(0, Inbox(task, (), CONTENT))
+        assert bound.exists()
+        for _ in range(2):
+            signer.kept(1, Inbox(task, inbox.rounds[:1], CONTENT))
+        assert sorted(path.name[:5] for path in nonces.iterdir()) == ["batch", "spent"]
+        outcome = signer.finish(inbox, Secret(0), ())
     signature, _ = finish_signing(task, key.record, inbox)
     assert isinstance(outcome.event, TaskFinished)
     assert outcome.event.result == hashlib.sha256(signature).digest()
     assert not outcome.files
-    assert spent.stat().st_size == 0
     with pytest.raises(VerificationError, match="erased"):
         speak(task, ME, key, tmp_path, 1, Inbox(task, inbox.rounds[:1], CONTENT))
 

@@ -1,6 +1,6 @@
 """The golden samples of threshold keys: a key that was dealt, and a message that is opened by it, as files of a task.
 
-Source: shares/documents/FORMAT_KEYS.md, sections 21 to 28. No curve is needed: an Ed25519 public key is the base point
+Source: shares/documents/FORMAT_KEYS.md, sections 21 to 29. No curve is needed: an Ed25519 public key is the base point
 times a number that its seed gives (RFC 8032, section 5.1.5), so seeds are drawn, and numbers worked out from them.
 May import: the standard library, `cryptography` and the `_v1` modules beside it.
 Secret: nothing; keys here are made up, and worthless.
@@ -155,7 +155,7 @@ def step(said: Json, to: Json, state: bytes) -> Json:
 
 
 def nonces(key: Json) -> dict[str, Json]:
-    """Make a batch of two pairs, the first pair, and the marks of both."""
+    """Make a batch of two pairs, the first pair, as it is before and after it is spent, and the marks of both."""
     north = key["custodians"][0]["card"]
     pairs = [{what: point_of(seed(f"{what} {i}")) for what in ("hiding", "binding")} for i in range(2)]
     names = [
@@ -166,10 +166,13 @@ def nonces(key: Json) -> dict[str, Json]:
     content = b"".join(number_of(seed(f"{what} 0")).to_bytes(32, "little") for what in ("hiding", "binding"))
     batch: Json = {"kind": "nonce-batch", "version": 1, **some(start, "key", "epoch", "record", "signer")}
     batch |= {"commitments": pairs, "created": "2026-03-01T10:00:00Z", "card": north}
-    marks = [{"pair": names[0], "mark": seed("mark").hex()}, {"pair": names[1], "mark": None}]
+    bound = {**start, "kind": "nonce-bound", "purpose": seed("purpose").hex(), "mark": seed("spent mark").hex()}
+    marks: Json = {"kind": "nonce-marks", "version": 1, **some(start, "key", "epoch", "record", "signer", "batch")}
+    marks |= {"marks": [{"pair": names[0], "mark": seed("mark").hex()}, {"pair": names[1], "mark": None}]}
     return {
         "pair.json": enveloped(start, north, content, start),
-        "marks.json": {"kind": "nonce-marks", "version": 1, "batch": names[0], "marks": marks},
+        "bound.json": enveloped(bound, north, content, bound),
+        "marks.json": {**marks, "signature": sign("north-pier", "nonce-marks", marks)},
         "batch.json": {**batch, "signature": sign("north-pier", "nonce-batch", batch)},
     }
 
