@@ -115,7 +115,7 @@ def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnStep
         if own.done() is None:
             _enter(own.mine, part.event(at.round, earlier), key)
         part.kept(at.round, earlier)
-    return folder.release(message)
+        return folder.release(message)
 
 
 def check_time(task: Task) -> None:
