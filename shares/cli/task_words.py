@@ -140,7 +140,10 @@ def about_lines(folder: TaskFolder, found: Standing) -> Iterator[str]:
 
 def indented(line: str) -> list[str]:
     """Break a line of what is about to be done, so that nothing in it begins a line of its own."""
-    first = "  - " if line[:1].strip() else "  "
+    if line[:1].strip():
+        line, first = " ".join(line.split()), "  - "
+    else:
+        first = "  "  # Of what the content says, each space counts.
     return textwrap.wrap(line, _WIDTH, initial_indent=first, subsequent_indent="    ")
 
 

@@ -357,10 +357,7 @@ def test_who_has_said_nothing_gives_a_task_up_and_never_speaks_in_it(harbour: Ha
 
 @pytest.mark.parametrize(("reply", "code"), [("y", 0), ("n", 1)])
 def test_giving_up_asks_and_who_has_confirmed_is_warned(harbour: Harbour, reply: str, code: int) -> None:
-    for _ in range(4):
-        for name in NAMES:
-            harbour.next(name)
-    harbour.next("north-pier")
+    to_the_last_round(harbour)
     assert "step-5.json" in kept(harbour, "north-pier")
     with on_terminal(*drop(harbour, "north-pier")) as terminal:
         terminal.wait_for("You have signed the record")
