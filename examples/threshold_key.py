@@ -5,10 +5,11 @@
 
 makes in the new FOLDER a folder for the office and for each of five custodians, as if each were a machine of its own.
 A machine runs the commands of `shares` on its own folder alone; whatever goes to another goes by `carry`, which copies
-messages of a task and nothing else, as a stick or mail would. Then three of five sign; `openssl` verifies; somebody who
-has only the `cryptography` package sends a message, which three open; and one signer cheats and is named.
+messages of a task and nothing else, as a stick or mail would. Then three of five sign; `openssl` and `ssh-keygen`
+verify; somebody who has only the `cryptography` package sends a message, which three open; and one signer cheats and is
+named.
 
-The command `shares` and `openssl` have to be there. The demo's passphrases protect nothing.
+The commands `shares`, `openssl` and `ssh-keygen` have to be there. The demo's passphrases protect nothing.
 """
 
 import filecmp
@@ -84,9 +85,12 @@ def say(title: str, *lines: str) -> None:
         print(f"  {line}")
 
 
-def run(*words: str | Path) -> str:
-    """Run an ordinary program; it has to succeed."""
-    return subprocess.run(words, capture_output=True, text=True, check=True).stdout.strip()
+def run(*words: str | Path, given: str = "", code: int = 0) -> str:
+    """Run an ordinary program; return what it says."""
+    told = subprocess.run(words, input=given, capture_output=True, text=True, check=False)
+    if told.returncode != code:
+        sys.exit(f"{words[0]}: code {told.returncode}\n{told.stderr}")
+    return (told.stdout or told.stderr).strip()
 
 
 def carry(task: str, machines: list[Machine]) -> None:
@@ -116,6 +120,7 @@ def answer(task: str, author: Machine, machines: list[Machine]) -> None:
 
 
 def main(folder: Path) -> int:
+    folder = folder.resolve()  # Each command runs in the folder of its own machine.
     folder.mkdir(mode=0o700)
     office = Machine(folder, OFFICE)
     custodians = [Machine(folder, name) for name in CUSTODIANS]
@@ -160,6 +165,13 @@ def main(folder: Path) -> int:
     verify = ["openssl", "pkeyutl", "-verify", "-pubin", "-inkey", public, "-rawin", "-in", release, "-sigfile"]
     say("Three of five have signed a release:", f"openssl: {run(*verify, signature)}")
 
+    for_ssh = signed("release-ssh", "release.txt.sig", "sign", "key", "release.txt", "--openssh=release")
+    office.shares("key", "show", "key", "--openssh=key.pub")
+    allowed = office.folder / "allowed"
+    allowed.write_text(f"the-quorum {(office.folder / 'key.pub').read_text()}")
+    verify_ssh = ["ssh-keygen", "-Y", "verify", "-f", allowed, "-I", "the-quorum", "-n", "release", "-s", for_ssh]
+    say("And once more, for OpenSSH:", f"ssh-keygen: {run(*verify_ssh, given=release.read_text())}")
+
     root = signed("root", "root.pem", "root", "key", "CN=Harbour Trust Root,O=Harbour Trust")
     run("openssl", "req", "-newkey", "ed25519", "-nodes", "-keyout", office.folder / "below.key", "-out",
         office.folder / "below.req", "-subj", "/CN=Harbour Intermediate/O=Harbour Trust")  # fmt: skip
@@ -168,6 +180,10 @@ def main(folder: Path) -> int:
         "They have signed a root and an intermediate certificate:",
         f"openssl: {run('openssl', 'verify', '-CAfile', root, below)}",
     )
+    reason = "--reason=cessationOfOperation"
+    revoked = signed("revoked", "revoked.pem", "revoke", "key", "below.pem", "--issuer=root.pem", reason)
+    check = ["openssl", "verify", "-crl_check", "-CRLfile", revoked, "-CAfile", root, below]
+    say("And revoked the intermediate one:", *(f"openssl: {line}" for line in run(*check, code=2).splitlines()))
 
     # Somebody who has the public key and the cryptography package sends a message; the office is to read it.
     plain = folder / "plain.txt"

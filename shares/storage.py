@@ -1,4 +1,4 @@
-"""Whole files: read, written, renamed, undone; folders. Reading cannot be led astray, and files are whole or absent.
+"""Whole files: read, written, undone; folders. Reading cannot be led astray, and files are whole or absent.
 
 Source: open(2), mkdir(2), posix_fadvise(2) of the Linux manual pages.
 May import: errors, memory, streams.
@@ -23,7 +23,6 @@ from shares.streams import (
     Octets,
     Reader,
     folder_of,
-    give_name,
     medium_sync,
     new_file,
     refusing,
@@ -209,59 +208,6 @@ def discard(path: StrPath) -> None:
     with refusing(path), folder_of(path) as folder:
         remove(folder, path.name)
         sync_folder(folder)
-
-
-def rename_new(path: StrPath, name: str) -> None:
-    """Give a file another name in its folder, in one step that never replaces; on return that is on the medium.
-
-    Of several processes that do so to one file at once, one succeeds. Where a medium has links alone, more than one
-    may, and each then finds all the names in the folder.
-
-    Args:
-        path: the file.
-        name: its new name, in the same folder.
-
-    Raises:
-        StorageError: the file is missing, the name is taken, or the medium refuses or has no such step.
-    """
-    path = Path(path)
-    with refusing(path), folder_of(path) as folder:
-        if not give_name(folder, path.name, name):
-            raise StorageError(
-                "lies on a medium where files cannot be renamed safely",
-                where=os.fspath(path),
-                hint="use another medium",
-            )
-        remove(folder, path.name)
-        sync_folder(folder)
-
-
-def sync(folder: StrPath) -> None:
-    """Put on the medium what was named, renamed and removed in a folder, by whomever.
-
-    Raises:
-        StorageError: the folder is missing, or the medium refuses.
-    """
-    with refusing(folder), folder_of(Path(folder) / "any") as held:
-        sync_folder(held)
-
-
-def empty(path: StrPath) -> None:
-    """Take away what a file holds, and leave its name. The medium may keep the old blocks.
-
-    Args:
-        path: a regular file; no link is followed.
-
-    Raises:
-        StorageError: it is missing, or the system refuses.
-    """
-    with refusing(path):
-        descriptor = os.open(path, os.O_WRONLY | os.O_NOFOLLOW | os.O_CLOEXEC | os.O_NONBLOCK)
-        try:
-            os.ftruncate(descriptor, 0)
-            os.fsync(descriptor)
-        finally:
-            os.close(descriptor)
 
 
 def _read(path: StrPath, limit: int, *, fresh: bool) -> bytes:

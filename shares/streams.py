@@ -206,7 +206,7 @@ def new_file(path: StrPath, *, secret: bool) -> Iterator[Write]:
         with _created(folder, temporary, path, mode, undo) as write:
             yield write
         with refusing(path):
-            named = give_name(folder, temporary, path.name)
+            named = _give_name(folder, temporary, path.name)
         if not named:
             with _created(folder, path.name, path, mode, undo) as write:
                 _copy(folder, temporary, path, write)
@@ -265,7 +265,7 @@ def _copy(folder: int, name: str, path: Path, write: Write) -> None:
                 write(filled)
 
 
-def give_name(folder: int, temporary: str, name: str) -> bool:
+def _give_name(folder: int, temporary: str, name: str) -> bool:
     """Give a finished file another name unless that is taken; say whether this medium has a way to do so.
 
     The old name may stay beside it: it is the caller's to remove.

@@ -32,6 +32,12 @@ def card(name: str) -> PartyCard:
     return party(name).card
 
 
+@functools.cache
+def namesake(name: str) -> PartyCard:
+    """A card of the same name by another party."""
+    return new_party(name, passphrase(name), cost=QUICK).card
+
+
 def unlocked(name: str) -> OpenPartyKey:
     """A party's key, opened; whoever asked wipes it."""
     return party(name).open(passphrase(name))

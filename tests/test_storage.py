@@ -546,29 +546,11 @@ def test_discarding_removes_one_file_and_may_be_repeated(tmp_path: Path) -> None
     assert (tmp_path / "folder").is_dir()
 
 
-# Renaming, emptying, many files at once.
+# Many files at once.
 
 
-def test_renaming_never_replaces(tmp_path: Path, medium: str) -> None:
-    for name in ("a", "b"):
-        storage.write_new(tmp_path / name, name.encode(), secret=True)
-    if medium == "create":
-        with pytest.raises(StorageError, match="renamed safely"):
-            storage.rename_new(tmp_path / "a", "c")
-    else:
-        storage.rename_new(tmp_path / "a", "c")
-        assert (tmp_path / "c").read_bytes() == b"a"
-        with pytest.raises(StorageError, match="exists already"):
-            storage.rename_new(tmp_path / "b", "c")
-        with pytest.raises(StorageError, match="does not exist"):
-            storage.rename_new(tmp_path / "a", "d")
-    assert sorted(os.listdir(tmp_path)) == (["a", "b"] if medium == "create" else ["b", "c"])
-
-
-@pytest.mark.parametrize("act", ["rename_new", "sync", "write_many_new"])
-def test_a_folder_is_put_on_the_medium(tmp_path: Path, act: str, monkeypatch: pytest.MonkeyPatch) -> None:
-    """Each of these ends with fsync(2) of the folder."""
-    (tmp_path / "a").write_bytes(b"")
+def test_a_folder_is_put_on_the_medium(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Writing many files ends with fsync(2) of the folder."""
     synced: list[str] = []
     real = os.fsync
 
@@ -577,29 +559,8 @@ def test_a_folder_is_put_on_the_medium(tmp_path: Path, act: str, monkeypatch: py
         real(descriptor)
 
     monkeypatch.setattr(os, "fsync", watch)
-    match act:
-        case "rename_new":
-            storage.rename_new(tmp_path / "a", "b")
-        case "sync":
-            storage.sync(tmp_path)
-        case _:
-            storage.write_many_new(tmp_path, {"b": DATA})
+    storage.write_many_new(tmp_path, {"b": DATA})
     assert synced[-1] == os.fspath(tmp_path)
-
-
-def test_emptying_leaves_the_name(tmp_path: Path) -> None:
-    storage.write_new(tmp_path / "file", DATA, secret=True)
-    (tmp_path / "link").symlink_to("file")
-    os.mkfifo(tmp_path / "pipe")
-    (tmp_path / "folder").mkdir()
-    for name in ("link", "pipe", "folder", "missing"):
-        with pytest.raises(StorageError):
-            storage.empty(tmp_path / name)
-    assert (tmp_path / "file").read_bytes() == DATA
-    for _ in range(2):
-        storage.empty(tmp_path / "file")
-        assert (tmp_path / "file").read_bytes() == b""
-    assert mode_of(tmp_path / "file") == 0o600
 
 
 @pytest.mark.parametrize("count", [0, 1, 15, 16, 40])

@@ -18,8 +18,9 @@ from shares.documents.key_share import KeyShare
 from shares.errors import ParameterError
 from shares.group.montgomery import public_of
 from shares.history.files import RECORD_NAME
-from shares.keys.checking import check_belongs, check_record, opened, public_key_in
+from shares.keys.checking import check_record, public_key_in
 from shares.keys.folder import SHARE_NAME, load_key_record
+from shares.keys.own_share import check_belongs, own_share
 from shares.keys.public_key import pem, sealing_pem, ssh_line
 from shares.storage import read_file, write_new
 
@@ -33,14 +34,14 @@ SHARE_PROVES = (
 )
 SHARE_CLOSED = (
     "This shows that the key share names the record with fingerprint {fingerprint}, and that no accident befell the "
-    "file. It was not opened: give --key to compare what is in it with the record."
+    "file. It was not opened: give --key to compare what is in it with the record. {who}"
 )
 RECORD_ALONE = (
     "This proves that the record with fingerprint {fingerprint} agrees with itself and is signed by all who must sign "
     "it. {who} It proves nothing of any key share: each custodian checks their own."
 )
-UNKNOWN = "Who those are, the fingerprints of their cards say: compare them aloud, or give --trust CARD."
-KNOWN = "One who signed it has a card that you trust."
+UNKNOWN = "Who has signed the record, the fingerprints of their cards say: compare them aloud, or give --trust CARD."
+KNOWN = "One who signed the record has a card that you trust."
 
 
 class _InOrder(click.Group):
@@ -88,18 +89,21 @@ def show(source: str, pem_file: str | None, ssh_file: str | None, x25519_file: s
     """
     record = _record(Path(source))
     public_key = record.public_key.encode()
-    exports = {
-        pem_file: pem(public_key),
-        ssh_file: ssh_line(public_key, record.label).encode(),
-        x25519_file: sealing_pem(public_of(record.public_key)),
-    }
-    wanted = {path: data for path, data in exports.items() if path is not None}
-    for path in wanted:
+    exports = (
+        (pem_file, pem(public_key)),
+        (ssh_file, ssh_line(public_key, record.label).encode()),
+        (x25519_file, sealing_pem(public_of(record.public_key))),
+    )
+    wanted = [(path, data) for path, data in exports if path is not None]
+    written = [path for path, _ in wanted]
+    for path in written:
         refuse_taken(path)
-    for path, data in wanted.items():
+    if len({os.path.abspath(path) for path in written}) < len(written):
+        raise ParameterError("two public keys would go to one file", where=written[-1], hint="name a file for each")
+    for path, data in wanted:
         write_new(path, data, secret=False)
-    members = {"done": True, **facts(record), "written": list(wanted)}
-    print_result(members, [*_shown(record), *(f"Written: {path}" for path in wanted)], as_json=as_json)
+    members = {"done": True, **facts(record), "written": written}
+    print_result(members, [*_shown(record), *(f"Written: {path}" for path in written)], as_json=as_json)
 
 
 @click.command(short_help="Check a key share against the public record, and the record itself.")
@@ -141,7 +145,7 @@ def verify(
         if share is None:
             raise ParameterError("there is no key share here that --key could open", where=source)
         with opening((key_file,), passphrase_files, descriptors) as at_hand:
-            opened(share, record, signers((key_file,), at_hand)[0].open)
+            own_share(share, record, share.custodian, signers((key_file,), at_hand)[0].open)
     proves = RECORD_ALONE if share is None else SHARE_CLOSED if key_file is None else SHARE_PROVES
     proves = proves.format(fingerprint=record.fingerprint, who=KNOWN if trusted_files else UNKNOWN)
     members = {
@@ -153,9 +157,14 @@ def verify(
         "trusted": bool(trusted_files),
         "proves": proves,
     }
-    what = f"The key share of {share.custodian} " if share else "The record "
+    if share is None:
+        what = "The record holds"
+    elif key_file is None:
+        what = f"The key share of {share.custodian} names this record, and was not opened"
+    else:
+        what = f"The key share of {share.custodian} holds"
     lines = [
-        what + f"holds: {record.label}, {quorum(record)}.",
+        f"{what}: {record.label}, {quorum(record)}.",
         *(["It is the key whose public half was given."] if known else []),
         *prose(proves),
     ]

@@ -10,7 +10,7 @@ Does not: answer a task; ``shares task next`` does, on each custodian's machine.
 from __future__ import annotations
 
 import functools
-import hashlib
+import shlex
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from datetime import timedelta
@@ -21,7 +21,7 @@ import click
 from shares import clock
 from shares.cli.intervals import interval, later
 from shares.cli.keys import opening, signers
-from shares.cli.output import filled, json_option, print_result, prose
+from shares.cli.output import filled, json_option, print_result, prose, warn
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
 from shares.documents.base import MAX_FILE
@@ -31,15 +31,21 @@ from shares.documents.nonce_batch import NonceBatch
 from shares.documents.task import Task
 from shares.keys.asking import ask, check_free, check_signers, new_signing, unused
 from shares.keys.folder import KeyFolder
-from shares.keys.ssh_signature import to_be_signed
+from shares.keys.forms import Signable
 from shares.storage import read_file
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
 NEXT = (
     "Next: carry the folder {path} to each of them, or send copies and bring the messages together in its folder "
-    "messages; each runs `shares task next {path} --mine FOLDER --key KEY`, until `shares task show {path}` says that "
-    "all have spoken. Then `shares key finish`."
+    "messages; each runs `shares task next {path} --mine KEYDIR --key KEY`, until `shares task show {path}` says that "
+    "all have spoken. Then:"
+)
+FINISH = "  shares key finish {folder} {path} --to FILE --sign {signer}"
+LONG = timedelta(days=90)
+KEEPS = (
+    "until {due} or the task's end each of them keeps what they need for it, sealed, in their folder. A shorter --due "
+    "leaves that about for less long."
 )
 
 
@@ -127,27 +133,16 @@ asked_custodian_option = click.option(
 )
 
 
-def ask_to_sign(
-    folder: KeyFolder,
-    content: bytes,
-    asked: Asked,
-    *,
-    form: Form,
-    namespace: str | None = None,
-    issuer: bytes | None = None,
-    words: Sequence[str] = (),
-) -> None:
+def ask_to_sign(folder: KeyFolder, wanted: Signable, asked: Asked, *, words: Sequence[str] = ()) -> None:
     """Ask for a signature as the options say, and print what was asked.
 
     Args:
         folder: the key's.
-        content: what is to be signed.
+        wanted: what is to be signed.
         asked: the options.
-        form: what becomes of it.
-        namespace: of an OpenSSH signature.
-        issuer: the certificate above the one that is asked for.
         words: about the content, for whoever asks.
     """
+    wanted.message(folder.record.public_key.encode())  # What it refuses nobody is asked for.
     check_signers(folder.record, asked.names)
     check_free(asked.path)
     batches = [NonceBatch.parse(read_file(path, limit=MAX_FILE), where=path) for path in asked.batches]
@@ -155,37 +150,59 @@ def ask_to_sign(
     with opening((), asked.passphrase_files, asked.descriptors) as at_hand:
         author = signers((asked.signer_file,), at_hand)[0]
         task = new_signing(
-            content,
+            wanted.content,
             folder.record,
             signers=asked.names,
             author=author,
             due=later(clock.now(), asked.due),
-            form=form,
-            namespace=namespace,
+            form=wanted.form,
+            namespace=wanted.namespace,
+            issuer=wanted.issuer,
+            earlier=wanted.earlier,
             commitments=commitments,
             remark=asked.remark,
         )
         with held_signals():
-            ask(folder, task, asked.path, content, author, issuer=issuer)
-            print_asked(task, asked.path, words, as_json=asked.as_json)
+            ask(folder, task, asked.path, wanted.content, author, issuer=wanted.issuer, earlier=wanted.earlier)
+            print_asked(task, asked.path, words, as_json=asked.as_json, then=finish_line(folder, asked))
 
 
-def print_asked(task: Task, path: str, words: Sequence[str], *, as_json: bool, after: str = NEXT) -> None:
-    """Print what was asked, and what comes next."""
+def finish_line(folder: KeyFolder, asked: Asked) -> str:
+    """Return the command that will put together what comes of a task, to be pasted."""
+    words = {"folder": folder.where, "path": asked.path, "signer": asked.signer_file}
+    return FINISH.format(**{name: shlex.quote(word) for name, word in words.items()})
+
+
+def print_asked(
+    task: Task, path: str, words: Sequence[str], *, as_json: bool, after: str = NEXT, then: str | None = None
+) -> None:
+    """Print what was asked, and what comes next.
+
+    Args:
+        task: as it was asked for.
+        path: its folder.
+        words: about its content, for whoever asked.
+        as_json: whether a program reads it.
+        after: what comes next; ``{path}`` in it is the folder.
+        then: a command for the end, on a line of its own.
+    """
+    if task.due - task.created > LONG and not as_json:
+        warn(KEEPS.format(due=clock.to_text(task.due)))
     members = {
         "done": True,
         "task": path,
         "digest": task.digest().hex(),
         "fingerprint": task.fingerprint,
         "work": task.work.what,
-        "parties": list(task.names),
+        "parties": list(task.asked),
         "due": clock.to_text(task.due),
     }
     lines = [
         *prose(f"Asked: {task.words()}."),
         *words,
         f"Fingerprint of the task, to read aloud: {task.fingerprint}",
-        *prose(after.format(path=path)),
+        *prose(after.format(path=shlex.quote(path))),
+        *([then] if then else []),
     ]
     print_result(members, lines, as_json=as_json)
 
@@ -213,7 +230,4 @@ def sign_command(folder: str, content: str, namespace: str | None, asked: Asked)
         --sign harbour-office.key.json --passphrase-file harbour-office.passphrase
     """
     form: Form = "plain" if namespace is None else "openssh"
-    data = read_file(content, limit=MAX_CONTENT)
-    if namespace is not None:
-        to_be_signed(hashlib.sha512(data).digest(), namespace)  # What it refuses nobody is asked for.
-    ask_to_sign(KeyFolder(folder), data, asked, form=form, namespace=namespace)
+    ask_to_sign(KeyFolder(folder), Signable(read_file(content, limit=MAX_CONTENT), form, namespace), asked)

@@ -23,6 +23,7 @@ from shares.keys import certificates, revocation
 from shares.keys.certificates import Purpose
 from shares.keys.content import described
 from shares.keys.folder import KeyFolder
+from shares.keys.forms import Signable
 from shares.keys.revocation import REASONS, Revoked
 from shares.storage import read_file
 
@@ -61,7 +62,7 @@ def root_command(folder: str, subject: str, valid: timedelta, path_length: int |
         not_after=later(now, valid),
         path_length=path_length,
     )
-    ask_to_sign(key, body, asked, form="certificate", words=_words(key, body))
+    ask_to_sign(key, Signable(body, "certificate"), asked, words=_words(key, body))
 
 
 @click.command("certify", short_help="Ask custodians to sign a certificate for a request.")
@@ -115,7 +116,7 @@ def certify_command(
     )
     dropped = certificates.left_out(request, purpose)
     left = [f"Left out of what the request asks for: {', '.join(dropped)}."] if dropped else []
-    ask_to_sign(key, body, asked, form="certificate", issuer=issuer, words=[*_words(key, body), *left])
+    ask_to_sign(key, Signable(body, "certificate", issuer=issuer), asked, words=[*_words(key, body), *left])
 
 
 @click.command("revoke", short_help="Ask custodians to sign a revocation list.")
@@ -156,6 +157,7 @@ def revoke_command(
     """
     key, now = KeyFolder(folder), clock.now()
     public_key, issuer = key.record.public_key.encode(), read_file(issuer_file, limit=MAX_FILE)
+    earlier = None if earlier_file is None else read_file(earlier_file, limit=MAX_FILE)
     serials = [
         revocation.serial_of(read_file(path, limit=MAX_FILE), issuer=issuer, public_key=public_key)
         for path in certificate_files
@@ -166,9 +168,10 @@ def revoke_command(
         issuer=issuer,
         this_update=now,
         next_update=later(now, until),
-        earlier=None if earlier_file is None else read_file(earlier_file, limit=MAX_FILE),
+        earlier=earlier,
     )
-    ask_to_sign(key, body, asked, form="revocation-list", issuer=issuer, words=_words(key, body)[:-1])
+    wanted = Signable(body, "revocation-list", issuer=issuer, earlier=earlier)
+    ask_to_sign(key, wanted, asked, words=_words(key, body)[:-1])
 
 
 def _words(folder: KeyFolder, body: bytes) -> list[str]:

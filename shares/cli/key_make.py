@@ -46,9 +46,9 @@ OLD_KEY = (
 
 JOIN_NEXT = (
     "Next: carry the folder {path} to each custodian, or send copies and bring the messages together in its folder "
-    "messages; each runs `shares task next {path} --mine FOLDER --key KEY`, with a new folder for the key of their "
-    "own, once in every round. `shares task show {path}` says who is awaited. The key is born when all have the record "
-    "and have compared its fingerprint."
+    "messages; each runs `shares task next {path} --mine KEYDIR --key KEY`, with a new folder of their own for the "
+    "key, once in every round and once more at the end. `shares task show {path}` says who is awaited. The key is born "
+    "when all have the record and have compared its fingerprint."
 )
 
 custodian_option = click.option(
@@ -156,7 +156,7 @@ def deal_command(
                 f"Fingerprint of the record, to read aloud: {record.fingerprint}",
                 "Checked: each key share against the record's commitments, and all files read back.",
                 *prose(
-                    "Next: bring each folder to its custodian, who checks it there with `shares key verify FOLDER "
+                    "Next: bring each folder to its custodian, who checks it there with `shares key verify KEYDIR "
                     "--key KEY`; then destroy the copies in the delivery folders."
                 ),
             ]

@@ -9,6 +9,8 @@ Does not: print what was in a message.
 
 from __future__ import annotations
 
+import hashlib
+import shlex
 from pathlib import Path
 from typing import get_args
 
@@ -17,24 +19,24 @@ import click
 from shares import clock
 from shares.cli.feeding import FeedsCommand
 from shares.cli.intervals import later
-from shares.cli.key_ask import Asked, asked_custodian_option, asking_options, author_option, print_asked
+from shares.cli.key_ask import Asked, asked_custodian_option, asking_options, author_option, finish_line, print_asked
 from shares.cli.keys import opening, signers
 from shares.cli.output import filled, json_option, print_result, prose, refuse_taken
 from shares.cli.passphrases import passphrase_options
 from shares.cli.signals import held_signals
 from shares.custody.deliver import to_command, to_file
 from shares.documents.base import MAX_FILE
-from shares.documents.key_event import MAX_CONTENT, NoncesCommitted
+from shares.documents.key_event import MAX_CONTENT, Form, NoncesCommitted
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Cipher, Opening, Signing
 from shares.errors import ParameterError
-from shares.history.exchange import TaskFolder
+from shares.history.exchange import CONTENT_NAME, TaskFolder
 from shares.keys.asking import ask, check_free
-from shares.keys.checking import opened
 from shares.keys.finishing import begin_opening, enter_once, finished, open_message, signed
 from shares.keys.folder import KeyFolder
 from shares.keys.nonces import NonceStore
 from shares.keys.opening_task import new_opening
+from shares.keys.own_share import own_share
 from shares.keys.signing import NONCES
 from shares.memory import Secret
 from shares.storage import read_file, write_new
@@ -46,18 +48,38 @@ COPIES = (
 )
 OPEN_NEXT = (
     "Next: carry the folder {path} to each of them, or send copies and bring the messages together in its folder "
-    "messages; each runs `shares task next {path} --mine FOLDER --key KEY` once. As soon as enough have, "
-    "`shares key finish` opens the message here, where the key that they seal for lies."
+    "messages; each runs `shares task next {path} --mine KEYDIR --key KEY`. As soon as enough have, the message is "
+    "opened here, where the key that they seal for lies:"
 )
 NOT_FOR_LONG = (
     "Caution: X25519 does not withstand quantum computers. It is not for what must stay secret for ten years."
 )
-VERIFY = {
-    "plain": "Next: verify it as others will, for instance with `openssl pkeyutl -verify -rawin`.",
-    "openssh": "Next: verify it as others will, with `ssh-keygen -Y verify`.",
-    "certificate": "Next: verify it as others will, for instance with `openssl verify`, and look at what it says.",
-    "revocation-list": "Next: verify it as others will, for instance with `openssl crl -verify`, and publish it.",
+VERIFY: dict[Form, tuple[str, ...]] = {
+    "plain": (
+        "Next: verify it as others will, with the public key in a new file PEM:",
+        "  shares key show {folder} --pem PEM",
+        "  openssl pkeyutl -verify -pubin -inkey PEM -rawin -in {content} -sigfile {target}",
+    ),
+    "openssh": (
+        "Next: verify it as others will, with the public key in a new file PUB, and in ALLOWED who may sign:",
+        "  shares key show {folder} --openssh PUB",
+        '  echo "{name} $(cat PUB)" > ALLOWED',
+        "  ssh-keygen -Y verify -f ALLOWED -I {name} -n {namespace} -s {target} < {content}",
+    ),
+    "certificate": (
+        "Next: look at what it says, and verify it as others will, with the root certificate in ROOT:",
+        "  openssl x509 -in {target} -noout -text",
+        "  openssl verify -CAfile ROOT {target}",
+    ),
+    "revocation-list": (
+        "Next: look at what it says, verify it with the certificate of the key in ISSUER, and publish it:",
+        "  openssl crl -in {target} -noout -text -verify -CAfile ISSUER",
+    ),
 }
+ERASE = (
+    "The others keep what they needed for it until they run `shares task next` once more with all messages: bring the "
+    "folder {path} around again, or send copies; what is left of the task is erased then, and nothing is asked."
+)
 
 
 @click.command("commit", short_help="Make nonces beforehand, for signatures to come.")
@@ -78,8 +100,9 @@ def commit_command(
 ) -> None:
     """Make nonces in a custodian's KEYDIR, and write the commitments to them for whoever asks for signatures.
 
-    A signer who has committed is visited once for a signature instead of twice. The nonces stay here, wrapped for your
-    card; each is used once, and the commitments in FILE are public.
+    A signer who has committed speaks once for a signature instead of twice. The nonces stay here, wrapped for your
+    card; each is used once, and the commitments in FILE are public. One more visit, when all have spoken, erases what
+    is left of the task in KEYDIR.
 
     \b
     Example:
@@ -91,7 +114,7 @@ def commit_command(
     share = key_folder.share()
     with opening((), passphrase_files, descriptors) as at_hand:
         key = signers((key_file,), at_hand)[0]
-        value = opened(share, key_folder.record, key.open)
+        value = own_share(share, key_folder.record, share.custodian, key.open)
         store = NonceStore(key_folder.path / NONCES, key_folder.record, share.custodian, key)
         with held_signals():
             batch = store.batch(value, count)
@@ -128,8 +151,9 @@ def open_command(
 ) -> None:
     """Ask custodians to open MESSAGE, which was encrypted (HPKE, RFC 9180) to the key, for you alone to read.
 
-    Whoever asks (--sign) is the receiver, and keeps what it needs to read the answers in KEYDIR, which for somebody who
-    is no custodian is a folder with the key's record. `shares key finish` puts the answers together.
+    Whoever asks (--sign) is the receiver, and keeps what it needs to read the answers in KEYDIR: a custodian's own
+    folder, or for somebody who is no custodian a folder with the key's record. `shares key finish` puts the answers
+    together.
 
     \b
     Example:
@@ -141,6 +165,7 @@ def open_command(
     info, aad = (b"" if path is None else read_file(path, limit=MAX_FILE) for path in (info_file, aad_file))
     with opening((), asked.passphrase_files, asked.descriptors) as at_hand:
         author = signers((asked.signer_file,), at_hand)[0]
+        key_folder.check_own(author.card)
         task = new_opening(
             data,
             key_folder.record,
@@ -155,7 +180,14 @@ def open_command(
         )
         with held_signals():
             begin_opening(key_folder, ask(key_folder, task, asked.path, data, author), author)
-            print_asked(task, asked.path, prose(NOT_FOR_LONG), as_json=asked.as_json, after=OPEN_NEXT)
+            print_asked(
+                task,
+                asked.path,
+                prose(NOT_FOR_LONG),
+                as_json=asked.as_json,
+                after=OPEN_NEXT,
+                then=finish_line(key_folder, asked),
+            )
 
 
 @click.command("finish", cls=FeedsCommand, short_help="Put together what came of a task.")
@@ -197,22 +229,46 @@ def finish_command(
     key_folder, task = KeyFolder(folder), TaskFolder(path)
     if fed and not isinstance(task.task.work, Opening):
         raise ParameterError("only what was in a message is fed to a command", hint="give --to FILE")
-    members = {"done": True, "task": path, "work": task.task.work.what, "written": target}
+    members: dict[str, object] = {
+        "done": True,
+        "task": path,
+        "digest": task.task.digest().hex(),
+        "fingerprint": task.task.fingerprint,
+        "work": task.task.work.what,
+        "written": target,
+    }
     with opening((), passphrase_files, descriptors) as at_hand:
         author = signers((signer_file,), at_hand)[0]
         with held_signals():
             if isinstance(task.task.work, Signing) and target is not None:
-                data = signed(key_folder, task)
+                data = signed(key_folder, task, author)
                 write_new(target, data, secret=False)
-                enter_once(key_folder, finished(task.task, data), author)
+                entered = enter_once(key_folder, finished(task.task, data), author)
+                members |= {"signers": list(task.task.names), "sha256": hashlib.sha256(data).hexdigest()}
+                members |= {"again": not entered}
                 lines = [
                     f"Signed by {', '.join(task.task.names)}: {key_folder.record.label}, in {target}.",
+                    *([] if entered else ["It was put together before: this is the same again."]),
                     "Checked: it verifies with the key's public half.",
-                    *prose(VERIFY[task.task.work.form]),
+                    *_verifying(folder, path, task.task.work, target),
                 ]
             else:
                 lines = _opened(key_folder, task, author, target, fed, as_json=as_json)
+            lines += prose(ERASE.format(path=path))
             print_result(members, lines, as_json=as_json, aside=bool(fed))
+
+
+def _verifying(folder: str, path: str, work: Signing, target: str) -> list[str]:
+    """Return how others verify what was signed: commands to be pasted."""
+    words = {
+        "folder": folder,
+        "content": str(Path(path) / CONTENT_NAME),
+        "target": target,
+        "name": "the-quorum",
+        "namespace": work.namespace or "",
+    }
+    quoted = {name: shlex.quote(word) for name, word in words.items()}
+    return [line.format(**quoted) for line in VERIFY[work.form]]
 
 
 def _opened(

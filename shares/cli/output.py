@@ -60,14 +60,14 @@ def print_result(members: dict[str, Any], lines: Iterable[str], *, as_json: bool
     """Print a result: one JSON object, or calm lines for people.
 
     Args:
-        members: the JSON object.
+        members: the JSON object; ``exit`` is 0 unless it says otherwise.
         lines: the same for people.
         as_json: which of the two.
         aside: put the lines on standard error, because standard output is a fed command's.
     """
     try:
         if as_json:
-            click.echo(json.dumps(members, indent=2))
+            click.echo(json.dumps({"done": True, "exit": 0} | members, indent=2))
         else:
             for line in lines:
                 click.echo(_printable(line), err=aside)

@@ -258,10 +258,14 @@ def _reason_for_refusal(
             f"none of the {len(findings)} shares given is of the record's set, {record.set.hex()}",
             hint="`shares show FILE` says which set a share or record is of: give those of one set",
         )
+    # What is wrong with several files alike is said once.
+    alike: dict[tuple[Status, str], list[str]] = {}
+    for finding in findings:
+        if finding.status is not Status.INTACT:
+            alike.setdefault((finding.status, finding.reason), []).append(finding.source)
     aside = "".join(
-        f"; {finding.source} was set aside ({finding.status}: {finding.reason})"
-        for finding in findings
-        if finding.status is not Status.INTACT
+        f"; {', '.join(sources)} {'was' if len(sources) == 1 else 'were'} set aside ({status}: {reason})"
+        for (status, reason), sources in alike.items()
     )
     if not groups:
         return NotEnoughSharesError(f"none of the {len(presented)} shares given can be used{aside}")

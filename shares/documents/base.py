@@ -45,6 +45,7 @@ KINDS = (
     "task-done",
     "nonce-batch",
     "nonce-pair",
+    "nonce-bound",
     "nonce-marks",
     "opened-message",
 )

@@ -54,7 +54,7 @@ def parse_interval(text: str) -> timedelta:
     """
     form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", text)
     if form is None:
-        raise ParameterError('should be an interval like "90d", "26w" or "1y"')
+        raise ParameterError('should be an interval of a day or more, like "90d", "26w" or "1y"')
     return timedelta(days=int(form[1]) * DAYS[form[2]])
 
 

@@ -89,4 +89,19 @@ class TaskFinished(Document):
     remark: Text | None = None
 
 
-KeyEvent: TypeAlias = KeyBorn | NoncesCommitted | TaskAsked | Approved | TaskFinished
+class TaskFailed(Document):
+    """A task came to nothing, or was given up.
+
+    Attributes:
+        by: whose doing it is, as far as messages prove it; None where they do not.
+        reason: what was wrong.
+    """
+
+    what: Literal["task-failed"]
+    task: Digest
+    work: TaskKind
+    by: Name | None
+    reason: Text
+
+
+KeyEvent: TypeAlias = KeyBorn | NoncesCommitted | TaskAsked | Approved | TaskFinished | TaskFailed

@@ -126,6 +126,8 @@ class KeyRecord(Document):
             return "two key shares stand at one index"
         if len({one.card.ed25519 for one in holders}) != len(holders):
             return "two custodians have one party key"
+        if any(one.name != one.card.name for one in holders):
+            return "it gives a custodian another name than their card does"
         if self.need > len(holders):
             return "it needs more custodians than there are"
         if len(self.commitments) != self.need:

@@ -1,9 +1,9 @@
-"""Nonces of a signer: sealed each by itself, marked so that copies are noticed, and the commitments handed out.
+"""Nonces of a signer: sealed each by itself, before and after they are spent; marks; and the commitments handed out.
 
 Source: RFC 9591, sec. 5.1 (commitments may be made before a message is known); FORMAT_KEYS.md, sec. 29.
 May import: shares.clock, shares.errors, shares.documents.base, .group_members, .key_record, .members, .party, .signing,
 .wrapping; shares.group.edwards25519, shares.memory.
-Secret: the nonces inside a ``NoncePair``. Private: ``NonceMarks``. Public: the batch.
+Secret: the nonces inside a ``NoncePair`` or ``BoundPair``. Private: ``NonceMarks``. Public: the batch.
 Does not: see to it that nonces are used once; ``keys.nonces`` does.
 """
 
@@ -39,18 +39,18 @@ def pair_id(hiding: Point, binding: Point) -> str:
     return sha256(b"shares/v1/nonce-pair", hiding.encode(), binding.encode()).hex()[:32]
 
 
-class NoncePair(Envelope):
+class SealedPair(Envelope):
     """A hiding and a binding nonce, sealed for the signer's own card.
+
+    Anybody can seal to a card. That the nonces are the signer's own making, its signed ``NonceMarks`` say, and that
+    they are those of the commitments, whoever opens them computes.
 
     Attributes:
         batch: with which it was made.
         hiding, binding: commitments to the nonces.
     """
 
-    KIND: ClassVar[str] = "nonce-pair"
-    BOUND = ("kind", "version", "key", "epoch", "record", "signer", "batch", "hiding", "binding")
-
-    kind: Literal["nonce-pair"]
+    kind: str
     version: Version
     key: SetId
     epoch: Epoch
@@ -65,6 +65,20 @@ class NoncePair(Envelope):
         if len(self.sealed) != 2 * SIZE + TAG:
             raise PydanticCustomError("shares_nonces", "it does not hold two sealed numbers of 32 bytes")
         return self
+
+    @classmethod
+    def _wrapped(cls, content: Secret, facts: dict[str, Any], seal: Sealer) -> Self:
+        wrapping, sealed = seal(content, cls.model_construct(**facts).bound())
+        return cls.model_validate({**facts, "wrapping": wrapping, "sealed": sealed, "digest": bytes(32)}).with_digest()
+
+
+class NoncePair(SealedPair):
+    """Nonces that may be used, once, for anything; whether they still may, their file's mark tells."""
+
+    KIND: ClassVar[str] = "nonce-pair"
+    BOUND = ("kind", "version", "key", "epoch", "record", "signer", "batch", "hiding", "binding")
+
+    kind: Literal["nonce-pair"]
 
     @classmethod
     def wrap(
@@ -91,8 +105,37 @@ class NoncePair(Envelope):
             "hiding": hiding,
             "binding": binding,
         }
-        wrapping, sealed = seal(content, cls.model_construct(**facts).bound())
-        return cls.model_validate({**facts, "wrapping": wrapping, "sealed": sealed, "digest": bytes(32)}).with_digest()
+        return cls._wrapped(content, facts, seal)
+
+
+class BoundPair(SealedPair):
+    """Nonces that are spent: sealed anew for one purpose, and of use for no other.
+
+    Attributes:
+        purpose: a digest of all that the signature share depends on, and of the task.
+        mark: of the file that says they are spent; None on a medium where copies are not to be told from it.
+    """
+
+    KIND: ClassVar[str] = "nonce-bound"
+    BOUND = (*NoncePair.BOUND, "purpose", "mark")
+
+    kind: Literal["nonce-bound"]
+    purpose: Digest
+    mark: Digest | None
+
+    @classmethod
+    def of(cls, pair: NoncePair, content: Secret, *, purpose: bytes, mark: bytes | None, seal: Sealer) -> Self:
+        """Return the nonces of a pair, sealed for a purpose.
+
+        Args:
+            pair: the nonces as they were before.
+            content: what it holds.
+            purpose: 32 bytes.
+            mark: of the file that says they are spent.
+            seal: for the signer's own card.
+        """
+        same = {name: getattr(pair, name) for name in NoncePair.BOUND}
+        return cls._wrapped(content, {**same, "kind": cls.KIND, "purpose": purpose, "mark": mark}, seal)
 
 
 class NonceMark(Document):
@@ -107,14 +150,47 @@ class NonceMark(Document):
 
 
 class NonceMarks(Document):
-    """The marks of all files of one batch. Nonces without one are no promise and never used."""
+    """The marks of all files of one batch, signed by the signer. Nonces without one are no promise and never used.
+
+    Whose signature it should bear, whoever reads it knows, and asks ``is_by``.
+    """
 
     KIND: ClassVar[str] = "nonce-marks"
 
     kind: Literal["nonce-marks"]
     version: Version
+    key: SetId
+    epoch: Epoch
+    record: Fingerprint
+    signer: Name
     batch: PairId
     marks: Annotated[tuple[NonceMark, ...], Member(min_length=1, max_length=MAX_BATCH)]
+    signature: Signature
+
+    @classmethod
+    def signed_by(
+        cls, key: OpenPartyKey, *, record: KeyRecord, signer: str, batch: str, marks: Sequence[NonceMark]
+    ) -> Self:
+        """Return the marks of a batch, signed by the signer."""
+        unsigned: dict[str, Any] = {
+            "kind": cls.KIND,
+            "version": 1,
+            "key": record.key,
+            "epoch": record.epoch,
+            "record": record.fingerprint,
+            "signer": signer,
+            "batch": batch,
+            "marks": tuple(marks),
+        }
+        signature = key.sign(cls.KIND, cls.model_construct(**unsigned)._signed_members())
+        return cls.model_validate({**unsigned, "signature": signature})
+
+    def is_by(self, card: PartyCard) -> bool:
+        """Say whether the party of a card has signed them."""
+        return is_signed(card.ed25519, self.signature, self.KIND, self._signed_members())
+
+    def _signed_members(self) -> dict[str, Any]:
+        return self.public(*(set(type(self).model_fields) - {"signature"}))
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

@@ -21,7 +21,7 @@ from shares.documents.drill_report import DrillReport
 from shares.documents.entry import Entry
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
-from shares.documents.nonce_batch import NonceBatch, NonceMarks, NoncePair
+from shares.documents.nonce_batch import BoundPair, NonceBatch, NonceMarks, NoncePair
 from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import PartyCard, PartyKey
 from shares.documents.record import Record
@@ -52,6 +52,7 @@ KINDS: tuple[type[Document], ...] = (
     TaskStep,
     TaskDone,
     NoncePair,
+    BoundPair,
     NonceMarks,
     NonceBatch,
     OpenedMessage,

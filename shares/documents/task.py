@@ -10,8 +10,8 @@ Does not: know what is said in a round; ``task_message`` does. What is signed or
 
 from __future__ import annotations
 
-from datetime import datetime
-from typing import Annotated, Any, ClassVar, Literal, Self, TypeAlias
+from datetime import datetime, timedelta
+from typing import Annotated, Any, ClassVar, Final, Literal, Self, TypeAlias
 
 from pydantic import Field as Member
 from pydantic import model_validator
@@ -38,6 +38,8 @@ from shares.documents.members import (
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.signing import is_signed
 
+_AHEAD: Final = timedelta(hours=1)
+_FAR: Final = timedelta(days=366)
 Cipher: TypeAlias = Literal["aes-256-gcm", "chacha20-poly1305"]
 
 
@@ -67,6 +69,8 @@ class Signing(Document):
         form: what becomes of it: a signature over the content as it is, a detached OpenSSH signature, or a certificate
             or revocation list whose bytes to be signed the content is.
         namespace: of an OpenSSH signature, what it is for; None for other forms.
+        issuer: the certificate under which a certificate or list is to stand; None for a root, and for other forms.
+        earlier: the list that a revocation list continues; None where it is the first, and for other forms.
         commitments: of every signer, where they were made beforehand; else none, and a first round makes them.
     """
 
@@ -74,7 +78,22 @@ class Signing(Document):
     form: Form
     namespace: Text | None
     content: Content
+    issuer: Content | None
+    earlier: Content | None
     commitments: Annotated[tuple[NonceCommitments, ...], Member(max_length=MAX_HOLDERS)]
+
+    @model_validator(mode="after")
+    def _has_what_its_form_is_checked_by(self) -> Self:
+        problem = None
+        if self.form == "revocation-list" and self.issuer is None:
+            problem = "a revocation list is checked by its issuer's certificate, and it names none"
+        elif self.issuer is not None and self.form not in ("certificate", "revocation-list"):
+            problem = "a certificate or revocation list, and nothing else, has an issuer"
+        elif self.earlier is not None and self.form != "revocation-list":
+            problem = "a revocation list, and nothing else, continues an earlier one"
+        if problem:
+            raise PydanticCustomError("shares_task", "{reason}", {"reason": problem})
+        return self
 
 
 class Opening(Document):
@@ -149,6 +168,8 @@ class Task(Document):
             return "it names one party twice"
         if len({one.card.ed25519 for one in self.parties}) != len(names):
             return "two of its parties have one party key"
+        if any(one.name != one.card.name for one in self.parties):
+            return "it gives a party another name than its card does"
         if self.due <= self.created:
             return "it is due before it was made"
         if (self.record is None) != isinstance(work, Joining):
@@ -186,6 +207,12 @@ class Task(Document):
         """The parties' names, in their order."""
         return tuple(one.name for one in self.parties)
 
+    @property
+    def asked(self) -> tuple[str, ...]:
+        """The names of those who are asked for something: all parties but a receiver."""
+        receiver = self.work.receiver if isinstance(self.work, Opening) else None
+        return tuple(name for name in self.names if name != receiver)
+
     def party(self, name: str) -> TaskParty | None:
         """Return the party of that name, or None."""
         return next((one for one in self.parties if one.name == name), None)
@@ -196,7 +223,7 @@ class Task(Document):
 
     def digest(self) -> bytes:
         """Return what every message of the task names: 32 bytes over all of it, its signature included."""
-        return sha256(b"shares/v1/task", canonical(self.model_dump(mode="json")))
+        return sha256(b"shares/v1/task-digest", canonical(self.model_dump(mode="json")))
 
     @property
     def fingerprint(self) -> str:
@@ -207,10 +234,29 @@ class Task(Document):
         """Say whether a time lies after the one until which the task was to be done."""
         return time > self.due
 
+    def oddities(self, time: datetime) -> tuple[str, ...]:
+        """Return what is unusual about its times, each a sentence, for whoever is asked to take part.
+
+        Args:
+            time: now, UTC.
+        """
+        found = []
+        if self.created > time + _AHEAD:
+            found.append(
+                f"It says that it was made at {clock.to_text(self.created)}, which this clock has yet to reach."
+            )
+        if self.due > time + _FAR:
+            found.append(
+                f"It is due {clock.to_text(self.due)}, in more than a year: what you say can be used until then."
+            )
+        return tuple(found)
+
     def words(self) -> str:
-        """Say what is to be done, by whom and until when, in one line."""
+        """Say what is to be done, by whom and until when, in one line, however many spaces its label has."""
         work = {"join": "generate a key together", "sign": "sign", "open": "open a message"}[self.work.what]
-        return f"{', '.join(self.names)}: {work} ({self.label}), until {clock.to_text(self.due)}"
+        receives = f" for {self.work.receiver}" if isinstance(self.work, Opening) else ""
+        label, due = " ".join(self.label.split()), clock.to_text(self.due)
+        return f"{', '.join(self.asked)}: {work}{receives} ({label}), until {due}"
 
     def to_file(self) -> bytes:
         """Return the bytes of the file."""

@@ -23,10 +23,11 @@ from pathlib import Path
 from shares import clock
 from shares.documents.entry import Head
 from shares.documents.party import PartyCard
-from shares.errors import ParameterError, SharesError
+from shares.errors import OtherKindError, ParameterError, SharesError
 from shares.evidence.audit import audit
 from shares.evidence.audited import Audit, Reason, Verdict
 from shares.history.files import RECORD_NAME, Files, FolderFiles
+from shares.history.folder import refuse_key
 from shares.history.journal import JOURNAL_NAME
 from shares.history.pack import PackFiles
 from shares.storage import StrPath
@@ -62,17 +63,20 @@ def find_sets(paths: Iterable[StrPath]) -> Found:
     Raises:
         StorageError: a folder cannot be listed, or a path does not exist.
         ParameterError: a folder holds no set.
+        OtherKindError: it is that of a threshold key.
     """
     sets, passed_over = dict[str, None](), list[str]()
     for path in [os.fspath(one) for one in paths]:
         if not os.path.isdir(path) or _is_set(path):
             with refusing(path):
                 os.stat(path)
+            if os.path.isdir(path):
+                refuse_key(FolderFiles(Path(path)))
             sets[path] = None
             continue
         with refusing(path):
             inside = sorted(os.scandir(path), key=lambda entry: entry.name)
-        below = [entry.path for entry in inside if entry.is_dir() and _is_set(entry.path)]
+        below = [entry.path for entry in inside if entry.is_dir() and _is_set(entry.path) and not _is_key(entry.path)]
         below += [entry.path for entry in inside if entry.is_file() and entry.name.endswith(PACK_SUFFIX)]
         if not below:
             raise ParameterError(
@@ -87,6 +91,14 @@ def find_sets(paths: Iterable[StrPath]) -> Found:
 
 def _is_set(folder: str) -> bool:
     return any(os.path.lexists(Path(folder) / name) for name in (RECORD_NAME, JOURNAL_NAME))
+
+
+def _is_key(folder: str) -> bool:
+    try:
+        refuse_key(FolderFiles(Path(folder)))
+    except OtherKindError:
+        return True
+    return False
 
 
 def audit_many(

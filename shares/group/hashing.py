@@ -21,7 +21,7 @@ _DIGEST: Final = 32  # bytes of SHA-256
 _BLOCK: Final = 64  # bytes SHA-256 takes at a time (FIPS 180-4, sec. 5.2.1)
 
 SECOND_BASE_LABEL: Final = b"shares/v1/second-base"
-HEDGE_LABEL: Final = b"shares/v1/hedged-scalar"
+HEDGE_LABEL: Final = b"shares/v1/scalar"
 
 
 def expand_message_xmd(message: bytes, tag: bytes, length: int) -> bytes:

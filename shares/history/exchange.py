@@ -8,6 +8,7 @@ Does not: know what a message means, or who speaks when; ``next`` asks the task'
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
 import itertools
 import os
@@ -21,17 +22,22 @@ from shares import clock
 from shares.documents.base import MAX_FILE
 from shares.documents.key_event import MAX_CONTENT, Content
 from shares.documents.key_record import KeyRecord
-from shares.documents.task import Joining, Task
+from shares.documents.task import Joining, Signing, Task
 from shares.documents.task_message import MAX_ROUNDS, TaskMessage
 from shares.errors import ParameterError, SharesError, StorageError, VerificationError
 from shares.history.rounds import Inbox
-from shares.storage import StrPath, leftovers, make_folder, read_file, write_new
+from shares.storage import StrPath, discard, leftovers, make_folder, read_file, write_new
 
-TASK_NAME, RECORD_NAME, CONTENT_NAME, MESSAGES_NAME = "task.json", "record.json", "content", "messages"
+TASK_NAME, RECORD_NAME, MESSAGES_NAME = "task.json", "record.json", "messages"
+CONTENT_NAME, ISSUER_NAME, EARLIER_NAME = "content", "issuer", "earlier"
+"""The files beside a task that it names by size and digest: what it is about, and what that is checked by."""
 MAX_MESSAGE = 1 << 18
 """The largest file of a message, in bytes: 256 KiB. The largest that anybody has to say is about half of that."""
 MAX_MESSAGES = 2_048
 """The most files of messages in a folder: three times what the most parties can have to say."""
+MAX_ALL, MAX_STRAY = 1 << 25, 64
+"""The most bytes of all of them, 32 MiB, twice what the most parties can have to say; and the most files that are no
+signed messages of the task. Each is read, and reading one of the largest takes a twentieth of a second."""
 
 ProblemKind: TypeAlias = Literal[
     "unreadable", "foreign", "stranger", "signature", "late", "conflict", "out-of-turn", "other-view", "content",
@@ -47,13 +53,16 @@ class Problem:
         kind: what sort of thing it is, for programs.
         what: in words, with the file's name where it is about one.
         sender: whose message it is; None where that cannot be told.
-        stops: whether the task cannot be finished with it. Else the file is left out, and nothing is lost by it.
+        stops: whether the task cannot be finished with it. Else the file is left out, and nothing is lost by it. Of a
+            folder that was only read: whether that may be.
+        round: in which it stops, or may.
     """
 
     kind: ProblemKind
     what: str
     sender: str | None = None
     stops: bool = False
+    round: int | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -105,7 +114,14 @@ class TaskFolder:
 
     @classmethod
     def create(
-        cls, path: StrPath, task: Task, *, content: bytes | None = None, record: KeyRecord | None = None
+        cls,
+        path: StrPath,
+        task: Task,
+        *,
+        content: bytes | None = None,
+        issuer: bytes | None = None,
+        earlier: bytes | None = None,
+        record: KeyRecord | None = None,
     ) -> TaskFolder:
         """Make the folder of a new task; ``task.json`` is written last, and with it the task is there.
 
@@ -113,45 +129,61 @@ class TaskFolder:
             path: a new folder, or one that holds no task yet.
             task: what is to be done.
             content: what is signed or opened, exactly as the task names it; None for a key that is being born.
-            record: of the key that is used; None likewise.
+            issuer: the certificate that the task names as issuer; None where it names none.
+            earlier: the revocation list that it names as the earlier one, likewise.
+            record: of the key that is used; None for a key that is being born.
 
         Raises:
-            ParameterError: content or record are not what the task names.
-            StorageError: a name is taken, or the medium refuses.
+            ParameterError: one of them is not what the task names.
+            StorageError: a name is taken, or the medium refuses; then no file of this call is left.
         """
         if (record is None) != (task.record is None) or (record is not None and not _is_named(record, task)):
             raise ParameterError("the record is not the one that the task names")
+        beside: dict[str, bytes | None] = {CONTENT_NAME: content, ISSUER_NAME: issuer, EARLIER_NAME: earlier}
         wanted = _wanted(task)
-        if (content is None) != (wanted is None) or (content is not None and _of(content) != wanted):
-            raise ParameterError("the content is not the one that the task names")
+        for name, data in beside.items():
+            if (None if data is None else _of(data)) != wanted[name]:
+                raise ParameterError(f"the file {name} is not the one that the task names")
         folder = Path(path)
         make_folder(folder / MESSAGES_NAME)
         files = (
-            (CONTENT_NAME, content),
+            *beside.items(),
             (RECORD_NAME, None if record is None else record.to_file()),
             (TASK_NAME, task.to_file()),
         )
-        for name, data in files:
-            if data is not None:
+        with contextlib.ExitStack() as undo:
+            for name, data in files:
+                # What a killed run has left of the same content need not be written again.
+                if data is None or (name != TASK_NAME and _holds(folder / name, data)):
+                    continue
                 write_new(folder / name, data, secret=False)
+                undo.callback(_discard_if_possible, folder / name)
+            undo.pop_all()
         return cls(folder)
 
     def content(self) -> bytes | None:
-        """Return what the task is about, exactly as it names it; None where there is nothing.
+        """Return what the task is about, exactly as it names it; see ``beside``."""
+        return self.beside(CONTENT_NAME)
+
+    def beside(self, name: str) -> bytes | None:
+        """Return a file beside the task, exactly as it names it; None where it names none.
+
+        Args:
+            name: ``CONTENT_NAME``, ``ISSUER_NAME`` or ``EARLIER_NAME``.
 
         Raises:
             StorageError: the file is missing or cannot be read.
             VerificationError: it is not the one that the task names.
         """
-        wanted = _wanted(self.task)
+        wanted = _wanted(self.task)[name]
         if wanted is None:
             return None
-        where = os.fspath(self.path / CONTENT_NAME)
+        where = os.fspath(self.path / name)
         found = read_file(where, limit=MAX_CONTENT)
         if _of(found) != wanted:
+            about = "what the task is about" if name == CONTENT_NAME else f"the {name} that the task names"
             raise VerificationError(
-                f"it is not what the task is about, which has {wanted.size:,} bytes and "
-                f"the SHA-256 {wanted.digest.hex()}",
+                f"it is not {about}, which has {wanted.size:,} bytes and the SHA-256 {wanted.digest.hex()}",
                 where=where,
                 hint="do nothing with this task; ask whoever made it for the whole folder",
             )
@@ -161,7 +193,7 @@ class TaskFolder:
         """Read and judge everything that lies in the folder.
 
         Raises:
-            StorageError: the messages cannot be listed, or are too many.
+            StorageError: the messages cannot be listed, or are too many or too large; or too many files are none.
         """
         problems, content = [], None
         try:
@@ -173,6 +205,8 @@ class TaskFolder:
             judged = self._judge(path)
             if isinstance(judged, Problem):
                 problems.append(judged)
+                if len(problems) > MAX_STRAY:
+                    raise self._flooded(f"{MAX_STRAY} files that are no messages of this task")
             else:
                 signed.setdefault(judged.digest(), judged)
         by_place: dict[tuple[int, str], list[TaskMessage]] = {}
@@ -206,8 +240,12 @@ class TaskFolder:
         for number in itertools.count(1):
             path = folder / f"{message.round}-{message.sender}{'' if number == 1 else f'-{number}'}.json"
             if not os.path.lexists(path):
-                write_new(path, data, secret=False)
-                return path
+                try:
+                    write_new(path, data, secret=False)
+                except StorageError:
+                    # Another run of this party may have been faster with the same message.
+                    if not os.path.lexists(path):
+                        raise
             if _holds(path, data):
                 return path
         raise AssertionError  # pragma: no cover - the count does not end
@@ -218,8 +256,9 @@ class TaskFolder:
         try:
             _check_folder(folder)
             with os.scandir(folder) as entries:
-                possible = (one.name for one in entries if _may_be_message(one.name))
-                names = list(itertools.islice(possible, MAX_MESSAGES + 1))
+                possible = (one for one in entries if _may_be_message(one.name))
+                found = list(itertools.islice(possible, MAX_MESSAGES + 1))
+                sizes = [one.stat(follow_symlinks=False).st_size for one in found]
         except FileNotFoundError:
             return []
         except StorageError:
@@ -227,13 +266,18 @@ class TaskFolder:
         except OSError as error:
             reason = (error.strerror or type(error).__name__).lower()
             raise StorageError(reason, where=os.fspath(folder), hint="check its owner and mode") from error
-        if len(names) > MAX_MESSAGES:
-            raise StorageError(
-                f"holds more than {MAX_MESSAGES:,} files",
-                where=os.fspath(folder),
-                hint="no task has so many messages; take away what does not belong there",
-            )
-        return [folder / name for name in sorted(names)]
+        if len(found) > MAX_MESSAGES:
+            raise self._flooded(f"{MAX_MESSAGES:,} files")
+        if sum(min(size, MAX_MESSAGE) for size in sizes) > MAX_ALL:
+            raise self._flooded(f"{MAX_ALL >> 20} MiB")
+        return sorted(folder / one.name for one in found)
+
+    def _flooded(self, most: str) -> StorageError:
+        return StorageError(
+            f"holds more than {most}",
+            where=os.fspath(self.path / MESSAGES_NAME),
+            hint="no task has so many messages; take away what does not belong there",
+        )
 
     def _judge(self, path: Path) -> TaskMessage | Problem:
         """Read one file: a message for this task by one of its parties, or what is wrong with it."""
@@ -257,7 +301,7 @@ class TaskFolder:
             return None
         made, due = clock.to_text(message.created), clock.to_text(self.task.due)
         what = f"{message.sender}'s message of round {message.round} is late: made {made}, and the task was due {due}"
-        return Problem("late", what, message.sender, stops=True)
+        return Problem("late", what, message.sender, stops=True, round=message.round)
 
 
 def _check_folder(folder: Path) -> None:
@@ -282,7 +326,7 @@ def conflict_words(round: int, sender: str) -> str:
 
 
 def _conflict(round: int, sender: str) -> Problem:
-    return Problem("conflict", conflict_words(round, sender), sender, stops=True)
+    return Problem("conflict", conflict_words(round, sender), sender, stops=True, round=round)
 
 
 def _may_be_message(name: str) -> bool:
@@ -296,13 +340,24 @@ def _shown(name: str) -> str:
 
 def _holds(path: Path, data: bytes) -> bool:
     try:
-        return read_file(path, limit=MAX_MESSAGE) == data
+        return read_file(path, limit=len(data)) == data
     except StorageError:
         return False
 
 
-def _wanted(task: Task) -> Content | None:
-    return None if isinstance(task.work, Joining) else task.work.content
+def _discard_if_possible(path: Path) -> None:
+    with contextlib.suppress(StorageError):
+        discard(path)
+
+
+def _wanted(task: Task) -> dict[str, Content | None]:
+    work = task.work
+    signing = work if isinstance(work, Signing) else None
+    return {
+        CONTENT_NAME: None if isinstance(work, Joining) else work.content,
+        ISSUER_NAME: signing.issuer if signing else None,
+        EARLIER_NAME: signing.earlier if signing else None,
+    }
 
 
 def _of(content: bytes) -> Content:

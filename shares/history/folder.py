@@ -8,6 +8,7 @@ Does not: forgive: a record or policy that is not what it should be is refused. 
 
 from __future__ import annotations
 
+import contextlib
 import itertools
 import os
 from collections.abc import Sequence
@@ -20,7 +21,7 @@ from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey, PartyCard
 from shares.documents.record import Record
-from shares.errors import ParameterError, VerificationError
+from shares.errors import DocumentError, OtherKindError, ParameterError, StorageError, VerificationError
 from shares.history.files import (
     MAX_DOCUMENT,
     POLICY_NAME,
@@ -136,6 +137,26 @@ class SetFolder:
                     f"the policy asks for dual control: two parties sign each entry, and {len(signing)} would",
                     hint="give the party keys of two people, each with --sign",
                 )
+
+
+def refuse_key(files: Files) -> None:
+    """Refuse the folder of a threshold key where a set's is wanted; what else is wrong with a record is left to others.
+
+    Args:
+        files: those of the folder.
+
+    Raises:
+        OtherKindError: its record is a key's.
+    """
+    with contextlib.suppress(StorageError):
+        data = files.read(RECORD_NAME, limit=MAX_FILE)
+        if b'"key-record"' in data:
+            try:
+                Record.parse(data, where=os.path.join(files.where, RECORD_NAME))
+            except OtherKindError:
+                raise
+            except DocumentError:
+                return
 
 
 def load_policy(files: Files, record: Record) -> Policy | None:

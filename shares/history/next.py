@@ -1,15 +1,15 @@
-"""Where a task stands, whose turn it is, and one party's next step: stored whole before anything of it is released.
+"""Whose turn it is in a task, and one party's next step: stored whole before anything of it is released.
 
-Source: FORMAT_KEYS.md, sec. 24 and 25; Y. Ishai, R. Ostrovsky, V. Zikas, "Secure multi-party computation with
-identifiable abort", CRYPTO 2014 (a task that fails says by whom, as far as that can be told).
-May import: shares.errors, shares.clock, shares.documents, shares.memory, .exchange, .journal, .rounds, .steps.
+Source: FORMAT_KEYS.md, sec. 25.
+May import: shares.errors, shares.clock, shares.documents, shares.memory, .exchange, .journal, .rounds, .standing,
+.steps.
 Secret: states and what is sealed, on their way between a party's part and its steps. Public: messages, who is awaited.
 Does not: know any purpose; a course and a part, which ``keys`` makes, do. Ask anybody; the command does.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
@@ -18,48 +18,18 @@ from typing import Literal, TypeAlias
 from shares import clock
 from shares.documents.event import Event
 from shares.documents.party import OpenPartyKey
-from shares.documents.task_box import is_box_key, new_box_key, seal_box
+from shares.documents.task import Task
+from shares.documents.task_box import new_box_key, seal_box
 from shares.documents.task_message import Body, OpeningKey, SealedFor, TaskMessage, box_info
 from shares.errors import ParameterError, SharesError, VerificationError
-from shares.history.exchange import Problem, Reading, TaskFolder
+from shares.history.exchange import TaskFolder
 from shares.history.journal import append, load_journal
-from shares.history.rounds import Course, Failure, Inbox, Outcome, Part, Received, Said
+from shares.history.rounds import Course, Inbox, Outcome, Part, Received, Said
+from shares.history.standing import Standing, standing
 from shares.history.steps import OwnSteps
 from shares.memory import Secret
 
 Doing: TypeAlias = Literal["speak", "repeat", "wait", "finish", "erase", "done", "failed"]
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Standing:
-    """Where a task stands, as anybody with its folder can see.
-
-    Attributes:
-        round: the first round that is not complete; the number of rounds where all are.
-        names: what is said in each round.
-        inbox: the messages of complete rounds, and those that were said so far in ``round``.
-        spoken: who has spoken in ``round``.
-        awaited: who has not.
-        failure: why the task cannot be finished, whoever waits for whom; None while it can.
-        problems: what is wrong with single messages or files.
-    """
-
-    round: int
-    names: Sequence[str]
-    inbox: Inbox
-    spoken: Sequence[str]
-    awaited: Sequence[str]
-    failure: Failure | None
-    problems: Sequence[Problem]
-
-    @property
-    def complete(self) -> bool:
-        """Whether everything has been said."""
-        return self.round == len(self.names) and self.failure is None
-
-    def before(self, round: int) -> Inbox:
-        """Return what had been said before a round, which no later message belongs to."""
-        return Inbox(self.inbox.task, self.inbox.rounds[:round], self.inbox.content)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -76,43 +46,6 @@ class Turn:
     doing: Doing
     round: int
     standing: Standing
-
-
-def standing(course: Course, reading: Reading) -> Standing:
-    """Say where a task stands.
-
-    Args:
-        course: of the task.
-        reading: what its folder holds.
-    """
-    task, said = reading.inbox.task, reading.inbox
-    problems = list(reading.problems)
-    done = Inbox(task, (), said.content)
-    spoken: list[str] = []
-    awaited: list[str] = []
-    failure = _stopped(problems) or course.failure(done)
-    round = 0
-    while failure is None and round < len(course.rounds):
-        speakers = list(course.speakers(round, done))
-        here = said.of(round)
-        problems += [_out_of_turn(round, name) for name in here if name not in speakers]
-        strange = [name for name in here if name in speakers and here[name].seen != done.seen(round)]
-        problems += [_other_view(round, name) for name in strange]
-        counted = {name: here[name] for name in speakers if name in here and name not in strange}
-        spoken = [name for name in speakers if name in counted]
-        awaited = [name for name in speakers if name not in counted]
-        done = Inbox(task, (*done.rounds, counted), said.content)
-        if strange:
-            failure = Failure(None, _other_view(round, strange[0]).what)
-        if awaited:
-            break
-        failure = failure or _bad_key(course, done, round) or course.failure(done)
-        round += 1
-    late_rounds = [(number, name) for number in range(len(course.rounds), len(said.rounds)) for name in said.of(number)]
-    problems += [_out_of_turn(number, name) for number, name in late_rounds]
-    if not awaited:
-        spoken = []
-    return Standing(round, tuple(course.rounds), done, tuple(spoken), tuple(awaited), failure, tuple(problems))
 
 
 def turn(folder: TaskFolder, course: Course, own: OwnSteps) -> Turn:
@@ -151,8 +84,8 @@ def turn(folder: TaskFolder, course: Course, own: OwnSteps) -> Turn:
 def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> Path:
     """Say what is this party's to say in a round, or again what it has said, to the byte.
 
-    Message and state are put on the medium in one file; then the party's journal tells of it; then the message is
-    released. Whatever stops that, the next run goes on with the same message.
+    Message and state are put on the medium in one file; then the party's journal tells of it; then the part erases what
+    the message was made of; then it is released. Whatever stops that, the next run goes on with the same message.
 
     Args:
         folder: the task's.
@@ -177,17 +110,27 @@ def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnStep
         # Another run of this party may have spoken meanwhile: its message is the one to send.
         message = own.messages().get(at.round)
         if message is None:
-            time = clock.now()
-            if own.task.is_late(time):
-                due, now = clock.to_text(own.task.due), clock.to_text(time)
-                raise VerificationError(
-                    f"the task was due {due}, and it is {now} by this machine's clock",
-                    hint="set the clock if it is wrong; else ask for a new task",
-                )
+            check_time(own.task)
             message = _say(at.round, earlier, course, part, own, key)
         if own.done() is None:
             _enter(own.mine, part.event(at.round, earlier), key)
-    return folder.release(message)
+        part.kept(at.round, earlier)
+        return folder.release(message)
+
+
+def check_time(task: Task) -> None:
+    """Refuse to speak in a task that is past its due date.
+
+    Raises:
+        VerificationError: it is.
+    """
+    time = clock.now()
+    if task.is_late(time):
+        due, now = clock.to_text(task.due), clock.to_text(time)
+        raise VerificationError(
+            f"the task was due {due}, and it is {now} by this machine's clock",
+            hint="set the clock if it is wrong; else ask for a new task",
+        )
 
 
 def finish(at: Turn, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> Outcome:
@@ -251,6 +194,27 @@ def close(own: OwnSteps) -> None:
         own.close()
 
 
+def drop(own: OwnSteps, event: Event, key: OpenPartyKey, erase: Callable[[], None]) -> None:
+    """Give a task up for one party: journal, what its purpose keeps elsewhere, and then its steps are erased.
+
+    Args:
+        own: the party's steps.
+        event: for its journal.
+        key: its party key.
+        erase: erases what lies outside the steps; may be called again.
+
+    Raises:
+        ParameterError: the task is over for this party.
+        StorageError: something cannot be written or erased.
+    """
+    with own.alone():
+        if own.done() is not None and not own.remains():
+            raise ParameterError(f"the task is over for {own.name}", hint="nothing is left to be erased")
+        _enter(own.mine, event, key)
+        erase()
+        own.close()
+
+
 def _say(round: int, earlier: Inbox, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> TaskMessage:
     """Make the message and the state of a round, and put them on the medium."""
     with own.kept(earlier, private=course.private, key=key) as (box_key, state, received):
@@ -306,32 +270,3 @@ def _enter(mine: Path, event: Event | None, key: OpenPartyKey) -> None:
     """Enter an event in the party's own journal, unless a run that was stopped has done so."""
     if event is not None and event not in [entry.event for entry in load_journal(mine).entries]:
         append(mine, event, keys=[key])
-
-
-def _stopped(problems: Sequence[Problem]) -> Failure | None:
-    found = next((problem for problem in problems if problem.stops), None)
-    if found is None:
-        return None
-    return Failure(found.sender if found.kind == "late" else None, found.what)
-
-
-def _bad_key(course: Course, inbox: Inbox, round: int) -> Failure | None:
-    """Say who has shown no key that anything can be sealed to, where round 0 is about that."""
-    for name, message in inbox.of(0).items() if course.private and round == 0 else ():
-        if not isinstance(message.body, OpeningKey) or not is_box_key(message.body.x25519):
-            return Failure(name, "its message of round 0 shows no key that anything can be sealed to")
-    return None
-
-
-def _out_of_turn(round: int, sender: str) -> Problem:
-    return Problem("out-of-turn", f"{sender} has no turn in round {round}: its message there does not count", sender)
-
-
-def _other_view(round: int, sender: str) -> Problem:
-    return Problem(
-        "other-view",
-        f"{sender} answered in round {round} to other messages than are here: somebody has sent different messages to "
-        "different people, or one was exchanged",
-        sender,
-        stops=True,
-    )

@@ -18,6 +18,7 @@ from typing import Final
 from shares.documents.base import MAX_FILE, parse_object
 from shares.errors import DocumentError, StorageError
 from shares.history.files import POLICY_NAME, PRACTICE_RECORD, RECORD_NAME, Files
+from shares.history.folder import refuse_key
 from shares.history.journal import JOURNAL_NAME, MAX_JOURNAL, TORN
 from shares.history.tar import END, MAX_MEMBERS, MAX_NAME, content, header, index, padding
 from shares.storage import StrPath
@@ -104,7 +105,9 @@ def write_pack(files: Files, to: StrPath) -> Packed:
     Raises:
         StorageError: a file of the set holds a share or a private key, has a name or size that a pack does not take,
             or cannot be read; the pack's name is taken or cannot be written. Then there is no pack.
+        OtherKindError: it is the folder of a threshold key.
     """
+    refuse_key(files)
     # The journal comes first: whatever an entry names was written before it, so that all of it is listed after.
     held = {JOURNAL_NAME: files.read(JOURNAL_NAME, limit=MAX_JOURNAL)} if JOURNAL_NAME in files.names() else {}
     names = sorted(files.names())

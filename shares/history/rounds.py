@@ -9,7 +9,7 @@ Does not: touch files (``exchange`` and ``steps`` do), or know any purpose; ``ke
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Protocol
 
@@ -44,7 +44,12 @@ class Inbox:
     def seen(self, round: int) -> bytes:
         """Return the digest over all messages of earlier rounds: 32 bytes, the same for all who have seen the same."""
         digests = [message.digest() for earlier in range(round) for message in self.of(earlier).values()]
-        return sha256(b"shares/v1/task-seen", self.task.digest(), *digests)
+        return seen_of(self.task, digests)
+
+
+def seen_of(task: Task, digests: Sequence[bytes]) -> bytes:
+    """Return the digest by which a message names those that it answers, given theirs in order: 32 bytes."""
+    return sha256(b"shares/v1/task-seen", task.digest(), *digests)
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,6 +63,10 @@ class Failure:
 
     by: str | None
     what: str
+
+    def words(self) -> str:
+        """Say that a task has failed, by whom, if somebody is named, and what is wrong."""
+        return f"the task has failed{f', by {self.by}' if self.by else ''}: {self.what}"
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -122,6 +131,17 @@ class Course(Protocol):
     def failure(self, inbox: Inbox) -> Failure | None:
         """Say why the task has failed already, judging by the rounds that are complete; None while it has not."""
 
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        """Say whether a message of the last round may count, though it is one of several of its sender.
+
+        Args:
+            message: signed by a speaker of the last round, and answering what is here.
+            inbox: with all earlier rounds, and no more.
+        """
+
+    def spares(self, names: Collection[str]) -> bool:
+        """Say whether the last round can do without what these of its speakers say there."""
+
 
 class Part(Protocol):
     """What one party does in a task. It keeps no state of its own between rounds: it is given what it has kept.
@@ -149,6 +169,16 @@ class Part(Protocol):
 
         Raises:
             VerificationError: something in the inbox is wrong in a way that ends the task.
+        """
+
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Do what has to be done once this party's message of a round is kept, before it is released.
+
+        It may be done again: after a run that was killed meanwhile.
+
+        Args:
+            round: which.
+            inbox: with all earlier rounds complete.
         """
 
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:

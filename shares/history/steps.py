@@ -77,8 +77,10 @@ class OwnSteps:
             where, problem = os.fspath(self.folder / name), None
             data = read_file(where, limit=2 * MAX_FILE)
             step = TaskStep.parse(data, where=where)
+            if step.task == self.task.digest() and step.party != self.name:
+                raise _of_another(step.party, self.name, self.mine)
             if (step.task, step.party) != (self.task.digest(), self.name):
-                problem = "it is a step of another task, or of another party"
+                problem = "it is a step of another task"
             elif (message_problem := self._problem_of(step.message)) or step.message.round != int(match[1]):
                 problem = message_problem or "it is the step of another round than its name says"
             elif not step.is_whole():
@@ -99,8 +101,10 @@ class OwnSteps:
             return None
         where = os.fspath(self.folder / DONE_NAME)
         done = TaskDone.parse(read_file(where, limit=MAX_FILE), where=where)
+        if done.task == self.task.digest() and done.party != self.name:
+            raise _of_another(done.party, self.name, self.mine)
         if (done.task, done.party) != (self.task.digest(), self.name) or any(map(self._problem_of, done.messages)):
-            raise VerificationError("it is of another task, or of another party", where=where, hint=_BEGIN_ANEW)
+            raise VerificationError("it is of another task", where=where, hint=_BEGIN_ANEW)
         return done
 
     def messages(self) -> dict[int, TaskMessage]:
@@ -287,3 +291,11 @@ class OwnSteps:
         except OSError as error:
             reason = (error.strerror or type(error).__name__).lower()
         raise StorageError(reason, where=os.fspath(self.folder), hint="check its owner and mode")
+
+
+def _of_another(party: str, me: str, mine: Path) -> VerificationError:
+    return VerificationError(
+        f"is the folder of {party}, who has taken part in this task from there, and the party key is that of {me}",
+        where=os.fspath(mine),
+        hint="name your own folder; each party has one",
+    )

@@ -41,7 +41,7 @@ from shares.documents.event import (
     SetAside,
     Transcribed,
 )
-from shares.documents.key_event import Approved, KeyBorn, NoncesCommitted, TaskAsked, TaskFinished
+from shares.documents.key_event import Approved, KeyBorn, NoncesCommitted, TaskAsked, TaskFailed, TaskFinished
 
 _GRADES = {"content": "attested", "sealed": "showed the pack closed", "present": "answered"}
 _DISPOSITIONS = {"returned": "the shares return to their custodians", "destroyed": "the key is destroyed"}
@@ -137,6 +137,8 @@ def _said(event: Event) -> str:
             return f"{event.custodian} agreed to {event.work}: {event.summary} (task {event.task.hex()[:16]})"
         case TaskFinished():
             return f"task {event.task.hex()[:16]} to {event.work} finished{_result(event.result)}"
+        case TaskFailed():
+            return f"task {event.task.hex()[:16]} to {event.work} failed{_more(', by ', event.by)}: {event.reason}"
     assert_never(event)
 
 

@@ -2,7 +2,8 @@
 
 Source: RFC 9591, sec. 5 (a coordinator without secrets chooses signers and message) and 5.1 (commitments made
 beforehand are used once).
-May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history, .deal, .folder.
+May import: shares.errors, shares.clock, shares.storage, shares.documents, shares.history, .deal, .folder,
+.forms.
 Secret: nothing; the author's party key is passed through. Confidential: what is to be signed or opened. Public: the
 rest.
 Does not: answer. Each custodian's own machine decides, and refuses a commitment that it has used already.
@@ -28,11 +29,12 @@ from shares.errors import NotEnoughSharesError, ParameterError, StorageError, Ve
 from shares.history.exchange import TASK_NAME, TaskFolder
 from shares.keys.deal import KEY_ID, check_custodians
 from shares.keys.folder import KeyFolder
+from shares.keys.forms import Signable
 from shares.storage import StrPath, read_file
 
 ASKED = "asked"
 """The folder, within a key's, of the tasks that were asked for."""
-TASK_SUFFIX, ISSUER_SUFFIX = ".json", ".issuer.pem"
+TASK_SUFFIX = ".json"
 
 
 def new_joining(
@@ -80,6 +82,8 @@ def new_signing(
     due: datetime,
     form: Form = "plain",
     namespace: str | None = None,
+    issuer: bytes | None = None,
+    earlier: bytes | None = None,
     commitments: Mapping[str, NonceCommitments] | None = None,
     remark: str | None = None,
 ) -> Task:
@@ -93,12 +97,15 @@ def new_signing(
         due: until when, UTC to the second.
         form: what becomes of it.
         namespace: of an OpenSSH signature.
+        issuer: the certificate above, PEM or DER: for a revocation list, and for any certificate but a root.
+        earlier: the revocation list before, where there is one.
         commitments: of each signer, where they were made beforehand; without them a first round makes them.
         remark: for the custodians to read.
 
     Raises:
         ParameterError: too few signers, one that the record does not name or names twice, content that is too large,
             or it is due in the past.
+        SharesError: what every signer would refuse as well; see ``Signable.message``.
     """
     check_signers(record, signers)
     if len(content) > MAX_CONTENT:
@@ -106,6 +113,7 @@ def new_signing(
             f"what is to be signed is larger than {MAX_CONTENT >> 20} MiB",
             hint="sign a file that holds its SHA-256",
         )
+    Signable(content, form, namespace, issuer, earlier).message(record.public_key.encode())
     chosen = [one for one in record.custodians if one.name in signers]
     return _signed(
         author,
@@ -118,12 +126,18 @@ def new_signing(
             what="sign",
             form=form,
             namespace=namespace,
-            content=Content(size=len(content), digest=hashlib.sha256(content).digest()),
+            content=_named(content),
+            issuer=None if issuer is None else _named(issuer),
+            earlier=None if earlier is None else _named(earlier),
             commitments=tuple(commitments[one.name] for one in chosen) if commitments else (),
         ),
         parties=tuple(TaskParty(name=one.name, card=one.card) for one in chosen),
         remark=remark,
     )
+
+
+def _named(data: bytes) -> Content:
+    return Content(size=len(data), digest=hashlib.sha256(data).digest())
 
 
 def check_signers(record: KeyRecord, signers: Sequence[str]) -> None:
@@ -158,6 +172,7 @@ def ask(
     author: OpenPartyKey,
     *,
     issuer: bytes | None = None,
+    earlier: bytes | None = None,
 ) -> TaskFolder:
     """Make the folder of a task about a key, which is then carried to the custodians.
 
@@ -170,31 +185,16 @@ def ask(
         path: a new folder.
         content: what is signed or opened.
         author: who signs the entry.
-        issuer: for a certificate or revocation list, the certificate above: kept until it is put together.
+        issuer, earlier: what else the task names; see ``new_signing``.
 
     Raises:
+        ParameterError: these are not what the task names; the task is kept all the same.
         StorageError: the folder holds a task already, or a medium refuses.
     """
     check_free(path)
-    kept = [folder.add(_kept(task, TASK_SUFFIX), task.to_file())]
-    if issuer is not None:
-        kept.append(folder.add(_kept(task, ISSUER_SUFFIX), issuer))
-    folder.append(asked(task), keys=(author,), documents=kept)
-    return TaskFolder.create(path, task, content=content, record=folder.record)
-
-
-def issuer_of(folder: KeyFolder, task: Task) -> bytes | None:
-    """Return the certificate above the one that a task asked for here is about; None where there is none.
-
-    Raises:
-        StorageError: it cannot be read.
-    """
-    path = folder.path / _kept(task, ISSUER_SUFFIX)
-    return read_file(path, limit=MAX_FILE) if os.path.lexists(path) else None
-
-
-def _kept(task: Task, suffix: str) -> str:
-    return f"{ASKED}/{task.digest().hex()[:32]}{suffix}"
+    kept = folder.add(f"{ASKED}/{task.digest().hex()[:32]}{TASK_SUFFIX}", task.to_file())
+    folder.append(asked(task), keys=(author,), documents=[kept])
+    return TaskFolder.create(path, task, content=content, issuer=issuer, earlier=earlier, record=folder.record)
 
 
 def check_free(path: StrPath) -> None:
@@ -215,7 +215,7 @@ def asked(task: Task) -> TaskAsked:
         what="task-asked",
         task=task.digest(),
         work=work.what,
-        parties=task.names,
+        parties=task.asked,
         content=None if isinstance(work, Joining) else work.content,
         form=work.form if isinstance(work, Signing) else None,
         remark=task.remark,

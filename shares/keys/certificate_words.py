@@ -144,7 +144,8 @@ def _value(value: x509.ExtensionType) -> tuple[str, bool] | None:
         case x509.BasicConstraints(path_length=None):
             return "authority: yes, with any number of others below it", True
         case x509.BasicConstraints(path_length=length):
-            return f"authority: yes, with at most {length} others below it, one under the other", True
+            below = f"at most {length} others below it, one under the other" if length else "no other below it"
+            return f"authority: yes, with {below}", True
         case x509.KeyUsage():
             # The library refuses to say of these two what means nothing where keys are not agreed on.
             asked = [use for use in parts.KEY_USES if value.key_agreement or not use.endswith("cipher_only")]

@@ -23,7 +23,7 @@ from cryptography.hazmat.primitives.asymmetric.ed448 import Ed448PublicKey
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 from cryptography.hazmat.primitives.asymmetric.types import CertificatePublicKeyTypes
 from cryptography.hazmat.primitives.serialization import Encoding
-from cryptography.x509.oid import ExtendedKeyUsageOID
+from cryptography.x509.oid import ExtendedKeyUsageOID, ExtensionOID
 
 from shares.errors import ParameterError, VerificationError
 from shares.keys import certificate_parts as parts
@@ -132,7 +132,7 @@ def from_request(
 
 
 def left_out(request: bytes, purpose: Purpose) -> tuple[str, ...]:
-    """Return the object identifiers of what a request asks for and ``from_request`` leaves out.
+    """Return what a request asks for and ``from_request`` leaves out: its names, where known, and object identifiers.
 
     Args:
         request: PKCS #10, PEM or DER.
@@ -144,10 +144,15 @@ def left_out(request: bytes, purpose: Purpose) -> tuple[str, ...]:
     """
     asked = parts.read_request(request)
     copied = set() if purpose == "authority" else {x509.SubjectAlternativeName.oid}
-    extensions = [found.oid.dotted_string for found in asked.extensions if found.oid not in copied]
+    extensions = [_named(found.oid) for found in asked.extensions if found.oid not in copied]
     # The extensions are themselves one attribute, which is told of item by item.
-    attributes = [found.oid.dotted_string for found in asked.attributes if found.oid != _EXTENSION_REQUEST]
+    attributes = [_named(found.oid) for found in asked.attributes if found.oid != _EXTENSION_REQUEST]
     return (*extensions, *attributes)
+
+
+def _named(oid: x509.ObjectIdentifier) -> str:
+    name = next((name for name, known in vars(ExtensionOID).items() if known == oid), None)
+    return f"{name.lower().replace('_', ' ')} ({oid.dotted_string})" if name else oid.dotted_string
 
 
 def check(body: bytes, public_key: bytes, issuer: bytes | None = None) -> None:

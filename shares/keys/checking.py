@@ -1,9 +1,8 @@
-"""Check a key share against the public record alone, and the record against what its reader knows already.
+"""Check a key's record against what its reader knows of the key already.
 
-Source: P. Feldman, "A practical scheme for non-interactive verifiable secret sharing", FOCS 1987 (s B = sum of
-x^j A_j); RFC 9591, appendix C.2; FORMAT_KEYS.md, sec. 21 and 22.
-May import: shares.errors, shares.documents, shares.group.edwards25519, .own_share.
-Secret: the scalar of a key share, while it is compared. Public: the rest.
+Source: FORMAT_KEYS.md, sec. 21; RFC 8410 (Ed25519 in PEM).
+May import: shares.errors, shares.documents.
+Secret: nothing. Public: everything.
 Does not: say who the parties are: people do, by the fingerprints of their cards.
 """
 
@@ -16,14 +15,8 @@ from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
 from cryptography.hazmat.primitives.serialization import load_pem_public_key
 
 from shares.documents.key_record import KeyRecord
-from shares.documents.key_share import KeyShare
 from shares.documents.party import PartyCard
-from shares.documents.wrapping import ByCard, Opener
-from shares.errors import DocumentError, EpochMismatchError, SetMismatchError, VerificationError, WrongKeyError
-from shares.group.edwards25519 import Scalar
-from shares.keys.own_share import own_share
-
-ANOTHER = "find the record that it belongs to; the key share may be perfectly good"
+from shares.errors import DocumentError, VerificationError
 
 
 def check_record(record: KeyRecord, *, public_key: bytes | None = None, trusted: Sequence[PartyCard] = ()) -> None:
@@ -53,63 +46,6 @@ def check_record(record: KeyRecord, *, public_key: bytes | None = None, trusted:
             "the record is signed by none of the parties you trust",
             hint="ask the dealer or a custodian for the record, and compare its fingerprint aloud",
         )
-
-
-def check_belongs(share: KeyShare, record: KeyRecord) -> None:
-    """Check that a key share is one of this record's, by all that it shows; nothing is opened.
-
-    Raises:
-        SetMismatchError, EpochMismatchError: it is of another key or epoch.
-        VerificationError: it contradicts the record, or the file is damaged.
-    """
-    share.check_whole()
-    if share.key != record.key:
-        raise SetMismatchError(
-            f"the key share is of the key {share.key.hex()}, the record of the key {record.key.hex()}", hint=ANOTHER
-        )
-    if share.epoch != record.epoch:
-        raise EpochMismatchError(
-            f"the key share is of epoch {share.epoch}, the record of epoch {record.epoch}", hint=ANOTHER
-        )
-    holder = next((one for one in record.custodians if one.name == share.custodian), None)
-    problem = None
-    if share.record != record.fingerprint:
-        problem = f"the key share names the record {share.record}, and this one is {record.fingerprint}"
-    elif holder is None:
-        problem = f"the record names no custodian {share.custodian}"
-    elif (share.index, share.need) != (holder.index, record.need):
-        problem = "the key share stands elsewhere than the record says, or needs another number of custodians"
-    elif isinstance(share.wrapping, ByCard) and share.wrapping.card != holder.card.fingerprint:
-        problem = f"the key share is wrapped for the card {share.wrapping.card}, which is not its custodian's"
-    if problem:
-        raise VerificationError(problem, hint="ask the dealer or the other custodians which record is the right one")
-
-
-def opened(share: KeyShare, record: KeyRecord, opener: Opener) -> Scalar:
-    """Return the scalar of a key share, checked against the record's commitments.
-
-    Args:
-        share: of this record.
-        record: the key's.
-        opener: what opens the share, for instance ``OpenPartyKey.open``.
-
-    Raises:
-        WrongKeyError: another party key is needed.
-        SetMismatchError, EpochMismatchError, VerificationError: see ``check_belongs``; or the commitments say that
-            another number was dealt.
-    """
-    check_belongs(share, record)
-    try:
-        return own_share(share, record, share.custodian, opener)
-    except WrongKeyError:
-        raise
-    except VerificationError as error:
-        problem = error
-    raise VerificationError(
-        f"the key share of {share.custodian} does not hold: {problem.what}",
-        hint=problem.hint
-        or "do not use it: keep the file, and tell the others; whoever dealt it was at fault, or it was exchanged",
-    )
 
 
 def public_key_in(pem: bytes, *, where: str | None = None) -> bytes:

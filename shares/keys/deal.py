@@ -135,7 +135,8 @@ def check_custodians(need: int, cards: Sequence[PartyCard], label: str) -> None:
     if not MIN_NEED <= len(cards) <= MAX_HOLDERS:
         raise ParameterError(f"a threshold key has {MIN_NEED} to {MAX_HOLDERS} custodians, and {len(cards)} are given")
     if not MIN_NEED <= need <= len(cards):
-        raise ParameterError(f"of {len(cards)} custodians {MIN_NEED} to {len(cards)} can be needed, not {need}")
+        choice = f"{MIN_NEED} to {len(cards)}" if len(cards) > MIN_NEED else f"just {MIN_NEED}"
+        raise ParameterError(f"of {len(cards)} custodians {choice} can be needed, not {need}")
     if len({card.name.casefold() for card in cards}) != len(cards):
         raise ParameterError("two custodians have one name", hint="ask one of them for a card under another name")
     if len({card.ed25519 for card in cards}) != len(cards):

@@ -10,8 +10,12 @@ from __future__ import annotations
 
 import textwrap
 from dataclasses import dataclass
+from typing import Final
 
-from shares.documents.members import holds_unprintable
+from shares.documents.members import MAX_TEXT, holds_unprintable
+
+_MOST_SUMMED: Final = 4
+"""How many lines a summary has: of a certificate subject, issuer, time and number."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,6 +31,11 @@ class Description:
     kind: str
     lines: tuple[str, ...]
     cautions: tuple[str, ...] = ()
+
+    def summary(self) -> str:
+        """Say it in one text of a journal: the kind, and what comes first of the rest but size and digest."""
+        said = "; ".join((self.kind, *self.lines[2 : 2 + _MOST_SUMMED]))
+        return said if len(said) <= MAX_TEXT else f"{said[: MAX_TEXT - 4].rsplit(' ', 1)[0]} ..."
 
 
 def shown(text: str) -> str:

@@ -9,7 +9,7 @@
     opened/         for which encapsulated keys this custodian has served already
 
 Source: FORMAT_KEYS.md, sec. 21 and 22.
-May import: shares.errors, shares.storage, shares.documents, shares.history, .checking.
+May import: shares.errors, shares.storage, shares.documents, shares.history, .checking, .own_share.
 Secret: party keys that sign, passed through; the key share stays wrapped. Confidential: the journal. Public: the
 record.
 Does not: know what is done in a task; what lies in the folders below belongs to the modules that write there.
@@ -26,11 +26,12 @@ from shares.documents.entry import Entry, NamedDigest
 from shares.documents.event import Event
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
-from shares.documents.party import OpenPartyKey
-from shares.errors import StorageError
+from shares.documents.party import OpenPartyKey, PartyCard
+from shares.errors import ParameterError, StorageError
 from shares.history.files import RECORD_NAME
 from shares.history.journal import Journal, append, load_journal
-from shares.keys.checking import check_belongs, check_record
+from shares.keys.checking import check_record
+from shares.keys.own_share import check_belongs
 from shares.storage import StrPath, make_folder, read_file, write_new
 
 SHARE_NAME = "share.json"
@@ -53,6 +54,12 @@ class KeyFolder:
 
     def __init__(self, path: StrPath) -> None:
         self.path = Path(path)
+        if not os.path.lexists(self.path / RECORD_NAME):
+            raise StorageError(
+                f"is no folder of a key: it holds no {RECORD_NAME}",
+                where=self.where,
+                hint="name the one that `shares key deal` or `join` made, or your own, in which the key's record lies",
+            )
         self.record = load_key_record(self.path / RECORD_NAME)
 
     @property
@@ -74,6 +81,22 @@ class KeyFolder:
         share = KeyShare.parse(read_file(where, limit=MAX_FILE), where=where)
         check_belongs(share, self.record)
         return share
+
+    def check_own(self, card: PartyCard) -> None:
+        """Refuse a folder that is not this party's own: a custodian's is the one with their key share.
+
+        Args:
+            card: the party's.
+
+        Raises:
+            ParameterError: it is another's, or the party is a custodian of the key, and no key share lies here.
+            StorageError, DocumentError, SharesError: the key share that lies here is unreadable or of another key.
+        """
+        holder = self.record.holder_by(card)
+        mine, lies_here = holder.name if holder else None, self.share().custodian if self.holds_share else None
+        if mine != lies_here:
+            whose = f"is the folder of {lies_here}" if lies_here else f"holds no key share, and {mine} is a custodian"
+            raise ParameterError(whose, where=self.where, hint="give your own folder of the key")
 
     @property
     def where(self) -> str:

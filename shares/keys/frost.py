@@ -80,26 +80,25 @@ class Nonces:
     __slots__ = ("_pair", "binding_commitment", "hiding_commitment")
     __hash__ = None  # type: ignore[assignment]
 
-    def __init__(self, hiding: Scalar, binding: Scalar, commitments: tuple[Point, Point] | None = None) -> None:
-        """Hold nonces; ``commit`` draws them.
-
-        Args:
-            hiding, binding: the nonces.
-            commitments: to both, where they are known to be these: it saves two multiplications.
-        """
+    def __init__(self, hiding: Scalar, binding: Scalar) -> None:
+        """Hold nonces; ``commit`` draws them."""
         self._pair: tuple[Scalar, Scalar] | None = (hiding, binding)
-        self.hiding_commitment, self.binding_commitment = commitments or (hiding * BASE, binding * BASE)
+        self.hiding_commitment, self.binding_commitment = hiding * BASE, binding * BASE
 
     @classmethod
     def decode(cls, octets: bytes | memoryview, commitments: tuple[Point, Point]) -> Self:
-        """Return the nonces of these 64 bytes, as ``encode`` gave them; who stored them stored their commitments too.
+        """Return the nonces of these 64 bytes, as ``encode`` gave them, if they are those of these commitments.
 
         Raises:
-            VerificationError: they are not two scalars.
+            VerificationError: they are not two scalars, or those of other commitments. Whoever signs with nonces that
+                somebody else has put in the place of its own gives its key share away.
         """
         if len(octets) != 2 * SIZE:
             raise VerificationError("nonces are two numbers of 32 bytes")
-        return cls(Scalar.decode(octets[:SIZE]), Scalar.decode(octets[SIZE:]), commitments)
+        nonces = cls(Scalar.decode(octets[:SIZE]), Scalar.decode(octets[SIZE:]))
+        if (nonces.hiding_commitment, nonces.binding_commitment) != commitments:
+            raise VerificationError("these nonces are not those of their commitments")
+        return nonces
 
     def encode(self) -> bytes:
         """Return both nonces for safe-keeping, 64 bytes, and be empty. Whoever takes them keeps what they say."""

@@ -1,7 +1,8 @@
 """Hand over a dealt key: to each custodian a folder of their own, then, as the commit point, the dealer's record.
 
 Source: design laws 5 and 6 of this project (DEVELOPERS.md): all or nothing, and nothing is called done unchecked.
-May import: shares.errors, shares.storage, shares.documents, shares.history, .checking, .deal, .folder.
+May import: shares.errors, shares.storage, shares.documents, shares.history, .deal, .folder,
+.own_share.
 Secret: nothing in the open: key shares come here wrapped. Public: records, paths.
 Does not: gather key shares in one place unless all delivery folders are one.
 """
@@ -20,9 +21,9 @@ from shares.documents.party import OpenPartyKey
 from shares.errors import StorageError, VerificationError
 from shares.history.files import RECORD_NAME
 from shares.history.journal import JOURNAL_NAME, first_line
-from shares.keys.checking import check_belongs
 from shares.keys.deal import DealtKey
 from shares.keys.folder import SHARE_NAME, load_key_record
+from shares.keys.own_share import check_belongs
 from shares.storage import discard, leftovers, make_folder, read_back, read_file, write_new
 
 
@@ -52,7 +53,7 @@ def check_places(key_folder: Path, deliveries: Mapping[str, Path]) -> None:
         raise StorageError(
             f"found {len(taken)} file(s) or folder(s) of another key, or left by a run that did not finish: {names}",
             hint="where the key's record stands in its dealer's folder they are in use: choose other folders; else the "
-            "key was never born, and what is left of it is destroyed",
+            "key was never born: destroy what is left of it",
         )
 
 
@@ -79,7 +80,7 @@ def hand_over(
     born = KeyBorn(what="key-born", key=record.key, epoch=record.epoch, record=record.fingerprint, origin=record.origin)
     line = first_line(born, keys=(dealer,))
     places = {name: folder / name for name, folder in deliveries.items()}
-    act = _Act()
+    act = _Act(key_folder / RECORD_NAME)
     try:
         for share in dealt.shares:
             place = places[share.custodian]
@@ -99,7 +100,8 @@ def hand_over(
 class _Act:
     """The files and folders that one handing over has made so far, so that they can be taken back."""
 
-    def __init__(self) -> None:
+    def __init__(self, commit: Path) -> None:
+        self._commit = commit
         self._written: dict[Path, bytes] = {}
         self._folders: list[Path] = []
 
@@ -114,11 +116,15 @@ class _Act:
             raise VerificationError("what is read back differs from what was written", where=os.fspath(path))
 
     def undo(self) -> None:
-        """Remove what was written, the last first: a record never outlives its key shares."""
+        """Remove what was written, the last first. Where the dealer's record cannot be removed all stays: it must never
+        outlive the key shares."""
         for path, data in reversed(self._written.items()):
-            with contextlib.suppress(StorageError):
+            try:
                 if os.path.isfile(path) and read_file(path, limit=MAX_FILE) == data:
                     discard(path)
+            except StorageError:
+                if path == self._commit:
+                    return
         for folder in reversed(self._folders):
             with contextlib.suppress(OSError):  # Somebody else has put something there, or it was never made.
                 os.rmdir(folder)

@@ -28,7 +28,7 @@ what takes the others' part away.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 
 from shares.documents.key_event import Approved, KeyBorn
 from shares.documents.key_record import KeyRecord
@@ -44,6 +44,7 @@ from shares.documents.task_message import (
     Reveal,
     Review,
     ShownShare,
+    TaskMessage,
 )
 from shares.documents.wrapping import card_sealer
 from shares.errors import ParameterError, VerificationError
@@ -59,6 +60,7 @@ from shares.keys.verdict import (
     REVIEWS,
     commitments_of,
     complaints,
+    confirms,
     index_of,
     joining,
     proof_context,
@@ -102,6 +104,17 @@ class JointCourse:
             if found:
                 return found
         return None
+
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        """Say whether a party that has said several things at the end has signed the record with this one.
+
+        Who has signed it holds a share, or says so; what else it told somebody takes the key from nobody.
+        """
+        return confirms(message, inbox)
+
+    def spares(self, names: Collection[str]) -> bool:
+        """Say that everybody has to confirm."""
+        return not names
 
 
 class JointPart:
@@ -170,16 +183,21 @@ class JointPart:
         return round in (FRESH_KEYS, CONFIRMATIONS)
 
     def event(self, round: int, inbox: Inbox) -> Approved | None:
-        """Return the custodian's agreement to take part."""
-        if round != FRESH_KEYS:
+        """Return the custodian's agreement: to take part, and to sign the record."""
+        if not self.asks(round):
             return None
+        summary = f"to generate a key of which {self._need} of {len(self._task.parties)} are needed"
+        if round == CONFIRMATIONS:
+            summary = (
+                f"to check a share of the key that is generated, and to sign its record {record_of(inbox).fingerprint}"
+            )
         return Approved(
             what="approved",
             task=self._task.digest(),
             work="join",
             custodian=self._me,
             content=None,
-            summary=f"to generate a key of which {self._need} of {len(self._task.parties)} are needed",
+            summary=summary,
         )
 
     def speak(self, round: int, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Said:
@@ -200,6 +218,9 @@ class JointPart:
         if round == CONFIRMATIONS:
             return self._confirm(inbox, state, received)
         raise ParameterError(f"nothing is said in round {round} of a joint generation")
+
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Nothing has to be erased before a message is released."""
 
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
         """Return the key share and, last, the record that all have signed.

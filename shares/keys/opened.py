@@ -55,7 +55,7 @@ def earlier(own: Path, new: OpenedMessage) -> OpenedMessage | None:
         )
     if known.content != new.content:
         raise VerificationError(
-            f"the encapsulated key of this message was served already, for another message ({known.receiver})",
+            f"the encapsulated key of this message was served already, for another message, to {known.receiver}",
             where=str(path),
             hint="no honest sender uses one twice: find out who made this message, and do not take part",
         )

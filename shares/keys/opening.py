@@ -15,7 +15,7 @@ Does not: carry messages or write the plaintext: ``history`` and the caller do.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from pathlib import Path
 from typing import Final, NamedTuple
 
@@ -28,7 +28,7 @@ from shares.documents.members import MAX_TEXT
 from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Opening, Task
-from shares.documents.task_message import Partial
+from shares.documents.task_message import Partial, TaskMessage
 from shares.errors import NotEnoughSharesError, ParameterError, VerificationError
 from shares.group.edwards25519 import Point
 from shares.group.montgomery import public_of
@@ -88,6 +88,14 @@ class OpeningCourse:
         author = self.task.party_by(self.task.author)
         return Failure(author.name if author else None, problem)
 
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        """Say whether a partial result is in it. Whether it holds, the receiver alone can tell, and looks at each."""
+        return isinstance(message.body, Partial) and message.box_for(self.work.receiver) is not None
+
+    def spares(self, names: Collection[str]) -> bool:
+        """Say whether without these custodians there are still as many as are needed."""
+        return len(set(self.custodians) - set(names)) >= self.record.need
+
 
 class OpeningPart:
     """What one party does in an opening.
@@ -136,11 +144,7 @@ class OpeningPart:
             f"Its SHA-256 is {in_groups(work.content.digest)}; its encapsulated key is {in_groups(work.encapsulated)}.",
             self._receiver_words(),
             f"{task.author.name} ({task.author.fingerprint}) asks for it. Nobody sees what is in it before it is open.",
-            f"Caution: you open every message with this encapsulated key, not this one alone, and {work.receiver} "
-            "learns what is in them.",
-            "Caution: who has seen another message to this key can make one out of it that opens both, and you cannot "
-            "see that. Agree only for a receiver who may read whatever was encrypted to this key.",
-            "Caution: X25519 does not withstand quantum computers. It is not for secrets that must last ten years.",
+            *(f"Caution: {caution}" for caution in cautions_of(work)),
         ]
         if known is not None and known.task != task.digest():  # A run of this task that was stopped is no news.
             when = clock.to_text(known.time)
@@ -193,6 +197,9 @@ class OpeningPart:
         partial = partial_result(share, encapsulated, proof_context(task, record, record.holder(self._me).index))
         return Said(body=Partial(what="partial"), state=Secret(0), sealed={self._work.receiver: partial})
 
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Nothing has to be erased before a message is released."""
+
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
         """Return a custodian's end of it. The receiver's state is kept until ``combine`` has made use of it."""
         task, receiver = self._course.task, self._work.receiver
@@ -215,7 +222,25 @@ class OpeningPart:
         )
 
 
-def combine(task: Task, record: KeyRecord, inbox: Inbox, received: Sequence[Received]) -> Opened:
+def cautions_of(work: Opening) -> tuple[str, ...]:
+    """Return what a custodian is to think of before they help to open any message."""
+    return (
+        f"You open every message with this encapsulated key, not this one alone, and {work.receiver} learns what is in "
+        "them.",
+        "Who has seen another message to this key can make one out of it that opens both, and you cannot see that. "
+        "Agree only for a receiver who may read whatever was encrypted to this key.",
+        "X25519 does not withstand quantum computers. It is not for secrets that must last ten years.",
+    )
+
+
+def combine(
+    task: Task,
+    record: KeyRecord,
+    inbox: Inbox,
+    received: Sequence[Received],
+    *,
+    besides: Sequence[Received] = (),
+) -> Opened:
     """Return what is in the message, as soon as k partial results hold. The receiver wipes it.
 
     Args:
@@ -223,6 +248,7 @@ def combine(task: Task, record: KeyRecord, inbox: Inbox, received: Sequence[Rece
         record: of the key and epoch that it names.
         inbox: with the message itself; the round of partial results need not be complete.
         received: what was sealed for the receiver, opened, by round.
+        besides: what custodians who have given several partial results have sealed besides. One that holds counts.
 
     Raises:
         NotEnoughSharesError: fewer than k hold; those that do not are named, and so is who is awaited.
@@ -239,15 +265,18 @@ def combine(task: Task, record: KeyRecord, inbox: Inbox, received: Sequence[Rece
         if name not in said:
             continue
         index = record.holder(name).index
-        partial = partials.get(name)
         problem = "nothing that opens was sealed for the receiver"
-        if partial is not None and isinstance(said[name].body, Partial):
+        for partial in (partials.get(name), *(one.get(name) for one in besides)):
+            if partial is None or not isinstance(said[name].body, Partial):
+                continue
             try:
                 context = proof_context(task, record, index)
                 results[index] = checked_result(partial, record, index, encapsulated, context)
-                continue
+                break
             except VerificationError as error:
                 problem = error.what
+        if index in results:
+            continue
         bad.append(Failure(name, problem))
     if len(results) < record.need:
         named = "".join(f"; that of {one.by} does not: {one.what}" for one in bad)
@@ -289,7 +318,7 @@ def _decrypted(work: Opening, record: KeyRecord, message: bytes, dh: Secret) -> 
         except VerificationError:
             pass
     raise VerificationError(
-        "the key is right, for k partial results hold; and yet the message does not open",
+        f"the key is right, for {record.need} partial results hold; and yet the message does not open",
         hint="it is damaged, is to another key, or was bound to other info or associated data or encrypted with the "
         "other cipher: ask the sender, and begin a new task with what they say",
     )

@@ -104,7 +104,7 @@ def revocation_list(
     parts.check_times(this_update, next_update)
     before = None if earlier is None else _earlier(earlier, above, public_key)
     if number is None:
-        number = 1 if before is None else _number(before) + 1
+        number = 1 if before is None else number_of(before) + 1
     if not 1 <= number < 1 << 63:
         raise ParameterError("the number of a list is 1 to 2^63 - 1")
     entries = [*(before or ()), *(_entry(one, this_update) for one in revoked)]
@@ -145,7 +145,7 @@ def check(body: bytes, public_key: bytes, issuer: bytes, *, earlier: bytes | Non
     if earlier is None:
         return
     before = _earlier(earlier, above, public_key)
-    if _number(draft) <= _number(before) or draft.last_update_utc < before.last_update_utc:
+    if number_of(draft) <= number_of(before) or draft.last_update_utc < before.last_update_utc:
         raise VerificationError("it is not numbered and dated after the earlier list")
     missing = {entry.serial_number for entry in before} - {entry.serial_number for entry in draft}
     if missing:
@@ -155,7 +155,7 @@ def check(body: bytes, public_key: bytes, issuer: bytes, *, earlier: bytes | Non
         )
 
 
-def finished(body: bytes, signature: bytes, public_key: bytes, issuer: bytes) -> bytes:
+def finished(body: bytes, signature: bytes, public_key: bytes, issuer: bytes, *, earlier: bytes | None = None) -> bytes:
     """Check the quorum's signature and return the list.
 
     Args:
@@ -163,6 +163,7 @@ def finished(body: bytes, signature: bytes, public_key: bytes, issuer: bytes) ->
         signature: 64 bytes.
         public_key: the threshold key's Edwards point, 32 bytes.
         issuer: the certificate of the threshold key, PEM or DER.
+        earlier: as for ``check``.
 
     Returns:
         PEM.
@@ -171,11 +172,17 @@ def finished(body: bytes, signature: bytes, public_key: bytes, issuer: bytes) ->
         DocumentError, ParameterError: as for ``check``.
         VerificationError: as for ``check``, or the signature is not by this key of this body.
     """
-    check(body, public_key, issuer)
+    check(body, public_key, issuer, earlier=earlier)
     check_signature(public_key, body, signature)
     listed = parts.read_list(parts.whole(body, signature))
     check_signature(public_key, listed.tbs_certlist_bytes, listed.signature)
     return listed.public_bytes(Encoding.PEM)
+
+
+def number_of(listed: x509.CertificateRevocationList) -> int:
+    """Return the number of a list; 0 where it has none (RFC 5280, sec. 5.2.3)."""
+    found = extension(listed, x509.CRLNumber)
+    return 0 if found is None else found.crl_number
 
 
 def _earlier(data: bytes, issuer: x509.Certificate, public_key: bytes) -> x509.CertificateRevocationList:
@@ -183,11 +190,6 @@ def _earlier(data: bytes, issuer: x509.Certificate, public_key: bytes) -> x509.C
     parts.check_issued_by(listed, issuer)
     check_signature(public_key, listed.tbs_certlist_bytes, listed.signature)
     return listed
-
-
-def _number(listed: x509.CertificateRevocationList) -> int:
-    found = extension(listed, x509.CRLNumber)
-    return 0 if found is None else found.crl_number
 
 
 def _entry(one: Revoked, this_update: datetime) -> x509.RevokedCertificate:

@@ -3,8 +3,7 @@
 Source: RFC 9591, sec. 5 (two rounds; the first may be over beforehand), 5.4 (who misbehaves is named) and 7 (what a
     signer checks, and that it agrees to each message); FORMAT_KEYS.md, sec. 23 and 24.
 May import: shares.errors, shares.memory, shares.documents, shares.history.rounds, shares.group.edwards25519,
-shares.sharing.verifiable, .certificates, .certificate_parts, .content, .description, .frost, .nonces, .own_share,
-.revocation, .ssh_signature.
+shares.sharing.verifiable, .description, .forms, .frost, .nonces, .own_share.
 Secret: the key share and the nonces, while a share of the signature is worked out. Public: all else that is said.
 Confidential: what is signed.
 Does not: carry messages or write files: ``history`` and the caller do.
@@ -13,7 +12,7 @@ Does not: carry messages or write files: ``history`` and the caller do.
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from pathlib import Path
 from typing import Final
 
@@ -22,17 +21,15 @@ from shares.documents.event import Event
 from shares.documents.key_event import Approved, Content, TaskFinished
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
-from shares.documents.members import MAX_TEXT
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Signing, Task
-from shares.documents.task_message import Commitment, SignatureShare
+from shares.documents.task_message import Commitment, SignatureShare, TaskMessage
 from shares.errors import ParameterError, SharesError, VerificationError
 from shares.group.edwards25519 import Point
 from shares.history.rounds import Failure, Inbox, Outcome, Received, Said
-from shares.keys import certificates, frost, revocation, ssh_signature
-from shares.keys.certificate_parts import read_certificate_body, read_list_body
-from shares.keys.content import described
+from shares.keys import frost
 from shares.keys.description import Description
+from shares.keys.forms import Signable
 from shares.keys.nonces import NonceStore
 from shares.keys.own_share import own_share
 from shares.memory import Secret
@@ -50,6 +47,7 @@ class SigningCourse:
     Args:
         task: to sign.
         record: of the key and epoch that it names.
+        issuer, earlier: the files of these names beside the task, where it names them.
 
     Raises:
         ParameterError: the task is not to sign.
@@ -58,9 +56,13 @@ class SigningCourse:
 
     private = False
 
-    def __init__(self, task: Task, record: KeyRecord) -> None:
+    def __init__(
+        self, task: Task, record: KeyRecord, *, issuer: bytes | None = None, earlier: bytes | None = None
+    ) -> None:
         self.task = task
         self.record = record
+        self._beside = (issuer, earlier)
+        self._found: tuple[bytes, bytes] | None = None
         self.work = work_of(task)
         check_signers(task, record)
         self.rounds: Sequence[str] = (SHARES,) if self.work.commitments else (COMMITMENTS, SHARES)
@@ -88,14 +90,38 @@ class SigningCourse:
             return None
         return Failure(wrong[0] if wrong else None, _misbehaved(wrong))
 
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        """Say whether a share of the signature verifies (RFC 9591, sec. 5.4); of one signer, one number does."""
+        body, index = message.body, self.record.holder(message.sender).index
+        public = public_share(self.record.commitments, index)
+        return isinstance(body, SignatureShare) and frost.verify_signature_share(
+            index, public, body.share, self.agreed(inbox)
+        )
+
+    def spares(self, names: Collection[str]) -> bool:
+        """Say that everybody has to sign whom the task names."""
+        return not names
+
     @property
     def last(self) -> int:
         """The number of the round in which shares are said."""
         return len(self.rounds) - 1
 
+    def signable(self, inbox: Inbox) -> Signable:
+        """Return what is to be signed and what it is checked by; see ``signable``."""
+        return signable(self.task, inbox.content, *self._beside)
+
     def message(self, inbox: Inbox) -> bytes:
-        """Return the bytes that the key signs; see ``message_to_sign``."""
-        return message_to_sign(self.task, inbox.content, self.record.public_key)
+        """Return the bytes that the key signs, checked as each signer must.
+
+        Raises:
+            SharesError: they are not what the task names, or not what its form promises; see ``Signable.message``.
+        """
+        # The same bytes are not checked again: a long list takes its time.
+        if self._found is None or self._found[0] is not inbox.content:
+            checked = self.signable(inbox)
+            self._found = checked.content, checked.message(self.record.public_key.encode())
+        return self._found[1]
 
     def commitments(self, inbox: Inbox) -> dict[str, tuple[Point, Point]]:
         """Return everybody's commitments by name: those of the task, or of the first round.
@@ -160,15 +186,25 @@ class SigningPart:
         share: the signer's key share.
         key: the signer's party key.
         folder: the signer's own folder of this key; nonces lie in it.
+        issuer, earlier: as for ``SigningCourse``.
 
     Raises:
         ParameterError, VerificationError: as for ``SigningCourse``.
     """
 
     def __init__(
-        self, task: Task, me: str, record: KeyRecord, share: KeyShare, key: OpenPartyKey, folder: Path
+        self,
+        task: Task,
+        me: str,
+        record: KeyRecord,
+        share: KeyShare,
+        key: OpenPartyKey,
+        folder: Path,
+        *,
+        issuer: bytes | None = None,
+        earlier: bytes | None = None,
     ) -> None:
-        self._course = SigningCourse(task, record)
+        self._course = SigningCourse(task, record, issuer=issuer, earlier=earlier)
         self._me = me
         self._share = share
         self._key = key
@@ -187,7 +223,6 @@ class SigningPart:
             f"{by} asks for a signature by the key {course.record.label}.",
             f"What is signed is {told.kind}.",
             *(f"  {line}" for line in told.lines),
-            *(["  as an SSH signature for the namespace " + course.work.namespace] if course.work.namespace else []),
             *(f"Caution: {caution}" for caution in told.cautions),
         ]
         if course.rounds[round] == COMMITMENTS:
@@ -210,14 +245,13 @@ class SigningPart:
         if self._course.rounds[round] == COMMITMENTS:
             return None
         told = self._told(inbox)
-        summary = "; ".join((told.kind, *told.lines[2:]))  # Size and digest stand beside it.
         return Approved(
             what="approved",
             task=self._course.task.digest(),
             work="sign",
             custodian=self._me,
             content=self._course.work.content,
-            summary=summary if len(summary) <= MAX_TEXT else f"{summary[: MAX_TEXT - 4]} ...",
+            summary=told.summary(),
         )
 
     def speak(self, round: int, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Said:
@@ -241,25 +275,31 @@ class SigningPart:
         signed = frost.sign(record.holder(self._me).index, share, nonces, agreed)
         return Said(body=SignatureShare(what="signature-share", share=signed), state=Secret(0))
 
+    def kept(self, round: int, inbox: Inbox) -> None:
+        """Erase the nonces of a share that is kept, whatever becomes of the task.
+
+        Raises:
+            StorageError: the folder of nonces refuses.
+        """
+        if self._course.rounds[round] == SHARES:
+            self._store.erase(*self._course.commitments(inbox)[self._me])
+
     def finish(self, inbox: Inbox, state: Secret, received: Sequence[Received]) -> Outcome:
-        """Check the signature and erase the nonces that it took. Whoever asked puts the signature together.
+        """Check the signature. Whoever asked puts it together.
 
         Raises:
             VerificationError: it does not verify: who sent a wrong share is named.
         """
         course = self._course
         signature = course.signature(inbox)
-        self._store.erase(*course.commitments(inbox)[self._me], self._purpose(course.agreed(inbox), inbox))
         task = course.task.digest()
         finished = TaskFinished(what="task-finished", task=task, work="sign", result=hashlib.sha256(signature).digest())
         words = ("The signature is made, and verifies with the key's public half. Your nonces are erased.",)
         return Outcome(files=(), event=finished, words=words)
 
     def _told(self, inbox: Inbox) -> Description:
-        """Return what the bytes are. Of an SSH signature the file is looked at, whose digest is what the key signs."""
-        message, public_key = self._course.message(inbox), self._course.record.public_key.encode()
-        file = inbox.content if self._course.work.form == "openssh" else None
-        return described(message if file is None else file, public_key)
+        self._course.message(inbox)  # What would be refused is not described.
+        return self._course.signable(inbox).described(self._course.record.public_key.encode())
 
     def _purpose(self, agreed: frost.Agreed, inbox: Inbox) -> bytes:
         """Return a digest of all that the share depends on, and of the task."""
@@ -304,69 +344,51 @@ def check_signers(task: Task, record: KeyRecord) -> None:
         raise VerificationError(f"{record.need} signers are needed, and the task names {len(task.parties)}")
 
 
-def message_to_sign(task: Task, content: bytes | None, public_key: Point) -> bytes:
-    """Return the bytes that the key signs, by the form that the task asks for.
+def signable(task: Task, content: bytes | None, issuer: bytes | None, earlier: bytes | None) -> Signable:
+    """Return what a task is to sign, once it is known to be what the task names.
 
     Args:
         task: to sign.
         content: what lies beside it; for a certificate or a revocation list its body.
-        public_key: the key's.
+        issuer, earlier: as for ``SigningCourse``.
 
     Raises:
-        VerificationError: there is no content, it is not the task's, or a root that is not this key's.
-        DocumentError: it is no body of a certificate or of a revocation list, where one is to be signed.
+        VerificationError: one of them is missing, or not what the task names.
     """
     work = work_of(task)
-    if content is None:
-        raise VerificationError("what is to be signed is not beside the task", hint="have it sent again")
-    if Content(size=len(content), digest=hashlib.sha256(content).digest()) != work.content:
-        raise VerificationError("what is to be signed is not what the task names", hint="have it sent again")
-    if work.form == "openssh":
-        return ssh_signature.to_be_signed(hashlib.sha512(content).digest(), work.namespace or "")
-    if work.form == "certificate":
-        draft = read_certificate_body(content)
-        if draft.subject == draft.issuer:
-            certificates.check(content, public_key.encode())
-    elif work.form == "revocation-list":
-        read_list_body(content)
-    return content
+    for wanted, found, what in (
+        (work.content, content, "what is to be signed"),
+        (work.issuer, issuer, "the certificate of its issuer"),
+        (work.earlier, earlier, "the earlier revocation list"),
+    ):
+        if wanted is not None and found is None:
+            raise VerificationError(f"{what} is not beside the task", hint="have it sent again")
+        if (None if found is None else Content(size=len(found), digest=hashlib.sha256(found).digest())) != wanted:
+            raise VerificationError(f"{what} is not what the task names", hint="have it sent again")
+    return Signable(content or b"", work.form, work.namespace, issuer, earlier)
 
 
-def finish_signing(task: Task, record: KeyRecord, inbox: Inbox, *, issuer: bytes | None = None) -> tuple[bytes, str]:
+def finish_signing(
+    task: Task, record: KeyRecord, inbox: Inbox, *, issuer: bytes | None = None, earlier: bytes | None = None
+) -> tuple[bytes, str]:
     """Put the signature together in the form that the task asks for. Anybody can: it takes no secret.
 
     Args:
         task: to sign.
         record: of the key and epoch that it names.
         inbox: complete, with the content.
-        issuer: the certificate above, PEM or DER: for a revocation list, and for any certificate but a root.
+        issuer, earlier: as for ``SigningCourse``.
 
     Returns:
-        The file, and the ending that its name usually has: 64 bytes of a plain signature, an armoured SSH signature,
-        a certificate or revocation list in PEM.
+        The file, and the ending that its name usually has; see ``Signable.finished``.
 
     Raises:
         VerificationError: the signature does not verify: who sent a wrong share is named.
-        ParameterError, DocumentError: as for ``certificates.finished`` and ``revocation.finished``; a share or the
-            issuer's certificate is missing.
+        SharesError: a share is missing; or as for ``SigningCourse.message``.
     """
-    course = SigningCourse(task, record)
-    signature, public_key = course.signature(inbox), record.public_key.encode()
-    body = inbox.content or b""
-    match course.work.form:
-        case "plain":
-            return signature, ".sig"
-        case "openssh":
-            digest = hashlib.sha512(body).digest()
-            return ssh_signature.armoured(public_key, digest, course.work.namespace or "", signature), ".sig"
-        case "certificate":
-            return certificates.finished(body, signature, public_key, issuer), ".pem"
-        case "revocation-list":
-            if issuer is None:
-                raise ParameterError(
-                    "a revocation list belongs to a certificate of this key", hint="give that certificate as the issuer"
-                )
-            return revocation.finished(body, signature, public_key, issuer), ".pem"
+    course = SigningCourse(task, record, issuer=issuer, earlier=earlier)
+    signature = course.signature(inbox)
+    return course.signable(inbox).finished(record.public_key.encode(), signature)
 
 
 def _misbehaved(names: Sequence[str]) -> str:

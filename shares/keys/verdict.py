@@ -27,6 +27,7 @@ from shares.documents.task_message import (
     Reveal,
     Review,
     ShownShare,
+    TaskMessage,
 )
 from shares.errors import ParameterError, VerificationError
 from shares.history.rounds import Failure, Inbox
@@ -169,7 +170,11 @@ def _of_reviews(inbox: Inbox) -> Iterator[Failure]:
     for name, by in complaints(inbox).items():
         # To answer them all would show as many numbers as open the contribution.
         if len(by) >= need:
-            yield Failure(name, f"{', '.join(by)} complain of what {name} has dealt: as many as the key will need")
+            yield Failure(
+                None,
+                f"{', '.join(by)} complain of what {name} has dealt: as many as the key will need, and so it must not "
+                "be shown; which side broke the rules, nothing proves",
+            )
 
 
 def _of_answers(inbox: Inbox) -> Iterator[Failure]:
@@ -202,11 +207,23 @@ def _of_confirmations(inbox: Inbox) -> Iterator[Failure]:
     for name, accusation in said(inbox, CONFIRMATIONS, Accusation).items():
         yield _judged(inbox, name, accusation)
     for name, confirmation in said(inbox, CONFIRMATIONS, Confirmation).items():
-        if not _confirms(confirmation, record, record.holder(name).card):
+        if not _signs(confirmation, record, record.holder(name).card):
             yield Failure(name, f"{name} has not signed the record that comes of these messages")
 
 
-def _confirms(confirmation: Confirmation, record: KeyRecord, card: PartyCard) -> bool:
+def confirms(message: TaskMessage, inbox: Inbox) -> bool:
+    """Say whether a message of the last round signs the record that comes of what was said before it.
+
+    Args:
+        message: by a party of the task.
+        inbox: with every party's commitments in the open, which are fine.
+    """
+    record = record_of(inbox)
+    body = message.body
+    return isinstance(body, Confirmation) and _signs(body, record, record.holder(message.sender).card)
+
+
+def _signs(confirmation: Confirmation, record: KeyRecord, card: PartyCard) -> bool:
     try:
         record.signed([confirmation.signature])
     except ParameterError:

@@ -86,6 +86,7 @@ PAGES: list[tuple[str, ...]] = [
     ("task",),
     ("task", "next"),
     ("task", "show"),
+    ("task", "drop"),
     ("sheet",),
     ("selftest",),
     ("completion",),

@@ -150,6 +150,11 @@ def test_show_exports_what_others_read(keyed: Keyed) -> None:
     assert_refused(["key", "show", keyed.key, "--pem", pem], 5, "never overwritten", watched=keyed.folder)
 
 
+def test_two_public_keys_do_not_go_to_one_file(keyed: Keyed) -> None:
+    same = ["key", "show", keyed.key, "--pem", keyed.path("same"), "--x25519-pem", f"{keyed.folder}/./same"]
+    assert_refused(same, 2, "one file", watched=keyed.folder)
+
+
 def test_verify_the_record_alone_against_what_is_known(keyed: Keyed) -> None:
     pem, office, auditor = keyed.path("k.pem"), keyed.path(f"{OFFICE}.card.json"), keyed.path(f"{AUDITOR}.card.json")
     assert run("key", "show", keyed.key, "--pem", pem).code == 0
@@ -167,6 +172,9 @@ def test_verify_says_what_it_has_not_looked_at(keyed: Keyed) -> None:
     closed = run("key", "verify", keyed.own("north-pier"), "--json").json
     assert (closed["opened"], closed["custodian"]) == (False, "north-pier")
     assert "It was not opened" in closed["proves"]
+    by_hand = run("key", "verify", keyed.own("north-pier")).out
+    assert by_hand.startswith("The key share of north-pier names this record, and was not opened: ")
+    assert " holds" not in by_hand
     share = keyed.own("north-pier") / "share.json"
     assert_refused(["key", "verify", share], 2, "--record")
     done = run(
@@ -215,7 +223,11 @@ def test_other_commands_say_where_to_turn(keyed: Keyed) -> None:
     assert "`shares key verify`" in run("show", share).out
     assert "`shares key show`" in run("show", record).out
     assert_refused(["verify", share, "--record", record], 4, "shares key")
-    assert_refused(["recover", share, "--check"], 3, "shares key")
+    shares = [keyed.own(name) / "share.json" for name in NAMES]
+    line = assert_refused(["recover", *shares, "--check"], 3, "shares key", *map(str, shares))
+    assert line.count("shares key") == 1
+    assert_refused(["key", "show", keyed.folder], 5, "record.json")
+    assert_refused(["key", "commit", keyed.folder, "--to=c", *keyed.as_(NAMES[0], "--key")], 5, "is no folder of a key")
 
 
 def test_nothing_secret_is_printed_or_left_in_the_open(bare: Keyed) -> None:

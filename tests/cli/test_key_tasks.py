@@ -7,22 +7,30 @@ uses ``cryptography`` alone.
 from __future__ import annotations
 
 import hashlib
+import os
+import re
 import subprocess
 import sys
 from collections.abc import Sequence
+from datetime import timedelta
 from pathlib import Path
 
 import pytest
-from cli.harness import Result, assert_refused, files_in, run
+from cli.harness import PROGRAM, Result, assert_refused, files_in, run
 from cli.keyed import OFFICE, Keyed
 from cli.test_key import tool
 from parties import unlocked
 
-from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, TaskFinished
+from shares import clock
+from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, TaskFailed, TaskFinished
 from shares.documents.task import Task
 from shares.documents.task_message import SignatureShare, TaskMessage
 from shares.group.edwards25519 import Scalar
 from shares.history.journal import load_journal
+from shares.keys.asking import ask, new_signing
+from shares.keys.folder import KeyFolder
+from shares.keys.forms import Signable
+from shares.keys.revocation import Revoked, revocation_list
 
 SENDER = Path(__file__).resolve().parents[2] / "examples" / "send_to_key.py"
 FIRST, SECOND, THIRD = "north-pier", "south-pier", "light-house"
@@ -69,6 +77,10 @@ class TestSigning:
         keyed.answer(task, FIRST, SECOND)
         signature = keyed.finish(task, "sig")
         assert len(signature.read_bytes()) == 64
+        again = run(*finish(keyed, task, "--to", keyed.path("sig-2"), "--json")).json
+        assert (again["again"], again["signers"]) == (True, [FIRST, SECOND])
+        assert again["sha256"] == hashlib.sha256(keyed.path("sig-2").read_bytes()).hexdigest()
+        assert keyed.path("sig-2").read_bytes() == signature.read_bytes()
         verify = ["openssl", "pkeyutl", "-verify", "-pubin", "-inkey", keyed.path("k.pem"), "-rawin"]
         assert "Success" in tool(*verify, "-in", keyed.path("release.txt"), "-sigfile", signature)
         # The office's journal tells what was asked and what came of it, the signers' what they agreed to.
@@ -85,8 +97,11 @@ class TestSigning:
         task = Task.parse((keyed.path("t") / "task.json").read_bytes())
         assert task.fingerprint in by_hand.out
         assert (task.remark, (task.due - task.created).days) == ("release day", 2)
+        assert f"shares key finish {keyed.key} {keyed.path('t')} --to FILE --sign " in by_hand.out
+        assert by_hand.err == ""
         told = run(*sign_arguments(keyed, "--json", *keyed.as_(OFFICE), task="u")).json
         assert (told["work"], told["parties"], told["done"]) == ("sign", [FIRST, SECOND], True)
+        assert told["exit"] == 0
         assert (keyed.path("u") / "content").read_bytes() == keyed.path("release.txt").read_bytes()
 
     @pytest.mark.parametrize(
@@ -115,6 +130,11 @@ class TestSigning:
     def test_what_no_task_can_say_is_refused(self, keyed: Keyed, more: list[str], words: str) -> None:
         assert_refused(sign_arguments(keyed, *more, *keyed.as_(OFFICE)), 2, words, watched=keyed.folder)
 
+    def test_a_task_that_lies_about_for_long_is_cautioned_of(self, keyed: Keyed) -> None:
+        done = run(*sign_arguments(keyed, "--due", "1y", *keyed.as_(OFFICE)))
+        assert done.code == 0
+        assert "Caution: until " in done.err
+
     def test_a_folder_is_for_one_task(self, keyed: Keyed) -> None:
         keyed.ask("sign", keyed.path("release.txt"), task="t")
         assert_refused(sign_arguments(keyed, *keyed.as_(OFFICE)), 5, "a task is here already", watched=keyed.folder)
@@ -136,7 +156,43 @@ class TestSigning:
         task = keyed.ask("sign", keyed.path("release.txt"), task="t")
         (task / "content").write_bytes(b"release 8\n")
         assert keyed.next(task, FIRST).code == 4
-        assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, watched=keyed.folder)
+        assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, "the whole folder", watched=keyed.folder)
+        shown = run("task", "show", task)
+        assert (shown.code, "This copy of the task is damaged" in shown.out) == (4, True)
+        assert "failed" not in shown.out
+        assert run("task", "show", task, "--json").json["state"] == "damaged"
+        assert events(keyed.key, TaskFailed) == []
+
+    def test_past_its_due_date_nobody_is_asked(self, keyed: Keyed, monkeypatch: pytest.MonkeyPatch) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        for name in (FIRST, SECOND):
+            assert keyed.next(task, name).code == 0
+        due = Task.parse((task / "task.json").read_bytes()).due
+        monkeypatch.setattr(clock, "now", lambda: due + timedelta(days=1))
+        refused = keyed.next(task, FIRST)
+        assert (refused.code, refused.out) == (4, "")
+        assert "the task was due" in refused.err
+        assert "Asked for by" not in refused.err
+        line = assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 3, FIRST, "nobody can speak in it")
+        assert "try again" not in line
+        assert "begin a new task" in run("task", "show", task).out
+
+    def test_whose_folder_it_is_is_said_before_anybody_is_asked(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        arguments = ["task", "next", task, "--mine", keyed.own(FIRST), *keyed.as_(SECOND, "--key"), "--yes"]
+        assert_refused(arguments, 4, f"not that of {SECOND}, but of {FIRST}", watched=keyed.folder)
+        assert keyed.next(task, FIRST).code == 0
+        assert_refused(arguments, 4, f"is the folder of {FIRST}", "name your own", watched=keyed.folder)
+        other = Keyed.make(keyed.folder / "other").dealt()
+        foreign = ["task", "next", task, "--mine", other.own(SECOND), *keyed.as_(SECOND, "--key"), "--yes"]
+        assert_refused(foreign, 4, "the key share is of the key", watched=keyed.folder)
+
+    def test_where_what_was_said_is_sent(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="t")
+        told = [" ".join(keyed.next(task, name).out.split()) for name in (FIRST, SECOND, FIRST)]
+        to_office = "to harbour-office, who puts it together: `shares key finish`"
+        assert [to_office in one for one in told] == [False, False, True]
+        assert "to the others. Run this again with their messages" in told[0]
 
     def test_who_cheats_is_named(self, keyed: Keyed) -> None:
         """A signer whose machine says a wrong share, under its own good signature."""
@@ -161,6 +217,11 @@ class TestSigning:
         line = assert_refused(finish(keyed, task, "--to", keyed.path("sig")), 4, "the task has failed", good.sender)
         assert other not in line
         assert not keyed.path("sig").exists()
+        # An auditor sees it in the office's journal, told once however often it is tried.
+        assert run(*finish(keyed, task, "--to", keyed.path("sig"))).code == 4
+        (told,) = events(keyed.key, TaskFailed)
+        assert (told.by, told.work, good.sender in told.reason) == (good.sender, "sign", True)
+        assert f"failed, by {good.sender}: " in " ".join(run("journal", "show", keyed.key).out.split())
 
     def test_nothing_is_fed_but_what_was_in_a_message(self, keyed: Keyed) -> None:
         task = keyed.ask("sign", keyed.path("release.txt"), task="t")
@@ -226,6 +287,25 @@ class TestCommitments:
 
 
 class TestForms:
+    def test_the_commands_to_verify_by_can_be_pasted(self, keyed: Keyed) -> None:
+        """As printed, but for the names in capitals; in a folder with a space, which is quoted."""
+        spaced = keyed.copy(keyed.folder.parent / "harbour 2")
+        for more, word, capitals in (
+            ([], "Success", {"PEM": "p"}),
+            (["--openssh", "tide'tables"], "Good", {"PUB": "q", "ALLOWED": "r"}),
+        ):
+            task = spaced.ask("sign", spaced.path("release.txt"), task=f"t{word}", more=more)
+            spaced.answer(task, FIRST, SECOND)
+            done = run(*finish(spaced, task, "--to", spaced.path(f"sig-{word}")))
+            script = "\n".join(line for line in done.out.splitlines() if line.startswith("  "))
+            for capital, name in capitals.items():
+                script = re.sub(rf"\b{capital}\b", name, script)
+            path = {"PATH": f"{PROGRAM.parent}:{os.environ['PATH']}"}
+            told = subprocess.run(
+                ["sh", "-e"], input=script, cwd=spaced.folder, env=path, capture_output=True, text=True
+            )
+            assert (told.returncode, word in told.stdout) == (0, True), told.stderr
+
     def test_ssh_keygen_verifies(self, keyed: Keyed) -> None:
         release, ssh = keyed.path("release.txt"), keyed.path("k.pub")
         task = keyed.ask("sign", release, task="t", more=["--openssh", "file"])
@@ -277,6 +357,47 @@ class TestForms:
         arguments += ["--issuer", keyed.path("authority.pem"), f"--signer={FIRST}", f"--signer={SECOND}"]
         assert_refused([*arguments, *keyed.as_(OFFICE)], 4, watched=keyed.folder)
 
+    def test_a_list_that_forgets_is_refused_by_every_signer(self, keyed: Keyed) -> None:
+        """An author whose own program looks away: the task is well signed, its list leaves out what was revoked."""
+        root = keyed.ask("root", "CN=Harbour Trust Root", task="t-root")
+        keyed.answer(root, FIRST, SECOND)
+        root_pem = keyed.finish(root, "root.pem").read_bytes()
+        public_key = keyed.record.public_key.encode()
+        now = clock.now()
+
+        def body(*serials: int, number: int) -> bytes:
+            revoked = [Revoked(serial, now) for serial in serials]
+            return revocation_list(
+                public_key,
+                revoked,
+                issuer=root_pem,
+                this_update=now,
+                next_update=now + timedelta(days=9),
+                number=number,
+            )
+
+        def asked(name: str, content: bytes, **beside: bytes) -> Path:
+            with unlocked(OFFICE) as author:
+                folder = KeyFolder(keyed.key)
+                given = {"signers": (FIRST, SECOND), "author": author, "due": now + timedelta(days=7)}
+                with pytest.MonkeyPatch.context() as patch:
+                    patch.setattr(Signable, "message", lambda *_: b"")
+                    task = new_signing(content, folder.record, form="revocation-list", **given, **beside)
+                ask(folder, task, keyed.path(name), content, author, **beside)
+            return keyed.path(name)
+
+        first = asked("t-first", body(77, number=1), issuer=root_pem)
+        keyed.answer(first, FIRST, SECOND)
+        earlier = keyed.finish(first, "first.pem").read_bytes()
+        task = asked("t-second", body(78, number=2), issuer=root_pem, earlier=earlier)
+        before = files_in(task)
+        done = keyed.next(task, FIRST)
+        assert (done.code, files_in(task)) == (4, before)
+        assert "leaves out 1 of what the earlier list revokes" in done.out
+        # Without what it is checked by nothing is done with a task at all.
+        (task / "earlier").unlink()
+        assert_refused(["task", "show", task], 5, "does not exist", watched=keyed.folder)
+
     def test_the_author_is_told_what_the_signers_will_be(self, keyed: Keyed) -> None:
         signers = [f"--signer={name}" for name in (FIRST, SECOND)]
         subject = "CN=Harbour Trust Root,O=Harbour Trust"
@@ -304,6 +425,15 @@ class TestForms:
         arguments = ["key", verb, keyed.key, *more, "--task", "t", f"--signer={FIRST}", f"--signer={SECOND}"]
         assert_refused([*arguments, *keyed.as_(OFFICE)], code, watched=keyed.folder)
 
+    def test_what_others_act_on_is_not_asked_for_as_plain_bytes(self, keyed: Keyed) -> None:
+        body = keyed.path("body")
+        arguments = ["key", "sign", keyed.key, body, "--task", keyed.path("t"), f"--signer={FIRST}"]
+        arguments += [f"--signer={SECOND}", *keyed.as_(OFFICE)]
+        for content in (b"\x30\x80" + bytes(40), b"shares/v1/sign/task{}", b"SSHSIG\0\0"):
+            body.write_bytes(content)
+            assert_refused(arguments, 2, "as plain bytes", "--openssh", watched=keyed.folder)
+        assert run(*arguments, "--openssh=file").code == 0
+
     def test_a_path_length_is_for_authorities(self, keyed: Keyed) -> None:
         arguments = ["key", "certify", keyed.key, "r", "--for", "server", "--path-length", "1", "--issuer", "i"]
         arguments += ["--task", keyed.path("t"), f"--signer={FIRST}", f"--signer={SECOND}", *keyed.as_(OFFICE)]
@@ -323,7 +453,9 @@ class TestOpening:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND, THIRD))
         assert_refused(finish(keyed, task, "--to", keyed.path("o")), 3, FIRST, THIRD, watched=keyed.folder)
         for name in (THIRD, FIRST):
+            assert "Enough have spoken" not in run("task", "show", task).out
             assert keyed.next(task, name).code == 0
+        assert "Enough have spoken" in run("task", "show", task).out
         target = keyed.path("opened")
         # Two of three are enough. Where the command fails all stays as it was, to be tried again.
         failed = run(*finish(keyed, task, "--", "sh", "-c", "cat >/dev/null; exit 9"))
@@ -332,11 +464,13 @@ class TestOpening:
         assert (fed.code, fed.json["error"]["status"]) == (7, 3)
         done = run(*finish(keyed, task, "--to", target))
         assert (done.code, "The message is open" in done.out, CONTENT.decode() in done.out) == (0, True, False)
+        assert "run `shares task next` once more" in " ".join(done.out.split())
         assert (target.read_bytes(), target.stat().st_mode & 0o777) == (CONTENT, 0o600)
         again = finish(keyed, task, "--to", keyed.path("again"))
         assert_refused(again, 2, "this task is over", watched=keyed.folder)
         (asked,), (finished,) = events(keyed.key, TaskAsked), events(keyed.key, TaskFinished)
         assert (asked.work, finished.work, finished.result) == ("open", "open", None)
+        assert asked.parties == (FIRST, SECOND, THIRD)
 
     def test_it_is_fed_to_a_command(self, keyed: Keyed) -> None:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
@@ -353,6 +487,18 @@ class TestOpening:
             assert keyed.next(keyed.path("t"), name).code == 0
         done = run("key", "finish", own, keyed.path("t"), "--to", keyed.path("o"), *keyed.as_(FIRST))
         assert (done.code, keyed.path("o").read_bytes()) == (0, CONTENT)
+
+    def test_what_is_asked_lies_in_the_askers_own_folder(self, keyed: Keyed) -> None:
+        """A custodian's steps in the office's folder, or another's, would cry wolf at the custodian's own ones."""
+        message = sent(keyed)
+        for folder, who, words in (
+            (keyed.key, FIRST, "holds no key share"),
+            (keyed.own(SECOND), FIRST, f"is the folder of {SECOND}"),
+            (keyed.own(SECOND), OFFICE, f"is the folder of {SECOND}"),
+        ):
+            ask = ["key", "open", folder, message, "--task", keyed.path("t"), f"--custodian={SECOND}"]
+            ask += [f"--custodian={THIRD}", *keyed.as_(who)]
+            assert_refused(ask, 2, words, "your own folder", watched=keyed.folder)
 
     def test_nobody_else_reads_the_answers(self, keyed: Keyed) -> None:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
@@ -377,6 +523,18 @@ class TestOpening:
         refused = keyed.next(task, FIRST)
         assert refused.code == 4
         assert "encapsulated key" in refused.err
+
+    def test_the_journal_tells_that_too_few_answers_hold(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
+        keyed.answer(task, FIRST, SECOND, rounds=1)
+        (said,) = (task / "messages").glob(f"1-{SECOND}.json")
+        good = TaskMessage.parse(said.read_bytes())
+        with unlocked(SECOND) as cheat:
+            empty = {"task": good.task, "round": 1, "sender": SECOND, "seen": good.seen, "body": good.body}
+            said.write_bytes(TaskMessage.signed_by(cheat, **empty).to_file())
+        assert_refused(finish(keyed, task, "--to", keyed.path("o")), 3, SECOND)
+        (told,) = events(keyed.key, TaskFailed)
+        assert (told.work, SECOND in told.reason, FIRST in told.reason) == ("open", True, False)
 
     def test_what_was_in_it_is_nowhere_else(self, keyed: Keyed) -> None:
         task = keyed.ask("open", sent(keyed), task="t", names=(FIRST, SECOND))
@@ -416,3 +574,48 @@ class TestJoining:
         assert len(joint.finish(task, "sig").read_bytes()) == 64
         arguments = ["key", "finish", joint.key, joint.path("j"), "--to", joint.path("x"), *joint.as_(OFFICE)]
         assert_refused(arguments, 2, "shares task next", watched=joint.folder)
+
+
+class TestTold:
+    """What a task is about is told by every command that shows it, not by the one alone that asks."""
+
+    def test_show_and_both_kinds_of_json_say_what_the_content_is(self, keyed: Keyed) -> None:
+        task = keyed.ask("sign", keyed.path("release.txt"), task="to-sign")
+        shown = run("task", "show", task)
+        assert "What is signed is text." in shown.out
+        assert "release 7 of the tide tables" in shown.out
+        assert f"By the key: {keyed.record.label}" in shown.out
+        asked = keyed.next(task, FIRST).err
+        assert "What is signed is text." in asked
+        for done in (run("task", "show", task, "--json"), keyed.next(task, FIRST, "--json")):
+            about = done.json["about"]
+            assert (about["kind"], about["lines"][2]) == ("text", "release 7 of the tide tables")
+            assert about["cautions"] == []
+        (task / "content").write_bytes(b"something else")
+        assert run("task", "show", task, "--json").json["about"] is None
+
+    def test_of_a_message_the_cautions_are_told(self, keyed: Keyed) -> None:
+        task = keyed.ask("open", sent(keyed), task="to-open")
+        assert "What is opened is a message that is encrypted to the key." in run("task", "show", task).out
+        told = run("task", "show", task, "--json").json["about"]
+        assert any("every message with this encapsulated key" in one for one in told["cautions"])
+
+    def test_a_signature_that_is_given_up_leaves_no_nonces(self, keyed: Keyed) -> None:
+        nonces = keyed.own(FIRST) / "nonces"
+        beforehand = ["--batch", *[str(commit(keyed, name)) for name in (FIRST,)]]
+        more = [*beforehand, f"--batch={commit(keyed, SECOND)}"]
+        known = {path.name for path in nonces.iterdir()}
+        first = keyed.ask("sign", keyed.path("release.txt"), task="one", more=more)
+        second = keyed.ask("sign", keyed.path("release.txt"), task="two")
+        assert keyed.next(first, FIRST).code == 0
+        assert keyed.next(second, FIRST).code == 0
+        for task in (first, second):
+            own = ["--mine", keyed.own(FIRST), *keyed.as_(FIRST, "--key")]
+            done = run("task", "drop", task, *own, "--yes")
+            assert done.code == 0, done.err
+        left = {path.name for path in nonces.glob("pair-*")}
+        assert left < known
+        assert len(left) == 2
+        assert all(path.stat().st_size == 0 for path in nonces.glob("spent-*"))
+        assert len(list(nonces.glob("spent-*"))) == 1
+        assert not list((keyed.own(FIRST) / "tasks").rglob("step-*"))

@@ -19,7 +19,7 @@ from history.exchanging import NAMES, new_task
 from parties import party, unlocked
 
 from shares.documents.key_record import KeyRecord
-from shares.documents.task_message import OpeningKey, Review, TaskMessage
+from shares.documents.task_message import Accusation, OpeningKey, Review, TaskMessage
 from shares.history.exchange import TaskFolder
 from shares.history.journal import load_journal
 from shares.history.rounds import Inbox
@@ -79,7 +79,11 @@ def test_three_parties_have_a_key_in_the_end(harbour: Harbour) -> None:
     for name in NAMES:
         again = harbour.next(name)
         assert again.out == f"The task is over for {name}; nothing is left to be done.\n"
-        assert [entry.event.what for entry in load_journal(harbour.mine(name)).entries] == ["approved", "key-born"]
+        assert [entry.event.what for entry in load_journal(harbour.mine(name)).entries] == [
+            "approved",
+            "approved",
+            "key-born",
+        ]
     assert harbour.show("--json").json["state"] == "complete"
     assert "Everything has been said." in harbour.show().out
 
@@ -91,7 +95,8 @@ def test_what_is_said_before_anything_is_done(harbour: Harbour) -> None:
         assert words in done.err
     assert done.out.splitlines() == [
         f"Said by north-pier, round 0, fresh keys: {harbour.task}/messages/0-north-pier.json",
-        "Next: send the task's folder, or the new message in it, to the others.",
+        "Next: send the task's folder, or the new message in it, to the others. Run this again with their",
+        "messages, until the task is over for you: then what your folder keeps for it is erased.",
         "Awaited, round 0, fresh keys: south-pier, light-house.",
     ]
     waiting = harbour.next("north-pier")
@@ -264,3 +269,138 @@ def test_json_alone_is_printed_where_it_is_asked_for(harbour: Harbour) -> None:
     assert (done.code, done.err) == (0, "")
     assert [one["kind"] for one in done.json["problems"]] == ["unreadable"]
     assert_one_line(run("task", "show", harbour.root / "nothing"))
+
+
+# Who is asked has read what about.
+
+
+@pytest.mark.parametrize("reply", ["y", "n"])
+def test_with_json_at_a_terminal_it_is_shown_before_it_is_asked(harbour: Harbour, reply: str) -> None:
+    with on_terminal(*with_json(harbour.arguments("north-pier"))) as terminal:
+        terminal.wait_for("Fingerprint of the task")
+        terminal.wait_for("You join in generating the key")
+        terminal.answer("Do you agree? [y/N]:", reply)
+        code, out = terminal.finish()
+    told = json.loads(out)
+    assert (told["exit"], told["done"]) == (code, reply == "y")
+
+
+def put(harbour: Harbour, **changes: object) -> None:
+    shutil.rmtree(harbour.task)
+    TaskFolder.create(harbour.task, new_task(**changes))
+
+
+def test_a_remark_and_a_label_stay_where_they_are_shown(harbour: Harbour) -> None:
+    forged = "Fingerprint of the task: AAAA"
+    put(harbour, remark=f"release 8 {' ' * 200}{forged} {'so it goes on ' * 15}", label=f"a key{' ' * 90}{forged}")
+    for text in (harbour.show().out, run(*harbour.arguments("north-pier")).err):
+        lines = text.splitlines()
+        assert [line for line in lines if line.strip().startswith(forged)] == []
+        first = next(i for i, line in enumerate(lines) if line.startswith("  Remark: release 8 Fingerprint"))
+        assert lines[first + 1].startswith("    | ")
+        assert f"(a key {forged})" in text
+        assert max(len(line) for line in lines[first : first + 3]) <= 96
+
+
+def test_unusual_times_are_told_before_anybody_agrees(harbour: Harbour) -> None:
+    put(harbour, created=datetime(9998, 1, 1, tzinfo=UTC), due=datetime(9999, 1, 1, tzinfo=UTC))
+    for told in (harbour.show().out, run(*harbour.arguments("north-pier")).err):
+        assert "this clock has yet to reach" in " ".join(told.split())
+        assert "in more than a year" in " ".join(told.split())
+    assert len(harbour.show("--json").json["cautions"]) == 2
+    now = datetime.now(UTC).replace(microsecond=0)
+    put(harbour, created=now, due=now + timedelta(days=30))
+    assert harbour.show("--json").json["cautions"] == []
+    assert "Caution" not in harbour.show().out
+
+
+# A task is given up.
+
+
+def drop(harbour: Harbour, name: str, *more: str) -> list[str | Path]:
+    return ["task", "drop", *harbour.arguments(name, *more)[2:]]
+
+
+def kept(harbour: Harbour, name: str) -> list[str]:
+    return sorted(path.name for path in harbour.mine(name).glob("tasks/*/*"))
+
+
+def test_a_failed_task_is_given_up_and_nothing_of_it_is_kept_but_what_was_said(harbour: Harbour) -> None:
+    harbour.next("north-pier")
+    for minute in (1, 2):
+        TaskFolder(harbour.task).release(signed(harbour, "south-pier", minute))
+    failed = harbour.next("north-pier")
+    assert failed.code == 4
+    assert "`shares task drop` then erases" in " ".join(failed.out.split())
+    assert kept(harbour, "north-pier") == ["step-0.json"]
+    before = files_in(harbour.root)
+    refused = run(*drop(harbour, "north-pier"))
+    assert (refused.code, "--yes agrees" in refused.err.splitlines()[-1]) == (2, True)
+    assert files_in(harbour.root) == before
+    done = run(*drop(harbour, "north-pier", "--yes"))
+    assert (done.code, "is erased" in done.out) == (0, True)
+    assert kept(harbour, "north-pier") == ["done.json"]
+    events = [entry.event for entry in load_journal(harbour.mine("north-pier")).entries]
+    assert [event.what for event in events] == ["approved", "task-failed"]
+    assert TaskFolder(harbour.task).task.digest() == events[-1].task  # type: ignore[union-attr]
+    assert events[-1].reason.startswith("two different messages of south-pier")  # type: ignore[union-attr]
+    assert "over for north-pier" in harbour.next("north-pier").out
+    assert_refused(drop(harbour, "north-pier", "--yes"), 2, "is over for north-pier", watched=harbour.root)
+
+
+def test_who_has_said_nothing_gives_a_task_up_and_never_speaks_in_it(harbour: Harbour) -> None:
+    dropped = run(*drop(harbour, "north-pier", "--yes", "--json"))
+    assert (dropped.code, dropped.json["state"]) == (0, "dropped")
+    assert "over for north-pier" in harbour.next("north-pier").out
+    assert not list((harbour.task / "messages").iterdir())
+
+
+@pytest.mark.parametrize(("reply", "code"), [("y", 0), ("n", 1)])
+def test_giving_up_asks_and_who_has_confirmed_is_warned(harbour: Harbour, reply: str, code: int) -> None:
+    to_the_last_round(harbour)
+    assert "step-5.json" in kept(harbour, "north-pier")
+    with on_terminal(*drop(harbour, "north-pier")) as terminal:
+        terminal.wait_for("You have signed the record")
+        terminal.answer("Give it up for good? [y/N]:", reply)
+        assert terminal.finish()[0] == code
+    assert ("done.json" in kept(harbour, "north-pier")) is (code == 0)
+
+
+def to_the_last_round(harbour: Harbour) -> None:
+    """Go on until all have confirmed but light-house, which has spoken in the round before."""
+    messages = harbour.task / "messages"
+    for _ in range(12):
+        for name in ("light-house", *NAMES[:2]):
+            done = (messages / f"{4 if name == 'light-house' else 5}-{name}.json").exists()
+            if not done:
+                assert harbour.next(name).code == 0
+    assert sorted(path.name for path in messages.glob("5-*")) == ["5-north-pier.json", "5-south-pier.json"]
+
+
+def test_a_key_that_is_born_is_not_given_up(harbour: Harbour) -> None:
+    to_the_last_round(harbour)
+    harbour.next("light-house")
+    harbour.next("light-house")
+    waiting = [name for name in NAMES if "done.json" not in kept(harbour, name)]
+    assert waiting
+    assert_refused(drop(harbour, waiting[0], "--yes"), 2, "the key is born", watched=harbour.root)
+
+
+def test_who_hears_of_an_accusation_alone_is_told_what_to_ask_for(harbour: Harbour) -> None:
+    to_the_last_round(harbour)
+    folder = TaskFolder(harbour.task)
+    accusation = Accusation(what="accusation", against="north-pier", reason="no", share=None, blind=None)
+    with unlocked("light-house") as key:
+        folder.release(
+            TaskMessage.signed_by(
+                key,
+                task=folder.task.digest(),
+                round=5,
+                sender="light-house",
+                seen=folder.read().inbox.seen(5),
+                body=accusation,
+            )
+        )
+    told = " ".join(harbour.next("north-pier").out.split())
+    assert "The task has failed, by light-house" in told
+    assert "If another custodian says that the key is born" in told

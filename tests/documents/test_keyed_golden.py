@@ -14,10 +14,10 @@ import pytest
 from shares.documents.base import Document, canonical
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
-from shares.documents.nonce_batch import NonceBatch, NonceMarks, NoncePair, pair_id
+from shares.documents.nonce_batch import BoundPair, NonceBatch, NonceMarks, NoncePair, pair_id
 from shares.documents.opened_message import OpenedMessage
 from shares.documents.party import OpenPartyKey
-from shares.documents.task import Task
+from shares.documents.task import Signing, Task
 from shares.documents.task_box import open_box
 from shares.documents.task_message import OpeningKey, TaskMessage, box_info
 from shares.documents.task_step import TaskDone, TaskStep
@@ -31,6 +31,7 @@ KINDS: dict[str, type[Document]] = {
     "record.json": KeyRecord,
     "north-pier.share.json": KeyShare,
     "task.json": Task,
+    "task-to-sign.json": Task,
     "0-harbour-office.json": TaskMessage,
     "1-north-pier.json": TaskMessage,
     "harbour-office.step-0.json": TaskStep,
@@ -38,6 +39,7 @@ KINDS: dict[str, type[Document]] = {
     "north-pier.done.json": TaskDone,
     "opened.json": OpenedMessage,
     "pair.json": NoncePair,
+    "bound.json": BoundPair,
     "marks.json": NonceMarks,
     "batch.json": NonceBatch,
 }
@@ -96,7 +98,7 @@ def test_the_key_share_is_of_the_record(drawn) -> None:
 
 
 def test_the_messages_are_of_the_task(drawn) -> None:
-    assert TASK.digest() == drawn[0].digest("task", drawn[0].task(drawn[0].record(), drawn[0].message_to_key()))
+    assert TASK.digest() == drawn[0].digest("task-digest", drawn[0].task(drawn[0].record(), drawn[0].message_to_key()))
     for message, round in ((FIRST, 0), (SECOND, 1)):
         party = TASK.party(message.sender)
         assert party is not None
@@ -107,6 +109,14 @@ def test_the_messages_are_of_the_task(drawn) -> None:
         SECOND.digest()
         == drawn[0].hashlib.sha256(b"shares/v1/task-message" + canonical(SECOND.model_dump(mode="json"))).digest()
     )
+
+
+def test_a_task_to_sign_names_what_it_is_checked_by() -> None:
+    work = Task.parse(data("task-to-sign.json")).work
+    assert isinstance(work, Signing)
+    assert work.issuer is not None
+    assert work.earlier is not None
+    assert (work.form, work.content.size, work.issuer.size, work.earlier.size) == ("revocation-list", 200, 300, 250)
 
 
 def test_the_box_opens_with_the_fresh_key_of_round_0(drawn) -> None:
@@ -130,10 +140,13 @@ def test_steps_and_what_is_left_of_them(drawn) -> None:
 
 def test_nonces_are_those_that_were_handed_out(drawn) -> None:
     pair, batch = NoncePair.parse(data("pair.json")), NonceBatch.parse(data("batch.json"))
-    marks = NonceMarks.parse(data("marks.json"))
+    marks, bound = NonceMarks.parse(data("marks.json")), BoundPair.parse(data("bound.json"))
     with party_key(drawn, "north-pier") as key:
         content = octets(pair.content(key.open))
+        assert octets(bound.content(key.open)) == content
     assert Scalar.decode(content[:32]) * BASE == pair.hiding == batch.commitments[0].hiding
     assert Scalar.decode(content[32:]) * BASE == pair.binding == batch.commitments[0].binding
     assert [one.pair for one in marks.marks] == [pair_id(one.hiding, one.binding) for one in batch.commitments]
-    assert pair.batch == marks.batch == marks.marks[0].pair
+    assert marks.is_by(batch.card)
+    assert (bound.purpose, bound.mark) == (drawn[0].seed("purpose"), drawn[0].seed("spent mark"))
+    assert pair.batch == bound.batch == marks.batch == marks.marks[0].pair

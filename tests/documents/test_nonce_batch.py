@@ -14,9 +14,17 @@ from keys.quorum import dealt
 from parties import card, unlocked
 
 from shares.documents.members import encode_bytes
-from shares.documents.nonce_batch import MAX_BATCH, NonceBatch, NonceMark, NonceMarks, NoncePair, pair_id
+from shares.documents.nonce_batch import (
+    MAX_BATCH,
+    BoundPair,
+    NonceBatch,
+    NonceMark,
+    NonceMarks,
+    NoncePair,
+    pair_id,
+)
 from shares.documents.wrapping import card_sealer
-from shares.errors import DocumentError
+from shares.errors import DocumentError, VerificationError
 from shares.group.edwards25519 import BASE, Point, Scalar
 from shares.memory import Secret
 
@@ -45,11 +53,20 @@ def pair() -> NoncePair:
         )
 
 
+def bound() -> BoundPair:
+    seal = card_sealer(card(ME).recipient())
+    with Secret.of(bytes(64)) as content:
+        return BoundPair.of(pair(), content, purpose=bytes(32), mark=None, seal=seal)
+
+
+def marks(count: int = 1) -> NonceMarks:
+    listed = [NonceMark(pair=pair_id(*one), mark=bytes(32)) for one in points(count)]
+    with unlocked(ME) as own:
+        return NonceMarks.signed_by(own, record=dealt().record, signer=ME, batch="0" * 32, marks=listed)
+
+
 def test_they_are_read_as_they_were_written() -> None:
-    marks = NonceMarks(
-        kind="nonce-marks", version=1, batch="0" * 32, marks=(NonceMark(pair=pair_id(*points(1)[0]), mark=bytes(32)),)
-    )
-    for made in (batch(), pair(), marks):
+    for made in (batch(), pair(), bound(), marks()):
         again = type(made).parse(made.to_file())
         assert again == made
         assert again.to_file() == made.to_file()
@@ -99,16 +116,50 @@ def test_points_outside_the_group_are_refused(member: str) -> None:
 
 
 @pytest.mark.parametrize("length", [63, 65, 0])
-def test_a_pair_holds_two_numbers(length: int) -> None:
-    members = json.loads(pair().to_file())
+@pytest.mark.parametrize("made", [pair, bound])
+def test_a_pair_holds_two_numbers(made: Callable[[], NoncePair | BoundPair], length: int) -> None:
+    document = made()
+    members = json.loads(document.to_file())
     members["sealed"] = encode_bytes(bytes(length + 16))
     with pytest.raises(DocumentError, match="two sealed numbers"):
-        NoncePair.parse(json.dumps(members).encode())
+        type(document).parse(json.dumps(members).encode())
+
+
+@pytest.mark.parametrize("member", BoundPair.BOUND)
+def test_what_is_bound_opens_as_it_was_sealed_alone(member: str) -> None:
+    """No member can be exchanged, and a pair is not read as one that is bound: it has no purpose and no mark."""
+    changes = {"kind": "nonce-pair", "version": 2, "epoch": 2, "mark": bytes(32), "purpose": bytes([1]) * 32}
+    changes |= dict(zip(("hiding", "binding"), points(2)[1], strict=True))
+    other = dealt(number=1).record
+    changes |= {"key": other.key, "record": other.fingerprint, "signer": "dry-dock", "batch": "1" * 32}
+    with unlocked(ME) as own:
+        assert len(bound().content(own.open)) == 64
+        changed = bound().model_copy(update={member: changes[member]}).with_digest()
+        with pytest.raises(VerificationError, match="bound to were changed"):
+            changed.content(own.open)
+    with pytest.raises(DocumentError):
+        BoundPair.parse(pair().to_file())
+
+
+def test_marks_are_signed() -> None:
+    signed, other = marks(2), dealt(number=1).record
+    assert signed.is_by(card(ME))
+    assert not signed.is_by(card("south-pier"))
+    for change in (
+        {"marks": signed.marks[:1]},
+        {"marks": (signed.marks[0], signed.marks[1].model_copy(update={"mark": None}))},
+        {"batch": "1" * 32},
+        {"key": other.key},
+        {"epoch": 2},
+        {"record": other.fingerprint},
+        {"signer": "south-pier"},
+        {"signature": bytes(64)},
+    ):
+        assert not signed.model_copy(update=change).is_by(card(ME)), change
 
 
 def test_the_largest_batch_and_its_marks_can_be_read() -> None:
     listed = batch(MAX_BATCH)
     assert NonceBatch.parse(listed.to_file()) == listed
-    marks = tuple(NonceMark(pair=pair_id(*one), mark=bytes(32)) for one in points(MAX_BATCH))
-    kept = NonceMarks(kind="nonce-marks", version=1, batch="0" * 32, marks=marks)
+    kept = marks(MAX_BATCH)
     assert NonceMarks.parse(kept.to_file()) == kept

@@ -452,7 +452,10 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     "a polynomial that is a number": (setting("polynomial", to=283), "polynomial should be text in quotes"),
     "a pad of 0": (setting("pad", to=0), "pad should be greater than or equal to 1"),
     "a pad of 4,097": (setting("pad", to=4097), "pad should be less than or equal to 4096"),
-    "an interval of nothing": (setting("drill_every", to="0d"), 'drill_every should be an interval like "90d"'),
+    "an interval of nothing": (
+        setting("drill_every", to="0d"),
+        'drill_every should be an interval of a day or more, like "90d"',
+    ),
     "an interval in months": (setting("attest_every", to="3m"), "attest_every should be an interval"),
     "an interval that is a number": (setting("refresh_every", to=90), "refresh_every should be an interval"),
     "strict that is text": (setting("strict", to="true"), "strict should be a valid boolean"),

@@ -38,6 +38,9 @@ def signed_anew(task: Task, **changes: Any) -> bytes:
     return json.dumps({**members, "signature": by_hand.b64(signature)}).encode()
 
 
+NAMED = {"size": 1, "digest": "ab" * 32}
+
+
 def changed_work(task: Task, **changes: Any) -> dict[str, Any]:
     return {"work": {**json.loads(task.to_file())["work"], **changes}}
 
@@ -76,12 +79,20 @@ def test_contradictions_are_refused() -> None:
         (sign, changed_work(sign, form="openssh"), "has a namespace"),
         (sign, changed_work(sign, commitments=pairs[:2]), "one pair of commitments for each signer"),
         (sign, changed_work(sign, commitments=pairs[::-1]), "in their order"),
+        (sign, changed_work(sign, issuer=NAMED), "and nothing else, has an issuer"),
+        (sign, changed_work(sign, form="openssh", namespace="file", issuer=NAMED), "and nothing else, has an issuer"),
+        (sign, changed_work(sign, earlier=NAMED), "and nothing else, continues an earlier one"),
+        (sign, changed_work(sign, form="certificate", issuer=NAMED, earlier=NAMED), "continues an earlier one"),
+        (sign, changed_work(sign, form="revocation-list"), "issuer's certificate, and it names none"),
+        (sign, changed_work(sign, form="revocation-list", earlier=NAMED), "and it names none"),
         (open_, changed_work(open_, receiver="registrar"), "its receiver takes no part"),
     ]
     for task, changes, words in cases:
         with pytest.raises(DocumentError, match=words):
             Task.parse(signed_anew(task, **changes))
     assert Task.parse(signed_anew(sign, **changed_work(sign, commitments=pairs)))
+    for form, earlier in (("certificate", None), ("revocation-list", None), ("revocation-list", NAMED)):
+        assert Task.parse(signed_anew(sign, **changed_work(sign, form=form, issuer=NAMED, earlier=earlier)))
 
 
 def test_nobody_else_signs_for_the_author() -> None:

@@ -6,58 +6,14 @@ signer has given is found in every file that it wrote: messages of tasks, and st
 
 from __future__ import annotations
 
-import json
-from collections.abc import Sequence
-from datetime import timedelta
 from pathlib import Path
 
 import pytest
 from cli.harness import run
 from faults.tracing import Site, at_each, counted, distinct, trace
-from keys.quorum import NAMES, a_task, committed, dealt
-from parties import party, passphrase
-
-from shares import clock
-from shares.history.exchange import TaskFolder
+from keys.signer import ME, given, prepared, step
 
 pytestmark = pytest.mark.usefixtures("strace")
-
-ME, SIGNERS = NAMES[0], NAMES[:2]
-ONE, OTHER = b"release 7 of the tide tables\n", b"release 8 of the tide tables\n"
-
-
-def prepared(folder: Path) -> Sequence[str | Path]:
-    """A signer's folder and two tasks that name one nonce; the arguments of the signer's step in the first."""
-    key = dealt(2, SIGNERS)
-    mine = folder / ME
-    mine.mkdir(parents=True)
-    commitments = committed(folder, key, SIGNERS)
-    now = clock.now()
-    for name, content in (("one", ONE), ("other", OTHER)):
-        task = a_task(key, SIGNERS, content, commitments=commitments, created=now, due=now + timedelta(days=7))
-        TaskFolder.create(folder / name, task, content=content, record=key.record)
-    (mine / "share.json").write_bytes(key.shares[ME].to_file())
-    (folder / "key.json").write_bytes(party(ME).to_file())
-    with passphrase(ME) as words, words.view() as view:
-        (folder / "passphrase").write_bytes(view)
-    return step(folder, "one")
-
-
-def step(folder: Path, task: str) -> Sequence[str | Path]:
-    own = ("--mine", folder / ME, "--key", folder / "key.json", "--passphrase-file", folder / "passphrase")
-    return ("task", "next", folder / task, *own, "--yes", "--json")
-
-
-def given(folder: Path) -> set[str]:
-    """Every signature share that is to be found in any file."""
-    found = set()
-    for path in folder.rglob("*.json"):
-        members = json.loads(path.read_text())
-        bodies = [members, members.get("message"), *members.get("messages", ())]
-        found |= {
-            one["body"]["share"] for one in bodies if one and one.get("body", {}).get("what") == "signature-share"
-        }
-    return found
 
 
 @pytest.fixture(scope="module")
@@ -83,7 +39,7 @@ def killed_at(folder: Path, site: Site) -> tuple[Path, bool]:
 
 def test_the_calls_are_found(sites: list[Site]) -> None:
     calls = [site.call for site in sites]
-    assert calls.count("renameat2") >= 3  # the nonces, the step, the message
+    assert calls.count("renameat2") >= 3  # the nonces as they are bound, the step, the message
     assert calls.count("fsync") >= 5
     assert 50 < len(sites) <= 300
 
@@ -110,6 +66,9 @@ def test_a_killed_signer_gives_one_share(sites: list[Site], tmp_path: Path, ever
         assert len(given(folder)) == 1, sites[number]
         assert before <= given(folder), sites[number]
         assert sorted(codes.values()) == [0, 4], (sites[number], codes)
+        # And nothing is left of the nonces themselves.
+        assert [path.name[:6] for path in (folder / ME / "nonces").iterdir()].count("spent-") == 1
+        assert not {path.name[:5] for path in (folder / ME / "nonces").iterdir()} & {"pair-", "bound"}
         outcomes.add((order[0], codes["one"]))
     # A crash is harmless: the run after it signs what the killed one would have signed.
     assert outcomes == {("one", 0), ("other", 0), ("other", 4)}

@@ -89,7 +89,7 @@ def test_hedged_is_drawn_plus_hashed(monkeypatch):
     fresh, drawn = bytes(range(32)), bytes(range(64, 128))
     monkeypatch.setattr(hashing.secrets, "token_bytes", Source(fresh, drawn))
     secret = Scalar.of(1234)
-    hashed = hashlib.sha512(b"shares/v1/hedged-scalar" + fresh + secret.encode() + b"place").digest()
+    hashed = hashlib.sha512(b"shares/v1/scalar" + fresh + secret.encode() + b"place").digest()
     number = int.from_bytes(hashed, "little") + int.from_bytes(drawn, "little")
     assert hedged(secret, b"place") == Scalar.of(number % ORDER)
 

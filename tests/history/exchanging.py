@@ -10,7 +10,7 @@ import dataclasses
 import hashlib
 import secrets
 import shutil
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -26,6 +26,7 @@ from shares.documents.task_message import Complaint, Review, TaskMessage
 from shares.history import next as engine
 from shares.history.exchange import TaskFolder
 from shares.history.rounds import Failure, Inbox, NewFile, Outcome, Received, Said
+from shares.history.standing import Standing, standing
 from shares.history.steps import OwnSteps
 from shares.memory import Secret
 
@@ -69,13 +70,20 @@ class Draw:
                 return Failure(name, "it shows no sum")
         return None
 
+    def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
+        return isinstance(message.body, Review) and bool(message.body.complaints)
+
+    def spares(self, names: Collection[str]) -> bool:
+        return not names
+
 
 @dataclass
 class Drawer:
-    """A party's part. ``cheats`` makes it show no sum."""
+    """A party's part. ``cheats`` makes it show no sum; ``told`` are the rounds whose message it knows to be kept."""
 
     name: str
     cheats: bool = False
+    told: list[int] = dataclasses.field(default_factory=list)
 
     def prospect(self, round: int, inbox: Inbox) -> Sequence[str]:
         return [f"takes part in round {round} of the draw"]
@@ -95,6 +103,9 @@ class Drawer:
         digest = self._sum(state, received)
         told = () if self.cheats else (Complaint(against=self.name, reason=digest.hex()),)
         return Said(Review(what="review", complaints=told), Secret.of(TELLTALE + bytes(24)))
+
+    def kept(self, round: int, inbox: Inbox) -> None:
+        self.told.append(round)
 
     def _sum(self, state: Secret, received: Sequence[Received]) -> bytes:
         sent = received[1]
@@ -146,8 +157,8 @@ class Desk:
     def turn(self) -> engine.Turn:
         return engine.turn(TaskFolder(self.folder), self.course, self.own())
 
-    def standing(self) -> engine.Standing:
-        return engine.standing(self.course, TaskFolder(self.folder).read())
+    def standing(self) -> Standing:
+        return standing(self.course, TaskFolder(self.folder).read())
 
     def take(self, key: OpenPartyKey | None = None) -> str:
         """Do what is to be done now, once; return what it was."""

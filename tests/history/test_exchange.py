@@ -14,6 +14,7 @@ import shutil
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
+from unittest import mock
 
 import pytest
 from history.exchanging import MADE, NAMES, Draw, desks, new_task
@@ -21,13 +22,14 @@ from parties import card, unlocked
 
 from shares.documents.key_event import MAX_CONTENT, Content
 from shares.documents.key_record import Holder, KeyRecord
-from shares.documents.task import Opening, Task
+from shares.documents.task import Opening, Signing, Task
 from shares.documents.task_message import OpeningKey, TaskMessage
 from shares.errors import DocumentError, ParameterError, StorageError, VerificationError
 from shares.group.edwards25519 import BASE, Scalar
-from shares.history.exchange import MAX_MESSAGE, MAX_MESSAGES, TaskFolder
-from shares.history.next import standing
+from shares.history import exchange as exchange_module
+from shares.history.exchange import MAX_ALL, MAX_MESSAGE, MAX_MESSAGES, MAX_STRAY, TaskFolder
 from shares.history.rounds import Inbox
+from shares.history.standing import standing
 
 
 def said(name: str, task: Task, *, by: str | None = None, **changes: Any) -> TaskMessage:
@@ -185,6 +187,40 @@ def test_a_flood_of_files_is_refused(folder: TaskFolder) -> None:
         folder.read()
 
 
+def test_a_flood_of_files_that_are_no_messages_is_refused_before_all_are_read(folder: TaskFolder) -> None:
+    folder.release(said("north-pier", folder.task))
+    for i in range(MAX_STRAY):
+        put(folder, f"{i}.json", b"{}" if i % 2 else said("north-pier", new_task()))
+    assert len(folder.read().problems) == MAX_STRAY
+    put(folder, "x.json", b"{}")
+    with mock.patch.object(TaskMessage, "parse", side_effect=TaskMessage.parse) as parse:
+        with pytest.raises(StorageError, match=f"more than {MAX_STRAY} files that are no messages of this task"):
+            folder.read()
+        assert parse.call_count <= MAX_STRAY + 2
+
+
+def test_a_flood_of_large_files_is_refused_before_any_is_read(folder: TaskFolder) -> None:
+    for i in range(MAX_ALL // MAX_MESSAGE + 1):
+        with (folder.path / "messages" / f"{i}.json").open("wb") as sparse:
+            sparse.truncate(MAX_MESSAGE if i else 1)
+    with mock.patch.object(TaskMessage, "parse", side_effect=TaskMessage.parse) as parse:
+        with pytest.raises(StorageError, match="holds more than 32 MiB"):
+            folder.read()
+        assert parse.call_count == 0
+
+
+def test_where_another_run_sends_the_same_message_just_now_it_is_sent_once(folder: TaskFolder) -> None:
+    message, real = said("north-pier", folder.task), exchange_module.write_new
+
+    def slow(path: Path, data: bytes, *, secret: bool) -> None:
+        real(path, data, secret=secret)  # The other run.
+        real(path, data, secret=secret)
+
+    with mock.patch.object(exchange_module, "write_new", slow):
+        assert folder.release(message).name == "0-north-pier.json"
+    assert len(list((folder.path / "messages").iterdir())) == 1
+
+
 def test_a_link_in_the_place_of_the_messages_is_not_followed(folder: TaskFolder, tmp_path: Path) -> None:
     messages = folder.path / "messages"
     messages.rename(tmp_path / "elsewhere")
@@ -285,6 +321,42 @@ def test_content_is_exactly_what_the_task_names(tmp_path: Path) -> None:
         folder.content()
 
 
+def listing(record: KeyRecord, issuer: bytes, earlier: bytes | None) -> Task:
+    """A task to sign a revocation list."""
+
+    def named(data: bytes | None) -> Content | None:
+        return None if data is None else Content(size=len(data), digest=hashlib.sha256(data).digest())
+
+    files = {"content": named(CONTENT), "issuer": named(issuer), "earlier": named(earlier)}
+    work = {"what": "sign", "form": "revocation-list", "namespace": None, "commitments": (), **files}
+    return new_task(work=Signing.model_validate(work), record=record.fingerprint)
+
+
+def test_what_content_is_checked_by_lies_beside_the_task(tmp_path: Path) -> None:
+    record = key_record()
+    task = listing(record, b"issuer", b"earlier")
+    files = {"content": CONTENT, "issuer": b"issuer", "earlier": b"earlier", "record": record}
+    for name in ("issuer", "earlier"):
+        for wrong in (None, b"another"):
+            with pytest.raises(ParameterError, match=f"the file {name} is not the one that the task names"):
+                TaskFolder.create(tmp_path / "task", task, **{**files, name: wrong})  # type: ignore[arg-type]
+    with pytest.raises(ParameterError, match="the file earlier is not"):
+        TaskFolder.create(tmp_path / "task", listing(record, b"issuer", None), **files)  # type: ignore[arg-type]
+    assert not (tmp_path / "task").exists()
+    folder = TaskFolder.create(tmp_path / "task", task, **files)  # type: ignore[arg-type]
+    for name in ("issuer", "earlier"):
+        assert folder.beside(name) == name.encode() == (folder.path / name).read_bytes()
+        (folder.path / name).write_bytes(b"another")
+        with pytest.raises(VerificationError, match=f"it is not the {name} that the task names"):
+            folder.beside(name)
+        (folder.path / name).unlink()
+        with pytest.raises(StorageError, match="does not exist"):
+            folder.beside(name)
+    first = TaskFolder.create(tmp_path / "first", listing(record, b"issuer", None), **{**files, "earlier": None})  # type: ignore[arg-type]
+    (first.path / "earlier").write_bytes(b"what the task does not name is not looked at")
+    assert first.beside("earlier") is None
+
+
 def test_the_record_is_the_one_that_the_task_names(tmp_path: Path) -> None:
     record = key_record()
     folder = TaskFolder.create(tmp_path / "task", letter(record), content=CONTENT, record=record)
@@ -310,6 +382,30 @@ def test_no_folder_is_made_of_what_does_not_belong_together(tmp_path: Path) -> N
         with pytest.raises(ParameterError, match="not the one that the task names"):
             TaskFolder.create(tmp_path / "task", task, content=content, record=beside)
         assert not (tmp_path / "task").exists()
+
+
+def test_what_could_not_be_finished_is_not_in_the_way(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A full medium leaves nothing; what a killed run leaves is gone on from."""
+    record = key_record()
+    task, real = letter(record), exchange_module.write_new
+
+    def full(path: Path, data: bytes, *, secret: bool) -> None:
+        if Path(path).name == "task.json":
+            raise StorageError("no space left")
+        real(path, data, secret=secret)
+
+    with monkeypatch.context() as patched:
+        patched.setattr(exchange_module, "write_new", full)
+        with pytest.raises(StorageError, match="no space left"):
+            TaskFolder.create(tmp_path / "t", task, content=CONTENT, record=record)
+    assert [path.name for path in (tmp_path / "t").iterdir()] == ["messages"]
+    (tmp_path / "t" / "content").write_bytes(CONTENT)
+    TaskFolder.create(tmp_path / "t", task, content=CONTENT, record=record)
+    (tmp_path / "u").mkdir()
+    (tmp_path / "u" / "content").write_bytes(CONTENT[1:])
+    with pytest.raises(StorageError, match="exists already"):
+        TaskFolder.create(tmp_path / "u", task, content=CONTENT, record=record)
+    assert (tmp_path / "u" / "content").read_bytes() == CONTENT[1:]
 
 
 def test_a_folder_that_holds_a_task_gets_no_other(folder: TaskFolder) -> None:

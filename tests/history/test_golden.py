@@ -29,6 +29,7 @@ key dealt, epoch 1, record {record}
 north-pier, south-pier, harbour-office asked to open (task {task}): by boat
 north-pier agreed to open: a letter, 72 bytes (task {task})
 task {task} to open finished
+task {task} to open failed, by south-pier: the partial result of south-pier is wrong
 """
 SENTENCES = """\
 epoch 1 dealt to north-pier, south-pier, light-house, registrar, harbour-office

@@ -215,6 +215,23 @@ def test_a_message_that_was_lost_is_sent_again_to_the_byte(tmp_path: Path) -> No
     assert path.read_bytes() == first
 
 
+def test_a_part_learns_that_its_message_is_kept_before_it_is_released(tmp_path: Path) -> None:
+    """Also where the run that kept it was stopped there."""
+    desk = desks(tmp_path)["north-pier"]
+
+    def stop(round: int, inbox: Inbox) -> None:
+        assert (round, inbox.rounds) == (0, ())
+        assert list(desk.own().messages()) == [0]
+        assert not list(desk.messages.glob("*.json"))
+        raise StorageError("full", where="there", hint="make room")
+
+    with mock.patch.object(desk.part, "kept", stop), pytest.raises(StorageError, match="full"):
+        desk.take()
+    assert not list(desk.messages.glob("*.json"))
+    assert (desk.take(), desk.part.told) == ("repeat", [0])
+    desk.message(0)
+
+
 def test_a_name_that_is_taken_keeps_nothing_from_being_sent(tmp_path: Path) -> None:
     machines = desks(tmp_path)
     desk = machines["north-pier"]
@@ -388,7 +405,7 @@ def test_the_wrong_party_key_is_refused(tmp_path: Path) -> None:
     # Another party of the task, in this one's folder, finds that it knows nothing of its messages.
     desk.take()
     assert OwnSteps(desk.mine, task, card("south-pier")).name == "south-pier"
-    with pytest.raises(VerificationError, match="it is a step of another task, or of another party"):
+    with pytest.raises(VerificationError, match="is the folder of north-pier"):
         OwnSteps(desk.mine, task, card("south-pier")).steps()
 
 

@@ -61,13 +61,20 @@ def dealt(need: int = 3, names: tuple[str, ...] = NAMES, number: int = 0) -> Key
     return Key(record, shares, scalars)
 
 
+def named(content: bytes) -> Content:
+    """A file as a task names it."""
+    return Content(size=len(content), digest=hashlib.sha256(content).digest())
+
+
 def a_task(key: Key, signers: Sequence[str] = NAMES[:3], content: bytes = CONTENT, **changes: Any) -> Task:
     """A task to sign content; ``changes`` are members of the work or of the task."""
     work = {
         "what": "sign",
         "form": "plain",
         "namespace": None,
-        "content": Content(size=len(content), digest=hashlib.sha256(content).digest()),
+        "content": named(content),
+        "issuer": None,
+        "earlier": None,
         "commitments": (),
     }
     work |= {name: changes.pop(name) for name in tuple(changes) if name in work}
@@ -106,21 +113,21 @@ def said(task: Task, name: str, round: int, body: Body) -> TaskMessage:
         return TaskMessage.signed_by(own, task=task.digest(), round=round, sender=name, seen=bytes(32), body=body)
 
 
-def part(task: Task, name: str, key: Key, own: Any, folder: Path) -> SigningPart:
-    return SigningPart(task, name, key.record, key.shares[name], own, folder / name)
+def part(task: Task, name: str, key: Key, own: Any, folder: Path, **beside: bytes) -> SigningPart:
+    return SigningPart(task, name, key.record, key.shares[name], own, folder / name, **beside)
 
 
-def speak(task: Task, name: str, key: Key, folder: Path, round: int, inbox: Inbox) -> TaskMessage:
+def speak(task: Task, name: str, key: Key, folder: Path, round: int, inbox: Inbox, **beside: bytes) -> TaskMessage:
     """What a signer says in a round."""
     with unlocked(name) as own:
-        body = part(task, name, key, own, folder).speak(round, inbox, Secret(0), ()).body
+        body = part(task, name, key, own, folder, **beside).speak(round, inbox, Secret(0), ()).body
     return said(task, name, round, body)
 
 
-def played(task: Task, key: Key, folder: Path, content: bytes | None = CONTENT) -> Inbox:
+def played(task: Task, key: Key, folder: Path, content: bytes | None = CONTENT, **beside: bytes) -> Inbox:
     """All rounds of a task, each signer in its own folder."""
     inbox = Inbox(task, (), content)
     for round in range(len(SigningCourse(task, key.record).rounds)):
-        messages = {name: speak(task, name, key, folder, round, inbox) for name in task.names}
+        messages = {name: speak(task, name, key, folder, round, inbox, **beside) for name in task.names}
         inbox = Inbox(task, (*inbox.rounds, messages), content)
     return inbox

@@ -14,7 +14,7 @@ from parties import card, unlocked
 from strategies import CREATED
 
 from shares.documents.base import Document
-from shares.documents.nonce_batch import NonceBatch, NonceMark, NonceMarks, NoncePair, pair_id
+from shares.documents.nonce_batch import BoundPair, NonceBatch, NonceMark, NonceMarks, NoncePair, pair_id
 from shares.documents.task_message import (
     Accusation,
     Answer,
@@ -85,6 +85,16 @@ def key_documents() -> dict[str, Document]:
         batch = NonceBatch.signed_by(
             signer, record=key.record, signer=ME, commitments=[(POINT, OTHER)], created=CREATED
         )
+        marks = NonceMarks.signed_by(
+            signer,
+            record=key.record,
+            signer=ME,
+            batch=pair_id(POINT, OTHER),
+            marks=[
+                NonceMark(pair=pair_id(POINT, OTHER), mark=bytes(32)),
+                NonceMark(pair=pair_id(OTHER, POINT), mark=None),
+            ],
+        )
     pair = NoncePair.wrap(
         Secret.of(bytes(64)),
         record=key.record,
@@ -94,7 +104,7 @@ def key_documents() -> dict[str, Document]:
         binding=OTHER,
         seal=own,
     )
-    marks = (NonceMark(pair=pair_id(POINT, OTHER), mark=bytes(32)), NonceMark(pair=pair_id(OTHER, POINT), mark=None))
+    bound = BoundPair.of(pair, Secret.of(bytes(64)), purpose=bytes(32), mark=bytes(32), seal=own)
     messages = {f"task-message: {body.what}": message(body) for body in bodies()}
     return {
         "key-record": signed,
@@ -110,7 +120,8 @@ def key_documents() -> dict[str, Document]:
             messages=(step.message, message(bodies()[1])),
         ),
         "nonce-pair": pair,
-        "nonce-marks": NonceMarks(kind="nonce-marks", version=1, batch=pair_id(POINT, OTHER), marks=marks),
+        "nonce-bound": bound,
+        "nonce-marks": marks,
         "nonce-batch": batch,
         **messages,
     }
@@ -190,6 +201,7 @@ def key_mutations(samples: dict[str, Any]) -> dict[str, dict[str, dict[str, Any]
         "task-step": {**common, **sealed, "no message": {"message": None}, "nobody's": {"party": ""}},
         "task-done": {**common, "nine messages": {"messages": samples["task-done"]["messages"][:1] * 9}},
         "nonce-pair": {**common, **of_key, **sealed, "a short batch": {"batch": "0" * 31}},
+        "nonce-bound": {**common, **of_key, **sealed, "a short purpose": {"purpose": "0" * 63}, "no mark": {"mark": 1}},
         "nonce-marks": {
             **common,
             "no marks": {"marks": []},

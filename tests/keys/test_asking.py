@@ -17,9 +17,17 @@ from shares.documents.base import parse_object
 from shares.documents.key_event import MAX_CONTENT, TaskAsked
 from shares.documents.nonce_batch import NonceBatch
 from shares.documents.task import Signing, Task
-from shares.errors import DocumentError, NotEnoughSharesError, ParameterError, StorageError, VerificationError
+from shares.errors import (
+    DocumentError,
+    NotEnoughSharesError,
+    ParameterError,
+    SharesError,
+    StorageError,
+    VerificationError,
+)
 from shares.group.edwards25519 import BASE, Point, Scalar
-from shares.keys.asking import ask, issuer_of, new_joining, new_signing, unused
+from shares.keys import certificates
+from shares.keys.asking import ask, new_joining, new_signing, unused
 from shares.keys.deal import deal
 from shares.keys.folder import KeyFolder
 from shares.keys.handover import hand_over
@@ -89,17 +97,26 @@ def test_what_cannot_be_asked_is_refused(folder: KeyFolder) -> None:
 
 
 def test_a_task_is_kept_entered_and_then_written(folder: KeyFolder, tmp_path: Path) -> None:
-    task = signing(folder, form="certificate")
-    asked(folder, task, tmp_path / "t", issuer=b"the certificate above")
+    public_key = folder.record.public_key.encode()
+    body = certificates.root(public_key, subject="CN=Harbour", not_before=clock.now(), not_after=soon())  # type: ignore[arg-type]
+    task = signing(folder, content=body, form="certificate")
+    with unlocked("harbour-office") as author:
+        ask(folder, task, tmp_path / "t", body, author)
     entry = folder.journal().entries[-1]
     assert isinstance(entry.event, TaskAsked)
     assert (entry.event.task, entry.event.form) == (task.digest(), "certificate")
-    kept, issuer = (folder.path / one.path for one in entry.documents)
+    (kept,) = (folder.path / one.path for one in entry.documents)
     assert Task.parse(kept.read_bytes()) == task == Task.parse((tmp_path / "t" / "task.json").read_bytes())
-    assert issuer.read_bytes() == issuer_of(folder, task) == b"the certificate above"
-    assert issuer_of(folder, signing(folder)) is None
     with pytest.raises(StorageError, match="a task is here already"):
         asked(folder, signing(folder), tmp_path / "t")
+
+
+def test_what_every_signer_would_refuse_is_not_asked_for(folder: KeyFolder) -> None:
+    body = b"\x30\x80" + bytes(20)
+    for form, content in (("plain", body), ("certificate", body), ("revocation-list", CONTENT), ("openssh", CONTENT)):
+        with pytest.raises(SharesError) as refused:
+            signing(folder, content=content, form=form)
+        assert refused.value.hint or form != "plain"
 
 
 @given(st.lists(st.integers(1, 4), min_size=2, max_size=2), st.booleans())

@@ -189,8 +189,9 @@ def test_what_else_a_request_asks_for_is_left_out_and_told() -> None:
     assert {found.oid.dotted_string for found in read.extensions} == {
         "2.5.29.14", "2.5.29.15", "2.5.29.17", "2.5.29.19", "2.5.29.35", "2.5.29.37",
     }  # fmt: skip
-    assert left_out(request, "server") == ("2.5.29.19", "1.3.6.1.5.5.7.48.1.5")
-    assert left_out(request, "authority") == ("2.5.29.17", "2.5.29.19", "1.3.6.1.5.5.7.48.1.5")
+    constraints, check = "basic constraints (2.5.29.19)", "ocsp no check (1.3.6.1.5.5.7.48.1.5)"
+    assert left_out(request, "server") == (constraints, check)
+    assert left_out(request, "authority") == ("subject alternative name (2.5.29.17)", constraints, check)
     assert left_out(a_request(), "client") == ()
     with_attribute = (
         x509.CertificateSigningRequestBuilder()

@@ -8,10 +8,15 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import shutil
+import tracemalloc
 import zipfile
+from contextlib import nullcontext
 from io import BytesIO
+from pathlib import Path
 
 import pytest
+from cryptography import x509
 from cryptography.hazmat.primitives.asymmetric.ec import SECP256R1, generate_private_key
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 from cryptography.hazmat.primitives.serialization import (
@@ -24,10 +29,12 @@ from cryptography.hazmat.primitives.serialization import (
 )
 from hypothesis import given
 from hypothesis import strategies as st
-from keys.played import KEY, OTHER, QUORUM, ROOT_NAME, START, a_root, after
+from keys.played import KEY, OTHER, QUORUM, ROOT_NAME, START, a_root, after, body_of, plain_builder, tool
 
+from shares.errors import ParameterError
+from shares.keys.certificate_parts import KEY_USES
 from shares.keys.certificates import root
-from shares.keys.content import described
+from shares.keys.content import described, refuse_as_plain
 from shares.keys.description import in_groups, shown
 from shares.keys.revocation import revocation_list
 from shares.keys.ssh_signature import to_be_signed
@@ -158,7 +165,7 @@ def test_bodies_of_certificates_lists_and_ssh_signatures_are_read() -> None:
         assert said.cautions
     body = root(KEY, subject=ROOT_NAME, not_before=START, not_after=after(1))
     of_another_algorithm = body.replace(bytes.fromhex("06032b6570"), bytes.fromhex("06032b6571"), 1)
-    assert "ASN.1 DER" in described(of_another_algorithm, KEY).kind
+    assert "ASN.1" in described(of_another_algorithm, KEY).kind
     of_another_hash = to_be_signed(digest, "release").replace(b"sha512", b"sha256")
     assert described(of_another_hash, KEY).kind == "the body of an SSH signature in a form that is not read here"
 
@@ -203,7 +210,7 @@ def test_any_other_structure_of_asn_1_is_cautioned_against() -> None:
     long = b"\x30\x82\x01\x00" + bytes(256)
     for message in (info, long, b"\x30\x00"):
         said = described(message, KEY)
-        assert "ASN.1 DER" in said.kind
+        assert "ASN.1" in said.kind
         assert "Other programs" in said.cautions[0]
     for message in (long[:-1], long + b"\0", b"\x30", b"\x30\x82\x01"):
         assert "ASN.1" not in described(message, KEY).kind
@@ -211,10 +218,130 @@ def test_any_other_structure_of_asn_1_is_cautioned_against() -> None:
 
 
 def test_text_that_is_also_something_else_is_shown_with_its_caution() -> None:
-    said = described(b"0!" + b"a" * 0x21, KEY)  # A SEQUENCE of 33 octets, and text.
-    assert "ASN.1" in said.kind
-    assert said.lines[2:] == ("0!" + "a" * 0x21,)
     assert described(b"SSHSIG is a word\n", KEY).lines[2:] == ("SSHSIG is a word",)
+    token = b"eyJhbGciOiJFZERTQSJ9.eyJzdWIiOiJyb290In0"  # RFC 7515, sec. 5.1; its header by RFC 8037, sec. 3.1.
+    for message in (token, base64.urlsafe_b64encode(b'{ "alg":"EdDSA"}').rstrip(b"=") + b".e30"):
+        said = described(message, KEY)
+        assert said.lines[2:] == (message.decode(),)
+        assert said.kind == "what is signed of a token in JSON (JWS)"
+        assert "Other programs" in said.cautions[0]
+        refuse_as_plain(message, KEY)
+    assert described(b"eyesore. It is one.", KEY).cautions == ()
+
+
+def test_text_is_no_structure_though_it_may_begin_like_one() -> None:
+    """As a SEQUENCE of 33 octets begins; what a structure holds has tags, which are control characters."""
+    text = b"0!" + b"a" * 0x21
+    assert (described(text, KEY).kind, described(text, KEY).cautions) == ("text", ())
+    refuse_as_plain(text, KEY)
+    for other in (b"0!\x06\x1f" + b"a" * 31, b"0!\xff" + b"a" * 32):
+        assert "ASN.1" in described(other, KEY).kind
+        with pytest.raises(ParameterError, match=r"ASN\.1"):
+            refuse_as_plain(other, KEY)
+
+
+# Headers for the same octets within: DER's, and others that lenient readers take too (ITU-T X.690, sec. 8.1.2, 8.1.3).
+# OpenSSL 3 verifies a certificate with any of them but the last.
+SPELLINGS = {
+    "definite": (lambda octets: b"\x30\x82" + len(octets).to_bytes(2) + octets),
+    "long": (lambda octets: b"\x30\x84" + len(octets).to_bytes(4) + octets),
+    "longer": (lambda octets: b"\x30\x88" + len(octets).to_bytes(8) + octets),
+    "indefinite": (lambda octets: b"\x30\x80" + octets + b"\0\0"),
+    "high tag": (lambda octets: b"\x3f\x10\x82" + len(octets).to_bytes(2) + octets),
+    "padded tag": (lambda octets: b"\x3f\x80\x10\x80" + octets + b"\0\0"),
+    "set": (lambda octets: b"\x31\x82" + len(octets).to_bytes(2) + octets),
+}
+
+
+def an_authority() -> bytes:
+    """The body of a certificate of the tests' own making: an authority below the quorum's root."""
+    usage = x509.KeyUsage(**{use: use in ("key_cert_sign", "crl_sign") for use in KEY_USES})
+    builder = plain_builder(subject="CN=Dry Dock").add_extension(x509.BasicConstraints(ca=True, path_length=None), True)
+    return body_of(builder.add_extension(usage, critical=True))
+
+
+@pytest.mark.parametrize("name", SPELLINGS)
+def test_no_spelling_of_a_certificates_header_passes_as_plain_bytes(name: str, tmp_path: Path) -> None:
+    body = an_authority()
+    octets = body[4 if body[1] == 0x82 else 3 :]
+    spelled = SPELLINGS[name](octets)
+    with pytest.raises(ParameterError, match="certificate"):
+        refuse_as_plain(spelled, KEY)
+    said = described(spelled, KEY)
+    assert "certificate" in said.kind
+    assert said.cautions
+    if shutil.which("openssl") is None:
+        pytest.skip("openssl is not installed (apt-get install openssl)")
+    # What makes it worth refusing: an ordinary verifier takes what the quorum would have signed.
+    whole = spelled + bytes.fromhex("300506032b6570034100") + QUORUM.sign(spelled)
+    (tmp_path / "c.der").write_bytes(b"\x30\x82" + len(whole).to_bytes(2) + whole)
+    (tmp_path / "root.pem").write_bytes(a_root())
+    moment = str(int(after(1).timestamp()))
+    taken = tool(tmp_path, "openssl", "verify", "-attime", moment, "-CAfile", "root.pem", "c.der")
+    if name in ("definite", "indefinite"):
+        assert taken.returncode == 0, taken.stderr
+
+
+def test_attributes_of_cms_are_refused_as_plain_bytes() -> None:
+    # RFC 5652, sec. 5.4: the attributes are signed as a SET; content type data, and a digest.
+    digest = hashlib.sha512(b"a program").digest()
+    kind = bytes.fromhex("301806092a864886f70d010903310b06092a864886f70d010701")
+    value = b"\x06\x09\x2a\x86\x48\x86\xf7\x0d\x01\x09\x04\x31\x42\x04\x40" + digest
+    attributes = kind + b"\x30" + bytes([len(value)]) + value
+    message = b"\x31" + bytes([len(attributes)]) + attributes
+    with pytest.raises(ParameterError, match=r"ASN\.1"):
+        refuse_as_plain(message, KEY)
+
+
+def test_bodies_and_proofs_of_other_protocols_are_refused_as_plain_bytes() -> None:
+    curve = b"\x03\x00\x1d\x20"  # RFC 8422, sec. 5.4: a named curve, x25519, and the length of its point.
+    for message, words in (
+        (to_be_signed(hashlib.sha512(b"release").digest(), "release"), "detached SSH signature"),
+        (b"SSHSIG and more", "SSH signature"),
+        (revocation_list(KEY, [], issuer=a_root(), this_update=START, next_update=after(1)), "revocation list"),
+        (root(KEY, subject=ROOT_NAME, not_before=START, not_after=after(1)), "root certificate"),
+        (b" " * 64 + b"TLS 1.3, client CertificateVerify\0" + bytes(32), "TLS 1.3"),
+        (bytes(64) + curve + bytes(32), "TLS 1.2"),
+        (b"\x01\x00\x01\xfc\x03\x03" + bytes(508), "a login by TLS"),  # RFC 5246, sec. 7.4.1.2 and 7.4.8.
+        (b'shares/v1/sign/party-card{"contact":null}', "this program signs"),
+        (b"shares/v1/task", "this program signs"),
+    ):
+        with pytest.raises(ParameterError, match=words) as refused:
+            refuse_as_plain(message, KEY)
+        assert "shares key" in (refused.value.hint or "")
+        assert words in described(message, KEY).kind
+
+
+@given(st.binary(max_size=200) | st.text(max_size=200).map(str.encode))
+def test_what_is_refused_is_what_is_cautioned_against(message: bytes) -> None:
+    said = described(message, KEY)
+    cautioned = any("Other programs" in caution for caution in said.cautions) and "JWS" not in said.kind
+    with pytest.raises(ParameterError) if cautioned else nullcontext():
+        refuse_as_plain(message, KEY)
+
+
+def test_a_digest_of_nobody_knows_what_is_cautioned_against() -> None:
+    for size in (20, 32, 48, 64):
+        assert "digest of something" in described(b"\xff" * size, KEY).cautions[-1]
+    assert len(described(b"\xff" * 33, KEY).cautions) == 1
+
+
+@pytest.mark.parametrize("unit", [b"a\n", b"\n", "é\n".encode(), b"\t", b"-----BEGIN A-----\n"])
+def test_large_content_takes_little_more_than_itself(unit: bytes) -> None:
+    """Four megabytes of short lines were a hundred of memory, once each line was an object."""
+    message = unit * ((4 << 20) // len(unit))
+    tracemalloc.start()
+    try:
+        described(message, KEY)
+        assert tracemalloc.get_traced_memory()[1] < 6 * len(message)
+    finally:
+        tracemalloc.stop()
+
+
+def test_many_kinds_of_pem_blocks_are_counted() -> None:
+    message = b"".join(b"-----BEGIN BLOCK %d-----\n" % number for number in range(500))
+    assert lines(message)[0].startswith("PEM blocks: BLOCK 0, BLOCK 1,")
+    assert lines(message)[0].endswith("BLOCK 11, and 488 other kinds")
 
 
 @given(st.binary(max_size=80))

@@ -10,7 +10,9 @@ from cli.keyed import OFFICE, Keyed
 from cli.test_key_tasks import CONTENT, FIRST, SECOND, sent
 from parties import unlocked
 
+from shares.documents.task_message import Commitment, SignatureShare, TaskMessage
 from shares.errors import NotEnoughSharesError, ParameterError, StorageError, VerificationError
+from shares.group.edwards25519 import BASE, Scalar
 from shares.history.exchange import TaskFolder
 from shares.keys import finishing
 from shares.keys.finishing import begin_opening, open_message, signed
@@ -118,4 +120,57 @@ def test_without_what_was_kept_nothing_opens(opening: tuple[KeyFolder, TaskFolde
 
 def test_an_opening_is_no_signature(opening: tuple[KeyFolder, TaskFolder]) -> None:
     with pytest.raises(ParameterError):
-        signed(*opening)
+        put_together(*opening)
+
+
+def put_together(folder: KeyFolder, task: TaskFolder) -> bytes:
+    """The signature, as the office has it."""
+    with unlocked(OFFICE) as office:
+        return signed(folder, task, office)
+
+
+@pytest.fixture
+def signing(once: Keyed, tmp_path: Path) -> tuple[KeyFolder, TaskFolder]:
+    """The office's folder, and that of a task to sign, answered by all."""
+    keyed = once.copy(tmp_path / "harbour")
+    path = keyed.ask("sign", keyed.path("release.txt"), task="s", names=(FIRST, SECOND))
+    keyed.answer(path, FIRST, SECOND, rounds=2)
+    return KeyFolder(keyed.key), TaskFolder(path)
+
+
+def test_a_signature_that_is_complete_is_stopped_by_nothing_that_is_said_besides(
+    signing: tuple[KeyFolder, TaskFolder],
+) -> None:
+    folder, task = signing
+    before = put_together(folder, task)
+    inbox = task.read().inbox
+    with unlocked(SECOND) as key:
+        for round, body in (
+            (0, Commitment(what="commitment", hiding=BASE, binding=BASE)),
+            (1, SignatureShare(what="signature-share", share=Scalar.of(7))),
+            (1, Commitment(what="commitment", hiding=BASE, binding=BASE)),
+        ):
+            for seen in (inbox.seen(round), bytes(32)):
+                more = TaskMessage.signed_by(
+                    key, task=task.task.digest(), round=round, sender=SECOND, seen=seen, body=body
+                )
+                task.release(more)
+                assert put_together(folder, task) == before
+
+
+def test_a_signature_is_not_put_together_where_no_share_of_one_signer_holds(
+    signing: tuple[KeyFolder, TaskFolder],
+) -> None:
+    folder, task = signing
+    inbox = task.read().inbox
+    (task.path / "messages" / f"1-{SECOND}.json").unlink()
+    with unlocked(SECOND) as key:
+        for number in (7, 8):
+            body = SignatureShare(what="signature-share", share=Scalar.of(number))
+            task.release(
+                TaskMessage.signed_by(
+                    key, task=task.task.digest(), round=1, sender=SECOND, seen=inbox.seen(1), body=body
+                )
+            )
+    with pytest.raises(VerificationError, match=f"two different messages of {SECOND}"):
+        put_together(folder, task)

@@ -12,10 +12,10 @@ from shares.documents.key_event import KeyBorn
 from shares.errors import SetMismatchError, StorageError, VerificationError
 from shares.group.edwards25519 import Scalar
 from shares.keys import handover
-from shares.keys.checking import opened
 from shares.keys.deal import DealtKey, deal
 from shares.keys.folder import KeyFolder
 from shares.keys.handover import check_places, hand_over
+from shares.keys.own_share import own_share
 
 NAMES = ("north-pier", "south-pier", "light-house")
 
@@ -46,7 +46,7 @@ def test_each_custodian_finds_a_folder_to_work_with(
     for name, place in places.items():
         folder = KeyFolder(place)
         with unlocked(name) as own:
-            opened(folder.share(), folder.record, own.open)
+            own_share(folder.share(), folder.record, name, own.open)
         (born,) = folder.journal().entries
         assert isinstance(born.event, KeyBorn)
         assert [one.name for one in folder.journal().signers(born)] == ["harbour-office"]
@@ -93,6 +93,29 @@ def test_what_reads_back_otherwise_is_not_called_done(
     with pytest.raises(VerificationError, match="differs"):
         handed_over(dealt, tmp_path / "key", deliveries)
     assert sorted(path.name for path in tmp_path.rglob("*")) == ["other", "stick"]
+
+
+def test_a_record_that_cannot_be_removed_keeps_its_key_shares(
+    dealt: DealtKey, tmp_path: Path, deliveries: dict[str, Path], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The dealer's medium turns read-only between the writing of the record and the look at it."""
+    record = tmp_path / "key" / "record.json"
+    real_read, real_discard = handover.read_back, handover.discard
+
+    def read_back(path: Path, limit: int) -> bytes:
+        return b"{}" if path == record else real_read(path, limit=limit)
+
+    def discard(path: Path) -> None:
+        if path.parent == record.parent:
+            raise StorageError("read-only file system")
+        real_discard(path)
+
+    monkeypatch.setattr(handover, "read_back", read_back)
+    monkeypatch.setattr(handover, "discard", discard)
+    with pytest.raises(VerificationError, match="differs"):
+        handed_over(dealt, tmp_path / "key", deliveries)
+    assert record.is_file()
+    assert all((folder / name / "share.json").is_file() for name, folder in deliveries.items())
 
 
 def test_nothing_of_another_key_is_touched(dealt: DealtKey, tmp_path: Path, deliveries: dict[str, Path]) -> None:

@@ -117,7 +117,10 @@ def test_the_words_say_what_to_compare() -> None:
     agreed = part.event(0, inbox)
     assert isinstance(agreed, Approved)
     assert (agreed.custodian, agreed.task) == ("registrar", exchange.task.digest())
-    assert not any(part.event(round, inbox) for round in range(1, 6))
+    assert not any(part.event(round, inbox) for round in range(1, 5))
+    signed = part.event(5, inbox)
+    assert isinstance(signed, Approved)
+    assert signed.summary.endswith(f"to sign its record {record.fingerprint}")
 
 
 @pytest.mark.parametrize(

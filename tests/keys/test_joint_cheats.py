@@ -193,11 +193,6 @@ BLAMED = {
         NORTH,
         "and nothing else",
     ),
-    "wrong shares to as many as are needed": (
-        {(1, NORTH): wrong_share(SOUTH, LIGHT, DOCK)},
-        NORTH,
-        "as many as the key will need",
-    ),
     "complaint against itself": ({(2, NORTH): complains(NORTH)}, NORTH, "of itself"),
     "complaint against nobody": ({(2, NORTH): complains("auditor-east")}, NORTH, "takes no part"),
     "one complaint twice": ({(2, NORTH): complains(SOUTH, SOUTH)}, NORTH, "one party twice"),
@@ -270,6 +265,25 @@ def test_a_complaint_that_is_answered_well_is_told_and_hurts_nobody(cheats: dict
     assert len({born(exchange, name)[0] for name in NAMES}) == 1
     assert f"complained of {NORTH}, who then showed numbers that hold" in "\n".join(exchange.outcome(DOCK).words)
     assert NORTH in exchange.told[DOCK][3]
+
+
+@pytest.mark.parametrize(
+    "cheats",
+    [
+        {(1, NORTH): wrong_share(SOUTH, LIGHT, DOCK)},
+        {(2, name): complains(NORTH) for name in (SOUTH, LIGHT, DOCK)},
+    ],
+    ids=["the dealer cheats", "they do"],
+)
+def test_where_as_many_complain_as_are_needed_it_ends_and_nobody_is_blamed(
+    cheats: dict[tuple[int, str], Cheat],
+) -> None:
+    exchange = joint(cheats=cheats).run()
+    (failure,) = set(exchange.failures().values())
+    assert failure is not None
+    assert failure.by is None
+    assert f"{SOUTH}, {LIGHT}, {DOCK} complain of what {NORTH} has dealt: as many as the key will need" in failure.what
+    assert not any(exchange.told[DOCK][3:])
 
 
 def test_before_it_shows_anything_a_party_is_told_what() -> None:

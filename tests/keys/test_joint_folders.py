@@ -12,9 +12,11 @@ from history.exchanging import Desk, exchange, to_the_end
 from keys.joining import interpolated, key, public_half, task
 from keys.test_joint_cheats import NAMES, NORTH, SOUTH
 
+from shares.documents.key_event import Approved
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
 from shares.documents.task import Task
+from shares.documents.task_message import Accusation, TaskMessage
 from shares.history.exchange import TaskFolder
 from shares.history.journal import read_journal
 from shares.history.rounds import Inbox, Received, Said
@@ -49,7 +51,10 @@ def test_five_folders_and_one_key(tmp_path: Path) -> None:
         assert (share.custodian, share.index, share.record) == (name, x, record.fingerprint)
         shares[x] = int.from_bytes(share.open(key(name).open).encode(), "little")
         events = [entry.event.what for entry in read_journal((desk.mine / "journal.jsonl").read_bytes()).entries]
-        assert events == ["approved", "key-born"]
+        assert events == ["approved", "approved", "key-born"]
+        second = read_journal((desk.mine / "journal.jsonl").read_bytes()).entries[1].event
+        assert isinstance(second, Approved)
+        assert record.fingerprint in second.summary
     assert public_half(interpolated({x: shares[x] for x in (1, 3, 5)})) == record.public_key.encode()
     kept = b"".join(path.read_bytes() for path in sorted(tmp_path.rglob("*.json*")))
     assert not any(form in kept for share in shares.values() for form in _forms(share))
@@ -101,3 +106,52 @@ def test_who_insists_on_a_wrong_dealing_is_named_and_nothing_is_written(tmp_path
         assert failure.by == NORTH
         assert machines[name].turn().doing == "failed"
         assert not (machines[name].mine / "record.json").exists()
+
+
+def test_who_confirms_to_some_and_accuses_to_others_takes_the_key_from_nobody(tmp_path: Path) -> None:
+    machines = desks(tmp_path, task(2, 3))
+    north, south, light = machines.values()
+    for _ in range(4):
+        for desk in machines.values():
+            desk.take()
+        exchange(machines)
+    for desk in machines.values():
+        desk.take()
+    north.send(south)
+    light.send(north)
+    south.send(north)
+    assert north.take() == "finish"
+    good = light.message(5)
+    false = TaskMessage.signed_by(
+        key(light.name),
+        task=good.task,
+        round=5,
+        sender=light.name,
+        seen=good.seen,
+        body=Accusation(what="accusation", against=NORTH, reason="made up", share=None, blind=None),
+    )
+    (south.messages / "accusation.json").write_bytes(false.to_file())
+    assert south.take() == "failed"
+    assert not (south.mine / "share.json").exists()
+    # With what others were sent, the key is born here as well: the same one.
+    light.send(south)
+    found = south.standing()
+    assert [(one.kind, one.sender, one.stops) for one in found.problems] == [("conflict", light.name, False)]
+    assert south.take() == "finish"
+    assert (south.mine / "record.json").read_bytes() == (north.mine / "record.json").read_bytes()
+    assert (south.mine / "share.json").exists()
+
+
+def test_a_dealing_that_is_sent_when_all_is_over_takes_the_key_from_nobody(tmp_path: Path) -> None:
+    machines = desks(tmp_path, task(2, 3))
+    north, _, light = machines.values()
+    for _ in range(5):
+        for desk in machines.values():
+            desk.take()
+        exchange(machines)
+    dealt = light.message(1)
+    again = TaskMessage.signed_by(
+        key(light.name), task=dealt.task, round=1, sender=light.name, seen=dealt.seen, body=dealt.body
+    )
+    (north.messages / "dealing.json").write_bytes(again.to_file())
+    assert north.take() == "finish"

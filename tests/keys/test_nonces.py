@@ -31,7 +31,6 @@ from shares.errors import (
     SharesError,
     StorageError,
     VerificationError,
-    WrongKeyError,
 )
 from shares.group.edwards25519 import BASE, Point
 from shares.keys import frost, nonces
@@ -97,7 +96,8 @@ def test_nonces_are_those_of_their_commitments(store: NonceStore, pair: Pair) ->
     hiding, binding = store.take(*pair, ONE).used()
     assert (hiding * BASE, binding * BASE) == pair
     assert not store.holds(*pair)
-    assert files(store) == ["batch", "spent"]
+    assert files(store) == ["batch", "bound", "spent"]
+    assert [path.read_bytes() for path in store.folder.glob("spent-*")] == [b""]
 
 
 def test_files_are_the_signers_alone(store: NonceStore, pair: Pair) -> None:
@@ -137,17 +137,21 @@ def test_another_purpose_is_refused(store: NonceStore, pair: Pair) -> None:
 
 
 def test_what_is_erased_is_gone_for_ever(store: NonceStore, pair: Pair) -> None:
-    store.erase(*pair, ONE)  # Not spent: nothing to erase.
-    assert store.holds(*pair)
     store.take(*pair, ONE)
-    store.erase(*pair, ONE)
-    store.erase(*pair, ONE)
-    (spent,) = store.folder.glob("spent-*")
-    assert spent.read_bytes() == b""
+    for _ in range(2):
+        store.erase(*pair)
+    assert files(store) == ["batch", "spent"]
     with pytest.raises(VerificationError, match="erased: its share was given out"):
         store.take(*pair, ONE)
     with pytest.raises(VerificationError, match="this nonce was used for another"):
         store.take(*pair, OTHER)
+
+
+def test_what_was_never_spent_is_erased_as_well(store: NonceStore, pair: Pair) -> None:
+    store.erase(*pair)
+    assert not store.holds(*pair)
+    with pytest.raises(VerificationError, match="do not lie here"):
+        store.take(*pair, ONE)
 
 
 def test_each_pair_of_a_batch_is_its_own(store: NonceStore) -> None:
@@ -155,7 +159,7 @@ def test_each_pair_of_a_batch_is_its_own(store: NonceStore) -> None:
     assert len(set(pairs)) == 7
     for number, pair in enumerate(pairs):
         assert store.take(*pair, bytes([number]) * 32)
-    assert files(store) == ["batch"] + 7 * ["spent"]
+    assert files(store) == ["batch"] + 7 * ["bound"] + 7 * ["spent"]
 
 
 @pytest.mark.parametrize("count", [0, -1, MAX_BATCH + 1])
@@ -203,9 +207,13 @@ def test_nonces_of_another_key_are_refused(tmp_path: Path, own: OpenPartyKey, st
 
 def test_another_party_key_opens_nothing(store: NonceStore, pair: Pair) -> None:
     with unlocked("south-pier") as other:
-        store.key = other
-        with pytest.raises(WrongKeyError):
+        store.key, own = other, store.key
+        with pytest.raises(VerificationError, match="not signed by this signer"):
             store.take(*pair, ONE)
+        with pytest.raises(VerificationError, match="not signed by this signer"):
+            store.unused()
+    store.key = own
+    assert store.take(*pair, ONE)
 
 
 def test_a_file_under_another_ones_name_is_refused(store: NonceStore) -> None:
@@ -217,16 +225,16 @@ def test_a_file_under_another_ones_name_is_refused(store: NonceStore) -> None:
         store.take(*first, ONE)
 
 
-@pytest.mark.parametrize("member", ["sealed", "hiding", "batch", "digest", "record"])
+@pytest.mark.parametrize("member", ["sealed", "hiding", "batch", "digest", "record", "purpose", "mark"])
 def test_damaged_nonces_are_refused(store: NonceStore, pair: Pair, member: str) -> None:
-    store.take(*pair, ONE)  # From here on no mark is asked for.
-    (spent,) = store.folder.glob("spent-*")
-    members = json.loads(spent.read_text())
+    store.take(*pair, ONE)  # From here on no mark of this file is asked for.
+    (bound,) = store.folder.glob("bound-*")
+    members = json.loads(bound.read_text())
     text = members[member]
     members[member] = ("B" if text[0] == "A" else "A") + text[1:] if member != "batch" else "0" * 32
     if member == "digest":
         members[member] = "0" * 64
-    spent.write_text(json.dumps(members))
+    bound.write_text(json.dumps(members))
     with pytest.raises((VerificationError, DocumentError)):
         store.take(*pair, ONE)
 
@@ -244,7 +252,11 @@ def test_a_pair_that_is_put_back_has_a_spent_one_beside_it(store: NonceStore, pa
         share_of(store, pair, b"y")
     given.add(share_of(store, pair, b"x"))
     assert len(given) == 1
-    store.erase(*pair, b"x".ljust(32, b"\0"))
+    assert files(store) == ["batch", "bound", "spent"]  # The copy is removed.
+    shutil.copy2(kept, path)
+    store.erase(*pair)
+    assert files(store) == ["batch", "spent"]
+    shutil.copy2(kept, path)
     for message in (b"x", b"y"):
         with pytest.raises(VerificationError, match="this nonce was used"):
             share_of(store, pair, message)
@@ -469,7 +481,7 @@ def test_killed_while_erasing(tmp_path: Path) -> None:
 
         def erase() -> bytes:
             with unlocked(ME) as own:
-                store_in(tmp_path / str(2 * number + after), own).erase(*pair, b"x".ljust(32, b"\0"))
+                store_in(tmp_path / str(2 * number + after), own).erase(*pair)
             return b"done"
 
         status, _ = in_child(erase, number, after=after)
@@ -570,17 +582,17 @@ def test_a_pair_put_back_while_another_is_spent_is_noticed(store: NonceStore, pa
             store.take(*pair, purpose)
 
 
-def test_a_medium_without_a_safe_rename_is_refused(
-    store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_a_medium_without_a_rename_will_do(store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(streams, "_rename_new", refuse)
     monkeypatch.setattr(os, "link", refuse)
-    with pytest.raises(StorageError, match="renamed safely"):
-        store.take(*pair, ONE)
-    assert store.holds(*pair)
+    assert share_of(store, pair, b"x") == share_of(store, pair, b"x")
+    with pytest.raises(VerificationError, match="this nonce was used"):
+        share_of(store, pair, b"y")
 
 
-def test_a_full_medium_spends_nothing(store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_on_a_full_medium_no_share_is_given_and_the_same_purpose_goes_on(
+    store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch
+) -> None:
     def full(*_: object, **__: object) -> None:
         raise OSError(errno.ENOSPC, "full")
 
@@ -588,7 +600,9 @@ def test_a_full_medium_spends_nothing(store: NonceStore, pair: Pair, monkeypatch
         patch.setattr(streams, "_rename_new", full)
         with pytest.raises(StorageError, match="full"):
             store.take(*pair, ONE)
-    assert store.holds(*pair)
+    assert files(store) == ["batch", "pair", "spent"]
+    with pytest.raises(VerificationError, match="this nonce was used for another"):
+        store.take(*pair, OTHER)
     assert store.take(*pair, ONE)
 
 

@@ -17,8 +17,8 @@ import pytest
 from cryptography import x509
 from cryptography.exceptions import InvalidSignature
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PublicKey
-from keys.quorum import CONTENT, NAMES, Key, a_task, committed, dealt, part, played, said, speak
-from parties import card, unlocked
+from keys.quorum import CONTENT, NAMES, Key, a_task, committed, dealt, named, part, played, said, speak
+from parties import card, namesake, unlocked
 from strategies import CREATED
 
 from shares.documents.key_event import Approved, TaskFinished
@@ -102,22 +102,27 @@ def test_content_of_any_size(tmp_path: Path, size: int) -> None:
     assert is_signed(key, finish_signing(task, key.record, inbox)[0], content)
 
 
-def test_nonces_are_erased_at_the_end_and_never_before(tmp_path: Path) -> None:
+def test_nonces_are_erased_when_the_share_is_kept_and_never_before(tmp_path: Path) -> None:
     key = dealt()
     task = a_task(key)
     inbox = played(task, key, tmp_path)
-    (spent,) = (tmp_path / ME / "nonces").glob("spent-*")
+    nonces = tmp_path / ME / "nonces"
+    (bound,) = nonces.glob("bound-*")
     # Asked again, a signer gives the same share, as after a crash.
     again = speak(task, ME, key, tmp_path, 1, Inbox(task, inbox.rounds[:1], CONTENT))
     assert again.body == inbox.rounds[1][ME].body
-    assert spent.stat().st_size > 0
     with unlocked(ME) as own:
-        outcome = part(task, ME, key, own, tmp_path).finish(inbox, Secret(0), ())
+        signer = part(task, ME, key, own, tmp_path)
+        signer.kept(0, Inbox(task, (), CONTENT))
+        assert bound.exists()
+        for _ in range(2):
+            signer.kept(1, Inbox(task, inbox.rounds[:1], CONTENT))
+        assert sorted(path.name[:5] for path in nonces.iterdir()) == ["batch", "spent"]
+        outcome = signer.finish(inbox, Secret(0), ())
     signature, _ = finish_signing(task, key.record, inbox)
     assert isinstance(outcome.event, TaskFinished)
     assert outcome.event.result == hashlib.sha256(signature).digest()
     assert not outcome.files
-    assert spent.stat().st_size == 0
     with pytest.raises(VerificationError, match="erased"):
         speak(task, ME, key, tmp_path, 1, Inbox(task, inbox.rounds[:1], CONTENT))
 
@@ -237,7 +242,7 @@ def test_a_signature_needs_every_share(tmp_path: Path) -> None:
 def foreign_tasks() -> dict[str, Task]:
     key = dealt()
     outside = tuple(TaskParty(name=name, card=card(name)) for name in (*NAMES[:2], "auditor-east"))
-    exchanged = tuple(TaskParty(name=one, card=card(two)) for one, two in itertools.pairwise(NAMES))
+    exchanged = tuple(TaskParty(name=name, card=namesake(name)) for name in NAMES[:3])
     return {
         "another key": a_task(dealt(number=1)),
         "another epoch": a_task(key, epoch=2),
@@ -272,7 +277,7 @@ def test_a_key_share_of_another_key_or_custodian_is_refused(tmp_path: Path) -> N
     for wrong in (other.shares[ME], key.shares[NAMES[1]]):
         with unlocked(ME) as own:
             signer = SigningPart(task, ME, key.record, wrong, own, tmp_path)
-            with pytest.raises(VerificationError, match="key share"):
+            with pytest.raises(SharesError, match="key share"):
                 signer.speak(0, Inbox(task, (), CONTENT), Secret(0), ())
     assert not list(tmp_path.iterdir())
 
@@ -335,7 +340,8 @@ def test_strange_content_is_told_safely(tmp_path: Path) -> None:
         event = signer.event(1, Inbox(task, (), content))
     assert all(c.isprintable() or c == "\n" for c in words)
     assert isinstance(event, Approved)
-    assert len(event.summary) == 500
+    assert event.summary.count("x" * 90) == 3
+    assert len(event.summary) <= 500
 
 
 # Forms.
@@ -387,29 +393,91 @@ def test_a_root_and_a_revocation_list(tmp_path: Path) -> None:
         this_update=CREATED,
         next_update=CREATED + timedelta(days=30),
     )
-    task = a_task(key, NAMES[:3], listed, form="revocation-list")
-    inbox = played(task, key, tmp_path, listed)
+    task = a_task(key, NAMES[:3], listed, form="revocation-list", issuer=named(root))
+    inbox = played(task, key, tmp_path, listed, issuer=root)
     pem, _ = finish_signing(task, key.record, inbox, issuer=root)
     assert x509.load_pem_x509_crl(pem).is_signature_valid(found.public_key())
-    with pytest.raises(ParameterError, match="give that certificate"):
+    with pytest.raises(VerificationError, match="certificate of its issuer is not beside the task"):
         finish_signing(task, key.record, inbox)
+
+
+def test_every_signer_checks_by_the_issuer_and_the_earlier_list(tmp_path: Path) -> None:
+    """What goes beyond the issuer's certificate, or leaves out what is revoked, no signer helps to sign."""
+    key = dealt()
+    public_key, until = key.record.public_key.encode(), CREATED + timedelta(days=30)
+
+    def listed(*serials: int, number: int) -> bytes:
+        revoked = [revocation.Revoked(serial, CREATED) for serial in serials]
+        times = {"this_update": CREATED, "next_update": until}
+        return revocation.revocation_list(public_key, revoked, issuer=root, number=number, **times)
+
+    body = a_root(key)
+    task = a_task(key, NAMES[:3], body, form="certificate")
+    root, _ = finish_signing(task, key.record, played(task, key, tmp_path, body))
+    task = a_task(key, NAMES[:3], first := listed(77, number=1), form="revocation-list", issuer=named(root))
+    earlier, _ = finish_signing(task, key.record, played(task, key, tmp_path, first, issuer=root), issuer=root)
+    long = certificates.root(
+        public_key, subject="CN=Harbour Trust Root", not_before=CREATED, not_after=CREATED + timedelta(days=9999)
+    )
+    both = {"issuer": root, "earlier": earlier}
+    for content, form, beside, words in (
+        (listed(77, 78, number=2), "revocation-list", both, None),
+        (listed(78, number=2), "revocation-list", both, "leaves out 1 of what the earlier list revokes"),
+        (listed(77, number=1), "revocation-list", both, "not numbered and dated after"),
+        (long, "certificate", {"issuer": root}, "outside the time of its issuer"),
+        (long, "certificate", {}, None),
+        (listed(77, number=2), "certificate", {"issuer": root}, "not the body of a certificate"),
+    ):
+        task = a_task(key, NAMES[:3], content, form=form, **{name: named(data) for name, data in beside.items()})
+        failure = SigningCourse(task, key.record, **beside).failure(inbox := Inbox(task, (), content))
+        assert (failure and failure.what) == failure if words is None else words in failure.what
+        if words is None:
+            assert isinstance(speak(task, ME, key, tmp_path, 0, inbox, **beside).body, Commitment)
+            continue
+        with pytest.raises(SharesError, match=words):
+            speak(task, ME, key, tmp_path, 0, inbox, **beside)
+
+
+@pytest.mark.parametrize("name", ["issuer", "earlier"])
+def test_another_file_beside_the_task_is_refused(tmp_path: Path, name: str) -> None:
+    key = dealt()
+    beside = {"issuer": b"the issuer", "earlier": b"the list before"}
+    of_task = {what: named(data) for what, data in beside.items()}
+    task = a_task(key, form="revocation-list", **of_task)
+    for wrong in (beside[name] + b"x", b"", None):
+        with pytest.raises(VerificationError, match=f"{name}.* is not"):
+            speak(task, ME, key, tmp_path, 0, Inbox(task, (), CONTENT), **{**beside, name: wrong})
+    task = a_task(key)
+    with pytest.raises(VerificationError, match=f"{name}.* is not what the task names"):
+        speak(task, ME, key, tmp_path, 0, Inbox(task, (), CONTENT), **{name: beside[name]})
+
+
+@pytest.mark.parametrize("content", [b"\x30\x80" + bytes(20), b"shares/v1/sign/task{}", b" " * 64 + b"TLS 1.3, server"])
+def test_what_others_act_on_no_signer_signs_as_plain_bytes(tmp_path: Path, content: bytes) -> None:
+    key = dealt()
+    task = a_task(key, NAMES[:3], content)
+    inbox = Inbox(task, (), content)
+    failure = SigningCourse(task, key.record).failure(inbox)
+    assert failure is not None
+    assert "as plain bytes is" in failure.what
+    with pytest.raises(SharesError, match="as plain bytes is"):
+        speak(task, ME, key, tmp_path, 0, inbox)
+    assert not list(tmp_path.iterdir())
 
 
 def test_a_signer_is_told_what_a_certificate_says(tmp_path: Path) -> None:
     key = dealt()
     body = a_root(key)
-    for form in ("certificate", "plain"):
-        task = a_task(key, NAMES[:3], body, form=form)
-        with unlocked(ME) as own:
-            words = "\n".join(part(task, ME, key, own, tmp_path).prospect(1, Inbox(task, (), body)))
-        assert "Harbour Trust Root" in words
-        assert "certificate" in words
+    task = a_task(key, NAMES[:3], body, form="certificate")
+    with unlocked(ME) as own:
+        words = "\n".join(part(task, ME, key, own, tmp_path).prospect(1, Inbox(task, (), body)))
+    assert "Harbour Trust Root" in words
+    assert "root certificate" in words
 
 
-@pytest.mark.parametrize("form", ["certificate", "revocation-list"])
-def test_what_is_no_certificate_is_not_signed_as_one(tmp_path: Path, form: str) -> None:
+def test_what_is_no_certificate_is_not_signed_as_one(tmp_path: Path) -> None:
     key = dealt()
-    task = a_task(key, form=form)
+    task = a_task(key, form="certificate")
     assert SigningCourse(task, key.record).failure(Inbox(task, (), CONTENT)) is not None
     with pytest.raises(DocumentError):
         speak(task, ME, key, tmp_path, 0, Inbox(task, (), CONTENT))

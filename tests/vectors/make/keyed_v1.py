@@ -1,6 +1,6 @@
 """The golden samples of threshold keys: a key that was dealt, and a message that is opened by it, as files of a task.
 
-Source: shares/documents/FORMAT_KEYS.md, sections 21 to 28. No curve is needed: an Ed25519 public key is the base point
+Source: shares/documents/FORMAT_KEYS.md, sections 21 to 29. No curve is needed: an Ed25519 public key is the base point
 times a number that its seed gives (RFC 8032, section 5.1.5), so seeds are drawn, and numbers worked out from them.
 May import: the standard library, `cryptography` and the `_v1` modules beside it.
 Secret: nothing; keys here are made up, and worthless.
@@ -116,26 +116,48 @@ def task(key: Json, content: bytes) -> Json:
     return {**made, "signature": sign(RECEIVER, "task", made)}
 
 
+def task_to_sign(key: Json, asked: Json) -> Json:
+    """Make a task to sign a revocation list that continues an earlier one, with commitments made beforehand."""
+
+    def named(what: str, size: int) -> Json:
+        content = draw(f"keyed/{what}", size)
+        return {"size": len(content), "digest": hashlib.sha256(content).hexdigest()}
+
+    names = CUSTODIANS[:NEED]
+    pairs = [{what: point_of(seed(f"{what} {i}")) for what in ("hiding", "binding")} for i in range(NEED)]
+    work: Json = {"what": "sign", "form": "revocation-list", "namespace": None, "content": named("list", 200)}
+    work |= {"issuer": named("issuer", 300), "earlier": named("earlier", 250)}
+    work |= {"commitments": [{"signer": name, **pair} for name, pair in zip(names, pairs, strict=True)]}
+    made = {**by_hand.without(asked, "signature"), "work": work, "parties": asked["parties"][:NEED], "remark": None}
+    return {**made, "signature": sign(RECEIVER, "task", made)}
+
+
 def digest(kind: str, document: Json) -> bytes:
     return hashlib.sha256(f"shares/v1/{kind}".encode() + canonical(document)).digest()
 
 
 def message(work: Json, round: int, sender: str, seen: bytes, body: Json, sealed: list[Json]) -> Json:
-    made: Json = {"kind": "task-message", "version": 1, "task": digest("task", work).hex(), "round": round}
+    made: Json = {"kind": "task-message", "version": 1, "task": digest("task-digest", work).hex(), "round": round}
     made |= {"sender": sender, "seen": seen.hex(), "body": body, "sealed": sealed}
     made |= {"created": f"2026-03-0{round + 3}T09:00:00Z"}
     return {**made, "signature": sign(sender, "task-message", made)}
 
 
 def seen(work: Json, *before: Json) -> bytes:
-    digests = [digest("task", work), *(digest("task-message", one) for one in before)]
+    digests = [digest("task-digest", work), *(digest("task-message", one) for one in before)]
     return hashlib.sha256(b"shares/v1/task-seen" + b"".join(digests)).digest()
 
 
 def box(work: Json, round: int, sender: str, to: str, content: bytes) -> str:
     """Seal for a fresh key, single shot, by RFC 9180."""
     info = b"shares/v1/task-box" + canonical(
-        {"task": digest("task", work).hex(), **some(work, "key", "epoch"), "round": round, "from": sender, "to": to}
+        {
+            "task": digest("task-digest", work).hex(),
+            **some(work, "key", "epoch"),
+            "round": round,
+            "from": sender,
+            "to": to,
+        }
     )
     ephemeral = X25519PrivateKey.from_private_bytes(seed("box/ephemeral"))
     public, recipient = ephemeral.public_key().public_bytes_raw(), fresh_key(to).public_key().public_bytes_raw()
@@ -155,7 +177,7 @@ def step(said: Json, to: Json, state: bytes) -> Json:
 
 
 def nonces(key: Json) -> dict[str, Json]:
-    """Make a batch of two pairs, the first pair, and the marks of both."""
+    """Make a batch of two pairs, the first pair, as it is before and after it is spent, and the marks of both."""
     north = key["custodians"][0]["card"]
     pairs = [{what: point_of(seed(f"{what} {i}")) for what in ("hiding", "binding")} for i in range(2)]
     names = [
@@ -166,17 +188,20 @@ def nonces(key: Json) -> dict[str, Json]:
     content = b"".join(number_of(seed(f"{what} 0")).to_bytes(32, "little") for what in ("hiding", "binding"))
     batch: Json = {"kind": "nonce-batch", "version": 1, **some(start, "key", "epoch", "record", "signer")}
     batch |= {"commitments": pairs, "created": "2026-03-01T10:00:00Z", "card": north}
-    marks = [{"pair": names[0], "mark": seed("mark").hex()}, {"pair": names[1], "mark": None}]
+    bound = {**start, "kind": "nonce-bound", "purpose": seed("purpose").hex(), "mark": seed("spent mark").hex()}
+    marks: Json = {"kind": "nonce-marks", "version": 1, **some(start, "key", "epoch", "record", "signer", "batch")}
+    marks |= {"marks": [{"pair": names[0], "mark": seed("mark").hex()}, {"pair": names[1], "mark": None}]}
     return {
         "pair.json": enveloped(start, north, content, start),
-        "marks.json": {"kind": "nonce-marks", "version": 1, "batch": names[0], "marks": marks},
+        "bound.json": enveloped(bound, north, content, bound),
+        "marks.json": {**marks, "signature": sign("north-pier", "nonce-marks", marks)},
         "batch.json": {**batch, "signature": sign("north-pier", "nonce-batch", batch)},
     }
 
 
 def events(key: Json, work: Json) -> list[Json]:
     """Give one event of each kind in a key's life."""
-    about = {"task": digest("task", work).hex(), "work": "open"}
+    about = {"task": digest("task-digest", work).hex(), "work": "open"}
     content = work["work"]["content"]
     born = {"what": "key-born", **some(key, "key", "epoch", "origin"), "record": key["fingerprint"], "remark": None}
     names = [one["name"] for one in work["parties"]]
@@ -186,6 +211,7 @@ def events(key: Json, work: Json) -> list[Json]:
         {"what": "task-asked", **about, "parties": names, "content": content, "form": None, "remark": "by boat"},
         {"what": "approved", **about, "custodian": "north-pier", "content": content, "summary": "a letter, 72 bytes"},
         {"what": "task-finished", **about, "result": None, "remark": None},
+        {"what": "task-failed", **about, "by": "south-pier", "reason": "the partial result of south-pier is wrong"},
     ]
 
 
@@ -199,13 +225,14 @@ def files() -> dict[str, str]:
     boxed = [{"to": RECEIVER, "box": box(work, 1, "north-pier", RECEIVER, draw("keyed/partial", 96))}]
     second = message(work, 1, "north-pier", seen(work, first), {"what": "partial"}, boxed)
     opened: Json = {"kind": "opened-message", "version": 1, "key": KEY, "encapsulated": b64(content[:32])}
-    opened |= {"content": work["work"]["content"], "task": digest("task", work).hex(), "receiver": RECEIVER}
+    opened |= {"content": work["work"]["content"], "task": digest("task-digest", work).hex(), "receiver": RECEIVER}
     done: Json = {"kind": "task-done", "version": 1, "task": second["task"], "party": "north-pier"}
     state = private = seed(f"{RECEIVER}/fresh")
     made = {
         "record.json": key,
         "north-pier.share.json": key_share(key),
         "task.json": work,
+        "task-to-sign.json": task_to_sign(key, work),
         "0-harbour-office.json": first,
         "1-north-pier.json": second,
         "harbour-office.step-0.json": step(first, card(RECEIVER, None), private),

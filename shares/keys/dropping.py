@@ -1,0 +1,69 @@
+"""Give a task up for one party: what it has said stays, and what it kept to go on with is erased.
+
+Source: RFC 9591, sec. 5.1 (nonces are deleted); FORMAT_KEYS.md, sec. 25 and 29.
+May import: shares.documents, shares.history, .finishing, .nonces, .signing.
+Secret: nothing is opened; sealed states and nonces are erased. The party key, passed through. Public: messages.
+Does not: tell the others, or erase media, which may keep old blocks.
+"""
+
+from __future__ import annotations
+
+from shares.documents.key_record import KeyRecord
+from shares.documents.party import OpenPartyKey
+from shares.documents.task import Signing
+from shares.documents.task_message import Commitment, Confirmation
+from shares.history.next import drop
+from shares.history.rounds import Failure
+from shares.history.steps import OwnSteps
+from shares.keys.finishing import failed
+from shares.keys.nonces import NonceStore
+from shares.keys.signing import NONCES
+
+
+def costs(own: OwnSteps) -> str | None:
+    """Say what may be lost by giving a task up, beyond the task; None where nothing is.
+
+    Args:
+        own: the party's steps.
+
+    Raises:
+        StorageError, VerificationError: they cannot be read, or are not this party's.
+    """
+    if any(isinstance(one.body, Confirmation) for one in own.messages().values()):
+        return (
+            "You have signed the record of the key that was to be born. Where the others have everybody's "
+            "confirmation it is born, and they count on your key share, which is erased now. Ask them first; if it is, "
+            "have them send the whole folder of the task, and run `shares task next` instead."
+        )
+    return None
+
+
+def give_up(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None, failure: Failure | None) -> None:
+    """End a task for a party, whatever has become of it. The journal tells of it first; it may be repeated.
+
+    Nonces that it would use are erased too: no later task can use them.
+
+    Args:
+        own: the party's steps.
+        key: its party key.
+        record: of the key that the task uses; None where it is being born.
+        failure: why the task has failed; None where it has not.
+
+    Raises:
+        ParameterError: it is over for this party already.
+        StorageError: something cannot be written or erased.
+        VerificationError: the steps are not this party's.
+    """
+    event = failed(own.task, failure or Failure(None, f"given up by {own.name}"))
+    drop(own, event, key, lambda: _erase_nonces(own, key, record))
+
+
+def _erase_nonces(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None) -> None:
+    if record is None or not isinstance(own.task.work, Signing):
+        return
+    pairs = [(one.hiding, one.binding) for one in own.task.work.commitments if one.signer == own.name]
+    said = [one.body for one in own.messages().values()]
+    pairs += [(body.hiding, body.binding) for body in said if isinstance(body, Commitment)]
+    store = NonceStore(own.mine / NONCES, record, own.name, key)
+    for pair in pairs:
+        store.erase(*pair)
