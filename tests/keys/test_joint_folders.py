@@ -122,15 +122,17 @@ def test_who_confirms_to_some_and_accuses_to_others_takes_the_key_from_nobody(tm
     south.send(north)
     assert north.take() == "finish"
     good = light.message(5)
-    false = TaskMessage.signed_by(
-        key(light.name),
-        task=good.task,
-        round=5,
-        sender=light.name,
-        seen=good.seen,
-        body=Accusation(what="accusation", against=NORTH, reason="made up", share=None, blind=None),
-    )
-    (south.messages / "accusation.json").write_bytes(false.to_file())
+    for number in range(8):
+        false = TaskMessage.signed_by(
+            key(light.name),
+            task=good.task,
+            round=5,
+            sender=light.name,
+            seen=good.seen,
+            body=Accusation(what="accusation", against=NORTH, reason=f"lie {number}", share=None, blind=None),
+        )
+        (south.messages / f"accusation {number}.json").write_bytes(false.to_file())
+        assert south.take() == "failed"
     assert south.take() == "failed"
     assert not (south.mine / "share.json").exists()
     # With what others were sent, the key is born here as well: the same one.
