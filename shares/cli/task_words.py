@@ -15,7 +15,7 @@ from typing import Any
 from shares import clock
 from shares.cli.output import prose
 from shares.documents.task import Joining, Opening, Signing, Task
-from shares.history.exchange import Problem, TaskFolder
+from shares.history.exchange import EARLIER_NAME, ISSUER_NAME, Problem, TaskFolder
 from shares.history.rounds import Failure
 from shares.history.standing import Standing
 from shares.keys.about import about
@@ -74,7 +74,7 @@ def state_of(found: Standing) -> str:
 
 def task_members(folder: TaskFolder, found: Standing) -> dict[str, Any]:
     """Return what programs are told of a task."""
-    task, told = folder.task, about(folder.task, folder.record, found.inbox.content)
+    task, told = folder.task, _told(folder, found)
     return {
         "task": task.digest().hex(),
         "fingerprint": task.fingerprint,
@@ -129,7 +129,7 @@ def task_lines(folder: TaskFolder) -> Iterator[str]:
 
 def about_lines(folder: TaskFolder, found: Standing) -> Iterator[str]:
     """Yield what the content is, as whoever is asked to agree is told."""
-    told: Description | None = about(folder.task, folder.record, found.inbox.content)
+    told = _told(folder, found)
     if told is None:
         return
     verb = "opened" if isinstance(folder.task.work, Opening) else "signed"
@@ -201,3 +201,8 @@ def _suffices(folder: TaskFolder, found: Standing) -> bool:
     if not isinstance(folder.task.work, Opening) or folder.record is None:
         return False
     return found.round == len(found.names) - 1 and len(found.spoken) >= folder.record.need
+
+
+def _told(folder: TaskFolder, found: Standing) -> Description | None:
+    issuer, earlier = folder.beside(ISSUER_NAME), folder.beside(EARLIER_NAME)
+    return about(folder.task, folder.record, found.inbox.content, issuer=issuer, earlier=earlier)

@@ -60,7 +60,7 @@ from shares.history.lines import alone_in
 from shares.keys import frost
 from shares.keys.frost import Nonces
 from shares.memory import Secret
-from shares.storage import discard, make_folder, read_file, write_many_new, write_new
+from shares.storage import discard, leftovers, make_folder, read_file, write_many_new, write_new
 from shares.streams import refusing
 
 _NEW: Final = "make new ones with `shares key commit`, and use them in a new task"
@@ -156,9 +156,14 @@ class NonceStore:
             StorageError: the folder refuses.
         """
         name = pair_id(hiding, binding)
-        for path in (self._bound(name), self._unspent(name)):
-            if os.path.lexists(path):
-                discard(path)
+        if not os.path.lexists(self.folder):
+            return
+        with alone_in(self.folder):
+            # A run that was killed may have left what it was about to bind under a temporary name.
+            begun = [path for path in leftovers(self.folder) if path.name.startswith(f".{self._bound(name).name}.")]
+            for path in (self._bound(name), self._unspent(name), *begun):
+                if os.path.lexists(path):
+                    discard(path)
 
     def holds(self, hiding: Point, binding: Point) -> bool:
         """Say whether the nonces of these commitments lie here and were never used."""
@@ -201,7 +206,10 @@ class NonceStore:
 
     def _spent(self, name: str) -> list[str]:
         """Return the names of files that say of a pair that it was used: one, if any, in an honest folder."""
-        return sorted(path.name for path in self.folder.glob(f"spent-{name}-*"))
+        # A folder that cannot be listed is refused, never taken for an empty one: all rests on what is found here.
+        with refusing(self.folder):
+            names = os.listdir(self.folder)
+        return sorted(one for one in names if one.startswith(f"spent-{name}-"))
 
     def _sealed(self, nonces: Nonces, batch: str, seal: Sealer) -> NoncePair:
         hiding, binding = nonces.hiding_commitment, nonces.binding_commitment

@@ -628,3 +628,30 @@ def test_a_batch_is_handed_out_signed(store: NonceStore, own: OpenPartyKey) -> N
     assert batch.card == own.card
     assert len(batch.commitments) == 5
     assert all(store.holds(one.hiding, one.binding) for one in batch.commitments)
+
+
+def test_what_a_killed_run_began_to_bind_is_erased_too(store: NonceStore) -> None:
+    """A run that dies in the middle of a file leaves it under a temporary name, with the sealed nonces in it."""
+    ((hiding, binding),) = store.make(dealt().scalars[ME])
+    begun = store.folder / f".bound-{pair_id(hiding, binding)}.json.{'0' * 16}.partial"
+    other = store.folder / f".bound-{'0' * 32}.json.{'0' * 16}.partial"
+    for path in (begun, other):
+        path.write_bytes(b"sealed nonces")
+    store.erase(hiding, binding)
+    assert not begun.exists()
+    assert other.exists()
+
+
+def test_a_folder_that_cannot_be_listed_has_no_unused_nonces(
+    store: NonceStore, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    ((hiding, binding),) = store.make(dealt().scalars[ME])
+
+    def refused(*_: object) -> list[str]:
+        raise PermissionError(errno.EACCES, "as a folder that may be written and not read")
+
+    monkeypatch.setattr(os, "listdir", refused)
+    with pytest.raises(StorageError):
+        store.holds(hiding, binding)
+    with pytest.raises(StorageError):
+        store.take(hiding, binding, ONE)
