@@ -65,7 +65,7 @@ def test_scripts_get_all_of_it(folder: Path) -> None:
     told = run("journal", "add", folder, "noted", "--remark", "windy", "--json").json
     assert (told["done"], told["sequence"], told["event"]) == (True, 2, {"what": "noted", "remark": "windy"})
     assert (told["words"], told["signers"], told["documents"]) == ("windy", [], [])
-    assert run("journal", "head", folder, "--json").json == {"done": True, **told["head"]}
+    assert run("journal", "head", folder, "--json").json == {"done": True, "exit": 0, **told["head"]}
     shown = run("journal", "show", folder, "--json").json
     assert (shown["done"], shown["exit"], [entry["sequence"] for entry in shown["entries"]]) == (True, 0, [1, 2])
     checked = run("journal", "verify", folder, "--json").json

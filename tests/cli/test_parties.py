@@ -135,7 +135,7 @@ def test_show_tells_of_keys_and_cards(harbour: Harbour, kind: str) -> None:
     assert ("party key (private, wrapped by passphrase)" if kind == "key" else "party card (public)") in done.out
     assert card("registrar").fingerprint in done.out
     told = run("show", path, "--json").json
-    assert set(told) == {"done", "kind", "name", "contact", "created", "fingerprint"}
+    assert set(told) == {"done", "exit", "kind", "name", "contact", "created", "fingerprint"}
 
 
 # party passphrase.
@@ -195,7 +195,7 @@ def test_a_passphrase_is_drawn_into_a_file_and_not_shown(place: Place, more: lis
 def test_a_drawn_passphrase_as_json_and_as_it_is_used(place: Place) -> None:
     target = place.folder / "drawn"
     told = run("passphrase", "--to", target, "--json").json
-    assert told == {"done": True, "file": str(target), "words": 10, "bits": 80}
+    assert told == {"done": True, "exit": 0, "file": str(target), "words": 10, "bits": 80}
     done = run(*new(place, target))
     assert (done.code, done.err) == (0, "")
 

@@ -79,6 +79,7 @@ def test_wrap_and_unwrap_as_json(harbour: Harbour) -> None:
     assert (done.code, done.err) == (0, "")
     assert done.json == {
         "done": True,
+        "exit": 0,
         "share": str(share),
         "wrapped": str(target),
         "custodian": NORTH,

@@ -42,7 +42,7 @@ def python(code: str, *arguments: str) -> list[str]:
     return [sys.executable, "-c", code, *arguments]
 
 
-KEEP = "import sys; open(sys.argv[1], 'wb').write(sys.stdin.buffer.read())"
+KEEP = "import sys; got = sys.stdin.buffer.read(); open(sys.argv[1], 'wb').write(got)"
 
 
 def test_a_file_is_new_private_and_whole(tmp_path: Path) -> None:
