@@ -72,9 +72,10 @@ def state_of(found: Standing) -> str:
     return "failed" if found.failure else "complete" if found.complete else "waiting"
 
 
-def task_members(folder: TaskFolder, found: Standing) -> dict[str, Any]:
-    """Return what programs are told of a task."""
-    task, told = folder.task, about(folder.task, folder.record, found.inbox.content)
+def task_members(folder: TaskFolder, found: Standing | None) -> dict[str, Any]:
+    """Return what programs are told of a task; not what it is about, where its folder could not be read."""
+    task = folder.task
+    told = about(task, folder.record, found.inbox.content) if found else None
     return {
         "task": task.digest().hex(),
         "fingerprint": task.fingerprint,
