@@ -35,7 +35,7 @@ from shares.errors import ParameterError, SharesError
 from shares.history.exchange import Problem, TaskFolder
 from shares.history.next import Turn, check_time, close, finish, speak, turn
 from shares.history.rounds import Course, Outcome, Part
-from shares.history.standing import standing
+from shares.history.standing import Standing, standing
 from shares.history.steps import OwnSteps
 from shares.keys.dropping import costs, give_up
 from shares.keys.parts import course_of, part_of
@@ -160,8 +160,8 @@ def drop(
     """
     _refuse_within(Path(mine), Path(path))
     folder, key = TaskFolder(path), load_key(key_file)
-    own, found = OwnSteps(mine, folder.task, key.card), standing(course_of(folder), folder.read())
-    if found.complete and isinstance(folder.task.work, Joining) and own.done() is None:
+    own, found = OwnSteps(mine, folder.task, key.card), _standing_if_told(folder)
+    if found and found.complete and isinstance(folder.task.work, Joining) and own.done() is None:
         raise ParameterError(
             "the key is born, and what this would erase is your key share",
             where=path,
@@ -169,19 +169,24 @@ def drop(
         )
     caution = costs(own)
     if not yes:
-        say([*task_lines(folder), *(prose(f"Caution: {caution}") if caution else [])])
+        say(task_lines(folder))
+    if caution:
+        say(prose(f"Caution: {caution}"))
+    if not yes:
         if not os.isatty(0):
             raise ParameterError("this cannot be undone, and there is no terminal to ask at", hint="--yes agrees")
         if not click.confirm("Give it up for good?", err=True):
             raise SharesError("you did not agree", hint="nothing was erased")
     with opening((), passphrase_files, descriptors) as at_hand:
-        give_up(own, at_hand.party(key), folder.record, found.failure)
-    members = {"done": True, "exit": 0, "state": "dropped", **task_members(folder, found), "party": own.name}
+        given_up = give_up(own, at_hand.party(key), folder.record, found.failure if found else None)
+    state = "dropped" if given_up else "finished"
+    members = {"done": True, "exit": 0, "state": state, **task_members(folder, found), "party": own.name}
     lines = [
-        f"Given up by {own.name}: {folder.task.words()}.",
+        f"{'Given up by' if given_up else 'It had come to its end for'} {own.name}: {folder.task.words()}.",
         *prose("What was kept for it is erased, as far as the medium lets us; what you have said is kept."),
-        *prose("Next: tell the others, who may be waiting for you."),
     ]
+    if given_up:
+        lines += prose("Next: tell the others, who may be waiting for you.")
     print_result(members, lines, as_json=as_json)
 
 
@@ -224,9 +229,14 @@ class _Call:
         self.asked = self.asked or asks
         return True
 
+    @property
+    def given_up(self) -> bool:
+        done = self.own.done()
+        return done is not None and done.given_up
+
     def state(self, at: Turn) -> str:
         if self.outcome is not None or at.doing in ("done", "failed"):
-            return "failed" if at.doing == "failed" else "finished"
+            return "failed" if at.doing == "failed" else "dropped" if self.given_up else "finished"
         return "spoke" if self.took else "waiting"
 
     def members(self, at: Turn, code: int) -> dict[str, Any]:
@@ -251,6 +261,9 @@ class _Call:
             yield from (part for line in self.outcome.words for part in prose(line))
         elif at.doing == "failed":
             yield from failure_lines(at.standing)
+        elif at.doing == "done" and self.given_up:
+            yield f"The task is over for {self.own.name}, who has given it up and says nothing more in it."
+            yield from prose("Where giving it up was stopped, run `shares task drop` again: it erases what is left.")
         elif at.doing == "done":
             yield f"The task is over for {self.own.name}; nothing is left to be done."
         elif at.doing == "wait":
@@ -259,6 +272,19 @@ class _Call:
                 yield LATE
         else:
             yield "It is your turn again, and you are asked again: repeat the command."
+
+
+def _standing_if_told(folder: TaskFolder) -> Standing | None:
+    """Return where a task stands; None where too much of its folder is missing, which keeps nobody from giving it up.
+
+    Of a key that is being born it must be told: it may be born, and then a key share would be lost.
+    """
+    try:
+        return standing(course_of(folder), folder.read())
+    except SharesError:
+        if isinstance(folder.task.work, Joining):
+            raise
+    return None
 
 
 def _refuse_within(mine: Path, path: Path) -> None:

@@ -15,6 +15,7 @@ from typing import Any
 from shares import clock
 from shares.cli.output import prose
 from shares.documents.task import Joining, Opening, Signing, Task
+from shares.errors import SharesError
 from shares.history.exchange import EARLIER_NAME, ISSUER_NAME, Problem, TaskFolder
 from shares.history.rounds import Failure
 from shares.history.standing import Standing
@@ -72,9 +73,10 @@ def state_of(found: Standing) -> str:
     return "failed" if found.failure else "complete" if found.complete else "waiting"
 
 
-def task_members(folder: TaskFolder, found: Standing) -> dict[str, Any]:
-    """Return what programs are told of a task."""
-    task, told = folder.task, _told(folder, found)
+def task_members(folder: TaskFolder, found: Standing | None) -> dict[str, Any]:
+    """Return what programs are told of a task; not what it is about, where its folder could not be read."""
+    task = folder.task
+    told = _told(folder, found) if found else None
     return {
         "task": task.digest().hex(),
         "fingerprint": task.fingerprint,
@@ -204,5 +206,13 @@ def _suffices(folder: TaskFolder, found: Standing) -> bool:
 
 
 def _told(folder: TaskFolder, found: Standing) -> Description | None:
-    issuer, earlier = folder.beside(ISSUER_NAME), folder.beside(EARLIER_NAME)
+    issuer, earlier = (_beside(folder, name) for name in (ISSUER_NAME, EARLIER_NAME))
     return about(folder.task, folder.record, found.inbox.content, issuer=issuer, earlier=earlier)
+
+
+def _beside(folder: TaskFolder, name: str) -> bytes | None:
+    """Return a file that the task is checked by; None where it is missing or another one, which the course tells."""
+    try:
+        return folder.beside(name)
+    except SharesError:
+        return None

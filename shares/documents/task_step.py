@@ -59,7 +59,12 @@ class TaskStep(Envelope):
 
 
 class TaskDone(Document):
-    """What is left of a party's steps when a task is over for it: its messages, to be sent again, and no secret."""
+    """What is left of a party's steps when a task is over for it: its messages, and no secret.
+
+    Attributes:
+        given_up: whether the party has given the task up. Then it says nothing more; else it sends its messages again
+            where others still need them.
+    """
 
     KIND: ClassVar[str] = "task-done"
 
@@ -67,6 +72,7 @@ class TaskDone(Document):
     version: Version
     task: Digest
     party: Name
+    given_up: bool
     messages: Annotated[tuple[TaskMessage, ...], Member(max_length=MAX_ROUNDS)]
 
     def to_file(self) -> bytes:

@@ -65,7 +65,10 @@ def turn(folder: TaskFolder, course: Course, own: OwnSteps) -> Turn:
     own.check_against(reading.signed)
     found = standing(course, reading)
     own.check_seen(found.inbox, found.round)
-    if own.done() is not None:
+    done = own.done()
+    if done is not None:
+        if done.given_up:
+            return Turn("done", found.round, found)  # Whatever it kept: what was never released stays unsaid.
         if own.remains():
             return Turn("erase", found.round, found)
         repeat = own.name in found.awaited and found.round in own.messages()
@@ -100,6 +103,7 @@ def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnStep
 
     Raises:
         ParameterError: it is no turn to speak.
+        SharesError: another run has given the task up meanwhile.
         VerificationError: the task is past its due date, or the part finds something wrong.
         StorageError: something cannot be written.
     """
@@ -107,12 +111,15 @@ def speak(folder: TaskFolder, at: Turn, course: Course, part: Part, own: OwnStep
         raise ParameterError("it is not this party's turn to speak")
     earlier = at.standing.before(at.round)
     with own.alone():
+        done = own.done()
+        if done is not None and done.given_up:
+            raise SharesError("another run of this party has given the task up", hint="it says nothing more in it")
         # Another run of this party may have spoken meanwhile: its message is the one to send.
         message = own.messages().get(at.round)
         if message is None:
             check_time(own.task)
             message = _say(at.round, earlier, course, part, own, key)
-        if own.done() is None:
+        if done is None:
             _enter(own.mine, part.event(at.round, earlier), key)
         part.kept(at.round, earlier)
         return folder.release(message)
@@ -194,8 +201,11 @@ def close(own: OwnSteps) -> None:
         own.close()
 
 
-def drop(own: OwnSteps, event: Event, key: OpenPartyKey, erase: Callable[[], None]) -> None:
-    """Give a task up for one party: journal, what its purpose keeps elsewhere, and then its steps are erased.
+def drop(own: OwnSteps, event: Event, key: OpenPartyKey, erase: Callable[[], None]) -> bool:
+    """Give a task up for one party: that it is; journal; then what its purpose keeps elsewhere and steps are erased.
+
+    From the first of these on it says nothing more, wherever a run is stopped. One that is repeated does what is
+    missing. Of a task that has come to its end only what a run that was stopped there has left is erased.
 
     Args:
         own: the party's steps.
@@ -203,16 +213,24 @@ def drop(own: OwnSteps, event: Event, key: OpenPartyKey, erase: Callable[[], Non
         key: its party key.
         erase: erases what lies outside the steps; may be called again.
 
+    Returns:
+        Whether it was given up; False where it had come to its end.
+
     Raises:
-        ParameterError: the task is over for this party.
+        ParameterError: it had, and nothing is left.
         StorageError: something cannot be written or erased.
     """
     with own.alone():
-        if own.done() is not None and not own.remains():
+        done = own.done()
+        ended = done is not None and not done.given_up
+        if ended and not own.remains():
             raise ParameterError(f"the task is over for {own.name}", hint="nothing is left to be erased")
-        _enter(own.mine, event, key)
-        erase()
+        if not ended:
+            own.end(given_up=True)
+            _enter(own.mine, event, key)
+            erase()
         own.close()
+    return not ended
 
 
 def _say(round: int, earlier: Inbox, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> TaskMessage:

@@ -245,6 +245,28 @@ class OwnSteps:
             make_folder(target.parent)
             write_new(target, data, secret=file.secret)
 
+    def end(self, *, given_up: bool) -> None:
+        """Put on the medium that the task is over for this party, unless it stands there; nothing is erased yet.
+
+        Args:
+            given_up: whether the party gives it up. What was written first stays.
+
+        Raises:
+            StorageError: the medium refuses.
+        """
+        if self.done() is not None:
+            return
+        done = TaskDone(
+            kind="task-done",
+            version=1,
+            task=self.task.digest(),
+            party=self.name,
+            given_up=given_up,
+            messages=tuple(message for _, message in sorted(self.messages().items())),
+        )
+        make_folder(self.folder)
+        write_new(self.folder / DONE_NAME, done.to_file(), secret=False)
+
     def close(self) -> None:
         """End the task for this party: its messages are kept, and every state is erased, as far as the medium lets us.
 
@@ -253,11 +275,7 @@ class OwnSteps:
         Raises:
             StorageError: the medium refuses.
         """
-        if self.done() is None:
-            messages = tuple(message for _, message in sorted(self.messages().items()))
-            done = TaskDone(kind="task-done", version=1, task=self.task.digest(), party=self.name, messages=messages)
-            make_folder(self.folder)
-            write_new(self.folder / DONE_NAME, done.to_file(), secret=False)
+        self.end(given_up=False)
         for path in self.remains():
             discard(path)
 

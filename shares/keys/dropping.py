@@ -8,10 +8,12 @@ Does not: tell the others, or erase media, which may keep old blocks.
 
 from __future__ import annotations
 
+from shares.documents.key_event import TaskFailed
 from shares.documents.key_record import KeyRecord
 from shares.documents.party import OpenPartyKey
 from shares.documents.task import Signing
 from shares.documents.task_message import Commitment, Confirmation
+from shares.history.journal import load_journal
 from shares.history.next import drop
 from shares.history.rounds import Failure
 from shares.history.steps import OwnSteps
@@ -29,7 +31,7 @@ def costs(own: OwnSteps) -> str | None:
     Raises:
         StorageError, VerificationError: they cannot be read, or are not this party's.
     """
-    if any(isinstance(one.body, Confirmation) for one in own.messages().values()):
+    if own.done() is None and any(isinstance(one.body, Confirmation) for one in own.messages().values()):
         return (
             "You have signed the record of the key that was to be born. Where the others have everybody's "
             "confirmation it is born, and they count on your key share, which is erased now. Ask them first; if it is, "
@@ -38,8 +40,8 @@ def costs(own: OwnSteps) -> str | None:
     return None
 
 
-def give_up(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None, failure: Failure | None) -> None:
-    """End a task for a party, whatever has become of it. The journal tells of it first; it may be repeated.
+def give_up(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None, failure: Failure | None) -> bool:
+    """End a task for a party, whatever has become of it. It may be repeated, and then does what is missing.
 
     Nonces that it would use are erased too: no later task can use them.
 
@@ -47,15 +49,26 @@ def give_up(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None, failure:
         own: the party's steps.
         key: its party key.
         record: of the key that the task uses; None where it is being born.
-        failure: why the task has failed; None where it has not.
+        failure: why the task has failed; None where it has not, or that cannot be told.
+
+    Returns:
+        Whether it was given up; False where it had come to its end, and only what was left there is erased.
 
     Raises:
-        ParameterError: it is over for this party already.
+        ParameterError: it had come to its end for this party, and nothing is left.
         StorageError: something cannot be written or erased.
         VerificationError: the steps are not this party's.
     """
-    event = failed(own.task, failure or Failure(None, f"given up by {own.name}"))
-    drop(own, event, key, lambda: _erase_nonces(own, key, record))
+    event = _told(own) or failed(own.task, failure or Failure(None, f"given up by {own.name}"))
+    return drop(own, event, key, lambda: _erase_nonces(own, key, record))
+
+
+def _told(own: OwnSteps) -> TaskFailed | None:
+    """Return what the journal says already of a task that was given up: what has failed since is no second entry."""
+    if own.done() is None:
+        return None
+    entered = [entry.event for entry in load_journal(own.mine).entries]
+    return next((one for one in entered if isinstance(one, TaskFailed) and one.task == own.task.digest()), None)
 
 
 def _erase_nonces(own: OwnSteps, key: OpenPartyKey, record: KeyRecord | None) -> None:

@@ -344,8 +344,15 @@ def test_a_failed_task_is_given_up_and_nothing_of_it_is_kept_but_what_was_said(h
     assert [event.what for event in events] == ["approved", "task-failed"]
     assert TaskFolder(harbour.task).task.digest() == events[-1].task  # type: ignore[union-attr]
     assert events[-1].reason.startswith("two different messages of south-pier")  # type: ignore[union-attr]
-    assert "over for north-pier" in harbour.next("north-pier").out
-    assert_refused(drop(harbour, "north-pier", "--yes"), 2, "is over for north-pier", watched=harbour.root)
+    after = harbour.next("north-pier")
+    assert "over for north-pier, who has given it up" in after.out
+    assert state(harbour.next("north-pier", "--json")) == (0, "dropped")
+    # Repeated, it does what a run that was stopped has not: here nothing, and there is no second entry.
+    for path in (harbour.task / "messages").iterdir():
+        path.unlink()
+    before = files_in(harbour.root)
+    assert run(*drop(harbour, "north-pier", "--yes")).code == 0
+    assert files_in(harbour.root) == before
 
 
 def test_who_has_said_nothing_gives_a_task_up_and_never_speaks_in_it(harbour: Harbour) -> None:
@@ -364,6 +371,26 @@ def test_giving_up_asks_and_who_has_confirmed_is_warned(harbour: Harbour, reply:
         terminal.answer("Give it up for good? [y/N]:", reply)
         assert terminal.finish()[0] == code
     assert ("done.json" in kept(harbour, "north-pier")) is (code == 0)
+
+
+def test_who_has_confirmed_is_warned_though_asked_nothing(harbour: Harbour) -> None:
+    to_the_last_round(harbour)
+    done = run(*drop(harbour, "north-pier", "--yes"))
+    assert (done.code, "Caution: You have signed the record" in done.err) == (0, True)
+    assert "Caution" not in run(*drop(harbour, "north-pier", "--yes")).err
+
+
+def test_of_a_task_that_has_come_to_its_end_nothing_is_given_up(harbour: Harbour) -> None:
+    for _ in range(7):
+        for name in NAMES:
+            harbour.next(name)
+    assert_refused(drop(harbour, "north-pier", "--yes"), 2, "is over for north-pier", watched=harbour.root)
+    (left,) = harbour.mine("north-pier").glob("tasks/*")
+    (left / "result-1").write_bytes(b"left by a run that was stopped")
+    done = run(*drop(harbour, "north-pier", "--yes", "--json"))
+    assert (state(done), done.err, kept(harbour, "north-pier")) == ((0, "finished"), "", ["done.json"])
+    events = [entry.event.what for entry in load_journal(harbour.mine("north-pier")).entries]
+    assert events == ["approved", "approved", "key-born"]
 
 
 def to_the_last_round(harbour: Harbour) -> None:

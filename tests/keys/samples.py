@@ -117,6 +117,7 @@ def key_documents() -> dict[str, Document]:
             version=1,
             task=step.task,
             party=ME,
+            given_up=True,
             messages=(step.message, message(bodies()[1])),
         ),
         "nonce-pair": pair,

@@ -226,7 +226,7 @@ def files() -> dict[str, str]:
     second = message(work, 1, "north-pier", seen(work, first), {"what": "partial"}, boxed)
     opened: Json = {"kind": "opened-message", "version": 1, "key": KEY, "encapsulated": b64(content[:32])}
     opened |= {"content": work["work"]["content"], "task": digest("task-digest", work).hex(), "receiver": RECEIVER}
-    done: Json = {"kind": "task-done", "version": 1, "task": second["task"], "party": "north-pier"}
+    done: Json = {"kind": "task-done", "version": 1, "task": second["task"], "party": "north-pier", "given_up": False}
     state = private = seed(f"{RECEIVER}/fresh")
     made = {
         "record.json": key,
