@@ -1,7 +1,7 @@
 """What ``shares task`` tells of a task and of where it stands, for people and for programs.
 
 Source: none.
-May import: shares.clock, shares.documents, shares.history, shares.keys, shares.cli.output.
+May import: shares.clock, shares.errors, shares.documents, shares.history, shares.keys, shares.cli.output.
 Secret: nothing. Confidential: what is signed or opened. Public: the rest.
 Does not: print. What others have written stays on lines that begin as theirs, however many spaces it holds.
 """
