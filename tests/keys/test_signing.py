@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import hashlib
 import itertools
-import shutil
 import subprocess
 from datetime import timedelta
 from pathlib import Path
@@ -357,8 +356,6 @@ def test_an_ssh_signature(tmp_path: Path) -> None:
     assert "release 7 of the tide tables" in words
     signature, ending = finish_signing(task, key.record, inbox)
     assert ending == ".sig"
-    if shutil.which("ssh-keygen") is None:
-        pytest.skip("ssh-keygen is not installed (apt-get install openssh-client)")
     line = ssh_line(key.record.public_key.encode(), "Tide tables").split(" ", 2)
     (tmp_path / "signers").write_text(f'harbour namespaces="release" {line[0]} {line[1]}\n')
     (tmp_path / "signature").write_bytes(signature)
