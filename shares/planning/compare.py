@@ -15,7 +15,7 @@ from shares.planning.examine import Plan, examine
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
 
-_ALIKE = 1.1
+ALIKE = 1.1
 """Odds that differ by less than a tenth of themselves are called alike: no rate is known that well."""
 
 
@@ -57,7 +57,7 @@ def verdict(first: Odds, second: Odds) -> str:
     better: dict[str, list[str]] = {"first": [], "second": []}
     for what in ("loss", "exposure", "absence"):
         one, other = getattr(first, what), getattr(second, what)
-        if max(one, other) > _ALIKE * min(one, other):
+        if max(one, other) > ALIKE * min(one, other):
             better["first" if one < other else "second"].append(what)
     here, there = (_listed(whats) for whats in better.values())
     if here and there:
