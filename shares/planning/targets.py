@@ -11,7 +11,7 @@ are found at once. Odds are taken to grow with an interval; that what is told me
 that no longer interval does rests on this.
 
 Source: search through all cases, in a fixed order; bisection.
-May import: shares.errors, shares.sharing.rule, .changes, .model, .odds.
+May import: shares.errors, shares.sharing.rule, .changes, .model, .odds, .reckoned.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: look at trees of groups, at other sites, or at what anything costs.
 """
@@ -29,6 +29,7 @@ from shares.errors import ParameterError
 from shares.planning.changes import attesting_every, refreshing_every, with_another
 from shares.planning.model import DAYS_OF_A_YEAR, Model
 from shares.planning.odds import Contribution, Odds, contributions, odds
+from shares.planning.reckoned import Reckoned, ends
 from shares.sharing.rule import Rule
 
 MAX_CUSTODIANS = 12
@@ -46,9 +47,12 @@ class Targets(NamedTuple):
     loss: float
     exposure: float
 
-    def met_by(self, found: Odds) -> bool:
-        """Say whether odds are as good as is wanted."""
-        return found.loss <= self.loss and found.exposure <= self.exposure
+    def met_by(self, found: Reckoned) -> bool | None:
+        """Say whether odds are as good as is wanted; None where a simulation cannot tell."""
+        wanted = [(ends(found, of), most) for of, most in self._asdict().items() if most < 1]
+        if all(high <= most for (_, high), most in wanted):
+            return True
+        return False if any(low > most for (low, _), most in wanted) else None
 
     def missed_by(self, found: Odds) -> float:
         """Return how far odds are from the targets: the larger of both ratios, as a logarithm; 0 where they are met."""
