@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from itertools import chain
 from pathlib import Path
 
@@ -25,6 +25,8 @@ from shares.planning.compare import side
 from shares.planning.examine import Plan, examine
 from shares.planning.model import model_of
 from shares.planning.odds import days_of, odds
+from shares.planning.reckoned import HISTORIES, SEED, instead
+from shares.planning.simulate import MAX_HISTORIES
 from shares.planning.structure import MAX_LISTED, Bounds
 from shares.planning.targets import meeting, parse_targets
 from shares.storage import read_file, write_new
@@ -44,6 +46,20 @@ CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, a
 )
 @click.option("--compare", metavar="OTHER", callback=filled, help="Set the policy beside another one.")
 @click.option("--html", "page", metavar="FILE", callback=filled, help="Write a page as well, to be read and filed.")
+@click.option(
+    "--histories",
+    type=click.IntRange(1, MAX_HISTORIES),
+    metavar="N",
+    help=f"Simulate from so many histories, beside exact odds as well; {HISTORIES} where no odds are exact.",
+)
+@click.option(
+    "--seed",
+    type=click.IntRange(min=0),
+    metavar="S",
+    default=SEED,
+    show_default=True,
+    help="Which histories are drawn: the same for the same seed and version of numpy.",
+)
 @json_option
 @click.pass_context
 def command(
@@ -54,6 +70,8 @@ def command(
     targets: str | None,
     compare: str | None,
     page: str | None,
+    histories: int | None,
+    seed: int,
     as_json: bool,
 ) -> None:
     """Examine the policy in the TOML file POLICY before anything is split. It holds no secret, but is confidential.
@@ -71,6 +89,11 @@ def command(
     their largest causes; advice; and what to change first. Causes and changes are left out where they would take long
     (more than 24 custodians, or many sites, lines and media that cross one another), unless --odds asks for them.
     Rates come from the policy, or are assumed and said to be. Whether odds are good enough is for people to say.
+
+    Odds are exact where that is not too much work. Where the same custodians stand in many groups, or sites, lines and
+    media cross one another in many ways, they are simulated, each with its interval, by numpy (the extra shares[plan];
+    without it the structure is told alone). There --odds simulates every cause and change: seconds for each, and up to
+    an hour in all for 200 custodians. With --compare and --targets nothing is simulated that is exact.
 
     What a policy holds is in FORMAT.md, section 12; examples to begin with are in examples/policies/ of the source.
 
@@ -92,12 +115,16 @@ def command(
     open_ = assumptions(read)
     if wanted is not None:
         model = model_of(read)
-        now, answer = odds(model, years), meeting(model, wanted, years, progress=progress("Rules", "rules"))
+        now = odds(model, years) or instead(model, years, histories=histories, seed=seed, drawn=_drawn())
+        answer = meeting(model, wanted, years, progress=progress("Rules", "rules"))
         members = {"years": years, **target_members(wanted, now, answer)}
         lines = target_lines(wanted, now, answer, years)
     elif compare is not None:
         other = _read(compare)
-        first, second = (policy, side(read, years)), (compare, side(other, years))
+        first, second = (
+            (path, side(one, years, histories=histories, seed=seed, drawn=_drawn()))
+            for path, one in ((policy, read), (compare, other))
+        )
         open_ = tuple(dict.fromkeys((*open_, *assumptions(other))))
         members = {"years": years, "policies": [side_members(*first), side_members(*second)]}
         lines = comparison_lines(first, second, years)
@@ -105,7 +132,15 @@ def command(
         plan = examine(read, cards=_cards(read, Path(policy).parent))
         code = VerificationError.exit_code if plan.refused else 0
         model = model_of(read)
-        view = outlook(model, years, full=full, progress=progress("Changes", "changes"))
+        view = outlook(
+            model,
+            years,
+            full=full,
+            histories=histories,
+            seed=seed,
+            progress=progress("Changes", "changes"),
+            drawn=_drawn(),
+        )
         if page is not None:
             # The template engine is loaded for a page alone.
             from shares.planning.page import drawn, plan_page
@@ -128,6 +163,10 @@ def _page_lines(page: str | None) -> Iterator[str]:
     if page is not None:
         yield ""
         yield f"Page, confidential like this: {page}"
+
+
+def _drawn() -> Callable[[int, int | None], None]:
+    return progress("Simulation", "histories")
 
 
 def _read(path: str) -> Policy:

@@ -8,7 +8,7 @@ are found at once. Odds are taken to grow with an interval; that what is told me
 that no longer interval does rests on this.
 
 Source: search through all cases, in a fixed order; bisection.
-May import: shares.errors, .changes, .lineup, .model, .odds.
+May import: shares.errors, .changes, .lineup, .model, .odds, .reckoned.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: look at trees of groups, at other sites, or at what anything costs.
 """
@@ -26,6 +26,7 @@ from shares.planning.changes import attesting_every, refreshing_every
 from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import DAYS_OF_A_YEAR, Model
 from shares.planning.odds import Contribution, Odds, contributions, odds
+from shares.planning.reckoned import Reckoned, ends
 
 INTERVALS: tuple[int | None, ...] = (None, 1825, 730, 365, 182, 91, 30, 14, 7)
 """Days between attestations or refreshes that are tried, the longest first; None is never."""
@@ -41,9 +42,12 @@ class Targets(NamedTuple):
     loss: float
     exposure: float
 
-    def met_by(self, found: Odds) -> bool:
-        """Say whether odds are as good as is wanted."""
-        return found.loss <= self.loss and found.exposure <= self.exposure
+    def met_by(self, found: Reckoned) -> bool | None:
+        """Say whether odds are as good as is wanted; None where a simulation cannot tell."""
+        wanted = [(ends(found, of), most) for of, most in self._asdict().items() if most < 1]
+        if all(high <= most for (_, high), most in wanted):
+            return True
+        return False if any(low > most for (low, _), most in wanted) else None
 
     def missed_by(self, found: Odds) -> float:
         """Return how far odds are from the targets: the larger of both ratios, as a logarithm; 0 where they are met."""
