@@ -11,13 +11,14 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from shares.cli.plan_odds import cause_members, odds_members, sentences, table
-from shares.cli.plan_simulated import extra_missing, simulated_members, why
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.advice import largest
 from shares.planning.lineup import IMAGINED
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import EXTRA, Simulated
 from shares.planning.targets import Answer, Targets
+from shares.planning.telling import why
 
 TRIED = f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"
 

@@ -6,15 +6,15 @@ same page, byte for byte.
 Source: W3C, "Web Content Accessibility Guidelines 2.2" (text for what is drawn, headings, contrast, reflow); E. R.
 Tufte, "The Visual Display of Quantitative Information", 1983 (from memory: labels at the lines, no legends); the order,
 the odds first, is ours.
-May import: shares.paper.page, .advice, .assumed, .examine, .figures, .intervals, .lineup, .model, .numbers, .odds,
-.plane, .simulate.
+May import: shares.paper.page, .advice, .examine, .figures, .intervals, .lineup, .model, .numbers, .odds, .plane,
+.reckoned, .telling.
 Secret: nothing. Confidential: the page, like the policy: it tells whom to coerce, and where. Public: nothing.
 Does not: work anything out but what it draws.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Final
@@ -26,8 +26,10 @@ from shares.planning.examine import Plan
 from shares.planning.intervals import AtInterval, over_intervals
 from shares.planning.lineup import IMAGINED
 from shares.planning.model import Model
-from shares.planning.odds import Odds
+from shares.planning.odds import Contribution, Odds
 from shares.planning.plane import Point, plane
+from shares.planning.reckoned import value, words
+from shares.planning.telling import DANGERS, beside, cause_rows, change_rows, why, years_words
 
 _TEMPLATE: Final = Path(__file__).with_name("plan.html")
 _STYLE: Final = Path(__file__).with_name("plan.css")
@@ -87,7 +89,6 @@ def plan_page(
         digest: of the policy, 32 bytes.
         program: name and version of what made the page.
     """
-    here = view.odds
     return render(
         _TEMPLATE,
         REPORT,
@@ -96,14 +97,17 @@ def plan_page(
         model=model,
         view=view,
         over=numbers.horizon(view.years),
+        dangers=tuple(_dangers(view)),
+        until_lost=_until_lost(view),
+        simulated=_simulated(view),
+        changes=tuple(change_rows(view.now, view.changes)) if view.now and view.changes else (),
         points=on_it.points,
-        plane=figures.plane_figure(on_it.points, here) if on_it.points else None,
-        better=_better(on_it.points, here),
+        plane=figures.plane_figure(on_it.points, view.odds) if on_it.points else None,
+        better=_better(on_it.points, view.odds),
         along=on_it.along,
-        attested=_curves(on_it, model.attest_every, ("loss", "no quorum on a day"), ("loss", "absence")),
-        refreshed=_curves(on_it, model.refresh_every, ("exposure",), ("exposure",)),
-        most={of: max((getattr(one, of) for one in view.causes or ()), default=0.0) for of in _KINDS},
-        kinds=_KINDS,
+        attested=_curves(on_it, model.attest_every, {"loss": "loss", "absence": "no quorum on a day"}),
+        refreshed=_curves(on_it, model.refresh_every, {"exposure": "exposure"}),
+        causes=tuple(_bars(view.causes or ())),
         assumptions=assumptions,
         imagined=IMAGINED,
         cautions=CAUTIONS,
@@ -111,29 +115,64 @@ def plan_page(
         program=program,
         box=figures,
         chance=numbers.chance,
-        one_in=numbers.one_in,
         every=numbers.every,
-        span=numbers.years,
-        cause_words=advice.cause_words,
-        largest=advice.largest,
     )
 
 
-_KINDS: Final = {"loss": "loss", "exposure": "exposure", "absence": "no quorum on a day"}
+@dataclass(frozen=True, slots=True)
+class _Danger:
+    """One of the odds on the page: what it is, how great, as one in so many, and by what."""
+
+    what: str
+    chance: str
+    one_in: str
+    by: str
 
 
-def _curves(on_it: Drawn, now: int | None, names: tuple[str, ...], of: tuple[str, ...]) -> figures.CurveFigure | None:
+def _dangers(view: Outlook) -> Iterator[_Danger]:
+    if view.now is None:
+        return
+    for of, what in DANGERS.items():
+        one_in = numbers.one_in(value(view.now, of)) if view.odds else ""
+        yield _Danger(what, words(view.now, of), one_in, "; ".join(advice.largest(view.causes or (), of)))
+
+
+def _simulated(view: Outlook) -> str:
+    """Say how odds were simulated, and, where there are exact ones, what came of it."""
+    if view.simulated is None:
+        return ""
+    told = why([view.simulated], view.odds)
+    if view.odds is None:
+        return told
+    found = "; ".join(f"{what}, {words(view.simulated, of)}" for of, what in DANGERS.items())
+    return f"As a check, the odds were simulated: {found}. {beside(view.odds, view.simulated)} {told}"
+
+
+def _until_lost(view: Outlook) -> str:
+    if view.odds:
+        return numbers.years(view.odds.years_to_loss)
+    return years_words(view.simulated) if view.simulated else ""
+
+
+def _bars(causes: tuple[Contribution, ...]) -> Iterator[tuple[str, tuple[tuple[str, float], ...]]]:
+    """Yield the name of each cause and, for each of the odds, what it adds, in words and as a bar of up to 100."""
+    most = {of: max((getattr(one, of) or 0.0 for one in causes), default=0.0) for of in DANGERS}
+    for cause, (name, *parts) in zip(causes, cause_rows(causes), strict=True):
+        bars = (100 * (getattr(cause, of) or 0.0) / most[of] if most[of] else 0.0 for of in DANGERS)
+        yield name, tuple(zip(parts, (round(bar, 1) for bar in bars), strict=True))
+
+
+def _curves(on_it: Drawn, now: int | None, of: dict[str, str]) -> figures.CurveFigure | None:
     def reading(what: str) -> Callable[[Odds], float]:
         return lambda odds: float(getattr(odds, what))
 
-    lines = [(name, reading(what)) for name, what in zip(names, of, strict=True)]
-    return figures.curve_figure(on_it.along, now, lines) if on_it.along else None
+    return figures.curve_figure(on_it.along, now, [(n, reading(w)) for w, n in of.items()]) if on_it.along else None
 
 
 def _better(points: tuple[Point, ...], here: Odds | None) -> str:
     """Say how the policy stands among the plain rules."""
     if here is None:
-        return "The odds of the policy itself are not worked out exactly, so it is not on the plane."
+        return "The odds of the policy itself are not exact, so it is not on the plane."
     found = [point for point in points if point.better_than(here)]
     own = _listed([point for point in found if not point.imagined])
     imagined = _listed([point for point in found if point.imagined])

@@ -7,6 +7,7 @@ only means) and 1.4.10 (reflow at 320 CSS pixels); ISO 216 (A4) and ANSI Y14.1 (
 from __future__ import annotations
 
 import re
+import sys
 from collections.abc import Callable, Iterator
 from dataclasses import replace
 from pathlib import Path
@@ -210,6 +211,10 @@ def test_it_prints_in_black_on_white_on_both_papers(pages: Pages) -> None:
 
 def test_what_could_not_be_worked_out_is_left_out_and_said(pages: Pages) -> None:
     page = pages.show(PAGES["entangled"]())
+    text = " ".join(page.locator("body").inner_text().split())
+    assert "Over 10 years Chance, simulated (95 % interval)" in text
+    assert "Simulated from 100,000 histories with seed 1, as the rule" in text
+    assert "The odds of the policy itself are not exact, so it is not on the plane." in text
     headings = page.get_by_role("heading", level=2).all_inner_texts()
     assert not {"What to change first", "Where the danger comes from"} & set(headings)
     assert "In short" in headings
@@ -219,6 +224,24 @@ def test_what_could_not_be_worked_out_is_left_out_and_said(pages: Pages) -> None
         examine(policy), model, outlook(model, 10), Drawn((), ()), (), digest=policy.digest(), program="shares 1.0"
     )
     assert pages.show(data).locator("svg[role=img]").count() == 0
+
+
+def test_exact_odds_that_were_simulated_as_a_check_come_with_it(pages: Pages) -> None:
+    policy = Policy.parse(EXAMPLES["break-glass"])
+    model = model_of(policy)
+    view = outlook(model, 10, histories=2000, seed=7)
+    data = plan_page(examine(policy), model, view, Drawn((), ()), (), digest=policy.digest(), program="shares 1.0")
+    text = " ".join(pages.show(data).locator("body").inner_text().split())
+    assert "As a check, the odds were simulated: loss: no quorum is left, " in text
+    assert "The exact odds lie within all three intervals. Simulated from 2,000 histories with seed 7." in text
+
+
+def test_without_numpy_it_says_what_to_install(pages: Pages, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setitem(sys.modules, "numpy", None)
+    monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
+    page = pages.show(page_of(entangled()))
+    assert "install the extra shares[plan]" in page.locator("body").inner_text()
+    assert "Chance" not in page.locator("body").inner_text()
 
 
 def test_the_same_policy_makes_the_same_page_and_another_one_another() -> None:
