@@ -9,7 +9,6 @@ Does not: work anything out.
 from __future__ import annotations
 
 import math
-import re
 from collections.abc import Iterable, Iterator, Sequence
 
 from shares.cli.output import prose
@@ -19,7 +18,7 @@ from shares.planning.advice import Change, Outlook, largest
 from shares.planning.odds import Contribution, Odds
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import Simulated
-from shares.planning.telling import DANGERS, NOT_TOLD, beside, cause_rows, change_rows, why, years_words
+from shares.planning.telling import DANGERS, NOT_TOLD, beside, cause_rows, change_rows, glued, why, years_words
 
 CAUTIONS = (
     "Odds are as good as the rates they come from, and no better. That custodians share nothing but people, sites, "
@@ -36,13 +35,9 @@ _IN_SHORT = {
 }
 
 
-_GLUE = "\N{NO-BREAK SPACE}"
-
-
 def sentences(text: str) -> list[str]:
     """Break text into lines as ``prose`` does, yet never within "5.3 %" or "1 in 20"."""
-    glued = re.sub(r"(?<=\d) (?=%)|(?<=\b1) (?=in \d)|(?<=\b1 in) (?=\d)", _GLUE, text)
-    return [line.replace(_GLUE, " ") for line in prose(glued)]
+    return [line.replace("\N{NO-BREAK SPACE}", " ") for line in prose(glued(text))]
 
 
 def table(rows: Sequence[Sequence[str]], *, left: int = 1) -> Iterator[str]:

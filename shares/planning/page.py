@@ -14,6 +14,7 @@ Does not: work anything out but what it draws.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
@@ -28,8 +29,8 @@ from shares.planning.lineup import IMAGINED
 from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds
 from shares.planning.plane import Point, plane
-from shares.planning.reckoned import value, words
-from shares.planning.telling import DANGERS, beside, cause_rows, change_rows, why, years_words
+from shares.planning.reckoned import ends, value, words
+from shares.planning.telling import DANGERS, beside, cause_rows, change_rows, glued, why, years_words
 
 _TEMPLATE: Final = Path(__file__).with_name("plan.html")
 _STYLE: Final = Path(__file__).with_name("plan.css")
@@ -102,8 +103,8 @@ def plan_page(
         simulated=_simulated(view),
         changes=tuple(change_rows(view.now, view.changes)) if view.now and view.changes else (),
         points=on_it.points,
-        plane=figures.plane_figure(on_it.points, view.odds) if on_it.points else None,
-        better=_better(on_it.points, view.odds),
+        plane=figures.plane_figure(on_it.points, _placed(view)) if on_it.points else None,
+        better=_better(on_it.points, view),
         along=on_it.along,
         attested=_curves(on_it, model.attest_every, {"loss": "loss", "absence": "no quorum on a day"}),
         refreshed=_curves(on_it, model.refresh_every, {"exposure": "exposure"}),
@@ -116,6 +117,7 @@ def plan_page(
         box=figures,
         chance=numbers.chance,
         every=numbers.every,
+        glued=glued,
     )
 
 
@@ -169,10 +171,21 @@ def _curves(on_it: Drawn, now: int | None, of: dict[str, str]) -> figures.CurveF
     return figures.curve_figure(on_it.along, now, [(n, reading(w)) for w, n in of.items()]) if on_it.along else None
 
 
-def _better(points: tuple[Point, ...], here: Odds | None) -> str:
-    """Say how the policy stands among the plain rules."""
-    if here is None:
-        return "The odds of the policy itself are not exact, so it is not on the plane."
+def _placed(view: Outlook) -> Odds | None:
+    """Return where the policy is drawn: simulated odds at their best guess, or at the most they can be if none of the
+    histories showed them."""
+    if view.simulated is None or view.odds:
+        return view.odds
+    loss, exposure, absence = (value(view.simulated, of) or ends(view.simulated, of)[1] for of in DANGERS)
+    return Odds(loss, exposure, absence, math.inf)
+
+
+def _better(points: tuple[Point, ...], view: Outlook) -> str:
+    """Say how the policy stands among the plain rules; of simulated odds, the least that they can be is counted."""
+    if view.now is None:
+        return "The odds of the policy itself are not known, so it is not on the plane."
+    loss, exposure, absence = (ends(view.now, of)[0] for of in DANGERS)
+    here = Odds(loss, exposure, absence, math.inf)
     found = [point for point in points if point.better_than(here)]
     own = _listed([point for point in found if not point.imagined])
     imagined = _listed([point for point in found if point.imagined])

@@ -8,6 +8,7 @@ Does not: know whether a table is drawn in characters or in HTML.
 
 from __future__ import annotations
 
+import re
 from collections import Counter
 from collections.abc import Iterable, Iterator, Sequence
 from typing import TypeAlias
@@ -29,6 +30,18 @@ DANGERS = {
 """What each of the odds is called."""
 
 Row: TypeAlias = tuple[str, ...]
+
+
+_GLUE = "\N{NO-BREAK SPACE}"
+
+
+def glued(text: str) -> str:
+    """Return text that is not broken into lines within "5.3 %" or "1 in 20".
+
+    >>> glued("5.3 % of shares").split(" ")
+    ['5.3\\xa0%', 'of', 'shares']
+    """
+    return re.sub(r"(?<=\d) (?=%)|(?<=\b1) (?=in \d)|(?<=\b1 in) (?=\d)", _GLUE, text)
 
 
 def years_words(simulated: Simulated) -> str:

@@ -214,7 +214,8 @@ def test_what_could_not_be_worked_out_is_left_out_and_said(pages: Pages) -> None
     text = " ".join(page.locator("body").inner_text().split())
     assert "Over 10 years Chance, simulated (95 % interval)" in text
     assert "Simulated from 100,000 histories with seed 1, as the rule" in text
-    assert "The odds of the policy itself are not exact, so it is not on the plane." in text
+    assert page.locator("svg.plane path.policy").count() == 1
+    assert "The diamond is this policy, as simulated. Intervals are" in text
     headings = page.get_by_role("heading", level=2).all_inner_texts()
     assert not {"What to change first", "Where the danger comes from"} & set(headings)
     assert "In short" in headings
@@ -236,12 +237,36 @@ def test_exact_odds_that_were_simulated_as_a_check_come_with_it(pages: Pages) ->
     assert "The exact odds lie within all three intervals. Simulated from 2,000 histories with seed 7." in text
 
 
+def test_what_no_history_showed_is_drawn_at_the_most_that_it_can_be(pages: Pages) -> None:
+    policy = Policy.parse(entangled())
+    model = model_of(policy)
+    rare = replace(model, causes=tuple(replace(one, loss=one.loss / 1e6) for one in model.causes))
+    view = outlook(rare, 10, histories=1000)
+    assert view.simulated is not None
+    assert view.simulated.loss.seen == 0
+    data = plan_page(
+        examine(policy),
+        rare,
+        view,
+        drawn(model, 10),
+        assumptions(policy),
+        digest=policy.digest(),
+        program="shares 1.0",
+    )
+    said = pages.show(data).locator("svg.plane path.policy title").text_content()
+    assert said.startswith(f"this policy: loss {numbers.chance(view.simulated.loss.high)}, exposure ")
+
+
 def test_without_numpy_it_says_what_to_install(pages: Pages, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setitem(sys.modules, "numpy", None)
     monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
     page = pages.show(page_of(entangled()))
     assert "install the extra shares[plan]" in page.locator("body").inner_text()
     assert "Chance" not in page.locator("body").inner_text()
+    assert (
+        "The odds of the policy itself are not known, so it is not on the plane." in page.locator("body").inner_text()
+    )
+    assert page.locator("svg.plane path.policy").count() == 0
 
 
 def test_the_same_policy_makes_the_same_page_and_another_one_another() -> None:
