@@ -17,7 +17,7 @@ from pathlib import Path
 
 import pytest
 from cli.harness import PROGRAM, Result, assert_refused, files_in, run
-from cli.keyed import OFFICE, Keyed, request
+from cli.keyed import OFFICE, Keyed
 from cli.test_key import tool
 from parties import unlocked
 
@@ -599,55 +599,3 @@ class TestTold:
         assert "What is opened is a message that is encrypted to the key." in run("task", "show", task).out
         told = run("task", "show", task, "--json").json["about"]
         assert any("every message with this encapsulated key" in one for one in told["cautions"])
-
-    def test_a_signature_that_is_given_up_leaves_no_nonces(self, keyed: Keyed) -> None:
-        nonces = keyed.own(FIRST) / "nonces"
-        beforehand = ["--batch", *[str(commit(keyed, name)) for name in (FIRST,)]]
-        more = [*beforehand, f"--batch={commit(keyed, SECOND)}"]
-        known = {path.name for path in nonces.iterdir()}
-        first = keyed.ask("sign", keyed.path("release.txt"), task="one", more=more)
-        second = keyed.ask("sign", keyed.path("release.txt"), task="two")
-        assert keyed.next(first, FIRST).code == 0
-        assert keyed.next(second, FIRST).code == 0
-        for task in (first, second):
-            own = ["--mine", keyed.own(FIRST), *keyed.as_(FIRST, "--key")]
-            done = run("task", "drop", task, *own, "--yes")
-            assert done.code == 0, done.err
-        left = {path.name for path in nonces.glob("pair-*")}
-        assert left < known
-        assert len(left) == 2
-        assert all(path.stat().st_size == 0 for path in nonces.glob("spent-*"))
-        assert len(list(nonces.glob("spent-*"))) == 1
-        assert not list((keyed.own(FIRST) / "tasks").rglob("step-*"))
-
-    def test_nonces_are_erased_by_repeating_a_drop_that_was_stopped_before(self, keyed: Keyed) -> None:
-        more = [f"--batch={commit(keyed, name)}" for name in (FIRST, SECOND)]
-        task = keyed.ask("sign", keyed.path("release.txt"), task="one", more=more)
-        drop = ["task", "drop", task, "--mine", keyed.own(FIRST), *keyed.as_(FIRST, "--key"), "--yes"]
-        nonces = keyed.own(FIRST) / "nonces"
-        pairs = {path.name: path.read_bytes() for path in nonces.glob("pair-*")}
-        assert run(*drop).code == 0
-        left = {path.name for path in nonces.glob("pair-*")}
-        assert len(left) == len(pairs) - 1
-        # As a run has left it that was stopped after the first thing it does.
-        (gone,) = set(pairs) - left
-        (nonces / gone).write_bytes(pairs[gone])
-        assert "has given it up" in keyed.next(task, FIRST).out
-        assert run(*drop).code == 0
-        assert {path.name for path in nonces.glob("pair-*")} == left
-        assert len(events(keyed.own(FIRST), TaskFailed)) == 1
-
-    @pytest.mark.parametrize("name", ["issuer", "content"])
-    def test_a_task_is_given_up_although_files_of_it_are_missing(self, keyed: Keyed, name: str) -> None:
-        root = keyed.ask("root", "CN=Harbour Trust Root", task="t-root")
-        keyed.answer(root, FIRST, SECOND)
-        request(keyed.path("request.pem"))
-        more = ["--issuer", str(keyed.finish(root, "root.pem")), "--for", "server"]
-        task = keyed.ask("certify", keyed.path("request.pem"), task="t", more=more)
-        assert keyed.next(task, FIRST).code == 0
-        (task / name).unlink()
-        own = ["--mine", keyed.own(FIRST), *keyed.as_(FIRST, "--key")]
-        done = run("task", "drop", task, *own, "--yes", "--json")
-        assert (done.code, done.json["state"], done.json["about"]) == (0, "dropped", None)
-        assert len(events(keyed.own(FIRST), TaskFailed)) == 1
-        assert not list((keyed.own(FIRST) / "tasks").rglob("step-*"))
