@@ -147,7 +147,7 @@ class _Walk:
         self.done = Inbox(self.task, (*self.done.rounds, counted), self.done.content)
         self.awaited = [name for name in speakers if name not in said]
         if stopped and not (round == self.last and self.course.spares(stopped)):
-            proved = self._proved(stopped, said, before) if round == self.last else None
+            proved = next(self._proved(round, stopped, said, before), None)
             self.failure = proved or self._stop(round, stopped[0])
 
     def _chosen(self, round: int, said: _Said, fitting: _Said) -> Iterator[tuple[str, TaskMessage]]:
@@ -168,10 +168,14 @@ class _Walk:
         found = next((one for one in self.problems if one.stops and round <= (one.round or 0) < self.last), None)
         return None if found is None else _because(found)
 
-    def _proved(self, stopped: Sequence[str], said: _Said, before: Inbox) -> Failure | None:
-        """Say what proves by itself, in the last round, whose doing the end is, whatever else was said beside it."""
-        faults = (self.course.fault(one, before) for name in stopped for one in said[name])
-        return next((one for one in faults if one is not None and one.by is not None), None)
+    def _proved(self, round: int, stopped: Sequence[str], said: _Said, before: Inbox) -> Iterator[Failure]:
+        """Yield whose doing single messages of a round prove its end to be, whatever was said beside them."""
+        for message in (one for name in stopped for one in said[name]):
+            fault = self.course.fault(message, before) if round == self.last else None
+            if round == 0 and message.seen != before.seen(0):
+                yield Failure(message.sender, _other_view(0, message.sender).what)
+            elif fault is not None and fault.by is not None:
+                yield fault
 
     def _stop(self, round: int, name: str) -> Failure:
         return next(_because(one) for one in self.problems if one.stops and (one.round, one.sender) == (round, name))
@@ -237,8 +241,7 @@ def _answered(course: Course, reading: Reading) -> Iterator[Inbox]:
 
 
 def _because(problem: Problem) -> Failure:
-    proved = problem.kind == "late" or (problem.kind == "other-view" and problem.round == 0)
-    return Failure(problem.sender if proved else None, problem.what)
+    return Failure(problem.sender if problem.kind == "late" else None, problem.what)
 
 
 def _without_content(problems: Sequence[Problem]) -> Failure | None:

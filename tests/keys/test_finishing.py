@@ -190,12 +190,15 @@ def test_nobody_is_blamed_for_a_share_of_what_may_have_been_shown_to_them_alone(
     assert blamed(folder) == [None]
 
 
-def test_with_commitments_made_beforehand_nobody_can_have_seen_anything_else(once: Keyed, tmp_path: Path) -> None:
+@pytest.mark.parametrize("count", [1, 2])
+def test_with_commitments_made_beforehand_nobody_can_have_seen_anything_else(
+    once: Keyed, tmp_path: Path, count: int
+) -> None:
     keyed = once.copy(tmp_path / "harbour")
     batches = [f"--batch={commit(keyed, name)}" for name in (FIRST, SECOND)]
     task = TaskFolder(keyed.ask("sign", keyed.path("release.txt"), task="s", more=batches))
     assert keyed.next(task.path, FIRST).code == 0
-    put_instead(task, SECOND, 0, [(WRONG_SHARES[0], False)])
+    put_instead(task, SECOND, 0, [(WRONG_SHARES[0], False)] * count)
     with pytest.raises(VerificationError, match=f"failed, by {SECOND}"):
         put_together(KeyFolder(keyed.key), task)
     told = run("task", "show", task.path, "--json").json["failure"]
