@@ -11,9 +11,9 @@ from pathlib import Path
 from unittest import mock
 
 import pytest
+from cli.asked import FIRST, SECOND, commit, events, finish, sent
 from cli.harness import Result, run
 from cli.keyed import OFFICE, Keyed, request
-from cli.test_key_tasks import FIRST, SECOND, commit, events, finish, sent
 
 from shares.documents.key_event import TaskFailed, TaskFinished
 from shares.errors import StorageError

@@ -7,9 +7,9 @@ from datetime import timedelta
 from pathlib import Path
 
 import pytest
+from cli.asked import CONTENT, FIRST, SECOND, commit, sent
 from cli.harness import run
 from cli.keyed import OFFICE, Keyed
-from cli.test_key_tasks import CONTENT, FIRST, SECOND, commit, sent
 from parties import unlocked
 
 from shares.documents.key_event import TaskFailed
