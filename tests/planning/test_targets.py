@@ -15,9 +15,11 @@ import pytest
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
 from shares.planning import targets as module
+from shares.planning.interval import interval
 from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, odds
+from shares.planning.simulate import Estimate, Simulated
 from shares.planning.targets import INTERVALS, Targets, meeting, parse_targets
 from shares.sharing.rule import Rule
 
@@ -131,6 +133,19 @@ def test_how_far_odds_miss() -> None:
     assert targets.met_by(Odds(0.01, 0.1, 1.0, 1.0))
     assert not targets.met_by(Odds(0.0101, 0.1, 0.0, 1.0))
     assert not targets.met_by(Odds(0.01, 0.101, 0.0, 1.0))
+
+
+def test_whether_simulated_odds_meet_targets() -> None:
+    def found(loss: int, exposure: int) -> Simulated:
+        estimates = (Estimate(count / 1000, *interval(count, 1000), count) for count in (loss, exposure, 0))
+        return Simulated(*estimates, None, 1000, 1)
+
+    # 5 of 1,000 are anything from 0.16 % to 1.2 %, and none are up to 0.37 %.
+    for loss, exposure, met in ((0.012, 0.012, True), (0.011, 0.012, None), (0.0016, 1.0, False), (0.0017, 1.0, None)):
+        assert Targets(loss, exposure).met_by(found(5, 5)) is met
+    assert Targets(0.0016, 0.006).met_by(found(5, 5)) is False
+    assert Targets(0.0036, 1.0).met_by(found(0, 1000)) is None
+    assert Targets(0.0037, 1.0).met_by(found(0, 1000)) is True
 
 
 def test_rules_that_are_too_large_are_passed_over(monkeypatch: pytest.MonkeyPatch) -> None:
