@@ -9,7 +9,8 @@ from pathlib import Path
 
 import click
 
-from shares.cli.output import filled, json_option, print_result, progress, prose
+import shares
+from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken
 from shares.cli.plan_compare import comparison_lines, side_members
 from shares.cli.plan_odds import outlook_lines, outlook_members, rest_lines, rest_members, table
 from shares.cli.plan_targets import target_lines, target_members
@@ -28,7 +29,7 @@ from shares.planning.reckoned import HISTORIES, SEED, instead
 from shares.planning.simulate import MAX_HISTORIES
 from shares.planning.structure import MAX_LISTED, Bounds
 from shares.planning.targets import meeting, parse_targets
-from shares.storage import read_file
+from shares.storage import read_file, write_new
 
 CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, and where."
 
@@ -44,6 +45,7 @@ CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, a
     help="Find the smallest rule and the longest intervals that have odds like loss=1e-6,exposure=1e-6.",
 )
 @click.option("--compare", metavar="OTHER", callback=filled, help="Set the policy beside another one.")
+@click.option("--html", "page", metavar="FILE", callback=filled, help="Write a page as well, to be read and filed.")
 @click.option(
     "--histories",
     type=click.IntRange(1, MAX_HISTORIES),
@@ -67,6 +69,7 @@ def command(
     full: bool,
     targets: str | None,
     compare: str | None,
+    page: str | None,
     histories: int | None,
     seed: int,
     as_json: bool,
@@ -98,8 +101,13 @@ def command(
     Example:
       shares plan tide-archive.toml
       shares plan tide-archive.toml --targets loss=0.1%,exposure=0.1% --years 10
+      shares plan tide-archive.toml --html plan.html
     """
     days_of(years)
+    if page is not None:
+        if targets is not None or compare is not None:
+            raise ParameterError("--html is the page of a plan, not of --targets or --compare", hint="run it by itself")
+        refuse_taken(page)
     if targets is not None and compare is not None:
         raise ParameterError("--targets and --compare answer two questions", hint="ask one after the other")
     wanted = None if targets is None else parse_targets(targets)
@@ -123,8 +131,9 @@ def command(
     else:
         plan = examine(read, cards=_cards(read, Path(policy).parent))
         code = VerificationError.exit_code if plan.refused else 0
+        model = model_of(read)
         view = outlook(
-            model_of(read),
+            model,
             years,
             full=full,
             histories=histories,
@@ -132,14 +141,28 @@ def command(
             progress=progress("Changes", "changes"),
             drawn=_drawn(),
         )
-        members = {**_members(plan), **outlook_members(view)}
-        lines = chain(_lines(plan), [""], outlook_lines(view, full=full))
+        if page is not None:
+            # The template engine is loaded for a page alone.
+            from shares.planning.page import drawn, plan_page
+
+            on_it = drawn(model, years, progress=progress("Page", "rules"))
+            program = f"shares {shares.__version__}"
+            data = plan_page(plan, model, view, on_it, open_, digest=read.digest(), program=program)
+            write_new(page, data, secret=True)
+        members = {**_members(plan), **outlook_members(view), "page": page}
+        lines = chain(_lines(plan), [""], outlook_lines(view, full=full), _page_lines(page))
     print_result(
         {"done": code == 0, "exit": code, "confidential": CONFIDENTIAL, **members, **rest_members(open_)},
         chain(lines, [""], rest_lines(open_, full=full), [CONFIDENTIAL]),
         as_json=as_json,
     )
     ctx.exit(code)
+
+
+def _page_lines(page: str | None) -> Iterator[str]:
+    if page is not None:
+        yield ""
+        yield f"Page, confidential like this: {page}"
 
 
 def _drawn() -> Callable[[int, int | None], None]:

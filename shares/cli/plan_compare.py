@@ -12,11 +12,12 @@ from collections.abc import Iterator
 
 from shares.cli.output import prose
 from shares.cli.plan_odds import odds_members, sentences, table
-from shares.cli.plan_simulated import extra_missing, simulated_members, why, years_words
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.compare import Side, verdict
 from shares.planning.reckoned import words
 from shares.planning.simulate import EXTRA
+from shares.planning.telling import why, years_words
 
 _UNKNOWN = "too large"
 

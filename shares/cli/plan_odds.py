@@ -9,24 +9,22 @@ Does not: work anything out.
 from __future__ import annotations
 
 import math
-import re
-from collections import Counter
 from collections.abc import Iterable, Iterator, Sequence
 
 from shares.cli.output import prose
-from shares.cli.plan_simulated import beside, extra_missing, simulated_members, simulated_rows, why, years_words
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import assumed, numbers
-from shares.planning.advice import Change, Outlook, cause_words, largest
+from shares.planning.advice import Change, Outlook, largest
 from shares.planning.odds import Contribution, Odds
-from shares.planning.reckoned import Reckoned, briefly
+from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import Simulated
+from shares.planning.telling import DANGERS, NOT_TOLD, beside, cause_rows, change_rows, glued, why, years_words
 
 CAUTIONS = (
     "Odds are as good as the rates they come from, and no better. That custodians share nothing but people, sites, "
     "reporting lines and media is an assumption. Have a professional decide."
 )
 _MOST_CHANGES = 5
-NOT_TOLD = "not told"
 _IN_SHORT = {
     assumed.SHARE.reason: "losses of single shares",
     assumed.PERSON.reason: "what people do",
@@ -37,13 +35,9 @@ _IN_SHORT = {
 }
 
 
-_GLUE = "\N{NO-BREAK SPACE}"
-
-
 def sentences(text: str) -> list[str]:
     """Break text into lines as ``prose`` does, yet never within "5.3 %" or "1 in 20"."""
-    glued = re.sub(r"(?<=\d) (?=%)|(?<=\b1) (?=in \d)|(?<=\b1 in) (?=\d)", _GLUE, text)
-    return [line.replace(_GLUE, " ") for line in prose(glued)]
+    return [line.replace("\N{NO-BREAK SPACE}", " ") for line in prose(glued(text))]
 
 
 def table(rows: Sequence[Sequence[str]], *, left: int = 1) -> Iterator[str]:
@@ -151,7 +145,8 @@ def _so_many(count: int, what: str) -> str:
 
 
 def _simulated_lines(view: Outlook, simulated: Simulated) -> Iterator[str]:
-    yield from table(list(simulated_rows(simulated, view.years)))
+    rows = [(f"odds over {numbers.horizon(view.years)}, simulated", "chance, and its 95 % interval")]
+    yield from table([*rows, *((what, words(simulated, of)) for of, what in DANGERS.items())])
     yield f"Mean time until the first loss: {years_words(simulated)}."
     told = "" if view.odds is None else f" {beside(view.odds, simulated)}"
     yield from sentences(why([simulated], view.odds) + told)
@@ -159,11 +154,7 @@ def _simulated_lines(view: Outlook, simulated: Simulated) -> Iterator[str]:
 
 def _odds_lines(view: Outlook, odds: Odds, *, full: bool) -> Iterator[str]:
     rows = [(f"odds over {numbers.horizon(view.years)}", "chance", "", "" if full else "mostly by")]
-    for of, what in (
-        ("loss", "loss: no quorum is left"),
-        ("exposure", "exposure: a quorum is known"),
-        ("absence", "no quorum on a given day"),
-    ):
+    for of, what in DANGERS.items():
         chance = float(getattr(odds, of))
         by = "" if full or view.causes is None else "; ".join(largest(view.causes, of))
         rows.append((what, numbers.chance(chance), numbers.one_in(chance), by))
@@ -172,11 +163,7 @@ def _odds_lines(view: Outlook, odds: Odds, *, full: bool) -> Iterator[str]:
 
 
 def _cause_lines(causes: Sequence[Contribution]) -> Iterator[str]:
-    rows: list[tuple[str, ...]] = [("what each cause adds", "loss", "exposure", "no quorum")]
-    for one in causes:
-        parts = (NOT_TOLD if part is None else numbers.chance(part) for part in (one.loss, one.exposure, one.absence))
-        rows.append((cause_words(one), *parts))
-    yield from table(rows)
+    yield from table([("what each cause adds", "loss", "exposure", "no quorum"), *cause_rows(causes)])
 
 
 def _last_left(rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
@@ -187,35 +174,12 @@ def _last_left(rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
 
 
 def _change_lines(now: Reckoned, changes: Sequence[Change], *, full: bool) -> Iterator[str]:
-    told = [(words, change) for words, change in _unlike(changes) if full or change.gain > 0]
-    if not told:
+    rows = list(change_rows(now, changes, best_alone=not full))
+    if len(rows) == 1:
         return
     yield ""
-    rows = [("what to change first", "loss", "exposure")]
-    rows.append(("(as it is)", briefly(now, "loss"), briefly(now, "exposure")))
-    rows += [(words, *_after(change)) for words, change in (told if full else told[:_MOST_CHANGES])]
-    yield from table(rows)
+    yield from table([("what to change first", "loss", "exposure"), *(rows if full else rows[: 1 + _MOST_CHANGES])])
     yield "Each alone, in the order of what it takes off both odds together."
-
-
-def _after(change: Change) -> tuple[str, str]:
-    """Write the odds after a change, as far as the change can be told."""
-    loss = NOT_TOLD if change.loss is None else briefly(change.odds, "loss")
-    return loss, NOT_TOLD if change.exposure is None else briefly(change.odds, "exposure")
-
-
-def _unlike(changes: Sequence[Change]) -> Iterator[tuple[str, Change]]:
-    """Yield changes with their words, and tell those of one kind with the same numbers once."""
-
-    def told(change: Change) -> tuple[str, ...]:
-        return change.kind, *_after(change)
-
-    alike = Counter(map(told, changes))
-    for change in changes:
-        others = alike.pop(told(change), 0) - 1
-        if others >= 0:
-            more = f" (or {others} other{'s' if others > 1 else ''})" if others else ""
-            yield change.words.removeprefix("to ") + more, change
 
 
 def rest_lines(assumptions: Sequence[str], *, full: bool) -> Iterator[str]:

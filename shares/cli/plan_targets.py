@@ -11,19 +11,16 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from shares.cli.plan_odds import cause_members, odds_members, sentences, table
-from shares.cli.plan_simulated import extra_missing, simulated_members, why
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.advice import largest
+from shares.planning.lineup import IMAGINED
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import EXTRA, Simulated
-from shares.planning.targets import MAX_CUSTODIANS, Answer, Targets
+from shares.planning.targets import Answer, Targets
+from shares.planning.telling import why
 
-IMAGINED = (
-    "Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed, over the "
-    f"policy's custodians, up to {MAX_CUSTODIANS}, taken so that as few as possible share a site or a manager. Where "
-    "more are needed, each is imagined like one of these again, from the first on: same site, manager and medium, "
-    "another person."
-)
+TRIED = f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"
 
 
 def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> dict[str, object]:
@@ -48,7 +45,7 @@ def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> di
             for choice in answer.choices
         ],
         "causes": cause_members(answer.causes),
-        "imagined": IMAGINED,
+        "imagined": TRIED,
     }
 
 
@@ -80,7 +77,7 @@ def target_lines(targets: Targets, now: Reckoned | None, answer: Answer, years: 
     if answer.causes:
         yield from sentences(_in_the_way(targets, answer))
     yield ""
-    yield from sentences(IMAGINED)
+    yield from sentences(TRIED)
 
 
 def _of_the_policy(targets: Targets, now: Reckoned | None) -> str:

@@ -18,7 +18,7 @@ from shares.planning.odds import Odds, odds
 from shares.planning.reckoned import SEED, Reckoned, apart, instead, value
 from shares.planning.simulate import Simulated
 
-_ALIKE = 1.1
+ALIKE = 1.1
 """Odds that differ by less than a tenth of themselves are called alike: no rate is known that well."""
 
 
@@ -79,7 +79,7 @@ def verdict(first: Reckoned, second: Reckoned) -> str:
     better: dict[str, list[str]] = {"first": [], "second": []}
     for what in ("loss", "exposure", "absence"):
         one, other = value(first, what), value(second, what)
-        if max(one, other) > _ALIKE * min(one, other) and apart(first, second, what):
+        if max(one, other) > ALIKE * min(one, other) and apart(first, second, what):
             better["first" if one < other else "second"].append(what)
     here, there = (_listed(whats) for whats in better.values())
     if here and there:

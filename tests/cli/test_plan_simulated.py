@@ -12,13 +12,14 @@ from pathlib import Path
 import pytest
 from cli.harness import assert_refused, run
 
-from shares.cli.plan_simulated import beside, simulated_members, why, years_words
+from shares.cli.plan_simulated import simulated_members
 from shares.documents.policy import Policy
 from shares.planning.advice import outlook
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
 from shares.planning.reckoned import words
 from shares.planning.simulate import EXTRA, MAX_HISTORIES, Estimate, Simulated, simulate
+from shares.planning.telling import beside, why, years_words
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
 TIDE = EXAMPLES / "tide-archive.toml"

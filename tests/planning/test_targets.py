@@ -15,12 +15,12 @@ import pytest
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
 from shares.planning import targets as module
-from shares.planning.changes import with_another
 from shares.planning.interval import interval
+from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, odds
 from shares.planning.simulate import Estimate, Simulated
-from shares.planning.targets import INTERVALS, MAX_CUSTODIANS, Targets, meeting, parse_targets
+from shares.planning.targets import INTERVALS, Targets, meeting, parse_targets
 from shares.sharing.rule import Rule
 
 SMALL = 7
@@ -111,10 +111,9 @@ def test_what_cannot_be_met_is_met_as_nearly_as_can_be() -> None:
     assert not answer.met
     (nearest,) = answer.choices
     assert {cause.kind for cause in answer.causes} >= {"site", "line"}
-    names, peopled = module._people(model)
-    assert len(names) == MAX_CUSTODIANS
+    custodians = lined_up(model)
     for total, need in itertools.combinations(range(MAX_CUSTODIANS, 1, -1), 2):
-        best = odds(replace(peopled, rule=Rule(need, names[:total]), attest_every=7, refresh_every=7), 10)
+        best = odds(replace(custodians.rule(need, total), attest_every=7, refresh_every=7), 10)
         assert best is not None
         assert targets.missed_by(best) >= targets.missed_by(nearest.odds) * (1 - 1e-9)
         assert not targets.met_by(best)
@@ -125,26 +124,6 @@ def test_what_misses_one_target_alone_still_takes_it_easy_with_the_other() -> No
     assert not answer.met
     assert answer.choices[0].attest_every is None
     assert answer.choices[0].refresh_every == 7
-
-
-def test_custodians_are_taken_from_different_sites_first_and_imagined_like_them() -> None:
-    gate = example("tide-gate")
-    names, peopled = module._people(gate)
-    sites = [cause.members for cause in gate.causes if cause.kind == "site"]
-    for start in range(0, 12, 3):
-        assert {i for i, site in enumerate(sites) for name in names[start : start + 3] if name in site} == {0, 1, 2}
-    assert peopled.causes == gate.causes
-    # Four custodians become twelve: each again from the first on, on the site of the one whom it is like.
-    draft = example("first-draft")
-    names, peopled = module._people(draft)
-    assert len(set(names)) == MAX_CUSTODIANS
-    assert set(names[:4]) == set(draft.custodians)
-    by_hand = replace(draft, rule=Rule(1, names[:4]))
-    for like in names[:4]:
-        by_hand = with_another(by_hand, like)
-    for site in (cause for cause in by_hand.causes if cause.kind in ("site", "line")):
-        now = next(cause for cause in peopled.causes if (cause.kind, cause.name) == (site.kind, site.name))
-        assert now.members & set(names[:8]) == site.members
 
 
 def test_how_far_odds_miss() -> None:
