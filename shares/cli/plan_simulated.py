@@ -26,6 +26,7 @@ def simulated_members(simulated: Simulated | None) -> dict[str, object] | None:
         "years_to_loss": None if years is None else _estimate_members(years),
         "histories": simulated.histories,
         "seed": simulated.seed,
+        "numpy": simulated.numpy,
     }
 
 

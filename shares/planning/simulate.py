@@ -67,6 +67,7 @@ class Simulated:
             where fewer than 10 losses were seen, or they take longer than can be told; infinite where none can be.
         histories: how many were drawn.
         seed: what they were drawn from.
+        numpy: the version that drew them; another one may draw others from the same seed.
     """
 
     loss: Estimate
@@ -75,6 +76,7 @@ class Simulated:
     years_to_loss: Estimate | None
     histories: int
     seed: int
+    numpy: str
 
 
 def simulate(
@@ -135,6 +137,7 @@ def simulate(
         _mean_years(*sums) if _can_be_lost(model) else Estimate(math.inf, math.inf, math.inf, 0),
         histories,
         seed,
+        np.__version__,
     )
 
 

@@ -62,15 +62,11 @@ def why(simulated: Iterable[Simulated], odds: Odds | None) -> str:
         odds: exact ones beside them; None where they were too much work.
     """
     first, *others = simulated
-    told = f"Simulated from {first.histories:,} histories{' each' if others else ''} with seed {first.seed}"
+    drawn = f"drawn by numpy {first.numpy} with seed {first.seed}, the same ones at every run"
+    told = f"Simulated from {first.histories:,} histories{' each' if others else ''}, {drawn}"
     if odds is None:
-        told += (
-            ", as the rule, or the way in which people, sites and lines overlap in it, is too entangled for exact odds"
-        )
-    told += (
-        ". At least 95 of 100 such intervals hold the true odds of the model; nothing seen is not never. The same seed "
-        "and the same version of numpy draw the same histories."
-    )
+        told += ": the rule, or the way in which people, sites and lines overlap in it, is too entangled for exact odds"
+    told += ". At least 95 of 100 such intervals hold the true odds of the model; nothing seen is not never."
     if 10 * first.histories <= MAX_HISTORIES:
         told += f" Ten times as many (--histories {10 * first.histories}) give intervals about a third as wide."
     return told

@@ -9,6 +9,7 @@ import json
 import sys
 from pathlib import Path
 
+import numpy
 import pytest
 from cli.harness import assert_refused, run
 
@@ -25,6 +26,8 @@ EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
 TIDE = EXAMPLES / "tide-archive.toml"
 OF = ("loss", "exposure", "absence")
 FEW = ("--histories", "2000", "--seed", "7")
+
+DRAWN = f"drawn by numpy {numpy.__version__} with seed %s, the same ones at every run"
 
 
 def entangled(folder: Path, more: str = "") -> Path:
@@ -53,7 +56,7 @@ def told(found: Simulated) -> dict[str, object]:
     return {
         of: {"value": one.value, "low": one.low, "high": one.high, "seen": one.seen}
         for of, one in (*((of, getattr(found, of)) for of in OF), ("years_to_loss", years))
-    } | {"histories": found.histories, "seed": found.seed}
+    } | {"histories": found.histories, "seed": found.seed, "numpy": found.numpy}
 
 
 def said(*args: object) -> str:
@@ -80,9 +83,8 @@ def test_what_is_too_entangled_is_simulated_from_100_000_histories(tmp_path: Pat
         "odds over 10 years, simulated chance, and its 95 % interval",
         f"loss: no quorum is left {words(found, 'loss')} exposure: a quorum is known {words(found, 'exposure')} no ",
         f"quorum on a given day {words(found, 'absence')} Mean time until the first loss: {years_words(found)}.",
-        "Simulated from 100,000 histories with seed 1, as the rule, or the way in which people, sites and lines "
-        "overlap in it, is too entangled for exact odds.",
-        "The same seed and the same version of numpy draw the same histories.",
+        f"Simulated from 100,000 histories, {DRAWN % 1}: ",
+        "people, sites and lines overlap in it, is too entangled for exact odds. At least 95 of 100",
         "Ten times as many (--histories 1000000) give intervals about a third as wide.",
         "takes long for this policy: --odds does it.",
     ):
@@ -92,7 +94,7 @@ def test_what_is_too_entangled_is_simulated_from_100_000_histories(tmp_path: Pat
 
 def test_histories_and_seed_are_those_asked_for(tmp_path: Path) -> None:
     path = entangled(tmp_path)
-    assert "Simulated from 2,000 histories with seed 7, as" in said(path, *FEW)
+    assert f"Simulated from 2,000 histories, {DRAWN % 7}: the rule" in said(path, *FEW)
     assert run("plan", path, *FEW, "--json").json["simulated"] == told(
         simulate(model(path), 10, histories=2000, seed=7)
     )
@@ -111,12 +113,12 @@ def test_exact_odds_are_simulated_beside_where_histories_are_asked_for() -> None
     text = said(path, *FEW)
     assert "exposure: a quorum is known 0.96 % 1 in 100 people; the site north house" in text
     assert f"exposure: a quorum is known {words(found, 'exposure')} no quorum" in text
-    assert "Simulated from 2,000 histories with seed 7. At least 95 of 100" in text
+    assert f"Simulated from 2,000 histories, {DRAWN % 7}. At least 95 of 100" in text
     assert beside(exact, found) in text
 
 
 def test_exact_odds_that_lie_outside_the_interval_are_told() -> None:
-    found = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, 1000, 1)
+    found = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, 1000, 1, "2.4.0")
     assert beside(Odds(0.09, 0.1, 0.11, 1), found) == "The exact odds lie within all three intervals."
     assert "odds of loss and of no quorum on a given day lie outside" in beside(Odds(0.08, 0.1, 0.12, 1), found)
 
@@ -137,7 +139,7 @@ def test_nothing_seen_is_never_told_as_nothing(tmp_path: Path) -> None:
 
 
 def test_json_has_no_infinity() -> None:
-    never = Simulated(*(Estimate(0.0, 0.0, 0.1, 0),) * 3, Estimate(*(float("inf"),) * 3, 0), 10, 1)
+    never = Simulated(*(Estimate(0.0, 0.0, 0.1, 0),) * 3, Estimate(*(float("inf"),) * 3, 0), 10, 1, "2.4.0")
     members = simulated_members(never)
     assert members is not None
     assert members["years_to_loss"] == {"value": None, "low": None, "high": None, "seen": 0}
@@ -147,11 +149,11 @@ def test_json_has_no_infinity() -> None:
 
 
 def test_more_histories_are_proposed_as_far_as_there_are() -> None:
-    found = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, MAX_HISTORIES // 10, 1)
+    found = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, MAX_HISTORIES // 10, 1, "2.4.0")
     assert f"--histories {MAX_HISTORIES}" in why([found], None)
-    most = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, MAX_HISTORIES // 10 + 1, 1)
+    most = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, MAX_HISTORIES // 10 + 1, 1, "2.4.0")
     assert "--histories" not in why([most], None)
-    assert "histories each with seed 1" in why([found, found], None)
+    assert "histories each, drawn by numpy 2.4.0 with seed 1" in why([found, found], None)
 
 
 # Without numpy.
@@ -220,14 +222,14 @@ def test_a_side_that_is_too_large_is_simulated(tmp_path: Path) -> None:
     found = simulate(model(path), 10, histories=2000, seed=7)
     text = said(TIDE, "--compare", path, *FEW)
     assert f"loss 5.3 % simulated {words(found, 'loss')} exposure 3.3 % simulated {words(found, 'exposure')}" in text
-    assert "Simulated from 2,000 histories with seed 7, as" in text
+    assert f"Simulated from 2,000 histories, {DRAWN % 7}: the rule" in text
     assert " policy is better in " in text
     one, other = run("plan", TIDE, "--compare", path, *FEW, "--json").json["policies"]
     assert (one["simulated"], other["odds"], other["simulated"]) == (None, None, told(found))
     # The same policy twice, from the same histories.
     text = said(path, "--compare", path, *FEW)
     assert "So many histories do not show that one policy is better than the other." in text
-    assert "Simulated from 2,000 histories each with seed 7" in text
+    assert f"Simulated from 2,000 histories each, {DRAWN % 7}" in text
 
 
 def test_targets_that_a_simulation_meets_misses_or_cannot_tell(tmp_path: Path) -> None:
@@ -242,7 +244,7 @@ def test_targets_that_a_simulation_meets_misses_or_cannot_tell(tmp_path: Path) -
         text = said(path, *wanted)
         assert f"exposure {words(simulate(model(path), 10, histories=2000, seed=7), 'exposure')}; " in text
         assert enough in text
-        assert "Simulated from 2,000 histories with seed 7" in text
+        assert f"Simulated from 2,000 histories, {DRAWN % 7}" in text
         members = run("plan", path, *wanted, "--json").json
         assert members["met_by_the_policy"] is met
         assert members["simulated"]["exposure"]["seen"] == found.seen

@@ -264,7 +264,7 @@ def test_exact_odds_stay_what_they_are_beside_simulated_ones() -> None:
 
 def seen(loss: int, exposure: int, absence: int = 0) -> Simulated:
     estimates = (Estimate(count / 1000, *interval(count, 1000), count) for count in (loss, exposure, absence))
-    return Simulated(*estimates, None, 1000, 1)
+    return Simulated(*estimates, None, 1000, 1, "2.4.0")
 
 
 def test_words_for_what_is_simulated() -> None:

@@ -65,7 +65,7 @@ def test_the_verdict(first: tuple[float, ...], second: tuple[float, ...], words:
 def seen(*counts: int) -> Simulated:
     """Odds of which so many were seen among 1,000 histories."""
     estimates = [Estimate(count / 1000, *interval(count, 1000), count) for count in counts]
-    return Simulated(*estimates, None, 1000, 1)  # type: ignore[misc]
+    return Simulated(*estimates, None, 1000, 1, "2.4.0")  # type: ignore[misc]
 
 
 @pytest.mark.parametrize(

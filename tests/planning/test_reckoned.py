@@ -25,7 +25,7 @@ EXACT = Odds(0.3, 0.0, 0.02, 10.0)
 
 def seen(count: int, histories: int = 100_000) -> Simulated:
     estimate = Estimate(count / histories, *interval(count, histories), count)
-    return Simulated(estimate, estimate, estimate, None, histories, 1)
+    return Simulated(estimate, estimate, estimate, None, histories, 1, "2.4.0")
 
 
 def test_an_exact_chance_is_a_point() -> None:

@@ -138,7 +138,7 @@ def test_how_far_odds_miss() -> None:
 def test_whether_simulated_odds_meet_targets() -> None:
     def found(loss: int, exposure: int) -> Simulated:
         estimates = (Estimate(count / 1000, *interval(count, 1000), count) for count in (loss, exposure, 0))
-        return Simulated(*estimates, None, 1000, 1)
+        return Simulated(*estimates, None, 1000, 1, "2.4.0")
 
     # 5 of 1,000 are anything from 0.16 % to 1.2 %, and none are up to 0.37 %.
     for loss, exposure, met in ((0.012, 0.012, True), (0.011, 0.012, None), (0.0016, 1.0, False), (0.0017, 1.0, None)):
