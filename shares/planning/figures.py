@@ -36,9 +36,9 @@ class Box(NamedTuple):
     bottom: int
 
 
-PLANE = Box(720, 560, 70, 690, 20, 505)
-CURVES = Box(460, 300, 62, 400, 16, 240)
-_NEVER_AT = 436
+PLANE = Box(760, 572, 116, 730, 20, 505)
+CURVES = Box(500, 300, 108, 440, 16, 240)
+_NEVER_AT = 476
 """Where "never" stands, beyond the axis of the intervals."""
 _ROUND = ((7, "week"), (30, "month"), (91, "quarter"), (365, "year"), (1095, "3 y"), (3650, "10 y"))
 

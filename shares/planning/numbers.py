@@ -15,21 +15,27 @@ from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 
 _CERTAIN = 0.995
 _ONE_DIGIT_BELOW = 1e-4
+_PERCENT_FROM = 1e-6
+_LEAST = 1e-12
+_UNITS = ((1e12, "trillion"), (1e9, "billion"), (1e6, "million"))
 
 
 def chance(p: float) -> str:
-    """Write a chance, 0 to 1: a percentage, or one digit and a power of ten below 0.01 %.
+    """Write a chance, 0 to 1: a percentage, with one digit below 0.01 %; as one in so many below a millionth.
 
     >>> [chance(p) for p in (0.0, 4.2e-7, 0.000096, 0.00096, 0.0532, 0.57499, 0.996)]
-    ['none', '4e-7', '1e-4', '0.096 %', '5.3 %', '57 %', 'above 99 %']
+    ['none', '1 in 2.4 million', '0.01 %', '0.096 %', '5.3 %', '57 %', 'above 99 %']
     """
     if p == 0:
         return "none"
     if p >= _CERTAIN:
         return "above 99 %"
+    if p < _LEAST:
+        return "below 1 in a trillion"
+    if p < _PERCENT_FROM:
+        return f"1 in {_in_words(1 / p)}"
     if p < _ONE_DIGIT_BELOW:
-        digit, power = f"{p:.0e}".split("e")
-        return f"{digit}e{int(power)}"
+        return f"{Decimal(f'{100 * p:.0e}').normalize():f} %"
     return f"{_two_digits(100 * p)} %"
 
 
@@ -39,7 +45,7 @@ def one_in(p: float) -> str:
     >>> [one_in(p) for p in (0.0532, 0.0009, 4e-7, 0.57, 0.0)]
     ['1 in 19', '1 in 1,100', '', '', '']
     """
-    return f"1 in {_two_digits(1 / p)}" if 1e-5 <= p <= 1 / 3 else ""
+    return f"1 in {_two_digits(1 / p)}" if _PERCENT_FROM <= p <= 1 / 3 else ""
 
 
 def interval(low: float, high: float) -> str:
@@ -48,7 +54,7 @@ def interval(low: float, high: float) -> str:
     never.
 
     >>> [interval(*ends) for ends in ((0.3885, 0.3946), (0.0004, 0.0011), (2.5e-7, 5.57e-5), (0, 3.7e-5), (0.99996, 1))]
-    ['38.8 % to 39.5 %', '0.04 % to 0.11 %', '2e-7 to 6e-5', 'below 4e-5', 'above 99.996 %']
+    ['38.8 % to 39.5 %', '0.04 % to 0.11 %', '0.00002 % to 0.006 %', 'below 0.004 %', 'above 99.996 %']
     """
     finest = math.floor(math.log10(high - low))
     if low == 0:
@@ -62,7 +68,7 @@ def _rounded(p: float, finest: int, which_way: str) -> str:
     """Round a chance above 0 to the digits that ``chance`` tells, or down to 10^finest."""
     last = math.floor(math.log10(p)) - (p >= _ONE_DIGIT_BELOW)
     rounded = Decimal(str(p)).quantize(Decimal(1).scaleb(min(last, finest)), which_way).normalize()
-    return f"{(100 * rounded).normalize():f} %" if rounded >= Decimal("1e-4") else f"{rounded:e}"
+    return f"{(100 * rounded).normalize():f} %"
 
 
 def years(span: float) -> str:
@@ -107,3 +113,14 @@ def _two_digits(number: float) -> str:
     """
     rounded = float(f"{number:.1e}")
     return f"{rounded:,.0f}" if rounded >= 10 else f"{rounded:g}"
+
+
+def _in_words(number: float) -> str:
+    """Write a million or more, to two digits.
+
+    >>> [_in_words(n) for n in (1e6, 2.38e6, 9.96e8, 4.04e11)]
+    ['1 million', '2.4 million', '1 billion', '400 billion']
+    """
+    rounded = float(f"{number:.1e}")
+    unit, name = next((unit, name) for unit, name in _UNITS if rounded >= unit)
+    return f"{rounded / unit:g} {name}"

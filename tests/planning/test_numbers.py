@@ -13,7 +13,10 @@ from shares.planning.numbers import chance, every, horizon, interval, one_in, ye
 
 
 def read(text: str) -> float:
-    return float(text.removesuffix(" %")) / 100 if text.endswith(" %") else float(text)
+    if text.endswith(" %"):
+        return float(text.removesuffix(" %")) / 100
+    number, unit = text.removeprefix("1 in ").split()
+    return 1 / (float(number) * {"million": 1e6, "billion": 1e9, "trillion": 1e12}[unit])
 
 
 @given(st.floats(-20, -0.01).map(lambda power: 10**power))
@@ -21,9 +24,12 @@ def test_a_chance_is_told_to_the_digits_that_are_meant(p: float) -> None:
     told = chance(p)
     if p >= 0.995:
         assert told == "above 99 %"
+    elif p < 1e-12:
+        assert told == "below 1 in a trillion"
     else:
-        assert math.isclose(read(told), p, rel_tol=0.05 if p >= 1e-4 else 0.34)
-        assert sum(c.isdigit() for c in told.split("e")[0].replace("0.", "").lstrip("0")) <= 2
+        assert math.isclose(read(told), p, rel_tol=0.34 if 1e-6 <= p < 1e-4 else 0.051)
+        number = told.removeprefix("1 in ").split()[0]
+        assert len(number.replace(".", "").strip("0")) <= 2
 
 
 @given(st.integers(1, 10**9), st.floats(0, 1))
@@ -44,14 +50,19 @@ def test_an_interval_is_told_no_narrower_than_it_is_and_not_much_wider(histories
     assert ends[1] - ends[0] <= 3 * (high - low) + slack
 
 
-@given(st.floats(1e-5, 1 / 3))
+@given(st.floats(1e-6, 1 / 3))
 def test_one_in_so_many(p: float) -> None:
     assert math.isclose(float(one_in(p).removeprefix("1 in ").replace(",", "")), 1 / p, rel_tol=0.05)
 
 
 def test_the_ends() -> None:
-    assert (chance(0.0), chance(1.0), chance(0.994), chance(5e-324)) == ("none", "above 99 %", "99 %", "5e-324")
-    assert one_in(0.34) == one_in(9e-6) == one_in(1.0) == one_in(0.0) == ""
+    assert (chance(0.0), chance(1.0), chance(0.994), chance(5e-324)) == (
+        "none",
+        "above 99 %",
+        "99 %",
+        "below 1 in a trillion",
+    )
+    assert one_in(0.34) == one_in(9e-7) == one_in(1.0) == one_in(0.0) == ""
     assert (years(math.inf), years(1e6), years(1.0), years(0.0)) == ("never", "1,000,000 years", "1 years", "0 days")
 
 

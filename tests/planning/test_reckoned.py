@@ -37,8 +37,8 @@ def test_an_exact_chance_is_a_point() -> None:
 @pytest.mark.parametrize(
     ("count", "told", "brief"),
     [
-        (0, "0 of 100,000: below 4e-5", "below 4e-5"),
-        (1, "1e-5 (2e-7 to 6e-5)", "1e-5"),
+        (0, "0 of 100,000: below 0.004 %", "below 0.004 %"),
+        (1, "0.001 % (0.00002 % to 0.006 %)", "0.001 %"),
         (332, "0.33 % (0.29 % to 0.37 %)", "0.33 %"),
         (39_155, "39 % (38.8 % to 39.5 %)", "39 %"),
         (100_000, "all of 100,000: above 99.996 %", "above 99 %"),
