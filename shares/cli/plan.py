@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from itertools import chain
 from pathlib import Path
 
 import click
 
-from shares.cli.output import filled, json_option, print_result, progress, prose
+import shares
+from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken
 from shares.cli.plan_compare import comparison_lines, side_members
 from shares.cli.plan_odds import outlook_lines, outlook_members, rest_lines, rest_members, table
 from shares.cli.plan_targets import target_lines, target_members
@@ -24,9 +25,11 @@ from shares.planning.compare import side
 from shares.planning.examine import Plan, examine
 from shares.planning.model import model_of
 from shares.planning.odds import days_of, odds
+from shares.planning.reckoned import HISTORIES, SEED, instead
+from shares.planning.simulate import MAX_HISTORIES
 from shares.planning.structure import MAX_LISTED, Bounds
 from shares.planning.targets import meeting, parse_targets
-from shares.storage import read_file
+from shares.storage import read_file, write_new
 
 CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, and where."
 
@@ -42,10 +45,34 @@ CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, a
     help="Find the smallest rule and the longest intervals that have odds like loss=1e-6,exposure=1e-6.",
 )
 @click.option("--compare", metavar="OTHER", callback=filled, help="Set the policy beside another one.")
+@click.option("--html", "page", metavar="FILE", callback=filled, help="Write a page as well, to be read and filed.")
+@click.option(
+    "--histories",
+    type=click.IntRange(1, MAX_HISTORIES),
+    metavar="N",
+    help=f"Simulate from so many histories, beside exact odds as well; {HISTORIES} where no odds are exact.",
+)
+@click.option(
+    "--seed",
+    type=click.IntRange(min=0),
+    metavar="S",
+    default=SEED,
+    show_default=True,
+    help="Which histories are drawn: the same for the same seed and version of numpy.",
+)
 @json_option
 @click.pass_context
 def command(
-    ctx: click.Context, policy: str, years: float, full: bool, targets: str | None, compare: str | None, as_json: bool
+    ctx: click.Context,
+    policy: str,
+    years: float,
+    full: bool,
+    targets: str | None,
+    compare: str | None,
+    page: str | None,
+    histories: int | None,
+    seed: int,
+    as_json: bool,
 ) -> None:
     """Examine the policy in the TOML file POLICY before anything is split. It holds no secret, but is confidential.
 
@@ -63,14 +90,24 @@ def command(
     (more than 24 custodians, or many sites, lines and media that cross one another), unless --odds asks for them.
     Rates come from the policy, or are assumed and said to be. Whether odds are good enough is for people to say.
 
+    Odds are exact where that is not too much work. Where the same custodians stand in many groups, or sites, lines and
+    media cross one another in many ways, they are simulated, each with its interval, by numpy (the extra shares[plan];
+    without it the structure is told alone). There --odds simulates every cause and change: seconds for each, and up to
+    an hour in all for 200 custodians. With --compare and --targets nothing is simulated that is exact.
+
     What a policy holds is in FORMAT.md, section 12; examples to begin with are in examples/policies/ of the source.
 
     \b
     Example:
       shares plan tide-archive.toml
       shares plan tide-archive.toml --targets loss=0.1%,exposure=0.1% --years 10
+      shares plan tide-archive.toml --html plan.html
     """
     days_of(years)
+    if page is not None:
+        if targets is not None or compare is not None:
+            raise ParameterError("--html is the page of a plan, not of --targets or --compare", hint="run it by itself")
+        refuse_taken(page)
     if targets is not None and compare is not None:
         raise ParameterError("--targets and --compare answer two questions", hint="ask one after the other")
     wanted = None if targets is None else parse_targets(targets)
@@ -78,27 +115,58 @@ def command(
     open_ = assumptions(read)
     if wanted is not None:
         model = model_of(read)
-        now, answer = odds(model, years), meeting(model, wanted, years, progress=progress("Rules", "rules"))
+        now = odds(model, years) or instead(model, years, histories=histories, seed=seed, drawn=_drawn())
+        answer = meeting(model, wanted, years, progress=progress("Rules", "rules"))
         members = {"years": years, **target_members(wanted, now, answer)}
         lines = target_lines(wanted, now, answer, years)
     elif compare is not None:
         other = _read(compare)
-        first, second = (policy, side(read, years)), (compare, side(other, years))
+        first, second = (
+            (path, side(one, years, histories=histories, seed=seed, drawn=_drawn()))
+            for path, one in ((policy, read), (compare, other))
+        )
         open_ = tuple(dict.fromkeys((*open_, *assumptions(other))))
         members = {"years": years, "policies": [side_members(*first), side_members(*second)]}
         lines = comparison_lines(first, second, years)
     else:
         plan = examine(read, cards=_cards(read, Path(policy).parent))
         code = VerificationError.exit_code if plan.refused else 0
-        view = outlook(model_of(read), years, full=full, progress=progress("Changes", "changes"))
-        members = {**_members(plan), **outlook_members(view)}
-        lines = chain(_lines(plan), [""], outlook_lines(view, full=full))
+        model = model_of(read)
+        view = outlook(
+            model,
+            years,
+            full=full,
+            histories=histories,
+            seed=seed,
+            progress=progress("Changes", "changes"),
+            drawn=_drawn(),
+        )
+        if page is not None:
+            # The template engine is loaded for a page alone.
+            from shares.planning.page import drawn, plan_page
+
+            on_it = drawn(model, years, progress=progress("Page", "rules"))
+            program = f"shares {shares.__version__}"
+            data = plan_page(plan, model, view, on_it, open_, digest=read.digest(), program=program)
+            write_new(page, data, secret=True)
+        members = {**_members(plan), **outlook_members(view), "page": page}
+        lines = chain(_lines(plan), [""], outlook_lines(view, full=full), _page_lines(page))
     print_result(
         {"done": code == 0, "exit": code, "confidential": CONFIDENTIAL, **members, **rest_members(open_)},
         chain(lines, [""], rest_lines(open_, full=full), [CONFIDENTIAL]),
         as_json=as_json,
     )
     ctx.exit(code)
+
+
+def _page_lines(page: str | None) -> Iterator[str]:
+    if page is not None:
+        yield ""
+        yield f"Page, confidential like this: {page}"
+
+
+def _drawn() -> Callable[[int, int | None], None]:
+    return progress("Simulation", "histories")
 
 
 def _read(path: str) -> Policy:

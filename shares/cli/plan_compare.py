@@ -1,7 +1,7 @@
 """How ``shares plan --compare`` tells two policies side by side.
 
 Source: none.
-May import: shares.planning, .output, .plan_odds.
+May import: shares.planning, .output, .plan_odds, .plan_simulated.
 Secret: nothing. Public: nothing either, as for the policies.
 Does not: say which danger matters more.
 """
@@ -11,9 +11,15 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from shares.cli.output import prose
-from shares.cli.plan_odds import odds_members, table
+from shares.cli.plan_odds import odds_members, sentences, table
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.compare import Side, verdict
+from shares.planning.reckoned import words
+from shares.planning.simulate import EXTRA
+from shares.planning.telling import why, years_words
+
+_UNKNOWN = "too large"
 
 
 def side_members(path: str, side: Side) -> dict[str, object]:
@@ -29,6 +35,8 @@ def side_members(path: str, side: Side) -> dict[str, object]:
         "attest_every_days": side.model.attest_every,
         "refresh_every_days": side.model.refresh_every,
         "odds": odds_members(side.odds),
+        "simulated": simulated_members(side.simulated),
+        "missing_extra": extra_missing(side.odds, side.simulated),
     }
 
 
@@ -42,12 +50,20 @@ def comparison_lines(first: tuple[str, Side], second: tuple[str, Side], years: f
         [("", "first", "second")] + [(what, one, other) for (what, one), (_, other) in zip(*columns, strict=True)]
     )
     yield f"Odds are over {numbers.horizon(years)}."
-    if first[1].odds and second[1].odds:
-        yield from prose(verdict(first[1].odds, second[1].odds))
+    simulated = [side.simulated for _, side in (first, second) if side.simulated]
+    if simulated:
+        yield from sentences(why(simulated, None))
+    if first[1].now and second[1].now:
+        yield from sentences(verdict(first[1].now, second[1].now))
+    else:
+        yield from sentences(
+            "What is too large for exact odds is simulated by numpy, which is not installed: install the extra "
+            f"{EXTRA}."
+        )
 
 
 def _column(side: Side) -> Iterator[tuple[str, str]]:
-    plan, odds = side.plan, side.odds
+    plan, odds, simulated = side.plan, side.odds, side.simulated
     yield "custodians", str(plan.counts["custodians"].total)
     for what in ("people", "sites"):
         yield f"fewest {what} that make a quorum", str(plan.counts[what].quorum)
@@ -55,8 +71,9 @@ def _column(side: Side) -> Iterator[tuple[str, str]]:
     yield "serious findings", str(len(plan.serious))
     yield "attested", numbers.every(side.model.attest_every)
     yield "refreshed", numbers.every(side.model.refresh_every)
-    unknown = "too large"
-    yield "loss", numbers.chance(odds.loss) if odds else unknown
-    yield "exposure", numbers.chance(odds.exposure) if odds else unknown
-    yield "no quorum on a given day", numbers.chance(odds.absence) if odds else unknown
-    yield "mean time until the first loss", numbers.years(odds.years_to_loss) if odds else unknown
+    for of, what in (("loss", "loss"), ("exposure", "exposure"), ("absence", "no quorum on a given day")):
+        yield what, f"{'simulated ' if simulated else ''}{words(side.now, of)}" if side.now else _UNKNOWN
+    mean = (
+        f"simulated {years_words(simulated)}" if simulated else numbers.years(odds.years_to_loss) if odds else _UNKNOWN
+    )
+    yield "mean time until the first loss", mean

@@ -1,7 +1,7 @@
 """How ``shares plan`` tells odds: the table, the advice, what to change first, what is assumed, and the cautions.
 
 Source: none.
-May import: shares.planning, .output.
+May import: shares.planning, .output, .plan_simulated.
 Secret: nothing. Public: nothing either, as for the policy.
 Does not: work anything out.
 """
@@ -9,14 +9,16 @@ Does not: work anything out.
 from __future__ import annotations
 
 import math
-import re
-from collections import Counter
 from collections.abc import Iterable, Iterator, Sequence
 
 from shares.cli.output import prose
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import assumed, numbers
-from shares.planning.advice import Change, Outlook, cause_words, largest
+from shares.planning.advice import Change, Outlook, largest
 from shares.planning.odds import Contribution, Odds
+from shares.planning.reckoned import Reckoned, words
+from shares.planning.simulate import Simulated
+from shares.planning.telling import DANGERS, NOT_TOLD, beside, cause_rows, change_rows, glued, why, years_words
 
 CAUTIONS = (
     "Odds are as good as the rates they come from, and no better. That custodians share nothing but people, sites, "
@@ -33,13 +35,9 @@ _IN_SHORT = {
 }
 
 
-_GLUE = "\N{NO-BREAK SPACE}"
-
-
 def sentences(text: str) -> list[str]:
     """Break text into lines as ``prose`` does, yet never within "5.3 %" or "1 in 20"."""
-    glued = re.sub(r"(?<=\d) (?=%)|(?<=\b1) (?=in \d)|(?<=\b1 in) (?=\d)", _GLUE, text)
-    return [line.replace(_GLUE, " ") for line in prose(glued)]
+    return [line.replace("\N{NO-BREAK SPACE}", " ") for line in prose(glued(text))]
 
 
 def table(rows: Sequence[Sequence[str]], *, left: int = 1) -> Iterator[str]:
@@ -85,6 +83,8 @@ def outlook_members(view: Outlook) -> dict[str, object]:
     return {
         "years": view.years,
         "odds": odds_members(view.odds),
+        "simulated": simulated_members(view.simulated),
+        "missing_extra": extra_missing(view.odds, view.simulated),
         "causes": None if view.causes is None else cause_members(view.causes),
         "changes": None
         if view.changes is None
@@ -92,13 +92,19 @@ def outlook_members(view: Outlook) -> dict[str, object]:
             {
                 "kind": change.kind,
                 "what": change.words,
-                "odds": odds_members(change.odds),
+                **_change_members(change.odds),
                 "gain": {"loss": change.loss, "exposure": change.exposure},
             }
             for change in view.changes
         ],
+        "left_out": {"causes": view.causes_left_out, "changes": view.changes_left_out},
         "advice": list(view.advice),
     }
+
+
+def _change_members(found: Reckoned) -> dict[str, object]:
+    exact, simulated = (None, found) if isinstance(found, Simulated) else (found, None)
+    return {"odds": odds_members(exact), "simulated": simulated_members(simulated)}
 
 
 def rest_members(assumptions: Sequence[str]) -> dict[str, object]:
@@ -116,32 +122,48 @@ def outlook_lines(view: Outlook, *, full: bool) -> Iterator[str]:
     if view.odds is not None:
         yield from _odds_lines(view, view.odds, full=full)
         yield ""
+    if view.simulated is not None:
+        yield from _simulated_lines(view, view.simulated)
+        yield ""
+    if view.now is not None and full and view.causes:
+        yield from _cause_lines(view.causes)
+        yield ""
     yield from sentences(" ".join(view.advice))
-    if view.odds is not None and view.changes:
-        yield from _change_lines(view.odds, view.changes, full=full)
+    if view.now is not None and view.changes:
+        yield from _change_lines(view.now, view.changes, full=full)
+    if view.causes_left_out or view.changes_left_out:
+        yield ""
+        yield from sentences(
+            f"Left out are {_so_many(view.causes_left_out, 'cause')} and {_so_many(view.changes_left_out, 'change')}: "
+            f"what they do cannot be told from what chance makes. {NOT_TOLD.capitalize()} means the same of one of the "
+            "odds. More histories tell more."
+        )
+
+
+def _so_many(count: int, what: str) -> str:
+    return f"{count} {what}{'' if count == 1 else 's'}"
+
+
+def _simulated_lines(view: Outlook, simulated: Simulated) -> Iterator[str]:
+    rows = [(f"odds over {numbers.horizon(view.years)}, simulated", "chance, and its 95 % interval")]
+    yield from table([*rows, *((what, words(simulated, of)) for of, what in DANGERS.items())])
+    yield f"Mean time until the first loss: {years_words(simulated)}."
+    told = "" if view.odds is None else f" {beside(view.odds, simulated)}"
+    yield from sentences(why([simulated], view.odds) + told)
 
 
 def _odds_lines(view: Outlook, odds: Odds, *, full: bool) -> Iterator[str]:
     rows = [(f"odds over {numbers.horizon(view.years)}", "chance", "", "" if full else "mostly by")]
-    for of, what in (
-        ("loss", "loss: no quorum is left"),
-        ("exposure", "exposure: a quorum is known"),
-        ("absence", "no quorum on a given day"),
-    ):
+    for of, what in DANGERS.items():
         chance = float(getattr(odds, of))
         by = "" if full or view.causes is None else "; ".join(largest(view.causes, of))
         rows.append((what, numbers.chance(chance), numbers.one_in(chance), by))
     yield from _last_left(rows)
     yield f"Mean time until the first loss: {numbers.years(odds.years_to_loss)}."
-    if full and view.causes:
-        yield ""
-        yield from table(
-            [("what each cause adds", "loss", "exposure", "no quorum")]
-            + [
-                (cause_words(one), *(numbers.chance(part) for part in (one.loss, one.exposure, one.absence)))
-                for one in view.causes
-            ]
-        )
+
+
+def _cause_lines(causes: Sequence[Contribution]) -> Iterator[str]:
+    yield from table([("what each cause adds", "loss", "exposure", "no quorum"), *cause_rows(causes)])
 
 
 def _last_left(rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
@@ -151,33 +173,13 @@ def _last_left(rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
         yield f"{line:<{width}}  {row[-1]}".rstrip()
 
 
-def _change_lines(now: Odds, changes: Sequence[Change], *, full: bool) -> Iterator[str]:
-    told = [(words, change) for words, change in _unlike(changes) if full or change.gain > 0]
-    if not told:
+def _change_lines(now: Reckoned, changes: Sequence[Change], *, full: bool) -> Iterator[str]:
+    rows = list(change_rows(now, changes, best_alone=not full))
+    if len(rows) == 1:
         return
     yield ""
-    rows = [("what to change first", "loss", "exposure")]
-    rows.append(("(as it is)", numbers.chance(now.loss), numbers.chance(now.exposure)))
-    rows += [
-        (words, numbers.chance(change.odds.loss), numbers.chance(change.odds.exposure))
-        for words, change in (told if full else told[:_MOST_CHANGES])
-    ]
-    yield from table(rows)
+    yield from table([("what to change first", "loss", "exposure"), *(rows if full else rows[: 1 + _MOST_CHANGES])])
     yield "Each alone, in the order of what it takes off both odds together."
-
-
-def _unlike(changes: Sequence[Change]) -> Iterator[tuple[str, Change]]:
-    """Yield changes with their words, and tell those of one kind with the same numbers once."""
-
-    def told(change: Change) -> tuple[str, str, str]:
-        return change.kind, numbers.chance(change.odds.loss), numbers.chance(change.odds.exposure)
-
-    alike = Counter(map(told, changes))
-    for change in changes:
-        others = alike.pop(told(change), 0) - 1
-        if others >= 0:
-            more = f" (or {others} other{'s' if others > 1 else ''})" if others else ""
-            yield change.words.removeprefix("to ") + more, change
 
 
 def rest_lines(assumptions: Sequence[str], *, full: bool) -> Iterator[str]:

@@ -1,7 +1,7 @@
 """How ``shares plan --targets`` tells which rules and intervals have the odds that are wanted.
 
 Source: none.
-May import: shares.planning, .output, .plan_odds.
+May import: shares.planning, .output, .plan_odds, .plan_simulated.
 Secret: nothing. Public: nothing either, as for the policy.
 Does not: search.
 """
@@ -11,24 +11,26 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from shares.cli.plan_odds import cause_members, odds_members, sentences, table
+from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.advice import largest
-from shares.planning.odds import Odds
-from shares.planning.targets import MAX_CUSTODIANS, Answer, Targets
+from shares.planning.lineup import IMAGINED
+from shares.planning.reckoned import Reckoned, words
+from shares.planning.simulate import EXTRA, Simulated
+from shares.planning.targets import Answer, Targets
+from shares.planning.telling import why
 
-IMAGINED = (
-    "Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed, over the "
-    f"policy's custodians, up to {MAX_CUSTODIANS}, taken so that as few as possible share a site or a manager. Where "
-    "more are needed, each is imagined like one of these again, from the first on: same site, manager and medium, "
-    "another person."
-)
+TRIED = f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"
 
 
-def target_members(targets: Targets, now: Odds | None, answer: Answer) -> dict[str, object]:
+def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> dict[str, object]:
     """Return targets and what was found for them, for JSON."""
+    odds, simulated = (None, now) if isinstance(now, Simulated) else (now, None)
     return {
         "targets": targets._asdict(),
-        "odds": odds_members(now),
+        "odds": odds_members(odds),
+        "simulated": simulated_members(simulated),
+        "missing_extra": extra_missing(odds, simulated),
         "met_by_the_policy": None if now is None else targets.met_by(now),
         "met": answer.met,
         "choices": [
@@ -43,11 +45,11 @@ def target_members(targets: Targets, now: Odds | None, answer: Answer) -> dict[s
             for choice in answer.choices
         ],
         "causes": cause_members(answer.causes),
-        "imagined": IMAGINED,
+        "imagined": TRIED,
     }
 
 
-def target_lines(targets: Targets, now: Odds | None, answer: Answer, years: float) -> Iterator[str]:
+def target_lines(targets: Targets, now: Reckoned | None, answer: Answer, years: float) -> Iterator[str]:
     """Yield for people what was found for targets."""
     over = numbers.horizon(years)
     wanted = " and ".join(
@@ -75,14 +77,21 @@ def target_lines(targets: Targets, now: Odds | None, answer: Answer, years: floa
     if answer.causes:
         yield from sentences(_in_the_way(targets, answer))
     yield ""
-    yield from sentences(IMAGINED)
+    yield from sentences(TRIED)
 
 
-def _of_the_policy(targets: Targets, now: Odds | None) -> str:
+def _of_the_policy(targets: Targets, now: Reckoned | None) -> str:
     if now is None:
-        return "The policy itself is too large to be worked out exactly."
-    told = f"loss {numbers.chance(now.loss)}, exposure {numbers.chance(now.exposure)}"
-    return f"The policy as it is: {told}; that is {'enough' if targets.met_by(now) else 'not enough'}."
+        return (
+            "The policy itself is too large for exact odds, and to simulate them takes numpy, which is not installed: "
+            f"install the extra {EXTRA}."
+        )
+    told = f"The policy as it is: loss {words(now, 'loss')}, exposure {words(now, 'exposure')}"
+    met = targets.met_by(now)
+    enough = (
+        "enough" if met else "not enough" if met is False else "not to be told from so many histories, enough or not"
+    )
+    return f"{told}; that is {enough}.{f' {why([now], None)}' if isinstance(now, Simulated) else ''}"
 
 
 def _in_the_way(targets: Targets, answer: Answer) -> str:

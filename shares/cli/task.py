@@ -37,7 +37,7 @@ from shares.history.next import Turn, check_time, close, finish, speak, turn
 from shares.history.rounds import Course, Outcome, Part
 from shares.history.standing import Standing, standing
 from shares.history.steps import OwnSteps
-from shares.keys.dropping import costs, give_up
+from shares.keys.dropping import costs, give_up, spared
 from shares.keys.parts import course_of, part_of
 
 
@@ -149,9 +149,10 @@ def drop(
     descriptors: tuple[str, ...],
     as_json: bool,
 ) -> None:
-    """Give up the task of TASKDIR, which has failed or is not wanted: what you keep for it is erased, nonces included.
+    """Give up the task of TASKDIR, which has failed or is not wanted: what you keep for it is erased.
 
-    What you have said stays, and you say nothing more in it. Your journal tells of it.
+    Nonces that it has used are erased too; those that it only names stay. What you have said stays, and you say nothing
+    more in it. Your journal tells of it.
 
     \b
     Example:
@@ -167,9 +168,10 @@ def drop(
             where=path,
             hint="`shares task next` writes it into your folder",
         )
-    caution = costs(own)
+    caution, stays = costs(own), spared(own)
     if not yes:
         say(task_lines(folder))
+        say(prose(stays) if stays else [])
     if caution:
         say(prose(f"Caution: {caution}"))
     if not yes:
@@ -180,10 +182,18 @@ def drop(
     with opening((), passphrase_files, descriptors) as at_hand:
         given_up = give_up(own, at_hand.party(key), folder.record, found.failure if found else None)
     state = "dropped" if given_up else "finished"
-    members = {"done": True, "exit": 0, "state": state, **task_members(folder, found), "party": own.name}
+    members = {
+        "done": True,
+        "exit": 0,
+        "state": state,
+        **task_members(folder, found),
+        "party": own.name,
+        "nonces_stay": stays is not None,
+    }
     lines = [
         f"{'Given up by' if given_up else 'It had come to its end for'} {own.name}: {folder.task.words()}.",
         *prose("What was kept for it is erased, as far as the medium lets us; what you have said is kept."),
+        *(prose(stays) if stays else []),
     ]
     if given_up:
         lines += prose("Next: tell the others, who may be waiting for you.")

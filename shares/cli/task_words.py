@@ -40,8 +40,9 @@ FAILED = (
     "is named, if somebody is. `shares task drop` then erases what this machine keeps for it."
 )
 BORN_ELSEWHERE = (
-    "If another custodian says that the key is born: have them send the whole folder. With everybody's confirmation in "
-    "it, it is born here too, and `shares task next` says so."
+    "If another custodian says that the key is born: have them send their whole folder of the task, and run "
+    "`shares task next` on that. With everybody's confirmation in it, the key is born here too. Ask them all before "
+    "you give the task up: your key share would be lost."
 )
 
 
@@ -97,6 +98,7 @@ def standing_members(found: Standing) -> dict[str, Any]:
         "spoken": list(found.spoken),
         "awaited": list(found.awaited),
         "failure": {"by": failure.by, "what": failure.what} if failure else None,
+        "maybe_complete_elsewhere": failure is not None and found.ending,
         "problems": [
             {"kind": one.kind, "sender": one.sender, "what": one.what, "stops": one.stops} for one in found.problems
         ],
@@ -189,7 +191,7 @@ def failure_lines(found: Standing) -> Iterator[str]:
         return
     yield from prose(f"{failure.words()[:1].upper()}{failure.words()[1:]}.")
     yield from prose(FAILED)
-    if isinstance(found.inbox.task.work, Joining) and found.round >= len(found.names) - 1:
+    if isinstance(found.inbox.task.work, Joining) and found.ending:
         yield from prose(BORN_ELSEWHERE)
 
 

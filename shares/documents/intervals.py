@@ -36,7 +36,7 @@ def parse_duration(text: str) -> timedelta:
     """
     form = re.fullmatch(r"([1-9][0-9]{0,3})(min|h|d)", text)
     if form is None:
-        raise ParameterError('should be a duration like "90min", "4h" or "2d"')
+        raise ParameterError('should be a duration like "90min", "4h" or "2d": 1 to 9999 and min, h or d')
     return int(form[1]) * UNITS[form[2]]
 
 
@@ -54,7 +54,9 @@ def parse_interval(text: str) -> timedelta:
     """
     form = re.fullmatch(r"([1-9][0-9]{0,3})([dwy])", text)
     if form is None:
-        raise ParameterError('should be an interval of a day or more, like "90d", "26w" or "1y"')
+        raise ParameterError(
+            'should be an interval of a day or more, like "90d", "26w" or "1y": 1 to 9999 and d, w or y'
+        )
     return timedelta(days=int(form[1]) * DAYS[form[2]])
 
 

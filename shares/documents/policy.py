@@ -15,6 +15,7 @@ import hashlib
 import re
 import tomllib
 import unicodedata
+from codecs import BOM_UTF8
 from collections.abc import Iterator
 from datetime import timedelta
 from typing import Annotated, ClassVar, Literal, Self
@@ -172,7 +173,7 @@ class Policy(Document):
             policy._text = bytes(data)
             return policy
         # Raised outside the handler: a ValidationError carries its input, and would travel along as the context.
-        counting = "; places in a list are counted from 0" if "[" in problem else ""
+        counting = "; places in a list are counted from 0" if re.search(r"\[\d", problem) else ""
         raise DocumentError(problem, where=where, hint=f"FORMAT.md, section 12, says what a policy holds{counting}")
 
     @property
@@ -199,7 +200,7 @@ class Policy(Document):
             try:
                 self._rule = _tree(self, "rule", self.root)
             except ParameterError as error:
-                problem = str(error)
+                problem = f"{error.where}: {error.what}" + (f"; {error.hint}" if error.hint else "")
         if problem:
             raise PydanticCustomError("shares_policy", "{problem}", {"problem": problem})
         return self
@@ -253,10 +254,10 @@ class Policy(Document):
             for i, table in enumerate(tables):
                 path = f"{key}[{i}].name"
                 if folded(table.name) not in known:
-                    yield f"{path} is what no custodian has as {label}"
+                    yield f"{path} is the {label} of no custodian; write it as theirs, or leave the table out"
                 first = places.setdefault(folded(table.name), path)
                 if first != path:
-                    yield f"{path} is the same as {first} (case, width and spacing do not count)"
+                    yield f"{path} is the same as {first} (case, width and spacing do not count); keep one table"
 
 
 def _names_unknown(path: str, node: PolicyNode, known: dict[str, None]) -> Iterator[str]:
@@ -331,21 +332,20 @@ def _tables(data: bytes, where: str | None) -> dict[str, object]:
             raise DocumentError(
                 f"line {number} holds more than {_MAX_DOTS} dots", where=where, hint="no policy needs them"
             )
+    if data.startswith(BOM_UTF8):
+        raise DocumentError("it begins with a byte order mark", where=where, hint="save it as UTF-8 without one")
+    hint = "look there and just before: a quote or bracket may be missing, or a key or table stand twice"
     try:
         return {key: _with_tuples(value) for key, value in tomllib.loads(data.decode("utf-8")).items()}
     except UnicodeDecodeError:
-        problem = "it is not UTF-8 text"
+        problem, hint = "it is not UTF-8 text", "a policy is a text file in TOML: save it as UTF-8"
     except RecursionError:
-        problem = "it is nested too deeply"
+        problem, hint = "it is nested too deeply", "no policy needs that: brackets may be left open"
     except ValueError as error:
         # The parser's own words may repeat what stands there, so only the place is taken from them.
         place = re.search(r"\(at (line \d+, column \d+|end of document)\)$", str(error))
         problem = f"it is not TOML: {place[1] if place else 'a number is out of range'}"
-    raise DocumentError(
-        problem,
-        where=where,
-        hint="look there and just before: a quote or bracket may be missing, or a key or table stand twice",
-    )
+    raise DocumentError(problem, where=where, hint=hint)
 
 
 def _with_tuples(value: object) -> object:
@@ -359,12 +359,17 @@ _PLAIN_WORDS = {
     "missing": "is missing",
     "extra_forbidden": "is no key that a policy has at this place",
     "tuple_type": "should be a list in brackets",
-    "model_type": "should be a table",
-    "dict_type": "should be a table",
+    "model_type": "should be one table",
+    "dict_type": "should be one table",
+    "int_type": "should be a whole number, without quotes",
+    "bool_type": "should be true or false, without quotes",
     "string_type": "should be text in quotes",
     "too_short": "should not be empty",
     "too_long": "is too long",
 }
+
+
+_REPEATED = (("custodian",), ("site",), ("line",), ("medium",))
 
 
 def _first_problem(error: ValidationError, tables: dict[str, object]) -> str:
@@ -375,4 +380,7 @@ def _first_problem(error: ValidationError, tables: dict[str, object]) -> str:
         return details["msg"]
     said = details["msg"].removeprefix("Input ")
     said = f"is not allowed: {said}" if details["type"] == "shares_text" else said
-    return f"{_place(details['loc'], tables)} {_PLAIN_WORDS.get(details['type'], said)}"
+    said = _PLAIN_WORDS.get(details["type"], said)
+    if details["type"] == "tuple_type" and details["loc"] in _REPEATED:
+        said = f"should be a table for each, headed [[{details['loc'][0]}]]"
+    return f"{_place(details['loc'], tables)} {said}"

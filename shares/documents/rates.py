@@ -41,7 +41,9 @@ def parse_rate(text: str) -> float:
     """
     form = re.fullmatch(_NUMBER + r" ?(%?) ?/ ?y", text)
     if form is None:
-        raise ParameterError('should be a rate with its unit, like "4 %/y" or "0.04/y"')
+        raise ParameterError(
+            'should be a rate with its unit, like "4 %/y" or "0.04/y": in plain digits, from 0 to below 100 %/y'
+        )
     rate = float(form[1]) / (100 if form[2] else 1)
     if rate >= 1:
         raise ParameterError("should be below 100 %/y: it is the chance that this happens within a year")
@@ -65,7 +67,7 @@ def parse_portion(text: str) -> float:
     """
     form = re.fullmatch(_NUMBER + " ?%", text)
     if form is None:
-        raise ParameterError('should be a percentage, like "10 %"')
+        raise ParameterError('should be a percentage, like "10 %": in plain digits, from 0 to 100 %')
     portion = float(form[1]) / 100
     if portion > 1:
         raise ParameterError("should be at most 100 %")

@@ -1,7 +1,7 @@
 """The margin over time as a chart: the places of its line, its marks, and the words that say the same.
 
 Source: W3C, "Scalable Vector Graphics (SVG) 2", sec. 9 (paths), sec. 5.7 (title and desc).
-May import: shares.evidence.audited, .calendar.
+May import: shares.paper.scale, .audited, .calendar.
 Secret: nothing. Confidential: how near a set is to its end. Public: nothing.
 Does not: draw: the page's template does, from plain numbers.
 """
@@ -15,6 +15,7 @@ from typing import Final
 
 from shares.evidence.audited import MarginSince
 from shares.evidence.calendar import day
+from shares.paper.scale import Tick
 
 WIDTH: Final = 360
 HEIGHT: Final = 170
@@ -23,14 +24,6 @@ LEFT, RIGHT, TOP, BOTTOM = 28, 336, 14, 146
 _MOST_DATES: Final = 5
 _MOST_LINES: Final = 8
 _MONTHS_BETWEEN: Final = (1, 2, 3, 6, 12, 24, 60, 120)
-
-
-@dataclass(frozen=True, slots=True)
-class Tick:
-    """A mark on an axis: where, and what it says."""
-
-    at: float
-    text: str
 
 
 @dataclass(frozen=True, slots=True)

@@ -201,15 +201,17 @@ def close(own: OwnSteps) -> None:
         own.close()
 
 
-def drop(own: OwnSteps, event: Event, key: OpenPartyKey, erase: Callable[[], None]) -> bool:
+def drop(own: OwnSteps, told: Callable[[], Event | None], key: OpenPartyKey, erase: Callable[[], None]) -> bool:
     """Give a task up for one party: that it is; journal; then what its purpose keeps elsewhere and steps are erased.
 
     From the first of these on it says nothing more, wherever a run is stopped. One that is repeated does what is
-    missing. Of a task that has come to its end only what a run that was stopped there has left is erased.
+    missing. Of a task that has come to its end only what a run that was stopped there has left is erased; by what the
+    journal says it may have, although the run was stopped before its steps said so.
 
     Args:
         own: the party's steps.
-        event: for its journal.
+        told: returns what its journal is to say, once no other run is at work; None where it says that the task has
+            come to its end.
         key: its party key.
         erase: erases what lies outside the steps; may be called again.
 
@@ -222,15 +224,15 @@ def drop(own: OwnSteps, event: Event, key: OpenPartyKey, erase: Callable[[], Non
     """
     with own.alone():
         done = own.done()
-        ended = done is not None and not done.given_up
-        if ended and not own.remains():
+        if done is not None and not done.given_up and not own.remains():
             raise ParameterError(f"the task is over for {own.name}", hint="nothing is left to be erased")
-        if not ended:
+        event = told() if done is None or done.given_up else None
+        if event is not None:
             own.end(given_up=True)
             _enter(own.mine, event, key)
             erase()
         own.close()
-    return not ended
+    return event is not None
 
 
 def _say(round: int, earlier: Inbox, course: Course, part: Part, own: OwnSteps, key: OpenPartyKey) -> TaskMessage:

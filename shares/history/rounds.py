@@ -139,6 +139,17 @@ class Course(Protocol):
             inbox: with all earlier rounds, and no more.
         """
 
+    def fault(self, message: TaskMessage, inbox: Inbox) -> Failure | None:
+        """Say whose doing a message of the last round that does not count proves the end to be; None where nobody's.
+
+        It is judged by itself. Where it answers other messages than lie here, somebody else may have shown them to its
+        sender: then that alone counts against it which is wrong whatever they are.
+
+        Args:
+            message: signed by a speaker of the last round.
+            inbox: with all earlier rounds, and no more.
+        """
+
     def spares(self, names: Collection[str]) -> bool:
         """Say whether the last round can do without what these of its speakers say there."""
 

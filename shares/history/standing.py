@@ -16,6 +16,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Final, TypeAlias
 
+from shares.documents.task import Task
 from shares.documents.task_box import is_box_key
 from shares.documents.task_message import OpeningKey, TaskMessage
 from shares.history.exchange import Problem, Reading
@@ -40,6 +41,8 @@ class Standing:
         failure: why the task cannot be finished, whoever waits for whom; None while it can.
         problems: what is wrong with single messages or files.
         doubled: of whoever has said several things in the last round that could each count, all of them.
+        ending: whether anybody has said something in the last round, be it that it does not count: where the task has
+            failed here, others may have seen it complete.
     """
 
     round: int
@@ -50,6 +53,7 @@ class Standing:
     failure: Failure | None
     problems: Sequence[Problem]
     doubled: _Said
+    ending: bool
 
     @property
     def complete(self) -> bool:
@@ -72,11 +76,12 @@ def standing(course: Course, reading: Reading) -> Standing:
         course: of the task.
         reading: what its folder holds.
     """
-    found = _Walk(course, reading, settles=False).to_the_end()
+    found = _Walk(course, reading).to_the_end()
     if found.failure is not None and any(problem.kind == "conflict" for problem in reading.problems):
-        settled = _Walk(course, reading, settles=True).to_the_end()
-        if settled.complete:
-            return settled
+        for answered in _answered(course, reading):
+            settled = _Walk(course, reading, answered).to_the_end()
+            if settled.complete:
+                return settled
     return found
 
 
@@ -86,14 +91,13 @@ class _Walk:
     Args:
         course: of the task.
         reading: what its folder holds.
-        settles: whether to choose, where a party has said several things before the last round, what was answered.
+        answered: what counts before the last round of those who have said several things there; nothing by default.
     """
 
-    def __init__(self, course: Course, reading: Reading, *, settles: bool) -> None:
-        self.course, self.reading, self.settles = course, reading, settles
+    def __init__(self, course: Course, reading: Reading, answered: Inbox | None = None) -> None:
+        self.course, self.reading, self.answered = course, reading, answered
         self.task = reading.inbox.task
-        # In an order that is the same for everybody, so that of several messages that hold all take the same.
-        self.signed = sorted(reading.signed, key=TaskMessage.digest)
+        self.signed = _signed(reading)
         self.last = len(course.rounds) - 1
         self.done = Inbox(self.task, (), reading.inbox.content)
         self.problems = list(reading.problems)
@@ -113,17 +117,18 @@ class _Walk:
         if self.failure is None:
             self.failure = self._ahead(round + 1)
         for late in range(self.last + 1, 1 + max((one.round for one in self.signed), default=0)):
-            self.problems += [_out_of_turn(late, name) for name in self._said(late)]
+            self.problems += [_out_of_turn(late, name) for name in _said(self.task, self.signed, late)]
         spoken = tuple(self.done.of(round)) if self.awaited else ()
         names, awaited = tuple(course.rounds), tuple(self.awaited)
         problems = tuple(
             dataclasses.replace(problem, stops=problem.stops and self.failure is not None) for problem in self.problems
         )
-        return Standing(round, names, self.done, spoken, awaited, self.failure, problems, self.doubled)
+        ending = any(one.round == self.last for one in self.signed)
+        return Standing(round, names, self.done, spoken, awaited, self.failure, problems, self.doubled, ending)
 
     def _enter(self, round: int) -> None:
         """Take the messages of a round that count; say who is awaited in it, and what is wrong."""
-        said, seen = self._said(round), self.done.seen(round)
+        said, seen = _said(self.task, self.signed, round), self.done.seen(round)
         speakers = self.course.speakers(round, self.done)
         self.problems += [_out_of_turn(round, name) for name in said if name not in speakers]
         fitting = {
@@ -131,7 +136,7 @@ class _Walk:
             for name in speakers
             if name in said
         }
-        counted = dict(self._chosen(round, said, fitting))
+        before, counted = self.done, dict(self._chosen(round, said, fitting))
         stopped = [name for name in fitting if name not in counted]
         for name in stopped:
             if len(said[name]) == 1 and said[name][0].seen != seen:
@@ -142,7 +147,8 @@ class _Walk:
         self.done = Inbox(self.task, (*self.done.rounds, counted), self.done.content)
         self.awaited = [name for name in speakers if name not in said]
         if stopped and not (round == self.last and self.course.spares(stopped)):
-            self.failure = self._stop(round, stopped[0])
+            proved = next(self._proved(round, stopped, said, before), None)
+            self.failure = proved or self._stop(round, stopped[0])
 
     def _chosen(self, round: int, said: _Said, fitting: _Said) -> Iterator[tuple[str, TaskMessage]]:
         """Yield what counts of each party in a round, where anything does."""
@@ -154,39 +160,22 @@ class _Walk:
                 if good:
                     self.doubled[name] = good
                     yield name, good[0]
-        elif self.settles and several:
-            yield from self._answered(round, fitting, several)
-
-    def _answered(self, round: int, fitting: _Said, several: _Said) -> Iterator[tuple[str, TaskMessage]]:
-        """Yield, of those who have said several things, what most parties have answered; nothing where nobody has.
-
-        A complete task has one such choice: every party has answered it, and one that is honest answers once.
-        """
-        answers: dict[bytes, set[str]] = {}
-        for message in self.signed:
-            if message.round > round:
-                answers.setdefault(message.seen, set()).add(message.sender)
-        before = [one.digest() for earlier in range(round) for one in self.done.of(earlier).values()]
-        names = [name for name in self.task.names if fitting.get(name)]
-        options = [[(one, one.digest()) for one in fitting[name]] for name in names]
-        found: tuple[int, tuple[tuple[TaskMessage, bytes], ...]] = (0, ())
-        for choice in itertools.islice(itertools.product(*options), _MOST_CHOICES):
-            seen = seen_of(self.task, [*before, *(digest for _, digest in choice)])
-            found = max(found, (len(answers.get(seen, ())), choice), key=lambda one: one[0])
-        yield from ((name, one) for name, (one, _) in zip(names, found[1], strict=False) if name in several)
-
-    def _said(self, round: int) -> _Said:
-        """Return everything that was signed in a round, by who has, in the order of the task's parties."""
-        found: dict[str, list[TaskMessage]] = {}
-        for message in self.signed:
-            if message.round == round:
-                found.setdefault(message.sender, []).append(message)
-        return {name: found[name] for name in self.task.names if name in found}
+        elif self.answered is not None:
+            yield from ((name, self.answered.of(round)[name]) for name in several)
 
     def _ahead(self, round: int) -> Failure | None:
         """Say what stops in rounds that the walk has not come to, the last one apart, which is judged by the course."""
         found = next((one for one in self.problems if one.stops and round <= (one.round or 0) < self.last), None)
         return None if found is None else _because(found)
+
+    def _proved(self, round: int, stopped: Sequence[str], said: _Said, before: Inbox) -> Iterator[Failure]:
+        """Yield whose doing single messages of a round prove its end to be, whatever was said beside them."""
+        for message in (one for name in stopped for one in said[name]):
+            fault = self.course.fault(message, before) if round == self.last else None
+            if round == 0 and message.seen != before.seen(0):
+                yield Failure(message.sender, _other_view(0, message.sender).what)
+            elif fault is not None and fault.by is not None:
+                yield fault
 
     def _stop(self, round: int, name: str) -> Failure:
         return next(_because(one) for one in self.problems if one.stops and (one.round, one.sender) == (round, name))
@@ -200,6 +189,55 @@ class _Walk:
             one if (one.round, one.sender) != (round, name) else dataclasses.replace(one, what=what, stops=False)
             for one in self.problems
         ]
+
+
+def _signed(reading: Reading) -> Sequence[TaskMessage]:
+    """Return all that was signed, in one order for everybody: of several messages that hold all take the same."""
+    return sorted(reading.signed, key=TaskMessage.digest)
+
+
+def _said(task: Task, signed: Sequence[TaskMessage], round: int) -> _Said:
+    """Return everything that was signed in a round, by who has, in the order of the task's parties."""
+    found: dict[str, list[TaskMessage]] = {}
+    for message in signed:
+        if message.round == round:
+            found.setdefault(message.sender, []).append(message)
+    return {name: found[name] for name in task.names if name in found}
+
+
+def _answered(course: Course, reading: Reading) -> Iterator[Inbox]:
+    """Yield the ways through all rounds but the last on which each is answered; what most have answered comes first.
+
+    A complete task has one such way: every party has answered it, and one that is honest answers once. What cheats have
+    answered among themselves leads on until an honest party has to speak, who has answered something else. What the
+    messages hold is not looked at: a walk along each way does that.
+    """
+    task, signed = reading.inbox.task, [(one.digest(), one) for one in _signed(reading)]
+    answers: dict[bytes, set[str]] = {}
+    for _, message in signed:
+        answers.setdefault(message.seen, set()).add(message.sender)
+
+    def further(done: Inbox, digests: Sequence[bytes]) -> Iterator[Inbox]:
+        round, seen = len(done.rounds), seen_of(task, digests)
+        if round == len(course.rounds) - 1:
+            yield done
+            return
+        speakers = course.speakers(round, done)
+        names = [name for name in task.names if name in speakers]
+        said = [(digest, one) for digest, one in signed if (one.round, one.seen) == (round, seen)]
+        options = [
+            [pair for pair in said if pair[1].sender == name and not task.is_late(pair[1].created)] for name in names
+        ]
+        choices = []
+        for choice in itertools.islice(itertools.product(*options), _MOST_CHOICES):
+            after = (*digests, *(digest for digest, _ in choice))
+            choices.append((len(answers.get(seen_of(task, after), ())), after, [one for _, one in choice]))
+        for count, after, messages in sorted(choices, key=lambda one: -one[0]):
+            if count:
+                counted = dict(zip(names, messages, strict=True))
+                yield from further(Inbox(task, (*done.rounds, counted), done.content), after)
+
+    return further(Inbox(task, (), reading.inbox.content), ())
 
 
 def _because(problem: Problem) -> Failure:
@@ -223,11 +261,10 @@ def _out_of_turn(round: int, sender: str) -> Problem:
 
 
 def _other_view(round: int, sender: str) -> Problem:
-    return Problem(
-        "other-view",
+    what = (
         f"{sender} answered in round {round} to other messages than are here: somebody has sent different messages to "
-        "different people, or one was exchanged",
-        sender,
-        stops=True,
-        round=round,
+        "different people, or one was exchanged"
     )
+    if round == 0:  # Nobody can have sent it anything.
+        what = f"{sender} says in round 0 that it answers messages, and none come before it"
+    return Problem("other-view", what, sender, stops=True, round=round)

@@ -1,7 +1,7 @@
 """What a task is about, found in what lies beside it, for whoever is to take part or only looks at it.
 
 Source: FORMAT_KEYS.md, sec. 23; what each kind of content says is told by the module of that kind.
-May import: shares.errors, shares.documents, .content, .description, .opening, .signing.
+May import: shares.errors, shares.documents, .content, .description, .forms, .opening.
 Secret: nothing. Confidential: what is signed or opened. Public: the rest.
 Does not: ask anybody, or judge the task; its course does.
 """
@@ -13,8 +13,8 @@ from shares.documents.task import Joining, Opening, Task
 from shares.errors import SharesError
 from shares.keys.content import described
 from shares.keys.description import Description, in_groups
+from shares.keys.forms import signable
 from shares.keys.opening import cautions_of
-from shares.keys.signing import signable
 
 
 def about(

@@ -4,7 +4,7 @@ A certificate is checked against its issuer's, and a revocation list against the
 every signer alike: so both lie beside the task, which names their digests.
 
 Source: FORMAT_KEYS.md, sec. 23; RFC 5280, sec. 5.2.3 and 6.1.
-May import: shares.errors, shares.clock, shares.documents.key_event, .certificate_parts, .certificates, .content,
+May import: shares.errors, shares.clock, shares.documents, .certificate_parts, .certificates, .content,
 .description, .public_key, .revocation, .ssh_signature.
 Secret: nothing. Confidential: what is signed. Public: the rest.
 Does not: sign, or know who does.
@@ -18,8 +18,9 @@ from dataclasses import dataclass
 from cryptography.hazmat.primitives.serialization import Encoding
 
 from shares import clock
-from shares.documents.key_event import Form
-from shares.errors import ParameterError
+from shares.documents.key_event import Content, Form
+from shares.documents.task import Signing, Task
+from shares.errors import ParameterError, VerificationError
 from shares.keys import certificate_parts as parts
 from shares.keys import certificates, revocation, ssh_signature
 from shares.keys.content import described, refuse_as_plain
@@ -136,3 +137,38 @@ class Signable:
         number, date = revocation.number_of(before), clock.to_text(before.last_update_utc)
         lines.append(f"checked by the list before, number {number} of {date}: nothing that it revokes is left out")
         return f"See that no list after number {number} has been issued."
+
+
+def work_of(task: Task) -> Signing:
+    """Return the task's work.
+
+    Raises:
+        ParameterError: it is not to sign.
+    """
+    if not isinstance(task.work, Signing):
+        raise ParameterError("the task is not to sign")
+    return task.work
+
+
+def signable(task: Task, content: bytes | None, issuer: bytes | None, earlier: bytes | None) -> Signable:
+    """Return what a task is to sign, once it is known to be what the task names.
+
+    Args:
+        task: to sign.
+        content: what lies beside it; for a certificate or a revocation list its body.
+        issuer, earlier: the certificate above and the revocation list before, where the task names them.
+
+    Raises:
+        VerificationError: one of them is missing, or not what the task names.
+    """
+    work = work_of(task)
+    for wanted, found, what in (
+        (work.content, content, "what is to be signed"),
+        (work.issuer, issuer, "the certificate of its issuer"),
+        (work.earlier, earlier, "the earlier revocation list"),
+    ):
+        if wanted is not None and found is None:
+            raise VerificationError(f"{what} is not beside the task", hint="have it sent again")
+        if (None if found is None else Content(size=len(found), digest=hashlib.sha256(found).digest())) != wanted:
+            raise VerificationError(f"{what} is not what the task names", hint="have it sent again")
+    return Signable(content or b"", work.form, work.namespace, issuer, earlier)

@@ -61,6 +61,7 @@ from shares.keys.verdict import (
     commitments_of,
     complaints,
     confirms,
+    fault,
     index_of,
     joining,
     proof_context,
@@ -111,6 +112,10 @@ class JointCourse:
         Who has signed it holds a share, or says so; what else it told somebody takes the key from nobody.
         """
         return confirms(message, inbox)
+
+    def fault(self, message: TaskMessage, inbox: Inbox) -> Failure | None:
+        """Say whom an accusation or a confirmation proves to have broken the rules."""
+        return fault(message, inbox)
 
     def spares(self, names: Collection[str]) -> bool:
         """Say that everybody has to confirm."""

@@ -92,6 +92,12 @@ class OpeningCourse:
         """Say whether a partial result is in it. Whether it holds, the receiver alone can tell, and looks at each."""
         return isinstance(message.body, Partial) and message.box_for(self.work.receiver) is not None
 
+    def fault(self, message: TaskMessage, inbox: Inbox) -> Failure | None:
+        """Say whether a custodian has given no partial result at all. Of one that was given the receiver alone can."""
+        if self.holds(message, inbox):
+            return None
+        return Failure(message.sender, f"{message.sender} says something else than a partial result for the receiver")
+
     def spares(self, names: Collection[str]) -> bool:
         """Say whether without these custodians there are still as many as are needed."""
         return len(set(self.custodians) - set(names)) >= self.record.need

@@ -18,18 +18,18 @@ from typing import Final
 
 from shares.documents.base import sha256
 from shares.documents.event import Event
-from shares.documents.key_event import Approved, Content, TaskFinished
+from shares.documents.key_event import Approved, TaskFinished
 from shares.documents.key_record import KeyRecord
 from shares.documents.key_share import KeyShare
 from shares.documents.party import OpenPartyKey
-from shares.documents.task import Signing, Task
+from shares.documents.task import Task
 from shares.documents.task_message import Commitment, SignatureShare, TaskMessage
-from shares.errors import ParameterError, SharesError, VerificationError
+from shares.errors import SharesError, VerificationError
 from shares.group.edwards25519 import Point
 from shares.history.rounds import Failure, Inbox, Outcome, Received, Said
 from shares.keys import frost
 from shares.keys.description import Description
-from shares.keys.forms import Signable
+from shares.keys.forms import Signable, signable, work_of
 from shares.keys.nonces import NonceStore
 from shares.keys.own_share import own_share
 from shares.memory import Secret
@@ -82,7 +82,7 @@ class SigningCourse:
             wanted = Commitment if about == COMMITMENTS else SignatureShare
             for name, message in inbox.of(number).items():
                 if not isinstance(message.body, wanted):
-                    return Failure(name, f"{name} says something else than {about}")
+                    return _misplaced(name, about)
         if len(inbox.of(self.last)) < len(self.task.names):
             return None
         signed, wrong = self._aggregated(inbox)
@@ -97,6 +97,15 @@ class SigningCourse:
         return isinstance(body, SignatureShare) and frost.verify_signature_share(
             index, public, body.share, self.agreed(inbox)
         )
+
+    def fault(self, message: TaskMessage, inbox: Inbox) -> Failure | None:
+        """Say whether somebody says no share, or one that does not verify for the commitments that lie here."""
+        name = message.sender
+        if not isinstance(message.body, SignatureShare):
+            return _misplaced(name, SHARES)
+        if message.seen != inbox.seen(self.last) or self.holds(message, inbox):
+            return None
+        return Failure(name, _misbehaved((name,)))
 
     def spares(self, names: Collection[str]) -> bool:
         """Say that everybody has to sign whom the task names."""
@@ -312,17 +321,6 @@ class SigningPart:
         )
 
 
-def work_of(task: Task) -> Signing:
-    """Return the task's work.
-
-    Raises:
-        ParameterError: it is not to sign.
-    """
-    if not isinstance(task.work, Signing):
-        raise ParameterError("the task is not to sign")
-    return task.work
-
-
 def check_signers(task: Task, record: KeyRecord) -> None:
     """Check that a task is for this key and epoch, and that those who sign are custodians of it, and enough.
 
@@ -342,30 +340,6 @@ def check_signers(task: Task, record: KeyRecord) -> None:
             )
     if len(task.parties) < record.need:
         raise VerificationError(f"{record.need} signers are needed, and the task names {len(task.parties)}")
-
-
-def signable(task: Task, content: bytes | None, issuer: bytes | None, earlier: bytes | None) -> Signable:
-    """Return what a task is to sign, once it is known to be what the task names.
-
-    Args:
-        task: to sign.
-        content: what lies beside it; for a certificate or a revocation list its body.
-        issuer, earlier: as for ``SigningCourse``.
-
-    Raises:
-        VerificationError: one of them is missing, or not what the task names.
-    """
-    work = work_of(task)
-    for wanted, found, what in (
-        (work.content, content, "what is to be signed"),
-        (work.issuer, issuer, "the certificate of its issuer"),
-        (work.earlier, earlier, "the earlier revocation list"),
-    ):
-        if wanted is not None and found is None:
-            raise VerificationError(f"{what} is not beside the task", hint="have it sent again")
-        if (None if found is None else Content(size=len(found), digest=hashlib.sha256(found).digest())) != wanted:
-            raise VerificationError(f"{what} is not what the task names", hint="have it sent again")
-    return Signable(content or b"", work.form, work.namespace, issuer, earlier)
 
 
 def finish_signing(
@@ -395,3 +369,7 @@ def _misbehaved(names: Sequence[str]) -> str:
     if not names:  # With a record that agrees with itself this does not happen.
         return "the signature does not verify, though every share holds: the record is not that of one key"
     return f"the signature does not verify, and the share of {' and that of '.join(names)} is wrong"
+
+
+def _misplaced(name: str, about: str) -> Failure:
+    return Failure(name, f"{name} says something else than {about}")

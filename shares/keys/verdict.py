@@ -144,9 +144,13 @@ def round_failure(round: int, inbox: Inbox) -> Failure | None:
             # Told apart from everything else first: whoever was shown other messages is not to blame for what they say.
             return Failure(None, f"{name} has seen other messages of earlier rounds than lie here")
         if not isinstance(message.body, _SAID[round]):
-            return Failure(name, f"{name} says something that does not belong into round {round}")
+            return _misplaced(name, round)
     judge = _JUDGES.get(round)
     return next(judge(inbox), None) if judge else None
+
+
+def _misplaced(name: str, round: int) -> Failure:
+    return Failure(name, f"{name} says something that does not belong into round {round}")
 
 
 def _lengths(bodies: Mapping[str, Dealing | Reveal], need: int) -> Iterator[Failure]:
@@ -208,7 +212,7 @@ def _of_confirmations(inbox: Inbox) -> Iterator[Failure]:
         yield _judged(inbox, name, accusation)
     for name, confirmation in said(inbox, CONFIRMATIONS, Confirmation).items():
         if not _signs(confirmation, record, record.holder(name).card):
-            yield Failure(name, f"{name} has not signed the record that comes of these messages")
+            yield _signs_otherwise(name)
 
 
 def confirms(message: TaskMessage, inbox: Inbox) -> bool:
@@ -221,6 +225,27 @@ def confirms(message: TaskMessage, inbox: Inbox) -> bool:
     record = record_of(inbox)
     body = message.body
     return isinstance(body, Confirmation) and _signs(body, record, record.holder(message.sender).card)
+
+
+def fault(message: TaskMessage, inbox: Inbox) -> Failure | None:
+    """Say whom a message of the last round proves to have broken the rules, whatever its sender says besides.
+
+    Of one that answers other messages that is so where it is wrong whatever these are.
+
+    Args:
+        message: by a party of the task.
+        inbox: with every party's commitments in the open, which are fine.
+    """
+    name, body = message.sender, message.body
+    if not isinstance(body, _SAID[CONFIRMATIONS]):
+        return _misplaced(name, CONFIRMATIONS)
+    if isinstance(body, Accusation) and body.against not in set(inbox.task.names) - {name}:
+        return _accuses_nobody(name)
+    if isinstance(body, Confirmation) and body.signature.card != record_of(inbox).holder(name).card:
+        return _signs_otherwise(name)
+    if message.seen != inbox.seen(CONFIRMATIONS):
+        return None
+    return round_failure(CONFIRMATIONS, Inbox(inbox.task, (*inbox.rounds, {name: message}), inbox.content))
 
 
 def _signs(confirmation: Confirmation, record: KeyRecord, card: PartyCard) -> bool:
@@ -237,7 +262,7 @@ def _judged(inbox: Inbox, by: str, accusation: Accusation) -> Failure:
     share, blind = accusation.share, accusation.blind
     reveal = said(inbox, REVEALS, Reveal).get(against)
     if reveal is None or against == by:
-        return Failure(by, f"{by} accuses itself, or somebody who takes no part")
+        return _accuses_nobody(by)
     if share is None or blind is None:
         if not is_possessed(reveal.commitments[0], reveal.proof, index_of(task, against), proof_context(task, against)):
             return Failure(against, f"{against} has not proved that it knows what it contributes")
@@ -248,6 +273,14 @@ def _judged(inbox: Inbox, by: str, accusation: Accusation) -> Failure:
         if dealt and not is_revealed(share, reveal.commitments, x, need):
             return Failure(against, f"{against} has revealed other commitments than those it has dealt by to {by}")
     return Failure(by, f"{by} accuses {against}, and what it shows proves nothing")
+
+
+def _accuses_nobody(name: str) -> Failure:
+    return Failure(name, f"{name} accuses itself, or somebody who takes no part")
+
+
+def _signs_otherwise(name: str) -> Failure:
+    return Failure(name, f"{name} has not signed the record that comes of these messages")
 
 
 _JUDGES: Final[Mapping[int, Callable[[Inbox], Iterator[Failure]]]] = {

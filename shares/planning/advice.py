@@ -1,33 +1,36 @@
 """What to change first: every single change that a dealer can make, what it does to the odds, and plain advice.
 
-The changes tried are one more custodian, each threshold up or down by one, attestations and refreshes twice as often
-(or yearly, where there are none), and a site of its own for a share. Custodians who can change places without changing
-anything are tried once. The order is by what a change takes off loss and exposure together, which are counted alike:
-where one of them matters more, go by its column.
+The order is by what a change takes off loss and exposure together, which are counted alike: where one of them matters
+more, go by its column. Where odds are too much work for an exact answer they are simulated. Then causes and changes are
+worked out on request alone, and those whose effect cannot be told from what chance makes are left out.
 
 Source: this project's own list; Blakley 1979 (from memory: shares lost and shares given away are two budgets, so nearly
 every change buys one with the other).
-May import: shares.errors, shares.sharing.rule, .changes, .model, .numbers, .odds.
+May import: .model, .numbers, .odds, .reckoned, .simulate, .single.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: know what a change costs, try two at once (``targets`` does), or say what odds are good enough.
 """
 
 from __future__ import annotations
 
-from collections import Counter
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterator, Sequence
+from dataclasses import dataclass
+from itertools import count
+from typing import TypeAlias
 
-from shares.errors import ParameterError
 from shares.planning import numbers
-from shares.planning.changes import attesting_every, moved, refreshing_every, with_another
-from shares.planning.model import DAYS_OF_A_YEAR, Model
-from shares.planning.odds import Contribution, Odds, contributions, odds
-from shares.sharing.rule import Rule
+from shares.planning.model import Model
+from shares.planning.odds import Contribution, Odds, contributions, odds, without_each
+from shares.planning.reckoned import HISTORIES, SEED, Reckoned, briefly, fall, instead, value, words
+from shares.planning.simulate import EXTRA, Simulated
+from shares.planning.single import Single, single_changes
 
 _MOST_CUSTODIANS = 24
 _MOST_WORK = 50_000
 """``_work`` up to which causes and changes are worked out unasked: half a second on a slow machine."""
+
+Told: TypeAlias = Callable[[int, int | None], None]
+"""Called with what is done and what there is to do."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,20 +40,21 @@ class Change:
     Attributes:
         kind: "custodian", "threshold", "attest", "refresh" or "site".
         words: what is to be done, as in "to attest every 45 days".
-        odds: after the change.
-        loss, exposure: by how much these fall; below 0 where they rise.
+        odds: after the change; simulated where those of the policy are.
+        loss, exposure: by how much these fall; below 0 where they rise; None where that cannot be told from what chance
+            makes.
     """
 
     kind: str
     words: str
-    odds: Odds
-    loss: float
-    exposure: float
+    odds: Reckoned
+    loss: float | None
+    exposure: float | None
 
     @property
     def gain(self) -> float:
-        """By how much loss and exposure fall together."""
-        return self.loss + self.exposure
+        """By how much loss and exposure fall together, as far as can be told."""
+        return (self.loss or 0.0) + (self.exposure or 0.0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,20 +64,37 @@ class Outlook:
     Attributes:
         years: over which the odds are.
         odds: None where they are too much work for an exact answer.
+        simulated: the odds once more; None where they are exact and nobody asked for it, or numpy is not installed.
         causes: what each cause adds; None where that was not worked out.
         changes: single changes, the best first; None where that was not worked out.
         advice: three sentences.
+        causes_left_out, changes_left_out: how many had no effect that could be told from what chance makes.
     """
 
     years: float
     odds: Odds | None
+    simulated: Simulated | None
     causes: tuple[Contribution, ...] | None
     changes: tuple[Change, ...] | None
     advice: tuple[str, ...]
+    causes_left_out: int = 0
+    changes_left_out: int = 0
+
+    @property
+    def now(self) -> Reckoned | None:
+        """The odds, exact where they can be; None where numpy is needed for them and not installed."""
+        return self.odds or self.simulated
 
 
 def outlook(
-    model: Model, years: float, *, full: bool = False, progress: Callable[[int, int | None], None] | None = None
+    model: Model,
+    years: float,
+    *,
+    full: bool = False,
+    histories: int | None = None,
+    seed: int = SEED,
+    progress: Told | None = None,
+    drawn: Told | None = None,
 ) -> Outlook:
     """Work out the odds of a policy and, where that is not too much work or is asked for, causes and changes.
 
@@ -81,21 +102,34 @@ def outlook(
         model: as ``model_of`` returns it.
         years: as for ``odds``.
         full: whether causes and changes are worked out however long it takes.
-        progress: called with the number of changes tried and to try.
+        histories: how many to draw, also where odds are exact; None to draw the usual number where they are not, if
+            numpy is there.
+        seed: as for ``simulate``.
+        progress: called with the number of changes tried and to try, where odds are exact.
+        drawn: called with the number of histories drawn and to be drawn.
 
     Raises:
-        ParameterError: a span of years that is out of range.
+        ParameterError: the years, the histories or the seed are out of range.
+        ExtraMissingError: a number of histories is asked for, and numpy is not installed.
     """
     now = odds(model, years)
+    if now is None:
+        if full:
+            return _simulated_in_full(model, years, histories, seed, drawn)
+        guess = instead(model, years, histories=histories, seed=seed, drawn=drawn)
+        return Outlook(years, None, guess, None, None, advice(model, years, guess, None, None))
+    simulated = None
+    if histories is not None:
+        simulated = instead(model, years, histories=histories, seed=seed, drawn=drawn)
     causes: tuple[Contribution, ...] | None = None
     found: tuple[Change, ...] | None = None
-    if now is not None and (full or len(model.custodians) <= _MOST_CUSTODIANS):
-        tries = list(_single(model))
+    if full or len(model.custodians) <= _MOST_CUSTODIANS:
+        tries = list(single_changes(model))
         taken_away = {one.kind if one.kind in ("share", "person") else (one.kind, one.name) for one in model.causes}
         if full or _work(model) * (len(tries) + len(taken_away)) <= _MOST_WORK:
             causes = contributions(model, years)
-            found = _tried(tries, now, years, progress)
-    return Outlook(years, now, causes, found, advice(model, years, now, causes, found))
+            found = _tried(tries, now, lambda changed: odds(changed, years), progress)
+    return Outlook(years, now, simulated, causes, found, advice(model, years, now, causes, found))
 
 
 def largest(causes: tuple[Contribution, ...], of: str) -> tuple[str, ...]:
@@ -106,7 +140,7 @@ def largest(causes: tuple[Contribution, ...], of: str) -> tuple[str, ...]:
         causes: as ``contributions`` returns them.
         of: "loss", "exposure" or "absence".
     """
-    parts = {cause_words(cause): float(getattr(cause, of)) for cause in causes}
+    parts = {cause_words(cause): float(getattr(cause, of) or 0.0) for cause in causes}
     most = max(parts.values(), default=0.0)
     ranked = sorted(parts, key=lambda words: -_told(parts[words]))[:2]
     return tuple(words for words in ranked if parts[words] > 0 and parts[words] >= most / 10)
@@ -126,7 +160,7 @@ def cause_words(cause: Contribution) -> str:
 def advice(
     model: Model,
     years: float,
-    now: Odds | None,
+    now: Reckoned | None,
     causes: tuple[Contribution, ...] | None,
     found: tuple[Change, ...] | None,
 ) -> tuple[str, ...]:
@@ -134,157 +168,130 @@ def advice(
 
     Args:
         model, years: as for ``outlook``.
-        now, causes, found: as it works them out.
+        now, causes, found: as it works them out; no odds are there where numpy is needed for them and not installed.
     """
     if now is None:
         return (
-            "This rule, or the way in which people, sites and reporting lines overlap in it, is too large to be worked "
-            "out exactly, so there are no odds here.",
+            "This rule, or the way in which people, sites and reporting lines overlap in it, is too large for exact "
+            f"odds, and to simulate them takes numpy, which is not installed: install the extra {EXTRA}.",
             "What is said of its structure holds all the same.",
             "A simpler rule has odds, and fewer ways to go wrong: each group in one place, and few custodians in each.",
         )
     return (_danger(years, now, causes), _best(now, found), _besides(model, now))
 
 
-def _danger(years: float, now: Odds, causes: tuple[Contribution, ...] | None) -> str:
+def _danger(years: float, now: Reckoned, causes: tuple[Contribution, ...] | None) -> str:
     told = (
-        f"Over {numbers.horizon(years)} the key is lost with a chance of {_both(now.loss)} and exposed with one of "
-        f"{_both(now.exposure)}"
+        f"Over {numbers.horizon(years)} the key is lost with a chance of {_both(now, 'loss')} and exposed with one of "
+        f"{_both(now, 'exposure')}"
     )
-    if max(now.loss, now.exposure) < 2 * min(now.loss, now.exposure):
+    loss, exposure = value(now, "loss"), value(now, "exposure")
+    if isinstance(now, Simulated) and not _worse_is_plain(now):
+        return f"{told}: which danger is the greater one, so many histories do not tell."
+    if max(loss, exposure) < 2 * min(loss, exposure):
         return f"{told}: one danger is about as great as the other."
-    worse = "loss" if now.loss > now.exposure else "exposure"
+    worse = "loss" if loss > exposure else "exposure"
     by = largest(causes or (), worse)[:1]
     return f"{told}: {worse} is the greater danger{f', above all by {by[0]}' if by else ''}."
 
 
-def _best(now: Odds, found: tuple[Change, ...] | None) -> str:
+def _worse_is_plain(now: Simulated) -> bool:
+    return now.loss.high < now.exposure.low or now.exposure.high < now.loss.low
+
+
+def _best(now: Reckoned, found: tuple[Change, ...] | None) -> str:
     if found is None:
         return "What to change first was not worked out, as that takes long for this policy: --odds does it."
-    if not found or numbers.chance(max(now.loss, now.exposure)) == "none":
+    if isinstance(now, Simulated) and not found:
+        return "Of no single change can so many histories tell what it does to these odds."
+    if not found or numbers.chance(max(value(now, "loss"), value(now, "exposure"))) == "none":
         return "There is nothing to change that these odds would show."
     first = found[0]
     if first.gain <= 0:
         return "No single change tried takes more off one danger than it adds to the other."
     told = [
-        f"{what} goes from {numbers.chance(before)} to {numbers.chance(after)}"
-        for what, before, after in (
-            ("loss", now.loss, first.odds.loss),
-            ("exposure", now.exposure, first.odds.exposure),
-        )
-        if numbers.chance(before) != numbers.chance(after)
+        f"{what} goes from {briefly(now, what)} to {briefly(first.odds, what)}"
+        for what, falls in (("loss", first.loss), ("exposure", first.exposure))
+        if falls is not None and briefly(now, what) != briefly(first.odds, what)
     ]
     return f"Of single changes it helps most {first.words}: {' and '.join(told) or 'though by little'}."
 
 
-def _besides(model: Model, now: Odds) -> str:
+def _besides(model: Model, now: Reckoned) -> str:
     if model.attest_every is None:
         return (
             "Nobody asks for the shares here, so that losses add up unseen until the key is needed: attestations, with "
             "repair of what they find, end that."
         )
-    if model.refresh_every is None and now.exposure > now.loss:
+    if model.refresh_every is None and value(now, "exposure") > value(now, "loss"):
         return "There is no refresh here, so that what leaks adds up for as long as the set lives."
     return (
-        f"On a day taken at random no quorum can be had in time with a chance of {_both(now.absence)}: drills show "
+        f"On a day taken at random no quorum can be had in time with a chance of {_both(now, 'absence')}: drills show "
         "whether that is so."
     )
 
 
-def _both(p: float) -> str:
+def _both(now: Reckoned, of: str) -> str:
+    """Write one of the odds within a sentence."""
+    if isinstance(now, Simulated):
+        return words(now, of).rpartition(": ")[2]
+    p = value(now, of)
     return f"{numbers.chance(p)} ({numbers.one_in(p)})" if numbers.one_in(p) else numbers.chance(p)
 
 
 def _tried(
-    tries: list[tuple[str, str, Model]],
-    now: Odds,
-    years: float,
-    progress: Callable[[int, int | None], None] | None,
+    tries: Sequence[Single], now: Reckoned, reckon: Callable[[Model], Reckoned | None], progress: Told | None = None
 ) -> tuple[Change, ...]:
-    """Return the changes in the order of what they gain; a change whose odds are too much work is left out."""
+    """Return the changes in the order of what they gain. One is left out if its odds are too much work, or if it has no
+    effect that can be told from what chance makes."""
     found = []
-    for done, (kind, words, changed) in enumerate(tries):
+    for done, one in enumerate(tries):
         if progress:
             progress(done, len(tries))
-        after = odds(changed, years)
-        if after is not None:
-            found.append(Change(kind, words, after, now.loss - after.loss, now.exposure - after.exposure))
+        if (after := reckon(one.model)) is None:
+            continue
+        loss, exposure = fall(now, after, "loss"), fall(now, after, "exposure")
+        if loss is not None or exposure is not None:
+            found.append(Change(one.kind, one.words, after, loss, exposure))
     return tuple(sorted(found, key=lambda change: -_told(change.gain)))
+
+
+def _simulated_in_full(model: Model, years: float, histories: int | None, seed: int, drawn: Told | None) -> Outlook:
+    """Work out odds, causes and changes by as many histories for each."""
+    causes, tries = list(without_each(model)), list(single_changes(model))
+    each = HISTORIES if histories is None else histories
+    place = count()
+
+    def draw(changed: Model) -> Simulated | None:
+        before, total = next(place) * each, (1 + len(causes) + len(tries)) * each
+        told = None if drawn is None else lambda done, _: drawn(before + done, total)
+        return instead(changed, years, histories=histories, seed=seed, drawn=told)
+
+    if (now := draw(model)) is None:
+        return Outlook(years, None, None, None, None, advice(model, years, None, None, None))
+    adding = tuple(_adding(causes, now, draw))
+    found = _tried(tries, now, draw)
+    told = advice(model, years, now, adding, found)
+    left_out = len(causes) - len(adding), len(tries) - len(found)
+    return Outlook(years, None, now, adding, found, told, *left_out)
+
+
+def _adding(
+    causes: Sequence[tuple[str, str, Model]], now: Reckoned, reckon: Callable[[Model], Reckoned | None]
+) -> Iterator[Contribution]:
+    """Yield what each cause adds, if any of it can be told from what chance makes."""
+    for kind, name, spared in causes:
+        if (less := reckon(spared)) is None:
+            continue
+        falls = (fall(now, less, of) for of in ("loss", "exposure", "absence"))
+        parts = [part if part and part > 0 else None for part in falls]
+        if any(parts):
+            yield Contribution(kind, name, *parts)
 
 
 def _told(number: float) -> float:
     """Round off the noise of the arithmetic, so that what is alike stays in its order on every machine."""
     return float(f"{number:.8e}")
-
-
-def _single(model: Model) -> Iterator[tuple[str, str, Model]]:
-    """Yield (kind, words, changed model) for every single change."""
-    yield from _intervals(model)
-    for node in dict.fromkeys(node for _, node in model.rule.nodes()):
-        for need in (node.need - 1, node.need + 1):
-            if 1 <= need <= len(node.children):
-                other = Rule(need, node.children)
-                words = f"to need {need} instead of {node.need}"
-                # In a rule of several groups it is told which of them is meant.
-                where = "" if model.rule.depth == 1 else " at the top" if node == model.rule else f" of {_listed(node)}"
-                yield "threshold", words + where, replace(model, rule=_replaced(model.rule, node, other))
-    for name in _kinds_of_custodian(model):
-        try:
-            yield "custodian", f"to have another custodian like {name}", with_another(model, name)
-        except ParameterError:  # The rule has no room for more.
-            continue
-    for name in _kinds_of_custodian(model):
-        if any(cause.kind == "site" and name in cause.members and len(cause.members) > 1 for cause in model.causes):
-            yield "site", f"to keep the share of {name} at a site of its own", moved(model, name)
-
-
-def _intervals(model: Model) -> Iterator[tuple[str, str, Model]]:
-    for kind, now, changed in (
-        ("attest", model.attest_every, attesting_every),
-        ("refresh", model.refresh_every, refreshing_every),
-    ):
-        if now != 1:
-            days = DAYS_OF_A_YEAR if now is None else now // 2
-            yield kind, f"to {kind} {numbers.every(days)}", changed(model, days)
-
-
-def _listed(node: Rule) -> str:
-    """Name a group by those directly in it."""
-    names = list(dict.fromkeys(child if isinstance(child, str) else "a group" for child in node.children))
-    return f"({', '.join(names)})"
-
-
-def _replaced(rule: Rule, old: Rule, new: Rule) -> Rule:
-    if rule == old:
-        return new
-    return Rule(
-        rule.need, tuple(_replaced(child, old, new) if isinstance(child, Rule) else child for child in rule.children)
-    )
-
-
-def _kinds_of_custodian(model: Model) -> list[str]:
-    """Return one custodian for all who can change places with one another and leave the model as it is."""
-    found = list[str]()
-    itself = _shape(model, {})
-    for name in model.custodians:
-        if not any(_shape(model, {name: other, other: name}) == itself for other in found):
-            found.append(name)
-    return found
-
-
-def _shape(model: Model, renamed: dict[str, str]) -> tuple[str, Counter[tuple[object, ...]]]:
-    """Return what is left of a model when names of causes and the order of children do not count."""
-
-    def of(node: Rule | str) -> str:
-        if isinstance(node, str):
-            return repr(renamed.get(node, node))
-        return f"{node.need}({','.join(sorted(map(of, node.children)))})"
-
-    causes = Counter[tuple[object, ...]](
-        (one.kind, one.loss, one.leak, one.absent, frozenset(renamed.get(name, name) for name in one.members))
-        for one in model.causes
-    )
-    return of(model.rule), causes
 
 
 def _work(model: Model) -> float:

@@ -1,21 +1,24 @@
 """Two policies side by side: which one is less likely to lose its key, to expose it, or to stand without a quorum.
 
 Source: none.
-May import: shares.documents.policy, .examine, .model, .odds.
+May import: shares.documents.policy, .examine, .model, .odds, .reckoned, .simulate.
 Secret: nothing. Public: nothing either: a plan is as confidential as its policy.
 Does not: weigh one danger against another.
 """
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 from shares.documents.policy import Policy
 from shares.planning.examine import Plan, examine
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
+from shares.planning.reckoned import SEED, Reckoned, apart, instead, value
+from shares.planning.simulate import Simulated
 
-_ALIKE = 1.1
+ALIKE = 1.1
 """Odds that differ by less than a tenth of themselves are called alike: no rate is known that well."""
 
 
@@ -27,43 +30,65 @@ class Side:
         plan: what its examination found.
         model: what its odds are worked out from.
         odds: None where they are too much work for an exact answer.
+        simulated: the odds where they are; None where numpy is not installed.
     """
 
     plan: Plan
     model: Model
     odds: Odds | None
+    simulated: Simulated | None
+
+    @property
+    def now(self) -> Reckoned | None:
+        """The odds, exact where they can be; None where numpy is needed for them and not installed."""
+        return self.odds or self.simulated
 
 
-def side(policy: Policy, years: float) -> Side:
-    """Examine a policy and work out its odds.
+def side(
+    policy: Policy,
+    years: float,
+    *,
+    histories: int | None = None,
+    seed: int = SEED,
+    drawn: Callable[[int, int | None], None] | None = None,
+) -> Side:
+    """Examine a policy and work out its odds, or simulate them where that is too much work.
 
     Args:
         policy: as ``Policy.parse`` returns it.
         years: as for ``odds``.
+        histories, seed, drawn: as for ``instead``.
 
     Raises:
-        ParameterError: a span of years that is out of range.
+        ParameterError: the years, the histories or the seed are out of range.
+        ExtraMissingError: a number of histories is asked for and needed, and numpy is not installed.
     """
     model = model_of(policy)
-    return Side(examine(policy), model, odds(model, years))
+    now = odds(model, years)
+    guess = None if now else instead(model, years, histories=histories, seed=seed, drawn=drawn)
+    return Side(examine(policy), model, now, guess)
 
 
-def verdict(first: Odds, second: Odds) -> str:
-    """Return in one sentence which of two policies is the better one.
+def verdict(first: Reckoned, second: Reckoned) -> str:
+    """Return in one sentence which of two policies is the better one, as far as can be told from what chance makes.
 
     >>> verdict(Odds(0.01, 0.01, 0.1, 100.0), Odds(0.02, 0.005, 0.1, 50.0))
     'The first policy is better in loss, the second in exposure: it is for you to weigh them.'
     """
+    exact = isinstance(first, Odds) + isinstance(second, Odds)
     better: dict[str, list[str]] = {"first": [], "second": []}
     for what in ("loss", "exposure", "absence"):
-        one, other = getattr(first, what), getattr(second, what)
-        if max(one, other) > _ALIKE * min(one, other):
+        one, other = value(first, what), value(second, what)
+        if max(one, other) > ALIKE * min(one, other) and apart(first, second, what):
             better["first" if one < other else "second"].append(what)
     here, there = (_listed(whats) for whats in better.values())
     if here and there:
         return f"The first policy is better in {here}, the second in {there}: it is for you to weigh them."
     if here or there:
-        return f"The {'first' if here else 'second'} policy is better in {here or there}, and worse in nothing."
+        seen = " that so many histories show" if exact < 2 else ""
+        return f"The {'first' if here else 'second'} policy is better in {here or there}, and worse in nothing{seen}."
+    if exact < 2:
+        return "So many histories do not show that one policy is better than the other."
     return "The odds of both policies are alike, to within a tenth."
 
 

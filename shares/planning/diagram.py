@@ -25,6 +25,8 @@ MAX_CUSTODIANS = 255
 """The diagram is made by a recursion as deep as there are custodians; so many share any one threshold."""
 MAX_STEPS = 100_000
 """So many steps of composition are made before a rule is called too entangled; about a second."""
+FEW, MAX_STEPS_OF_FEW = 24, 300_000
+"""So many custodians are worth more steps: as many as the structure of a rule is exact for, whatever the rule."""
 
 _NO, _YES = 0, 1
 
@@ -55,7 +57,8 @@ class Diagram:
             order: its custodians, each once. Those of one group are best asked one after another.
 
         Returns:
-            None where there are more than 255 custodians, or making the diagram takes too many steps.
+            None where there are more than 255 custodians, or making the diagram takes too many steps. Up to 24
+            custodians in as many as ten groups that overlap at random are none too many.
 
         >>> Diagram.of(Rule(2, ("north-pier", "south-pier")), ("north-pier", "south-pier")).levels
         (((0, 1),), ((0, 0), (0, 1)))
@@ -79,6 +82,7 @@ class _Nodes:
 
     def __init__(self, order: Sequence[str]) -> None:
         self._place = {name: place for place, name in enumerate(order)}
+        self._most = MAX_STEPS_OF_FEW if len(order) <= FEW else MAX_STEPS
         end = len(order)
         self._nodes = [(end, _NO, _NO), (end, _YES, _YES)]
         self._known: dict[tuple[int, int, int], int] = {}
@@ -115,7 +119,7 @@ class _Nodes:
             return without
         key = (asked, held, without)
         if key not in self._composed:
-            if len(self._composed) >= MAX_STEPS:
+            if len(self._composed) >= self._most:
                 raise _TooEntangledError
             place = min(self._nodes[node][0] for node in key)
             halves = [self._nodes[node][1:] if self._nodes[node][0] == place else (node, node) for node in key]

@@ -11,6 +11,7 @@ Does not: judge what is large or small.
 from __future__ import annotations
 
 import math
+from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 
 _CERTAIN = 0.995
 _ONE_DIGIT_BELOW = 1e-4
@@ -39,6 +40,29 @@ def one_in(p: float) -> str:
     ['1 in 19', '1 in 1,100', '', '', '']
     """
     return f"1 in {_two_digits(1 / p)}" if 1e-5 <= p <= 1 / 3 else ""
+
+
+def interval(low: float, high: float) -> str:
+    """Write the ends of an interval of chances, 0 to 1, ``low`` below ``high``: rounded away from one another, to as
+    many digits as make the rounding no wider than the interval. An end at 0 or 1 was not reached: nothing seen is not
+    never.
+
+    >>> [interval(*ends) for ends in ((0.3885, 0.3946), (0.0004, 0.0011), (2.5e-7, 5.57e-5), (0, 3.7e-5), (0.99996, 1))]
+    ['38.8 % to 39.5 %', '0.04 % to 0.11 %', '2e-7 to 6e-5', 'below 4e-5', 'above 99.996 %']
+    """
+    finest = math.floor(math.log10(high - low))
+    if low == 0:
+        return f"below {_rounded(high, finest, ROUND_CEILING)}"
+    if high == 1:
+        return f"above {_rounded(low, finest, ROUND_FLOOR)}"
+    return f"{_rounded(low, finest, ROUND_FLOOR)} to {_rounded(high, finest, ROUND_CEILING)}"
+
+
+def _rounded(p: float, finest: int, which_way: str) -> str:
+    """Round a chance above 0 to the digits that ``chance`` tells, or down to 10^finest."""
+    last = math.floor(math.log10(p)) - (p >= _ONE_DIGIT_BELOW)
+    rounded = Decimal(str(p)).quantize(Decimal(1).scaleb(min(last, finest)), which_way).normalize()
+    return f"{(100 * rounded).normalize():f} %" if rounded >= Decimal("1e-4") else f"{rounded:e}"
 
 
 def years(span: float) -> str:

@@ -20,7 +20,7 @@ Does not: simulate, advise, or say what odds are good enough.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 
 from shares.errors import ParameterError
@@ -60,14 +60,15 @@ class Contribution:
     Attributes:
         kind: "share" for all shares' own losses, "person" for all people; "site", "line" or "medium".
         name: the site, manager or medium; empty for shares and people.
-        loss, exposure, absence: differences of chances, 0 or more.
+        loss, exposure, absence: differences of chances, 0 or more; None where they are simulated, and the part
+            cannot be told from what chance makes.
     """
 
     kind: str
     name: str
-    loss: float
-    exposure: float
-    absence: float
+    loss: float | None
+    exposure: float | None
+    absence: float | None
 
 
 def odds(model: Model, years: float) -> Odds | None:
@@ -110,14 +111,24 @@ def contributions(model: Model, years: float) -> tuple[Contribution, ...] | None
     if whole is None:
         return None
     found = []
-    for kind, name in dict.fromkeys(_named(cause) for cause in model.causes):
-        less = odds(replace(model, causes=tuple(one for one in model.causes if _named(one) != (kind, name))), years)
+    for kind, name, spared in without_each(model):
+        less = odds(spared, years)
         if less is None:
             return None
         parts = [getattr(whole, of) - getattr(less, of) for of in ("loss", "exposure", "absence")]
         if any(part > 0 for part in parts):
             found.append(Contribution(kind, name, *(max(0.0, part) for part in parts)))
     return tuple(found)
+
+
+def without_each(model: Model) -> Iterator[tuple[str, str, Model]]:
+    """Yield for each cause that ``contributions`` tells its kind, its name, and the model without it.
+
+    Args:
+        model: as ``model_of`` returns it.
+    """
+    for kind, name in dict.fromkeys(_named(cause) for cause in model.causes):
+        yield kind, name, replace(model, causes=tuple(one for one in model.causes if _named(one) != (kind, name)))
 
 
 def days_of(years: float) -> int:

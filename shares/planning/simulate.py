@@ -29,6 +29,8 @@ from shares.planning.odds import days_of
 from shares.planning.structure import dual
 
 MAX_HISTORIES = 1_000_000_000
+EXTRA = "shares[plan]"
+"""The extra that brings numpy."""
 
 _MOST_AT_ONCE = 1 << 14
 _NUMBERS_AT_ONCE = 1 << 20
@@ -108,7 +110,7 @@ def simulate(
         if error.name != "numpy":
             raise
         raise ExtraMissingError(
-            "to simulate takes numpy, which is not installed", hint="install the extra shares[plan]"
+            "to simulate takes numpy, which is not installed", hint=f"install the extra {EXTRA}"
         ) from None
 
     losses = Clocks.of(dual(model.rule), model.causes, lost)

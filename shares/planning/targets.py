@@ -1,17 +1,14 @@
 """The other way round: from the odds that are wanted to the smallest rule and the longest intervals that have them.
 
-Looked at are all rules k of n up to 12 custodians, each of weight 1 in one group, in which neither one makes a quorum
-nor all are needed, with intervals from a list of those that people keep, a week to five years or never. The custodians
-are the policy's own, taken so that as few as possible share a site or a manager; where more are wanted, each is
-imagined like one of these again, from the first on: on the same site, in the same line and on the same medium, but
-another person. So more custodians do not bring more sites.
+Looked at are all rules k of n of ``lineup`` in which neither one makes a quorum nor all are needed, with intervals from
+a list of those that people keep, a week to five years or never.
 
 Loss does not depend on how often shares are refreshed, nor exposure on how often they are attested: so both intervals
 are found at once. Odds are taken to grow with an interval; that what is told meets the targets is worked out, and only
 that no longer interval does rests on this.
 
 Source: search through all cases, in a fixed order; bisection.
-May import: shares.errors, shares.sharing.rule, .changes, .model, .odds.
+May import: shares.errors, .changes, .lineup, .model, .odds, .reckoned.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: look at trees of groups, at other sites, or at what anything costs.
 """
@@ -20,18 +17,17 @@ from __future__ import annotations
 
 import math
 import re
-from collections import Counter
-from collections.abc import Callable, Iterable, Iterator
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
 from typing import NamedTuple
 
 from shares.errors import ParameterError
-from shares.planning.changes import attesting_every, refreshing_every, with_another
+from shares.planning.changes import attesting_every, refreshing_every
+from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import DAYS_OF_A_YEAR, Model
 from shares.planning.odds import Contribution, Odds, contributions, odds
-from shares.sharing.rule import Rule
+from shares.planning.reckoned import Reckoned, ends
 
-MAX_CUSTODIANS = 12
 INTERVALS: tuple[int | None, ...] = (None, 1825, 730, 365, 182, 91, 30, 14, 7)
 """Days between attestations or refreshes that are tried, the longest first; None is never."""
 
@@ -46,9 +42,12 @@ class Targets(NamedTuple):
     loss: float
     exposure: float
 
-    def met_by(self, found: Odds) -> bool:
-        """Say whether odds are as good as is wanted."""
-        return found.loss <= self.loss and found.exposure <= self.exposure
+    def met_by(self, found: Reckoned) -> bool | None:
+        """Say whether odds are as good as is wanted; None where a simulation cannot tell."""
+        wanted = [(ends(found, of), most) for of, most in self._asdict().items() if most < 1]
+        if all(high <= most for (_, high), most in wanted):
+            return True
+        return False if any(low > most for (low, _), most in wanted) else None
 
     def missed_by(self, found: Odds) -> float:
         """Return how far odds are from the targets: the larger of both ratios, as a logarithm; 0 where they are met."""
@@ -141,14 +140,13 @@ def meeting(
     Raises:
         ParameterError: a span of years that is out of range, or no rule could be worked out exactly.
     """
-    names, peopled = _people(model)
+    custodians = lined_up(model)
     nearest: tuple[float, Choice] | None = None
     choices = list[Choice]()
     for done, (total, need) in enumerate(pairs := list(_rules())):
         if progress:
             progress(done, len(pairs))
-        flat = replace(peopled, rule=Rule(need, names[:total]))
-        imagined = max(0, total - len(model.custodians))
+        flat, imagined = custodians.rule(need, total), custodians.imagined(total)
         best = _with(flat, len(INTERVALS) - 1, len(INTERVALS) - 1, years)
         if best is None:
             continue
@@ -167,7 +165,7 @@ def meeting(
     if nearest is None:
         raise ParameterError("rules over these custodians are too large to be worked out exactly")
     choice = nearest[1]
-    flat = replace(peopled, rule=Rule(choice.need, names[: choice.total]))
+    flat = custodians.rule(choice.need, choice.total)
     reached = Targets(max(targets.loss, choice.odds.loss), max(targets.exposure, choice.odds.exposure))
     found = _at_leisure(flat, reached, years, choice.imagined)
     kept = refreshing_every(attesting_every(flat, found.attest_every), found.refresh_every)
@@ -200,29 +198,3 @@ def _at_leisure(flat: Model, targets: Targets, years: float, imagined: int) -> C
 
 def _with(flat: Model, attest: int, refresh: int, years: float) -> Odds | None:
     return odds(refreshing_every(attesting_every(flat, INTERVALS[attest]), INTERVALS[refresh]), years)
-
-
-def _people(model: Model) -> tuple[tuple[str, ...], Model]:
-    """Return the names of the custodians looked at, in the order in which they are taken, and their model."""
-    names = list(_apart(model))[:MAX_CUSTODIANS]
-    peopled = replace(model, rule=Rule(1, tuple(names)))
-    for i in range(MAX_CUSTODIANS - len(names)):
-        before = set(peopled.custodians)
-        peopled = with_another(peopled, names[i])
-        names += [name for name in peopled.custodians if name not in before]
-    return tuple(names), peopled
-
-
-def _apart(model: Model) -> Iterator[str]:
-    """Yield the custodians, always the first of those whose person, site, line and medium were met least often."""
-    groups = {name: [cause for cause in _shared(model) if name in cause] for name in model.custodians}
-    met, left = Counter[frozenset[str]](), list(model.custodians)
-    while left:
-        name = min(left, key=lambda one: sum(met[group] for group in groups[one]))
-        left.remove(name)
-        met.update(groups[name])
-        yield name
-
-
-def _shared(model: Model) -> Iterable[frozenset[str]]:
-    return [cause.members for cause in model.causes if len(cause.members) > 1]

@@ -303,25 +303,6 @@ def test_rates_that_are_all_stated_leave_nothing_to_assume(tmp_path: Path) -> No
     assert told["causes"] == []
 
 
-def test_rules_too_large_to_be_worked_out_are_examined_all_the_same(tmp_path: Path) -> None:
-    names = [f"pier {i}" for i in range(60)]
-    text = 'label = "Tide archive"\nkey_type = "other"\n' + "".join(
-        f'[[custodian]]\nname = "{name}"\nperson = "keeper of {name}"\nsite = "{name}"\nreports_to = "{name}"\n'
-        for name in names
-    )
-    for i in range(6):
-        text += f"[group.g{i}]\nneed = 10\nfrom = {json.dumps([names[(7 * i + 11 * j) % 60] for j in range(30)])}\n"
-    path = tmp_path / "policy.toml"
-    path.write_text(text + '[rule]\nneed = 3\nfrom = ["g0", "g1", "g2", "g3", "g4", "g5"]\n')
-    result = run("plan", path)
-    assert result.code == 0
-    assert "is too large to be worked out exactly, so there are no odds here." in " ".join(result.out.split())
-    assert run("plan", path, "--json").json["odds"] is None
-    said = " ".join(run("plan", path, "--compare", TIDE).out.split())
-    assert "loss too large 5.3 %" in said
-    assert "policy is better" not in said
-
-
 def test_targets_find_rules_and_intervals() -> None:
     path = EXAMPLES / "tide-gate.toml"
     wanted = ("--targets", "loss=1%,exposure=1%", "--years", "5")

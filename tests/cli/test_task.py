@@ -11,6 +11,7 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
+from unittest import mock
 
 import pytest
 from cli.harness import Result, assert_one_line, assert_refused, files_in, run, spawn, with_json
@@ -19,10 +20,12 @@ from history.exchanging import NAMES, new_task
 from parties import party, unlocked
 
 from shares.documents.key_record import KeyRecord
-from shares.documents.task_message import Accusation, OpeningKey, Review, TaskMessage
+from shares.documents.task_message import Accusation, Complaint, OpeningKey, Review, TaskMessage
+from shares.errors import StorageError
 from shares.history.exchange import TaskFolder
 from shares.history.journal import load_journal
 from shares.history.rounds import Inbox
+from shares.history.steps import OwnSteps
 
 
 @dataclass(frozen=True)
@@ -411,6 +414,58 @@ def test_a_key_that_is_born_is_not_given_up(harbour: Harbour) -> None:
     waiting = [name for name in NAMES if "done.json" not in kept(harbour, name)]
     assert waiting
     assert_refused(drop(harbour, waiting[0], "--yes"), 2, "the key is born", watched=harbour.root)
+
+
+def test_a_key_that_was_born_but_for_the_last_step_is_not_entered_as_failed(harbour: Harbour) -> None:
+    to_the_last_round(harbour)
+    harbour.next("light-house")
+    name = next(name for name in NAMES if "step-5.json" in kept(harbour, name))
+    with mock.patch.object(OwnSteps, "close", side_effect=StorageError("no space left")):
+        assert harbour.next(name).code == 5
+    share = (harbour.mine(name) / "share.json").read_bytes()
+    # The task's folder is complete no longer: by that alone nobody could tell that the key was born.
+    for path in (harbour.task / "messages").glob("5-*"):
+        path.unlink()
+    done = run(*drop(harbour, name, "--yes", "--json"))
+    assert (state(done), done.err, kept(harbour, name)) == ((0, "finished"), "", ["done.json"])
+    events = [entry.event.what for entry in load_journal(harbour.mine(name)).entries]
+    assert events == ["approved", "approved", "key-born"]
+    assert (harbour.mine(name) / "share.json").read_bytes() == share
+
+
+def test_who_hears_of_a_second_review_is_told_what_to_ask_for_and_has_the_key(harbour: Harbour) -> None:
+    to_the_last_round(harbour)
+    folder = TaskFolder(harbour.task)
+    before = folder.read().inbox.of(2)["light-house"]
+    harbour.next("light-house")
+    confirmed = (harbour.task / "messages" / "5-light-house.json").read_bytes()
+    (harbour.task / "messages" / "5-light-house.json").unlink()
+    with unlocked("light-house") as key:
+        for number in range(3):
+            reason = f"other words {number}"
+            other = Review(what="review", complaints=(Complaint(against="north-pier", reason=reason),))
+            folder.release(
+                TaskMessage.signed_by(
+                    key, task=before.task, round=2, sender="light-house", seen=before.seen, body=other
+                )
+            )
+    failed = harbour.next("north-pier")
+    assert (failed.code, "two different messages of light-house in round 2" in failed.out) == (4, True)
+    assert "If another custodian says that the key is born: have them send" in " ".join(failed.out.split())
+    assert harbour.show("--json").json["maybe_complete_elsewhere"] is True
+    # Whoever has that sends the whole folder, and the key is born here too; the cheat is named.
+    (harbour.task / "messages" / "5-light-house.json").write_bytes(confirmed)
+    done = harbour.next("north-pier", "--json")
+    assert state(done) == (0, "finished")
+    assert [(one["sender"], one["stops"]) for one in done.json["problems"]] == [("light-house", False)]
+
+
+def test_nobody_is_told_of_a_key_elsewhere_before_anybody_has_confirmed(harbour: Harbour) -> None:
+    harbour.next("north-pier")
+    for minute in (1, 2):
+        TaskFolder(harbour.task).release(signed(harbour, "south-pier", minute))
+    assert "If another custodian" not in harbour.next("north-pier").out
+    assert harbour.show("--json").json["maybe_complete_elsewhere"] is False
 
 
 def test_who_hears_of_an_accusation_alone_is_told_what_to_ask_for(harbour: Harbour) -> None:

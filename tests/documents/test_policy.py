@@ -273,15 +273,15 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     ),
     "rates of nobody's site": (
         setting("site", to=[{"name": SITE}, {"name": "canary elsewhere"}]),
-        "site[1].name is what no custodian has as site",
+        "site[1].name is the site of no custodian; write it as theirs",
     ),
     "rates of nobody's manager": (
         setting("line", to=[{"name": SITE}]),
-        "line[0].name is what no custodian has as reports_to",
+        "line[0].name is the reports_to of no custodian; write it as theirs",
     ),
     "rates of nobody's medium": (
         setting("medium", to=[{"name": "canary paper"}]),
-        "medium[0].name is what no custodian has as medium",
+        "medium[0].name is the medium of no custodian; write it as theirs",
     ),
     "rates of a site twice": (
         setting("site", to=[{"name": SITE}, {"name": SITE.upper()}]),
@@ -363,16 +363,22 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     ),
     "a threshold above the leaves": (
         setting(*OPERATORS, "need", to=4),
-        "group.operators: a threshold of 4 cannot stand over 3 shares (choose from 1 to 3)",
+        "group.operators: a threshold of 4 cannot stand over 3 shares; choose from 1 to 3",
     ),
     "a threshold of 0": (
         setting(*OPERATORS, "need", to=0),
         "group.operators.need should be greater than or equal to 1",
     ),
     "a threshold of 256": (setting("rule", "need", to=256), "rule.need should be less than or equal to 255"),
-    "a threshold that is text": (setting("rule", "need", to="2"), "rule.need should be a valid integer"),
-    "a threshold that is true": (setting("rule", "need", to=True), "rule.need should be a valid integer"),
-    "a threshold with a fraction": (setting("rule", "need", to=2.0), "rule.need should be a valid integer"),
+    "a threshold that is text": (setting("rule", "need", to="2"), "rule.need should be a whole number, without quotes"),
+    "a threshold that is true": (
+        setting("rule", "need", to=True),
+        "rule.need should be a whole number, without quotes",
+    ),
+    "a threshold with a fraction": (
+        setting("rule", "need", to=2.0),
+        "rule.need should be a whole number, without quotes",
+    ),
     "no threshold": (without(*OPERATORS, "need"), "group.operators.need is missing"),
     "no names": (setting(*FROM, to=[]), "group.operators.from should not be empty"),
     "a name where a list is wanted": (
@@ -458,8 +464,11 @@ REFUSED: dict[str, tuple[Bend, str]] = {
     ),
     "an interval in months": (setting("attest_every", to="3m"), "attest_every should be an interval"),
     "an interval that is a number": (setting("refresh_every", to=90), "refresh_every should be an interval"),
-    "strict that is text": (setting("strict", to="true"), "strict should be a valid boolean"),
-    "acknowledgement that is a number": (setting("acknowledgement", to=1), "acknowledgement should be a valid boolean"),
+    "strict that is text": (setting("strict", to="true"), "strict should be true or false, without quotes"),
+    "acknowledgement that is a number": (
+        setting("acknowledgement", to=1),
+        "acknowledgement should be true or false, without quotes",
+    ),
 }
 
 
@@ -511,7 +520,6 @@ def test_keys_of_very_many_parts_are_refused_before_they_are_read() -> None:
         (TEXT + "need = 3\n", "line 28, column"),
         (TEXT[: TEXT.rindex("]")], "end of document"),
         (TEXT + "x = [1, 2", "end of document"),
-        ("\N{ZERO WIDTH NO-BREAK SPACE}" + TEXT, "line 1, column 1"),
     ],
     ids=[
         "an open quote",
@@ -521,7 +529,6 @@ def test_keys_of_very_many_parts_are_refused_before_they_are_read() -> None:
         "a key twice",
         "cut",
         "an open list",
-        "BOM",
     ],
 )
 def test_where_a_file_is_not_toml_the_line_is_named(text: str, place: str) -> None:
@@ -537,6 +544,7 @@ def test_where_a_file_is_not_toml_the_line_is_named(text: str, place: str) -> No
     ("data", "reason"),
     [
         (TEXT.encode() + b"# \xff", "not UTF-8"),
+        (TEXT.encode("utf-8-sig"), "begins with a byte order mark"),
         (b"x = " + b"[" * 100_000, "nested too deeply"),
         (b"pad = " + b"9" * 5000, "a number is out of range"),
         (TEXT.encode() + b"#" * (1 << 20), "larger than 1 MiB"),

@@ -73,6 +73,10 @@ class Draw:
     def holds(self, message: TaskMessage, inbox: Inbox) -> bool:
         return isinstance(message.body, Review) and bool(message.body.complaints)
 
+    def fault(self, message: TaskMessage, inbox: Inbox) -> Failure | None:
+        wrong = not isinstance(message.body, Review)
+        return Failure(message.sender, f"{message.sender} shows no sum at all") if wrong else None
+
     def spares(self, names: Collection[str]) -> bool:
         return not names
 

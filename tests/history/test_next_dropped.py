@@ -30,7 +30,7 @@ def drop(desk: Desk, erased: list[str]) -> bool:
     task = TaskFolder(desk.folder).task
     event = TaskFailed(what="task-failed", task=task.digest(), work="join", by=None, reason="given up")
     with unlocked(desk.name) as key:
-        return engine.drop(desk.own(), event, key, lambda: erased.append(desk.name))
+        return engine.drop(desk.own(), lambda: event, key, lambda: erased.append(desk.name))
 
 
 def kept(desk: Desk) -> list[str]:

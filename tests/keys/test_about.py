@@ -13,9 +13,9 @@ from keys.quorum import a_task, dealt, named
 from shares.keys.about import about
 from shares.keys.content import described
 from shares.keys.description import in_groups
+from shares.keys.forms import signable
 from shares.keys.opening import cautions_of
 from shares.keys.revocation import Revoked, revocation_list
-from shares.keys.signing import signable
 
 
 def test_of_a_message_the_digest_and_the_cautions_are_told(tmp_path: Path) -> None:

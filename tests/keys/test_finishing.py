@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+from datetime import timedelta
 from pathlib import Path
 
 import pytest
+from cli.asked import CONTENT, FIRST, SECOND, commit, sent
 from cli.harness import run
 from cli.keyed import OFFICE, Keyed
-from cli.test_key_tasks import CONTENT, FIRST, SECOND, sent
 from parties import unlocked
 
-from shares.documents.task_message import Commitment, SignatureShare, TaskMessage
+from shares.documents.key_event import TaskFailed
+from shares.documents.task_message import Body, Commitment, SignatureShare, TaskMessage
 from shares.errors import NotEnoughSharesError, ParameterError, StorageError, VerificationError
 from shares.group.edwards25519 import BASE, Scalar
 from shares.history.exchange import TaskFolder
@@ -158,19 +161,78 @@ def test_a_signature_that_is_complete_is_stopped_by_nothing_that_is_said_besides
                 assert put_together(folder, task) == before
 
 
-def test_a_signature_is_not_put_together_where_no_share_of_one_signer_holds(
+WRONG_SHARES = (SignatureShare(what="signature-share", share=Scalar.of(7)), True)
+MISPLACED = (Commitment(what="commitment", hiding=BASE, binding=BASE), False)
+
+
+@pytest.mark.parametrize(
+    "said",
+    [(WRONG_SHARES, WRONG_SHARES), (WRONG_SHARES, (WRONG_SHARES[0], False)), (MISPLACED,), (MISPLACED, MISPLACED)],
+    ids=["two wrong shares", "one, and one for other commitments", "no share", "two that are none"],
+)
+def test_whose_share_does_not_hold_is_named_whatever_else_it_says_that_it_has_seen(
+    signing: tuple[KeyFolder, TaskFolder], said: tuple[tuple[Body, bool], ...]
+) -> None:
+    folder, task = signing
+    put_instead(task, SECOND, 1, said)
+    with pytest.raises(VerificationError, match=f"failed, by {SECOND}"):
+        put_together(folder, task)
+    assert blamed(folder) == [SECOND]
+
+
+def test_nobody_is_blamed_for_a_share_of_what_may_have_been_shown_to_them_alone(
     signing: tuple[KeyFolder, TaskFolder],
 ) -> None:
     folder, task = signing
-    inbox = task.read().inbox
-    (task.path / "messages" / f"1-{SECOND}.json").unlink()
-    with unlocked(SECOND) as key:
-        for number in (7, 8):
-            body = SignatureShare(what="signature-share", share=Scalar.of(number))
-            task.release(
-                TaskMessage.signed_by(
-                    key, task=task.task.digest(), round=1, sender=SECOND, seen=inbox.seen(1), body=body
-                )
-            )
-    with pytest.raises(VerificationError, match=f"two different messages of {SECOND}"):
+    put_instead(task, SECOND, 1, [(WRONG_SHARES[0], False)])
+    with pytest.raises(VerificationError, match=f"{SECOND} answered in round 1 to other messages"):
         put_together(folder, task)
+    assert blamed(folder) == [None]
+
+
+@pytest.mark.parametrize("count", [1, 2])
+def test_with_commitments_made_beforehand_nobody_can_have_seen_anything_else(
+    once: Keyed, tmp_path: Path, count: int
+) -> None:
+    keyed = once.copy(tmp_path / "harbour")
+    batches = [f"--batch={commit(keyed, name)}" for name in (FIRST, SECOND)]
+    task = TaskFolder(keyed.ask("sign", keyed.path("release.txt"), task="s", more=batches))
+    assert keyed.next(task.path, FIRST).code == 0
+    put_instead(task, SECOND, 0, [(WRONG_SHARES[0], False)] * count)
+    with pytest.raises(VerificationError, match=f"failed, by {SECOND}"):
+        put_together(KeyFolder(keyed.key), task)
+    told = run("task", "show", task.path, "--json").json["failure"]
+    assert (told["by"], SECOND in told["what"], blamed(KeyFolder(keyed.key))) == (SECOND, True, [SECOND])
+
+
+def test_who_gives_no_partial_result_is_named_whatever_it_says_that_it_has_seen(
+    opening: tuple[KeyFolder, TaskFolder],
+) -> None:
+    folder, task = opening
+    put_instead(task, SECOND, 1, [MISPLACED])
+    with unlocked(OFFICE) as office, pytest.raises(VerificationError, match=f"failed, by {SECOND}"):
+        open_message(folder, task, office, Taken())
+    assert blamed(folder) == [SECOND]
+
+
+def put_instead(task: TaskFolder, name: str, round: int, said: Iterable[tuple[Body, bool]]) -> None:
+    """Let a party say these in a round, and nothing else: each an answer to what lies here, or to something else."""
+    seen = task.read().inbox.seen(round)
+    (task.path / "messages" / f"{round}-{name}.json").unlink(missing_ok=True)
+    with unlocked(name) as key:
+        for minute, (body, right) in enumerate(said):
+            message = TaskMessage.signed_by(
+                key,
+                task=task.task.digest(),
+                round=round,
+                sender=name,
+                seen=seen if right else bytes(32),
+                body=body,
+                created=task.task.created + timedelta(minutes=minute),
+            )
+            task.release(message)
+
+
+def blamed(folder: KeyFolder) -> list[str | None]:
+    """Whom the journal names for what has failed."""
+    return [one.event.by for one in folder.journal().entries if isinstance(one.event, TaskFailed)]

@@ -1,4 +1,4 @@
-"""Nonces on disk: each is used for one share at most, whatever is killed, raced, copied or restored.
+"""Nonces on disk: each is used for one share at most, whatever is copied or restored.
 
 Checked against: the equation of a signature share (RFC 9591, sec. 5.2), whose value shows whether two were made of one
 nonce; the kernel's own kills, renames and links; and cp(1) as what people restore folders with.
@@ -7,85 +7,30 @@ nonce; the kernel's own kills, renames and links; and cp(1) as what people resto
 from __future__ import annotations
 
 import errno
-import itertools
 import json
 import os
 import shutil
-import signal
 import stat
 import subprocess
-import warnings
 from collections.abc import Callable
 from pathlib import Path
 
 import pytest
-from keys.quorum import Key, dealt
+from keys.quorum import dealt
+from keys.stores import ME, ONE, OTHER, Pair, files, share_of, store_in
 from parties import unlocked
 
-from shares import streams
-from shares.documents.nonce_batch import MAX_BATCH, NonceBatch, NoncePair, pair_id
+from shares.documents.nonce_batch import MAX_BATCH, NonceBatch, pair_id
 from shares.documents.party import OpenPartyKey
 from shares.errors import (
     DocumentError,
     ParameterError,
-    SharesError,
     StorageError,
     VerificationError,
 )
-from shares.group.edwards25519 import BASE, Point
-from shares.keys import frost, nonces
+from shares.group.edwards25519 import BASE
+from shares.keys import nonces
 from shares.keys.nonces import NonceStore
-
-ME = "north-pier"
-ONE, OTHER = bytes([1]) * 32, bytes([2]) * 32
-Pair = tuple[Point, Point]
-
-
-def store_in(folder: Path, own: OpenPartyKey, key: Key | None = None) -> NonceStore:
-    return NonceStore(folder / "nonces", (key or dealt()).record, ME, own)
-
-
-def share_of(store: NonceStore, pair: Pair, message: bytes) -> bytes:
-    """This signer's share of a signature over a message, its purpose being the message. The other signer stays."""
-    key = dealt()
-    partner = frost.Commitment(2, BASE, BASE)
-    agreed = frost.Agreed(key.record.public_key, message, [frost.Commitment(1, *pair), partner])
-    taken = store.take(*pair, message.ljust(32, b"\0"))
-    return frost.sign(1, key.scalars[ME], taken, agreed).encode()
-
-
-def refuse(*_: object, **__: object) -> None:
-    raise OSError(errno.EPERM, "as a medium without it answers")
-
-
-def files(store: NonceStore) -> list[str]:
-    return sorted(path.name.split("-")[0] for path in store.folder.iterdir())
-
-
-@pytest.fixture
-def own():
-    with unlocked(ME) as key:
-        yield key
-
-
-@pytest.fixture
-def store(tmp_path: Path, own: OpenPartyKey) -> NonceStore:
-    return store_in(tmp_path, own)
-
-
-@pytest.fixture
-def pair(store: NonceStore) -> Pair:
-    (made,) = store.make(dealt().scalars[ME])
-    return made
-
-
-@pytest.fixture(params=["rename", "link"])
-def medium(request: pytest.FixtureRequest, monkeypatch: pytest.MonkeyPatch) -> str:
-    """Each way a medium lets a file get another name in one step."""
-    if request.param == "link":
-        monkeypatch.setattr(streams, "_rename_new", refuse)
-    return str(request.param)
-
 
 # Used, and used once.
 
@@ -362,250 +307,6 @@ def test_on_a_medium_without_modes_there_are_no_marks(
     assert share_of(store, pair, b"x")
 
 
-# Killed and raced.
-
-
-def in_child(work: Callable[[], bytes], kill_at: int | None = None, *, after: bool = False) -> tuple[int, bytes]:
-    """Do work in a forked child that is killed at its n-th call to the system, before or after it.
-
-    Returns:
-        The exit status (negative: the signal; 4: refused), and what came out of the work.
-    """
-    reader, writer = os.pipe()
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore", DeprecationWarning)
-        child = os.fork()
-    if child == 0:
-        leave, answer = os._exit, os.write
-        signal.alarm(30)
-        status = 1
-        try:
-            if kill_at is not None:
-                kill_at_call(kill_at, after=after)
-            answer(writer, work())
-            status = 0
-        except (VerificationError, StorageError):
-            status = 4
-        finally:
-            leave(status)
-    os.close(writer)
-    with os.fdopen(reader, "rb") as stream:
-        answered = stream.read()
-    return os.waitstatus_to_exitcode(os.waitpid(child, 0)[1]), answered
-
-
-def kill_at_call(number: int, *, after: bool) -> None:
-    """Count this process's calls that touch files from here on, and kill it at one of them."""
-    counter = itertools.count()
-
-    def counted(call: Callable[..., object]) -> Callable[..., object]:
-        def wrapped(*arguments: object, **named: object) -> object:
-            due = next(counter) == number
-            if due and not after:
-                os.kill(os.getpid(), signal.SIGKILL)
-            answer = call(*arguments, **named)
-            if due:
-                os.kill(os.getpid(), signal.SIGKILL)
-            return answer
-
-        return wrapped
-
-    for name in (
-        "open",
-        "read",
-        "write",
-        "fchmod",
-        "fsync",
-        "close",
-        "link",
-        "unlink",
-        "ftruncate",
-        "scandir",
-        "mkdir",
-    ):
-        setattr(os, name, counted(getattr(os, name)))
-    streams._rename_new = counted(streams._rename_new)  # type: ignore[assignment]
-
-
-def kills(attempt: Callable[[int, bool], int]) -> int:
-    """Attempt something that is killed at each call, until it is through before that; return how often it was."""
-    for number in itertools.count():
-        statuses = {attempt(number, after) for after in (False, True)}
-        if statuses == {0}:
-            return number
-        assert statuses <= {0, -signal.SIGKILL}, number
-
-
-def fresh(folder: Path, number: int) -> tuple[Callable[[bytes], bytes], Pair]:
-    """A folder of its own with one pair, and what gives a share of it; each time with the party key opened anew."""
-    place = folder / str(number)
-    with unlocked(ME) as own:
-        (pair,) = store_in(place, own).make(dealt().scalars[ME])
-
-    def share(message: bytes) -> bytes:
-        with unlocked(ME) as again:
-            return share_of(store_in(place, again), pair, message)
-
-    return share, pair
-
-
-def or_nothing(share: Callable[[bytes], bytes], message: bytes) -> bytes | None:
-    try:
-        return share(message)
-    except VerificationError:
-        return None
-
-
-@pytest.mark.parametrize("then", [b"x", b"y"])
-def test_killed_at_any_call_a_nonce_gives_one_share(tmp_path: Path, medium: str, then: bytes) -> None:
-    def attempt(number: int, after: bool) -> int:
-        share, _ = fresh(tmp_path, 2 * number + after)
-        status, first = in_child(lambda: share(b"x"), number, after=after)
-        # The next run is for the same message, or for another; then each is tried once more.
-        given = {first} - {b""} | {or_nothing(share, message) for message in (then, b"x", b"y", b"x")} - {None}
-        assert len(given) == 1, (medium, number, after)
-        if then == b"x":
-            # A crash is harmless: the next run signs the same message.
-            assert given == {or_nothing(share, b"x")}
-        return status
-
-    assert kills(attempt) > 10
-
-
-def test_killed_while_erasing(tmp_path: Path) -> None:
-    outcomes = set()
-
-    def attempt(number: int, after: bool) -> int:
-        share, pair = fresh(tmp_path, 2 * number + after)
-        first = share(b"x")
-
-        def erase() -> bytes:
-            with unlocked(ME) as own:
-                store_in(tmp_path / str(2 * number + after), own).erase(*pair)
-            return b"done"
-
-        status, _ = in_child(erase, number, after=after)
-        again = or_nothing(share, b"x")
-        assert again in (first, None)
-        assert or_nothing(share, b"y") is None
-        outcomes.add((status, again is None))
-        return status
-
-    assert kills(attempt) >= 4
-    assert outcomes >= {(0, True), (-signal.SIGKILL, False)}
-
-
-def test_killed_while_nonces_are_made(tmp_path: Path) -> None:
-    """What is left was never promised: it is refused, or whole."""
-    seen = set()
-
-    def attempt(number: int, after: bool) -> int:
-        place = tmp_path / f"{number}-{after}"
-
-        def make() -> bytes:
-            with unlocked(ME) as own:
-                store_in(place, own).make(dealt().scalars[ME])
-            return b"done"
-
-        status, _ = in_child(make, number, after=after)
-        with unlocked(ME) as own:
-            store = store_in(place, own)
-            for path in store.folder.glob("pair-*") if store.folder.exists() else ():
-                try:
-                    left = NoncePair.parse(path.read_bytes())
-                    outcome = taken_or_why(store, (left.hiding, left.binding))
-                except DocumentError:
-                    outcome = "incomplete"
-                assert outcome == "whole" or (outcome in ("refused", "incomplete") and status != 0)
-                seen.add(outcome)
-        return status
-
-    assert kills(attempt) > 10
-    assert seen == {"whole", "refused", "incomplete"}
-
-
-def taken_or_why(store: NonceStore, pair: Pair) -> str:
-    try:
-        hiding, binding = store.take(*pair, ONE).used()
-    except VerificationError as error:
-        return "refused" if "copied or restored" in error.what else error.what
-    return "whole" if (hiding * BASE, binding * BASE) == pair else "other nonces"
-
-
-@pytest.mark.parametrize("messages", [(b"x", b"y"), (b"x", b"x"), (b"x", b"y", b"z", b"x")])
-def test_processes_that_race_for_a_nonce(tmp_path: Path, medium: str, messages: tuple[bytes, ...]) -> None:
-    """They start together, in front of one closed gate."""
-    won = 0
-    for trial in range(12):
-        share, _ = fresh(tmp_path, trial)
-        gate = tmp_path / f"gate{trial}"
-        children = []
-        for message in messages:
-            reader, writer = os.pipe()
-            with warnings.catch_warnings():
-                warnings.simplefilter("ignore", DeprecationWarning)
-                child = os.fork()
-            if child == 0:
-                signal.alarm(30)
-                status = 1
-                try:
-                    while not gate.exists():
-                        pass
-                    os.write(writer, share(message))
-                    status = 0
-                except SharesError:
-                    status = 4
-                finally:
-                    os._exit(status)
-            os.close(writer)
-            children.append((child, reader))
-        gate.touch()
-        given = set()
-        for child, reader in children:
-            with os.fdopen(reader, "rb") as stream:
-                given.add(stream.read())
-            assert os.waitstatus_to_exitcode(os.waitpid(child, 0)[1]) in (0, 4)
-        given.discard(b"")
-        assert len(given) <= 1, (medium, trial)
-        won += len(given)
-    assert won >= 6
-
-
-def test_a_pair_put_back_while_another_is_spent_is_noticed(store: NonceStore, pair: Pair) -> None:
-    """Two spent names of one pair: nobody gets a share, not even who had one."""
-    (path,) = store.folder.glob("pair-*")
-    data = path.read_bytes()
-    store.take(*pair, ONE)
-    (store.folder / f"spent-{pair_id(*pair)}-{OTHER.hex()}").write_bytes(data)
-    for purpose in (ONE, OTHER):
-        with pytest.raises(VerificationError, match="this nonce was used for another"):
-            store.take(*pair, purpose)
-
-
-def test_a_medium_without_a_rename_will_do(store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(streams, "_rename_new", refuse)
-    monkeypatch.setattr(os, "link", refuse)
-    assert share_of(store, pair, b"x") == share_of(store, pair, b"x")
-    with pytest.raises(VerificationError, match="this nonce was used"):
-        share_of(store, pair, b"y")
-
-
-def test_on_a_full_medium_no_share_is_given_and_the_same_purpose_goes_on(
-    store: NonceStore, pair: Pair, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    def full(*_: object, **__: object) -> None:
-        raise OSError(errno.ENOSPC, "full")
-
-    with monkeypatch.context() as patch:
-        patch.setattr(streams, "_rename_new", full)
-        with pytest.raises(StorageError, match="full"):
-            store.take(*pair, ONE)
-    assert files(store) == ["batch", "pair", "spent"]
-    with pytest.raises(VerificationError, match="this nonce was used for another"):
-        store.take(*pair, OTHER)
-    assert store.take(*pair, ONE)
-
-
 # In the dark.
 
 
@@ -628,18 +329,6 @@ def test_a_batch_is_handed_out_signed(store: NonceStore, own: OpenPartyKey) -> N
     assert batch.card == own.card
     assert len(batch.commitments) == 5
     assert all(store.holds(one.hiding, one.binding) for one in batch.commitments)
-
-
-def test_what_a_killed_run_began_to_bind_is_erased_too(store: NonceStore) -> None:
-    """A run that dies in the middle of a file leaves it under a temporary name, with the sealed nonces in it."""
-    ((hiding, binding),) = store.make(dealt().scalars[ME])
-    begun = store.folder / f".bound-{pair_id(hiding, binding)}.json.{'0' * 16}.partial"
-    other = store.folder / f".bound-{'0' * 32}.json.{'0' * 16}.partial"
-    for path in (begun, other):
-        path.write_bytes(b"sealed nonces")
-    store.erase(hiding, binding)
-    assert not begun.exists()
-    assert other.exists()
 
 
 def test_a_folder_that_cannot_be_listed_has_no_unused_nonces(

@@ -10,7 +10,7 @@ from __future__ import annotations
 import json
 import os
 import shutil
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -18,7 +18,7 @@ import pytest
 from cli.harness import run
 from keys.quorum import CONTENT, NAMES, a_task, committed, dealt, part, speak
 from keys.signer import ME, given, prepared, step
-from keys.test_nonces import fresh, in_child, or_nothing, share_of, store_in
+from keys.stores import ONE, OTHER, Pair, fresh, in_child, or_nothing, share_of, store_in
 from parties import card, unlocked
 
 from shares.documents.base import sha256
@@ -26,33 +26,13 @@ from shares.documents.nonce_batch import BoundPair, NonceMark, NonceMarks, Nonce
 from shares.documents.party import OpenPartyKey
 from shares.documents.wrapping import card_sealer
 from shares.errors import SharesError, VerificationError
-from shares.group.edwards25519 import BASE, Point, Scalar
+from shares.group.edwards25519 import BASE, Scalar
 from shares.history.exchange import TaskFolder
 from shares.history.rounds import Inbox
 from shares.keys import frost, nonces
 from shares.keys.nonces import NonceStore
 from shares.keys.signing import SigningCourse
 from shares.memory import Secret
-
-Pair = tuple[Point, Point]
-ONE, OTHER = bytes([1]) * 32, bytes([2]) * 32
-
-
-@pytest.fixture
-def own() -> Iterator[OpenPartyKey]:
-    with unlocked(ME) as key:
-        yield key
-
-
-@pytest.fixture
-def store(tmp_path: Path, own: OpenPartyKey) -> NonceStore:
-    return store_in(tmp_path, own)
-
-
-@pytest.fixture
-def pair(store: NonceStore) -> Pair:
-    (made,) = store.make(dealt().scalars[ME])
-    return made
 
 
 def one(folder: Path, pattern: str) -> Path:

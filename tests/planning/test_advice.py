@@ -6,6 +6,7 @@ Sources: binomial tails by ``math.comb``; the odds of each changed model, worked
 from __future__ import annotations
 
 import math
+import sys
 from dataclasses import replace
 from pathlib import Path
 
@@ -13,10 +14,14 @@ import pytest
 
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
+from shares.planning import advice as module
 from shares.planning.advice import Change, advice, cause_words, largest, outlook
 from shares.planning.changes import moved, with_another
+from shares.planning.interval import interval
 from shares.planning.model import Cause, Model, model_of, yearly
-from shares.planning.odds import Contribution, Odds, contributions, odds
+from shares.planning.odds import Contribution, Odds, contributions, odds, without_each
+from shares.planning.reckoned import HISTORIES
+from shares.planning.simulate import Estimate, Simulated, simulate
 from shares.sharing.rule import Rule
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
@@ -133,12 +138,14 @@ def test_what_would_take_long_is_done_where_it_is_asked_for() -> None:
     assert outlook(GATE, 10).changes is not None
 
 
-def test_what_is_too_large_is_said_calmly() -> None:
+def test_what_is_too_large_is_said_calmly_without_numpy(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setitem(sys.modules, "numpy", None)
+    monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
     names = [f"pier {i}" for i in range(60)]
     groups = tuple(Rule(10, tuple(names[(7 * i + 11 * j) % 60] for j in range(30))) for i in range(6))
     view = outlook(Model(Rule(3, groups), (Cause("site", "a", frozenset(names), 0.1, 0.1),)), 10, full=True)
     assert (view.odds, view.causes, view.changes) == (None, None, None)
-    assert "too large to be worked out exactly" in view.advice[0]
+    assert "too large for exact odds" in view.advice[0]
     assert len(view.advice) == 3
 
 
@@ -188,3 +195,95 @@ def test_the_largest_causes_are_two_at_most_and_none_is_small() -> None:
     assert largest(tuple(causes), "exposure") == ("the site dry dock",)
     assert largest(tuple(causes), "absence") == largest((), "loss") == ()
     assert cause_words(causes[3]) == "the medium stick"
+
+
+# Simulated.
+
+
+def test_causes_and_changes_that_are_simulated_are_those_that_arithmetic_gives(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """Exact odds are there to be compared with: they are taken away from the outlook alone."""
+    names = frozenset({"north-pier", "registrar"})
+    model = replace(TIDE, causes=(*TIDE.causes, Cause("medium", "tin", names, 1e-9)))
+    exact = outlook(model, 10, full=True)
+    assert exact.odds is not None
+    assert exact.changes is not None
+    causes = {(one.kind, one.name): one for one in contributions(model, 10) or ()}
+    kinds = len(list(without_each(model)))
+    changes = {one.words: one for one in exact.changes}
+    monkeypatch.setattr(module, "odds", lambda *_: None)
+    told = list[tuple[int, int | None]]()
+    view = outlook(model, 10, full=True, histories=3_000, seed=2, drawn=lambda *step: told.append(step))
+    now = view.simulated
+    assert now == view.now == simulate(model, 10, histories=3_000, seed=2)
+    assert view.odds is None
+    assert view.causes
+    assert view.changes
+    assert view.causes_left_out == kinds - len(view.causes) > 0
+    assert view.changes_left_out == len(changes) - len(view.changes) > 0
+    for cause in view.causes:
+        whole = causes[cause.kind, cause.name]
+        parts = [(getattr(cause, of), getattr(whole, of)) for of in ("loss", "exposure", "absence")]
+        assert any(part is not None for part, _ in parts)
+        assert all(part is None or part == pytest.approx(real, abs=0.02) for part, real in parts)
+        assert all(part is None or part > 0 for part, _ in parts)
+    assert ("medium", "tin") not in {(one.kind, one.name) for one in view.causes}
+    for change in view.changes:
+        assert isinstance(change.odds, Simulated)
+        real = changes[change.words]
+        assert isinstance(real.odds, Odds)
+        assert change.loss is None or change.loss == pytest.approx(real.loss, abs=0.02)
+        assert change.exposure is None or change.exposure == pytest.approx(real.exposure, abs=0.02)
+        assert change.gain == (change.loss or 0) + (change.exposure or 0)
+        assert not (change.loss is change.exposure is None)
+    gains = [round(one.gain, 9) for one in view.changes]
+    assert gains == sorted(gains, reverse=True)
+    # One bar over all that is drawn.
+    total = 3_000 * (1 + kinds + len(changes))
+    assert [done for done, _ in told] == sorted({done for done, _ in told})
+    assert {whole for _, whole in told} == {told[-1][0] + 1} == {total}
+
+
+def test_an_entangled_policy_is_simulated_without_causes_where_they_are_not_asked_for(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr(module, "odds", lambda *_: None)
+    view = outlook(TIDE, 10)
+    assert (view.odds, view.causes, view.changes) == (None, None, None)
+    assert view.simulated == simulate(TIDE, 10, histories=HISTORIES, seed=1)
+    assert "--odds does it" in view.advice[1]
+
+
+def test_exact_odds_stay_what_they_are_beside_simulated_ones() -> None:
+    plain, both = outlook(TIDE, 10), outlook(TIDE, 10, histories=1000, seed=5)
+    assert replace(both, simulated=None) == plain
+    assert plain.now == both.now == plain.odds
+    assert both.simulated == simulate(TIDE, 10, histories=1000, seed=5)
+
+
+def seen(loss: int, exposure: int, absence: int = 0) -> Simulated:
+    estimates = (Estimate(count / 1000, *interval(count, 1000), count) for count in (loss, exposure, absence))
+    return Simulated(*estimates, None, 1000, 1)
+
+
+def test_words_for_what_is_simulated() -> None:
+    def danger(loss: int, exposure: int) -> str:
+        return advice(GATE, 10, seen(loss, exposure), None, None)[0]
+
+    told = danger(100, 0)
+    assert "lost with a chance of 10 % (8.2 % to 13 %) and exposed with one of below 0.37 %: loss is the" in told
+    assert danger(0, 100).endswith("exposure is the greater danger.")
+    for few in ((0, 0), (5, 10), (100, 100)):
+        assert danger(*few).endswith("which danger is the greater one, so many histories do not tell.")
+    assert danger(400, 500).endswith("one danger is about as great as the other.")
+    now = seen(100, 100)
+    assert advice(GATE, 10, now, (), ())[1] == (
+        "Of no single change can so many histories tell what it does to these odds."
+    )
+    better = Change("attest", "to attest every year", seen(0, 120), 0.1, None)
+    assert advice(GATE, 10, now, (), (better,))[1] == (
+        "Of single changes it helps most to attest every year: loss goes from 10 % to below 0.37 %."
+    )
+    attested = replace(GATE, attest_every=90, refresh_every=365)
+    assert "with a chance of below 0.37 %: drills" in advice(attested, 10, now, None, None)[2]

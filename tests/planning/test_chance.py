@@ -1,8 +1,8 @@
 """Chances that those who are hit satisfy a rule: published tails, and every set of hits tried one by one.
 
-Checked against: binomial and Poisson-binomial tails as exact fractions (vectors/reliability_k_of_n.json, which agree
-with scipy 1.17.1); the availability table of the planning page, to its digits; sums over all sets of events, in exact
-fractions, with the rule followed by hand.
+Checked against: binomial and Poisson-binomial tails as exact fractions (vectors/reliability_k_of_n.json), of scipy, and
+by numpy's convolution; the availability table of the planning page, to its digits; sums over all sets of events, in
+exact fractions, with the rule followed by hand.
 """
 
 from __future__ import annotations
@@ -10,13 +10,16 @@ from __future__ import annotations
 import itertools
 import json
 import math
+import sys
 from fractions import Fraction
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from scipy import stats
 from strategies import HARBOUR, rules
 
 from shares.planning.chance import Chance
@@ -60,6 +63,37 @@ def test_different_chances_make_poisson_binomial_tails(case: dict[str, Any]) -> 
     assert math.isclose(blocked(case["k"], [float(1 - p) for p in present]), case["unavailable"], rel_tol=CLOSE)
 
 
+@pytest.mark.parametrize("total", [1, 2, 3, 5, 7, 12, 40, 100, 255])
+def test_equal_chances_make_the_tails_of_a_reference_library(total: int) -> None:
+    for need in sorted({1, min(2, total), (total + 1) // 2, max(1, total - 1), total}):
+        rule, alone = flat(need, [0.0] * total)
+        enough, too_few = of(rule), of(dual(rule))
+        for hit in (1e-9, 1e-4, 0.05, 0.23, 0.5, 0.9, 0.999, 1 - 1e-9):
+            expected = stats.binom.sf(need - 1, total, hit)
+            if expected > sys.float_info.min:
+                assert math.isclose(enough.at(dict.fromkeys(alone, hit)), expected, rel_tol=CLOSE), (need, hit)
+            expected = stats.binom.sf(total - need, total, hit)
+            if expected > sys.float_info.min:
+                assert math.isclose(too_few.at(dict.fromkeys(alone, hit)), expected, rel_tol=CLOSE), (need, hit)
+
+
+@pytest.mark.parametrize("total", [2, 5, 7, 20, 60, 255])
+def test_different_chances_make_the_tails_of_reference_libraries(total: int) -> None:
+    lot = np.random.default_rng(total)
+    for least, most in ((-9, 0), (-2, -0.01)):
+        hit = 10 ** lot.uniform(least, most, total)
+        hit[: total // 2] = 1 - hit[: total // 2]
+        number = np.ones(1)  # How probable it is that so many are hit.
+        for chance in hit:
+            number = np.convolve(number, [1 - chance, chance])
+        for need in sorted({1, 2, (total + 1) // 2, total - 1, total}):
+            rule, alone = flat(need, hit.tolist())
+            found = of(rule).at(alone)
+            assert math.isclose(found, math.fsum(number[need:]), rel_tol=CLOSE)
+            # Its tails come as one minus the rest, so the smallest have no digits left.
+            assert math.isclose(found, stats.poisson_binom.sf(need - 1, hit), abs_tol=CLOSE)
+
+
 @pytest.mark.parametrize("case", VECTORS["smallest_n"], ids=lambda case: f"{case['k']} at {case['p']}")
 def test_the_smallest_total_that_meets_a_target(case: dict[str, Any]) -> None:
     away, target = float(1 - Fraction(case["p"])), float(1 - Fraction(case["target"]))
@@ -72,6 +106,7 @@ def test_the_smallest_total_that_meets_a_target(case: dict[str, Any]) -> None:
     [
         (0.05, {(2, 3): "0.7", (3, 5): "0.1", (4, 7): "0.02", (5, 7): "0.4"}),
         (0.10, {(2, 3): "2.8", (3, 5): "0.9", (4, 7): "0.3", (5, 7): "2.6"}),
+        # 5 % a year, unnoticed for five years: the page rounds to 23 %.
         (1 - 0.95**5, {(2, 3): "13.0", (3, 5): "8.0", (4, 7): "5.1", (5, 7): "19.6", (3, 6): "2.6"}),
     ],
 )
@@ -107,3 +142,29 @@ def test_shared_events_agree_with_trying_every_set_of_events(data: st.DataObject
     found = of(rule, *shared).at({name: float(p) for name, p in alone.items()}, list(map(float, together)))
     # Relative, not absolute: the smallest chances count as well.
     assert math.isclose(found, expected, rel_tol=CLOSE)
+
+
+@given(st.data())
+def test_what_is_likelier_to_hit_never_makes_a_rule_less_likely(data: st.DataObject) -> None:
+    """Rules have no way to be met by fewer: a coherent structure, as Barlow and Proschan call it."""
+    rule = data.draw(rules(most=8))
+    shared = data.draw(st.lists(st.frozensets(st.sampled_from(HARBOUR)), max_size=3))
+    parts = st.floats(0, 1)
+    low, high = (
+        [{name: data.draw(parts) for name in rule.paths()}, [data.draw(parts) for _ in shared]] for _ in range(2)
+    )
+    less_alone, more_alone = ({name: by(low[0][name], high[0][name]) for name in low[0]} for by in (min, max))
+    less_shared, more_shared = (list(map(by, low[1], high[1])) for by in (min, max))
+    chance = of(rule, *shared)
+    less, more = chance.at(less_alone, less_shared), chance.at(more_alone, more_shared)
+    assert less <= more * (1 + CLOSE)
+
+
+@given(rules(most=8), st.data())
+def test_a_node_that_needs_one_more_is_never_likelier(rule: Rule, data: st.DataObject) -> None:
+    alone = {name: data.draw(st.floats(0, 1)) for name in rule.paths()}
+    if rule.need < len(rule.children):
+        stricter = Rule(rule.need + 1, rule.children)
+        assert of(stricter).at(alone) <= of(rule).at(alone) * (1 + CLOSE)
+    lenient = Rule(rule.need, (*rule.children, data.draw(st.sampled_from(list(rule.paths())))))
+    assert of(rule).at(alone) <= of(lenient).at(alone) * (1 + CLOSE)

@@ -17,6 +17,7 @@ from strategies import rules, sets_of
 from shares.planning import diagram as diagrams
 from shares.planning.chance import Chance
 from shares.planning.diagram import MAX_CUSTODIANS, Diagram
+from shares.planning.truth_table import MAX_NAMES
 from shares.sharing.rule import Rule
 
 
@@ -148,7 +149,11 @@ def test_what_is_too_much_is_said_to_be() -> None:
     together = Diagram.of(pairs, list(pairs.paths()))
     assert together is not None
     assert sum(map(len, together.levels)) < 200
-    assert diagrams.MAX_STEPS < 2**20
+    assert diagrams.MAX_STEPS < diagrams.MAX_STEPS_OF_FEW < 2**20
+    # Up to 24 custodians are worth more steps.
+    assert diagrams.FEW == MAX_NAMES
+    pairs = Rule(1, tuple(Rule(2, (f"east {i}", f"west {i}")) for i in range(12)))
+    assert Diagram.of(pairs, [f"east {i}" for i in range(12)] + [f"west {i}" for i in range(12)]) is not None
 
 
 def test_200_custodians_with_repeats_are_too_much() -> None:

@@ -1,7 +1,8 @@
 """Exact intervals of a count: by their definition, by a reference library, and by what they promise.
 
 Sources: Clopper, Pearson 1934 (at each end of the interval, so many or more, or so many or fewer, have a chance of just
-2.5 %); incomplete beta functions by python-flint, in ball arithmetic; binomial tails as exact fractions.
+2.5 %); the same interval of scipy, and its quantiles of the beta distribution; incomplete beta functions by
+python-flint, in ball arithmetic; binomial tails as exact fractions and of scipy.
 """
 
 from __future__ import annotations
@@ -11,6 +12,7 @@ from fractions import Fraction
 
 import flint
 import pytest
+from scipy import stats
 
 from shares.planning.interval import at_least, interval
 
@@ -59,6 +61,40 @@ def test_large_counts_agree_with_a_reference_library(seen: int, histories: int) 
     if seen < histories:
         above = 1 - flint.arb(high).beta_lower(seen + 1, histories - seen, regularized=True)
         assert math.isclose(float(above), 0.025, rel_tol=1e-5)
+
+
+def several(total: int) -> list[int]:
+    wanted = {0, 1, 2, 3, total // 100, total // 3, total // 2, total - 2, total - 1, total}
+    return sorted(seen for seen in wanted if 0 <= seen <= total)
+
+
+# Logarithms of factorials grow with the number of histories, and what their rounding leaves out grows with them.
+@pytest.mark.parametrize(
+    ("total", "close"),
+    [*((total, 1e-12) for total in (1, 2, 3, 10, 100, 1000)), (10**4, 1e-10), (10**5, 1e-8), (10**6, 1e-7)],
+)
+def test_the_interval_is_that_of_a_reference_library(total: int, close: float) -> None:
+    for seen in several(total):
+        low, high = interval(seen, total)
+        expected = stats.binomtest(seen, total).proportion_ci(0.95, method="exact")
+        # Its ends are found to within 2e-12; the quantiles that they are defined by have all their digits.
+        assert math.isclose(low, expected.low, abs_tol=4e-12)
+        assert math.isclose(high, expected.high, abs_tol=4e-12)
+        if seen:
+            assert math.isclose(low, stats.beta.ppf(0.025, seen, total - seen + 1), rel_tol=close)
+        if seen < total:
+            assert math.isclose(high, stats.beta.ppf(0.975, seen + 1, total - seen), rel_tol=close)
+
+
+@pytest.mark.parametrize(
+    ("total", "close"), [(1, 1e-12), (7, 1e-12), (40, 1e-12), (200, 1e-12), (1000, 1e-11), (10**5, 1e-8), (10**9, 1e-5)]
+)
+def test_tails_are_those_of_a_reference_library(total: int, close: float) -> None:
+    for seen in several(total)[1:]:
+        for chance in (1e-9, 1e-6, 0.01, 0.3, 0.5, 0.9, 0.999, 0.999 * seen / total, min(1, 1.001 * seen / total)):
+            expected = stats.binom.sf(seen - 1, total, chance)
+            if expected > 1e-290:
+                assert math.isclose(at_least(seen, total, chance), expected, rel_tol=close), (seen, chance)
 
 
 def test_nothing_seen_is_not_never() -> None:

@@ -8,7 +8,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from shares.planning.numbers import chance, every, horizon, one_in, years
+from shares.planning.interval import interval as of_counts
+from shares.planning.numbers import chance, every, horizon, interval, one_in, years
 
 
 def read(text: str) -> float:
@@ -23,6 +24,24 @@ def test_a_chance_is_told_to_the_digits_that_are_meant(p: float) -> None:
     else:
         assert math.isclose(read(told), p, rel_tol=0.05 if p >= 1e-4 else 0.34)
         assert sum(c.isdigit() for c in told.split("e")[0].replace("0.", "").lstrip("0")) <= 2
+
+
+@given(st.integers(1, 10**9), st.floats(0, 1))
+def test_an_interval_is_told_no_narrower_than_it_is_and_not_much_wider(histories: int, part: float) -> None:
+    """For the intervals there are: those of so many seen in so many histories."""
+    count = min(int(part * histories), histories)
+    low, high = of_counts(count, histories)
+    told = interval(low, high)
+    if count in (0, histories):
+        words, end = told.split(" ", 1)
+        assert words == ("above" if count else "below")
+        ends = (read(end), 1.0) if count else (0.0, read(end))
+    else:
+        ends = tuple(map(read, told.split(" to ")))  # type: ignore[assignment]
+    slack = 1e-12
+    assert ends[0] <= low + slack
+    assert ends[1] >= high - slack
+    assert ends[1] - ends[0] <= 3 * (high - low) + slack
 
 
 @given(st.floats(1e-5, 1 / 3))

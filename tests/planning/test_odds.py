@@ -2,7 +2,8 @@
 
 Sources: the planning page's availability arithmetic (independent losses; over five years a 3-of-5 with yearly
 attestation and repair fails about 0.6 %, unattended 8.0 %, an unattended 3-of-6 2.6 %); binomial tails by
-``math.comb``.
+``math.comb`` and of scipy; Barlow, Proschan 1975 (k-out-of-n of like exponential lives has an increasing failure rate);
+A. W. Marshall, I. Olkin, "Inequalities: Theory of Majorization", 1979 (Karamata's inequality).
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from scipy import stats
 
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
@@ -51,6 +53,17 @@ def test_the_arithmetic_of_the_planning_page() -> None:
     assert f"{of(attesting_every(three_of_five, 365), 5).loss:.1%}" == "0.6%"
     # A delay of two weeks in each repair changes the last digit at most.
     assert f"{of(replace(three_of_five, attest_every=365, repair_after=14), 5).loss:.1%}" in ("0.6%", "0.7%")
+
+
+@pytest.mark.parametrize("total", [1, 2, 3, 5, 7, 40])
+@pytest.mark.parametrize("chance", [1e-9, 0.05, 0.23, 0.999])
+def test_odds_of_a_year_are_tails_of_a_reference_library(total: int, chance: float) -> None:
+    for need in {1, (total + 1) // 2, total}:
+        found = of(alike(need, total, loss=chance, leak=chance), 1)
+        present = of(alike(need, total, absent=chance), 1)
+        too_few, enough = (stats.binom.sf(fewest - 1, total, chance) for fewest in (total - need + 1, need))
+        for odd, expected in ((found.loss, too_few), (present.absence, too_few), (found.exposure, enough)):
+            assert math.isclose(odd, expected, rel_tol=1e-12, abs_tol=1e-300)
 
 
 def test_exposure_is_by_the_epoch() -> None:
@@ -145,8 +158,10 @@ def test_policies_without_any_rate_have_odds(path: Path) -> None:
         assert all(0 <= getattr(one, of) <= getattr(found, of) for of in ODDS)
 
 
-def test_a_5_of_7_is_less_recoverable_than_a_3_of_5_and_less_exposed() -> None:
-    small, large = of(alike(3, 5, loss=0.05, leak=0.01)), of(alike(5, 7, loss=0.05, leak=0.01))
+@pytest.mark.parametrize(("lost", "years"), [(0.05, 1), (0.10, 1), (0.05, 5)])
+def test_a_5_of_7_is_less_recoverable_than_a_3_of_5_and_less_exposed(lost: float, years: float) -> None:
+    """At every rate that the planning page shows; 5 % a year for five years are its 23 %."""
+    small, large = (of(alike(need, total, loss=lost, leak=0.01), years) for need, total in ((3, 5), (5, 7)))
     assert large.loss > small.loss
     assert large.exposure < small.exposure
 
@@ -189,6 +204,7 @@ def test_one_more_custodian_never_makes_loss_or_absence_likelier(delays: bool) -
         no_more(more.loss, less.loss, by=0.01 if delays else 1e-10)
         no_more(more.absence, less.absence, by=0.03 if delays else 1e-10)
         no_more(less.exposure, more.exposure)
+        no_more(less.years_to_loss, more.years_to_loss, by=0.03 if delays else 1e-10)
 
     check()
 
@@ -200,6 +216,7 @@ def test_a_higher_threshold_never_makes_exposure_likelier_nor_loss_less_likely(m
         no_more(higher.exposure, lower.exposure)
         no_more(lower.loss, higher.loss)
         no_more(lower.absence, higher.absence)
+        no_more(higher.years_to_loss, lower.years_to_loss)
 
 
 @given(models(delays=False))
@@ -209,8 +226,43 @@ def test_attesting_half_as_often_never_makes_loss_less_likely(model: Model) -> N
         half, none = of(attesting_every(model, 2 * model.attest_every)), of(attesting_every(model, None))
         no_more(of(model).loss, half.loss)
         no_more(half.loss, none.loss)
+        no_more(half.years_to_loss, of(model).years_to_loss)
+        no_more(none.years_to_loss, half.years_to_loss)
     if model.refresh_every is not None:
         no_more(of(model).exposure, of(refreshing_every(model, 2 * model.refresh_every)).exposure)
+
+
+@given(
+    st.integers(1, 7).flatmap(lambda total: st.tuples(st.integers(1, total), st.just(total))),
+    st.floats(1e-4, 0.99),
+    st.lists(st.integers(1, 1500), min_size=2, max_size=2).map(sorted),
+    st.integers(1, 2000),
+)
+def test_of_like_custodians_a_shorter_interval_never_makes_loss_or_exposure_likelier(
+    rule: tuple[int, int], chance: float, intervals: list[int], days: int
+) -> None:
+    """Any two intervals, where the shorter one is no part of the longer one: the hazard grows within a period, so the
+    sum over the periods is a convex one, and of those that make up the same days the longer ones majorize. It takes
+    custodians who are alike: of unlike ones the hazard may fall again, once the weakest are gone."""
+    shorter, longer = intervals
+    model = alike(*rule, loss=chance, leak=chance)
+    often, seldom = (
+        of(refreshing_every(attesting_every(model, every), every), days / 365) for every in (shorter, longer)
+    )
+    no_more(often.loss, seldom.loss)
+    no_more(often.exposure, seldom.exposure)
+    no_more(seldom.years_to_loss, often.years_to_loss)
+
+
+@given(models(delays=True), st.lists(st.floats(1, 100), min_size=2, max_size=2).map(sorted))
+def test_more_time_to_come_together_and_shorter_absences_never_make_absence_likelier(
+    model: Model, times: list[float]
+) -> None:
+    shorter, longer = times
+    hurried, patient = (of(replace(model, recover_within=time)).absence for time in times)
+    no_more(patient, hurried)
+    short, long = (of(replace(model, recover_within=8.0, absent_for=mean)).absence for mean in (shorter, longer))
+    no_more(short, long)
 
 
 @pytest.mark.parametrize("delays", [False, True])
@@ -226,6 +278,7 @@ def test_a_higher_rate_never_makes_anything_less_likely(delays: bool) -> None:
         no_more(lower.exposure, higher.exposure)
         no_more(lower.loss, higher.loss, by=0.01 if delays else 1e-10)
         no_more(lower.absence, higher.absence, by=0.03 if delays else 1e-10)  # 1.1 % was seen, of a lone custodian's
+        no_more(higher.years_to_loss, lower.years_to_loss, by=0.03 if delays else 1e-10)
 
     check()
 

@@ -104,6 +104,28 @@ def test_simulated_and_exact_odds_agree(seed: int) -> None:
     assert_agree(simulate(model, years, histories=20_000, seed=seed), model, years)
 
 
+@pytest.mark.parametrize(
+    ("seed", "branches"), [(1, 2), (2, 3), (3, 4), (4, 5), (5, 6), (6, 7), (7, 8), (8, 8), (1000, 10)]
+)
+def test_24_custodians_in_many_branches_have_exact_odds(seed: int, branches: int) -> None:
+    """Each at a site and in a line of their own, with houses that do not cross: and the simulation agrees."""
+    lot = random.Random(seed)
+    names = [f"pier {i}" for i in range(24)]
+    groups = tuple(
+        Rule(lot.choice([2, 3, 4, 6]), tuple(lot.sample(names, lot.randint(8, 20)))) for _ in range(branches)
+    )
+    rule = Rule(max(1, branches // 5), groups) if branches == 10 else Rule(lot.randint(1, branches), groups)
+    causes = [
+        Cause(kind, name, frozenset({name}), 0.02, 0.01, 0.02)  # type: ignore[arg-type]
+        for name in names
+        for kind in ("share", "person", "site", "line")
+    ]
+    houses = [Cause("medium", f"make {i}", frozenset(names[6 * i : 6 * i + 6]), 0.01, 0.01) for i in range(4)]
+    model = Model(rule, (*causes, *houses), attest_every=365, refresh_every=365)
+    assert odds(replace(model, causes=tuple(causes)), 10) is not None
+    assert_agree(simulate(model, 10, histories=5_000, seed=seed), model, 10)
+
+
 @pytest.mark.parametrize("path", sorted(EXAMPLES.glob("*.toml")), ids=lambda path: path.stem)
 def test_policies_agree(path: Path) -> None:
     model = model_of(Policy.parse(path.read_bytes()))

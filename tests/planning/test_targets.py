@@ -15,10 +15,12 @@ import pytest
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
 from shares.planning import targets as module
-from shares.planning.changes import with_another
+from shares.planning.interval import interval
+from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, odds
-from shares.planning.targets import INTERVALS, MAX_CUSTODIANS, Targets, meeting, parse_targets
+from shares.planning.simulate import Estimate, Simulated
+from shares.planning.targets import INTERVALS, Targets, meeting, parse_targets
 from shares.sharing.rule import Rule
 
 SMALL = 7
@@ -109,10 +111,9 @@ def test_what_cannot_be_met_is_met_as_nearly_as_can_be() -> None:
     assert not answer.met
     (nearest,) = answer.choices
     assert {cause.kind for cause in answer.causes} >= {"site", "line"}
-    names, peopled = module._people(model)
-    assert len(names) == MAX_CUSTODIANS
+    custodians = lined_up(model)
     for total, need in itertools.combinations(range(MAX_CUSTODIANS, 1, -1), 2):
-        best = odds(replace(peopled, rule=Rule(need, names[:total]), attest_every=7, refresh_every=7), 10)
+        best = odds(replace(custodians.rule(need, total), attest_every=7, refresh_every=7), 10)
         assert best is not None
         assert targets.missed_by(best) >= targets.missed_by(nearest.odds) * (1 - 1e-9)
         assert not targets.met_by(best)
@@ -125,26 +126,6 @@ def test_what_misses_one_target_alone_still_takes_it_easy_with_the_other() -> No
     assert answer.choices[0].refresh_every == 7
 
 
-def test_custodians_are_taken_from_different_sites_first_and_imagined_like_them() -> None:
-    gate = example("tide-gate")
-    names, peopled = module._people(gate)
-    sites = [cause.members for cause in gate.causes if cause.kind == "site"]
-    for start in range(0, 12, 3):
-        assert {i for i, site in enumerate(sites) for name in names[start : start + 3] if name in site} == {0, 1, 2}
-    assert peopled.causes == gate.causes
-    # Four custodians become twelve: each again from the first on, on the site of the one whom it is like.
-    draft = example("first-draft")
-    names, peopled = module._people(draft)
-    assert len(set(names)) == MAX_CUSTODIANS
-    assert set(names[:4]) == set(draft.custodians)
-    by_hand = replace(draft, rule=Rule(1, names[:4]))
-    for like in names[:4]:
-        by_hand = with_another(by_hand, like)
-    for site in (cause for cause in by_hand.causes if cause.kind in ("site", "line")):
-        now = next(cause for cause in peopled.causes if (cause.kind, cause.name) == (site.kind, site.name))
-        assert now.members & set(names[:8]) == site.members
-
-
 def test_how_far_odds_miss() -> None:
     targets = Targets(0.01, 0.1)
     assert targets.missed_by(Odds(0.01, 0.1, 0.0, 1.0)) == 0
@@ -152,6 +133,19 @@ def test_how_far_odds_miss() -> None:
     assert targets.met_by(Odds(0.01, 0.1, 1.0, 1.0))
     assert not targets.met_by(Odds(0.0101, 0.1, 0.0, 1.0))
     assert not targets.met_by(Odds(0.01, 0.101, 0.0, 1.0))
+
+
+def test_whether_simulated_odds_meet_targets() -> None:
+    def found(loss: int, exposure: int) -> Simulated:
+        estimates = (Estimate(count / 1000, *interval(count, 1000), count) for count in (loss, exposure, 0))
+        return Simulated(*estimates, None, 1000, 1)
+
+    # 5 of 1,000 are anything from 0.16 % to 1.2 %, and none are up to 0.37 %.
+    for loss, exposure, met in ((0.012, 0.012, True), (0.011, 0.012, None), (0.0016, 1.0, False), (0.0017, 1.0, None)):
+        assert Targets(loss, exposure).met_by(found(5, 5)) is met
+    assert Targets(0.0016, 0.006).met_by(found(5, 5)) is False
+    assert Targets(0.0036, 1.0).met_by(found(0, 1000)) is None
+    assert Targets(0.0037, 1.0).met_by(found(0, 1000)) is True
 
 
 def test_rules_that_are_too_large_are_passed_over(monkeypatch: pytest.MonkeyPatch) -> None:
