@@ -39,6 +39,8 @@ FREE = (
     "cli/test_completion.py",
     "cli/test_key.py",
     "cli/test_key_folder.py",
+    "cli/test_key_forms.py",
+    "cli/test_key_tasks.py",
     "cli/test_plan.py",
     "cli/test_polynomial.py",
     "documents/test_acknowledgement.py",
