@@ -21,6 +21,7 @@ from typing import Any
 
 import hypothesis
 import pytest
+from kernel_free import BUT, FREE, TESTS, Guard
 
 import shares
 from shares.errors import SharesError
@@ -52,9 +53,10 @@ def vectors() -> Callable[[str], Any]:
 
 
 def pytest_configure(config: pytest.Config) -> None:
-    """Refuse what would print the locals of frames that hold secrets."""
+    """Refuse what would print the locals of frames that hold secrets; guard the files that never reach the kernel."""
     if config.getoption("showlocals"):
         raise pytest.UsageError("--showlocals prints secrets: these tests are never run with it")
+    config.pluginmanager.register(Guard(FREE, BUT, TESTS))
 
 
 def pytest_report_header(config: pytest.Config) -> list[str]:

@@ -13,6 +13,7 @@ from __future__ import annotations
 import base64
 import hashlib
 import json
+from collections.abc import Mapping
 from typing import Any, ClassVar, NoReturn, Self
 
 import rfc8785
@@ -88,6 +89,13 @@ class Document(BaseModel):
     def public(self, *members: str) -> dict[str, Any]:
         """Return the members named, as JSON values."""
         return self.model_dump(mode="json", by_alias=True, include=set(members))
+
+    def model_copy(self, *, update: Mapping[str, Any] | None = None, deep: bool = False) -> Self:
+        """Return a copy, some members changed, which remembers nothing that was worked out from the old ones."""
+        copied = super().model_copy(update=update, deep=deep)
+        for name in copied.__dict__.keys() - type(self).model_fields.keys():
+            del copied.__dict__[name]
+        return copied
 
 
 def _check_kind(members: dict[str, Any], wanted: str, where: str | None) -> None:

@@ -11,6 +11,7 @@ Does not: know what is said in a round; ``task_message`` does. What is signed or
 from __future__ import annotations
 
 from datetime import datetime, timedelta
+from functools import cached_property
 from typing import Annotated, Any, ClassVar, Final, Literal, Self, TypeAlias
 
 from pydantic import Field as Member
@@ -223,6 +224,11 @@ class Task(Document):
 
     def digest(self) -> bytes:
         """Return what every message of the task names: 32 bytes over all of it, its signature included."""
+        return self._digest
+
+    @cached_property
+    def _digest(self) -> bytes:
+        # Every message is compared with it, again and again, and with 60 parties it takes milliseconds.
         return sha256(b"shares/v1/task-digest", canonical(self.model_dump(mode="json")))
 
     @property

@@ -11,6 +11,7 @@ Does not: judge what is said; ``keys`` does.
 from __future__ import annotations
 
 from datetime import datetime
+from functools import cached_property
 from typing import Annotated, Any, ClassVar, Literal, Self, TypeAlias
 
 from pydantic import Field as Member
@@ -206,6 +207,11 @@ class TaskMessage(Document):
 
     def digest(self) -> bytes:
         """Return 32 bytes over the whole message, its signature included."""
+        return self._digest
+
+    @cached_property
+    def _digest(self) -> bytes:
+        # Each of a party's messages names all earlier ones by it, and is checked so at every look into a folder.
         return sha256(b"shares/v1/task-message", canonical(self.model_dump(mode="json")))
 
     def box_for(self, name: str) -> bytes | None:

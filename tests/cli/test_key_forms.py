@@ -52,7 +52,7 @@ class TestForms:
             script = "\n".join(line for line in done.out.splitlines() if line.startswith("  "))
             for capital, name in capitals.items():
                 script = re.sub(rf"\b{capital}\b", name, script)
-            path = {"PATH": f"{PROGRAM.parent}:{os.environ['PATH']}"}
+            path = os.environ | {"PATH": f"{PROGRAM.parent}:{os.environ['PATH']}"}
             told = subprocess.run(
                 ["sh", "-e"], input=script, cwd=spaced.folder, env=path, capture_output=True, text=True
             )

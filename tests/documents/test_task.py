@@ -118,6 +118,17 @@ def test_a_task_says_what_it_is() -> None:
     assert len({new_task().digest() for _ in range(3)}) == 3
 
 
+@pytest.mark.parametrize("deep", [False, True])
+def test_a_changed_copy_has_a_digest_of_its_own(deep: bool) -> None:
+    for one in (new_task(), message(bodies()[0])):
+        digest, changes = one.digest(), {"created": one.created - timedelta(days=1)}
+        changed = one.model_copy(update=changes, deep=deep)
+        fresh = type(one).model_construct(**{**dict(one), **changes})
+        assert (changed.digest(), one.digest()) == (fresh.digest(), digest)
+        assert changed.digest() != digest
+        assert one.model_copy(deep=deep) == one == type(one).parse(one.to_file())
+
+
 def test_a_message_is_its_senders_alone() -> None:
     for body in bodies():
         one = message(body)
