@@ -224,7 +224,7 @@ def _lines(plan: Plan) -> Iterator[str]:
         yield ""
         yield from prose(f"{finding.severity.capitalize()}: {finding.what} {finding.advice}")
     yield ""
-    yield from prose(_verdict(plan))
+    yield from prose(plan.verdict)
 
 
 def _quorum_lines(plan: Plan) -> Iterator[str]:
@@ -240,14 +240,3 @@ def _counted(count: Bounds) -> str:
     """Write a number that may have hundreds of digits."""
     low, high = (f"{n:,}" if n < 10**15 else f"about 10^{round(math.log10(n))}" for n in count)
     return low if count.exact else f"{low} to {high}"
-
-
-def _verdict(plan: Plan) -> str:
-    if plan.refused:
-        return "The policy is strict: `shares split` refuses it while a serious finding stands. Change the policy."
-    if plan.serious:
-        return (
-            "Serious findings stand. `shares split` tells them and goes on, since the policy does not say "
-            "`strict = true`. Better change the policy first."
-        )
-    return "Nothing serious was found in the structure."
