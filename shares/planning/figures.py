@@ -76,7 +76,7 @@ class PlaneFigure:
         columns, rows: marks of the two axes.
         lines: for each n, the path from 1 of n to n of n.
         frontier: the path along the best rules.
-        marks: one for each rule: "best" or "other".
+        marks: one for each rule: "best", "extreme" (one alone recovers, or all are needed) or "other".
         policy: where the policy lies; None where that is not known.
         spread: the path along the intervals of its loss and exposure, where these are simulated.
         labels: names of the best rules, as far as there is room, and of the lines.
@@ -111,11 +111,13 @@ class CurveFigure:
 
 
 def tick_words(chance: float) -> str:
-    """Write a chance beside an axis.
+    """Write a chance beside an axis; at the end at which all that is less is drawn, without its "or less".
 
-    >>> tick_words(1.0), tick_words(0.001)
-    ('100 %', '0.1 %')
+    >>> tick_words(1.0), tick_words(0.001), tick_words(LEAST)
+    ('100 %', '0.1 %', '1 in a trillion')
     """
+    if chance < 1.5 * LEAST:
+        return "1 in a trillion"
     return "100 %" if chance >= 1 else numbers.chance(chance)
 
 
@@ -138,7 +140,11 @@ def plane_figure(points: Sequence[Point], policy: Reckoned | None) -> PlaneFigur
 
     marks = {
         (one.need, one.total): mark(
-            one.odds, "best" if one.best else "other", f"{one.need} of {one.total}", one.odds.loss, one.odds.exposure
+            one.odds,
+            "best" if one.best else "extreme" if one.extreme else "other",
+            f"{one.need} of {one.total}",
+            one.odds.loss,
+            one.odds.exposure,
         )
         for one in points
     }

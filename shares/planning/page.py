@@ -138,7 +138,8 @@ def _dangers(view: Outlook) -> Iterator[_Danger]:
         return
     for of, what in DANGERS.items():
         one_in = numbers.one_in(value(view.now, of)) if view.odds else ""
-        yield _Danger(what, words(view.now, of), one_in, "; ".join(advice.largest(view.causes or (), of)))
+        by = "not worked out" if view.causes is None else "; ".join(advice.largest(view.causes, of))
+        yield _Danger(what, words(view.now, of), one_in, by)
 
 
 def _simulated(view: Outlook) -> str:
@@ -179,7 +180,7 @@ def _better(points: tuple[Point, ...], view: Outlook) -> str:
         return "The odds of the policy itself are not known, so it is not on the plane."
     loss, exposure, absence = (ends(view.now, of)[0] for of in DANGERS)
     here = Odds(loss, exposure, absence, math.inf)
-    found = [point for point in points if point.better_than(here)]
+    found = [point for point in points if point.better_than(here) and not point.extreme]
     own = _listed([point for point in found if not point.imagined])
     imagined = _listed([point for point in found if point.imagined])
     if own and imagined:

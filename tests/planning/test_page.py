@@ -196,9 +196,10 @@ def test_what_is_drawn_is_also_told(pages: Pages) -> None:
     assert "this policy: loss 0.52 %, exposure 0.74 %. Both are lower than" in picture.locator("desc").text_content()
     page.evaluate("for (const e of document.querySelectorAll('details')) e.open = true")
     rows = page.locator("details", has_text="All 78 rules").locator("tbody tr").all_inner_texts()
-    assert len(rows) == picture.locator("circle").count() == 78
+    assert len(rows) == picture.locator("circle, path.extreme").count() == 78
+    assert picture.locator("path.extreme").count() == sum(row.endswith("no choice") for row in rows) == 23
     assert next(row for row in rows if row.startswith("3 of 5")) == "3 of 5\t0.52 %\t0.74 %\tnone\t"
-    assert sum(row.endswith("best") for row in rows) == picture.locator("circle.best").count() > 5
+    assert sum(row.endswith("not bettered") for row in rows) == picture.locator("circle.best").count() > 5
     along = page.locator("details", has_text="The same in numbers").locator("tbody tr").all_inner_texts()
     assert along[-1].startswith("never\t35 %")
     bars = page.locator("table.causes tbody tr").first
@@ -219,7 +220,9 @@ def test_it_is_legible_without_colour(pages: Pages) -> None:
     coloured = {(tag, kind) for tag, kind, spread in fills if spread > 20}
     assert coloured == {("path", "policy"), ("path", "now")}
     diamonds = {
-        (tag, kind) for tag, kind, _ in fills if tag == "path" and kind not in ("total", "frontier", "line0", "line1")
+        (tag, kind)
+        for tag, kind, _ in fills
+        if tag == "path" and kind not in ("total", "frontier", "line0", "line1", "extreme")
     }
     assert diamonds == coloured
 
@@ -248,7 +251,7 @@ def test_what_could_not_be_worked_out_is_left_out_and_said(pages: Pages) -> None
     assert "Over 10 years Chance, simulated (95 % interval)" in text
     assert f"Simulated from 100,000 histories, drawn by numpy {numpy.__version__} with seed 1, the same ones at" in text
     assert page.locator("svg.plane path.policy").count() == 1
-    assert "The diamond is this policy, as simulated. Intervals are" in text
+    assert "The diamond is this policy, as simulated, and its cross the 95 % intervals. Intervals are" in text
     headings = page.get_by_role("heading", level=2).all_inner_texts()
     assert not {"What to change first", "Where the danger comes from"} & set(headings)
     assert "In short" in headings
@@ -293,6 +296,12 @@ def test_what_no_history_showed_is_drawn_at_the_most_that_it_can_be(pages: Pages
     assert "Whether any such rule has less of both than this policy, so many histories do not tell." in (
         picture.locator("desc").text_content()
     )
+
+
+def test_what_is_drawn_at_the_edge_is_said_to_be_less(pages: Pages) -> None:
+    said = "What is less likely than 1 in a trillion is drawn as that."
+    assert said in pages.show(PAGES["harmless"]()).locator("figcaption").first.inner_text()
+    assert said not in pages.show(PAGES["tide-gate"]()).locator("figcaption").first.inner_text()
 
 
 def test_without_numpy_it_says_what_to_install(pages: Pages, monkeypatch: pytest.MonkeyPatch) -> None:
