@@ -40,7 +40,7 @@ class Box(NamedTuple):
     bottom: int
 
 
-PLANE = Box(760, 572, 116, 730, 20, 505)
+PLANE = Box(790, 572, 116, 740, 20, 505)
 CURVES = Box(500, 300, 108, 440, 16, 240)
 _THIS = "this policy"
 _NEVER_AT = 476
