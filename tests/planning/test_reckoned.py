@@ -11,7 +11,7 @@ import sys
 import pytest
 
 from shares.errors import ExtraMissingError, ParameterError
-from shares.planning.interval import interval
+from shares.planning.confidence import interval
 from shares.planning.model import Cause, Model
 from shares.planning.odds import Odds
 from shares.planning.reckoned import HISTORIES, apart, briefly, ends, fall, instead, value, words

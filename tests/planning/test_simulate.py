@@ -19,7 +19,7 @@ import pytest
 
 from shares.documents.policy import Policy
 from shares.errors import ExtraMissingError, ParameterError
-from shares.planning.interval import at_least, interval
+from shares.planning.confidence import at_least, interval
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import odds
 from shares.planning.simulate import Estimate, Simulated, simulate
