@@ -20,6 +20,7 @@ import pytest
 
 import shares
 from shares.cli import main
+from shares.planning.simulate import INSTALL
 
 ROOT = Path(__file__).resolve().parent.parent
 PROJECT = tomllib.loads((ROOT / "pyproject.toml").read_text("utf-8"))
@@ -85,6 +86,28 @@ def test_versions_agree() -> None:
     assert newest is not None
     assert newest[1] == shares.__version__
     assert importlib.metadata.version("shares") == shares.__version__
+
+
+def test_nobody_is_told_to_install_by_name_what_a_stranger_may_have_on_an_index() -> None:
+    readme = (ROOT / "README.md").read_text("utf-8")
+    ((name, floor),) = (bound.split(">=") for bound in PROJECT["project"]["optional-dependencies"]["plan"])
+    assert f"{name} {floor} or later beside shares" in INSTALL
+    assert f"{name} ({floor} or later)" in readme
+    (heading,) = re.findall(r"'(.*)'", INSTALL)
+    (part,) = re.findall(rf"^## {heading}\n(.*?)^## ", readme, flags=re.MULTILINE | re.DOTALL)
+    assert re.findall(r"pip install (.*)", part) == [
+        "'.[plan]'",
+        "'./shares-VERSION-cp311-abi3-linux_x86_64.whl[plan]'",
+    ]
+    by_name = re.compile(r"pip3? install (-\S+ )*['\"]?shares\b(?!-)|\bshares\[plan\]")
+    assert all(map(by_name.search, ("pip install -U shares", "pip install 'shares[plan]'", "the extra shares[plan]")))
+    assert [
+        name
+        for name in tracked()
+        if name.endswith((".py", ".md"))
+        and name.startswith(("shares/", "README", "CHANGE"))
+        and by_name.search((ROOT / name).read_text("utf-8"))
+    ] == []
 
 
 def test_top_level_holds_what_was_agreed_and_nothing_else() -> None:

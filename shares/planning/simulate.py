@@ -29,8 +29,10 @@ from shares.planning.odds import days_of
 from shares.planning.structure import dual
 
 MAX_HISTORIES = 1_000_000_000
-EXTRA = "shares[plan]"
-"""The extra that brings numpy."""
+NUMPY = "numpy"
+INSTALL = "install numpy 1.26.4 or later beside shares, as README says under 'Two commands'"
+"""What to do where it is missing. The extra that brings it is not named: a stranger's package may have the name of this
+one on an index, and would be what ``pip install`` fetches by that name."""
 
 _MOST_AT_ONCE = 1 << 14
 _NUMBERS_AT_ONCE = 1 << 20
@@ -111,9 +113,7 @@ def simulate(
     except ModuleNotFoundError as error:
         if error.name != "numpy":
             raise
-        raise ExtraMissingError(
-            "to simulate takes numpy, which is not installed", hint=f"install the extra {EXTRA}"
-        ) from None
+        raise ExtraMissingError("to simulate takes numpy, which is not installed", hint=INSTALL) from None
 
     losses = Clocks.of(dual(model.rule), model.causes, lost)
     leaks = Clocks.of(model.rule, model.causes, leaked)
