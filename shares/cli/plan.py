@@ -91,11 +91,12 @@ def command(
     Rates come from the policy, or are assumed and said to be. Whether odds are good enough is for people to say.
 
     Odds are exact where that is not too much work. Where the same custodians stand in many groups, or sites, lines and
-    media cross one another in many ways, they are simulated, each with its interval, by numpy (the extra shares[plan];
-    without it the structure is told alone). There --odds simulates every cause and change: seconds for each, and up to
+    media cross one another in many ways, they are simulated, each with its interval, by numpy: without it (README, 'Two
+    commands') the structure is told alone. There --odds simulates every cause and change: seconds for each, and up to
     an hour in all for 200 custodians. With --compare and --targets nothing is simulated that is exact.
 
-    What a policy holds is in FORMAT.md, section 12; examples to begin with are in examples/policies/ of the source.
+    What a policy holds is in FORMAT.md, section 12 (shares --help says where that lies); examples to begin with are in
+    examples/policies/ of the source.
 
     \b
     Example:

@@ -25,6 +25,7 @@ from shares.planning.assumed import assumptions
 from shares.planning.examine import examine
 from shares.planning.model import model_of
 from shares.planning.page import CAUTIONS, Drawn, drawn, plan_page
+from shares.planning.simulate import INSTALL
 
 EXAMPLES = {
     path.stem: path.read_bytes() for path in (Path(__file__).parents[2] / "examples" / "policies").glob("*.toml")
@@ -308,7 +309,7 @@ def test_without_numpy_it_says_what_to_install(pages: Pages, monkeypatch: pytest
     monkeypatch.setitem(sys.modules, "numpy", None)
     monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
     page = pages.show(page_of(entangled()))
-    assert "install the extra shares[plan]" in page.locator("body").inner_text()
+    assert INSTALL in page.locator("body").inner_text()
     assert "Chance" not in page.locator("body").inner_text()
     assert (
         "The odds of the policy itself are not known, so it is not on the plane." in page.locator("body").inner_text()

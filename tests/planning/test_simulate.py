@@ -19,10 +19,10 @@ import pytest
 
 from shares.documents.policy import Policy
 from shares.errors import ExtraMissingError, ParameterError
-from shares.planning.interval import at_least, interval
+from shares.planning.confidence import at_least, interval
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import odds
-from shares.planning.simulate import Estimate, Simulated, simulate
+from shares.planning.simulate import INSTALL, Estimate, Simulated, simulate
 from shares.sharing.rule import Rule
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
@@ -363,7 +363,7 @@ def test_a_seed_below_0() -> None:
 def test_without_numpy_it_says_what_to_install(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setitem(sys.modules, "numpy", None)
     monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
-    with pytest.raises(ExtraMissingError, match=r"install the extra shares\[plan\]") as caught:
+    with pytest.raises(ExtraMissingError, match=INSTALL) as caught:
         simulate(alike(3, 5), 10, histories=10, seed=1)
     assert (caught.value.exit_code, caught.value.code) == (1, "extra-missing")
     assert caught.value.__cause__ is None
