@@ -18,7 +18,7 @@ from shares.planning.advice import Change, Outlook, largest
 from shares.planning.odds import Contribution, Odds
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import Simulated
-from shares.planning.telling import DANGERS, NOT_TOLD, beside, cause_rows, change_rows, glued, why, years_words
+from shares.planning.telling import DANGERS, NO_SUM, NOT_TOLD, beside, cause_rows, change_rows, glued, why, years_words
 
 CAUTIONS = (
     "Odds are as good as the rates they come from, and no better. That custodians share nothing but people, sites, "
@@ -164,6 +164,7 @@ def _odds_lines(view: Outlook, odds: Odds, *, full: bool) -> Iterator[str]:
 
 def _cause_lines(causes: Sequence[Contribution]) -> Iterator[str]:
     yield from table([("what each cause adds", "loss", "exposure", "no quorum"), *cause_rows(causes)])
+    yield from prose(NO_SUM)
 
 
 def _last_left(rows: Sequence[tuple[str, ...]]) -> Iterator[str]:

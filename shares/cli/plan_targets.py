@@ -17,10 +17,19 @@ from shares.planning.advice import largest
 from shares.planning.lineup import IMAGINED
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import INSTALL, Simulated
-from shares.planning.targets import Answer, Targets
+from shares.planning.targets import INTERVALS, Answer, Targets
 from shares.planning.telling import why
 
 TRIED = f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"
+
+
+def tried(answer: Answer) -> str:
+    """Return in words what was looked at."""
+    if answer.attested == INTERVALS:
+        return TRIED
+    shortest = answer.attested[-1]
+    oftenest = f"no oftener than {numbers.every(shortest)}" if shortest else "not at all"
+    return f"{TRIED} Attestations were tried {oftenest}: a lost share is not made good in less time (repair_after)."
 
 
 def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> dict[str, object]:
@@ -28,6 +37,7 @@ def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> di
     odds, simulated = (None, now) if isinstance(now, Simulated) else (now, None)
     return {
         "targets": targets._asdict(),
+        "free": list(targets.free),
         "odds": odds_members(odds),
         "simulated": simulated_members(simulated),
         "missing_extra": extra_missing(odds, simulated),
@@ -45,7 +55,7 @@ def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> di
             for choice in answer.choices
         ],
         "causes": cause_members(answer.causes),
-        "imagined": TRIED,
+        "imagined": tried(answer),
     }
 
 
@@ -53,14 +63,17 @@ def target_lines(targets: Targets, now: Reckoned | None, answer: Answer, years: 
     """Yield for people what was found for targets."""
     over = numbers.horizon(years)
     wanted = " and ".join(
-        f"{what} at most {numbers.chance(chance)}" for what, chance in targets._asdict().items() if chance < 1
+        f"{what} at most {_asked(chance)}" for what, chance in targets._asdict().items() if chance < 1
     )
     yield from sentences(f"Wanted over {over}: {wanted}. {_of_the_policy(targets, now)}")
     yield ""
     if answer.met:
         yield "The smallest rule that has these odds, and larger ones with less to do:"
     else:
-        yield from sentences("No rule that was tried has these odds. What comes nearest:")
+        yield from sentences(
+            "No rule that was tried has these odds. What comes nearest, as it misses its worse target by the smallest "
+            "factor:"
+        )
     rows = [("rule", "attest", "refresh", "loss", "exposure", "imagined")]
     rows += [
         (
@@ -74,10 +87,22 @@ def target_lines(targets: Targets, now: Reckoned | None, answer: Answer, years: 
         for choice in answer.choices
     ]
     yield from (f"  {line}" for line in table(rows))
+    for what in targets.free:
+        most = max(getattr(choice.odds, what) for choice in answer.choices)
+        yield from sentences(
+            f"No bound was asked for {what}: with these rules it is up to {_asked(most)}. Ask for one as well, like "
+            f"{what}=1%."
+        )
     if answer.causes:
         yield from sentences(_in_the_way(targets, answer))
     yield ""
-    yield from sentences(TRIED)
+    yield from sentences(tried(answer))
+
+
+def _asked(chance: float) -> str:
+    """Write a target, which is a bound, as nothing but what it is."""
+    told = numbers.chance(chance)
+    return f"{100 * chance:.6g} %" if told == "none" or told.startswith(("above", "below")) else told
 
 
 def _of_the_policy(targets: Targets, now: Reckoned | None) -> str:

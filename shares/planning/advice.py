@@ -38,7 +38,7 @@ class Change:
     """One change, and the odds after it.
 
     Attributes:
-        kind: "custodian", "threshold", "attest", "refresh" or "site".
+        kind: as of ``Single``.
         words: what is to be done, as in "to attest every 45 days".
         odds: after the change; simulated where those of the policy are.
         loss, exposure: by how much these fall; below 0 where they rise; None where that cannot be told from what chance
@@ -150,7 +150,7 @@ def cause_words(cause: Contribution) -> str:
     """Return what a cause is called."""
     return {
         "share": "single shares lost",
-        "person": "people",
+        "person": "what people do",
         "site": f"the site {cause.name}",
         "line": f"the line of {cause.name}",
         "medium": f"the medium {cause.name}",
@@ -182,10 +182,12 @@ def advice(
 
 def _danger(years: float, now: Reckoned, causes: tuple[Contribution, ...] | None) -> str:
     told = (
-        f"Over {numbers.horizon(years)} the key is lost with a chance of {_both(now, 'loss')} and exposed with one of "
+        f"Over {numbers.horizon(years)} the chance of loss is {_both(now, 'loss')}, and that of exposure is "
         f"{_both(now, 'exposure')}"
     )
     loss, exposure = value(now, "loss"), value(now, "exposure")
+    if not isinstance(now, Simulated) and loss == exposure == 0:
+        return f"{told}: at these rates neither can happen."
     if isinstance(now, Simulated) and not _worse_is_plain(now):
         return f"{told}: which danger is the greater one, so many histories do not tell."
     if max(loss, exposure) < 2 * min(loss, exposure):
@@ -210,11 +212,11 @@ def _best(now: Reckoned, found: tuple[Change, ...] | None) -> str:
     if first.gain <= 0:
         return "No single change tried takes more off one danger than it adds to the other."
     told = [
-        f"{what} goes from {briefly(now, what)} to {briefly(first.odds, what)}"
+        f"{what} goes from {_in_text(briefly(now, what))} to {_in_text(briefly(first.odds, what))}"
         for what, falls in (("loss", first.loss), ("exposure", first.exposure))
         if falls is not None and briefly(now, what) != briefly(first.odds, what)
     ]
-    return f"Of single changes it helps most {first.words}: {' and '.join(told) or 'though by little'}."
+    return f"Of the changes tried it helps most {first.words}: {' and '.join(told) or 'though by little'}."
 
 
 def _besides(model: Model, now: Reckoned) -> str:
@@ -226,8 +228,8 @@ def _besides(model: Model, now: Reckoned) -> str:
     if model.refresh_every is None and value(now, "exposure") > value(now, "loss"):
         return "There is no refresh here, so that what leaks adds up for as long as the set lives."
     return (
-        f"On a day taken at random no quorum can be had in time with a chance of {_both(now, 'absence')}: drills show "
-        "whether that is so."
+        f"The chance that on a day taken at random no quorum can be had in time is {_both(now, 'absence')}: drills "
+        "show whether that is so."
     )
 
 
@@ -236,7 +238,12 @@ def _both(now: Reckoned, of: str) -> str:
     if isinstance(now, Simulated):
         return words(now, of).rpartition(": ")[2]
     p = value(now, of)
-    return f"{numbers.chance(p)} ({numbers.one_in(p)})" if numbers.one_in(p) else numbers.chance(p)
+    return f"{numbers.chance(p)} ({numbers.one_in(p)})" if numbers.one_in(p) else _in_text(numbers.chance(p))
+
+
+def _in_text(chance: str) -> str:
+    """Return a chance as it stands in a sentence: of a chance one does not say that it is none, as a table does."""
+    return "0" if chance == "none" else chance
 
 
 def _tried(

@@ -13,6 +13,7 @@ Does not: put them in place; ``model`` does.
 from __future__ import annotations
 
 from collections.abc import Iterable, Set
+from datetime import timedelta
 from typing import Final, Literal, NamedTuple, TypeAlias
 
 from shares.documents.policy import Policy, folded
@@ -40,9 +41,9 @@ SHARE: Final = Assumed(
     0.04,
     0.0,
     0.0,
-    "4 % of shares a year are mislaid, thrown away or unreadable, and with departures 5 %, which planning commonly "
-    "counts on; on paper 3 %, on paper in a safe 2 %, on a stick 6 %, as it forgets without power, on a card 4 % "
-    "(guesses).",
+    "4 % of shares a year are mislaid, thrown away or unreadable; those that leavers take along make it the 5 % that "
+    "planning commonly counts on. Where the medium is stated it is 3 % on paper, 2 % on paper in a safe, 4 % on a card "
+    "and 6 % on a stick, which forgets without power (guesses).",
 )
 SHARE_LOSS_ON: Final = {"paper": 0.03, "safe": 0.02, "stick": 0.06, "card": 0.04}
 """``SHARE.loss`` by medium, where it is one of these."""
@@ -85,10 +86,15 @@ INDEPENDENT: Final = (
     "independently of the others."
 )
 
+NO_DRILLS: Final = "Drills have no part in the odds: drill_every changes none of them."
+WITHIN_A_DAY: Final = (
+    "Odds count in whole days: recover_within, which is less than a day here, counts as one day in the odds."
+)
+
 
 def assumptions(policy: Policy) -> tuple[str, ...]:
     """Return what the odds of a policy rest on beside what it states: one text for each kind of event that it leaves
-    open, wholly or partly. The independence of custodians comes first, and is always assumed.
+    open, wholly or partly. The independence of custodians comes first, and what drills do comes last, and both always.
 
     Args:
         policy: as ``Policy.parse`` returns it.
@@ -108,7 +114,13 @@ def assumptions(policy: Policy) -> tuple[str, ...]:
         MEDIUM.reason: _left_open(policy.media, media - MEDIUM_FAILING.keys()),
         MEDIUM_OF_ONE_MAKE.reason: _left_open(policy.media, media & MEDIUM_FAILING.keys()),
     }
-    return (INDEPENDENT, *(reason for reason, is_open in open_.items() if is_open))
+    within_a_day = policy.recover_within is not None and policy.recover_within < timedelta(days=1)
+    return (
+        INDEPENDENT,
+        *(reason for reason, is_open in open_.items() if is_open),
+        *((WITHIN_A_DAY,) if within_a_day else ()),
+        NO_DRILLS,
+    )
 
 
 def _left_open(tables: Iterable[CommonRates], names: Set[str]) -> bool:

@@ -1,17 +1,19 @@
 """What if: a model with one thing changed, so that its odds can be set beside those of the model as it is.
 
 Source: this project's own list of what a dealer can change before a ceremony.
-May import: shares.errors, shares.sharing.rule, .model.
+May import: shares.errors, shares.sharing.rule, shares.documents.policy, .assumed, .model.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: judge a change, or know what it costs.
 """
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Collection, Iterator
 from dataclasses import replace
 
+from shares.documents.policy import folded
 from shares.errors import ParameterError
+from shares.planning.assumed import Kind
 from shares.planning.model import Cause, Model
 from shares.sharing.rule import Rule
 
@@ -61,12 +63,42 @@ def moved(model: Model, custodian: str) -> Model:
     Raises:
         ParameterError: nobody has that name.
     """
+    return _apart(model, "site", frozenset({custodian}), custodian)
+
+
+def on_another_medium(model: Model, custodian: str) -> Model:
+    """Return the model with a custodian's share on a medium of its own, which is as good as the one before.
+
+    Raises:
+        ParameterError: nobody has that name.
+    """
+    return _apart(model, "medium", frozenset({custodian}), custodian)
+
+
+def reporting_elsewhere(model: Model, custodian: str) -> Model:
+    """Return the model with the person who is a custodian in a line of their own, with all shares that they hold.
+
+    The line that a person commands stays theirs, whoever they report to.
+
+    Raises:
+        ParameterError: nobody has that name.
+    """
+    persons = [one for one in model.causes if one.kind == "person" and custodian in one.members]
+    held = frozenset({custodian}).union(*(one.members for one in persons))
+    return _apart(model, "line", held, custodian, but={folded(one.name) for one in persons})
+
+
+def _apart(
+    model: Model, kind: Kind, held: frozenset[str], custodian: str, *, but: Collection[str] = frozenset()
+) -> Model:
+    """Return the model with some custodians taken out of the causes of a kind, and struck by one of their own each time
+    instead; causes of some names, folded, stay as they are."""
     _known(model, custodian)
     causes = list[Cause]()
     for cause in model.causes:
-        if cause.kind == "site" and custodian in cause.members:
-            causes.append(replace(cause, members=cause.members - {custodian}))
-            causes.append(replace(cause, name=f"a site for {custodian}", members=frozenset({custodian})))
+        if cause.kind == kind and custodian in cause.members and folded(cause.name) not in but:
+            causes.append(replace(cause, members=cause.members - held))
+            causes.append(replace(cause, name=f"a {kind} for {custodian}", members=cause.members & held))
         else:
             causes.append(cause)
     return replace(model, causes=tuple(cause for cause in causes if cause.members))

@@ -25,8 +25,8 @@ from shares.sharing.rule import Rule
 Severity: TypeAlias = Literal["serious", "caution", "note"]
 
 AMPLE_LOSSES = 3
-"""Losses beyond which providing for more is seldom worth it. Of seven custodians, any four of whom recover, with each
-unavailable one time in ten, a quorum is missing 3 times in 1,000; every further share is one more to protect."""
+"""Losses beyond which it is noted that a policy provides for many. Of seven custodians, any four of whom recover, with
+each unavailable one time in ten, a quorum is missing 3 times in 1,000; every further share is one more to protect."""
 _MOST_NAMED = 6
 
 
@@ -261,6 +261,6 @@ def _too_many(people: Count, quorums: Quorums) -> Iterator[Finding]:
             "note",
             "more-than-needed",
             f"Any {people.block.low - 1} people may be lost and a quorum is left.",
-            f"Fewer custodians may do: to provide for more than {AMPLE_LOSSES} losses is seldom worth it, and each "
-            "share is one more to protect.",
+            "Each custodian more is one more share to protect: whether so many are worth it, the odds of loss and of "
+            "exposure tell.",
         )

@@ -42,10 +42,11 @@ def chance(p: float) -> str:
 def one_in(p: float) -> str:
     """Write a chance as one in so many; nothing where that reads worse than a percentage does.
 
-    >>> [one_in(p) for p in (0.0532, 0.0009, 4e-7, 0.57, 0.0)]
+    >>> [one_in(p) for p in (0.0532, 0.0009, 4e-7, 0.19, 0.0)]
     ['1 in 19', '1 in 1,100', '', '', '']
     """
-    return f"1 in {_two_digits(1 / p)}" if _PERCENT_FROM <= p <= 1 / 3 else ""
+    # Of a chance above a tenth it would take a fraction to say it, as in "1 in 5.3".
+    return f"1 in {_two_digits(1 / p)}" if _PERCENT_FROM <= p <= 1 / 10 else ""
 
 
 def interval(low: float, high: float) -> str:
@@ -74,14 +75,24 @@ def _rounded(p: float, finest: int, which_way: str) -> str:
 def years(span: float) -> str:
     """Write a mean time in years, of which none is too long.
 
-    >>> [years(span) for span in (0.04, 10.9, 181.99, 2.6e5, 1.3e17, math.inf)]
-    ['15 days', '11 years', '180 years', '260,000 years', 'more than a million years', 'never']
+    >>> [years(span) for span in (0.04, 1.0, 10.9, 181.99, 2.6e5, 1.3e17, math.inf)]
+    ['15 days', '1 year', '11 years', '180 years', '260,000 years', 'more than a million years', 'never']
     """
     if span == math.inf:
         return "never"
     if span > 1e6:
         return "more than a million years"
-    return f"{_two_digits(365 * span)} days" if span < 1 else f"{_two_digits(span)} years"
+    told, unit = (_two_digits(365 * span), "day") if span < 1 else (_two_digits(span), "year")
+    return f"{told} {unit}" if told == "1" else f"{told} {unit}s"
+
+
+def histories(count: int) -> str:
+    """Write how many histories were drawn.
+
+    >>> histories(1), histories(100_000)
+    ('1 history', '100,000 histories')
+    """
+    return "1 history" if count == 1 else f"{count:,} histories"
 
 
 def horizon(span: float) -> str:

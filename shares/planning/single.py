@@ -1,13 +1,18 @@
 """Every single change that a dealer can make to a policy, each with its words and the model that it leaves.
 
 They are one more custodian, each threshold up or down by one, attestations and refreshes twice as often (or yearly,
-where there are none), and a site of its own for a share. Custodians who can change places without changing anything are
-tried once.
+where there are none), a site of its own for a share, another medium for one of several that may fail together, and
+another manager for one of several. Custodians who can change places without changing anything are tried once.
 
-Source: this project's own list.
-May import: shares.errors, shares.sharing.rule, .changes, .model, .numbers.
+Left out is what nobody should be advised to do, since it brings what ``findings`` calls serious: a change after which
+one custodian, person, site or reporting line makes a quorum alone, or one custodian, person or site is needed by every
+quorum (as all are in n of n), where that was not so before.
+
+Source: this project's own list; ``findings`` names the demands of the trade.
+May import: shares.errors, shares.sharing.rule, .changes, .model, .numbers, .structure.
 Secret: nothing. Public: nothing either, as for the model.
-Does not: know what a change costs or gains, or make two at once (``targets`` does).
+Does not: know what a change costs or gains, know by which ways shares travel, or make two changes at once (``targets``
+does).
 """
 
 from __future__ import annotations
@@ -18,8 +23,16 @@ from dataclasses import dataclass, replace
 
 from shares.errors import ParameterError
 from shares.planning import numbers
-from shares.planning.changes import attesting_every, moved, refreshing_every, with_another
+from shares.planning.changes import (
+    attesting_every,
+    moved,
+    on_another_medium,
+    refreshing_every,
+    reporting_elsewhere,
+    with_another,
+)
 from shares.planning.model import DAYS_OF_A_YEAR, Cause, Model
+from shares.planning.structure import dual
 from shares.sharing.rule import Rule
 
 _MOST_NAMED = 4
@@ -31,7 +44,7 @@ class Single:
     """One change.
 
     Attributes:
-        kind: "custodian", "threshold", "attest", "refresh" or "site".
+        kind: "custodian", "threshold", "attest", "refresh", "site", "line" or "medium".
         words: what is to be done, as in "to attest every 45 days".
         model: what is left when it is done.
     """
@@ -42,16 +55,25 @@ class Single:
 
 
 def single_changes(model: Model) -> Iterator[Single]:
-    """Yield every single change of a model.
+    """Yield every single change of a model that leaves its structure as sound as it is.
 
     Args:
         model: as ``model_of`` returns it.
 
     >>> piers = Model(Rule(2, ("north-pier", "south-pier")), (), refresh_every=365)
     >>> [change.words for change in single_changes(piers)][:3]
-    ['to attest every year', 'to refresh every 182 days', 'to need 1 instead of 2']
+    ['to attest every year', 'to refresh every 182 days', 'to have another custodian like north-pier']
     """
     yield from _intervals(model)
+    sound = _Soundness(model)
+    kinds = _kinds_of_custodian(model)
+    yield from (change for change in _thresholds(model) if sound.stays(change.model))
+    yield from (change for change in _others(model, kinds) if sound.stays(change.model))
+    # Whoever is set apart belongs to a smaller whole than before, which can do no more than the larger one could.
+    yield from _set_apart(model, kinds)
+
+
+def _thresholds(model: Model) -> Iterator[Single]:
     for place, node in enumerate(dict.fromkeys(node for _, node in model.rule.nodes())):
         for need in (node.need - 1, node.need + 1):
             if 1 <= need <= len(node.children):
@@ -61,15 +83,61 @@ def single_changes(model: Model) -> Iterator[Single]:
                 where = "" if model.rule.depth == 1 else " at the top" if node == model.rule else _named(node, place)
                 changed = replace(model, rule=_replaced(model.rule, node, other))
                 yield Single("threshold", words + where, changed)
-    kinds = _kinds_of_custodian(model)
+
+
+def _others(model: Model, kinds: list[str]) -> Iterator[Single]:
     for name in kinds:
         try:
             yield Single("custodian", f"to have another custodian like {name}", with_another(model, name))
         except ParameterError:  # The rule has no room for more.
             continue
+
+
+def _set_apart(model: Model, kinds: list[str]) -> Iterator[Single]:
+    shared = [cause for cause in model.causes if len(cause.members) > 1]
     for name in kinds:
-        if any(cause.kind == "site" and name in cause.members and len(cause.members) > 1 for cause in model.causes):
+        if any(cause.kind == "site" and name in cause.members for cause in shared):
             yield Single("site", f"to keep the share of {name} at a site of its own", moved(model, name))
+    for name in kinds:
+        # All shares of one person have one manager: where nobody else has, another one changes nothing.
+        elsewhere = reporting_elsewhere(model, name)
+        if _wholes(elsewhere, "line") != _wholes(model, "line"):
+            yield Single("line", f"to have {name} report to somebody else", elsewhere)
+    for name in kinds:
+        if any(cause.kind == "medium" and cause.loss and name in cause.members for cause in shared):
+            yield Single("medium", f"to keep the share of {name} on another medium", on_another_medium(model, name))
+
+
+class _Soundness:
+    """What of a model's structure a change must not make worse."""
+
+    def __init__(self, model: Model) -> None:
+        self._custodians = frozenset(model.custodians)
+        self._before = [list(found) for found in _alone(model, frozenset())]
+
+    def stays(self, changed: Model) -> bool:
+        """Say whether nobody newly makes a quorum alone, and nobody is newly needed by all.
+
+        Whoever includes one who could do so before is not new.
+        """
+        # One more custodian changes nothing for those who do not include the newcomer.
+        newcomers = frozenset(changed.custodians) - self._custodians
+        return all(
+            any(one <= members for one in before)
+            for before, after in zip(self._before, _alone(changed, newcomers), strict=True)
+            for members in after
+        )
+
+
+def _alone(model: Model, including: frozenset[str]) -> Iterator[Iterator[frozenset[str]]]:
+    """Yield those who make a quorum alone, and then those who block every one, each as a set of custodians."""
+    for rule, kinds in ((model.rule, ("person", "site", "line")), (dual(model.rule), ("person", "site"))):
+        wholes = {frozenset({name}) for name in model.custodians}.union(*(_wholes(model, kind) for kind in kinds))
+        yield (members for members in wholes if including <= members and rule.satisfied_by(members))
+
+
+def _wholes(model: Model, kind: str) -> set[frozenset[str]]:
+    return {cause.members for cause in model.causes if cause.kind == kind}
 
 
 def _intervals(model: Model) -> Iterator[Single]:

@@ -1,7 +1,8 @@
 """The other way round: from the odds that are wanted to the smallest rule and the longest intervals that have them.
 
 Looked at are all rules k of n of ``lineup`` in which neither one makes a quorum nor all are needed, with intervals from
-a list of those that people keep, a week to five years or never.
+a list of those that people keep, a week to five years or never. Shares are not attested oftener than a lost one is made
+good: nobody would keep up.
 
 Loss does not depend on how often shares are refreshed, nor exposure on how often they are attested: so both intervals
 are found at once. Odds are taken to grow with an interval; that what is told meets the targets is worked out, and only
@@ -41,6 +42,11 @@ class Targets(NamedTuple):
 
     loss: float
     exposure: float
+
+    @property
+    def free(self) -> tuple[str, ...]:
+        """Those for which anything is good enough: whatever meets the other one may make them very large."""
+        return tuple(of for of, most in self._asdict().items() if most == 1)
 
     def met_by(self, found: Reckoned) -> bool | None:
         """Say whether odds are as good as is wanted; None where a simulation cannot tell."""
@@ -87,11 +93,13 @@ class Answer:
         met: whether the targets can be met.
         choices: the smallest rule that meets them, and then larger ones, each with fewer rounds a year than the one
             before; or else the one that comes nearest.
+        attested: the days between attestations that were tried, the longest first; None is never.
         causes: what stands in the way: the causes of the odds that come nearest; none where the targets are met.
     """
 
     met: bool
     choices: tuple[Choice, ...]
+    attested: tuple[int | None, ...]
     causes: tuple[Contribution, ...] = ()
 
 
@@ -108,6 +116,10 @@ def parse_targets(text: str) -> Targets:
     Targets(loss=1e-06, exposure=0.001)
     """
     found: dict[str, float] = {}
+    if re.search(r"=\s*[0-9]+,[0-9]", text):
+        raise ParameterError(
+            "a decimal comma is not read, as a comma parts the two targets", hint="write a point, like loss=0.1%"
+        )
     for part in text.split(","):
         form = re.fullmatch(r"\s*(loss|exposure)\s*=\s*([0-9]{1,3}(?:\.[0-9]{1,12})?(?:e-[0-9]{1,2})?)\s*(%?)\s*", part)
         if form is None or form[1] in found:
@@ -135,24 +147,24 @@ def meeting(
 
     Returns:
         Of the rules of one size, the one with the fewest rounds a year, then with the smaller threshold. What comes
-        nearest misses its worse target by the smallest factor, with intervals of a week where longer ones do not do.
+        nearest misses its worse target by the smallest factor, with the shortest intervals where longer ones do not do.
 
     Raises:
         ParameterError: a span of years that is out of range, or no rule could be worked out exactly.
     """
-    custodians = lined_up(model)
+    custodians, attested = lined_up(model), attestations(model)
     nearest: tuple[float, Choice] | None = None
     choices = list[Choice]()
     for done, (total, need) in enumerate(pairs := list(_rules())):
         if progress:
             progress(done, len(pairs))
         flat, imagined = custodians.rule(need, total), custodians.imagined(total)
-        best = _with(flat, len(INTERVALS) - 1, len(INTERVALS) - 1, years)
+        best = _with(flat, attested[-1], INTERVALS[-1], years)
         if best is None:
             continue
         missed = targets.missed_by(best)
         if missed and (nearest is None or (missed, total) < (nearest[0], nearest[1].total)):
-            nearest = missed, Choice(need, total, imagined, INTERVALS[-1], INTERVALS[-1], best)
+            nearest = missed, Choice(need, total, imagined, attested[-1], INTERVALS[-1], best)
         # A rule that asks for more rounds a year than a smaller one is no choice.
         if not missed:
             found = _at_leisure(flat, targets, years, imagined)
@@ -161,7 +173,7 @@ def meeting(
             elif not choices or (choices[-1].total < total and found.rounds < choices[-1].rounds):
                 choices.append(found)
     if choices:
-        return Answer(True, tuple(choices))
+        return Answer(True, tuple(choices), attested)
     if nearest is None:
         raise ParameterError("rules over these custodians are too large to be worked out exactly")
     choice = nearest[1]
@@ -169,7 +181,20 @@ def meeting(
     reached = Targets(max(targets.loss, choice.odds.loss), max(targets.exposure, choice.odds.exposure))
     found = _at_leisure(flat, reached, years, choice.imagined)
     kept = refreshing_every(attesting_every(flat, found.attest_every), found.refresh_every)
-    return Answer(False, (found,), contributions(kept, years) or ())
+    return Answer(False, (found,), attested, contributions(kept, years) or ())
+
+
+def attestations(model: Model) -> tuple[int | None, ...]:
+    """Return the days between attestations that are tried for a model, the longest first; None is never.
+
+    Args:
+        model: whose ``repair_after`` counts: none is shorter.
+
+    >>> from shares.sharing.rule import Rule
+    >>> attestations(Model(Rule(1, ("north-pier",)), (), repair_after=60))
+    (None, 1825, 730, 365, 182, 91)
+    """
+    return tuple(days for days in INTERVALS if days is None or days >= model.repair_after)
 
 
 def _rules() -> Iterator[tuple[int, int]]:
@@ -181,20 +206,21 @@ def _rules() -> Iterator[tuple[int, int]]:
 def _at_leisure(flat: Model, targets: Targets, years: float, imagined: int) -> Choice:
     """Return a rule that meets targets at the shortest intervals with the longest that do."""
     # Both bisections go on side by side, as one pass gives both odds.
-    shortest = len(INTERVALS) - 1
-    low, high = [0, 0], [shortest, shortest]
+    tried = attestations(flat), INTERVALS
+    low, high = [0, 0], [len(intervals) - 1 for intervals in tried]
     while low != high:
         middle = [(a + b) // 2 for a, b in zip(low, high, strict=True)]
-        found = _with(flat, middle[0], middle[1], years)
+        found = _with(flat, tried[0][middle[0]], tried[1][middle[1]], years)
         fits = found is not None and (found.loss <= targets.loss, found.exposure <= targets.exposure)
         for i, good in enumerate(fits or (False, False)):
             if low[i] < high[i]:
                 low[i], high[i] = (low[i], middle[i]) if good else (middle[i] + 1, high[i])
-    chosen = _with(flat, low[0], low[1], years)
+    attest, refresh = (intervals[place] for intervals, place in zip(tried, low, strict=True))
+    chosen = _with(flat, attest, refresh, years)
     if chosen is None:  # pragma: no cover - the same rule was worked out before.
         raise ParameterError("a rule over these custodians is too large to be worked out exactly")
-    return Choice(flat.rule.need, len(flat.custodians), imagined, INTERVALS[low[0]], INTERVALS[low[1]], chosen)
+    return Choice(flat.rule.need, len(flat.custodians), imagined, attest, refresh, chosen)
 
 
-def _with(flat: Model, attest: int, refresh: int, years: float) -> Odds | None:
-    return odds(refreshing_every(attesting_every(flat, INTERVALS[attest]), INTERVALS[refresh]), years)
+def _with(flat: Model, attest: int | None, refresh: int | None, years: float) -> Odds | None:
+    return odds(refreshing_every(attesting_every(flat, attest), refresh), years)

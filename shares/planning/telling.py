@@ -22,6 +22,9 @@ from shares.planning.simulate import MAX_HISTORIES, Simulated
 NOT_TOLD = "not told"
 """Stands for an effect that cannot be told from what chance makes."""
 
+NO_SUM = "The parts do not add up to the whole: what takes two causes goes away with either."
+"""What is to be known of a table of what each cause adds."""
+
 DANGERS = {
     "loss": "loss: no quorum is left",
     "exposure": "exposure: a quorum is known",
@@ -48,7 +51,7 @@ def years_words(simulated: Simulated) -> str:
     """Write the mean time until the first loss."""
     years = simulated.years_to_loss
     if years is None:
-        return f"too rare to be told from {simulated.histories:,} histories"
+        return f"too rare to be told from {numbers.histories(simulated.histories)}"
     value, low, high = (numbers.years(end) for end in (years.value, years.low, years.high))
     # Where all are alike as they are told, the interval would say nothing.
     return value if low == high else f"{value} ({low} to {high})"
@@ -63,7 +66,7 @@ def why(simulated: Iterable[Simulated], odds: Odds | None) -> str:
     """
     first, *others = simulated
     drawn = f"drawn by numpy {first.numpy} with seed {first.seed}, the same ones at every run"
-    told = f"Simulated from {first.histories:,} histories{' each' if others else ''}, {drawn}"
+    told = f"Simulated from {numbers.histories(first.histories)}{' each' if others else ''}, {drawn}"
     if odds is None:
         told += ": the rule, or the way in which people, sites and lines overlap in it, is too entangled for exact odds"
     told += ". At least 95 of 100 such intervals hold the true odds of the model; nothing seen is not never."

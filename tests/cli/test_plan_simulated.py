@@ -111,7 +111,7 @@ def test_exact_odds_are_simulated_beside_where_histories_are_asked_for() -> None
     assert members["simulated"] == told(found)
     assert members["odds"]["loss"] == exact.loss
     text = said(path, *FEW)
-    assert "exposure: a quorum is known 0.96 % 1 in 100 people; the site north house" in text
+    assert "exposure: a quorum is known 0.96 % 1 in 100 what people do; the site north house" in text
     assert f"exposure: a quorum is known {words(found, 'exposure')} no quorum" in text
     assert f"Simulated from 2,000 histories, {DRAWN % 7}. At least 95 of 100" in text
     assert beside(exact, found) in text
@@ -129,7 +129,7 @@ def test_nothing_seen_is_never_told_as_nothing(tmp_path: Path) -> None:
     assert (found.loss.seen, found.years_to_loss) == (0, None)
     text = said(path, *FEW)
     assert "loss: no quorum is left 0 of 2,000: below 0.19 %" in text  # 1 - 0.025^(1/2000) is 0.00184.
-    assert "lost with a chance of below 0.19 % and" in text
+    assert "the chance of loss is below 0.19 %, and that of exposure is " in text
     assert "Mean time until the first loss: too rare to be told from 2,000 histories." in text
     assert "none" not in text.partition("odds over")[2].partition("Assumed")[0]
     members = run("plan", path, *FEW, "--json").json["simulated"]

@@ -125,7 +125,7 @@ def test_each_custodian_of_the_examples_has_a_share_a_person_a_site_and_a_line(p
 def test_assumptions_are_told_where_the_policy_leaves_something_open() -> None:
     kinds = (assumed.SHARE, assumed.PERSON, assumed.SITE, assumed.LINE, assumed.MEDIUM, assumed.MEDIUM_OF_ONE_MAKE)
     nothing = policy_of({"name": "north-pier", "medium": "paper"}, {"name": "south-pier", "medium": "stick"})
-    assert assumptions(nothing) == (assumed.INDEPENDENT, *(kind.reason for kind in kinds))
+    assert assumptions(nothing) == (assumed.INDEPENDENT, *(kind.reason for kind in kinds), assumed.NO_DRILLS)
     whole = {"loss": "1 %/y", "leak": "1 %/y", "absent": "1 %"}
     stated = {
         "rates": {**whole, "departure": "0 %/y", "handed_on": "100 %", "absent_for": "1d"},
@@ -133,17 +133,26 @@ def test_assumptions_are_told_where_the_policy_leaves_something_open() -> None:
         "line": [{"name": "board", **whole}],
     }
     everything = policy_of({"name": "north-pier", "site": "quay"}, **stated)
-    assert assumptions(everything) == (assumed.INDEPENDENT,)
+    assert assumptions(everything) == (assumed.INDEPENDENT, assumed.NO_DRILLS)
+    for within, told in (("23h", True), ("1439min", True), ("24h", False), ("1d", False), ("9d", False)):
+        given = policy_of({"name": "north-pier", "site": "quay"}, **stated, recover_within=within)
+        assert assumptions(given) == (
+            assumed.INDEPENDENT,
+            *([assumed.WITHIN_A_DAY] if told else []),
+            assumed.NO_DRILLS,
+        )
     partly = {**stated, "site": [{"name": "quay", "loss": "1 %/y"}]}
     assert assumptions(policy_of({"name": "north-pier", "site": "quay"}, **partly)) == (
         assumed.INDEPENDENT,
         assumed.SITE.reason,
+        assumed.NO_DRILLS,
     )
     for key in ("leak", "departure", "absent", "handed_on", "absent_for"):
         rates = {name: value for name, value in stated["rates"].items() if name != key}
         assert assumptions(policy_of({"name": "north-pier", "site": "quay"}, **{**stated, "rates": rates})) == (
             assumed.INDEPENDENT,
             assumed.PERSON.reason,
+            assumed.NO_DRILLS,
         )
 
 
