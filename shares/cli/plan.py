@@ -12,7 +12,15 @@ import click
 import shares
 from shares.cli.output import filled, json_option, print_result, progress, prose, refuse_taken
 from shares.cli.plan_compare import comparison_lines, side_members
-from shares.cli.plan_odds import outlook_lines, outlook_members, rest_lines, rest_members, table
+from shares.cli.plan_odds import (
+    outlook_lines,
+    outlook_members,
+    rate_lines,
+    rate_members,
+    rest_lines,
+    rest_members,
+    table,
+)
 from shares.cli.plan_targets import target_lines, target_members
 from shares.custody.parties import load_card
 from shares.documents.base import MAX_FILE
@@ -150,8 +158,9 @@ def command(
             program = f"shares {shares.__version__}"
             data = plan_page(plan, model, view, on_it, open_, digest=read.digest(), program=program)
             write_new(page, data, secret=True)
-        members = {**_members(plan), **outlook_members(view), "page": page}
-        lines = chain(_lines(plan), [""], outlook_lines(view, full=full), _page_lines(page))
+        members = {**_members(plan), **outlook_members(view), "rates": rate_members(model), "page": page}
+        rates = chain([""], rate_lines(model)) if full else ()
+        lines = chain(_lines(plan), [""], outlook_lines(view, full=full), rates, _page_lines(page))
     print_result(
         {"done": code == 0, "exit": code, "confidential": CONFIDENTIAL, **members, **rest_members(open_)},
         chain(lines, [""], rest_lines(open_, full=full), [CONFIDENTIAL]),

@@ -9,12 +9,15 @@ Does not: work anything out.
 from __future__ import annotations
 
 import math
+import textwrap
 from collections.abc import Iterable, Iterator, Sequence
 
 from shares.cli.output import prose
 from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import assumed, numbers
 from shares.planning.advice import Change, Outlook, largest
+from shares.planning.befalling import befalling
+from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import Simulated
@@ -25,6 +28,7 @@ CAUTIONS = (
     "reporting lines and media is an assumption. Have a professional decide."
 )
 _MOST_CHANGES = 5
+_WHAT = {"share": "single shares", "person": "people", "site": "sites", "line": "reporting lines", "medium": "media"}
 _IN_SHORT = {
     assumed.SHARE.reason: "losses of single shares",
     assumed.PERSON.reason: "what people do",
@@ -105,6 +109,23 @@ def outlook_members(view: Outlook) -> dict[str, object]:
 def _change_members(found: Reckoned) -> dict[str, object]:
     exact, simulated = (None, found) if isinstance(found, Simulated) else (found, None)
     return {"odds": odds_members(exact), "simulated": simulated_members(simulated)}
+
+
+def rate_members(model: Model) -> list[dict[str, object]]:
+    """Return the rates that odds rest on, for JSON."""
+    return [
+        {"what": one.kind, "names": list(one.names), "loss": one.loss, "leak": one.leak, "absent": one.absent}
+        for one in befalling(model)
+    ]
+
+
+def rate_lines(model: Model) -> Iterator[str]:
+    """Yield the rates that odds rest on, stated and assumed alike, for people."""
+    rows = [("what the odds rest on", "lost a year", "leaked a year", "days away", "of")]
+    rows += [(_WHAT[one.kind], *one.words, one.named) for one in befalling(model)]
+    width = 2 * len(rows[0]) + sum(max(map(len, column)) for column in list(zip(*rows, strict=True))[:-1])
+    for line in _last_left(rows):
+        yield from textwrap.wrap(line, 100, subsequent_indent=" " * (width - 2), break_on_hyphens=False) or [line]
 
 
 def rest_members(assumptions: Sequence[str]) -> dict[str, object]:

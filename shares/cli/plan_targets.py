@@ -20,16 +20,27 @@ from shares.planning.simulate import INSTALL, Simulated
 from shares.planning.targets import INTERVALS, Answer, Targets
 from shares.planning.telling import why
 
-TRIED = f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"
+TRIED = (
+    "Rules of one group were tried, in which no custodian, person, site or reporting line makes a quorum alone, and "
+    f"no custodian, person or site is needed by every quorum. {IMAGINED}"
+)
+NONE_SOUND = (
+    "Serious: whatever the rule, with these people, sites and managers one of them alone makes a quorum, or is needed "
+    "by every quorum. More people and sites come first."
+)
+_TRIED_ALL = (
+    f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"
+)
 
 
 def tried(answer: Answer) -> str:
     """Return in words what was looked at."""
+    rules = TRIED if answer.sound else _TRIED_ALL
     if answer.attested == INTERVALS:
-        return TRIED
+        return rules
     shortest = answer.attested[-1]
     oftenest = f"no oftener than {numbers.every(shortest)}" if shortest else "not at all"
-    return f"{TRIED} Attestations were tried {oftenest}: a lost share is not made good in less time (repair_after)."
+    return f"{rules} Attestations were tried {oftenest}: a lost share is not made good in less time (repair_after)."
 
 
 def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> dict[str, object]:
@@ -43,6 +54,7 @@ def target_members(targets: Targets, now: Reckoned | None, answer: Answer) -> di
         "missing_extra": extra_missing(odds, simulated),
         "met_by_the_policy": None if now is None else targets.met_by(now),
         "met": answer.met,
+        "sound": answer.sound,
         "choices": [
             {
                 "need": choice.need,
@@ -87,6 +99,8 @@ def target_lines(targets: Targets, now: Reckoned | None, answer: Answer, years: 
         for choice in answer.choices
     ]
     yield from (f"  {line}" for line in table(rows))
+    if not answer.sound:
+        yield from sentences(NONE_SOUND)
     for what in targets.free:
         most = max(getattr(choice.odds, what) for choice in answer.choices)
         yield from sentences(

@@ -1,7 +1,7 @@
 """What befalls whom: the rates that a model's odds rest on, stated or assumed alike, as rows to be checked by people.
 
 Source: the model itself, told back.
-May import: .model, .numbers.
+May import: .assumed, .model, .numbers.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: know which of the rates the policy states (``assumed`` says what is assumed where it does not).
 """
@@ -13,10 +13,11 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from shares.planning import numbers
+from shares.planning.assumed import Kind
 from shares.planning.model import Cause, Model
 
 _MOST_NAMED = 8
-_WHAT = {
+_WHAT: dict[Kind, str] = {
     "share": "single shares",
     "person": "people, with all shares that they hold",
     "site": "sites, with all shares there",
@@ -30,17 +31,22 @@ class Befalling:
     """Rates that several causes of one kind have in common.
 
     Attributes:
-        what: of which kind they are, in words.
+        kind: of which kind they are.
         names: custodians, people, sites, managers or media.
         loss, leak: chances within a year, 0 to 1.
         absent: the part of days, 0 to 1.
     """
 
-    what: str
+    kind: Kind
     names: tuple[str, ...]
     loss: float
     leak: float
     absent: float
+
+    @property
+    def what(self) -> str:
+        """The kind in words."""
+        return _WHAT[self.kind]
 
     @property
     def named(self) -> str:
@@ -62,8 +68,9 @@ def befalling(model: Model) -> Iterator[Befalling]:
     >>> [(one.named, one.words) for one in befalling(Model(Rule(1, ("north pier", "south pier")), tuple(piers)))]
     [('north pier, south pier', ('1 %', 'none', 'none'))]
     """
-    found: dict[tuple[str, float, float, float], list[Cause]] = {}
+    found: dict[tuple[Kind, float, float, float], list[Cause]] = {}
     for cause in model.causes:
         found.setdefault((cause.kind, cause.loss, cause.leak, cause.absent), []).append(cause)
     for (kind, loss, leak, absent), causes in found.items():
-        yield Befalling(_WHAT[kind], tuple(one.name for one in causes), -math.expm1(-loss), -math.expm1(-leak), absent)
+        names = tuple(one.name for one in causes)
+        yield Befalling(kind, names, -math.expm1(-loss), -math.expm1(-leak), absent)

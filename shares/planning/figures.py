@@ -76,7 +76,7 @@ class PlaneFigure:
         columns, rows: marks of the two axes.
         lines: for each n, the path from 1 of n to n of n.
         frontier: the path along the best rules.
-        marks: one for each rule: "best", "extreme" (one alone recovers, or all are needed) or "other".
+        marks: one for each rule: "best", "other", or "none" for what is no choice.
         policy: where the policy lies; None where that is not known.
         spread: the path along the intervals of its loss and exposure, where these are simulated.
         labels: names of the best rules, as far as there is room, and of the lines.
@@ -141,7 +141,7 @@ def plane_figure(points: Sequence[Point], policy: Reckoned | None) -> PlaneFigur
     marks = {
         (one.need, one.total): mark(
             one.odds,
-            "best" if one.best else "extreme" if one.extreme else "other",
+            "best" if one.best else "other" if one.choice else "none",
             f"{one.need} of {one.total}",
             one.odds.loss,
             one.odds.exposure,

@@ -106,6 +106,7 @@ def plan_page(
         points=on_it.points,
         plane=figures.plane_figure(on_it.points, view.now) if on_it.points else None,
         better=_better(on_it.points, view),
+        no_choice=_no_choice(on_it.points),
         along=on_it.along,
         attested=_curves(on_it, model.attest_every, {"loss": "loss", "absence": "no quorum on a day"}),
         refreshed=_curves(on_it, model.refresh_every, {"exposure": "exposure"}),
@@ -180,7 +181,7 @@ def _better(points: tuple[Point, ...], view: Outlook) -> str:
         return "The odds of the policy itself are not known, so it is not on the plane."
     loss, exposure, absence = (ends(view.now, of)[0] for of in DANGERS)
     here = Odds(loss, exposure, absence, math.inf)
-    found = [point for point in points if point.better_than(here) and not point.extreme]
+    found = [point for point in points if point.better_than(here) and point.choice]
     own = _listed([point for point in found if not point.imagined])
     imagined = _listed([point for point in found if point.imagined])
     if own and imagined:
@@ -192,6 +193,12 @@ def _better(points: tuple[Point, ...], view: Outlook) -> str:
     if view.odds is None:
         return "Whether any such rule has less of both than this policy, so many histories do not tell."
     return "No such rule has less of both than this policy, by a tenth or more."
+
+
+def _no_choice(points: tuple[Point, ...]) -> str:
+    if any(not point.choice and 1 < point.need < point.total for point in points):
+        return "one custodian, person, site or reporting line alone makes a quorum, or is needed by every quorum"
+    return "one custodian alone recovers, or one loss ends the key"
 
 
 def _listed(points: list[Point]) -> str:

@@ -1,12 +1,13 @@
 """The plane of loss against exposure: where all rules any k of n lie, up to 12 custodians, and which of them are best.
 
 A lower threshold buys less loss with more exposure. A rule is on the *frontier* where no other one that was looked at
-is better in one of both and no worse in the other. Rules in which one custodian alone recovers, or all are needed, are
-worked out as well, but are no choice, and none of them is on it.
+is better in one of both and no worse in the other. Rules that are not ``sound`` are worked out as well, but are no
+choice, and none of them is on it. Where no rule is sound, as with two sites alone, those alone are no choice that one
+custodian satisfies, or that need all of them.
 
 Source: V. Pareto, "Manuale di economia politica", 1906 (from memory: what cannot be bettered in one thing but at the
 cost of another); Blakley 1979 (from memory: shares lost and shares given away are two budgets).
-May import: .compare, .lineup, .model, .odds.
+May import: .compare, .lineup, .model, .odds, .soundness.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: say where on the frontier to be, or what a custodian costs.
 """
@@ -20,6 +21,7 @@ from shares.planning.compare import ALIKE
 from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import Model
 from shares.planning.odds import Odds, odds
+from shares.planning.soundness import sound
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,6 +32,7 @@ class Point:
         need, total: k and n.
         imagined: how many of the custodians are not the policy's.
         odds: over the years asked for.
+        choice: whether it is one that can be chosen.
         best: whether it is on the frontier.
     """
 
@@ -37,12 +40,8 @@ class Point:
     total: int
     imagined: int
     odds: Odds
-    best: bool
-
-    @property
-    def extreme(self) -> bool:
-        """Whether one custodian alone recovers, or one that is lost ends the key."""
-        return self.need in (1, self.total)
+    choice: bool
+    best: bool = False
 
     def better_than(self, other: Odds) -> bool:
         """Say whether both loss and exposure are lower, and not by so little that they are called alike."""
@@ -73,9 +72,14 @@ def plane(
             progress(done, len(pairs))
         if (one := odds(custodians.rule(need, total), years)) is not None:
             found[total, need] = one
-    points = [Point(need, total, custodians.imagined(total), one, False) for (total, need), one in found.items()]
-    best = frontier(point.odds for point in points if not point.extreme)
-    return tuple(replace(point, best=not point.extreme and point.odds in best) for point in points)
+    choices = {rule for rule in found if sound(custodians.rule(rule[1], rule[0]))}
+    choices = choices or {(total, need) for total, need in found if 1 < need < total}
+    points = [
+        Point(need, total, custodians.imagined(total), one, (total, need) in choices)
+        for (total, need), one in found.items()
+    ]
+    best = frontier(point.odds for point in points if point.choice)
+    return tuple(replace(point, best=point.choice and point.odds in best) for point in points)
 
 
 def frontier(all_odds: Iterable[Odds]) -> set[Odds]:

@@ -9,7 +9,7 @@ one custodian, person, site or reporting line makes a quorum alone, or one custo
 quorum (as all are in n of n), where that was not so before.
 
 Source: this project's own list; ``findings`` names the demands of the trade.
-May import: shares.errors, shares.sharing.rule, .changes, .model, .numbers, .structure.
+May import: shares.errors, shares.sharing.rule, .changes, .model, .numbers, .soundness.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: know what a change costs or gains, know by which ways shares travel, or make two changes at once (``targets``
 does).
@@ -32,7 +32,7 @@ from shares.planning.changes import (
     with_another,
 )
 from shares.planning.model import DAYS_OF_A_YEAR, Cause, Model
-from shares.planning.structure import dual
+from shares.planning.soundness import Soundness, wholes
 from shares.sharing.rule import Rule
 
 _MOST_NAMED = 4
@@ -65,7 +65,7 @@ def single_changes(model: Model) -> Iterator[Single]:
     ['to attest every year', 'to refresh every 182 days', 'to have another custodian like north-pier']
     """
     yield from _intervals(model)
-    sound = _Soundness(model)
+    sound = Soundness(model)
     kinds = _kinds_of_custodian(model)
     yield from (change for change in _thresholds(model) if sound.stays(change.model))
     yield from (change for change in _others(model, kinds) if sound.stays(change.model))
@@ -101,43 +101,11 @@ def _set_apart(model: Model, kinds: list[str]) -> Iterator[Single]:
     for name in kinds:
         # All shares of one person have one manager: where nobody else has, another one changes nothing.
         elsewhere = reporting_elsewhere(model, name)
-        if _wholes(elsewhere, "line") != _wholes(model, "line"):
+        if wholes(elsewhere, "line") != wholes(model, "line"):
             yield Single("line", f"to have {name} report to somebody else", elsewhere)
     for name in kinds:
         if any(cause.kind == "medium" and cause.loss and name in cause.members for cause in shared):
             yield Single("medium", f"to keep the share of {name} on another medium", on_another_medium(model, name))
-
-
-class _Soundness:
-    """What of a model's structure a change must not make worse."""
-
-    def __init__(self, model: Model) -> None:
-        self._custodians = frozenset(model.custodians)
-        self._before = [list(found) for found in _alone(model, frozenset())]
-
-    def stays(self, changed: Model) -> bool:
-        """Say whether nobody newly makes a quorum alone, and nobody is newly needed by all.
-
-        Whoever includes one who could do so before is not new.
-        """
-        # One more custodian changes nothing for those who do not include the newcomer.
-        newcomers = frozenset(changed.custodians) - self._custodians
-        return all(
-            any(one <= members for one in before)
-            for before, after in zip(self._before, _alone(changed, newcomers), strict=True)
-            for members in after
-        )
-
-
-def _alone(model: Model, including: frozenset[str]) -> Iterator[Iterator[frozenset[str]]]:
-    """Yield those who make a quorum alone, and then those who block every one, each as a set of custodians."""
-    for rule, kinds in ((model.rule, ("person", "site", "line")), (dual(model.rule), ("person", "site"))):
-        wholes = {frozenset({name}) for name in model.custodians}.union(*(_wholes(model, kind) for kind in kinds))
-        yield (members for members in wholes if including <= members and rule.satisfied_by(members))
-
-
-def _wholes(model: Model, kind: str) -> set[frozenset[str]]:
-    return {cause.members for cause in model.causes if cause.kind == kind}
 
 
 def _intervals(model: Model) -> Iterator[Single]:

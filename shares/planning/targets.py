@@ -1,15 +1,16 @@
 """The other way round: from the odds that are wanted to the smallest rule and the longest intervals that have them.
 
-Looked at are all rules k of n of ``lineup`` in which neither one makes a quorum nor all are needed, with intervals from
-a list of those that people keep, a week to five years or never. Shares are not attested oftener than a lost one is made
-good: nobody would keep up.
+Looked at are all rules k of n of ``lineup`` that are ``sound``; where none is, as with two sites alone, all in which
+neither one custodian makes a quorum nor all are needed. Their intervals come from a list of those that people keep, a
+week to five years or never. Shares are not attested oftener than a lost one is made good: nobody would keep up.
 
 Loss does not depend on how often shares are refreshed, nor exposure on how often they are attested: so both intervals
 are found at once. Odds are taken to grow with an interval; that what is told meets the targets is worked out, and only
 that no longer interval does rests on this.
 
 Source: search through all cases, in a fixed order; bisection.
-May import: shares.errors, .changes, .lineup, .model, .odds, .reckoned.
+May import: shares.errors, .changes, .lineup, .model, .odds, .reckoned,
+.soundness.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: look at trees of groups, at other sites, or at what anything costs.
 """
@@ -28,6 +29,7 @@ from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import DAYS_OF_A_YEAR, Model
 from shares.planning.odds import Contribution, Odds, contributions, odds
 from shares.planning.reckoned import Reckoned, ends
+from shares.planning.soundness import sound
 
 INTERVALS: tuple[int | None, ...] = (None, 1825, 730, 365, 182, 91, 30, 14, 7)
 """Days between attestations or refreshes that are tried, the longest first; None is never."""
@@ -94,12 +96,14 @@ class Answer:
         choices: the smallest rule that meets them, and then larger ones, each with fewer rounds a year than the one
             before; or else the one that comes nearest.
         attested: the days between attestations that were tried, the longest first; None is never.
+        sound: whether the rules tried are sound; else none is.
         causes: what stands in the way: the causes of the odds that come nearest; none where the targets are met.
     """
 
     met: bool
     choices: tuple[Choice, ...]
     attested: tuple[int | None, ...]
+    sound: bool
     causes: tuple[Contribution, ...] = ()
 
 
@@ -155,7 +159,9 @@ def meeting(
     custodians, attested = lined_up(model), attestations(model)
     nearest: tuple[float, Choice] | None = None
     choices = list[Choice]()
-    for done, (total, need) in enumerate(pairs := list(_rules())):
+    is_sound = any(sound(custodians.rule(need, total)) for total, need in _rules())
+    pairs = [(total, need) for total, need in _rules() if not is_sound or sound(custodians.rule(need, total))]
+    for done, (total, need) in enumerate(pairs):
         if progress:
             progress(done, len(pairs))
         flat, imagined = custodians.rule(need, total), custodians.imagined(total)
@@ -173,7 +179,7 @@ def meeting(
             elif not choices or (choices[-1].total < total and found.rounds < choices[-1].rounds):
                 choices.append(found)
     if choices:
-        return Answer(True, tuple(choices), attested)
+        return Answer(True, tuple(choices), attested, is_sound)
     if nearest is None:
         raise ParameterError("rules over these custodians are too large to be worked out exactly")
     choice = nearest[1]
@@ -181,7 +187,7 @@ def meeting(
     reached = Targets(max(targets.loss, choice.odds.loss), max(targets.exposure, choice.odds.exposure))
     found = _at_leisure(flat, reached, years, choice.imagined)
     kept = refreshing_every(attesting_every(flat, found.attest_every), found.refresh_every)
-    return Answer(False, (found,), attested, contributions(kept, years) or ())
+    return Answer(False, (found,), attested, is_sound, contributions(kept, years) or ())
 
 
 def attestations(model: Model) -> tuple[int | None, ...]:

@@ -279,6 +279,18 @@ def test_all_causes_changes_and_assumptions_where_they_are_asked_for() -> None:
     assert "The parts do not add up to the whole: what takes two causes goes away with either." in said
     assert "need 1 instead of 2 of (harbour-office, north-pier, south-pier) " in said
     assert "need 3 instead of 2 of (harbour-office, north-pier, south-pier)" not in said  # The office would be needed.
+    assert (
+        "what the odds rest on lost a year leaked a year days away of single shares 4 % none none harbour-off" in said
+    )
+    rates = run("plan", path, "--json").json["rates"]
+    assert rates[0] == {
+        "what": "share",
+        "names": ["harbour-office", "north-pier", "south-pier", "registrar"],
+        "loss": pytest.approx(0.04),
+        "leak": 0.0,
+        "absent": 0.0,
+    }
+    assert [one["what"] for one in rates] == ["share", "person", "site", "line"]
 
 
 def test_rates_that_are_all_stated_leave_nothing_to_assume(tmp_path: Path) -> None:

@@ -56,7 +56,7 @@ def test_rules_lie_in_the_order_of_their_odds(path: Path) -> None:
         assert [place for _, place in in_order] == sorted((place for _, place in in_order), key=lambda p: grows * p)
     assert all(PLANE.left <= one.x <= PLANE.right and PLANE.top <= one.y <= PLANE.bottom for one in figure.marks)
     assert [one.kind == "best" for one in figure.marks] == [one.best for one in points]
-    assert [one.kind == "extreme" for one in figure.marks] == [one.need in (1, one.total) for one in points]
+    assert [one.kind == "none" for one in figure.marks] == [not one.choice for one in points]
     assert len(places(figure.frontier)) == sum(one.best for one in points)
     assert [len(places(line)) for line in figure.lines] == list(range(2, 13))
 
@@ -122,7 +122,7 @@ def test_the_policy_is_drawn_where_its_odds_are_or_not_at_all() -> None:
 
 
 def test_odds_of_nothing_lie_at_the_edge() -> None:
-    points = [Point(2, 3, 0, Odds(0.0, 0.0, 0.0, 1.0), True), Point(2, 4, 0, Odds(0.1, 1e-300, 0.0, 1.0), False)]
+    points = [Point(2, 3, 0, Odds(0.0, 0.0, 0.0, 1.0), True, True), Point(2, 4, 0, Odds(0.1, 1e-300, 0.0, 1.0), True)]
     figure = plane_figure(points, Odds(1.0, 1.0, 0.0, 1.0))
     none, little = figure.marks
     assert (none.x, none.y, none.words) == (PLANE.left, PLANE.bottom, "2 of 3: loss none, exposure none")

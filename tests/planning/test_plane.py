@@ -15,6 +15,7 @@ from hypothesis import strategies as st
 
 from shares.documents.policy import Policy
 from shares.planning import plane as module
+from shares.planning.lineup import lined_up
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, odds
 from shares.planning.plane import frontier, plane
@@ -37,6 +38,21 @@ def test_every_rule_is_there_with_its_odds() -> None:
         assert one.imagined == max(0, one.total - 5)
         assert one.odds.loss == pytest.approx(at_least(one.total - one.need + 1, one.total, 0.05), rel=1e-9)
         assert one.odds.exposure == pytest.approx(at_least(one.need, one.total, 0.02), rel=1e-9)
+
+
+def test_what_is_not_sound_is_no_choice() -> None:
+    """One person who is three of five custodians; and two sites, with which no rule is sound."""
+    names = tuple(f"pier {i}" for i in range(5))
+    shares = tuple(Cause("share", name, frozenset({name}), 0.05, 0.02) for name in names)
+    person = Cause("person", "harbour master", frozenset(names[:3]), leak=0.01)
+    for one in plane(Model(Rule(3, names), (*shares, person)), 10):
+        flat = lined_up(Model(Rule(3, names), (*shares, person))).rule(one.need, one.total).rule
+        held = sum(name in names[:3] for name in flat.children)
+        assert one.choice is not (held >= one.need or one.total - held < one.need or one.need in (1, one.total))
+    sites = (Cause("site", "quay", frozenset(names[:2])), Cause("site", "pier house", frozenset(names[2:])))
+    points = plane(Model(Rule(3, names), (*shares, *sites)), 10)
+    assert [one.choice for one in points] == [1 < one.need < one.total for one in points]
+    assert any(one.best for one in points)
 
 
 @given(st.lists(st.tuples(FEW, FEW), max_size=12))

@@ -20,6 +20,7 @@ from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, odds
 from shares.planning.simulate import Estimate, Simulated
+from shares.planning.soundness import sound
 from shares.planning.targets import INTERVALS, Targets, meeting, parse_targets
 from shares.sharing.rule import Rule
 
@@ -195,3 +196,18 @@ def test_targets_that_are_none(text: str) -> None:
 def test_a_span_out_of_range_is_refused(years: float) -> None:
     with pytest.raises(ParameterError, match="at least one day and at most 1,000 years"):
         meeting(alike(3, loss=0.05, leak=0.02), Targets(0.1, 0.1), years)
+
+
+def test_rules_with_which_one_person_or_site_recovers_alone_are_no_choice() -> None:
+    names = tuple(f"pier {i}" for i in range(5))
+    shares = tuple(Cause("share", name, frozenset({name}), yearly(0.05), yearly(0.001)) for name in names)
+    master = Cause("person", "harbour master", frozenset(names[:3]))
+    model = Model(Rule(3, names), (*shares, master))
+    answer = meeting(model, Targets(0.01, 1.0), 10)
+    assert (answer.met, answer.sound) == (True, True)
+    for choice in answer.choices:
+        assert sound(lined_up(model).rule(choice.need, choice.total))
+    # With all shares at one site there is none; what is told then is told with that.
+    quay = Cause("site", "quay", frozenset(names))
+    answer = meeting(replace(model, causes=(*shares, quay)), Targets(0.01, 1.0), 10)
+    assert (answer.met, answer.sound) == (True, False)
