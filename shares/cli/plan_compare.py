@@ -15,9 +15,9 @@ from shares.cli.plan_odds import odds_members, sentences, table
 from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.compare import Side, verdict
-from shares.planning.reckoned import words
+from shares.planning.reckoned import parts
 from shares.planning.simulate import INSTALL
-from shares.planning.telling import why, years_words
+from shares.planning.telling import why, years_parts
 
 _UNKNOWN = "too large"
 
@@ -45,12 +45,14 @@ def comparison_lines(first: tuple[str, Side], second: tuple[str, Side], years: f
     for which, (path, side) in (("First", first), ("Second", second)):
         yield from prose(f"{which}: {path}, {side.plan.label}. To recover: {side.plan.rule.words()}.")
     yield ""
-    columns = [list(_column(side)) for _, side in (first, second)]
-    yield from table(
-        [("", "first", "second")] + [(what, one, other) for (what, one), (_, other) in zip(*columns, strict=True)]
-    )
-    yield f"Odds are over {numbers.horizon(years)}."
     simulated = [side.simulated for _, side in (first, second) if side.simulated]
+    heads = (
+        f"{which}{', odds simulated' if side.simulated else ''}"
+        for which, (_, side) in (("first", first), ("second", second))
+    )
+    columns = [_rows(side, intervals=bool(simulated)) for _, side in (first, second)]
+    yield from table([("", *heads), *((what, one, other) for (what, one), (_, other) in zip(*columns, strict=True))])
+    yield f"Odds are over {numbers.horizon(years)}."
     if simulated:
         yield from sentences(why(simulated, None))
     if first[1].now and second[1].now:
@@ -61,8 +63,15 @@ def comparison_lines(first: tuple[str, Side], second: tuple[str, Side], years: f
         )
 
 
-def _column(side: Side) -> Iterator[tuple[str, str]]:
-    plan, odds, simulated = side.plan, side.odds, side.simulated
+def _rows(side: Side, *, intervals: bool) -> Iterator[tuple[str, str]]:
+    """Yield what is compared of a policy. Intervals are in rows of their own: beside the odds they would make a table
+    of two simulated policies too wide for a terminal.
+
+    Args:
+        side: the policy.
+        intervals: whether there are such rows, as there are where one of both is simulated.
+    """
+    plan = side.plan
     yield "custodians", str(plan.counts["custodians"].total)
     for what in ("people", "sites"):
         yield f"fewest {what} that make a quorum", str(plan.counts[what].quorum)
@@ -70,9 +79,18 @@ def _column(side: Side) -> Iterator[tuple[str, str]]:
     yield "serious findings", str(len(plan.serious))
     yield "attested", numbers.every(side.model.attest_every)
     yield "refreshed", numbers.every(side.model.refresh_every)
-    for of, what in (("loss", "loss"), ("exposure", "exposure"), ("absence", "no quorum on a given day")):
-        yield what, f"{'simulated ' if simulated else ''}{words(side.now, of)}" if side.now else _UNKNOWN
-    mean = (
-        f"simulated {years_words(simulated)}" if simulated else numbers.years(odds.years_to_loss) if odds else _UNKNOWN
-    )
-    yield "mean time until the first loss", mean
+    for what, (told, within) in _told(side).items():
+        yield what, told
+        if intervals:
+            yield "  its 95 % interval", within
+
+
+def _told(side: Side) -> dict[str, tuple[str, str]]:
+    names = {"loss": "loss", "exposure": "exposure", "absence": "no quorum on a given day"}
+    told = {what: parts(side.now, of) if side.now else (_UNKNOWN, "") for of, what in names.items()}
+    mean = (_UNKNOWN, "")
+    if side.odds:
+        mean = (numbers.years(side.odds.years_to_loss), "")
+    elif side.simulated:
+        mean = years_parts(side.simulated)
+    return {**told, "mean time until the first loss": mean}

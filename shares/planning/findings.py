@@ -261,6 +261,5 @@ def _too_many(people: Count, quorums: Quorums) -> Iterator[Finding]:
             "note",
             "more-than-needed",
             f"Any {people.block.low - 1} people may be lost and a quorum is left.",
-            "Each custodian more is one more share to protect: whether so many are worth it, the odds of loss and of "
-            "exposure tell.",
+            "More custodians are more shares to protect: the odds of loss and exposure tell whether that is worth it.",
         )

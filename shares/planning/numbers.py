@@ -17,6 +17,8 @@ _CERTAIN = 0.995
 _ONE_DIGIT_BELOW = 1e-4
 _PERCENT_FROM = 1e-6
 _LEAST = 1e-12
+MOST_YEARS = 1e6
+"""No longer time is told in numbers."""
 _UNITS = ((1e12, "trillion"), (1e9, "billion"), (1e6, "million"))
 
 
@@ -80,7 +82,7 @@ def years(span: float) -> str:
     """
     if span == math.inf:
         return "never"
-    if span > 1e6:
+    if span > MOST_YEARS:
         return "more than a million years"
     told, unit = (_two_digits(365 * span), "day") if span < 1 else (_two_digits(span), "year")
     return f"{told} {unit}" if told == "1" else f"{told} {unit}s"

@@ -109,13 +109,24 @@ def words(found: Reckoned, of: str) -> str:
     Args:
         found, of: as for ``value``.
     """
+    told, within = parts(found, of)
+    if not within:
+        return told
+    return f"{told}: {within}" if " of " in told else f"{told} ({within})"
+
+
+def parts(found: Reckoned, of: str) -> tuple[str, str]:
+    """Write one of the odds, and apart from it its interval; nothing for the interval of an exact one.
+
+    Args:
+        found, of: as for ``value``.
+    """
     if not isinstance(found, Simulated):
-        return numbers.chance(value(found, of))
+        return numbers.chance(value(found, of)), ""
     estimate = getattr(found, of)
-    within = numbers.interval(estimate.low, estimate.high)
-    if estimate.seen in (0, found.histories):
-        return f"{'all' if estimate.seen else 0} of {found.histories:,}: {within}"
-    return f"{numbers.chance(estimate.value)} ({within})"
+    seen = {0: "0", found.histories: "all"}.get(estimate.seen)
+    told = f"{seen} of {found.histories:,}" if seen else numbers.chance(estimate.value)
+    return told, numbers.interval(estimate.low, estimate.high)
 
 
 def briefly(found: Reckoned, of: str) -> str:

@@ -49,12 +49,22 @@ def glued(text: str) -> str:
 
 def years_words(simulated: Simulated) -> str:
     """Write the mean time until the first loss."""
+    told, within = years_parts(simulated)
+    if simulated.years_to_loss is None:
+        return f"{told} from {numbers.histories(simulated.histories)}"
+    return f"{told} ({within})" if within else told
+
+
+def years_parts(simulated: Simulated) -> tuple[str, str]:
+    """Write the mean time until the first loss, and apart from it its interval; nothing for that where all are alike as
+    they are told."""
     years = simulated.years_to_loss
     if years is None:
-        return f"too rare to be told from {numbers.histories(simulated.histories)}"
-    value, low, high = (numbers.years(end) for end in (years.value, years.low, years.high))
-    # Where all are alike as they are told, the interval would say nothing.
-    return value if low == high else f"{value} ({low} to {high})"
+        return "too rare to be told", ""
+    told, low, high = (numbers.years(end) for end in (years.value, years.low, years.high))
+    if low == high:
+        return told, ""
+    return told, f"{low} or more" if years.high > numbers.MOST_YEARS else f"{low} to {high}"
 
 
 def why(simulated: Iterable[Simulated], odds: Odds | None) -> str:

@@ -16,7 +16,7 @@ from shares.planning.advice import outlook
 from shares.planning.assumed import assumptions
 from shares.planning.examine import examine
 from shares.planning.model import model_of
-from shares.planning.numbers import every
+from shares.planning.numbers import chance, every
 from shares.planning.targets import Targets, meeting
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
@@ -336,6 +336,30 @@ def test_targets_find_rules_and_intervals() -> None:
     assert [(one["need"], one["total"], one["attest_every_days"], one["odds"]["loss"]) for one in told["choices"]] == [
         (one.need, one.total, one.attest_every, one.odds.loss) for one in answer.choices
     ]
+
+
+def test_what_no_bound_was_asked_for_is_told_and_how_bad_it_is() -> None:
+    answer = meeting(model_of(Policy.parse(TIDE.read_bytes())), Targets(1.0, 0.001), 10)
+    worst = max(choice.odds.loss for choice in answer.choices)
+    assert worst > 0.5
+    said = " ".join(run("plan", TIDE, "--targets", "exposure=0.1%").out.split())
+    assert f"No bound was asked for loss: with these rules it is up to {chance(worst)}. Ask for one as well" in said
+    assert run("plan", TIDE, "--targets", "exposure=0.1%", "--json").json["free"] == ["loss"]
+    both = run("plan", TIDE, "--targets", "exposure=0.1%,loss=99.9%").out
+    assert "loss at most 99.9 % and exposure at most 0.1 %." in both
+    assert "No bound" not in both
+
+
+def test_what_was_tried_says_how_often_shares_are_attested(tmp_path: Path) -> None:
+    def tried(days: str, *more: str) -> str:
+        path = changed(tmp_path, TIDE, "strict = ", f'rates.repair_after = "{days}"\nstrict = ')
+        return " ".join(run("plan", path, "--targets", "loss=1%", *more).out.split())
+
+    oftenest = "Attestations were tried no oftener than every 91 days: a lost share is not made good in less time"
+    assert f"{oftenest} (repair_after)." in tried("60d")
+    assert oftenest in tried("60d", "--json")
+    assert "Attestations were tried not at all:" in tried("2000d")
+    assert "Attestations were tried" not in tried("7d")
 
 
 def test_targets_out_of_reach_are_met_as_nearly_as_can_be() -> None:

@@ -7,18 +7,23 @@ from __future__ import annotations
 
 import json
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import numpy
 import pytest
 from cli.harness import assert_refused, run
 
+from shares.cli.plan_compare import comparison_lines
 from shares.cli.plan_simulated import simulated_members
 from shares.documents.policy import Policy
 from shares.planning.advice import outlook
+from shares.planning.compare import Side
+from shares.planning.confidence import interval
+from shares.planning.examine import examine
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
-from shares.planning.reckoned import words
+from shares.planning.reckoned import parts, words
 from shares.planning.simulate import INSTALL, MAX_HISTORIES, Estimate, Simulated, simulate
 from shares.planning.telling import beside, why, years_words
 
@@ -153,6 +158,8 @@ def test_more_histories_are_proposed_as_far_as_there_are() -> None:
     assert f"--histories {MAX_HISTORIES}" in why([found], None)
     most = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, MAX_HISTORIES // 10 + 1, 1, "2.4.0")
     assert "--histories" not in why([most], None)
+    assert why([replace(most, histories=1)], None).startswith("Simulated from 1 history, drawn by")
+    assert years_words(replace(most, histories=1)) == "too rare to be told from 1 history"
     assert "histories each, drawn by numpy 2.4.0 with seed 1" in why([found, found], None)
 
 
@@ -221,7 +228,13 @@ def test_a_side_that_is_too_large_is_simulated(tmp_path: Path) -> None:
     path = entangled(tmp_path)
     found = simulate(model(path), 10, histories=2000, seed=7)
     text = said(TIDE, "--compare", path, *FEW)
-    assert f"loss 5.3 % simulated {words(found, 'loss')} exposure 3.3 % simulated {words(found, 'exposure')}" in text
+    (loss, of_loss), (exposure, of_exposure) = (parts(found, of) for of in ("loss", "exposure"))
+    assert " first second, odds simulated " in text
+    assert (
+        f"loss 5.3 % {loss} its 95 % interval {of_loss} exposure 3.3 % {exposure} its 95 % interval {of_exposure}"
+        in text
+    )
+    assert words(found, "loss") == f"{loss} ({of_loss})"
     assert f"Simulated from 2,000 histories, {DRAWN % 7}: the rule" in text
     assert " policy is better in " in text
     one, other = run("plan", TIDE, "--compare", path, *FEW, "--json").json["policies"]
@@ -230,6 +243,30 @@ def test_a_side_that_is_too_large_is_simulated(tmp_path: Path) -> None:
     text = said(path, "--compare", path, *FEW)
     assert "So many histories do not show that one policy is better than the other." in text
     assert f"Simulated from 2,000 histories each, {DRAWN % 7}" in text
+    assert " first, odds simulated second, odds simulated " in text
+
+
+def test_two_simulated_policies_are_no_wider_than_a_terminal(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Whatever their odds: the widest that there are."""
+    few = Estimate(1e-9, *interval(1, MAX_HISTORIES), 1)
+    none = Estimate(0.0, *interval(0, MAX_HISTORIES), 0)
+    policy = Policy.parse(TIDE.read_bytes())
+    for estimate in (few, none):
+        for mean in (
+            None,
+            Estimate(9.9e5, 2.55e5, 1e6, 1),
+            Estimate(3e6, 2.55e5, 5e6, 1),
+            Estimate(3e6, 2.55e5, float("inf"), 1),
+        ):
+            found = Simulated(*(estimate,) * 3, mean, MAX_HISTORIES, 1, "2.4.0")
+            one = "policy.toml", Side(examine(policy), model_of(policy), None, found)
+            lines = list(comparison_lines(one, one, 10))
+            assert max(map(len, lines)) <= 105, max(lines, key=len)
+            rows = [" ".join(line.split()) for line in lines]
+            assert ("mean time until the first loss too rare to be told too rare to be told" in rows) == (mean is None)
+            assert ("its 95 % interval 260,000 years or more 260,000 years or more" in rows) == (
+                mean is not None and mean.high > 1e6
+            )
 
 
 def test_targets_that_a_simulation_meets_misses_or_cannot_tell(tmp_path: Path) -> None:

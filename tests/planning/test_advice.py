@@ -5,7 +5,9 @@ Sources: binomial tails by ``math.comb``; the odds of each changed model, worked
 
 from __future__ import annotations
 
+import itertools
 import math
+import re
 import sys
 from dataclasses import replace
 from pathlib import Path
@@ -289,3 +291,39 @@ def test_words_for_what_is_simulated() -> None:
     )
     attested = replace(GATE, attest_every=90, refresh_every=365)
     assert "no quorum can be had in time is below 0.37 %: drills" in advice(attested, 10, now, None, None)[2]
+
+
+NUMBER = r"(?:[0-9]+(?:\.[0-9]+)? %|1 in [0-9.,]+ \w+)"
+SIMULATED = rf"(?:above )?{NUMBER} \({NUMBER} to {NUMBER}\)"
+CHANCE = rf"(?:0|below 1 in a trillion|(?:below |above )?{NUMBER}|{NUMBER} \(1 in [0-9,]+\)|{SIMULATED})"
+EXACT = [Odds(*(p,) * 3, 1.0) for p in (0.0, 5e-14, 4e-7, 9e-4, 0.1, 0.19, 0.6, 1.0)]
+DRAWN = [seen(*(count,) * 3) for count in (0, 5, 100, 1000)]
+
+
+@pytest.mark.parametrize("kind", [EXACT, DRAWN], ids=["exact", "simulated"])
+def test_every_combination_of_odds_reads_well(kind: list[Odds] | list[Simulated]) -> None:
+    attested = replace(GATE, attest_every=90, refresh_every=365)
+    for one, other in itertools.product(kind, kind):
+        now = replace(one, exposure=other.exposure)
+        after = replace(other, exposure=one.exposure)
+        better = Change("attest", "to attest every year", after, 0.2, -0.1)
+        danger, best, besides = advice(attested, 10, now, None, (better,))
+        said = re.fullmatch(
+            rf"Over 10 years the chance of loss is {CHANCE}, and that of exposure is {CHANCE}: (?:loss is the greater "
+            r"danger|exposure is the greater danger|one danger is about as great as the other|which danger is the "
+            r"greater one, so many histories do not tell|at these rates neither can happen)\.",
+            danger,
+        )
+        assert said, danger
+        assert ("neither" in danger) == (one is other is EXACT[0])
+        if one is not other:
+            assert re.fullmatch(
+                rf"Of the changes tried it helps most to attest every year: loss goes from {CHANCE} to {CHANCE} and "
+                rf"exposure goes from {CHANCE} to {CHANCE}\.",
+                best,
+            ), best
+        assert re.fullmatch(
+            rf"The chance that on a day taken at random no quorum can be had in time is {CHANCE}: drills show whether "
+            r"that is so\.",
+            besides,
+        ), besides

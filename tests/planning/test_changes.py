@@ -11,7 +11,15 @@ import pytest
 from strategies import sets_of
 
 from shares.errors import ParameterError
-from shares.planning.changes import attesting_every, moved, needing, refreshing_every, with_another
+from shares.planning.changes import (
+    attesting_every,
+    moved,
+    needing,
+    on_another_medium,
+    refreshing_every,
+    reporting_elsewhere,
+    with_another,
+)
 from shares.planning.model import Cause, Model
 from shares.sharing.rule import Rule
 
@@ -77,3 +85,26 @@ def test_a_share_at_a_site_of_its_own() -> None:
     assert len([one for one in moved(apart, "north-pier").causes if one.kind == "site"]) == 2
     with pytest.raises(ParameterError):
         moved(MODEL, "dry-dock")
+
+
+def test_a_share_on_another_medium() -> None:
+    sticks = replace(MODEL, causes=(*MODEL.causes, cause("medium", "north-pier", "south-pier")))
+    apart = on_another_medium(sticks, "south-pier")
+    media = [one for one in apart.causes if one.kind == "medium"]
+    assert [(one.members, one.loss) for one in media] == [({"north-pier"}, 0.1), ({"south-pier"}, 0.1)]
+    assert [one for one in apart.causes if one.kind != "medium"] == list(MODEL.causes)
+    with pytest.raises(ParameterError):
+        on_another_medium(sticks, "dry-dock")
+
+
+def test_whoever_reports_elsewhere_takes_along_all_shares_they_hold_but_not_the_line_they_command() -> None:
+    board = Cause("line", "board", frozenset({"north-pier", "south-pier", "registrar"}), 0.1, 0.2, 0.3)
+    own = Cause("line", "PERSON  north-pier", frozenset({"north-pier", "registrar", "south-pier"}), 0.3)
+    model = replace(MODEL, causes=(*MODEL.causes[:4], board, own))
+    apart = reporting_elsewhere(model, "registrar")
+    lines = [one for one in apart.causes if one.kind == "line"]
+    assert [one.members for one in lines] == [{"south-pier"}, {"north-pier", "registrar"}, own.members]
+    assert lines[1] == replace(board, name="a line for registrar", members=lines[1].members)
+    assert apart.causes[:4] == model.causes[:4]
+    with pytest.raises(ParameterError):
+        reporting_elsewhere(model, "dry-dock")
