@@ -73,6 +73,10 @@ def _column(side: Side) -> Iterator[tuple[str, str]]:
     for of, what in (("loss", "loss"), ("exposure", "exposure"), ("absence", "no quorum on a given day")):
         yield what, f"{'simulated ' if simulated else ''}{words(side.now, of)}" if side.now else _UNKNOWN
     mean = (
-        f"simulated {years_words(simulated)}" if simulated else numbers.years(odds.years_to_loss) if odds else _UNKNOWN
+        f"{'simulated ' if simulated.years_to_loss else ''}{years_words(simulated)}"
+        if simulated
+        else numbers.years(odds.years_to_loss)
+        if odds
+        else _UNKNOWN
     )
     yield "mean time until the first loss", mean

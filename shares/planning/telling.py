@@ -51,7 +51,7 @@ def years_words(simulated: Simulated) -> str:
     """Write the mean time until the first loss."""
     years = simulated.years_to_loss
     if years is None:
-        return f"too rare to be told from {numbers.histories(simulated.histories)}"
+        return f"too few losses were seen ({simulated.loss.seen}) to tell it"
     value, low, high = (numbers.years(end) for end in (years.value, years.low, years.high))
     # Where all are alike as they are told, the interval would say nothing.
     return value if low == high else f"{value} ({low} to {high})"
