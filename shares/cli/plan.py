@@ -29,11 +29,11 @@ from shares.documents.policy import Policy
 from shares.errors import ParameterError, VerificationError
 from shares.planning.advice import outlook
 from shares.planning.assumed import assumptions
-from shares.planning.compare import side
+from shares.planning.compare import sides
 from shares.planning.examine import Plan, examine
 from shares.planning.model import model_of
 from shares.planning.odds import days_of, odds
-from shares.planning.reckoned import HISTORIES, SEED, instead
+from shares.planning.reckoned import HISTORIES, LEAST_HISTORIES, SEED, instead
 from shares.planning.simulate import MAX_HISTORIES
 from shares.planning.structure import MAX_LISTED, Bounds
 from shares.planning.targets import meeting, parse_targets
@@ -58,7 +58,8 @@ CONFIDENTIAL = "Confidential, like the policy itself: it tells whom to coerce, a
     "--histories",
     type=click.IntRange(1, MAX_HISTORIES),
     metavar="N",
-    help=f"Simulate from so many histories, beside exact odds as well; {HISTORIES} where no odds are exact.",
+    help="Simulate from so many histories, beside exact odds as well. Where no odds are exact, and this is left out, "
+    f"up to {HISTORIES}: fewer, and {LEAST_HISTORIES} at least, where each takes long.",
 )
 @click.option(
     "--seed",
@@ -119,6 +120,8 @@ def command(
         refuse_taken(page)
     if targets is not None and compare is not None:
         raise ParameterError("--targets and --compare answer two questions", hint="ask one after the other")
+    if full and (targets is not None or compare is not None):
+        raise ParameterError("--odds is for a plan, not for --targets or --compare", hint="run it by itself")
     wanted = None if targets is None else parse_targets(targets)
     read, code = _read(policy), 0
     open_ = assumptions(read)
@@ -130,10 +133,8 @@ def command(
         lines = target_lines(wanted, now, answer, years)
     elif compare is not None:
         other = _read(compare)
-        first, second = (
-            (path, side(one, years, histories=histories, seed=seed, drawn=_drawn()))
-            for path, one in ((policy, read), (compare, other))
-        )
+        both = sides((read, other), years, histories=histories, seed=seed, drawn=_drawn())
+        first, second = zip((policy, compare), both, strict=True)
         open_ = tuple(dict.fromkeys((*open_, *assumptions(other))))
         members = {"years": years, "policies": [side_members(*first), side_members(*second)]}
         lines = comparison_lines(first, second, years)

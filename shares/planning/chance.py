@@ -19,7 +19,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping, Sequence, Set
 from dataclasses import dataclass
 
-from shares.planning.diagram import Diagram, Level
+from shares.planning.diagram import MAX_CUSTODIANS, Diagram, Level
 from shares.sharing.rule import Rule
 
 MAX_WORK = 200_000
@@ -62,19 +62,19 @@ class Chance:
         Returns:
             None where the rule, or the way the events overlap, is too entangled for an exact answer.
         """
-        names = set(rule.paths())
+        names = rule.paths().keys()
         known = tuple(frozenset(event & names) for event in shared)
-        order = _order(rule, known)
-        first = [min((order.index(name) for name in event), default=-1) for event in known]
-        last = [max((order.index(name) for name in event), default=-1) for event in known]
-        kept = [sum(begin <= i <= end for begin, end in zip(first, last, strict=True)) for i in range(len(order))]
-        if max(kept) > MAX_WORK.bit_length():
+        if len(names) > MAX_CUSTODIANS or (found := _order(rule, known)) is None:
             return None
+        order, kept = tuple(found), tuple(found.values())
         diagram = Diagram.of(rule, order)
         if diagram is None:
             return None
         if sum(len(level) << count for level, count in zip(diagram.levels, kept, strict=True)) > MAX_WORK:
             return None
+        place = {name: i for i, name in enumerate(order)}
+        first = [min((place[name] for name in event), default=-1) for event in known]
+        last = [max((place[name] for name in event), default=-1) for event in known]
         stages = tuple(
             _Stage(
                 name,
@@ -123,30 +123,68 @@ class Chance:
         return values[0][0]
 
 
-def _order(rule: Rule, shared: Sequence[frozenset[str]]) -> list[str]:
-    """Return the custodians in an order that keeps those of a group together, and few events in mind at once."""
-    left = [set(event) for event in shared]
-    return list(dict.fromkeys(_asked(rule, shared, left)))
+def _order(rule: Rule, shared: Sequence[frozenset[str]]) -> dict[str, int] | None:
+    """Return the custodians in an order that keeps those of a group together, and few events in mind at once.
+
+    Returns:
+        How many events are kept in mind while each is asked; None where that alone is too much work, with a single node
+        for each custodian. It is found out before much has been done: see ``_asked``.
+    """
+    bits = {name: 1 << i for i, name in enumerate(rule.paths())}
+    hitting: dict[str, list[int]] = {name: [] for name in bits}
+    for event, members in enumerate(shared):
+        for name in members:
+            hitting[name].append(event)
+    # All events that hit a custodian are in mind while that custodian is asked.
+    if 1 << max(map(len, hitting.values())) > MAX_WORK:
+        return None
+    whole = [sum(bits[name] for name in event) for event in shared]
+    left = whole.copy()
+    order: dict[str, int] = {}
+    in_mind = work = 0
+    for name in _asked(rule, bits, hitting, whole, left):
+        if name in order:
+            continue
+        in_mind += sum(left[event] == whole[event] for event in hitting[name])
+        order[name] = in_mind
+        work += 1 << in_mind
+        if work > MAX_WORK:
+            return None
+        for event in hitting[name]:
+            left[event] &= ~bits[name]
+        in_mind -= sum(not left[event] for event in hitting[name])
+    return order
 
 
-def _asked(node: Rule, shared: Sequence[frozenset[str]], left: Sequence[set[str]]) -> Iterator[str]:
+def _asked(
+    node: Rule, bits: Mapping[str, int], hitting: Mapping[str, Sequence[int]], whole: Sequence[int], left: Sequence[int]
+) -> Iterator[str]:
     """Yield a node's custodians, always going on with the child that leaves the fewest events in mind after it.
 
+    Only events that hit somebody below a child count for it, and no custodian is hit by more than some 17: so each
+    step is cheap, however many events there are.
+
     Args:
-        left: whom each event hits that has not been asked yet; kept up to date.
+        bits: a bit for each custodian.
+        hitting: which events hit each.
+        whole: whom each event hits, as bits.
+        left: whom of them it hits that have not been asked yet; kept up to date by whoever takes what is yielded.
     """
-    below = {child: set(child.paths()) if isinstance(child, Rule) else {child} for child in node.children}
+    waiting = []
+    for child in dict.fromkeys(node.children):
+        below = child.paths().keys() if isinstance(child, Rule) else (child,)
+        spared = ~sum(bits[name] for name in below)
+        waiting.append((child, spared, sorted({event for name in below for event in hitting[name]})))
 
-    def kept_after(child: Rule | str) -> int:
-        after = [len(event - below[child]) for event in left]
-        return sum(0 < still < len(event) for still, event in zip(after, shared, strict=True))
+    def more_in_mind(place: int) -> int:
+        _, spared, touched = waiting[place]
+        return sum(
+            (0 != left[event] & spared != whole[event]) - (0 != left[event] != whole[event]) for event in touched
+        )
 
-    while below:
-        child = min(below, key=kept_after) if shared else next(iter(below))
+    while waiting:
+        child, _, _ = waiting.pop(min(range(len(waiting)), key=more_in_mind) if whole else 0)
         if isinstance(child, Rule):
-            yield from _asked(child, shared, left)
+            yield from _asked(child, bits, hitting, whole, left)
         else:
-            for event in left:
-                event.discard(child)
             yield child
-        del below[child]

@@ -8,14 +8,15 @@ Does not: weigh one danger against another.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from itertools import count
 
 from shares.documents.policy import Policy
 from shares.planning.examine import Plan, examine
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
-from shares.planning.reckoned import SEED, Reckoned, apart, instead, value
+from shares.planning.reckoned import HISTORIES, SEED, Reckoned, apart, instead, usual, value
 from shares.planning.simulate import Simulated
 
 ALIKE = 1.1
@@ -44,29 +45,45 @@ class Side:
         return self.odds or self.simulated
 
 
-def side(
-    policy: Policy,
+def sides(
+    policies: Sequence[Policy],
     years: float,
     *,
     histories: int | None = None,
     seed: int = SEED,
     drawn: Callable[[int, int | None], None] | None = None,
-) -> Side:
-    """Examine a policy and work out its odds, or simulate them where that is too much work.
+) -> tuple[Side, ...]:
+    """Examine policies and work out their odds, or simulate them where that is too much work: each from as many
+    histories as the others.
 
     Args:
-        policy: as ``Policy.parse`` returns it.
+        policies: as ``Policy.parse`` returns them.
         years: as for ``odds``.
-        histories, seed, drawn: as for ``instead``.
+        histories, seed, drawn: as for ``instead``; all that is drawn is told as one.
+
+    Returns:
+        One for each policy.
 
     Raises:
         ParameterError: the years, the histories or the seed are out of range.
         ExtraMissingError: a number of histories is asked for and needed, and numpy is not installed.
     """
-    model = model_of(policy)
-    now = odds(model, years)
-    guess = None if now else instead(model, years, histories=histories, seed=seed, drawn=drawn)
-    return Side(examine(policy), model, now, guess)
+    models = [model_of(policy) for policy in policies]
+    exact = [odds(model, years) for model in models]
+    inexact = [model for model, now in zip(models, exact, strict=True) if not now]
+    usually = min((usual(model, years) for model in inexact), default=HISTORIES)
+    each = usually if histories is None else histories
+    place = count()
+
+    def guess(model: Model) -> Simulated | None:
+        before, total = next(place) * each, len(inexact) * each
+        told = None if drawn is None else lambda done, _: drawn(before + done, total)
+        return instead(model, years, histories=histories, seed=seed, drawn=told, usually=usually)
+
+    return tuple(
+        Side(examine(policy), model, now, None if now else guess(model))
+        for policy, model, now in zip(policies, models, exact, strict=True)
+    )
 
 
 def verdict(first: Reckoned, second: Reckoned) -> str:

@@ -49,9 +49,9 @@ def glued(text: str) -> str:
 
 def years_words(simulated: Simulated) -> str:
     """Write the mean time until the first loss."""
-    told, within = years_parts(simulated)
     if simulated.years_to_loss is None:
-        return f"{told} from {numbers.histories(simulated.histories)}"
+        return f"too few losses were seen ({simulated.loss.seen}) to tell it"
+    told, within = years_parts(simulated)
     return f"{told} ({within})" if within else told
 
 
@@ -60,7 +60,7 @@ def years_parts(simulated: Simulated) -> tuple[str, str]:
     they are told."""
     years = simulated.years_to_loss
     if years is None:
-        return "too rare to be told", ""
+        return "too few losses seen", ""
     told, low, high = (numbers.years(end) for end in (years.value, years.low, years.high))
     if low == high:
         return told, ""

@@ -407,6 +407,8 @@ def test_two_policies_side_by_side() -> None:
         (("--targets", ""), "an empty value is given"),
         (("--compare", ""), "an empty value is given"),
         (("--targets", "loss=0.1", "--compare", TIDE), "answer two questions"),
+        (("--targets", "loss=0.1", "--odds"), "--odds is for a plan, not for --targets or --compare"),
+        (("--compare", TIDE, "--odds"), "--odds is for a plan, not for --targets or --compare"),
     ],
 )
 def test_questions_that_are_none(more: tuple[str, ...], words: str) -> None:

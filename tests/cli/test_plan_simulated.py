@@ -135,7 +135,7 @@ def test_nothing_seen_is_never_told_as_nothing(tmp_path: Path) -> None:
     text = said(path, *FEW)
     assert "loss: no quorum is left 0 of 2,000: below 0.19 %" in text  # 1 - 0.025^(1/2000) is 0.00184.
     assert "the chance of loss is below 0.19 %, and that of exposure is " in text
-    assert "Mean time until the first loss: too rare to be told from 2,000 histories." in text
+    assert "Mean time until the first loss: too few losses were seen (0) to tell it." in text
     assert "none" not in text.partition("odds over")[2].partition("Assumed")[0]
     members = run("plan", path, *FEW, "--json").json["simulated"]
     assert (members["loss"]["value"], members["loss"]["low"], members["loss"]["seen"]) == (0, 0, 0)
@@ -159,8 +159,25 @@ def test_more_histories_are_proposed_as_far_as_there_are() -> None:
     most = Simulated(*(Estimate(0.1, 0.09, 0.11, 100),) * 3, None, MAX_HISTORIES // 10 + 1, 1, "2.4.0")
     assert "--histories" not in why([most], None)
     assert why([replace(most, histories=1)], None).startswith("Simulated from 1 history, drawn by")
-    assert years_words(replace(most, histories=1)) == "too rare to be told from 1 history"
+    assert years_words(replace(most, histories=1)) == "too few losses were seen (100) to tell it"
     assert "histories each, drawn by numpy 2.4.0 with seed 1" in why([found, found], None)
+
+
+def test_one_history_is_one(tmp_path: Path) -> None:
+    text = said(TIDE, "--histories", "1", "--seed", "7")
+    assert f"first loss: too few losses were seen (0) to tell it. Simulated from 1 history, {DRAWN % 7}" in text
+    assert "1 histories" not in text
+    text = said(TIDE, "--compare", entangled(tmp_path), "--histories", "1")
+    assert "mean time until the first loss 180 years too few losses were seen (0) to tell it" in text
+    assert "1 histories" not in text
+
+
+def test_where_each_takes_long_fewer_are_drawn_and_so_it_is_told(tmp_path: Path) -> None:
+    """Weekly rounds for 1,000 years: some ten thousand numbers for each history."""
+    path = entangled(tmp_path, 'attest_every = "7d"\nrefresh_every = "7d"\n')
+    text = said(path, "--years", "1000")
+    assert f"Simulated from 1,000 histories, {DRAWN % 1}: the rule" in text
+    assert "Ten times as many (--histories 10000) give intervals about a third as wide." in text
 
 
 # Without numpy.
@@ -310,7 +327,7 @@ def test_causes_and_changes_are_simulated_where_they_are_asked_for(tmp_path: Pat
     assert f"Left out are {view.causes_left_out} causes and {view.changes_left_out} changes: what they do" in text
     assert "what each cause adds loss exposure no quorum" in text
     assert "refresh every year not told" in text
-    assert "none" not in text.partition("what each cause adds")[2].partition("Assumed")[0]
+    assert "none" not in text.partition("what each cause adds")[2].partition("what the odds rest on")[0]
 
 
 # Questions that are none.
@@ -335,7 +352,7 @@ def test_help_says_what_takes_long_and_what_it_takes() -> None:
     for part in (
         "--histories N",
         "--seed S",
-        "100000 where no odds are exact",
+        "up to 100000: fewer, and 1000 at least",
         "by numpy: without it (README,",
         "an hour in all for 200",
     ):

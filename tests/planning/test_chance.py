@@ -22,6 +22,7 @@ from hypothesis import strategies as st
 from scipy import stats
 from strategies import HARBOUR, rules
 
+from shares.planning import chance as chances
 from shares.planning.chance import Chance
 from shares.planning.structure import dual
 from shares.sharing.rule import Rule
@@ -168,3 +169,65 @@ def test_a_node_that_needs_one_more_is_never_likelier(rule: Rule, data: st.DataO
         assert of(stricter).at(alone) <= of(rule).at(alone) * (1 + CLOSE)
     lenient = Rule(rule.need, (*rule.children, data.draw(st.sampled_from(list(rule.paths())))))
     assert of(rule).at(alone) <= of(lenient).at(alone) * (1 + CLOSE)
+
+
+def in_the_order_described(node: Rule, shared: list[frozenset[str]], asked: list[str]) -> None:
+    """Ask a node's custodians: next is always the child after which the fewest events are begun and not over."""
+    waiting = list(dict.fromkeys(node.children))
+
+    def in_mind(child: Rule | str) -> int:
+        then = {*asked, *(child.paths() if isinstance(child, Rule) else (child,))}
+        return sum(0 < len(event & then) < len(event) for event in shared)
+
+    while waiting:
+        child = min(waiting, key=in_mind) if shared else waiting[0]
+        waiting.remove(child)
+        if isinstance(child, Rule):
+            in_the_order_described(child, shared, asked)
+        elif child not in asked:
+            asked.append(child)
+
+
+@given(rules(most=12), st.data())
+def test_the_next_one_asked_leaves_the_fewest_events_in_mind(rule: Rule, data: st.DataObject) -> None:
+    names = list(rule.paths())
+    shared = data.draw(st.lists(st.frozensets(st.sampled_from(names)), max_size=8))
+    expected: list[str] = []
+    in_the_order_described(rule, shared, expected)
+    found = chances._order(rule, shared)
+    assert found is not None
+    assert list(found) == expected
+    for place, name in enumerate(expected):
+        so_far, others = set(expected[: place + 1]), set(expected[place:])
+        assert found[name] == sum(bool(event & so_far) and bool(event & others) for event in shared)
+
+
+def test_what_is_too_much_is_found_out_before_much_is_done(monkeypatch: pytest.MonkeyPatch) -> None:
+    def never(*_: object) -> None:
+        raise AssertionError
+
+    monkeypatch.setattr(chances.Diagram, "of", never)
+    # More custodians than a diagram takes are not even put in order.
+    with monkeypatch.context() as patched:
+        patched.setattr(chances, "_order", never)
+        one_more = Rule(1, (flat(100, [0.1] * chances.MAX_CUSTODIANS)[0], "dry-dock"))
+        assert Chance.of(one_more) is None
+    asked = list[str]()
+
+    def told(*given: Any) -> Any:
+        for name in ask(*given):
+            asked.append(name)
+            yield name
+
+    ask = chances._asked
+    monkeypatch.setattr(chances, "_asked", told)
+    # 255 custodians, each in three pairs that cross one another: each one asked adds to what is kept in mind.
+    names = [f"pier {i}" for i in range(chances.MAX_CUSTODIANS)]
+    pairs = [frozenset({names[i], names[i * step % 255]}) for i in range(255) for step in (2, 4, 7)]
+    assert Chance.of(Rule(128, tuple(names)), [pair for pair in pairs if len(pair) > 1]) is None
+    assert 0 < len(set(asked)) < 64
+    # One custodian whom more events hit than can be kept in mind: nobody is asked.
+    asked.clear()
+    events = [frozenset({names[0], name}) for name in names[1:20]]
+    assert Chance.of(Rule(128, tuple(names)), events) is None
+    assert not asked

@@ -8,7 +8,7 @@ import pytest
 
 from shares.documents.policy import Policy
 from shares.planning import compare as module
-from shares.planning.compare import side, verdict
+from shares.planning.compare import sides, verdict
 from shares.planning.confidence import interval
 from shares.planning.examine import examine
 from shares.planning.model import model_of
@@ -22,7 +22,7 @@ EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
 @pytest.mark.parametrize("path", sorted(EXAMPLES.glob("*.toml")), ids=lambda path: path.stem)
 def test_a_side_holds_what_was_found_elsewhere(path: Path) -> None:
     policy = Policy.parse(path.read_bytes())
-    found = side(policy, 5)
+    (found,) = sides([policy], 5)
     assert (found.plan, found.model, found.odds) == (examine(policy), model_of(policy), odds(model_of(policy), 5))
     assert (found.simulated, found.now) == (None, found.odds)
 
@@ -30,9 +30,28 @@ def test_a_side_holds_what_was_found_elsewhere(path: Path) -> None:
 def test_a_side_is_simulated_where_it_is_not_exact(monkeypatch: pytest.MonkeyPatch) -> None:
     policy = Policy.parse((EXAMPLES / "tide-gate.toml").read_bytes())
     monkeypatch.setattr(module, "odds", lambda *_: None)
-    found = side(policy, 5, histories=1000, seed=3)
+    (found,) = sides([policy], 5, histories=1000, seed=3)
     assert found.odds is None
     assert found.simulated == found.now == simulate(model_of(policy), 5, histories=1000, seed=3)
+
+
+def test_sides_are_simulated_from_as_many_histories_as_one_another(monkeypatch: pytest.MonkeyPatch) -> None:
+    policies = [Policy.parse((EXAMPLES / f"tide-{name}.toml").read_bytes()) for name in ("gate", "archive")]
+    usual = {model_of(policy): count for policy, count in zip(policies, (2000, 1000), strict=True)}
+    monkeypatch.setattr(module, "usual", lambda model, _: usual[model])
+    monkeypatch.setattr(module, "odds", lambda *_: None)
+    told = list[tuple[int, int | None]]()
+    both = sides(policies, 5, drawn=lambda *step: told.append(step))
+    for policy, found in zip(policies, both, strict=True):
+        assert found.plan == examine(policy)
+        assert found.simulated == simulate(model_of(policy), 5, histories=1000, seed=1)
+    assert told == [(999, 2000), (1999, 2000)]
+    # One that is exact has no say.
+    exact = odds(model_of(policies[1]), 5)
+    monkeypatch.setattr(module, "odds", lambda model, _: exact if model == model_of(policies[1]) else None)
+    one, other = sides(policies, 5)
+    assert one.simulated == simulate(model_of(policies[0]), 5, histories=2000, seed=1)
+    assert (other.odds, other.simulated) == (exact, None)
 
 
 @pytest.mark.parametrize(

@@ -8,14 +8,29 @@ from __future__ import annotations
 import math
 import sys
 
+import numpy as np
 import pytest
 
 from shares.errors import ExtraMissingError, ParameterError
+from shares.planning import histories, reckoned
 from shares.planning.confidence import interval
+from shares.planning.events import lost
 from shares.planning.model import Cause, Model
 from shares.planning.odds import Odds
-from shares.planning.reckoned import HISTORIES, apart, briefly, ends, fall, instead, value, words
+from shares.planning.reckoned import (
+    HISTORIES,
+    LEAST_HISTORIES,
+    apart,
+    briefly,
+    ends,
+    fall,
+    instead,
+    usual,
+    value,
+    words,
+)
 from shares.planning.simulate import INSTALL, Estimate, Simulated, simulate
+from shares.planning.structure import dual
 from shares.sharing.rule import Rule
 
 PIERS = tuple(f"pier {i}" for i in range(5))
@@ -95,6 +110,51 @@ def test_what_is_simulated_instead_is_what_simulate_draws() -> None:
     assert (usual.histories, usual.seed) == (HISTORIES, 1)
     with pytest.raises(ParameterError, match="at least one history"):
         instead(MODEL, 10, histories=0, seed=1, drawn=None)
+
+
+def together(every: int | None, *, total: int = 5, delay: int = 14, rate: float = 0.05) -> Model:
+    """A key that hardly anything loses: of five custodians, each with a site of their own, all would have to go."""
+    names = PIERS[:total]
+    causes = tuple(Cause(kind, name, frozenset({name}), rate, rate) for name in names for kind in ("share", "person"))
+    return Model(Rule(1, names), causes, every, delay, every)
+
+
+@pytest.mark.parametrize(("every", "delay"), [(1, 0), (1, 40), (7, 14), (90, 14), (365, 1), (5000, 14), (None, 14)])
+def test_rounds_are_as_many_as_there_come_to_be(every: int | None, delay: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Counted are those that a simulation draws."""
+    model, days, drawn = together(every, delay=delay), 3650, 0
+
+    def counted(clocks: histories.Clocks, lot: histories.Lot, first: histories.Moments) -> histories.Moments:
+        nonlocal drawn
+        drawn += len(first)
+        return hit(clocks, lot, first)
+
+    hit = histories.Clocks.hit
+    monkeypatch.setattr(histories.Clocks, "hit", counted)
+    clocks = histories.Clocks.of(dual(model.rule), model.causes, lost)
+    histories.ends(clocks, np.random.default_rng(5), every, delay, days, 2000)
+    # The last round is counted as well where nothing happens in it.
+    assert 0 <= reckoned._rounds(clocks.rate, every, delay, days) - drawn / 2000 < 1.1
+
+
+def test_fewer_are_drawn_where_each_takes_long_but_never_too_few() -> None:
+    assert usual(MODEL, 10) == HISTORIES
+    counts = [usual(together(every, rate=9.0), 1000) for every in (None, 730, 90, 7, 1)]
+    assert counts == sorted(counts, reverse=True)
+    assert (counts[0], counts[-1]) == (HISTORIES, 1000)
+    for years in range(1, 1000, 7):
+        count = usual(together(7, rate=9.0), years)
+        assert str(count).strip("0") in ("1", "2", "5")
+        assert LEAST_HISTORIES <= count <= usual(together(7, rate=9.0), max(1, years - 7))
+    with pytest.raises(ParameterError, match="at least one day"):
+        usual(MODEL, 0)
+
+
+def test_the_usual_number_may_be_another_one() -> None:
+    found = instead(MODEL, 10, histories=None, seed=1, drawn=None, usually=300)
+    assert found == simulate(MODEL, 10, histories=300, seed=1)
+    found = instead(MODEL, 10, histories=200, seed=1, drawn=None, usually=300)
+    assert found == simulate(MODEL, 10, histories=200, seed=1)
 
 
 def test_numpy_is_demanded_only_where_histories_are(monkeypatch: pytest.MonkeyPatch) -> None:
