@@ -21,7 +21,7 @@ Does not: print, exit or log. ``shares.cli`` turns an error into one line, in on
       StorageError        (also OSError)             5  file or I/O
       CommandFailedError                             7  the command that was fed failed
       KernelUnavailableError (also RuntimeError)     1  the demanded kernel cannot be loaded
-      ExtraMissingError                              1  an extra is not installed: says which
+      ExtraMissingError                              1  a package that only some commands need is missing
 
 Exit code 6 (an audit found something due) is a result, not an error.
 """
@@ -159,6 +159,6 @@ class KernelUnavailableError(SharesError, RuntimeError):
 
 
 class ExtraMissingError(SharesError):
-    """What was asked for takes an extra that is not installed; the message says which."""
+    """What was asked for takes a package that only some commands need and is not installed; the message says which."""
 
     code = "extra-missing"

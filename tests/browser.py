@@ -43,16 +43,19 @@ def started() -> Iterator[Any]:
 
 
 class Pages:
-    """Pages opened from files in a folder; each notes what it asks for (``asked``) and complains about (``said``)."""
+    """Pages opened from files in a folder; each notes what it asks for (``asked``) and complains about (``said``).
 
-    def __init__(self, browser: Any, folder: Path) -> None:
-        self._browser, self._folder, self._open = browser, folder, list[Any]()
+    A CSS pixel is as many ``dots`` wide and high.
+    """
+
+    def __init__(self, browser: Any, folder: Path, *, dots: int = 1) -> None:
+        self._browser, self._folder, self._dots, self._open = browser, folder, dots, list[Any]()
 
     def show(self, data: bytes, *, width: int = 1200, media: str = "screen") -> Any:
         """Open a page, which must ask for nothing but itself."""
         file = self._folder / f"page{len(self._open)}.html"
         file.write_bytes(data)
-        page = self._browser.new_page(viewport={"width": width, "height": 900})
+        page = self._browser.new_page(viewport={"width": width, "height": 900}, device_scale_factor=self._dots)
         self._open.append(page)
         page.asked, page.said = [], []
         page.on("request", lambda request: page.asked.append(request.url))

@@ -19,6 +19,8 @@ import hypothesis
 import pytest
 
 import shares
+from shares.cli import main
+from shares.planning.simulate import INSTALL
 
 ROOT = Path(__file__).resolve().parent.parent
 PROJECT = tomllib.loads((ROOT / "pyproject.toml").read_text("utf-8"))
@@ -86,9 +88,54 @@ def test_versions_agree() -> None:
     assert importlib.metadata.version("shares") == shares.__version__
 
 
+def test_nobody_is_told_to_install_by_name_what_a_stranger_may_have_on_an_index() -> None:
+    readme = (ROOT / "README.md").read_text("utf-8")
+    ((name, floor),) = (bound.split(">=") for bound in PROJECT["project"]["optional-dependencies"]["plan"])
+    assert f"{name} {floor} or later beside shares" in INSTALL
+    assert f"{name} ({floor} or later)" in readme
+    (heading,) = re.findall(r"'(.*)'", INSTALL)
+    (part,) = re.findall(rf"^## {heading}\n(.*?)^## ", readme, flags=re.MULTILINE | re.DOTALL)
+    assert re.findall(r"pip install (.*)", part) == [
+        "'.[plan]'",
+        "'./shares-VERSION-cp311-abi3-linux_x86_64.whl[plan]'",
+    ]
+    by_name = re.compile(r"pip3? install (-\S+ )*['\"]?shares\b(?!-)|\bshares\[plan\]")
+    assert all(map(by_name.search, ("pip install -U shares", "pip install 'shares[plan]'", "the extra shares[plan]")))
+    assert [
+        name
+        for name in tracked()
+        if name.endswith((".py", ".md"))
+        and name.startswith(("shares/", "README", "CHANGE"))
+        and by_name.search((ROOT / name).read_text("utf-8"))
+    ] == []
+
+
 def test_top_level_holds_what_was_agreed_and_nothing_else() -> None:
     names = {name.split("/")[0] for name in tracked()}
     assert {name for name in names if not name.startswith(".")} == TOP_LEVEL
+
+
+def rooms_of_the_house(page: str) -> dict[str, str]:
+    """Return what DEVELOPERS.md says is in each room; the files below all rooms are in the room without a name."""
+    (block,) = re.findall(r"^    cli/.*\n(?:    .*\n)+", page, flags=re.MULTILINE)
+    told = re.split(r"^    (?=\S)", block, flags=re.MULTILINE)[1:]
+    return dict(line.split("/", 1) if re.match(r"\w+/", line) else ("", line) for line in told)
+
+
+def test_every_module_has_its_place_in_the_house() -> None:
+    told = rooms_of_the_house((ROOT / "DEVELOPERS.md").read_text("utf-8"))
+    # A command's own modules go by its name.
+    by_command = {module for module, _ in main.COMMANDS.values()}
+    modules = [Path(name) for name in tracked() if re.fullmatch(r"shares/(.*/)?(?!__)\w+\.py", name)]
+    assert {path.parent.name for path in modules} - {"shares"} == told.keys() - {""}
+    missing = [
+        path.as_posix()
+        for path in modules
+        if not re.search(rf"\b{path.stem}\b", told["" if path.parent.name == "shares" else path.parent.name])
+        and not (path.parent.name == "cli" and path.stem.split("_")[0] in by_command)
+    ]
+    assert missing == []
+    assert len(modules) > 150
 
 
 def test_no_file_of_the_package_is_too_long_to_read() -> None:

@@ -14,6 +14,7 @@ import importlib
 import io
 import os
 import sys
+from pathlib import Path
 from typing import NoReturn
 
 import click
@@ -53,6 +54,11 @@ COMMANDS = {
     "completion": ("completion", "Print the completion script for a shell."),
 }
 
+# Messages name the page and a section of it; an installed package has it where nobody would look.
+FORMAT = f"""\b
+What each document and a policy hold, FORMAT.md:
+{Path(shares.__file__).parent / "documents" / "FORMAT.md"}"""
+
 EXIT_CODES = """\b
 Exit codes: 0 done, 1 failed, 2 usage, 3 not enough shares, 4 verification failed,
 5 file or I/O, 6 audit found something due, 7 the command that was fed failed."""
@@ -86,7 +92,9 @@ def _print_version(ctx: click.Context, _: click.Parameter, wanted: bool) -> None
 
 
 @click.group(
-    cls=_Commands, epilog=EXIT_CODES, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100}
+    cls=_Commands,
+    epilog=f"{FORMAT}\n\n{EXIT_CODES}",
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
 )
 @click.option(
     "--version",

@@ -91,11 +91,12 @@ def command(
     Rates come from the policy, or are assumed and said to be. Whether odds are good enough is for people to say.
 
     Odds are exact where that is not too much work. Where the same custodians stand in many groups, or sites, lines and
-    media cross one another in many ways, they are simulated, each with its interval, by numpy (the extra shares[plan];
-    without it the structure is told alone). There --odds simulates every cause and change: seconds for each, and up to
+    media cross one another in many ways, they are simulated, each with its interval, by numpy: without it (README, 'Two
+    commands') the structure is told alone. There --odds simulates every cause and change: seconds for each, and up to
     an hour in all for 200 custodians. With --compare and --targets nothing is simulated that is exact.
 
-    What a policy holds is in FORMAT.md, section 12; examples to begin with are in examples/policies/ of the source.
+    What a policy holds is in FORMAT.md, section 12 (shares --help says where that lies); examples to begin with are in
+    examples/policies/ of the source.
 
     \b
     Example:
@@ -224,7 +225,7 @@ def _lines(plan: Plan) -> Iterator[str]:
         yield ""
         yield from prose(f"{finding.severity.capitalize()}: {finding.what} {finding.advice}")
     yield ""
-    yield from prose(_verdict(plan))
+    yield from prose(plan.verdict)
 
 
 def _quorum_lines(plan: Plan) -> Iterator[str]:
@@ -240,14 +241,3 @@ def _counted(count: Bounds) -> str:
     """Write a number that may have hundreds of digits."""
     low, high = (f"{n:,}" if n < 10**15 else f"about 10^{round(math.log10(n))}" for n in count)
     return low if count.exact else f"{low} to {high}"
-
-
-def _verdict(plan: Plan) -> str:
-    if plan.refused:
-        return "The policy is strict: `shares split` refuses it while a serious finding stands. Change the policy."
-    if plan.serious:
-        return (
-            "Serious findings stand. `shares split` tells them and goes on, since the policy does not say "
-            "`strict = true`. Better change the policy first."
-        )
-    return "Nothing serious was found in the structure."

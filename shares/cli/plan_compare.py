@@ -16,7 +16,7 @@ from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.compare import Side, verdict
 from shares.planning.reckoned import parts
-from shares.planning.simulate import EXTRA
+from shares.planning.simulate import INSTALL
 from shares.planning.telling import why, years_parts
 
 _UNKNOWN = "too large"
@@ -59,8 +59,7 @@ def comparison_lines(first: tuple[str, Side], second: tuple[str, Side], years: f
         yield from sentences(verdict(first[1].now, second[1].now))
     else:
         yield from sentences(
-            "What is too large for exact odds is simulated by numpy, which is not installed: install the extra "
-            f"{EXTRA}."
+            f"What is too large for exact odds is simulated by numpy, which is not installed: {INSTALL}."
         )
 
 

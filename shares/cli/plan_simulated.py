@@ -11,7 +11,7 @@ from __future__ import annotations
 import math
 
 from shares.planning.odds import Odds
-from shares.planning.simulate import EXTRA, Estimate, Simulated
+from shares.planning.simulate import NUMPY, Estimate, Simulated
 from shares.planning.telling import DANGERS
 
 
@@ -31,8 +31,8 @@ def simulated_members(simulated: Simulated | None) -> dict[str, object] | None:
 
 
 def extra_missing(odds: Odds | None, simulated: Simulated | None) -> str | None:
-    """Return the extra without which there are no odds, for JSON; null where there are."""
-    return EXTRA if odds is None and simulated is None else None
+    """Return the package without which there are no odds, for JSON; null where there are."""
+    return NUMPY if odds is None and simulated is None else None
 
 
 def _estimate_members(estimate: Estimate) -> dict[str, object]:

@@ -16,7 +16,7 @@ from shares.planning import numbers
 from shares.planning.advice import largest
 from shares.planning.lineup import IMAGINED
 from shares.planning.reckoned import Reckoned, words
-from shares.planning.simulate import EXTRA, Simulated
+from shares.planning.simulate import INSTALL, Simulated
 from shares.planning.targets import INTERVALS, Answer, Targets
 from shares.planning.telling import why
 
@@ -109,7 +109,7 @@ def _of_the_policy(targets: Targets, now: Reckoned | None) -> str:
     if now is None:
         return (
             "The policy itself is too large for exact odds, and to simulate them takes numpy, which is not installed: "
-            f"install the extra {EXTRA}."
+            f"{INSTALL}."
         )
     told = f"The policy as it is: loss {words(now, 'loss')}, exposure {words(now, 'exposure')}"
     met = targets.met_by(now)

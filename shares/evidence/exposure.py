@@ -6,7 +6,8 @@ it was decided on, and ends with a disposition. The dealer's machine knew everyt
 
 Source: PCI PIN Security Requirements 3.1, 21-2.4 (no custodian has present or past knowledge of enough shares; read in
 a summary); A. Shamir 1979 and J. Benaloh, J. Leichter 1988 (what shares determine one another).
-May import: shares.documents, shares.planning.part, shares.planning.structure, shares.sharing.rule, shares.evidence.
+May import: shares.documents, shares.planning.remainder, shares.planning.structure, shares.sharing.rule,
+shares.evidence.
 Secret: nothing. Confidential: all of it. Public: the rule.
 Does not: know what nobody entered; a journal tells what its writers told it.
 """
@@ -36,7 +37,7 @@ from shares.documents.policy import folded
 from shares.evidence.audited import Known
 from shares.evidence.life import Life
 from shares.evidence.margin import counted
-from shares.planning.part import still_needed
+from shares.planning.remainder import still_needed
 from shares.planning.structure import Bounds
 from shares.sharing.rule import Path, Rule
 

@@ -19,7 +19,7 @@ from shares.documents.policy import folded
 from shares.evidence.audited import CustodianRow, Margin, MarginSince
 from shares.evidence.life import Life
 from shares.evidence.standing import Span
-from shares.planning.part import still_needed, without
+from shares.planning.remainder import still_needed, without
 from shares.planning.structure import Bounds, Count, relabelled
 from shares.planning.truth_table import MAX_NAMES
 from shares.sharing.rule import Rule

@@ -41,15 +41,20 @@ class LogScale:
 
     @classmethod
     def around(cls, numbers: Iterable[float], *, least: float, start: float, end: float) -> LogScale:
-        """Return an axis of whole decades around numbers, of which those below ``least`` lie at its low end.
+        """Return an axis of whole decades around numbers. Where any lies below ``least``, the axis ends there, and what
+        lies below is drawn at that end.
 
-        >>> LogScale.around([0.02, 0.5, 0.0], least=1e-6, start=0, end=100)
+        >>> LogScale.around([0.02, 0.5], least=1e-6, start=0, end=100)
         LogScale(low=0.01, high=1.0, start=0, end=100)
+        >>> LogScale.around([0.02, 0.5, 0.0], least=1e-6, start=0, end=100).low
+        1e-06
         """
-        seen = [number for number in numbers if number >= least]
+        seen = [max(number, least) for number in numbers]
         low = 10.0 ** math.floor(math.log10(min(seen, default=least)))
         high = 10.0 ** math.ceil(math.log10(max(seen, default=1.0)))
-        return cls(low if low < high else high / 10, high, start, end)
+        if low >= high:
+            low, high = (high / 10, high) if high >= 1 else (low, 10 * low)
+        return cls(low, high, start, end)
 
     def at(self, number: float) -> float:
         """Return where a number lies, to a tenth of a unit; what is beyond an end lies there."""

@@ -22,7 +22,7 @@ from shares.planning import numbers
 from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds, contributions, odds, without_each
 from shares.planning.reckoned import HISTORIES, SEED, Reckoned, briefly, fall, instead, value, words
-from shares.planning.simulate import EXTRA, Simulated
+from shares.planning.simulate import INSTALL, Simulated
 from shares.planning.single import Single, single_changes
 
 _MOST_CUSTODIANS = 24
@@ -173,7 +173,7 @@ def advice(
     if now is None:
         return (
             "This rule, or the way in which people, sites and reporting lines overlap in it, is too large for exact "
-            f"odds, and to simulate them takes numpy, which is not installed: install the extra {EXTRA}.",
+            f"odds, and to simulate them takes numpy, which is not installed: {INSTALL}.",
             "What is said of its structure holds all the same.",
             "A simpler rule has odds, and fewer ways to go wrong: each group in one place, and few custodians in each.",
         )

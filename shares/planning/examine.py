@@ -71,6 +71,18 @@ class Plan:
         """Whether the policy forbids its own split: it is strict, and a serious finding stands."""
         return self.strict and bool(self.serious)
 
+    @property
+    def verdict(self) -> str:
+        """What the findings come to, and what next."""
+        if self.refused:
+            return "The policy is strict: `shares split` refuses it while a serious finding stands. Change the policy."
+        if self.serious:
+            return (
+                "Serious findings stand. `shares split` tells them and goes on, since the policy does not say "
+                "`strict = true`. Better change the policy first."
+            )
+        return "Nothing serious was found in the structure."
+
     def require_sound(self) -> None:
         """Let a plan pass unless it is refused.
 

@@ -2,15 +2,17 @@
 
 Source: W3C, "Scalable Vector Graphics (SVG) 2", sec. 9 (paths); labels are put one after another where there is room
 (the greedy way with point labels).
-May import: shares.paper.scale, .intervals, .numbers, .odds, .plane.
+May import: shares.paper.scale, .intervals, .numbers, .odds, .plane, .reckoned, .simulate.
 Secret: nothing. Confidential: where a policy lies. Public: nothing.
 Does not: draw: the page's template does, from plain numbers; know colours.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import NamedTuple
 
 from shares.paper.scale import LogScale, Tick
@@ -18,6 +20,8 @@ from shares.planning import numbers
 from shares.planning.intervals import AtInterval
 from shares.planning.odds import Odds
 from shares.planning.plane import Point
+from shares.planning.reckoned import Reckoned, ends, value, words
+from shares.planning.simulate import Simulated
 
 LEAST = 1e-12
 """Odds below are drawn as this: nobody knows a rate well enough to tell them apart."""
@@ -36,8 +40,9 @@ class Box(NamedTuple):
     bottom: int
 
 
-PLANE = Box(760, 572, 116, 730, 20, 505)
+PLANE = Box(790, 572, 116, 740, 20, 505)
 CURVES = Box(500, 300, 108, 440, 16, 240)
+_THIS = "this policy"
 _NEVER_AT = 476
 """Where "never" stands, beyond the axis of the intervals."""
 _ROUND = ((7, "week"), (30, "month"), (91, "quarter"), (365, "year"), (1095, "3 y"), (3650, "10 y"))
@@ -71,8 +76,9 @@ class PlaneFigure:
         columns, rows: marks of the two axes.
         lines: for each n, the path from 1 of n to n of n.
         frontier: the path along the best rules.
-        marks: one for each rule: "best" or "other".
+        marks: one for each rule: "best", "extreme" (one alone recovers, or all are needed) or "other".
         policy: where the policy lies; None where that is not known.
+        spread: the path along the intervals of its loss and exposure, where these are simulated.
         labels: names of the best rules, as far as there is room, and of the lines.
     """
 
@@ -82,6 +88,7 @@ class PlaneFigure:
     frontier: str
     marks: tuple[Mark, ...]
     policy: Mark | None
+    spread: str
     labels: tuple[Label, ...]
 
 
@@ -104,49 +111,66 @@ class CurveFigure:
 
 
 def tick_words(chance: float) -> str:
-    """Write a chance beside an axis.
+    """Write a chance beside an axis; at the end at which all that is less is drawn, without its "or less".
 
-    >>> tick_words(1.0), tick_words(0.001)
-    ('100 %', '0.1 %')
+    >>> tick_words(1.0), tick_words(0.001), tick_words(LEAST)
+    ('100 %', '0.1 %', '1 in a trillion')
     """
+    if chance < 1.5 * LEAST:
+        return "1 in a trillion"
     return "100 %" if chance >= 1 else numbers.chance(chance)
 
 
-def plane_figure(points: Sequence[Point], policy: Odds | None) -> PlaneFigure:
+def plane_figure(points: Sequence[Point], policy: Reckoned | None) -> PlaneFigure:
     """Lay out the plane.
 
     Args:
         points: as ``plane`` returns them, at least one.
-        policy: the odds of the policy itself, where they are known.
+        policy: the odds of the policy itself, where they are known. Simulated ones are drawn at their best guess, or at
+            the most that they can be where no history showed them.
     """
-    known = [point.odds for point in points] + ([policy] if policy else [])
-    x = LogScale.around((one.loss for one in known), least=LEAST, start=PLANE.left, end=PLANE.right)
-    y = LogScale.around((one.exposure for one in known), least=LEAST, start=PLANE.bottom, end=PLANE.top)
+    here = None if policy is None else tuple(value(policy, of) or ends(policy, of)[1] for of in ("loss", "exposure"))
+    known = [(point.odds.loss, point.odds.exposure) for point in points] + ([here] if here else [])
+    x = LogScale.around((loss for loss, _ in known), least=LEAST, start=PLANE.left, end=PLANE.right)
+    y = LogScale.around((exposure for _, exposure in known), least=LEAST, start=PLANE.bottom, end=PLANE.top)
 
-    def mark(one: Odds, kind: str, name: str) -> Mark:
-        words = f"{name}: loss {numbers.chance(one.loss)}, exposure {numbers.chance(one.exposure)}"
-        return Mark(x.at(one.loss), y.at(one.exposure), kind, words)
+    def mark(one: Reckoned, kind: str, name: str, loss: float, exposure: float) -> Mark:
+        told = f"{name}: loss {words(one, 'loss')}, exposure {words(one, 'exposure')}"
+        return Mark(x.at(loss), y.at(exposure), kind, told)
 
     marks = {
-        (one.need, one.total): mark(one.odds, "best" if one.best else "other", f"{one.need} of {one.total}")
+        (one.need, one.total): mark(
+            one.odds,
+            "best" if one.best else "extreme" if one.extreme else "other",
+            f"{one.need} of {one.total}",
+            one.odds.loss,
+            one.odds.exposure,
+        )
         for one in points
     }
-    here = mark(policy, "policy", "this policy") if policy else None
+    its = mark(policy, "policy", _THIS, *here) if policy and here else None
     best = sorted((one for one in points if one.best), key=lambda one: one.odds.loss)
-    named = [(here, "this policy")] if here else []
-    named += [(marks[one.need, one.total], f"{one.need} of {one.total}") for one in best]
+    named = [(marks[one.need, one.total], f"{one.need} of {one.total}") for one in best]
     totals = sorted({total for _, total in marks})
     lines = {total: [one for (_, n), one in marks.items() if n == total] for total in totals}
     named += [(lines[total][-1], f"{total} of {total}") for total in totals if len(lines[total]) == total]
+    frontier = [marks[one.need, one.total] for one in best]
     return PlaneFigure(
         x.ticks(tick_words),
         y.ticks(tick_words),
         tuple(_path(line) for line in lines.values() if len(line) > 1),
-        _path([marks[one.need, one.total] for one in best]),
+        _path(frontier),
         tuple(marks.values()),
-        here,
-        tuple(_labels(named, [*marks.values(), *([here] if here else [])])),
+        its,
+        _spread(policy, its, x, y) if isinstance(policy, Simulated) and its else "",
+        tuple(_labels(named, its, [*marks.values(), *_along(frontier)])),
     )
+
+
+def _spread(policy: Simulated, its: Mark, x: LogScale, y: LogScale) -> str:
+    left, right = map(x.at, ends(policy, "loss"))
+    low, high = map(y.at, ends(policy, "exposure"))
+    return f"M{left:g} {its.y:g} L{right:g} {its.y:g} M{its.x:g} {low:g} L{its.x:g} {high:g}"
 
 
 def curve_figure(
@@ -190,28 +214,69 @@ def _path(along: Sequence[Mark]) -> str:
     return " ".join(f"{'L' if i else 'M'}{one.x:g} {one.y:g}" for i, one in enumerate(along))
 
 
-def _labels(named: Sequence[tuple[Mark, str]], marks: Sequence[Mark]) -> Iterator[Label]:
-    """Yield labels, the first ones first, each where it covers neither a mark nor a label; else none."""
-    taken = [(one.x - 3, one.y - 3, one.x + 3, one.y + 3) for one in marks]
+def _along(line: Sequence[Mark]) -> Iterator[Mark]:
+    """Yield points along a path, close enough that no label lies between them."""
+    for one, other in pairwise(line):
+        steps = int(math.hypot(other.x - one.x, other.y - one.y) / _LINE) + 1
+        for i in range(1, steps):
+            part = i / steps
+            yield Mark(one.x + part * (other.x - one.x), one.y + part * (other.y - one.y), "", "")
+
+
+def _labels(named: Sequence[tuple[Mark, str]], policy: Mark | None, kept_free: Sequence[Mark]) -> Iterator[Label]:
+    """Yield labels, the first ones first, each where it covers neither a mark nor a label; else none. The policy's
+    stands first, always, and farther off where it must."""
+    taken = [_Area(one.x - 3, one.y - 3, one.x + 3, one.y + 3) for one in kept_free]
+    if policy:
+        taken.append(_Area(policy.x - 8, policy.y - 8, policy.x + 8, policy.y + 8))
+        choices = [choice for gap in (_GAP + 4, 20.0, 34.0) for choice in _places(policy, _THIS, gap)]
+        label, area = next((one for one in choices if _free(one[1], taken)), choices[0])
+        taken.append(area)
+        yield label
     done = set[str]()
     for mark, text in named:
         if text in done:
             continue
-        width = _CHARACTER * len(text)
-        for label, left in (
-            (Label(mark.x + _GAP, mark.y + 4, text, "start"), mark.x + _GAP),
-            (Label(mark.x - _GAP, mark.y + 4, text, "end"), mark.x - _GAP - width),
-            (Label(mark.x, mark.y - _GAP, text, "middle"), mark.x - width / 2),
-            (Label(mark.x, mark.y + _LINE + 3, text, "middle"), mark.x - width / 2),
-        ):
-            box = (left, label.y - _LINE + 3, left + width, label.y + 3)
-            inside = PLANE.left < box[0] and box[2] < PLANE.width and PLANE.top < box[1] and box[3] < PLANE.bottom
-            if inside and not any(_meet(box, other) for other in taken):
-                taken.append(box)
+        for label, area in _places(mark, text, _GAP):
+            if _free(area, taken):
+                taken.append(area)
                 done.add(text)
                 yield label
                 break
 
 
-def _meet(one: tuple[float, float, float, float], other: tuple[float, float, float, float]) -> bool:
-    return one[0] < other[2] and other[0] < one[2] and one[1] < other[3] and other[1] < one[3]
+class _Area(NamedTuple):
+    """What a label or a mark covers."""
+
+    left: float
+    top: float
+    right: float
+    bottom: float
+
+
+def _places(mark: Mark, text: str, gap: float) -> Iterator[tuple[Label, _Area]]:
+    """Yield where a label may stand: beside its mark, above and below it, and across from its corners."""
+    width, near = _CHARACTER * len(text), 0.7 * gap
+    for x, y, anchor in (
+        (gap, 4.0, "start"),
+        (-gap, 4.0, "end"),
+        (0.0, -gap, "middle"),
+        (0.0, gap + _LINE - 3, "middle"),
+        (near, -near, "start"),
+        (-near, near + _LINE - 3, "end"),
+        (-near, -near, "end"),
+        (near, near + _LINE - 3, "start"),
+    ):
+        label = Label(round(mark.x + x, 1), round(mark.y + y, 1), text, anchor)
+        left = label.x - {"start": 0.0, "middle": width / 2, "end": width}[anchor]
+        yield label, _Area(left, label.y - _LINE + 3, left + width, label.y + 3)
+
+
+def _free(area: _Area, taken: Sequence[_Area]) -> bool:
+    """Say whether an area is within the picture and meets none of those that are taken."""
+    inside = PLANE.left < area.left and area.right < PLANE.width and PLANE.top - 8 < area.top
+    return inside and area.bottom < PLANE.bottom and not any(_meet(area, other) for other in taken)
+
+
+def _meet(one: _Area, other: _Area) -> bool:
+    return one.left < other.right and other.left < one.right and one.top < other.bottom and other.top < one.bottom

@@ -8,8 +8,7 @@ Lives are rounds, as ``renewal`` tells them. Quiet rounds, which are most, are n
 clock rings is drawn once, over all rounds to come, and the history goes straight to that round. From there all clocks
 begin anew, as an exponential time does not remember how long it has lasted.
 
-Source: Marshall, Olkin 1967 (the first of several independent shocks); Cox 1962 (rounds; the round in which a day taken
-at random lies is a long one more often).
+Source: Marshall, Olkin 1967 (the first of several independent shocks); Cox 1962 (rounds).
 May import: shares.sharing.rule, .events, .model.
 Secret: nothing. Public: nothing either, as for the model.
 Does not: run without numpy, so nothing but ``simulate`` imports it; know what a count proves.
@@ -188,27 +187,40 @@ def away(clocks: Clocks, lot: Lot, every: int | None, delay: int, days: int, his
     Args:
         clocks: of those who are lost or kept away.
         lot: where the draws come from.
-        every: days of a round, for any day of the long run; None for one of the first ``days``.
+        every: days of a round; None for one round without an end.
         delay: days that a round takes longer after an event in it.
-        days: how many are looked at where there are no rounds.
+        days: of how many the day is one. Where those lost satisfied the rule before, they do so on that day.
         histories: how many days to draw.
     """
-    if every is None:
-        first, day = clocks.first(lot, histories), lot.random(histories) * days
-    else:
-        quiet = math.exp(-clocks.rate * every)
-        noisy = -math.expm1(-clocks.rate * every)
-        of_noisy = noisy * (every + delay)
-        in_noisy = lot.random(histories) * (quiet * every + of_noisy) < of_noisy
-        # The first event of a noisy round lies within its first days: an exponential time that is cut off.
-        first = np.full(histories, np.inf)
-        first[in_noisy] = -np.log1p(-noisy * lot.random(np.count_nonzero(in_noisy))) / (clocks.rate or 1)
-        day = lot.random(histories) * np.where(in_noisy, every + delay, every)
-    moments = np.full((len(clocks.rule.paths()), histories), np.inf)
+    whole = math.inf if every is None else every + delay
+    found, day, start = 0, lot.random(histories) * days, np.zeros(histories)
+    while len(day):
+        first, begun = clocks.first(lot, len(day)), start
+        if every is not None:
+            # As in ``ends``: where the first event lies beyond the last day, any number of quiet rounds will do.
+            quiet, first = np.divmod(np.minimum(first, 2.0 * days + every), every)
+            begun = start + quiet * every
+        over = day >= begun + whole
+        found += _missing(clocks, lot, first[~over], (day - begun)[~over])
+        lost = clocks.satisfied(clocks.hit(lot, first[over])) <= whole
+        found += int(np.count_nonzero(lost))
+        day, start = day[over][~lost], (begun + whole)[over][~lost]
+    return found
+
+
+def _missing(clocks: Clocks, lot: Lot, first: Moments, day: Moments) -> int:
+    """Count where those missing satisfy the rule on a day.
+
+    Args:
+        clocks, lot: as for ``away``.
+        first: when in the round the first event is.
+        day: which day of the round it is; below 0 for one of the quiet rounds before.
+    """
+    moments = np.full((len(clocks.rule.paths()), len(day)), np.inf)
     hit = np.flatnonzero(first <= day)
     moments[:, hit] = clocks.hit(lot, first[hit])
     for members, chance in clocks.at_once:
-        kept = lot.random(histories) < chance
+        kept = lot.random(len(day)) < chance
         for member in members:
             moments[member, kept] = 0
-    return int(np.count_nonzero(clocks.satisfied(moments) <= day))
+    return int(np.count_nonzero(clocks.satisfied(moments) <= np.maximum(day, 0)))

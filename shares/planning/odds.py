@@ -4,9 +4,9 @@
   are those of ``renewal``; a refresh is not counted as a repair.
 * *Exposure*: someone comes to know a quorum of shares of one epoch. A refresh begins an epoch and makes what leaked
   before worthless; a repair does not. Leaks are not found out.
-* *Absence*: on a day taken at random, those who can be reached within ``recover_within`` and have their shares make no
-  quorum. An absence of a mean of ``absent_for`` days goes on for exponentially long. With attestations it is the
-  average of the long run, without them that of the years looked at.
+* *Absence*: on a day of these years, taken at random, those who can be reached within ``recover_within`` and have their
+  shares make no quorum; nor do they on any day after a loss. An absence of a mean of ``absent_for`` days goes on for
+  exponentially long.
 
 All three are exact for the model, up to rounding (some 12 digits); ``odds`` returns None where that is too much work.
 They are as good as the rates, and no better: what links custodians and is in no cause is not in the odds.
@@ -20,6 +20,7 @@ Does not: simulate, advise, or say what odds are good enough.
 from __future__ import annotations
 
 import math
+import sys
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 
@@ -31,6 +32,7 @@ from shares.planning.structure import dual
 from shares.sharing.rule import Rule
 
 MAX_YEARS = 1000
+_SMALLEST, _LONGEST = math.ulp(0.0), sys.float_info.max
 
 
 @dataclass(frozen=True, slots=True)
@@ -91,12 +93,20 @@ def odds(model: Model, years: float) -> Odds | None:
         return None
     if (away := _events(dual(model.rule), model, lambda cause: missing(cause, model.patience))) is None:
         return None
-    exposure = _exposed(leaks, model.refresh_every, days)
     if model.attest_every is None:
+        lost_within, absence = losses.within(days), portion_unattended(away.within, days)
         mean = mean_days_unattended(losses.daily, losses.within)
-        return Odds(losses.within(days), exposure, portion_unattended(away.within, days), mean / DAYS_OF_A_YEAR)
-    upkeep = Upkeep(model.attest_every, model.repair_after, losses.daily, losses.within)
-    return Odds(upkeep.within(days), exposure, upkeep.portion(away.within), upkeep.mean_days() / DAYS_OF_A_YEAR)
+    else:
+        upkeep = Upkeep(model.attest_every, model.repair_after, losses.daily, losses.within)
+        lost_within, absence = upkeep.within(days), upkeep.portion(away.within, days)
+        mean = upkeep.mean_days()
+    exposure = _exposed(leaks, model.refresh_every, days)
+    return Odds(
+        _or_possible(lost_within, losses),
+        _or_possible(exposure, leaks),
+        _or_possible(absence, away),
+        min(mean / DAYS_OF_A_YEAR, _LONGEST) if _possible(losses) else math.inf,
+    )
 
 
 def contributions(model: Model, years: float) -> tuple[Contribution, ...] | None:
@@ -160,3 +170,12 @@ def _exposed(leaks: Events, every: int | None, days: int) -> float:
     if 1.0 in (whole, partly):
         return 1.0
     return -math.expm1(epochs * math.log1p(-whole) + math.log1p(-partly))
+
+
+def _possible(events: Events) -> bool:
+    return events.within(math.inf) > 0
+
+
+def _or_possible(chance: float, events: Events) -> float:
+    """Return a chance; one that is too small for a number, and yet not nothing, as the smallest number there is."""
+    return max(chance, _SMALLEST) if _possible(events) else chance

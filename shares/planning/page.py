@@ -1,13 +1,13 @@
 """The page of a plan: what a policy's odds are, where it lies among plain rules, and what would change them.
 
-It is made for a meeting before a ceremony: printed, handed round and filed with the decision. The same policy makes the
-same page, byte for byte.
+It is made for a meeting before a ceremony: printed, handed round and filed with the decision. The same policy, years,
+histories and seed make the same page, byte for byte, with one version of this program (and of numpy, where it drew).
 
 Source: W3C, "Web Content Accessibility Guidelines 2.2" (text for what is drawn, headings, contrast, reflow); E. R.
 Tufte, "The Visual Display of Quantitative Information", 1983 (from memory: labels at the lines, no legends); the order,
 the odds first, is ours.
-May import: shares.paper.page, .advice, .examine, .figures, .intervals, .lineup, .model, .numbers, .odds, .plane,
-.reckoned, .telling.
+May import: shares.paper.page, .advice, .befalling, .examine, .figures, .intervals, .lineup, .model, .numbers, .odds,
+.plane, .reckoned, .telling.
 Secret: nothing. Confidential: the page, like the policy: it tells whom to coerce, and where. Public: nothing.
 Does not: work anything out but what it draws.
 """
@@ -23,6 +23,7 @@ from typing import Final
 from shares.paper.page import REPORT, render
 from shares.planning import advice, figures, numbers
 from shares.planning.advice import Outlook
+from shares.planning.befalling import befalling
 from shares.planning.examine import Plan
 from shares.planning.intervals import AtInterval, over_intervals
 from shares.planning.lineup import IMAGINED
@@ -103,12 +104,13 @@ def plan_page(
         simulated=_simulated(view),
         changes=tuple(change_rows(view.now, view.changes)) if view.now and view.changes else (),
         points=on_it.points,
-        plane=figures.plane_figure(on_it.points, _placed(view)) if on_it.points else None,
+        plane=figures.plane_figure(on_it.points, view.now) if on_it.points else None,
         better=_better(on_it.points, view),
         along=on_it.along,
         attested=_curves(on_it, model.attest_every, {"loss": "loss", "absence": "no quorum on a day"}),
         refreshed=_curves(on_it, model.refresh_every, {"exposure": "exposure"}),
         causes=tuple(_bars(view.causes or ())),
+        rates=tuple(befalling(model)),
         assumptions=assumptions,
         imagined=IMAGINED,
         cautions=CAUTIONS,
@@ -136,7 +138,8 @@ def _dangers(view: Outlook) -> Iterator[_Danger]:
         return
     for of, what in DANGERS.items():
         one_in = numbers.one_in(value(view.now, of)) if view.odds else ""
-        yield _Danger(what, words(view.now, of), one_in, "; ".join(advice.largest(view.causes or (), of)))
+        by = "not worked out" if view.causes is None else "; ".join(advice.largest(view.causes, of))
+        yield _Danger(what, words(view.now, of), one_in, by)
 
 
 def _simulated(view: Outlook) -> str:
@@ -171,28 +174,23 @@ def _curves(on_it: Drawn, now: int | None, of: dict[str, str]) -> figures.CurveF
     return figures.curve_figure(on_it.along, now, [(n, reading(w)) for w, n in of.items()]) if on_it.along else None
 
 
-def _placed(view: Outlook) -> Odds | None:
-    """Return where the policy is drawn: simulated odds at their best guess, or at the most they can be if none of the
-    histories showed them."""
-    if view.simulated is None or view.odds:
-        return view.odds
-    loss, exposure, absence = (value(view.simulated, of) or ends(view.simulated, of)[1] for of in DANGERS)
-    return Odds(loss, exposure, absence, math.inf)
-
-
 def _better(points: tuple[Point, ...], view: Outlook) -> str:
     """Say how the policy stands among the plain rules; of simulated odds, the least that they can be is counted."""
     if view.now is None:
         return "The odds of the policy itself are not known, so it is not on the plane."
     loss, exposure, absence = (ends(view.now, of)[0] for of in DANGERS)
     here = Odds(loss, exposure, absence, math.inf)
-    found = [point for point in points if point.better_than(here)]
+    found = [point for point in points if point.better_than(here) and not point.extreme]
     own = _listed([point for point in found if not point.imagined])
     imagined = _listed([point for point in found if point.imagined])
     if own and imagined:
-        return f"Less of both than this policy have {own} of its own custodians, and with imagined ones {imagined}."
+        return (
+            f"Both are lower than with this policy for {own} of its own custodians, and with imagined ones {imagined}."
+        )
     if own or imagined:
-        return f"Less of both than this policy have {own or f'{imagined}, with imagined custodians'}."
+        return f"Both are lower than with this policy for {own or f'{imagined}, with imagined custodians'}."
+    if view.odds is None:
+        return "Whether any such rule has less of both than this policy, so many histories do not tell."
     return "No such rule has less of both than this policy, by a tenth or more."
 
 

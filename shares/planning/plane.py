@@ -1,7 +1,8 @@
 """The plane of loss against exposure: where all rules any k of n lie, up to 12 custodians, and which of them are best.
 
 A lower threshold buys less loss with more exposure. A rule is on the *frontier* where no other one that was looked at
-is better in one of both and no worse in the other.
+is better in one of both and no worse in the other. Rules in which one custodian alone recovers, or all are needed, are
+worked out as well, but are no choice, and none of them is on it.
 
 Source: V. Pareto, "Manuale di economia politica", 1906 (from memory: what cannot be bettered in one thing but at the
 cost of another); Blakley 1979 (from memory: shares lost and shares given away are two budgets).
@@ -13,7 +14,7 @@ Does not: say where on the frontier to be, or what a custodian costs.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from shares.planning.compare import ALIKE
 from shares.planning.lineup import MAX_CUSTODIANS, lined_up
@@ -37,6 +38,11 @@ class Point:
     imagined: int
     odds: Odds
     best: bool
+
+    @property
+    def extreme(self) -> bool:
+        """Whether one custodian alone recovers, or one that is lost ends the key."""
+        return self.need in (1, self.total)
 
     def better_than(self, other: Odds) -> bool:
         """Say whether both loss and exposure are lower, and not by so little that they are called alike."""
@@ -67,10 +73,9 @@ def plane(
             progress(done, len(pairs))
         if (one := odds(custodians.rule(need, total), years)) is not None:
             found[total, need] = one
-    best = frontier(found.values())
-    return tuple(
-        Point(need, total, custodians.imagined(total), one, one in best) for (total, need), one in found.items()
-    )
+    points = [Point(need, total, custodians.imagined(total), one, False) for (total, need), one in found.items()]
+    best = frontier(point.odds for point in points if not point.extreme)
+    return tuple(replace(point, best=not point.extreme and point.odds in best) for point in points)
 
 
 def frontier(all_odds: Iterable[Odds]) -> set[Odds]:

@@ -14,7 +14,7 @@ So a life is a row of independent *rounds*: A days with no loss at all; or A + D
 which the end comes. What is wanted of the whole life follows from one function, the chance u(t) that t days after a
 dealing, with nothing mended, no quorum is left. Whether A is longer than D does not matter.
 
-Source: D. R. Cox, "Renewal Theory", 1962 (renewal equation, and long-run averages by the round); Barlow, Proschan 1975
+Source: D. R. Cox, "Renewal Theory", 1962 (renewal equation, and means of a life by the round); Barlow, Proschan 1975
 (inspection and repair of k-out-of-n systems).
 May import: .curve.
 Secret: nothing. Public: nothing either, as for the model.
@@ -24,7 +24,7 @@ Does not: know what u is made of, or that a repair took several tries.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from typing import TypeAlias
 
@@ -54,6 +54,11 @@ class Upkeep:
     gone: OverTime
 
     @property
+    def _whole(self) -> int:
+        """How many days a round with a loss takes."""
+        return self.every + self.delay
+
+    @property
     def _quiet(self) -> float:
         """The chance of a round with no loss."""
         return math.exp(-self.losses * self.every)
@@ -72,43 +77,56 @@ class Upkeep:
         """
         if days <= self.every:
             return self.gone(days)
-        whole, quiet, ending = self.every + self.delay, self._quiet, self._ending
-        mended = max(0.0, -math.expm1(-self.losses * self.every) - ending)
-        curve = Curve.of(self.gone, min(whole, days))
-        # begun[day]: the chance that a round begins on this day.
-        begun, lost = [1.0] + [0.0] * days, 0.0
-        for day in range(days):
-            if chance := begun[day]:
-                left = days - day
-                if left > self.every:
-                    begun[day + self.every] += chance * quiet
-                if left >= whole:
-                    lost += chance * ending
-                    begun[day + whole] += chance * mended
-                elif left > self.every:
-                    lost += chance * (curve.at(left) - quiet * curve.at(left - self.every))
-                else:
-                    lost += chance * curve.at(left)
-        return min(lost, 1.0)
+        curve, ending = Curve.of(self.gone, min(self._whole, days)), self._ending
+        lost = sum(
+            chance * (ending if left >= self._whole else self._of_a_round(curve.at, left))
+            for left, chance in self._rounds(days)
+        )
+        return min(1.0, lost)
 
     def mean_days(self) -> float:
         """Return the mean number of days until the key is gone; infinite where that cannot happen."""
         ending = self._ending
         if ending <= 0:
             return math.inf
-        left = Curve.of(lambda days: 1 - self.gone(days), self.every + self.delay, scale=1.0)
-        return (left.integral(self.every + self.delay) - self._quiet * left.integral(self.delay)) / ending
+        left = Curve.of(lambda days: 1 - self.gone(days), self._whole, scale=1.0)
+        return self._of_a_round(left.integral, self._whole) / ending
 
-    def portion(self, away: OverTime) -> float:
-        """Return the part of days, in the long run, on which something is the case.
+    def portion(self, away: OverTime, days: int) -> float:
+        """Return the part of so many days, 1 or more, on which something is the case, as it always is after the end.
 
         Args:
-            away: the chance that it is, so many days after a dealing.
+            away: the chance that it is, so many days after a dealing, nothing being mended; ``gone`` or more.
+            days: how many are looked at.
         """
-        whole = self.every + self.delay
-        curve = Curve.of(away, whole)
-        days = self.every - math.expm1(-self.losses * self.every) * self.delay
-        return (curve.integral(whole) - self._quiet * curve.integral(self.delay)) / days
+        curve, ending = Curve.of(away, min(self._whole, days)), self._ending
+        missed = sum(
+            chance * (self._of_a_round(curve.integral, left) + ending * max(0, left - self._whole))
+            for left, chance in self._rounds(days)
+        )
+        return min(1.0, missed / days)
+
+    def _rounds(self, days: int) -> Iterator[tuple[int, float]]:
+        """Yield for each day on which a round may begin how many are left then, and the chance that one does."""
+        mended = max(0.0, -math.expm1(-self.losses * self.every) - self._ending)
+        ways = (self.every, self._quiet), (self._whole, mended)
+        begun = [1.0] + [0.0] * (days - 1)
+        for day in range(days):
+            if chance := begun[day]:
+                yield days - day, chance
+                for length, part in ways:
+                    if day + length < days:
+                        begun[day + length] += chance * part
+
+    def _of_a_round(self, total: OverTime, left: int) -> float:
+        """Return what a round brings up to its end, or up to the last of the days that are left.
+
+        Args:
+            total: what so many days bring after which nothing was mended; a quiet round ends after A of them.
+            left: how many days are left.
+        """
+        end = min(left, self._whole)
+        return total(end) - (self._quiet * total(end - self.every) if end > self.every else 0.0)
 
 
 def mean_days_unattended(losses: float, gone: OverTime) -> float:

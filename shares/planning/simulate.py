@@ -10,7 +10,7 @@ own: what befalls one of them does not depend on the rates of the others.
 Source: Cox 1962 (a mean life is the mean time of the rounds over the chance that one is the last, whatever stops the
 watching); A. Wald, "On cumulative sums of random variables", Ann. Math. Stat. 15, 1944 (why); M. E. O'Neill, "PCG",
 2014 (the generator).
-May import: shares.errors, .events, .histories, .interval, .model, .odds, .structure.
+May import: shares.errors, .confidence, .events, .histories, .model, .odds, .structure.
 Secret: nothing. Public: nothing either, as for the model. The lots are none that a key could come from.
 Does not: make the odds of rare things larger in order to see them, or choose a seed.
 """
@@ -22,15 +22,17 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from shares.errors import ExtraMissingError, ParameterError
+from shares.planning.confidence import interval
 from shares.planning.events import leaked, lost, missing
-from shares.planning.interval import interval
 from shares.planning.model import DAYS_OF_A_YEAR, Model
 from shares.planning.odds import days_of
 from shares.planning.structure import dual
 
 MAX_HISTORIES = 1_000_000_000
-EXTRA = "shares[plan]"
-"""The extra that brings numpy."""
+NUMPY = "numpy"
+INSTALL = "install numpy 1.26.4 or later beside shares, as README says under 'Two commands'"
+"""What to do where it is missing. The extra that brings it is not named: a stranger's package may have the name of this
+one on an index, and would be what ``pip install`` fetches by that name."""
 
 _MOST_AT_ONCE = 1 << 14
 _NUMBERS_AT_ONCE = 1 << 20
@@ -111,9 +113,7 @@ def simulate(
     except ModuleNotFoundError as error:
         if error.name != "numpy":
             raise
-        raise ExtraMissingError(
-            "to simulate takes numpy, which is not installed", hint=f"install the extra {EXTRA}"
-        ) from None
+        raise ExtraMissingError("to simulate takes numpy, which is not installed", hint=INSTALL) from None
 
     losses = Clocks.of(dual(model.rule), model.causes, lost)
     leaks = Clocks.of(model.rule, model.causes, leaked)

@@ -67,6 +67,12 @@ def test_the_help_tells_commands_and_exit_codes(option: str) -> None:
         assert str(error.exit_code) in said
 
 
+def test_the_help_says_where_the_format_page_lies() -> None:
+    (line,) = (line.strip() for line in run("--help").out.splitlines() if line.endswith("FORMAT.md"))
+    assert Path(line).is_absolute()
+    assert re.search(r"^## 12\. ", Path(line).read_text("utf-8"), flags=re.MULTILINE)
+
+
 def all_errors(kind: type[SharesError]) -> list[type[SharesError]]:
     return [kind, *(error for child in kind.__subclasses__() for error in all_errors(child))]
 

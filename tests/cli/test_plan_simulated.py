@@ -19,12 +19,12 @@ from shares.cli.plan_simulated import simulated_members
 from shares.documents.policy import Policy
 from shares.planning.advice import outlook
 from shares.planning.compare import Side
+from shares.planning.confidence import interval
 from shares.planning.examine import examine
-from shares.planning.interval import interval
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
 from shares.planning.reckoned import parts, words
-from shares.planning.simulate import EXTRA, MAX_HISTORIES, Estimate, Simulated, simulate
+from shares.planning.simulate import INSTALL, MAX_HISTORIES, Estimate, Simulated, simulate
 from shares.planning.telling import beside, why, years_words
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
@@ -175,10 +175,10 @@ def test_without_numpy_the_structure_is_told_and_what_to_install(
         text = said(path, *more)
         assert "custodians 30 " in text
         assert "is too large for exact odds, and to simulate them takes numpy, which is not installed: " in text
-        assert text.count(f"install the extra {EXTRA}.") == 1
+        assert text.count(f"{INSTALL}.") == 1
         members = run("plan", path, *more, "--json").json
         assert [members[of] for of in ("odds", "simulated", "causes", "changes")] == [None] * 4
-        assert members["missing_extra"] == EXTRA
+        assert members["missing_extra"] == "numpy"
         assert members["counts"]["custodians"]["total"] == 30
     # The exit code is still what the structure says.
     one_house = path.read_text().replace('"quay 1"', '"quay 0"').replace("key_type", "strict = true\nkey_type")
@@ -200,10 +200,10 @@ def test_histories_asked_for_without_numpy_are_refused(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, more: tuple[object, ...]
 ) -> None:
     without_numpy(monkeypatch)
-    line = assert_refused(["plan", entangled(tmp_path), *FEW, *more], 1, f"install the extra {EXTRA}")
+    line = assert_refused(["plan", entangled(tmp_path), *FEW, *more], 1, INSTALL)
     assert "takes numpy, which is not installed" in line
     if not more:
-        assert_refused(["plan", TIDE, *FEW], 1, f"install the extra {EXTRA}")
+        assert_refused(["plan", TIDE, *FEW], 1, INSTALL)
 
 
 def test_questions_about_two_policies_without_numpy(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -211,14 +211,14 @@ def test_questions_about_two_policies_without_numpy(tmp_path: Path, monkeypatch:
     path = entangled(tmp_path)
     text = said(path, "--compare", TIDE)
     assert "loss too large 5.3 %" in text
-    assert text.count(f"install the extra {EXTRA}.") == 1
+    assert text.count(f"{INSTALL}.") == 1
     assert "policy is better" not in text
     members = run("plan", path, "--compare", TIDE, "--json").json
-    assert [one["missing_extra"] for one in members["policies"]] == [EXTRA, None]
+    assert [one["missing_extra"] for one in members["policies"]] == ["numpy", None]
     wanted = ("--targets", "loss=1%,exposure=50%")
-    assert f"install the extra {EXTRA}." in said(path, *wanted)
+    assert f"{INSTALL}." in said(path, *wanted)
     members = run("plan", path, *wanted, "--json").json
-    assert (members["met_by_the_policy"], members["simulated"], members["missing_extra"]) == (None, None, EXTRA)
+    assert (members["met_by_the_policy"], members["simulated"], members["missing_extra"]) == (None, None, "numpy")
 
 
 # Two policies, and targets.
@@ -332,5 +332,11 @@ def test_histories_and_seeds_out_of_range(more: tuple[str, ...], words: str) -> 
 
 def test_help_says_what_takes_long_and_what_it_takes() -> None:
     text = said("--help")
-    for part in ("--histories N", "--seed S", "100000 where no odds are exact", EXTRA, "an hour in all for 200"):
+    for part in (
+        "--histories N",
+        "--seed S",
+        "100000 where no odds are exact",
+        "by numpy: without it (README,",
+        "an hour in all for 200",
+    ):
         assert part in text

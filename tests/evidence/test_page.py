@@ -6,15 +6,13 @@ WCAG 2.2, 1.4.10 (reflow at 320 CSS pixels); ISO 216 (A4) and ANSI Y14.1 (Letter
 
 from __future__ import annotations
 
-import importlib.resources
 import re
 import time
 from dataclasses import replace
 from datetime import timedelta
 
-import axe_playwright_python
 import pytest
-from browser import started
+from browser import Pages, started, sticking_out, violations
 from evidence.samples import AT, a_year, custodian, good, of_verdict, on, proof, unreadable
 from parties import card
 
@@ -23,7 +21,6 @@ from shares.evidence.calendar import LEGEND
 from shares.evidence.page import CAUTIONS, MEANS, audit_page
 from shares.history.heads import heads_in
 
-AXE = (importlib.resources.files(axe_playwright_python) / "axe.min.js").read_text("utf-8")
 SCRIPT = "<script>alert(1)</script>"
 IMAGE = '"><img src=x onerror=alert(2)>'
 MILLIMETRE = 96 / 25.4
@@ -88,35 +85,12 @@ def browser():
 
 @pytest.fixture
 def show(browser, tmp_path):
-    """Open the page of some audits from a file; note all that it asks for or complains about."""
-    pages = []
-
-    def open_page(audits, width=1200, media="screen"):
-        file = tmp_path / f"audit{len(pages)}.html"
-        file.write_bytes(audit_page(audits, program="shares 1.0"))
-        page = browser.new_page(viewport={"width": width, "height": 900})
-        pages.append(page)
-        page.asked, page.said = [], []
-        page.on("request", lambda request: page.asked.append(request.url))
-        page.on("console", lambda message: page.said.append(message.text))
-        page.on("pageerror", lambda error: page.said.append(str(error)))
-        page.on("dialog", lambda dialog: (page.said.append(dialog.message), dialog.dismiss()))
-        page.emulate_media(media=media)
-        page.goto(file.as_uri())
-        assert (page.asked, page.said) == ([file.as_uri()], [])
-        return page
-
-    yield open_page
-    for page in pages:
-        page.close()
-
-
-def violations(page):
-    """What axe finds wrong, rule by rule, and whether it looked at anything."""
-    page.evaluate(AXE)
-    found = page.evaluate("axe.run(document, {resultTypes: ['violations', 'passes']})")
-    assert len(found["passes"]) > 15
-    return {rule["id"]: [node["html"][:100] for node in rule["nodes"]] for rule in found["violations"]}
+    """Open the page of some audits from a file."""
+    pages = Pages(browser, tmp_path)
+    yield lambda audits, width=1200, media="screen": pages.show(
+        audit_page(audits, program="shares 1.0"), width=width, media=media
+    )
+    pages.close()
 
 
 SIZES = ((1200, "screen"), (320, "screen"), (int(NARROWEST), "print"))
@@ -130,16 +104,7 @@ def test_it_keeps_nobody_out_and_fits(show, name):
         page.emulate_media(media=media)
         assert violations(page) == {}, (width, media)
         # Nothing is lost at the side: of the page on paper, or of the screen, where wide tables move by themselves.
-        assert page.evaluate("document.documentElement.scrollWidth") <= width
-        out = page.evaluate(
-            """width => [...document.querySelectorAll('body *')].filter(e => {
-                const box = e.getBoundingClientRect();
-                return box.width > 1 && (box.right > width + 1 || box.left < -1);
-            }).filter(e => getComputedStyle(e.closest('.scroll') || document.body).overflowX !== 'auto')
-            .map(e => e.outerHTML.slice(0, 80))""",
-            width,
-        )
-        assert out == [], (width, media)
+        assert sticking_out(page, width) == [], (width, media)
     assert page.said == []
 
 

@@ -6,15 +6,13 @@ ISO 216 (A4) and ANSI Y14.1 (Letter).
 
 from __future__ import annotations
 
-import importlib.resources
 import re
 from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
-import axe_playwright_python
 import pytest
-from browser import started
+from browser import Pages, started, sticking_out, violations
 from evidence.harbour_set import NAMES, at, deal, enter, policy
 from parties import unlocked
 from strategies import CREATED
@@ -29,7 +27,6 @@ from shares.evidence.paperwork import affidavit_page, report_lines, report_page,
 from shares.evidence.script import make_script
 from shares.history.files import FolderFiles
 
-AXE = (importlib.resources.files(axe_playwright_python) / "axe.min.js").read_text("utf-8")
 SOFTWARE = Software(version="0.1.0", digest=bytes(range(32)))
 MILLIMETRE = 96 / 25.4  # CSS pixels
 WIDTHS = {"A4": 186 * MILLIMETRE, "Letter": (8.5 * 25.4 - 24) * MILLIMETRE}
@@ -43,28 +40,10 @@ def browser() -> Iterator[Any]:
 
 @pytest.fixture
 def show(browser: Any, tmp_path: Path) -> Iterator[Callable[[bytes], Any]]:
-    """Open a page from a file, as it is printed; note all that it asks for or complains about."""
-    opened = []
-
-    def open_page(data: bytes) -> Any:
-        file = tmp_path / f"page{len(opened)}.html"
-        file.write_bytes(data)
-        page = browser.new_page(viewport={"width": 900, "height": 1200})
-        opened.append(page)
-        asked: list[str] = []
-        said: list[str] = []
-        page.on("request", lambda request: asked.append(request.url))
-        page.on("console", lambda message: said.append(message.text))
-        page.on("pageerror", lambda error: said.append(str(error)))
-        page.on("dialog", lambda dialog: (said.append(dialog.message), dialog.dismiss()))
-        page.emulate_media(media="print")
-        page.goto(file.as_uri())
-        assert (asked, said) == ([file.as_uri()], [])
-        return page
-
-    yield open_page
-    for page in opened:
-        page.close()
+    """Open a page from a file, as it is printed."""
+    pages = Pages(browser, tmp_path)
+    yield lambda data: pages.show(data, width=900, media="print")
+    pages.close()
 
 
 def scripts() -> dict[str, CeremonyScript]:
@@ -79,9 +58,10 @@ def scripts() -> dict[str, CeremonyScript]:
     return {"plain": plain, "signed": signed, "worst": worst}
 
 
-def no_overflow(page: Any, width: float) -> bool:
+def beyond(page: Any, width: float) -> list[str]:
+    """What sticks out where the page is as wide as some paper leaves room."""
     page.set_viewport_size({"width": round(width), "height": 1000})
-    return bool(page.evaluate("document.documentElement.scrollWidth <= document.documentElement.clientWidth"))
+    return sticking_out(page, round(width))
 
 
 def levels(page: Any) -> list[int]:
@@ -93,7 +73,7 @@ def levels(page: Any) -> list[int]:
 def test_a_script_has_every_step_on_any_paper(show: Callable[[bytes], Any], name: str) -> None:
     script = scripts()[name]
     page = show(script_page(script))
-    assert [no_overflow(page, width) for width in WIDTHS.values()] == [True, True]
+    assert [beyond(page, width) for width in WIDTHS.values()] == [[], []]
     rows = page.evaluate(
         """[...document.querySelectorAll('table.steps tbody tr:not(.part)')].map(row =>
             [row.cells[0].innerText, row.cells[2].innerText, row.cells[3].innerText, row.cells[4].innerText])"""
@@ -142,7 +122,7 @@ def test_a_report_tells_exceptions_first_and_all_else_after(
 ) -> None:
     text, data = reported(tmp_path / "set", label)
     page = show(data)
-    assert [no_overflow(page, width) for width in WIDTHS.values()] == [True, True]
+    assert [beyond(page, width) for width in WIDTHS.values()] == [[], []]
     told = page.locator("main").inner_text()
     headings = page.evaluate("[...document.querySelectorAll('h2')].map(h => h.innerText)")
     assert headings == ["Exceptions", "What it was about", "Roles", "Steps", "Shares, by serial", "Signatures"]
@@ -172,14 +152,6 @@ def test_an_affidavit_is_one_page_with_room_for_both_to_sign(
     assert "".join(copy.name.split()) in "".join(told.split())
     assert page.locator("table.form th", has_text="Signature").count() == 2
     assert "I am not the custodian of this share" in told
-
-
-def violations(page: Any) -> dict[str, list[str]]:
-    """What axe finds wrong, rule by rule; it must have looked at something."""
-    page.evaluate(AXE)
-    found = page.evaluate("axe.run(document, {resultTypes: ['violations', 'passes']})")
-    assert len(found["passes"]) > 10
-    return {rule["id"]: [node["html"][:100] for node in rule["nodes"]] for rule in found["violations"]}
 
 
 def test_the_pages_keep_nobody_out(show: Callable[[bytes], Any], tmp_path: Path) -> None:

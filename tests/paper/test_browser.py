@@ -12,7 +12,7 @@ import re
 
 import pytest
 import zxingcpp
-from browser import started
+from browser import Pages, started
 from paper.conftest import CARD, identity
 from PIL import Image
 from strategies import revealed
@@ -45,27 +45,10 @@ def browser():
 
 @pytest.fixture
 def show(browser, tmp_path):
-    """Open a share's sheet from a file, as it is printed; note all that the page asks for or complains about."""
-    pages = []
-
-    def open_sheet(document, **options):
-        file = tmp_path / f"sheet{len(pages)}.html"
-        file.write_bytes(make_sheet(document, **options).page)
-        page = browser.new_page(viewport={"width": 900, "height": 1200}, device_scale_factor=3)
-        pages.append(page)
-        page.asked, page.said = [], []
-        page.on("request", lambda request: page.asked.append(request.url))
-        page.on("console", lambda message: page.said.append(message.text))
-        page.on("pageerror", lambda error: page.said.append(str(error)))
-        page.on("dialog", lambda dialog: (page.said.append(dialog.message), dialog.dismiss()))
-        page.emulate_media(media="print")
-        page.goto(file.as_uri())
-        assert page.asked == [file.as_uri()]
-        return page
-
-    yield open_sheet
-    for page in pages:
-        page.close()
+    """Open a share's sheet from a file, as it is printed, in dots small enough for its code to be read."""
+    pages = Pages(browser, tmp_path, dots=3)
+    yield lambda document, **options: pages.show(make_sheet(document, **options).page, width=900, media="print")
+    pages.close()
 
 
 def dealt(names=NAMES, label="Tide archive backup root", secret=KEY):

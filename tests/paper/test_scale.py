@@ -16,6 +16,14 @@ from shares.paper.scale import LogScale
 CHANCES = st.floats(1e-12, 1.0)
 
 
+@given(st.lists(CHANCES, min_size=1, max_size=9), st.floats(0, 0.99e-12))
+def test_what_is_below_the_least_lies_at_it_and_never_higher(numbers: list[float], small: float) -> None:
+    scale = LogScale.around([*numbers, small], least=1e-12, start=500, end=20)
+    assert scale.low == pytest.approx(1e-12, rel=1e-9)
+    assert scale.at(small) == 500
+    assert scale.at(1e-9) < 500
+
+
 @given(st.lists(CHANCES, min_size=1, max_size=9))
 def test_what_is_on_an_axis_lies_between_its_ends_and_in_its_order(numbers: list[float]) -> None:
     scale = LogScale.around(numbers, least=1e-12, start=500, end=20)

@@ -19,7 +19,7 @@ from shares.errors import ParameterError
 from shares.planning import advice as module
 from shares.planning.advice import Change, advice, cause_words, largest, outlook
 from shares.planning.changes import moved, with_another
-from shares.planning.interval import interval
+from shares.planning.confidence import interval
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Contribution, Odds, contributions, odds, without_each
 from shares.planning.reckoned import HISTORIES

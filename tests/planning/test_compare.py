@@ -9,8 +9,8 @@ import pytest
 from shares.documents.policy import Policy
 from shares.planning import compare as module
 from shares.planning.compare import side, verdict
+from shares.planning.confidence import interval
 from shares.planning.examine import examine
-from shares.planning.interval import interval
 from shares.planning.model import model_of
 from shares.planning.odds import Odds, odds
 from shares.planning.reckoned import Reckoned

@@ -6,6 +6,7 @@ Source: the pictures' own edges; logarithms by the standard library.
 from __future__ import annotations
 
 import re
+from itertools import pairwise
 from pathlib import Path
 
 import pytest
@@ -16,6 +17,7 @@ from shares.planning.intervals import AtInterval, over_intervals
 from shares.planning.model import Model, model_of
 from shares.planning.odds import Odds, odds
 from shares.planning.plane import Point, plane
+from shares.planning.simulate import Estimate, Simulated
 
 EXAMPLES = sorted((Path(__file__).parents[2] / "examples" / "policies").glob("*.toml"))
 BOTH = [("loss", lambda one: one.loss), ("no quorum on a day", lambda one: one.absence)]
@@ -54,6 +56,7 @@ def test_rules_lie_in_the_order_of_their_odds(path: Path) -> None:
         assert [place for _, place in in_order] == sorted((place for _, place in in_order), key=lambda p: grows * p)
     assert all(PLANE.left <= one.x <= PLANE.right and PLANE.top <= one.y <= PLANE.bottom for one in figure.marks)
     assert [one.kind == "best" for one in figure.marks] == [one.best for one in points]
+    assert [one.kind == "extreme" for one in figure.marks] == [one.need in (1, one.total) for one in points]
     assert len(places(figure.frontier)) == sum(one.best for one in points)
     assert [len(places(line)) for line in figure.lines] == list(range(2, 13))
 
@@ -77,9 +80,36 @@ def test_a_label_names_the_point_beside_it() -> None:
     figure, points, _ = drawn(EXAMPLES[0])
     where = {f"{one.need} of {one.total}": mark for one, mark in zip(points, figure.marks, strict=True)}
     for label in figure.labels[1:]:
-        assert abs(label.y - where[label.text].y) <= 17
-        assert min(abs(label.x - where[label.text].x), 7) == abs(label.x - where[label.text].x)
-        assert where[label.text].words.startswith(f"{label.text}: loss ")
+        left, top, right, bottom = box(label)
+        mark = where[label.text]
+        assert left - 8 <= mark.x <= right + 8
+        assert top - 8 <= mark.y <= bottom + 8
+        assert mark.words.startswith(f"{label.text}: loss ")
+
+
+@pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
+def test_labels_do_not_lie_on_the_frontier(path: Path) -> None:
+    figure, _, _ = drawn(path)
+    along = places(figure.frontier)
+    for label in figure.labels[1:]:
+        left, top, right, bottom = box(label)
+        for (x, y), (other_x, other_y) in pairwise(along):
+            for i in range(101):
+                at_x, at_y = x + i / 100 * (other_x - x), y + i / 100 * (other_y - y)
+                assert not (left + 4 < at_x < right - 4 and top + 4 < at_y < bottom - 4), label
+
+
+def test_a_policy_that_was_simulated_has_a_cross_of_its_intervals() -> None:
+    _, points, _ = drawn(EXAMPLES[0])
+    loss, exposure = Estimate(0.01, 0.005, 0.02, 10), Estimate(0.0, 0.0, 0.003, 0)
+    figure = plane_figure(points, Simulated(loss, exposure, loss, None, 1000, 1, "2.4.0"))
+    assert figure.policy is not None
+    left, right, low, high = places(figure.spread)
+    assert left[0] < figure.policy.x < right[0]
+    assert left[1] == right[1] == figure.policy.y == high[1]  # Nothing seen: it is drawn at the most it can be.
+    assert low[1] == PLANE.bottom
+    assert figure.policy.words == "this policy: loss 1 % (0.5 % to 2 %), exposure 0 of 1,000: below 0.3 %"
+    assert plane_figure(points, points[0].odds).spread == ""
 
 
 def test_the_policy_is_drawn_where_its_odds_are_or_not_at_all() -> None:
@@ -92,11 +122,13 @@ def test_the_policy_is_drawn_where_its_odds_are_or_not_at_all() -> None:
 
 
 def test_odds_of_nothing_lie_at_the_edge() -> None:
-    points = [Point(1, 1, 0, Odds(0.0, 0.0, 0.0, 1.0), True), Point(1, 2, 0, Odds(0.1, 1e-300, 0.0, 1.0), False)]
+    points = [Point(2, 3, 0, Odds(0.0, 0.0, 0.0, 1.0), True), Point(2, 4, 0, Odds(0.1, 1e-300, 0.0, 1.0), False)]
     figure = plane_figure(points, Odds(1.0, 1.0, 0.0, 1.0))
     none, little = figure.marks
-    assert (none.x, none.y, none.words) == (PLANE.left, PLANE.bottom, "1 of 1: loss none, exposure none")
-    assert (little.x, little.y) == (PLANE.left, PLANE.bottom)  # 10 % is the least of the losses that are any.
+    assert (none.x, none.y, none.words) == (PLANE.left, PLANE.bottom, "2 of 3: loss none, exposure none")
+    assert little.x > PLANE.right - 60  # 10 % is 10 %, also beside nothing.
+    assert little.y == PLANE.bottom
+    assert figure.columns[0].text == figure.rows[0].text == "1 in a trillion"
     assert figure.policy is not None
     assert (figure.policy.x, figure.policy.y) == (PLANE.right, PLANE.top)
 

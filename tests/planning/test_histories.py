@@ -109,15 +109,11 @@ def test_rates_at_the_ends_of_the_numbers() -> None:
             assert away(clocks, lot(), every, 14, 3650, 100) == sure
 
 
-@pytest.mark.parametrize(("every", "delay"), [(90, 14), (30, 100), (1, 0)])
-def test_days_of_the_long_run_on_which_one_share_is_gone(every: int, delay: int) -> None:
-    rate = 0.004
+@pytest.mark.parametrize(("every", "delay"), [(90, 14), (30, 100), (1, 0), (5000, 14), (None, 0)])
+def test_what_is_lost_for_good_is_gone_on_all_days_after(every: int | None, delay: int) -> None:
+    """One share is the key: however often anybody asks, it is gone for the time from its loss on, by hand."""
+    rate, years_days, days = 0.0004, 3650, 200_000
     clocks = Clocks.of(Rule(1, NAMES[:1]), [Cause("share", NAMES[0], frozenset(NAMES[:1]), loss=rate * 365)], lost)
-    # By hand: the mean time gone in a round, over the mean length of a round.
-    quiet = math.exp(-rate * every)
-    gone = every + delay - (1 - math.exp(-rate * (every + delay))) / rate
-    gone -= quiet * (delay - (1 - math.exp(-rate * delay)) / rate)
-    expected = gone / (every + (1 - quiet) * delay)
-    days = 200_000
-    found = away(clocks, lot(), every, delay, 3650, days) / days
+    expected = 1 + math.expm1(-rate * years_days) / (rate * years_days)
+    found = away(clocks, lot(), every, delay, years_days, days) / days
     assert abs(found - expected) < 5 * math.sqrt(expected * (1 - expected) / days)

@@ -137,11 +137,42 @@ def by_chain(model: Model, days: int) -> Odds:
             mean / 365,
         )
     story = Story(losses, left, model.attest_every, model.repair_after)
+    away = days_away(story, losses, worth, days) / days
+    return Odds(1 - story.lasts(days), 1 - sealed.lasts(days), away, story.mean() / 365)
+
+
+def days_away(story: Story, losses: Array, worth: Array, days: int) -> float:
+    """How many days are spent in states that count, each by its worth: told from the shortest time on.
+
+    Args:
+        story: of rounds.
+        losses: the generator over all states, of which those in which the story has ended count for 1.
+        worth: how much each state counts.
+        days: that are looked at.
+    """
+    start = np.eye(len(losses))[0]
     found = after(losses, story.every, start)
     found[0] = 0
-    away = sum_over(losses, story.every, start, worth) + sum_over(losses, story.delay, found, worth)
-    whole = story.every + (1 - story.quiet) * story.delay
-    return Odds(1 - story.lasts(days), 1 - sealed.lasts(days), away / whole, story.mean() / 365)
+    of_a_day = np.array([sum_over(losses, 1, one, worth) for one in np.eye(len(losses))])
+    day, sums = linalg.expm(losses), []
+    for state in (start, found):
+        so_far = [0.0]
+        for _ in range(days):
+            so_far.append(so_far[-1] + float(state @ of_a_day))
+            state = state @ day
+        sums.append(so_far)
+    told: list[float] = []
+    for left in range(days + 1):
+        after_ = left - story.every
+        if after_ <= 0:
+            told.append(sums[0][left])
+            continue
+        spent = sums[0][story.every] + story.quiet * told[after_] + sums[1][min(after_, story.delay)]
+        if after_ > story.delay:
+            rest = after_ - story.delay
+            spent += story.mended * told[rest] + (found.sum() - story.mended) * rest
+        told.append(float(spent))
+    return told[days]
 
 
 @st.composite

@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from shares.planning.interval import interval as of_counts
+from shares.planning.confidence import interval as of_counts
 from shares.planning.numbers import chance, every, horizon, interval, one_in, years
 
 

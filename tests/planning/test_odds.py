@@ -85,13 +85,13 @@ def test_absence_is_of_a_day_taken_at_random() -> None:
     # Nobody asks: the share of days is the mean over the ten years.
     unasked = yearly(0.05) * 10
     assert math.isclose(of(alike(1, 1, loss=0.05)).absence, 1 + math.expm1(-unasked) / unasked, rel_tol=1e-11)
-    # One custodian: lost at rate a, found after 100 days, made good after 20 more.
-    one = replace(alike(1, 2, loss=0.0), attest_every=100, repair_after=20)
-    rate = 0.001
-    one = replace(one, rule=Rule(1, ("pier 0",)), causes=(Cause("share", "pier 0", frozenset({"pier 0"}), rate * 365),))
-    quiet = math.exp(-rate * 100)
-    away = 120 - (1 - math.exp(-rate * 120)) / rate - quiet * (20 - (1 - math.exp(-rate * 20)) / rate)
-    assert math.isclose(of(one).absence, away / (100 + 20 * (1 - quiet)), rel_tol=1e-11)
+    # A lone custodian's share is lost at a rate, and the key with it, however often anybody asks.
+    lone = replace(alike(1, 1, loss=0.05), attest_every=100, repair_after=20)
+    assert math.isclose(of(lone).absence, 1 + math.expm1(-unasked) / unasked, rel_tol=1e-11)
+    # Who asks for the first time when all is over has asked nobody.
+    late = replace(alike(3, 5, loss=0.3, absent=0.1), attest_every=3650)
+    never = replace(late, attest_every=None)
+    assert math.isclose(of(late).absence, of(never).absence, rel_tol=1e-12)
 
 
 def test_one_person_who_is_several_custodians_is_away_once() -> None:
@@ -141,7 +141,8 @@ def test_what_each_cause_makes() -> None:
         == site.loss - (whole.loss - of(replace(model, causes=model.causes[:6])).loss)
         == 0
     )
-    assert people.absence > shares.absence > site.absence > 0
+    assert people.absence > 0
+    assert site.absence > shares.absence > 0  # After a fire no quorum ever comes together again.
 
 
 @pytest.mark.parametrize("path", sorted(EXAMPLES.glob("*.toml")), ids=lambda path: path.stem)
@@ -319,3 +320,14 @@ def test_nothing_happens_where_no_rate_is() -> None:
     assert of(alike(2, 3)) == Odds(0, 0, 0, math.inf)
     assert of(attesting_every(alike(2, 3), 30)) == Odds(0, 0, 0, math.inf)
     assert of(alike(2, 3), 1000) == Odds(0, 0, 0, math.inf)
+
+
+def test_what_is_too_rare_for_a_number_is_not_never() -> None:
+    rare = replace(alike(1, 255, loss=0.1, leak=1e-9), attest_every=7, refresh_every=1)
+    found = of(rare)
+    assert 0 < found.loss < 1e-300
+    assert 1e300 < found.years_to_loss < math.inf
+    whole = of(replace(rare, rule=Rule(255, rare.custodians)))
+    assert 0 < whole.exposure < 1e-300
+    never = of(replace(rare, causes=()))
+    assert (never.loss, never.exposure, never.absence, never.years_to_loss) == (0, 0, 0, math.inf)

@@ -7,6 +7,7 @@ only means) and 1.4.10 (reflow at 320 CSS pixels); ISO 216 (A4) and ANSI Y14.1 (
 from __future__ import annotations
 
 import re
+import subprocess
 import sys
 from collections.abc import Callable, Iterator
 from dataclasses import replace
@@ -24,6 +25,7 @@ from shares.planning.assumed import assumptions
 from shares.planning.examine import examine
 from shares.planning.model import model_of
 from shares.planning.page import CAUTIONS, Drawn, drawn, plan_page
+from shares.planning.simulate import INSTALL
 
 EXAMPLES = {
     path.stem: path.read_bytes() for path in (Path(__file__).parents[2] / "examples" / "policies").glob("*.toml")
@@ -160,20 +162,45 @@ def test_it_tells_what_the_plan_tells(pages: Pages) -> None:
     assert rows[1] == "attest every year\t3.3 %\t0.96 %"
     assert page.get_by_role("heading", level=2).all_inner_texts() == [
         "In short", "What to change first", "Loss against exposure: all rules up to 12 custodians",
-        "How often to attest, and to refresh", "Where the danger comes from", "The structure", "What is assumed",
-        "What these odds do not tell",
+        "How often to attest, and to refresh", "Where the danger comes from", "The structure",
+        "What the odds rest on", "What these odds do not tell", "Decided",
     ]  # fmt: skip
+
+
+def test_what_a_board_must_know_comes_first(pages: Pages) -> None:
+    plan = examine(Policy.parse(EXAMPLES["first-draft"]))
+    short = pages.show(PAGES["first-draft"]()).locator("section", has_text="In short")
+    assert short.locator(".verdict").inner_text() == plan.verdict
+    assert short.locator("li").all_inner_texts() == [finding.what for finding in plan.serious]
+    strict = EXAMPLES["first-draft"].replace(b"pad = 64", b"pad = 64\nstrict = true")
+    text = pages.show(page_of(strict)).locator(".verdict").inner_text()
+    assert text.startswith("The policy is strict: `shares split` refuses it")
+
+
+def test_all_rates_that_the_odds_rest_on_are_there(pages: Pages) -> None:
+    page = pages.show(
+        page_of(EXAMPLES["break-glass"].replace(b'name = "dry-dock"', b'name = "dry-dock"\nloss = "7 %/y"'))
+    )
+    rows = page.locator("table.rates tbody tr").all_inner_texts()
+    assert rows[0] == "Single shares: north-pier, south-pier, light-house, registrar\t4 %\tnone\tnone"
+    assert rows[1] == "Single shares: dry-dock\t7 %\tnone\tnone"
+    assert [row.split(":")[0] for row in rows[2:]] == [
+        "People, with all shares that they hold", "Sites, with all shares there",
+        "Reporting lines, with all shares in them",
+    ]  # fmt: skip
+    assert "made good after 14 days; refreshed every 2 years" in page.locator("body").inner_text()
 
 
 def test_what_is_drawn_is_also_told(pages: Pages) -> None:
     page = pages.show(PAGES["break-glass"]())
     picture = page.get_by_role("img", name=re.compile("Loss against exposure of all rules"))
-    assert "this policy: loss 0.52 %, exposure 0.74 %. Less of both" in picture.locator("desc").text_content()
+    assert "this policy: loss 0.52 %, exposure 0.74 %. Both are lower than" in picture.locator("desc").text_content()
     page.evaluate("for (const e of document.querySelectorAll('details')) e.open = true")
     rows = page.locator("details", has_text="All 78 rules").locator("tbody tr").all_inner_texts()
-    assert len(rows) == picture.locator("circle").count() == 78
+    assert len(rows) == picture.locator("circle, path.extreme").count() == 78
+    assert picture.locator("path.extreme").count() == sum(row.endswith("no choice") for row in rows) == 23
     assert next(row for row in rows if row.startswith("3 of 5")) == "3 of 5\t0.52 %\t0.74 %\tnone\t"
-    assert sum(row.endswith("best") for row in rows) == picture.locator("circle.best").count() > 5
+    assert sum(row.endswith("not bettered") for row in rows) == picture.locator("circle.best").count() > 5
     along = page.locator("details", has_text="The same in numbers").locator("tbody tr").all_inner_texts()
     assert along[-1].startswith("never\t35 %")
     bars = page.locator("table.causes tbody tr").first
@@ -194,15 +221,24 @@ def test_it_is_legible_without_colour(pages: Pages) -> None:
     coloured = {(tag, kind) for tag, kind, spread in fills if spread > 20}
     assert coloured == {("path", "policy"), ("path", "now")}
     diamonds = {
-        (tag, kind) for tag, kind, _ in fills if tag == "path" and kind not in ("total", "frontier", "line0", "line1")
+        (tag, kind)
+        for tag, kind, _ in fills
+        if tag == "path" and kind not in ("total", "frontier", "line0", "line1", "extreme")
     }
     assert diamonds == coloured
 
 
-def test_it_prints_in_black_on_white_on_both_papers(pages: Pages) -> None:
+def test_it_prints_in_black_on_white_on_both_papers(pages: Pages, tmp_path: Path) -> None:
     page = pages.show(PAGES["tide-gate"](), media="print")
     for paper in ("A4", "Letter"):
-        assert 2 <= len(re.findall(rb"/Type\s*/Page\b", page.pdf(format=paper))) <= 5
+        file = tmp_path / f"{paper}.pdf"
+        page.pdf(path=file, format=paper, prefer_css_page_size=True)
+        sheets = subprocess.run(["pdftotext", "-layout", file, "-"], capture_output=True, text=True, check=True).stdout
+        printed = sheets.strip("\f").split("\f")
+        assert 3 <= len(printed) <= 6
+        for number, sheet in enumerate(printed, 1):
+            assert "Confidential: it tells whom to coerce, and where." in sheet
+            assert f"{number} of {len(printed)}" in sheet
     colours = page.evaluate(
         """[...document.querySelectorAll('body *')].filter(e => [...e.childNodes].some(
             n => n.nodeType === 3 && n.textContent.trim())).map(e => getComputedStyle(e).color)"""
@@ -216,7 +252,7 @@ def test_what_could_not_be_worked_out_is_left_out_and_said(pages: Pages) -> None
     assert "Over 10 years Chance, simulated (95 % interval)" in text
     assert f"Simulated from 100,000 histories, drawn by numpy {numpy.__version__} with seed 1, the same ones at" in text
     assert page.locator("svg.plane path.policy").count() == 1
-    assert "The diamond is this policy, as simulated. Intervals are" in text
+    assert "The diamond is this policy, as simulated, and its cross the 95 % intervals. Intervals are" in text
     headings = page.get_by_role("heading", level=2).all_inner_texts()
     assert not {"What to change first", "Where the danger comes from"} & set(headings)
     assert "In short" in headings
@@ -255,14 +291,25 @@ def test_what_no_history_showed_is_drawn_at_the_most_that_it_can_be(pages: Pages
         program="shares 1.0",
     )
     said = pages.show(data).locator("svg.plane path.policy title").text_content()
-    assert said.startswith(f"this policy: loss {numbers.chance(view.simulated.loss.high)}, exposure ")
+    assert said.startswith("this policy: loss 0 of 1,000: below 0.37 %, exposure ")
+    picture = pages.show(data).locator("svg.plane")
+    assert picture.locator("path.spread").count() == 1
+    assert "Whether any such rule has less of both than this policy, so many histories do not tell." in (
+        picture.locator("desc").text_content()
+    )
+
+
+def test_what_is_drawn_at_the_edge_is_said_to_be_less(pages: Pages) -> None:
+    said = "What is less likely than 1 in a trillion is drawn as that."
+    assert said in pages.show(PAGES["harmless"]()).locator("figcaption").first.inner_text()
+    assert said not in pages.show(PAGES["tide-gate"]()).locator("figcaption").first.inner_text()
 
 
 def test_without_numpy_it_says_what_to_install(pages: Pages, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setitem(sys.modules, "numpy", None)
     monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
     page = pages.show(page_of(entangled()))
-    assert "install the extra shares[plan]" in page.locator("body").inner_text()
+    assert INSTALL in page.locator("body").inner_text()
     assert "Chance" not in page.locator("body").inner_text()
     assert (
         "The odds of the policy itself are not known, so it is not on the plane." in page.locator("body").inner_text()

@@ -56,8 +56,10 @@ def test_the_best_are_those_that_no_other_betters(pairs: list[tuple[float, float
 @pytest.mark.parametrize("name", ["tide-gate", "break-glass"])
 def test_along_the_frontier_less_of_one_is_more_of_the_other(name: str) -> None:
     policy = Policy.parse((EXAMPLES / f"{name}.toml").read_bytes())
-    best = sorted((one.odds for one in plane(model_of(policy), 10) if one.best), key=lambda one: one.loss)
+    points = plane(model_of(policy), 10)
+    best = sorted((one.odds for one in points if one.best), key=lambda one: one.loss)
     assert len(best) > 5
+    assert not any(one.best for one in points if one.need in (1, one.total))
     for one, other in pairwise(best):
         assert one.loss < other.loss
         assert one.exposure > other.exposure

@@ -11,11 +11,11 @@ import sys
 import pytest
 
 from shares.errors import ExtraMissingError, ParameterError
-from shares.planning.interval import interval
+from shares.planning.confidence import interval
 from shares.planning.model import Cause, Model
 from shares.planning.odds import Odds
 from shares.planning.reckoned import HISTORIES, apart, briefly, ends, fall, instead, value, words
-from shares.planning.simulate import Estimate, Simulated, simulate
+from shares.planning.simulate import INSTALL, Estimate, Simulated, simulate
 from shares.sharing.rule import Rule
 
 PIERS = tuple(f"pier {i}" for i in range(5))
@@ -101,5 +101,5 @@ def test_numpy_is_demanded_only_where_histories_are(monkeypatch: pytest.MonkeyPa
     monkeypatch.setitem(sys.modules, "numpy", None)
     monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
     assert instead(MODEL, 10, histories=None, seed=1, drawn=None) is None
-    with pytest.raises(ExtraMissingError, match=r"shares\[plan\]"):
+    with pytest.raises(ExtraMissingError, match=INSTALL):
         instead(MODEL, 10, histories=HISTORIES, seed=1, drawn=None)

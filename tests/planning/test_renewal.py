@@ -209,60 +209,65 @@ def test_the_process_in_which_one_repair_makes_all_good(need: int, total: int) -
 # Histories drawn by lot, in continuous time.
 
 
-def simulated(
-    need: int, rates: list[float], site: float, every: int, delay: int, days: int, histories: int
-) -> tuple[float, float]:
-    """The part of histories that lose the key, and the part of days on which the first share is gone, over those that
-    do not. All but the first custodian are at one site."""
+RATES, SITE = [0.002, 0.001, 0.0015, 0.001], 0.0005
+
+
+def simulated(every: int, delay: int, days: int, histories: int) -> tuple[float, float]:
+    """The part of histories in which fewer than two shares of four are left at some time, and the part of days on which
+    the first share is gone, or all are for good. All but the first are at one site."""
     lot = np.random.default_rng(20261201)
-    total = len(rates)
     start, alive = np.zeros(histories), np.ones(histories, dtype=bool)
     missing = np.zeros(histories)
-    while (alive & (start < days)).any():
-        lost_at = lot.exponential(1 / np.array(rates), (histories, total))
-        lost_at[:, 1:] = np.minimum(lost_at[:, 1:], lot.exponential(1 / site, (histories, 1)))
-        ended = np.sort(lost_at, axis=1)[:, total - need]
+    while (running := alive & (start < days)).any():
+        lost_at = lot.exponential(1 / np.array(RATES), (histories, 4))
+        lost_at[:, 1:] = np.minimum(lost_at[:, 1:], lot.exponential(1 / SITE, (histories, 1)))
+        ended = np.sort(lost_at, axis=1)[:, 2]
         length = np.where(lost_at.min(axis=1) > every, every, every + delay)
-        running = alive & (start < days)
-        alive &= ~(running & (ended <= np.minimum(length, days - start)))
-        missing += np.where(running, np.clip(np.minimum(length, days - start) - lost_at[:, 0], 0, None), 0)
+        dying = running & (ended <= np.minimum(length, days - start))
+        until = np.where(dying, days - start, np.minimum(length, days - start))
+        gone_at = np.where(dying, np.minimum(ended, lost_at[:, 0]), lost_at[:, 0])
+        missing += np.where(running, np.clip(until - gone_at, 0, None), 0)
+        alive &= ~dying
         start = np.where(running, start + length, start)
-    return 1 - alive.mean(), float(missing[alive].sum() / (alive.sum() * days))
+    return 1 - alive.mean(), float(missing.mean() / days)
 
 
-def test_histories_drawn_by_lot() -> None:
-    from shares.planning.chance import Chance
-    from shares.planning.structure import dual
-    from shares.sharing.rule import Rule
-
-    names, rates, site = ("a", "b", "c", "d"), [0.002, 0.001, 0.0015, 0.001], 0.0005
-    chance = Chance.of(dual(Rule(2, names)), [frozenset(names[1:])])
-    assert chance is not None
-
-    def gone(t: float) -> float:
-        alone = {name: -math.expm1(-rate * t) for name, rate in zip(names, rates, strict=True)}
-        return chance.at(alone, [-math.expm1(-site * t)])
-
-    for every, delay in ((90, 14), (30, 100)):
-        histories, days = 40_000, 2000
-        keep = Upkeep(every, delay, sum(rates) + site, gone)
-        lost, _ = simulated(2, rates, site, every, delay, days, histories)
-        expected = keep.within(days)
-        # Five standard errors: wrong once in a million and a half seeds, and this seed is fixed.
-        assert abs(lost - expected) < 5 * math.sqrt(expected * (1 - expected) / histories)
+def lost(rate: float, days: float) -> float:
+    return -math.expm1(-rate * days)
 
 
-def test_days_on_which_a_share_is_gone() -> None:
-    """A key that is hardly ever lost, so that the long run is that of the histories."""
-    rates = [0.002, 0.001, 0.0015, 0.001, 0.001]
-    for every, delay in ((90, 14), (30, 100)):
-        keep = Upkeep(every, delay, sum(rates) + 1e-6, lambda _: 0.0)
-        _, missing = simulated(1, rates, 1e-6, every, delay, 40_000, 1_000)
-        found = keep.portion(lambda t: -math.expm1(-rates[0] * t))
-        assert math.isclose(found, missing, rel_tol=0.02)
+def gone(days: float) -> float:
+    """The chance that fewer than two of the four are left, by the site and by how many of the last three are lost."""
+    last = [lost(rate, days) for rate in RATES[1:]]
+    first, three = lost(RATES[0], days), math.prod(last)
+    two = sum(math.prod(p if i != left else 1 - p for i, p in enumerate(last)) for left in range(3))
+    return lost(SITE, days) + (1 - lost(SITE, days)) * (three + first * two)
 
 
-def test_what_is_always_so_is_so_in_the_long_run() -> None:
+def gone_or_first(days: float) -> float:
+    """The chance that the first share is lost, or fewer than two are left."""
+    others = lost(SITE, days) + (1 - lost(SITE, days)) * math.prod(lost(rate, days) for rate in RATES[1:])
+    return 1 - (1 - lost(RATES[0], days)) * (1 - others)
+
+
+@pytest.mark.parametrize(("every", "delay", "days"), [(90, 14, 2000), (30, 100, 2000), (400, 30, 300), (200, 90, 2555)])
+def test_histories_drawn_by_lot(every: int, delay: int, days: int) -> None:
+    histories = 40_000
+    keep = Upkeep(every, delay, sum(RATES) + SITE, gone)
+    ended, missing = simulated(every, delay, days, histories)
+    expected = keep.within(days)
+    # Five standard errors: wrong once in a million and a half seeds, and this seed is fixed.
+    assert abs(ended - expected) < 5 * math.sqrt(expected * (1 - expected) / histories)
+    away = keep.portion(gone_or_first, days)
+    assert abs(missing - away) < 5 * math.sqrt(away * (1 - away) / histories)
+
+
+def test_what_is_always_so_is_so_on_all_days_after_the_end_too() -> None:
     keep = upkeep(2, 3, 1e-3, 90, 14)
-    assert math.isclose(keep.portion(lambda _: 0.25), 0.25, rel_tol=1e-12)
+    alive = Upkeep(90, 14, 3e-3, lambda _: 0.0)
+    assert math.isclose(alive.portion(lambda _: 0.25, 2000), 0.25, rel_tol=1e-12)
+    assert keep.portion(lambda _: 0.25, 2000) > 0.25
+    assert math.isclose(keep.portion(lambda _: 1.0, 2000), 1.0, rel_tol=1e-12)
     assert math.isclose(portion_unattended(lambda t: t / 100, 100), 0.5, rel_tol=1e-12)
+    # Before the first round is over it is as if nobody asked.
+    assert keep.portion(lambda t: t / 100, 90) == portion_unattended(lambda t: t / 100, 90)

@@ -19,10 +19,10 @@ import pytest
 
 from shares.documents.policy import Policy
 from shares.errors import ExtraMissingError, ParameterError
-from shares.planning.interval import at_least, interval
+from shares.planning.confidence import at_least, interval
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import odds
-from shares.planning.simulate import Estimate, Simulated, simulate
+from shares.planning.simulate import INSTALL, Estimate, Simulated, simulate
 from shares.sharing.rule import Rule
 
 EXAMPLES = Path(__file__).parents[2] / "examples" / "policies"
@@ -146,8 +146,9 @@ def test_the_arithmetic_of_the_planning_page() -> None:
 # One history at a time.
 
 
-def told(model: Model, days: int, lot: random.Random) -> tuple[bool, bool]:
-    """Tell one history, event by event: whether the key was lost, and whether it was exposed."""
+def told(model: Model, days: int, lot: random.Random) -> tuple[bool, bool, bool]:
+    """Tell one history, event by event: whether the key was lost, whether it was exposed, and whether no quorum could
+    be had on a day taken at random."""
 
     def events(of: str) -> list[tuple[float, frozenset[str]]]:
         found = []
@@ -159,7 +160,8 @@ def told(model: Model, days: int, lot: random.Random) -> tuple[bool, bool]:
 
     names = set(model.custodians)
     left, attestation, repair = set(names), model.attest_every or days + 1, math.inf
-    for at, members in events("loss"):
+    day, wanted = lot.random() * days, True  # Where the key is lost before the day, it is lost on it.
+    for at, members in sorted([*events("loss"), (day, None)], key=lambda event: event[0]):
         while min(attestation, repair) < at:
             if repair <= attestation:
                 left, attestation, repair = set(names), repair + (model.attest_every or days), math.inf
@@ -167,6 +169,10 @@ def told(model: Model, days: int, lot: random.Random) -> tuple[bool, bool]:
                 attestation += model.attest_every or days
             else:
                 repair, attestation = attestation + model.repair_after, math.inf
+        if members is None:
+            away = [cause.members for cause in model.causes if lot.random() < cause.absent * model.patience]
+            wanted = not model.rule.satisfied_by(left.difference(*away))
+            continue
         left -= members
         if not model.rule.satisfied_by(left):
             break
@@ -175,14 +181,14 @@ def told(model: Model, days: int, lot: random.Random) -> tuple[bool, bool]:
         now = int(at // (model.refresh_every or days + 1))
         leaked, epoch = (leaked if now == epoch else set()) | (members & names), now
         exposed = exposed or model.rule.satisfied_by(leaked)
-    return not model.rule.satisfied_by(left), exposed
+    return not model.rule.satisfied_by(left), exposed, wanted
 
 
 def assert_as_told(model: Model, years: int, *, told_times: int, histories: int, seed: int) -> Simulated:
     lot = random.Random(seed)
     ends = [told(model, years * 365, lot) for _ in range(told_times)]
     found = simulate(model, years, histories=histories, seed=seed)
-    for of, seen in zip(("loss", "exposure"), map(sum, zip(*ends, strict=True)), strict=True):
+    for of, seen in zip(ODDS, map(sum, zip(*ends, strict=True)), strict=True):
         both = (seen + getattr(found, of).seen) / (told_times + histories)
         deviation = math.sqrt(both * (1 - both) * (1 / told_times + 1 / histories))
         assert abs(seen / told_times - getattr(found, of).value) <= 5 * deviation
@@ -196,13 +202,18 @@ def test_histories_fare_as_those_told_event_by_event(seed: int) -> None:
     names = tuple(f"pier {i}" for i in range(7))
     causes = (
         *(Cause("share", name, frozenset({name}), 0.1 + lot.random() / 4, lot.random() / 5) for name in names),
-        Cause("site", "quay", frozenset(names[:3]), 0.02, 0.02),
+        *(Cause("person", name, frozenset({name}), absent=lot.random() / 3) for name in names),
+        Cause("site", "quay", frozenset(names[:3]), 0.02, 0.02, 0.05),
         Cause("line", "board", frozenset(names[2:5]), 0.02, 0.02),
     )
     model = Model(
         Rule(2, (Rule(2, names[:4]), Rule(3, names[2:]), names[0])), causes, attest_every=90, refresh_every=400
     )
     assert_as_told(model, 10, told_times=4_000, histories=40_000, seed=seed)
+    # An attestation that comes once in the years, and repairs that take longer than the time between two.
+    for every, delay in ((2000, 90), (60, 200)):
+        changed = replace(model, attest_every=every, repair_after=delay, recover_within=3.0)
+        assert_as_told(changed, 7, told_times=3_000, histories=30_000, seed=seed)
 
 
 def test_200_custodians_who_stand_in_several_branches() -> None:
@@ -352,7 +363,7 @@ def test_a_seed_below_0() -> None:
 def test_without_numpy_it_says_what_to_install(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setitem(sys.modules, "numpy", None)
     monkeypatch.delitem(sys.modules, "shares.planning.histories", raising=False)
-    with pytest.raises(ExtraMissingError, match=r"install the extra shares\[plan\]") as caught:
+    with pytest.raises(ExtraMissingError, match=INSTALL) as caught:
         simulate(alike(3, 5), 10, histories=10, seed=1)
     assert (caught.value.exit_code, caught.value.code) == (1, "extra-missing")
     assert caught.value.__cause__ is None

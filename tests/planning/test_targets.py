@@ -15,7 +15,7 @@ import pytest
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
 from shares.planning import targets as module
-from shares.planning.interval import interval
+from shares.planning.confidence import interval
 from shares.planning.lineup import MAX_CUSTODIANS, lined_up
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, odds

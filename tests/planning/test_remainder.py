@@ -9,7 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from strategies import rules, satisfies, sets_of
 
-from shares.planning.part import still_needed, without
+from shares.planning.remainder import still_needed, without
 from shares.sharing.rule import Rule
 
 

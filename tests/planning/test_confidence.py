@@ -14,7 +14,7 @@ import flint
 import pytest
 from scipy import stats
 
-from shares.planning.interval import at_least, interval
+from shares.planning.confidence import at_least, interval
 
 
 def tail(fewest: int, total: int, chance: Fraction) -> Fraction:
