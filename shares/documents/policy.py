@@ -27,7 +27,7 @@ from pydantic_core import PydanticCustomError
 from shares.documents.base import MAX_FILE, Document
 from shares.documents.intervals import Duration, Interval
 from shares.documents.members import Byte, Text, check_name
-from shares.documents.rates import CommonRates, Portion, Rate, Rates
+from shares.documents.rates import Absence, CommonRates, Rate, Rates
 from shares.errors import DocumentError, ParameterError
 from shares.field.gf256 import Field
 from shares.field.polynomial import Polynomial
@@ -103,7 +103,7 @@ class PolicyCustodian(Document):
     loss: Rate | None = None
     leak: Rate | None = None
     departure: Rate | None = None
-    absent: Portion | None = None
+    absent: Absence | None = None
 
 
 class PolicyNode(Document):

@@ -74,6 +74,27 @@ def parse_portion(text: str) -> float:
     return portion
 
 
+def parse_absence(text: str) -> float:
+    """Return the part of days on which someone cannot be reached, as policies write it.
+
+    Args:
+        text: a percentage.
+
+    Returns:
+        A number: 0 or more, and below 1, as an absence without an end has no length.
+
+    Raises:
+        ParameterError: it is not written so, or not below 100 %.
+
+    >>> parse_absence("10 %")
+    0.1
+    """
+    portion = parse_portion(text)
+    if portion == 1:
+        raise ParameterError("should be below 100 %: leave out of the rule whoever can never be reached")
+    return portion
+
+
 def _read_by(parse: Callable[[str], float]) -> PlainValidator:
     def read(value: object) -> float:
         try:
@@ -87,6 +108,7 @@ def _read_by(parse: Callable[[str], float]) -> PlainValidator:
 
 Rate = Annotated[float, _read_by(parse_rate)]
 Portion = Annotated[float, _read_by(parse_portion)]
+Absence = Annotated[float, _read_by(parse_absence)]
 
 
 class Rates(Document):
@@ -106,7 +128,7 @@ class Rates(Document):
     leak: Rate | None = None
     departure: Rate | None = None
     handed_on: Portion | None = None
-    absent: Portion | None = None
+    absent: Absence | None = None
     absent_for: Duration | None = None
     repair_after: Duration = timedelta(days=14)
 
@@ -123,4 +145,4 @@ class CommonRates(Document):
     name: Text
     loss: Rate | None = None
     leak: Rate | None = None
-    absent: Portion | None = None
+    absent: Absence | None = None

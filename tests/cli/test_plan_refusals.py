@@ -44,7 +44,7 @@ def refused(path: Path, *words: str) -> None:
 
 
 def test_the_policy_is_sound_before_it_is_spoilt(tmp_path: Path) -> None:
-    rates = '[rates]\nloss = "99.9 %/y"\nleak = "0.001/y"\nabsent = "100 %"\nrepair_after = "1d"'
+    rates = '[rates]\nloss = "99.9 %/y"\nleak = "0.001/y"\nabsent = "99.9 %"\nrepair_after = "1d"'
     path = policy(tmp_path, first='attest_every = "1d"', of_the_first='loss = "0 %/y"\nweight = 1', more=rates)
     assert run("plan", path).code == 0
 
@@ -97,6 +97,16 @@ def test_what_is_certain_within_a_year_has_no_rate(tmp_path: Path, rate: str) ->
 @pytest.mark.parametrize("part", ['"-1 %"', '"10"', '"0.1"', '"10 %/y"', '"nan"', '"1e1 %"', "0.1", "10", "inf"])
 def test_what_is_no_part_of_the_days(tmp_path: Path, part: str) -> None:
     refused(policy(tmp_path, more=f"[rates]\nabsent = {part}"), f"rates.absent should be {HOW_PARTS_ARE_WRITTEN}")
+
+
+@pytest.mark.parametrize("part", ["100 %", "100%", "100.0 %"])
+def test_whoever_is_never_there_is_left_out(tmp_path: Path, part: str) -> None:
+    """An absence has a length in the model, after which whoever is away comes back: one without an end has none."""
+    words = "absent should be below 100 %: leave out of the rule whoever can never be reached"
+    refused(policy(tmp_path, more=f'[rates]\nabsent = "{part}"'), f"rates.{words}")
+    site = f'[[site]]\nname = "registrar house"\nabsent = "{part}"'
+    refused(policy(tmp_path, more=site), f"site[0].{words}", COUNTED_FROM_0)
+    refused(policy(tmp_path, of_the_first=f'absent = "{part}"'), f"custodian north-pier (custodian[0]): {words}")
 
 
 def test_a_part_is_not_more_than_all(tmp_path: Path) -> None:

@@ -11,7 +11,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from shares.documents.rates import parse_portion, parse_rate
+from shares.documents.rates import parse_absence, parse_portion, parse_rate
 from shares.errors import ParameterError
 
 
@@ -51,3 +51,10 @@ def test_what_is_no_portion(text: str) -> None:
 
 def test_the_whole_is_a_portion() -> None:
     assert (parse_portion("0 %"), parse_portion("100%")) == (0.0, 1.0)
+
+
+def test_an_absence_is_any_portion_but_the_whole() -> None:
+    assert (parse_absence("0 %"), parse_absence("99.999999999999 %")) == (0.0, 0.99999999999999)
+    for text in ("100 %", "100.000%", "101 %", "10"):
+        with pytest.raises(ParameterError, match="%"):
+            parse_absence(text)
