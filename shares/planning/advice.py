@@ -21,7 +21,7 @@ from typing import TypeAlias
 from shares.planning import numbers
 from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds, contributions, odds, without_each
-from shares.planning.reckoned import HISTORIES, SEED, Reckoned, briefly, fall, instead, value, words
+from shares.planning.reckoned import SEED, Reckoned, briefly, fall, instead, usual, value, words
 from shares.planning.simulate import INSTALL, Simulated
 from shares.planning.single import Single, single_changes
 
@@ -266,13 +266,14 @@ def _tried(
 def _simulated_in_full(model: Model, years: float, histories: int | None, seed: int, drawn: Told | None) -> Outlook:
     """Work out odds, causes and changes by as many histories for each."""
     causes, tries = list(without_each(model)), list(single_changes(model))
-    each = HISTORIES if histories is None else histories
+    usually = usual(model, years)
+    each = usually if histories is None else histories
     place = count()
 
     def draw(changed: Model) -> Simulated | None:
         before, total = next(place) * each, (1 + len(causes) + len(tries)) * each
         told = None if drawn is None else lambda done, _: drawn(before + done, total)
-        return instead(changed, years, histories=histories, seed=seed, drawn=told)
+        return instead(changed, years, histories=histories, seed=seed, drawn=told, usually=usually)
 
     if (now := draw(model)) is None:
         return Outlook(years, None, None, None, None, advice(model, years, None, None, None))

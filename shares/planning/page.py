@@ -31,7 +31,7 @@ from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds
 from shares.planning.plane import Point, plane
 from shares.planning.reckoned import ends, value, words
-from shares.planning.telling import DANGERS, beside, cause_rows, change_rows, glued, why, years_words
+from shares.planning.telling import DANGERS, NO_SUM, beside, cause_rows, change_rows, glued, why, years_words
 
 _TEMPLATE: Final = Path(__file__).with_name("plan.html")
 _STYLE: Final = Path(__file__).with_name("plan.css")
@@ -111,6 +111,7 @@ def plan_page(
         attested=_curves(on_it, model.attest_every, {"loss": "loss", "absence": "no quorum on a day"}),
         refreshed=_curves(on_it, model.refresh_every, {"exposure": "exposure"}),
         causes=tuple(_bars(view.causes or ())),
+        no_sum=NO_SUM,
         rates=tuple(befalling(model)),
         assumptions=assumptions,
         imagined=IMAGINED,
