@@ -14,7 +14,7 @@ from shares.cli.plan_odds import cause_members, odds_members, sentences, table
 from shares.cli.plan_simulated import extra_missing, simulated_members
 from shares.planning import numbers
 from shares.planning.advice import largest
-from shares.planning.lineup import IMAGINED
+from shares.planning.lineup import IMAGINED, MAX_CUSTODIANS
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import INSTALL, Simulated
 from shares.planning.targets import INTERVALS, Answer, Targets
@@ -25,8 +25,8 @@ TRIED = (
     f"no custodian, person or site is needed by every quorum. {IMAGINED}"
 )
 NONE_SOUND = (
-    "Serious: whatever the rule, with these people, sites and managers one of them alone makes a quorum, or is needed "
-    "by every quorum. More people and sites come first."
+    f"Serious: in every rule any k of n, n up to {MAX_CUSTODIANS}, over these people, sites and managers, one of them "
+    "alone makes a quorum or is needed by every quorum. More people and sites come first."
 )
 _TRIED_ALL = (
     f"Rules of one group were tried, in which neither one custodian makes a quorum nor all are needed. {IMAGINED}"

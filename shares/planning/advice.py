@@ -25,6 +25,7 @@ from shares.planning.reckoned import SEED, Reckoned, briefly, fall, instead, usu
 from shares.planning.simulate import INSTALL, Simulated
 from shares.planning.single import Single, single_changes
 
+_MUCH_LESS = 0.9
 _MOST_CUSTODIANS = 24
 _MOST_WORK = 50_000
 """``_work`` up to which causes and changes are worked out unasked: half a second on a slow machine."""
@@ -177,7 +178,7 @@ def advice(
             "What is said of its structure holds all the same.",
             "A simpler rule has odds, and fewer ways to go wrong: each group in one place, and few custodians in each.",
         )
-    return (_danger(years, now, causes), _best(now, found), _besides(model, now))
+    return (_danger(years, now, causes), _best(now, found), _besides(model, now, found))
 
 
 def _danger(years: float, now: Reckoned, causes: tuple[Contribution, ...] | None) -> str:
@@ -188,6 +189,8 @@ def _danger(years: float, now: Reckoned, causes: tuple[Contribution, ...] | None
     loss, exposure = value(now, "loss"), value(now, "exposure")
     if not isinstance(now, Simulated) and loss == exposure == 0:
         return f"{told}: at these rates neither can happen."
+    if not isinstance(now, Simulated) and max(loss, exposure) < numbers.LEAST:
+        return f"{told}: beside what no rate knows of, neither matters."
     if isinstance(now, Simulated) and not _worse_is_plain(now):
         return f"{told}: which danger is the greater one, so many histories do not tell."
     if max(loss, exposure) < 2 * min(loss, exposure):
@@ -206,7 +209,7 @@ def _best(now: Reckoned, found: tuple[Change, ...] | None) -> str:
         return "What to change first was not worked out, as that takes long for this policy: --odds does it."
     if isinstance(now, Simulated) and not found:
         return "Of no single change can so many histories tell what it does to these odds."
-    if not found or numbers.chance(max(value(now, "loss"), value(now, "exposure"))) == "none":
+    if not found or (isinstance(now, Odds) and max(now.loss, now.exposure) < numbers.LEAST):
         return "There is nothing to change that these odds would show."
     first = found[0]
     if first.gain <= 0:
@@ -219,11 +222,17 @@ def _best(now: Reckoned, found: tuple[Change, ...] | None) -> str:
     return f"Of the changes tried it helps most {first.words}: {' and '.join(told) or 'though by little'}."
 
 
-def _besides(model: Model, now: Reckoned) -> str:
-    if model.attest_every is None:
+def _besides(model: Model, now: Reckoned, found: tuple[Change, ...] | None) -> str:
+    if model.attest_every is None and (isinstance(now, Simulated) or now.loss):
+        asked = next((change for change in found or () if change.kind == "attest"), None)
+        if asked is None or value(asked.odds, "loss") < _MUCH_LESS * value(now, "loss"):
+            return (
+                "Nobody asks for the shares here, so that losses add up unseen until the key is needed: attestations, "
+                "with repair of what they find, are there for that."
+            )
         return (
-            "Nobody asks for the shares here, so that losses add up unseen until the key is needed: attestations, with "
-            "repair of what they find, end that."
+            "Nobody asks for the shares here, and to ask every year would help little: what ends the key here leaves "
+            "nothing to repair it with."
         )
     if model.refresh_every is None and value(now, "exposure") > value(now, "loss"):
         return "There is no refresh here, so that what leaks adds up for as long as the set lives."

@@ -47,7 +47,8 @@ def needing(model: Model, need: int) -> Model:
 
 def with_another(model: Model, like: str) -> Model:
     """Return the model with one more custodian: in the rule wherever ``like`` stands and with the same weight, at the
-    same site, in the same line and on the same medium, but another person. No threshold changes.
+    same site, under the same manager and on the same medium, but another person, who commands nobody. No threshold
+    changes.
 
     Raises:
         ParameterError: nobody has that name, or the rule has no room for more.
@@ -120,8 +121,9 @@ def _beside(node: Rule, like: str, name: str) -> Rule:
 
 
 def _befalling(causes: tuple[Cause, ...], like: str, name: str) -> Iterator[Cause]:
+    persons = {folded(cause.name) for cause in causes if cause.kind == "person" and like in cause.members}
     for cause in causes:
-        if like not in cause.members:
+        if like not in cause.members or (cause.kind == "line" and folded(cause.name) in persons):
             yield cause
         elif cause.kind in ("share", "person"):
             yield cause

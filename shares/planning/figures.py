@@ -23,8 +23,6 @@ from shares.planning.plane import Point
 from shares.planning.reckoned import Reckoned, ends, value, words
 from shares.planning.simulate import Simulated
 
-LEAST = 1e-12
-"""Odds below are drawn as this: nobody knows a rate well enough to tell them apart."""
 _CHARACTER, _LINE, _GAP = 6.6, 13.0, 7.0
 """How wide a character of a label is, how high its line, and how far it stands from its mark."""
 
@@ -113,10 +111,10 @@ class CurveFigure:
 def tick_words(chance: float) -> str:
     """Write a chance beside an axis; at the end at which all that is less is drawn, without its "or less".
 
-    >>> tick_words(1.0), tick_words(0.001), tick_words(LEAST)
+    >>> tick_words(1.0), tick_words(0.001), tick_words(numbers.LEAST)
     ('100 %', '0.1 %', '1 in a trillion')
     """
-    if chance < 1.5 * LEAST:
+    if chance < 1.5 * numbers.LEAST:
         return "1 in a trillion"
     return "100 %" if chance >= 1 else numbers.chance(chance)
 
@@ -131,8 +129,8 @@ def plane_figure(points: Sequence[Point], policy: Reckoned | None) -> PlaneFigur
     """
     here = None if policy is None else tuple(value(policy, of) or ends(policy, of)[1] for of in ("loss", "exposure"))
     known = [(point.odds.loss, point.odds.exposure) for point in points] + ([here] if here else [])
-    x = LogScale.around((loss for loss, _ in known), least=LEAST, start=PLANE.left, end=PLANE.right)
-    y = LogScale.around((exposure for _, exposure in known), least=LEAST, start=PLANE.bottom, end=PLANE.top)
+    x = LogScale.around((loss for loss, _ in known), least=numbers.LEAST, start=PLANE.left, end=PLANE.right)
+    y = LogScale.around((exposure for _, exposure in known), least=numbers.LEAST, start=PLANE.bottom, end=PLANE.top)
 
     def mark(one: Reckoned, kind: str, name: str, loss: float, exposure: float) -> Mark:
         told = f"{name}: loss {words(one, 'loss')}, exposure {words(one, 'exposure')}"
@@ -187,7 +185,7 @@ def curve_figure(
     longest = max((days for days, _ in shown if days), default=7)
     x = LogScale(7 / 1.1, max(longest, 14) * 1.1, CURVES.left, CURVES.right)
     y = LogScale.around(
-        (value for _, values in shown for value in values), least=LEAST, start=CURVES.bottom, end=CURVES.top
+        (value for _, values in shown for value in values), least=numbers.LEAST, start=CURVES.bottom, end=CURVES.top
     )
     lines, marks, labels = list[str](), list[Mark](), list[Label]()
     for i, (name, _) in enumerate(of):
@@ -202,12 +200,19 @@ def curve_figure(
         ]
         lines.append(_path(at[:-1]))
         marks += [one for one in at if one.kind]
-        above = not labels or at[0].y < labels[0].y
-        labels.append(Label(at[0].x + 4, at[0].y + (-9 if above else 17), name, "start"))
+        labels.append(_beside_line(at[0], name, labels))
     columns = [Tick(x.at(days), words) for days, words in _ROUND if days <= longest]
     return CurveFigure(
         (*columns, Tick(_NEVER_AT, "never")), y.ticks(tick_words), tuple(lines), tuple(marks), tuple(labels)
     )
+
+
+def _beside_line(mark: Mark, name: str, others: Sequence[Label]) -> Label:
+    """Put the name of a line where it begins: above or below it, within the plot, and apart from other names."""
+    anchor, x = ("start", mark.x + 4) if mark.x < (CURVES.left + CURVES.right) / 2 else ("end", mark.x - 8)
+    heights = [y for y in (mark.y - 9, mark.y + 17, mark.y - 9 - _LINE) if CURVES.top + 6 < y < CURVES.bottom - 2]
+    apart = [y for y in heights if all(abs(y - other.y) >= _LINE for other in others)]
+    return Label(x, (apart or heights or [mark.y - 9])[0], name, anchor)
 
 
 def _path(along: Sequence[Mark]) -> str:

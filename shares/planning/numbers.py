@@ -16,7 +16,8 @@ from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 _CERTAIN = 0.995
 _ONE_DIGIT_BELOW = 1e-4
 _PERCENT_FROM = 1e-6
-_LEAST = 1e-12
+LEAST = 1e-12
+"""What is less likely is told as that: no rate is known well enough to tell it apart."""
 MOST_YEARS = 1e6
 """No longer time is told in numbers."""
 _UNITS = ((1e12, "trillion"), (1e9, "billion"), (1e6, "million"))
@@ -32,7 +33,7 @@ def chance(p: float) -> str:
         return "none"
     if p >= _CERTAIN:
         return "above 99 %"
-    if p < _LEAST:
+    if p < LEAST:
         return "below 1 in a trillion"
     if p < _PERCENT_FROM:
         return f"1 in {_in_words(1 / p)}"
@@ -98,11 +99,14 @@ def histories(count: int) -> str:
 
 
 def horizon(span: float) -> str:
-    """Write a number of years that somebody gave, as they meant it.
+    """Write a number of years that somebody gave, as they meant it; below one year, in the days that are counted.
 
-    >>> horizon(10.0), horizon(1.0), horizon(0.5)
-    ('10 years', '1 year', '0.5 years')
+    >>> horizon(10.0), horizon(1.0), horizon(2.5), horizon(0.5), horizon(1 / 365)
+    ('10 years', '1 year', '2.5 years', '182 days', '1 day')
     """
+    if span < 1:
+        days = max(1, round(365 * span))
+        return "1 day" if days == 1 else f"{days} days"
     return "1 year" if span == 1 else f"{span:,.6g} years"
 
 

@@ -109,12 +109,13 @@ def _set_apart(model: Model, kinds: list[str]) -> Iterator[Single]:
 
 
 def _intervals(model: Model) -> Iterator[Single]:
-    for kind, now, changed in (
-        ("attest", model.attest_every, attesting_every),
-        ("refresh", model.refresh_every, refreshing_every),
+    # Nobody keeps up with attestations that come before what the one before found lost is made good.
+    for kind, now, shortest, changed in (
+        ("attest", model.attest_every, model.repair_after, attesting_every),
+        ("refresh", model.refresh_every, 1, refreshing_every),
     ):
-        if now != 1:
-            days = DAYS_OF_A_YEAR if now is None else now // 2
+        days = DAYS_OF_A_YEAR if now is None else now // 2
+        if days >= max(1, shortest):
             yield Single(kind, f"to {kind} {numbers.every(days)}", changed(model, days))
 
 

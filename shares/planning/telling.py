@@ -113,13 +113,14 @@ def change_rows(now: Reckoned, changes: Sequence[Change], *, best_alone: bool = 
     Args:
         now: the odds as they are.
         changes: as ``outlook`` returns them.
-        best_alone: whether those that do more harm than good are left out.
+        best_alone: whether those that do more harm than good, or nothing that is told, are left out.
     """
-    yield "(as it is)", briefly(now, "loss"), briefly(now, "exposure")
+    as_it_is = briefly(now, "loss"), briefly(now, "exposure")
+    yield "(as it is)", *as_it_is
     alike = Counter((change.kind, *_after(change)) for change in changes)
     for change in changes:
         others = alike.pop((change.kind, *_after(change)), 0) - 1
-        if others >= 0 and not (best_alone and change.gain <= 0):
+        if others >= 0 and not (best_alone and (change.gain <= 0 or _after(change) == as_it_is)):
             more = f" (or {others} other{'s' if others > 1 else ''})" if others else ""
             yield change.words.removeprefix("to ") + more, *_after(change)
 

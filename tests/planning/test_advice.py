@@ -101,10 +101,24 @@ def test_each_threshold_is_tried_and_named_by_its_group() -> None:
     assert auditors.odds == odds(replace(TIDE, rule=by_hand), 10)
 
 
-def test_intervals_are_halved_down_to_a_day() -> None:
-    told = [change.words for change in changes_of(replace(TIDE, attest_every=3, refresh_every=1))]
+def test_intervals_are_halved_as_long_as_somebody_can_keep_up() -> None:
+    prompt = replace(TIDE, attest_every=3, repair_after=1, refresh_every=1)
+    told = [change.words for change in changes_of(prompt)]
     assert "to attest every day" in told
     assert not [words for words in told if "refresh" in words]
+    slow = [change.words for change in changes_of(replace(prompt, repair_after=2))]
+    assert not [words for words in slow if "attest" in words]
+
+
+def test_attestations_are_advised_where_they_help_and_not_praised_where_they_do_not() -> None:
+    for model, said in ((alike(3, 5), "are there for that."), (alike(3, 3), "leaves nothing to repair it with.")):
+        danger, best, besides = outlook(replace(model, attest_every=None), 10).advice
+        assert danger
+        assert best
+        assert besides.startswith("Nobody asks for the shares here, ")
+        assert besides.endswith(said)
+    never = outlook(replace(alike(3, 5), causes=(), attest_every=None), 10).advice
+    assert not any("Nobody asks" in sentence for sentence in never)
 
 
 def test_a_rule_without_room_has_no_other_custodian() -> None:
@@ -311,12 +325,16 @@ def test_every_combination_of_odds_reads_well(kind: list[Odds] | list[Simulated]
         said = re.fullmatch(
             rf"Over 10 years the chance of loss is {CHANCE}, and that of exposure is {CHANCE}: (?:loss is the greater "
             r"danger|exposure is the greater danger|one danger is about as great as the other|which danger is the "
-            r"greater one, so many histories do not tell|at these rates neither can happen)\.",
+            r"greater one, so many histories do not tell|at these rates neither can happen|beside what no rate knows "
+            r"of, neither matters)\.",
             danger,
         )
         assert said, danger
-        assert ("neither" in danger) == (one is other is EXACT[0])
-        if one is not other:
+        small = not isinstance(now, Simulated) and max(now.loss, now.exposure) < 1e-12
+        assert ("neither" in danger) == small
+        if small:
+            assert best == "There is nothing to change that these odds would show."
+        elif one is not other:
             assert re.fullmatch(
                 rf"Of the changes tried it helps most to attest every year: loss goes from {CHANCE} to {CHANCE} and "
                 rf"exposure goes from {CHANCE} to {CHANCE}\.",

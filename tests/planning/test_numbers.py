@@ -76,4 +76,4 @@ def test_intervals(days: int, words: str) -> None:
 
 
 def test_horizons() -> None:
-    assert (horizon(1000.0), horizon(0.25), horizon(1.0)) == ("1,000 years", "0.25 years", "1 year")
+    assert (horizon(1000.0), horizon(0.25), horizon(1.0)) == ("1,000 years", "91 days", "1 year")
