@@ -88,7 +88,7 @@ PAGES: dict[str, Callable[[], bytes]] = {
     "harmless": lambda: page_of(harmless()),
     "entangled": lambda: page_of(entangled()),
     "a day": lambda: page_of(EXAMPLES["break-glass"], 1 / 365),
-    "a thousand years": lambda: page_of(EXAMPLES["tide-archive"], 1000),
+    "a hundred years": lambda: page_of(EXAMPLES["tide-archive"], 100),
 }
 
 
