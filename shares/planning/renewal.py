@@ -99,9 +99,11 @@ class Upkeep:
             away: the chance that it is, so many days after a dealing, nothing being mended; ``gone`` or more.
             days: how many are looked at.
         """
-        curve, ending = Curve.of(away, min(self._whole, days)), self._ending
+        whole, ending = self._whole, self._ending
+        curve = Curve.of(away, min(whole, days))
+        in_whole = self._of_a_round(curve.integral, whole) if days >= whole else 0.0
         missed = sum(
-            chance * (self._of_a_round(curve.integral, left) + ending * max(0, left - self._whole))
+            chance * (in_whole + ending * (left - whole) if left >= whole else self._of_a_round(curve.integral, left))
             for left, chance in self._rounds(days)
         )
         return min(1.0, missed / days)
