@@ -21,7 +21,7 @@ from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds
 from shares.planning.reckoned import Reckoned, words
 from shares.planning.simulate import Simulated
-from shares.planning.telling import DANGERS, NO_SUM, NOT_TOLD, beside, cause_rows, change_rows, glued, why, years_words
+from shares.planning.telling import DANGERS, NO_SUM, beside, cause_rows, change_rows, glued, not_told, why, years_words
 
 CAUTIONS = (
     "Odds are as good as the rates they come from, and no better. That custodians share nothing but people, sites, "
@@ -152,17 +152,9 @@ def outlook_lines(view: Outlook, *, full: bool) -> Iterator[str]:
     yield from sentences(" ".join(view.advice))
     if view.now is not None and view.changes:
         yield from _change_lines(view.now, view.changes, full=full)
-    if view.causes_left_out or view.changes_left_out:
+    if left_out := not_told(view):
         yield ""
-        yield from sentences(
-            f"Left out are {_so_many(view.causes_left_out, 'cause')} and {_so_many(view.changes_left_out, 'change')}: "
-            f"what they do cannot be told from what chance makes. {NOT_TOLD.capitalize()} means the same of one of the "
-            "odds. More histories tell more."
-        )
-
-
-def _so_many(count: int, what: str) -> str:
-    return f"{count} {what}{'' if count == 1 else 's'}"
+        yield from sentences(left_out)
 
 
 def _simulated_lines(view: Outlook, simulated: Simulated) -> Iterator[str]:

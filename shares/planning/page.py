@@ -31,7 +31,7 @@ from shares.planning.model import Model
 from shares.planning.odds import Contribution, Odds
 from shares.planning.plane import Point, plane
 from shares.planning.reckoned import ends, value, words
-from shares.planning.telling import DANGERS, NO_SUM, beside, cause_rows, change_rows, glued, why, years_words
+from shares.planning.telling import DANGERS, NO_SUM, beside, cause_rows, change_rows, glued, not_told, why, years_words
 
 _TEMPLATE: Final = Path(__file__).with_name("plan.html")
 _STYLE: Final = Path(__file__).with_name("plan.css")
@@ -102,6 +102,7 @@ def plan_page(
         dangers=tuple(_dangers(view)),
         until_lost=_until_lost(view),
         simulated=_simulated(view),
+        not_told=not_told(view),
         changes=tuple(change_rows(view.now, view.changes)) if view.now and view.changes else (),
         points=on_it.points,
         plane=figures.plane_figure(on_it.points, view.now) if on_it.points else None,

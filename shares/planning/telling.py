@@ -14,7 +14,7 @@ from collections.abc import Iterable, Iterator, Sequence
 from typing import TypeAlias
 
 from shares.planning import numbers
-from shares.planning.advice import Change, cause_words
+from shares.planning.advice import Change, Outlook, cause_words
 from shares.planning.odds import Contribution, Odds
 from shares.planning.reckoned import Reckoned, briefly, ends, value
 from shares.planning.simulate import MAX_HISTORIES, Simulated
@@ -96,6 +96,21 @@ def beside(odds: Odds, simulated: Simulated) -> str:
     if not out:
         return "The exact odds lie within all three intervals."
     return f"The exact odds of {' and of '.join(out)} lie outside the interval, as one in twenty may by chance."
+
+
+def not_told(view: Outlook) -> str:
+    """Say how many causes and changes are left out since chance hides what they do; nothing where none is."""
+    if not (view.causes_left_out or view.changes_left_out):
+        return ""
+    causes, changes = _so_many(view.causes_left_out, "cause"), _so_many(view.changes_left_out, "change")
+    return (
+        f"Left out are {causes} and {changes}: what they do cannot be told from what chance makes. "
+        f"{NOT_TOLD.capitalize()} means the same of one of the odds. More histories tell more."
+    )
+
+
+def _so_many(count: int, what: str) -> str:
+    return f"{count} {what}{'' if count == 1 else 's'}"
 
 
 def cause_rows(causes: Sequence[Contribution]) -> Iterator[Row]:

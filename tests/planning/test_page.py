@@ -299,6 +299,16 @@ def test_what_no_history_showed_is_drawn_at_the_most_that_it_can_be(pages: Pages
     )
 
 
+def test_effects_that_chance_hides_are_counted_where_they_are_missed(pages: Pages) -> None:
+    policy = Policy.parse(entangled())
+    model = model_of(policy)
+    view = outlook(model, 10, full=True, histories=500)
+    assert view.causes_left_out > 0
+    data = plan_page(examine(policy), model, view, Drawn((), ()), (), digest=policy.digest(), program="shares 1.0")
+    text = " ".join(pages.show(data).locator("body").inner_text().split())
+    assert f"Left out are {view.causes_left_out} causes and {view.changes_left_out} changes: what they do" in text
+
+
 def test_what_is_drawn_at_the_edge_is_said_to_be_less(pages: Pages) -> None:
     said = "What is less likely than 1 in a trillion is drawn as that."
     assert said in pages.show(PAGES["harmless"]()).locator("figcaption").first.inner_text()
