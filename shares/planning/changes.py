@@ -36,15 +36,6 @@ def refreshing_every(model: Model, days: int | None) -> Model:
     return replace(model, refresh_every=days)
 
 
-def needing(model: Model, need: int) -> Model:
-    """Return the model with another threshold at the root of the rule.
-
-    Raises:
-        ParameterError: the root does not have so many children, or the threshold is below 1.
-    """
-    return replace(model, rule=Rule(need, model.rule.children))
-
-
 def with_another(model: Model, like: str) -> Model:
     """Return the model with one more custodian: in the rule wherever ``like`` stands and with the same weight, at the
     same site, under the same manager and on the same medium, but another person, who commands nobody. No threshold

@@ -14,7 +14,6 @@ from shares.errors import ParameterError
 from shares.planning.changes import (
     attesting_every,
     moved,
-    needing,
     on_another_medium,
     refreshing_every,
     reporting_elsewhere,
@@ -43,14 +42,10 @@ MODEL = Model(
 )
 
 
-def test_intervals_and_the_threshold() -> None:
+def test_intervals() -> None:
     assert attesting_every(MODEL, 45) == replace(MODEL, attest_every=45)
     assert attesting_every(MODEL, None).attest_every is None
     assert refreshing_every(MODEL, 365) == replace(MODEL, refresh_every=365)
-    assert needing(MODEL, 4).rule == Rule(4, PIERS.children)
-    for wrong in (0, 5):
-        with pytest.raises(ParameterError):
-            needing(MODEL, wrong)
     with pytest.raises(ParameterError):
         attesting_every(MODEL, 0)
 

@@ -19,7 +19,7 @@ from scipy import stats
 
 from shares.documents.policy import Policy
 from shares.errors import ParameterError
-from shares.planning.changes import attesting_every, moved, needing, refreshing_every, with_another
+from shares.planning.changes import attesting_every, moved, refreshing_every, with_another
 from shares.planning.model import Cause, Model, model_of, yearly
 from shares.planning.odds import Odds, contributions, odds
 from shares.sharing.rule import Rule
@@ -213,7 +213,7 @@ def test_one_more_custodian_never_makes_loss_or_absence_likelier(delays: bool) -
 @given(models(delays=True))
 def test_a_higher_threshold_never_makes_exposure_likelier_nor_loss_less_likely(model: Model) -> None:
     if model.rule.need < len(model.custodians):
-        higher, lower = of(needing(model, model.rule.need + 1)), of(model)
+        higher, lower = of(replace(model, rule=Rule(model.rule.need + 1, model.rule.children))), of(model)
         no_more(higher.exposure, lower.exposure)
         no_more(lower.loss, higher.loss)
         no_more(lower.absence, higher.absence)
