@@ -1,4 +1,4 @@
-"""What the tests of the command line are given: a folder with a secret, and one with a set already split."""
+"""What the tests of the command line are given: folders with a secret, with a set split, and with a key dealt."""
 
 from __future__ import annotations
 
@@ -7,7 +7,8 @@ from pathlib import Path
 
 import pytest
 from cli.harbour import Harbour
-from cli.harness import NAMES, Place
+from cli.harness import NAMES, Place, run
+from cli.keyed import Keyed
 from parties import QUICK
 
 from shares.documents import wrapping
@@ -44,3 +45,16 @@ def quick(monkeypatch: pytest.MonkeyPatch) -> None:
 def harbour(dealt: Place) -> Harbour:
     """A set split 3-of-5, its shares bare, and the parties of the harbour with their passphrases."""
     return Harbour.make(dealt)
+
+
+@pytest.fixture(scope="session")
+def _keyed_once(tmp_path_factory: pytest.TempPathFactory) -> Keyed:
+    keyed = Keyed.make(tmp_path_factory.mktemp("keyed") / "harbour").dealt()
+    assert run("key", "show", keyed.key, "--pem", keyed.path("k.pem"), "--x25519-pem", keyed.path("x.pem")).code == 0
+    return keyed
+
+
+@pytest.fixture
+def keyed(_keyed_once: Keyed, tmp_path: Path) -> Keyed:
+    """A key dealt 2 of 3, and its public halves in k.pem and x.pem."""
+    return _keyed_once.copy(tmp_path / "harbour")

@@ -25,19 +25,6 @@ from shares.keys.forms import Signable
 from shares.keys.revocation import Revoked, revocation_list
 
 
-@pytest.fixture(scope="module")
-def once(tmp_path_factory: pytest.TempPathFactory) -> Keyed:
-    keyed = Keyed.make(tmp_path_factory.mktemp("keyed") / "harbour").dealt()
-    assert run("key", "show", keyed.key, "--pem", keyed.path("k.pem"), "--x25519-pem", keyed.path("x.pem")).code == 0
-    return keyed
-
-
-@pytest.fixture
-def keyed(once: Keyed, tmp_path: Path) -> Keyed:
-    """A key dealt 2 of 3, and its public halves in k.pem and x.pem."""
-    return once.copy(tmp_path / "harbour")
-
-
 class TestForms:
     def test_the_commands_to_verify_by_can_be_pasted(self, keyed: Keyed) -> None:
         """As printed, but for the names in capitals; in a folder with a space, which is quoted."""

@@ -9,7 +9,6 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Sequence
 from datetime import timedelta
-from pathlib import Path
 
 import pytest
 from cli.asked import CONTENT, FIRST, SECOND, THIRD, commit, events, finish, sent, sign_arguments
@@ -23,19 +22,6 @@ from shares.documents.key_event import Approved, NoncesCommitted, TaskAsked, Tas
 from shares.documents.task import Task
 from shares.documents.task_message import SignatureShare, TaskMessage
 from shares.group.edwards25519 import Scalar
-
-
-@pytest.fixture(scope="module")
-def once(tmp_path_factory: pytest.TempPathFactory) -> Keyed:
-    keyed = Keyed.make(tmp_path_factory.mktemp("keyed") / "harbour").dealt()
-    assert run("key", "show", keyed.key, "--pem", keyed.path("k.pem"), "--x25519-pem", keyed.path("x.pem")).code == 0
-    return keyed
-
-
-@pytest.fixture
-def keyed(once: Keyed, tmp_path: Path) -> Keyed:
-    """A key dealt 2 of 3, and its public halves in k.pem and x.pem."""
-    return once.copy(tmp_path / "harbour")
 
 
 class TestSigning:
